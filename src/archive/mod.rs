@@ -1,0 +1,1 @@
+//! Seal, recover, verify, list, show: composes journal, capture, reading and trial.

@@ -1,0 +1,1 @@
+//! Joins link, journal, live, feed and archive into one process that loses nothing.

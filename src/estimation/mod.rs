@@ -1,0 +1,1 @@
+//! Least squares, covariance, propagation of uncertainty, statistics. Pure.

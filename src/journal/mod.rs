@@ -1,0 +1,1 @@
+//! Append-only capture on a disk trait: the only thing written while data flows.

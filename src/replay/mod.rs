@@ -1,0 +1,1 @@
+//! The launch model beside a trial: residuals, and later fits, transfer, trends.

@@ -1,0 +1,1 @@
+//! Pages for people: HTML with SVG plots.

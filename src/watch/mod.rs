@@ -1,0 +1,1 @@
+//! The live display: the only room that knows the terminal.
