@@ -1,0 +1,128 @@
+//! The state of everything at one instant, as plain data: what a snapshot on the feed carries.
+
+use serde::{Deserialize, Serialize};
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Phase {
+    /// No fresh data yet: treat as loaded.
+    Unknown,
+    Slack,
+    WinchBack,
+    Hold,
+    Launch,
+    RunOut,
+    Rest,
+    LetDown,
+}
+
+/// A channel's state at a snapshot.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct ChannelNow {
+    pub name: String,
+    pub role: String,
+    pub unit: String,
+    /// Newest value, and the least and greatest since the last snapshot; none before the first sample.
+    pub value: Option<f64>,
+    pub min: Option<f64>,
+    pub max: Option<f64>,
+    /// Age of the newest sample when the snapshot was made.
+    pub age_s: Option<f64>,
+}
+
+/// Whether the cords hold energy.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+#[serde(tag = "state", rename_all = "snake_case")]
+pub enum CordsNow {
+    Loaded {
+        tension_n: f64,
+        energy_j: f64,
+    },
+    /// Every tension cell is fresh and below the slack threshold.
+    Slack,
+    /// A cell is silent: "tension unknown, treat as loaded".
+    Unknown,
+}
+
+/// What a release now would give.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+pub struct ReleasedNow {
+    pub launch_speed_mps: f64,
+    pub launch_speed_low_mps: f64,
+    pub launch_speed_high_mps: f64,
+    /// Specific force along the rail, multiples of 9.80665 m/s².
+    pub peak_g: f64,
+    pub peak_g_low: f64,
+    pub peak_g_high: f64,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct LinkNow {
+    pub device: String,
+    pub up: bool,
+    pub bytes_per_s: f64,
+    pub frames: u64,
+    pub refused: u64,
+    pub missing_samples: u64,
+    pub silent_s: Option<f64>,
+    pub clock_uncertainty_s: Option<f64>,
+    pub note: String,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct JournalNow {
+    pub bytes: u64,
+    pub free_bytes: u64,
+    /// Longest interval between syncs lately.
+    pub sync_interval_s: f64,
+    pub queue_high_water: f64,
+    pub lost_events: u64,
+    pub trouble: Option<String>,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct TrialNow {
+    pub id: String,
+    pub open_s: f64,
+}
+
+/// What the last launch gave, shown from rest on.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+pub struct LaunchSeen {
+    pub launch_speed_mps: f64,
+    pub peak_g: f64,
+}
+
+/// The state of everything, 30 times a second.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Snapshot {
+    pub host_ns: i64,
+    /// RFC 3339; empty when the wall clock was never set.
+    pub wall: String,
+    pub phase: Phase,
+    pub phase_s: f64,
+    pub cords: CordsNow,
+    pub channels: Vec<ChannelNow>,
+    pub x_m: Option<f64>,
+    pub draw_m: Option<f64>,
+    pub released_now: Option<ReleasedNow>,
+    pub last_launch: Option<LaunchSeen>,
+    pub links: Vec<LinkNow>,
+    pub journal: Option<JournalNow>,
+    pub trial: Option<TrialNow>,
+    /// Newest first. An alarm stays until its cause is gone and a person has acknowledged it.
+    pub alarms: Vec<AlarmNow>,
+}
+
+/// An alarm that stands, or that nobody has acknowledged yet.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct AlarmNow {
+    /// What is wrong and what to do.
+    pub sentence: String,
+    /// Host monotonic time of its raising.
+    pub raised_ns: i64,
+    /// Whether the cause still stands.
+    pub active: bool,
+    /// Who acknowledged it.
+    pub acknowledged_by: Option<String>,
+}
