@@ -2,4 +2,4 @@
 
 mod result;
 
-pub use result::{Absent, Instant, Outcome, ResultRow};
+pub use result::{Absent, BudgetTerm, EnergyAudit, Instant, Motion, Outcome, Reading, ResultRow};

@@ -1,7 +1,17 @@
 //! What a reading found: numbers with their uncertainty, phases and the outcome.
 
+use serde::Serialize;
+
+/// One share of a result's standard uncertainty, in the result's unit. Shares add in quadrature.
+#[derive(Debug, Clone, PartialEq, Serialize)]
+pub struct BudgetTerm {
+    /// `calibration`, `noise`, `time`, `place`, `model`, or more exactly in words.
+    pub source: String,
+    pub standard_uncertainty: f64,
+}
+
 /// One derived number.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone, PartialEq, Serialize)]
 pub struct ResultRow {
     /// `launch_speed`, `peak_g_cfc60_specific`, `release_time`, …
     pub name: String,
@@ -14,16 +24,19 @@ pub struct ResultRow {
     pub high: f64,
     /// How it was obtained, in words.
     pub method: String,
+    /// What the standard uncertainty is made of; the largest share first.
+    pub budget: Vec<BudgetTerm>,
 }
 
 /// A result that could not be had, and why: never a plausible wrong number.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone, PartialEq, Serialize)]
 pub struct Absent {
     pub name: String,
     pub reason: String,
 }
 
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize)]
+#[serde(rename_all = "snake_case")]
 #[non_exhaustive]
 pub enum Outcome {
     Launched,
@@ -39,8 +52,27 @@ pub enum Outcome {
     Truncated,
 }
 
+impl Outcome {
+    /// The word used in trial files, JSON and on screens.
+    pub const fn word(self) -> &'static str {
+        match self {
+            Self::Launched => "launched",
+            Self::LetDown => "let-down",
+            Self::HangFire => "hang-fire",
+            Self::EarlyRelease => "early release",
+            Self::HookSlip => "hook slip",
+            Self::CordFailure => "cord failure",
+            Self::PayloadLeftEarly => "payload left early",
+            Self::PayloadNotSeparated => "payload not separated",
+            Self::ArrestOverrun => "arrest overrun",
+            Self::Aborted => "aborted",
+            Self::Truncated => "truncated",
+        }
+    }
+}
+
 /// An instant the reading located, in trial seconds.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone, PartialEq, Serialize)]
 pub struct Instant {
     /// `winch_back_start`, `hold_start`, `release`, `separation`, `brake_contact`, `rest`, …
     pub name: String,
@@ -48,4 +80,64 @@ pub struct Instant {
     pub standard_uncertainty_s: f64,
     /// Where the evidence came from, in words.
     pub evidence: String,
+}
+
+/// Smoothed motion of the shuttle from the end of the hold to rest. All columns have the same length.
+///
+/// Position is in the rail's frame; standard uncertainties include noise and calibration.
+#[derive(Debug, Clone, PartialEq, Serialize, Default)]
+pub struct Motion {
+    pub time_s: Vec<f64>,
+    pub x_m: Vec<f64>,
+    pub v_mps: Vec<f64>,
+    /// Kinematic acceleration along the rail.
+    pub a_mps2: Vec<f64>,
+    pub u_x_m: Vec<f64>,
+    pub u_v_mps: Vec<f64>,
+    pub u_a_mps2: Vec<f64>,
+    /// Which sensors it rests on, in words.
+    pub sensors: String,
+}
+
+/// Where the energy went, in joules. Rows of the same names stand in the results with their uncertainty.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize)]
+pub struct EnergyAudit {
+    /// Work of the release line from the zero mark to the hold.
+    pub stored_j: f64,
+    /// Shuttle and payload at separation.
+    pub kinetic_j: f64,
+    /// Gained against gravity from hold to separation.
+    pub potential_j: f64,
+    /// The rest: friction both ways, hysteresis and relaxation, drag, motion left in the cords.
+    pub lost_j: f64,
+}
+
+/// Everything one trial says by itself.
+#[derive(Debug, Clone, PartialEq, Serialize)]
+pub struct Reading {
+    pub outcome: Outcome,
+    /// Sentences, each one piece of evidence with its numbers.
+    pub outcome_evidence: Vec<String>,
+    /// In order of time.
+    pub instants: Vec<Instant>,
+    pub results: Vec<ResultRow>,
+    pub absent: Vec<Absent>,
+    /// Disagreements and oddities that a person should look at.
+    pub findings: Vec<String>,
+    pub motion: Option<Motion>,
+    pub energy: Option<EnergyAudit>,
+}
+
+impl Reading {
+    pub fn result(&self, name: &str) -> Option<&ResultRow> {
+        self.results.iter().find(|row| row.name == name)
+    }
+
+    pub fn instant(&self, name: &str) -> Option<&Instant> {
+        self.instants.iter().find(|instant| instant.name == name)
+    }
+
+    pub fn absence(&self, name: &str) -> Option<&Absent> {
+        self.absent.iter().find(|absent| absent.name == name)
+    }
 }
