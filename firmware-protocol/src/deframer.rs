@@ -1,0 +1,77 @@
+//! Cuts a byte stream at the delimiters.
+
+/// A piece of the stream.
+#[derive(Debug, PartialEq, Eq)]
+pub enum Deframed<'a> {
+    /// What stood between two delimiters, for [`crate::decode`].
+    Frame(&'a mut [u8]),
+    /// Part of a run too long to be a frame: as received, one piece after the other until the next delimiter.
+    Junk(&'a [u8]),
+}
+
+/// Cuts a byte stream at the delimiters, in a buffer of the caller's ([`crate::MAX_COBS_LEN`] bytes hold any frame).
+///
+/// Every byte that is not a delimiter is handed out exactly once. After damage it is in step again at the next
+/// delimiter.
+#[derive(Debug)]
+pub struct Deframer<'buf> {
+    buffer: &'buf mut [u8],
+    len: usize,
+    /// The buffer overflowed since the last delimiter.
+    in_junk: bool,
+    /// The buffer's content was handed out.
+    handed_out: bool,
+}
+
+impl<'buf> Deframer<'buf> {
+    /// # Panics
+    /// When `buffer` is empty.
+    pub fn new(buffer: &'buf mut [u8]) -> Self {
+        assert!(!buffer.is_empty(), "a deframer needs a buffer");
+        Self { buffer, len: 0, in_junk: false, handed_out: false }
+    }
+
+    /// Takes bytes off the front of `bytes` until a piece is complete. `None` when `bytes` is used up; call again with
+    /// the next read.
+    pub fn next_piece(&mut self, bytes: &mut &[u8]) -> Option<Deframed<'_>> {
+        if self.handed_out {
+            self.len = 0;
+            self.handed_out = false;
+        }
+        loop {
+            let room = self.buffer.len() - self.len;
+            let window = &bytes[..bytes.len().min(room + 1)];
+            let delimiter = window.iter().position(|&byte| byte == 0);
+            let n_taken = delimiter.unwrap_or(window.len().min(room));
+            self.buffer[self.len..self.len + n_taken].copy_from_slice(&window[..n_taken]);
+            self.len += n_taken;
+            *bytes = &bytes[n_taken + usize::from(delimiter.is_some())..];
+            match delimiter {
+                Some(_) => {
+                    let was_junk = core::mem::take(&mut self.in_junk);
+                    if self.len > 0 {
+                        return Some(self.hand_out(was_junk));
+                    }
+                }
+                None if bytes.is_empty() => return None,
+                None => {
+                    self.in_junk = true;
+                    return Some(self.hand_out(true));
+                }
+            }
+        }
+    }
+
+    /// Hands out what came since the last delimiter, for when no more will come.
+    pub fn take_partial(&mut self) -> &[u8] {
+        let len = if self.handed_out { 0 } else { self.len };
+        (self.len, self.in_junk, self.handed_out) = (0, false, false);
+        &self.buffer[..len]
+    }
+
+    fn hand_out(&mut self, junk: bool) -> Deframed<'_> {
+        self.handed_out = true;
+        let piece = &mut self.buffer[..self.len];
+        if junk { Deframed::Junk(piece) } else { Deframed::Frame(piece) }
+    }
+}
