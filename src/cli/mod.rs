@@ -1,8 +1,65 @@
-//! One file a command: parses, calls the library, prints. Exit codes: 0 done, 1 a check failed, 2 could not run.
+//! The command line. One file a command: parses, calls the library, prints.
+//!
+//! A command's file has `Args` (clap derive) and `run(&Args, &Screen) -> Result<Verdict, Failure>`; it is named once in
+//! [`Command`] and once in [`Command::run`]. Exit codes: 0 done, 1 a check failed, 2 could not run.
 
+mod check;
+mod screen;
+
+use std::error::Error;
 use std::process::ExitCode;
 
+use clap::{Parser, Subcommand};
+
+use screen::Screen;
+
+/// Said wherever a limit is shown.
+const CAUTION: &str = "Tautrail is no safety device: it advises and records. Interlocks, exclusion zones, local codes and \
+                       licensed practice decide.";
+
+/// The crew's instrument for testing rail launchers of small unmanned aircraft.
+#[derive(Debug, Parser)]
+#[command(name = "tautrail", version, about, after_help = CAUTION, arg_required_else_help = true)]
+struct CommandLine {
+    /// Print JSON for programs instead of text for people
+    #[arg(long, global = true)]
+    json: bool,
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    Check(check::Args),
+}
+
+impl Command {
+    fn run(&self, screen: &Screen) -> Result<Verdict, Failure> {
+        match self {
+            Self::Check(args) => check::run(args, screen),
+        }
+    }
+}
+
+/// How a command that could run ended.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Verdict {
+    Done,
+    CheckFailed,
+}
+
+/// Why a command could not run; shown with its causes.
+type Failure = Box<dyn Error>;
+
 pub fn run() -> ExitCode {
-    eprintln!("tautrail: no command is built yet");
-    ExitCode::from(2)
+    let line = CommandLine::parse();
+    let screen = Screen::for_process(line.json);
+    match line.command.run(&screen) {
+        Ok(Verdict::Done) => ExitCode::SUCCESS,
+        Ok(Verdict::CheckFailed) => ExitCode::from(1),
+        Err(failure) => {
+            screen.failure(failure.as_ref());
+            ExitCode::from(2)
+        }
+    }
 }

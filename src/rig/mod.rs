@@ -1,5 +1,20 @@
 //! The rig file: what the crew has built, how it is measured, what is planned. Types, reading, diagnostics.
+//!
+//! A rig file is TOML that people edit. Quantities are texts with a unit ("4.0 m"); [`check`] reports every finding at
+//! once with line, column and key, and hands out a [`Rig`] only when none of them is an error. Only [`load`] touches a
+//! file. No port is ever opened here.
 
+mod channels;
+mod checks;
+mod document;
+mod finding;
+mod read;
+mod resembling;
+mod sections;
+#[cfg(test)]
+mod tests;
 mod types;
 
+pub use finding::{Finding, RigError, Severity};
+pub use read::{Checked, check, load, parse, port_path};
 pub use types::*;

@@ -31,7 +31,10 @@ pub struct Rig {
     pub limits: Limits,
     pub plan: Plan,
     pub devices: Vec<Device>,
+    /// Channels with a calibration: the only ones that become signals.
     pub channels: Vec<Channel>,
+    /// Channels without a calibration: recorded as counts, never shown as a value.
+    pub uncalibrated: Vec<UncalibratedChannel>,
     /// The text as it was read, kept whole in journal and trial file.
     pub text: String,
 }
@@ -155,6 +158,15 @@ pub struct Channel {
     pub device_channel: String,
     pub role: Role,
     pub calibration: Coefficients,
+}
+
+/// A channel that is named in the rig file but has no calibration yet.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct UncalibratedChannel {
+    pub name: String,
+    pub device: String,
+    pub device_channel: String,
+    pub role: Role,
 }
 
 /// What a channel measures.

@@ -1,0 +1,179 @@
+//! `tautrail check RIG`: what is wrong with a rig file and where, what is uncalibrated, which ports are there.
+
+use std::fs;
+use std::io::ErrorKind;
+use std::os::unix::fs::FileTypeExt;
+use std::path::{Path, PathBuf};
+
+use serde_json::{Value, json};
+use tautrail::rig::{self, Checked, Device, Finding, Rig, RigError, Severity};
+
+use super::screen::{Screen, Tone};
+use super::{CAUTION, Failure, Verdict};
+
+/// Read a rig file and say what is wrong and where, what is uncalibrated, which ports are there
+///
+/// No port is opened: opening one resets many small boards.
+#[derive(Debug, clap::Args)]
+#[command(after_help = CHECK_HELP)]
+pub struct Args {
+    /// The rig file (TOML)
+    rig: PathBuf,
+    /// Don't look for the ports: for checking at the desk
+    #[arg(long)]
+    no_ports: bool,
+}
+
+const CHECK_HELP: &str = "\
+Examples:
+  tautrail check north-pier.toml              at the rig, devices plugged in
+  tautrail check --no-ports north-pier.toml   at the desk
+  tautrail check --json north-pier.toml       for programs
+
+Exit code: 0 usable, 1 an error was found or a port is absent, 2 the file can't be read.
+
+Limits in a rig file are for advice and record only. Tautrail is no safety device: interlocks, exclusion zones, local
+codes and licensed practice decide.";
+
+pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
+    let path = args.rig.display().to_string();
+    let text = fs::read_to_string(&args.rig).map_err(|source| RigError::Unreadable { path, source })?;
+    let checked = rig::check(&text);
+    let devices = checked.rig.as_ref().filter(|_| !args.no_ports).map_or(&[][..], |rig| &rig.devices);
+    let ports: Vec<Port<'_>> = devices.iter().map(|device| Port::look(&args.rig, device)).collect();
+    if screen.json {
+        screen.value(&as_json(args, &checked, &ports));
+    } else {
+        print(args, &checked, &ports, screen);
+    }
+    let usable = checked.rig.is_some() && ports.iter().all(|port| port.state.is_present());
+    Ok(if usable { Verdict::Done } else { Verdict::CheckFailed })
+}
+
+/// A device's port as the file system shows it.
+struct Port<'a> {
+    device: &'a str,
+    path: PathBuf,
+    state: PortState,
+}
+
+enum PortState {
+    Present,
+    Absent,
+    NotAPort,
+    Unreachable(String),
+}
+
+impl PortState {
+    fn is_present(&self) -> bool {
+        matches!(self, Self::Present)
+    }
+
+    const fn word(&self) -> &'static str {
+        match self {
+            Self::Present => "ok",
+            Self::Absent => "absent",
+            Self::NotAPort => "wrong",
+            Self::Unreachable(_) => "unknown",
+        }
+    }
+
+    fn sentence(&self) -> String {
+        match self {
+            Self::Present => "is there (not opened)".to_owned(),
+            Self::Absent => "does not exist: is the device plugged in, is the path right?".to_owned(),
+            Self::NotAPort => "is no serial port".to_owned(),
+            Self::Unreachable(why) => format!("can't be looked at: {why}"),
+        }
+    }
+}
+
+impl<'a> Port<'a> {
+    fn look(rig_path: &Path, device: &'a Device) -> Self {
+        let path = rig::port_path(rig_path, &device.port);
+        let state = match fs::metadata(&path) {
+            Ok(metadata) if metadata.file_type().is_char_device() => PortState::Present,
+            Ok(_) => PortState::NotAPort,
+            Err(error) if error.kind() == ErrorKind::NotFound => PortState::Absent,
+            Err(error) => PortState::Unreachable(error.to_string()),
+        };
+        Self { device: &device.name, path, state }
+    }
+}
+
+fn print(args: &Args, checked: &Checked, ports: &[Port<'_>], screen: &Screen) {
+    let path = args.rig.display();
+    for finding in &checked.findings {
+        let Finding { line, column, key, message, severity } = finding;
+        let tone = if *severity == Severity::Error { Tone::Bad } else { Tone::Caution };
+        let key = if key.is_empty() { String::new() } else { format!("{key}: ") };
+        screen.line(format!("{path}:{line}:{column}: {}: {key}{message}", screen.toned(severity.word(), tone)));
+    }
+    let n_errors = checked.findings.iter().filter(|finding| finding.severity == Severity::Error).count();
+    let Some(rig) = &checked.rig else {
+        screen.line(format!("{path}: {n_errors} to put right before this rig can be used"));
+        screen.line(CAUTION);
+        return;
+    };
+    print_rig(rig, screen);
+    for port in ports {
+        let tone = if port.state.is_present() { Tone::Good } else { Tone::Bad };
+        let word = screen.toned(port.state.word(), tone);
+        screen.line(format!("port {word}: {} of {} {}", port.path.display(), port.device, port.state.sentence()));
+    }
+    if args.no_ports {
+        screen.line("ports were not looked for (--no-ports)");
+    }
+    screen.line(CAUTION);
+}
+
+fn print_rig(rig: &Rig, screen: &Screen) {
+    let Rig { name, payload, cords, limits, plan, .. } = rig;
+    screen.line(screen.toned(&format!("rig {name}, payload {}", payload.name), Tone::Heading));
+    screen.line(format!(
+        "  moving mass {:.3} kg and {} cords of {:.3} kg, draw {:.2} m, window {:.1} to {:.1} m/s",
+        rig.moving_mass_kg(),
+        cords.count,
+        cords.mass_kg,
+        plan.draw_m,
+        plan.launch_speed_min_mps,
+        plan.launch_speed_max_mps
+    ));
+    screen.line(format!("  limits, for advice only: {:.0} N, {:.1} g", limits.tension_n, limits.peak_g));
+    for channel in &rig.channels {
+        let (role, unit) = (channel.role.word(), channel.role.unit());
+        screen.line(format!("  channel {}: {role} in {unit}, calibrated", channel.name));
+    }
+    for channel in &rig.uncalibrated {
+        let word = screen.toned("UNCALIBRATED", Tone::Caution);
+        screen.line(format!("  channel {}: {}, {word}: counts only", channel.name, channel.role.word()));
+    }
+}
+
+fn as_json(args: &Args, checked: &Checked, ports: &[Port<'_>]) -> Value {
+    let findings: Vec<Value> = checked
+        .findings
+        .iter()
+        .map(|finding| {
+            json!({
+                "severity": finding.severity.word(), "line": finding.line, "column": finding.column,
+                "key": finding.key, "message": finding.message,
+            })
+        })
+        .collect();
+    let ports: Vec<Value> = ports
+        .iter()
+        .map(|port| {
+            json!({
+                "device": port.device, "path": port.path, "present": port.state.is_present(),
+                "state": port.state.sentence(),
+            })
+        })
+        .collect();
+    let names = |rig: &Rig| rig.uncalibrated.iter().map(|channel| channel.name.clone()).collect::<Vec<_>>();
+    json!({
+        "rig_file": args.rig, "usable": checked.rig.is_some(), "rig": checked.rig.as_ref().map(|rig| &rig.name),
+        "findings": findings, "uncalibrated": checked.rig.as_ref().map(names).unwrap_or_default(),
+        "ports_looked_for": checked.rig.is_some() && !args.no_ports, "ports": ports, "caution": CAUTION,
+    })
+}

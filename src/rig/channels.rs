@@ -1,0 +1,125 @@
+//! Devices and channels of a rig file, and what ties them together.
+
+use super::document::{Findings, Section};
+use super::resembling::advice;
+use super::sections::coefficients;
+use super::{Channel, Coefficients, Device, Protocol, Role, UncalibratedChannel};
+
+/// Channels as they were read, with and without calibration.
+#[derive(Default)]
+pub(super) struct Channels {
+    pub(super) calibrated: Vec<Channel>,
+    pub(super) uncalibrated: Vec<UncalibratedChannel>,
+}
+
+pub(super) fn devices(root: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<Device> {
+    let mut devices: Vec<Device> = Vec::new();
+    for (index, mut entry) in root.sections(findings, "device").into_iter().enumerate() {
+        let key = entry.key("name");
+        let device = device(&mut entry, findings);
+        if let Some(earlier) = devices.iter().position(|other| !device.name.is_empty() && other.name == device.name) {
+            findings.error(&key, format!("{:?} is already the name of device[{earlier}]", device.name));
+        }
+        if let Some(earlier) = devices.iter().position(|other| !device.port.is_empty() && other.port == device.port) {
+            let message =
+                format!("{:?} is already the port of device[{earlier}], a port serves one device", device.port);
+            findings.error(&format!("device[{index}].port"), message);
+        }
+        entry.finish(findings);
+        devices.push(device);
+    }
+    devices
+}
+
+fn device(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Device {
+    let name = plain_name(entry, findings);
+    let port = entry.text(findings, "port");
+    if port.starts_with("/dev/ttyUSB") || port.starts_with("/dev/ttyACM") {
+        let key = entry.key("port");
+        findings.caution(
+            &key,
+            format!("{port} may name another device after a replug, prefer its link under /dev/serial/by-id/"),
+        );
+    }
+    let baud = entry.number(findings, "baud", 300.0..=12_000_000.0) as u32;
+    let key = entry.key("protocol");
+    let protocol = entry.text(findings, "protocol");
+    if !protocol.is_empty() && protocol != "frames" {
+        findings.error(&key, format!("{protocol:?} is not known, known: \"frames\""));
+    }
+    Device { name, port, baud, protocol: Protocol::Frames }
+}
+
+/// A name that can stand in file paths and on screens.
+pub(super) fn plain_name(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> String {
+    let key = entry.key("name");
+    let name = entry.text(findings, "name");
+    let plain = |c: char| c.is_ascii_alphanumeric() || matches!(c, '-' | '_');
+    if !name.chars().all(plain) || name.len() > 40 {
+        findings.error(&key, format!("{name:?} must be letters, digits, \"-\" or \"_\", at most 40 of them"));
+    }
+    name
+}
+
+pub(super) fn channels(root: &mut Section<'_, '_>, findings: &mut Findings<'_>, devices: &[Device]) -> Channels {
+    let mut channels = Channels::default();
+    let mut names: Vec<String> = Vec::new();
+    for (index, mut entry) in root.sections(findings, "channel").into_iter().enumerate() {
+        let name = plain_name(&mut entry, findings);
+        if let Some(earlier) = names.iter().position(|other| !name.is_empty() && *other == name) {
+            findings.error(&entry.key("name"), format!("{name:?} is already the name of channel[{earlier}]"));
+        }
+        names.push(name.clone());
+        let device = known_device(&mut entry, findings, devices);
+        let device_channel = entry.text(findings, "device_channel");
+        let role = role(&mut entry, findings);
+        let calibration = entry.optional_section(findings, "calibration");
+        if let Some(role) = role {
+            match calibration.map(|table| calibration_of(table, findings, role)) {
+                Some(calibration) => {
+                    channels.calibrated.push(Channel { name, device, device_channel, role, calibration });
+                }
+                None => {
+                    let message = "has no calibration: recorded as counts, never shown as a value";
+                    findings.caution(&format!("channel[{index}]"), message);
+                    channels.uncalibrated.push(UncalibratedChannel { name, device, device_channel, role });
+                }
+            }
+        }
+        entry.finish(findings);
+    }
+    channels
+}
+
+fn known_device(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>, devices: &[Device]) -> String {
+    let name = entry.text(findings, "device");
+    if !name.is_empty() && !devices.iter().any(|device| device.name == name) {
+        let advice = advice(&name, devices.iter().map(|device| device.name.as_str()));
+        findings.error(&entry.key("device"), format!("there is no device {name:?} in this rig file{advice}"));
+    }
+    name
+}
+
+fn role(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Option<Role> {
+    let word = entry.text(findings, "role");
+    let role = Role::ALL.into_iter().find(|role| role.word() == word);
+    if role.is_none() && !word.is_empty() {
+        let known = Role::ALL.map(Role::word);
+        let advice = advice(&word, known.into_iter());
+        let known = known.join(", ");
+        findings.error(&entry.key("role"), format!("{word:?} is not a role{advice} (roles: {known})"));
+    }
+    role
+}
+
+fn calibration_of(mut table: Section<'_, '_>, findings: &mut Findings<'_>, role: Role) -> Coefficients {
+    let unit = role.unit();
+    let coefficients = Coefficients {
+        zero_counts: table.number(findings, "zero_counts", -2_147_483_648.0..=2_147_483_647.0),
+        coefficients: coefficients(&mut table, findings, unit),
+        zero_uncertainty: table.quantity(findings, "zero_uncertainty", unit, 0.0..=1e6),
+        scale_relative_uncertainty: table.quantity(findings, "scale_uncertainty", "%", 0.0..=50.0),
+    };
+    table.finish(findings);
+    coefficients
+}

@@ -1,0 +1,93 @@
+//! Text to [`Rig`], with all findings at once.
+
+use std::path::{Path, PathBuf};
+
+use toml::de::DeTable;
+
+use super::document::{Findings, Section, start_of};
+use super::finding::{Finding, RigError, Severity};
+use super::{Rig, channels, checks, sections};
+
+/// What a rig file's text amounts to.
+#[derive(Debug, Clone)]
+pub struct Checked {
+    /// Absent while there is an error among the findings.
+    pub rig: Option<Rig>,
+    /// Errors and cautions, in the order of the text.
+    pub findings: Vec<Finding>,
+}
+
+/// Reads a rig file's text and reports every finding. Pure.
+///
+/// Syntax errors come alone: what the rest of such a text means can't be told.
+pub fn check(text: &str) -> Checked {
+    let mut findings = Findings::of(text);
+    let (document, syntax_errors) = DeTable::parse_recoverable(text);
+    for error in &syntax_errors {
+        findings.at(start_of(error.span()), Severity::Error, "", error.message().replace('\n', ", "));
+    }
+    if !syntax_errors.is_empty() {
+        return Checked { rig: None, findings: findings.in_order() };
+    }
+    let rig = whole(text, Section::root(&document), &mut findings);
+    let findings = findings.in_order();
+    let usable = findings.iter().all(|finding| finding.severity != Severity::Error);
+    Checked { rig: usable.then_some(rig), findings }
+}
+
+fn whole(text: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Rig {
+    let name = channels::plain_name(&mut root, findings);
+    let [site, rail, shuttle, payload, cords, losses, limits, plan] =
+        ["site", "rail", "shuttle", "payload", "cords", "losses", "limits", "plan"]
+            .map(|key| root.section(findings, key));
+    let devices = channels::devices(&mut root, findings);
+    let channels = channels::channels(&mut root, findings, &devices);
+    checks::channels(&channels, &devices, findings);
+    let rig = Rig {
+        name,
+        site: sections::site(site, findings),
+        rail: sections::rail(rail, findings),
+        shuttle: sections::shuttle(shuttle, findings),
+        payload: sections::payload(payload, findings),
+        cords: sections::cords(cords, findings),
+        losses: sections::losses(losses, findings),
+        limits: sections::limits(limits, findings),
+        plan: sections::plan(plan, findings),
+        devices,
+        channels: channels.calibrated,
+        uncalibrated: channels.uncalibrated,
+        text: text.to_owned(),
+    };
+    checks::rig(&rig, findings);
+    root.finish(findings);
+    rig
+}
+
+/// The rig of a text. Port paths stay as written. Pure.
+///
+/// # Errors
+/// [`RigError::Refused`] with all findings when one of them is an error.
+pub fn parse(text: &str) -> Result<Rig, RigError> {
+    let Checked { rig, findings } = check(text);
+    rig.ok_or(RigError::Refused { path: String::new(), findings })
+}
+
+/// The rig of a file. A relative port path is taken from the rig file's folder.
+///
+/// # Errors
+/// [`RigError`]: the file can't be read, or what it says is refused.
+pub fn load(path: &Path) -> Result<Rig, RigError> {
+    let shown = path.display().to_string();
+    let text = std::fs::read_to_string(path).map_err(|source| RigError::Unreadable { path: shown.clone(), source })?;
+    let Checked { rig, findings } = check(&text);
+    let mut rig = rig.ok_or(RigError::Refused { path: shown, findings })?;
+    for device in &mut rig.devices {
+        device.port = port_path(path, &device.port).display().to_string();
+    }
+    Ok(rig)
+}
+
+/// Where a port path of the rig file at `rig_path` points.
+pub fn port_path(rig_path: &Path, port: &str) -> PathBuf {
+    rig_path.parent().map_or_else(|| PathBuf::from(port), |folder| folder.join(port))
+}
