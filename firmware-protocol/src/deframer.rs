@@ -9,13 +9,14 @@ pub enum Deframed<'a> {
     Junk(&'a [u8]),
 }
 
-/// Cuts a byte stream at the delimiters, in a buffer of the caller's ([`crate::MAX_COBS_LEN`] bytes hold any frame).
+/// Cuts a byte stream at the delimiters, in a buffer of the caller's: a slice or an array, borrowed or owned
+/// ([`crate::MAX_COBS_LEN`] bytes hold any frame).
 ///
 /// Every byte that is not a delimiter is handed out exactly once. After damage it is in step again at the next
 /// delimiter.
 #[derive(Debug)]
-pub struct Deframer<'buf> {
-    buffer: &'buf mut [u8],
+pub struct Deframer<B> {
+    buffer: B,
     len: usize,
     /// The buffer overflowed since the last delimiter.
     in_junk: bool,
@@ -23,11 +24,11 @@ pub struct Deframer<'buf> {
     handed_out: bool,
 }
 
-impl<'buf> Deframer<'buf> {
+impl<B: AsRef<[u8]> + AsMut<[u8]>> Deframer<B> {
     /// # Panics
     /// When `buffer` is empty.
-    pub fn new(buffer: &'buf mut [u8]) -> Self {
-        assert!(!buffer.is_empty(), "a deframer needs a buffer");
+    pub fn new(buffer: B) -> Self {
+        assert!(!buffer.as_ref().is_empty(), "a deframer needs a buffer");
         Self { buffer, len: 0, in_junk: false, handed_out: false }
     }
 
@@ -39,11 +40,11 @@ impl<'buf> Deframer<'buf> {
             self.handed_out = false;
         }
         loop {
-            let room = self.buffer.len() - self.len;
+            let room = self.buffer.as_ref().len() - self.len;
             let window = &bytes[..bytes.len().min(room + 1)];
             let delimiter = window.iter().position(|&byte| byte == 0);
             let n_taken = delimiter.unwrap_or(window.len().min(room));
-            self.buffer[self.len..self.len + n_taken].copy_from_slice(&window[..n_taken]);
+            self.buffer.as_mut()[self.len..self.len + n_taken].copy_from_slice(&window[..n_taken]);
             self.len += n_taken;
             *bytes = &bytes[n_taken + usize::from(delimiter.is_some())..];
             match delimiter {
@@ -66,12 +67,12 @@ impl<'buf> Deframer<'buf> {
     pub fn take_partial(&mut self) -> &[u8] {
         let len = if self.handed_out { 0 } else { self.len };
         (self.len, self.in_junk, self.handed_out) = (0, false, false);
-        &self.buffer[..len]
+        &self.buffer.as_ref()[..len]
     }
 
     fn hand_out(&mut self, junk: bool) -> Deframed<'_> {
         self.handed_out = true;
-        let piece = &mut self.buffer[..self.len];
+        let piece = &mut self.buffer.as_mut()[..self.len];
         if junk { Deframed::Junk(piece) } else { Deframed::Frame(piece) }
     }
 }

@@ -1,0 +1,53 @@
+//! A received description, owned; refused where samples could not be unpacked by it.
+
+use firmware_protocol::{Channel, Describe, Header, Stream};
+
+use super::sample::{ChannelDescription, DeviceDescription, Encoding, StreamDescription};
+
+/// The description in SI units, or why it is of no use.
+pub(super) fn owned(header: &Header, describe: &Describe<'_>) -> Result<DeviceDescription, &'static str> {
+    let streams: Vec<_> = describe.streams.iter().map(|stream| owned_stream(&stream)).collect();
+    for (at, stream) in streams.iter().enumerate() {
+        if stream.stream == firmware_protocol::CONTROL_STREAM {
+            return Err("description gives samples to the control stream");
+        }
+        if streams[..at].iter().any(|earlier| earlier.stream == stream.stream) {
+            return Err("description names a stream twice");
+        }
+    }
+    Ok(DeviceDescription {
+        device_id: describe.device_id,
+        name: describe.name.to_owned(),
+        firmware: describe.firmware.to_owned(),
+        tick_rate_hz: describe.tick_rate_hz,
+        tick_tolerance_ppm: describe.tick_tolerance_ppm.into(),
+        boot_id: header.boot_id,
+        description_id: header.description_id,
+        streams,
+    })
+}
+
+fn owned_stream(stream: &Stream<'_>) -> StreamDescription {
+    StreamDescription {
+        stream: stream.id,
+        ticks_per_sample: stream.ticks_per_sample,
+        channels: stream.channels.iter().map(|channel| owned_channel(&channel)).collect(),
+    }
+}
+
+fn owned_channel(channel: &Channel<'_>) -> ChannelDescription {
+    ChannelDescription {
+        name: channel.name.to_owned(),
+        quantity: channel.quantity.to_owned(),
+        encoding: match channel.encoding {
+            firmware_protocol::Encoding::I16 => Encoding::I16,
+            firmware_protocol::Encoding::I24 => Encoding::I24,
+            firmware_protocol::Encoding::I32 => Encoding::I32,
+            firmware_protocol::Encoding::F32 => Encoding::F32,
+        },
+        nominal_min: channel.nominal_min,
+        nominal_max: channel.nominal_max,
+        group_delay_s: channel.group_delay_s.into(),
+        bandwidth_hz: channel.bandwidth_hz.map(f64::from),
+    }
+}
