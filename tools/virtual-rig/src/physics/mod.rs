@@ -1,0 +1,8 @@
+//! The rig's own physics. Shares nothing with Tautrail's launch model, on purpose.
+
+pub mod cord;
+pub mod launch;
+pub mod rubber;
+pub mod stroke;
+pub mod trajectory;
+pub mod winch;
