@@ -112,8 +112,8 @@ impl Launcher {
     }
 }
 
-/// Cross-section of one north-pier cord (13.0 mm round).
-pub const NOMINAL_CORD_SECTION_M2: f64 = 132.7e-6;
+/// Cross-section of one north-pier cord (13.4 mm round).
+pub const NOMINAL_CORD_SECTION_M2: f64 = 140.0e-6;
 pub const NOMINAL_CORD_FREE_LENGTH_M: f64 = 2.7;
 pub const NOMINAL_CORD_COUNT: f64 = 6.0;
 const N_CHAIN_MASSES: usize = 48;
@@ -127,7 +127,7 @@ pub fn nominal_cord() -> CordKind {
         law,
         hysteresis: 0.06,
         turn_stretch: 0.08,
-        relaxation: [(0.008, 2.0), (0.015, 25.0)],
+        relaxation: [(0.015, 2.0), (0.025, 25.0)],
         damping_n_s: 0.08,
         n_masses: N_CHAIN_MASSES,
     }
@@ -141,12 +141,7 @@ pub fn north_pier() -> Launcher {
         air_density_kg_per_m3: 1.225,
         head_wind_mps: 0.0,
         zero_mark_x_m: 4.0,
-        shuttle: Shuttle {
-            mass_kg: 2.4,
-            drag_area_m2: 0.02,
-            friction_running_n: 12.0,
-            friction_static_n: 15.0,
-        },
+        shuttle: Shuttle { mass_kg: 2.4, drag_area_m2: 0.02, friction_running_n: 12.0, friction_static_n: 15.0 },
         payload: Payload { mass_kg: 6.2, drag_area_m2: 0.050 },
         cords: vec![CordGroup { count: NOMINAL_CORD_COUNT, kind: nominal_cord() }],
         rail: RailBody { mass_kg: 160.0, stiffness_n_per_m: 2.5e6, damping_n_s_per_m: 4.0e3 },

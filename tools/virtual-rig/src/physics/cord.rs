@@ -54,8 +54,8 @@ impl CordKind {
         let elastic_n = self.law.force_n(stretch);
         let relaxed_n: f64 =
             self.relaxation.iter().zip(&memory.delayed_n).map(|(&(weight, _), delayed_n)| weight * delayed_n).sum();
-        let tension_n = elastic_n * (1.0 - self.hysteresis * memory.unloading) - relaxed_n
-            + self.damping_n_s * stretch_rate_per_s;
+        let tension_n =
+            elastic_n * (1.0 - self.hysteresis * memory.unloading) - relaxed_n + self.damping_n_s * stretch_rate_per_s;
         (tension_n.max(0.0), elastic_n)
     }
 

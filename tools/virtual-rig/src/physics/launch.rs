@@ -130,12 +130,8 @@ impl<'a> Runner<'a> {
         let n = y.len();
         let zeros = || vec![0.0; n];
         let before = Split::of(system, &y);
-        let mode = Mode {
-            grip: Grip::Stuck,
-            joined: system.with_payload,
-            opening_t_s: held.t_s,
-            hold_line_n: held.line_n,
-        };
+        let mode =
+            Mode { grip: Grip::Stuck, joined: system.with_payload, opening_t_s: held.t_s, hold_line_n: held.line_n };
         let mut runner = Self {
             system,
             scratch: Scratch { slopes: [zeros(), zeros(), zeros(), zeros()], stage: zeros() },
@@ -196,19 +192,18 @@ impl<'a> Runner<'a> {
     /// Runge-Kutta step of `step_s` from `y` into `next`.
     fn advance(&mut self, step_s: f64) {
         let Scratch { slopes, stage } = &mut self.scratch;
-        let parts = [0.0, 0.5, 0.5, 1.0];
-        for idx in 0..4 {
+        for (idx, part) in [0.0, 0.5, 0.5, 1.0].into_iter().enumerate() {
             let (done, rest) = slopes.split_at_mut(idx);
             match done.last() {
                 None => stage.copy_from_slice(&self.y),
                 Some(slope) => {
                     for ((value, start), slope) in stage.iter_mut().zip(&self.y).zip(slope) {
-                        *value = start + parts[idx] * step_s * slope;
+                        *value = start + part * step_s * slope;
                     }
                 }
             }
             if let Some(slope) = rest.first_mut() {
-                self.system.derivative(self.t_s + parts[idx] * step_s, stage, &self.mode, slope);
+                self.system.derivative(self.t_s + part * step_s, stage, &self.mode, slope);
             }
         }
         let [k1, k2, k3, k4] = slopes;
@@ -299,7 +294,8 @@ impl<'a> Runner<'a> {
     fn watch_marks(&mut self, forces: &Forces) {
         let x_m = self.y[at::SHUTTLE_X] - self.y[at::RAIL_X];
         let brake = &self.system.launcher.brake;
-        if forces.cords_n <= 0.0 && x_m > 0.5 * self.system.launcher.zero_mark_x_m && !self.seen(Happening::CordsSlack) {
+        if forces.cords_n <= 0.0 && x_m > 0.5 * self.system.launcher.zero_mark_x_m && !self.seen(Happening::CordsSlack)
+        {
             self.note(Happening::CordsSlack);
         }
         if x_m >= brake.x_m && !self.seen(Happening::BrakeReached) {

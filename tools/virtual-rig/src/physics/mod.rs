@@ -1,5 +1,6 @@
 //! The rig's own physics. Shares nothing with Tautrail's launch model, on purpose.
 
+pub mod bench;
 pub mod cord;
 pub mod launch;
 pub mod rubber;

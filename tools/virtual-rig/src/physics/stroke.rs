@@ -179,7 +179,11 @@ impl System<'_> {
         let pushed_kg = if mode.joined { payload_kg } else { 0.0 };
         let moved_kg = shuttle_kg + pushed_kg;
         let damper_n = self.damper_n(x_m, v_mps);
-        let push_n = forces.cords_n - forces.line_n - drag.shuttle_n - damper_n - moved_kg * along_mps2
+        let push_n = forces.cords_n
+            - forces.line_n
+            - drag.shuttle_n
+            - damper_n
+            - moved_kg * along_mps2
             - if mode.joined { drag.payload_n } else { 0.0 };
         let rail_spring_n = rail.stiffness_n_per_m * y[at::RAIL_X] + rail.damping_n_s_per_m * y[at::RAIL_V];
         let rail_push_n = forces.line_n - forces.anchor_n + damper_n - rail_spring_n - self.rail_rest_n;
@@ -206,7 +210,8 @@ impl System<'_> {
         dy[at::RAIL_X] = y[at::RAIL_V];
         dy[at::RAIL_V] = forces.rail_a_mps2;
         dy[at::LINE] = forces.line_n * v_mps;
-        let running_share = launcher.shuttle.friction_running_n / (launcher.shuttle.friction_running_n + pad_n).max(1e-12);
+        let running_share =
+            launcher.shuttle.friction_running_n / (launcher.shuttle.friction_running_n + pad_n).max(1e-12);
         dy[at::FRICTION] = -friction_n * v_mps * running_share;
         dy[at::BRAKE] = -friction_n * v_mps * (1.0 - running_share) + damper_n * v_mps;
         dy[at::SHUTTLE_DRAG] = drag.shuttle_n * y[at::SHUTTLE_V];
