@@ -167,6 +167,18 @@ impl Body {
             Self::Unknown { kind, payload } => (*kind, payload.clone()),
         }
     }
+
+    /// True for what must reach the disk at once.
+    pub(super) fn is_urgent(&self) -> bool {
+        matches!(
+            self,
+            Self::TrialOpen(_)
+                | Self::TrialClose(_)
+                | Self::Event(_)
+                | Self::Lost(_)
+                | Self::Link(LinkWhat::Up { .. } | LinkWhat::Down { .. })
+        )
+    }
 }
 
 impl Record {

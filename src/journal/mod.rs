@@ -5,16 +5,28 @@
 //! again, to hold more in memory than its bounds, to decode samples. FORMAT.md is the format.
 
 mod body;
+mod describes;
 mod disk;
 mod frame;
+mod health;
+mod job;
+mod lock;
 mod reader;
+mod retention;
+mod staged;
+mod writer;
 
 pub use body::{
     Body, Clocks, DeviceAtOpen, EventBody, FORMAT_VERSION, Lost, Record, SegmentOpen, TrialClose, TrialOpen,
 };
 pub use disk::{AppendFile, Disk, Listed, RealDisk};
 pub use frame::MAX_PAYLOAD_BYTES;
+pub use health::Health;
+pub use job::{Job, Outcome, Reserved};
+pub use lock::{ArchiveLock, LockError};
 pub use reader::{
     Damage, Item, JournalReader, ReadError, Records, SegmentInfo, Survey, TrialRange, journals, parse_segment_name,
     segment_name,
 };
+pub use staged::{Fault, Operation, StagedDisk};
+pub use writer::{Journal, Origin, Settings, Start, StartError};

@@ -1,0 +1,584 @@
+//! Writes the journal: appends at once, rolls segments, says what to sync, gives up a segment whose disk failed.
+//!
+//! Has no thread and no clock: the caller passes the time and runs the [`Job`]s it is handed, on a thread of its own
+//! or, in a sweep, inline. Everything since the last good sync is also held in memory, within a bound, so that a
+//! segment given up is repeated in the next one. A sync that failed is never tried again.
+
+use std::collections::VecDeque;
+use std::io;
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+
+use crate::link::{DeviceIdx, LinkWhat};
+
+use super::body::{Body, FORMAT_VERSION, Record, SegmentOpen};
+use super::describes::DescribeKeeper;
+use super::disk::{AppendFile, Disk};
+use super::frame;
+use super::health::{Health, Loss};
+use super::job::{Job, Outcome, Reserved, make};
+use super::reader::{SegmentInfo, segment_name};
+use super::retention::Retention;
+use super::{DeviceAtOpen, Lost};
+
+/// Sizes and times of a journal.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Settings {
+    /// A segment is rolled when it holds this much, or
+    pub segment_bytes: u64,
+    /// when it has been open this long.
+    pub segment_ns: i64,
+    /// Kept free in every segment for closing records and events.
+    pub reserve_bytes: u64,
+    /// Between two syncs while data flow.
+    pub sync_every_ns: i64,
+    /// Most that is held in memory while the disk takes nothing.
+    pub tail_bytes_max: usize,
+    /// All segments together; beyond it the oldest that no trial needs is removed.
+    pub budget_bytes: u64,
+}
+
+impl Default for Settings {
+    fn default() -> Self {
+        Self {
+            segment_bytes: 32 << 20,
+            segment_ns: 60_000_000_000,
+            reserve_bytes: 256 << 10,
+            sync_every_ns: 50_000_000,
+            tail_bytes_max: 16 << 20,
+            budget_bytes: 1 << 30,
+        }
+    }
+}
+
+/// What every segment's opening repeats.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Origin {
+    pub journal_id: String,
+    pub program_version: String,
+    pub kernel_boot_id: String,
+    pub rig_text: String,
+    /// With the describe frames an earlier segment knew, if any.
+    pub devices: Vec<DeviceAtOpen>,
+}
+
+/// Where a journal goes on.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Start {
+    pub segment: u32,
+    pub seq: u64,
+    pub open_trial: Option<String>,
+    /// Why the segment before ended without being finished, if it did.
+    pub previous_given_up: Option<String>,
+}
+
+impl Start {
+    /// Of a journal that begins.
+    pub fn fresh() -> Self {
+        Self { segment: 1, seq: 1, open_trial: None, previous_given_up: None }
+    }
+}
+
+#[derive(Debug, thiserror::Error)]
+#[error("cannot start the journal in {dir}: {source}; give a directory on a disk with room that this user may write")]
+pub struct StartError {
+    pub dir: PathBuf,
+    pub source: io::Error,
+}
+
+/// A journal being written.
+#[derive(Debug)]
+pub struct Journal {
+    disk: Arc<dyn Disk>,
+    dir: PathBuf,
+    settings: Settings,
+    origin: Origin,
+    describes: Vec<DescribeKeeper>,
+    open_trial: Option<String>,
+    next_seq: u64,
+    next_number: u32,
+    segment: Option<Segment>,
+    ahead: Option<Ahead>,
+    /// Encoded records since the last good sync; the last `n_unwritten` bytes are not with the kernel yet.
+    tail: Vec<u8>,
+    n_unwritten: usize,
+    /// Segments with unsynced bytes, in the order of the tail.
+    dirty: VecDeque<Dirty>,
+    job_in_flight: bool,
+    /// The sync in flight is of a segment given up meanwhile: its outcome says nothing any more.
+    sync_is_void: bool,
+    last_sync_ns: i64,
+    urgent: bool,
+    /// Not before this time is a new segment tried after one could not be made.
+    retry_ns: i64,
+    given_up: Option<String>,
+    recent: VecDeque<(i64, u64)>,
+    losses: Vec<Loss>,
+    pub(super) retention: Retention,
+    health: Health,
+    notices: Vec<String>,
+}
+
+#[derive(Debug)]
+struct Segment {
+    path: PathBuf,
+    file: Arc<dyn AppendFile>,
+    n_bytes: u64,
+    opened_ns: i64,
+}
+
+#[derive(Debug)]
+struct Ahead {
+    number: u32,
+    path: PathBuf,
+    file: Arc<dyn AppendFile>,
+}
+
+#[derive(Debug)]
+struct Dirty {
+    file: Arc<dyn AppendFile>,
+    /// The directory, until the file's name is synced.
+    new_in: Option<PathBuf>,
+    n_bytes: usize,
+    oldest_ns: i64,
+    finished: bool,
+}
+
+/// How far back a trial may be opened.
+const RECENT_NS: i64 = 60_000_000_000;
+const RECENT_STEP_NS: i64 = 5_000_000;
+const RETRY_OPEN_NS: i64 = 50_000_000;
+const RETRY_AHEAD_NS: i64 = 500_000_000;
+const WRITE_ATTEMPTS: usize = 3;
+
+impl Journal {
+    /// Opens the first segment, synced with its name before this returns.
+    ///
+    /// # Errors
+    /// When the directory or the segment cannot be made.
+    pub fn begin(
+        disk: Arc<dyn Disk>,
+        dir: &Path,
+        origin: Origin,
+        start: Start,
+        settings: Settings,
+        now_ns: i64,
+    ) -> Result<Self, StartError> {
+        let failed = |source| StartError { dir: dir.to_owned(), source };
+        disk.create_dir(dir).map_err(failed)?;
+        let keep = |device: &DeviceAtOpen| DescribeKeeper::resuming(device.describe().unwrap_or_default());
+        let mut journal = Self {
+            dir: dir.to_owned(),
+            settings,
+            describes: origin.devices.iter().map(keep).collect(),
+            losses: origin.devices.iter().map(|_| Loss::default()).collect(),
+            origin,
+            open_trial: start.open_trial,
+            next_seq: start.seq,
+            next_number: start.segment,
+            segment: None,
+            ahead: None,
+            tail: Vec::new(),
+            n_unwritten: 0,
+            dirty: VecDeque::new(),
+            job_in_flight: false,
+            sync_is_void: false,
+            last_sync_ns: now_ns,
+            urgent: true,
+            retry_ns: now_ns,
+            given_up: start.previous_given_up,
+            recent: VecDeque::new(),
+            retention: Retention::default(),
+            health: Health::default(),
+            notices: Vec::new(),
+            disk,
+        };
+        journal.open_segment(now_ns).map_err(failed)?;
+        journal.disk.sync_dir(dir).map_err(failed)?;
+        Ok(journal)
+    }
+
+    pub fn journal_id(&self) -> &str {
+        &self.origin.journal_id
+    }
+
+    /// Takes one record. It goes to the kernel at the next [`Self::commit`], which callers do at once after draining
+    /// what is waiting. What cannot be taken is counted, and told in a `lost` record as soon as there is room.
+    pub fn append(&mut self, host_ns: i64, device: DeviceIdx, body: &Body) -> Option<u64> {
+        self.watch(device, body);
+        if !self.has_room_for(body) {
+            self.count_lost(host_ns, device, body);
+            return None;
+        }
+        self.tell_losses();
+        Some(self.put(host_ns, device, body))
+    }
+
+    /// Hands what was appended to the kernel, rolling the segment when it is due.
+    pub fn commit(&mut self, now_ns: i64) {
+        if self.n_unwritten == 0 {
+            return;
+        }
+        if self.is_full(now_ns) && self.ahead.is_some() {
+            self.finish_segment();
+        }
+        if self.segment.is_none() && self.ahead.is_none() && now_ns < self.retry_ns {
+            return; // the tail waits in memory
+        }
+        for _ in 0..WRITE_ATTEMPTS {
+            match self.write_tail(now_ns) {
+                Ok(()) => return,
+                Err(error) => self.give_up(&format!("writing failed: {error}")),
+            }
+        }
+        self.retry_ns = now_ns + RETRY_OPEN_NS;
+    }
+
+    /// The next piece of disk work, if one is due; its outcome goes to [`Self::job_done`]. One at a time.
+    pub fn next_job(&mut self, now_ns: i64) -> Option<Job> {
+        if self.job_in_flight {
+            return None;
+        }
+        let job = self.sync_job(now_ns).or_else(|| self.prepare_job(now_ns)).or_else(|| self.retention.job());
+        self.job_in_flight = job.is_some();
+        job
+    }
+
+    pub fn job_done(&mut self, outcome: Outcome, now_ns: i64) {
+        self.job_in_flight = false;
+        let is_void = std::mem::take(&mut self.sync_is_void);
+        match outcome {
+            Outcome::Synced { .. } | Outcome::SyncFailed { .. } if is_void => {}
+            Outcome::Synced { n_bytes } => self.synced(n_bytes, now_ns),
+            Outcome::SyncFailed { error } => {
+                self.give_up(&format!("syncing failed: {error}"));
+                self.last_sync_ns = now_ns;
+                self.commit(now_ns);
+            }
+            Outcome::Prepared { number, path, file, reserved } => {
+                self.health.reserve_possible = reserved == Reserved::Yes;
+                self.health.trouble = None;
+                self.ahead = Some(Ahead { number, path, file });
+            }
+            Outcome::PrepareFailed { path, error } => {
+                self.trouble(format!("cannot make the next segment {}: {error}", path.display()));
+                self.retry_ns = now_ns + RETRY_AHEAD_NS;
+            }
+            Outcome::Removed { failed } => {
+                for (path, error) in failed {
+                    self.notices.push(format!("cannot remove {}: {error}", path.display()));
+                }
+            }
+        }
+    }
+
+    /// The newest record at or before `host_ns`, as far back as is known: where a pre-roll begins.
+    pub fn seq_at(&self, host_ns: i64) -> (u64, i64) {
+        let index = self.recent.partition_point(|&(at_ns, _)| at_ns <= host_ns);
+        let found = self.recent.get(index.saturating_sub(1));
+        found.map_or((self.next_seq, host_ns), |&(at_ns, seq)| (seq, at_ns))
+    }
+
+    pub fn next_seq(&self) -> u64 {
+        self.next_seq
+    }
+
+    /// The trial under way as segments' openings name it.
+    pub fn set_open_trial(&mut self, trial_id: Option<String>) {
+        self.open_trial = trial_id;
+    }
+
+    /// True while ordinary records find no room: the disk is full or gone.
+    pub fn is_refusing(&self) -> bool {
+        !self.has_room_for(&Body::Heartbeat)
+    }
+
+    /// True when everything appended is durable.
+    pub fn is_clean(&self) -> bool {
+        self.tail.is_empty() && !self.job_in_flight
+    }
+
+    /// Asks for a sync without waiting for the interval.
+    pub fn sync_soon(&mut self) {
+        self.urgent = true;
+    }
+
+    pub fn health(&mut self, now_ns: i64) -> Health {
+        self.health.own_bytes = self.segment.as_ref().map_or(0, |segment| segment.n_bytes) + self.retention.n_bytes();
+        self.health.lost_events = self.losses.iter().map(|loss| loss.n_events_ever).sum();
+        self.health.forget_old(now_ns);
+        self.health.clone()
+    }
+
+    /// Sentences about the journal itself since the last call, for the event log and the feed.
+    pub fn take_notices(&mut self) -> Vec<String> {
+        std::mem::take(&mut self.notices)
+    }
+
+    /// Takes charge of a finished segment of an earlier run: of this journal, with the number after its last record,
+    /// or of an older journal in which no trial waits for sealing.
+    pub fn adopt(&mut self, segment: &SegmentInfo, end_seq: u64) {
+        let end_seq = (segment.open.journal_id == self.origin.journal_id).then_some(end_seq);
+        self.retention.adopt(segment.path.clone(), segment.bytes, end_seq);
+    }
+
+    /// Lets go of the oldest segments that no trial from `pinned_from_seq` on needs, down to the budget.
+    pub fn release(&mut self, pinned_from_seq: Option<u64>) {
+        let own_bytes = self.segment.as_ref().map_or(0, |segment| segment.n_bytes);
+        self.retention.release(pinned_from_seq, self.settings.budget_bytes.saturating_sub(own_bytes));
+    }
+
+    fn put(&mut self, host_ns: i64, device: DeviceIdx, body: &Body) -> u64 {
+        let seq = self.next_seq;
+        self.next_seq += 1;
+        let before = self.tail.len();
+        frame_into(&mut self.tail, seq, host_ns, device, body);
+        self.n_unwritten += self.tail.len() - before;
+        self.urgent |= body.is_urgent();
+        if self.recent.back().is_none_or(|&(last_ns, _)| host_ns >= last_ns + RECENT_STEP_NS) {
+            self.recent.push_back((host_ns, seq));
+            while self.recent.front().is_some_and(|&(first_ns, _)| first_ns < host_ns - RECENT_NS) {
+                self.recent.pop_front();
+            }
+        }
+        seq
+    }
+
+    fn watch(&mut self, device: DeviceIdx, body: &Body) {
+        let Some(describe) = self.describes.get_mut(usize::from(device.0)) else { return };
+        match body {
+            Body::Link(LinkWhat::Bytes(bytes)) => describe.feed(bytes),
+            Body::Link(LinkWhat::Down { .. }) => describe.link_lost(),
+            _ => {}
+        }
+    }
+
+    fn has_room_for(&self, body: &Body) -> bool {
+        let most = match body {
+            Body::TrialClose(_) => self.settings.reserve_bytes,
+            body if body.is_urgent() => self.settings.reserve_bytes / 2,
+            _ => 0,
+        };
+        if self.tail.len() > self.settings.tail_bytes_max + most as usize {
+            return false;
+        }
+        let Some(segment) = &self.segment else { return true };
+        let stuck = self.ahead.is_none() && self.health.trouble.is_some();
+        !stuck || segment.n_bytes + (self.n_unwritten as u64) < self.settings.segment_bytes + most
+    }
+
+    fn count_lost(&mut self, host_ns: i64, device: DeviceIdx, body: &Body) {
+        let n_bytes = match body {
+            Body::Link(LinkWhat::Bytes(bytes)) => bytes.len() as u64,
+            Body::Heartbeat | Body::Clocks(_) => return,
+            _ => 0,
+        };
+        if let Some(loss) = self.losses.get_mut(usize::from(device.0)) {
+            loss.add(&Lost { n_events: 1, n_bytes, first_host_ns: host_ns, last_host_ns: host_ns });
+        }
+    }
+
+    fn tell_losses(&mut self) {
+        for index in 0..self.losses.len() {
+            if !self.is_refusing()
+                && let Some(lost) = self.losses[index].take()
+            {
+                self.put(lost.last_host_ns, DeviceIdx(index as u16), &Body::Lost(lost));
+            }
+        }
+    }
+
+    fn is_full(&self, now_ns: i64) -> bool {
+        self.segment.as_ref().is_some_and(|segment| {
+            segment.n_bytes + self.n_unwritten as u64 > self.settings.segment_bytes
+                || now_ns - segment.opened_ns >= self.settings.segment_ns
+        })
+    }
+
+    /// Ends the segment; the next write begins the one made ahead.
+    fn finish_segment(&mut self) {
+        let first_unwritten_seq = self.first_unwritten_seq();
+        if let Some(segment) = self.segment.take() {
+            self.retention.adopt(segment.path, segment.n_bytes, Some(first_unwritten_seq));
+        }
+        if let Some(dirty) = self.dirty.back_mut() {
+            dirty.finished = true;
+        }
+    }
+
+    fn first_unwritten_seq(&self) -> u64 {
+        seq_of(&self.tail[self.tail.len() - self.n_unwritten..]).unwrap_or(self.next_seq)
+    }
+
+    fn trouble(&mut self, sentence: String) {
+        if self.health.trouble.as_ref() != Some(&sentence) {
+            self.notices.push(sentence.clone());
+        }
+        self.health.trouble = Some(sentence);
+    }
+
+    /// Takes the file made ahead, or makes one, and writes the opening.
+    fn open_segment(&mut self, now_ns: i64) -> io::Result<()> {
+        let ahead = self.ahead.take().map_or_else(|| self.make_now(), Ok);
+        let Ahead { number, path, file } = ahead.inspect_err(|error| {
+            self.trouble(format!("cannot open a journal segment: {error}"));
+        })?;
+        let first_seq = self.first_unwritten_seq();
+        let opening = Record {
+            seq: first_seq,
+            host_ns: now_ns,
+            device: DeviceIdx(0),
+            body: Body::SegmentOpen(Box::new(self.opening(number, first_seq))),
+        };
+        let mut bytes = Vec::new();
+        opening.encode(&mut bytes);
+        write_whole(&*file, &bytes)?;
+        self.given_up = None;
+        let n_bytes = bytes.len() as u64;
+        self.segment = Some(Segment { path, file: Arc::clone(&file), n_bytes, opened_ns: now_ns });
+        let new_in = Some(self.dir.clone());
+        self.dirty.push_back(Dirty { file, new_in, n_bytes: 0, oldest_ns: now_ns, finished: false });
+        self.urgent = true;
+        Ok(())
+    }
+
+    fn make_now(&mut self) -> io::Result<Ahead> {
+        let number = self.take_number();
+        let path = self.dir.join(segment_name(&self.origin.journal_id, number));
+        let (file, reserved) = make(&*self.disk, &path, self.settings.segment_bytes + self.settings.reserve_bytes)?;
+        self.health.reserve_possible = reserved == Reserved::Yes;
+        self.health.trouble = None;
+        Ok(Ahead { number, path, file })
+    }
+
+    fn take_number(&mut self) -> u32 {
+        let number = self.next_number;
+        self.next_number += 1;
+        number
+    }
+
+    fn opening(&self, segment: u32, first_seq: u64) -> SegmentOpen {
+        let mut devices = self.origin.devices.clone();
+        for (device, describe) in devices.iter_mut().zip(&self.describes) {
+            device.describe_hex = describe.describe_hex();
+        }
+        SegmentOpen {
+            format_version: FORMAT_VERSION,
+            journal_id: self.origin.journal_id.clone(),
+            segment,
+            first_seq,
+            program_version: self.origin.program_version.clone(),
+            kernel_boot_id: self.origin.kernel_boot_id.clone(),
+            rig_text: self.origin.rig_text.clone(),
+            devices,
+            open_trial: self.open_trial.clone(),
+            previous_given_up: self.given_up.clone(),
+        }
+    }
+
+    /// Writes what is not written yet, to a new segment where there is none.
+    fn write_tail(&mut self, now_ns: i64) -> io::Result<()> {
+        if self.segment.is_none() {
+            self.open_segment(now_ns)?;
+        }
+        let (Some(segment), Some(dirty)) = (&mut self.segment, self.dirty.back_mut()) else { return Ok(()) };
+        let unwritten = &self.tail[self.tail.len() - self.n_unwritten..];
+        write_whole(&*segment.file, unwritten)?;
+        if dirty.n_bytes == 0 {
+            dirty.oldest_ns = now_ns;
+        }
+        segment.n_bytes += self.n_unwritten as u64;
+        dirty.n_bytes += self.n_unwritten;
+        self.n_unwritten = 0;
+        Ok(())
+    }
+
+    /// Leaves the segment as it is; everything since the last good sync will be written again to the next one.
+    fn give_up(&mut self, why: &str) {
+        if let Some(segment) = self.segment.take() {
+            let name = segment.path.file_name().unwrap_or_default().to_string_lossy().into_owned();
+            self.notices.push(format!("journal segment {name} given up: {why}; a new one is opened"));
+            self.retention.adopt(segment.path, segment.n_bytes, Some(self.next_seq));
+        }
+        if self.given_up.is_none() {
+            self.health.segments_given_up += 1;
+        }
+        self.given_up = Some(why.to_owned());
+        self.dirty.clear();
+        self.n_unwritten = self.tail.len();
+        self.sync_is_void = self.job_in_flight;
+    }
+
+    fn sync_job(&mut self, now_ns: i64) -> Option<Job> {
+        let due = self.urgent || now_ns - self.last_sync_ns >= self.settings.sync_every_ns;
+        let dirty = self.dirty.front().filter(|dirty| dirty.finished || (due && dirty.needs_sync()))?;
+        if !dirty.finished {
+            self.urgent = false;
+        }
+        Some(Job::Sync {
+            file: Arc::clone(&dirty.file),
+            new_in: dirty.new_in.clone(),
+            n_bytes: dirty.n_bytes,
+            trim: dirty.finished,
+        })
+    }
+
+    fn synced(&mut self, n_bytes: usize, now_ns: i64) {
+        self.last_sync_ns = now_ns;
+        let Some(dirty) = self.dirty.front_mut() else { return };
+        if n_bytes > 0 {
+            self.health.exposed_for(now_ns - dirty.oldest_ns, now_ns);
+        }
+        dirty.n_bytes -= n_bytes;
+        dirty.oldest_ns = now_ns;
+        dirty.new_in = None;
+        self.tail.drain(..n_bytes);
+        if dirty.finished && dirty.n_bytes == 0 {
+            self.dirty.pop_front();
+        }
+    }
+
+    fn prepare_job(&mut self, now_ns: i64) -> Option<Job> {
+        if self.ahead.is_some() || now_ns < self.retry_ns {
+            return None;
+        }
+        let number = self.take_number();
+        let path = self.dir.join(segment_name(&self.origin.journal_id, number));
+        Some(Job::Prepare { number, path, reserve_bytes: self.settings.segment_bytes + self.settings.reserve_bytes })
+    }
+}
+
+impl Dirty {
+    fn needs_sync(&self) -> bool {
+        self.n_bytes > 0 || self.new_in.is_some()
+    }
+}
+
+fn frame_into(out: &mut Vec<u8>, seq: u64, host_ns: i64, device: DeviceIdx, body: &Body) {
+    if let Body::Link(LinkWhat::Bytes(bytes)) = body {
+        frame::encode(super::body::kind::BYTES, device.0, seq, host_ns, bytes, out); // spares the common case a copy
+    } else {
+        Record { seq, host_ns, device, body: body.clone() }.encode(out);
+    }
+}
+
+/// Sequence number of the record that `bytes` begin with.
+fn seq_of(bytes: &[u8]) -> Option<u64> {
+    bytes.get(8..16).map(|field| u64::from_le_bytes(frame::array(field)))
+}
+
+/// Appends all of `bytes`; the disk may take them in pieces.
+fn write_whole(file: &dyn AppendFile, mut bytes: &[u8]) -> io::Result<()> {
+    while !bytes.is_empty() {
+        match file.append(bytes) {
+            Ok(0) => return Err(io::ErrorKind::WriteZero.into()),
+            Ok(n) => bytes = &bytes[n..],
+            Err(error) if error.kind() == io::ErrorKind::Interrupted => {}
+            Err(error) => return Err(error),
+        }
+    }
+    Ok(())
+}
+
+#[cfg(test)]
+mod tests;
