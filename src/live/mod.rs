@@ -1,7 +1,28 @@
 //! Phase tracker, alarms, what a release now would give. Pure: time comes with the data.
+//!
+//! [`Live`] takes link events and ticks, decodes and calibrates them on a causal clock and answers with [`Happening`]s
+//! and snapshots. The same input gives the same output, so a journal replays to the same phases and alarms. It advises
+//! and records; it stops nothing.
 
+mod alarm;
+mod channel;
+mod cords;
+mod device;
+mod happening;
+mod instrument;
+mod phase;
+mod plan;
+mod rules;
 mod state;
+#[cfg(test)]
+mod testing;
+mod trail;
+mod trial;
 
+pub use happening::{AlarmChange, Happening};
+pub use instrument::{Around, Live};
+pub use plan::{Expected, Plan};
 pub use state::{
     AlarmNow, ChannelNow, CordsNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, Snapshot, TrialNow,
 };
+pub use trial::KeptOpen;

@@ -110,7 +110,7 @@ pub struct Snapshot {
     pub links: Vec<LinkNow>,
     pub journal: Option<JournalNow>,
     pub trial: Option<TrialNow>,
-    /// Newest first. An alarm stays until its cause is gone and a person has acknowledged it.
+    /// Most urgent first. An alarm stays until its cause is gone and a person has acknowledged it.
     pub alarms: Vec<AlarmNow>,
 }
 

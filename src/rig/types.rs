@@ -197,6 +197,11 @@ impl Role {
         }
     }
 
+    /// Whether the role is one of the cells that tell if the cords are loaded.
+    pub const fn is_tension(self) -> bool {
+        matches!(self, Self::ReleaseLineTension | Self::CordAnchorTension)
+    }
+
     /// The SI unit of the role's values.
     pub const fn unit(self) -> &'static str {
         match self {

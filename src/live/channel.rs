@@ -1,0 +1,88 @@
+//! One channel of the rig as it is now: counts to values, age, extremes since the last snapshot, recent past.
+
+use crate::calibration::to_value;
+use crate::rig::{Channel, Coefficients, Role};
+
+use super::state::ChannelNow;
+use super::trail::Trail;
+
+/// From this age on a value is not used for any decision.
+pub const SILENT_NS: i64 = 500_000_000;
+
+#[derive(Debug)]
+pub struct ChannelMonitor {
+    pub name: String,
+    pub role: Role,
+    calibration: Coefficients,
+    newest: Option<(i64, f64)>,
+    extremes: Option<(f64, f64)>,
+    trail: Trail,
+}
+
+impl ChannelMonitor {
+    pub fn new(channel: &Channel) -> Self {
+        Self {
+            name: channel.name.clone(),
+            role: channel.role,
+            calibration: channel.calibration.clone(),
+            newest: None,
+            extremes: None,
+            trail: Trail::default(),
+        }
+    }
+
+    /// Takes one sample and gives its value. A value that is not finite is as good as none: the channel goes silent.
+    pub fn push(&mut self, t_ns: i64, counts: f64) -> Option<f64> {
+        let value = to_value(&self.calibration, counts);
+        if !value.is_finite() {
+            return None;
+        }
+        self.newest = Some((t_ns, value));
+        self.extremes = Some(self.extremes.map_or((value, value), |(min, max)| (min.min(value), max.max(value))));
+        self.trail.push(t_ns, value);
+        Some(value)
+    }
+
+    pub fn is_tension(&self) -> bool {
+        self.role.is_tension()
+    }
+
+    /// Age of the newest sample; none before the first.
+    pub fn age_ns(&self, host_ns: i64) -> Option<i64> {
+        self.newest.map(|(t_ns, _)| (host_ns - t_ns).max(0))
+    }
+
+    pub fn is_fresh(&self, host_ns: i64) -> bool {
+        self.age_ns(host_ns).is_some_and(|age_ns| age_ns < SILENT_NS)
+    }
+
+    /// Mean over the last 5 to 10 ms, of a fresh channel only.
+    pub fn level(&self, host_ns: i64) -> Option<f64> {
+        if self.is_fresh(host_ns) { self.trail.level() } else { None }
+    }
+
+    /// The last level known, however old.
+    pub fn last_level(&self) -> Option<f64> {
+        self.trail.level()
+    }
+
+    /// Change a second over about `window_ns`, of a fresh channel only.
+    pub fn slope_per_s(&self, host_ns: i64, window_ns: i64) -> Option<f64> {
+        if self.is_fresh(host_ns) { self.trail.slope_per_s(window_ns) } else { None }
+    }
+
+    /// The channel's part of a snapshot; starts new extremes.
+    pub fn take_now(&mut self, host_ns: i64) -> ChannelNow {
+        let extremes = self.extremes.take();
+        let value = self.newest.map(|(_, value)| value);
+        ChannelNow {
+            name: self.name.clone(),
+            role: self.role.word().to_owned(),
+            unit: self.role.unit().to_owned(),
+            value,
+            min: extremes.map(|(min, _)| min).or(value),
+            max: extremes.map(|(_, max)| max).or(value),
+            age_s: self.age_ns(host_ns).map(|age_ns| age_ns as f64 * 1e-9),
+        }
+    }
+}

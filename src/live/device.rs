@@ -1,0 +1,177 @@
+//! One device as live sees it: link state, decoder, clock, and where its channels go.
+
+use crate::capture::{Block, Captured, Counts, DeviceDecoder, DeviceDescription};
+use crate::rig::{Channel, Device};
+
+use super::state::LinkNow;
+
+const SECOND_NS: i64 = 1_000_000_000;
+
+/// Where one stream's channels go: indices into the rig's channels.
+#[derive(Debug)]
+struct StreamMap {
+    stream: u8,
+    ticks_per_sample: u32,
+    targets: Vec<Option<usize>>,
+}
+
+/// A sample on its way to its channel.
+#[derive(Debug, Clone, Copy)]
+pub struct Sample {
+    pub channel_idx: usize,
+    pub t_ns: i64,
+    pub counts: f64,
+}
+
+#[derive(Debug)]
+pub struct DeviceMonitor {
+    pub name: String,
+    pub port: String,
+    decoder: DeviceDecoder,
+    ns_per_tick: f64,
+    streams: Vec<StreamMap>,
+    up: bool,
+    ever_up: bool,
+    note: String,
+    last_bytes_ns: Option<i64>,
+    rate: ByteRate,
+}
+
+/// Bytes a second over the last whole second.
+#[derive(Debug, Default)]
+struct ByteRate {
+    from_ns: i64,
+    bytes: u64,
+    per_s: f64,
+}
+
+impl ByteRate {
+    fn add(&mut self, host_ns: i64, n: usize) {
+        self.turn(host_ns);
+        self.bytes += n as u64;
+    }
+
+    fn turn(&mut self, host_ns: i64) {
+        let span_ns = host_ns - self.from_ns;
+        if span_ns >= SECOND_NS {
+            self.per_s = self.bytes as f64 / (span_ns as f64 * 1e-9);
+            self.bytes = 0;
+            self.from_ns = host_ns;
+        }
+    }
+}
+
+impl DeviceMonitor {
+    pub fn new(device: &Device) -> Self {
+        Self {
+            name: device.name.clone(),
+            port: device.port.clone(),
+            decoder: DeviceDecoder::new(),
+            ns_per_tick: 1_000.0,
+            streams: Vec::new(),
+            up: false,
+            ever_up: false,
+            note: String::from("not opened yet"),
+            last_bytes_ns: None,
+            rate: ByteRate::default(),
+        }
+    }
+
+    pub fn is_up(&self) -> bool {
+        self.up
+    }
+
+    /// The port's path and rate, or why it is not open.
+    pub fn note(&self) -> &str {
+        &self.note
+    }
+
+    pub fn last_bytes_ns(&self) -> Option<i64> {
+        self.last_bytes_ns
+    }
+
+    pub fn was_ever_up(&self) -> bool {
+        self.ever_up
+    }
+
+    pub fn link_up(&mut self, path: &str, baud: u32) {
+        self.up = true;
+        self.ever_up = true;
+        self.note = format!("{path} at {baud} baud");
+    }
+
+    pub fn link_down(&mut self, host_ns: i64, reason: &str) {
+        self.up = false;
+        reason.clone_into(&mut self.note);
+        self.decoder.link_lost(host_ns, &mut |_| {});
+    }
+
+    /// Decodes one read; what it completed, in order.
+    pub fn decode(&mut self, host_ns: i64, bytes: &[u8]) -> Vec<Captured> {
+        self.last_bytes_ns = Some(host_ns);
+        self.rate.add(host_ns, bytes.len());
+        let mut captured = Vec::new();
+        self.decoder.feed(host_ns, bytes, &mut |what| captured.push(what));
+        captured
+    }
+
+    /// Takes a description; gives the rig's channels that it does not know, by index.
+    pub fn describe(&mut self, description: &DeviceDescription, channels: &[Channel]) -> Vec<usize> {
+        let wanted = |name: &str| {
+            channels.iter().position(|channel| channel.device == self.name && channel.device_channel == name)
+        };
+        self.ns_per_tick = 1e9 / description.tick_rate_hz;
+        self.streams = description
+            .streams
+            .iter()
+            .map(|stream| StreamMap {
+                stream: stream.stream,
+                ticks_per_sample: stream.ticks_per_sample,
+                targets: stream.channels.iter().map(|channel| wanted(&channel.name)).collect(),
+            })
+            .collect();
+        let known: Vec<_> = self.streams.iter().flat_map(|stream| stream.targets.iter().flatten().copied()).collect();
+        let mine = channels.iter().enumerate().filter(|(_, channel)| channel.device == self.name);
+        mine.map(|(idx, _)| idx).filter(|idx| !known.contains(idx)).collect()
+    }
+
+    /// Hands every sample of a block to `sink`, stamped with the host time at which the device took it.
+    pub fn spread(&mut self, block: &Block, sink: &mut impl FnMut(Sample)) {
+        let Some(map) = self.streams.iter().find(|map| map.stream == block.stream) else { return };
+        let first_ns = self.sample_ns(block, block.first_tick);
+        let step_ns = f64::from(map.ticks_per_sample) * self.ns_per_tick;
+        for (target, counts) in map.targets.iter().zip(&block.counts) {
+            let Some(channel_idx) = *target else { continue };
+            let mut put = |k: usize, counts: f64| {
+                let t_ns = (first_ns + (k as f64 * step_ns) as i64).min(block.host_ns);
+                sink(Sample { channel_idx, t_ns, counts });
+            };
+            match counts {
+                Counts::Integer(all) => all.iter().enumerate().for_each(|(k, n)| put(k, f64::from(*n))),
+                Counts::Float(all) => all.iter().enumerate().for_each(|(k, n)| put(k, f64::from(*n))),
+            }
+        }
+    }
+
+    /// Host time of a tick near a block, by the block's arrival: late by the transfer, never early.
+    fn sample_ns(&self, block: &Block, tick: u64) -> i64 {
+        let before_sent_ns = block.sent_tick.saturating_sub(tick) as f64 * self.ns_per_tick;
+        block.host_ns - before_sent_ns as i64
+    }
+
+    pub fn now(&mut self, host_ns: i64) -> LinkNow {
+        self.rate.turn(host_ns);
+        let counters = self.decoder.counters();
+        LinkNow {
+            device: self.name.clone(),
+            up: self.up,
+            bytes_per_s: self.rate.per_s,
+            frames: counters.frames,
+            refused: counters.refused.values().sum(),
+            missing_samples: counters.missing,
+            silent_s: self.last_bytes_ns.map(|last_ns| (host_ns - last_ns).max(0) as f64 * 1e-9),
+            clock_uncertainty_s: None,
+            note: self.note.clone(),
+        }
+    }
+}

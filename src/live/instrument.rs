@@ -1,0 +1,239 @@
+//! [`Live`]: link events in, happenings and snapshots out. Pure: time comes with the data and with [`Live::tick`].
+//!
+//! Fed the same events and ticks it says the same, so phases, alarms and silences replay from a journal.
+
+use crate::capture::Captured;
+use crate::link::{LinkEvent, LinkWhat};
+use crate::rig::{Rig, Role};
+
+use super::alarm::{Board, Cause};
+use super::channel::ChannelMonitor;
+use super::cords::{Cells, SlackRule};
+use super::device::{DeviceMonitor, Sample};
+use super::happening::Happening;
+use super::phase::{Seen, Tracker};
+use super::plan::Plan;
+use super::rules;
+use super::state::{CordsNow, JournalNow, LaunchSeen, Phase, ReleasedNow, Snapshot, TrialNow};
+use super::trial::TrialKeeper;
+
+const MS: i64 = 1_000_000;
+const SPEED_WINDOW_NS: i64 = 100 * MS;
+const FAST_SPEED_WINDOW_NS: i64 = 10 * MS;
+
+/// What only the daemon knows of a snapshot.
+#[derive(Debug, Clone, Default)]
+pub struct Around {
+    /// RFC 3339; empty when the wall clock was never set.
+    pub wall: String,
+    pub journal: Option<JournalNow>,
+    pub trial: Option<TrialNow>,
+}
+
+/// Everything the live thread knows.
+#[derive(Debug)]
+pub struct Live {
+    pub(super) rig: Rig,
+    pub(super) plan: Plan,
+    pub(super) devices: Vec<DeviceMonitor>,
+    pub(super) channels: Vec<ChannelMonitor>,
+    pub(super) tracker: Tracker,
+    pub(super) board: Board,
+    pub(super) cords: CordsNow,
+    pub(super) cells: Cells,
+    pub(super) over_plan_since_ns: Option<i64>,
+    pub(super) below_zero_since_ns: Vec<Option<i64>>,
+    pub(super) started_ns: Option<i64>,
+    has_uncalibrated_cell: bool,
+    slack_rule: SlackRule,
+    trial: TrialKeeper,
+    last_launch: Option<LaunchSeen>,
+    released_now: Option<ReleasedNow>,
+}
+
+impl Live {
+    pub fn new(rig: &Rig) -> Self {
+        Self {
+            plan: Plan::new(rig),
+            devices: rig.devices.iter().map(DeviceMonitor::new).collect(),
+            channels: rig.channels.iter().map(ChannelMonitor::new).collect(),
+            tracker: Tracker::new(rig.plan.slack_tension_n, rig.rail.zero_mark_x_m),
+            board: Board::default(),
+            cords: CordsNow::Unknown,
+            cells: Cells::default(),
+            over_plan_since_ns: None,
+            below_zero_since_ns: vec![None; rig.channels.len()],
+            started_ns: None,
+            has_uncalibrated_cell: rig.uncalibrated.iter().any(|channel| channel.role.is_tension()),
+            slack_rule: SlackRule::default(),
+            trial: TrialKeeper::default(),
+            last_launch: None,
+            released_now: None,
+            rig: rig.clone(),
+        }
+    }
+
+    /// Takes what a link saw; gives what follows from it. Events of devices that the rig does not have are ignored.
+    pub fn on_link(&mut self, event: &LinkEvent) -> Vec<Happening> {
+        let device_idx = usize::from(event.device.0);
+        let Some(device) = self.devices.get_mut(device_idx) else { return Vec::new() };
+        let host_ns = event.host_ns;
+        match &event.what {
+            LinkWhat::Up { path, baud } => device.link_up(path, *baud),
+            LinkWhat::Down { reason } => device.link_down(host_ns, reason),
+            LinkWhat::TimeRequested { .. } => {}
+            LinkWhat::Bytes(bytes) => {
+                let captured = device.decode(host_ns, bytes);
+                return captured.iter().flat_map(|what| self.on_captured(device_idx, what)).collect();
+            }
+        }
+        self.judge(host_ns)
+    }
+
+    /// Takes one decoded thing.
+    fn on_captured(&mut self, device_idx: usize, what: &Captured) -> Vec<Happening> {
+        let Self { devices, channels, rig, board, .. } = self;
+        let device = &mut devices[device_idx];
+        match what {
+            Captured::Description(description) => {
+                let host_ns = device.last_bytes_ns().unwrap_or(0);
+                let missing = device.describe(description, &rig.channels);
+                rules::channels_described(board, rig, &device.name, &missing, host_ns)
+            }
+            Captured::Block(block) => {
+                device.spread(block, &mut |sample: Sample| {
+                    channels[sample.channel_idx].push(sample.t_ns, sample.counts);
+                });
+                self.judge(block.host_ns)
+            }
+            _ => Vec::new(),
+        }
+    }
+
+    /// Time passes: silences, dwell times, forecasts. Call it at every heartbeat.
+    pub fn tick(&mut self, host_ns: i64) -> Vec<Happening> {
+        self.judge(host_ns)
+    }
+
+    fn judge(&mut self, host_ns: i64) -> Vec<Happening> {
+        self.started_ns.get_or_insert(host_ns);
+        let slack_n = self.rig.plan.slack_tension_n;
+        self.cells = Cells::of(&self.channels, host_ns, slack_n);
+        self.cells.every_cell_fresh &= !self.has_uncalibrated_cell;
+        let draw_m = self.x_m(host_ns).map(|x_m| self.rig.draw_m(x_m));
+        self.cords = self.slack_rule.judge(&self.cells, host_ns, &self.plan, slack_n, draw_m);
+        let mut happenings = Vec::new();
+        if let Some(from) = self.tracker.step(&self.seen(host_ns)) {
+            self.entered(from, host_ns, &mut happenings);
+        }
+        happenings.extend(self.trial.judge(host_ns, self.tracker.phase(), self.tracker.since_ns(), &self.cords));
+        happenings.extend(rules::judge(self, host_ns));
+        happenings
+    }
+
+    fn entered(&mut self, from: Phase, host_ns: i64, happenings: &mut Vec<Happening>) {
+        let to = self.tracker.phase();
+        happenings.push(Happening::Phase { host_ns, from, to });
+        if to == Phase::WinchBack && matches!(from, Phase::Slack | Phase::Rest) {
+            self.last_launch = None;
+        }
+        if !matches!(to, Phase::WinchBack | Phase::Hold | Phase::LetDown) {
+            self.released_now = None;
+        }
+    }
+
+    fn seen(&self, host_ns: i64) -> Seen {
+        let position = self.with_role(Role::ShuttlePosition);
+        let speed = |window_ns| position.and_then(|channel| channel.slope_per_s(host_ns, window_ns));
+        Seen {
+            host_ns,
+            line_n: self.level(Role::ReleaseLineTension, host_ns),
+            anchor_n: self.level(Role::CordAnchorTension, host_ns),
+            every_cell_fresh: self.cells.all_speak(),
+            tension_n: self.cells.tension_n,
+            x_m: self.x_m(host_ns),
+            speed_mps: speed(SPEED_WINDOW_NS),
+            fast_speed_mps: speed(FAST_SPEED_WINDOW_NS),
+        }
+    }
+
+    fn with_role(&self, role: Role) -> Option<&ChannelMonitor> {
+        self.channels.iter().find(|channel| channel.role == role)
+    }
+
+    pub(super) fn level(&self, role: Role, host_ns: i64) -> Option<f64> {
+        self.with_role(role).and_then(|channel| channel.level(host_ns))
+    }
+
+    pub(super) fn x_m(&self, host_ns: i64) -> Option<f64> {
+        self.level(Role::ShuttlePosition, host_ns)
+    }
+
+    /// The state of everything; starts new extremes for the next snapshot.
+    pub fn snapshot(&mut self, host_ns: i64, around: Around) -> Snapshot {
+        let x_m = self.x_m(host_ns);
+        Snapshot {
+            host_ns,
+            wall: around.wall,
+            phase: self.tracker.phase(),
+            phase_s: (host_ns - self.tracker.since_ns()).max(0) as f64 * 1e-9,
+            cords: self.cords,
+            channels: self.channels.iter_mut().map(|channel| channel.take_now(host_ns)).collect(),
+            x_m,
+            draw_m: x_m.map(|x_m| self.rig.draw_m(x_m)),
+            released_now: self.released_now,
+            last_launch: self.last_launch,
+            links: self.devices.iter_mut().map(|device| device.now(host_ns)).collect(),
+            journal: around.journal,
+            trial: around.trial,
+            alarms: self.board.list(),
+        }
+    }
+
+    pub fn phase(&self) -> Phase {
+        self.tracker.phase()
+    }
+
+    pub fn cords(&self) -> CordsNow {
+        self.cords
+    }
+
+    /// Whether the live room holds a trial open.
+    pub fn trial_is_open(&self) -> bool {
+        self.trial.is_open()
+    }
+
+    /// The daemon goes on with a trial that a crash left open: no second one is opened, and it closes by the rule.
+    pub fn resume_trial(&mut self) {
+        self.trial.resume();
+    }
+
+    /// A person opens a trial by hand; none when one is open.
+    pub fn open_by_hand(&mut self, host_ns: i64) -> Option<Happening> {
+        self.trial.open_by_hand(host_ns)
+    }
+
+    /// A person closes the trial by hand.
+    ///
+    /// # Errors
+    /// [`super::KeptOpen`] when there is none, or while the cords are loaded or unknown.
+    pub fn close_by_hand(&mut self, host_ns: i64, person: &str) -> Result<Happening, super::KeptOpen> {
+        self.trial.close_by_hand(host_ns, person, &self.cords)
+    }
+
+    /// What the journal says of itself; `None` when all is well.
+    pub fn journal_trouble(&mut self, host_ns: i64, trouble: Option<&str>) -> Option<Happening> {
+        match trouble {
+            Some(sentence) => self.board.raise(Cause::Journal, host_ns, format!("journal: {sentence}")),
+            None => self.board.clear(Cause::Journal, host_ns),
+        }
+    }
+
+    /// `person` has seen the alarms; tells how many were new to a person.
+    pub fn acknowledge(&mut self, person: &str) -> usize {
+        self.board.acknowledge(person)
+    }
+}
+
+#[cfg(test)]
+mod tests;

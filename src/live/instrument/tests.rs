@@ -1,0 +1,229 @@
+use super::*;
+use crate::link::DeviceIdx;
+use crate::live::AlarmChange;
+use crate::live::testing::{End, Instant, ZERO_NS, blocks, description, north_pier, scene};
+
+const S: i64 = 1_000_000_000;
+
+/// A run of `Live` over a scene, block by block with a tick after each.
+struct Run {
+    live: Live,
+    told: Vec<Happening>,
+}
+
+impl Run {
+    fn new() -> Self {
+        Self::of(&north_pier())
+    }
+
+    fn of(rig: &Rig) -> Self {
+        let mut run = Self { live: Live::new(rig), told: Vec::new() };
+        for (idx, channels) in [(0, ["line", "anchor"]), (1, ["encoder", "accel"])] {
+            let path = String::from("port");
+            let what = LinkWhat::Up { path, baud: 1 };
+            run.link(ZERO_NS, idx, what);
+            let name = run.live.devices[usize::from(idx)].name.clone();
+            run.told.extend(run.live.on_captured(usize::from(idx), &description(&name, channels)));
+        }
+        run
+    }
+
+    fn link(&mut self, host_ns: i64, idx: u16, what: LinkWhat) {
+        self.told.extend(self.live.on_link(&LinkEvent { host_ns, device: DeviceIdx(idx), what }));
+    }
+
+    /// Plays the scene from the first to the last second; `keep` says which device's blocks arrive.
+    fn play(&mut self, scene: &[Instant], from_s: f64, to_s: f64, keep: impl Fn(usize) -> bool) {
+        for (device, block) in blocks(scene) {
+            let t_s = (block.host_ns - ZERO_NS) as f64 * 1e-9;
+            if t_s < from_s || t_s >= to_s {
+                continue;
+            }
+            if keep(device) {
+                let told = self.live.on_captured(device, &Captured::Block(block.clone()));
+                self.told.extend(told);
+            }
+            self.told.extend(self.live.tick(block.host_ns));
+        }
+    }
+
+    fn phases(&self) -> Vec<Phase> {
+        let to = |happening: &Happening| match happening {
+            Happening::Phase { to, .. } => Some(*to),
+            _ => None,
+        };
+        self.told.iter().filter_map(to).collect()
+    }
+
+    fn raised(&self) -> Vec<&str> {
+        let told = self.told.iter();
+        told.filter_map(|happening| match happening {
+            Happening::Alarm { change: AlarmChange::Raised, sentence, .. } => Some(sentence.as_str()),
+            _ => None,
+        })
+        .collect()
+    }
+
+    fn when(&self, wanted: impl Fn(&Happening) -> bool) -> Option<f64> {
+        let happening = self.told.iter().find(|happening| wanted(happening))?;
+        let host_ns = match happening {
+            Happening::OpenTrial { host_ns, .. }
+            | Happening::CloseTrial { host_ns, .. }
+            | Happening::Phase { host_ns, .. }
+            | Happening::Alarm { host_ns, .. }
+            | Happening::LaunchSeen { host_ns, .. } => *host_ns,
+        };
+        Some((host_ns - ZERO_NS) as f64 * 1e-9)
+    }
+
+    fn closed(&self) -> Option<&str> {
+        self.told.iter().find_map(|happening| match happening {
+            Happening::CloseTrial { reason, .. } => Some(reason.as_str()),
+            _ => None,
+        })
+    }
+}
+
+#[test]
+fn a_nominal_launch_goes_through_every_phase_once_and_raises_nothing() {
+    let mut run = Run::new();
+    let scene = scene(End::Launch, 1.0);
+    run.play(&scene, 0.0, 25.0, |_| true);
+    use Phase::*;
+    assert_eq!(run.phases(), [Slack, WinchBack, Hold, Launch, RunOut, Rest]);
+    assert_eq!(run.raised(), Vec::<&str>::new());
+    let released_s = run.when(|h| matches!(h, Happening::Phase { to: Launch, .. })).unwrap();
+    assert!((15.0..15.05).contains(&released_s), "{released_s}");
+    let opened_s = run.when(|h| matches!(h, Happening::OpenTrial { .. })).unwrap();
+    assert!((2.0..2.5).contains(&opened_s), "{opened_s}");
+    assert_eq!(run.closed(), Some("launched and at rest"));
+}
+
+#[test]
+fn a_let_down_ends_slack_without_a_launch() {
+    let mut run = Run::new();
+    use Phase::*;
+    let mut long = scene(End::LetDown, 1.0);
+    let last = *long.last().unwrap();
+    long.extend(std::iter::repeat_n(last, 8_000));
+    run.play(&long, 0.0, 31.0, |_| true);
+    assert_eq!(run.phases(), [Slack, WinchBack, Hold, LetDown, Slack]);
+    assert_eq!(run.closed(), Some("slack again without a launch"));
+}
+
+#[test]
+fn a_line_that_drops_without_motion_is_no_launch_but_an_alarm() {
+    let mut run = Run::new();
+    run.play(&scene(End::HangFire, 1.0), 0.0, 27.0, |_| true);
+    assert!(!run.phases().contains(&Phase::Launch));
+    assert!(run.raised().iter().any(|sentence| sentence.contains("hang-fire")), "{:?}", run.raised());
+    assert!(matches!(run.live.cords(), CordsNow::Loaded { .. }));
+    assert_eq!(run.closed(), None);
+}
+
+#[test]
+fn cords_loaded_and_a_pulled_cable_read_unknown_never_slack() {
+    let mut run = Run::new();
+    let scene = scene(End::Launch, 1.0);
+    run.play(&scene, 0.0, 13.0, |_| true);
+    assert!(matches!(run.live.cords(), CordsNow::Loaded { .. }));
+    run.link(ZERO_NS + 13 * S, 0, LinkWhat::Down { reason: "cable pulled".into() });
+    run.play(&scene, 13.0, 27.0, |device| device == 1);
+    assert_eq!(run.live.cords(), CordsNow::Unknown);
+    assert_eq!(run.live.phase(), Phase::Unknown);
+    assert_eq!(run.closed(), None);
+    let raised = run.raised();
+    for part in
+        ["winch-node: link lost", "cords loaded and line and anchor silent", "line (release line tension) is silent"]
+    {
+        assert!(raised.iter().any(|sentence| sentence.contains(part)), "{part} in {raised:?}");
+    }
+    assert!(run.live.close_by_hand(ZERO_NS + 27 * S, "winch").is_err());
+}
+
+#[test]
+fn one_silent_cell_is_enough_to_doubt_slack() {
+    let mut rig = north_pier();
+    rig.channels[1].device = "shuttle-node".into();
+    let mut run = Run::of(&rig);
+    run.play(&scene(End::Launch, 1.0), 0.0, 1.9, |_| true);
+    assert_eq!(run.live.cords(), CordsNow::Unknown, "the anchor was never heard");
+    assert_eq!(run.live.phase(), Phase::Unknown);
+}
+
+#[test]
+fn a_cell_without_a_calibration_is_never_taken_for_slack() {
+    let mut rig = north_pier();
+    let anchor = rig.channels.remove(1);
+    rig.uncalibrated.push(crate::rig::UncalibratedChannel {
+        name: anchor.name,
+        device: anchor.device,
+        device_channel: anchor.device_channel,
+        role: anchor.role,
+    });
+    let mut run = Run::of(&rig);
+    run.play(&scene(End::Launch, 1.0), 0.0, 1.9, |_| true);
+    assert_eq!(run.live.cords(), CordsNow::Unknown);
+    assert!(run.raised().iter().any(|sentence| sentence.contains("no calibration")), "{:?}", run.raised());
+}
+
+#[test]
+fn more_tension_than_planned_and_than_allowed_each_raise_their_sentence() {
+    let mut run = Run::new();
+    run.play(&scene(End::Launch, 1.35), 0.0, 14.0, |_| true);
+    let raised = run.raised();
+    assert!(raised.iter().any(|sentence| sentence.contains("over the plan's band")), "{raised:?}");
+    assert!(raised.iter().any(|sentence| sentence.contains("over the limit of 900 N")), "{raised:?}");
+}
+
+#[test]
+fn a_start_under_tension_opens_a_trial_at_once_and_a_resumed_one_does_not() {
+    let scene = scene(End::Launch, 1.0);
+    let mut run = Run::new();
+    run.play(&scene, 13.0, 14.5, |_| true);
+    assert_eq!(run.live.phase(), Phase::Hold);
+    assert!(run.when(|h| matches!(h, Happening::OpenTrial { .. })).is_some());
+    let mut run = Run::new();
+    run.live.resume_trial();
+    run.play(&scene, 13.0, 27.0, |_| true);
+    assert!(run.when(|h| matches!(h, Happening::OpenTrial { .. })).is_none());
+    assert_eq!(run.closed(), Some("launched and at rest"));
+}
+
+#[test]
+fn the_same_input_gives_the_same_happenings() {
+    let scene = scene(End::Launch, 1.0);
+    let play = || {
+        let mut run = Run::new();
+        run.play(&scene, 0.0, 27.0, |_| true);
+        run.told
+    };
+    assert_eq!(play(), play());
+}
+
+#[test]
+fn a_spike_between_two_snapshots_shows_as_their_maximum() {
+    let mut run = Run::new();
+    let mut scene = scene(End::Launch, 1.0);
+    run.play(&scene, 0.0, 1.0, |_| true);
+    run.live.snapshot(ZERO_NS + S, Around::default());
+    scene[2_010].line_n = 333.0;
+    run.play(&scene, 1.0, 1.05, |_| true);
+    let now = run.live.snapshot(ZERO_NS + S + S / 20, Around::default());
+    assert!((now.channels[0].max.unwrap() - 333.0).abs() < 2.1);
+    assert!(now.channels[0].value.unwrap() < 3.0);
+    let next = run.live.snapshot(ZERO_NS + S + S / 15, Around::default());
+    assert_eq!(next.channels[0].max, next.channels[0].value);
+}
+
+#[test]
+fn link_loss_during_the_launch_does_not_make_a_trial_disappear() {
+    let mut run = Run::new();
+    let scene = scene(End::Launch, 1.0);
+    run.play(&scene, 0.0, 15.1, |_| true);
+    run.play(&scene, 15.1, 18.0, |_| false);
+    run.live.tick(ZERO_NS + 17 * S);
+    run.play(&scene, 18.0, 27.0, |_| true);
+    assert_eq!(run.live.phase(), Phase::Rest);
+    assert_eq!(run.closed(), Some("launched and at rest"));
+}
