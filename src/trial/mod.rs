@@ -1,5 +1,26 @@
-//! The only room that knows HDF5: the trial file, its schema, writing and reading.
+//! The only room that knows HDF5: the trial file, its schema (FORMAT.md), writing and reading.
 
+mod attribute;
+mod column;
 mod content;
+mod description;
+mod device_writer;
+mod digest;
+mod error;
+mod members;
+mod names;
+mod raw_reader;
+mod reader;
+mod results_writer;
+mod scale;
+mod schema;
+mod signal_writer;
+mod table;
+mod writer;
 
 pub use content::*;
+pub use digest::text_sha256;
+pub use error::TrialError;
+pub use raw_reader::RawDigest;
+pub use reader::TrialFile;
+pub use writer::{OpenSignal, RawDevice, TrialWriter};
