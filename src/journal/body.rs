@@ -3,7 +3,7 @@
 use bytes::Bytes;
 use serde::{Deserialize, Serialize};
 
-use crate::link::{DeviceIdx, LinkWhat};
+use crate::link::{DeviceIdx, LinkWhat, Lost};
 
 use super::frame::{self, RawRecord, array};
 
@@ -116,15 +116,6 @@ pub struct EventBody {
     pub source: String,
     pub person: Option<String>,
     pub text: String,
-}
-
-/// What a device's link had to drop because a queue was full or the disk took nothing.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
-pub struct Lost {
-    pub n_events: u64,
-    pub n_bytes: u64,
-    pub first_host_ns: i64,
-    pub last_host_ns: i64,
 }
 
 pub(super) mod kind {

@@ -2,7 +2,7 @@
 
 use std::collections::VecDeque;
 
-use super::Lost;
+use crate::link::Lost;
 
 /// How far back "lately" reaches.
 const LATELY_NS: i64 = 10_000_000_000;
@@ -56,16 +56,9 @@ pub(super) struct Loss {
 }
 
 impl Loss {
-    pub fn add(&mut self, lost: &Lost) {
+    pub fn add(&mut self, lost: Lost) {
         self.n_events_ever += lost.n_events;
-        match &mut self.untold {
-            Some(untold) => {
-                untold.n_events += lost.n_events;
-                untold.n_bytes += lost.n_bytes;
-                untold.last_host_ns = lost.last_host_ns;
-            }
-            none => *none = Some(*lost),
-        }
+        self.untold = Some(self.untold.map_or(lost, |untold| untold.join(lost)));
     }
 
     pub fn take(&mut self) -> Option<Lost> {

@@ -16,9 +16,7 @@ mod retention;
 mod staged;
 mod writer;
 
-pub use body::{
-    Body, Clocks, DeviceAtOpen, EventBody, FORMAT_VERSION, Lost, Record, SegmentOpen, TrialClose, TrialOpen,
-};
+pub use body::{Body, Clocks, DeviceAtOpen, EventBody, FORMAT_VERSION, Record, SegmentOpen, TrialClose, TrialOpen};
 pub use disk::{AppendFile, Disk, Listed, RealDisk};
 pub use frame::MAX_PAYLOAD_BYTES;
 pub use health::Health;

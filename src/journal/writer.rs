@@ -4,13 +4,16 @@
 //! or, in a sweep, inline. Everything since the last good sync is also held in memory, within a bound, so that a
 //! segment given up is repeated in the next one. A sync that failed is never tried again.
 
+mod disk_work;
+
 use std::collections::VecDeque;
 use std::io;
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
-use crate::link::{DeviceIdx, LinkWhat};
+use crate::link::{DeviceIdx, LinkWhat, Lost};
 
+use super::DeviceAtOpen;
 use super::body::{Body, FORMAT_VERSION, Record, SegmentOpen};
 use super::describes::DescribeKeeper;
 use super::disk::{AppendFile, Disk};
@@ -19,7 +22,6 @@ use super::health::{Health, Loss};
 use super::job::{Job, Outcome, Reserved, make};
 use super::reader::{SegmentInfo, segment_name};
 use super::retention::Retention;
-use super::{DeviceAtOpen, Lost};
 
 /// Sizes and times of a journal.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -234,44 +236,6 @@ impl Journal {
         self.retry_ns = now_ns + RETRY_OPEN_NS;
     }
 
-    /// The next piece of disk work, if one is due; its outcome goes to [`Self::job_done`]. One at a time.
-    pub fn next_job(&mut self, now_ns: i64) -> Option<Job> {
-        if self.job_in_flight {
-            return None;
-        }
-        let job = self.sync_job(now_ns).or_else(|| self.prepare_job(now_ns)).or_else(|| self.retention.job());
-        self.job_in_flight = job.is_some();
-        job
-    }
-
-    pub fn job_done(&mut self, outcome: Outcome, now_ns: i64) {
-        self.job_in_flight = false;
-        let is_void = std::mem::take(&mut self.sync_is_void);
-        match outcome {
-            Outcome::Synced { .. } | Outcome::SyncFailed { .. } if is_void => {}
-            Outcome::Synced { n_bytes } => self.synced(n_bytes, now_ns),
-            Outcome::SyncFailed { error } => {
-                self.give_up(&format!("syncing failed: {error}"));
-                self.last_sync_ns = now_ns;
-                self.commit(now_ns);
-            }
-            Outcome::Prepared { number, path, file, reserved } => {
-                self.health.reserve_possible = reserved == Reserved::Yes;
-                self.health.trouble = None;
-                self.ahead = Some(Ahead { number, path, file });
-            }
-            Outcome::PrepareFailed { path, error } => {
-                self.trouble(format!("cannot make the next segment {}: {error}", path.display()));
-                self.retry_ns = now_ns + RETRY_AHEAD_NS;
-            }
-            Outcome::Removed { failed } => {
-                for (path, error) in failed {
-                    self.notices.push(format!("cannot remove {}: {error}", path.display()));
-                }
-            }
-        }
-    }
-
     /// The newest record at or before `host_ns`, as far back as is known: where a pre-roll begins.
     pub fn seq_at(&self, host_ns: i64) -> (u64, i64) {
         let index = self.recent.partition_point(|&(at_ns, _)| at_ns <= host_ns);
@@ -374,7 +338,7 @@ impl Journal {
             _ => 0,
         };
         if let Some(loss) = self.losses.get_mut(usize::from(device.0)) {
-            loss.add(&Lost { n_events: 1, n_bytes, first_host_ns: host_ns, last_host_ns: host_ns });
+            loss.add(Lost { n_events: 1, n_bytes, first_host_ns: host_ns, last_host_ns: host_ns });
         }
     }
 
@@ -507,44 +471,6 @@ impl Journal {
         self.dirty.clear();
         self.n_unwritten = self.tail.len();
         self.sync_is_void = self.job_in_flight;
-    }
-
-    fn sync_job(&mut self, now_ns: i64) -> Option<Job> {
-        let due = self.urgent || now_ns - self.last_sync_ns >= self.settings.sync_every_ns;
-        let dirty = self.dirty.front().filter(|dirty| dirty.finished || (due && dirty.needs_sync()))?;
-        if !dirty.finished {
-            self.urgent = false;
-        }
-        Some(Job::Sync {
-            file: Arc::clone(&dirty.file),
-            new_in: dirty.new_in.clone(),
-            n_bytes: dirty.n_bytes,
-            trim: dirty.finished,
-        })
-    }
-
-    fn synced(&mut self, n_bytes: usize, now_ns: i64) {
-        self.last_sync_ns = now_ns;
-        let Some(dirty) = self.dirty.front_mut() else { return };
-        if n_bytes > 0 {
-            self.health.exposed_for(now_ns - dirty.oldest_ns, now_ns);
-        }
-        dirty.n_bytes -= n_bytes;
-        dirty.oldest_ns = now_ns;
-        dirty.new_in = None;
-        self.tail.drain(..n_bytes);
-        if dirty.finished && dirty.n_bytes == 0 {
-            self.dirty.pop_front();
-        }
-    }
-
-    fn prepare_job(&mut self, now_ns: i64) -> Option<Job> {
-        if self.ahead.is_some() || now_ns < self.retry_ns {
-            return None;
-        }
-        let number = self.take_number();
-        let path = self.dir.join(segment_name(&self.origin.journal_id, number));
-        Some(Job::Prepare { number, path, reserve_bytes: self.settings.segment_bytes + self.settings.reserve_bytes })
     }
 }
 

@@ -1,0 +1,73 @@
+//! Asks a port's driver to hand bytes over at once.
+//!
+//! Some USB adapters hold short reads back for 16 ms unless told otherwise. Ports without such a timer refuse the
+//! question; that is no fault.
+
+use std::os::fd::AsRawFd;
+use std::path::Path;
+
+/// `struct serial_struct` of `<linux/serial.h>`.
+#[repr(C)]
+#[derive(Debug)]
+struct SerialStruct {
+    kind: libc::c_int,
+    line: libc::c_int,
+    port: libc::c_uint,
+    irq: libc::c_int,
+    flags: libc::c_int,
+    xmit_fifo_size: libc::c_int,
+    custom_divisor: libc::c_int,
+    baud_base: libc::c_int,
+    close_delay: libc::c_ushort,
+    io_type: libc::c_char,
+    reserved_char: libc::c_char,
+    hub6: libc::c_int,
+    closing_wait: libc::c_ushort,
+    closing_wait2: libc::c_ushort,
+    iomem_base: *mut libc::c_uchar,
+    iomem_reg_shift: libc::c_ushort,
+    port_high: libc::c_uint,
+    iomap_base: libc::c_ulong,
+}
+
+/// `ASYNC_LOW_LATENCY` of `<linux/tty_flags.h>`.
+const LOW_LATENCY: libc::c_int = 1 << 13;
+
+/// Returns a warning when bytes may be held back all the same.
+pub(super) fn ask(port: &impl AsRawFd, path: &Path) -> Option<String> {
+    let by_flag = set_flag(port);
+    let timer = latency_timer(path)?;
+    if by_flag.is_ok() && read_ms(&timer) == Some(1) {
+        return None;
+    }
+    match std::fs::write(&timer, "1") {
+        Ok(()) => None,
+        Err(_) => read_ms(&timer).filter(|&ms| ms > 1).map(|ms| format!("its adapter holds bytes back for {ms} ms")),
+    }
+}
+
+fn set_flag(port: &impl AsRawFd) -> std::io::Result<()> {
+    let mut settings = std::mem::MaybeUninit::<SerialStruct>::zeroed();
+    // SAFETY: the kernel fills or reads exactly one `serial_struct`, which `SerialStruct` lays out as the C header does;
+    // zeroed, it is valid for every field; the descriptor is open as long as `port` is borrowed.
+    let failed = unsafe {
+        if libc::ioctl(port.as_raw_fd(), libc::TIOCGSERIAL, settings.as_mut_ptr()) == 0 {
+            (*settings.as_mut_ptr()).flags |= LOW_LATENCY;
+            libc::ioctl(port.as_raw_fd(), libc::TIOCSSERIAL, settings.as_mut_ptr()) != 0
+        } else {
+            true
+        }
+    };
+    if failed { Err(std::io::Error::last_os_error()) } else { Ok(()) }
+}
+
+/// The adapter's timer in sysfs, where it has one.
+fn latency_timer(path: &Path) -> Option<std::path::PathBuf> {
+    let real = std::fs::canonicalize(path).ok()?;
+    let timer = Path::new("/sys/class/tty").join(real.file_name()?).join("device/latency_timer");
+    timer.exists().then_some(timer)
+}
+
+fn read_ms(timer: &Path) -> Option<u32> {
+    std::fs::read_to_string(timer).ok()?.trim().parse().ok()
+}

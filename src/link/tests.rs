@@ -1,0 +1,164 @@
+//! The room against ptys, as it opens real ports.
+
+use std::fs::File;
+use std::io::{Read, Write};
+use std::os::fd::OwnedFd;
+use std::path::PathBuf;
+use std::time::{Duration, Instant};
+
+use crossbeam_channel::{Receiver, bounded};
+use firmware_protocol::{Deframed, Deframer, MAX_COBS_LEN, Message, decode};
+use rustix::pty::{OpenptFlags, grantpt, openpt, ptsname, unlockpt};
+use rustix::termios::{OptionalActions, tcgetattr, tcsetattr};
+
+use super::*;
+
+/// A pty: `master` is the device's end.
+pub struct Pty {
+    pub master: File,
+    pub path: PathBuf,
+}
+
+impl Pty {
+    pub fn new() -> Self {
+        let master: OwnedFd = openpt(OpenptFlags::RDWR | OpenptFlags::NOCTTY).unwrap();
+        grantpt(&master).unwrap();
+        unlockpt(&master).unwrap();
+        let mut settings = tcgetattr(&master).unwrap();
+        settings.make_raw();
+        tcsetattr(&master, OptionalActions::Now, &settings).unwrap();
+        let path = PathBuf::from(ptsname(&master, Vec::new()).unwrap().into_string().unwrap());
+        Self { master: master.into(), path }
+    }
+}
+
+fn start(path: PathBuf) -> (Links, Receiver<FromLinks>, Receiver<FromLinks>) {
+    let ((journal, journal_end), (live, live_end)) = (bounded(10_000), bounded(10_000));
+    let ports = vec![PortSpec { device: DeviceIdx(1), path, baud: 115_200 }];
+    let links = spawn_links(ports, Sinks { journal, live }, std::sync::Arc::new(SystemClock), 1).unwrap();
+    (links, journal_end, live_end)
+}
+
+/// Waits for an event that `wanted` accepts; what came before it is dropped.
+#[track_caller]
+fn await_event<T>(end: &Receiver<FromLinks>, mut wanted: impl FnMut(&LinkWhat) -> Option<T>) -> T {
+    let deadline = Instant::now() + Duration::from_secs(5);
+    while let Ok(item) = end.recv_deadline(deadline) {
+        if let FromLinks::Event(event) = item
+            && let Some(found) = wanted(&event.what)
+        {
+            return found;
+        }
+    }
+    panic!("the event did not come within 5 s");
+}
+
+fn is_up(what: &LinkWhat) -> Option<()> {
+    matches!(what, LinkWhat::Up { .. }).then_some(())
+}
+
+fn reason_down(what: &LinkWhat) -> Option<String> {
+    if let LinkWhat::Down { reason } = what { Some(reason.clone()) } else { None }
+}
+
+fn collect_bytes(end: &Receiver<FromLinks>, n: usize) -> Vec<u8> {
+    let mut all = Vec::new();
+    while all.len() < n {
+        all.extend(await_event(end, |what| if let LinkWhat::Bytes(b) = what { Some(b.to_vec()) } else { None }));
+    }
+    all
+}
+
+#[test]
+fn bytes_reach_both_queues_in_order() {
+    let mut pty = Pty::new();
+    let (links, journal, live) = start(pty.path.clone());
+    await_event(&journal, is_up);
+    let sent: Vec<u8> = (0..3000_u32).map(|i| (i * 7) as u8).collect();
+    pty.master.write_all(&sent).unwrap();
+    assert_eq!(collect_bytes(&journal, sent.len()), sent);
+    assert_eq!(collect_bytes(&live, sent.len()), sent);
+    links.stop().unwrap();
+}
+
+#[test]
+fn the_device_is_asked_for_its_description_its_data_and_its_time() {
+    let mut pty = Pty::new();
+    let (links, journal, _live) = start(pty.path.clone());
+    let token =
+        await_event(&journal, |what| if let LinkWhat::TimeRequested { token } = what { Some(*token) } else { None });
+    let (mut asked, mut read) = (Vec::new(), [0; 4096]);
+    let mut store = vec![0; MAX_COBS_LEN];
+    let mut deframer = Deframer::new(&mut store);
+    while !asked.contains(&format!("TimeRequest(TimeRequest {{ token: {token} }})")) {
+        let n = pty.master.read(&mut read).unwrap();
+        let mut bytes = &read[..n];
+        while let Some(Deframed::Frame(cobs)) = deframer.next_piece(&mut bytes) {
+            asked.push(format!("{:?}", decode(cobs).unwrap().message));
+        }
+    }
+    assert_eq!(asked[..2], [format!("{:?}", Message::DescribeRequest), format!("{:?}", Message::Start)]);
+    links.stop().unwrap();
+}
+
+#[test]
+fn a_pulled_cable_is_told_once_and_not_at_every_try() {
+    let pty = Pty::new();
+    let (links, journal, _live) = start(pty.path.clone());
+    await_event(&journal, is_up);
+    drop(pty.master);
+    let reason = await_event(&journal, reason_down);
+    assert!(reason.contains("closed") || reason.contains("gone"), "{reason}");
+    let reason = await_event(&journal, reason_down);
+    assert!(reason.contains("is not there"), "{reason}");
+    std::thread::sleep(Duration::from_millis(600));
+    let again = journal.try_iter().filter(|item| matches!(item, FromLinks::Event(_))).count();
+    assert_eq!(again, 0, "told once, not at every try");
+    links.stop().unwrap();
+}
+
+#[test]
+fn a_port_that_comes_back_is_read_again() {
+    let dir = tempfile::tempdir().unwrap();
+    let name = dir.path().join("winch-node");
+    let (links, journal, _live) = start(name.clone());
+    assert!(await_event(&journal, reason_down).contains("is not there"));
+    for _ in 0..2 {
+        let mut pty = Pty::new();
+        std::os::unix::fs::symlink(&pty.path, &name).unwrap();
+        await_event(&journal, is_up);
+        pty.master.write_all(b"hello").unwrap();
+        assert_eq!(collect_bytes(&journal, 5), b"hello");
+        std::fs::remove_file(&name).unwrap();
+        drop(pty);
+        await_event(&journal, reason_down);
+    }
+    links.stop().unwrap();
+}
+
+#[test]
+fn stopping_reads_what_is_readable_first_and_closes_the_queues() {
+    let mut pty = Pty::new();
+    let (links, journal, _live) = start(pty.path.clone());
+    await_event(&journal, is_up);
+    pty.master.write_all(&[7; 2000]).unwrap();
+    links.stop().unwrap();
+    let bytes: usize = journal
+        .iter()
+        .map(|item| match item {
+            FromLinks::Event(LinkEvent { what: LinkWhat::Bytes(bytes), .. }) => bytes.len(),
+            _ => 0,
+        })
+        .sum();
+    assert_eq!(bytes, 2000); // `iter` ends because every sender is gone
+}
+
+#[test]
+fn the_heartbeat_comes_fifty_times_a_second() {
+    let pty = Pty::new();
+    let (links, journal, _live) = start(pty.path.clone());
+    std::thread::sleep(Duration::from_millis(1000));
+    links.stop().unwrap();
+    let n = journal.iter().filter(|item| matches!(item, FromLinks::Heartbeat { .. })).count();
+    assert!((40..=55).contains(&n), "{n} heartbeats in a second");
+}
