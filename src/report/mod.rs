@@ -1,1 +1,23 @@
 //! Pages for people: HTML with SVG plots.
+//!
+//! Pure: data in, text out. A page needs nothing beside itself, prints, is readable without its pictures and without
+//! colour. What is absent is said to be absent, with the reason; nothing is drawn across a gap.
+
+mod decimate;
+mod energy;
+mod figures;
+mod html;
+mod labels;
+mod page;
+mod picture;
+mod strip;
+mod tables;
+#[cfg(test)]
+mod tests;
+
+pub use html::trial_page;
+pub use page::{
+    DeviceHealth, EnergyBar, EnergyPart, Heading, MotionCurve, MotionOverRail, PageLimits, PhaseSpan, RailStrip,
+    ResidualTrace, Trace, TrialPage,
+};
+pub use picture::PictureError;
