@@ -1,0 +1,158 @@
+//! The virtual rig's command line, for its own binary and for programs that carry it inside.
+
+use crate::performance::{Options, Performance, PrepareError, prepare};
+use crate::play::pty::{self, PlayError, PtySettings};
+use crate::play::virtual_time::{Delivered, VirtualPlay};
+use crate::scenario;
+use clap::{Args, Parser, Subcommand};
+use std::ffi::OsString;
+use std::io::{BufWriter, Write};
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+use std::sync::atomic::AtomicBool;
+use std::time::Duration;
+
+/// A launcher rig that does not exist: its devices, its motion, and the truth about it.
+#[derive(Debug, Parser)]
+#[command(name = "virtual-rig", version)]
+struct Cli {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    /// Play on ptys in real time: devices at DIR/ports/NAME, truth in DIR/truth.json.
+    Play {
+        #[command(flatten)]
+        rig: RigArgs,
+        #[arg(long)]
+        dir: PathBuf,
+        /// Give up when no host has started every device after this many seconds.
+        #[arg(long, default_value_t = 60.0)]
+        wait_s: f64,
+    },
+    /// Play in virtual time: what a host would have read in OUT/reads.bin, truth in OUT/truth.json.
+    Stream {
+        #[command(flatten)]
+        rig: RigArgs,
+        #[arg(long)]
+        out: PathBuf,
+    },
+    /// List the scenarios.
+    Scenarios,
+}
+
+#[derive(Debug, Args)]
+struct RigArgs {
+    #[arg(long, default_value = "nominal")]
+    scenario: String,
+    /// Draws sensor errors, clocks and noise.
+    #[arg(long, default_value_t = 1)]
+    seed: u64,
+    /// Duration of the slow phases against nominal: 0.3 draws in 30 % of the time.
+    #[arg(long, default_value_t = 1.0)]
+    pace: f64,
+    /// The true payload mass, whatever the rig file says.
+    #[arg(long)]
+    payload_mass_kg: Option<f64>,
+    /// Multiplies every cord's true force.
+    #[arg(long)]
+    cord_force_factor: Option<f64>,
+    /// Added to the hidden zero error of both tension cells.
+    #[arg(long, allow_negative_numbers = true)]
+    cell_offset_n: Option<f64>,
+}
+
+impl RigArgs {
+    fn options(self) -> Options {
+        Options {
+            scenario: self.scenario,
+            seed: self.seed,
+            pace: self.pace,
+            payload_mass_kg: self.payload_mass_kg,
+            cord_force_factor: self.cord_force_factor,
+            cell_offset_n: self.cell_offset_n,
+        }
+    }
+}
+
+#[derive(Debug, thiserror::Error)]
+enum CliError {
+    #[error(transparent)]
+    Prepare(#[from] PrepareError),
+    #[error(transparent)]
+    Play(#[from] PlayError),
+    #[error("cannot write {path}: {source}")]
+    Write { path: String, source: std::io::Error },
+}
+
+/// Runs the command line `args` (the program's name first). Returns the exit code: 0 done, 2 could not run.
+pub fn run(args: impl IntoIterator<Item = impl Into<OsString> + Clone>) -> u8 {
+    let cli = match Cli::try_parse_from(args) {
+        Ok(cli) => cli,
+        Err(refusal) => {
+            // Where standard error is closed there is nobody to tell.
+            let _ = refusal.print();
+            return if refusal.use_stderr() { 2 } else { 0 };
+        }
+    };
+    match carry_out(cli.command) {
+        Ok(()) => 0,
+        Err(error) => {
+            eprintln!("virtual-rig: {error}");
+            2
+        }
+    }
+}
+
+fn carry_out(command: Command) -> Result<(), CliError> {
+    match command {
+        Command::Play { rig, dir, wait_s } => play(&prepare(&rig.options())?, dir, wait_s),
+        Command::Stream { rig, out } => stream(&prepare(&rig.options())?, &out),
+        Command::Scenarios => {
+            for scenario in scenario::all() {
+                println!("{:24} {}", scenario.name, scenario.about);
+            }
+            Ok(())
+        }
+    }
+}
+
+fn play(performance: &Performance, dir: PathBuf, wait_s: f64) -> Result<(), CliError> {
+    let stop = Arc::new(AtomicBool::new(false));
+    for signal in [signal_hook::consts::SIGTERM, signal_hook::consts::SIGINT] {
+        signal_hook::flag::register(signal, Arc::clone(&stop))
+            .map_err(|source| PlayError::System { doing: "listen for signals".into(), source })?;
+    }
+    let wait_for_start = Duration::from_secs_f64(wait_s.clamp(0.0, 86_400.0));
+    pty::play(performance, &PtySettings { dir, wait_for_start, stop })?;
+    Ok(())
+}
+
+/// `reads.bin`: records of host time (i64), device (u16), kind (u8: 0 bytes, 1 time request), length (u32), payload; all
+/// little-endian. The payload of a time request is its token (u32).
+fn stream(performance: &Performance, out: &Path) -> Result<(), CliError> {
+    let path = out.join("reads.bin");
+    let cannot = |source| CliError::Write { path: path.display().to_string(), source };
+    std::fs::create_dir_all(out).map_err(cannot)?;
+    let mut file = BufWriter::new(std::fs::File::create(&path).map_err(cannot)?);
+    let mut play = VirtualPlay::new(performance).map_err(PlayError::Frame)?;
+    for delivery in play.by_ref() {
+        let delivery = delivery.map_err(PlayError::Frame)?;
+        let (kind, payload) = match delivery.what {
+            Delivered::Bytes(bytes) => (0, bytes),
+            Delivered::TimeRequested { token } => (1, token.to_le_bytes().to_vec()),
+        };
+        let mut record = Vec::with_capacity(15 + payload.len());
+        record.extend_from_slice(&delivery.host_ns.to_le_bytes());
+        record.extend_from_slice(&(delivery.device as u16).to_le_bytes());
+        record.push(kind);
+        record.extend_from_slice(&(payload.len() as u32).to_le_bytes());
+        record.extend_from_slice(&payload);
+        file.write_all(&record).map_err(cannot)?;
+    }
+    file.flush().map_err(cannot)?;
+    pty::write_truth(&play.truth(), out)?;
+    Ok(())
+}

@@ -1,0 +1,63 @@
+//! Randomness: every purpose draws from its own stream of one seeded generator, so that one more draw here changes nothing there.
+
+use rand::SeedableRng;
+use rand_chacha::ChaCha8Rng;
+use rand_distr::{Distribution, StandardNormal, Uniform};
+
+/// What a stream of random numbers is for.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Purpose {
+    SensorErrors,
+    Clock { device: u8 },
+    Noise { device: u8, channel: u8 },
+    Transport { device: u8 },
+}
+
+impl Purpose {
+    fn stream(self) -> u64 {
+        match self {
+            Self::SensorErrors => 1,
+            Self::Clock { device } => 0x100 + u64::from(device),
+            Self::Transport { device } => 0x200 + u64::from(device),
+            Self::Noise { device, channel } => 0x10000 + 0x100 * u64::from(device) + u64::from(channel),
+        }
+    }
+}
+
+/// A seeded stream of random numbers.
+#[derive(Debug, Clone)]
+pub struct Draw(ChaCha8Rng);
+
+impl Draw {
+    pub fn new(seed: u64, purpose: Purpose) -> Self {
+        let mut generator = ChaCha8Rng::seed_from_u64(seed);
+        generator.set_stream(purpose.stream());
+        Self(generator)
+    }
+
+    /// Normal with mean 0.
+    pub fn normal(&mut self, standard_deviation: f64) -> f64 {
+        let unit: f64 = StandardNormal.sample(&mut self.0);
+        unit * standard_deviation
+    }
+
+    /// Normal with mean 0, drawn again while outside ±`bound`.
+    pub fn normal_within(&mut self, standard_deviation: f64, bound: f64) -> f64 {
+        loop {
+            let value = self.normal(standard_deviation);
+            if value.abs() <= bound {
+                return value;
+            }
+        }
+    }
+
+    /// Even between `low` and `high`; `low` when there is nothing between.
+    pub fn even(&mut self, low: f64, high: f64) -> f64 {
+        Uniform::new(low, high).map_or(low, |range| range.sample(&mut self.0))
+    }
+
+    pub fn bits(&mut self) -> u64 {
+        use rand::Rng;
+        self.0.next_u64()
+    }
+}

@@ -1,0 +1,4 @@
+//! Two ways to play a performance: on ptys in real time, and as a stream in virtual time.
+
+pub mod pty;
+pub mod virtual_time;

@@ -1,0 +1,365 @@
+//! The truth log: what really happened, and which blocks really left. Field by field in README.md, "Truth log".
+
+use crate::cfc;
+use crate::clock::DeviceClock;
+use crate::device::{BlockTruth, Device};
+use crate::launcher::STANDARD_GRAVITY_MPS2;
+use crate::performance::Performance;
+use crate::physics::launch::{Happening, Split};
+use crate::physics::trajectory::Row;
+use crate::sensor::Errors;
+use serde::Serialize;
+
+const FORMAT: &str = "virtual-rig-truth";
+const FORMAT_VERSION: u32 = 1;
+/// Grid on which peaks and filters are worked out.
+const PEAK_INTERVAL_S: f64 = 20e-6;
+const CLASSES: [(f64, &str); 4] = [(60.0, "cfc60"), (180.0, "cfc180"), (600.0, "cfc600"), (1000.0, "cfc1000")];
+
+#[derive(Debug, Clone, Serialize)]
+pub struct Truth {
+    pub format: &'static str,
+    pub version: u32,
+    pub scenario: &'static str,
+    pub seed: u64,
+    /// `CLOCK_MONOTONIC`, or `virtual` where time was made up.
+    pub clock: &'static str,
+    /// Host time of the scenario's time zero.
+    pub scenario_zero_host_ns: i64,
+    pub outcome: &'static str,
+    pub events: Vec<Event>,
+    pub launch: Option<Launch>,
+    pub peaks: Vec<Peak>,
+    pub tension: Tension,
+    pub energy: EnergyTruth,
+    pub rig: RigTruth,
+    pub devices: Vec<DeviceTruth>,
+}
+
+#[derive(Debug, Clone, Serialize)]
+pub struct Event {
+    pub kind: &'static str,
+    pub host_ns: i64,
+    pub t_s: f64,
+    /// Shuttle, rail frame.
+    pub x_m: f64,
+}
+
+#[derive(Debug, Clone, Serialize)]
+pub struct Launch {
+    /// Payload along the rail at separation, ground frame.
+    pub speed_ground_mps: f64,
+    /// The same in the rail's frame.
+    pub speed_rail_mps: f64,
+    pub airspeed_mps: f64,
+    pub separation_x_m: f64,
+    pub separation_host_ns: i64,
+    /// From the release instant.
+    pub separation_after_release_s: f64,
+    pub greatest_shuttle_speed_rail_mps: f64,
+}
+
+/// Greatest acceleration in the power stroke (release to separation), at the shuttle.
+#[derive(Debug, Clone, Serialize)]
+pub struct Peak {
+    /// `unfiltered`, `cfc60`, …
+    pub filter: &'static str,
+    pub kinematic_g: f64,
+    /// a + g sin θ.
+    pub specific_g: f64,
+    /// Of the specific peak.
+    pub host_ns: i64,
+    /// Of the specific peak.
+    pub x_m: f64,
+}
+
+#[derive(Debug, Clone, Serialize)]
+pub struct Tension {
+    pub hold_line_n: f64,
+    pub hold_cords_n: f64,
+    pub hold_anchor_n: f64,
+    pub hold_x_m: f64,
+    pub line_n_max: f64,
+}
+
+/// J; see `physics::launch::Split`.
+#[derive(Debug, Clone, Serialize)]
+pub struct EnergyTruth {
+    pub winch_work_j: f64,
+    pub cord_elastic_at_release_j: f64,
+    pub at_separation: Option<SplitTruth>,
+    pub at_end: SplitTruth,
+    /// Relative to the elastic energy at release.
+    pub closure_error: f64,
+}
+
+#[derive(Debug, Clone, Serialize)]
+pub struct SplitTruth {
+    pub shuttle_kinetic_j: f64,
+    pub payload_kinetic_j: f64,
+    pub cord_kinetic_j: f64,
+    pub cord_elastic_j: f64,
+    pub gravity_gained_j: f64,
+    pub rail_j: f64,
+    pub cords_delivered_j: f64,
+    pub cord_internal_loss_j: f64,
+    pub line_j: f64,
+    pub friction_j: f64,
+    pub brake_j: f64,
+    pub shuttle_drag_j: f64,
+    pub payload_drag_j: f64,
+    pub rail_damper_j: f64,
+    pub cord_ground_j: f64,
+}
+
+/// The rig as it really was.
+#[derive(Debug, Clone, Serialize)]
+pub struct RigTruth {
+    pub payload_mass_kg: f64,
+    pub shuttle_mass_kg: f64,
+    pub cord_count: f64,
+    pub cord_mass_total_kg: f64,
+    pub cord_force_factor: f64,
+    pub cell_offset_n: f64,
+    pub friction_running_n: f64,
+    pub friction_static_n: f64,
+    pub gravity_mps2: f64,
+    pub incline_rad: f64,
+    pub head_wind_mps: f64,
+    pub pace: f64,
+}
+
+#[derive(Debug, Clone, Serialize)]
+pub struct DeviceTruth {
+    pub name: &'static str,
+    pub device_id: u64,
+    pub boot_id: u32,
+    pub clock: DeviceClock,
+    pub channels: Vec<ChannelTruth>,
+    pub streams: Vec<StreamTruth>,
+}
+
+#[derive(Debug, Clone, Serialize)]
+pub struct ChannelTruth {
+    pub name: &'static str,
+    pub scale: f64,
+    pub zero_counts: f64,
+    pub group_delay_s: f64,
+    pub noise_rms: f64,
+    pub errors: Errors,
+}
+
+#[derive(Debug, Clone, Serialize)]
+pub struct StreamTruth {
+    pub stream: u8,
+    /// `[sequence, first index, number of samples, CRC-32C]` of every block that the port took whole.
+    pub blocks: Vec<(u32, u64, u16, u32)>,
+}
+
+/// A device and the blocks that left it.
+#[derive(Debug, Clone, Copy)]
+pub struct Played<'a> {
+    pub device: &'a Device,
+    pub blocks: &'a [BlockTruth],
+}
+
+impl Truth {
+    /// The log of `performance`, played from `scenario_zero_host_ns` on.
+    pub fn of(
+        performance: &Performance,
+        clock: &'static str,
+        scenario_zero_host_ns: i64,
+        played: &[Played<'_>],
+    ) -> Self {
+        let times = Times { zero_ns: scenario_zero_host_ns };
+        Self {
+            format: FORMAT,
+            version: FORMAT_VERSION,
+            scenario: performance.scenario.name,
+            seed: performance.options.seed,
+            clock,
+            scenario_zero_host_ns,
+            outcome: if performance.launch.at_separation.is_some() { "launched" } else { "not launched" },
+            events: events(performance, times),
+            launch: launch(performance, times),
+            peaks: peaks(performance, times),
+            tension: Tension {
+                hold_line_n: performance.hold.line_n,
+                hold_cords_n: performance.hold.cords_n,
+                hold_anchor_n: performance.hold.anchor_n,
+                hold_x_m: performance.hold.x_m,
+                line_n_max: performance.hold.line_n_max,
+            },
+            energy: energy(performance),
+            rig: rig(performance),
+            devices: played.iter().map(device).collect(),
+        }
+    }
+}
+
+#[derive(Clone, Copy)]
+struct Times {
+    zero_ns: i64,
+}
+
+impl Times {
+    fn host_ns(self, t_s: f64) -> i64 {
+        self.zero_ns + (t_s * 1e9).round() as i64
+    }
+}
+
+fn instant_row(performance: &Performance, what: Happening) -> Option<Row> {
+    performance.instants().iter().find(|instant| instant.what == what).map(|instant| instant.row)
+}
+
+/// The release instant: line tension falls below half its value at the hold.
+fn release_s(performance: &Performance) -> Option<f64> {
+    let half_n = 0.5 * performance.hold.line_n;
+    performance.launch.rows.iter().find(|row| row.line_n < half_n).map(|row| row.t_s)
+}
+
+fn events(performance: &Performance, times: Times) -> Vec<Event> {
+    let mut events: Vec<Event> = performance
+        .phases
+        .iter()
+        .map(|phase| Event { kind: phase.name, host_ns: times.host_ns(phase.t_s), t_s: phase.t_s, x_m: phase.x_m })
+        .collect();
+    events.extend(performance.instants().iter().map(|instant| Event {
+        kind: word(instant.what),
+        host_ns: times.host_ns(instant.t_s),
+        t_s: instant.t_s,
+        x_m: instant.row.x_m,
+    }));
+    if let Some(t_s) = release_s(performance) {
+        let x_m = performance.trajectory.at(t_s).x_m;
+        events.push(Event { kind: "release", host_ns: times.host_ns(t_s), t_s, x_m });
+    }
+    events.sort_by(|a, b| a.t_s.total_cmp(&b.t_s));
+    events
+}
+
+fn word(what: Happening) -> &'static str {
+    match what {
+        Happening::HookOpens => "hook-opens",
+        Happening::FirstMotion => "first-motion",
+        Happening::Separation => "separation",
+        Happening::CordsSlack => "cords-slack",
+        Happening::BrakeReached => "brake-reached",
+        Happening::StopReached => "stop-reached",
+        Happening::Rest => "rest",
+    }
+}
+
+fn launch(performance: &Performance, times: Times) -> Option<Launch> {
+    let row = instant_row(performance, Happening::Separation)?;
+    let release_s = release_s(performance)?;
+    Some(Launch {
+        speed_ground_mps: row.payload_v_ground_mps,
+        speed_rail_mps: row.payload_v_ground_mps - row.rail_v_mps,
+        airspeed_mps: row.payload_v_ground_mps + performance.launcher().head_wind_mps,
+        separation_x_m: row.x_m,
+        separation_host_ns: times.host_ns(row.t_s),
+        separation_after_release_s: row.t_s - release_s,
+        greatest_shuttle_speed_rail_mps: performance.launch.rows.iter().map(|row| row.v_mps).fold(0.0, f64::max),
+    })
+}
+
+fn peaks(performance: &Performance, times: Times) -> Vec<Peak> {
+    let (Some(from_s), Some(separation)) = (release_s(performance), instant_row(performance, Happening::Separation))
+    else {
+        return Vec::new();
+    };
+    let trajectory = &performance.trajectory;
+    let start_s = from_s - 0.5;
+    let kinematic = trajectory.sampled(start_s, separation.t_s + 0.5, PEAK_INTERVAL_S, |row| row.shuttle_a_ground_mps2);
+    let window = (0.5 / PEAK_INTERVAL_S) as usize..((separation.t_s - start_s) / PEAK_INTERVAL_S) as usize;
+    let along_g = performance.launcher().gravity_along_mps2() / STANDARD_GRAVITY_MPS2;
+    let peak = |values: &[f64], filter| {
+        let (idx, peak_mps2) = values[window.clone()]
+            .iter()
+            .enumerate()
+            .fold((0, f64::MIN), |best, (idx, value)| if *value > best.1 { (idx, *value) } else { best });
+        let t_s = from_s + idx as f64 * PEAK_INTERVAL_S;
+        let kinematic_g = peak_mps2 / STANDARD_GRAVITY_MPS2;
+        let (specific_g, x_m) = (kinematic_g + along_g, trajectory.at(t_s).x_m);
+        Peak { filter, kinematic_g, specific_g, host_ns: times.host_ns(t_s), x_m }
+    };
+    let mut peaks = vec![peak(&kinematic, "unfiltered")];
+    for (class, name) in CLASSES {
+        peaks.push(peak(&cfc::filtered(&kinematic, class, 1.0 / PEAK_INTERVAL_S), name));
+    }
+    peaks
+}
+
+fn energy(performance: &Performance) -> EnergyTruth {
+    let run = &performance.launch;
+    let split = |split: &Split| SplitTruth {
+        shuttle_kinetic_j: split.energy.shuttle_j,
+        payload_kinetic_j: split.energy.payload_j,
+        cord_kinetic_j: split.energy.cord_kinetic_j,
+        cord_elastic_j: split.energy.cord_elastic_j,
+        gravity_gained_j: split.energy.gravity_j - run.before.gravity_j,
+        rail_j: split.energy.rail_j,
+        cords_delivered_j: split.cords_delivered_j,
+        cord_internal_loss_j: run.before.cord_elastic_j - split.energy.cord_elastic_j - split.cords_delivered_j,
+        line_j: split.line_j,
+        friction_j: split.friction_j,
+        brake_j: split.brake_j,
+        shuttle_drag_j: split.shuttle_drag_j,
+        payload_drag_j: split.payload_drag_j,
+        rail_damper_j: split.rail_damper_j,
+        cord_ground_j: split.cord_ground_j,
+    };
+    EnergyTruth {
+        winch_work_j: performance.hold.winch_work_j,
+        cord_elastic_at_release_j: run.before.cord_elastic_j,
+        at_separation: run.at_separation.as_ref().map(split),
+        at_end: split(&run.at_end),
+        closure_error: run.energy_error,
+    }
+}
+
+fn rig(performance: &Performance) -> RigTruth {
+    let (launcher, options) = (performance.launcher(), &performance.options);
+    RigTruth {
+        payload_mass_kg: launcher.payload.mass_kg,
+        shuttle_mass_kg: launcher.shuttle.mass_kg,
+        cord_count: launcher.cords.iter().map(|group| group.count).sum(),
+        cord_mass_total_kg: launcher.cord_mass_kg(),
+        cord_force_factor: options.cord_force_factor.unwrap_or(1.0),
+        cell_offset_n: options.cell_offset_n.unwrap_or(0.0),
+        friction_running_n: launcher.shuttle.friction_running_n,
+        friction_static_n: launcher.shuttle.friction_static_n,
+        gravity_mps2: launcher.gravity_mps2,
+        incline_rad: launcher.incline_rad,
+        head_wind_mps: launcher.head_wind_mps,
+        pace: options.pace,
+    }
+}
+
+fn device(played: &Played<'_>) -> DeviceTruth {
+    let device = played.device;
+    let row = |block: &BlockTruth| (block.sequence, block.first_index, block.n_samples, block.crc);
+    DeviceTruth {
+        name: device.spec.name,
+        device_id: device.spec.device_id,
+        boot_id: device.boot_id,
+        clock: device.clock,
+        channels: device
+            .sensors
+            .iter()
+            .map(|sensor| ChannelTruth {
+                name: sensor.spec.name,
+                scale: sensor.spec.scale,
+                zero_counts: sensor.spec.zero_counts,
+                group_delay_s: sensor.spec.group_delay_s(),
+                noise_rms: sensor.spec.noise_rms,
+                errors: sensor.errors,
+            })
+            .collect(),
+        streams: vec![StreamTruth {
+            stream: crate::device::BLOCK_STREAM,
+            blocks: played.blocks.iter().map(row).collect(),
+        }],
+    }
+}
