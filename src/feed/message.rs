@@ -71,3 +71,24 @@ pub enum Command {
     Close { id: u64, person: String },
     Acknowledge { id: u64, person: String },
 }
+
+impl Command {
+    /// The number that the reply repeats.
+    pub const fn id(&self) -> u64 {
+        match self {
+            Self::Mark { id, .. } | Self::Open { id, .. } | Self::Close { id, .. } | Self::Acknowledge { id, .. } => {
+                *id
+            }
+        }
+    }
+
+    /// Who sends it.
+    pub fn person(&self) -> &str {
+        match self {
+            Self::Mark { person, .. }
+            | Self::Open { person, .. }
+            | Self::Close { person, .. }
+            | Self::Acknowledge { person, .. } => person,
+        }
+    }
+}

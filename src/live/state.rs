@@ -16,6 +16,22 @@ pub enum Phase {
     LetDown,
 }
 
+impl Phase {
+    /// The phase as people read it.
+    pub const fn words(self) -> &'static str {
+        match self {
+            Self::Unknown => "unknown",
+            Self::Slack => "slack",
+            Self::WinchBack => "winch-back",
+            Self::Hold => "hold",
+            Self::Launch => "launch",
+            Self::RunOut => "run-out",
+            Self::Rest => "rest",
+            Self::LetDown => "let-down",
+        }
+    }
+}
+
 /// A channel's state at a snapshot.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct ChannelNow {
