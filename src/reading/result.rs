@@ -106,7 +106,7 @@ pub struct EnergyAudit {
     pub stored_j: f64,
     /// Shuttle and payload at separation.
     pub kinetic_j: f64,
-    /// Gained against gravity from hold to separation.
+    /// Height of the separation over the zero mark, where the drawing began.
     pub potential_j: f64,
     /// The rest: friction both ways, hysteresis and relaxation, drag, motion left in the cords.
     pub lost_j: f64,

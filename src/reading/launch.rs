@@ -1,0 +1,135 @@
+//! Separation and what the payload has then.
+//!
+//! A pushed payload is left when the contact force reaches zero. Along the rail m_p·(a + g sin θ) = N − D, so N = 0
+//! where the specific force falls to −D/m_p, D being the payload's drag (½·ρ·C_dA·(v + head wind)²). The cords' pull
+//! dies there, so the speed hardly changes with the place: what a wrong place costs is still in the budget.
+
+use crate::rig::{Rig, Role};
+
+use super::motion::Track;
+use super::rows::{Book, Budget};
+use super::sensors::Sensors;
+
+/// The start of the stroke in which no separation is looked for: the specific force has to rise first.
+const AFTER_RELEASE_S: f64 = 0.01;
+/// The specific force must stay under the crossing this long.
+const STAYS_S: f64 = 0.001;
+/// Over which its slope before the crossing is taken.
+const SLOPE_S: f64 = 0.003;
+
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Separation {
+    pub time_s: f64,
+    pub u_time_s: f64,
+    pub x_m: f64,
+    pub u_x_m: f64,
+    pub speed_mps: f64,
+    pub u_speed_mps: f64,
+}
+
+/// Specific force at which the payload is no longer pushed.
+fn contact_lost_mps2(rig: &Rig, speed_mps: f64) -> f64 {
+    let air_speed_mps = speed_mps + rig.site.head_wind_mps;
+    let drag_n =
+        0.5 * rig.site.air_density_kg_per_m3 * rig.payload.drag_area_m2.value * air_speed_mps * air_speed_mps.abs();
+    -drag_n / rig.payload.mass_kg.value
+}
+
+pub(super) fn find(track: &Track, release_s: f64, rig: &Rig) -> Result<Separation, String> {
+    let motion = &track.motion;
+    let first = track.index_at(release_s + AFTER_RELEASE_S);
+    let n = motion.time_s.len();
+    let under = |idx: usize| track.specific_force_mps2(idx) < contact_lost_mps2(rig, motion.v_mps[idx]);
+    let pushed = (first..n).find(|&idx| !under(idx)).ok_or("the payload was never pushed")?;
+    let stays = |idx: usize| {
+        let until = track.index_at(motion.time_s[idx] + STAYS_S);
+        (idx..=until).all(under)
+    };
+    let found = (pushed..n).find(|&idx| under(idx) && stays(idx));
+    let idx = found.ok_or("the specific force never fell to the payload's drag: no loss of contact was seen")?;
+    Ok(at_crossing(track, idx, rig))
+}
+
+fn at_crossing(track: &Track, idx: usize, rig: &Rig) -> Separation {
+    let motion = &track.motion;
+    let over = |idx: usize| track.specific_force_mps2(idx) - contact_lost_mps2(rig, motion.v_mps[idx]);
+    let (before, after) = (over(idx - 1), over(idx));
+    let share = if before > after { (before / (before - after)).clamp(0.0, 1.0) } else { 1.0 };
+    let between = |column: &[f64]| column[idx - 1] * (1.0 - share) + column[idx] * share;
+    let time_s = between(&motion.time_s);
+    let earlier = track.index_at(time_s - SLOPE_S);
+    let slope_mps3 = ((over(earlier) - over(idx)) / (motion.time_s[idx] - motion.time_s[earlier])).abs();
+    let u_drag_mps2 = contact_lost_mps2(rig, motion.v_mps[idx]).abs() * relative_u_drag(rig);
+    let u_time_s = between(&motion.u_a_mps2).hypot(u_drag_mps2) / slope_mps3.max(10.0);
+    let speed_mps = between(&motion.v_mps);
+    Separation {
+        time_s,
+        u_time_s,
+        x_m: between(&motion.x_m),
+        u_x_m: between(&motion.u_x_m).hypot(speed_mps * u_time_s),
+        speed_mps,
+        u_speed_mps: between(&motion.u_v_mps),
+    }
+}
+
+fn relative_u_drag(rig: &Rig) -> f64 {
+    let relative =
+        |given: crate::rig::Given| if given.value == 0.0 { 0.0 } else { given.standard_uncertainty / given.value };
+    relative(rig.payload.drag_area_m2).hypot(relative(rig.payload.mass_kg))
+}
+
+/// Writes instants and results of the separation.
+pub(super) fn report(found: &Separation, track: &Track, sensors: &Sensors<'_>, rig: &Rig, book: &mut Book) {
+    let by = &track.motion.sensors;
+    book.instant(
+        "separation",
+        found.time_s,
+        found.u_time_s,
+        format!(
+            "specific force of the shuttle fell to {:.2} m/s², where the contact force on the payload is zero ({by})",
+            contact_lost_mps2(rig, found.speed_mps)
+        ),
+    );
+    let place = Budget::default().with("encoder and smoother", found.u_x_m);
+    if track.has_position {
+        book.result(
+            "separation_x",
+            found.x_m,
+            "m",
+            place,
+            format!("smoothed position at separation, rail frame ({by})"),
+        );
+    } else {
+        book.absent("separation_x", format!("the place needs an encoder: {}", sensors.why_not(Role::ShuttlePosition)));
+    }
+    let budget = speed_budget(found, track, sensors);
+    let airspeed = budget.clone();
+    let method = format!(
+        "speed along the rail at the loss of contact, smoothed from {by}; rail taken as standing still in the ground frame"
+    );
+    book.result("launch_speed", found.speed_mps, "m/s", budget, method);
+    book.result(
+        "airspeed_at_separation",
+        found.speed_mps + rig.site.head_wind_mps,
+        "m/s",
+        airspeed,
+        "launch speed plus the rig file's head wind, whose own uncertainty is not stated there",
+    );
+}
+
+fn speed_budget(found: &Separation, track: &Track, sensors: &Sensors<'_>) -> Budget {
+    let idx = track.index_at(found.time_s);
+    let later = track.index_at(found.time_s + 0.002);
+    let a_mps2 = track.motion.a_mps2[idx].abs().max(track.motion.a_mps2[later].abs());
+    let calibration = (found.speed_mps * track.u_encoder_scale).min(found.u_speed_mps);
+    let noise = (found.u_speed_mps.powi(2) - calibration.powi(2)).max(0.0).sqrt();
+    let time_s = sensors.position.or(sensors.specific_force).map_or(0.0, |signal| signal.time_uncertainty_s);
+    Budget::default()
+        .with(
+            if track.has_position { "calibration of the encoder" } else { "calibration of the accelerometer" },
+            calibration,
+        )
+        .with("noise", noise)
+        .with("place of separation", a_mps2 * found.u_time_s)
+        .with("time axis", a_mps2 * time_s)
+}

@@ -1,0 +1,391 @@
+//! Motion of the shuttle from the end of the hold to rest: encoder and accelerometer through one smoother.
+//!
+//! State: position x and speed v in the rail's frame, kinematic acceleration a (driven by white jerk), and three
+//! constants: accelerometer bias b and scale error s, encoder scale error e, each with its calibration as the prior.
+//!
+//!     encoder        z = (1 + e)·x             + quantisation, uniform over one count (GUM 4.3.7)
+//!     accelerometer  z = (1 + s)·(a + g·sin θ) + b + noise as seen in the hold
+//!     while standing 0 = v,  0 = a
+//!
+//! Products of states are linearised about the prediction. A first pass shows how much jerk to allow where (a release
+//! and a brake need a thousand times what the stroke does), the second one uses it. Covariances therefore hold noise and calibration
+//! together. Samples at the end of a channel's range are left out: there the channel only says "at least".
+
+use nalgebra::{SMatrix, SVector};
+
+use crate::calibration::Signal;
+
+use super::result::Motion;
+use super::series::{BIN_S, Binned, Stats, span, stats_between};
+use super::smoother::{Estimate, Filter};
+
+const N: usize = 6;
+const X: usize = 0;
+const V: usize = 1;
+const A: usize = 2;
+const BIAS: usize = 3;
+const SCALE: usize = 4;
+const ENCODER_SCALE: usize = 5;
+
+/// Samples closer than this belong to one point in time.
+const SAME_TIME_S: f64 = 2e-6;
+/// How much hold before the release is taken along, and how much rest after the stop.
+const HOLD_S: f64 = 0.5;
+const REST_S: f64 = 0.2;
+/// Longest run-out that is looked at when no rest was seen.
+const LONGEST_S: f64 = 3.0;
+/// Power density of the white jerk, (m/s³)²·s: standing, in the stroke, and while the release or the brake acts.
+const JERK_STANDING: f64 = 1e-2;
+const JERK_STROKE: f64 = 5e3;
+const JERK_FIRST_PASS: f64 = 1e5;
+const JERK_SHOCK: f64 = 1e7;
+/// Pseudo-measurements of a standing shuttle.
+const STANDING_SPEED_MPS: f64 = 1e-3;
+const STANDING_ACCELERATION_MPS2: f64 = 0.05;
+/// Incline as built against the rig file, as a standard uncertainty: it shows as accelerometer bias.
+const INCLINE_RAD: f64 = 0.002;
+
+/// What the smoother needs to know beside the samples.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Setting {
+    pub release_s: f64,
+    pub u_release_s: f64,
+    /// g·sin θ.
+    pub gravity_along_mps2: f64,
+    /// Where the shuttle stands at the hold when no encoder says so, and how well that is known.
+    pub planned_x_m: f64,
+    pub u_planned_x_m: f64,
+    pub brake_x_m: f64,
+    pub end_s: f64,
+}
+
+/// The smoothed motion and what the smoother learnt of the sensors.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) struct Track {
+    pub motion: Motion,
+    /// a + g·sin θ.
+    pub gravity_along_mps2: f64,
+    pub bias_mps2: f64,
+    pub u_bias_mps2: f64,
+    pub scale: f64,
+    pub u_scale: f64,
+    pub u_encoder_scale: f64,
+    /// Standard deviation of the accelerometer in the hold.
+    pub noise_mps2: f64,
+    pub rest_s: Option<f64>,
+    /// Mean normalised squared innovation of the encoder in the stroke: about 1 when the sensors agree.
+    pub consistency: f64,
+    pub has_position: bool,
+    pub has_specific_force: bool,
+}
+
+#[derive(Debug, Clone, Copy, Default)]
+struct Node {
+    time_s: f64,
+    /// Position and its variance.
+    position: Option<(f64, f64)>,
+    specific_force: Option<f64>,
+}
+
+struct Smoothing<'a> {
+    setting: &'a Setting,
+    nodes: Vec<Node>,
+    prior: Estimate<N>,
+    noise_variance: f64,
+    rest_s: Option<f64>,
+}
+
+/// `None` when neither channel has samples around the release.
+pub(super) fn track(position: Option<&Signal>, force: Option<&Signal>, setting: &Setting) -> Option<Track> {
+    let rest_s = rest(position, force, setting);
+    let from_s = setting.release_s - HOLD_S;
+    let to_s = rest_s.map_or(setting.release_s + LONGEST_S, |rest_s| rest_s + REST_S).min(setting.end_s + 1e-9);
+    let nodes = nodes(position, force, from_s, to_s);
+    if nodes.len() < 10 {
+        return None;
+    }
+    let standing = force.and_then(|signal| stats_between(signal, from_s, setting.release_s - 0.01));
+    let floor = force.map_or(1.0, |signal| signal.resolution / 12f64.sqrt());
+    let noise_mps2 = standing.map_or(floor, |stats: Stats| stats.deviation.max(floor)).max(1e-6);
+    let prior = prior(position, force, &nodes, setting);
+    let smoothing = Smoothing { setting, nodes, prior, noise_variance: noise_mps2 * noise_mps2, rest_s };
+    let first = smoothing.run(None).0;
+    let jerk = smoothing.jerk(&first, force.is_some());
+    let (smoothed, consistency) = smoothing.run(Some(&jerk));
+    Some(smoothing.finish(&smoothed, consistency, position, force, noise_mps2))
+}
+
+impl Smoothing<'_> {
+    /// One pass forward and back; also the encoder's consistency in the stroke.
+    fn run(&self, jerk: Option<&[f64]>) -> (Vec<Estimate<N>>, f64) {
+        let mut filter = Filter::new(self.prior, self.nodes.len());
+        let (mut sum, mut n) = (0.0, 0_u32);
+        let mut last_s = self.nodes[0].time_s;
+        for (idx, node) in self.nodes.iter().enumerate() {
+            if idx > 0 {
+                let dt_s = node.time_s - last_s;
+                let density = jerk.map_or_else(|| self.first_jerk(node), |jerk| jerk[idx]);
+                filter.predict(transition(dt_s), &process(dt_s, density));
+            }
+            last_s = node.time_s;
+            if let Some((z, variance)) = node.position {
+                let innovation = filter.update(position_row(z), z, variance);
+                if node.time_s > self.setting.release_s + 0.02 && z < self.setting.brake_x_m {
+                    sum += innovation.normalised_square();
+                    n += 1;
+                }
+            }
+            self.update_force(&mut filter, node);
+            if self.stands(node.time_s) {
+                filter.update(unit(V), 0.0, STANDING_SPEED_MPS.powi(2));
+                filter.update(unit(A), 0.0, STANDING_ACCELERATION_MPS2.powi(2));
+            }
+            filter.mark();
+        }
+        (filter.smooth(), if n > 0 { sum / f64::from(n) } else { 1.0 })
+    }
+
+    /// About the prediction: (1 + ŝ)·a + b + f̂·s = z − (1 + ŝ)·g sin θ + f̂·ŝ.
+    ///
+    /// Never about a smoothed value: that shares the sample's own noise, and 5,000 samples of it moved s by 4 %.
+    fn update_force(&self, filter: &mut Filter<N>, node: &Node) {
+        let Some(z) = node.specific_force else { return };
+        let gravity = self.setting.gravity_along_mps2;
+        let state = &filter.now().state;
+        let (force, scale) = (state[A] + gravity, state[SCALE]);
+        let mut row = SVector::<f64, N>::zeros();
+        row[A] = 1.0 + scale;
+        row[BIAS] = 1.0;
+        row[SCALE] = force;
+        filter.update(row, z - (1.0 + scale) * gravity + force * scale, self.noise_variance);
+    }
+
+    fn stands(&self, time_s: f64) -> bool {
+        time_s < self.setting.release_s - 0.002 - 3.0 * self.setting.u_release_s
+            || self.rest_s.is_some_and(|rest_s| time_s > rest_s + 2.0 * BIN_S)
+    }
+
+    fn first_jerk(&self, node: &Node) -> f64 {
+        if self.stands(node.time_s) {
+            return JERK_STANDING;
+        }
+        let near_release = (node.time_s - self.setting.release_s).abs() < 0.005 + 3.0 * self.setting.u_release_s;
+        let braking = node.position.is_some_and(|(x, _)| x > self.setting.brake_x_m - 0.02);
+        match (near_release, braking) {
+            (true, _) => JERK_SHOCK,
+            (_, true) => 0.1 * JERK_SHOCK,
+            _ => JERK_FIRST_PASS,
+        }
+    }
+
+    /// Jerk allowed in the second pass: with an accelerometer, what the slopes of the first pass show.
+    fn jerk(&self, first: &[Estimate<N>], has_force: bool) -> Vec<f64> {
+        let acceleration: Vec<f64> = first.iter().map(|estimate| estimate.state[A]).collect();
+        let slopes = if has_force { jerk_density(&self.nodes, &acceleration) } else { Vec::new() };
+        let at = |(idx, node): (usize, &Node)| match slopes.get(idx) {
+            _ if self.stands(node.time_s) => JERK_STANDING,
+            Some(density) => *density,
+            None => Some(self.first_jerk(node)).filter(|&first| first > JERK_FIRST_PASS).unwrap_or(JERK_STROKE),
+        };
+        self.nodes.iter().enumerate().map(at).collect()
+    }
+
+    fn finish(
+        &self,
+        smoothed: &[Estimate<N>],
+        consistency: f64,
+        position: Option<&Signal>,
+        force: Option<&Signal>,
+        noise_mps2: f64,
+    ) -> Track {
+        let inflate = consistency.max(1.0);
+        let column = |i: usize| smoothed.iter().map(|estimate| estimate.state[i]).collect::<Vec<_>>();
+        let spread = |i: usize, extra: f64| {
+            smoothed
+                .iter()
+                .map(|e| (e.covariance[(i, i)].max(0.0) * inflate + extra * extra).sqrt())
+                .collect::<Vec<_>>()
+        };
+        let zero_m = position.map_or(0.0, |signal| signal.zero_uncertainty);
+        let sensors = match (position, force) {
+            (Some(_), Some(_)) => "encoder and accelerometer",
+            (Some(_), None) => "encoder only",
+            _ => "accelerometer only",
+        };
+        let motion = Motion {
+            time_s: self.nodes.iter().map(|node| node.time_s).collect(),
+            x_m: column(X),
+            v_mps: column(V),
+            a_mps2: column(A),
+            u_x_m: spread(X, zero_m),
+            u_v_mps: spread(V, 0.0),
+            u_a_mps2: spread(A, 0.0),
+            sensors: sensors.to_owned(),
+        };
+        let last = smoothed[smoothed.len() - 1];
+        let deviation = |i: usize| last.covariance[(i, i)].max(0.0).sqrt();
+        Track {
+            motion,
+            gravity_along_mps2: self.setting.gravity_along_mps2,
+            bias_mps2: last.state[BIAS],
+            u_bias_mps2: deviation(BIAS),
+            scale: last.state[SCALE],
+            u_scale: deviation(SCALE),
+            u_encoder_scale: if position.is_some() { deviation(ENCODER_SCALE) } else { 0.0 },
+            noise_mps2,
+            rest_s: self.rest_s,
+            consistency,
+            has_position: position.is_some(),
+            has_specific_force: force.is_some(),
+        }
+    }
+}
+
+fn unit(i: usize) -> SVector<f64, N> {
+    let mut row = SVector::zeros();
+    row[i] = 1.0;
+    row
+}
+
+fn position_row(z: f64) -> SVector<f64, N> {
+    let mut row = unit(X);
+    row[ENCODER_SCALE] = z;
+    row
+}
+
+fn transition(dt_s: f64) -> SMatrix<f64, N, N> {
+    let mut f = SMatrix::identity();
+    f[(X, V)] = dt_s;
+    f[(X, A)] = 0.5 * dt_s * dt_s;
+    f[(V, A)] = dt_s;
+    f
+}
+
+/// White jerk of a power density, integrated over a step (Bar-Shalom, Li and Kirubarajan, "Estimation with
+/// Applications to Tracking and Navigation", 2001, eq. 6.2.3-8).
+fn process(dt_s: f64, density: f64) -> SMatrix<f64, N, N> {
+    let mut q = SMatrix::zeros();
+    let d = dt_s;
+    q[(X, X)] = density * d.powi(5) / 20.0;
+    q[(X, V)] = density * d.powi(4) / 8.0;
+    q[(X, A)] = density * d.powi(3) / 6.0;
+    q[(V, V)] = density * d.powi(3) / 3.0;
+    q[(V, A)] = density * d.powi(2) / 2.0;
+    q[(A, A)] = density * d;
+    q[(V, X)] = q[(X, V)];
+    q[(A, X)] = q[(X, A)];
+    q[(A, V)] = q[(V, A)];
+    q
+}
+
+/// Squared slope of the acceleration over 2 ms, times 1 ms in which it may turn; the largest within 2 ms around.
+fn jerk_density(nodes: &[Node], acceleration: &[f64]) -> Vec<f64> {
+    let step_s = (nodes[nodes.len() - 1].time_s - nodes[0].time_s) / (nodes.len() - 1) as f64;
+    let reach = ((0.001 / step_s).round() as usize).max(1);
+    let mut sums = vec![0.0];
+    for a in acceleration {
+        sums.push(sums[sums.len() - 1] + a);
+    }
+    let n = acceleration.len();
+    let mean = |centre: usize| {
+        let (first, last) = (centre.saturating_sub(reach / 2), (centre + reach / 2 + 1).min(n));
+        (sums[last] - sums[first]) / (last - first) as f64
+    };
+    let slope = |idx: usize| {
+        let (first, last) = (idx.saturating_sub(reach), (idx + reach).min(n - 1));
+        (mean(last) - mean(first)) / (nodes[last].time_s - nodes[first].time_s).max(step_s)
+    };
+    let density: Vec<f64> = (0..n).map(|idx| slope(idx).powi(2) * 1e-3).collect();
+    let largest_around = |idx: usize| {
+        let around = &density[idx.saturating_sub(2 * reach)..(idx + 2 * reach + 1).min(n)];
+        around.iter().copied().fold(0.0, f64::max).clamp(5.0, JERK_SHOCK)
+    };
+    (0..n).map(largest_around).collect()
+}
+
+fn prior(position: Option<&Signal>, force: Option<&Signal>, nodes: &[Node], setting: &Setting) -> Estimate<N> {
+    let first_x = nodes.iter().find_map(|node| node.position).map(|(x, _)| x);
+    let mut state = SVector::zeros();
+    state[X] = first_x.unwrap_or(setting.planned_x_m);
+    let u_x = if first_x.is_some() { 0.01 } else { setting.u_planned_x_m };
+    let u_bias = force.map_or(1e-3, |signal| signal.zero_uncertainty.hypot(9.81 * INCLINE_RAD));
+    let u_scale = force.map_or(1e-6, |signal| signal.scale_relative_uncertainty.max(1e-6));
+    let u_encoder = position.map_or(1e-6, |signal| signal.scale_relative_uncertainty.max(1e-7));
+    let deviations = SVector::<f64, N>::from([u_x, 0.1, 1.0, u_bias, u_scale, u_encoder]);
+    Estimate { state, covariance: SMatrix::from_diagonal(&deviations.component_mul(&deviations)) }
+}
+
+/// Samples of both channels in one order of time.
+fn nodes(position: Option<&Signal>, force: Option<&Signal>, from_s: f64, to_s: f64) -> Vec<Node> {
+    let mut nodes: Vec<Node> = Vec::new();
+    if let Some(signal) = position {
+        let window = span(signal, from_s, to_s);
+        let variances = quantisation(&signal.value[window.clone()], signal.resolution);
+        nodes.extend(window.zip(variances).map(|(idx, variance)| Node {
+            time_s: signal.time_s[idx],
+            position: Some((signal.value[idx], variance)),
+            specific_force: None,
+        }));
+    }
+    if let Some(signal) = force {
+        let inside = |value: f64| signal.range.is_none_or(|(low, high)| value > low && value < high);
+        let window = span(signal, from_s, to_s).filter(|&idx| inside(signal.value[idx]));
+        nodes.extend(window.map(|idx| Node {
+            time_s: signal.time_s[idx],
+            position: None,
+            specific_force: Some(signal.value[idx]),
+        }));
+    }
+    nodes.sort_by(|a, b| a.time_s.total_cmp(&b.time_s));
+    nodes.dedup_by(|later, earlier| {
+        let same = later.time_s - earlier.time_s < SAME_TIME_S;
+        if same {
+            earlier.position = earlier.position.or(later.position);
+            earlier.specific_force = earlier.specific_force.or(later.specific_force);
+        }
+        same
+    });
+    nodes
+}
+
+/// Variance of each count: a run of equal counts has one rounding error among them, so it weighs as one sample.
+fn quantisation(values: &[f64], resolution: f64) -> Vec<f64> {
+    let one = (resolution * resolution / 12.0).max(1e-14);
+    let mut variances = Vec::with_capacity(values.len());
+    for run in values.chunk_by(|a, b| (a - b).abs() < 0.5 * resolution) {
+        variances.extend(std::iter::repeat_n(one * run.len() as f64, run.len()));
+    }
+    variances
+}
+
+/// When the shuttle came to stand for good, if it stood for a while before the record ends.
+fn rest(position: Option<&Signal>, force: Option<&Signal>, setting: &Setting) -> Option<f64> {
+    const QUIET_S: f64 = 0.15;
+    let from_s = setting.release_s;
+    let last_moving = if let Some(signal) = position {
+        let x = Binned::new(signal, from_s, setting.end_s);
+        let x_end = x.filled().next_back()?.1.mean;
+        let still_m = f64::max(3.0 * signal.resolution, 5e-4);
+        x.filled()
+            .rev()
+            .find(|(_, bin)| (bin.max - x_end).abs().max((bin.min - x_end).abs()) > still_m)
+            .map(|(idx, _)| x.time_s(idx))
+    } else {
+        let f = Binned::new(force?, from_s, setting.end_s);
+        let n = f.bins.len();
+        let level = f.mean(n.saturating_sub((QUIET_S / BIN_S) as usize)..n)?;
+        f.filled().rev().find(|(_, bin)| (bin.mean - level).abs() > 0.5).map(|(idx, _)| f.time_s(idx))
+    };
+    last_moving.map(|time_s| time_s + BIN_S / 2.0).filter(|time_s| setting.end_s - time_s > QUIET_S)
+}
+
+impl Track {
+    /// Index of the first node at or after an instant.
+    pub(super) fn index_at(&self, time_s: f64) -> usize {
+        self.motion.time_s.partition_point(|&t| t < time_s).min(self.motion.time_s.len().saturating_sub(1))
+    }
+
+    pub(super) fn specific_force_mps2(&self, idx: usize) -> f64 {
+        self.motion.a_mps2[idx] + self.gravity_along_mps2
+    }
+}
