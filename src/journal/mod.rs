@@ -5,6 +5,7 @@
 //! again, to hold more in memory than its bounds, to decode samples. FORMAT.md is the format.
 
 mod body;
+mod clocks;
 mod describes;
 mod disk;
 mod frame;
@@ -12,6 +13,7 @@ mod health;
 mod job;
 mod lock;
 mod reader;
+mod recorder;
 mod retention;
 mod staged;
 mod writer;
@@ -26,5 +28,6 @@ pub use reader::{
     Damage, Item, JournalReader, ReadError, Records, SegmentInfo, Survey, TrialRange, journals, parse_segment_name,
     segment_name,
 };
+pub use recorder::{Ends, Farewell, Order, Recorder, RecorderNow, RecorderPanicked, Report};
 pub use staged::{Fault, Operation, StagedDisk};
 pub use writer::{Journal, Origin, Settings, Start, StartError};

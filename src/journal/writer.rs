@@ -116,7 +116,8 @@ pub struct Journal {
     given_up: Option<String>,
     recent: VecDeque<(i64, u64)>,
     losses: Vec<Loss>,
-    pub(super) retention: Retention,
+    retention: Retention,
+    pinned_from_seq: Option<u64>,
     health: Health,
     notices: Vec<String>,
 }
@@ -191,6 +192,7 @@ impl Journal {
             given_up: start.previous_given_up,
             recent: VecDeque::new(),
             retention: Retention::default(),
+            pinned_from_seq: None,
             health: Health::default(),
             notices: Vec::new(),
             disk,
@@ -286,10 +288,25 @@ impl Journal {
         self.retention.adopt(segment.path.clone(), segment.bytes, end_seq);
     }
 
-    /// Lets go of the oldest segments that no trial from `pinned_from_seq` on needs, down to the budget.
-    pub fn release(&mut self, pinned_from_seq: Option<u64>) {
+    /// Keeps what is needed from this record on; an earlier pin stands.
+    pub fn pin(&mut self, first_seq: u64) {
+        self.pinned_from_seq = Some(self.pinned_from_seq.map_or(first_seq, |pinned| pinned.min(first_seq)));
+    }
+
+    /// Keeps what is needed from this record on, or nothing in particular.
+    pub fn set_pin(&mut self, first_seq: Option<u64>) {
+        self.pinned_from_seq = first_seq;
+    }
+
+    /// Lets go of the oldest segments that nothing pinned needs, down to the budget.
+    pub fn release(&mut self) {
         let own_bytes = self.segment.as_ref().map_or(0, |segment| segment.n_bytes);
-        self.retention.release(pinned_from_seq, self.settings.budget_bytes.saturating_sub(own_bytes));
+        self.retention.release(self.pinned_from_seq, self.settings.budget_bytes.saturating_sub(own_bytes));
+    }
+
+    /// Records before this sequence number are on the disk.
+    pub fn durable_before(&self) -> u64 {
+        seq_of(&self.tail).unwrap_or(self.next_seq)
     }
 
     fn put(&mut self, host_ns: i64, device: DeviceIdx, body: &Body) -> u64 {

@@ -198,11 +198,13 @@ fn segments_beyond_the_budget_go_but_never_one_a_trial_needs() {
     let disk = StagedDisk::default();
     let mut journal = begin(&disk, Settings { budget_bytes: 10_000, ..small() });
     record(&mut journal, &disk, 0, 4000);
-    journal.release(Some(3000));
+    journal.pin(3000);
+    journal.release();
     work(&mut journal, &disk, 50_000 * MS);
     let (records, _) = read(&disk);
     assert!((900..=1000).contains(&records[0].seq), "lead-in of 2000 records kept: first {}", records[0].seq);
-    journal.release(None);
+    journal.set_pin(None);
+    journal.release();
     work(&mut journal, &disk, 50_000 * MS);
     assert!(journal.health(0).own_bytes <= 10_000);
     assert_eq!(read(&disk).0.last().map(|record| record.seq), Some(4000));
