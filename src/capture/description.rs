@@ -4,8 +4,14 @@ use firmware_protocol::{Channel, Describe, Header, Stream};
 
 use super::sample::{ChannelDescription, DeviceDescription, Encoding, StreamDescription};
 
+/// What may be believed of a device's clock.
+const TICK_RATES_HZ: std::ops::RangeInclusive<f64> = 1.0..=1e12;
+
 /// The description in SI units, or why it is of no use.
 pub(super) fn owned(header: &Header, describe: &Describe<'_>) -> Result<DeviceDescription, &'static str> {
+    if !TICK_RATES_HZ.contains(&describe.tick_rate_hz) {
+        return Err("description states a tick rate that no clock has");
+    }
     let streams: Vec<_> = describe.streams.iter().map(|stream| owned_stream(&stream)).collect();
     for (at, stream) in streams.iter().enumerate() {
         if stream.stream == firmware_protocol::CONTROL_STREAM {
