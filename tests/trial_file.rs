@@ -120,7 +120,8 @@ fn signal() -> Signal {
 fn results() -> ResultSet {
     ResultSet {
         outcome: "launched".into(),
-        outcome_evidence: "release line fell below half its hold tension".into(),
+        outcome_evidence: vec!["release line fell below half its hold tension".into(), "größer".into()],
+        findings: vec![],
         entries: vec![ResultEntry {
             name: "launch_speed".into(),
             value: 16.4,
@@ -129,6 +130,7 @@ fn results() -> ResultSet {
             low: 16.36,
             high: 16.44,
             method: "smoother".into(),
+            budget: vec![("calibration".into(), 0.016), ("noise".into(), 0.012)],
         }],
         instants: vec![InstantEntry {
             name: "release".into(),
@@ -184,14 +186,15 @@ fn write_trial(path: &Path) -> Result<(), TrialError> {
         host_ns_at_origin: 1e12,
         ns_per_tick: 1000.01,
         standard_uncertainty_ns: 2e4,
+        asymmetry_ns: 1e4,
         boot_id: 3,
         first_tick: 0,
         last_tick: 7_000_000,
+        two_way: true,
     };
     let (requested_host_ns, replied_host_ns, residual_ns) = (5, 9, -1.5);
-    let (received_tick, sent_tick, boot_id, token) = (1, 2, 3, 4);
-    let exchange =
-        ExchangeRow { requested_host_ns, replied_host_ns, received_tick, sent_tick, boot_id, token, residual_ns };
+    let (received_tick, sent_tick, boot_id) = (1, 2, 3);
+    let exchange = ExchangeRow { requested_host_ns, replied_host_ns, received_tick, sent_tick, boot_id, residual_ns };
     writer.write_clock("winch-node", &[piece], &[exchange])?;
     writer.append_host_clocks(&HostClocksRow {
         monotonic_ns: 1,

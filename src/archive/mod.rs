@@ -1,1 +1,21 @@
-//! Seal, recover, verify, list, show: composes journal, capture, reading and trial.
+//! Seal, recover, list, verify: composes journal, capture, calibration, reading and trial.
+//!
+//! Guarantees: a trial file is made by sealing a journal range and in no other way; it exists whole or not at all; it is
+//! never replaced. Refuses: to write to a journal, to repair a trial file, to overwrite anything.
+
+mod derive;
+mod error;
+mod list;
+mod player;
+mod publish;
+mod raw_pass;
+mod recover;
+mod seal;
+mod value_pass;
+mod verify;
+
+pub use error::SealError;
+pub use list::{Listing, Summary, list};
+pub use recover::{Fate, RecoverError, Recovered, journal_dir, recover, seal_one, sealed_file};
+pub use seal::{Sealed, seal, trial_path};
+pub use verify::{Verified, verify};

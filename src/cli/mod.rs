@@ -4,7 +4,12 @@
 //! [`Command`] and once in [`Command::run`]. Exit codes: 0 done, 1 a check failed, 2 could not run.
 
 mod check;
+mod recover;
 mod screen;
+mod seal_child;
+mod show;
+mod trials;
+mod verify;
 
 use std::error::Error;
 use std::process::ExitCode;
@@ -31,12 +36,23 @@ struct CommandLine {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::Args),
+    Recover(recover::Args),
+    Trials(trials::Args),
+    Show(show::Args),
+    Verify(verify::Args),
+    #[command(hide = true)]
+    SealChild(seal_child::Args),
 }
 
 impl Command {
     fn run(&self, screen: &Screen) -> Result<Verdict, Failure> {
         match self {
             Self::Check(args) => check::run(args, screen),
+            Self::Recover(args) => recover::run(args, screen),
+            Self::Trials(args) => trials::run(args, screen),
+            Self::Show(args) => show::run(args, screen),
+            Self::Verify(args) => verify::run(args, screen),
+            Self::SealChild(args) => seal_child::run(args, screen),
         }
     }
 }

@@ -3,6 +3,7 @@
 use hdf5::types::{TypeDescriptor, VarLenUnicode};
 use hdf5::{Dataset, Group, H5Type, Location};
 
+use super::column::Cell;
 use super::error::{Doing, TrialError};
 
 /// A string as the file stores it. HDF5 ends strings at NUL, so NUL is stored as U+2400 (its visible symbol).
@@ -25,6 +26,12 @@ pub(super) fn put_number<T: H5Type>(at: &Location, name: &str, value: T) -> Resu
 pub(super) fn put_texts(at: &Location, name: &str, texts: &[&str]) -> Result<(), TrialError> {
     let stored: Vec<VarLenUnicode> = texts.iter().map(|text| stored_text(text)).collect();
     let create = || at.new_attr::<VarLenUnicode>().shape(stored.len()).create(name)?.write(&stored);
+    create().doing("writing attribute", full_name(at, name))
+}
+
+/// Writes a list of numbers.
+pub(super) fn put_numbers<T: H5Type>(at: &Location, name: &str, values: &[T]) -> Result<(), TrialError> {
+    let create = || at.new_attr::<T>().shape(values.len()).create(name)?.write(values);
     create().doing("writing attribute", full_name(at, name))
 }
 
@@ -78,6 +85,14 @@ pub(super) fn get_optional_number<T: H5Type>(at: &Location, name: &str) -> Resul
         Err(TrialError::Missing { .. }) => Ok(None),
         Err(other) => Err(other),
     }
+}
+
+/// The list of an attribute; empty where there is none.
+pub(super) fn get_list<T: Cell>(at: &Location, name: &str) -> Result<Vec<T>, TrialError> {
+    let object = full_name(at, name);
+    let Ok(attribute) = at.attr(name) else { return Ok(Vec::new()) };
+    expect_type(&attribute, T::Stored::type_descriptor(), &object, T::CODE)?;
+    Ok(attribute.read_raw::<T::Stored>().doing("reading attribute", object)?.into_iter().map(T::load).collect())
 }
 
 /// A scalar text dataset.

@@ -69,9 +69,13 @@ pub struct ClockRow {
     pub host_ns_at_origin: f64,
     pub ns_per_tick: f64,
     pub standard_uncertainty_ns: f64,
+    /// How far off the map may be for all that two-way timing can see.
+    pub asymmetry_ns: f64,
     pub boot_id: u32,
     pub first_tick: u64,
     pub last_tick: u64,
+    /// Bounded by answered time requests; else by arrivals alone.
+    pub two_way: bool,
 }
 
 /// One time request and its answer, with what the clock map leaves unexplained.
@@ -82,7 +86,6 @@ pub struct ExchangeRow {
     pub received_tick: u64,
     pub sent_tick: u64,
     pub boot_id: u32,
-    pub token: u32,
     /// Middle of the exchange on the host minus the map at the middle of the device's ticks.
     pub residual_ns: f64,
 }
@@ -143,6 +146,13 @@ pub struct CarriedText {
     pub text: String,
 }
 
+/// A carried text and the SHA-256 it was sealed with, lower-case hex.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct SealedText {
+    pub text: CarriedText,
+    pub sealed: String,
+}
+
 /// A quantity derived by the reading, with its own uncertainty at every sample.
 #[derive(Debug, Clone, PartialEq)]
 pub struct DerivedSignal {
@@ -166,6 +176,8 @@ pub struct ResultEntry {
     pub low: f64,
     pub high: f64,
     pub method: String,
+    /// Shares of the standard uncertainty, in the result's unit, by source; they add in quadrature.
+    pub budget: Vec<(String, f64)>,
 }
 
 /// An instant of the trial, as stored in `/result/instants`.
@@ -188,7 +200,10 @@ pub struct AbsentEntry {
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct ResultSet {
     pub outcome: String,
-    pub outcome_evidence: String,
+    /// Sentences, each one piece of evidence.
+    pub outcome_evidence: Vec<String>,
+    /// Disagreements and oddities that a person should look at.
+    pub findings: Vec<String>,
     pub entries: Vec<ResultEntry>,
     pub instants: Vec<InstantEntry>,
     pub absent: Vec<AbsentEntry>,

@@ -48,6 +48,12 @@ pub(super) fn group_digest(mut datasets: Vec<DatasetDigest>) -> String {
     hex(&all.finalize())
 }
 
+/// The digest over all devices: (member name, its digest) in the order of the names' bytes.
+pub(super) fn devices_digest<'a>(parts: impl Iterator<Item = (&'a str, &'a str)>) -> String {
+    let lines: String = parts.map(|(member, digest)| format!("{member}\n{digest}\n")).collect();
+    text_sha256(&lines)
+}
+
 /// SHA-256 of a text, lower-case hex: what `configuration_hash` and carried texts use.
 pub fn text_sha256(text: &str) -> String {
     hex(&Sha256::digest(text.as_bytes()))

@@ -32,6 +32,8 @@ pub enum TrialError {
     Uneven { object: String, found: usize, expected: usize },
     #[error("{object} has no value {word:?}")]
     UnknownWord { object: String, word: String },
+    #[error("{object}: time does not move on at sample {sample}")]
+    TimeStands { object: String, sample: usize },
     #[error("{object} does not exist, the trial holds {n_known} of its kind")]
     NoSuch { object: String, n_known: usize },
     #[error("{object}: block of {n_samples} samples carries {n_channels} channels with {found} counts")]

@@ -21,6 +21,6 @@ mod writer;
 pub use content::*;
 pub use digest::text_sha256;
 pub use error::TrialError;
-pub use raw_reader::RawDigest;
+pub use raw_reader::{RawDigest, whole_raw_digest};
 pub use reader::TrialFile;
 pub use writer::{OpenSignal, RawDevice, TrialWriter};

@@ -3,7 +3,7 @@
 use super::attribute::{get_number, get_text, read_text};
 use super::content::{BlockRow, DeviceRecord, RawChannel, RawCounts, RefusedBytes};
 use super::description::{encoding_from_word, from_json};
-use super::digest::{DatasetDigest, group_digest};
+use super::digest::{DatasetDigest, devices_digest, group_digest};
 use super::error::TrialError;
 use super::members::Members;
 use super::reader::TrialFile;
@@ -17,8 +17,15 @@ use crate::capture::{Counts, Encoding};
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct RawDigest {
     pub device: String,
+    /// The device's group in the file.
+    member: String,
     pub sealed: String,
     pub found: String,
+}
+
+/// The digest over all devices, from what the file holds now.
+pub fn whole_raw_digest(digests: &[RawDigest]) -> String {
+    devices_digest(digests.iter().map(|digest| (digest.member.as_str(), digest.found.as_str())))
 }
 
 impl TrialFile {
@@ -88,7 +95,7 @@ impl TrialFile {
             let group = raw.child(member)?;
             let device = get_text(group.group(), "device")?;
             let sealed = get_text(group.group(), "sha256")?;
-            Ok(RawDigest { device, sealed, found: group_digest(dataset_digests(&group)?) })
+            Ok(RawDigest { device, member: member.to_owned(), sealed, found: group_digest(dataset_digests(&group)?) })
         };
         raw.names().map(digest).collect()
     }

@@ -7,15 +7,17 @@ use std::path::Path;
 
 use hdf5::File;
 
-use super::attribute::{get_number, get_optional_number, get_text, read_number, read_text};
+use super::attribute::{get_list, get_number, get_optional_number, get_text, read_number, read_text};
+use super::column::SAMPLES_PER_CHUNK;
 use super::content::{
     CarriedText, ClockRow, Condition, DerivedSignal, EventRow, ExchangeRow, Header, HostClocksRow, ResultEntry,
-    ResultSet,
+    ResultSet, SealedText,
 };
 use super::error::TrialError;
 use super::members::Members;
 use super::schema::{
-    AbsentTable, ClockTable, EventTable, ExchangeTable, FORMAT_NAME, FORMAT_VERSION, HostClocksTable, InstantTable,
+    AbsentTable, ClockTable, EVIDENCE, EventTable, ExchangeTable, FINDINGS, FORMAT_NAME, FORMAT_VERSION,
+    HostClocksTable, InstantTable, RESULT_RESERVED,
 };
 use super::table::Table;
 use crate::calibration::Signal;
@@ -139,6 +141,14 @@ impl TrialFile {
         Ok(signal)
     }
 
+    /// Reads every measured signal once, a part at a time: lengths equal, time moves on, nothing unreadable.
+    ///
+    /// # Errors
+    /// [`TrialError::TimeStands`] and whatever the library says of damaged chunks.
+    pub fn prove_signals(&self) -> Result<(), TrialError> {
+        self.signal_names()?.iter().try_for_each(|name| prove_signal(&self.named_signal(name)?))
+    }
+
     fn named_signal(&self, name: &str) -> Result<Members, TrialError> {
         let signals = self.root.child("signals")?;
         for member in signals.names() {
@@ -160,6 +170,16 @@ impl TrialFile {
         rig.names().map(|member| named_text(&rig.dataset(member)?)).collect()
     }
 
+    /// The same with the SHA-256 each was sealed with.
+    pub fn texts_with_digests(&self) -> Result<Vec<SealedText>, TrialError> {
+        let rig = self.root.child("rig")?;
+        let text = |member: &str| {
+            let dataset = rig.dataset(member)?;
+            Ok(SealedText { text: named_text(&dataset)?, sealed: get_text(&dataset, "sha256")? })
+        };
+        rig.names().map(text).collect()
+    }
+
     /// Notes and inspection answers, whole.
     pub fn notes(&self) -> Result<Vec<CarriedText>, TrialError> {
         let notes = self.root.child("notes")?;
@@ -175,12 +195,13 @@ impl TrialFile {
     pub fn results(&self) -> Result<ResultSet, TrialError> {
         let result = self.root.child("result")?;
         let mut entries = Vec::new();
-        for member in result.names().filter(|name| !matches!(*name, "instants" | "absent")) {
+        for member in result.names().filter(|name| !RESULT_RESERVED.contains(name)) {
             entries.push(read_entry(&result.dataset(member)?)?);
         }
         Ok(ResultSet {
             outcome: get_text(result.group(), "outcome")?,
-            outcome_evidence: get_text(result.group(), "outcome_evidence")?,
+            outcome_evidence: result.column::<String>(EVIDENCE)?.read_all()?,
+            findings: result.column::<String>(FINDINGS)?.read_all()?,
             entries,
             instants: InstantTable::read(&result.child("instants")?)?,
             absent: AbsentTable::read(&result.child("absent")?)?,
@@ -249,6 +270,10 @@ fn read_entry(dataset: &hdf5::Dataset) -> Result<ResultEntry, TrialError> {
         low: get_number(dataset, "coverage_low")?,
         high: get_number(dataset, "coverage_high")?,
         method: get_text(dataset, "method")?,
+        budget: get_list::<String>(dataset, "budget_sources")?
+            .into_iter()
+            .zip(get_list::<f64>(dataset, "budget_standard_uncertainties")?)
+            .collect(),
     })
 }
 
@@ -263,4 +288,22 @@ fn read_condition(dataset: &hdf5::Dataset) -> Result<Condition, TrialError> {
         unit: get_text(dataset, "units")?,
         source: get_text(dataset, "source")?,
     })
+}
+
+fn prove_signal(group: &Members) -> Result<(), TrialError> {
+    let (time, value) = (group.column::<f64>("time")?, group.column::<f64>("value")?);
+    group.expect_even(&[(time.len(), "time"), (value.len(), "value")])?;
+    let mut last_s = f64::NEG_INFINITY;
+    for from in (0..time.len()).step_by(SAMPLES_PER_CHUNK) {
+        let part = time.read(from, from + SAMPLES_PER_CHUNK)?;
+        for (index, time_s) in part.iter().enumerate() {
+            // Not a number does not move on either.
+            if time_s.partial_cmp(&last_s) != Some(std::cmp::Ordering::Greater) {
+                return Err(TrialError::TimeStands { object: group.group().name(), sample: from + index });
+            }
+            last_s = *time_s;
+        }
+        value.read(from, from + SAMPLES_PER_CHUNK)?;
+    }
+    Ok(())
 }

@@ -17,6 +17,12 @@ pub(super) const FORMAT_VERSION: u32 = 1;
 /// Names within `/raw/<device>` that no channel may take.
 pub(super) const RESERVED: [&str; 7] = ["blocks", "gaps", "rejected", "edges", "status", "text_lines", "descriptions"];
 
+/// Lists of sentences within `/result`.
+pub(super) const EVIDENCE: &str = "outcome_evidence";
+pub(super) const FINDINGS: &str = "findings";
+/// Names within `/result` that no derived number may take.
+pub(super) const RESULT_RESERVED: [&str; 4] = [EVIDENCE, FINDINGS, "instants", "absent"];
+
 table! {
     BlockTable of BlockRow {
         first_index: u64, "1", "first_index";
@@ -95,9 +101,11 @@ table! {
         host_ns_at_origin: f64, "ns", "host_time_at_origin";
         ns_per_tick: f64, "ns/tick", "period";
         standard_uncertainty_ns: f64, "ns", "standard_uncertainty";
+        asymmetry_ns: f64, "ns", "asymmetry";
         boot_id: u32, "1", "boot_id";
         first_tick: u64, "tick", "first_tick";
         last_tick: u64, "tick", "last_tick";
+        two_way: bool, "1", "two_way";
     }
 }
 
@@ -108,7 +116,6 @@ table! {
         received_tick: u64, "tick", "received_tick";
         sent_tick: u64, "tick", "sent_tick";
         boot_id: u32, "1", "boot_id";
-        token: u32, "1", "token";
         residual_ns: f64, "ns", "residual";
     }
 }

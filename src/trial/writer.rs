@@ -9,7 +9,6 @@ use std::collections::BTreeMap;
 use std::path::{Path, PathBuf};
 
 use hdf5::{File, Group};
-use sha2::{Digest, Sha256};
 
 use super::attribute::{new_group, put_number, put_number_dataset, put_text, put_text_dataset};
 use super::content::{
@@ -17,7 +16,7 @@ use super::content::{
     TextLine,
 };
 use super::device_writer::DeviceWriter;
-use super::digest::text_sha256;
+use super::digest::{devices_digest, text_sha256};
 use super::error::{Doing, TrialError};
 use super::names::free_member_name;
 use super::results_writer;
@@ -226,13 +225,17 @@ impl TrialWriter {
     /// # Errors
     /// Any write or flush the library refused; the file is then worthless.
     pub fn finish(mut self) -> Result<(), TrialError> {
-        let mut all = Sha256::new();
         self.devices.sort_by(|a, b| a.0.cmp(&b.0));
+        let mut parts: Vec<(String, String)> = Vec::new();
         for (member, device) in self.devices {
-            all.update(format!("{member}\n{}\n", device.finish()?));
+            let digest = device.finish()?;
+            parts.push((member, digest));
         }
-        let digest: String = all.finalize().iter().map(|byte| format!("{byte:02x}")).collect();
-        put_text(&self.groups.raw, "sha256", &digest)?;
+        put_text(
+            &self.groups.raw,
+            "sha256",
+            &devices_digest(parts.iter().map(|(member, digest)| (member.as_str(), digest.as_str()))),
+        )?;
         for (_, signal) in self.signals {
             signal.finish()?;
         }

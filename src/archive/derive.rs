@@ -1,0 +1,65 @@
+//! The reading of a trial, as the trial file stores it.
+
+use crate::reading::{Motion, Outcome, Reading};
+use crate::trial::{AbsentEntry, DerivedSignal, InstantEntry, ResultEntry, ResultSet};
+
+/// Results, instants and evidence; `truncated` says in a sentence why the trial's end is missing, if it is.
+pub(super) fn result_set(reading: &Reading, truncated: Option<String>) -> ResultSet {
+    let mut outcome_evidence = reading.outcome_evidence.clone();
+    let mut outcome = reading.outcome;
+    if let Some(why) = truncated {
+        outcome_evidence.insert(0, format!("{why}; as far as it goes it reads: {}", outcome.word()));
+        outcome = Outcome::Truncated;
+    }
+    ResultSet {
+        outcome: outcome.word().to_owned(),
+        outcome_evidence,
+        findings: reading.findings.clone(),
+        entries: reading.results.iter().map(entry).collect(),
+        instants: reading
+            .instants
+            .iter()
+            .map(|instant| InstantEntry {
+                name: instant.name.clone(),
+                time_s: instant.time_s,
+                standard_uncertainty_s: instant.standard_uncertainty_s,
+                evidence: instant.evidence.clone(),
+            })
+            .collect(),
+        absent: reading
+            .absent
+            .iter()
+            .map(|absent| AbsentEntry { name: absent.name.clone(), reason: absent.reason.clone() })
+            .collect(),
+    }
+}
+
+fn entry(row: &crate::reading::ResultRow) -> ResultEntry {
+    ResultEntry {
+        name: row.name.clone(),
+        value: row.value,
+        unit: row.unit.clone(),
+        standard_uncertainty: row.standard_uncertainty,
+        low: row.low,
+        high: row.high,
+        method: row.method.clone(),
+        budget: row.budget.iter().map(|term| (term.source.clone(), term.standard_uncertainty)).collect(),
+    }
+}
+
+/// Position, velocity and acceleration along the rail.
+pub(super) fn motion_signals(motion: &Motion) -> [DerivedSignal; 3] {
+    let signal = |name: &str, unit: &str, value: &[f64], uncertainty: &[f64]| DerivedSignal {
+        name: name.to_owned(),
+        unit: unit.to_owned(),
+        method: format!("smoothed from {}", motion.sensors),
+        time_s: motion.time_s.clone(),
+        value: value.to_vec(),
+        standard_uncertainty: uncertainty.to_vec(),
+    };
+    [
+        signal("motion_position", "m", &motion.x_m, &motion.u_x_m),
+        signal("motion_velocity", "m/s", &motion.v_mps, &motion.u_v_mps),
+        signal("motion_acceleration", "m/s^2", &motion.a_mps2, &motion.u_a_mps2),
+    ]
+}

@@ -1,0 +1,204 @@
+//! Plays a range of a journal: records in order, each device's bytes decoded.
+//!
+//! What lies before the range is lead-in: it brings the decoders in step and tells the descriptions in force, and
+//! nothing else of it is handed on. Memory: one record and what it decodes to.
+
+use crate::capture::{Captured, DeviceDecoder, DeviceDescription};
+use crate::journal::{Body, Clocks, Damage, EventBody, Item, JournalReader, Record, SegmentOpen, TrialRange};
+use crate::link::{DeviceIdx, LinkWhat, Lost};
+
+use super::error::SealError;
+
+/// Something a journal range tells.
+#[derive(Debug)]
+pub(super) enum Told {
+    /// A segment begins: rig text and devices as of now. The first of a range comes before everything else.
+    Opening {
+        host_ns: i64,
+        open: Box<SegmentOpen>,
+    },
+    /// A description that was in force when the range began.
+    Known(DeviceIdx, DeviceDescription),
+    Captured(DeviceIdx, Captured),
+    TimeRequested {
+        device: DeviceIdx,
+        host_ns: i64,
+        token: u32,
+    },
+    /// Up or down, in words.
+    Link {
+        device: DeviceIdx,
+        host_ns: i64,
+        text: String,
+    },
+    Clocks(Clocks),
+    Event {
+        host_ns: i64,
+        event: EventBody,
+    },
+    Lost {
+        device: DeviceIdx,
+        host_ns: i64,
+        lost: Lost,
+    },
+    Damage {
+        /// Of the last record before it.
+        host_ns: i64,
+        damage: Damage,
+    },
+}
+
+struct DevicePlayer {
+    decoder: DeviceDecoder,
+    /// The description in force at the range's start, until it was handed on.
+    known: Option<DeviceDescription>,
+}
+
+struct Player<'s> {
+    range: &'s TrialRange,
+    devices: Vec<DevicePlayer>,
+    heard: Vec<Captured>,
+    host_ns: i64,
+    begun: bool,
+    tell: &'s mut dyn FnMut(Told) -> Result<(), SealError>,
+}
+
+/// Plays `range`, handing everything to `tell` in order.
+pub(super) fn play(
+    reader: &JournalReader,
+    range: &TrialRange,
+    tell: &mut dyn FnMut(Told) -> Result<(), SealError>,
+) -> Result<(), SealError> {
+    let mut player =
+        Player { range, devices: Vec::new(), heard: Vec::new(), host_ns: range.first_host_ns, begun: false, tell };
+    for item in reader.records_from(range.first_seq) {
+        match item? {
+            Item::Opening { host_ns, open } => player.opening(host_ns, open)?,
+            Item::Damage(damage) if player.begun => {
+                let host_ns = player.host_ns;
+                (player.tell)(Told::Damage { host_ns, damage })?;
+            }
+            Item::Damage(_) => {}
+            Item::Record(record) if record.seq > range.last_seq => break,
+            Item::Record(record) => player.record(record)?,
+        }
+    }
+    player.end()
+}
+
+impl Player<'_> {
+    fn opening(&mut self, host_ns: i64, open: Box<SegmentOpen>) -> Result<(), SealError> {
+        while self.devices.len() < open.devices.len() {
+            let mut decoder = DeviceDecoder::new();
+            let mut known = None;
+            if let Some(frame) = open.devices[self.devices.len()].describe() {
+                decoder.feed(host_ns, &frame, &mut |captured| {
+                    if let Captured::Description(description) = captured {
+                        known = Some(description);
+                    }
+                });
+            }
+            self.devices.push(DevicePlayer { decoder, known });
+        }
+        (self.tell)(Told::Opening { host_ns, open })
+    }
+
+    fn record(&mut self, record: Record) -> Result<(), SealError> {
+        let Record { seq, host_ns, device, body } = record;
+        let within = seq >= self.range.first_seq;
+        if within {
+            self.begin()?;
+            self.host_ns = host_ns;
+        }
+        let of_a_device = matches!(body, Body::Link(_) | Body::Lost(_));
+        if of_a_device && usize::from(device.0) >= self.devices.len() {
+            return if within { self.unknown_device(host_ns, device) } else { Ok(()) };
+        }
+        if let Body::Link(what) = &body {
+            self.decode(host_ns, device, what);
+            self.hand_on(device, within)?;
+        }
+        if !within {
+            return Ok(());
+        }
+        match body {
+            Body::Link(LinkWhat::TimeRequested { token }) => {
+                (self.tell)(Told::TimeRequested { device, host_ns, token })
+            }
+            Body::Link(LinkWhat::Up { path, baud }) => {
+                (self.tell)(Told::Link { device, host_ns, text: format!("link up: {path} at {baud} baud") })
+            }
+            Body::Link(LinkWhat::Down { reason }) => {
+                (self.tell)(Told::Link { device, host_ns, text: format!("link down: {reason}") })
+            }
+            Body::Clocks(clocks) => (self.tell)(Told::Clocks(clocks)),
+            Body::Event(event) => (self.tell)(Told::Event { host_ns, event }),
+            Body::TrialOpen(open) => self.trial_event(host_ns, open.person, format!("opened: {}", open.reason)),
+            Body::TrialClose(close) => self.trial_event(host_ns, close.person, format!("closed: {}", close.reason)),
+            Body::Lost(lost) => (self.tell)(Told::Lost { device, host_ns, lost }),
+            Body::Link(LinkWhat::Bytes(_)) | Body::Heartbeat | Body::SegmentOpen(_) | Body::Unknown { .. } => Ok(()),
+        }
+    }
+
+    fn unknown_device(&mut self, host_ns: i64, device: DeviceIdx) -> Result<(), SealError> {
+        let (kind, source) = ("journal".to_owned(), "journal".to_owned());
+        let text = format!("a record of device {}, which no segment names, was left out", device.0);
+        (self.tell)(Told::Event { host_ns, event: EventBody { kind, source, person: None, text } })
+    }
+
+    fn trial_event(&mut self, host_ns: i64, person: String, text: String) -> Result<(), SealError> {
+        let (kind, source) = ("trial".to_owned(), "daemon".to_owned());
+        let person = Some(person).filter(|person| !person.is_empty());
+        (self.tell)(Told::Event { host_ns, event: EventBody { kind, source, person, text } })
+    }
+
+    /// Hands on the descriptions in force, once, as the range begins.
+    fn begin(&mut self) -> Result<(), SealError> {
+        if self.begun {
+            return Ok(());
+        }
+        self.begun = true;
+        for (index, device) in self.devices.iter_mut().enumerate() {
+            if let Some(description) = device.known.take() {
+                (self.tell)(Told::Known(DeviceIdx(index as u16), description))?;
+            }
+        }
+        Ok(())
+    }
+
+    fn decode(&mut self, host_ns: i64, device: DeviceIdx, what: &LinkWhat) {
+        let Some(player) = self.devices.get_mut(usize::from(device.0)) else { return };
+        let heard = &mut self.heard;
+        match what {
+            LinkWhat::Bytes(bytes) => player.decoder.feed(host_ns, bytes, &mut |captured| heard.push(captured)),
+            LinkWhat::Down { .. } => player.decoder.link_lost(host_ns, &mut |captured| heard.push(captured)),
+            LinkWhat::Up { .. } | LinkWhat::TimeRequested { .. } => {}
+        }
+    }
+
+    fn hand_on(&mut self, device: DeviceIdx, within: bool) -> Result<(), SealError> {
+        for captured in self.heard.drain(..) {
+            match captured {
+                captured if within => (self.tell)(Told::Captured(device, captured))?,
+                Captured::Description(description) => {
+                    self.devices[usize::from(device.0)].known = Some(description);
+                }
+                _ => {}
+            }
+        }
+        Ok(())
+    }
+
+    /// The journal ended with the trial open: what its last reads left unfinished is kept as refused bytes.
+    fn end(&mut self) -> Result<(), SealError> {
+        if self.range.closed.is_some() {
+            return Ok(());
+        }
+        for index in 0..self.devices.len() {
+            let device = DeviceIdx(index as u16);
+            self.decode(self.host_ns, device, &LinkWhat::Down { reason: String::new() });
+            self.hand_on(device, true)?;
+        }
+        Ok(())
+    }
+}

@@ -1,0 +1,128 @@
+//! Makes a finished file public: read back, synced, renamed without replacing, directory synced. Until then it has a
+//! temporary name in the same directory, and whatever goes wrong it is removed.
+
+use std::fs::{File, Permissions};
+use std::io::{self, Read};
+use std::os::unix::fs::PermissionsExt;
+use std::path::{Path, PathBuf};
+
+use crate::journal::Disk;
+
+use super::error::SealError;
+
+const PART_SUFFIX: &str = ".part";
+
+/// A file under a temporary name; removed when dropped unless it was published.
+#[derive(Debug)]
+pub(super) struct Part<'d> {
+    disk: &'d dyn Disk,
+    path: PathBuf,
+    published: bool,
+}
+
+/// How a file became public.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Published {
+    New,
+    /// The very same bytes were there already.
+    AlreadyThere,
+}
+
+impl<'d> Part<'d> {
+    /// A temporary name beside `dir/<stem>.h5` that names this process, so that two never meet on one file.
+    pub(super) fn new(disk: &'d dyn Disk, dir: &Path, stem: &str) -> Result<Self, SealError> {
+        remove_stale(disk, dir, stem)?;
+        let path = dir.join(format!(".{stem}.{}{PART_SUFFIX}", std::process::id()));
+        Ok(Self { disk, path, published: false })
+    }
+
+    pub(super) fn path(&self) -> &Path {
+        &self.path
+    }
+
+    /// Gives the file its name for good.
+    ///
+    /// # Errors
+    /// [`SealError::Differs`] if the name is taken by other content; the disk's. The part is removed then.
+    pub(super) fn publish(mut self, target: &Path) -> Result<Published, SealError> {
+        if target.exists() {
+            return if same_bytes(&self.path, target)? {
+                Ok(Published::AlreadyThere)
+            } else {
+                Err(SealError::Differs { path: target.to_owned() })
+            };
+        }
+        let at = |doing, path: &Path| {
+            let path = path.to_owned();
+            move |source| SealError::Io { doing, path, source }
+        };
+        std::fs::set_permissions(&self.path, Permissions::from_mode(0o444)).map_err(at("protect", &self.path))?;
+        File::open(&self.path).and_then(|file| file.sync_all()).map_err(at("sync", &self.path))?;
+        self.disk.rename_noreplace(&self.path, target).map_err(at("rename to", target))?;
+        self.published = true;
+        let dir = target.parent().unwrap_or(Path::new("."));
+        self.disk.sync_dir(dir).map_err(at("sync", dir))?;
+        Ok(Published::New)
+    }
+}
+
+impl Drop for Part<'_> {
+    fn drop(&mut self) {
+        if !self.published {
+            // Left behind, it is removed by the next sealing of the trial.
+            let _ = self.disk.remove(&self.path);
+        }
+    }
+}
+
+/// Removes what a killed sealing of the same trial left.
+fn remove_stale(disk: &dyn Disk, dir: &Path, stem: &str) -> Result<(), SealError> {
+    let at = |source| SealError::Io { doing: "list", path: dir.to_owned(), source };
+    for listed in disk.list(dir).map_err(at)? {
+        let name = &listed.name;
+        let of_trial = name.strip_prefix(&format!(".{stem}.")).and_then(|rest| rest.strip_suffix(PART_SUFFIX));
+        let Some(pid) = of_trial.and_then(|pid| pid.parse::<i32>().ok()) else { continue };
+        if pid == std::process::id() as i32 || !is_running(pid) {
+            let path = dir.join(name);
+            disk.remove(&path).map_err(|source| SealError::Io { doing: "remove", path, source })?;
+        }
+    }
+    Ok(())
+}
+
+fn is_running(pid: i32) -> bool {
+    rustix::process::Pid::from_raw(pid)
+        .is_some_and(|pid| !matches!(rustix::process::test_kill_process(pid), Err(rustix::io::Errno::SRCH)))
+}
+
+fn same_bytes(a: &Path, b: &Path) -> Result<bool, SealError> {
+    let open =
+        |path: &Path| File::open(path).map_err(|source| SealError::Io { doing: "read", path: path.to_owned(), source });
+    let (mut one, mut two) = (open(a)?, open(b)?);
+    let mut buffers = (vec![0; 1 << 16], vec![0; 1 << 16]);
+    loop {
+        let read = |file: &mut File, into: &mut [u8], path: &Path| {
+            read_fully(file, into).map_err(|source| SealError::Io { doing: "read", path: path.to_owned(), source })
+        };
+        let (n, m) = (read(&mut one, &mut buffers.0, a)?, read(&mut two, &mut buffers.1, b)?);
+        if buffers.0[..n] != buffers.1[..m] {
+            return Ok(false);
+        }
+        if n == 0 {
+            return Ok(true);
+        }
+    }
+}
+
+fn read_fully(file: &mut File, into: &mut [u8]) -> io::Result<usize> {
+    let mut n = 0;
+    while n < into.len() {
+        match file.read(&mut into[n..]) {
+            Ok(0) => break,
+            Ok(more) => n += more,
+            Err(error) if error.kind() == io::ErrorKind::Interrupted => {}
+            Err(error) => return Err(error),
+        }
+    }
+    Ok(n)
+}

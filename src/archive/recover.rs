@@ -1,0 +1,130 @@
+//! Seals what a crash left: every trial of every journal that has no trial file yet.
+//!
+//! Beside a running daemon (which holds the directory's lock) the trial under way is left alone. Without one, the lock
+//! is held while recovering, so that no daemon starts in between.
+
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+
+use crate::journal::{ArchiveLock, Disk, JournalReader, LockError, ReadError, TrialRange, journals};
+use crate::trial::TrialFile;
+
+use super::error::SealError;
+use super::seal::{Sealed, seal, trial_path};
+
+/// What became of one trial.
+#[derive(Debug)]
+pub struct Recovered {
+    pub journal_id: String,
+    pub trial_id: String,
+    pub fate: Fate,
+}
+
+#[derive(Debug)]
+pub enum Fate {
+    Sealed(Sealed),
+    /// A trial file of this very range is there.
+    AlreadySealed(PathBuf),
+    /// A running daemon is recording it.
+    Live,
+    /// The journal is kept; try again when what the error says is put right.
+    Failed(SealError),
+}
+
+/// Why nothing could be recovered at all.
+#[derive(Debug, thiserror::Error)]
+#[non_exhaustive]
+pub enum RecoverError {
+    #[error(transparent)]
+    Journal(#[from] ReadError),
+    #[error(transparent)]
+    Lock(LockError),
+}
+
+/// Where the journals of an archive directory are.
+pub fn journal_dir(dir: &Path) -> PathBuf {
+    dir.join("journal")
+}
+
+/// Seals every trial in `dir` that is not sealed yet; `progress` hears of each before it is begun.
+///
+/// # Errors
+/// Journals or the lock that cannot be read or taken. A trial that fails is a [`Fate`], and the others go on.
+pub fn recover(
+    dir: &Path,
+    disk: &Arc<dyn Disk>,
+    progress: &mut dyn FnMut(&TrialRange),
+) -> Result<Vec<Recovered>, RecoverError> {
+    let lock = match ArchiveLock::take(dir, &format!("recover, process {}", std::process::id())) {
+        Ok(lock) => Some(lock),
+        Err(LockError::Held { .. }) => None,
+        Err(error) => return Err(RecoverError::Lock(error)),
+    };
+    let mut recovered = Vec::new();
+    let ids = journals(&**disk, &journal_dir(dir))?;
+    for journal_id in &ids {
+        let reader = JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id)?;
+        for range in reader.trials()? {
+            let live = lock.is_none() && range.closed.is_none() && ids.last() == Some(journal_id);
+            let fate = if live { Fate::Live } else { seal_if_needed(&reader, &range, dir, disk, progress) };
+            recovered.push(Recovered { journal_id: journal_id.clone(), trial_id: range.trial_id, fate });
+        }
+    }
+    drop(lock);
+    Ok(recovered)
+}
+
+fn seal_if_needed(
+    reader: &JournalReader,
+    range: &TrialRange,
+    dir: &Path,
+    disk: &Arc<dyn Disk>,
+    progress: &mut dyn FnMut(&TrialRange),
+) -> Fate {
+    match sealed_file(range, dir) {
+        Ok(Some(path)) => return Fate::AlreadySealed(path),
+        Ok(None) => {}
+        Err(error) => return Fate::Failed(error),
+    }
+    progress(range);
+    match seal(reader, range, dir, disk) {
+        Ok(sealed) => Fate::Sealed(sealed),
+        Err(error) => Fate::Failed(error),
+    }
+}
+
+/// The trial file of exactly this range, if there is one that opens.
+///
+/// # Errors
+/// [`SealError::TrialId`].
+pub fn sealed_file(range: &TrialRange, dir: &Path) -> Result<Option<PathBuf>, SealError> {
+    let first = trial_path(dir, &range.trial_id)?;
+    let later = (2_u32..).map(|k| first.with_file_name(format!("trial-{}-{k}.h5", range.trial_id)));
+    for path in std::iter::once(first.clone()).chain(later) {
+        if !path.exists() {
+            return Ok(None);
+        }
+        let is_of_range = TrialFile::open(&path).is_ok_and(|trial| {
+            let header = trial.header();
+            (&header.journal_id, header.first_seq, header.last_seq)
+                == (&range.journal_id, range.first_seq, range.last_seq)
+        });
+        if is_of_range {
+            return Ok(Some(path));
+        }
+    }
+    Ok(None)
+}
+
+/// Seals one trial of one journal: what the daemon's child process does.
+///
+/// # Errors
+/// [`SealError`].
+pub fn seal_one(dir: &Path, journal_id: &str, trial_id: &str, disk: &Arc<dyn Disk>) -> Result<Sealed, SealError> {
+    let reader = JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id)?;
+    let ranges = reader.trials()?;
+    let range = ranges.iter().find(|range| range.trial_id == trial_id);
+    let range = range
+        .ok_or_else(|| SealError::NoSuchTrial { journal_id: journal_id.to_owned(), trial_id: trial_id.to_owned() })?;
+    seal(&reader, range, dir, disk)
+}

@@ -1,0 +1,254 @@
+//! Second pass over a range: counts to values on the trial's time axis, through the clock maps of the first.
+//!
+//! Samples that cannot become values (no clock map, not a number, time that does not move on) stay in the raw groups and
+//! are absent here; how many and why becomes an event. Nothing is filled. Memory: one block, and what the reading is
+//! to see ([`KEPT_SAMPLES_MAX`]).
+
+use std::collections::BTreeMap;
+use std::ops::RangeInclusive;
+
+use crate::calibration::{Sampling, Signal, signal_from_counts};
+use crate::capture::{Block, Captured, ClockPiece, Counts, DeviceDescription, Encoding, StreamDescription, piece_at};
+use crate::link::DeviceIdx;
+use crate::rig::{Channel, Rig};
+use crate::trial::{OpenSignal, TrialWriter};
+
+use super::error::SealError;
+use super::player::Told;
+use super::raw_pass::{DevicePass, Events, seconds_between};
+
+/// Samples handed to the reading, all signals together (16 bytes each): ten minutes of four channels at 10 kHz.
+/// The latest are kept: the launch is at a trial's end.
+const KEPT_SAMPLES_MAX: usize = 24_000_000;
+
+struct SignalPass {
+    channel: Channel,
+    open: Option<OpenSignal>,
+    kept: Option<Signal>,
+    n_dropped: u64,
+    last_time_s: f64,
+    /// Samples without a value, by reason.
+    refused: BTreeMap<String, u64>,
+    refused_host_ns: i64,
+}
+
+/// Where a channel of a stream goes.
+struct Route {
+    place: usize,
+    signal: usize,
+    sampling: Sampling,
+    group_delay_s: f64,
+    ticks_per_sample: u32,
+}
+
+#[derive(Default)]
+struct DeviceRoutes {
+    by_stream: BTreeMap<u8, Vec<Route>>,
+}
+
+pub(super) struct ValuePass<'a> {
+    writer: &'a mut TrialWriter,
+    rig: &'a Rig,
+    devices: &'a [DevicePass],
+    clocks: &'a [Vec<ClockPiece>],
+    zero_host_ns: i64,
+    routes: Vec<DeviceRoutes>,
+    signals: Vec<SignalPass>,
+    n_kept: usize,
+}
+
+/// What the reading is given.
+#[derive(Debug, Default)]
+pub(super) struct ForReading {
+    pub(super) signals: Vec<Signal>,
+    /// The reading sees the trial from here on, where it was too long to be held whole.
+    pub(super) from_s: Option<f64>,
+}
+
+impl<'a> ValuePass<'a> {
+    pub(super) fn new(
+        writer: &'a mut TrialWriter,
+        rig: &'a Rig,
+        devices: &'a [DevicePass],
+        clocks: &'a [Vec<ClockPiece>],
+        zero_host_ns: i64,
+    ) -> Self {
+        let signals = rig.channels.iter().map(|channel| SignalPass::new(channel.clone())).collect();
+        let routes = devices.iter().map(|_| DeviceRoutes::default()).collect();
+        Self { writer, rig, devices, clocks, zero_host_ns, routes, signals, n_kept: 0 }
+    }
+
+    pub(super) fn take(&mut self, told: &Told) -> Result<(), SealError> {
+        match told {
+            Told::Known(device, description) | Told::Captured(device, Captured::Description(description)) => {
+                self.route(*device, description);
+                Ok(())
+            }
+            Told::Captured(device, Captured::Block(block)) => self.block(*device, block),
+            _ => Ok(()),
+        }
+    }
+
+    fn route(&mut self, device: DeviceIdx, description: &DeviceDescription) {
+        let index = usize::from(device.0);
+        let name = &self.devices[index].name;
+        let u_ns = self.clocks[index].iter().map(|piece| piece.u_ns).fold(0.0, f64::max);
+        let mut routes = DeviceRoutes::default();
+        for stream in &description.streams {
+            for (place, described) in stream.channels.iter().enumerate() {
+                let wanted = |channel: &Channel| channel.device == *name && channel.device_channel == described.name;
+                let Some(signal) = self.rig.channels.iter().position(wanted) else { continue };
+                let sampling = Sampling {
+                    nominal_rate_hz: rate_hz(description, stream),
+                    bandwidth_hz: described.bandwidth_hz,
+                    time_uncertainty_s: u_ns * 1e-9,
+                    counts_range: counts_range(described.encoding),
+                };
+                let (group_delay_s, ticks_per_sample) = (described.group_delay_s, stream.ticks_per_sample);
+                let route = Route { place, signal, sampling, group_delay_s, ticks_per_sample };
+                routes.by_stream.entry(stream.stream).or_default().push(route);
+            }
+        }
+        self.routes[index] = routes;
+    }
+
+    fn block(&mut self, device: DeviceIdx, block: &Block) -> Result<(), SealError> {
+        let index = usize::from(device.0);
+        let Some(routes) = self.routes[index].by_stream.get(&block.stream) else { return Ok(()) };
+        let piece = piece_at(&self.clocks[index], block.boot_id, block.first_tick);
+        for route in routes {
+            let (Some(signal), Some(counts)) = (self.signals.get_mut(route.signal), block.counts.get(route.place))
+            else {
+                continue;
+            };
+            let n_samples = u64::from(block.n_samples);
+            let Some(piece) = piece else {
+                signal.refuse("no clock map".to_owned(), n_samples, block.host_ns);
+                continue;
+            };
+            match signal.part(block, counts, route, piece, self.zero_host_ns) {
+                Ok(part) => self.n_kept += signal.write(self.writer, part)?,
+                Err(reason) => signal.refuse(reason, n_samples, block.host_ns),
+            }
+        }
+        self.drop_oldest();
+        Ok(())
+    }
+
+    /// Keeps what the reading will see within its bound: a quarter of it goes at once, from every signal alike.
+    fn drop_oldest(&mut self) {
+        if self.n_kept <= KEPT_SAMPLES_MAX {
+            return;
+        }
+        let kept =
+            |pass: &'_ SignalPass| pass.kept.as_ref().and_then(|s| Some((*s.time_s.first()?, *s.time_s.last()?)));
+        let spans = self.signals.iter().filter_map(kept);
+        let Some((first_s, last_s)) = spans.reduce(|a, b| (a.0.min(b.0), a.1.max(b.1))) else { return };
+        let from_s = first_s + 0.25 * (last_s - first_s);
+        for signal in &mut self.signals {
+            self.n_kept -= signal.drop_before(from_s);
+        }
+    }
+
+    /// Tells what has no value and hands over what the reading is to see.
+    pub(super) fn finish(self, events: &mut Events) -> ForReading {
+        let mut for_reading = ForReading::default();
+        for pass in self.signals {
+            for (reason, n_samples) in &pass.refused {
+                let text = format!("{n_samples} samples of channel {} have no value: {reason}", pass.channel.name);
+                events.add(seconds_between(self.zero_host_ns, pass.refused_host_ns), "seal", "seal", None, text);
+            }
+            let Some(kept) = pass.kept else { continue };
+            if pass.n_dropped > 0 {
+                let first_s = kept.time_s.first().copied().unwrap_or(0.0);
+                for_reading.from_s = Some(for_reading.from_s.map_or(first_s, |from_s| from_s.max(first_s)));
+            }
+            for_reading.signals.push(kept);
+        }
+        for_reading
+    }
+}
+
+impl SignalPass {
+    fn new(channel: Channel) -> Self {
+        let refused = BTreeMap::new();
+        let (open, kept) = (None, None);
+        Self { channel, open, kept, n_dropped: 0, last_time_s: f64::NEG_INFINITY, refused, refused_host_ns: 0 }
+    }
+
+    fn refuse(&mut self, reason: String, n_samples: u64, host_ns: i64) {
+        *self.refused.entry(reason).or_default() += n_samples;
+        self.refused_host_ns = host_ns;
+    }
+
+    /// A block's part of the signal, or why it has none.
+    fn part(
+        &self,
+        block: &Block,
+        counts: &Counts,
+        route: &Route,
+        piece: &ClockPiece,
+        zero_host_ns: i64,
+    ) -> Result<Signal, String> {
+        let time_s = |sample: u32| {
+            let tick = block.first_tick.saturating_add(u64::from(sample) * u64::from(route.ticks_per_sample));
+            (piece.host_ns(tick) - zero_host_ns as f64) * 1e-9 - route.group_delay_s
+        };
+        let times_s: Vec<f64> = (0..block.n_samples).map(time_s).collect();
+        if times_s.first().is_some_and(|first_s| *first_s <= self.last_time_s) {
+            return Err("their times do not move on from the block before".to_owned());
+        }
+        let part = match counts {
+            Counts::Integer(counts) => {
+                signal_from_counts(&self.channel, &route.sampling, times_s, counts.iter().map(|c| f64::from(*c)))
+            }
+            Counts::Float(counts) => {
+                signal_from_counts(&self.channel, &route.sampling, times_s, counts.iter().map(|c| f64::from(*c)))
+            }
+        };
+        part.map_err(|error| error.to_string())
+    }
+
+    /// Appends a part to the file and to what is kept; gives the number of samples.
+    fn write(&mut self, writer: &mut TrialWriter, part: Signal) -> Result<usize, SealError> {
+        let n_samples = part.time_s.len();
+        self.last_time_s = part.time_s.last().copied().unwrap_or(self.last_time_s);
+        match self.open {
+            None => self.open = Some(writer.begin_signal(&part)?),
+            Some(open) => writer.append_signal(open, &part.time_s, &part.value)?,
+        }
+        match &mut self.kept {
+            None => self.kept = Some(part),
+            Some(kept) => {
+                kept.time_s.extend_from_slice(&part.time_s);
+                kept.value.extend_from_slice(&part.value);
+            }
+        }
+        Ok(n_samples)
+    }
+
+    fn drop_before(&mut self, from_s: f64) -> usize {
+        let Some(kept) = &mut self.kept else { return 0 };
+        let n = kept.time_s.partition_point(|time_s| *time_s < from_s);
+        kept.time_s.drain(..n);
+        kept.value.drain(..n);
+        self.n_dropped += n as u64;
+        n
+    }
+}
+
+fn rate_hz(description: &DeviceDescription, stream: &StreamDescription) -> f64 {
+    description.tick_rate_hz / f64::from(stream.ticks_per_sample.max(1))
+}
+
+/// What an encoding can carry; at its ends the channel saturates.
+fn counts_range(encoding: Encoding) -> Option<RangeInclusive<f64>> {
+    let bits = match encoding {
+        Encoding::I16 => 16,
+        Encoding::I24 => 24,
+        Encoding::I32 => 32,
+        Encoding::F32 => return None,
+    };
+    let half = 2_f64.powi(bits - 1);
+    Some(-half..=half - 1.0)
+}

@@ -1,0 +1,150 @@
+//! `tautrail show TRIAL`: what a trial file says of itself, as it was sealed.
+
+use std::path::PathBuf;
+
+use serde_json::{Value, json};
+use tautrail::trial::{EventRow, Header, RawChannel, ResultSet, TrialError, TrialFile};
+
+use super::screen::{Screen, Tone};
+use super::{CAUTION, Failure, Verdict};
+
+/// Show what a trial file holds: outcome, results with uncertainties, events, signals, losses
+#[derive(Debug, clap::Args)]
+#[command(after_help = SHOW_HELP)]
+pub struct Args {
+    /// The trial file
+    trial: PathBuf,
+    /// Print every event
+    #[arg(long)]
+    events: bool,
+}
+
+const SHOW_HELP: &str = "\
+Examples:
+  tautrail show trials/trial-000012-7f3a9c.h5
+  tautrail show --json trials/trial-000012-7f3a9c.h5 | jq '.results[] | select(.name == \"launch_speed\")'
+
+Numbers are as they were when the trial was sealed. Tautrail is no safety device: it advises and records; interlocks,
+exclusion zones, local codes and licensed practice decide.";
+
+struct Shown {
+    header: Header,
+    results: ResultSet,
+    events: Vec<EventRow>,
+    signals: Vec<String>,
+    channels: Vec<RawChannel>,
+    n_missing: u64,
+    raw_sha256: String,
+}
+
+pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
+    let shown = gather(&TrialFile::open(&args.trial)?)?;
+    if screen.json {
+        screen.value(&as_json(args, &shown));
+    } else {
+        print(args, &shown, screen);
+    }
+    Ok(Verdict::Done)
+}
+
+fn gather(trial: &TrialFile) -> Result<Shown, TrialError> {
+    let (mut channels, mut n_missing) = (Vec::new(), 0_u64);
+    for device in trial.device_names()? {
+        channels.extend(trial.raw_channels(&device)?);
+        let gaps = trial.device(&device)?.gaps;
+        n_missing = gaps.iter().fold(n_missing, |sum, gap| sum.saturating_add(gap.n_missing));
+    }
+    let mut signals = trial.signal_names()?;
+    signals.extend(trial.derived_names()?);
+    Ok(Shown {
+        header: trial.header().clone(),
+        results: trial.results()?,
+        events: trial.events()?,
+        signals,
+        channels,
+        n_missing,
+        raw_sha256: trial.sealed_raw_digest()?,
+    })
+}
+
+fn print(args: &Args, shown: &Shown, screen: &Screen) {
+    let Header { trial_id, rig, started, started_quality, .. } = &shown.header;
+    screen.line(screen.toned(&format!("trial {trial_id} on rig {rig}: {}", shown.results.outcome), Tone::Heading));
+    screen.line(format!("  started {started} (wall clock {started_quality})"));
+    shown.results.outcome_evidence.iter().for_each(|sentence| screen.line(format!("  {sentence}")));
+    for finding in &shown.results.findings {
+        screen.line(format!("  {} {finding}", screen.toned("look at:", Tone::Caution)));
+    }
+    print_results(&shown.results, screen);
+    for channel in &shown.channels {
+        let RawChannel { device, name, n_counts, .. } = channel;
+        screen.line(format!("  raw {device}/{name}: {n_counts} counts"));
+    }
+    screen.line(format!("  missing samples: {}", shown.n_missing));
+    screen.line(format!("  signals: {}", shown.signals.join(", ")));
+    screen.line(format!("  raw sha256 {}", shown.raw_sha256));
+    if args.events {
+        for EventRow { time_s, kind, source, text, .. } in &shown.events {
+            screen.line(format!("  {time_s:>10.4} s  {kind:<8} {source:<14} {text}"));
+        }
+    } else {
+        screen.line(format!("  {} events (--events prints them)", shown.events.len()));
+    }
+    screen.line(CAUTION);
+}
+
+fn print_results(results: &ResultSet, screen: &Screen) {
+    for entry in &results.entries {
+        let (name, value, unit) = (&entry.name, entry.value, &entry.unit);
+        let (low, high) = (entry.low, entry.high);
+        screen.line(format!("  {name:<34} {value:>12.5} {unit:<8} 95 %: {low:.5} to {high:.5}"));
+    }
+    for instant in &results.instants {
+        let (name, time_s, u_s) = (&instant.name, instant.time_s, instant.standard_uncertainty_s);
+        screen.line(format!("  {name:<34} {time_s:>12.5} s        u = {u_s:.5} s"));
+    }
+    for absent in &results.absent {
+        screen.line(format!("  {:<34} absent: {}", absent.name, absent.reason));
+    }
+}
+
+fn as_json(args: &Args, shown: &Shown) -> Value {
+    let results: Vec<Value> = shown
+        .results
+        .entries
+        .iter()
+        .map(|entry| {
+            json!({
+                "name": entry.name, "value": entry.value, "unit": entry.unit, "low": entry.low, "high": entry.high,
+                "standard_uncertainty": entry.standard_uncertainty, "method": entry.method, "budget": entry.budget,
+            })
+        })
+        .collect();
+    let instants: Vec<Value> = shown
+        .results
+        .instants
+        .iter()
+        .map(|i| json!({ "name": i.name, "time_s": i.time_s, "standard_uncertainty_s": i.standard_uncertainty_s }))
+        .collect();
+    let absent: Vec<Value> =
+        shown.results.absent.iter().map(|a| json!({ "name": a.name, "reason": a.reason })).collect();
+    let events: Vec<Value> = shown
+        .events
+        .iter()
+        .map(|e| json!({ "time_s": e.time_s, "kind": e.kind, "source": e.source, "person": e.person, "text": e.text }))
+        .collect();
+    let channels: Vec<Value> = shown
+        .channels
+        .iter()
+        .map(|c| json!({ "device": c.device, "channel": c.name, "n_counts": c.n_counts }))
+        .collect();
+    let header = &shown.header;
+    json!({
+        "path": args.trial, "trial_id": header.trial_id, "rig": header.rig, "started": header.started,
+        "started_quality": header.started_quality, "outcome": shown.results.outcome,
+        "outcome_evidence": shown.results.outcome_evidence, "findings": shown.results.findings, "results": results,
+        "instants": instants, "absent": absent, "events": events, "signals": shown.signals, "channels": channels,
+        "n_missing": shown.n_missing, "raw_sha256": shown.raw_sha256,
+        "configuration_hash": header.configuration_hash, "caution": CAUTION,
+    })
+}

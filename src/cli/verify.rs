@@ -1,0 +1,70 @@
+//! `tautrail verify TRIAL…`: proves that trial files still say what was sealed.
+
+use std::path::{Path, PathBuf};
+
+use serde_json::{Value, json};
+use tautrail::archive::{Verified, verify};
+use tautrail::trial::TrialError;
+
+use super::screen::{Screen, Tone};
+use super::{Failure, Verdict};
+
+/// Check that trial files still say what was sealed
+///
+/// Recomputes the digest of all raw data, compares gaps with the blocks' indices and counts with blocks, and checks that
+/// clocks and time axes run forward. The files are only read.
+#[derive(Debug, clap::Args)]
+#[command(after_help = VERIFY_HELP)]
+pub struct Args {
+    /// Trial files
+    #[arg(required = true)]
+    trials: Vec<PathBuf>,
+}
+
+const VERIFY_HELP: &str = "\
+Examples:
+  tautrail verify trials/trial-000012-7f3a9c.h5
+  tautrail verify trials/*.h5
+
+A digest inside a file proves nothing against somebody who rewrote both: compare the printed one with the report's.
+
+Exit code: 0 all sound, 1 something is wrong or unreadable.";
+
+pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
+    let all: Vec<(&PathBuf, Result<Verified, TrialError>)> =
+        args.trials.iter().map(|path| (path, verify(path))).collect();
+    if screen.json {
+        let trials: Vec<Value> = all.iter().map(|(path, verified)| as_json(path, verified)).collect();
+        screen.value(&json!({ "trials": trials }));
+    } else {
+        all.iter().for_each(|(path, verified)| print(path, verified, screen));
+    }
+    let sound = all.iter().all(|(_, verified)| verified.as_ref().is_ok_and(|v| v.findings.is_empty()));
+    Ok(if sound { Verdict::Done } else { Verdict::CheckFailed })
+}
+
+fn print(path: &Path, verified: &Result<Verified, TrialError>, screen: &Screen) {
+    match verified {
+        Ok(verified) => {
+            let Verified { raw_sha256, n_blocks, n_samples, n_missing, findings, .. } = verified;
+            let (word, tone) = if findings.is_empty() { ("sound", Tone::Good) } else { ("NOT SOUND", Tone::Bad) };
+            let word = screen.toned(word, tone);
+            screen.line(format!(
+                "{}: {word}, {n_blocks} blocks, {n_samples} samples, {n_missing} missing, raw sha256 {raw_sha256}",
+                path.display()
+            ));
+            findings.iter().for_each(|finding| screen.line(format!("  {finding}")));
+        }
+        Err(error) => screen.line(format!("{}: {}", screen.toned("UNREADABLE", Tone::Bad), error)),
+    }
+}
+
+fn as_json(path: &Path, verified: &Result<Verified, TrialError>) -> Value {
+    match verified {
+        Ok(v) => json!({
+            "path": path, "sound": v.findings.is_empty(), "trial_id": v.trial_id, "raw_sha256": v.raw_sha256,
+            "n_blocks": v.n_blocks, "n_samples": v.n_samples, "n_missing": v.n_missing, "findings": v.findings,
+        }),
+        Err(error) => json!({ "path": path, "sound": false, "error": error.to_string() }),
+    }
+}
