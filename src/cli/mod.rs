@@ -4,6 +4,7 @@
 //! [`Command`] and once in [`Command::run`]. Exit codes: 0 done, 1 a check failed, 2 could not run.
 
 mod check;
+mod daemon;
 mod recover;
 mod screen;
 mod seal_child;
@@ -36,6 +37,7 @@ struct CommandLine {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::Args),
+    Daemon(daemon::Args),
     Recover(recover::Args),
     Trials(trials::Args),
     Show(show::Args),
@@ -48,6 +50,7 @@ impl Command {
     fn run(&self, screen: &Screen) -> Result<Verdict, Failure> {
         match self {
             Self::Check(args) => check::run(args, screen),
+            Self::Daemon(args) => daemon::run(args, screen),
             Self::Recover(args) => recover::run(args, screen),
             Self::Trials(args) => trials::run(args, screen),
             Self::Show(args) => show::run(args, screen),

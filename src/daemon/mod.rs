@@ -1,1 +1,18 @@
 //! Joins link, journal, live, feed and archive into one process that loses nothing.
+//!
+//! Threads: links (reads ports, nothing else), journal and journal-sync (append, make durable), this one (live view,
+//! orders, feed), the feed's own, and one that waits for sealing children. Guarantees: a trial is never closed while
+//! tension stands or is unknown; what the ports gave is in the journal before the daemon ends; a start after a crash
+//! goes on with the trial or seals it. Refuses: to start where another daemon records.
+
+mod conductor;
+mod error;
+mod found;
+mod machine;
+mod run;
+mod sealing;
+mod trials;
+mod words;
+
+pub use error::DaemonError;
+pub use run::{Options, run};

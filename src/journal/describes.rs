@@ -2,6 +2,7 @@
 //!
 //! Looks at kind and checksum only; samples are not decoded here.
 
+use super::DeviceAtOpen;
 use firmware_protocol::{Kind, MAX_COBS_LEN, Message, PROTOCOL_VERSION, decode};
 
 /// One device's byte stream, watched for descriptions.
@@ -15,8 +16,8 @@ pub(super) struct DescribeKeeper {
 
 impl DescribeKeeper {
     /// Goes on from what an earlier segment knew.
-    pub fn resuming(frame: Vec<u8>) -> Self {
-        Self { partial: Vec::new(), frame }
+    pub fn at_open(device: &DeviceAtOpen) -> Self {
+        Self { partial: Vec::new(), frame: device.describe().unwrap_or_default() }
     }
 
     pub fn feed(&mut self, bytes: &[u8]) {

@@ -15,6 +15,8 @@ pub struct Health {
     /// Events of links that were lost since the start.
     pub lost_events: u64,
     pub segments_given_up: u32,
+    /// Of the disk, when it was last asked.
+    pub free_bytes: u64,
     /// The file system can set room aside for closing records.
     pub reserve_possible: bool,
     /// Why nothing or only little can be written, while that stands.

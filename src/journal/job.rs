@@ -15,16 +15,36 @@ pub enum Job {
     Prepare { number: u32, path: PathBuf, reserve_bytes: u64 },
     /// Remove segments that nothing needs any more.
     Remove { paths: Vec<PathBuf> },
+    /// Ask how much room there is.
+    AskRoom { dir: PathBuf },
 }
 
 /// How it ended.
 #[derive(Debug)]
 pub enum Outcome {
-    Synced { n_bytes: usize },
-    SyncFailed { error: io::Error },
-    Prepared { number: u32, path: PathBuf, file: Arc<dyn AppendFile>, reserved: Reserved },
-    PrepareFailed { path: PathBuf, error: io::Error },
-    Removed { failed: Vec<(PathBuf, io::Error)> },
+    Synced {
+        n_bytes: usize,
+    },
+    SyncFailed {
+        error: io::Error,
+    },
+    Prepared {
+        number: u32,
+        path: PathBuf,
+        file: Arc<dyn AppendFile>,
+        reserved: Reserved,
+    },
+    PrepareFailed {
+        path: PathBuf,
+        error: io::Error,
+    },
+    Removed {
+        failed: Vec<(PathBuf, io::Error)>,
+    },
+    /// `None`: the disk did not say.
+    Room {
+        free_bytes: Option<u64>,
+    },
 }
 
 /// Whether room was set aside.
@@ -54,6 +74,7 @@ impl Job {
                 Ok((file, reserved)) => Outcome::Prepared { number, path, file, reserved },
                 Err(error) => Outcome::PrepareFailed { path, error },
             },
+            Self::AskRoom { dir } => Outcome::Room { free_bytes: disk.free_bytes(&dir).ok() },
             Self::Remove { paths } => Outcome::Removed {
                 failed: paths
                     .into_iter()

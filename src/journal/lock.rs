@@ -15,7 +15,7 @@ pub struct ArchiveLock {
 #[derive(Debug, thiserror::Error)]
 #[non_exhaustive]
 pub enum LockError {
-    #[error("{dir} is held by another tautrail daemon ({holder}); stop that one or give another directory")]
+    #[error("{dir} is held by another tautrail process ({holder}); stop that one or give another directory")]
     Held { dir: PathBuf, holder: String },
     #[error("cannot write in {dir}: {source}; give a directory that this user may write")]
     NotWritable { dir: PathBuf, source: io::Error },

@@ -9,7 +9,10 @@ use std::io::{self, BufReader, Read};
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
+use crate::link::LinkWhat;
+
 use super::body::{Body, FORMAT_VERSION, Record, SegmentOpen, TrialClose, TrialOpen};
+use super::describes::DescribeKeeper;
 use super::disk::Disk;
 use super::frame;
 
@@ -83,6 +86,7 @@ pub struct JournalReader {
     journal_id: String,
     segments: Vec<SegmentInfo>,
     unopenable: Vec<Damage>,
+    highest_number: u32,
 }
 
 /// File name of a segment.
@@ -120,11 +124,15 @@ impl JournalReader {
             let path = path.to_owned();
             move |source| ReadError::Io { path, source }
         };
-        let (mut segments, mut unopenable) = (Vec::new(), Vec::new());
+        let (mut segments, mut unopenable, mut highest_number) = (Vec::new(), Vec::new(), 0);
         for file in disk.list(journal_dir).map_err(at(journal_dir))? {
             let Some((id, number)) = parse_segment_name(&file.name) else { continue };
-            if id != journal_id || file.bytes == 0 {
-                continue; // another journal's, or made ahead and not begun
+            if id != journal_id {
+                continue;
+            }
+            highest_number = highest_number.max(number);
+            if file.bytes == 0 {
+                continue; // made ahead and not begun
             }
             let path = journal_dir.join(&file.name);
             let mut source = disk.open(&path).map_err(at(&path))?;
@@ -140,7 +148,7 @@ impl JournalReader {
             return Err(ReadError::NoSegment { journal_id: journal_id.to_owned(), dir: journal_dir.to_owned() });
         }
         segments.sort_by_key(|segment| segment.number);
-        Ok(Self { disk, journal_id: journal_id.to_owned(), segments, unopenable })
+        Ok(Self { disk, journal_id: journal_id.to_owned(), segments, unopenable, highest_number })
     }
 
     pub fn journal_id(&self) -> &str {
@@ -150,6 +158,11 @@ impl JournalReader {
     /// The segments that open, in order; never empty.
     pub fn segments(&self) -> &[SegmentInfo] {
         &self.segments
+    }
+
+    /// Greatest segment number in use, also by files that do not open.
+    pub fn highest_number(&self) -> u32 {
+        self.highest_number
     }
 
     /// Segment files whose first record is not sound.
@@ -187,32 +200,53 @@ impl JournalReader {
 
     /// The journal's trials and its end, in one pass.
     pub fn survey(&self) -> Result<Survey, ReadError> {
-        let mut survey = Survey { trials: Vec::new(), last_seq: None, last_host_ns: 0, damages: Vec::new() };
+        let mut survey = Survey::default();
+        let mut describes: Vec<DescribeKeeper> = Vec::new();
         for item in self.records() {
             match item? {
-                Item::Record(record) => survey.take(&self.journal_id, record),
+                Item::Opening { open, .. } => {
+                    survey.begin_segment(&open);
+                    describes = open.devices.iter().map(DescribeKeeper::at_open).collect();
+                }
+                Item::Record(record) => {
+                    if let (Body::Link(LinkWhat::Bytes(bytes)), Some(describe)) =
+                        (&record.body, describes.get_mut(usize::from(record.device.0)))
+                    {
+                        describe.feed(bytes);
+                    }
+                    survey.take(&self.journal_id, record);
+                }
                 Item::Damage(damage) => survey.damages.push(damage),
-                Item::Opening { .. } => {}
             }
         }
+        survey.describes_hex = describes.iter().map(DescribeKeeper::describe_hex).collect();
         Ok(survey)
     }
 }
 
 /// What one pass over a journal shows.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone, Default, PartialEq)]
 pub struct Survey {
     pub trials: Vec<TrialRange>,
     /// `None`: segments without a single record.
     pub last_seq: Option<u64>,
     pub last_host_ns: i64,
     pub damages: Vec<Damage>,
+    /// Per device, the last frame that described it, as in segment openings.
+    pub describes_hex: Vec<String>,
+    /// A later segment says that the last trial was not under way any more: it ends there, without a close.
+    last_has_ended: bool,
 }
 
 impl Survey {
     /// The trial that was under way when the journal ended.
     pub fn open_trial(&self) -> Option<&TrialRange> {
-        self.trials.last().filter(|trial| trial.closed.is_none())
+        self.trials.last().filter(|trial| trial.closed.is_none() && !self.last_has_ended)
+    }
+
+    fn begin_segment(&mut self, open: &SegmentOpen) {
+        let last = self.trials.last();
+        self.last_has_ended |= last.is_some_and(|trial| open.open_trial.as_ref() != Some(&trial.trial_id));
     }
 
     fn take(&mut self, journal_id: &str, record: Record) {
@@ -230,14 +264,19 @@ impl Survey {
                 last_host_ns: record.host_ns,
                 opened,
             });
+            self.last_has_ended = false;
             return;
         }
         let Some(trial) = self.trials.last_mut().filter(|trial| trial.closed.is_none()) else { return };
+        // Its close may stand in a segment that repeats what a given-up one held, behind the opening.
+        let closed = match record.body {
+            Body::TrialClose(closed) if closed.trial_id == trial.trial_id => Some(closed),
+            _ if self.last_has_ended => return,
+            _ => None,
+        };
         trial.last_seq = record.seq;
         trial.last_host_ns = record.host_ns;
-        if let Body::TrialClose(closed) = record.body {
-            trial.closed = Some(closed);
-        }
+        trial.closed = closed;
     }
 }
 

@@ -29,6 +29,11 @@ impl Retention {
         self.kept.push_back(Kept { path, n_bytes, end_seq });
     }
 
+    /// Removes a file that holds nothing.
+    pub fn doom(&mut self, path: PathBuf) {
+        self.doomed.push(path);
+    }
+
     pub fn n_bytes(&self) -> u64 {
         self.kept.iter().map(|kept| kept.n_bytes).sum()
     }

@@ -114,6 +114,7 @@ pub struct Journal {
     /// Not before this time is a new segment tried after one could not be made.
     retry_ns: i64,
     given_up: Option<String>,
+    ask_room_ns: i64,
     recent: VecDeque<(i64, u64)>,
     losses: Vec<Loss>,
     retention: Retention,
@@ -152,6 +153,7 @@ const RECENT_NS: i64 = 60_000_000_000;
 const RECENT_STEP_NS: i64 = 5_000_000;
 const RETRY_OPEN_NS: i64 = 50_000_000;
 const RETRY_AHEAD_NS: i64 = 500_000_000;
+const ASK_ROOM_EVERY_NS: i64 = 2_000_000_000;
 const WRITE_ATTEMPTS: usize = 3;
 
 impl Journal {
@@ -169,11 +171,10 @@ impl Journal {
     ) -> Result<Self, StartError> {
         let failed = |source| StartError { dir: dir.to_owned(), source };
         disk.create_dir(dir).map_err(failed)?;
-        let keep = |device: &DeviceAtOpen| DescribeKeeper::resuming(device.describe().unwrap_or_default());
         let mut journal = Self {
             dir: dir.to_owned(),
             settings,
-            describes: origin.devices.iter().map(keep).collect(),
+            describes: origin.devices.iter().map(DescribeKeeper::at_open).collect(),
             losses: origin.devices.iter().map(|_| Loss::default()).collect(),
             origin,
             open_trial: start.open_trial,
@@ -190,6 +191,7 @@ impl Journal {
             urgent: true,
             retry_ns: now_ns,
             given_up: start.previous_given_up,
+            ask_room_ns: now_ns,
             recent: VecDeque::new(),
             retention: Retention::default(),
             pinned_from_seq: None,
@@ -286,6 +288,11 @@ impl Journal {
     pub fn adopt(&mut self, segment: &SegmentInfo, end_seq: u64) {
         let end_seq = (segment.open.journal_id == self.origin.journal_id).then_some(end_seq);
         self.retention.adopt(segment.path.clone(), segment.bytes, end_seq);
+    }
+
+    /// Removes a file that an earlier run made ahead and never began.
+    pub fn forget(&mut self, path: PathBuf) {
+        self.retention.doom(path);
     }
 
     /// Keeps what is needed from this record on; an earlier pin stands.

@@ -9,6 +9,7 @@ impl Journal {
             return None;
         }
         let job = self.sync_job(now_ns).or_else(|| self.prepare_job(now_ns)).or_else(|| self.retention.job());
+        let job = job.or_else(|| self.room_job(now_ns));
         self.job_in_flight = job.is_some();
         job
     }
@@ -33,6 +34,7 @@ impl Journal {
                 self.trouble(format!("cannot make the next segment {}: {error}", path.display()));
                 self.retry_ns = now_ns + RETRY_AHEAD_NS;
             }
+            Outcome::Room { free_bytes } => self.health.free_bytes = free_bytes.unwrap_or(self.health.free_bytes),
             Outcome::Removed { failed } => {
                 for (path, error) in failed {
                     self.notices.push(format!("cannot remove {}: {error}", path.display()));
@@ -68,6 +70,14 @@ impl Journal {
         if dirty.finished && dirty.n_bytes == 0 {
             self.dirty.pop_front();
         }
+    }
+
+    fn room_job(&mut self, now_ns: i64) -> Option<Job> {
+        if now_ns < self.ask_room_ns {
+            return None;
+        }
+        self.ask_room_ns = now_ns + ASK_ROOM_EVERY_NS;
+        Some(Job::AskRoom { dir: self.dir.clone() })
     }
 
     fn prepare_job(&mut self, now_ns: i64) -> Option<Job> {

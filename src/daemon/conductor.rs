@@ -1,0 +1,370 @@
+//! The daemon's main loop: what live sees becomes orders to the recorder, messages on the feed, and trials to seal.
+//!
+//! Never waits for a disk, a client or a child: orders that find the recorder's queue full are kept in order here.
+
+use std::collections::VecDeque;
+use std::path::PathBuf;
+use std::sync::Arc;
+use std::time::{Duration, Instant};
+
+use crossbeam_channel::{Receiver, Sender, never, select};
+
+use crate::feed::message::{Command, Event, Message};
+use crate::feed::{FeedServer, Replier, Request};
+use crate::journal::{Clocks, EventBody, Order, Recorder, RecorderNow, Report, TrialClose};
+use crate::link::{FromLinks, HostClock, LinkEvent, LinkWhat, Links, Lost};
+use crate::live::{Around, CordsNow, Happening, JournalNow, Live, TrialNow};
+
+use super::error::DaemonError;
+use super::sealing::{SealReport, Sealer};
+use super::trials::TrialBook;
+use super::words;
+
+/// Everything the loop owns.
+pub struct Conductor {
+    pub live: Live,
+    pub feed: FeedServer,
+    pub orders: Sender<Order>,
+    pub recorder: Recorder,
+    /// Taken when the ports are stopped.
+    pub links: Option<Links>,
+    pub sealer: Sealer,
+    pub book: TrialBook,
+    pub clock: Arc<dyn HostClock>,
+    pub on_event: Box<dyn FnMut(&Event)>,
+    /// A trial that does not go on, as long as it may be the same tension: the next one says it continues it.
+    pub unfinished: Option<String>,
+    pub device_names: Vec<String>,
+    pub dir: PathBuf,
+    pub seal_patience: Duration,
+    pub unsent: VecDeque<Order>,
+}
+
+/// Everything that reaches the loop.
+#[derive(Debug)]
+pub struct Inputs {
+    pub live: Receiver<FromLinks>,
+    pub requests: Receiver<Request>,
+    pub reports: Receiver<Report>,
+    pub sealed: Receiver<SealReport>,
+    /// Why the daemon is to stop.
+    pub shutdown: Receiver<String>,
+}
+
+/// 30 a second.
+const SNAPSHOT_EVERY: Duration = Duration::from_nanos(33_333_333);
+const WATCH_EVERY: Duration = Duration::from_millis(200);
+/// Taken in one go before anything else is looked at.
+const BATCH: usize = 256;
+/// How long the last orders may wait for the recorder.
+const LAST_ORDERS: Duration = Duration::from_secs(10);
+
+impl Conductor {
+    /// Runs until told to stop, then stops in the order in which data flow.
+    ///
+    /// # Errors
+    /// When a thread ended by itself, or the last records did not reach the disk.
+    pub fn run(mut self, mut inputs: Inputs) -> Result<(), DaemonError> {
+        let (mut snapshot_at, mut watch_at) = (Instant::now(), Instant::now());
+        loop {
+            let wait = snapshot_at.saturating_duration_since(Instant::now());
+            select! {
+                recv(inputs.live) -> item => match item {
+                    Ok(item) => self.take_all(item, &inputs.live),
+                    Err(_) => return Err(DaemonError::ThreadEnded { thread: "links" }),
+                },
+                recv(inputs.requests) -> request => match request {
+                    Ok(request) => self.answer(request),
+                    Err(_) => inputs.requests = never(),
+                },
+                recv(inputs.reports) -> report => match report {
+                    Ok(report) => self.take_report(report),
+                    Err(_) => return Err(DaemonError::ThreadEnded { thread: "journal" }),
+                },
+                recv(inputs.sealed) -> report => match report {
+                    Ok(report) => self.take_sealed(report),
+                    Err(_) => return Err(DaemonError::ThreadEnded { thread: "sealing" }),
+                },
+                recv(inputs.shutdown) -> reason => {
+                    return self.stop(&inputs, &reason.unwrap_or_else(|_| "its owner is gone".to_owned()));
+                }
+                default(wait) => {}
+            }
+            self.send_orders();
+            let now = Instant::now();
+            if now >= watch_at {
+                watch_at = now + WATCH_EVERY;
+                self.watch()?;
+            }
+            if now >= snapshot_at {
+                snapshot_at = (snapshot_at + SNAPSHOT_EVERY).max(now);
+                self.publish_snapshot();
+            }
+        }
+    }
+
+    fn take_all(&mut self, first: FromLinks, live: &Receiver<FromLinks>) {
+        self.take(first);
+        live.try_iter().take(BATCH).for_each(|item| self.take(item));
+    }
+
+    fn take(&mut self, item: FromLinks) {
+        let happenings = match item {
+            FromLinks::Heartbeat { host_ns } => self.live.tick(host_ns),
+            FromLinks::Lost { device, lost } => {
+                let device = self.device_names.get(usize::from(device.0)).cloned().unwrap_or_default();
+                self.note_live_loss(&device, lost);
+                Vec::new()
+            }
+            FromLinks::Event(event) => {
+                self.tell_link(&event);
+                self.live.on_link(&event)
+            }
+        };
+        for happening in happenings {
+            self.act(&happening);
+        }
+        if self.live.cords() == CordsNow::Slack {
+            self.unfinished = None;
+        }
+    }
+
+    fn tell_link(&mut self, event: &LinkEvent) {
+        let device = self.device_names.get(usize::from(event.device.0)).map_or("?", String::as_str);
+        let text = match &event.what {
+            LinkWhat::Up { path, baud } => format!("{device}: {path} is open at {baud} baud"),
+            LinkWhat::Down { reason } => format!("{device}: {reason}"),
+            LinkWhat::Bytes(_) | LinkWhat::TimeRequested { .. } => return,
+        };
+        // In the journal it is a record of its own already.
+        self.publish(&words::event(event.host_ns, "link", "link", text));
+    }
+
+    fn note_live_loss(&mut self, device: &str, lost: Lost) {
+        let text = format!("the live view missed {} reads of {device}; the journal has its own queue", lost.n_events);
+        self.tell(words::event(lost.last_host_ns, "note", "daemon", text));
+    }
+
+    fn act(&mut self, happening: &Happening) {
+        match happening {
+            Happening::OpenTrial { host_ns, preroll_from_host_ns } => {
+                self.open_trial(*host_ns, *preroll_from_host_ns, "tension rises", "");
+            }
+            Happening::CloseTrial { host_ns, reason } => self.close_trial(*host_ns, reason, ""),
+            other => self.tell(Event::of(other)),
+        }
+    }
+
+    fn open_trial(&mut self, host_ns: i64, from_host_ns: i64, reason: &str, person: &str) {
+        let trial_id = match self.book.begin(host_ns) {
+            Ok(trial_id) => trial_id,
+            Err(error) => return self.complain(&format!("cannot open a trial: {error}")),
+        };
+        let continues = self.unfinished.take();
+        let text = match &continues {
+            Some(earlier) => format!("trial {trial_id} opens, goes on under the tension of {earlier}: {reason}"),
+            None => format!("trial {trial_id} opens: {reason}"),
+        };
+        self.unsent.push_back(Order::OpenTrial {
+            host_ns,
+            from_host_ns,
+            trial_id,
+            reason: reason.to_owned(),
+            person: person.to_owned(),
+            continues,
+        });
+        self.publish(&words::by(person, words::event(host_ns, "trial", "daemon", text)));
+    }
+
+    fn close_trial(&mut self, host_ns: i64, reason: &str, person: &str) {
+        let Some(trial_id) = self.book.close() else { return };
+        let text = format!("trial {trial_id} closes: {reason}");
+        let close = TrialClose { trial_id, reason: reason.to_owned(), person: person.to_owned() };
+        self.unsent.push_back(Order::CloseTrial { host_ns, close });
+        self.publish(&words::by(person, words::event(host_ns, "trial", "daemon", text)));
+    }
+
+    fn take_report(&mut self, report: Report) {
+        match report {
+            Report::TrialOpened { trial_id, first_seq } => self.book.opened(&trial_id, first_seq),
+            Report::TrialClosed { trial_id, durable: true } => {
+                if let Some(unsealed) = self.book.find_waiting(&trial_id) {
+                    self.sealer.seal(unsealed.clone());
+                }
+            }
+            Report::TrialClosed { trial_id, durable: false } => self.complain(&format!(
+                "the closing record of trial {trial_id} did not reach the disk; `tautrail recover` seals it"
+            )),
+            // The recorder has it in the journal.
+            Report::Notice(text) => self.publish(&words::event(self.clock.monotonic_ns(), "journal", "journal", text)),
+        }
+    }
+
+    fn take_sealed(&mut self, report: SealReport) {
+        if report.result.is_ok() {
+            self.book.sealed(&report.trial_id);
+            self.unsent.push_back(Order::Pin { first_seq: self.book.pinned_from() });
+        }
+        self.tell(words::sealed(self.clock.monotonic_ns(), &report));
+    }
+
+    fn answer(&mut self, request: Request) {
+        let Request { command, replier } = request;
+        let now_ns = self.clock.monotonic_ns();
+        match command {
+            Command::Mark { person, text, .. } => {
+                self.tell(words::by(&person, words::event(now_ns, "mark", "feed", text)));
+                replier.answer(true, "marked");
+            }
+            Command::Open { person, .. } => self.open_by_hand(now_ns, &person, replier),
+            Command::Close { person, .. } => match self.live.close_by_hand(now_ns, &person) {
+                Ok(happening) => {
+                    if let Happening::CloseTrial { host_ns, reason } = happening {
+                        self.close_trial(host_ns, &reason, &person);
+                    }
+                    replier.answer(true, "the trial closes and is sealed");
+                }
+                Err(kept) => replier.answer(false, kept.to_string()),
+            },
+            Command::Acknowledge { person, .. } => {
+                let n = self.live.acknowledge(&person);
+                let text = format!("{n} alarms acknowledged");
+                self.tell(words::by(&person, words::event(now_ns, "alarm", "feed", text.clone())));
+                replier.answer(true, text);
+            }
+        }
+    }
+
+    fn open_by_hand(&mut self, now_ns: i64, person: &str, replier: Replier) {
+        if self.recorder.now().refusing {
+            return replier.answer(false, "no trial is opened: the disk takes no more; make room first");
+        }
+        match self.live.open_by_hand(now_ns) {
+            Some(Happening::OpenTrial { host_ns, preroll_from_host_ns }) => {
+                self.open_trial(host_ns, preroll_from_host_ns, "opened by hand", person);
+                replier.answer(true, "a trial is open");
+            }
+            _ => replier.answer(false, "a trial is open already"),
+        }
+    }
+
+    /// Puts an event into the journal and on the feed.
+    pub(super) fn tell(&mut self, event: Event) {
+        let Event { host_ns, kind, source, person, text } = event.clone();
+        self.unsent.push_back(Order::Event { host_ns, event: EventBody { kind, source, person, text } });
+        self.publish(&event);
+    }
+
+    fn complain(&mut self, sentence: &str) {
+        self.tell(words::event(self.clock.monotonic_ns(), "alarm", "daemon", sentence.to_owned()));
+    }
+
+    fn publish(&mut self, event: &Event) {
+        (self.on_event)(event);
+        self.feed.publish(&Message::Event(event.clone()));
+    }
+
+    fn send_orders(&mut self) {
+        while let Some(order) = self.unsent.pop_front() {
+            if let Err(refused) = self.orders.try_send(order) {
+                self.unsent.push_front(refused.into_inner());
+                return;
+            }
+        }
+    }
+
+    fn watch(&mut self) -> Result<(), DaemonError> {
+        if self.links.as_ref().is_some_and(|links| !links.is_running()) {
+            return Err(DaemonError::ThreadEnded { thread: "links" });
+        }
+        if !self.recorder.is_running() {
+            return Err(DaemonError::ThreadEnded { thread: "journal" });
+        }
+        let trouble = words::trouble(&self.recorder.now());
+        let now_ns = self.clock.monotonic_ns();
+        if let Some(happening) = self.live.journal_trouble(now_ns, trouble.as_deref()) {
+            self.act(&happening);
+        }
+        Ok(())
+    }
+
+    fn publish_snapshot(&mut self) {
+        if self.feed.n_clients() == 0 {
+            return;
+        }
+        let now_ns = self.clock.monotonic_ns();
+        let trial = self
+            .book
+            .open()
+            .map(|open| TrialNow { id: open.trial_id.clone(), open_s: (now_ns - open.opened_ns) as f64 * 1e-9 });
+        let around =
+            Around { wall: words::wall(&Clocks::read()), journal: Some(journal_now(&self.recorder.now())), trial };
+        let snapshot = self.live.snapshot(now_ns, around);
+        self.feed.publish(&Message::Snapshot(Box::new(snapshot)));
+    }
+
+    /// Ports, then what they left in the queues, then the closing record and the last sync, then the sealing, then the
+    /// clients.
+    fn stop(mut self, inputs: &Inputs, reason: &str) -> Result<(), DaemonError> {
+        self.tell(words::event(self.clock.monotonic_ns(), "daemon", "daemon", format!("stops: {reason}")));
+        if let Some(links) = self.links.take() {
+            links.stop()?;
+        }
+        inputs.live.iter().for_each(|item| self.take(item)); // ends: the links have let go of their end
+        self.close_or_leave_open();
+        self.send_last_orders();
+        let Self { orders, recorder, sealer, feed, book, dir, seal_patience, mut on_event, .. } = self;
+        drop(orders);
+        let farewell = recorder.join()?;
+        for report in inputs.reports.try_iter() {
+            if let Report::TrialClosed { trial_id, durable: true } = report
+                && let Some(unsealed) = book.find_waiting(&trial_id)
+            {
+                sealer.seal(unsealed.clone());
+            }
+        }
+        drop(sealer);
+        let now_ns = self.clock.monotonic_ns();
+        words::tell_sealing_until(Instant::now() + seal_patience, &inputs.sealed, now_ns, &mut |event| {
+            on_event(&event);
+            feed.publish(&Message::Event(event));
+        });
+        feed.close(reason);
+        if farewell.durable { Ok(()) } else { Err(DaemonError::NotDurable { dir }) }
+    }
+
+    /// A trial is closed at the end only where the cords are known to be slack.
+    fn close_or_leave_open(&mut self) {
+        let now_ns = self.clock.monotonic_ns();
+        let Some(open) = self.book.open() else { return };
+        if self.live.cords() == CordsNow::Slack {
+            return self.close_trial(now_ns, "the daemon was stopped, cords slack", "");
+        }
+        let text = format!(
+            "trial {} stays open, the cords are not known to be slack: treat them as loaded; the next start goes on \
+             with it, `tautrail recover` seals what there is",
+            open.trial_id
+        );
+        self.tell(words::event(now_ns, "trial", "daemon", text));
+    }
+
+    fn send_last_orders(&mut self) {
+        let deadline = Instant::now() + LAST_ORDERS;
+        for order in std::mem::take(&mut self.unsent) {
+            if self.orders.send_deadline(order, deadline).is_err() {
+                return; // the recorder hangs in the disk; its farewell says so
+            }
+        }
+    }
+}
+
+fn journal_now(now: &RecorderNow) -> JournalNow {
+    JournalNow {
+        bytes: now.health.own_bytes,
+        free_bytes: now.health.free_bytes,
+        sync_interval_s: now.health.exposure_ns_lately() as f64 * 1e-9,
+        queue_high_water: now.queue_high_water,
+        lost_events: now.health.lost_events,
+        trouble: words::trouble(now),
+    }
+}

@@ -1,0 +1,216 @@
+//! Starts everything in order, and hands over to the conductor.
+
+use std::collections::VecDeque;
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+use std::time::Duration;
+
+use crossbeam_channel::{Receiver, bounded};
+
+use crate::archive;
+use crate::feed::FeedServer;
+use crate::feed::message::{Event, Hello};
+use crate::journal::{
+    ArchiveLock, Clocks, DeviceAtOpen, Disk, Ends, Journal, Order, Origin, RealDisk, Recorder, Settings, Start,
+    TrialRange,
+};
+use crate::link::{self, DeviceIdx, HostClock, PortSpec, Sinks, SystemClock, spawn_links};
+use crate::live::Live;
+use crate::rig::Rig;
+
+use super::conductor::{Conductor, Inputs};
+use super::error::DaemonError;
+use super::found::{self, Found, Present, Resumed};
+use super::machine::{identifier, kernel_boot_id, random_part};
+use super::sealing::{SealCommand, Sealer};
+use super::trials::TrialBook;
+use super::words;
+
+/// How a daemon is to run.
+#[derive(Debug, Clone)]
+pub struct Options {
+    /// The archive: trial files, and `journal/` below it.
+    pub dir: PathBuf,
+    /// Where the feed is served.
+    pub socket: PathBuf,
+    /// Start although a port is not there, and wait for it.
+    pub wait_for_ports: bool,
+    /// For all journal segments together, unsealed trials apart.
+    pub budget_bytes: u64,
+    /// How long the end waits for sealing.
+    pub seal_patience: Duration,
+    /// The program that seals, called with `seal-child`; this one, unless a test says otherwise.
+    pub program: PathBuf,
+}
+
+/// Reads a second of one device at the shortest: USB hands bytes over each millisecond.
+const READS_PER_S: usize = 1000;
+/// The journal's queue holds this long of every device's reads, with room for heartbeats.
+const QUEUE_S: usize = 12;
+const ORDERS: usize = 1024;
+const REPORTS: usize = 4096;
+
+/// Runs the daemon until `shutdown` says why it is to stop. `on_event` hears of everything that the feed tells at once.
+///
+/// # Errors
+/// What keeps it from starting, or from ending with everything on the disk.
+pub fn run(
+    rig: &Rig,
+    options: &Options,
+    shutdown: Receiver<String>,
+    on_event: Box<dyn FnMut(&Event)>,
+) -> Result<(), DaemonError> {
+    let clock: Arc<dyn HostClock> = Arc::new(SystemClock);
+    let disk: Arc<dyn Disk> = Arc::new(RealDisk);
+    let unmakeable = |source| DaemonError::Directory { dir: options.dir.clone(), source };
+    disk.create_dir(&options.dir).map_err(unmakeable)?;
+    let _lock = ArchiveLock::take(&options.dir, &holder(rig))?;
+    if !options.wait_for_ports {
+        look_for_ports(rig)?;
+    }
+    let boot_id = kernel_boot_id().map_err(|source| DaemonError::Machine { what: "boot id", source })?;
+    let present = Present { kernel_boot_id: &boot_id, rig_text: &rig.text };
+    let dir = options.dir.clone();
+    let is_sealed = move |range: &TrialRange| matches!(archive::sealed_file(range, &dir), Ok(Some(_)));
+    let mut found = found::look(&disk, &options.dir, &archive::journal_dir(&options.dir), present, &is_sealed)?;
+    let journal = begin_journal(rig, options, &found, boot_id.clone(), &disk, clock.monotonic_ns())?;
+    let journal_id = journal.journal_id().to_owned();
+
+    let (feed, requests) = FeedServer::start(&options.socket, Hello::of(rig))?;
+    let machine = |source| DaemonError::Machine { what: "thread", source };
+    let (orders, orders_end) = bounded(ORDERS);
+    let (reports_in, reports) = bounded(REPORTS);
+    let queue = QUEUE_S * READS_PER_S * rig.devices.len() + QUEUE_S * 50;
+    let ((to_journal, journal_end), (to_live, live)) = (bounded(queue), bounded(queue));
+    let ends = Ends { links: journal_end, orders: orders_end, reports: reports_in };
+    let recorder =
+        Recorder::spawn(journal, Arc::clone(&disk), ends, Arc::clone(&clock), Clocks::read).map_err(machine)?;
+    let seal_command = SealCommand { program: options.program.clone(), archive_dir: options.dir.clone() };
+    let (sealer, sealed) = Sealer::spawn(seal_command).map_err(machine)?;
+    let sinks = Sinks { journal: to_journal, live: to_live };
+    let seed = random_part().map_err(|source| DaemonError::Machine { what: "random numbers", source })?;
+    let links = spawn_links(ports(rig), sinks, Arc::clone(&clock), u64::from(seed)).map_err(machine)?;
+
+    let waiting = std::mem::take(&mut found.unsealed);
+    waiting.iter().for_each(|unsealed| sealer.seal(unsealed.clone()));
+    let mut conductor = Conductor {
+        live: Live::new(rig),
+        feed,
+        orders,
+        recorder,
+        links: Some(links),
+        sealer,
+        book: TrialBook::new(journal_id.clone(), found.next_trial_number, waiting),
+        clock,
+        on_event,
+        unfinished: found.unfinished.take(),
+        device_names: rig.devices.iter().map(|device| device.name.clone()).collect(),
+        dir: options.dir.clone(),
+        seal_patience: options.seal_patience,
+        unsent: VecDeque::new(),
+    };
+    conductor.say_hello(&found, &options.socket, &journal_id);
+    conductor.run(Inputs { live, requests, reports, sealed, shutdown })
+}
+
+fn holder(rig: &Rig) -> String {
+    let since = words::wall(&Clocks::read());
+    format!("process {}, rig {}, since {}", std::process::id(), rig.name, if since.is_empty() { "?" } else { &since })
+}
+
+fn look_for_ports(rig: &Rig) -> Result<(), DaemonError> {
+    for device in &rig.devices {
+        link::look(Path::new(&device.port))
+            .map_err(|source| DaemonError::Port { device: device.name.clone(), source })?;
+    }
+    Ok(())
+}
+
+fn ports(rig: &Rig) -> Vec<PortSpec> {
+    let spec = |(index, device): (usize, &crate::rig::Device)| PortSpec {
+        device: DeviceIdx(index as u16),
+        path: PathBuf::from(&device.port),
+        baud: device.baud,
+    };
+    rig.devices.iter().enumerate().map(spec).collect()
+}
+
+/// Goes on with the journal found, or begins a new one, and takes charge of the segments of before.
+fn begin_journal(
+    rig: &Rig,
+    options: &Options,
+    found: &Found,
+    kernel_boot_id: String,
+    disk: &Arc<dyn Disk>,
+    now_ns: i64,
+) -> Result<Journal, DaemonError> {
+    let (journal_id, start, devices) = match &found.resumed {
+        Some(resumed) => (resumed.journal_id.clone(), resumed.start.clone(), resumed.devices.clone()),
+        None => {
+            let journal_id = identifier(found.next_journal_number)
+                .map_err(|source| DaemonError::Machine { what: "random numbers", source })?;
+            (journal_id, Start::fresh(), devices_unknown(rig))
+        }
+    };
+    let origin = Origin {
+        journal_id,
+        program_version: env!("CARGO_PKG_VERSION").to_owned(),
+        kernel_boot_id,
+        rig_text: rig.text.clone(),
+        devices,
+    };
+    let settings = Settings { budget_bytes: options.budget_bytes, ..Settings::default() };
+    let dir = archive::journal_dir(&options.dir);
+    let mut journal = Journal::begin(Arc::clone(disk), &dir, origin, start, settings, now_ns)?;
+    for (segment, end_seq) in &found.segments {
+        journal.adopt(segment, *end_seq);
+    }
+    for path in &found.never_begun {
+        journal.forget(path.clone());
+    }
+    Ok(journal)
+}
+
+fn devices_unknown(rig: &Rig) -> Vec<DeviceAtOpen> {
+    let unknown = |device: &crate::rig::Device| DeviceAtOpen {
+        name: device.name.clone(),
+        port: device.port.clone(),
+        describe_hex: String::new(),
+    };
+    rig.devices.iter().map(unknown).collect()
+}
+
+impl Conductor {
+    /// Tells what was found and that recording has begun.
+    fn say_hello(&mut self, found: &Found, socket: &Path, journal_id: &str) {
+        let now_ns = self.clock.monotonic_ns();
+        for remark in &found.remarks {
+            self.tell(words::event(now_ns, "journal", "daemon", remark.clone()));
+        }
+        if let Some(resumed) = &found.resumed {
+            self.say_resumed(resumed, now_ns);
+        }
+        for unsealed in self.book.waiting().to_vec() {
+            let text = format!("trial {} has no file yet and is sealed now", unsealed.trial_id);
+            self.tell(words::event(now_ns, "seal", "daemon", text));
+        }
+        self.unsent.push_back(Order::Pin { first_seq: self.book.pinned_from() });
+        let text = format!("recording to journal {journal_id}, feed at {}", socket.display());
+        self.tell(words::event(now_ns, "daemon", "daemon", text));
+    }
+
+    fn say_resumed(&mut self, resumed: &Resumed, now_ns: i64) {
+        let away_s = (now_ns - resumed.last_host_ns) as f64 * 1e-9;
+        let text = match &resumed.open_trial {
+            Some(trial) => {
+                self.live.resume_trial();
+                self.book.resume(trial.trial_id.clone(), trial.first_seq, trial.opened_host_ns);
+                self.unsent
+                    .push_back(Order::ResumeTrial { trial_id: trial.trial_id.clone(), first_seq: trial.first_seq });
+                format!("trial {} was under way and goes on; nothing was recorded for {away_s:.3} s", trial.trial_id)
+            }
+            None => format!("the journal goes on; nothing was recorded for {away_s:.3} s"),
+        };
+        self.tell(words::event(now_ns, "journal", "daemon", text));
+    }
+}

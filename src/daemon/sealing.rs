@@ -1,0 +1,127 @@
+//! Has trials sealed, one after the other, each in a niced child process of this same program.
+//!
+//! A child that fails leaves the journal as it is; the trial is tried again later, and at the next start. Children are
+//! in a process group of their own, so that Ctrl-C stops the daemon and not the sealing.
+
+use std::collections::VecDeque;
+use std::io::{self, Read};
+use std::os::unix::process::CommandExt;
+use std::path::{Path, PathBuf};
+use std::process::{Child, Command, Stdio};
+use std::time::{Duration, Instant};
+
+use crossbeam_channel::{Receiver, RecvTimeoutError, Sender, bounded, unbounded};
+
+use super::found::Unsealed;
+
+/// How one attempt ended.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct SealReport {
+    pub trial_id: String,
+    /// What the child said: what was written, or why not.
+    pub result: Result<String, String>,
+}
+
+/// The thread that has trials sealed. Dropped, it does what waits and then closes its reports.
+#[derive(Debug)]
+pub struct Sealer {
+    tasks: Sender<Unsealed>,
+}
+
+/// How the child is started; the daemon's own program in earnest.
+#[derive(Debug, Clone)]
+pub struct SealCommand {
+    pub program: PathBuf,
+    pub archive_dir: PathBuf,
+}
+
+const RETRY_FIRST: Duration = Duration::from_secs(30);
+const RETRY_LAST: Duration = Duration::from_secs(600);
+
+impl Sealer {
+    pub fn spawn(command: SealCommand) -> io::Result<(Self, Receiver<SealReport>)> {
+        // Trials come a few an hour; both queues hold what a start after many crashes finds.
+        let (tasks, tasks_end) = unbounded();
+        let (reports, reports_end) = bounded(64);
+        std::thread::Builder::new().name("sealing".to_owned()).spawn(move || work(&command, &tasks_end, &reports))?;
+        Ok((Self { tasks }, reports_end))
+    }
+
+    pub fn seal(&self, unsealed: Unsealed) {
+        // The thread ends only after this sender is gone.
+        let _ = self.tasks.send(unsealed);
+    }
+}
+
+fn work(command: &SealCommand, tasks: &Receiver<Unsealed>, reports: &Sender<SealReport>) {
+    let mut retries: VecDeque<(Instant, Duration, Unsealed)> = VecDeque::new();
+    loop {
+        let (task, pause) = match next(tasks, &mut retries) {
+            Next::Task(task, pause) => (task, pause),
+            Next::Nothing => continue,
+            Next::End => return, // what failed is left to the next start
+        };
+        let result = seal_in_child(command, &task);
+        if result.is_err() {
+            retries.push_back((Instant::now() + pause, (pause * 2).min(RETRY_LAST), task.clone()));
+        }
+        if reports.send(SealReport { trial_id: task.trial_id, result }).is_err() {
+            return;
+        }
+    }
+}
+
+enum Next {
+    Task(Unsealed, Duration),
+    Nothing,
+    End,
+}
+
+fn next(tasks: &Receiver<Unsealed>, retries: &mut VecDeque<(Instant, Duration, Unsealed)>) -> Next {
+    match tasks.recv_timeout(Duration::from_millis(200)) {
+        Ok(task) => Next::Task(task, RETRY_FIRST),
+        Err(RecvTimeoutError::Disconnected) => Next::End,
+        Err(RecvTimeoutError::Timeout) => match retries.pop_front_if(|(at, _, _)| *at <= Instant::now()) {
+            Some((_, pause, task)) => Next::Task(task, pause),
+            None => Next::Nothing,
+        },
+    }
+}
+
+fn seal_in_child(command: &SealCommand, task: &Unsealed) -> Result<String, String> {
+    let cannot = |error: io::Error| format!("cannot run the sealing process: {error}");
+    let mut child = start(command, task).map_err(cannot)?;
+    // Both pipes are short: the child says one sentence in all.
+    let said = text_of(child.stdout.take());
+    let complained = text_of(child.stderr.take());
+    let status = child.wait().map_err(cannot)?;
+    if status.success() {
+        Ok(said)
+    } else if complained.is_empty() {
+        Err(format!("the sealing process ended with {status}"))
+    } else {
+        Err(complained)
+    }
+}
+
+fn start(command: &SealCommand, task: &Unsealed) -> io::Result<Child> {
+    let arg = |path: &Path| path.as_os_str().to_owned();
+    Command::new(&command.program)
+        .arg("seal-child")
+        .args([arg(&command.archive_dir), task.journal_id.clone().into(), task.trial_id.clone().into()])
+        .process_group(0)
+        .stdin(Stdio::null())
+        .stdout(Stdio::piped())
+        .stderr(Stdio::piped())
+        .spawn()
+}
+
+fn text_of(pipe: Option<impl Read>) -> String {
+    const MOST: u64 = 1 << 16;
+    let mut text = Vec::new();
+    if let Some(pipe) = pipe {
+        // What cannot be read is not said.
+        let _ = pipe.take(MOST).read_to_end(&mut text);
+    }
+    String::from_utf8_lossy(&text).trim().to_owned()
+}

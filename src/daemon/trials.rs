@@ -1,0 +1,118 @@
+//! The daemon's book of trials: which is open, which wait for sealing, what of the journal they need.
+
+use std::io;
+
+use super::found::Unsealed;
+use super::machine::identifier;
+
+/// The trial under way.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct OpenTrial {
+    pub trial_id: String,
+    /// Known once the recorder has written the opening.
+    pub first_seq: Option<u64>,
+    pub opened_ns: i64,
+}
+
+#[derive(Debug)]
+pub struct TrialBook {
+    journal_id: String,
+    next_number: u32,
+    open: Option<OpenTrial>,
+    /// Closed, but not known to be on the disk yet; then sealed.
+    waiting: Vec<Unsealed>,
+}
+
+impl TrialBook {
+    pub fn new(journal_id: String, next_number: u32, waiting: Vec<Unsealed>) -> Self {
+        Self { journal_id, next_number, open: None, waiting }
+    }
+
+    pub fn open(&self) -> Option<&OpenTrial> {
+        self.open.as_ref()
+    }
+
+    pub fn waiting(&self) -> &[Unsealed] {
+        &self.waiting
+    }
+
+    /// Begins a trial under a new identifier.
+    pub fn begin(&mut self, opened_ns: i64) -> io::Result<String> {
+        let trial_id = identifier(self.next_number)?;
+        self.next_number += 1;
+        self.open = Some(OpenTrial { trial_id: trial_id.clone(), first_seq: None, opened_ns });
+        Ok(trial_id)
+    }
+
+    pub fn resume(&mut self, trial_id: String, first_seq: u64, opened_ns: i64) {
+        self.open = Some(OpenTrial { trial_id, first_seq: Some(first_seq), opened_ns });
+    }
+
+    /// The recorder wrote the opening.
+    pub fn opened(&mut self, trial_id: &str, seq: u64) {
+        if let Some(open) = self.open.as_mut().filter(|open| open.trial_id == trial_id) {
+            open.first_seq = Some(seq);
+        }
+        for closed in self.waiting.iter_mut().filter(|closed| closed.trial_id == trial_id) {
+            closed.first_seq = seq;
+        }
+    }
+
+    /// Ends the trial under way; it waits for sealing from now on.
+    pub fn close(&mut self) -> Option<String> {
+        let open = self.open.take()?;
+        self.waiting.push(Unsealed {
+            journal_id: self.journal_id.clone(),
+            trial_id: open.trial_id.clone(),
+            first_seq: open.first_seq.unwrap_or(0), // unknown for an instant: keep everything
+        });
+        Some(open.trial_id)
+    }
+
+    pub fn find_waiting(&self, trial_id: &str) -> Option<&Unsealed> {
+        self.waiting.iter().find(|unsealed| unsealed.trial_id == trial_id)
+    }
+
+    /// The trial has its file.
+    pub fn sealed(&mut self, trial_id: &str) {
+        self.waiting.retain(|unsealed| unsealed.trial_id != trial_id);
+    }
+
+    /// First record of this journal that an unsealed trial needs.
+    pub fn pinned_from(&self) -> Option<u64> {
+        let waiting = self.waiting.iter().filter(|unsealed| unsealed.journal_id == self.journal_id);
+        let open = self.open.as_ref().map(|open| open.first_seq.unwrap_or(0));
+        waiting.map(|unsealed| unsealed.first_seq).chain(open).min()
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn the_pin_is_the_oldest_record_any_unsealed_trial_needs() {
+        let mut book = TrialBook::new("000002-aaaaaa".into(), 7, Vec::new());
+        assert_eq!(book.pinned_from(), None);
+        let first = book.begin(0).unwrap();
+        assert!(first.starts_with("000007-"));
+        assert_eq!(book.pinned_from(), Some(0), "not known yet: everything");
+        book.opened(&first, 100);
+        book.close();
+        let second = book.begin(5).unwrap();
+        book.opened(&second, 200);
+        assert_eq!(book.pinned_from(), Some(100));
+        book.sealed(&first);
+        assert_eq!(book.pinned_from(), Some(200));
+        book.close();
+        book.sealed(&second);
+        assert_eq!(book.pinned_from(), None);
+    }
+
+    #[test]
+    fn a_trial_of_an_older_journal_pins_nothing_here() {
+        let older = Unsealed { journal_id: "000001-bbbbbb".into(), trial_id: "000003-cccccc".into(), first_seq: 9 };
+        let book = TrialBook::new("000002-aaaaaa".into(), 7, vec![older]);
+        assert_eq!(book.pinned_from(), None);
+    }
+}

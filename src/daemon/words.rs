@@ -1,0 +1,86 @@
+//! Sentences and messages of the daemon.
+
+use std::time::Instant;
+
+use crossbeam_channel::{Receiver, RecvTimeoutError};
+
+use crate::feed::message::Event;
+use crate::journal::{Clocks, RecorderNow};
+
+use super::sealing::SealReport;
+
+/// Longest time that data may wait to be durable before the crew is told.
+const EXPOSURE_NS_MAX: i64 = 250_000_000;
+/// Share of the recorder's queue above which it is told.
+const QUEUE_HIGH: f64 = 0.5;
+/// Free room below which it is told: a quarter of an hour of a demanding rig.
+const FREE_BYTES_LOW: u64 = 256 << 20;
+
+pub fn event(host_ns: i64, kind: &str, source: &str, text: String) -> Event {
+    Event { host_ns, kind: kind.to_owned(), source: source.to_owned(), person: None, text }
+}
+
+/// The event, with the person who acted; an empty name is nobody.
+pub fn by(person: &str, event: Event) -> Event {
+    Event { person: (!person.is_empty()).then(|| person.to_owned()), ..event }
+}
+
+/// RFC 3339 to the millisecond; empty when the wall clock was never set.
+pub fn wall(clocks: &Clocks) -> String {
+    if !clocks.wall_clock_set {
+        return String::new();
+    }
+    jiff::Timestamp::from_millisecond(clocks.realtime_ns / 1_000_000).map(|at| at.to_string()).unwrap_or_default()
+}
+
+/// What is wrong with the recording, the worst first; `None` when nothing is.
+pub fn trouble(now: &RecorderNow) -> Option<String> {
+    let health = &now.health;
+    let exposure_ns = health.exposure_ns_lately();
+    if now.refusing {
+        let why = health.trouble.as_deref().unwrap_or("the disk takes no more");
+        return Some(format!(
+            "data are being LOST, {} reads so far: {why}; make room or change the disk",
+            health.lost_events
+        ));
+    }
+    if let Some(trouble) = &health.trouble {
+        return Some(format!("{trouble}; data wait in memory and in the last reserve: make room or change the disk"));
+    }
+    if now.queue_high_water > QUEUE_HIGH {
+        let percent = now.queue_high_water * 100.0;
+        return Some(format!("the disk is slow, {percent:.0} % of the queue was filled"));
+    }
+    if exposure_ns > EXPOSURE_NS_MAX {
+        let seconds = exposure_ns as f64 * 1e-9;
+        return Some(format!("the disk took {seconds:.2} s to make data durable (0.1 s is wanted)"));
+    }
+    if health.free_bytes > 0 && health.free_bytes < FREE_BYTES_LOW {
+        let mib = health.free_bytes >> 20;
+        return Some(format!("the disk has {mib} MiB free: make room before the next trial"));
+    }
+    None
+}
+
+/// Passes on what sealing says until it is done with everything or `deadline` has come.
+pub fn tell_sealing_until(deadline: Instant, reports: &Receiver<SealReport>, now_ns: i64, tell: &mut dyn FnMut(Event)) {
+    loop {
+        match reports.recv_deadline(deadline) {
+            Ok(report) => tell(sealed(now_ns, &report)),
+            Err(RecvTimeoutError::Disconnected) => return,
+            Err(RecvTimeoutError::Timeout) => {
+                let text = "sealing is not done yet: it goes on by itself, the next start looks after it".to_owned();
+                return tell(event(now_ns, "seal", "daemon", text));
+            }
+        }
+    }
+}
+
+/// One sealing's end.
+pub fn sealed(now_ns: i64, report: &SealReport) -> Event {
+    let text = match &report.result {
+        Ok(said) => format!("trial {} is sealed: {said}", report.trial_id),
+        Err(why) => format!("trial {} is not sealed, its journal is kept: {why}", report.trial_id),
+    };
+    event(now_ns, "seal", "seal", text)
+}
