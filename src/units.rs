@@ -244,6 +244,12 @@ pub fn significant(value: f64, digits: i32) -> String {
     if value == 0.0 || !value.is_finite() { format!("{value}") } else { fixed(value, decimals_for(value, digits)) }
 }
 
+/// [`significant`] without the zeros at the end: 95 deg rather than 95.0000 deg.
+pub fn brief(value: f64, digits: i32) -> String {
+    let text = significant(value, digits);
+    if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.').to_owned() } else { text }
+}
+
 /// Decimals that show `digits` significant digits of `value`; negative where whole tens and up must be rounded.
 fn decimals_for(value: f64, digits: i32) -> i32 {
     let magnitude = value.abs().log10().floor() as i32;
@@ -344,6 +350,7 @@ mod tests {
         assert_eq!(rounded(5.0, 0.0), ("5.00000".into(), "0".into()));
         assert_eq!(significant(0.0, 3), "0");
         assert_eq!(significant(99.96, 3), "100");
+        assert_eq!((brief(95.0, 6), brief(-2.4, 6), brief(7000.0, 3)), ("95".into(), "-2.4".into(), "7000".into()));
     }
 
     #[test]

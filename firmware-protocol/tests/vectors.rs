@@ -4,6 +4,7 @@
 use std::collections::BTreeSet;
 use std::fs;
 use std::path::PathBuf;
+use std::process::Command;
 
 use firmware_protocol::{
     Block, Channel, Channels, Describe, Edge, Encoding, Frame, Header, MAX_FRAME_LEN, Message, SetRate, Status, Stream,
@@ -193,6 +194,19 @@ fn no_vector_is_left_untested() {
     tested.insert("describe-with-fields-to-come.txt".to_owned());
     let names = fs::read_dir(vectors()).unwrap().map(|entry| entry.unwrap().file_name().into_string().unwrap());
     assert_eq!(names.filter(|name| name.ends_with(".txt")).collect::<BTreeSet<_>>(), tested);
+}
+
+#[test]
+fn the_files_are_what_their_program_writes() {
+    let fresh = PathBuf::from(env!("CARGO_TARGET_TMPDIR")).join("vectors");
+    fs::create_dir_all(&fresh).unwrap();
+    let status = Command::new("python3").arg(vectors().join("make.py")).arg(&fresh).status();
+    assert!(status.expect("python3 can be started").success());
+    for entry in fs::read_dir(&fresh).unwrap() {
+        let path = entry.unwrap().path();
+        let kept = fs::read_to_string(vectors().join(path.file_name().unwrap())).unwrap();
+        assert_eq!(fs::read_to_string(&path).unwrap(), kept, "{}", path.display());
+    }
 }
 
 #[test]

@@ -1,13 +1,15 @@
 """Writes the test vectors beside it, from SPEC.md alone and with nothing but Python's standard library.
 
 It shares no line with the Rust crate or the C header; both are tested against what it writes.
-Run it after a change of SPEC.md: python3 firmware-protocol/vectors/make.py
+Run it after a change of SPEC.md: python3 firmware-protocol/vectors/make.py [DIRECTORY]
 """
 
 import pathlib
 import struct
+import sys
 
-HERE = pathlib.Path(__file__).parent
+HERE = pathlib.Path(sys.argv[1] if len(sys.argv) > 1 else __file__).resolve()
+HERE = HERE if HERE.is_dir() else HERE.parent
 
 
 def crc32c(data):

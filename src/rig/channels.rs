@@ -10,6 +10,8 @@ use super::{Channel, Coefficients, Device, Protocol, Role, UncalibratedChannel};
 pub(super) struct Channels {
     pub(super) calibrated: Vec<Channel>,
     pub(super) uncalibrated: Vec<UncalibratedChannel>,
+    /// A channel's role or device could not be told: what seems to be missing may be meant by it.
+    pub(super) unclear: bool,
 }
 
 pub(super) fn devices(root: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<Device> {
@@ -74,6 +76,7 @@ pub(super) fn channels(root: &mut Section<'_, '_>, findings: &mut Findings<'_>, 
         let device_channel = entry.text(findings, "device_channel");
         let role = role(&mut entry, findings);
         let calibration = entry.optional_section(findings, "calibration");
+        channels.unclear |= role.is_none() || !devices.iter().any(|known| known.name == device);
         if let Some(role) = role {
             match calibration.map(|table| calibration_of(table, findings, role)) {
                 Some(calibration) => {

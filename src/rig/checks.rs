@@ -1,6 +1,6 @@
 //! Checks that need more than one key: numbers that are fine alone and impossible together.
 //!
-//! A value that could not be read is NaN; every comparison is written so that NaN raises no finding.
+//! A value that could not be read is NaN, a count 0; every comparison is written so that these raise no finding.
 
 use super::channels::Channels;
 use super::document::Findings;
@@ -60,7 +60,7 @@ fn plan(rig: &Rig, findings: &mut Findings<'_>) {
 fn planned_tension(rig: &Rig, findings: &mut Findings<'_>) {
     let (cords, limits) = (&rig.cords, &rig.limits);
     let elongation = rig.plan.draw_m * cords.travel_ratio / cords.free_length_m;
-    let Some(last) = cords.curve.last() else { return };
+    let Some(last) = cords.curve.last().filter(|_| cords.count > 0) else { return };
     if elongation > last.elongation {
         let (needed, known) = (100.0 * elongation, 100.0 * last.elongation);
         let message = format!(
@@ -114,6 +114,7 @@ pub(super) fn channels(channels: &Channels, devices: &[Device], findings: &mut F
         let names: Vec<_> = all().filter(|channel| channel.0 == role).map(|channel| channel.1.as_str()).collect();
         let word = role.word();
         match names.len() {
+            0 if channels.unclear => {}
             0 if role == Role::ReleaseLineTension => {
                 findings
                     .error("channel", format!("none has the role {word}: without it no tension and no phase is known"));
@@ -124,7 +125,7 @@ pub(super) fn channels(channels: &Channels, devices: &[Device], findings: &mut F
         }
     }
     for (index, device) in devices.iter().enumerate() {
-        if !device.name.is_empty() && !all().any(|channel| *channel.2 == device.name) {
+        if !channels.unclear && !device.name.is_empty() && !all().any(|channel| *channel.2 == device.name) {
             findings.caution(&format!("device[{index}]"), format!("no channel uses device {:?}", device.name));
         }
     }

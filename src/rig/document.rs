@@ -292,7 +292,7 @@ fn within(findings: &mut Findings<'_>, key: &str, number: f64, allowed: &RangeIn
         return number;
     }
     let space = if unit.is_empty() { "" } else { " " };
-    let number = units::significant(number, 6);
+    let number = units::brief(number, 6);
     let message = format!("is {number}{space}{unit}, allowed is {} to {}{space}{unit}", allowed.start(), allowed.end());
     findings.error(key, message);
     f64::NAN

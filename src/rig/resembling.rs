@@ -1,10 +1,12 @@
 //! "Did you mean": the known word that a mistyped one resembles most.
 
-/// The candidate nearest to `word`, if near enough to be a slip of the hand: at most a third of its letters differ.
+/// The candidate nearest to `word`, if near enough to be a slip of the hand: at most a third of its letters differ, or
+/// it begins with the word.
 pub(super) fn resembling<'a>(word: &str, candidates: impl Iterator<Item = &'a str>) -> Option<&'a str> {
+    let begins = |candidate: &str| word.chars().count() >= 4 && candidate.starts_with(word);
     candidates
         .map(|candidate| (distance(word, candidate), candidate))
-        .filter(|(distance, candidate)| 3 * distance <= candidate.chars().count().max(3))
+        .filter(|(distance, candidate)| 3 * distance <= candidate.chars().count().max(3) || begins(candidate))
         .min_by_key(|(distance, _)| *distance)
         .map(|(_, candidate)| candidate)
 }
@@ -43,6 +45,7 @@ mod tests {
         assert_eq!(resembling("lenght", keys.into_iter()), Some("length"));
         assert_eq!(resembling("inclin", keys.into_iter()), Some("incline"));
         assert_eq!(resembling("zeromark", keys.into_iter()), Some("zero_mark"));
+        assert_eq!(resembling("brake", keys.into_iter()), Some("brake_from"));
         assert_eq!(resembling("colour", keys.into_iter()), None);
         assert_eq!(resembling("", keys.into_iter()), None);
     }

@@ -66,9 +66,10 @@ pub(super) fn cords(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> 
     cords
 }
 
-/// Points of one cord, checked to begin at (0, 0) and to rise.
+/// Points of one cord, checked to begin at (0, 0) and to rise; none if they do not, so that nothing is built on them.
 fn curve(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<CordPoint> {
     let mut points: Vec<CordPoint> = Vec::new();
+    let mut in_order = true;
     for (index, mut entry) in table.sections(findings, "curve").into_iter().enumerate() {
         let point = CordPoint {
             elongation: entry.quantity(findings, "elongation", "%", 0.0..=1000.0),
@@ -76,26 +77,35 @@ fn curve(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<CordPo
         };
         entry.finish(findings);
         let key = format!("cords.curve[{index}]");
-        match points.last() {
-            None if point.elongation > 0.0 || point.tension_n > 0.0 => {
-                findings.error(&key, "the curve must begin at \"0 %\" and \"0 N\": a slack cord carries no force");
-            }
-            Some(before) if point.elongation <= before.elongation => {
-                let (before, this) = (100.0 * before.elongation, 100.0 * point.elongation);
-                findings.error(&key, format!("elongation must increase, {this:.1} % follows {before:.1} %"));
-            }
-            Some(before) if point.tension_n < before.tension_n => {
-                let (before, this) = (before.tension_n, point.tension_n);
-                findings.error(&key, format!("tension must not fall, {this:.1} N follows {before:.1} N"));
-            }
-            _ => {}
+        let wrong = disorder(points.last(), &point);
+        if let Some(message) = wrong {
+            findings.error(&key, message);
+            in_order = false;
         }
         points.push(point);
     }
     if points.len() == 1 {
         findings.error("cords.curve", "has 1 point, at least 2 are needed");
     }
-    points
+    if in_order { points } else { Vec::new() }
+}
+
+/// Why this point can't follow the one before; NaN is never out of order.
+fn disorder(before: Option<&CordPoint>, point: &CordPoint) -> Option<String> {
+    match before {
+        None if point.elongation > 0.0 || point.tension_n > 0.0 => {
+            Some("the curve must begin at \"0 %\" and \"0 N\": a slack cord carries no force".to_owned())
+        }
+        Some(before) if point.elongation <= before.elongation => {
+            let (before, this) = (100.0 * before.elongation, 100.0 * point.elongation);
+            Some(format!("elongation must increase, {this:.1} % follows {before:.1} %"))
+        }
+        Some(before) if point.tension_n < before.tension_n => {
+            let (before, this) = (before.tension_n, point.tension_n);
+            Some(format!("tension must not fall, {this:.1} N follows {before:.1} N"))
+        }
+        _ => None,
+    }
 }
 
 pub(super) fn losses(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Losses {

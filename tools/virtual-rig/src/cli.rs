@@ -4,6 +4,7 @@ use crate::performance::{Options, Performance, PrepareError, prepare};
 use crate::play::pty::{self, PlayError, PtySettings};
 use crate::play::virtual_time::{Delivered, VirtualPlay};
 use crate::scenario;
+use crate::table;
 use clap::{Args, Parser, Subcommand};
 use std::ffi::OsString;
 use std::io::{BufWriter, Write};
@@ -41,6 +42,8 @@ enum Command {
     },
     /// List the scenarios.
     Scenarios,
+    /// Work every scenario out and print its main truths as a table.
+    Table,
 }
 
 #[derive(Debug, Args)]
@@ -62,6 +65,11 @@ struct RigArgs {
     /// Added to the hidden zero error of both tension cells.
     #[arg(long, allow_negative_numbers = true)]
     cell_offset_n: Option<f64>,
+    #[arg(long, allow_negative_numbers = true)]
+    cord_temperature_c: Option<f64>,
+    /// Trial number in a series (scenario `ageing`).
+    #[arg(long, default_value_t = 0)]
+    cycle: u32,
 }
 
 impl RigArgs {
@@ -73,6 +81,8 @@ impl RigArgs {
             payload_mass_kg: self.payload_mass_kg,
             cord_force_factor: self.cord_force_factor,
             cell_offset_n: self.cell_offset_n,
+            cord_temperature_c: self.cord_temperature_c,
+            cycle: self.cycle,
         }
     }
 }
@@ -111,8 +121,16 @@ fn carry_out(command: Command) -> Result<(), CliError> {
         Command::Play { rig, dir, wait_s } => play(&prepare(&rig.options())?, dir, wait_s),
         Command::Stream { rig, out } => stream(&prepare(&rig.options())?, &out),
         Command::Scenarios => {
-            for scenario in scenario::all() {
+            for scenario in scenario::all(0, 0) {
                 println!("{:24} {}", scenario.name, scenario.about);
+            }
+            Ok(())
+        }
+        Command::Table => {
+            println!("{}", table::HEAD);
+            for scenario in scenario::all(0, 0) {
+                let options = Options { scenario: scenario.name.into(), ..Options::default() };
+                println!("{}", table::row(&prepare(&options)?));
             }
             Ok(())
         }

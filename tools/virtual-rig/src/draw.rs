@@ -8,9 +8,20 @@ use rand_distr::{Distribution, StandardNormal, Uniform};
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Purpose {
     SensorErrors,
-    Clock { device: u8 },
-    Noise { device: u8, channel: u8 },
-    Transport { device: u8 },
+    Clock {
+        device: u8,
+    },
+    Noise {
+        device: u8,
+        channel: u8,
+    },
+    Transport {
+        device: u8,
+    },
+    /// Scatter of one trial of a series.
+    Cycle {
+        cycle: u32,
+    },
 }
 
 impl Purpose {
@@ -19,6 +30,7 @@ impl Purpose {
             Self::SensorErrors => 1,
             Self::Clock { device } => 0x100 + u64::from(device),
             Self::Transport { device } => 0x200 + u64::from(device),
+            Self::Cycle { cycle } => 0x1_0000_0000 + u64::from(cycle),
             Self::Noise { device, channel } => 0x10000 + 0x100 * u64::from(device) + u64::from(channel),
         }
     }

@@ -1,7 +1,8 @@
 //! The numbers of a virtual launcher, as it really is (which is not always what its crew's rig file says).
 
 use crate::physics::cord::{CordGroup, CordKind};
-use crate::physics::rubber::ForceLaw;
+use crate::physics::gas::GasDrive;
+use crate::physics::rubber::{ForceLaw, REFERENCE_TEMPERATURE_K};
 
 /// Standard gravity, m/s² (3rd CGPM 1901).
 pub const STANDARD_GRAVITY_MPS2: f64 = 9.80665;
@@ -16,14 +17,19 @@ pub struct Launcher {
     pub air_density_kg_per_m3: f64,
     /// Along the rail, positive against the launch.
     pub head_wind_mps: f64,
-    /// Where cords come taut, from the release point.
+    /// Where the crew's cords come taut, from the release point.
     pub zero_mark_x_m: f64,
+    /// The cords' fixed ends, rail frame.
+    pub anchor_x_m: f64,
     pub shuttle: Shuttle,
-    pub payload: Payload,
+    pub payload: Option<Payload>,
     pub cords: Vec<CordGroup>,
+    pub gas: Option<GasDrive>,
     pub rail: RailBody,
     pub brake: Brake,
     pub hook: Hook,
+    /// Where one cord of the first group breaks in the stroke.
+    pub cord_breaks_x_m: Option<f64>,
 }
 
 #[derive(Debug, Clone, Copy)]
@@ -38,6 +44,10 @@ pub struct Shuttle {
 pub struct Payload {
     pub mass_kg: f64,
     pub drag_area_m2: f64,
+    /// Up to here a latch keeps the payload on the shuttle; from here on it is only pushed.
+    pub latch_opens_x_m: f64,
+    /// Where the payload comes off its seat though it is still pushed.
+    pub comes_off_x_m: Option<f64>,
 }
 
 /// The rail as a body of its own on a spring and a damper to the ground.
@@ -66,6 +76,7 @@ pub struct Hook {
     /// Time in which the line's force falls to nothing (half a cosine).
     pub opening_s: f64,
     pub line_stiffness_n_per_m: f64,
+    pub line_damping_n_s_per_m: f64,
 }
 
 impl Brake {
@@ -86,14 +97,27 @@ impl Launcher {
         self.gravity_mps2 * self.incline_rad.sin()
     }
 
-    /// x of the cords' fixed end, rail frame.
-    pub fn anchor_x_m(&self, kind: &CordKind) -> f64 {
-        self.zero_mark_x_m + kind.free_length_m
-    }
-
     /// Stretch of a whole cord with the shuttle at `x_m`.
     pub fn stretch_at(&self, kind: &CordKind, x_m: f64) -> f64 {
-        (self.anchor_x_m(kind) - x_m) / kind.free_length_m
+        (self.anchor_x_m - x_m) / kind.free_length_m
+    }
+
+    pub fn payload_mass_kg(&self) -> f64 {
+        self.payload.map_or(0.0, |payload| payload.mass_kg)
+    }
+
+    pub fn cord_count(&self) -> f64 {
+        self.cords.iter().map(|group| group.count).sum()
+    }
+
+    /// The weight of shuttle and payload along the rail, N.
+    pub fn weight_along_n(&self) -> f64 {
+        (self.shuttle.mass_kg + self.payload_mass_kg()) * self.gravity_along_mps2()
+    }
+
+    /// Warms or cools the cords: rubber's force goes with its absolute temperature.
+    pub fn set_cord_temperature(&mut self, temperature_k: f64) {
+        self.scale_cords(temperature_k / REFERENCE_TEMPERATURE_K);
     }
 
     /// Mass of all cords.
@@ -104,10 +128,7 @@ impl Launcher {
     /// Multiplies the force of every cord.
     pub fn scale_cords(&mut self, factor: f64) {
         for group in &mut self.cords {
-            group.kind.law = match &group.kind.law {
-                ForceLaw::Linear { stiffness_n } => ForceLaw::Linear { stiffness_n: stiffness_n * factor },
-                ForceLaw::Rubber(table) => ForceLaw::Rubber(table.scaled(factor)),
-            };
+            group.kind.law = group.kind.law.scaled(factor);
         }
     }
 }
@@ -141,9 +162,11 @@ pub fn north_pier() -> Launcher {
         air_density_kg_per_m3: 1.225,
         head_wind_mps: 0.0,
         zero_mark_x_m: 4.0,
+        anchor_x_m: 4.0 + NOMINAL_CORD_FREE_LENGTH_M,
         shuttle: Shuttle { mass_kg: 2.4, drag_area_m2: 0.02, friction_running_n: 12.0, friction_static_n: 15.0 },
-        payload: Payload { mass_kg: 6.2, drag_area_m2: 0.050 },
+        payload: Some(survey_8()),
         cords: vec![CordGroup { count: NOMINAL_CORD_COUNT, kind: nominal_cord() }],
+        gas: None,
         rail: RailBody { mass_kg: 160.0, stiffness_n_per_m: 2.5e6, damping_n_s_per_m: 4.0e3 },
         brake: Brake {
             x_m: 5.0,
@@ -154,6 +177,12 @@ pub fn north_pier() -> Launcher {
             stop_stiffness_n_per_m: 2.0e5,
             stop_damping_n_s_per_m: 600.0,
         },
-        hook: Hook { opening_s: 0.0015, line_stiffness_n_per_m: 6.0e4 },
+        hook: Hook { opening_s: 0.0015, line_stiffness_n_per_m: 6.0e4, line_damping_n_s_per_m: 300.0 },
+        cord_breaks_x_m: None,
     }
+}
+
+/// The survey aircraft.
+pub fn survey_8() -> Payload {
+    Payload { mass_kg: 6.2, drag_area_m2: 0.050, latch_opens_x_m: 0.3, comes_off_x_m: None }
 }

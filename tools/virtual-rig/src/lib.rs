@@ -15,4 +15,5 @@ pub mod physics;
 pub mod play;
 pub mod scenario;
 pub mod sensor;
+pub mod table;
 pub mod truth;

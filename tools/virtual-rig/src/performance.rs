@@ -1,11 +1,12 @@
 //! One scenario worked out before it is played: the true motion and everything the truth log will say about it.
 
 use crate::launcher::Launcher;
-use crate::physics::launch::{self, Held, Instant, LaunchRun};
+use crate::physics::course::{Course, Happening, Instant};
+use crate::physics::launch::{self, STEP_S, Start};
 use crate::physics::stroke::System;
 use crate::physics::trajectory::{Row, Trajectory};
 use crate::physics::winch::{Leg, Winch};
-use crate::scenario::{self, Scenario};
+use crate::scenario::{self, Act, Scenario};
 
 /// What to play, and what to change in it.
 #[derive(Debug, Clone, PartialEq)]
@@ -17,8 +18,12 @@ pub struct Options {
     pub payload_mass_kg: Option<f64>,
     /// Multiplies the force of every cord.
     pub cord_force_factor: Option<f64>,
-    /// Added to the hidden zero error of both tension cells.
+    /// Added to the hidden zero error of every tension cell.
     pub cell_offset_n: Option<f64>,
+    /// Of the cords; 20 °C when not given.
+    pub cord_temperature_c: Option<f64>,
+    /// Trial number in a series; scenario `ageing` depends on it.
+    pub cycle: u32,
 }
 
 impl Default for Options {
@@ -30,6 +35,8 @@ impl Default for Options {
             payload_mass_kg: None,
             cord_force_factor: None,
             cell_offset_n: None,
+            cord_temperature_c: None,
+            cycle: 0,
         }
     }
 }
@@ -50,8 +57,12 @@ pub struct Performance {
     pub scenario: Scenario,
     pub trajectory: Trajectory,
     pub phases: Vec<Phase>,
+    /// Everything located in time, in its order.
+    pub instants: Vec<Instant>,
+    /// At the end of the first hold.
     pub hold: Hold,
-    pub launch: LaunchRun,
+    pub launch: Option<Course>,
+    pub outcome: &'static str,
     /// When the timeline is over.
     pub end_s: f64,
 }
@@ -64,8 +75,8 @@ pub struct Phase {
     pub x_m: f64,
 }
 
-/// The rig at the end of the hold.
-#[derive(Debug, Clone, Copy, PartialEq)]
+/// The rig when it was drawn.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
 pub struct Hold {
     pub line_n: f64,
     pub cords_n: f64,
@@ -80,8 +91,20 @@ impl Performance {
         &self.scenario.launcher
     }
 
-    pub fn instants(&self) -> &[Instant] {
-        &self.launch.instants
+    /// The instant at which payload and shuttle parted, however it came.
+    pub fn separation(&self) -> Option<&Instant> {
+        let course = self.launch.as_ref()?;
+        course.instant(Happening::Separation).or_else(|| course.instant(Happening::PayloadOff))
+    }
+
+    /// The release instant: the line's tension falls below half its value before the hook opened.
+    pub fn release_s(&self) -> Option<f64> {
+        let rows = &self.launch.as_ref()?.rows;
+        let half_n = 0.5 * rows.first()?.line_n;
+        let after = rows.iter().position(|row| row.line_n < half_n)?;
+        let (before, after) = (rows.get(after.checked_sub(1)?)?, rows.get(after)?);
+        let share = (before.line_n - half_n) / (before.line_n - after.line_n);
+        Some(before.t_s + share * (after.t_s - before.t_s))
     }
 }
 
@@ -91,68 +114,173 @@ impl Performance {
 /// When there is no such scenario, or an option is out of range.
 pub fn prepare(options: &Options) -> Result<Performance, PrepareError> {
     let scenario = adapted(options)?;
-    let launcher = &scenario.launcher;
-    let mut winch = Winch::at_zero_mark(launcher, scenario.ripple);
-    let mut phases = Vec::new();
-    let mut leg = |winch: &mut Winch, name, duration_s, speed_mps, stop_x_m| {
-        phases.push(Phase { name, t_s: winch.t_s, x_m: winch.x_m });
-        winch.run(Leg { duration_s, speed_mps }, stop_x_m);
+    let mut stage = Stage {
+        winch: Winch::at(&scenario.launcher, scenario.start_x_m, scenario.ripple),
+        pace: options.pace,
+        phases: Vec::new(),
+        instants: Vec::new(),
+        hold: None,
+        launch: None,
     };
-    let stop_x_m = launcher.zero_mark_x_m - scenario.draw_m;
-    let speed_mps = scenario.draw_speed_mps / options.pace;
-    leg(&mut winch, "slack", scenario.slack_s * options.pace, 0.0, stop_x_m);
-    leg(&mut winch, "winch-back", 3.0 * scenario.draw_m / speed_mps, speed_mps, stop_x_m);
-    leg(&mut winch, "hold", scenario.hold_s * options.pace, 0.0, stop_x_m);
-
-    let hold = hold_at_end(&winch);
-    let system = System {
-        launcher,
-        groups: launcher.cords.clone(),
-        with_payload: true,
-        rail_rest_n: hold.line_n - hold.anchor_n,
-    };
-    let held = Held { t_s: winch.t_s, x_m: winch.x_m, line_n: hold.line_n, memories: winch.memories.clone() };
-    let launch = launch::launch(&system, &held);
-    let trajectory = joined(winch.rows, &launch);
-    let end_s = trajectory.end_s() + scenario.rest_s * options.pace;
-    Ok(Performance { options: options.clone(), trajectory, phases, hold, launch, end_s, scenario })
+    for act in &scenario.acts {
+        stage.play(*act);
+    }
+    let outcome = outcome(&scenario, &stage);
+    let line_n_max = stage.winch.rows.iter().map(|row| row.line_n).fold(0.0, f64::max);
+    let hold = Hold { line_n_max, ..stage.hold.unwrap_or_default() };
+    let end_s = stage.winch.t_s;
+    Ok(Performance {
+        options: options.clone(),
+        trajectory: Trajectory { rows: stage.winch.rows },
+        phases: stage.phases,
+        instants: stage.instants,
+        hold,
+        launch: stage.launch,
+        outcome,
+        end_s,
+        scenario,
+    })
 }
 
-fn hold_at_end(winch: &Winch) -> Hold {
-    let cords_n = winch.cords_n(winch.x_m);
-    Hold {
-        line_n: winch.line_n(),
-        cords_n,
-        anchor_n: cords_n,
-        x_m: winch.x_m,
-        line_n_max: winch.rows.iter().map(|row| row.line_n).fold(0.0, f64::max),
-        winch_work_j: winch.line_work_j,
+/// A scenario being worked out.
+struct Stage {
+    winch: Winch,
+    pace: f64,
+    phases: Vec<Phase>,
+    instants: Vec<Instant>,
+    hold: Option<Hold>,
+    launch: Option<Course>,
+}
+
+impl Stage {
+    fn play(&mut self, act: Act) {
+        let pace = self.pace;
+        match act {
+            Act::Wait { phase, duration_s } => {
+                self.begin(phase);
+                self.winch.run(Leg::Wait { duration_s: duration_s * pace });
+            }
+            Act::Draw { draw_m, speed_mps } => {
+                self.begin("winch-back");
+                let stop_x_m = self.winch.launcher.zero_mark_x_m - draw_m;
+                self.winch.run(Leg::Draw { speed_mps: speed_mps / pace, stop_x_m });
+            }
+            Act::LetDown { speed_mps } => {
+                self.note_hold();
+                self.begin("let-down");
+                self.winch.run(Leg::LetDown { speed_mps: speed_mps / pace });
+            }
+            Act::Charge { duration_s } => {
+                self.begin("charging");
+                self.winch.run(Leg::Charge { duration_s: duration_s * pace });
+            }
+            Act::OpenValve => self.winch.open_valve(),
+            Act::TakeUpLoad { tension_n } => {
+                self.begin("take-up");
+                self.winch.hook_again();
+                self.winch.run(Leg::Tighten { speed_mps: 0.01 / pace, tension_n });
+                self.winch.free_jam();
+            }
+            Act::CordBreaks => {
+                self.note_hold();
+                self.winch.break_cord();
+                self.note(Happening::CordBreaks);
+            }
+            Act::OpenHookOnJam => {
+                self.note_hold();
+                self.winch.open_hook_on_jam();
+                self.note(Happening::HookOpens);
+            }
+            Act::HookSlips { slip_m } => self.slip(slip_m),
+            Act::Fire => self.fire(),
+        }
+    }
+
+    fn begin(&mut self, name: &'static str) {
+        self.phases.push(Phase { name, t_s: self.winch.t_s, x_m: self.winch.x_m });
+    }
+
+    fn note(&mut self, what: Happening) {
+        let row = self.winch.rows.last().copied().unwrap_or_default();
+        self.instants.push(Instant { t_s: self.winch.t_s, what, row });
+    }
+
+    fn note_hold(&mut self) {
+        let winch = &self.winch;
+        let cords_n = winch.cords_n(winch.x_m);
+        self.hold.get_or_insert(Hold {
+            line_n: winch.line_n(),
+            cords_n,
+            anchor_n: cords_n,
+            x_m: winch.x_m,
+            line_n_max: 0.0,
+            winch_work_j: winch.line_work_j,
+        });
+    }
+
+    /// The rig as it stands, ready for anything fast. The rail's rest takes the forces that balance in the hold.
+    fn system(&self) -> System {
+        let winch = &self.winch;
+        let gas_n = winch.launcher.gas.map_or(0.0, |drive| drive.force_n(&winch.gas, winch.x_m, 0.0));
+        let rail_rest_n = winch.line_n() - winch.cords_n(winch.x_m) - gas_n;
+        System { launcher: winch.launcher.clone(), rail_rest_n, step_s: STEP_S }
+    }
+
+    fn slip(&mut self, slip_m: f64) {
+        self.note_hold();
+        let line_end_x_m = self.winch.line_end_x_m + slip_m;
+        let course = launch::launch(self.system(), &self.winch.held(), Start::HookSlips { line_end_x_m });
+        self.winch.resume(&course, Some(line_end_x_m));
+        self.instants.extend(course.instants.iter().filter(|instant| instant.what == Happening::HookSlips));
+    }
+
+    fn fire(&mut self) {
+        self.note_hold();
+        let course = launch::launch(self.system(), &self.winch.held(), Start::HookOpens);
+        self.winch.resume(&course, None);
+        self.instants.extend_from_slice(&course.instants);
+        self.launch = Some(course);
     }
 }
 
-/// Slow phases, launch, and the rig at rest after it.
-fn joined(mut rows: Vec<Row>, launch: &LaunchRun) -> Trajectory {
-    rows.pop();
-    rows.extend_from_slice(&launch.rows);
-    if let Some(last) = rows.last().copied() {
-        rows.push(Row { t_s: last.t_s + 0.1, x_m: last.x_m, ..Row::default() });
+fn outcome(scenario: &Scenario, stage: &Stage) -> &'static str {
+    let seen = |what| stage.instants.iter().any(|instant: &Instant| instant.what == what);
+    let Some(course) = &stage.launch else {
+        return match () {
+            () if seen(Happening::CordBreaks) => "cord failure before release",
+            () if seen(Happening::HookOpens) => "hang-fire",
+            () if seen(Happening::HookSlips) => "hook slip",
+            () => "let-down",
+        };
+    };
+    match () {
+        () if scenario.uncommanded => "early release",
+        () if seen(Happening::CordBreaks) => "cord failure in the stroke",
+        () if seen(Happening::PayloadOff) => "payload left early",
+        () if scenario.launcher.payload.is_none() => "shuttle alone",
+        () if course.at_separation.is_none() => "payload not separated",
+        () if seen(Happening::StopReached) => "arrest overrun",
+        () => "launched",
     }
-    Trajectory { rows }
 }
 
 fn adapted(options: &Options) -> Result<Scenario, PrepareError> {
-    let mut scenario = scenario::by_name(&options.scenario).ok_or_else(|| PrepareError::NoSuchScenario {
-        name: options.scenario.clone(),
-        known: scenario::all().iter().map(|scenario| scenario.name).collect::<Vec<_>>().join(", "),
-    })?;
+    let known = || scenario::all(0, 0).iter().map(|scenario| scenario.name).collect::<Vec<_>>().join(", ");
+    let mut scenario = scenario::by_name(&options.scenario, options.cycle, options.seed)
+        .ok_or_else(|| PrepareError::NoSuchScenario { name: options.scenario.clone(), known: known() })?;
+    let launcher = &mut scenario.launcher;
     check("pace", options.pace, 0.0, 10.0)?;
     if let Some(mass_kg) = options.payload_mass_kg {
         check("payload mass in kg", mass_kg, 0.0, 100.0)?;
-        scenario.launcher.payload.mass_kg = mass_kg;
+        launcher.payload.iter_mut().for_each(|payload| payload.mass_kg = mass_kg);
     }
     if let Some(factor) = options.cord_force_factor {
         check("cord force factor", factor, 0.0, 5.0)?;
-        scenario.launcher.scale_cords(factor);
+        launcher.scale_cords(factor);
+    }
+    if let Some(temperature_c) = options.cord_temperature_c {
+        check("cord temperature in °C", temperature_c, -40.0, 80.0)?;
+        launcher.set_cord_temperature(temperature_c + 273.15);
     }
     if let Some(offset_n) = options.cell_offset_n {
         check("cell offset in N", offset_n, -1000.0, 1000.0)?;
@@ -162,4 +290,9 @@ fn adapted(options: &Options) -> Result<Scenario, PrepareError> {
 
 fn check(what: &'static str, found: f64, min: f64, max: f64) -> Result<(), PrepareError> {
     if found > min && found <= max { Ok(()) } else { Err(PrepareError::OutOfRange { what, found, min, max }) }
+}
+
+/// Largest value of `quantity` over the rows of a launch.
+pub fn greatest(rows: &[Row], quantity: impl Fn(&Row) -> f64) -> f64 {
+    rows.iter().map(quantity).fold(f64::MIN, f64::max)
 }

@@ -4,9 +4,8 @@ use crate::cfc;
 use crate::clock::DeviceClock;
 use crate::device::{BlockTruth, Device};
 use crate::launcher::STANDARD_GRAVITY_MPS2;
-use crate::performance::Performance;
-use crate::physics::launch::{Happening, Split};
-use crate::physics::trajectory::Row;
+use crate::performance::{Performance, greatest};
+use crate::physics::course::{Course, Happening, Split};
 use crate::sensor::Errors;
 use serde::Serialize;
 
@@ -31,7 +30,8 @@ pub struct Truth {
     pub launch: Option<Launch>,
     pub peaks: Vec<Peak>,
     pub tension: Tension,
-    pub energy: EnergyTruth,
+    /// Of the launch.
+    pub energy: Option<EnergyTruth>,
     pub rig: RigTruth,
     pub devices: Vec<DeviceTruth>,
 }
@@ -103,6 +103,9 @@ pub struct SplitTruth {
     pub rail_j: f64,
     pub cords_delivered_j: f64,
     pub cord_internal_loss_j: f64,
+    pub gas_delivered_j: f64,
+    /// Kinetic, height and elastic energy of a cord that broke.
+    pub gone_with_cord_j: f64,
     pub line_j: f64,
     pub friction_j: f64,
     pub brake_j: f64,
@@ -121,6 +124,8 @@ pub struct RigTruth {
     pub cord_mass_total_kg: f64,
     pub cord_force_factor: f64,
     pub cell_offset_n: f64,
+    pub cord_temperature_c: f64,
+    pub cycle: u32,
     pub friction_running_n: f64,
     pub friction_static_n: f64,
     pub gravity_mps2: f64,
@@ -179,7 +184,7 @@ impl Truth {
             seed: performance.options.seed,
             clock,
             scenario_zero_host_ns,
-            outcome: if performance.launch.at_separation.is_some() { "launched" } else { "not launched" },
+            outcome: performance.outcome,
             events: events(performance, times),
             launch: launch(performance, times),
             peaks: peaks(performance, times),
@@ -190,7 +195,7 @@ impl Truth {
                 hold_x_m: performance.hold.x_m,
                 line_n_max: performance.hold.line_n_max,
             },
-            energy: energy(performance),
+            energy: performance.launch.as_ref().map(|course| energy(performance, course)),
             rig: rig(performance),
             devices: played.iter().map(device).collect(),
         }
@@ -208,29 +213,19 @@ impl Times {
     }
 }
 
-fn instant_row(performance: &Performance, what: Happening) -> Option<Row> {
-    performance.instants().iter().find(|instant| instant.what == what).map(|instant| instant.row)
-}
-
-/// The release instant: line tension falls below half its value at the hold.
-fn release_s(performance: &Performance) -> Option<f64> {
-    let half_n = 0.5 * performance.hold.line_n;
-    performance.launch.rows.iter().find(|row| row.line_n < half_n).map(|row| row.t_s)
-}
-
 fn events(performance: &Performance, times: Times) -> Vec<Event> {
     let mut events: Vec<Event> = performance
         .phases
         .iter()
         .map(|phase| Event { kind: phase.name, host_ns: times.host_ns(phase.t_s), t_s: phase.t_s, x_m: phase.x_m })
         .collect();
-    events.extend(performance.instants().iter().map(|instant| Event {
-        kind: word(instant.what),
+    events.extend(performance.instants.iter().map(|instant| Event {
+        kind: instant.what.word(),
         host_ns: times.host_ns(instant.t_s),
         t_s: instant.t_s,
         x_m: instant.row.x_m,
     }));
-    if let Some(t_s) = release_s(performance) {
+    if let Some(t_s) = performance.release_s() {
         let x_m = performance.trajectory.at(t_s).x_m;
         events.push(Event { kind: "release", host_ns: times.host_ns(t_s), t_s, x_m });
     }
@@ -238,21 +233,10 @@ fn events(performance: &Performance, times: Times) -> Vec<Event> {
     events
 }
 
-fn word(what: Happening) -> &'static str {
-    match what {
-        Happening::HookOpens => "hook-opens",
-        Happening::FirstMotion => "first-motion",
-        Happening::Separation => "separation",
-        Happening::CordsSlack => "cords-slack",
-        Happening::BrakeReached => "brake-reached",
-        Happening::StopReached => "stop-reached",
-        Happening::Rest => "rest",
-    }
-}
-
 fn launch(performance: &Performance, times: Times) -> Option<Launch> {
-    let row = instant_row(performance, Happening::Separation)?;
-    let release_s = release_s(performance)?;
+    let row = performance.separation()?.row;
+    let release_s = performance.release_s()?;
+    let rows = &performance.launch.as_ref()?.rows;
     Some(Launch {
         speed_ground_mps: row.payload_v_ground_mps,
         speed_rail_mps: row.payload_v_ground_mps - row.rail_v_mps,
@@ -260,19 +244,17 @@ fn launch(performance: &Performance, times: Times) -> Option<Launch> {
         separation_x_m: row.x_m,
         separation_host_ns: times.host_ns(row.t_s),
         separation_after_release_s: row.t_s - release_s,
-        greatest_shuttle_speed_rail_mps: performance.launch.rows.iter().map(|row| row.v_mps).fold(0.0, f64::max),
+        greatest_shuttle_speed_rail_mps: greatest(rows, |row| row.v_mps),
     })
 }
 
 fn peaks(performance: &Performance, times: Times) -> Vec<Peak> {
-    let (Some(from_s), Some(separation)) = (release_s(performance), instant_row(performance, Happening::Separation))
-    else {
-        return Vec::new();
-    };
+    let Some(from_s) = performance.release_s() else { return Vec::new() };
+    let to_s = stroke_end_s(performance);
     let trajectory = &performance.trajectory;
     let start_s = from_s - 0.5;
-    let kinematic = trajectory.sampled(start_s, separation.t_s + 0.5, PEAK_INTERVAL_S, |row| row.shuttle_a_ground_mps2);
-    let window = (0.5 / PEAK_INTERVAL_S) as usize..((separation.t_s - start_s) / PEAK_INTERVAL_S) as usize;
+    let kinematic = trajectory.sampled(start_s, to_s + 0.5, PEAK_INTERVAL_S, |row| row.shuttle_a_ground_mps2);
+    let window = (0.5 / PEAK_INTERVAL_S) as usize..((to_s - start_s) / PEAK_INTERVAL_S) as usize;
     let along_g = performance.launcher().gravity_along_mps2() / STANDARD_GRAVITY_MPS2;
     let peak = |values: &[f64], filter| {
         let (idx, peak_mps2) = values[window.clone()]
@@ -291,8 +273,15 @@ fn peaks(performance: &Performance, times: Times) -> Vec<Peak> {
     peaks
 }
 
-fn energy(performance: &Performance) -> EnergyTruth {
-    let run = &performance.launch;
+/// Separation where there was one, else where the drive ended, else the end of the launch.
+fn stroke_end_s(performance: &Performance) -> f64 {
+    let course = performance.launch.as_ref();
+    let slack_s = course.and_then(|course| course.instant(Happening::CordsSlack)).map(|instant| instant.t_s);
+    let separation_s = performance.separation().map(|instant| instant.t_s);
+    separation_s.or(slack_s).unwrap_or(performance.end_s)
+}
+
+fn energy(performance: &Performance, run: &Course) -> EnergyTruth {
     let split = |split: &Split| SplitTruth {
         shuttle_kinetic_j: split.energy.shuttle_j,
         payload_kinetic_j: split.energy.payload_j,
@@ -301,7 +290,12 @@ fn energy(performance: &Performance) -> EnergyTruth {
         gravity_gained_j: split.energy.gravity_j - run.before.gravity_j,
         rail_j: split.energy.rail_j,
         cords_delivered_j: split.cords_delivered_j,
-        cord_internal_loss_j: run.before.cord_elastic_j - split.energy.cord_elastic_j - split.cords_delivered_j,
+        cord_internal_loss_j: run.before.cord_elastic_j
+            - split.energy.cord_elastic_j
+            - split.elastic_gone_j
+            - split.cords_delivered_j,
+        gas_delivered_j: split.gas_delivered_j,
+        gone_with_cord_j: split.gone_with_cord_j + split.elastic_gone_j,
         line_j: split.line_j,
         friction_j: split.friction_j,
         brake_j: split.brake_j,
@@ -322,11 +316,13 @@ fn energy(performance: &Performance) -> EnergyTruth {
 fn rig(performance: &Performance) -> RigTruth {
     let (launcher, options) = (performance.launcher(), &performance.options);
     RigTruth {
-        payload_mass_kg: launcher.payload.mass_kg,
+        payload_mass_kg: launcher.payload_mass_kg(),
         shuttle_mass_kg: launcher.shuttle.mass_kg,
-        cord_count: launcher.cords.iter().map(|group| group.count).sum(),
+        cord_count: launcher.cord_count(),
         cord_mass_total_kg: launcher.cord_mass_kg(),
         cord_force_factor: options.cord_force_factor.unwrap_or(1.0),
+        cord_temperature_c: options.cord_temperature_c.unwrap_or(20.0),
+        cycle: options.cycle,
         cell_offset_n: options.cell_offset_n.unwrap_or(0.0),
         friction_running_n: launcher.shuttle.friction_running_n,
         friction_static_n: launcher.shuttle.friction_static_n,

@@ -82,8 +82,11 @@ impl CordKind {
         }
     }
 
-    /// Free length of spring `idx` of `n_masses + 1`, counted from the shuttle.
+    /// Free length of spring `idx` of `n_masses + 1`, counted from the shuttle. A chain of no masses is one spring.
     pub fn spring_length_m(&self, idx: usize) -> f64 {
+        if self.n_masses == 0 {
+            return self.free_length_m;
+        }
         let full_m = self.free_length_m / self.n_masses as f64;
         if idx == 0 || idx == self.n_masses { 0.5 * full_m } else { full_m }
     }

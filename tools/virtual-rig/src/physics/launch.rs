@@ -1,19 +1,21 @@
-//! Carries the rig from the opening of the hook to rest: classical Runge-Kutta steps of fixed size (Kutta 1901), with
-//! separation, sticking and breaking loose located inside a step by bisection.
+//! Carries the rig through everything fast, from the opening (or a slip) of the hook to rest: classical Runge-Kutta
+//! steps of fixed size (Kutta 1901), with separation, sticking and breaking loose located inside a step by bisection.
 
 use super::cord::Memory;
-use super::stroke::{Energy, Forces, Grip, Mode, System, at};
+use super::course::{Course, Happening, Instant, Split};
+use super::gas::GasState;
+use super::stroke::{Energy, Forces, Grip, LineMode, Mode, System, at, gas_at};
 use super::trajectory::Row;
 
-/// Step of the integration, s.
+/// Step of the integration that scenarios use, s.
 pub const STEP_S: f64 = 20e-6;
-/// Longest time followed after the hook opens.
-const LONGEST_S: f64 = 2.5;
-/// The run ends when the shuttle has stuck this long after the stroke.
+/// Longest time followed.
+const LONGEST_S: f64 = 4.0;
+/// The run ends when the shuttle has stuck this long after it first moved.
 const REST_S: f64 = 0.5;
 const N_BISECTIONS: u32 = 40;
 
-/// How the rig stands when the hook begins to open.
+/// How the rig stands before anything fast happens, and after it.
 #[derive(Debug, Clone)]
 pub struct Held {
     pub t_s: f64,
@@ -21,80 +23,17 @@ pub struct Held {
     pub line_n: f64,
     /// One per cord group.
     pub memories: Vec<Memory>,
+    pub gas: GasState,
 }
 
-/// Something that happened at one instant of the launch.
+/// What sets the rig moving.
 #[derive(Debug, Clone, Copy, PartialEq)]
-pub struct Instant {
-    pub t_s: f64,
-    pub what: Happening,
-    /// Shuttle in the rail frame, payload in the ground frame.
-    pub row: Row,
-}
-
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Happening {
+pub enum Start {
     HookOpens,
-    FirstMotion,
-    Separation,
-    CordsSlack,
-    BrakeReached,
-    StopReached,
-    Rest,
-}
-
-/// A launch as it truly went.
-#[derive(Debug, Clone)]
-pub struct LaunchRun {
-    pub rows: Vec<Row>,
-    pub instants: Vec<Instant>,
-    pub before: Energy,
-    pub at_separation: Option<Split>,
-    pub at_end: Split,
-    /// `|change of energy − works| / elastic energy at release`, the largest seen at separation and end.
-    pub energy_error: f64,
-}
-
-/// Where the energy is, and where it went, J.
-#[derive(Debug, Clone, Copy)]
-pub struct Split {
-    pub energy: Energy,
-    /// Given by the cords to everything that moves.
-    pub cords_delivered_j: f64,
-    pub line_j: f64,
-    pub friction_j: f64,
-    pub brake_j: f64,
-    pub shuttle_drag_j: f64,
-    pub payload_drag_j: f64,
-    pub rail_damper_j: f64,
-    pub cord_ground_j: f64,
-}
-
-impl Split {
-    fn of(system: &System, y: &[f64]) -> Self {
-        Self {
-            energy: system.energy(y),
-            cords_delivered_j: y[at::CORDS],
-            line_j: y[at::LINE],
-            friction_j: y[at::FRICTION],
-            brake_j: y[at::BRAKE],
-            shuttle_drag_j: y[at::SHUTTLE_DRAG],
-            payload_drag_j: y[at::PAYLOAD_DRAG],
-            rail_damper_j: y[at::RAIL_DAMPER],
-            cord_ground_j: y[at::CORD_GROUND],
-        }
-    }
-
-    fn error_j(&self, before: &Energy) -> f64 {
-        let losses_j = self.line_j
-            + self.friction_j
-            + self.brake_j
-            + self.shuttle_drag_j
-            + self.payload_drag_j
-            + self.rail_damper_j
-            + self.cord_ground_j;
-        (self.energy.mechanical_j() - before.mechanical_j() - self.cords_delivered_j + losses_j).abs()
-    }
+    /// The hook lets the line's end go forward by `slip_m`, then holds again.
+    HookSlips {
+        line_end_x_m: f64,
+    },
 }
 
 /// Scratch of the Runge-Kutta step.
@@ -103,20 +42,26 @@ struct Scratch {
     stage: Vec<f64>,
 }
 
-struct Runner<'a> {
-    system: &'a System<'a>,
+struct Runner {
+    system: System,
     scratch: Scratch,
     t_s: f64,
     y: Vec<f64>,
     next: Vec<f64>,
     mode: Mode,
-    run: LaunchRun,
+    /// What went away with broken cords.
+    gone: Energy,
+    cord_breaks_x_m: Option<f64>,
     stuck_since_s: Option<f64>,
+    rows: Vec<Row>,
+    instants: Vec<Instant>,
+    before: Energy,
+    at_separation: Option<Split>,
 }
 
-/// Runs the launch from `held`.
-pub fn launch(system: &System, held: &Held) -> LaunchRun {
-    let mut runner = Runner::new(system, held);
+/// Runs the rig from `held` to rest.
+pub fn launch(system: System, held: &Held, start: Start) -> Course {
+    let mut runner = Runner::new(system, held, start);
     let until_s = held.t_s + LONGEST_S;
     while runner.t_s < until_s && !runner.at_rest() {
         runner.step();
@@ -124,34 +69,33 @@ pub fn launch(system: &System, held: &Held) -> LaunchRun {
     runner.finish()
 }
 
-impl<'a> Runner<'a> {
-    fn new(system: &'a System<'a>, held: &Held) -> Self {
-        let y = system.held(held.x_m, &held.memories);
+impl Runner {
+    fn new(system: System, held: &Held, start: Start) -> Self {
+        let y = system.held(held.x_m, &held.memories, &held.gas);
         let n = y.len();
         let zeros = || vec![0.0; n];
-        let before = Split::of(system, &y);
-        let mode =
-            Mode { grip: Grip::Stuck, joined: system.with_payload, opening_t_s: held.t_s, hold_line_n: held.line_n };
+        let (line, what) = match start {
+            Start::HookOpens => (LineMode::Opening { t_s: held.t_s, hold_n: held.line_n }, Happening::HookOpens),
+            Start::HookSlips { line_end_x_m } => (LineMode::Holding { end_x_m: line_end_x_m }, Happening::HookSlips),
+        };
         let mut runner = Self {
+            before: system.energy(&y),
+            mode: Mode { grip: Grip::Stuck, joined: system.launcher.payload.is_some(), line },
+            cord_breaks_x_m: system.launcher.cord_breaks_x_m,
             system,
             scratch: Scratch { slopes: [zeros(), zeros(), zeros(), zeros()], stage: zeros() },
             t_s: held.t_s,
             next: zeros(),
             y,
-            mode,
-            run: LaunchRun {
-                rows: Vec::new(),
-                instants: Vec::new(),
-                before: before.energy,
-                at_separation: None,
-                at_end: before,
-                energy_error: 0.0,
-            },
+            gone: Energy::default(),
             stuck_since_s: None,
+            rows: Vec::new(),
+            instants: Vec::new(),
+            at_separation: None,
         };
         let forces = runner.forces_here();
         runner.record(&forces);
-        runner.note(Happening::HookOpens);
+        runner.note(what);
         runner
     }
 
@@ -165,9 +109,10 @@ impl<'a> Runner<'a> {
 
     /// One step, cut short at the first event inside it.
     fn step(&mut self) {
-        self.advance(STEP_S);
-        if self.event_in_next(STEP_S) {
-            let (mut early_s, mut late_s) = (0.0, STEP_S);
+        let step_s = self.system.step_s;
+        self.advance(step_s);
+        if self.event_in_next(step_s) {
+            let (mut early_s, mut late_s) = (0.0, step_s);
             for _ in 0..N_BISECTIONS {
                 let middle_s = 0.5 * (early_s + late_s);
                 self.advance(middle_s);
@@ -177,7 +122,7 @@ impl<'a> Runner<'a> {
             self.accept(late_s);
             self.change_mode();
         } else {
-            self.accept(STEP_S);
+            self.accept(step_s);
         }
         let forces = self.forces_here();
         self.record(&forces);
@@ -213,40 +158,67 @@ impl<'a> Runner<'a> {
     }
 
     fn event_in_next(&mut self, step_s: f64) -> bool {
-        let y = &self.next;
-        let v_mps = y[at::SHUTTLE_V] - y[at::RAIL_V];
-        let forces = self.system.derivative(self.t_s + step_s, y, &self.mode, &mut self.scratch.stage);
-        let grip_changes = match self.mode.grip {
-            Grip::Sliding(direction) => direction * v_mps < 0.0,
+        let forces = self.system.derivative(self.t_s + step_s, &self.next, &self.mode, &mut self.scratch.stage);
+        self.grip_ends(&self.next, &forces)
+            || self.parting(&self.next, &forces).is_some()
+            || self.cord_breaks(&self.next)
+    }
+
+    fn grip_ends(&self, y: &[f64], forces: &Forces) -> bool {
+        match self.mode.grip {
+            Grip::Sliding(direction) => direction * (y[at::SHUTTLE_V] - y[at::RAIL_V]) < 0.0,
             Grip::Stuck => forces.holding_n.abs() > self.static_friction_n(y),
-        };
-        grip_changes || (self.mode.joined && v_mps > 0.0 && forces.contact_n < 0.0)
+        }
+    }
+
+    /// How the payload parts from the shuttle at `y`, if it does.
+    fn parting(&self, y: &[f64], forces: &Forces) -> Option<Happening> {
+        let payload = self.system.launcher.payload.filter(|_| self.mode.joined)?;
+        let x_m = y[at::SHUTTLE_X] - y[at::RAIL_X];
+        if payload.comes_off_x_m.is_some_and(|off_x_m| x_m >= off_x_m) {
+            return Some(Happening::PayloadOff);
+        }
+        (x_m > payload.latch_opens_x_m && forces.contact_n < 0.0).then_some(Happening::Separation)
+    }
+
+    fn cord_breaks(&self, y: &[f64]) -> bool {
+        self.cord_breaks_x_m.is_some_and(|breaks_x_m| y[at::SHUTTLE_X] - y[at::RAIL_X] >= breaks_x_m)
     }
 
     fn static_friction_n(&self, y: &[f64]) -> f64 {
-        let launcher = self.system.launcher;
+        let launcher = &self.system.launcher;
         launcher.shuttle.friction_static_n + launcher.brake.pad_force_n(y[at::SHUTTLE_X] - y[at::RAIL_X])
     }
 
     /// Applies the event that the accepted state has just passed.
     fn change_mode(&mut self) {
         let forces = self.forces_here();
-        let v_mps = self.y[at::SHUTTLE_V] - self.y[at::RAIL_V];
-        if self.mode.joined && v_mps > 0.0 && forces.contact_n < 0.0 {
+        if self.cord_breaks(&self.y) {
+            self.break_cord();
+        } else if let Some(what) = self.parting(&self.y, &forces) {
             self.mode.joined = false;
-            self.run.at_separation = Some(Split::of(self.system, &self.y));
-            self.note(Happening::Separation);
-            return;
+            self.at_separation = Some(Split::of(&self.system, &self.y, &self.gone));
+            self.note(what);
+        } else if let Grip::Sliding(_) = self.mode.grip {
+            self.halt();
+        } else {
+            self.mode.grip = Grip::Sliding(-forces.holding_n.signum());
+            self.note_once(Happening::FirstMotion);
         }
-        match self.mode.grip {
-            Grip::Stuck => {
-                self.mode.grip = Grip::Sliding(-forces.holding_n.signum());
-                if !self.seen(Happening::FirstMotion) {
-                    self.note(Happening::FirstMotion);
-                }
-            }
-            Grip::Sliding(_) => self.halt(),
+    }
+
+    /// One cord of the first group goes, with all its energy.
+    fn break_cord(&mut self) {
+        self.cord_breaks_x_m = None;
+        let whole = self.system.energy(&self.y);
+        if let Some(group) = self.system.launcher.cords.first_mut() {
+            group.count -= 1.0;
         }
+        let rest = self.system.energy(&self.y);
+        self.gone.cord_kinetic_j += whole.cord_kinetic_j - rest.cord_kinetic_j;
+        self.gone.cord_elastic_j += whole.cord_elastic_j - rest.cord_elastic_j;
+        self.gone.gravity_j += whole.gravity_j - rest.gravity_j;
+        self.note(Happening::CordBreaks);
     }
 
     /// The shuttle has come to a stop on the rail: it sticks, or turns where static friction cannot hold it.
@@ -262,47 +234,62 @@ impl<'a> Runner<'a> {
         }
     }
 
-    fn record(&mut self, forces: &Forces) {
+    fn row(&self, forces: &Forces) -> Row {
         let y = &self.y;
-        self.run.rows.push(Row {
+        let gas = gas_at(y);
+        let x_m = y[at::SHUTTLE_X] - y[at::RAIL_X];
+        Row {
             t_s: self.t_s,
-            x_m: y[at::SHUTTLE_X] - y[at::RAIL_X],
+            x_m,
             v_mps: y[at::SHUTTLE_V] - y[at::RAIL_V],
             shuttle_a_ground_mps2: forces.shuttle_a_mps2,
             line_n: forces.line_n,
             cords_n: forces.cords_n,
             anchor_n: forces.anchor_n,
             contact_n: forces.contact_n,
+            payload_x_m: y[at::PAYLOAD_X] - y[at::RAIL_X],
             payload_v_ground_mps: y[at::PAYLOAD_V],
+            payload_a_ground_mps2: forces.payload_a_mps2,
             rail_x_m: y[at::RAIL_X],
             rail_v_mps: y[at::RAIL_V],
-        });
+            reservoir_pa: self.system.launcher.gas.map_or(0.0, |drive| drive.reservoir_pa(&gas)),
+            cylinder_pa: self.system.launcher.gas.map_or(0.0, |drive| drive.cylinder_pa(&gas, x_m)),
+        }
     }
 
-    fn seen(&self, what: Happening) -> bool {
-        self.run.instants.iter().any(|instant| instant.what == what)
+    fn record(&mut self, forces: &Forces) {
+        let row = self.row(forces);
+        self.rows.push(row);
     }
 
     fn note(&mut self, what: Happening) {
         let forces = self.forces_here();
-        self.record(&forces);
-        if let Some(row) = self.run.rows.pop() {
-            self.run.instants.push(Instant { t_s: self.t_s, what, row });
+        self.instants.push(Instant { t_s: self.t_s, what, row: self.row(&forces) });
+    }
+
+    fn seen(&self, what: Happening) -> bool {
+        self.instants.iter().any(|instant| instant.what == what)
+    }
+
+    fn note_once(&mut self, what: Happening) {
+        if !self.seen(what) {
+            self.note(what);
         }
     }
 
     fn watch_marks(&mut self, forces: &Forces) {
         let x_m = self.y[at::SHUTTLE_X] - self.y[at::RAIL_X];
-        let brake = &self.system.launcher.brake;
-        if forces.cords_n <= 0.0 && x_m > 0.5 * self.system.launcher.zero_mark_x_m && !self.seen(Happening::CordsSlack)
-        {
-            self.note(Happening::CordsSlack);
+        let launcher = &self.system.launcher;
+        let (brake_x_m, stop_x_m) = (launcher.brake.x_m, launcher.brake.stop_x_m);
+        let has_cords = !launcher.cords.is_empty();
+        if has_cords && forces.cords_n <= 0.0 && x_m > 0.5 * launcher.zero_mark_x_m {
+            self.note_once(Happening::CordsSlack);
         }
-        if x_m >= brake.x_m && !self.seen(Happening::BrakeReached) {
-            self.note(Happening::BrakeReached);
+        if x_m >= brake_x_m {
+            self.note_once(Happening::BrakeReached);
         }
-        if x_m >= brake.stop_x_m && !self.seen(Happening::StopReached) {
-            self.note(Happening::StopReached);
+        if x_m >= stop_x_m {
+            self.note_once(Happening::StopReached);
         }
         let moved = self.seen(Happening::FirstMotion);
         match (moved && self.mode.grip == Grip::Stuck, self.stuck_since_s) {
@@ -312,16 +299,33 @@ impl<'a> Runner<'a> {
         }
     }
 
-    fn finish(mut self) -> LaunchRun {
+    fn finish(mut self) -> Course {
         if let Some(rest_t_s) = self.stuck_since_s {
-            let row = self.run.rows.iter().find(|row| row.t_s >= rest_t_s).copied().unwrap_or_default();
-            self.run.instants.push(Instant { t_s: rest_t_s, what: Happening::Rest, row });
+            let row = self.rows.iter().find(|row| row.t_s >= rest_t_s).copied().unwrap_or_default();
+            self.instants.push(Instant { t_s: rest_t_s, what: Happening::Rest, row });
         }
-        self.run.at_end = Split::of(self.system, &self.y);
-        let stored_j = self.run.before.cord_elastic_j.max(f64::MIN_POSITIVE);
-        let checks = [self.run.at_separation, Some(self.run.at_end)];
-        self.run.energy_error =
-            checks.iter().flatten().map(|split| split.error_j(&self.run.before) / stored_j).fold(0.0, f64::max);
-        self.run
+        let forces = self.forces_here();
+        let last = self.row(&forces);
+        let at_end = Split::of(&self.system, &self.y, &self.gone);
+        let stored_j = self.before.cord_elastic_j.max(self.y[at::GAS]).max(f64::MIN_POSITIVE);
+        let checks = [self.at_separation, Some(at_end)];
+        let energy_error =
+            checks.iter().flatten().map(|split| split.error_j(&self.before) / stored_j).fold(0.0, f64::max);
+        let gas = gas_at(&self.y);
+        Course {
+            after: Held {
+                t_s: self.t_s,
+                x_m: last.x_m,
+                line_n: last.line_n,
+                memories: self.system.mean_memories(&self.y),
+                gas,
+            },
+            rows: self.rows,
+            instants: self.instants,
+            before: self.before,
+            at_separation: self.at_separation,
+            at_end,
+            energy_error,
+        }
     }
 }

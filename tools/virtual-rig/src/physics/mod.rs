@@ -2,6 +2,8 @@
 
 pub mod bench;
 pub mod cord;
+pub mod course;
+pub mod gas;
 pub mod launch;
 pub mod rubber;
 pub mod stroke;

@@ -71,11 +71,6 @@ impl RubberTable {
         Self { scale_m2, knots }
     }
 
-    /// The same cord with its force multiplied by `factor`.
-    pub fn scaled(&self, factor: f64) -> Self {
-        Self::new(self.scale_m2 * factor)
-    }
-
     fn force_n(&self, stretch: f64) -> f64 {
         let place = (stretch - 1.0) / (TABLE_STRETCH_MAX - 1.0) * N_INTERVALS as f64;
         let idx = place as usize;
@@ -96,6 +91,14 @@ impl ForceLaw {
     /// Rubber cord of cross-section `section_m2`, its force multiplied by `factor` (temperature, cycles, manufacture).
     pub fn rubber(section_m2: f64, factor: f64) -> Self {
         Self::Rubber(RubberTable::new(section_m2 * factor))
+    }
+
+    /// The same cord with its force multiplied by `factor`.
+    pub fn scaled(&self, factor: f64) -> Self {
+        match self {
+            Self::Rubber(table) => Self::rubber(table.scale_m2, factor),
+            Self::Linear { stiffness_n } => Self::Linear { stiffness_n: stiffness_n * factor },
+        }
     }
 
     /// Elastic force in N at `stretch`; zero when slack.

@@ -8,6 +8,7 @@
 //! The works of all forces are integrated beside the motion, so that energy must close (see [`Energy`]).
 
 use super::cord::{CordGroup, Memory, N_RELAXATION};
+use super::gas::GasState;
 use crate::launcher::Launcher;
 
 /// Indices into the state vector.
@@ -28,7 +29,12 @@ pub mod at {
     pub const RAIL_DAMPER: usize = 11;
     pub const CORD_GROUND: usize = 12;
     pub const CORDS: usize = 13;
-    pub const FIRST_CORD: usize = 14;
+    /// Given by the gas to the shuttle and the rail.
+    pub const GAS: usize = 14;
+    /// kg in reservoir and cylinder.
+    pub const RESERVOIR: usize = 15;
+    pub const CYLINDER: usize = 16;
+    pub const FIRST_CORD: usize = 17;
 }
 
 const MEMORY_SIZE: usize = 1 + N_RELAXATION;
@@ -49,9 +55,16 @@ pub struct Mode {
     pub grip: Grip,
     /// Payload pushed by the shuttle.
     pub joined: bool,
-    /// Instant at which the hook began to open, and line force before it.
-    pub opening_t_s: f64,
-    pub hold_line_n: f64,
+    pub line: LineMode,
+}
+
+/// What the release line does.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum LineMode {
+    /// The hook began to open at `t_s`, the line carrying `hold_n` until then.
+    Opening { t_s: f64, hold_n: f64 },
+    /// The line holds, its unstretched end at rail coordinate `end_x_m`.
+    Holding { end_x_m: f64 },
 }
 
 /// Forces and accelerations at one instant.
@@ -59,6 +72,7 @@ pub struct Mode {
 pub struct Forces {
     pub line_n: f64,
     pub cords_n: f64,
+    pub gas_n: f64,
     pub anchor_n: f64,
     pub contact_n: f64,
     pub shuttle_a_mps2: f64,
@@ -70,12 +84,12 @@ pub struct Forces {
 
 /// Launcher with the constants that the equations need.
 #[derive(Debug, Clone)]
-pub struct System<'a> {
-    pub launcher: &'a Launcher,
-    pub groups: Vec<CordGroup>,
-    pub with_payload: bool,
+pub struct System {
+    pub launcher: Launcher,
     /// Force of the rail's spring at the hold is the zero of its motion.
     pub rail_rest_n: f64,
+    /// Step of the integration.
+    pub step_s: f64,
 }
 
 struct Drag {
@@ -83,21 +97,23 @@ struct Drag {
     payload_n: f64,
 }
 
-impl System<'_> {
+impl System {
     pub fn n_states(&self) -> usize {
-        at::FIRST_CORD + self.groups.iter().map(group_size).sum::<usize>()
+        at::FIRST_CORD + self.launcher.cords.iter().map(group_size).sum::<usize>()
     }
 
     /// State of the rig held still at rail coordinate `x_m` with evenly stretched cords.
-    pub fn held(&self, x_m: f64, memories: &[Memory]) -> Vec<f64> {
+    pub fn held(&self, x_m: f64, memories: &[Memory], gas: &GasState) -> Vec<f64> {
         let mut y = vec![0.0; self.n_states()];
         y[at::SHUTTLE_X] = x_m;
         y[at::PAYLOAD_X] = x_m;
+        y[at::RESERVOIR] = gas.reservoir_kg;
+        y[at::CYLINDER] = gas.cylinder_kg;
         let mut start = at::FIRST_CORD;
-        for (group, memory) in self.groups.iter().zip(memories) {
+        for (group, memory) in self.launcher.cords.iter().zip(memories) {
             let kind = &group.kind;
             let n = kind.n_masses;
-            let span_m = self.launcher.anchor_x_m(kind) - x_m;
+            let span_m = self.launcher.anchor_x_m - x_m;
             for idx in 0..n {
                 y[start + idx] = x_m + span_m * (idx as f64 + 0.5) / n as f64;
             }
@@ -113,22 +129,45 @@ impl System<'_> {
 
     /// Derivative of the state into `dy`; returns the forces behind it.
     pub fn derivative(&self, t_s: f64, y: &[f64], mode: &Mode, dy: &mut [f64]) -> Forces {
-        let mut forces = Forces { line_n: self.line_force_n(t_s, mode), ..Forces::default() };
+        let mut forces = Forces { line_n: self.line_force_n(t_s, y, mode), ..Forces::default() };
         dy.fill(0.0);
         let mut start = at::FIRST_CORD;
-        for group in &self.groups {
+        for group in &self.launcher.cords {
             let (at_shuttle_n, at_anchor_n) = self.cord_derivative(group, start, y, dy);
             forces.cords_n += at_shuttle_n;
             forces.anchor_n += at_anchor_n;
             start += group_size(group);
         }
+        self.gas_derivative(y, &mut forces, dy);
         self.bodies(y, mode, &mut forces, dy);
         forces
     }
 
-    fn line_force_n(&self, t_s: f64, mode: &Mode) -> f64 {
-        let opened = ((t_s - mode.opening_t_s) / self.launcher.hook.opening_s).clamp(0.0, 1.0);
-        mode.hold_line_n * 0.5 * (1.0 + (std::f64::consts::PI * opened).cos())
+    fn line_force_n(&self, t_s: f64, y: &[f64], mode: &Mode) -> f64 {
+        let hook = &self.launcher.hook;
+        match mode.line {
+            LineMode::Opening { t_s: opening_t_s, hold_n } => {
+                let opened = ((t_s - opening_t_s) / hook.opening_s).clamp(0.0, 1.0);
+                hold_n * 0.5 * (1.0 + (std::f64::consts::PI * opened).cos())
+            }
+            LineMode::Holding { end_x_m } => {
+                let (x_m, v_mps) = (y[at::SHUTTLE_X] - y[at::RAIL_X], y[at::SHUTTLE_V] - y[at::RAIL_V]);
+                let stretch_m = x_m - end_x_m;
+                let damped_n = hook.line_damping_n_s_per_m * v_mps;
+                if stretch_m > 0.0 { (hook.line_stiffness_n_per_m * stretch_m + damped_n).max(0.0) } else { 0.0 }
+            }
+        }
+    }
+
+    fn gas_derivative(&self, y: &[f64], forces: &mut Forces, dy: &mut [f64]) {
+        let Some(gas) = &self.launcher.gas else { return };
+        let state = gas_at(y);
+        let (x_m, v_mps) = (y[at::SHUTTLE_X] - y[at::RAIL_X], y[at::SHUTTLE_V] - y[at::RAIL_V]);
+        let flow_kg_per_s = gas.flow_kg_per_s(&state, x_m, 1.0);
+        dy[at::RESERVOIR] = -flow_kg_per_s;
+        dy[at::CYLINDER] = flow_kg_per_s;
+        forces.gas_n = gas.force_n(&state, x_m, v_mps);
+        dy[at::GAS] = forces.gas_n * v_mps;
     }
 
     /// Chain of one group, one cord integrated: returns the group's forces at shuttle and anchor.
@@ -137,7 +176,7 @@ impl System<'_> {
         let n = kind.n_masses;
         let mass_kg = kind.mass_kg / n as f64;
         let along_mps2 = self.launcher.gravity_along_mps2();
-        let anchor = (self.launcher.anchor_x_m(kind) + y[at::RAIL_X], y[at::RAIL_V]);
+        let anchor = (self.launcher.anchor_x_m + y[at::RAIL_X], y[at::RAIL_V]);
         let mut near = (y[at::SHUTTLE_X], y[at::SHUTTLE_V]);
         let (mut pull_before_n, mut slack_before, mut at_shuttle_n) = (0.0, 0.0, 0.0);
         for spring in 0..=n {
@@ -170,23 +209,23 @@ impl System<'_> {
     }
 
     fn bodies(&self, y: &[f64], mode: &Mode, forces: &mut Forces, dy: &mut [f64]) {
-        let launcher = self.launcher;
+        let launcher = &self.launcher;
         let rail = &launcher.rail;
         let (x_m, v_mps) = (y[at::SHUTTLE_X] - y[at::RAIL_X], y[at::SHUTTLE_V] - y[at::RAIL_V]);
         let drag = self.drag(y);
         let along_mps2 = launcher.gravity_along_mps2();
-        let (payload_kg, shuttle_kg) = (self.payload_kg(), launcher.shuttle.mass_kg);
+        let (payload_kg, shuttle_kg) = (launcher.payload_mass_kg(), launcher.shuttle.mass_kg);
         let pushed_kg = if mode.joined { payload_kg } else { 0.0 };
         let moved_kg = shuttle_kg + pushed_kg;
         let damper_n = self.damper_n(x_m, v_mps);
-        let push_n = forces.cords_n
+        let push_n = forces.cords_n + forces.gas_n
             - forces.line_n
             - drag.shuttle_n
             - damper_n
             - moved_kg * along_mps2
             - if mode.joined { drag.payload_n } else { 0.0 };
         let rail_spring_n = rail.stiffness_n_per_m * y[at::RAIL_X] + rail.damping_n_s_per_m * y[at::RAIL_V];
-        let rail_push_n = forces.line_n - forces.anchor_n + damper_n - rail_spring_n - self.rail_rest_n;
+        let rail_push_n = forces.line_n - forces.anchor_n - forces.gas_n + damper_n - rail_spring_n - self.rail_rest_n;
 
         let pad_n = launcher.brake.pad_force_n(x_m);
         let friction_n = match mode.grip {
@@ -219,19 +258,15 @@ impl System<'_> {
         dy[at::RAIL_DAMPER] = rail.damping_n_s_per_m * y[at::RAIL_V] * y[at::RAIL_V];
     }
 
-    fn payload_kg(&self) -> f64 {
-        if self.with_payload { self.launcher.payload.mass_kg } else { 0.0 }
-    }
-
     fn drag(&self, y: &[f64]) -> Drag {
-        let launcher = self.launcher;
+        let launcher = &self.launcher;
         let on = |area_m2: f64, v_mps: f64| {
             let air_mps = v_mps + launcher.head_wind_mps;
             0.5 * launcher.air_density_kg_per_m3 * area_m2 * air_mps * air_mps.abs()
         };
         Drag {
             shuttle_n: on(launcher.shuttle.drag_area_m2, y[at::SHUTTLE_V]),
-            payload_n: if self.with_payload { on(launcher.payload.drag_area_m2, y[at::PAYLOAD_V]) } else { 0.0 },
+            payload_n: launcher.payload.map_or(0.0, |payload| on(payload.drag_area_m2, y[at::PAYLOAD_V])),
         }
     }
 
@@ -249,9 +284,9 @@ impl System<'_> {
 
     /// The energy of every part at state `y`.
     pub fn energy(&self, y: &[f64]) -> Energy {
-        let launcher = self.launcher;
+        let launcher = &self.launcher;
         let along_mps2 = launcher.gravity_along_mps2();
-        let (shuttle_kg, payload_kg) = (launcher.shuttle.mass_kg, self.payload_kg());
+        let (shuttle_kg, payload_kg) = (launcher.shuttle.mass_kg, launcher.payload_mass_kg());
         let mut energy = Energy {
             shuttle_j: 0.5 * shuttle_kg * y[at::SHUTTLE_V].powi(2),
             payload_j: 0.5 * payload_kg * y[at::PAYLOAD_V].powi(2),
@@ -262,18 +297,40 @@ impl System<'_> {
             ..Energy::default()
         };
         let mut start = at::FIRST_CORD;
-        for group in &self.groups {
+        for group in &self.launcher.cords {
             self.add_cord_energy(group, start, y, &mut energy);
             start += group_size(group);
         }
         energy
     }
 
+    /// What an evenly stretched cord of each group would remember: the mean over its springs.
+    pub fn mean_memories(&self, y: &[f64]) -> Vec<Memory> {
+        let mut start = at::FIRST_CORD;
+        let mut memories = Vec::new();
+        for group in &self.launcher.cords {
+            let kind = &group.kind;
+            let mut mean = Memory::default();
+            for spring in 0..=kind.n_masses {
+                let place = start + 2 * kind.n_masses + MEMORY_SIZE * spring;
+                let memory = memory_at(&y[place..place + MEMORY_SIZE]);
+                let share = kind.spring_length_m(spring) / kind.free_length_m;
+                mean.unloading += share * memory.unloading;
+                for (sum_n, delayed_n) in mean.delayed_n.iter_mut().zip(memory.delayed_n) {
+                    *sum_n += share * delayed_n;
+                }
+            }
+            memories.push(mean);
+            start += group_size(group);
+        }
+        memories
+    }
+
     fn add_cord_energy(&self, group: &CordGroup, start: usize, y: &[f64], energy: &mut Energy) {
         let kind = &group.kind;
         let n = kind.n_masses;
         let mass_kg = kind.mass_kg / n as f64;
-        let anchor_x_m = self.launcher.anchor_x_m(kind) + y[at::RAIL_X];
+        let anchor_x_m = self.launcher.anchor_x_m + y[at::RAIL_X];
         let mut near_x_m = y[at::SHUTTLE_X];
         for spring in 0..=n {
             let far_x_m = if spring == n { anchor_x_m } else { y[start + spring] };
@@ -291,6 +348,11 @@ impl System<'_> {
 
 fn group_size(group: &CordGroup) -> usize {
     2 * group.kind.n_masses + MEMORY_SIZE * (group.kind.n_masses + 1)
+}
+
+/// Gas in the state vector.
+pub fn gas_at(y: &[f64]) -> GasState {
+    GasState { reservoir_kg: y[at::RESERVOIR], cylinder_kg: y[at::CYLINDER] }
 }
 
 fn memory_at(values: &[f64]) -> Memory {

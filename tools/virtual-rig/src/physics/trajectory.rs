@@ -15,9 +15,14 @@ pub struct Row {
     pub anchor_n: f64,
     /// Between shuttle and payload.
     pub contact_n: f64,
+    pub payload_x_m: f64,
     pub payload_v_ground_mps: f64,
+    pub payload_a_ground_mps2: f64,
     pub rail_x_m: f64,
     pub rail_v_mps: f64,
+    /// Absolute.
+    pub reservoir_pa: f64,
+    pub cylinder_pa: f64,
 }
 
 impl Row {
@@ -32,6 +37,10 @@ impl Row {
             cords_n: mix(self.cords_n, next.cords_n),
             anchor_n: mix(self.anchor_n, next.anchor_n),
             contact_n: mix(self.contact_n, next.contact_n),
+            payload_x_m: mix(self.payload_x_m, next.payload_x_m),
+            payload_a_ground_mps2: mix(self.payload_a_ground_mps2, next.payload_a_ground_mps2),
+            reservoir_pa: mix(self.reservoir_pa, next.reservoir_pa),
+            cylinder_pa: mix(self.cylinder_pa, next.cylinder_pa),
             payload_v_ground_mps: mix(self.payload_v_ground_mps, next.payload_v_ground_mps),
             rail_x_m: mix(self.rail_x_m, next.rail_x_m),
             rail_v_mps: mix(self.rail_v_mps, next.rail_v_mps),

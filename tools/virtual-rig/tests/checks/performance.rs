@@ -21,7 +21,7 @@ fn the_same_seed_gives_the_same_reads_and_another_seed_does_not() {
 
 #[test]
 fn the_nominal_launch_meets_its_plan_and_closes_its_energy() {
-    let run = nominal(1).unwrap().launch;
+    let run = nominal(1).unwrap().launch.unwrap();
     let separation = run.at_separation.unwrap();
     let speed_mps = (2.0 * separation.energy.payload_j / 6.2).sqrt();
     assert!((15.0..18.0).contains(&speed_mps), "launch speed {speed_mps} m/s");
