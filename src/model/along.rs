@@ -15,7 +15,7 @@ pub enum Along {
 pub fn rates_along<const N: usize>(system: &System, i: usize, s: f64, y: &[f64; N]) -> [f64; N] {
     let mut state = *y;
     state[i] = s;
-    divided(system.rates(&state), i)
+    divided(system.rates(y[i], &state), i)
 }
 
 /// Rates against time to rates against component `i`, whose place then holds the time.

@@ -2,7 +2,7 @@
 
 use super::error::ModelError;
 use super::setup::LaunchSetup;
-use super::system::{MAX_CORD_SETS, MAX_TABLES};
+use super::system::{MAX_CORD_SETS, MAX_GAS, MAX_TABLES};
 
 fn require(
     what: &'static str,
@@ -47,7 +47,7 @@ impl LaunchSetup {
 
     fn check_sources(&self) -> Result<(), ModelError> {
         let (n_sets, n_tables) = (self.cords.len(), self.tables.len());
-        if n_sets > MAX_CORD_SETS || n_tables > MAX_TABLES {
+        if n_sets > MAX_CORD_SETS || n_tables > MAX_TABLES || self.gas.len() > MAX_GAS {
             let (max_sets, max_tables) = (MAX_CORD_SETS, MAX_TABLES);
             return Err(ModelError::TooManySources { n_sets, n_tables, max_sets, max_tables });
         }
@@ -56,6 +56,30 @@ impl LaunchSetup {
             require("cord free length", set.free_length_m, "m", "more than zero", set.free_length_m > 0.0)?;
             require("travel ratio", set.travel_ratio, "", "more than zero", set.travel_ratio > 0.0)?;
             not_negative("cord mass", set.mass_kg, "kg")?;
+        }
+        for source in &self.gas {
+            let charged_pa = source.charged_pressure_pa;
+            let over = charged_pa >= source.ambient_pressure_pa;
+            require("charged pressure (absolute)", charged_pa, "Pa", "at least the ambient pressure", over)?;
+            require(
+                "ambient pressure",
+                source.ambient_pressure_pa,
+                "Pa",
+                "more than zero",
+                source.ambient_pressure_pa > 0.0,
+            )?;
+            require("vessel volume", source.vessel_volume_m3, "m^3", "more than zero", source.vessel_volume_m3 > 0.0)?;
+            let dead_m3 = source.dead_volume_m3;
+            let enough = dead_m3 > 0.0 || (!source.has_valve() && dead_m3 == 0.0);
+            require("dead volume", dead_m3, "m^3", "more than zero behind a valve", enough)?;
+            require("piston area", source.piston_area_m2, "m^2", "more than zero", source.piston_area_m2 > 0.0)?;
+            require("piston stroke", source.stroke_m, "m", "more than zero", source.stroke_m > 0.0)?;
+            require("piston travel ratio", source.travel_ratio, "", "more than zero", source.travel_ratio > 0.0)?;
+            require("gas temperature", source.temperature_k, "K", "more than zero", source.temperature_k > 0.0)?;
+            let exponent = source.polytropic_exponent;
+            require("polytropic exponent", exponent, "", "between 1 and 1.7", (1.0..=1.7).contains(&exponent))?;
+            require("leak time", source.leak_time_s, "s", "more than zero", source.leak_time_s > 0.0)?;
+            not_negative("time from charging to release", source.hold_s, "s")?;
         }
         if let Some(recoil) = &self.recoil {
             require("rail mass", recoil.mass_kg, "kg", "more than zero", recoil.mass_kg > 0.0)?;

@@ -105,6 +105,10 @@ impl Curve {
         self.knots[self.knots.len() - 1]
     }
 
+    pub fn last_value(&self) -> f64 {
+        self.pieces[self.pieces.len() - 1].coefficients[0]
+    }
+
     #[inline]
     fn piece(&self, at: f64) -> &Piece {
         let mut index = 0;

@@ -1,16 +1,18 @@
 //! Where a launch's energy goes, every term named, and how well the terms close.
 
-use super::cord::CordPhase;
+use super::cord::{Branch, CordPhase, Side};
 use super::event::{Event, EventKind};
 use super::setup::LaunchSetup;
 use super::system::{Layout, MAX_CORD_SETS, Motion, N_ACCOUNTS};
 
-/// Energy from release to one instant, in joules. Sources: `stored_j`, `tables_j`, `thrust_j`; all others are uses.
+/// Energy from release to one instant, in joules. Sources: `stored_j`, `tables_j`, `gas_j`, `thrust_j`; all others are uses.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
 pub struct EnergySplit {
     /// In the cords at release, as far as they give it back.
     pub stored_j: f64,
     pub tables_j: f64,
+    /// Work of the pistons on the shuttle.
+    pub gas_j: f64,
     pub thrust_j: f64,
     /// Payload, at this instant or when it left.
     pub payload_kinetic_j: f64,
@@ -22,6 +24,8 @@ pub struct EnergySplit {
     /// Of the strain wave, not carried over to the evenly strained picture.
     pub wave_left_j: f64,
     pub still_stored_j: f64,
+    /// Lost between loading and unloading of cords that extended again after release.
+    pub hysteresis_j: f64,
     /// Gained against gravity.
     pub potential_j: f64,
     pub friction_j: f64,
@@ -40,7 +44,7 @@ pub struct EnergySplit {
 
 impl EnergySplit {
     /// Every use with its name.
-    pub fn uses(&self) -> [(&'static str, f64); 16] {
+    pub fn uses(&self) -> [(&'static str, f64); 17] {
         [
             ("payload kinetic", self.payload_kinetic_j),
             ("shuttle kinetic", self.shuttle_kinetic_j),
@@ -48,6 +52,7 @@ impl EnergySplit {
             ("left with slack cords", self.cords_left_j),
             ("left in the strain wave", self.wave_left_j),
             ("still stored", self.still_stored_j),
+            ("hysteresis", self.hysteresis_j),
             ("height", self.potential_j),
             ("friction", self.friction_j),
             ("load friction", self.load_friction_j),
@@ -62,14 +67,16 @@ impl EnergySplit {
     }
 
     pub fn sources_j(&self) -> f64 {
-        self.stored_j + self.tables_j + self.thrust_j
+        self.stored_j + self.tables_j + self.gas_j + self.thrust_j
     }
 }
 
 /// What the cords and tables can give from the start, J: the scale of the energy tolerances.
 pub fn available_j(setup: &LaunchSetup) -> f64 {
     let tables_j: f64 = setup.tables.iter().map(|table| table.force_n.integral(table.force_n.last()).abs()).sum();
-    stored_j(setup) + tables_j
+    let gas_j: f64 =
+        setup.gas.iter().map(|source| source.pull_n(source.release_pressure_pa()) * source.travel_m()).sum();
+    stored_j(setup) + tables_j + gas_j.abs()
 }
 
 /// Energy in the cords at the start, J.
@@ -113,7 +120,8 @@ pub fn split<const N: usize>(
         split.shuttle_drag_j,
         split.recoil_damping_j,
         split.thrust_j,
-    ] = [work[0], work[1], work[2], work[3], work[4], work[5], work[6], work[7], work[8]];
+        split.gas_j,
+    ] = [work[0], work[1], work[2], work[3], work[4], work[5], work[6], work[7], work[8], work[9]];
     for table in &setup.tables {
         let inside = |x_m: f64| x_m.clamp(table.force_n.first(), table.force_n.last());
         split.tables_j += table.force_n.integral(inside(end.x_m)) - table.force_n.integral(inside(start.x_m));
@@ -135,8 +143,9 @@ fn follow_cords<const N: usize>(
     for (event, y) in events.iter().zip(states) {
         match event.kind {
             EventKind::WaveOver { set } => {
-                split.wave_left_j += wave_energy_j(setup, accounts, set, y) - even_energy_j(setup, set, y[0], y[1]);
-                cords[set] = CordPhase::Even;
+                let even = released_phase(setup, set);
+                split.wave_left_j += wave_energy_j(setup, accounts, set, y) - even_energy_j(setup, set, even, y);
+                cords[set] = even;
             }
             EventKind::CordsSlack { set } => {
                 match cords[set] {
@@ -145,10 +154,38 @@ fn follow_cords<const N: usize>(
                 }
                 cords[set] = CordPhase::Slack;
             }
+            EventKind::CordsTaut { set } => {
+                split.cords_left_j -= 0.5 * setup.cords[set].moving_mass_kg() * y[1] * y[1];
+                let drawn = setup.cords[set].elongation(y[0]) > -1e-9;
+                let side = if drawn { Side::Drawn } else { Side::Beyond };
+                cords[set] = CordPhase::Even { branch: Branch::Loading, side };
+            }
+            EventKind::Reversal => turn(setup, y, &mut cords, split),
             _ => {}
         }
     }
     cords
+}
+
+fn released_phase(setup: &LaunchSetup, set: usize) -> CordPhase {
+    let cords = &setup.cords[set];
+    CordPhase::Even { branch: cords.released(cords.elongation(setup.start_x_m)), side: Side::Drawn }
+}
+
+/// At a reversal each set that pulls goes to its other branch: what the new one does not give back is lost, or, turning
+/// from the unloading branch outward, had been given too much of.
+fn turn(setup: &LaunchSetup, y: &[f64], cords: &mut [CordPhase; MAX_CORD_SETS], split: &mut EnergySplit) {
+    for (set, phase) in setup.cords.iter().zip(cords) {
+        if let CordPhase::Even { branch, side } = phase {
+            let at = set.elongation_on(*side, y[0]);
+            let turned = match branch {
+                Branch::Loading => set.turned(at),
+                Branch::Unloading { .. } => Branch::Loading,
+            };
+            split.hysteresis_j += set.work_j(*branch, at) - set.work_j(turned, at);
+            *branch = turned;
+        }
+    }
 }
 
 /// Energy that a set which was released has not given yet.
@@ -158,9 +195,10 @@ fn wave_energy_j(setup: &LaunchSetup, accounts: usize, set: usize, y: &[f64]) ->
 }
 
 /// Energy of an evenly strained set.
-fn even_energy_j(setup: &LaunchSetup, set: usize, x_m: f64, v_mps: f64) -> f64 {
+fn even_energy_j(setup: &LaunchSetup, set: usize, phase: CordPhase, y: &[f64]) -> f64 {
     let cords = &setup.cords[set];
-    cords.stored_j(cords.elongation(x_m)) + 0.5 * cords.moving_mass_kg() * v_mps * v_mps
+    let CordPhase::Even { branch, side } = phase else { return 0.0 };
+    cords.work_j(branch, cords.elongation_on(side, y[0])) + 0.5 * cords.moving_mass_kg() * y[1] * y[1]
 }
 
 fn standing_cords(
@@ -174,9 +212,10 @@ fn standing_cords(
         match cords[s] {
             CordPhase::Slack => {}
             CordPhase::Wave { .. } => split.still_stored_j += wave_energy_j(setup, accounts, s, y),
-            CordPhase::Even => {
-                split.still_stored_j += set.stored_j(set.elongation(y[0]));
-                split.cords_kinetic_j += 0.5 * set.moving_mass_kg() * y[1] * y[1];
+            CordPhase::Even { .. } => {
+                let kinetic_j = 0.5 * set.moving_mass_kg() * y[1] * y[1];
+                split.still_stored_j += even_energy_j(setup, s, cords[s], y) - kinetic_j;
+                split.cords_kinetic_j += kinetic_j;
             }
         }
     }

@@ -7,12 +7,22 @@ use super::system::Phase;
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum EventKind {
     Release,
+    /// Pressure has grown enough to move the shuttle.
+    MotionBegins,
     /// A cord set's strain wave has come back: it is taken as evenly strained from here.
     WaveOver {
         set: usize,
     },
     CordsSlack {
         set: usize,
+    },
+    /// A cord set that was slack extends again.
+    CordsTaut {
+        set: usize,
+    },
+    /// A piston is at the end of its stroke.
+    StrokeEnd {
+        gas: usize,
     },
     Separation,
     BrakeContact,

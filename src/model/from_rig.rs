@@ -1,6 +1,6 @@
 //! From a rig file to a launch: as planned, or as drawn and measured.
 
-use super::cord::{CordSet, Hysteresis};
+use super::cord::CordSet;
 use super::curve::Curve;
 use super::error::ModelError;
 use super::setup::{ACCURATE, Brake, LaunchSetup, RailLosses};
@@ -39,14 +39,11 @@ impl LaunchSetup {
     fn at(rig: &Rig, start_x_m: f64) -> Result<Self, ModelError> {
         let points: Vec<(f64, f64)> = rig.cords.curve.iter().map(|point| (point.elongation, point.tension_n)).collect();
         let unloading = Curve::through(&points).map_err(|source| ModelError::CordCurve { set: 0, source })?;
+        let (count, zero_mark_x_m) = (f64::from(rig.cords.count), rig.rail.zero_mark_x_m);
         let cords = CordSet {
-            count: f64::from(rig.cords.count),
-            free_length_m: rig.cords.free_length_m,
             mass_kg: rig.cords.mass_kg,
             travel_ratio: rig.cords.travel_ratio,
-            zero_mark_x_m: rig.rail.zero_mark_x_m,
-            unloading,
-            hysteresis: Hysteresis::NONE,
+            ..CordSet::simple(count, rig.cords.free_length_m, zero_mark_x_m, unloading)
         };
         Ok(Self {
             shuttle_mass_kg: rig.shuttle.mass_kg.value,
@@ -61,6 +58,7 @@ impl LaunchSetup {
             shuttle_drag_area_m2: rig.losses.shuttle_drag_area_m2.value,
             cords: vec![cords],
             tables: Vec::new(),
+            gas: Vec::new(),
             losses: RailLosses { friction_n: rig.losses.friction_n.value, ..RailLosses::default() },
             brake: Brake {
                 from_x_m: rig.rail.brake_x_m,
@@ -79,7 +77,7 @@ impl LaunchSetup {
     /// Pull of all cords at rest at a place, N.
     pub fn cord_pull_n(&self, x_m: f64) -> f64 {
         let taut = self.cords.iter().map(|set| (set, set.elongation(x_m))).filter(|(_, elongation)| *elongation > 0.0);
-        taut.map(|(set, elongation)| set.pull_n(elongation)).sum()
+        taut.map(|(set, elongation)| set.pull_n(set.released(elongation), elongation)).sum()
     }
 
     /// Weight along the rail that helps the line hold the shuttle against the cords, N.
@@ -90,8 +88,7 @@ impl LaunchSetup {
     /// Multiplies the tension of every cord.
     pub fn scale_cords(&mut self, factor: f64) {
         for set in &mut self.cords {
-            set.unloading = set.unloading.scaled(factor);
-            set.hysteresis.gap_n *= factor;
+            set.scale(factor);
         }
     }
 

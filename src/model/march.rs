@@ -8,13 +8,16 @@ use super::along::{Along, divided, falling_root, rates_along, state_at_end, stat
 use super::cord::CordPhase;
 use super::error::ModelError;
 use super::event::{Cost, Event, EventKind, Peak, Segment};
-use super::integrate::{Step, Tolerance, next_size};
+use super::integrate::{Dense, Step, Tolerance, next_size};
 use super::phases::first_phase;
 use super::setup::LaunchSetup;
 use super::system::{Layout, System};
 use super::targets::{Target, targets};
 
 const MAX_STEPS: u32 = 20_000;
+/// Longest wait for a gas source to move the shuttle.
+const MAX_HELD_S: f64 = 5.0;
+const MAX_HELD_STEP_S: f64 = 0.01;
 /// Longest event followed.
 const MAX_TIME_S: f64 = 60.0;
 
@@ -24,6 +27,7 @@ pub(super) enum Goal {
     Place(usize),
     WaveOver(usize),
     Strain,
+    Time,
     Rest,
 }
 
@@ -63,6 +67,12 @@ impl<'a, const N: usize> March<'a, N> {
                 y[i] = set.elongation(setup.start_x_m);
             }
         }
+        for (g, source) in setup.gas.iter().enumerate() {
+            if let Some(i) = layout.gas[g] {
+                let state = source.at_release();
+                (y[i], y[i + 1]) = (state.vessel_part, state.cylinder_pa);
+            }
+        }
         if let (Some(i), Some(recoil)) = (layout.recoil, setup.recoil) {
             let weight_n = system.carried_mass_kg() * setup.gravity_along_mps2();
             y[i] = if recoil.stiffness_n_per_m > 0.0 { -weight_n / recoil.stiffness_n_per_m } else { 0.0 };
@@ -94,30 +104,46 @@ impl<'a, const N: usize> March<'a, N> {
     }
 
     fn start(&mut self) -> Result<(), ModelError> {
-        let setup = self.system.setup;
-        let forces = self.system.forces_at(&self.y);
-        let (drive_n, resistance_n) = self.drive_and_resistance();
-        if drive_n <= resistance_n {
-            let pull_n = forces.cords_n + forces.tables_n;
-            return Err(ModelError::CannotMove {
-                x_m: setup.start_x_m,
-                pull_n,
-                resistance_n: resistance_n + pull_n - drive_n,
-            });
-        }
-        self.size_s = 0.02 * (1.0 / forces.acceleration_mps2).sqrt();
         self.note(EventKind::Release);
-        self.watch_peak(forces.ground_acceleration_mps2());
-        self.separate_if_free();
+        if self.excess_resistance_n(&self.y) < 0.0 {
+            self.set_off();
+            return Ok(());
+        }
+        if self.system.layout.gas.iter().all(Option::is_none) {
+            return Err(self.cannot_move());
+        }
+        self.system.phase.held = true;
+        self.size_s = 1e-4;
         Ok(())
     }
 
-    /// Force along the rail without what opposes motion, and what opposes it at standstill.
-    pub(super) fn drive_and_resistance(&self) -> (f64, f64) {
+    fn cannot_move(&self) -> ModelError {
         let forces = self.system.forces_at(&self.y);
+        let pull_n = forces.cords_n + forces.tables_n + forces.gas_n;
+        let resistance_n = pull_n + self.excess_resistance_n(&self.y);
+        ModelError::CannotMove { x_m: self.y[0], pull_n, resistance_n }
+    }
+
+    /// What keeps the shuttle standing, less what drives it.
+    fn excess_resistance_n(&self, y: &[f64; N]) -> f64 {
+        let (drive_n, resistance_n) = self.drive_and_resistance(y);
+        resistance_n - drive_n
+    }
+
+    pub(super) fn set_off(&mut self) {
+        self.slope = None;
+        let slope = self.slope();
+        self.size_s = 0.02 / slope[1].max(1e-3).sqrt();
+        self.watch_peak(self.ground_acceleration(&slope));
+        self.separate_if_free();
+    }
+
+    /// Force along the rail without what opposes motion, and what opposes it at standstill.
+    pub(super) fn drive_and_resistance(&self, y: &[f64; N]) -> (f64, f64) {
+        let forces = self.system.forces_at(y);
         let moving_n = forces.friction_n + forces.load_friction_n + forces.along_x_n + forces.brake_n;
         let setup = self.system.setup;
-        let drive_n = forces.cords_n + forces.tables_n + forces.thrust_n
+        let drive_n = forces.cords_n + forces.tables_n + forces.gas_n + forces.thrust_n
             - forces.payload_drag_n
             - forces.shuttle_drag_n
             - self.system.carried_mass_kg() * setup.gravity_along_mps2();
@@ -143,6 +169,9 @@ impl<'a, const N: usize> March<'a, N> {
     fn step(&mut self) -> Result<(), ModelError> {
         if self.cost.steps + self.cost.rejected > MAX_STEPS || self.size_s < 1e-12 {
             return Err(ModelError::StepTooSmall { t_s: self.t_s, x_m: self.y[0] });
+        }
+        if self.system.phase.held && self.t_s > MAX_HELD_S {
+            return Err(self.cannot_move());
         }
         if self.t_s > MAX_TIME_S {
             self.ended = true;
@@ -180,7 +209,7 @@ impl<'a, const N: usize> March<'a, N> {
                 };
             }
         };
-        if let Some((index, target)) = self.target_ahead() {
+        if let (Some((index, target)), false) = (self.target_ahead(), self.system.phase.held) {
             let (distance, speed) = ((target.x_m - self.y[0]) * direction, v * direction);
             let arrival = speed * speed + 2.0 * a * direction * distance;
             if arrival > 0.0 {
@@ -200,6 +229,12 @@ impl<'a, const N: usize> March<'a, N> {
                 }
             }
         }
+        for source in &self.system.setup.gas {
+            let tau_s = source.opening_s() - self.t_s;
+            if tau_s > 1e-12 {
+                propose(tau_s, Along::Time, tau_s, Goal::Time, true);
+            }
+        }
         if a * direction < 0.0 && v * direction > 0.0 {
             propose(-v / a, Along::Component(1), -v, Goal::Rest, true);
         }
@@ -216,7 +251,7 @@ impl<'a, const N: usize> March<'a, N> {
             Some(slope) => slope,
             None => {
                 self.cost.evaluations += 1;
-                let slope = self.system.rates(&self.y);
+                let slope = self.system.rates(self.t_s, &self.y);
                 self.slope = Some(slope);
                 slope
             }
@@ -240,9 +275,9 @@ impl<'a, const N: usize> March<'a, N> {
         self.cost.evaluations += 12;
         let system = &self.system;
         match along {
-            Along::Time => {
-                Step::attempt(self.t_s, self.y, slope, size, &self.tolerance, &mut |_, y: &[f64; N]| system.rates(y))
-            }
+            Along::Time => Step::attempt(self.t_s, self.y, slope, size, &self.tolerance, &mut |t_s, y: &[f64; N]| {
+                system.rates(t_s, y)
+            }),
             Along::Component(i) => {
                 let mut tolerance = self.tolerance;
                 tolerance.absolute[i] = self.time_tolerance;
@@ -286,8 +321,19 @@ impl<'a, const N: usize> March<'a, N> {
         let grown_s = dt_s * next_size(step.error);
         let (t_s, y) = state_at_end(&step, along);
         let end_slope = time_slope(step.slope_at_end(), along);
+        if self.system.phase.held {
+            self.size_s = grown_s.min(MAX_HELD_STEP_S);
+            if self.excess_resistance_n(&y) < 0.0 {
+                self.step_to_fall(&step, along, |march, _, y| march.excess_resistance_n(y));
+                self.begin_motion();
+            } else {
+                self.take(step, along, t_s, y, end_slope);
+            }
+            return;
+        }
         if self.contact_n(&y, &end_slope) < 0.0 {
-            self.step_to_separation(&step, along);
+            self.step_to_fall(&step, along, |march, t_s, y| march.contact_n(y, &march.system.rates(t_s, y)));
+            self.separate();
             return;
         }
         // A step cut short by its goal says little about the size that the next one may have.
@@ -298,13 +344,10 @@ impl<'a, const N: usize> March<'a, N> {
 
     fn take(&mut self, step: Step<N>, along: Along, t_s: f64, y: [f64; N], slope: [f64; N]) {
         self.cost.steps += 1;
-        if let Some(segments) = &mut self.segments {
-            let system = &self.system;
-            let dense = match along {
-                Along::Time => step.dense(&mut |_, y: &[f64; N]| system.rates(y)),
-                Along::Component(i) => step.dense(&mut |s, y: &[f64; N]| rates_along(system, i, s, y)),
-            };
-            segments.push(Segment { along, dense, from_s: self.t_s, to_s: t_s, phase: system.phase.clone() });
+        if self.segments.is_some() {
+            let dense = self.dense(&step, along);
+            let segment = Segment { along, dense, from_s: self.t_s, to_s: t_s, phase: self.system.phase.clone() };
+            self.segments.get_or_insert_default().push(segment);
         }
         self.t_s = t_s;
         self.y = y;
@@ -335,26 +378,29 @@ impl<'a, const N: usize> March<'a, N> {
         self.system.contact_n(y, self.ground_acceleration(slope))
     }
 
-    /// Finds where in the step the contact force ends, steps there, and lets the payload go.
-    fn step_to_separation(&mut self, step: &Step<N>, along: Along) {
+    /// Finds where in a step a quantity falls below zero, and steps there.
+    fn step_to_fall(&mut self, step: &Step<N>, along: Along, quantity: impl Fn(&Self, f64, &[f64; N]) -> f64) {
         self.cost.evaluations += 3;
-        let system = &self.system;
-        let dense = match along {
-            Along::Time => step.dense(&mut |_, y: &[f64; N]| system.rates(y)),
-            Along::Component(i) => step.dense(&mut |s, y: &[f64; N]| rates_along(system, i, s, y)),
-        };
-        let contact = |part: f64| {
-            let (_, y) = state_of(dense.start + part * dense.size, dense.at(dense.start + part * dense.size), along);
-            self.contact_n(&y, &system.rates(&y))
-        };
-        let part = falling_root(contact);
+        let dense = self.dense(step, along);
+        let part = falling_root(|part| {
+            let s = dense.start + part * dense.size;
+            let (t_s, y) = state_of(s, dense.at(s), along);
+            quantity(self, t_s, &y)
+        });
         if part > 1e-12 {
             let short = self.attempt(along, part * step.size);
             let (t_s, y) = state_at_end(&short, along);
             let slope = time_slope(short.slope_at_end(), along);
             self.take(short, along, t_s, y, slope);
         }
-        self.separate();
+    }
+
+    fn dense(&self, step: &Step<N>, along: Along) -> Dense<N> {
+        let system = &self.system;
+        match along {
+            Along::Time => step.dense(&mut |t_s, y: &[f64; N]| system.rates(t_s, y)),
+            Along::Component(i) => step.dense(&mut |s, y: &[f64; N]| rates_along(system, i, s, y)),
+        }
     }
 
     pub(super) fn note(&mut self, kind: EventKind) {
@@ -371,6 +417,7 @@ impl<'a, const N: usize> March<'a, N> {
 fn tolerance<const N: usize>(system: &System) -> Tolerance<N> {
     const SMALL_X_M: f64 = 0.1;
     const SMALL_V_MPS: f64 = 1.0;
+    const SMALL_PRESSURE_PA: f64 = 1e4;
     let relative = system.setup.relative_tolerance;
     let mut absolute = [relative * SMALL_V_MPS; N];
     absolute[0] = relative * SMALL_X_M;
@@ -380,6 +427,9 @@ fn tolerance<const N: usize>(system: &System) -> Tolerance<N> {
     if let Some(i) = system.layout.recoil {
         absolute[i] = relative * 0.01 * SMALL_X_M;
         absolute[i + 1] = relative * 0.1 * SMALL_V_MPS;
+    }
+    for i in system.layout.gas.iter().flatten() {
+        absolute[i + 1] = relative * SMALL_PRESSURE_PA;
     }
     if let Some(first) = system.layout.accounts {
         let energy_j: f64 = super::energy::available_j(system.setup);

@@ -12,6 +12,7 @@ mod energy;
 mod error;
 mod event;
 mod from_rig;
+mod gas;
 mod integrate;
 mod march;
 mod phases;
@@ -24,12 +25,13 @@ mod targets;
 #[cfg(test)]
 mod tests;
 
-pub use cord::{CordSet, Hysteresis};
+pub use cord::{Branch, CordSet};
 pub use curve::{Curve, CurveError, ValueSlope};
 pub use energy::EnergySplit;
 pub use error::ModelError;
 pub use event::{Cost, Event, EventKind};
 pub use from_rig::{hold_pull_band_n, planned_line_tension_n, stored_energy_j};
+pub use gas::{GasPath, GasSource};
 pub use released_now::{Interval, ReleaseForecast, released_now};
 pub use run::{Answers, LaunchRun, Sample, Separation, launch_answers, simulate};
 pub use setup::{ACCURATE, Brake, FAST, ForceTable, LaunchSetup, RailLosses, Recoil};

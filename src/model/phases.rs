@@ -1,10 +1,10 @@
 //! What a launch does at its events: waves end, cords come slack, the payload leaves, the shuttle brakes, turns, rests.
 
-use super::cord::CordPhase;
+use super::cord::{Branch, CordPhase, Side};
 use super::event::EventKind;
 use super::march::{Goal, March};
 use super::setup::LaunchSetup;
-use super::system::{MAX_CORD_SETS, MAX_TABLES, Phase};
+use super::system::{MAX_CORD_SETS, MAX_GAS, MAX_TABLES, Phase};
 use super::targets::Mark;
 
 const MAX_REVERSALS: u32 = 50;
@@ -28,14 +28,16 @@ impl<const N: usize> March<'_, N> {
 
     pub(super) fn reach(&mut self, goal: Goal) {
         match goal {
-            Goal::None | Goal::Strain => {
+            Goal::None | Goal::Strain | Goal::Time => {
                 self.slack_where_waves_are_spent();
                 return;
             }
             Goal::Place(index) => self.reach_places(index),
             Goal::WaveOver(set) => {
                 self.note(EventKind::WaveOver { set });
-                self.system.phase.cords[set] = CordPhase::Even;
+                let cords = &self.system.setup.cords[set];
+                let branch = cords.released(cords.elongation(self.system.setup.start_x_m));
+                self.system.phase.cords[set] = CordPhase::Even { branch, side: Side::Drawn };
                 self.seek_ahead();
             }
             Goal::Rest => self.reach_rest(),
@@ -59,9 +61,27 @@ impl<const N: usize> March<'_, N> {
         }
     }
 
+    /// The gas has built up enough: the shuttle leaves its hold.
+    pub(super) fn begin_motion(&mut self) {
+        self.note(EventKind::MotionBegins);
+        self.system.phase.held = false;
+        for phase in &mut self.system.phase.cords {
+            if let CordPhase::Wave { until_s } = phase {
+                *until_s += self.t_s;
+            }
+        }
+        self.set_off();
+    }
+
     fn slacken(&mut self, set: usize) {
         self.note(EventKind::CordsSlack { set });
         self.system.phase.cords[set] = CordPhase::Slack;
+    }
+
+    /// Cords that were slack extend again.
+    fn tighten(&mut self, set: usize, side: Side) {
+        self.note(EventKind::CordsTaut { set });
+        self.system.phase.cords[set] = CordPhase::Even { branch: Branch::Loading, side };
     }
 
     /// Everything that stands at the place just reached.
@@ -85,7 +105,14 @@ impl<const N: usize> March<'_, N> {
         let forward = self.system.phase.direction > 0.0;
         match mark {
             Mark::CordKnot { .. } | Mark::Knot => {}
-            Mark::CordsTaut { set } => self.slacken(set),
+            Mark::CordsTaut { set, side } => match self.system.phase.cords[set] {
+                CordPhase::Slack => self.tighten(set, side),
+                _ => self.slacken(set),
+            },
+            Mark::StrokeEnd { gas } => {
+                self.note(EventKind::StrokeEnd { gas });
+                self.system.phase.gas[gas] = false;
+            }
             Mark::TableStart { table } => self.system.phase.tables[table] = forward,
             Mark::TableEnd { table } => self.system.phase.tables[table] = !forward,
             Mark::Uncoupling => self.separate(),
@@ -103,7 +130,7 @@ impl<const N: usize> March<'_, N> {
     /// At standstill: rest if what is left can't move the shuttle, the way back otherwise.
     fn reach_rest(&mut self) {
         self.y[1] = 0.0;
-        let (drive_n, resistance_n) = self.drive_and_resistance();
+        let (drive_n, resistance_n) = self.drive_and_resistance(&self.y);
         if drive_n.abs() <= resistance_n || self.reversals >= MAX_REVERSALS {
             self.note(EventKind::Rest);
             self.ended = true;
@@ -112,8 +139,20 @@ impl<const N: usize> March<'_, N> {
         self.reversals += 1;
         self.note(EventKind::Reversal);
         self.system.phase.direction = drive_n.signum();
+        self.turn_cords();
         self.seek_ahead();
         self.size_s = 1e-3;
+    }
+
+    /// Each set that still pulls changes its branch where the shuttle turns.
+    fn turn_cords(&mut self) {
+        let (x_m, direction) = (self.y[0], self.system.phase.direction);
+        for (set, phase) in self.system.setup.cords.iter().zip(&mut self.system.phase.cords) {
+            if let CordPhase::Even { branch, side } = phase {
+                let extending = direction * side.sign() < 0.0;
+                *branch = if extending { Branch::Loading } else { set.turned(set.elongation_on(*side, x_m)) };
+            }
+        }
     }
 
     /// Puts the cursor on the next target from here.
@@ -137,7 +176,7 @@ pub fn first_phase(setup: &LaunchSetup) -> Phase {
             *phase = if set.mass_kg > 0.0 {
                 CordPhase::Wave { until_s: 2.0 * set.transit_s(elongation) }
             } else {
-                CordPhase::Even
+                CordPhase::Even { branch: set.released(elongation), side: Side::Drawn }
             };
         }
     }
@@ -146,5 +185,7 @@ pub fn first_phase(setup: &LaunchSetup) -> Phase {
         *on = (table.force_n.first()..table.force_n.last()).contains(&setup.start_x_m);
     }
     let braking = setup.start_x_m >= setup.brake.from_x_m;
-    Phase { payload_on: setup.payload_mass_kg > 0.0, direction: 1.0, braking, cords, tables }
+    let mut gas = [false; MAX_GAS];
+    gas[..setup.gas.len()].fill(true);
+    Phase { held: false, gas, payload_on: setup.payload_mass_kg > 0.0, direction: 1.0, braking, cords, tables }
 }

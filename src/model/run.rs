@@ -1,7 +1,7 @@
 //! A computed launch: its course at any time, its events, its answers, its energy.
 
 use super::along::{Along, state_of};
-use super::cord::CordPhase;
+use super::cord::{CordPhase, CordSet};
 use super::energy::{EnergySplit, split};
 use super::error::ModelError;
 use super::event::{Cost, Event, EventKind, Peak, Segment};
@@ -77,6 +77,9 @@ pub struct LaunchRun {
     setup: LaunchSetup,
     layout: Layout,
     segments: Vec<Segment<ROOM>>,
+    /// Of each cord set: the wave's way to the anchor, and the pull there once it has come.
+    transits_s: Vec<f64>,
+    anchor_tables: Vec<Vec<(f64, f64)>>,
 }
 
 /// Computes a launch with its course and energy.
@@ -105,6 +108,8 @@ pub fn simulate(setup: &LaunchSetup) -> Result<LaunchRun, ModelError> {
         setup: setup.clone(),
         layout,
         segments: march.segments.unwrap_or_default(),
+        transits_s: of_held(setup, |set, held| set.transit_s(held)),
+        anchor_tables: of_held(setup, |set, held| set.anchor_pull_after_speed(held)),
     };
     run.sharpen_peak();
     run.fill_samples();
@@ -198,7 +203,8 @@ impl LaunchRun {
 
     /// Part of the even cords' pull that moves the cords themselves.
     fn cord_inertia_n(&self, system: &System, a_mps2: f64) -> f64 {
-        let even = self.setup.cords.iter().zip(system.phase.cords).filter(|(_, phase)| *phase == CordPhase::Even);
+        let even = self.setup.cords.iter().zip(system.phase.cords);
+        let even = even.filter(|(_, phase)| matches!(phase, CordPhase::Even { .. }));
         even.map(|(set, _)| set.moving_mass_kg() * a_mps2).sum()
     }
 
@@ -206,18 +212,17 @@ impl LaunchRun {
     /// with its elastic tension and a sixth of its inertia (the third at the shuttle taken from the half of its momentum).
     fn anchor_tension_n(&self, system: &System, x_m: f64, a_mps2: f64, t_s: f64) -> f64 {
         let mut sum_n = 0.0;
-        for (set, phase) in self.setup.cords.iter().zip(system.phase.cords) {
-            sum_n += match phase {
+        for (s, set) in self.setup.cords.iter().enumerate() {
+            sum_n += match system.phase.cords[s] {
                 CordPhase::Slack => 0.0,
-                CordPhase::Even => {
-                    set.pull_n(set.elongation(x_m)) / set.travel_ratio
-                        + set.count * set.mass_kg * set.travel_ratio * a_mps2 / 6.0
+                CordPhase::Even { branch, side } => {
+                    let inertia_n = set.count * set.mass_kg * set.travel_ratio * a_mps2 / 6.0;
+                    set.pull_n(branch, set.elongation_on(side, x_m)) / set.travel_ratio + side.sign() * inertia_n
                 }
                 CordPhase::Wave { .. } => {
-                    let held = set.elongation(self.setup.start_x_m);
-                    let sent_s = t_s - set.transit_s(held);
+                    let sent_s = t_s - self.transits_s[s];
                     let speed_mps = if sent_s > 0.0 { self.speed_at(sent_s) * set.travel_ratio } else { 0.0 };
-                    set.pull_n(set.strain_after_speed(held, 2.0 * speed_mps)) / set.travel_ratio
+                    interpolated(&self.anchor_tables[s], 2.0 * speed_mps)
                 }
             };
         }
@@ -266,6 +271,23 @@ impl LaunchRun {
             samples.push(self.sample(segment, segment.to_s));
         }
         self.samples = samples;
+    }
+}
+
+/// Something of each cord set at its elongation at the hold; nothing of a set without mass or pull.
+fn of_held<T: Default>(setup: &LaunchSetup, f: impl Fn(&CordSet, f64) -> T) -> Vec<T> {
+    let held = |set: &CordSet| set.elongation(setup.start_x_m);
+    let one = |set: &CordSet| if set.mass_kg > 0.0 && held(set) > 0.0 { f(set, held(set)) } else { T::default() };
+    setup.cords.iter().map(one).collect()
+}
+
+/// Straight between the entries of a table, held at its end.
+fn interpolated(table: &[(f64, f64)], at: f64) -> f64 {
+    let index = table.partition_point(|entry| entry.0 < at);
+    match (table.get(index.wrapping_sub(1)), table.get(index)) {
+        (Some(before), Some(after)) => before.1 + (after.1 - before.1) * (at - before.0) / (after.0 - before.0),
+        (None, Some(only)) | (Some(only), None) => only.1,
+        (None, None) => 0.0,
     }
 }
 

@@ -3,6 +3,7 @@
 
 use super::cord::CordSet;
 use super::curve::Curve;
+use super::gas::GasSource;
 
 /// A launch, ready to be computed. Angles in radians, x along the rail from the nominal release point.
 #[derive(Debug, Clone, PartialEq)]
@@ -21,6 +22,7 @@ pub struct LaunchSetup {
     pub shuttle_drag_area_m2: f64,
     pub cords: Vec<CordSet>,
     pub tables: Vec<ForceTable>,
+    pub gas: Vec<GasSource>,
     pub losses: RailLosses,
     pub brake: Brake,
     pub recoil: Option<Recoil>,
@@ -90,6 +92,7 @@ impl LaunchSetup {
             shuttle_drag_area_m2: 0.0,
             cords: Vec::new(),
             tables: Vec::new(),
+            gas: Vec::new(),
             losses: RailLosses::default(),
             brake: Brake { from_x_m: f64::INFINITY, constant_n: 0.0, per_metre_n_per_m: 0.0, per_speed_n_per_mps: 0.0 },
             recoil: None,

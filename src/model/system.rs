@@ -13,16 +13,21 @@
 //! ends (wave over, slack) velocities stay and the energy step is named in the energy split.
 
 use super::cord::CordPhase;
+use super::gas::GasState;
 use super::setup::LaunchSetup;
 
 /// Cord sets one launch may have.
 pub const MAX_CORD_SETS: usize = 12;
 /// Force tables one launch may have.
 pub const MAX_TABLES: usize = 4;
+/// Gas sources one launch may have.
+pub const MAX_GAS: usize = 2;
 
 /// What changes only at events.
 #[derive(Debug, Clone)]
 pub struct Phase {
+    /// Standing at the start until a gas source has built up enough pressure.
+    pub held: bool,
     pub payload_on: bool,
     /// +1 toward the exit, −1 back.
     pub direction: f64,
@@ -30,6 +35,8 @@ pub struct Phase {
     pub cords: [CordPhase; MAX_CORD_SETS],
     /// Between its first and last point.
     pub tables: [bool; MAX_TABLES],
+    /// Within the piston's stroke.
+    pub gas: [bool; MAX_GAS],
 }
 
 /// Where each state stands in the state vector; 0 is x, 1 is x'.
@@ -39,19 +46,22 @@ pub struct Layout {
     pub recoil: Option<usize>,
     /// Strain at the shuttle of each set that has mass.
     pub wave: [Option<usize>; MAX_CORD_SETS],
+    /// Vessel and cylinder of each gas source with a valve.
+    pub gas: [Option<usize>; MAX_GAS],
     /// First of the work accounts, where they are kept.
     pub accounts: Option<usize>,
     pub n_used: usize,
 }
 
 /// Work accounts, in the order of the state vector; the cord sets' own work follows them.
-pub const N_ACCOUNTS: usize = 9;
+pub const N_ACCOUNTS: usize = 10;
 
 /// Forces at one state, N, and the accelerations they give.
 #[derive(Debug, Clone, Copy, Default)]
 pub struct Forces {
     pub cords_n: f64,
     pub tables_n: f64,
+    pub gas_n: f64,
     pub friction_n: f64,
     pub load_friction_n: f64,
     pub viscous_n: f64,
@@ -104,8 +114,14 @@ impl Layout {
                 *slot = Some(take(1));
             }
         }
+        let mut gas = [None; MAX_GAS];
+        for (slot, source) in gas.iter_mut().zip(&setup.gas) {
+            if source.has_valve() {
+                *slot = Some(take(2));
+            }
+        }
         let accounts = with_accounts.then(|| take(N_ACCOUNTS + setup.cords.len()));
-        Self { recoil, wave, accounts, n_used }
+        Self { recoil, wave, gas, accounts, n_used }
     }
 }
 
@@ -120,13 +136,17 @@ impl System<'_> {
         self.setup.shuttle_mass_kg + if self.phase.payload_on { self.setup.payload_mass_kg } else { 0.0 }
     }
 
-    /// Rates of every state at (t, y).
+    /// Rates of every state at a time and state.
     #[inline]
-    pub fn rates<const N: usize>(&self, y: &[f64; N]) -> [f64; N] {
+    pub fn rates<const N: usize>(&self, t_s: f64, y: &[f64; N]) -> [f64; N] {
         let mut rates = [0.0; N];
         let motion = self.motion(y);
         let mut pulls_n = [0.0; MAX_CORD_SETS];
         let mut wave_speeds_mps = [f64::INFINITY; MAX_CORD_SETS];
+        self.gas_rates(t_s, y, motion, &mut rates);
+        if self.phase.held {
+            return rates;
+        }
         let forces = self.forces(y, motion, &mut pulls_n, &mut wave_speeds_mps);
         rates[0] = motion.v_mps;
         rates[1] = forces.acceleration_mps2;
@@ -145,6 +165,31 @@ impl System<'_> {
         rates
     }
 
+    #[inline]
+    fn gas_rates(&self, t_s: f64, y: &[f64], motion: Motion, rates: &mut [f64]) {
+        for (g, source) in self.setup.gas.iter().enumerate() {
+            if let (Some(i), true) = (self.layout.gas[g], self.phase.gas[g]) {
+                let state = GasState { vessel_part: y[i], cylinder_pa: y[i + 1] };
+                let rate = source.rates(t_s, motion.x_m - self.setup.start_x_m, motion.v_mps, state);
+                (rates[i], rates[i + 1]) = (rate.vessel_part, rate.cylinder_pa);
+            }
+        }
+    }
+
+    #[inline]
+    fn gas_pull_n(&self, y: &[f64], x_m: f64) -> f64 {
+        let mut sum_n = 0.0;
+        for (g, source) in self.setup.gas.iter().enumerate() {
+            if self.phase.gas[g] {
+                let travelled_m = x_m - self.setup.start_x_m;
+                let pressure_pa =
+                    self.layout.gas[g].map_or_else(|| source.straight_pressure_pa(travelled_m), |i| y[i + 1]);
+                sum_n += source.pull_n(pressure_pa);
+            }
+        }
+        sum_n
+    }
+
     fn work_rates(&self, motion: Motion, forces: &Forces, pulls_n: &[f64; MAX_CORD_SETS], rates: &mut [f64]) {
         let v = motion.v_mps;
         let ground = v + motion.rail_v_mps;
@@ -160,6 +205,7 @@ impl System<'_> {
             forces.shuttle_drag_n * ground,
             damping * motion.rail_v_mps * motion.rail_v_mps,
             forces.thrust_n * ground,
+            forces.gas_n * v,
         ];
         rates[..N_ACCOUNTS].copy_from_slice(&works);
         for (rate, pull_n) in rates[N_ACCOUNTS..].iter_mut().zip(&pulls_n[..self.setup.cords.len()]) {
@@ -186,12 +232,14 @@ impl System<'_> {
             match (self.phase.cords[s], self.layout.wave[s]) {
                 (CordPhase::Slack, _) => continue,
                 (CordPhase::Wave { .. }, Some(i)) => {
-                    (pulls_n[s], wave_speeds_mps[s]) = set.pull_and_wave_speed(y[i]);
+                    let branch = set.released(set.elongation(self.setup.start_x_m));
+                    (pulls_n[s], wave_speeds_mps[s]) = set.pull_and_wave_speed(branch, y[i]);
                 }
-                _ => {
-                    pulls_n[s] = set.pull_n(set.elongation(x_m));
+                (CordPhase::Even { branch, side }, _) => {
+                    pulls_n[s] = side.sign() * set.pull_n(branch, set.elongation_on(side, x_m));
                     cord_mass_kg += set.moving_mass_kg();
                 }
+                (CordPhase::Wave { .. }, None) => {}
             }
             sum_n += pulls_n[s];
         }
@@ -213,6 +261,7 @@ impl System<'_> {
         for (table, on) in setup.tables.iter().zip(self.phase.tables) {
             tables_n += if on { table.force_n.value(x_m) } else { 0.0 };
         }
+        let gas_n = self.gas_pull_n(y, x_m);
         let airspeed_mps = v_mps + rail_v_mps + setup.head_wind_mps;
         let dynamic_pa = 0.5 * setup.air_density_kg_per_m3 * airspeed_mps * airspeed_mps.abs();
         let on = if self.phase.payload_on { 1.0 } else { 0.0 };
@@ -225,13 +274,13 @@ impl System<'_> {
         };
         let losses = &setup.losses;
         let across_n = mass_kg * setup.gravity_mps2 * setup.incline_rad.cos() - on * dynamic_pa * setup.lift_area_m2;
-        let load_friction_n = losses.load_coefficient * across_n.max(0.0) + losses.pull_coefficient * cords_n;
+        let load_friction_n = losses.load_coefficient * across_n.max(0.0) + losses.pull_coefficient * cords_n.abs();
         let viscous_n = losses.viscous_n_per_mps * v_mps.abs();
         let along_x_n = losses.along_x_n.as_ref().map_or(0.0, |curve| curve.value(x_m));
         let brake_n = if self.phase.braking { setup.brake.force_n(x_m, v_mps) } else { 0.0 };
         let opposing_n = losses.friction_n + load_friction_n + viscous_n + along_x_n + brake_n;
         let outside_n = thrust_n - payload_drag_n - shuttle_drag_n - mass_kg * setup.gravity_along_mps2();
-        let along_n = cords_n + tables_n - self.phase.direction * opposing_n + outside_n;
+        let along_n = cords_n + tables_n + gas_n - self.phase.direction * opposing_n + outside_n;
         let (acceleration_mps2, rail_acceleration_mps2) = match setup.recoil {
             None => (along_n / (mass_kg + cord_mass_kg), 0.0),
             Some(recoil) => {
@@ -244,6 +293,7 @@ impl System<'_> {
         Forces {
             cords_n,
             tables_n,
+            gas_n,
             friction_n: losses.friction_n,
             load_friction_n,
             viscous_n,

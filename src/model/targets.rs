@@ -1,6 +1,6 @@
 //! Places along the rail where a step has to end: knots of cards, marks, ends.
 
-use super::cord::CordPhase;
+use super::cord::{CordPhase, Side};
 use super::setup::LaunchSetup;
 use super::system::Phase;
 
@@ -9,10 +9,16 @@ pub enum Mark {
     /// A knot of cord set `set`'s card.
     CordKnot {
         set: usize,
+        side: Side,
     },
-    /// Cord set `set` comes slack.
+    /// Cord set `set` comes slack, or taut on the way back.
     CordsTaut {
         set: usize,
+        side: Side,
+    },
+    /// A piston's stroke ends.
+    StrokeEnd {
+        gas: usize,
     },
     TableStart {
         table: usize,
@@ -37,9 +43,18 @@ pub struct Target {
 pub fn targets(setup: &LaunchSetup) -> Vec<Target> {
     let mut all = Vec::with_capacity(32);
     for (set, cords) in setup.cords.iter().enumerate() {
-        all.push(Target { x_m: cords.zero_mark_x_m, mark: Mark::CordsTaut { set } });
-        let knots = cords.unloading.knots().iter().filter(|knot| **knot > 0.0);
-        all.extend(knots.map(|knot| Target { x_m: cords.x_at_elongation(*knot), mark: Mark::CordKnot { set } }));
+        for (side, mark_x_m) in [(Side::Drawn, Some(cords.zero_mark_x_m)), (Side::Beyond, cords.retension_x_m)] {
+            let Some(x_m) = mark_x_m else { continue };
+            all.push(Target { x_m, mark: Mark::CordsTaut { set, side } });
+            let knots = cords.unloading.knots().iter().filter(|knot| **knot > 0.0);
+            all.extend(
+                knots
+                    .map(|knot| Target { x_m: cords.x_at_elongation(side, *knot), mark: Mark::CordKnot { set, side } }),
+            );
+        }
+    }
+    for (gas, source) in setup.gas.iter().enumerate() {
+        all.push(Target { x_m: setup.start_x_m + source.travel_m(), mark: Mark::StrokeEnd { gas } });
     }
     for (table, entry) in setup.tables.iter().enumerate() {
         let knots = entry.force_n.knots();
@@ -64,8 +79,15 @@ impl Mark {
     /// Whether the equations change there in this phase.
     pub fn matters(self, phase: &Phase) -> bool {
         match self {
-            Self::CordKnot { set } => phase.cords[set] == CordPhase::Even,
-            Self::CordsTaut { set } => phase.cords[set] != CordPhase::Slack,
+            Self::CordKnot { set, side } => {
+                matches!(phase.cords[set], CordPhase::Even { side: extended, .. } if extended == side)
+            }
+            Self::CordsTaut { set, side } => match phase.cords[set] {
+                CordPhase::Wave { .. } => side == Side::Drawn,
+                CordPhase::Even { side: extended, .. } => extended == side,
+                CordPhase::Slack => (side == Side::Drawn) == (phase.direction < 0.0),
+            },
+            Self::StrokeEnd { gas } => phase.gas[gas],
             Self::Uncoupling => phase.payload_on,
             Self::TableStart { .. } | Self::TableEnd { .. } | Self::Knot | Self::Brake | Self::RailEnd => true,
         }

@@ -2,9 +2,10 @@
 
 mod closed_forms;
 mod rig;
+mod sources;
 mod surroundings;
 
-use super::{CordSet, Curve, Hysteresis};
+use super::{CordSet, Curve};
 
 /// Rows of a reference CSV after its comments and header, as numbers; words become NaN.
 fn reference(name: &str) -> Vec<Vec<f64>> {
@@ -22,13 +23,6 @@ fn assert_close(what: &str, found: f64, expected: f64, relative: f64, absolute: 
 
 /// One massless cord with a constant stiffness, taut by `stretch_m` at x = 0.
 fn linear_cord(stiffness_n_per_m: f64, stretch_m: f64) -> CordSet {
-    CordSet {
-        count: 1.0,
-        free_length_m: stretch_m,
-        mass_kg: 0.0,
-        travel_ratio: 1.0,
-        zero_mark_x_m: stretch_m,
-        unloading: Curve::through(&[(0.0, 0.0), (1.0, stiffness_n_per_m * stretch_m)]).unwrap(),
-        hysteresis: Hysteresis::NONE,
-    }
+    let tension_n = Curve::through(&[(0.0, 0.0), (1.0, stiffness_n_per_m * stretch_m)]).unwrap();
+    CordSet::simple(1.0, stretch_m, stretch_m, tension_n)
 }
