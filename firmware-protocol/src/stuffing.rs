@@ -8,6 +8,9 @@ use crate::DecodeError;
 /// A run of this many bytes without a zero ends without an implied zero.
 pub(crate) const LONGEST_RUN: u8 = 254;
 
+/// Up to here, moving bytes one by one costs less than asking for a block move.
+const SHORT_RUN: usize = 16;
+
 /// Stuffs `source` into `out`, without delimiters; returns the length, or `None` when `out` is too small.
 pub fn stuff(source: &[u8], out: &mut [u8]) -> Option<usize> {
     let mut stuffer = Stuffer::new(out, 0);
@@ -28,8 +31,15 @@ pub fn unstuff_in_place(bytes: &mut [u8]) -> Result<usize, DecodeError> {
         if code == 0 || end > bytes.len() {
             return Err(DecodeError::Stuffing { at: from });
         }
-        bytes.copy_within(from + 1..end, to);
-        to += run - 1;
+        if run <= SHORT_RUN {
+            for at in from + 1..end {
+                bytes[to] = bytes[at];
+                to += 1;
+            }
+        } else {
+            bytes.copy_within(from + 1..end, to);
+            to += run - 1;
+        }
         if code <= LONGEST_RUN && end < bytes.len() {
             bytes[to] = 0;
             to += 1;

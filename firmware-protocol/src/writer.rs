@@ -1,6 +1,6 @@
 //! Writes header and payload into the caller's buffer, stuffed and summed on the way.
 
-use crate::checksum::{Running, running};
+use crate::checksum::Running;
 use crate::stuffing::Stuffer;
 use crate::{CHECKSUM_LEN, EncodeError, MAX_DECODED_LEN};
 
@@ -17,7 +17,7 @@ impl<'out> FrameWriter<'out> {
     pub(crate) fn new(out: &'out mut [u8]) -> Result<Self, EncodeError> {
         let buffer_len = out.len();
         *out.first_mut().ok_or(EncodeError::BufferTooSmall { buffer_len })? = DELIMITER;
-        Ok(Self { stuffer: Stuffer::new(out, 1), sum: running(), len: 0 })
+        Ok(Self { stuffer: Stuffer::new(out, 1), sum: Running::default(), len: 0 })
     }
 
     pub(crate) fn bytes(&mut self, bytes: &[u8]) -> Result<(), EncodeError> {
@@ -72,7 +72,7 @@ impl<'out> FrameWriter<'out> {
 
     /// Adds the checksum; returns where the closing delimiter belongs.
     pub(crate) fn finish(mut self) -> Result<usize, EncodeError> {
-        let sum = self.sum.clone().finalize();
+        let sum = self.sum.sum();
         self.stuffed(&sum.to_le_bytes())?;
         let buffer_len = self.stuffer.buffer_len();
         self.stuffer.finish().ok_or(EncodeError::BufferTooSmall { buffer_len })

@@ -44,9 +44,7 @@ fn collect<T, const WIDTH: usize>(
     at: usize,
     value: impl Fn([u8; WIDTH]) -> T,
 ) -> Vec<T> {
-    samples
-        .chunks_exact(sample_len)
-        .filter_map(|sample| sample.get(at..)?.first_chunk::<WIDTH>())
-        .map(|bytes| value(*bytes))
-        .collect()
+    // Whole samples only, so that every piece from `at` on holds the channel; the fallback is never taken.
+    let channel = samples.get(at..).unwrap_or_default().chunks(sample_len);
+    channel.map(|sample| value(sample.first_chunk().copied().unwrap_or([0; WIDTH]))).collect()
 }
