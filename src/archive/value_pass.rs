@@ -7,7 +7,7 @@
 use std::collections::BTreeMap;
 use std::ops::RangeInclusive;
 
-use crate::calibration::{Sampling, Signal, signal_from_counts};
+use crate::calibration::{Sampling, Signal, signal_from_counts, to_value};
 use crate::capture::{Block, Captured, ClockPiece, Counts, DeviceDescription, Encoding, StreamDescription, piece_at};
 use crate::link::DeviceIdx;
 use crate::rig::{Channel, Rig};
@@ -37,6 +37,8 @@ struct Route {
     place: usize,
     signal: usize,
     sampling: Sampling,
+    /// Counts at which the device says that it saturates.
+    saturates: RangeInclusive<f64>,
     group_delay_s: f64,
     ticks_per_sample: u32,
 }
@@ -105,7 +107,8 @@ impl<'a> ValuePass<'a> {
                     counts_range: counts_range(described.encoding),
                 };
                 let (group_delay_s, ticks_per_sample) = (described.group_delay_s, stream.ticks_per_sample);
-                let route = Route { place, signal, sampling, group_delay_s, ticks_per_sample };
+                let saturates = described.nominal_min..=described.nominal_max;
+                let route = Route { place, signal, sampling, saturates, group_delay_s, ticks_per_sample };
                 routes.by_stream.entry(stream.stream).or_default().push(route);
             }
         }
@@ -206,7 +209,19 @@ impl SignalPass {
                 signal_from_counts(&self.channel, &route.sampling, times_s, counts.iter().map(|c| f64::from(*c)))
             }
         };
-        part.map_err(|error| error.to_string())
+        let mut part = part.map_err(|error| error.to_string())?;
+        part.range = self.saturation(&route.saturates).or(part.range);
+        Ok(part)
+    }
+
+    /// Values at the counts where the device saturates, lower first; `None` where it states no range.
+    fn saturation(&self, counts: &RangeInclusive<f64>) -> Option<(f64, f64)> {
+        let ends = [*counts.start(), *counts.end()];
+        if ends.iter().any(|counts| !counts.is_finite()) || ends[0] >= ends[1] {
+            return None;
+        }
+        let [a, b] = ends.map(|counts| to_value(&self.channel.calibration, counts));
+        Some((a.min(b), a.max(b)))
     }
 
     /// Appends a part to the file and to what is kept; gives the number of samples.

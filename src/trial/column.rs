@@ -2,6 +2,12 @@
 //!
 //! Filters: shuffle, deflate 1, fletcher32. A chunk stays at or under 256 KiB, so that readers before HDF5 2.0 (1 MiB
 //! chunk cache) read it at full speed. Memory: one chunk of buffer and a 1 MiB cache a column.
+//!
+//! A dataset is closed only after a flush that worked. Closing writes what the cache still holds and tells nobody when
+//! that fails; and once it failed, the library (2.2) crashes in a later close. So after any error the handle is left
+//! open for good: the file is worthless then, and the process is about to say so and end.
+
+use std::mem::ManuallyDrop;
 
 use hdf5::types::{TypeDescriptor, VarLenUnicode};
 use hdf5::{Dataset, Group, H5Type, Hyperslab};
@@ -84,7 +90,7 @@ impl Cell for String {
 
 /// A growing dataset of `T`.
 pub(super) struct Column<T: Cell> {
-    dataset: Dataset,
+    dataset: ManuallyDrop<Dataset>,
     waiting: Vec<T::Stored>,
     n_written: usize,
     chunk: usize,
@@ -103,6 +109,7 @@ impl<T: Cell> Column<T> {
         if !unit.is_empty() {
             put_text(&dataset, "units", unit)?;
         }
+        let dataset = ManuallyDrop::new(dataset);
         Ok(Self { dataset, waiting: Vec::new(), n_written: 0, chunk, values: Sha256::new(), bytes: Vec::new() })
     }
 
@@ -150,6 +157,8 @@ impl<T: Cell> Column<T> {
         if !self.waiting.is_empty() {
             self.write(self.waiting.len())?;
         }
+        self.dataset.flush().doing("flushing", self.dataset.name())?;
+        drop(ManuallyDrop::into_inner(self.dataset));
         Ok(DatasetDigest::new(name, T::CODE, &[self.n_written as u64], self.values))
     }
 }

@@ -6,6 +6,7 @@
 //! Refuses to replace a file that exists. Memory: one chunk a dataset, however long the trial.
 
 use std::collections::BTreeMap;
+use std::mem::ManuallyDrop;
 use std::path::{Path, PathBuf};
 
 use hdf5::{File, Group};
@@ -48,7 +49,8 @@ struct Groups {
 
 /// The stream into one trial file.
 pub struct TrialWriter {
-    file: File,
+    /// Closed only after a flush that worked; see [`super::column`].
+    file: ManuallyDrop<File>,
     path: PathBuf,
     groups: Groups,
     devices: Vec<(String, DeviceWriter)>,
@@ -75,7 +77,7 @@ impl TrialWriter {
         // No lock: nobody else knows the temporary name, and a lock outlives the file in a child that is just starting.
         options.with_fcpl(|fcpl| fcpl.obj_track_times(false)).with_fapl(|fapl| fapl.file_locking(false));
         let created = options.create_excl(path);
-        let file = created.doing("creating", path.display().to_string())?;
+        let file = ManuallyDrop::new(created.doing("creating", path.display().to_string())?);
         write_header(&file, header)?;
         let top = |name: &str, class: &str| new_group(&file, name, class);
         let notes = top("notes", "NXcollection")?;
@@ -246,7 +248,7 @@ impl TrialWriter {
         }
         drop(self.groups);
         self.file.flush().doing("flushing", self.path.display().to_string())?;
-        self.file.close().doing("closing", self.path.display().to_string())
+        ManuallyDrop::into_inner(self.file).close().doing("closing", self.path.display().to_string())
     }
 
     /// A member name of `group` that nothing has taken yet, derived from a name that came from outside.

@@ -1,0 +1,124 @@
+//! Writes journals for tests by their documented format, record by record, with no thread and no clock.
+
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+
+use tautrail::journal::{
+    Body, Clocks, DeviceAtOpen, Disk, JournalReader, RealDisk, Record, SegmentOpen, TrialClose, TrialOpen, TrialRange,
+    segment_name,
+};
+use tautrail::link::{DeviceIdx, LinkWhat};
+use virtual_rig::device::DEVICES;
+use virtual_rig::performance::{Options, prepare};
+use virtual_rig::play::virtual_time::{Delivered, VirtualPlay};
+
+pub const JOURNAL_ID: &str = "000001-abc123";
+pub const TRIAL_ID: &str = "000001-7f3a9c";
+pub const RIG_TEXT: &str = include_str!("../../tools/rehearsal/north-pier.toml");
+const PREROLL_NS: i64 = 100_000_000;
+
+/// One journal of one segment, being written.
+pub struct JournalFile {
+    path: PathBuf,
+    bytes: Vec<u8>,
+    next_seq: u64,
+}
+
+pub fn opening(rig_text: &str) -> SegmentOpen {
+    let device = |name: &str| DeviceAtOpen { name: name.into(), port: name.into(), describe_hex: String::new() };
+    SegmentOpen {
+        format_version: 1,
+        journal_id: JOURNAL_ID.into(),
+        segment: 1,
+        first_seq: 1,
+        program_version: "0".into(),
+        kernel_boot_id: "boot".into(),
+        rig_text: rig_text.into(),
+        devices: DEVICES.iter().map(|spec| device(spec.name)).collect(),
+        open_trial: None,
+        previous_given_up: None,
+    }
+}
+
+impl JournalFile {
+    pub fn begin(dir: &Path, rig_text: &str) -> Self {
+        std::fs::create_dir_all(dir.join("journal")).unwrap();
+        let path = dir.join("journal").join(segment_name(JOURNAL_ID, 1));
+        let mut file = Self { path, bytes: Vec::new(), next_seq: 1 };
+        let body = Body::SegmentOpen(Box::new(opening(rig_text)));
+        Record { seq: 1, host_ns: 0, device: DeviceIdx(0), body }.encode(&mut file.bytes);
+        file
+    }
+
+    pub fn add(&mut self, host_ns: i64, device: u16, body: Body) -> u64 {
+        let seq = self.next_seq;
+        self.next_seq += 1;
+        Record { seq, host_ns, device: DeviceIdx(device), body }.encode(&mut self.bytes);
+        seq
+    }
+
+    pub fn bytes(&mut self, host_ns: i64, device: u16, bytes: Vec<u8>) -> u64 {
+        self.add(host_ns, device, Body::Link(LinkWhat::Bytes(bytes.into())))
+    }
+
+    pub fn clocks(&mut self, host_ns: i64) {
+        let (monotonic_raw_ns, boottime_ns, realtime_ns) = (host_ns, host_ns, 1_796_000_000_000_000_000 + host_ns);
+        let clocks = Clocks { monotonic_ns: host_ns, monotonic_raw_ns, boottime_ns, realtime_ns, wall_clock_set: true };
+        self.add(host_ns, 0, Body::Clocks(clocks));
+    }
+
+    pub fn open_trial(&mut self, host_ns: i64, first_seq: u64, first_host_ns: i64) {
+        let (trial_id, reason, person) = (TRIAL_ID.into(), "tension".into(), String::new());
+        let open = TrialOpen { trial_id, first_seq, first_host_ns, reason, person, continues: None };
+        self.add(host_ns, 0, Body::TrialOpen(open));
+    }
+
+    pub fn close_trial(&mut self, host_ns: i64) {
+        let close = TrialClose { trial_id: TRIAL_ID.into(), reason: "slack again".into(), person: String::new() };
+        self.add(host_ns, 0, Body::TrialClose(close));
+    }
+
+    /// Hands what is there to the disk.
+    pub fn save(&self) {
+        std::fs::write(&self.path, &self.bytes).unwrap();
+    }
+}
+
+/// A nominal launch, played fast through the virtual rig into a journal of its own.
+pub fn nominal(dir: &Path, pace: f64, closed: bool) {
+    let performance = prepare(&Options { pace, ..Options::default() }).unwrap();
+    let mut file = JournalFile::begin(dir, RIG_TEXT);
+    let mut opened = false;
+    let (mut first, mut last_ns, mut next_clocks_ns) = (None, 0, 0);
+    for delivery in VirtualPlay::new(&performance).unwrap() {
+        let delivery = delivery.unwrap();
+        let host_ns = delivery.host_ns;
+        if host_ns >= next_clocks_ns {
+            file.clocks(host_ns);
+            next_clocks_ns = host_ns + 1_000_000_000;
+        }
+        let body = match delivery.what {
+            Delivered::Bytes(bytes) => Body::Link(LinkWhat::Bytes(bytes.into())),
+            Delivered::TimeRequested { token } => Body::Link(LinkWhat::TimeRequested { token }),
+        };
+        let seq = file.add(host_ns, delivery.device as u16, body);
+        let (first_seq, first_ns) = *first.get_or_insert((seq, host_ns));
+        if !opened && host_ns > first_ns + PREROLL_NS {
+            file.open_trial(host_ns, first_seq, first_ns);
+            opened = true;
+        }
+        last_ns = host_ns;
+    }
+    if closed {
+        file.close_trial(last_ns);
+    }
+    file.save();
+}
+
+/// The journal in `dir` with its one trial.
+pub fn opened(dir: &Path) -> (JournalReader, TrialRange) {
+    let disk: Arc<dyn Disk> = Arc::new(RealDisk);
+    let reader = JournalReader::open(disk, &dir.join("journal"), JOURNAL_ID).unwrap();
+    let range = reader.trials().unwrap().remove(0);
+    (reader, range)
+}
