@@ -1,10 +1,11 @@
 //! Run-out: where the brake took hold, how hard it was, where the shuttle stood.
 
 use crate::rig::{Rig, Role};
+use crate::units::STANDARD_GRAVITY_MPS2;
 
 use super::launch::Separation;
 use super::motion::Track;
-use super::peak::{CLASS, STANDARD_GRAVITY_MPS2, filtered_between};
+use super::peak::{CLASS, filtered_between};
 use super::rows::{Book, Budget};
 use super::sensors::Sensors;
 

@@ -14,8 +14,12 @@ use super::sensors::Sensors;
 const AFTER_RELEASE_S: f64 = 0.01;
 /// The specific force must stay under the crossing this long.
 const STAYS_S: f64 = 0.001;
-/// Over which its slope before the crossing is taken.
-const SLOPE_S: f64 = 0.003;
+/// Over which a straight line is laid through it before the crossing.
+const SLOPE_S: f64 = 0.005;
+/// Least slope that makes a crossing.
+const LEAST_SLOPE_MPS3: f64 = 20.0;
+/// Over which the smoother makes neighbours alike.
+const SMOOTHED_S: f64 = 0.0005;
 
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) struct Separation {
@@ -39,7 +43,7 @@ pub(super) fn find(track: &Track, release_s: f64, rig: &Rig) -> Result<Separatio
     let motion = &track.motion;
     let first = track.index_at(release_s + AFTER_RELEASE_S);
     let n = motion.time_s.len();
-    let under = |idx: usize| track.specific_force_mps2(idx) < contact_lost_mps2(rig, motion.v_mps[idx]);
+    let under = |idx: usize| track.specific_force_mps2[idx] < contact_lost_mps2(rig, motion.v_mps[idx]);
     let pushed = (first..n).find(|&idx| !under(idx)).ok_or("the payload was never pushed")?;
     let stays = |idx: usize| {
         let until = track.index_at(motion.time_s[idx] + STAYS_S);
@@ -52,24 +56,58 @@ pub(super) fn find(track: &Track, release_s: f64, rig: &Rig) -> Result<Separatio
 
 fn at_crossing(track: &Track, idx: usize, rig: &Rig) -> Separation {
     let motion = &track.motion;
-    let over = |idx: usize| track.specific_force_mps2(idx) - contact_lost_mps2(rig, motion.v_mps[idx]);
-    let (before, after) = (over(idx - 1), over(idx));
-    let share = if before > after { (before / (before - after)).clamp(0.0, 1.0) } else { 1.0 };
+    let (time_s, u_time_s) = refined(track, idx, rig);
+    let idx = track.index_at(time_s).max(1);
+    let share = (time_s - motion.time_s[idx - 1]) / (motion.time_s[idx] - motion.time_s[idx - 1]);
     let between = |column: &[f64]| column[idx - 1] * (1.0 - share) + column[idx] * share;
-    let time_s = between(&motion.time_s);
-    let earlier = track.index_at(time_s - SLOPE_S);
-    let slope_mps3 = ((over(earlier) - over(idx)) / (motion.time_s[idx] - motion.time_s[earlier])).abs();
-    let u_drag_mps2 = contact_lost_mps2(rig, motion.v_mps[idx]).abs() * relative_u_drag(rig);
-    let u_time_s = between(&motion.u_a_mps2).hypot(u_drag_mps2) / slope_mps3.max(10.0);
-    let speed_mps = between(&motion.v_mps);
+    let rail_mps = between(&motion.v_mps);
     Separation {
         time_s,
         u_time_s,
         x_m: between(&motion.x_m),
-        u_x_m: between(&motion.u_x_m).hypot(speed_mps * u_time_s),
-        speed_mps,
-        u_speed_mps: between(&motion.u_v_mps),
+        u_x_m: between(&motion.u_x_m).hypot(rail_mps * u_time_s),
+        speed_mps: rail_mps + between(&track.rail_v_mps),
+        u_speed_mps: between(&track.u_ground_v_mps),
     }
+}
+
+/// Crossing of a straight line through the last milliseconds before it: single smoothed values are noisier, and after
+/// it the shuttle alone is lighter and the slope another. Found again twice, for the line moves the crossing.
+fn refined(track: &Track, idx: usize, rig: &Rig) -> (f64, f64) {
+    let motion = &track.motion;
+    let over = |idx: usize| track.specific_force_mps2[idx] - contact_lost_mps2(rig, motion.v_mps[idx]);
+    let mut time_s = motion.time_s[idx];
+    let mut u_time_s = SLOPE_S;
+    let u_drag_mps2 = contact_lost_mps2(rig, motion.v_mps[idx]).abs() * relative_u_drag(rig);
+    let u_common_mps2 = track.u_bias_mps2.hypot(u_drag_mps2);
+    for _ in 0..3 {
+        let (first, last) = (track.index_at(time_s - SLOPE_S), track.index_at(time_s));
+        let points: Vec<(f64, f64)> = (first..last).map(|k| (motion.time_s[k] - time_s, over(k))).collect();
+        let Some((level, slope)) = straight_line(&points) else { break };
+        if slope > -LEAST_SLOPE_MPS3 {
+            break;
+        }
+        let step_s = (-level / slope).clamp(-SLOPE_S, SLOPE_S);
+        // Twice the mean's scatter at the end of a line; neighbours within the smoother's reach count as one.
+        let n_free = (SLOPE_S / SMOOTHED_S).max(1.0);
+        let noise_mps2 = 2.0 * track.u_specific_force_mps2[last] / n_free.sqrt();
+        u_time_s = noise_mps2.hypot(u_common_mps2) / slope.abs();
+        time_s += step_s;
+    }
+    (time_s, u_time_s)
+}
+
+/// Value at zero and slope, by least squares.
+fn straight_line(points: &[(f64, f64)]) -> Option<(f64, f64)> {
+    let n = points.len() as f64;
+    if points.len() < 3 {
+        return None;
+    }
+    let (t_mean, y_mean) = (points.iter().map(|p| p.0).sum::<f64>() / n, points.iter().map(|p| p.1).sum::<f64>() / n);
+    let along: f64 = points.iter().map(|p| (p.0 - t_mean) * (p.1 - y_mean)).sum();
+    let spread: f64 = points.iter().map(|p| (p.0 - t_mean).powi(2)).sum();
+    let slope = along / spread;
+    slope.is_finite().then_some((y_mean - slope * t_mean, slope))
 }
 
 fn relative_u_drag(rig: &Rig) -> f64 {
@@ -104,9 +142,12 @@ pub(super) fn report(found: &Separation, track: &Track, sensors: &Sensors<'_>, r
     }
     let budget = speed_budget(found, track, sensors);
     let airspeed = budget.clone();
-    let method = format!(
-        "speed along the rail at the loss of contact, smoothed from {by}; rail taken as standing still in the ground frame"
-    );
+    let rail = if sensors.position.is_some() && sensors.specific_force.is_some() {
+        "ground frame, the rail's own movement is part of the smoothing"
+    } else {
+        "the rail's own movement is not seen by one sensor alone"
+    };
+    let method = format!("speed along the rail at the loss of contact, smoothed from {by}; {rail}");
     book.result("launch_speed", found.speed_mps, "m/s", budget, method);
     book.result(
         "airspeed_at_separation",
@@ -120,7 +161,8 @@ pub(super) fn report(found: &Separation, track: &Track, sensors: &Sensors<'_>, r
 fn speed_budget(found: &Separation, track: &Track, sensors: &Sensors<'_>) -> Budget {
     let idx = track.index_at(found.time_s);
     let later = track.index_at(found.time_s + 0.002);
-    let a_mps2 = track.motion.a_mps2[idx].abs().max(track.motion.a_mps2[later].abs());
+    let (here_mps2, later_mps2) = (track.motion.a_mps2[idx], track.motion.a_mps2[later]);
+    let a_mps2 = here_mps2.abs() + 0.5 * (later_mps2 - here_mps2).abs() * (found.u_time_s / 0.002).min(1.0);
     let calibration = (found.speed_mps * track.u_encoder_scale).min(found.u_speed_mps);
     let noise = (found.u_speed_mps.powi(2) - calibration.powi(2)).max(0.0).sqrt();
     let time_s = sensors.position.or(sensors.specific_force).map_or(0.0, |signal| signal.time_uncertainty_s);

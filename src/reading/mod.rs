@@ -6,7 +6,6 @@
 mod arrest;
 mod cfc;
 mod energy;
-mod gravity;
 mod launch;
 mod motion;
 mod outcome;

@@ -6,6 +6,7 @@
 
 use crate::calibration::Signal;
 use crate::rig::{Rig, Role};
+use crate::units::STANDARD_GRAVITY_MPS2;
 
 use super::cfc::{CfcFilter, StartUp};
 use super::motion::Track;
@@ -13,8 +14,6 @@ use super::rows::{Book, Budget};
 use super::sensors::Sensors;
 use super::series::{longest_gap_s, rate_hz, span};
 
-/// Standard gravity (3rd CGPM, 1901).
-pub(super) const STANDARD_GRAVITY_MPS2: f64 = 9.80665;
 pub(super) const CLASS: u32 = 60;
 /// How far the filter looks beyond the stroke, so that its ends do not reach in.
 const MARGIN_S: f64 = 0.2;

@@ -1,11 +1,12 @@
 //! The reading itself: each question in turn, each answer or its absence written down.
 
 use crate::calibration::Signal;
+use crate::model::local_gravity_mps2;
 use crate::rig::{Rig, Role};
 
 use super::arrest;
 use super::energy;
-use super::gravity::local_gravity_mps2;
+
 use super::launch::{self, Separation};
 use super::motion::{self, Setting, Track};
 use super::outcome::{self, Evidence};
@@ -141,6 +142,10 @@ fn stroke_rows(
         motion_absent(&reason, book);
         return None;
     };
+    eprintln!(
+        "SCALE {} u {} bias {} u {} consistency {} noise {}",
+        track.scale, track.u_scale, track.bias_mps2, track.u_bias_mps2, track.consistency, track.noise_mps2
+    );
     if track.consistency > MISFIT {
         book.findings.push(format!(
             "encoder and accelerometer disagree: innovations {:.1} times as large as their noise allows; the motion's uncertainty is widened by that",

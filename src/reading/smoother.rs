@@ -28,22 +28,79 @@ impl Innovation {
     }
 }
 
+/// A transition matrix `F = I + Σ value·eᵢ·eⱼᵀ`: states hang together only here and there, and products with the few
+/// entries cost a tenth of full ones.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Transition<const K: usize>(pub [(usize, usize, f64); K]);
+
+impl<const K: usize> Transition<K> {
+    fn ahead<const N: usize>(&self, state: &SVector<f64, N>) -> SVector<f64, N> {
+        let mut moved = *state;
+        for (i, j, value) in self.0 {
+            moved[i] += value * state[j];
+        }
+        moved
+    }
+
+    fn back<const N: usize>(&self, adjoint: &SVector<f64, N>) -> SVector<f64, N> {
+        let mut moved = *adjoint;
+        for (i, j, value) in self.0 {
+            moved[j] += value * adjoint[i];
+        }
+        moved
+    }
+
+    /// `F·P·Fᵀ`
+    fn around<const N: usize>(&self, p: &SMatrix<f64, N, N>) -> SMatrix<f64, N, N> {
+        let mut right = *p;
+        for (i, j, value) in self.0 {
+            for row in 0..N {
+                right[(row, i)] += value * p[(row, j)];
+            }
+        }
+        let mut both = right;
+        for (i, j, value) in self.0 {
+            for column in 0..N {
+                both[(i, column)] += value * right[(j, column)];
+            }
+        }
+        both
+    }
+
+    /// `Fᵀ·Λ·F`
+    fn inside<const N: usize>(&self, information: &SMatrix<f64, N, N>) -> SMatrix<f64, N, N> {
+        let mut right = *information;
+        for (i, j, value) in self.0 {
+            for row in 0..N {
+                right[(row, j)] += value * information[(row, i)];
+            }
+        }
+        let mut both = right;
+        for (i, j, value) in self.0 {
+            for column in 0..N {
+                both[(j, column)] += value * right[(i, column)];
+            }
+        }
+        both
+    }
+}
+
 #[derive(Debug, Clone)]
-enum Entry<const N: usize> {
-    Predicted { transition: SMatrix<f64, N, N> },
+enum Entry<const N: usize, const K: usize> {
+    Predicted { transition: Transition<K> },
     Updated { h: SVector<f64, N>, gain: SVector<f64, N>, innovation: Innovation },
     Marked,
 }
 
 /// The forward run, remembered for the way back.
 #[derive(Debug, Clone)]
-pub struct Filter<const N: usize> {
+pub struct Filter<const N: usize, const K: usize> {
     now: Estimate<N>,
-    log: Vec<Entry<N>>,
+    log: Vec<Entry<N, K>>,
     marks: Vec<Estimate<N>>,
 }
 
-impl<const N: usize> Filter<N> {
+impl<const N: usize, const K: usize> Filter<N, K> {
     /// Starts from a prior.
     pub fn new(prior: Estimate<N>, n_points: usize) -> Self {
         Self { now: prior, log: Vec::with_capacity(4 * n_points), marks: Vec::with_capacity(n_points) }
@@ -54,9 +111,9 @@ impl<const N: usize> Filter<N> {
     }
 
     /// `x ← F·x`, `P ← F·P·Fᵀ + Q`.
-    pub fn predict(&mut self, transition: SMatrix<f64, N, N>, process: &SMatrix<f64, N, N>) {
-        self.now.state = transition * self.now.state;
-        self.now.covariance = transition * self.now.covariance * transition.transpose() + process;
+    pub fn predict(&mut self, transition: Transition<K>, process: &SMatrix<f64, N, N>) {
+        self.now.state = transition.ahead(&self.now.state);
+        self.now.covariance = transition.around(&self.now.covariance) + process;
         self.log.push(Entry::Predicted { transition });
     }
 
@@ -78,7 +135,16 @@ impl<const N: usize> Filter<N> {
     }
 
     /// The way back: smoothed estimates at all marks, in order of time.
-    pub fn smooth(mut self) -> Vec<Estimate<N>> {
+    pub fn smooth(self) -> Vec<Estimate<N>> {
+        self.way_back(true)
+    }
+
+    /// Smoothed states alone; the covariances stay the filter's.
+    pub fn smooth_states(self) -> Vec<Estimate<N>> {
+        self.way_back(false)
+    }
+
+    fn way_back(mut self, with_covariance: bool) -> Vec<Estimate<N>> {
         let mut adjoint = SVector::<f64, N>::zeros();
         let mut information = SMatrix::<f64, N, N>::zeros();
         let mut marks = std::mem::take(&mut self.marks);
@@ -90,16 +156,23 @@ impl<const N: usize> Filter<N> {
                     let filtered = &mut marks[n_left];
                     let p = filtered.covariance;
                     filtered.state -= p * adjoint;
-                    filtered.covariance = p - p * information * p;
+                    if with_covariance {
+                        filtered.covariance = p - p * information * p;
+                    }
                 }
                 Entry::Predicted { transition } => {
-                    adjoint = transition.transpose() * adjoint;
-                    information = transition.transpose() * information * transition;
+                    adjoint = transition.back(&adjoint);
+                    if with_covariance {
+                        information = transition.inside(&information);
+                    }
                 }
                 Entry::Updated { h, gain, innovation } => {
                     // (I − K·hᵀ)ᵀ on the left: a − h·(K·a); the same on both sides of the information.
                     let step = innovation.difference / innovation.variance + gain.dot(&adjoint);
                     adjoint -= h * step;
+                    if !with_covariance {
+                        continue;
+                    }
                     let along = information * gain;
                     let both = gain.dot(&along) + 1.0 / innovation.variance;
                     information += h * h.transpose() * both - h * along.transpose() - along * h.transpose();
@@ -117,7 +190,7 @@ mod tests {
     /// Constant acceleration with white jerk, as the reference file's header gives it.
     fn reference_run(table: &[Vec<f64>]) -> (Vec<Estimate<3>>, Vec<Estimate<3>>) {
         let (dt, q) = (0.01_f64, 20_000.0);
-        let f = SMatrix::<f64, 3, 3>::new(1.0, dt, dt * dt / 2.0, 0.0, 1.0, dt, 0.0, 0.0, 1.0);
+        let f = Transition([(0, 1, dt), (0, 2, dt * dt / 2.0), (1, 2, dt)]);
         let process = SMatrix::<f64, 3, 3>::new(
             dt.powi(5) / 20.0,
             dt.powi(4) / 8.0,

@@ -1,0 +1,87 @@
+//! Measured minus modelled, of one quantity, over time and x, and what it comes to.
+
+use serde::Serialize;
+
+/// Residuals of one quantity in the power stroke. Columns have the same length, in order of time.
+#[derive(Debug, Clone, PartialEq, Serialize)]
+pub struct Residuals {
+    /// `acceleration`, `velocity`, `position`, `anchor tension`.
+    pub quantity: String,
+    pub unit: String,
+    /// Trial seconds.
+    pub time_s: Vec<f64>,
+    /// Measured place of the shuttle.
+    pub x_m: Vec<f64>,
+    pub measured: Vec<f64>,
+    pub modelled: Vec<f64>,
+    pub residual: Vec<f64>,
+    /// Standard uncertainty of each residual: measurement, model inputs and alignment.
+    pub u: Vec<f64>,
+    pub bias: f64,
+    pub rms: f64,
+    /// Largest in magnitude, with its sign, and where it stands.
+    pub max: f64,
+    pub max_at_s: f64,
+    pub max_at_x_m: f64,
+    /// Mean square of residual over its uncertainty: about 1 or less where the model holds (residuals of one launch move
+    /// together, so this is no test statistic).
+    pub mean_normalised_square: f64,
+    /// Lag-one autocorrelation of the residuals: near 1 where a slow misfit outweighs noise.
+    pub autocorrelation: f64,
+}
+
+/// One quantity's two sides over a common grid.
+pub(super) struct Sides {
+    pub quantity: &'static str,
+    pub unit: &'static str,
+    pub time_s: Vec<f64>,
+    pub x_m: Vec<f64>,
+    pub measured: Vec<f64>,
+    pub modelled: Vec<f64>,
+    pub u: Vec<f64>,
+}
+
+impl Residuals {
+    /// `None` where there is nothing to compare.
+    pub(super) fn of(sides: Sides) -> Option<Self> {
+        let residual: Vec<f64> = sides.measured.iter().zip(&sides.modelled).map(|(a, b)| a - b).collect();
+        let n = residual.len() as f64;
+        let largest = (0..residual.len()).max_by(|&a, &b| residual[a].abs().total_cmp(&residual[b].abs()))?;
+        let bias = residual.iter().sum::<f64>() / n;
+        let normalised = residual.iter().zip(&sides.u).map(|(r, u)| (r / u).powi(2));
+        Some(Self {
+            quantity: sides.quantity.to_owned(),
+            unit: sides.unit.to_owned(),
+            bias,
+            rms: (residual.iter().map(|r| r * r).sum::<f64>() / n).sqrt(),
+            max: residual[largest],
+            max_at_s: sides.time_s[largest],
+            max_at_x_m: sides.x_m[largest],
+            mean_normalised_square: normalised.sum::<f64>() / n,
+            autocorrelation: autocorrelation(&residual, bias),
+            time_s: sides.time_s,
+            x_m: sides.x_m,
+            measured: sides.measured,
+            modelled: sides.modelled,
+            residual,
+            u: sides.u,
+        })
+    }
+
+    /// From the first compared instant to the largest residual.
+    pub(super) fn since_start_s(&self) -> f64 {
+        self.max_at_s - self.time_s.first().copied().unwrap_or(self.max_at_s)
+    }
+
+    /// How many times its uncertainty the residual is where it is largest.
+    pub fn max_over_u(&self) -> f64 {
+        let at = self.time_s.partition_point(|&t| t < self.max_at_s);
+        self.u.get(at).map_or(f64::NAN, |u| self.max.abs() / u)
+    }
+}
+
+fn autocorrelation(residual: &[f64], bias: f64) -> f64 {
+    let square: f64 = residual.iter().map(|r| (r - bias).powi(2)).sum();
+    let product: f64 = residual.windows(2).map(|pair| (pair[0] - bias) * (pair[1] - bias)).sum();
+    if square > 0.0 { product / square } else { 0.0 }
+}

@@ -1,0 +1,100 @@
+//! A trial of the virtual rig as signals: its bytes decoded, its clocks fitted, its counts calibrated by the rig file.
+//!
+//! What the reading sees of it is exactly what sealing would hand it; the truth comes beside it and is never shown to it.
+
+#![allow(clippy::expect_used, reason = "a test that cannot go on stops here")]
+
+use tautrail::calibration::{Sampling, Signal, signal_from_counts};
+use tautrail::capture::{
+    Block, Captured, ClockPiece, ClockSamples, Counts, DeviceDecoder, DeviceDescription, piece_at,
+};
+use tautrail::rig::{Channel, Rig};
+use virtual_rig::device::DEVICES;
+use virtual_rig::performance::{Options, prepare};
+use virtual_rig::play::virtual_time::{Delivered, VirtualPlay};
+use virtual_rig::truth::Truth;
+
+/// The rehearsal's rig file.
+pub fn rehearsal_rig() -> Rig {
+    tautrail::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).expect("the rehearsal's rig file reads")
+}
+
+/// What was measured, and what was true. Trial time is seconds since the scenario's zero.
+#[derive(Debug)]
+pub struct VirtualTrial {
+    pub signals: Vec<Signal>,
+    pub truth: Truth,
+}
+
+impl VirtualTrial {
+    /// Trial time of an instant of the truth log.
+    pub fn event_s(&self, kind: &str) -> Option<f64> {
+        self.truth.events.iter().find(|event| event.kind == kind).map(|event| event.t_s)
+    }
+}
+
+#[derive(Default)]
+struct Heard {
+    description: Option<DeviceDescription>,
+    blocks: Vec<Block>,
+    clock: ClockSamples,
+}
+
+/// Plays a scenario in virtual time and measures it with the rig file's channels.
+pub fn play(options: &Options, rig: &Rig) -> VirtualTrial {
+    let performance = prepare(options).expect("the scenario can be prepared");
+    let mut virtual_play = VirtualPlay::new(&performance).expect("descriptions fit a frame");
+    let mut heard: Vec<Heard> = DEVICES.iter().map(|_| Heard::default()).collect();
+    let mut decoders: Vec<DeviceDecoder> = DEVICES.iter().map(|_| DeviceDecoder::new()).collect();
+    for delivery in &mut virtual_play {
+        let delivery = delivery.expect("every block fits a frame");
+        let device = &mut heard[delivery.device];
+        match delivery.what {
+            Delivered::TimeRequested { token } => device.clock.requested(delivery.host_ns, token),
+            Delivered::Bytes(bytes) => {
+                decoders[delivery.device].feed(delivery.host_ns, &bytes, &mut |captured| device.take(captured));
+            }
+        }
+    }
+    let zero_ns = virtual_play.scenario_zero_host_ns();
+    let signals = rig.channels.iter().map(|channel| signal(channel, &heard, zero_ns)).collect();
+    VirtualTrial { signals, truth: virtual_play.truth() }
+}
+
+impl Heard {
+    fn take(&mut self, captured: Captured) {
+        self.clock.captured(&captured);
+        match captured {
+            Captured::Description(description) => self.description = Some(description),
+            Captured::Block(block) => self.blocks.push(block),
+            _ => {}
+        }
+    }
+}
+
+fn signal(channel: &Channel, heard: &[Heard], zero_ns: i64) -> Signal {
+    let idx = DEVICES.iter().position(|device| device.name == channel.device).expect("the rig file's device exists");
+    let device = &heard[idx];
+    let description = device.description.as_ref().expect("the device described itself");
+    let stream = &description.streams[0];
+    let place = stream.channels.iter().position(|c| c.name == channel.device_channel).expect("the channel exists");
+    let described = &stream.channels[place];
+    let pieces = device.clock.fit();
+    let (mut time_s, mut counts) = (Vec::new(), Vec::new());
+    for block in &device.blocks {
+        let piece = piece_at(&pieces, block.boot_id, block.first_tick).expect("a clock map covers every block");
+        let Counts::Integer(values) = &block.counts[place] else { panic!("the virtual rig sends integers") };
+        for (k, value) in values.iter().enumerate() {
+            let tick = block.first_tick + k as u64 * u64::from(stream.ticks_per_sample);
+            time_s.push((piece.host_ns(tick) - zero_ns as f64) * 1e-9 - described.group_delay_s);
+            counts.push(f64::from(*value));
+        }
+    }
+    let sampling = Sampling {
+        nominal_rate_hz: description.tick_rate_hz / f64::from(stream.ticks_per_sample),
+        bandwidth_hz: described.bandwidth_hz,
+        time_uncertainty_s: pieces.iter().map(|piece: &ClockPiece| piece.u_ns).fold(0.0, f64::max) * 1e-9,
+        counts_range: None,
+    };
+    signal_from_counts(channel, &sampling, time_s, counts.into_iter()).expect("every count has a value")
+}
