@@ -21,6 +21,26 @@ pub enum Kind {
     SetRate = 0x85,
 }
 
+impl Kind {
+    /// The kind that a header's byte names; `None` for one this version does not know.
+    pub const fn from_byte(byte: u8) -> Option<Self> {
+        Some(match byte {
+            0x01 => Self::Describe,
+            0x02 => Self::Block,
+            0x03 => Self::Edge,
+            0x04 => Self::Status,
+            0x05 => Self::TimeReply,
+            0x06 => Self::Text,
+            0x81 => Self::DescribeRequest,
+            0x82 => Self::Start,
+            0x83 => Self::Stop,
+            0x84 => Self::TimeRequest,
+            0x85 => Self::SetRate,
+            _ => return None,
+        })
+    }
+}
+
 /// A message, borrowing what it carries.
 #[derive(Debug, Clone, Copy, PartialEq)]
 #[non_exhaustive]
@@ -157,29 +177,29 @@ impl<'a> Message<'a> {
 
     pub(crate) fn read(kind: u8, payload: &'a [u8]) -> Result<Self, DecodeError> {
         let from = &mut Reader::new(kind, payload);
-        Ok(match kind {
-            k if k == Kind::Describe as u8 => Self::Describe(Describe::read(from)?),
-            k if k == Kind::Block as u8 => Self::Block(Block::read(from)?),
-            k if k == Kind::Edge as u8 => Self::Edge(Edge {
+        let Some(known) = Kind::from_byte(kind) else { return Ok(Self::Unknown { kind, payload }) };
+        Ok(match known {
+            Kind::Describe => Self::Describe(Describe::read(from)?),
+            Kind::Block => Self::Block(Block::read(from)?),
+            Kind::Edge => Self::Edge(Edge {
                 input: from.u8("input")?,
                 rising: from.u8("direction")? != 0,
                 tick: from.u64("tick")?,
             }),
-            k if k == Kind::Status as u8 => Self::Status(Status::read(from)?),
-            k if k == Kind::TimeReply as u8 => Self::TimeReply(TimeReply {
+            Kind::Status => Self::Status(Status::read(from)?),
+            Kind::TimeReply => Self::TimeReply(TimeReply {
                 token: from.u32("token")?,
                 received_tick: from.u64("receive tick")?,
                 sent_tick: from.u64("send tick")?,
             }),
-            k if k == Kind::Text as u8 => Self::Text(from.string("text")?),
-            k if k == Kind::DescribeRequest as u8 => Self::DescribeRequest,
-            k if k == Kind::Start as u8 => Self::Start,
-            k if k == Kind::Stop as u8 => Self::Stop,
-            k if k == Kind::TimeRequest as u8 => Self::TimeRequest(TimeRequest { token: from.u32("token")? }),
-            k if k == Kind::SetRate as u8 => {
+            Kind::Text => Self::Text(from.string("text")?),
+            Kind::DescribeRequest => Self::DescribeRequest,
+            Kind::Start => Self::Start,
+            Kind::Stop => Self::Stop,
+            Kind::TimeRequest => Self::TimeRequest(TimeRequest { token: from.u32("token")? }),
+            Kind::SetRate => {
                 Self::SetRate(SetRate { stream: from.u8("stream")?, ticks_per_sample: from.u32("ticks per sample")? })
             }
-            kind => Self::Unknown { kind, payload },
         })
     }
 }
