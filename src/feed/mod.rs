@@ -17,3 +17,6 @@ pub use client::{ClientError, FeedClient};
 pub use outbox::{Replier, Request};
 pub use server::FeedServer;
 pub use socket::FeedError;
+
+/// The socket's file name in the directory that the daemon records into, unless another path is chosen.
+pub const SOCKET_NAME: &str = "feed.sock";

@@ -8,7 +8,8 @@ use super::message::{Event, FEED_VERSION, Hello};
 impl Hello {
     /// What a display needs to know of a rig.
     pub fn of(rig: &Rig) -> Self {
-        let band = Plan::new(rig).band();
+        // Without a plan there is no band to show; live says why.
+        let band = Plan::new(rig).map(|plan| plan.band()).unwrap_or_default();
         Self {
             feed_version: FEED_VERSION,
             program_version: env!("CARGO_PKG_VERSION").to_owned(),

@@ -23,6 +23,8 @@ pub enum Cause {
     ChannelMissing(usize),
     /// A tension cell of the rig file has no calibration.
     Uncalibrated,
+    /// The model cannot take the rig file's cords to the planned draw.
+    NoPlan,
     Journal,
     /// A link that was never up in this run.
     LinkAbsent(u16),

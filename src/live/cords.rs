@@ -49,12 +49,19 @@ const SLACK_FOR_NS: i64 = 500_000_000;
 
 impl SlackRule {
     /// Judges one instant.
-    pub fn judge(&mut self, cells: &Cells, host_ns: i64, plan: &Plan, slack_n: f64, draw_m: Option<f64>) -> CordsNow {
+    pub fn judge(
+        &mut self,
+        cells: &Cells,
+        host_ns: i64,
+        plan: Option<&Plan>,
+        slack_n: f64,
+        draw_m: Option<f64>,
+    ) -> CordsNow {
         let Some(tension_n) = cells.tension_n else {
             *self = Self::default();
             return CordsNow::Unknown;
         };
-        let loaded = CordsNow::Loaded { tension_n, energy_j: plan.energy_j(tension_n, draw_m) };
+        let loaded = CordsNow::Loaded { tension_n, energy_j: plan.map(|plan| plan.energy_j(tension_n, draw_m)) };
         if tension_n >= slack_n {
             *self = Self { slack_since_ns: None, was_loaded: true };
             return loaded;

@@ -1,6 +1,9 @@
 //! One device as live sees it: link state, decoder, clock, and where its channels go.
 
-use crate::capture::{Block, Captured, Counts, DeviceDecoder, DeviceDescription};
+use crate::capture::{
+    Block, BlockTimes, Captured, Counts, DeviceDecoder, DeviceDescription, LiveClock, NominalClock, TimeReply,
+    TimeRequests,
+};
 use crate::rig::{Channel, Device};
 
 use super::state::LinkNow;
@@ -28,6 +31,9 @@ pub struct DeviceMonitor {
     pub name: String,
     pub port: String,
     decoder: DeviceDecoder,
+    /// None before the first description.
+    clock: Option<LiveClock>,
+    requests: TimeRequests,
     ns_per_tick: f64,
     streams: Vec<StreamMap>,
     up: bool,
@@ -67,6 +73,8 @@ impl DeviceMonitor {
             name: device.name.clone(),
             port: device.port.clone(),
             decoder: DeviceDecoder::new(),
+            clock: None,
+            requests: TimeRequests::default(),
             ns_per_tick: 1_000.0,
             streams: Vec::new(),
             up: false,
@@ -106,6 +114,16 @@ impl DeviceMonitor {
         self.decoder.link_lost(host_ns, &mut |_| {});
     }
 
+    pub fn time_requested(&mut self, host_ns: i64, token: u32) {
+        self.requests.requested(host_ns, token);
+    }
+
+    pub fn time_replied(&mut self, reply: &TimeReply) {
+        if let (Some(clock), Some(exchange)) = (&mut self.clock, self.requests.replied(reply)) {
+            clock.exchanged(&exchange);
+        }
+    }
+
     /// Decodes one read; what it completed, in order.
     pub fn decode(&mut self, host_ns: i64, bytes: &[u8]) -> Vec<Captured> {
         self.last_bytes_ns = Some(host_ns);
@@ -121,6 +139,7 @@ impl DeviceMonitor {
             channels.iter().position(|channel| channel.device == self.name && channel.device_channel == name)
         };
         self.ns_per_tick = 1e9 / description.tick_rate_hz;
+        self.clock = Some(LiveClock::new(NominalClock::from(description)));
         self.streams = description
             .streams
             .iter()
@@ -138,6 +157,9 @@ impl DeviceMonitor {
     /// Hands every sample of a block to `sink`, stamped with the host time at which the device took it.
     pub fn spread(&mut self, block: &Block, sink: &mut impl FnMut(Sample)) {
         let Some(map) = self.streams.iter().find(|map| map.stream == block.stream) else { return };
+        if let Some(clock) = &mut self.clock {
+            clock.arrived(&BlockTimes::from(block));
+        }
         let first_ns = self.sample_ns(block, block.first_tick);
         let step_ns = f64::from(map.ticks_per_sample) * self.ns_per_tick;
         for (target, counts) in map.targets.iter().zip(&block.counts) {
@@ -153,10 +175,16 @@ impl DeviceMonitor {
         }
     }
 
-    /// Host time of a tick near a block, by the block's arrival: late by the transfer, never early.
+    /// Host time of a tick near a block: by the clock map, or by the block's arrival while there is none.
     fn sample_ns(&self, block: &Block, tick: u64) -> i64 {
-        let before_sent_ns = block.sent_tick.saturating_sub(tick) as f64 * self.ns_per_tick;
-        block.host_ns - before_sent_ns as i64
+        let piece = self.clock.as_ref().and_then(LiveClock::piece).filter(|piece| piece.boot_id == block.boot_id);
+        match piece {
+            Some(piece) => piece.host_ns(tick) as i64,
+            None => {
+                let before_sent_ns = block.sent_tick.saturating_sub(tick) as f64 * self.ns_per_tick;
+                block.host_ns - before_sent_ns as i64
+            }
+        }
     }
 
     pub fn now(&mut self, host_ns: i64) -> LinkNow {
@@ -170,7 +198,7 @@ impl DeviceMonitor {
             refused: counters.refused.values().sum(),
             missing_samples: counters.missing,
             silent_s: self.last_bytes_ns.map(|last_ns| (host_ns - last_ns).max(0) as f64 * 1e-9),
-            clock_uncertainty_s: None,
+            clock_uncertainty_s: self.clock.as_ref().and_then(LiveClock::piece).map(|piece| piece.u_ns * 1e-9),
             note: self.note.clone(),
         }
     }

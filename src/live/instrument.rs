@@ -11,15 +11,18 @@ use super::channel::ChannelMonitor;
 use super::cords::{Cells, SlackRule};
 use super::device::{DeviceMonitor, Sample};
 use super::happening::Happening;
+use super::launch::LaunchWatch;
 use super::phase::{Seen, Tracker};
 use super::plan::Plan;
-use super::rules;
 use super::state::{CordsNow, JournalNow, LaunchSeen, Phase, ReleasedNow, Snapshot, TrialNow};
 use super::trial::TrialKeeper;
+use super::{forecast, rules};
 
 const MS: i64 = 1_000_000;
 const SPEED_WINDOW_NS: i64 = 100 * MS;
 const FAST_SPEED_WINDOW_NS: i64 = 10 * MS;
+/// Ten forecasts a second.
+const FORECAST_EVERY_NS: i64 = 100 * MS;
 
 /// What only the daemon knows of a snapshot.
 #[derive(Debug, Clone, Default)]
@@ -34,7 +37,9 @@ pub struct Around {
 #[derive(Debug)]
 pub struct Live {
     pub(super) rig: Rig,
-    pub(super) plan: Plan,
+    /// None when the model cannot take the rig file's cords to the planned draw; an alarm says so.
+    pub(super) plan: Option<Plan>,
+    pub(super) no_plan: Option<String>,
     pub(super) devices: Vec<DeviceMonitor>,
     pub(super) channels: Vec<ChannelMonitor>,
     pub(super) tracker: Tracker,
@@ -47,14 +52,22 @@ pub struct Live {
     has_uncalibrated_cell: bool,
     slack_rule: SlackRule,
     trial: TrialKeeper,
+    launch: LaunchWatch,
+    launch_ns: i64,
     last_launch: Option<LaunchSeen>,
     released_now: Option<ReleasedNow>,
+    forecast_ns: i64,
 }
 
 impl Live {
     pub fn new(rig: &Rig) -> Self {
+        let (plan, no_plan) = match Plan::new(rig) {
+            Ok(plan) => (Some(plan), None),
+            Err(error) => (None, Some(error.to_string())),
+        };
         Self {
-            plan: Plan::new(rig),
+            plan,
+            no_plan,
             devices: rig.devices.iter().map(DeviceMonitor::new).collect(),
             channels: rig.channels.iter().map(ChannelMonitor::new).collect(),
             tracker: Tracker::new(rig.plan.slack_tension_n, rig.rail.zero_mark_x_m),
@@ -67,8 +80,11 @@ impl Live {
             has_uncalibrated_cell: rig.uncalibrated.iter().any(|channel| channel.role.is_tension()),
             slack_rule: SlackRule::default(),
             trial: TrialKeeper::default(),
+            launch: LaunchWatch::default(),
+            launch_ns: 0,
             last_launch: None,
             released_now: None,
+            forecast_ns: 0,
             rig: rig.clone(),
         }
     }
@@ -81,7 +97,7 @@ impl Live {
         match &event.what {
             LinkWhat::Up { path, baud } => device.link_up(path, *baud),
             LinkWhat::Down { reason } => device.link_down(host_ns, reason),
-            LinkWhat::TimeRequested { .. } => {}
+            LinkWhat::TimeRequested { token } => device.time_requested(host_ns, *token),
             LinkWhat::Bytes(bytes) => {
                 let captured = device.decode(host_ns, bytes);
                 return captured.iter().flat_map(|what| self.on_captured(device_idx, what)).collect();
@@ -92,7 +108,7 @@ impl Live {
 
     /// Takes one decoded thing.
     fn on_captured(&mut self, device_idx: usize, what: &Captured) -> Vec<Happening> {
-        let Self { devices, channels, rig, board, .. } = self;
+        let Self { devices, channels, launch, rig, board, .. } = self;
         let device = &mut devices[device_idx];
         match what {
             Captured::Description(description) => {
@@ -102,9 +118,19 @@ impl Live {
             }
             Captured::Block(block) => {
                 device.spread(block, &mut |sample: Sample| {
-                    channels[sample.channel_idx].push(sample.t_ns, sample.counts);
+                    let channel = &mut channels[sample.channel_idx];
+                    let Some(value) = channel.push(sample.t_ns, sample.counts) else { return };
+                    match channel.role {
+                        Role::ShuttlePosition => launch.x_m.push(sample.t_ns, value),
+                        Role::ShuttleSpecificForce => launch.specific_force_mps2.push(sample.t_ns, value),
+                        _ => {}
+                    }
                 });
                 self.judge(block.host_ns)
+            }
+            Captured::TimeReply(reply) => {
+                device.time_replied(reply);
+                Vec::new()
             }
             _ => Vec::new(),
         }
@@ -112,7 +138,12 @@ impl Live {
 
     /// Time passes: silences, dwell times, forecasts. Call it at every heartbeat.
     pub fn tick(&mut self, host_ns: i64) -> Vec<Happening> {
-        self.judge(host_ns)
+        let happenings = self.judge(host_ns);
+        if host_ns - self.forecast_ns >= FORECAST_EVERY_NS {
+            self.forecast_ns = host_ns;
+            self.released_now = self.forecast(host_ns);
+        }
+        happenings
     }
 
     fn judge(&mut self, host_ns: i64) -> Vec<Happening> {
@@ -121,7 +152,7 @@ impl Live {
         self.cells = Cells::of(&self.channels, host_ns, slack_n);
         self.cells.every_cell_fresh &= !self.has_uncalibrated_cell;
         let draw_m = self.x_m(host_ns).map(|x_m| self.rig.draw_m(x_m));
-        self.cords = self.slack_rule.judge(&self.cells, host_ns, &self.plan, slack_n, draw_m);
+        self.cords = self.slack_rule.judge(&self.cells, host_ns, self.plan.as_ref(), slack_n, draw_m);
         let mut happenings = Vec::new();
         if let Some(from) = self.tracker.step(&self.seen(host_ns)) {
             self.entered(from, host_ns, &mut happenings);
@@ -134,8 +165,14 @@ impl Live {
     fn entered(&mut self, from: Phase, host_ns: i64, happenings: &mut Vec<Happening>) {
         let to = self.tracker.phase();
         happenings.push(Happening::Phase { host_ns, from, to });
-        if to == Phase::WinchBack && matches!(from, Phase::Slack | Phase::Rest) {
-            self.last_launch = None;
+        match to {
+            Phase::Launch => self.launch_ns = host_ns,
+            Phase::WinchBack if matches!(from, Phase::Slack | Phase::Rest) => self.last_launch = None,
+            Phase::Rest if matches!(from, Phase::Launch | Phase::RunOut) => {
+                self.last_launch = self.launch.judge(&self.rig, self.launch_ns);
+                happenings.extend(self.last_launch.map(|launch| Happening::LaunchSeen { host_ns, launch }));
+            }
+            _ => {}
         }
         if !matches!(to, Phase::WinchBack | Phase::Hold | Phase::LetDown) {
             self.released_now = None;
@@ -167,6 +204,14 @@ impl Live {
 
     pub(super) fn x_m(&self, host_ns: i64) -> Option<f64> {
         self.level(Role::ShuttlePosition, host_ns)
+    }
+
+    fn forecast(&self, host_ns: i64) -> Option<ReleasedNow> {
+        if !matches!(self.tracker.phase(), Phase::WinchBack | Phase::Hold | Phase::LetDown) {
+            return None;
+        }
+        let tension_n = self.level(Role::ReleaseLineTension, host_ns)?;
+        forecast::released_now(&self.rig, tension_n, self.x_m(host_ns)?)
     }
 
     /// The state of everything; starts new extremes for the next snapshot.

@@ -28,7 +28,15 @@ pub fn judge(live: &mut Live, host_ns: i64) -> Vec<Happening> {
     channels(live, host_ns, &mut told);
     told.extend(loaded_and_blind(live, host_ns));
     told.extend(uncalibrated(live, host_ns));
+    told.extend(no_plan(live, host_ns));
     told
+}
+
+/// Without the model's plan there is neither band nor forecast nor energy.
+fn no_plan(live: &mut Live, host_ns: i64) -> Option<Happening> {
+    let reason = live.no_plan.as_ref()?;
+    let sentence = format!("no plan, no forecast, no energy: {reason}; correct the rig file");
+    live.board.raise(Cause::NoPlan, host_ns, sentence)
 }
 
 /// A tension cell that cannot give newtons: slack can never be told while the rig file lacks its calibration.
@@ -80,9 +88,9 @@ fn tension_over_plan(live: &mut Live, host_ns: i64) -> Option<Happening> {
     let drawing = matches!(live.tracker.phase(), Phase::WinchBack | Phase::Hold);
     let line_n = live.level(Role::ReleaseLineTension, host_ns);
     let draw_m = live.x_m(host_ns).map(|x_m| live.rig.draw_m(x_m)).filter(|draw_m| *draw_m >= LEAST_BAND_DRAW_M);
-    let over = match (drawing, line_n, draw_m) {
-        (true, Some(line_n), Some(draw_m)) => {
-            let expected = live.plan.expected(draw_m);
+    let over = match (drawing, line_n, draw_m, &live.plan) {
+        (true, Some(line_n), Some(draw_m), Some(plan)) => {
+            let expected = plan.expected(draw_m);
             (line_n > expected.high_n).then_some((line_n, draw_m, expected))
         }
         _ => None,

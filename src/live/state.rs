@@ -52,7 +52,8 @@ pub struct ChannelNow {
 pub enum CordsNow {
     Loaded {
         tension_n: f64,
-        energy_j: f64,
+        /// None when the rig file's cords give no plan.
+        energy_j: Option<f64>,
     },
     /// Every tension cell is fresh and below the slack threshold.
     Slack,

@@ -41,7 +41,7 @@ pub fn north_pier() -> Rig {
             free_length_m: 2.7,
             mass_kg: 0.3,
             travel_ratio: 1.0,
-            curve: vec![point(0.0, 0.0), point(0.2, 36.0), point(0.7, 68.0), point(1.48, 118.0)],
+            curve: vec![point(0.0, 0.0), point(0.2, 36.0), point(0.7, 68.0), point(1.48, 118.0), point(1.6, 127.0)],
             force_relative_uncertainty: 0.02,
         },
         losses: Losses { friction_n: Given::exactly(12.0), shuttle_drag_area_m2: Given::exactly(0.02) },
@@ -94,7 +94,7 @@ pub enum End {
 /// Every half millisecond of a scene: 2 s slack, winch-back to 4 m until 12 s, hold until 15 s, the end, and rest.
 pub fn scene(end: End, force_scale: f64) -> Vec<Instant> {
     let rig = north_pier();
-    let plan = super::plan::Plan::new(&rig);
+    let plan = super::plan::Plan::new(&rig).unwrap();
     let weight_n = rig.moving_mass_kg() * 9.806_65 * rig.rail.incline_rad.sin();
     let (mut x_m, mut v_mps) = (4.0, 0.0);
     let n = (27.0 * RATE_HZ) as usize;

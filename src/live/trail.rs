@@ -1,13 +1,16 @@
 //! A channel's recent past in short bins: level, slope and extremes without keeping every sample.
 //!
-//! Times are host nanoseconds of the samples, not of their arrival. A pause longer than [`PAUSE_NS`] or a step back in
-//! time starts the trail anew, so no slope is ever drawn across a gap.
+//! Times are host nanoseconds of the samples, not of their arrival. A clock map that is fitted again may step back a
+//! little; a pause longer than [`PAUSE_NS`] or a real step back starts the trail anew, so no slope is ever drawn across a
+//! gap.
 
 use std::collections::VecDeque;
 
 const BIN_NS: i64 = 5_000_000;
 /// Longest pause that still counts as one run of samples.
 const PAUSE_NS: i64 = 500_000_000;
+/// A step back up to this is a refit of the clock map.
+const STEP_BACK_NS: i64 = 20_000_000;
 const N_BINS_MAX: usize = 400;
 
 #[derive(Debug, Clone, Copy)]
@@ -39,9 +42,11 @@ pub struct Trail {
 impl Trail {
     /// Takes one finite sample; others are the caller's to refuse.
     pub fn push(&mut self, t_ns: i64, value: f64) {
-        if self.newest_t_ns.is_some_and(|newest| t_ns < newest || t_ns - newest > PAUSE_NS) {
+        let since_ns = self.newest_t_ns.map_or(0, |newest| t_ns - newest);
+        if !(-STEP_BACK_NS..=PAUSE_NS).contains(&since_ns) {
             self.bins.clear();
         }
+        let t_ns = if (-STEP_BACK_NS..0).contains(&since_ns) { t_ns - since_ns } else { t_ns };
         self.newest_t_ns = Some(t_ns);
         let slot = t_ns.div_euclid(BIN_NS);
         let offset_ns = t_ns.rem_euclid(BIN_NS) as f64;
@@ -108,6 +113,16 @@ mod tests {
         ramp(900, 904, 1.0, &mut trail);
         assert_eq!(trail.slope_per_s(100 * MS), None);
         assert!((trail.level().unwrap() - 0.902).abs() < 1e-3);
+    }
+
+    #[test]
+    fn a_refitted_clock_does_not_end_the_trail_and_a_reset_one_does() {
+        let mut trail = Trail::default();
+        ramp(0, 200, 1.0, &mut trail);
+        ramp(199, 250, 1.0, &mut trail);
+        assert!((trail.slope_per_s(100 * MS).unwrap() - 1.0).abs() < 0.05);
+        ramp(0, 8, 1.0, &mut trail);
+        assert_eq!(trail.slope_per_s(100 * MS), None);
     }
 
     #[test]

@@ -95,7 +95,7 @@ mod tests {
     use super::*;
 
     const S: i64 = 1_000_000_000;
-    const LOADED: CordsNow = CordsNow::Loaded { tension_n: 40.0, energy_j: 3.0 };
+    const LOADED: CordsNow = CordsNow::Loaded { tension_n: 40.0, energy_j: Some(3.0) };
 
     #[test]
     fn a_trial_never_closes_while_tension_stands_or_is_unknown() {

@@ -100,6 +100,21 @@ fn a_nominal_launch_goes_through_every_phase_once_and_raises_nothing() {
 }
 
 #[test]
+fn the_launch_is_seen_as_the_scene_made_it() {
+    let mut run = Run::new();
+    let scene = scene(End::Launch, 1.0);
+    run.play(&scene, 0.0, 27.0, |_| true);
+    let seen =
+        run.told.iter().find_map(|h| if let Happening::LaunchSeen { launch, .. } = h { Some(*launch) } else { None });
+    let seen = seen.unwrap();
+    // The scene's own truth: the speed at the zero mark, where its cords let go, and its greatest specific force.
+    let fastest_mps = scene.windows(2).map(|pair| (pair[1].x_m - pair[0].x_m) * 2_000.0).fold(0.0, f64::max);
+    let greatest_g = scene.iter().map(|now| now.specific_force_mps2).fold(0.0, f64::max) / 9.80665;
+    assert!((seen.launch_speed_mps / fastest_mps - 1.0).abs() < 0.01, "{seen:?} against {fastest_mps}");
+    assert!((seen.peak_g / greatest_g - 1.0).abs() < 0.05, "{seen:?} against {greatest_g}");
+}
+
+#[test]
 fn a_let_down_ends_slack_without_a_launch() {
     let mut run = Run::new();
     use Phase::*;
