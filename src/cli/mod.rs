@@ -5,12 +5,15 @@
 
 mod check;
 mod daemon;
+mod feed_place;
+mod mark;
 mod recover;
 mod screen;
 mod seal_child;
 mod show;
 mod trials;
 mod verify;
+mod watch;
 
 use std::error::Error;
 use std::process::ExitCode;
@@ -42,6 +45,8 @@ enum Command {
     Trials(trials::Args),
     Show(show::Args),
     Verify(verify::Args),
+    Watch(watch::Args),
+    Mark(mark::Args),
     #[command(hide = true)]
     SealChild(seal_child::Args),
 }
@@ -55,6 +60,8 @@ impl Command {
             Self::Trials(args) => trials::run(args, screen),
             Self::Show(args) => show::run(args, screen),
             Self::Verify(args) => verify::run(args, screen),
+            Self::Watch(args) => watch::run(args, screen),
+            Self::Mark(args) => mark::run(args, screen),
             Self::SealChild(args) => seal_child::run(args, screen),
         }
     }

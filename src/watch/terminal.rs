@@ -1,0 +1,212 @@
+//! The terminal: entered, drawn on at most ten times a second, and left clean on every way out, a panic and SIGTERM,
+//! SIGHUP and SIGINT included.
+
+use std::io::{self, IsTerminal};
+use std::path::PathBuf;
+use std::sync::Arc;
+use std::sync::atomic::{AtomicBool, Ordering};
+use std::time::{Duration, Instant};
+
+use ratatui::DefaultTerminal;
+use ratatui::crossterm::event::{self, Event, KeyCode, KeyEventKind, KeyModifiers};
+use signal_hook::consts::{SIGHUP, SIGINT, SIGTERM};
+use thiserror::Error;
+
+use crate::feed::message::{Command, Message};
+use crate::feed::{ClientError, FeedClient};
+
+use super::draw;
+use super::theme::Theme;
+use super::view::ViewState;
+
+const DRAW_EVERY: Duration = Duration::from_millis(100);
+/// An alarm or a new phase does not wait for the next regular drawing, but no flood of them draws faster than this.
+const URGENT_AFTER: Duration = Duration::from_millis(20);
+const LISTEN: Duration = Duration::from_millis(10);
+const RECONNECT_EVERY: Duration = Duration::from_secs(1);
+
+/// Why the display cannot be shown.
+#[derive(Debug, Error)]
+#[non_exhaustive]
+pub enum WatchError {
+    #[error("standard output is no terminal: use `tautrail watch --plain` for a line a second")]
+    NoTerminal,
+    #[error("this terminal cannot move its cursor (TERM={term}): use `tautrail watch --plain` for a line a second")]
+    DumbTerminal { term: String },
+    #[error("terminal: {source}")]
+    Terminal {
+        #[from]
+        source: io::Error,
+    },
+    #[error("{source}")]
+    Feed {
+        #[from]
+        source: ClientError,
+    },
+}
+
+/// What the person at the display chose.
+#[derive(Debug, Clone)]
+pub struct Choices {
+    pub socket: PathBuf,
+    /// Named in acknowledgements.
+    pub person: String,
+    pub theme: Theme,
+}
+
+/// Follows the feed on the terminal until a key or a signal ends it. A lost daemon is tried again every second.
+///
+/// # Errors
+/// [`WatchError`] when there is no daemon at the start, or no terminal.
+pub fn follow(choices: &Choices) -> Result<(), WatchError> {
+    if !io::stdout().is_terminal() || !io::stdin().is_terminal() {
+        return Err(WatchError::NoTerminal);
+    }
+    let term = std::env::var("TERM").unwrap_or_default();
+    if term.is_empty() || term == "dumb" {
+        return Err(WatchError::DumbTerminal { term });
+    }
+    let client = FeedClient::connect(&choices.socket)?;
+    let stop = Arc::new(AtomicBool::new(false));
+    for signal in [SIGTERM, SIGHUP, SIGINT] {
+        signal_hook::flag::register(signal, stop.clone())?;
+    }
+    let view = ViewState::new(client.hello().clone(), choices.theme);
+    // Also sets a panic hook that leaves the terminal clean.
+    let terminal = ratatui::try_init()?;
+    let ended = Watch::new(choices, client, view).run(terminal, &stop);
+    // After SIGHUP there may be no terminal left to clean; the reason for ending matters more.
+    let restored = ratatui::try_restore();
+    ended?;
+    if stop.load(Ordering::Relaxed) { Ok(()) } else { Ok(restored?) }
+}
+
+/// A daemon that answers, or when to try again.
+enum Link {
+    Up(Box<FeedClient>),
+    Down { try_at: Instant },
+}
+
+struct Watch<'a> {
+    choices: &'a Choices,
+    link: Link,
+    view: ViewState,
+    snapshot_at: Instant,
+    drawn_at: Option<Instant>,
+    next_id: u64,
+}
+
+impl<'a> Watch<'a> {
+    fn new(choices: &'a Choices, client: FeedClient, view: ViewState) -> Self {
+        Self {
+            choices,
+            link: Link::Up(Box::new(client)),
+            view,
+            snapshot_at: Instant::now(),
+            drawn_at: None,
+            next_id: 1,
+        }
+    }
+
+    fn run(mut self, mut terminal: DefaultTerminal, stop: &AtomicBool) -> io::Result<()> {
+        while !stop.load(Ordering::Relaxed) {
+            let urgent = self.listen();
+            if event::poll(Duration::ZERO)? && self.take_key(&event::read()?) {
+                return Ok(());
+            }
+            let waited = self.drawn_at.map_or(DRAW_EVERY, |drawn_at| drawn_at.elapsed());
+            if waited >= DRAW_EVERY || (urgent && waited >= URGENT_AFTER) {
+                self.drawn_at = Some(Instant::now());
+                self.view.since_snapshot_s = self.snapshot_at.elapsed().as_secs_f64();
+                terminal.draw(|frame| draw(frame, &self.view))?;
+            }
+        }
+        Ok(())
+    }
+
+    /// Takes what the feed has within a few milliseconds; true when something of it must be seen at once.
+    fn listen(&mut self) -> bool {
+        let until = Instant::now() + LISTEN;
+        let mut urgent = false;
+        while Instant::now() < until {
+            let next = match &mut self.link {
+                Link::Up(client) => client.next(LISTEN),
+                Link::Down { try_at } => {
+                    std::thread::sleep(LISTEN);
+                    let due = Instant::now() >= *try_at;
+                    if due {
+                        self.reconnect();
+                    }
+                    return due;
+                }
+            };
+            match next {
+                Ok(Some(message)) => urgent |= self.take(message),
+                Ok(None) => {}
+                Err(error) => {
+                    self.lose(&error);
+                    return true;
+                }
+            }
+        }
+        urgent
+    }
+
+    fn take(&mut self, message: Message) -> bool {
+        if matches!(message, Message::Snapshot(_)) {
+            self.snapshot_at = Instant::now();
+        }
+        self.view.apply(message)
+    }
+
+    fn lose(&mut self, error: &ClientError) {
+        self.view.lost.get_or_insert_with(|| error.to_string());
+        self.link = Link::Down { try_at: Instant::now() + RECONNECT_EVERY };
+    }
+
+    fn reconnect(&mut self) {
+        match FeedClient::connect(&self.choices.socket) {
+            Ok(client) => {
+                self.view.lost = None;
+                self.view.hello = client.hello().clone();
+                self.link = Link::Up(Box::new(client));
+            }
+            Err(error) => {
+                self.view.lost = Some(error.to_string());
+                self.link = Link::Down { try_at: Instant::now() + RECONNECT_EVERY };
+            }
+        }
+    }
+
+    /// True when the key ends the display.
+    fn take_key(&mut self, event: &Event) -> bool {
+        let Event::Key(key) = event else {
+            // A new size is drawn at once.
+            self.drawn_at = None;
+            return false;
+        };
+        if key.kind != KeyEventKind::Press {
+            return false;
+        }
+        self.view.notice = None;
+        match key.code {
+            KeyCode::Char('c') if key.modifiers.contains(KeyModifiers::CONTROL) => return true,
+            KeyCode::Char('q') => return true,
+            KeyCode::Char('h' | '?') => self.view.help = !self.view.help,
+            KeyCode::Esc => self.view.help = false,
+            KeyCode::Char('a') => self.acknowledge(),
+            _ => {}
+        }
+        self.drawn_at = None;
+        false
+    }
+
+    fn acknowledge(&mut self) {
+        let Link::Up(client) = &mut self.link else { return };
+        let command = Command::Acknowledge { id: self.next_id, person: self.choices.person.clone() };
+        self.next_id += 1;
+        if let Err(error) = client.send(&command) {
+            self.lose(&error);
+        }
+    }
+}
