@@ -99,7 +99,7 @@ scale_uncertainty = "0.1 %"
 
 const BAD_ANSWER: &str = r#"rig.toml:1:1: error: losses: is missing
 rig.toml:1:8: error: name: "north pier" must be letters, digits, "-" or "_", at most 40 of them
-rig.toml:2:1: error: colour: unknown key, known here: name, site, rail, shuttle, payload, cords, losses, limits, plan, device, channel
+rig.toml:2:1: error: colour: unknown key, known here: name, invented, site, rail, shuttle, payload, cords, losses, limits, plan, device, channel
 rig.toml:5:12: error: site.latitude: is 95 deg, allowed is -90 to 90 deg
 rig.toml:6:12: error: site.altitude: has no unit, write it in quotes with its unit, such as "6 m"
 rig.toml:8:13: error: site.head_wind: "kn" is not accepted: write "kt" for knots or "kN" for kilonewtons
@@ -169,7 +169,7 @@ fn programs_get_the_same_findings_as_json() {
     assert_eq!(value["usable"], false);
     assert_eq!(value["ports_looked_for"], false);
     assert_eq!(value["findings"][1]["key"], "rail.inclin");
-    assert_eq!((&value["findings"][1]["line"], &value["findings"][1]["column"]), (&15.into(), &1.into()));
+    assert_eq!((&value["findings"][1]["line"], &value["findings"][1]["column"]), (&16.into(), &1.into()));
     let failed = check(folder.path(), &["--json", "absent.toml"]);
     let value: serde_json::Value = serde_json::from_str(&said(&failed)).expect("failures are JSON too");
     assert_eq!(value["error"], "absent.toml: cannot be read: No such file or directory (os error 2)");

@@ -8,6 +8,7 @@ mod daemon;
 mod feed_place;
 mod mark;
 mod recover;
+mod report;
 mod screen;
 mod seal_child;
 mod show;
@@ -47,6 +48,7 @@ enum Command {
     Verify(verify::Args),
     Watch(watch::Args),
     Mark(mark::Args),
+    Report(report::Args),
     #[command(hide = true)]
     SealChild(seal_child::Args),
 }
@@ -62,6 +64,7 @@ impl Command {
             Self::Verify(args) => verify::run(args, screen),
             Self::Watch(args) => watch::run(args, screen),
             Self::Mark(args) => mark::run(args, screen),
+            Self::Report(args) => report::run(args, screen),
             Self::SealChild(args) => seal_child::run(args, screen),
         }
     }

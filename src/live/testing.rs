@@ -60,6 +60,7 @@ pub fn north_pier() -> Rig {
             channel("encoder", "shuttle-node", Role::ShuttlePosition, 0.0001),
             channel("accel", "shuttle-node", Role::ShuttleSpecificForce, STANDARD_G_PER_COUNT),
         ],
+        invented: true,
         uncalibrated: Vec::new(),
         text: String::new(),
     }

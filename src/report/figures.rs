@@ -22,8 +22,9 @@ pub(super) fn tension_over_trial(page: &TrialPage) -> Option<Picture> {
     Some(Picture {
         title: "Tension over the whole trial".into(),
         alternative: format!(
-            "{} from {:.2} s to {:.2} s, greatest {peak:.1} N at {at_s:.3} s{limit_words}{phases}",
-            page.tension[0].name, range.0, range.1
+            "{} over {:.2} s, greatest {peak:.1} N at {at_s:.3} s{limit_words}{phases}",
+            page.tension[0].name,
+            range.1 - range.0
         ),
         height: 720,
         x_label: "trial time, s".into(),

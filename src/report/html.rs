@@ -50,8 +50,11 @@ pub fn trial_page(page: &TrialPage) -> Result<String, PictureError> {
 
 fn header(heading: &Heading) -> String {
     let Heading { trial_id, rig, payload, started, started_quality, outcome, outcome_evidence, .. } = heading;
-    let invented =
-        if heading.invented { "<p class=\"invented\">Rehearsal: all data on this page are invented</p>\n" } else { "" };
+    let invented = if heading.invented {
+        "<p class=\"invented\">Rehearsal: all data on this page are invented, no such trial took place</p>\n"
+    } else {
+        ""
+    };
     let evidence: String = outcome_evidence.iter().map(|sentence| format!("<li>{}</li>", escaped(sentence))).collect();
     let evidence =
         if evidence.is_empty() { String::new() } else { format!("<ul class=\"evidence\">{evidence}</ul>\n") };
@@ -87,7 +90,7 @@ fn at_a_glance(page: &TrialPage) -> String {
     body.push_str(&tile(page, "peak_g_cfc60_specific", "Peak g, CFC 60, specific force", |value| {
         against_limit(value, peak_g?, "g")
     }));
-    body.push_str(&tile(page, "peak_tension", "Peak tension", |value| against_limit(value, tension_n?, "N")));
+    body.push_str(&tile(page, "max_tension", "Peak tension", |value| against_limit(value, tension_n?, "N")));
     body.push_str("</div>\n");
     if !page.cautions.is_empty() {
         let items: String = page.cautions.iter().map(|caution| format!("<li>{}</li>", escaped(caution))).collect();
@@ -132,7 +135,8 @@ fn motion(page: &TrialPage) -> Result<String, PictureError> {
 
 fn residuals(page: &TrialPage) -> Result<String, PictureError> {
     if page.residuals.is_empty() {
-        return Ok("<p>No replay was made.</p>\n".into());
+        let reason = escaped(&page.residual_sentence);
+        return Ok(format!("<p>No replay was made{}{reason}.</p>\n", if reason.is_empty() { "" } else { ": " }));
     }
     let pictures = figures_of(page.residuals.iter().map(figures::residual), "")?;
     let sentence = format!("<p class=\"sentence\">{}</p>\n", escaped(&page.residual_sentence));

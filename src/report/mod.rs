@@ -1,11 +1,12 @@
 //! Pages for people: HTML with SVG plots.
 //!
-//! Pure: data in, text out. A page needs nothing beside itself, prints, is readable without its pictures and without
+//! [`trial_page`] is pure, data in and text out; [`page_of`] reads a trial file for it. A page needs nothing beside itself, prints, is readable without its pictures and without
 //! colour. What is absent is said to be absent, with the reason; nothing is drawn across a gap.
 
 mod decimate;
 mod energy;
 mod figures;
+mod gather;
 mod html;
 mod labels;
 mod page;
@@ -15,6 +16,7 @@ mod tables;
 #[cfg(test)]
 mod tests;
 
+pub use gather::{GatherError, page, page_of};
 pub use html::trial_page;
 pub use page::{
     DeviceHealth, EnergyBar, EnergyPart, Heading, MotionCurve, MotionOverRail, PageLimits, PhaseSpan, RailStrip,

@@ -177,7 +177,7 @@ fn results() -> Vec<ResultRow> {
             0.0312,
             "accelerometer through CFC 60, greatest in the power stroke",
         )),
-        row(("peak_tension", 701.3, "N", 0.86, "release line, greatest of all samples")),
+        row(("max_tension", 701.3, "N", 0.86, "release line, greatest of all samples")),
         row(("release_time", 20.00012, "s", 0.00021, "line below half its hold tension")),
     ]
 }
@@ -216,13 +216,13 @@ fn health() -> Vec<DeviceHealth> {
     vec![device("winch-node", 0, 0, Vec::new()), device("shuttle-node", 1, 100, vec![("checksum".into(), 1)])]
 }
 
-fn page_of(page: &TrialPage) -> String {
+fn page_of_html(page: &TrialPage) -> String {
     trial_page(page).expect("the page can be made")
 }
 
 #[test]
 fn a_page_needs_nothing_from_anywhere() {
-    let html = page_of(&invented());
+    let html = page_of_html(&invented());
     for outside in ["<script", "<link", "@import", "url(http", "src=", "href="] {
         assert!(!html.contains(outside), "{outside}");
     }
@@ -232,7 +232,7 @@ fn a_page_needs_nothing_from_anywhere() {
 
 #[test]
 fn every_picture_has_a_text_alternative_with_numbers() {
-    let html = page_of(&invented());
+    let html = page_of_html(&invented());
     let pictures: Vec<&str> = html.split("<svg ").skip(1).collect();
     assert_eq!(pictures.len(), 9);
     for picture in pictures {
@@ -243,7 +243,7 @@ fn every_picture_has_a_text_alternative_with_numbers() {
 
 #[test]
 fn numbers_stand_with_unit_and_uncertainty() {
-    let html = page_of(&invented());
+    let html = page_of_html(&invented());
     assert!(html.contains("<td class=\"n\">16.412</td><td class=\"n\">0.021</td><td>m/s</td>"));
     assert!(html.contains("inside the window, 15.0 to 18.0 m/s"));
     assert!(html.contains("the accelerometer states no anti-alias bandwidth"));
@@ -254,14 +254,14 @@ fn numbers_stand_with_unit_and_uncertainty() {
 fn a_limit_passed_is_said_in_words_and_never_as_clearance() {
     let mut page = invented();
     page.results[2].value = 912.0;
-    let html = page_of(&page);
+    let html = page_of_html(&page);
     assert!(html.contains("ABOVE the limit of 900.0 N (advice only)"));
     assert!(html.contains("is no safety device"));
 }
 
 #[test]
 fn a_page_without_data_says_so_in_every_section() {
-    let html = page_of(&TrialPage::default());
+    let html = page_of_html(&TrialPage::default());
     for sentence in [
         "No tension was recorded",
         "No motion could be derived",
@@ -280,19 +280,73 @@ fn texts_from_outside_cannot_break_the_page() {
     page.heading.payload = "<script>alert(1)</script>\" onload=\"x".into();
     page.residual_sentence = "<b>&".into();
     page.tension[0].name = "line<&>".into();
-    let html = page_of(&page);
+    let html = page_of_html(&page);
     assert!(!html.contains("<script") && !html.contains("line<&>") && !html.contains("<b>&<"));
     assert!(html.contains("&lt;script&gt;alert(1)&lt;/script&gt;&quot; onload=&quot;x"));
 }
 
 #[test]
 fn a_long_trial_makes_a_page_of_bounded_size() {
-    let html = page_of(&invented());
+    let html = page_of_html(&invented());
     assert!(html.len() < 1_500_000, "{} bytes", html.len());
 }
 
 #[test]
 fn unaccounted_energy_is_shown_as_such() {
-    assert!(page_of(&invented()).contains("unaccounted"));
-    assert!(page_of(&invented()).contains("<td class=\"n\">27</td>"), "1480 − 835 − 323 − 35 − 260 = 27 J");
+    assert!(page_of_html(&invented()).contains("unaccounted"));
+    assert!(page_of_html(&invented()).contains("<td class=\"n\">27</td>"), "1480 − 835 − 323 − 35 − 260 = 27 J");
+}
+
+/// A reading of an invented launch with two instants and one result.
+fn reading() -> crate::reading::Reading {
+    crate::reading::Reading {
+        outcome: crate::reading::Outcome::Launched,
+        outcome_evidence: Vec::new(),
+        instants: instants(),
+        results: vec![ResultRow { name: "draw".into(), ..results()[0].clone() }],
+        absent: Vec::new(),
+        findings: vec!["the anchor reads 14 N less than the line".into()],
+        motion: None,
+        energy: None,
+    }
+}
+
+#[test]
+fn a_reading_and_its_rig_file_fill_the_page() {
+    let rig = crate::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap();
+    let header = crate::trial::Header {
+        trial_id: "000001-7f3a9c".into(),
+        journal_id: "000001-abc123".into(),
+        first_seq: 1,
+        last_seq: 2,
+        rig: "north-pier".into(),
+        started: "2031-05-04T10:12:33Z".into(),
+        started_quality: "set".into(),
+        program_version: "0.1.0".into(),
+        configuration_hash: String::new(),
+        series: String::new(),
+        zero_host_ns: 0,
+    };
+    let signal = |role: crate::rig::Role| crate::calibration::Signal {
+        name: role.word().into(),
+        role,
+        time_s: vec![0.0, 10.0, 26.0],
+        value: vec![0.0, 300.0, 0.0],
+        zero_uncertainty: 0.5,
+        scale_relative_uncertainty: 1e-3,
+        time_uncertainty_s: 1e-5,
+        nominal_rate_hz: 0.1,
+        bandwidth_hz: None,
+        resolution: 1e-3,
+        range: None,
+    };
+    let roles = [crate::rig::Role::CordAnchorTension, crate::rig::Role::ReleaseLineTension];
+    let page = page(&header, &rig, &roles.map(signal), &reading());
+    assert!(page.heading.invented, "the rig file says so");
+    assert!(page.tension[0].name.ends_with("(release line)") && page.tension[1].name.ends_with("(cord anchor)"));
+    let phases: Vec<_> = page.phases.iter().map(|phase| (phase.name.as_str(), phase.from_s, phase.to_s)).collect();
+    let expected = [("slack", 0.0, 20.0), ("launch", 20.0, 20.48), ("run-out", 20.48, 20.62), ("rest", 20.62, 26.0)];
+    assert_eq!(phases, expected);
+    assert_eq!(page.limits.launch_speed_mps, Some((15.0, 18.0)));
+    assert!(page_of_html(&page).contains("the anchor reads 14 N less than the line"));
 }

@@ -174,6 +174,15 @@ impl<'d, 't> Section<'d, 't> {
         }
     }
 
+    /// `true` or `false`, false if left out.
+    pub(super) fn optional_flag(&mut self, findings: &mut Findings<'_>, key: &'static str) -> bool {
+        let Some(value) = self.optional(findings, key) else { return false };
+        value.get_ref().as_bool().unwrap_or_else(|| {
+            findings.error(&self.key(key), wrong_type("true or false", value.get_ref()));
+            false
+        })
+    }
+
     /// A number without unit, within `allowed`; NaN if it could not be had.
     pub(super) fn number(
         &mut self,

@@ -37,6 +37,7 @@ pub fn check(text: &str) -> Checked {
 
 fn whole(text: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Rig {
     let name = channels::plain_name(&mut root, findings);
+    let invented = root.optional_flag(findings, "invented");
     let [site, rail, shuttle, payload, cords, losses, limits, plan] =
         ["site", "rail", "shuttle", "payload", "cords", "losses", "limits", "plan"]
             .map(|key| root.section(findings, key));
@@ -45,6 +46,7 @@ fn whole(text: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
     checks::channels(&channels, &devices, findings);
     let rig = Rig {
         name,
+        invented,
         site: sections::site(site, findings),
         rail: sections::rail(rail, findings),
         shuttle: sections::shuttle(shuttle, findings),

@@ -1,5 +1,7 @@
 //! The rig file's promises: a good one is understood whole, a bad one is answered with every finding at once.
 
+mod documented;
+
 use proptest::prelude::*;
 
 use super::*;
@@ -35,6 +37,7 @@ fn the_rehearsal_rig_is_read_whole_and_in_si() {
     assert_eq!((rig.devices.len(), rig.channels.len(), rig.uncalibrated.len()), (2, 4, 0));
     let accel = rig.channel_with_role(Role::ShuttleSpecificForce).expect("it has an accelerometer");
     assert!((accel.calibration.coefficients[1] - STANDARD_GRAVITY_MPS2 / 800.0).abs() < 1e-12);
+    assert!(rig.invented);
     assert_eq!(rig.text, NORTH_PIER);
 }
 
@@ -43,7 +46,7 @@ fn a_mistyped_key_is_an_error_with_the_word_that_was_meant() {
     let findings = findings_with("incline = ", "inclin = ");
     assert_eq!(
         findings,
-        "13:1: error: rail.incline: is missing\n15:1: error: rail.inclin: unknown key, did you mean \"incline\"?"
+        "14:1: error: rail.incline: is missing\n16:1: error: rail.inclin: unknown key, did you mean \"incline\"?"
     );
 }
 
@@ -79,6 +82,7 @@ fn a_wrong_quantity_is_refused_with_what_would_be_right() {
         "length = [7, 0]",
         "error: rail.length: must be a quantity in quotes, found an array",
     );
+    one_finding("invented = true", "invented = \"yes\"", "error: invented: must be true or false, found a string");
     one_finding("count = 6", "count = 6.5", "error: cords.count: is 6.5, cords come in whole numbers");
     one_finding("count = 6", "count = \"6\"", "error: cords.count: must be a plain number, found a string");
 }
@@ -232,7 +236,7 @@ fn a_refused_file_names_itself_in_every_line() {
     std::fs::write(&path, NORTH_PIER.replacen("incline = ", "inclin = ", 1)).unwrap();
     let said = load(&path).expect_err("it is refused").to_string();
     let shown = path.display().to_string();
-    assert!(said.starts_with(&format!("{shown} has 2 errors\n{shown}:13:1: error: rail.incline")), "{said}");
+    assert!(said.starts_with(&format!("{shown} has 2 errors\n{shown}:14:1: error: rail.incline")), "{said}");
     let absent = load(&folder.path().join("none.toml")).expect_err("it is absent").to_string();
     assert!(absent.ends_with("none.toml: cannot be read: No such file or directory (os error 2)"), "{absent}");
 }

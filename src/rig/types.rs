@@ -22,6 +22,8 @@ impl Given {
 #[derive(Debug, Clone, PartialEq)]
 pub struct Rig {
     pub name: String,
+    /// The data are made up, for rehearsals and tests; reports say so.
+    pub invented: bool,
     pub site: Site,
     pub rail: Rail,
     pub shuttle: Shuttle,
