@@ -2,12 +2,14 @@
 
 use thiserror::Error;
 
+use super::beside::add_replay;
 use super::page::{
     DeviceHealth, EnergyBar, EnergyPart, Heading, MotionCurve, MotionOverRail, PageLimits, PhaseSpan, RailStrip, Trace,
     TrialPage,
 };
 use crate::calibration::Signal;
 use crate::reading::{EnergyAudit, Motion, Reading, read};
+use crate::replay::replay;
 use crate::rig::{Rig, RigError, Role, parse};
 use crate::trial::{ClockRow, Header, TrialError, TrialFile};
 
@@ -39,6 +41,7 @@ pub fn page_of(trial: &TrialFile) -> Result<TrialPage, GatherError> {
     let signals = trial.signals()?;
     let reading = read(&signals, &rig);
     let mut page = page(trial.header(), &rig, &signals, &reading);
+    add_replay(&mut page, &replay(&signals, &reading, &rig));
     page.health = trial.device_names()?.iter().map(|name| health(trial, name)).collect::<Result<_, _>>()?;
     page.hashes = hashes(trial)?;
     Ok(page)

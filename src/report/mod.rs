@@ -3,6 +3,7 @@
 //! [`trial_page`] is pure, data in and text out; [`page_of`] reads a trial file for it. A page needs nothing beside itself, prints, is readable without its pictures and without
 //! colour. What is absent is said to be absent, with the reason; nothing is drawn across a gap.
 
+mod beside;
 mod decimate;
 mod energy;
 mod figures;
@@ -16,6 +17,7 @@ mod tables;
 #[cfg(test)]
 mod tests;
 
+pub use beside::add_replay;
 pub use gather::{GatherError, page, page_of};
 pub use html::trial_page;
 pub use page::{

@@ -97,11 +97,13 @@ pub fn nominal(dir: &Path, pace: f64, closed: bool) {
             file.clocks(host_ns);
             next_clocks_ns = host_ns + 1_000_000_000;
         }
-        let body = match delivery.what {
-            Delivered::Bytes(bytes) => Body::Link(LinkWhat::Bytes(bytes.into())),
-            Delivered::TimeRequested { token } => Body::Link(LinkWhat::TimeRequested { token }),
+        let device = delivery.device as u16;
+        let seq = match delivery.what {
+            Delivered::Bytes(bytes) => file.bytes(host_ns, device, bytes),
+            Delivered::TimeRequested { token } => {
+                file.add(host_ns, device, Body::Link(LinkWhat::TimeRequested { token }))
+            }
         };
-        let seq = file.add(host_ns, delivery.device as u16, body);
         let (first_seq, first_ns) = *first.get_or_insert((seq, host_ns));
         if !opened && host_ns > first_ns + PREROLL_NS {
             file.open_trial(host_ns, first_seq, first_ns);
