@@ -103,6 +103,8 @@ pub fn nominal(dir: &Path, pace: f64, closed: bool) {
             Delivered::TimeRequested { token } => {
                 file.add(host_ns, device, Body::Link(LinkWhat::TimeRequested { token }))
             }
+            Delivered::Down => file.add(host_ns, device, Body::Link(LinkWhat::Down { reason: "pulled".into() })),
+            Delivered::Up => file.add(host_ns, device, Body::Link(LinkWhat::Up { path: "port".into(), baud: 115_200 })),
         };
         let (first_seq, first_ns) = *first.get_or_insert((seq, host_ns));
         if !opened && host_ns > first_ns + PREROLL_NS {

@@ -51,6 +51,10 @@ pub fn play(options: &Options, rig: &Rig) -> VirtualTrial {
         let device = &mut heard[delivery.device];
         match delivery.what {
             Delivered::TimeRequested { token } => device.clock.requested(delivery.host_ns, token),
+            Delivered::Down => {
+                decoders[delivery.device].link_lost(delivery.host_ns, &mut |captured| device.take(captured));
+            }
+            Delivered::Up => {}
             Delivered::Bytes(bytes) => {
                 decoders[delivery.device].feed(delivery.host_ns, &bytes, &mut |captured| device.take(captured));
             }

@@ -1,5 +1,7 @@
 //! The virtual rig's command line, for its own binary and for programs that carry it inside.
 
+use crate::device::catalogue::SensorSet;
+use crate::faults::Fault;
 use crate::performance::{Options, Performance, PrepareError, prepare};
 use crate::play::pty::{self, PlayError, PtySettings};
 use crate::play::virtual_time::{Delivered, VirtualPlay};
@@ -70,6 +72,12 @@ struct RigArgs {
     /// Trial number in a series (scenario `ageing`).
     #[arg(long, default_value_t = 0)]
     cycle: u32,
+    /// Also cells left and right, payload recorder, release pin and beam gates, gas pressure.
+    #[arg(long)]
+    all_sensors: bool,
+    /// DEVICE:KIND[=VALUE][@START[+DURATION]], such as winch-node:stall@r-3+2; may be repeated.
+    #[arg(long = "fault")]
+    faults: Vec<Fault>,
 }
 
 impl RigArgs {
@@ -83,6 +91,8 @@ impl RigArgs {
             cell_offset_n: self.cell_offset_n,
             cord_temperature_c: self.cord_temperature_c,
             cycle: self.cycle,
+            sensors: if self.all_sensors { SensorSet::Full } else { SensorSet::Basic },
+            faults: self.faults,
         }
     }
 }
@@ -148,7 +158,8 @@ fn play(performance: &Performance, dir: PathBuf, wait_s: f64) -> Result<(), CliE
     Ok(())
 }
 
-/// `reads.bin`: records of host time (i64), device (u16), kind (u8: 0 bytes, 1 time request), length (u32), payload; all
+/// `reads.bin`: records of host time (i64), device (u16), kind (u8: 0 bytes, 1 time request, 2 port gone,
+/// 3 port back), length (u32), payload; all
 /// little-endian. The payload of a time request is its token (u32).
 fn stream(performance: &Performance, out: &Path) -> Result<(), CliError> {
     let path = out.join("reads.bin");
@@ -161,6 +172,8 @@ fn stream(performance: &Performance, out: &Path) -> Result<(), CliError> {
         let (kind, payload) = match delivery.what {
             Delivered::Bytes(bytes) => (0, bytes),
             Delivered::TimeRequested { token } => (1, token.to_le_bytes().to_vec()),
+            Delivered::Down => (2, Vec::new()),
+            Delivered::Up => (3, Vec::new()),
         };
         let mut record = Vec::with_capacity(15 + payload.len());
         record.extend_from_slice(&delivery.host_ns.to_le_bytes());

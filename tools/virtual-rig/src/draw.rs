@@ -7,7 +7,16 @@ use rand_distr::{Distribution, StandardNormal, Uniform};
 /// What a stream of random numbers is for.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Purpose {
-    SensorErrors,
+    SensorErrors {
+        device: u8,
+    },
+    Gates,
+    Boot {
+        device: u8,
+    },
+    Line {
+        device: u8,
+    },
     Clock {
         device: u8,
     },
@@ -27,7 +36,10 @@ pub enum Purpose {
 impl Purpose {
     fn stream(self) -> u64 {
         match self {
-            Self::SensorErrors => 1,
+            Self::Gates => 2,
+            Self::SensorErrors { device } => 0x500 + u64::from(device),
+            Self::Boot { device } => 0x300 + u64::from(device),
+            Self::Line { device } => 0x400 + u64::from(device),
             Self::Clock { device } => 0x100 + u64::from(device),
             Self::Transport { device } => 0x200 + u64::from(device),
             Self::Cycle { cycle } => 0x1_0000_0000 + u64::from(cycle),
@@ -66,6 +78,11 @@ impl Draw {
     /// Even between `low` and `high`; `low` when there is nothing between.
     pub fn even(&mut self, low: f64, high: f64) -> f64 {
         Uniform::new(low, high).map_or(low, |range| range.sample(&mut self.0))
+    }
+
+    /// True with the given probability.
+    pub fn happens(&mut self, probability: f64) -> bool {
+        probability > 0.0 && self.even(0.0, 1.0) < probability
     }
 
     pub fn bits(&mut self) -> u64 {

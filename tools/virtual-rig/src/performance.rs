@@ -1,5 +1,8 @@
 //! One scenario worked out before it is played: the true motion and everything the truth log will say about it.
 
+use crate::device::catalogue::{self, DeviceSpec, SensorSet};
+use crate::edges::{self, Edge};
+use crate::faults::Fault;
 use crate::launcher::Launcher;
 use crate::physics::course::{Course, Happening, Instant};
 use crate::physics::launch::{self, STEP_S, Start};
@@ -24,6 +27,8 @@ pub struct Options {
     pub cord_temperature_c: Option<f64>,
     /// Trial number in a series; scenario `ageing` depends on it.
     pub cycle: u32,
+    pub sensors: SensorSet,
+    pub faults: Vec<Fault>,
 }
 
 impl Default for Options {
@@ -37,6 +42,8 @@ impl Default for Options {
             cell_offset_n: None,
             cord_temperature_c: None,
             cycle: 0,
+            sensors: SensorSet::Basic,
+            faults: Vec::new(),
         }
     }
 }
@@ -46,6 +53,8 @@ impl Default for Options {
 pub enum PrepareError {
     #[error("there is no scenario `{name}`; the rig knows: {known}")]
     NoSuchScenario { name: String, known: String },
+    #[error("a fault names device `{name}`, which is not there; the rig has {known}")]
+    NoSuchDevice { name: String, known: String },
     #[error("{what} is {found}, it must be more than {min} and at most {max}")]
     OutOfRange { what: &'static str, found: f64, min: f64, max: f64 },
 }
@@ -63,6 +72,8 @@ pub struct Performance {
     pub hold: Hold,
     pub launch: Option<Course>,
     pub outcome: &'static str,
+    pub devices: Vec<DeviceSpec>,
+    pub edges: Vec<Edge>,
     /// When the timeline is over.
     pub end_s: f64,
 }
@@ -129,8 +140,10 @@ pub fn prepare(options: &Options) -> Result<Performance, PrepareError> {
     let line_n_max = stage.winch.rows.iter().map(|row| row.line_n).fold(0.0, f64::max);
     let hold = Hold { line_n_max, ..stage.hold.unwrap_or_default() };
     let end_s = stage.winch.t_s;
-    Ok(Performance {
+    let mut performance = Performance {
         options: options.clone(),
+        devices: catalogue::devices(options.sensors, scenario.launcher.gas.is_some()),
+        edges: Vec::new(),
         trajectory: Trajectory { rows: stage.winch.rows },
         phases: stage.phases,
         instants: stage.instants,
@@ -139,7 +152,22 @@ pub fn prepare(options: &Options) -> Result<Performance, PrepareError> {
         outcome,
         end_s,
         scenario,
-    })
+    };
+    performance.edges = edges::edges(&performance.trajectory, performance.release_s(), options.seed);
+    check_faults(&performance)?;
+    Ok(performance)
+}
+
+fn check_faults(performance: &Performance) -> Result<(), PrepareError> {
+    let known = |name: &str| performance.devices.iter().any(|device| device.name == name);
+    let named = performance.options.faults.iter().filter_map(|fault| fault.device.as_deref());
+    match named.into_iter().find(|name| !known(name)) {
+        None => Ok(()),
+        Some(name) => {
+            let known = performance.devices.iter().map(|device| device.name).collect::<Vec<_>>().join(", ");
+            Err(PrepareError::NoSuchDevice { name: name.into(), known })
+        }
+    }
 }
 
 /// A scenario being worked out.

@@ -1,7 +1,8 @@
 //! From what truly happens to counts: hidden scale and zero errors, delay and bandwidth, noise, quantisation, saturation.
 
-use crate::draw::{Draw, Purpose};
-use crate::launcher::{Launcher, STANDARD_GRAVITY_MPS2};
+use crate::draw::Draw;
+use crate::faults::{FaultKind, Timed};
+use crate::launcher::Launcher;
 use crate::physics::trajectory::Row;
 use firmware_protocol::Encoding;
 use serde::Serialize;
@@ -12,9 +13,29 @@ use std::f64::consts::{PI, SQRT_2};
 pub enum Quantity {
     LineTension,
     AnchorTension,
+    LeftAnchorTension,
+    RightAnchorTension,
     Position,
     SpecificForce,
+    PayloadSpecificForce,
+    ReservoirPressure,
+    CylinderPressure,
 }
+
+impl Quantity {
+    /// The word in descriptions.
+    pub const fn word(self) -> &'static str {
+        match self {
+            Self::LineTension | Self::AnchorTension | Self::LeftAnchorTension | Self::RightAnchorTension => "force",
+            Self::Position => "position",
+            Self::SpecificForce | Self::PayloadSpecificForce => "acceleration",
+            Self::ReservoirPressure | Self::CylinderPressure => "pressure",
+        }
+    }
+}
+
+/// Share of the cords' force that the left anchor takes.
+pub const LEFT_SHARE: f64 = 0.51;
 
 /// A channel as its maker and its crew know it: `value = scale · (counts − zero_counts)`.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -37,14 +58,17 @@ pub struct Spread {
     pub scale_relative: f64,
     /// In the unit of the value.
     pub zero: f64,
+    pub zero_drift_per_s: f64,
     pub misalignment_rad: f64,
 }
 
-/// Errors of one channel, hidden from the crew: `indication = truth · (1 + scale_relative) + zero`.
+/// Errors of one channel, hidden from the crew: `indication = truth · (1 + scale_relative) + zero + zero_drift_per_s · t`
+/// (t since boot); an accelerometer is turned out of the rail's direction by `misalignment_rad`.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize)]
 pub struct Errors {
     pub scale_relative: f64,
     pub zero: f64,
+    pub zero_drift_per_s: f64,
     pub misalignment_rad: f64,
 }
 
@@ -53,6 +77,7 @@ impl Errors {
         Self {
             scale_relative: draw.normal(spread.scale_relative),
             zero: draw.normal(spread.zero),
+            zero_drift_per_s: draw.normal(spread.zero_drift_per_s),
             misalignment_rad: draw.normal(spread.misalignment_rad),
         }
     }
@@ -64,48 +89,6 @@ impl ChannelSpec {
         self.bandwidth_hz.map_or(0.0, |bandwidth_hz| SQRT_2 / (2.0 * PI * bandwidth_hz))
     }
 }
-
-const CELL: ChannelSpec = ChannelSpec {
-    name: "line",
-    quantity: Quantity::LineTension,
-    encoding: Encoding::I24,
-    scale: 0.0005,
-    zero_counts: 12_000.0,
-    counts_max: 8_388_607.0,
-    bandwidth_hz: Some(2000.0),
-    noise_rms: 0.25,
-    spread: Spread { scale_relative: 1e-3, zero: 0.5, misalignment_rad: 0.0 },
-};
-
-/// Channels of `winch-node`.
-pub const WINCH_CHANNELS: [ChannelSpec; 2] =
-    [CELL, ChannelSpec { name: "anchor", quantity: Quantity::AnchorTension, zero_counts: -8_000.0, ..CELL }];
-
-/// Channels of `shuttle-node`.
-pub const SHUTTLE_CHANNELS: [ChannelSpec; 2] = [
-    ChannelSpec {
-        name: "encoder",
-        quantity: Quantity::Position,
-        encoding: Encoding::I32,
-        scale: 1e-4,
-        zero_counts: 0.0,
-        counts_max: 2_147_483_647.0,
-        bandwidth_hz: None,
-        noise_rms: 2e-5,
-        spread: Spread { scale_relative: 5e-5, zero: 3e-4, misalignment_rad: 0.0 },
-    },
-    ChannelSpec {
-        name: "accel",
-        quantity: Quantity::SpecificForce,
-        encoding: Encoding::I16,
-        scale: STANDARD_GRAVITY_MPS2 / 800.0,
-        zero_counts: 25.0,
-        counts_max: 32_000.0,
-        bandwidth_hz: Some(2000.0),
-        noise_rms: 0.05 * STANDARD_GRAVITY_MPS2,
-        spread: Spread { scale_relative: 3e-3, zero: 0.25, misalignment_rad: 0.0087 },
-    },
-];
 
 /// Times that the filter runs faster than the channel is sampled.
 pub const OVERSAMPLING: usize = 4;
@@ -150,18 +133,33 @@ pub struct Sensor {
     filter: Option<LowPass>,
     gravity_along_mps2: f64,
     gravity_across_mps2: f64,
+    faults: Vec<Timed>,
+    /// What a standing encoder shows.
+    standing: Option<f64>,
 }
 
 impl Sensor {
-    pub fn new(spec: ChannelSpec, errors: Errors, launcher: &Launcher, seed: u64, device: u8, channel: u8) -> Self {
+    /// `noise` is drawn from for every sample.
+    pub fn new(spec: ChannelSpec, errors: Errors, launcher: &Launcher, noise: Draw) -> Self {
         Self {
             spec,
             errors,
-            noise: Draw::new(seed, Purpose::Noise { device, channel }),
+            faults: Vec::new(),
+            standing: None,
+            noise,
             filter: None,
             gravity_along_mps2: launcher.gravity_along_mps2(),
             gravity_across_mps2: launcher.gravity_mps2 * launcher.incline_rad.cos(),
         }
+    }
+
+    /// Adds the faults that concern this kind of sensor.
+    pub fn with_faults(mut self, faults: &[Timed]) -> Self {
+        let mine = |fault: &&Timed| matches!(fault.kind, FaultKind::EncoderSlip | FaultKind::EncoderDropout);
+        if self.spec.quantity == Quantity::Position {
+            self.faults = faults.iter().filter(mine).copied().collect();
+        }
+        self
     }
 
     /// Forgets the filter's past, as after a pause in sampling.
@@ -172,7 +170,7 @@ impl Sensor {
 
     /// Counts of one sample, from the rig at the sample's instant and at the `OVERSAMPLING − 1` instants before it
     /// (earliest first).
-    pub fn counts(&mut self, rows: &[Row; OVERSAMPLING]) -> i32 {
+    pub fn counts(&mut self, rows: &[Row; OVERSAMPLING], since_boot_s: f64) -> i32 {
         let mut value = self.felt(&rows[OVERSAMPLING - 1]);
         if let Some(filter) = &mut self.filter {
             let gravity = (self.gravity_along_mps2, self.gravity_across_mps2);
@@ -180,10 +178,24 @@ impl Sensor {
                 value = filter.push(felt(self.spec.quantity, row, &self.errors, gravity));
             }
         }
-        let indication =
-            value * (1.0 + self.errors.scale_relative) + self.errors.zero + self.noise.normal(self.spec.noise_rms);
+        let errors = &self.errors;
+        let zero = errors.zero + errors.zero_drift_per_s * since_boot_s;
+        let indication = value * (1.0 + errors.scale_relative) + zero + self.noise.normal(self.spec.noise_rms);
         let counts = (indication / self.spec.scale + self.spec.zero_counts).round();
+        let counts = self.glitched(counts, rows[OVERSAMPLING - 1].t_s);
         counts.clamp(-self.spec.counts_max, self.spec.counts_max) as i32
+    }
+
+    fn glitched(&mut self, counts: f64, t_s: f64) -> f64 {
+        let slipped: f64 = self
+            .faults
+            .iter()
+            .filter(|fault| fault.kind == FaultKind::EncoderSlip && t_s >= fault.from_s)
+            .map(|fault| fault.value)
+            .sum();
+        let stands = self.faults.iter().any(|fault| fault.kind == FaultKind::EncoderDropout && fault.holds_at(t_s));
+        self.standing = stands.then(|| self.standing.unwrap_or(counts + slipped));
+        self.standing.unwrap_or(counts + slipped)
     }
 
     fn felt(&self, row: &Row) -> f64 {
@@ -193,13 +205,19 @@ impl Sensor {
 
 /// What reaches the sensor before its electronics; `gravity` along and across the rail.
 fn felt(quantity: Quantity, row: &Row, errors: &Errors, gravity: (f64, f64)) -> f64 {
+    let turned = |a_mps2: f64| {
+        let (sin, cos) = errors.misalignment_rad.sin_cos();
+        (a_mps2 + gravity.0) * cos + gravity.1 * sin
+    };
     match quantity {
         Quantity::LineTension => row.line_n,
         Quantity::AnchorTension => row.anchor_n,
+        Quantity::LeftAnchorTension => LEFT_SHARE * row.anchor_n,
+        Quantity::RightAnchorTension => (1.0 - LEFT_SHARE) * row.anchor_n,
         Quantity::Position => row.x_m,
-        Quantity::SpecificForce => {
-            let (sin, cos) = errors.misalignment_rad.sin_cos();
-            (row.shuttle_a_ground_mps2 + gravity.0) * cos + gravity.1 * sin
-        }
+        Quantity::SpecificForce => turned(row.shuttle_a_ground_mps2),
+        Quantity::PayloadSpecificForce => turned(row.payload_a_ground_mps2),
+        Quantity::ReservoirPressure => row.reservoir_pa,
+        Quantity::CylinderPressure => row.cylinder_pa,
     }
 }

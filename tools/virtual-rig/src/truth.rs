@@ -2,7 +2,8 @@
 
 use crate::cfc;
 use crate::clock::DeviceClock;
-use crate::device::{BlockTruth, Device};
+use crate::device::{BLOCK_STREAM, BlockTruth, Device};
+use crate::edges::{self, Edge, GATES};
 use crate::launcher::STANDARD_GRAVITY_MPS2;
 use crate::performance::{Performance, greatest};
 use crate::physics::course::{Course, Happening, Split};
@@ -33,6 +34,9 @@ pub struct Truth {
     /// Of the launch.
     pub energy: Option<EnergyTruth>,
     pub rig: RigTruth,
+    pub faults: Vec<String>,
+    pub edges: Vec<EdgeTruth>,
+    pub gates: Vec<GateTruth>,
     pub devices: Vec<DeviceTruth>,
 }
 
@@ -138,10 +142,21 @@ pub struct RigTruth {
 pub struct DeviceTruth {
     pub name: &'static str,
     pub device_id: u64,
+    /// Of the first boot.
     pub boot_id: u32,
+    /// Of the first boot.
     pub clock: DeviceClock,
+    pub boots: Vec<BootTruth>,
     pub channels: Vec<ChannelTruth>,
     pub streams: Vec<StreamTruth>,
+}
+
+#[derive(Debug, Clone, Serialize)]
+pub struct BootTruth {
+    pub boot_id: u32,
+    pub clock: DeviceClock,
+    /// Place of this boot's first block in the stream's list.
+    pub first_block: usize,
 }
 
 #[derive(Debug, Clone, Serialize)]
@@ -159,13 +174,32 @@ pub struct StreamTruth {
     pub stream: u8,
     /// `[sequence, first index, number of samples, CRC-32C]` of every block that the port took whole.
     pub blocks: Vec<(u32, u64, u16, u32)>,
+    /// Places in `blocks` of those whose bytes the line changed.
+    pub touched: Vec<u32>,
 }
 
-/// A device and the blocks that left it.
+/// A digital input's true change.
+#[derive(Debug, Clone, Serialize)]
+pub struct EdgeTruth {
+    pub input: u8,
+    pub rising: bool,
+    pub host_ns: i64,
+}
+
+/// Where a beam gate is, and where the crew believes it is.
+#[derive(Debug, Clone, Serialize)]
+pub struct GateTruth {
+    pub input: u8,
+    pub x_m: f64,
+    pub measured_x_m: f64,
+}
+
+/// A device, the blocks that left it, and which of them the line touched.
 #[derive(Debug, Clone, Copy)]
 pub struct Played<'a> {
     pub device: &'a Device,
     pub blocks: &'a [BlockTruth],
+    pub touched: &'a [u32],
 }
 
 impl Truth {
@@ -197,6 +231,9 @@ impl Truth {
             },
             energy: performance.launch.as_ref().map(|course| energy(performance, course)),
             rig: rig(performance),
+            faults: performance.options.faults.iter().map(ToString::to_string).collect(),
+            edges: performance.edges.iter().map(|edge| edge_truth(edge, times)).collect(),
+            gates: gates(performance.options.seed),
             devices: played.iter().map(device).collect(),
         }
     }
@@ -231,6 +268,15 @@ fn events(performance: &Performance, times: Times) -> Vec<Event> {
     }
     events.sort_by(|a, b| a.t_s.total_cmp(&b.t_s));
     events
+}
+
+fn edge_truth(edge: &Edge, times: Times) -> EdgeTruth {
+    EdgeTruth { input: edge.input, rising: edge.rising, host_ns: times.host_ns(edge.t_s) }
+}
+
+fn gates(seed: u64) -> Vec<GateTruth> {
+    let places = edges::gate_places(seed);
+    GATES.iter().zip(places).map(|(&(input, measured_x_m), x_m)| GateTruth { input, x_m, measured_x_m }).collect()
 }
 
 fn launch(performance: &Performance, times: Times) -> Option<Launch> {
@@ -335,27 +381,35 @@ fn rig(performance: &Performance) -> RigTruth {
 
 fn device(played: &Played<'_>) -> DeviceTruth {
     let device = played.device;
+    let boots = device.boots.iter().map(|boot| BootTruth {
+        boot_id: boot.boot_id,
+        clock: boot.clock,
+        first_block: played
+            .blocks
+            .iter()
+            .position(|block| block.boot_id == boot.boot_id)
+            .unwrap_or(played.blocks.len()),
+    });
     let row = |block: &BlockTruth| (block.sequence, block.first_index, block.n_samples, block.crc);
+    let channels = device.sensors.iter().map(|sensor| ChannelTruth {
+        name: sensor.spec.name,
+        scale: sensor.spec.scale,
+        zero_counts: sensor.spec.zero_counts,
+        group_delay_s: sensor.spec.group_delay_s(),
+        noise_rms: sensor.spec.noise_rms,
+        errors: sensor.errors,
+    });
     DeviceTruth {
         name: device.spec.name,
-        device_id: device.spec.device_id,
-        boot_id: device.boot_id,
-        clock: device.clock,
-        channels: device
-            .sensors
-            .iter()
-            .map(|sensor| ChannelTruth {
-                name: sensor.spec.name,
-                scale: sensor.spec.scale,
-                zero_counts: sensor.spec.zero_counts,
-                group_delay_s: sensor.spec.group_delay_s(),
-                noise_rms: sensor.spec.noise_rms,
-                errors: sensor.errors,
-            })
-            .collect(),
+        device_id: device.device_id,
+        boot_id: device.boots[0].boot_id,
+        clock: device.boots[0].clock,
+        boots: boots.collect(),
+        channels: channels.collect(),
         streams: vec![StreamTruth {
-            stream: crate::device::BLOCK_STREAM,
+            stream: BLOCK_STREAM,
             blocks: played.blocks.iter().map(row).collect(),
+            touched: played.touched.to_vec(),
         }],
     }
 }

@@ -2,6 +2,9 @@
 
 mod closed_forms;
 mod cords;
+mod faults;
+mod host;
 mod performance;
+mod pty;
 mod sensors;
 mod support;

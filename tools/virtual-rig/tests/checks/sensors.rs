@@ -2,12 +2,23 @@
 
 use crate::support::{assert_near, number, reference_rows};
 use virtual_rig::cfc;
+use virtual_rig::device::catalogue::{DeviceSpec, SHUTTLE_CHANNELS, SensorSet, WINCH_CHANNELS, devices};
 use virtual_rig::device::drawn_errors;
+use virtual_rig::draw::{Draw, Purpose};
 use virtual_rig::launcher::{Launcher, STANDARD_GRAVITY_MPS2, north_pier};
 use virtual_rig::physics::trajectory::Row;
-use virtual_rig::sensor::{ChannelSpec, Errors, OVERSAMPLING, Quantity, SHUTTLE_CHANNELS, Sensor, WINCH_CHANNELS};
+use virtual_rig::sensor::{ChannelSpec, Errors, OVERSAMPLING, Quantity, Sensor};
 
 const RATE_HZ: f64 = 1e4;
+const NO_ERRORS: Errors = Errors { scale_relative: 0.0, zero: 0.0, zero_drift_per_s: 0.0, misalignment_rad: 0.0 };
+
+fn noise() -> Draw {
+    Draw::new(5, Purpose::Noise { device: 0, channel: 0 })
+}
+
+fn basic_devices() -> Vec<DeviceSpec> {
+    devices(SensorSet::Basic, false)
+}
 
 /// Mean value that `n` samples of `rig_at` give, after the errors are taken out again.
 fn inverted_mean(
@@ -17,14 +28,14 @@ fn inverted_mean(
     n: usize,
     rig_at: impl Fn(f64) -> Row,
 ) -> f64 {
-    let mut sensor = Sensor::new(*spec, *errors, launcher, 5, 0, 0);
+    let mut sensor = Sensor::new(*spec, *errors, launcher, noise());
     sensor.restart(RATE_HZ);
     let mut sum = 0.0;
     for idx in 0..n {
         let at_s = idx as f64 / RATE_HZ;
         let rows =
             std::array::from_fn(|back| rig_at(at_s - (OVERSAMPLING - 1 - back) as f64 / RATE_HZ / OVERSAMPLING as f64));
-        let indication = spec.scale * (f64::from(sensor.counts(&rows)) - spec.zero_counts);
+        let indication = spec.scale * (f64::from(sensor.counts(&rows, 0.0)) - spec.zero_counts);
         sum += (indication - errors.zero) / (1.0 + errors.scale_relative);
     }
     sum / n as f64
@@ -40,9 +51,9 @@ fn a_still_rig_is_read_back_within_noise_once_the_drawn_errors_are_known() {
     let launcher = north_pier();
     let row = Row { x_m: 1.2345, line_n: 611.3, anchor_n: 607.7, shuttle_a_ground_mps2: 30.0, ..Row::default() };
     for seed in 1..=20 {
-        let errors = drawn_errors(seed, None);
-        for (device, channels) in [WINCH_CHANNELS, SHUTTLE_CHANNELS].iter().enumerate() {
-            for (spec, errors) in channels.iter().zip(&errors[device]) {
+        for (idx, device) in basic_devices().iter().enumerate() {
+            let errors = drawn_errors(device, idx as u8, seed, None);
+            for (spec, errors) in device.channels.iter().zip(&errors) {
                 let (sin, cos) = errors.misalignment_rad.sin_cos();
                 let across_mps2 = launcher.gravity_mps2 * launcher.incline_rad.cos();
                 let truth = match spec.quantity {
@@ -62,7 +73,7 @@ fn a_still_rig_is_read_back_within_noise_once_the_drawn_errors_are_known() {
 #[test]
 fn a_ramp_is_late_by_the_stated_group_delay() {
     let (launcher, spec) = (north_pier(), WINCH_CHANNELS[0]);
-    let errors = Errors { scale_relative: 0.0, zero: 0.0, misalignment_rad: 0.0 };
+    let errors = NO_ERRORS;
     let slope_n_per_s = 1e5;
     let n = 100;
     let at = |t_s: f64| Row { line_n: slope_n_per_s * (t_s + 1.0), ..Row::default() };
@@ -77,7 +88,7 @@ fn a_ramp_is_late_by_the_stated_group_delay() {
 #[test]
 fn seeds_draw_scale_and_zero_errors_of_the_stated_spread() {
     let spread = WINCH_CHANNELS[0].spread;
-    let errors: Vec<Errors> = (1..=400).map(|seed| drawn_errors(seed, None)[0][0]).collect();
+    let errors: Vec<Errors> = (1..=400).map(|seed| drawn_errors(&basic_devices()[0], 0, seed, None)[0]).collect();
     let rms = |value: fn(&Errors) -> f64| {
         (errors.iter().map(|errors| value(errors).powi(2)).sum::<f64>() / errors.len() as f64).sqrt()
     };
@@ -88,11 +99,11 @@ fn seeds_draw_scale_and_zero_errors_of_the_stated_spread() {
 #[test]
 fn an_accelerometer_clips_at_its_range() {
     let launcher = north_pier();
-    let errors = Errors { scale_relative: 0.0, zero: 0.0, misalignment_rad: 0.0 };
+    let errors = NO_ERRORS;
     let spec = ChannelSpec { counts_max: 6.0 * 800.0, ..SHUTTLE_CHANNELS[1] };
     let hard = Row { shuttle_a_ground_mps2: 9.0 * STANDARD_GRAVITY_MPS2, ..Row::default() };
-    let mut sensor = Sensor::new(spec, errors, &launcher, 1, 1, 1);
-    assert_eq!(sensor.counts(&[hard; OVERSAMPLING]), 4800);
+    let mut sensor = Sensor::new(spec, errors, &launcher, noise());
+    assert_eq!(sensor.counts(&[hard; OVERSAMPLING], 0.0), 4800);
 }
 
 /// `tests/reference/cfc180_10khz_signal.csv`, column `y_hold` (SAE J211-1 / ISO 6487; equals SciPy's filtfilt).
