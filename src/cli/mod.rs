@@ -7,13 +7,16 @@ mod check;
 mod daemon;
 mod feed_place;
 mod mark;
+mod measured;
 mod recover;
+mod rehearse;
 mod report;
 mod screen;
 mod seal_child;
 mod show;
 mod trials;
 mod verify;
+mod virtual_rig;
 mod watch;
 
 use std::error::Error;
@@ -42,6 +45,7 @@ struct CommandLine {
 enum Command {
     Check(check::Args),
     Daemon(daemon::Args),
+    Rehearse(rehearse::Args),
     Recover(recover::Args),
     Trials(trials::Args),
     Show(show::Args),
@@ -51,6 +55,8 @@ enum Command {
     Report(report::Args),
     #[command(hide = true)]
     SealChild(seal_child::Args),
+    #[command(hide = true)]
+    VirtualRig(virtual_rig::Args),
 }
 
 impl Command {
@@ -58,6 +64,7 @@ impl Command {
         match self {
             Self::Check(args) => check::run(args, screen),
             Self::Daemon(args) => daemon::run(args, screen),
+            Self::Rehearse(args) => rehearse::run(args, screen),
             Self::Recover(args) => recover::run(args, screen),
             Self::Trials(args) => trials::run(args, screen),
             Self::Show(args) => show::run(args, screen),
@@ -66,6 +73,7 @@ impl Command {
             Self::Mark(args) => mark::run(args, screen),
             Self::Report(args) => report::run(args, screen),
             Self::SealChild(args) => seal_child::run(args, screen),
+            Self::VirtualRig(args) => virtual_rig::run(args),
         }
     }
 }
