@@ -8,8 +8,10 @@ mod daemon;
 mod feed_place;
 mod mark;
 mod measured;
+mod read;
 mod recover;
 mod rehearse;
+mod replay;
 mod report;
 mod screen;
 mod seal_child;
@@ -53,6 +55,8 @@ enum Command {
     Watch(watch::Args),
     Mark(mark::Args),
     Report(report::Args),
+    Read(read::Args),
+    Replay(replay::Args),
     #[command(hide = true)]
     SealChild(seal_child::Args),
     #[command(hide = true)]
@@ -72,6 +76,8 @@ impl Command {
             Self::Watch(args) => watch::run(args, screen),
             Self::Mark(args) => mark::run(args, screen),
             Self::Report(args) => report::run(args, screen),
+            Self::Read(args) => read::run(args, screen),
+            Self::Replay(args) => replay::run(args, screen),
             Self::SealChild(args) => seal_child::run(args, screen),
             Self::VirtualRig(args) => virtual_rig::run(args),
         }
