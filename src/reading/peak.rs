@@ -36,6 +36,30 @@ pub(super) fn report(sensors: &Sensors<'_>, track: &Track, stroke_s: (f64, f64),
     }
 }
 
+/// What the smoother learnt of the accelerometer, so that a filtered peak can be had again from the samples alone.
+pub(super) fn report_sensor(track: &Track, book: &mut Book) {
+    if !track.has_specific_force {
+        return;
+    }
+    let against = if track.has_position { "the encoder and the standing shuttle" } else { "the standing shuttle" };
+    let bias = Budget::default().with("smoother", track.u_bias_mps2);
+    book.result(
+        "accelerometer_bias",
+        track.bias_mps2,
+        "m/s^2",
+        bias,
+        format!("indication too high by this, from {against}; incline errors show here"),
+    );
+    let scale = Budget::default().with("smoother", track.u_scale);
+    book.result(
+        "accelerometer_scale_error",
+        track.scale,
+        "1",
+        scale,
+        format!("indication too large by this share, from {against}"),
+    );
+}
+
 /// Extremes of a filtered stretch, as indicated: bias and scale still in it.
 pub(super) struct Filtered {
     pub greatest_mps2: f64,

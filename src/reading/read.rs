@@ -142,10 +142,6 @@ fn stroke_rows(
         motion_absent(&reason, book);
         return None;
     };
-    eprintln!(
-        "SCALE {} u {} bias {} u {} consistency {} noise {}",
-        track.scale, track.u_scale, track.bias_mps2, track.u_bias_mps2, track.consistency, track.noise_mps2
-    );
     if track.consistency > MISFIT {
         book.findings.push(format!(
             "encoder and accelerometer disagree: innovations {:.1} times as large as their noise allows; the motion's uncertainty is widened by that",
@@ -155,6 +151,7 @@ fn stroke_rows(
     match launch::find(track, release.time_s, rig) {
         Ok(separation) => {
             launch::report(&separation, track, sensors, rig, book);
+            peak::report_sensor(track, book);
             peak::report(sensors, track, (release.time_s, separation.time_s), rig, book);
             Some(separation)
         }
