@@ -1,0 +1,103 @@
+//! Bench section `seal`: time and peak memory of sealing four channels at 10 kHz, against h5py writing the same arrays
+//! with the same chunks and filters: single thread both, best of three each, in the same run.
+//!
+//! Sealing also decodes the journal twice, reads the trial and proves the file by reading it back. Processor time is
+//! compared, since sealing runs niced and other work would count against it alone; wall time is printed beside it.
+
+#![allow(clippy::unwrap_used, reason = "a bench that cannot go on stops here")]
+
+#[allow(dead_code, reason = "the journal writer is shared with tests, which use more of it")]
+#[path = "../../tests/support/journal.rs"]
+mod journal_file;
+
+use std::path::{Path, PathBuf};
+use std::process::Command;
+use std::time::Instant;
+
+use journal_file::{JOURNAL_ID, TRIAL_ID, nominal};
+
+/// Ten times the nominal slow phases: about four and a half minutes.
+const PACE: f64 = 10.0;
+const N_RUNS: usize = 3;
+
+/// Prints the best processor time of writing every large array of the file again, in seconds.
+const H5PY: &str = r"
+import sys, time, os, h5py
+arrays = []
+def take(name, o):
+    if isinstance(o, h5py.Dataset) and o.chunks and o.dtype.kind in 'iuf':
+        arrays.append((name, o[:], o.chunks))
+with h5py.File(sys.argv[1]) as f: f.visititems(take)
+best = float('inf')
+for _ in range(int(sys.argv[3])):
+    begun = time.process_time()
+    with h5py.File(sys.argv[2], 'w') as f:
+        for name, values, chunks in arrays:
+            f.create_dataset(name, data=values, chunks=chunks, maxshape=(None,), shuffle=True, compression='gzip', compression_opts=1, fletcher32=True)
+    with open(sys.argv[2], 'rb') as f: os.fsync(f.fileno())
+    best = min(best, time.process_time() - begun)
+print(best)
+";
+
+fn main() {
+    let dir = tempfile::tempdir().unwrap();
+    nominal(dir.path(), PACE, true);
+    let mut best = Run { wall_s: f64::INFINITY, processor_s: f64::INFINITY, peak_mib: 0.0 };
+    let target = dir.path().join(format!("trial-{TRIAL_ID}.h5"));
+    for _ in 0..N_RUNS {
+        let _ = std::fs::remove_file(&target);
+        let run = seal_once(dir.path());
+        best.wall_s = best.wall_s.min(run.wall_s);
+        best.processor_s = best.processor_s.min(run.processor_s);
+        best.peak_mib = best.peak_mib.max(run.peak_mib);
+    }
+    let h5py_s = h5py_seconds(&target, &dir.path().join("control.h5"));
+    let (_, range) = journal_file::opened(dir.path());
+    let trial_s = (range.last_host_ns - range.first_host_ns) as f64 * 1e-9;
+    let mib = |path: &Path| std::fs::metadata(path).unwrap().len() as f64 / f64::from(1 << 20);
+    let journal = dir.path().join("journal").join(tautrail::journal::segment_name(JOURNAL_ID, 1));
+    println!("figure seal_trial_length value={trial_s:.1} unit=s reference=- ratio=- target=-");
+    let Run { wall_s, processor_s, peak_mib } = best;
+    let ratio = processor_s / h5py_s;
+    println!(
+        "figure seal_processor_time value={processor_s:.2} unit=s reference={h5py_s:.2} ratio={ratio:.2} target=1"
+    );
+    println!("figure seal_wall_time_niced value={wall_s:.2} unit=s reference=- ratio=- target=-");
+    println!("figure seal_peak_memory value={peak_mib:.0} unit=MiB reference=- ratio=- target=-");
+    let (file, journal) = (mib(&target), mib(&journal));
+    println!(
+        "figure seal_file_size value={file:.1} unit=MiB reference={journal:.1} ratio={:.2} target=4",
+        file / journal
+    );
+}
+
+struct Run {
+    wall_s: f64,
+    processor_s: f64,
+    /// Greatest resident size.
+    peak_mib: f64,
+}
+
+/// Seals in a child as the daemon does.
+fn seal_once(dir: &Path) -> Run {
+    let program = std::env::current_exe().unwrap().ancestors().nth(2).map(|target| target.join("tautrail")).unwrap();
+    let begun = Instant::now();
+    // Python hands out the resource usage of one child, which the standard library of Rust does not.
+    let script = "import os,sys,resource\npid=os.fork()\nif pid==0: os.execv(sys.argv[1],sys.argv[1:])\n_,status,usage=os.wait4(pid,0)\nprint(os.waitstatus_to_exitcode(status),usage.ru_maxrss,usage.ru_utime+usage.ru_stime)";
+    let args = ["seal-child", dir.to_str().unwrap(), JOURNAL_ID, TRIAL_ID];
+    let output = Command::new("python3").arg("-c").arg(script).arg(program).args(args).output().unwrap();
+    let wall_s = begun.elapsed().as_secs_f64();
+    let text = String::from_utf8(output.stdout).unwrap();
+    let last: Vec<f64> = text.lines().last().unwrap().split(' ').map(|word| word.parse().unwrap()).collect();
+    assert!(last[0] == 0.0, "sealing failed: {text}");
+    Run { wall_s, processor_s: last[2], peak_mib: last[1] / 1024.0 }
+}
+
+fn h5py_seconds(trial: &Path, control: &Path) -> f64 {
+    let setup = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/oracles/setup");
+    let python = PathBuf::from(String::from_utf8(Command::new(setup).output().unwrap().stdout).unwrap().trim());
+    let output =
+        Command::new(python).args(["-c", H5PY]).args([trial, control]).arg(N_RUNS.to_string()).output().unwrap();
+    assert!(output.status.success(), "{}", String::from_utf8_lossy(&output.stderr));
+    String::from_utf8(output.stdout).unwrap().trim().parse().unwrap()
+}
