@@ -56,7 +56,7 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     let rig = rig::load(&args.rig)?;
     let options = Options {
         dir: args.dir.clone(),
-        socket: args.socket.clone().unwrap_or_else(|| args.dir.join("feed.sock")),
+        socket: args.socket.clone().unwrap_or_else(|| args.dir.join(tautrail::feed::SOCKET_NAME)),
         wait_for_ports: args.wait_for_ports,
         budget_bytes: args.journal_budget << 20,
         seal_patience: Duration::from_secs(args.seal_wait),

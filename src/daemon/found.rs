@@ -169,3 +169,6 @@ fn resumed(reader: &JournalReader, survey: &Survey, open_trial: Option<TrialRang
         open_trial,
     }
 }
+
+#[cfg(test)]
+mod tests;

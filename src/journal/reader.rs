@@ -391,3 +391,6 @@ fn open_record(source: &mut impl Read) -> io::Result<Result<Opened, String>> {
         _ => Err(format!("the first record is of kind {kind}, not a segment's opening")),
     })
 }
+
+#[cfg(test)]
+mod tests;

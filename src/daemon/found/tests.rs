@@ -1,0 +1,105 @@
+use super::*;
+use crate::journal::{Body, Journal, Origin, Settings, StagedDisk, TrialClose, TrialOpen};
+use crate::link::DeviceIdx;
+
+const ARCHIVE: &str = "archive";
+const JOURNALS: &str = "archive/journal";
+const TRIAL: &str = "000004-fedcba";
+const HERE: Present<'static> = Present { kernel_boot_id: "boot", rig_text: "rig" };
+
+fn journal(disk: &StagedDisk, id: &str) -> Journal {
+    let origin = Origin {
+        journal_id: id.into(),
+        program_version: "0".into(),
+        kernel_boot_id: "boot".into(),
+        rig_text: "rig".into(),
+        devices: Vec::new(),
+    };
+    Journal::begin(Arc::new(disk.clone()), Path::new(JOURNALS), origin, Start::fresh(), Settings::default(), 0).unwrap()
+}
+
+fn open_trial(journal: &mut Journal) {
+    journal.append(1, DeviceIdx(0), &Body::Heartbeat);
+    let open = TrialOpen {
+        trial_id: TRIAL.into(),
+        first_seq: 1,
+        first_host_ns: 1,
+        reason: "tension".into(),
+        person: String::new(),
+        continues: None,
+    };
+    journal.append(2, DeviceIdx(0), &Body::TrialOpen(open));
+    journal.append(3, DeviceIdx(0), &Body::Heartbeat);
+    journal.commit(3);
+}
+
+/// A disk on which a daemon was killed with a trial open.
+fn left_open() -> StagedDisk {
+    let disk = StagedDisk::default();
+    open_trial(&mut journal(&disk, "000007-abc123"));
+    disk.after_kill()
+}
+
+fn found(disk: &StagedDisk, present: Present<'_>, sealed: bool) -> Found {
+    let disk: Arc<dyn Disk> = Arc::new(disk.clone());
+    look(&disk, Path::new(ARCHIVE), Path::new(JOURNALS), present, &|_| sealed).unwrap()
+}
+
+#[test]
+fn a_killed_daemon_s_trial_goes_on_in_the_same_journal() {
+    let found = found(&left_open(), HERE, false);
+    let resumed = found.resumed.unwrap();
+    assert_eq!(resumed.journal_id, "000007-abc123");
+    assert_eq!((resumed.start.segment, resumed.start.seq, resumed.last_host_ns), (2, 4, 3));
+    assert_eq!(resumed.open_trial.unwrap().trial_id, TRIAL);
+    assert_eq!((found.unsealed, found.next_trial_number), (vec![], 5));
+}
+
+#[test]
+fn after_a_restart_of_the_machine_or_with_another_rig_file_the_trial_is_sealed_and_a_new_journal_begins() {
+    for present in [Present { kernel_boot_id: "other", ..HERE }, Present { rig_text: "other", ..HERE }] {
+        let found = found(&left_open(), present, false);
+        assert_eq!(found.resumed, None);
+        assert_eq!(found.next_journal_number, 8);
+        let unsealed = Unsealed { journal_id: "000007-abc123".into(), trial_id: TRIAL.into(), first_seq: 1 };
+        assert_eq!(found.unsealed, [unsealed]);
+        assert_eq!(found.unfinished.as_deref(), Some(TRIAL));
+        assert_eq!(found.segments, [], "its segments stay until it is sealed");
+    }
+}
+
+#[test]
+fn a_trial_that_recover_sealed_does_not_go_on() {
+    let found = found(&left_open(), HERE, true);
+    assert_eq!(found.resumed.unwrap().open_trial, None);
+    assert_eq!((found.unsealed, found.unfinished.as_deref()), (vec![], Some(TRIAL)));
+}
+
+#[test]
+fn a_closed_trial_without_a_file_is_sealed_by_the_next_start() {
+    let disk = StagedDisk::default();
+    let mut journal = journal(&disk, "000007-abc123");
+    open_trial(&mut journal);
+    let close = TrialClose { trial_id: TRIAL.into(), reason: "rest".into(), person: String::new() };
+    journal.append(4, DeviceIdx(0), &Body::TrialClose(close));
+    journal.commit(4);
+    let found = found(&disk.after_kill(), HERE, false);
+    assert_eq!(found.unsealed.len(), 1);
+    assert_eq!(found.resumed.unwrap().open_trial, None);
+}
+
+#[test]
+fn an_empty_archive_begins_at_one() {
+    let found = found(&StagedDisk::default(), HERE, false);
+    assert_eq!((found.next_journal_number, found.next_trial_number, found.resumed), (1, 1, None));
+}
+
+#[test]
+fn a_segment_made_ahead_and_never_begun_is_cleared_away() {
+    let disk = left_open();
+    let path = Path::new(JOURNALS).join("000007-abc123-000002.tjl");
+    disk.create_new(&path).unwrap();
+    let found = found(&disk, HERE, false);
+    assert_eq!(found.never_begun, [path]);
+    assert_eq!(found.resumed.unwrap().start.segment, 3, "its number is not used again");
+}
