@@ -1,0 +1,9 @@
+//! The real daemon, as a process of its own, against the virtual rig on ptys: what it must never lose, and how it says no.
+
+#![allow(clippy::expect_used, clippy::unwrap_used, reason = "a test that cannot go on stops here")]
+
+mod cable;
+mod crash;
+mod refusals;
+mod stage;
+mod whole_trial;

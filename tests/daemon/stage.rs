@@ -1,0 +1,240 @@
+//! A stage for one test: a directory, the virtual rig playing in it, the daemon as a child process.
+
+use std::collections::BTreeMap;
+use std::io::{BufRead, BufReader};
+use std::path::{Path, PathBuf};
+use std::process::{Child, Command, Output, Stdio};
+use std::sync::atomic::{AtomicBool, Ordering};
+use std::sync::mpsc::{Receiver, channel};
+use std::sync::{Arc, OnceLock};
+use std::thread::JoinHandle;
+use std::time::{Duration, Instant};
+
+use serde::Deserialize;
+use tautrail::trial::{BlockRow, TrialFile};
+use virtual_rig::performance::{Options, Performance, prepare};
+use virtual_rig::play::pty::{PtySettings, play};
+
+pub const DEVICES: [&str; 2] = ["winch-node", "shuttle-node"];
+/// Longer than anything waited for here, also on a busy machine.
+const PATIENCE: Duration = Duration::from_secs(60);
+
+/// One line of the daemon's `--json` output.
+#[derive(Debug, Clone, Deserialize)]
+pub struct Told {
+    pub host_ns: i64,
+    pub kind: String,
+    pub text: String,
+}
+
+/// The virtual rig, playing until it is stopped.
+pub struct Playing {
+    stop: Arc<AtomicBool>,
+    thread: JoinHandle<()>,
+}
+
+pub struct Stage {
+    pub dir: tempfile::TempDir,
+}
+
+/// A running daemon. Dropped, it is killed.
+pub struct Daemon {
+    pub child: Child,
+    lines: Receiver<Told>,
+}
+
+/// What the rig really sent.
+#[derive(Debug, Deserialize)]
+pub struct Truth {
+    pub events: Vec<TruthEvent>,
+    pub devices: Vec<DeviceTruth>,
+}
+
+#[derive(Debug, Deserialize)]
+pub struct TruthEvent {
+    pub kind: String,
+    pub host_ns: i64,
+}
+
+#[derive(Debug, Deserialize)]
+pub struct DeviceTruth {
+    pub name: String,
+    pub streams: Vec<StreamTruth>,
+}
+
+#[derive(Debug, Deserialize)]
+pub struct StreamTruth {
+    /// Sequence, first index, samples, checksum of the frame.
+    pub blocks: Vec<(u32, u64, u32, u32)>,
+}
+
+/// Worked out once: the physics of the nominal launch, its slow phases in three tenths of their time.
+fn performance() -> &'static Performance {
+    static PERFORMANCE: OnceLock<Performance> = OnceLock::new();
+    PERFORMANCE.get_or_init(|| prepare(&Options { pace: 0.3, ..Options::default() }).expect("the nominal scenario"))
+}
+
+impl Stage {
+    pub fn new() -> Self {
+        let dir = tempfile::tempdir().expect("a directory");
+        let rig = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
+        std::fs::copy(rig, dir.path().join("rig.toml")).expect("the rig file");
+        Self { dir }
+    }
+
+    pub fn path(&self, name: &str) -> PathBuf {
+        self.dir.path().join(name)
+    }
+
+    /// Starts the rig with its ports below `dir`, and waits until they are there.
+    pub fn play(&self, dir: &str) -> Playing {
+        let stop = Arc::new(AtomicBool::new(false));
+        let settings = PtySettings { dir: self.path(dir), wait_for_start: PATIENCE, stop: Arc::clone(&stop) };
+        let ready = settings.dir.join("ports").join(DEVICES[1]);
+        performance();
+        let thread = std::thread::spawn(move || {
+            play(performance(), &settings).expect("the rig plays");
+        });
+        wait_until("the rig's ports", || ready.exists());
+        Playing { stop, thread }
+    }
+
+    pub fn daemon_command(&self) -> Command {
+        let mut command = Command::new(env!("CARGO_BIN_EXE_tautrail"));
+        command.arg("--json").arg("daemon").arg(self.path("rig.toml")).arg("--dir").arg(self.path("trials"));
+        command
+    }
+
+    pub fn start_daemon(&self) -> Daemon {
+        self.start_daemon_with(&[])
+    }
+
+    pub fn start_daemon_with(&self, more: &[&str]) -> Daemon {
+        let mut child = self
+            .daemon_command()
+            .args(more)
+            .stdout(Stdio::piped())
+            .stderr(Stdio::inherit())
+            .spawn()
+            .expect("the daemon starts");
+        let stdout = BufReader::new(child.stdout.take().expect("its output"));
+        let (told, lines) = channel();
+        std::thread::spawn(move || {
+            for line in stdout.lines().map_while(Result::ok) {
+                let parsed = serde_json::from_str(&line).unwrap_or_else(|error| panic!("{error} in {line}"));
+                if told.send(parsed).is_err() {
+                    return;
+                }
+            }
+        });
+        Daemon { child, lines }
+    }
+
+    /// The only trial file there is.
+    pub fn trial(&self) -> TrialFile {
+        let listed = std::fs::read_dir(self.path("trials")).expect("the archive");
+        let mut files: Vec<PathBuf> = listed
+            .map(|entry| entry.expect("an entry").path())
+            .filter(|path| path.extension().is_some_and(|extension| extension == "h5"))
+            .collect();
+        assert_eq!(files.len(), 1, "one trial file: {files:?}");
+        TrialFile::open(&files.remove(0)).expect("the trial file opens")
+    }
+
+    pub fn run(&self, args: &[&str]) -> Output {
+        let archive = self.path("trials");
+        Command::new(env!("CARGO_BIN_EXE_tautrail")).args(args).arg(archive).output().expect("tautrail runs")
+    }
+
+    /// Ends the rig and reads what it says it sent.
+    pub fn truth(&self, playing: Playing, dir: &str) -> Truth {
+        playing.stop.store(true, Ordering::Relaxed);
+        playing.thread.join().expect("the rig ends");
+        let text = std::fs::read_to_string(self.path(dir).join("truth.json")).expect("the truth log");
+        serde_json::from_str(&text).expect("the truth log is as its README says")
+    }
+}
+
+impl Daemon {
+    /// Waits for an event of this kind whose text holds `part`.
+    #[track_caller]
+    pub fn wait_for(&self, kind: &str, part: &str) -> Told {
+        let deadline = Instant::now() + PATIENCE;
+        let mut heard = Vec::new();
+        loop {
+            match self.lines.recv_timeout(deadline.saturating_duration_since(Instant::now())) {
+                Ok(told) if told.kind == kind && told.text.contains(part) => return told,
+                Ok(told) => heard.push(told),
+                Err(_) => panic!("no {kind} event with {part:?}; heard {heard:#?}"),
+            }
+        }
+    }
+
+    pub fn signal(&self, signal: i32) {
+        let pid = i32::try_from(self.child.id()).expect("a process id");
+        // SAFETY: sends a signal to a child that was not waited for yet, so its id is still its own.
+        assert_eq!(unsafe { libc::kill(pid, signal) }, 0);
+    }
+
+    /// SIGTERM, and the exit code; what it said meanwhile can still be waited for.
+    pub fn stop(&mut self) -> Option<i32> {
+        self.signal(libc::SIGTERM);
+        self.child.wait().expect("the daemon ends").code()
+    }
+
+    pub fn kill(mut self) -> i64 {
+        self.signal(libc::SIGKILL);
+        let killed_ns = monotonic_ns();
+        self.child.wait().expect("the daemon ends");
+        killed_ns
+    }
+}
+
+impl Drop for Daemon {
+    fn drop(&mut self) {
+        // Ended already, most likely.
+        let _ = self.child.kill();
+        let _ = self.child.wait();
+    }
+}
+
+impl Truth {
+    pub fn host_ns(&self, kind: &str) -> i64 {
+        self.events.iter().find(|event| event.kind == kind).unwrap_or_else(|| panic!("{kind} in the truth")).host_ns
+    }
+
+    /// By first index.
+    fn blocks(&self, device: &str) -> BTreeMap<u64, (u32, u32, u32)> {
+        let device = self.devices.iter().find(|truth| truth.name == device).expect("the device");
+        let blocks = device.streams.iter().flat_map(|stream| &stream.blocks);
+        blocks.map(|&(sequence, first_index, n, crc)| (first_index, (sequence, n, crc))).collect()
+    }
+
+    /// Every block of the file is one the rig sent, checksum and all; gives the holes between them, in samples.
+    #[track_caller]
+    pub fn holes(&self, device: &str, blocks: &[BlockRow]) -> Vec<(BlockRow, u64)> {
+        let sent = self.blocks(device);
+        for block in blocks {
+            let found = (block.sequence, block.n_samples, block.crc);
+            assert_eq!(sent.get(&block.first_index), Some(&found), "{device}, block {}", block.first_index);
+        }
+        let hole = |pair: &[BlockRow]| {
+            let next = pair[0].first_index + u64::from(pair[0].n_samples);
+            (pair[1].first_index != next).then(|| (pair[0], pair[1].first_index - next))
+        };
+        blocks.windows(2).filter_map(hole).collect()
+    }
+}
+
+pub fn monotonic_ns() -> i64 {
+    virtual_rig::play::pty::monotonic_ns()
+}
+
+#[track_caller]
+pub fn wait_until(what: &str, condition: impl Fn() -> bool) {
+    let deadline = Instant::now() + PATIENCE;
+    while !condition() {
+        assert!(Instant::now() < deadline, "{what} did not come");
+        std::thread::sleep(Duration::from_millis(20));
+    }
+}
