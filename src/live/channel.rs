@@ -13,6 +13,7 @@ pub const SILENT_NS: i64 = 500_000_000;
 pub struct ChannelMonitor {
     pub name: String,
     pub role: Role,
+    pub device: String,
     calibration: Coefficients,
     newest: Option<(i64, f64)>,
     extremes: Option<(f64, f64)>,
@@ -24,6 +25,7 @@ impl ChannelMonitor {
         Self {
             name: channel.name.clone(),
             role: channel.role,
+            device: channel.device.clone(),
             calibration: channel.calibration.clone(),
             newest: None,
             extremes: None,

@@ -14,6 +14,8 @@ mod instrument;
 mod launch;
 mod phase;
 mod plan;
+#[cfg(test)]
+mod rehearsed;
 mod rules;
 mod state;
 #[cfg(test)]

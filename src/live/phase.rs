@@ -14,8 +14,10 @@ const MOVING_MPS: f64 = 0.05;
 const STANDING_MPS: f64 = 0.02;
 /// Forward speed that no winch gives: the shuttle is free.
 const FREE_MPS: f64 = 2.0;
-/// Forward speed that confirms a release the line has shown.
+/// Forward speed and way that confirm a release the line has shown. A hook that slips and holds again gives the speed
+/// for a moment, but not the way.
 const RELEASED_MPS: f64 = 0.3;
+const RELEASED_M: f64 = 0.03;
 
 const TAUT_FOR_NS: i64 = 100 * MS;
 const SLACK_FOR_NS: i64 = 500 * MS;
@@ -107,6 +109,7 @@ pub struct Tracker {
     dwells: Dwells,
     line: Reference,
     anchor: Reference,
+    place: Reference,
     released_not_moving: bool,
 }
 
@@ -121,6 +124,7 @@ impl Tracker {
             dwells: Dwells::default(),
             line: Reference::default(),
             anchor: Reference::default(),
+            place: Reference::default(),
             released_not_moving: false,
         }
     }
@@ -183,6 +187,7 @@ impl Tracker {
         if !matches!(self.phase, Phase::WinchBack | Phase::Hold | Phase::LetDown) {
             self.line = Reference::default();
             self.anchor = Reference::default();
+            self.place = Reference::default();
             self.released_not_moving = false;
             return false;
         }
@@ -191,11 +196,14 @@ impl Tracker {
         if !line_fell {
             follow(&mut self.line, seen.host_ns, seen.line_n);
             follow(&mut self.anchor, seen.host_ns, seen.anchor_n);
+            follow(&mut self.place, seen.host_ns, seen.x_m);
         }
         let speed_mps = seen.fast_speed_mps.unwrap_or(0.0);
         let alone_ns = self.dwells.dropped.lasts(line_fell, seen.host_ns, UNCONFIRMED_FOR_NS);
         self.released_not_moving = alone_ns;
-        let confirmed = speed_mps > RELEASED_MPS || (anchor_fell && seen.fast_speed_mps.is_none());
+        let way_m = self.place.value().zip(seen.x_m).map_or(0.0, |(from_m, x_m)| x_m - from_m);
+        let confirmed =
+            (speed_mps > RELEASED_MPS && way_m > RELEASED_M) || (anchor_fell && seen.fast_speed_mps.is_none());
         speed_mps > FREE_MPS || (line_fell && confirmed) || (seen.line_n.is_none() && anchor_fell && confirmed)
     }
 
@@ -204,7 +212,7 @@ impl Tracker {
             Phase::Unknown => self.out_of_unknown(stood),
             Phase::Slack if stood.taut => Phase::WinchBack,
             Phase::Slack => Phase::Slack,
-            Phase::WinchBack | Phase::Hold | Phase::LetDown => self.while_drawn(stood),
+            Phase::WinchBack | Phase::Hold | Phase::LetDown => self.while_drawn(seen, stood),
             Phase::Launch => self.while_launching(seen, stood),
             Phase::RunOut => self.while_running_out(seen, stood),
             Phase::Rest => self.while_at_rest(seen, stood),
@@ -223,14 +231,16 @@ impl Tracker {
         }
     }
 
-    fn while_drawn(&self, stood: &Stood) -> Phase {
+    fn while_drawn(&self, seen: &Seen, stood: &Stood) -> Phase {
+        // After a let-down friction may keep the shuttle short of the zero mark, the cords a little loaded: no hold.
+        let spent = self.phase == Phase::LetDown && seen.line_n.is_some_and(|line_n| line_n < self.slack_tension_n);
         if stood.slack {
             Phase::Slack
         } else if stood.back {
             Phase::WinchBack
         } else if stood.forward {
             Phase::LetDown
-        } else if stood.standing {
+        } else if stood.standing && !spent {
             Phase::Hold
         } else {
             self.phase

@@ -3,6 +3,9 @@
 //! The cords' pull F(d) at draw d is the launch model's. The line that holds the shuttle carries F less the weight's part
 //! along the rail, m g sin θ, and friction either way (statics); while winching back friction adds to it. Stored energy is
 //! the pull's work over the draw, E(d) = ∫₀^d F ds.
+//!
+//! The band is as wide at every draw as its share of the planned pull at full draw: the rig file holds the unloading
+//! curve, and cords being loaded run far above it early in the winch-back, where that says nothing about the plan.
 
 use crate::model::{LaunchSetup, ModelError};
 use crate::rig::Rig;
@@ -33,7 +36,7 @@ pub struct Plan {
     n_band_steps: usize,
     weight_along_rail_n: f64,
     friction_n: f64,
-    band_relative: f64,
+    band_n: f64,
 }
 
 impl Plan {
@@ -57,19 +60,19 @@ impl Plan {
             n_band_steps: (BAND_SHARE * N_STEPS_TO_PLAN as f64) as usize,
             weight_along_rail_n: setup.hold_weight_n(),
             friction_n: setup.losses.friction_n,
-            band_relative: rig.plan.tension_band_relative,
+            band_n: rig.plan.tension_band_relative * pull_n(N_STEPS_TO_PLAN),
         })
     }
 
     /// The line's expected tension at `draw_m`; never below zero, because a line does not push.
     pub fn expected(&self, draw_m: f64) -> Expected {
         let pull_n = self.pull_n(draw_m);
-        let at = |share: f64, friction_n: f64| (share * pull_n - self.weight_along_rail_n + friction_n).max(0.0);
+        let at = |more_n: f64, friction_n: f64| (pull_n + more_n - self.weight_along_rail_n + friction_n).max(0.0);
         Expected {
             draw_m,
-            low_n: at(1.0 - self.band_relative, -self.friction_n),
-            planned_n: at(1.0, self.friction_n),
-            high_n: at(1.0 + self.band_relative, self.friction_n),
+            low_n: at(-self.band_n, -self.friction_n),
+            planned_n: at(0.0, self.friction_n),
+            high_n: at(self.band_n, self.friction_n),
         }
     }
 

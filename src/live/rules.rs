@@ -161,7 +161,9 @@ fn channel_silent(live: &mut Live, idx: usize, host_ns: i64) -> Option<Happening
         return live.board.clear(cause, host_ns);
     }
     let silent = channel.age_ns(host_ns).is_some_and(|age_ns| age_ns >= CHANNEL_SILENT_NS);
-    if !silent || live.board.is_active(cause) {
+    // A lost link has its own sentence and explains the silence of all its channels.
+    let link_lost = live.devices.iter().any(|device| device.name == channel.device && !device.is_up());
+    if !silent || link_lost || live.board.is_active(cause) {
         return None;
     }
     let role = channel.role.word().replace('_', " ");

@@ -128,7 +128,7 @@ pub struct Plan {
     pub launch_speed_max_mps: f64,
     /// Below this the release line counts as slack.
     pub slack_tension_n: f64,
-    /// Half-width of the band around the planned tension against draw, relative.
+    /// Half-width of the band around the planned tension, at every draw, as a share of the planned pull at full draw.
     pub tension_band_relative: f64,
 }
 

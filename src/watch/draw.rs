@@ -207,16 +207,17 @@ fn footer_line(view: &ViewState) -> Line<'static> {
 }
 
 fn draw_help(frame: &mut Frame, area: Rect) {
-    let text = "q or Ctrl-C   leave the display; the daemon goes on recording\n\
-                a             acknowledge the alarms, in the name given at the start\n\
-                h             this help\n\n\
-                The chart shows tension over the rail: shaded the plan's band, dashed the limit, dots the greatest\n\
-                tension seen at each place since the winch-back began, a diamond where it is now.\n\n\
-                ~ before a number: older than 0.2 s. SILENT or UNKNOWN in its place: older than 1 s.\n\n\
-                The display advises and records only. It is no safety device: interlocks, exclusion zones,\n\
-                local codes and licensed practice decide. No key starts or stops machinery.";
-    let height = 14.min(area.height);
-    let width = 104.min(area.width);
+    let text = "q or Ctrl-C  leave the display; the daemon goes on recording\n\
+                a            acknowledge the alarms, in the name given at the start\n\
+                h            this help\n\n\
+                Chart: tension over the rail. Shaded the plan's band, dashed the limit, dots\n\
+                the greatest tension at each place since the winch-back, a diamond now.\n\
+                ~ before a number: older than 0.2 s. A word in its place: older than 1 s.\n\n\
+                The display advises and records only. It is no safety device: interlocks,\n\
+                exclusion zones, local codes and licensed practice decide.\n\
+                No key starts or stops machinery.";
+    let height = 13.min(area.height);
+    let width = 80.min(area.width);
     // The cords' line stays in view.
     let top = area.top() + 1.min(area.height);
     let place = Rect::new(area.left(), top, width, height.min(area.bottom().saturating_sub(top)));

@@ -148,11 +148,10 @@ fn cords_loaded_and_a_pulled_cable_read_unknown_never_slack() {
     assert_eq!(run.live.phase(), Phase::Unknown);
     assert_eq!(run.closed(), None);
     let raised = run.raised();
-    for part in
-        ["winch-node: link lost", "cords loaded and line and anchor silent", "line (release line tension) is silent"]
-    {
+    for part in ["winch-node: link lost", "cords loaded and line and anchor silent"] {
         assert!(raised.iter().any(|sentence| sentence.contains(part)), "{part} in {raised:?}");
     }
+    assert_eq!(raised.len(), 2, "the lost link explains its silent channels: {raised:?}");
     assert!(run.live.close_by_hand(ZERO_NS + 27 * S, "winch").is_err());
 }
 
@@ -241,4 +240,17 @@ fn link_loss_during_the_launch_does_not_make_a_trial_disappear() {
     run.play(&scene, 18.0, 27.0, |_| true);
     assert_eq!(run.live.phase(), Phase::Rest);
     assert_eq!(run.closed(), Some("launched and at rest"));
+}
+
+#[test]
+fn a_device_that_falls_silent_on_a_living_link_is_told_channel_by_channel() {
+    let mut run = Run::new();
+    let scene = scene(End::Launch, 1.0);
+    run.play(&scene, 0.0, 13.0, |_| true);
+    run.play(&scene, 13.0, 14.5, |device| device == 0);
+    let raised = run.raised();
+    for part in ["encoder (shuttle position) is silent", "accel (shuttle specific force) is silent"] {
+        assert!(raised.iter().any(|sentence| sentence.contains(part)), "{part} in {raised:?}");
+    }
+    assert!(matches!(run.live.cords(), CordsNow::Loaded { .. }));
 }
