@@ -26,6 +26,15 @@ pub enum Dimension {
     Angle,
     /// A plain share, written as "8 %".
     Ratio,
+    /// Absolute or gauge is said beside it, never by the unit.
+    Pressure,
+    Volume,
+    /// Force per length.
+    Stiffness,
+    /// Force per speed.
+    Damping,
+    /// Kept in degrees Celsius, names end in `_c`.
+    Temperature,
 }
 
 impl Dimension {
@@ -42,6 +51,11 @@ impl Dimension {
             Self::Force => "a force",
             Self::Angle => "an angle",
             Self::Ratio => "a ratio",
+            Self::Pressure => "a pressure",
+            Self::Volume => "a volume",
+            Self::Stiffness => "a stiffness",
+            Self::Damping => "a damping constant",
+            Self::Temperature => "a temperature",
         }
     }
 
@@ -144,6 +158,22 @@ const UNITS: &[Unit] = &[
     unit("rad", Dimension::Angle, 1.0),
     unit("mrad", Dimension::Angle, 1e-3),
     unit("%", Dimension::Ratio, 1e-2),
+    unit("Pa", Dimension::Pressure, 1.0),
+    unit("hPa", Dimension::Pressure, 1e2),
+    unit("kPa", Dimension::Pressure, 1e3),
+    unit("MPa", Dimension::Pressure, 1e6),
+    unit("bar", Dimension::Pressure, 1e5),
+    unit("psi", Dimension::Pressure, 4.448_221_615_260_5 / (0.0254 * 0.0254)),
+    unit("m3", Dimension::Volume, 1.0),
+    unit("m^3", Dimension::Volume, 1.0),
+    unit("m³", Dimension::Volume, 1.0),
+    unit("L", Dimension::Volume, 1e-3),
+    unit("cm3", Dimension::Volume, 1e-6),
+    unit("N/m", Dimension::Stiffness, 1.0),
+    unit("N/mm", Dimension::Stiffness, 1e3),
+    unit("N s/m", Dimension::Damping, 1.0),
+    unit("degC", Dimension::Temperature, 1.0),
+    unit("°C", Dimension::Temperature, 1.0),
 ];
 
 const fn unit(symbol: &'static str, dimension: Dimension, to_si: f64) -> Unit {

@@ -209,6 +209,12 @@ impl CordSet {
         self.held_gap_n *= factor;
     }
 
+    /// Multiplies the tension at each elongation by a factor of its own.
+    pub fn reshape(&mut self, factor: impl Fn(f64) -> f64) {
+        self.unloading = self.unloading.reshaped(&factor);
+        self.loading = self.loading.as_ref().map(|loading| loading.reshaped(&factor));
+    }
+
     /// Pull of the set at its anchor by the strain wave, tabulated against the speed at which its end came in.
     pub fn anchor_pull_after_speed(&self, held: f64) -> Vec<(f64, f64)> {
         const N_PARTS: u32 = 200;

@@ -92,6 +92,13 @@ impl Curve {
         Self { pieces: pieces.collect(), knots: self.knots.clone() }
     }
 
+    /// A curve through the same places with every value multiplied by a factor of its own.
+    pub fn reshaped(&self, factor: impl Fn(f64) -> f64) -> Self {
+        let points: Vec<(f64, f64)> =
+            self.pieces.iter().map(|piece| (piece.start, piece.coefficients[0] * factor(piece.start))).collect();
+        Self::from_hermite(&points, &monotone_slopes(&points))
+    }
+
     /// Where the pieces join.
     pub fn knots(&self) -> &[f64] {
         &self.knots

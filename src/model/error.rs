@@ -3,6 +3,7 @@
 use thiserror::Error;
 
 use super::curve::CurveError;
+use crate::estimation::NotPositive;
 
 #[derive(Debug, Clone, PartialEq, Error)]
 #[non_exhaustive]
@@ -27,6 +28,10 @@ pub enum ModelError {
     NoPullAtHold { tension_n: f64, x_m: f64 },
     #[error("{n_sets} cord sets, {n_tables} tables: at most {max_sets} and {max_tables} can be computed together")]
     TooManySources { n_sets: usize, n_tables: usize, max_sets: usize, max_tables: usize },
+    #[error("correlation with {name:?}: no uncertain input has that name, there are: {known}")]
+    NoSuchInput { name: String, known: String },
+    #[error(transparent)]
+    Correlations(NotPositive),
     #[error("the integration stopped at t = {t_s:.6} s, x = {x_m:.4} m: the steps became too small for its tolerance")]
     StepTooSmall { t_s: f64, x_m: f64 },
 }

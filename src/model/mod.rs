@@ -5,34 +5,45 @@
 //! model is described in `cord.rs`, the equations in `system.rs`.
 
 mod along;
+mod bands;
 mod check;
 mod cord;
 mod curve;
 mod energy;
 mod error;
 mod event;
+mod forecast;
 mod from_rig;
 mod gas;
+mod inputs;
 mod integrate;
+mod interval;
 mod march;
 mod phases;
+mod propagation;
+mod quantities;
+mod relaxation;
 mod released_now;
 mod run;
 mod setup;
-mod surroundings;
 mod system;
 mod targets;
 #[cfg(test)]
 mod tests;
 
+pub use bands::{Band, Bands};
 pub use cord::{Branch, CordSet};
 pub use curve::{Curve, CurveError, ValueSlope};
 pub use energy::EnergySplit;
 pub use error::ModelError;
 pub use event::{Cost, Event, EventKind};
+pub use forecast::{Forecast, ForecastOptions, Forecasted, Probabilities, forecast};
 pub use from_rig::{hold_pull_band_n, planned_line_tension_n, stored_energy_j};
 pub use gas::{GasPath, GasSource};
-pub use released_now::{Interval, ReleaseForecast, released_now};
-pub use run::{Answers, LaunchRun, Sample, Separation, launch_answers, simulate};
+pub use inputs::{Input, Inputs, Known, Moved};
+pub use interval::Interval;
+pub use propagation::{Propagated, first_order};
+pub use quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, Quantity};
+pub use released_now::{ReleaseForecast, released_now};
+pub use run::{Answers, LaunchRun, Sample, Separation, answers_to_rest, launch_answers, simulate};
 pub use setup::{ACCURATE, Brake, FAST, ForceTable, LaunchSetup, RailLosses, Recoil};
-pub use surroundings::{AirError, local_gravity_mps2, moist_air_density_kg_per_m3, standard_air_density_kg_per_m3};

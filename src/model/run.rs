@@ -116,23 +116,35 @@ pub fn simulate(setup: &LaunchSetup) -> Result<LaunchRun, ModelError> {
     Ok(run)
 }
 
-/// Computes a launch's answers only: the cheap way, for thousands.
+/// Computes a launch's answers up to separation only: the cheap way, for thousands.
 ///
 /// # Errors
 /// As [`simulate`].
 pub fn launch_answers(setup: &LaunchSetup) -> Result<Answers, ModelError> {
+    quick(setup, false)
+}
+
+/// Computes a launch's answers, run-out included, without its course.
+///
+/// # Errors
+/// As [`simulate`].
+pub fn answers_to_rest(setup: &LaunchSetup) -> Result<Answers, ModelError> {
+    quick(setup, true)
+}
+
+fn quick(setup: &LaunchSetup, to_rest: bool) -> Result<Answers, ModelError> {
     setup.check()?;
     let layout = Layout::of(setup, false);
     match layout.n_used {
-        0..=4 => quick::<4>(setup, layout),
-        5..=8 => quick::<8>(setup, layout),
-        _ => quick::<ROOM>(setup, layout),
+        0..=4 => quick_in::<4>(setup, layout, to_rest),
+        5..=8 => quick_in::<8>(setup, layout, to_rest),
+        _ => quick_in::<ROOM>(setup, layout, to_rest),
     }
 }
 
-fn quick<const N: usize>(setup: &LaunchSetup, layout: Layout) -> Result<Answers, ModelError> {
+fn quick_in<const N: usize>(setup: &LaunchSetup, layout: Layout, to_rest: bool) -> Result<Answers, ModelError> {
     let mut march = March::<N>::released(setup, layout, false)?;
-    march.run_to_separation()?;
+    if to_rest { march.run() } else { march.run_to_separation() }?;
     Ok(answers(setup, &march.events, march.peak, march.arrest))
 }
 

@@ -4,7 +4,7 @@
 //! uncertainty, its 95 % interval and the budget behind it; what cannot be had is absent with a reason.
 
 mod arrest;
-mod cfc;
+
 mod energy;
 mod launch;
 mod motion;
@@ -22,6 +22,6 @@ mod smoother;
 pub(crate) mod synthetic;
 mod tension;
 
-pub use cfc::{CfcError, CfcFilter, StartUp};
+pub use crate::estimation::{CfcError, CfcFilter, StartUp};
 pub use read::read;
 pub use result::{Absent, BudgetTerm, EnergyAudit, Instant, Motion, Outcome, Reading, ResultRow};

@@ -8,11 +8,11 @@ use crate::calibration::Signal;
 use crate::rig::{Rig, Role};
 use crate::units::STANDARD_GRAVITY_MPS2;
 
-use super::cfc::{CfcFilter, StartUp};
 use super::motion::Track;
 use super::rows::{Book, Budget};
 use super::sensors::Sensors;
 use super::series::{longest_gap_s, rate_hz, span};
+use crate::estimation::{CfcFilter, StartUp};
 
 pub(super) const CLASS: u32 = 60;
 /// How far the filter looks beyond the stroke, so that its ends do not reach in.

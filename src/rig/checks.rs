@@ -66,7 +66,11 @@ fn planned_tension(rig: &Rig, findings: &mut Findings<'_>) {
         let message = format!(
             "stretches the cords by {needed:.1} %, the curve ends at {known:.1} %: measure further or draw less"
         );
-        findings.error("plan.draw", message);
+        if rig.details.cords.extrapolate {
+            findings.caution("plan.draw", format!("{message} (taken, as cords.extrapolate asks for it)"));
+        } else {
+            findings.error("plan.draw", message);
+        }
         return;
     }
     let tension_n = launcher_tension_n(cords, elongation);

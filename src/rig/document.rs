@@ -240,6 +240,88 @@ impl<'d, 't> Section<'d, 't> {
         Given { value, standard_uncertainty: uncertainty.unwrap_or(0.0) }
     }
 
+    /// A quantity and its standard uncertainty that may both be left out; without uncertainty it is taken as exact.
+    pub(super) fn optional_given(
+        &mut self,
+        findings: &mut Findings<'_>,
+        [key, uncertainty_key]: [&'static str; 2],
+        unit: &str,
+        allowed: RangeInclusive<f64>,
+    ) -> Option<Given> {
+        let largest = 0.0..=allowed.end().abs();
+        let value = self.optional_quantity(findings, key, unit, allowed);
+        let uncertainty = self.optional_quantity(findings, uncertainty_key, unit, largest);
+        if value.is_none() && uncertainty.is_some() {
+            findings.error(&self.key(uncertainty_key), format!("stands without {key}"));
+        }
+        value.map(|value| Given { value, standard_uncertainty: uncertainty.unwrap_or(0.0) })
+    }
+
+    /// A number without unit that may be left out.
+    pub(super) fn optional_number(
+        &mut self,
+        findings: &mut Findings<'_>,
+        key: &'static str,
+        allowed: RangeInclusive<f64>,
+    ) -> Option<f64> {
+        self.optional(findings, key)?;
+        Some(self.number(findings, key, allowed))
+    }
+
+    /// A pressure that says "gauge" or "absolute", as absolute Pa; gauge is over `ambient_pa`.
+    pub(super) fn pressure_pa(
+        &mut self,
+        findings: &mut Findings<'_>,
+        key: &'static str,
+        ambient_pa: Option<f64>,
+    ) -> f64 {
+        let text = self.text(findings, key);
+        if text.is_empty() {
+            return f64::NAN;
+        }
+        let (number, over_pa) = match (text.strip_suffix("absolute"), text.strip_suffix("gauge"), ambient_pa) {
+            (Some(number), _, _) => (number, 0.0),
+            (None, Some(number), Some(ambient_pa)) => (number, ambient_pa),
+            (None, Some(_), None) => {
+                findings.error(&self.key(key), "is the reference that gauge pressures start from: give it as absolute");
+                return f64::NAN;
+            }
+            (None, None, _) => {
+                let message = format!("{text:?} must say which pressure it is: \"6 bar gauge\" or \"7 bar absolute\"");
+                findings.error(&self.key(key), message);
+                return f64::NAN;
+            }
+        };
+        match units::parse(number, units::Dimension::Pressure) {
+            Ok(pa) if pa + over_pa > 0.0 && pa < 1e9 => pa + over_pa,
+            Ok(pa) => {
+                findings.error(&self.key(key), format!("is {pa} Pa, which no vessel holds"));
+                f64::NAN
+            }
+            Err(error) => {
+                findings.error(&self.key(key), error.to_string());
+                f64::NAN
+            }
+        }
+    }
+
+    /// The entries of a list of tables that may be left out.
+    pub(super) fn optional_sections(&mut self, findings: &mut Findings<'_>, key: &'static str) -> Vec<Section<'d, 't>> {
+        if self.optional(findings, key).is_some() { self.sections(findings, key) } else { Vec::new() }
+    }
+
+    /// A list of texts that may be left out.
+    pub(super) fn texts(&mut self, findings: &mut Findings<'_>, key: &'static str) -> Vec<String> {
+        let Some(value) = self.optional(findings, key) else { return Vec::new() };
+        let entries = value.get_ref().as_array().map(|entries| {
+            entries.iter().map(|entry| entry.get_ref().as_str().map(str::to_owned)).collect::<Option<Vec<_>>>()
+        });
+        entries.flatten().unwrap_or_else(|| {
+            findings.error(&self.key(key), "must be a list of texts in quotes");
+            Vec::new()
+        })
+    }
+
     /// Reports every key that was never asked for.
     pub(super) fn finish(self, findings: &mut Findings<'_>) {
         for (key, _) in self.table.into_iter().flat_map(DeTable::iter) {

@@ -4,9 +4,10 @@ use std::path::{Path, PathBuf};
 
 use toml::de::DeTable;
 
+use super::details::{CordDetails, Details, SettingUncertainties};
 use super::document::{Findings, Section, start_of};
 use super::finding::{Finding, RigError, Severity};
-use super::{Rig, channels, checks, sections};
+use super::{Cords, Rig, channels, checks, detail_sections, sections};
 
 /// What a rig file's text amounts to.
 #[derive(Debug, Clone)]
@@ -38,23 +39,53 @@ pub fn check(text: &str) -> Checked {
 fn whole(text: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Rig {
     let name = channels::plain_name(&mut root, findings);
     let invented = root.optional_flag(findings, "invented");
-    let [site, rail, shuttle, payload, cords, losses, limits, plan] =
-        ["site", "rail", "shuttle", "payload", "cords", "losses", "limits", "plan"]
-            .map(|key| root.section(findings, key));
+    let [site, rail, shuttle, payload, losses, limits, plan] =
+        ["site", "rail", "shuttle", "payload", "losses", "limits", "plan"].map(|key| root.section(findings, key));
+    let gas = detail_sections::gas(&mut root, findings);
+    let force_tables = detail_sections::force_tables(&mut root, findings);
+    let pulled_otherwise = !gas.is_empty() || !force_tables.is_empty();
+    let cords =
+        if pulled_otherwise { root.optional_section(findings, "cords") } else { Some(root.section(findings, "cords")) };
+    let (cords, cord_details) =
+        cords.map_or_else(|| (Cords::none(), CordDetails::default()), |table| sections::cords(table, findings));
     let devices = channels::devices(&mut root, findings);
     let channels = channels::channels(&mut root, findings, &devices);
     checks::channels(&channels, &devices, findings);
+    let (site, of_site) = sections::site(site, findings);
+    let (rail, brake, uncoupling_x_m) = sections::rail(rail, findings);
+    let (payload, payload_details) = sections::payload(payload, findings);
+    let (losses, more_losses) = sections::losses(losses, findings);
+    let (plan, of_plan) = sections::plan(plan, findings);
+    let details = Details {
+        cords: cord_details,
+        more_cords: detail_sections::more_cords(&mut root, findings),
+        gas,
+        force_tables,
+        losses: more_losses,
+        rail_support: detail_sections::rail_support(&mut root, findings),
+        payload: payload_details,
+        brake,
+        uncoupling_x_m,
+        settings: SettingUncertainties {
+            head_wind_mps: of_site.head_wind_mps,
+            air_density_relative: of_site.air_density_relative,
+            ..of_plan
+        },
+        correlations: detail_sections::correlations(&mut root, findings),
+        stages: detail_sections::stages(&mut root, findings),
+    };
     let rig = Rig {
         name,
         invented,
-        site: sections::site(site, findings),
-        rail: sections::rail(rail, findings),
+        site,
+        rail,
         shuttle: sections::shuttle(shuttle, findings),
-        payload: sections::payload(payload, findings),
-        cords: sections::cords(cords, findings),
-        losses: sections::losses(losses, findings),
+        payload,
+        cords,
+        losses,
+        details,
         limits: sections::limits(limits, findings),
-        plan: sections::plan(plan, findings),
+        plan,
         devices,
         channels: channels.calibrated,
         uncalibrated: channels.uncalibrated,

@@ -2,26 +2,68 @@
 //!
 //! The ranges only catch slips of the pen and the unit (a 7 mm rail, a 60 deg incline); they are no engineering limits.
 
+use super::details::{BrakeDetails, CordDetails, MoreLosses, PayloadDetails, SettingUncertainties};
 use super::document::{Findings, Section, quantity_of};
-use super::{CordPoint, Cords, Given, Limits, Losses, Payload, Plan, Rail, Shuttle, Site};
+use super::surroundings::{moist_air_density_kg_per_m3, standard_air_density_kg_per_m3};
+use super::{CordPoint, Cords, Given, Limits, Losses, Payload, Plan, Rail, Shuttle, Site, detail_sections};
 use crate::units::STANDARD_GRAVITY_MPS2;
 
 const MASS_KG: std::ops::RangeInclusive<f64> = 0.01..=500.0;
 const FORCE_N: std::ops::RangeInclusive<f64> = 0.0..=200_000.0;
 const DRAG_AREA_M2: std::ops::RangeInclusive<f64> = 0.0..=5.0;
 
-pub(super) fn site(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Site {
+pub(super) fn site(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Site, SettingUncertainties) {
+    let altitude_m = table.quantity(findings, "altitude", "m", -450.0..=6000.0);
     let site = Site {
         latitude_rad: table.quantity(findings, "latitude", "deg", -90.0..=90.0),
-        altitude_m: table.quantity(findings, "altitude", "m", -450.0..=6000.0),
-        air_density_kg_per_m3: table.quantity(findings, "air_density", "kg/m3", 0.5..=1.6),
+        altitude_m,
+        air_density_kg_per_m3: air_density(&mut table, findings, altitude_m),
         head_wind_mps: table.quantity(findings, "head_wind", "m/s", -40.0..=40.0),
     };
+    let uncertainties = SettingUncertainties {
+        head_wind_mps: table.optional_quantity(findings, "head_wind_uncertainty", "m/s", 0.0..=20.0).unwrap_or(0.0),
+        air_density_relative: table
+            .optional_quantity(findings, "air_density_uncertainty", "%", 0.0..=20.0)
+            .unwrap_or(0.0),
+        ..SettingUncertainties::default()
+    };
     table.finish(findings);
-    site
+    (site, uncertainties)
 }
 
-pub(super) fn rail(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Rail {
+/// The density itself, or from temperature, pressure and humidity, or that of the standard atmosphere with a caution.
+fn air_density(table: &mut Section<'_, '_>, findings: &mut Findings<'_>, altitude_m: f64) -> f64 {
+    let given = table.optional_quantity(findings, "air_density", "kg/m3", 0.5..=1.6);
+    let temperature_c = table.optional_quantity(findings, "air_temperature", "degC", -20.0..=45.0);
+    let humidity = table.optional_quantity(findings, "air_humidity", "%", 0.0..=100.0);
+    let pressure_pa = if table.optional(findings, "air_pressure").is_some() {
+        Some(table.pressure_pa(findings, "air_pressure", None))
+    } else {
+        None
+    };
+    if let Some(density) = given {
+        return density;
+    }
+    let density = match (temperature_c, pressure_pa, humidity) {
+        (Some(temperature_c), Some(pressure_pa), Some(humidity)) => {
+            moist_air_density_kg_per_m3(temperature_c, pressure_pa, humidity)
+        }
+        _ => {
+            let message = "neither air_density nor air_temperature, air_pressure and air_humidity are given: \
+                           the standard atmosphere at this altitude is taken";
+            findings.caution("site", message);
+            standard_air_density_kg_per_m3(altitude_m)
+        }
+    };
+    density.unwrap_or_else(|error| {
+        if ![temperature_c, pressure_pa, humidity, Some(altitude_m)].into_iter().flatten().any(f64::is_nan) {
+            findings.error("site", error.to_string());
+        }
+        f64::NAN
+    })
+}
+
+pub(super) fn rail(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Rail, BrakeDetails, Option<f64>) {
     let rail = Rail {
         length_m: table.quantity(findings, "length", "m", 0.2..=100.0),
         incline_rad: table.quantity(findings, "incline", "deg", -10.0..=45.0),
@@ -29,8 +71,10 @@ pub(super) fn rail(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> R
         brake_x_m: table.quantity(findings, "brake_from", "m", 0.05..=100.0),
         brake_force_n: table.quantity(findings, "brake_force", "N", FORCE_N),
     };
+    let brake = detail_sections::brake_details(&mut table, findings);
+    let uncoupling_x_m = table.optional_quantity(findings, "uncoupling_at", "m", 0.05..=100.0);
     table.finish(findings);
-    rail
+    (rail, brake, uncoupling_x_m)
 }
 
 pub(super) fn shuttle(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Shuttle {
@@ -39,44 +83,47 @@ pub(super) fn shuttle(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -
     shuttle
 }
 
-pub(super) fn payload(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Payload {
+pub(super) fn payload(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Payload, PayloadDetails) {
     let payload = Payload {
         name: table.text(findings, "name"),
         mass_kg: table.given(findings, ["mass", "mass_uncertainty"], "kg", MASS_KG),
         drag_area_m2: table.given(findings, ["drag_area", "drag_area_uncertainty"], "m2", DRAG_AREA_M2),
     };
+    let details = detail_sections::payload_details(&mut table, findings);
     table.finish(findings);
-    payload
+    (payload, details)
 }
 
-pub(super) fn cords(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Cords {
+pub(super) fn cords(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Cords, CordDetails) {
     let count = table.number(findings, "count", 1.0..=200.0);
     if count.fract() > 0.0 {
-        findings.error("cords.count", format!("is {count}, cords come in whole numbers"));
+        findings.error(&table.key("count"), format!("is {count}, cords come in whole numbers"));
     }
     let cords = Cords {
         count: count as u32,
         free_length_m: table.quantity(findings, "free_length", "m", 0.05..=100.0),
         mass_kg: table.quantity(findings, "mass", "kg", 0.001..=50.0),
         travel_ratio: table.number(findings, "travel_ratio", 0.05..=20.0),
-        curve: curve(&mut table, findings),
+        curve: curve(&mut table, findings, "curve"),
         force_relative_uncertainty: table.quantity(findings, "force_uncertainty", "%", 0.0..=50.0),
     };
+    let details = detail_sections::cord_details(&mut table, findings);
     table.finish(findings);
-    cords
+    (cords, details)
 }
 
 /// Points of one cord, checked to begin at (0, 0) and to rise; none if they do not, so that nothing is built on them.
-fn curve(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<CordPoint> {
+pub(super) fn curve(table: &mut Section<'_, '_>, findings: &mut Findings<'_>, name: &'static str) -> Vec<CordPoint> {
+    let path = table.key(name);
     let mut points: Vec<CordPoint> = Vec::new();
     let mut in_order = true;
-    for (index, mut entry) in table.sections(findings, "curve").into_iter().enumerate() {
+    for (index, mut entry) in table.sections(findings, name).into_iter().enumerate() {
         let point = CordPoint {
             elongation: entry.quantity(findings, "elongation", "%", 0.0..=1000.0),
             tension_n: entry.quantity(findings, "tension", "N", FORCE_N),
         };
         entry.finish(findings);
-        let key = format!("cords.curve[{index}]");
+        let key = format!("{path}[{index}]");
         let wrong = disorder(points.last(), &point);
         if let Some(message) = wrong {
             findings.error(&key, message);
@@ -85,7 +132,7 @@ fn curve(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<CordPo
         points.push(point);
     }
     if points.len() == 1 {
-        findings.error("cords.curve", "has 1 point, at least 2 are needed");
+        findings.error(&path, "has 1 point, at least 2 are needed");
     }
     if in_order { points } else { Vec::new() }
 }
@@ -108,13 +155,14 @@ fn disorder(before: Option<&CordPoint>, point: &CordPoint) -> Option<String> {
     }
 }
 
-pub(super) fn losses(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Losses {
+pub(super) fn losses(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Losses, MoreLosses) {
     let losses = Losses {
         friction_n: table.given(findings, ["friction", "friction_uncertainty"], "N", FORCE_N),
         shuttle_drag_area_m2: shuttle_drag_area(&mut table, findings),
     };
+    let more = detail_sections::more_losses(&mut table, findings);
     table.finish(findings);
-    losses
+    (losses, more)
 }
 
 fn shuttle_drag_area(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Given {
@@ -131,7 +179,7 @@ pub(super) fn limits(mut table: Section<'_, '_>, findings: &mut Findings<'_>) ->
     limits
 }
 
-pub(super) fn plan(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Plan {
+pub(super) fn plan(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Plan, SettingUncertainties) {
     let plan = Plan {
         draw_m: table.quantity(findings, "draw", "m", 0.01..=100.0),
         launch_speed_min_mps: table.quantity(findings, "launch_speed_min", "m/s", 0.0..=150.0),
@@ -139,8 +187,14 @@ pub(super) fn plan(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> P
         slack_tension_n: table.quantity(findings, "slack_tension", "N", 0.1..=10_000.0),
         tension_band_relative: table.quantity(findings, "tension_band", "%", 0.1..=50.0),
     };
+    let settings = SettingUncertainties {
+        draw_m: table.optional_quantity(findings, "draw_uncertainty", "mm", 0.0..=500.0).unwrap_or(0.0),
+        winch_s: table.optional_quantity(findings, "winch_time", "s", 0.0..=3600.0).unwrap_or(0.0),
+        hold_s: table.optional_quantity(findings, "hold_time", "s", 0.0..=1e6).unwrap_or(0.0),
+        ..SettingUncertainties::default()
+    };
     table.finish(findings);
-    plan
+    (plan, settings)
 }
 
 /// Σ of coefficients over counts, each with the unit of what is measured: `["0 N", "0.238 mN"]`.

@@ -5,6 +5,8 @@
 
 use std::f64::consts::PI;
 
+use super::details::Details;
+
 /// A value and its standard uncertainty, both in the unit of the field's name.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Given {
@@ -30,6 +32,8 @@ pub struct Rig {
     pub payload: Payload,
     pub cords: Cords,
     pub losses: Losses,
+    /// What the file says beyond the simplest launcher.
+    pub details: Details,
     pub limits: Limits,
     pub plan: Plan,
     pub devices: Vec<Device>,
@@ -224,6 +228,20 @@ pub struct Coefficients {
     pub zero_uncertainty: f64,
     /// Relative standard uncertainty of the scale.
     pub scale_relative_uncertainty: f64,
+}
+
+impl Cords {
+    /// A launcher that is pulled by something else.
+    pub const fn none() -> Self {
+        Self {
+            count: 0,
+            free_length_m: 1.0,
+            mass_kg: 0.0,
+            travel_ratio: 1.0,
+            curve: Vec::new(),
+            force_relative_uncertainty: 0.0,
+        }
+    }
 }
 
 impl Rig {

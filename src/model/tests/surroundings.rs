@@ -1,7 +1,7 @@
 //! Gravity and air against tests/reference/{normal_gravity,isa_density,cipm2007_density}.csv.
 
-use super::super::{local_gravity_mps2, moist_air_density_kg_per_m3, standard_air_density_kg_per_m3};
 use super::{assert_close, reference};
+use crate::rig::{local_gravity_mps2, moist_air_density_kg_per_m3, standard_air_density_kg_per_m3};
 
 #[test]
 fn gravity_agrees_with_the_ellipsoid_of_grs80() {

@@ -4,9 +4,11 @@ use std::collections::BTreeSet;
 
 use toml::{Table, Value};
 
-use super::{NORTH_PIER, check};
+use super::check;
 
 const PAGE: &str = include_str!("../RIG-FILE.md");
+/// An invented rig that uses every key.
+const EVERY_KEY: &str = include_str!("../../../tools/rehearsal/every-key.toml");
 
 /// Key and range of every row of the page's tables of keys.
 fn documented() -> Vec<(&'static str, &'static str)> {
@@ -18,9 +20,9 @@ fn documented() -> Vec<(&'static str, &'static str)> {
     PAGE.lines().filter_map(row).collect()
 }
 
-/// The rehearsal's rig file with the first entry at `path` replaced by what `change` makes of it.
+/// The file of every key with the first entry at `path` replaced by what `change` makes of it.
 fn changed(path: &str, change: impl FnOnce(&mut Table, &str)) -> String {
-    let mut table: Table = NORTH_PIER.parse().expect("it is TOML");
+    let mut table: Table = EVERY_KEY.parse().expect("it is TOML");
     let (parents, last) = path.rsplit_once('.').unwrap_or(("", path));
     let mut at = &mut table;
     for part in parents.split('.').filter(|part| !part.is_empty()) {
@@ -48,13 +50,48 @@ fn known_in(path: &str) -> Vec<String> {
 }
 
 #[test]
+fn the_file_of_every_key_is_understood_without_a_finding() {
+    assert_eq!(check(EVERY_KEY).findings, []);
+}
+
+#[test]
 fn the_page_has_every_key_and_no_other() {
-    let tables = ["site", "rail", "shuttle", "payload", "cords", "losses", "limits", "plan", "device", "channel"];
-    let deeper = ["cords.curve", "channel.calibration"];
-    let mut known: BTreeSet<String> = known_in("").into_iter().filter(|key| !tables.contains(&key.as_str())).collect();
+    let tables = [
+        "site",
+        "rail",
+        "rail_support",
+        "shuttle",
+        "payload",
+        "cords",
+        "gas",
+        "force_table",
+        "losses",
+        "limits",
+        "plan",
+        "correlation",
+        "stage",
+        "device",
+        "channel",
+    ];
+    let deeper = [
+        "cords.curve",
+        "cords.loading_curve",
+        "cords.relaxation",
+        "payload.thrust",
+        "losses.along_x",
+        "gas.valve",
+        "force_table.points",
+        "channel.calibration",
+    ];
+    let more_cords = "more_cords.zero_mark".to_owned();
+    let mut known: BTreeSet<String> =
+        known_in("").into_iter().filter(|key| !tables.contains(&key.as_str()) && key != "more_cords").collect();
     for path in tables.iter().chain(&deeper) {
         known.extend(known_in(path));
     }
+    known.insert(more_cords.clone());
+    let as_cords = known_in("cords").into_iter().map(|key| format!("more_{key}"));
+    assert_eq!(known_in("more_cords").into_iter().collect::<BTreeSet<_>>(), as_cords.chain([more_cords]).collect());
     let documented: BTreeSet<String> = documented().into_iter().map(|(key, _)| key.to_owned()).collect();
     assert_eq!(documented, known);
 }
@@ -67,7 +104,7 @@ fn every_range_on_the_page_is_the_one_in_force() {
         let (number, unit) = upper.split_once(' ').unwrap_or((upper, ""));
         let beyond = number.parse::<f64>().expect(range).abs() * 1.5 + 1.0;
         let text = changed(key, |table, key| {
-            let old = table.get(key).expect("the rehearsal's file has every key");
+            let old = table.get(key).expect("the file has every key");
             let new = match old.as_str().and_then(|text| text.split_once(' ')) {
                 Some((_, old_unit)) => {
                     Value::String(format!("{beyond} {}", if unit.is_empty() { old_unit } else { unit }))
@@ -100,6 +137,9 @@ fn the_page_lists_every_unit_that_is_understood() {
         ("force", Dimension::Force),
         ("angle", Dimension::Angle),
         ("ratio", Dimension::Ratio),
+        ("volume", Dimension::Volume),
+        ("stiffness", Dimension::Stiffness),
+        ("temperature", Dimension::Temperature),
     ];
     for (word, dimension) in rows {
         let row = PAGE.lines().find(|line| line.starts_with(&format!("| {word} | "))).expect(word);

@@ -1,4 +1,4 @@
-//! Local gravity and air density.
+//! Local gravity and air density, from published formulas.
 
 use thiserror::Error;
 

@@ -1,0 +1,172 @@
+//! What a configuration would do, as a distribution: Monte Carlo (JCGM 101:2008) beside first-order propagation (JCGM
+//! 100:2008), probabilities of window and limits, what each input contributes.
+//!
+//! Every draw has its own stream of random numbers from the seed, so the result does not depend on the number of threads.
+
+use super::bands::{Bands, bands};
+use super::energy::EnergySplit;
+use super::error::ModelError;
+use super::inputs::{Inputs, Known};
+use super::interval::Interval;
+use super::propagation::{Propagated, first_order};
+use super::quantities::{LAUNCH_SPEED, LINE_TENSION, N_QUANTITIES, PEAK_G, QUANTITIES, Quantity, cfc_ratio, evaluate};
+use super::run::{LaunchRun, simulate};
+use super::setup::{FAST, LaunchSetup};
+use crate::estimation::{Distribution, Random};
+use crate::rig::Rig;
+
+/// How to make a forecast.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct ForecastOptions {
+    pub known: Known,
+    pub draws: u32,
+    pub seed: u64,
+    pub threads: usize,
+}
+
+/// One quantity, both ways.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Forecasted {
+    pub quantity: Quantity,
+    /// With every input at its best value; NaN where the launch has no such number.
+    pub best: f64,
+    pub monte_carlo: Distribution,
+    pub first_order: Interval,
+    /// Change for one standard uncertainty of each input.
+    pub shares: Vec<f64>,
+}
+
+/// Shares of the draws; each a probability.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Probabilities {
+    pub speed_below_window: f64,
+    pub speed_in_window: f64,
+    pub speed_above_window: f64,
+    pub peak_g_over_limit: f64,
+    pub tension_over_limit: f64,
+    /// In the window and under both limits.
+    pub all_met: f64,
+    /// The payload does not leave: the pull does not move the shuttle, or it stays on.
+    pub no_launch: f64,
+    /// The shuttle reaches the end stop.
+    pub end_stop: f64,
+}
+
+#[derive(Debug, Clone)]
+pub struct Forecast {
+    pub quantities: Vec<Forecasted>,
+    pub probabilities: Probabilities,
+    pub inputs: Inputs,
+    /// With every input at its best value.
+    pub run: LaunchRun,
+    pub energy: EnergySplit,
+    pub bands: Bands,
+    /// Sentences on what was never measured.
+    pub extrapolations: Vec<String>,
+    pub options: ForecastOptions,
+}
+
+/// Makes the forecast of a rig.
+///
+/// # Errors
+/// A rig that can't be computed; correlations that contradict each other.
+pub fn forecast(rig: &Rig, options: ForecastOptions) -> Result<Forecast, ModelError> {
+    let setup = match options.known {
+        Known::Plan => LaunchSetup::planned(rig)?,
+        Known::HoldTension { tension_n, x_m } => LaunchSetup::drawn(rig, tension_n, x_m)?,
+    };
+    let inputs = Inputs::of(rig, options.known)?;
+    let run = simulate(&setup)?;
+    let ratio = cfc_ratio(&run, &run.answers, setup.gravity_along_mps2());
+    let fast = LaunchSetup { relative_tolerance: FAST, ..setup.clone() };
+    let propagated = first_order(&fast, &inputs, |moved| evaluate(moved, ratio))?;
+    let best = evaluate(&inputs.moved(&setup, &[]), ratio)?;
+    let drawn = monte_carlo(&fast, &inputs, options, ratio);
+    let quantities =
+        QUANTITIES.iter().zip(propagated).enumerate().map(|(k, (quantity, Propagated { interval, shares }))| {
+            let column = drawn.iter().map(|row| row.map_or(f64::NAN, |row| row[k]));
+            Forecasted {
+                quantity: *quantity,
+                best: best[k],
+                monte_carlo: Distribution::of(column),
+                first_order: Interval::normal(best[k], interval.standard_uncertainty),
+                shares,
+            }
+        });
+    Ok(Forecast {
+        quantities: quantities.collect(),
+        probabilities: probabilities(rig, &drawn),
+        energy: run.energy_at_separation,
+        bands: bands(&fast, &inputs, &run, options.seed),
+        extrapolations: setup.extrapolations(),
+        inputs,
+        run,
+        options,
+    })
+}
+
+type Row = Option<[f64; N_QUANTITIES]>;
+
+/// Every draw's numbers, in the order of the draws; none where a draw can't be launched.
+fn monte_carlo(setup: &LaunchSetup, inputs: &Inputs, options: ForecastOptions, ratio: f64) -> Vec<Row> {
+    let mut rows: Vec<Row> = vec![None; options.draws as usize];
+    let part = rows.len().div_ceil(options.threads.max(1)).max(1);
+    std::thread::scope(|scope| {
+        for (index, chunk) in rows.chunks_mut(part).enumerate() {
+            scope.spawn(move || {
+                for (offset, row) in chunk.iter_mut().enumerate() {
+                    let stream = (index * part + offset) as u64;
+                    *row = one_draw(setup, inputs, &mut Random::new(options.seed, stream), ratio);
+                }
+            });
+        }
+    });
+    rows
+}
+
+fn one_draw(setup: &LaunchSetup, inputs: &Inputs, random: &mut Random, ratio: f64) -> Row {
+    let independent: Vec<f64> = inputs.all.iter().map(|_| random.normal()).collect();
+    evaluate(&inputs.moved(setup, &inputs.correlate(&independent)), ratio).ok()
+}
+
+fn probabilities(rig: &Rig, rows: &[Row]) -> Probabilities {
+    let part = |holds: &dyn Fn(&Row) -> bool| rows.iter().filter(|row| holds(row)).count() as f64 / rows.len() as f64;
+    let (low, high) = (rig.plan.launch_speed_min_mps, rig.plan.launch_speed_max_mps);
+    let of = |row: &Row, k: usize| row.map_or(f64::NAN, |row| row[k]);
+    let speed = |row: &Row| of(row, LAUNCH_SPEED);
+    let over_g = |row: &Row| of(row, PEAK_G) > rig.limits.peak_g;
+    let over_tension = |row: &Row| of(row, LINE_TENSION) > rig.limits.tension_n;
+    let inside = |row: &Row| (low..=high).contains(&speed(row));
+    Probabilities {
+        speed_below_window: part(&|row| speed(row) < low),
+        speed_in_window: part(&inside),
+        speed_above_window: part(&|row| speed(row) > high),
+        peak_g_over_limit: part(&over_g),
+        tension_over_limit: part(&over_tension),
+        all_met: part(&|row| inside(row) && !over_g(row) && !over_tension(row)),
+        no_launch: part(&|row| speed(row).is_nan()),
+        end_stop: part(&|row| !speed(row).is_nan() && of(row, 7).is_nan()),
+    }
+}
+
+impl Forecast {
+    /// Sentences on what the launch speed hangs on most, the greatest first.
+    pub fn sensitivities(&self) -> Vec<String> {
+        let (speed, peak) = (&self.quantities[LAUNCH_SPEED], &self.quantities[PEAK_G]);
+        let mut order: Vec<usize> = (0..self.inputs.all.len()).collect();
+        let weight = |i: usize| (speed.shares[i] / speed.best).abs().max((peak.shares[i] / peak.best).abs());
+        order.sort_by(|a, b| weight(*b).total_cmp(&weight(*a)));
+        let sentence = |i: usize| {
+            let input = &self.inputs.all[i];
+            let (change, unit) = match input.unit {
+                "relative" => (100.0 * input.standard_uncertainty, "%"),
+                unit => (input.standard_uncertainty, unit),
+            };
+            format!(
+                "{} more by one standard uncertainty ({change:.3} {unit}) changes launch speed by {:+.3} m/s, peak g by {:+.3}",
+                input.meaning, speed.shares[i], peak.shares[i]
+            )
+        };
+        order.into_iter().filter(|i| weight(*i) > 1e-5).map(sentence).collect()
+    }
+}

@@ -1,0 +1,158 @@
+//! What a rig file may say beyond the simplest launcher: unequal cords, gas, tables, further losses, a rail that recoils,
+//! stages. Everything here is off where the file is silent.
+
+use super::{CordPoint, Cords, Given};
+
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct Details {
+    /// Of the cords in `[cords]`.
+    pub cords: CordDetails,
+    /// `[[more_cords]]`: sets that differ from those.
+    pub more_cords: Vec<CordGroup>,
+    pub gas: Vec<Gas>,
+    pub force_tables: Vec<Vec<XForce>>,
+    pub losses: MoreLosses,
+    pub rail_support: Option<RailSupport>,
+    pub payload: PayloadDetails,
+    pub brake: BrakeDetails,
+    /// Place of a mechanical uncoupling of the payload.
+    pub uncoupling_x_m: Option<f64>,
+    pub settings: SettingUncertainties,
+    pub correlations: Vec<Correlation>,
+    pub stages: Vec<Stage>,
+}
+
+/// A cord set of its own.
+#[derive(Debug, Clone, PartialEq)]
+pub struct CordGroup {
+    pub cords: Cords,
+    pub zero_mark_x_m: f64,
+    pub details: CordDetails,
+}
+
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct CordDetails {
+    /// While extending; empty where the cord has one branch only.
+    pub loading_curve: Vec<CordPoint>,
+    /// Elongation over which the tension comes down from the loading to the unloading branch (by a factor e).
+    pub gap_width: Option<f64>,
+    /// Prony terms: share of the tension that goes, with the time in which it does.
+    pub relaxation: Vec<RelaxationTerm>,
+    /// Relative change of tension per kelvin above the card's temperature.
+    pub tension_per_kelvin: f64,
+    pub card_temperature_c: Option<f64>,
+    pub temperature_c: Option<f64>,
+    /// Relative loss of tension for each tenfold of cycles after the first.
+    pub loss_per_tenfold_cycles: f64,
+    pub cycles: f64,
+    /// x in the run-out from which the cords extend again and pull back.
+    pub retension_x_m: Option<f64>,
+    /// The curve may be used beyond its last point; every result then says so.
+    pub extrapolate: bool,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct RelaxationTerm {
+    pub share: f64,
+    pub time_s: f64,
+}
+
+/// A gas cylinder that pulls the shuttle. Pressures are absolute here whatever the file says.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Gas {
+    pub charged_pressure_pa: Given,
+    pub ambient_pressure_pa: f64,
+    /// Over the ambient pressure, on the piston's other side.
+    pub back_pressure_pa: f64,
+    pub vessel_volume_m3: f64,
+    pub dead_volume_m3: f64,
+    pub temperature_c: f64,
+    pub polytropic_exponent: f64,
+    pub piston_area_m2: f64,
+    pub travel_ratio: f64,
+    pub stroke_m: f64,
+    pub hold_s: f64,
+    /// Infinite where it is tight.
+    pub leak_time_s: f64,
+    pub valve: Option<Valve>,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Valve {
+    /// Discharge coefficient times area.
+    pub area_m2: f64,
+    /// Of the line behind it; infinite where it costs nothing.
+    pub line_area_m2: f64,
+    pub opening_s: f64,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct XForce {
+    pub x_m: f64,
+    pub force_n: f64,
+}
+
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct MoreLosses {
+    /// Times the load across the rail.
+    pub load_coefficient: Option<Given>,
+    /// Times the cords' pull.
+    pub pull_coefficient: Option<Given>,
+    pub viscous_n_per_mps: Option<Given>,
+    pub breakaway_n: Option<Given>,
+    pub along_x: Vec<XForce>,
+    /// Relative standard uncertainty of the loss over x.
+    pub along_x_relative_uncertainty: f64,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct RailSupport {
+    pub mass_kg: Given,
+    pub stiffness_n_per_m: Given,
+    pub damping_n_per_mps: f64,
+}
+
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct PayloadDetails {
+    /// (airspeed m/s, force N).
+    pub thrust: Vec<(f64, f64)>,
+    pub lift_area_m2: f64,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct BrakeDetails {
+    pub per_metre_n_per_m: f64,
+    pub per_speed_n_per_mps: f64,
+    pub relative_uncertainty: f64,
+}
+
+/// Standard uncertainties of what is set or found on the day.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct SettingUncertainties {
+    pub draw_m: f64,
+    pub head_wind_mps: f64,
+    pub air_density_relative: f64,
+    /// From the first pull to the planned draw.
+    pub winch_s: f64,
+    pub hold_s: f64,
+}
+
+#[derive(Debug, Clone, PartialEq)]
+pub struct Correlation {
+    /// Names of two uncertain inputs, as `tautrail forecast` lists them.
+    pub between: [String; 2],
+    pub coefficient: f64,
+}
+
+/// One step of a build-up: what differs from the rig as described, what opens it.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct Stage {
+    pub name: String,
+    pub cord_count: Option<u32>,
+    pub draw_m: Option<f64>,
+    pub payload_mass_kg: Option<f64>,
+    /// What the stage before must have shown.
+    pub gate: String,
+    /// To be looked at before it.
+    pub inspect: Vec<String>,
+}
