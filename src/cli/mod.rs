@@ -6,6 +6,7 @@
 mod check;
 mod daemon;
 mod feed_place;
+mod forecast;
 mod mark;
 mod measured;
 mod read;
@@ -16,6 +17,7 @@ mod report;
 mod screen;
 mod seal_child;
 mod show;
+mod stage;
 mod trials;
 mod verify;
 mod virtual_rig;
@@ -46,6 +48,8 @@ struct CommandLine {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::Args),
+    Forecast(forecast::Args),
+    Stage(stage::Args),
     Daemon(daemon::Args),
     Rehearse(rehearse::Args),
     Recover(recover::Args),
@@ -67,6 +71,8 @@ impl Command {
     fn run(&self, screen: &Screen) -> Result<Verdict, Failure> {
         match self {
             Self::Check(args) => check::run(args, screen),
+            Self::Forecast(args) => forecast::run(args, screen),
+            Self::Stage(args) => stage::run(args, screen),
             Self::Daemon(args) => daemon::run(args, screen),
             Self::Rehearse(args) => rehearse::run(args, screen),
             Self::Recover(args) => recover::run(args, screen),

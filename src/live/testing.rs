@@ -45,6 +45,7 @@ pub fn north_pier() -> Rig {
             force_relative_uncertainty: 0.02,
         },
         losses: Losses { friction_n: Given::exactly(12.0), shuttle_drag_area_m2: Given::exactly(0.02) },
+        details: Details::default(),
         limits: Limits { tension_n: 900.0, peak_g: 10.0 },
         plan: crate::rig::Plan {
             draw_m: 4.0,

@@ -26,6 +26,7 @@ mod relaxation;
 mod released_now;
 mod run;
 mod setup;
+mod solve;
 mod system;
 mod targets;
 #[cfg(test)]
@@ -47,3 +48,4 @@ pub use quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, Quantity};
 pub use released_now::{ReleaseForecast, released_now};
 pub use run::{Answers, LaunchRun, Sample, Separation, answers_to_rest, launch_answers, simulate};
 pub use setup::{ACCURATE, Brake, FAST, ForceTable, LaunchSetup, RailLosses, Recoil};
+pub use solve::{Candidate, Expected, Fit, Setting, Solution, solve, sweep};

@@ -1,7 +1,7 @@
 //! The reading itself: each question in turn, each answer or its absence written down.
 
 use crate::calibration::Signal;
-use crate::model::local_gravity_mps2;
+use crate::rig::local_gravity_mps2;
 use crate::rig::{Rig, Role};
 
 use super::arrest;

@@ -5,7 +5,7 @@
 use std::f64::consts::TAU;
 
 use crate::calibration::Signal;
-use crate::model::local_gravity_mps2;
+use crate::rig::local_gravity_mps2;
 use crate::rig::{self, Given, Rig, Role};
 
 /// The rehearsal's rig without drag, so that the truth has a closed form.

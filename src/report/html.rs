@@ -9,7 +9,7 @@ use super::tables;
 
 const STYLE: &str = include_str!("style.css");
 
-const CAUTION: &str = "Tautrail is no safety device: it advises and records. Limits on this page are for advice only; \
+pub(super) const CAUTION: &str = "Tautrail is no safety device: it advises and records. Limits on this page are for advice only; \
                        interlocks, exclusion zones, local codes and licensed practice decide.";
 
 /// One HTML page about one trial: self-contained, printable, readable without its pictures.
@@ -18,12 +18,7 @@ const CAUTION: &str = "Tautrail is no safety device: it advises and records. Lim
 /// [`PictureError`] if a picture can't be drawn.
 pub fn trial_page(page: &TrialPage) -> Result<String, PictureError> {
     let Heading { trial_id, .. } = &page.heading;
-    let title = escaped(&format!("Trial {trial_id}"));
-    let mut html = format!(
-        "<!DOCTYPE html>\n<html lang=\"en\">\n<head>\n<meta charset=\"utf-8\">\n\
-         <meta name=\"viewport\" content=\"width=device-width, initial-scale=1\">\n\
-         <title>{title}</title>\n<style>\n{STYLE}</style>\n</head>\n<body>\n"
-    );
+    let mut html = String::new();
     html.push_str(&header(&page.heading));
     html.push_str("<main>\n");
     html.push_str(&at_a_glance(page));
@@ -41,11 +36,18 @@ pub fn trial_page(page: &TrialPage) -> Result<String, PictureError> {
     html.push_str(&section("What was received", &tables::health(&page.health)));
     html.push_str(&section("Raw data, SHA-256", &tables::hashes(&page.hashes)));
     html.push_str("</main>\n");
-    html.push_str(&format!(
-        "<footer><p>{CAUTION}</p><p>{}</p></footer>\n</body>\n</html>\n",
-        escaped(&page.heading.program)
-    ));
-    Ok(html)
+    html.push_str(&format!("<footer><p>{CAUTION}</p><p>{}</p></footer>\n", escaped(&page.heading.program)));
+    Ok(document(&format!("Trial {trial_id}"), &html))
+}
+
+/// A whole page about a body.
+pub(super) fn document(title: &str, body: &str) -> String {
+    let title = escaped(title);
+    format!(
+        "<!DOCTYPE html>\n<html lang=\"en\">\n<head>\n<meta charset=\"utf-8\">\n\
+         <meta name=\"viewport\" content=\"width=device-width, initial-scale=1\">\n\
+         <title>{title}</title>\n<style>\n{STYLE}</style>\n</head>\n<body>\n{body}</body>\n</html>\n"
+    )
 }
 
 fn header(heading: &Heading) -> String {
@@ -144,7 +146,10 @@ fn residuals(page: &TrialPage) -> Result<String, PictureError> {
 }
 
 /// Pictures one below the other with their text alternatives as captions.
-fn figures_of(pictures: impl IntoIterator<Item = Option<Picture>>, none: &str) -> Result<String, PictureError> {
+pub(super) fn figures_of(
+    pictures: impl IntoIterator<Item = Option<Picture>>,
+    none: &str,
+) -> Result<String, PictureError> {
     let mut html = String::new();
     for picture in pictures.into_iter().flatten() {
         let caption = format!("<b>{}</b>: {}", escaped(&picture.title), escaped(&picture.alternative));
@@ -153,7 +158,7 @@ fn figures_of(pictures: impl IntoIterator<Item = Option<Picture>>, none: &str) -
     Ok(if html.is_empty() && !none.is_empty() { format!("<p>{none}</p>\n") } else { html })
 }
 
-fn section(heading: &str, body: &str) -> String {
+pub(super) fn section(heading: &str, body: &str) -> String {
     format!("<section>\n<h2>{heading}</h2>\n{body}</section>\n")
 }
 

@@ -7,6 +7,7 @@ mod beside;
 mod decimate;
 mod energy;
 mod figures;
+mod forecast;
 mod gather;
 mod html;
 mod labels;
@@ -18,6 +19,7 @@ mod tables;
 mod tests;
 
 pub use beside::add_replay;
+pub use forecast::{ForecastCurve, ForecastPage, forecast_page};
 pub use gather::{GatherError, page, page_of};
 pub use html::trial_page;
 pub use page::{
