@@ -1,5 +1,7 @@
 //! The launch model against oracles in Python that share nothing with it but the numbers (tools/oracles/*.py).
 
+#![allow(clippy::unwrap_used, reason = "a test that cannot go on stops here")]
+
 mod support;
 
 use serde_json::{Value, json};

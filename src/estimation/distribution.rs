@@ -128,10 +128,10 @@ mod tests {
     fn a_correlation_matrix_is_the_square_of_its_root() {
         let matrix = vec![vec![1.0, 0.5, -0.2], vec![0.5, 1.0, 0.3], vec![-0.2, 0.3, 1.0]];
         let root = Cholesky::of(&matrix).unwrap();
-        for i in 0..3 {
-            for j in 0..3 {
+        for (i, row) in matrix.iter().enumerate() {
+            for (j, entry) in row.iter().enumerate() {
                 let product: f64 = (0..=i.min(j)).map(|k| root.rows[i][k] * root.rows[j][k]).sum();
-                assert!((product - matrix[i][j]).abs() < 1e-14);
+                assert!((product - entry).abs() < 1e-14);
             }
         }
     }

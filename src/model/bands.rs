@@ -78,7 +78,7 @@ fn course(setup: &LaunchSetup, places_m: &[f64]) -> Option<Vec<(f64, f64)>> {
             return (f64::NAN, f64::NAN);
         }
         let s = place_of_x(segment, *x_m);
-        let system = System { setup, phase: segment.phase.clone(), layout };
+        let system = System::new(setup, segment.phase.clone(), layout);
         let (_, y) = state_of(s, segment.dense.at(s), segment.along);
         let motion = system.motion(&y);
         (motion.v_mps + motion.rail_v_mps, system.forces_at(&y).ground_acceleration_mps2())

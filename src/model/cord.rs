@@ -66,6 +66,7 @@ pub enum CordPhase {
     /// The strain wave has not come back yet.
     Wave {
         until_s: f64,
+        branch: Branch,
     },
     /// Evenly strained.
     Even {

@@ -5,7 +5,7 @@
 //! Through a valve: the vessel follows p = p₀ (m/m₀)^n, T = T₀ (m/m₀)^(n−1); the flow through the effective area is that
 //! of an ideal nozzle, choked below the critical ratio (ISO 6358-1:2013, annex; B. W. Andersen, *The Analysis and Design
 //! of Pneumatic Systems*, 1967, section 2.2; from memory); the cylinder obeys dp/dt = (n/V)(R T ṁ − p dV/dt)
-//! (Andersen, section 4.2, with the polytropic exponent in place of κ). Near equal pressures, above 99.5 % of the upstream
+//! (Andersen, section 4.2, with the polytropic exponent in place of κ). Near equal pressures, above 98 % of the upstream
 //! one, the flow is taken as proportional to the difference (laminar part in the sense of ISO 6358).
 
 /// Specific gas constant of air, J/(kg K) (ISO 2533:1975).
@@ -13,7 +13,7 @@ const AIR_R: f64 = 287.052_87;
 /// Ratio of specific heats of air.
 const KAPPA: f64 = 1.4;
 /// Pressure ratio above which the flow is linear.
-const LAMINAR_FROM: f64 = 0.995;
+const LAMINAR_FROM: f64 = 0.98;
 
 /// A gas cylinder pulling the shuttle.
 #[derive(Debug, Clone, Copy, PartialEq)]

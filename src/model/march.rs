@@ -59,7 +59,7 @@ pub struct March<'a, const N: usize> {
 impl<'a, const N: usize> March<'a, N> {
     /// At the instant after release.
     pub fn released(setup: &'a LaunchSetup, layout: Layout, keep_segments: bool) -> Result<Self, ModelError> {
-        let system = System { setup, phase: first_phase(setup), layout };
+        let system = System::new(setup, first_phase(setup), layout);
         let mut y = [0.0; N];
         y[0] = setup.start_x_m;
         for (s, set) in setup.cords.iter().enumerate() {
@@ -219,7 +219,8 @@ impl<'a, const N: usize> March<'a, N> {
             }
         }
         for (s, set) in self.system.setup.cords.iter().enumerate() {
-            if let (CordPhase::Wave { until_s }, Some(i)) = (self.system.phase.cords[s], self.system.layout.wave[s]) {
+            if let (CordPhase::Wave { until_s, .. }, Some(i)) = (self.system.phase.cords[s], self.system.layout.wave[s])
+            {
                 let (tau_s, rate) = (until_s - self.t_s, slope[i]);
                 propose(tau_s, Along::Time, tau_s, Goal::WaveOver(s), true);
                 let below = set.unloading.knots().iter().rev().find(|knot| **knot < self.y[i] - 1e-12);
@@ -306,7 +307,7 @@ impl<'a, const N: usize> March<'a, N> {
         });
         let turned = goal != Goal::Rest && y[1] * direction < 0.0;
         let past_wave = self.system.setup.cords.iter().enumerate().any(|(s, set)| {
-            let (CordPhase::Wave { until_s }, Some(i)) = (self.system.phase.cords[s], self.system.layout.wave[s])
+            let (CordPhase::Wave { until_s, .. }, Some(i)) = (self.system.phase.cords[s], self.system.layout.wave[s])
             else {
                 return false;
             };

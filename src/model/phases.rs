@@ -66,7 +66,7 @@ impl<const N: usize> March<'_, N> {
         self.note(EventKind::MotionBegins);
         self.system.phase.held = false;
         for phase in &mut self.system.phase.cords {
-            if let CordPhase::Wave { until_s } = phase {
+            if let CordPhase::Wave { until_s, .. } = phase {
                 *until_s += self.t_s;
             }
         }
@@ -174,7 +174,7 @@ pub fn first_phase(setup: &LaunchSetup) -> Phase {
         let elongation = set.elongation(setup.start_x_m);
         if elongation > 0.0 {
             *phase = if set.mass_kg > 0.0 {
-                CordPhase::Wave { until_s: 2.0 * set.transit_s(elongation) }
+                CordPhase::Wave { until_s: 2.0 * set.transit_s(elongation), branch: set.released(elongation) }
             } else {
                 CordPhase::Even { branch: set.released(elongation), side: Side::Drawn }
             };

@@ -196,7 +196,7 @@ impl LaunchRun {
 
     fn sample(&self, segment: &Segment<ROOM>, t_s: f64) -> Sample {
         let y = Self::state(segment, t_s);
-        let system = System { setup: &self.setup, phase: segment.phase.clone(), layout: self.layout };
+        let system = System::new(&self.setup, segment.phase.clone(), self.layout);
         let forces = system.forces_at(&y);
         let motion = system.motion(&y);
         let a_mps2 = forces.ground_acceleration_mps2();

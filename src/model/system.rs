@@ -88,6 +88,9 @@ pub struct System<'a> {
     pub setup: &'a LaunchSetup,
     pub phase: Phase,
     pub layout: Layout,
+    /// Gravity along and across the rail, m/s².
+    along_mps2: f64,
+    across_mps2: f64,
 }
 
 /// A state, named.
@@ -125,7 +128,12 @@ impl Layout {
     }
 }
 
-impl System<'_> {
+impl<'a> System<'a> {
+    pub fn new(setup: &'a LaunchSetup, phase: Phase, layout: Layout) -> Self {
+        let across_mps2 = setup.gravity_mps2 * setup.incline_rad.cos();
+        Self { setup, phase, layout, along_mps2: setup.gravity_along_mps2(), across_mps2 }
+    }
+
     #[inline]
     pub fn motion(&self, y: &[f64]) -> Motion {
         let (rail_x_m, rail_v_mps) = self.layout.recoil.map_or((0.0, 0.0), |i| (y[i], y[i + 1]));
@@ -141,13 +149,11 @@ impl System<'_> {
     pub fn rates<const N: usize>(&self, t_s: f64, y: &[f64; N]) -> [f64; N] {
         let mut rates = [0.0; N];
         let motion = self.motion(y);
-        let mut pulls_n = [0.0; MAX_CORD_SETS];
-        let mut wave_speeds_mps = [f64::INFINITY; MAX_CORD_SETS];
         self.gas_rates(t_s, y, motion, &mut rates);
         if self.phase.held {
             return rates;
         }
-        let forces = self.forces(y, motion, &mut pulls_n, &mut wave_speeds_mps);
+        let forces = self.forces(y, motion);
         rates[0] = motion.v_mps;
         rates[1] = forces.acceleration_mps2;
         if let Some(i) = self.layout.recoil {
@@ -155,12 +161,13 @@ impl System<'_> {
             rates[i + 1] = forces.rail_acceleration_mps2;
         }
         for (s, set) in self.setup.cords.iter().enumerate() {
-            if let (Some(i), CordPhase::Wave { .. }) = (self.layout.wave[s], self.phase.cords[s]) {
-                rates[i] = -set.travel_ratio * forces.acceleration_mps2 / wave_speeds_mps[s];
+            if let (Some(i), CordPhase::Wave { branch, .. }) = (self.layout.wave[s], self.phase.cords[s]) {
+                let (_, wave_speed_mps) = set.pull_and_wave_speed(branch, y[i]);
+                rates[i] = -set.travel_ratio * forces.acceleration_mps2 / wave_speed_mps;
             }
         }
         if let Some(first) = self.layout.accounts {
-            self.work_rates(motion, &forces, &pulls_n, &mut rates[first..]);
+            self.work_rates(y, motion, &forces, &mut rates[first..]);
         }
         rates
     }
@@ -190,7 +197,7 @@ impl System<'_> {
         sum_n
     }
 
-    fn work_rates(&self, motion: Motion, forces: &Forces, pulls_n: &[f64; MAX_CORD_SETS], rates: &mut [f64]) {
+    fn work_rates(&self, y: &[f64], motion: Motion, forces: &Forces, rates: &mut [f64]) {
         let v = motion.v_mps;
         let ground = v + motion.rail_v_mps;
         let damping = self.setup.recoil.map_or(0.0, |recoil| recoil.damping_n_per_mps);
@@ -208,55 +215,45 @@ impl System<'_> {
             forces.gas_n * v,
         ];
         rates[..N_ACCOUNTS].copy_from_slice(&works);
-        for (rate, pull_n) in rates[N_ACCOUNTS..].iter_mut().zip(&pulls_n[..self.setup.cords.len()]) {
-            *rate = pull_n * v;
+        for s in 0..self.setup.cords.len() {
+            rates[N_ACCOUNTS + s] = self.pull_n(s, y, motion.x_m) * v;
         }
     }
 
     /// Forces and accelerations at a state.
     pub fn forces_at(&self, y: &[f64]) -> Forces {
-        self.forces(y, self.motion(y), &mut [0.0; MAX_CORD_SETS], &mut [f64::INFINITY; MAX_CORD_SETS])
+        self.forces(y, self.motion(y))
     }
 
-    /// Pull and end strain of each cord set at a state.
+    /// Pull of one cord set at a state.
     #[inline]
-    fn pulls(
-        &self,
-        y: &[f64],
-        x_m: f64,
-        pulls_n: &mut [f64; MAX_CORD_SETS],
-        wave_speeds_mps: &mut [f64; MAX_CORD_SETS],
-    ) -> (f64, f64) {
+    fn pull_n(&self, s: usize, y: &[f64], x_m: f64) -> f64 {
+        let set = &self.setup.cords[s];
+        match (self.phase.cords[s], self.layout.wave[s]) {
+            (CordPhase::Wave { branch, .. }, Some(i)) => set.pull_n(branch, y[i]),
+            (CordPhase::Even { branch, side }, _) => side.sign() * set.pull_n(branch, set.elongation_on(side, x_m)),
+            (CordPhase::Wave { .. }, None) | (CordPhase::Slack, _) => 0.0,
+        }
+    }
+
+    /// Pull of all cords, and the mass of those that move evenly with the shuttle.
+    #[inline]
+    fn pulls(&self, y: &[f64], x_m: f64) -> (f64, f64) {
         let (mut sum_n, mut cord_mass_kg) = (0.0, 0.0);
         for (s, set) in self.setup.cords.iter().enumerate() {
-            match (self.phase.cords[s], self.layout.wave[s]) {
-                (CordPhase::Slack, _) => continue,
-                (CordPhase::Wave { .. }, Some(i)) => {
-                    let branch = set.released(set.elongation(self.setup.start_x_m));
-                    (pulls_n[s], wave_speeds_mps[s]) = set.pull_and_wave_speed(branch, y[i]);
-                }
-                (CordPhase::Even { branch, side }, _) => {
-                    pulls_n[s] = side.sign() * set.pull_n(branch, set.elongation_on(side, x_m));
-                    cord_mass_kg += set.moving_mass_kg();
-                }
-                (CordPhase::Wave { .. }, None) => {}
+            sum_n += self.pull_n(s, y, x_m);
+            if matches!(self.phase.cords[s], CordPhase::Even { .. }) {
+                cord_mass_kg += set.moving_mass_kg();
             }
-            sum_n += pulls_n[s];
         }
         (sum_n, cord_mass_kg)
     }
 
     #[inline]
-    fn forces(
-        &self,
-        y: &[f64],
-        motion: Motion,
-        pulls_n: &mut [f64; MAX_CORD_SETS],
-        wave_speeds_mps: &mut [f64; MAX_CORD_SETS],
-    ) -> Forces {
+    fn forces(&self, y: &[f64], motion: Motion) -> Forces {
         let setup = self.setup;
         let Motion { x_m, v_mps, rail_x_m, rail_v_mps } = motion;
-        let (cords_n, cord_mass_kg) = self.pulls(y, x_m, pulls_n, wave_speeds_mps);
+        let (cords_n, cord_mass_kg) = self.pulls(y, x_m);
         let mut tables_n = 0.0;
         for (table, on) in setup.tables.iter().zip(self.phase.tables) {
             tables_n += if on { table.force_n.value(x_m) } else { 0.0 };
@@ -273,13 +270,13 @@ impl System<'_> {
             _ => 0.0,
         };
         let losses = &setup.losses;
-        let across_n = mass_kg * setup.gravity_mps2 * setup.incline_rad.cos() - on * dynamic_pa * setup.lift_area_m2;
+        let across_n = mass_kg * self.across_mps2 - on * dynamic_pa * setup.lift_area_m2;
         let load_friction_n = losses.load_coefficient * across_n.max(0.0) + losses.pull_coefficient * cords_n.abs();
         let viscous_n = losses.viscous_n_per_mps * v_mps.abs();
         let along_x_n = losses.along_x_n.as_ref().map_or(0.0, |curve| curve.value(x_m));
         let brake_n = if self.phase.braking { setup.brake.force_n(x_m, v_mps) } else { 0.0 };
         let opposing_n = losses.friction_n + load_friction_n + viscous_n + along_x_n + brake_n;
-        let outside_n = thrust_n - payload_drag_n - shuttle_drag_n - mass_kg * setup.gravity_along_mps2();
+        let outside_n = thrust_n - payload_drag_n - shuttle_drag_n - mass_kg * self.along_mps2;
         let along_n = cords_n + tables_n + gas_n - self.phase.direction * opposing_n + outside_n;
         let (acceleration_mps2, rail_acceleration_mps2) = match setup.recoil {
             None => (along_n / (mass_kg + cord_mass_kg), 0.0),
@@ -312,7 +309,7 @@ impl System<'_> {
         let motion = self.motion(y);
         let airspeed_mps = motion.v_mps + motion.rail_v_mps + self.setup.head_wind_mps;
         let dynamic_pa = 0.5 * self.setup.air_density_kg_per_m3 * airspeed_mps * airspeed_mps.abs();
-        let felt_mps2 = ground_acceleration_mps2 + self.setup.gravity_along_mps2();
+        let felt_mps2 = ground_acceleration_mps2 + self.along_mps2;
         let thrust_n = self.setup.thrust.as_ref().map_or(0.0, |thrust| thrust.value(airspeed_mps));
         self.setup.payload_mass_kg * felt_mps2 + dynamic_pa * self.setup.payload_drag_area_m2 - thrust_n
     }
