@@ -6,7 +6,6 @@
 
 #![allow(clippy::unwrap_used, reason = "a bench that cannot go on stops here")]
 
-#[allow(dead_code, reason = "the journal writer is shared with tests, which use more of it")]
 #[path = "../../tests/support/journal.rs"]
 mod journal_file;
 
