@@ -6,6 +6,7 @@ use crate::performance::{Options, Performance, PrepareError, prepare};
 use crate::play::pty::{self, PlayError, PtySettings};
 use crate::play::virtual_time::{Delivered, VirtualPlay};
 use crate::scenario;
+use crate::sweep::{SweepError, motion_csv, sweep};
 use crate::table;
 use clap::{Args, Parser, Subcommand};
 use std::ffi::OsString;
@@ -41,6 +42,20 @@ enum Command {
         rig: RigArgs,
         #[arg(long)]
         out: PathBuf,
+    },
+    /// Play many seeds in virtual time on every core, from --seed on, and say how each went.
+    Sweep {
+        #[command(flatten)]
+        rig: RigArgs,
+        #[arg(long, default_value_t = 200)]
+        trials: u64,
+    },
+    /// Print the true motion as CSV.
+    Motion {
+        #[command(flatten)]
+        rig: RigArgs,
+        #[arg(long, default_value_t = 0.001)]
+        interval_s: f64,
     },
     /// List the scenarios.
     Scenarios,
@@ -103,6 +118,10 @@ enum CliError {
     Prepare(#[from] PrepareError),
     #[error(transparent)]
     Play(#[from] PlayError),
+    #[error(transparent)]
+    Sweep(#[from] SweepError),
+    #[error("the interval is {found} s, it must be at least 1e-6 s")]
+    Interval { found: f64 },
     #[error("cannot write {path}: {source}")]
     Write { path: String, source: std::io::Error },
 }
@@ -130,6 +149,14 @@ fn carry_out(command: Command) -> Result<(), CliError> {
     match command {
         Command::Play { rig, dir, wait_s } => play(&prepare(&rig.options())?, dir, wait_s),
         Command::Stream { rig, out } => stream(&prepare(&rig.options())?, &out),
+        Command::Sweep { rig, trials } => print_sweep(&rig.options(), trials),
+        Command::Motion { rig, interval_s } => {
+            if interval_s.is_nan() || interval_s < 1e-6 {
+                return Err(CliError::Interval { found: interval_s });
+            }
+            print!("{}", motion_csv(&prepare(&rig.options())?, interval_s));
+            Ok(())
+        }
         Command::Scenarios => {
             for scenario in scenario::all(0, 0) {
                 println!("{:24} {}", scenario.name, scenario.about);
@@ -145,6 +172,19 @@ fn carry_out(command: Command) -> Result<(), CliError> {
             Ok(())
         }
     }
+}
+
+fn print_sweep(options: &Options, trials: u64) -> Result<(), CliError> {
+    let started = std::time::Instant::now();
+    let swept = sweep(options, trials)?;
+    let elapsed_s = started.elapsed().as_secs_f64();
+    println!("seed  outcome                      launch m/s  blocks  bytes");
+    for trial in &swept {
+        let speed = trial.launch_speed_mps.map_or("–".into(), |speed_mps| format!("{speed_mps:.3}"));
+        println!("{:4}  {:27}  {speed:>10}  {:6}  {}", trial.seed, trial.outcome, trial.n_blocks, trial.n_bytes);
+    }
+    println!("{} trials in {elapsed_s:.1} s", swept.len());
+    Ok(())
 }
 
 fn play(performance: &Performance, dir: PathBuf, wait_s: f64) -> Result<(), CliError> {

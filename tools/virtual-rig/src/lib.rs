@@ -18,5 +18,6 @@ pub mod physics;
 pub mod play;
 pub mod scenario;
 pub mod sensor;
+pub mod sweep;
 pub mod table;
 pub mod truth;

@@ -146,7 +146,11 @@ fn staged() -> [Scenario; 3] {
 
 fn not_launched() -> [Scenario; 4] {
     [
-        scenario("let-down", "drawn, held, let down", &[SLACK, draw(DRAW_M), HOLD, LET_DOWN, REST]),
+        scenario(
+            "let-down",
+            "drawn with a stop at 2 m, held, let down",
+            &[SLACK, draw(2.0), wait("winch-stop", 2.0), draw(DRAW_M), HOLD, LET_DOWN, REST],
+        ),
         scenario(
             "hang-fire",
             "the hook opens, the jammed shuttle stays; load taken up again and let down",

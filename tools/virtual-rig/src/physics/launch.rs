@@ -8,7 +8,7 @@ use super::stroke::{Energy, Forces, Grip, LineMode, Mode, System, at, gas_at};
 use super::trajectory::Row;
 
 /// Step of the integration that scenarios use, s.
-pub const STEP_S: f64 = 20e-6;
+pub const STEP_S: f64 = 40e-6;
 /// Longest time followed.
 const LONGEST_S: f64 = 4.0;
 /// The run ends when the shuttle has stuck this long after it first moved.
@@ -111,20 +111,22 @@ impl Runner {
     fn step(&mut self) {
         let step_s = self.system.step_s;
         self.advance(step_s);
-        if self.event_in_next(step_s) {
+        let mut forces = self.forces_next(step_s);
+        if self.event_in_next(&forces) {
             let (mut early_s, mut late_s) = (0.0, step_s);
             for _ in 0..N_BISECTIONS {
                 let middle_s = 0.5 * (early_s + late_s);
                 self.advance(middle_s);
-                if self.event_in_next(middle_s) { late_s = middle_s } else { early_s = middle_s }
+                let forces = self.forces_next(middle_s);
+                if self.event_in_next(&forces) { late_s = middle_s } else { early_s = middle_s }
             }
             self.advance(late_s);
             self.accept(late_s);
             self.change_mode();
+            forces = self.forces_here();
         } else {
             self.accept(step_s);
         }
-        let forces = self.forces_here();
         self.record(&forces);
         self.watch_marks(&forces);
     }
@@ -157,11 +159,12 @@ impl Runner {
         }
     }
 
-    fn event_in_next(&mut self, step_s: f64) -> bool {
-        let forces = self.system.derivative(self.t_s + step_s, &self.next, &self.mode, &mut self.scratch.stage);
-        self.grip_ends(&self.next, &forces)
-            || self.parting(&self.next, &forces).is_some()
-            || self.cord_breaks(&self.next)
+    fn forces_next(&mut self, step_s: f64) -> Forces {
+        self.system.derivative(self.t_s + step_s, &self.next, &self.mode, &mut self.scratch.stage)
+    }
+
+    fn event_in_next(&self, forces: &Forces) -> bool {
+        self.grip_ends(&self.next, forces) || self.parting(&self.next, forces).is_some() || self.cord_breaks(&self.next)
     }
 
     fn grip_ends(&self, y: &[f64], forces: &Forces) -> bool {

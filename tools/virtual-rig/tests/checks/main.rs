@@ -6,5 +6,6 @@ mod faults;
 mod host;
 mod performance;
 mod pty;
+mod scenarios;
 mod sensors;
 mod support;

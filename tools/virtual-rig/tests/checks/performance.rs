@@ -1,6 +1,7 @@
 //! A whole scenario, worked out and played in virtual time.
 
 use std::error::Error;
+use virtual_rig::device::catalogue::SensorSet;
 use virtual_rig::performance::{Options, Performance, PrepareError, prepare};
 use virtual_rig::play::virtual_time::{Delivered, Delivery, VirtualPlay};
 
@@ -8,8 +9,15 @@ fn nominal(seed: u64) -> Result<Performance, PrepareError> {
     prepare(&Options { seed, pace: 0.1, ..Options::default() })
 }
 
+/// Every kind of randomness at once.
+fn noisy(seed: u64) -> Result<Performance, Box<dyn Error>> {
+    let faults = ["all:bit-errors=1e-6", "winch-node:garbage@r-1+0.2", "shuttle-node:reboot@r-0.5+0.2", "all:batch=16"];
+    let faults = faults.into_iter().map(str::parse).collect::<Result<_, _>>()?;
+    Ok(prepare(&Options { seed, pace: 0.1, sensors: SensorSet::Full, faults, ..Options::default() })?)
+}
+
 fn reads(seed: u64) -> Result<Vec<Delivery>, Box<dyn Error>> {
-    Ok(VirtualPlay::new(&nominal(seed)?)?.collect::<Result<_, _>>()?)
+    Ok(VirtualPlay::new(&noisy(seed)?)?.collect::<Result<_, _>>()?)
 }
 
 #[test]
