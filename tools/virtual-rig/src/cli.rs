@@ -2,7 +2,9 @@
 
 use crate::device::catalogue::SensorSet;
 use crate::faults::Fault;
+use crate::launcher::{NOMINAL_CORD_FREE_LENGTH_M, nominal_cord};
 use crate::performance::{Options, Performance, PrepareError, prepare};
+use crate::physics::bench::{BenchPace, cord_on_bench};
 use crate::play::pty::{self, PlayError, PtySettings};
 use crate::play::virtual_time::{Delivered, VirtualPlay};
 use crate::scenario;
@@ -59,6 +61,8 @@ enum Command {
     },
     /// List the scenarios.
     Scenarios,
+    /// Put one nominal cord on a bench (drawn in 11.5 s, held 5 s, let back in 0.4 s) and print its forces.
+    Cord,
     /// Work every scenario out and print its main truths as a table.
     Table,
 }
@@ -90,6 +94,9 @@ struct RigArgs {
     /// Also cells left and right, payload recorder, release pin and beam gates, gas pressure.
     #[arg(long)]
     all_sensors: bool,
+    /// Draw masses, cord force, friction, drag, wind and draw about their nominal values.
+    #[arg(long)]
+    vary: bool,
     /// DEVICE:KIND[=VALUE][@START[+DURATION]], such as winch-node:stall@r-3+2; may be repeated.
     #[arg(long = "fault")]
     faults: Vec<Fault>,
@@ -107,6 +114,7 @@ impl RigArgs {
             cord_temperature_c: self.cord_temperature_c,
             cycle: self.cycle,
             sensors: if self.all_sensors { SensorSet::Full } else { SensorSet::Basic },
+            vary: self.vary,
             faults: self.faults,
         }
     }
@@ -160,6 +168,14 @@ fn carry_out(command: Command) -> Result<(), CliError> {
         Command::Scenarios => {
             for scenario in scenario::all(0, 0) {
                 println!("{:24} {}", scenario.name, scenario.about);
+            }
+            Ok(())
+        }
+        Command::Cord => {
+            let pace = BenchPace { draw_s: 11.5, hold_s: 5.0, return_s: 0.4 };
+            println!("| elongation | drawing, N | letting back, N |\n| --- | --- | --- |");
+            for point in cord_on_bench(&nominal_cord(), 4.0 / NOMINAL_CORD_FREE_LENGTH_M, 17, pace) {
+                println!("| {:.3} | {:.2} | {:.2} |", point.elongation, point.loading_n, point.unloading_n);
             }
             Ok(())
         }

@@ -11,6 +11,7 @@ pub enum Purpose {
         device: u8,
     },
     Gates,
+    Rig,
     Boot {
         device: u8,
     },
@@ -37,6 +38,7 @@ impl Purpose {
     fn stream(self) -> u64 {
         match self {
             Self::Gates => 2,
+            Self::Rig => 3,
             Self::SensorErrors { device } => 0x500 + u64::from(device),
             Self::Boot { device } => 0x300 + u64::from(device),
             Self::Line { device } => 0x400 + u64::from(device),

@@ -24,6 +24,8 @@ pub struct Launcher {
     pub shuttle: Shuttle,
     pub payload: Option<Payload>,
     pub cords: Vec<CordGroup>,
+    /// What the force of all cords has been multiplied by: temperature, cycles, drawn and given factors.
+    pub cord_force_factor: f64,
     pub gas: Option<GasDrive>,
     pub rail: RailBody,
     pub brake: Brake,
@@ -127,6 +129,7 @@ impl Launcher {
 
     /// Multiplies the force of every cord.
     pub fn scale_cords(&mut self, factor: f64) {
+        self.cord_force_factor *= factor;
         for group in &mut self.cords {
             group.kind.law = group.kind.law.scaled(factor);
         }
@@ -166,6 +169,7 @@ pub fn north_pier() -> Launcher {
         shuttle: Shuttle { mass_kg: 2.4, drag_area_m2: 0.02, friction_running_n: 12.0, friction_static_n: 15.0 },
         payload: Some(survey_8()),
         cords: vec![CordGroup { count: NOMINAL_CORD_COUNT, kind: nominal_cord() }],
+        cord_force_factor: 1.0,
         gas: None,
         rail: RailBody { mass_kg: 160.0, stiffness_n_per_m: 2.5e6, damping_n_s_per_m: 4.0e3 },
         brake: Brake {

@@ -1,6 +1,7 @@
 //! One scenario worked out before it is played: the true motion and everything the truth log will say about it.
 
 use crate::device::catalogue::{self, DeviceSpec, SensorSet};
+use crate::draw::{Draw, Purpose};
 use crate::edges::{self, Edge};
 use crate::faults::Fault;
 use crate::launcher::Launcher;
@@ -28,6 +29,9 @@ pub struct Options {
     /// Trial number in a series; scenario `ageing` depends on it.
     pub cycle: u32,
     pub sensors: SensorSet,
+    /// Draws masses, cord force, friction, drag, wind and draw about their nominal values, as no rig is quite what its
+    /// file says.
+    pub vary: bool,
     pub faults: Vec<Fault>,
 }
 
@@ -43,6 +47,7 @@ impl Default for Options {
             cord_temperature_c: None,
             cycle: 0,
             sensors: SensorSet::Basic,
+            vary: false,
             faults: Vec::new(),
         }
     }
@@ -298,6 +303,9 @@ fn adapted(options: &Options) -> Result<Scenario, PrepareError> {
         .ok_or_else(|| PrepareError::NoSuchScenario { name: options.scenario.clone(), known: known() })?;
     let launcher = &mut scenario.launcher;
     check("pace", options.pace, 0.0, 10.0)?;
+    if options.vary {
+        vary(launcher, &mut scenario.acts, options.seed);
+    }
     if let Some(mass_kg) = options.payload_mass_kg {
         check("payload mass in kg", mass_kg, 0.0, 100.0)?;
         launcher.payload.iter_mut().for_each(|payload| payload.mass_kg = mass_kg);
@@ -314,6 +322,36 @@ fn adapted(options: &Options) -> Result<Scenario, PrepareError> {
         check("cell offset in N", offset_n, -1000.0, 1000.0)?;
     }
     Ok(scenario)
+}
+
+/// Standard deviations of what [`Options::vary`] draws.
+const VARY_PAYLOAD_KG: f64 = 0.010;
+const VARY_SHUTTLE_KG: f64 = 0.005;
+const VARY_CORD_FORCE: f64 = 0.005;
+const VARY_FRICTION_N: f64 = 0.8;
+const VARY_DRAG: f64 = 0.05;
+const VARY_WIND_MPS: f64 = 0.3;
+const VARY_DRAW_M: f64 = 0.005;
+
+fn vary(launcher: &mut Launcher, acts: &mut [Act], seed: u64) {
+    let mut draw = Draw::new(seed, Purpose::Rig);
+    launcher.shuttle.mass_kg += draw.normal(VARY_SHUTTLE_KG);
+    let friction_n = draw.normal_within(VARY_FRICTION_N, 4.0);
+    launcher.shuttle.friction_running_n += friction_n;
+    launcher.shuttle.friction_static_n += friction_n;
+    launcher.shuttle.drag_area_m2 *= 1.0 + draw.normal(VARY_DRAG);
+    launcher.head_wind_mps += draw.normal(VARY_WIND_MPS);
+    launcher.scale_cords(1.0 + draw.normal(VARY_CORD_FORCE));
+    let (payload_kg, payload_drag) = (draw.normal(VARY_PAYLOAD_KG), 1.0 + draw.normal(VARY_DRAG));
+    if let Some(payload) = &mut launcher.payload {
+        payload.mass_kg += payload_kg;
+        payload.drag_area_m2 *= payload_drag;
+    }
+    for act in acts {
+        if let Act::Draw { draw_m, .. } = act {
+            *draw_m += draw.normal(VARY_DRAW_M);
+        }
+    }
 }
 
 fn check(what: &'static str, found: f64, min: f64, max: f64) -> Result<(), PrepareError> {

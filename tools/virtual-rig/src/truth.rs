@@ -135,6 +135,10 @@ pub struct RigTruth {
     pub gravity_mps2: f64,
     pub incline_rad: f64,
     pub head_wind_mps: f64,
+    pub payload_drag_area_m2: f64,
+    pub shuttle_drag_area_m2: f64,
+    /// Whether masses, cord force, friction, drag, wind and draw were drawn.
+    pub varied: bool,
     pub pace: f64,
 }
 
@@ -366,7 +370,7 @@ fn rig(performance: &Performance) -> RigTruth {
         shuttle_mass_kg: launcher.shuttle.mass_kg,
         cord_count: launcher.cord_count(),
         cord_mass_total_kg: launcher.cord_mass_kg(),
-        cord_force_factor: options.cord_force_factor.unwrap_or(1.0),
+        cord_force_factor: launcher.cord_force_factor,
         cord_temperature_c: options.cord_temperature_c.unwrap_or(20.0),
         cycle: options.cycle,
         cell_offset_n: options.cell_offset_n.unwrap_or(0.0),
@@ -375,6 +379,9 @@ fn rig(performance: &Performance) -> RigTruth {
         gravity_mps2: launcher.gravity_mps2,
         incline_rad: launcher.incline_rad,
         head_wind_mps: launcher.head_wind_mps,
+        payload_drag_area_m2: launcher.payload.map_or(0.0, |payload| payload.drag_area_m2),
+        shuttle_drag_area_m2: launcher.shuttle.drag_area_m2,
+        varied: options.vary,
         pace: options.pace,
     }
 }

@@ -7,6 +7,7 @@ use virtual_rig::performance::{Options, Performance, prepare};
 use virtual_rig::physics::course::Happening;
 use virtual_rig::physics::trajectory::Row;
 use virtual_rig::scenario;
+use virtual_rig::table;
 use virtual_rig::truth::Truth;
 
 fn performance(scenario: &str, change: impl FnOnce(&mut Options)) -> Performance {
@@ -166,6 +167,16 @@ fn overrides_change_what_they_name() {
     assert!(prepare(&Options { scenario: "nominel".into(), ..Options::default() }).is_err());
 }
 
+#[test]
+fn a_varied_rig_differs_from_seed_to_seed_by_about_a_percent() {
+    let speeds: Vec<f64> = (1..=6)
+        .map(|seed| performance("nominal", |options| (options.vary, options.seed) = (true, seed)))
+        .map(|performance| speed_mps(&Truth::of(&performance, "virtual", 0, &[])))
+        .collect();
+    let (least, most) = (speeds.iter().copied().fold(f64::MAX, f64::min), speeds.iter().copied().fold(0.0, f64::max));
+    assert!((0.02..0.8).contains(&(most - least)), "launch speeds {speeds:?}");
+}
+
 /// A shuttle coasting on its own: −(friction + weight along the rail + drag)/m.
 #[test]
 fn the_coast_down_slows_by_friction_weight_and_drag() {
@@ -183,4 +194,16 @@ fn the_coast_down_slows_by_friction_weight_and_drag() {
         n_checked += 1;
     }
     assert!(n_checked > 1000, "only {n_checked} free rows");
+}
+
+/// The last column, the size of rounding errors, may differ from machine to machine.
+#[test]
+fn the_documents_table_is_what_the_tool_prints() {
+    let document = include_str!("../../README.md");
+    for scenario in scenario::all(0, 0) {
+        let options = Options { scenario: scenario.name.into(), ..Options::default() };
+        let line = table::row(&prepare(&options).expect("a performance"));
+        let (told, _) = line.trim_end_matches(" |").rsplit_once(" | ").expect("a table has columns");
+        assert!(document.contains(told), "README.md lacks this line; print it anew with `virtual-rig table`:\n{line}");
+    }
 }

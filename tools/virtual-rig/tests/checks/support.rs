@@ -22,6 +22,7 @@ pub fn bare(mass_kg: f64) -> Launcher {
         shuttle: Shuttle { mass_kg, drag_area_m2: 0.0, friction_running_n: 0.0, friction_static_n: 1e-9 },
         payload: None,
         cords: Vec::new(),
+        cord_force_factor: 1.0,
         gas: None,
         rail: RailBody { mass_kg: 1e18, stiffness_n_per_m: 0.0, damping_n_s_per_m: 0.0 },
         brake: Brake {
