@@ -20,8 +20,10 @@ impl<const N: usize> March<'_, N> {
 
     /// After a change of phase: the payload goes if nothing pushes it any more.
     pub(super) fn separate_if_free(&mut self) {
+        const NOTHING: f64 = 1e-9;
         let slope = self.slope();
-        if self.contact_n(&self.y, &slope) < 0.0 {
+        let weight_n = self.system.setup.payload_mass_kg * self.system.setup.gravity_mps2;
+        if self.contact_n(&self.y, &slope) <= NOTHING * weight_n {
             self.separate();
         }
     }
