@@ -18,7 +18,6 @@ const EVENTS_MAX: usize = 100_000;
 pub(super) struct DevicePass {
     pub(super) name: String,
     handle: RawDevice,
-    description: Option<DeviceDescription>,
     layout: u16,
     clock: ClockSamples,
     edges: Vec<Edge>,
@@ -137,9 +136,9 @@ impl<'w> RawPass<'w> {
     fn opening(&mut self, host_ns: i64, open: SegmentOpen) -> Result<(), SealError> {
         for device in open.devices.iter().skip(self.devices.len()) {
             let handle = self.writer.add_device(&device.name)?;
-            let (name, description, clock) = (device.name.clone(), None, ClockSamples::default());
+            let (name, clock) = (device.name.clone(), ClockSamples::default());
             let (layout, edges, n_samples, n_missing) = (0, Vec::new(), 0, 0);
-            self.devices.push(DevicePass { name, handle, description, layout, clock, edges, n_samples, n_missing });
+            self.devices.push(DevicePass { name, handle, layout, clock, edges, n_samples, n_missing });
         }
         if self.rig_text.as_ref() != Some(&open.rig_text) {
             if self.rig_text.is_some() {
@@ -156,7 +155,6 @@ impl<'w> RawPass<'w> {
         let device = &mut self.devices[usize::from(device.0)];
         device.clock.captured(&Captured::Description(description.clone()));
         device.layout = self.writer.describe(device.handle, description)?;
-        device.description = Some(description.clone());
         Ok(())
     }
 

@@ -17,7 +17,7 @@ use super::error::SealError;
 use super::player::{Told, play};
 use super::publish::{Part, Published};
 use super::raw_pass::{DevicePass, Events, RawPass};
-use super::value_pass::{ForReading, ValuePass};
+use super::value_pass::{ForReading, KEPT_SAMPLES_MAX, ValuePass};
 
 /// A trial file holds values as well as counts: room asked for, as a multiple of the journal's bytes. Measured on four
 /// channels at 10 kHz: see the bench.
@@ -163,7 +163,8 @@ fn write(reader: &JournalReader, range: &TrialRange, ahead: &Ahead, path: &Path)
     let mut gathered = raw.finish()?;
     let results = match &rig {
         Ok(rig) => {
-            let mut values = ValuePass::new(&mut writer, rig, &gathered.devices, &gathered.clocks, header.zero_host_ns);
+            let (devices, clocks) = (&gathered.devices, &gathered.clocks);
+            let mut values = ValuePass::new(&mut writer, rig, devices, clocks, header.zero_host_ns, KEPT_SAMPLES_MAX);
             play(reader, range, &mut |told: Told| values.take(&told))?;
             let for_reading = values.finish(&mut gathered.events);
             conditions(rig).iter().try_for_each(|condition| writer.add_condition(condition))?;

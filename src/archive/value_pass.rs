@@ -19,7 +19,7 @@ use super::raw_pass::{DevicePass, Events, seconds_between};
 
 /// Samples handed to the reading, all signals together (16 bytes each): ten minutes of four channels at 10 kHz.
 /// The latest are kept: the launch is at a trial's end.
-const KEPT_SAMPLES_MAX: usize = 24_000_000;
+pub(super) const KEPT_SAMPLES_MAX: usize = 24_000_000;
 
 struct SignalPass {
     channel: Channel,
@@ -57,6 +57,7 @@ pub(super) struct ValuePass<'a> {
     routes: Vec<DeviceRoutes>,
     signals: Vec<SignalPass>,
     n_kept: usize,
+    kept_max: usize,
 }
 
 /// What the reading is given.
@@ -74,10 +75,11 @@ impl<'a> ValuePass<'a> {
         devices: &'a [DevicePass],
         clocks: &'a [Vec<ClockPiece>],
         zero_host_ns: i64,
+        kept_max: usize,
     ) -> Self {
         let signals = rig.channels.iter().map(|channel| SignalPass::new(channel.clone())).collect();
         let routes = devices.iter().map(|_| DeviceRoutes::default()).collect();
-        Self { writer, rig, devices, clocks, zero_host_ns, routes, signals, n_kept: 0 }
+        Self { writer, rig, devices, clocks, zero_host_ns, routes, signals, n_kept: 0, kept_max }
     }
 
     pub(super) fn take(&mut self, told: &Told) -> Result<(), SealError> {
@@ -140,7 +142,7 @@ impl<'a> ValuePass<'a> {
 
     /// Keeps what the reading will see within its bound: a quarter of it goes at once, from every signal alike.
     fn drop_oldest(&mut self) {
-        if self.n_kept <= KEPT_SAMPLES_MAX {
+        if self.n_kept <= self.kept_max {
             return;
         }
         let kept =
@@ -267,3 +269,6 @@ fn counts_range(encoding: Encoding) -> Option<RangeInclusive<f64>> {
     let half = 2_f64.powi(bits - 1);
     Some(-half..=half - 1.0)
 }
+
+#[cfg(test)]
+mod tests;
