@@ -38,6 +38,39 @@ fn launch_speed_peak_and_release_keep_their_promises() {
     }
 }
 
+#[test]
+fn every_outcome_is_called_by_its_name() {
+    let rig = rehearsal_rig();
+    let cases = [
+        ("let-down", Outcome::LetDown),
+        ("hang-fire", Outcome::HangFire),
+        ("hook-slip", Outcome::HookSlip),
+        ("early-release", Outcome::EarlyRelease),
+        ("cord-failure-in-hold", Outcome::CordFailure),
+        ("cord-failure-in-stroke", Outcome::CordFailure),
+        ("payload-left-early", Outcome::PayloadLeftEarly),
+        ("payload-not-separated", Outcome::PayloadNotSeparated),
+        ("arrest-overrun", Outcome::ArrestOverrun),
+        ("soft-rail", Outcome::Launched),
+        ("stage-1", Outcome::Launched),
+    ];
+    for (scenario, wanted) in cases {
+        for seed in 1..=2 {
+            let trial = play(&Options { scenario: scenario.to_owned(), ..nominal(seed) }, &rig);
+            let reading = read(&trial.signals, &rig);
+            assert_eq!(reading.outcome, wanted, "{scenario} seed {seed}: {:?}", reading.outcome_evidence);
+        }
+    }
+}
+
+#[test]
+fn work_of_the_winch_back_is_the_line_s() {
+    let trial = play(&nominal(2), &rehearsal_rig());
+    let reading = read(&trial.signals, &rehearsal_rig());
+    let error = value(&reading, "winch_back_work") / trial.winch_work_j - 1.0;
+    assert!(error.abs() < 0.004, "{error}");
+}
+
 fn replayed(options: &Options) -> (VirtualTrial, Reading, Replay) {
     let rig = rehearsal_rig();
     let trial = play(options, &rig);

@@ -1,16 +1,19 @@
 //! How near the truth readings come, and how often their intervals hold it: a table over seeds of the virtual rig.
 //!
-//!     cargo run --example coverage -- [SEEDS] [FIRST]
+//!     cargo run --example coverage -- nominal 100 1       results of a scenario, seeds 1 to 100
+//!     cargo run --example coverage -- outcomes 5 1        what each scenario is called
 //!
 //! Every seed draws calibration errors, clocks and noise that the reading never sees. Sensor sets are made by leaving
-//! channels out. Prints a Markdown table; `docs` hold the last one.
+//! channels out. Prints Markdown.
 
+use std::collections::BTreeMap;
 use std::process::ExitCode;
 
 use tautrail::calibration::Signal;
 use tautrail::reading::{Reading, read};
-use tautrail::rig::Role;
+use tautrail::rig::{Rig, Role};
 use virtual_rig::performance::Options;
+use virtual_rig::scenario::{self, Scenario};
 
 #[path = "../tests/support/virtual_trial.rs"]
 mod virtual_trial;
@@ -37,7 +40,7 @@ const QUANTITIES: [Quantity; 8] = [
     Quantity { result: "separation_x", unit: "m", truth: |t| t.truth.launch.as_ref().map(|l| l.separation_x_m) },
     Quantity { result: "hold_tension", unit: "N", truth: |t| Some(t.truth.tension.hold_line_n) },
     Quantity { result: "draw", unit: "m", truth: |t| Some(4.0 - t.truth.tension.hold_x_m) },
-    Quantity { result: "winch_back_work", unit: "J", truth: |t| t.truth.energy.as_ref().map(|e| e.winch_work_j) },
+    Quantity { result: "winch_back_work", unit: "J", truth: |t| Some(t.winch_work_j) },
 ];
 
 fn peak(trial: &VirtualTrial) -> Option<(f64, f64)> {
@@ -90,32 +93,49 @@ impl Tally {
     }
 }
 
-fn main() -> ExitCode {
-    let mut numbers = std::env::args().skip(1).map(|word| word.parse::<u64>());
-    let (Ok(n_seeds), Ok(first)) = (numbers.next().unwrap_or(Ok(20)), numbers.next().unwrap_or(Ok(1))) else {
-        eprintln!("coverage [SEEDS] [FIRST]: two whole numbers");
-        return ExitCode::from(2);
-    };
-    let rig = rehearsal_rig();
+/// What the crew's rig file would say where it is not the nominal rig.
+fn rig_for(scenario: &Scenario) -> Rig {
+    let mut rig = rehearsal_rig();
+    rig.rail.incline_rad = scenario.launcher.incline_rad;
+    rig.site.head_wind_mps = scenario.launcher.head_wind_mps;
+    rig
+}
+
+/// One line a scenario: what happened, and what the reading called it, over seeds.
+fn print_outcomes(n_seeds: u64, first: u64) {
+    println!("| scenario | happened | read as |\n| --- | --- | --- |");
+    for scenario in scenario::all(0, first) {
+        let rig = rig_for(&scenario);
+        let mut called = BTreeMap::<String, u64>::new();
+        let mut happened = "";
+        for seed in first..first + n_seeds {
+            let options = Options { scenario: scenario.name.to_owned(), seed, pace: 0.3, ..Options::default() };
+            let trial = play(&options, &rig);
+            happened = trial.truth.outcome;
+            *called.entry(read(&trial.signals, &rig).outcome.word().to_owned()).or_default() += 1;
+        }
+        let called: Vec<String> = called.into_iter().map(|(word, n)| format!("{word} ({n})")).collect();
+        println!("| {} | {happened} | {} |", scenario.name, called.join(", "));
+    }
+}
+
+/// One line a result and sensor set.
+fn print_coverage(name: &str, n_seeds: u64, first: u64) {
+    let Some(scenario) = scenario::by_name(name, 0, first) else { return eprintln!("there is no scenario {name}") };
+    let rig = rig_for(&scenario);
     let mut tallies: Vec<Vec<Tally>> =
         SETS.iter().map(|_| QUANTITIES.iter().map(|_| Tally::default()).collect()).collect();
-    let mut findings = std::collections::BTreeMap::<String, u64>::new();
     for seed in first..first + n_seeds {
-        let trial = play(&Options { seed, pace: 0.5, ..Options::default() }, &rig);
-        for ((set, without), tallies) in SETS.iter().zip(&mut tallies) {
+        let trial = play(&Options { scenario: name.to_owned(), seed, pace: 0.3, ..Options::default() }, &rig);
+        for ((_, without), tallies) in SETS.iter().zip(&mut tallies) {
             let seen: Vec<Signal> = trial.signals.iter().filter(|s| !without.contains(&s.role)).cloned().collect();
             let reading = read(&seen, &rig);
             for (quantity, tally) in QUANTITIES.iter().zip(tallies) {
                 tally.take(&reading, quantity, &trial);
             }
-            *findings.entry(format!("{set}: {}", reading.outcome.word())).or_default() += 1;
-            for finding in &reading.findings {
-                let words: String = finding.chars().filter(|c| !c.is_ascii_digit()).take(60).collect();
-                *findings.entry(format!("{set}: finding: {words}")).or_default() += 1;
-            }
         }
     }
-    println!("Scenario nominal, seeds {first} to {}, rig north-pier (invented).\n", first + n_seeds - 1);
+    println!("Scenario {name}, seeds {first} to {}, rig north-pier (invented).\n", first + n_seeds - 1);
     println!(
         "| result | sensors | median error | 95 % error | mean half-width of the interval | width / error | inside |"
     );
@@ -125,9 +145,18 @@ fn main() -> ExitCode {
             tallies[idx].print(quantity, set);
         }
     }
-    println!();
-    for (words, n) in findings {
-        println!("- {words}: {n}");
+}
+
+fn main() -> ExitCode {
+    let words: Vec<String> = std::env::args().skip(1).collect();
+    let number = |idx: usize, otherwise: u64| words.get(idx).map_or(Ok(otherwise), |word| word.parse::<u64>());
+    let (Some(what), Ok(n_seeds), Ok(first)) = (words.first(), number(1, 20), number(2, 1)) else {
+        eprintln!("coverage outcomes|SCENARIO [SEEDS] [FIRST SEED]");
+        return ExitCode::from(2);
+    };
+    match what.as_str() {
+        "outcomes" => print_outcomes(n_seeds, first),
+        name => print_coverage(name, n_seeds, first),
     }
     ExitCode::SUCCESS
 }

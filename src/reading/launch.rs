@@ -55,8 +55,13 @@ pub(super) fn find(track: &Track, release_s: f64, rig: &Rig) -> Result<Separatio
 }
 
 fn at_crossing(track: &Track, idx: usize, rig: &Rig) -> Separation {
-    let motion = &track.motion;
     let (time_s, u_time_s) = refined(track, idx, rig);
+    at(track, time_s, u_time_s)
+}
+
+/// The payload's state when it leaves at a given instant.
+pub(super) fn at(track: &Track, time_s: f64, u_time_s: f64) -> Separation {
+    let motion = &track.motion;
     let idx = track.index_at(time_s).max(1);
     let share = (time_s - motion.time_s[idx - 1]) / (motion.time_s[idx] - motion.time_s[idx - 1]);
     let between = |column: &[f64]| column[idx - 1] * (1.0 - share) + column[idx] * share;
@@ -116,18 +121,23 @@ fn relative_u_drag(rig: &Rig) -> f64 {
     relative(rig.payload.drag_area_m2).hypot(relative(rig.payload.mass_kg))
 }
 
+/// How the loss of contact was seen, in words.
+pub(super) fn evidence(found: &Separation, rig: &Rig) -> String {
+    let level = contact_lost_mps2(rig, found.speed_mps);
+    format!("specific force of the shuttle fell to {level:.2} m/s², where the contact force on the payload is zero")
+}
+
 /// Writes instants and results of the separation.
-pub(super) fn report(found: &Separation, track: &Track, sensors: &Sensors<'_>, rig: &Rig, book: &mut Book) {
+pub(super) fn report(
+    found: &Separation,
+    evidence: &str,
+    track: &Track,
+    sensors: &Sensors<'_>,
+    rig: &Rig,
+    book: &mut Book,
+) {
     let by = &track.motion.sensors;
-    book.instant(
-        "separation",
-        found.time_s,
-        found.u_time_s,
-        format!(
-            "specific force of the shuttle fell to {:.2} m/s², where the contact force on the payload is zero ({by})",
-            contact_lost_mps2(rig, found.speed_mps)
-        ),
-    );
+    book.instant("separation", found.time_s, found.u_time_s, format!("{evidence} ({by})"));
     let place = Budget::default().with("encoder and smoother", found.u_x_m);
     if track.has_position {
         book.result(

@@ -18,6 +18,7 @@ mod rows;
 mod sensors;
 mod series;
 mod smoother;
+mod stroke;
 #[cfg(test)]
 pub(crate) mod synthetic;
 mod tension;

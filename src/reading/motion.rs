@@ -63,6 +63,8 @@ const INCLINE_RAD: f64 = 0.002;
 pub(super) struct Setting {
     pub release_s: f64,
     pub u_release_s: f64,
+    /// Since when the shuttle stood before the release; `None` when it was let go while it still moved.
+    pub stood_from_s: Option<f64>,
     /// g·sin θ.
     pub gravity_along_mps2: f64,
     /// Where the shuttle stands at the hold when no encoder says so, and how well that is known.
@@ -194,7 +196,8 @@ impl Smoothing<'_> {
     }
 
     fn stands(&self, time_s: f64) -> bool {
-        time_s < self.setting.release_s - 0.002 - 3.0 * self.setting.u_release_s
+        let released_s = self.setting.release_s - 0.002 - 3.0 * self.setting.u_release_s;
+        self.setting.stood_from_s.is_some_and(|from_s| time_s > from_s + 2.0 * BIN_S && time_s < released_s)
             || self.rest_s.is_some_and(|rest_s| time_s > rest_s + 2.0 * BIN_S)
     }
 
@@ -399,10 +402,11 @@ fn prior(position: Option<&Signal>, force: Option<&Signal>, nodes: &[Node], sett
     let mut state = SVector::zeros();
     state[X] = first_x.unwrap_or(setting.planned_x_m);
     let u_x = if first_x.is_some() { 0.01 } else { setting.u_planned_x_m };
+    let u_v = if setting.stood_from_s.is_some_and(|from_s| from_s < nodes[0].time_s) { 0.1 } else { 3.0 };
     let u_bias = force.map_or(1e-3, |signal| signal.zero_uncertainty.hypot(9.81 * INCLINE_RAD));
     let u_scale = force.map_or(1e-6, |signal| signal.scale_relative_uncertainty.max(1e-6));
     let u_encoder = position.map_or(1e-6, |signal| signal.scale_relative_uncertainty.max(1e-7));
-    let deviations = SVector::<f64, N>::from([u_x, 0.1, 1.0, u_bias, u_scale, u_encoder, 1e-3, 1e-1]);
+    let deviations = SVector::<f64, N>::from([u_x, u_v, 1.0, u_bias, u_scale, u_encoder, 1e-3, 1e-1]);
     Estimate { state, covariance: SMatrix::from_diagonal(&deviations.component_mul(&deviations)) }
 }
 

@@ -5,9 +5,9 @@
 
 use crate::rig::Rig;
 
-use super::launch::Separation;
 use super::motion::Track;
-use super::phases::Phases;
+use super::phases::{Drop, Phases};
+use super::read::Stroke;
 use super::release::Release;
 use super::result::Outcome;
 use super::sensors::Sensors;
@@ -16,6 +16,12 @@ use super::tension::Hold;
 
 /// A shuttle that got no farther than this after the release did not go.
 const HANGS_M: f64 = 0.1;
+/// Within this time after it.
+const SOON_S: f64 = 0.5;
+/// Movement of the shuttle in a moment of the hold that only a hook can give.
+const JUMP_M: f64 = 0.003;
+/// Load that stays under this share of what it was is lost for good.
+const STAYS_AWAY: f64 = 0.95;
 /// Share of the plan's draw that still counts as the plan's draw.
 const SHORT_OF_PLAN: f64 = 0.95;
 /// Tension that comes back after a release, as a share of the hold, means that the hook caught again.
@@ -27,7 +33,7 @@ pub(super) struct Evidence<'a> {
     pub phases: &'a Phases,
     pub release: Option<&'a Release>,
     pub track: Option<&'a Track>,
-    pub separation: Option<&'a Separation>,
+    pub stroke: &'a Stroke,
     pub hold: &'a Hold,
     pub rig: &'a Rig,
 }
@@ -64,12 +70,9 @@ impl Evidence<'_> {
             words.push(format!("the record ends at {:.2} s with the tension still above slack", phases.end_s));
             return Outcome::Truncated;
         }
-        if let Some(drop) = phases.partial_drops.first() {
-            words.push(format!(
-                "the load fell at once from {:.0} to {:.0} N at {:.2} s without a release",
-                drop.from_n, drop.to_n, drop.time_s
-            ));
-            return if self.moved_forward_at(drop.time_s) { Outcome::HookSlip } else { Outcome::CordFailure };
+        if let Some((outcome, sentence)) = phases.partial_drops.iter().find_map(|drop| self.partial_drop(drop)) {
+            words.push(sentence);
+            return outcome;
         }
         words.push(format!("tension went back to slack by {until_s:.2} s, slowly: the winch let down"));
         match self.draw_m() {
@@ -91,7 +94,7 @@ impl Evidence<'_> {
             words.push("no channel shows the shuttle's motion: whether it launched is not known".to_owned());
             return Outcome::Truncated;
         };
-        let advance_m = self.advance_m(track);
+        let advance_m = self.advance_m(track, release.time_s);
         if advance_m < HANGS_M && self.phases.end_s - release.time_s > 0.5 {
             words.push(format!("the shuttle moved only {advance_m:.3} m after it"));
             return Outcome::HangFire;
@@ -101,11 +104,12 @@ impl Evidence<'_> {
             Some(rest_s) => format!("the shuttle moved {advance_m:.2} m and stood at {rest_s:.2} s"),
             None => format!("the record ends at {:.2} s before the shuttle stood", self.phases.end_s),
         });
-        let Some(separation) = self.separation else {
-            words.push("the payload was pushed all the way: no loss of contact was seen".to_owned());
+        let Some(separation) = self.stroke.separation else {
+            let pushed = "the payload was pushed all the way: no loss of contact was seen";
+            words.push(self.stroke.together.clone().unwrap_or_else(|| pushed.to_owned()));
             return if finished { Outcome::PayloadNotSeparated } else { Outcome::Truncated };
         };
-        words.push(format!("the contact force on the payload reached zero at {:.4} s", separation.time_s));
+        words.push(format!("the payload left at {:.4} s, x = {:.3} m", separation.time_s, separation.x_m));
         if !finished {
             return Outcome::Truncated;
         }
@@ -120,6 +124,16 @@ impl Evidence<'_> {
                 self.rig.rail.length_m
             ));
             return Outcome::ArrestOverrun;
+        }
+        if let Some(step) = self.stroke.step {
+            words.push(format!(
+                "in the stroke, at x = {:.2} m, the specific force changed at once from {:.0} to {:.0} m/s²: {}",
+                step.x_m,
+                step.from_mps2,
+                step.to_mps2,
+                if step.is_up() { "the shuttle lost its payload" } else { "force was lost, as when a cord fails" }
+            ));
+            return if step.is_up() { Outcome::PayloadLeftEarly } else { Outcome::CordFailure };
         }
         if let Some(draw_m) = self.draw_m().filter(|draw_m| *draw_m < SHORT_OF_PLAN * self.rig.plan.draw_m) {
             words.push(format!(
@@ -138,7 +152,7 @@ impl Evidence<'_> {
     fn caught_again(&self, release: &Release) -> Option<String> {
         let line = self.sensors.line?;
         let held_n = self.hold.tension_n?.0;
-        let later = stats_between(line, release.time_s + 0.2, release.time_s + 0.5)?;
+        let later = stats_between(line, release.time_s + 0.2, release.time_s + 0.45)?;
         let later_n = later.mean - self.phases.zero_n;
         (later_n > CAUGHT_SHARE * held_n)
             .then(|| format!("the line's tension came back to {later_n:.0} N after it: the hook caught again"))
@@ -148,15 +162,30 @@ impl Evidence<'_> {
         self.hold.x_m.map(|(x_m, _)| self.rig.draw_m(x_m))
     }
 
-    fn advance_m(&self, track: &Track) -> f64 {
+    /// How far the shuttle got soon after the release: a jam that is let down later moves then, not now.
+    fn advance_m(&self, track: &Track, release_s: f64) -> f64 {
         let first = track.motion.x_m.first().copied().unwrap_or(0.0);
-        track.motion.x_m.iter().map(|x_m| x_m - first).fold(0.0, f64::max)
+        let soon = track.index_at(release_s + SOON_S) + 1;
+        track.motion.x_m.iter().take(soon).map(|x_m| x_m - first).fold(0.0, f64::max)
     }
 
-    fn moved_forward_at(&self, time_s: f64) -> bool {
-        let Some(position) = self.sensors.position else { return false };
-        let before = stats_between(position, time_s - 0.1, time_s - 0.03);
-        let after = stats_between(position, time_s + 0.05, time_s + 0.15);
-        before.zip(after).is_some_and(|(before, after)| after.mean - before.mean > 0.02)
+    /// A sudden partial fall of the load: load that stays away is a failed cord, a shuttle that jumped is a slipped hook.
+    fn partial_drop(&self, drop: &Drop) -> Option<(Outcome, String)> {
+        let fell =
+            format!("the load fell at once from {:.0} to {:.0} N at {:.2} s", drop.from_n, drop.low_n, drop.time_s);
+        let jumped_m = self.sensors.position.and_then(|position| {
+            let before = stats_between(position, drop.time_s - 0.1, drop.time_s - 0.02)?;
+            let after = stats_between(position, drop.time_s + 0.1, drop.time_s + 0.3)?;
+            Some(after.mean - before.mean)
+        });
+        if let Some(jumped_m) = jumped_m.filter(|jumped_m| *jumped_m > JUMP_M) {
+            let sentence =
+                format!("{fell} while the shuttle jumped {:.1} mm forward and was held again", 1e3 * jumped_m);
+            return Some((Outcome::HookSlip, sentence));
+        }
+        let stays_away = drop.to_n < STAYS_AWAY * drop.from_n;
+        stays_away.then(|| {
+            (Outcome::CordFailure, format!("{fell} and stayed at {:.0} N with the shuttle standing", drop.to_n))
+        })
     }
 }

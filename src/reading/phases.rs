@@ -13,7 +13,10 @@ use super::series::{BIN_S, Binned, stats_between};
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) struct Drop {
     pub time_s: f64,
+    /// Mean before it, least value in it, means some hundredths and a tenth of a second later.
     pub from_n: f64,
+    pub low_n: f64,
+    pub soon_n: f64,
     pub to_n: f64,
 }
 
@@ -32,7 +35,7 @@ pub(super) struct Phases {
     pub hold_start_s: Option<f64>,
     pub hold_end_s: Option<f64>,
     pub release_hint_s: Option<f64>,
-    /// Drops of a tenth to a half of the load that were no release.
+    /// Sudden drops that were no release.
     pub partial_drops: Vec<Drop>,
 }
 
@@ -84,8 +87,8 @@ impl Phases {
         self.loaded_from_s = load.filled().find_map(loaded);
         self.loaded_until_s = load.filled().rev().find_map(loaded);
         let least_n = f64::max(3.0 * rig.plan.slack_tension_n, 0.1 * (self.peak_load_n - self.zero_n));
-        for drop in sudden_drops(&load, self.zero_n, least_n) {
-            if drop.to_n - self.zero_n < 0.5 * (drop.from_n - self.zero_n) {
+        for drop in sudden_drops(&load, self.zero_n, self.peak_load_n, least_n) {
+            if drop.soon_n - self.zero_n < 0.5 * (drop.from_n - self.zero_n) {
                 self.release_hint_s = Some(drop.time_s);
                 break;
             }
@@ -128,32 +131,30 @@ fn unloaded_indication(load: &Binned, peak_n: f64, slack_n: f64) -> f64 {
     if least.abs() < f64::max(ZERO_SHARE_OF_PEAK * peak_n, slack_n) { least } else { 0.0 }
 }
 
-/// Falls of at least a tenth of the load within [`SUDDEN_BINS`], one a place, in order of time.
-fn sudden_drops(load: &Binned, zero_n: f64, least_n: f64) -> Vec<Drop> {
+/// Falls of the load within two hundredths of a second, one a place, in order of time.
+///
+/// A winch lets go of a few newtons in that time, so a twentieth of the peak and a tenth of the load is sudden.
+fn sudden_drops(load: &Binned, zero_n: f64, peak_n: f64, least_n: f64) -> Vec<Drop> {
+    const LATER: usize = (0.1 / BIN_S) as usize;
+    let sudden_n = 0.05 * (peak_n - zero_n);
     let mut drops = Vec::new();
     let mut idx = 2 + SUDDEN_BINS;
-    while idx + SUDDEN_BINS < load.bins.len() {
-        let before = load.mean(idx - 2 - SUDDEN_BINS..idx - 1);
-        let after = load.mean(idx + 1..idx + SUDDEN_BINS);
-        if let (Some(from_n), Some(to_n)) = (before, after)
+    while idx < load.bins.len() {
+        let before = load.mean(idx - 2..idx - 1);
+        let low = load.bins[idx].map(|bin| bin.min);
+        if let (Some(from_n), Some(low_n)) = (before, low)
             && from_n - zero_n > least_n
-            && to_n - zero_n < 0.9 * (from_n - zero_n)
+            && from_n - low_n > sudden_n.max(0.1 * (from_n - zero_n))
         {
-            let steepest = steepest_bin(load, idx - 1..idx + SUDDEN_BINS);
-            let settled = load.mean(steepest + 2..steepest + 2 + SUDDEN_BINS).unwrap_or(to_n);
-            drops.push(Drop { time_s: load.time_s(steepest), from_n, to_n: settled });
-            idx = steepest + 3 * SUDDEN_BINS;
+            let soon_n = load.mean(idx + 2..idx + 2 + SUDDEN_BINS).unwrap_or(low_n);
+            let to_n = load.mean(idx + LATER..idx + 2 * LATER).unwrap_or(soon_n);
+            drops.push(Drop { time_s: load.time_s(idx), from_n, low_n, soon_n, to_n });
+            idx += LATER;
         } else {
             idx += 1;
         }
     }
     drops
-}
-
-/// The bin with the largest spread inside it or towards the next.
-fn steepest_bin(load: &Binned, bins: std::ops::Range<usize>) -> usize {
-    let spread = |idx: usize| load.bins.get(idx).copied().flatten().map_or(0.0, |bin| bin.max - bin.min);
-    bins.clone().max_by(|&a, &b| spread(a).total_cmp(&spread(b))).unwrap_or(bins.start)
 }
 
 /// Without a release line: the shuttle starts toward the exit at once.

@@ -16,6 +16,7 @@ use super::release::{self, Release};
 use super::result::{Outcome, Reading};
 use super::rows::Book;
 use super::sensors::Sensors;
+use super::stroke::{self, Step};
 use super::tension;
 
 /// How well the nominal place of the drawn shuttle is known without an encoder.
@@ -41,8 +42,9 @@ pub fn read(signals: &[Signal], rig: &Rig) -> Reading {
     let hold = tension::report(&sensors, &phases, release.as_ref(), rig, &mut book);
     let gravity_along_mps2 = gravity_along_mps2(rig);
     let track = release.as_ref().and_then(|release| smoothed(&sensors, &phases, release, rig));
-    let separation =
-        release.as_ref().and_then(|release| stroke_rows(&sensors, track.as_ref(), release, rig, &mut book));
+    let rows = release.as_ref().map(|release| stroke_rows(&sensors, track.as_ref(), release, rig, &mut book));
+    let stroke = rows.unwrap_or_default();
+    let separation = stroke.separation;
     if release.is_none() {
         without_release(&mut book);
     }
@@ -56,7 +58,7 @@ pub fn read(signals: &[Signal], rig: &Rig) -> Reading {
         phases: &phases,
         release: release.as_ref(),
         track: track.as_ref(),
-        separation: separation.as_ref(),
+        stroke: &stroke,
         hold: &hold,
         rig,
     });
@@ -116,6 +118,7 @@ fn smoothed(sensors: &Sensors<'_>, phases: &Phases, release: &Release, rig: &Rig
     let setting = Setting {
         release_s: release.time_s,
         u_release_s: release.u_s,
+        stood_from_s: phases.hold_start_s,
         gravity_along_mps2: gravity_along_mps2(rig),
         planned_x_m: rig.rail.zero_mark_x_m - rig.plan.draw_m,
         u_planned_x_m: U_PLANNED_X_M,
@@ -125,14 +128,17 @@ fn smoothed(sensors: &Sensors<'_>, phases: &Phases, release: &Release, rig: &Rig
     motion::track(sensors.position, sensors.specific_force, &setting)
 }
 
+/// What the power stroke showed.
+#[derive(Debug, Clone, Default)]
+pub(super) struct Stroke {
+    pub separation: Option<Separation>,
+    pub step: Option<Step>,
+    /// Why the payload is taken to have stayed on the shuttle.
+    pub together: Option<String>,
+}
+
 /// Separation and all that hangs on it.
-fn stroke_rows(
-    sensors: &Sensors<'_>,
-    track: Option<&Track>,
-    release: &Release,
-    rig: &Rig,
-    book: &mut Book,
-) -> Option<Separation> {
+fn stroke_rows(sensors: &Sensors<'_>, track: Option<&Track>, release: &Release, rig: &Rig, book: &mut Book) -> Stroke {
     let Some(track) = track else {
         let reason = format!(
             "needs an encoder or an accelerometer: {}; {}",
@@ -140,7 +146,7 @@ fn stroke_rows(
             sensors.why_not(Role::ShuttleSpecificForce)
         );
         motion_absent(&reason, book);
-        return None;
+        return Stroke::default();
     };
     if track.consistency > MISFIT {
         book.findings.push(format!(
@@ -148,25 +154,48 @@ fn stroke_rows(
             track.consistency.sqrt()
         ));
     }
-    match launch::find(track, release.time_s, rig) {
-        Ok(separation) => {
-            launch::report(&separation, track, sensors, rig, book);
-            peak::report_sensor(track, book);
-            peak::report(sensors, track, (release.time_s, separation.time_s), rig, book);
-            Some(separation)
-        }
+    peak::report_sensor(track, book);
+    let crossing = match launch::find(track, release.time_s, rig) {
+        Ok(crossing) => crossing,
         Err(reason) => {
             motion_absent(&reason, book);
-            None
+            return Stroke::default();
         }
+    };
+    let step = stroke::step(track, release.time_s, crossing.time_s);
+    let (separation, evidence) = match step.filter(Step::is_up) {
+        Some(step) => (launch::at(track, step.time_s, U_STEP_S), left_early(&step)),
+        None => (crossing, launch::evidence(&crossing, rig)),
+    };
+    peak::report(sensors, track, (release.time_s, separation.time_s), rig, book);
+    if let Some(together) = stroke::coasted_together(track, &crossing, rig).filter(|_| !step.is_some_and(|s| s.is_up()))
+    {
+        for name in SEPARATION_NAMES {
+            book.absent(name, together.clone());
+        }
+        return Stroke { separation: None, step, together: Some(together) };
     }
+    launch::report(&separation, &evidence, track, sensors, rig, book);
+    Stroke { separation: Some(separation), step, together: None }
+}
+
+/// How well the instant of a step is known.
+const U_STEP_S: f64 = 2e-4;
+
+fn left_early(step: &Step) -> String {
+    format!(
+        "specific force of the shuttle rose at once from {:.0} to {:.0} m/s² at x = {:.2} m: it became lighter",
+        step.from_mps2, step.to_mps2, step.x_m
+    )
 }
 
 /// Mean normalised squared innovation above which the sensors are said to disagree.
 const MISFIT: f64 = 9.0;
 
+const SEPARATION_NAMES: [&str; 3] = ["launch_speed", "airspeed_at_separation", "separation_x"];
+
 fn motion_absent(reason: &str, book: &mut Book) {
-    for name in ["launch_speed", "airspeed_at_separation", "separation_x"].into_iter().chain(peak::NAMES) {
+    for name in SEPARATION_NAMES.into_iter().chain(peak::NAMES) {
         book.absent(name, reason);
     }
 }

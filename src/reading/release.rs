@@ -43,7 +43,7 @@ pub(super) fn find(
     position: Option<&Signal>,
     book: &mut Book,
 ) -> Option<Release> {
-    let free_line = line.and_then(|line| stats_between(line, hint_s + 0.15, hint_s + 10.0));
+    let free_line = line.and_then(|line| stats_between(line, hint_s + 0.15, hint_s + 0.9));
     let standing = specific_force.and_then(|signal| stats_between(signal, hint_s - 0.3, hint_s - 0.03));
     let by_line = line.and_then(|line| seen_by_line(line, hint_s, free_line.map_or(0.0, |stats| stats.mean)));
     let near_s = by_line.as_ref().map_or(hint_s, |seen| seen.time_s);

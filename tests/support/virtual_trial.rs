@@ -24,6 +24,8 @@ pub fn rehearsal_rig() -> Rig {
 pub struct VirtualTrial {
     pub signals: Vec<Signal>,
     pub truth: Truth,
+    /// ∫ T dx of the true release line up to the end of the hold.
+    pub winch_work_j: f64,
 }
 
 impl VirtualTrial {
@@ -62,7 +64,11 @@ pub fn play(options: &Options, rig: &Rig) -> VirtualTrial {
     }
     let zero_ns = virtual_play.scenario_zero_host_ns();
     let signals = rig.channels.iter().map(|channel| signal(channel, &heard, zero_ns)).collect();
-    VirtualTrial { signals, truth: virtual_play.truth() }
+    let truth = virtual_play.truth();
+    let hook_s = truth.events.iter().find(|event| event.kind == "hook-opens").map_or(f64::INFINITY, |event| event.t_s);
+    let rows = performance.trajectory.rows.windows(2).take_while(|pair| pair[1].t_s <= hook_s);
+    let winch_work_j = rows.map(|pair| 0.5 * (pair[0].line_n + pair[1].line_n) * (pair[0].x_m - pair[1].x_m)).sum();
+    VirtualTrial { signals, truth, winch_work_j }
 }
 
 impl Heard {

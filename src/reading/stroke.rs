@@ -1,0 +1,99 @@
+//! What happened inside the power stroke beside the launch: steps in the specific force, and who coasted after it.
+//!
+//! Force along a stroke changes smoothly. A step up means that the shuttle became lighter: the payload left while it was
+//! still pushed. A step down means that force was lost at once: a cord failed. Once the push has ended, the deceleration
+//! tells whether shuttle or shuttle and payload are braked by friction and drag.
+
+use crate::rig::Rig;
+
+use super::launch::Separation;
+use super::motion::Track;
+
+/// Parts of the stroke at its ends where forces change fast anyway.
+const AFTER_RELEASE_S: f64 = 0.02;
+const BEFORE_SEPARATION_S: f64 = 0.02;
+/// Means of this length, this far before and after an instant, are compared.
+const MEAN_S: f64 = 0.003;
+const CLEAR_S: f64 = 0.001;
+/// Share of the force that a step must have: losing one of ten cords, or half of the payload's share, is seen.
+const STEP_DOWN: f64 = 0.07;
+const STEP_UP: f64 = 0.2;
+
+/// A sudden change of the shuttle's specific force.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Step {
+    pub time_s: f64,
+    pub x_m: f64,
+    pub from_mps2: f64,
+    pub to_mps2: f64,
+}
+
+impl Step {
+    pub(super) fn is_up(&self) -> bool {
+        self.to_mps2 > self.from_mps2
+    }
+}
+
+/// The largest step in the stroke that is no part of its smooth course.
+pub(super) fn step(track: &Track, release_s: f64, separation_s: f64) -> Option<Step> {
+    if !track.has_specific_force {
+        return None;
+    }
+    let mean = |from_s: f64, to_s: f64| {
+        let values = &track.specific_force_mps2[track.index_at(from_s)..track.index_at(to_s)];
+        (!values.is_empty()).then(|| values.iter().sum::<f64>() / values.len() as f64)
+    };
+    let start = mean(release_s + AFTER_RELEASE_S, release_s + AFTER_RELEASE_S + MEAN_S)?;
+    let (mut best, mut largest) = (None, 0.0);
+    let mut time_s = release_s + AFTER_RELEASE_S + 2.0 * MEAN_S;
+    while time_s < separation_s - BEFORE_SEPARATION_S {
+        let before = mean(time_s - CLEAR_S - MEAN_S, time_s - CLEAR_S)?;
+        let after = mean(time_s + CLEAR_S, time_s + CLEAR_S + MEAN_S)?;
+        // What the course before would have done anyway over the same distance.
+        let earlier = mean(time_s - 2.0 * (CLEAR_S + MEAN_S) - CLEAR_S, time_s - CLEAR_S - MEAN_S - 2.0 * CLEAR_S)?;
+        let share = ((after - before) - (before - earlier)) / before.abs().max(0.3 * start.abs());
+        if !(-STEP_DOWN..=STEP_UP).contains(&share) && share.abs() > largest {
+            largest = share.abs();
+            let x_m = track.motion.x_m[track.index_at(time_s)];
+            best = Some(Step { time_s, x_m, from_mps2: before, to_mps2: after });
+        }
+        time_s += 0.25 * MEAN_S;
+    }
+    best.map(|step| halfway(track, step))
+}
+
+/// The instant at which the force is half-way through the step.
+fn halfway(track: &Track, step: Step) -> Step {
+    let half = 0.5 * (step.from_mps2 + step.to_mps2);
+    let (first, last) =
+        (track.index_at(step.time_s - CLEAR_S - MEAN_S), track.index_at(step.time_s + CLEAR_S + MEAN_S));
+    let past = |idx: &usize| (track.specific_force_mps2[*idx] > half) == step.is_up();
+    match (first..last).find(past) {
+        Some(idx) => Step { time_s: track.motion.time_s[idx], x_m: track.motion.x_m[idx], ..step },
+        None => step,
+    }
+}
+
+/// A sentence when payload and shuttle coasted together after the push had ended.
+pub(super) fn coasted_together(track: &Track, separation: &Separation, rig: &Rig) -> Option<String> {
+    const FROM_S: f64 = 0.01;
+    const TO_S: f64 = 0.05;
+    let first = track.index_at(separation.time_s + FROM_S);
+    let until = |idx: &usize| {
+        track.motion.time_s[*idx] > separation.time_s + TO_S
+            || (track.has_position && track.motion.x_m[*idx] > rig.rail.brake_x_m - 0.05)
+    };
+    let last = (first..track.motion.time_s.len()).find(until)?;
+    let values = track.specific_force_mps2.get(first..last).filter(|values| values.len() > 20)?;
+    let seen = values.iter().sum::<f64>() / values.len() as f64;
+    let air_speed_mps = separation.speed_mps + rig.site.head_wind_mps;
+    let pressure_pa = 0.5 * rig.site.air_density_kg_per_m3 * air_speed_mps * air_speed_mps.abs();
+    let shuttle_n = rig.losses.friction_n.value + pressure_pa * rig.losses.shuttle_drag_area_m2.value;
+    let alone = -shuttle_n / rig.shuttle.mass_kg.value;
+    let together = -(shuttle_n + pressure_pa * rig.payload.drag_area_m2.value) / rig.moving_mass_kg();
+    (seen > 0.5 * (alone + together)).then(|| {
+        format!(
+            "after the push the shuttle coasted at a specific force of {seen:.1} m/s²; alone it would be {alone:.1}, with the payload {together:.1}: the payload did not separate"
+        )
+    })
+}
