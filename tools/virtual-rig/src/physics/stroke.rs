@@ -208,32 +208,25 @@ impl System {
         (at_shuttle_n, group.count * pull_before_n)
     }
 
+    /// Accelerations of shuttle, payload and rail under the forces found so far, and the works of all forces.
     fn bodies(&self, y: &[f64], mode: &Mode, forces: &mut Forces, dy: &mut [f64]) {
-        let launcher = &self.launcher;
-        let rail = &launcher.rail;
+        let (launcher, rail) = (&self.launcher, &self.launcher.rail);
         let (x_m, v_mps) = (y[at::SHUTTLE_X] - y[at::RAIL_X], y[at::SHUTTLE_V] - y[at::RAIL_V]);
-        let drag = self.drag(y);
+        let (drag, damper_n) = (self.drag(y), self.damper_n(x_m, v_mps));
         let along_mps2 = launcher.gravity_along_mps2();
-        let (payload_kg, shuttle_kg) = (launcher.payload_mass_kg(), launcher.shuttle.mass_kg);
-        let pushed_kg = if mode.joined { payload_kg } else { 0.0 };
-        let moved_kg = shuttle_kg + pushed_kg;
-        let damper_n = self.damper_n(x_m, v_mps);
-        let push_n = forces.cords_n + forces.gas_n
-            - forces.line_n
-            - drag.shuttle_n
-            - damper_n
-            - moved_kg * along_mps2
-            - if mode.joined { drag.payload_n } else { 0.0 };
+        let payload_kg = launcher.payload_mass_kg();
+        let (pushed_kg, pushed_drag_n) = if mode.joined { (payload_kg, drag.payload_n) } else { (0.0, 0.0) };
+        let moved_kg = launcher.shuttle.mass_kg + pushed_kg;
+        let held_back_n = forces.line_n + drag.shuttle_n + pushed_drag_n + damper_n + moved_kg * along_mps2;
+        let push_n = forces.cords_n + forces.gas_n - held_back_n;
         let rail_spring_n = rail.stiffness_n_per_m * y[at::RAIL_X] + rail.damping_n_s_per_m * y[at::RAIL_V];
         let rail_push_n = forces.line_n - forces.anchor_n - forces.gas_n + damper_n - rail_spring_n - self.rail_rest_n;
 
         let pad_n = launcher.brake.pad_force_n(x_m);
+        let running_n = launcher.shuttle.friction_running_n;
         let friction_n = match mode.grip {
-            Grip::Sliding(direction) => -direction * (launcher.shuttle.friction_running_n + pad_n),
-            Grip::Stuck => {
-                let together_mps2 = (push_n + rail_push_n) / (moved_kg + rail.mass_kg);
-                moved_kg * together_mps2 - push_n
-            }
+            Grip::Sliding(direction) => -direction * (running_n + pad_n),
+            Grip::Stuck => moved_kg * (push_n + rail_push_n) / (moved_kg + rail.mass_kg) - push_n,
         };
         forces.rail_a_mps2 = (rail_push_n - friction_n) / rail.mass_kg;
         forces.shuttle_a_mps2 = (push_n + friction_n) / moved_kg;
@@ -242,20 +235,14 @@ impl System {
         forces.payload_a_mps2 = if mode.joined { forces.shuttle_a_mps2 } else { free_mps2 };
         forces.contact_n = if mode.joined { payload_kg * (forces.shuttle_a_mps2 - free_mps2) } else { 0.0 };
 
-        dy[at::SHUTTLE_X] = y[at::SHUTTLE_V];
-        dy[at::SHUTTLE_V] = forces.shuttle_a_mps2;
-        dy[at::PAYLOAD_X] = y[at::PAYLOAD_V];
-        dy[at::PAYLOAD_V] = forces.payload_a_mps2;
-        dy[at::RAIL_X] = y[at::RAIL_V];
-        dy[at::RAIL_V] = forces.rail_a_mps2;
+        let running_share = running_n / (running_n + pad_n).max(f64::MIN_POSITIVE);
         dy[at::LINE] = forces.line_n * v_mps;
-        let running_share =
-            launcher.shuttle.friction_running_n / (launcher.shuttle.friction_running_n + pad_n).max(1e-12);
         dy[at::FRICTION] = -friction_n * v_mps * running_share;
         dy[at::BRAKE] = -friction_n * v_mps * (1.0 - running_share) + damper_n * v_mps;
         dy[at::SHUTTLE_DRAG] = drag.shuttle_n * y[at::SHUTTLE_V];
         dy[at::PAYLOAD_DRAG] = drag.payload_n * y[at::PAYLOAD_V];
         dy[at::RAIL_DAMPER] = rail.damping_n_s_per_m * y[at::RAIL_V] * y[at::RAIL_V];
+        motion(y, forces, dy);
     }
 
     fn drag(&self, y: &[f64]) -> Drag {
@@ -344,6 +331,16 @@ impl System {
             energy.gravity_j += group.count * mass_kg * self.launcher.gravity_along_mps2() * y[start + idx];
         }
     }
+}
+
+/// Positions follow speeds, speeds follow accelerations.
+fn motion(y: &[f64], forces: &Forces, dy: &mut [f64]) {
+    dy[at::SHUTTLE_X] = y[at::SHUTTLE_V];
+    dy[at::SHUTTLE_V] = forces.shuttle_a_mps2;
+    dy[at::PAYLOAD_X] = y[at::PAYLOAD_V];
+    dy[at::PAYLOAD_V] = forces.payload_a_mps2;
+    dy[at::RAIL_X] = y[at::RAIL_V];
+    dy[at::RAIL_V] = forces.rail_a_mps2;
 }
 
 fn group_size(group: &CordGroup) -> usize {
