@@ -43,7 +43,8 @@ pub enum Leg {
         speed_mps: f64,
         tension_n: f64,
     },
-    /// Pays out until the line is slack.
+    /// Pays out; where the cords no longer beat friction, the winch's return line (which has no cell) draws the shuttle on
+    /// to the zero mark.
     LetDown {
         speed_mps: f64,
     },
@@ -72,6 +73,8 @@ pub struct Winch {
     pub line_work_j: f64,
     hooked: bool,
     jammed: bool,
+    /// The return line is hooked on, behind the play of the line.
+    returning: bool,
     valve_open_s: Option<f64>,
     /// Rail, payload as the last launch left them.
     still: Row,
@@ -93,6 +96,7 @@ impl Winch {
             line_work_j: 0.0,
             hooked: true,
             jammed: false,
+            returning: false,
             valve_open_s: None,
             still: Row::default(),
         };
@@ -119,8 +123,10 @@ impl Winch {
                 let share = ((self.t_s + step_s - start_s) / duration_s).clamp(0.0, 1.0);
                 self.gas = drive.charged_to(drive.ambient_pa + share * (drive.charge_pa - drive.ambient_pa));
             }
+            self.returning = matches!(leg, Leg::LetDown { .. });
             self.step(step_s, speed_mps);
         }
+        self.returning = false;
     }
 
     fn done(&self, leg: Leg) -> bool {
@@ -128,7 +134,7 @@ impl Winch {
             Leg::Wait { .. } | Leg::Charge { .. } => false,
             Leg::Draw { stop_x_m, .. } => self.x_m <= stop_x_m,
             Leg::Tighten { tension_n, .. } => self.line_n() >= tension_n,
-            Leg::LetDown { .. } => self.line_end_x_m > self.x_m + LINE_PLAY_M,
+            Leg::LetDown { .. } => self.x_m >= self.launcher.zero_mark_x_m,
         }
     }
 
@@ -139,6 +145,9 @@ impl Winch {
         self.t_s += step_s;
         self.flow(step_s);
         self.x_m = self.balanced_x_m();
+        if self.returning {
+            self.x_m = self.x_m.max(self.line_end_x_m - LINE_PLAY_M);
+        }
         for (group, memory) in self.launcher.cords.iter().zip(&mut self.memories) {
             let stretch_before = self.launcher.stretch_at(&group.kind, before_x_m);
             let stretch = self.launcher.stretch_at(&group.kind, self.x_m);

@@ -123,7 +123,17 @@ fn a_hang_fire_stands_loaded_with_a_slack_line() {
     let during = hang.trajectory.at(opened.t_s + 1.0);
     assert!(during.line_n == 0.0 && during.anchor_n > 550.0, "{during:?}");
     let end = hang.trajectory.at(hang.end_s);
-    assert!(end.anchor_n < 25.0 && end.line_n == 0.0, "let down at the end: {end:?}");
+    assert!(end.anchor_n == 0.0 && end.line_n == 0.0, "let down at the end: {end:?}");
+}
+
+#[test]
+fn every_trial_that_is_let_down_ends_slack_at_the_zero_mark() {
+    for name in ["let-down", "hang-fire", "hook-slip", "cord-failure-in-hold"] {
+        let let_down = performance(name, |_| {});
+        let end = let_down.trajectory.at(let_down.end_s);
+        assert!(end.line_n == 0.0 && end.cords_n == 0.0, "{name} ends at {end:?}");
+        assert_near(name, end.x_m, let_down.launcher().zero_mark_x_m, 2e-3);
+    }
 }
 
 #[test]
