@@ -2,10 +2,13 @@
 
 #![allow(clippy::unwrap_used, reason = "a test that cannot go on stops here")]
 
+#[path = "support/full_featured.rs"]
+mod full_featured;
 mod support;
 
+use full_featured::{curve, full_featured, number, setup_of};
 use serde_json::{Value, json};
-use tautrail::model::{Brake, CordSet, Curve, EventKind, LaunchSetup, RailLosses, Recoil, simulate};
+use tautrail::model::{CordSet, Curve, EventKind, LaunchSetup, simulate};
 
 #[track_caller]
 fn assert_close(what: &str, found: f64, expected: f64, relative: f64) {
@@ -15,88 +18,6 @@ fn assert_close(what: &str, found: f64, expected: f64, relative: f64) {
 
 fn oracle(script: &str, numbers: &Value) -> Value {
     serde_json::from_str(&support::run_oracle(script, &[&numbers.to_string()])).unwrap()
-}
-
-fn number(value: &Value) -> f64 {
-    value.as_f64().unwrap()
-}
-
-fn points(value: &Value) -> Vec<(f64, f64)> {
-    value.as_array().unwrap().iter().map(|point| (number(&point[0]), number(&point[1]))).collect()
-}
-
-fn curve(value: &Value) -> Curve {
-    Curve::through(&points(value)).unwrap()
-}
-
-/// Invented numbers that use every feature at once: two unequal cord sets with both branches, one of them slack early;
-/// every loss; thrust and lift; wind; a recoiling rail; a sticking start; a brake that depends on place and speed.
-fn full_featured() -> Value {
-    let card = json!([[0, 0], [0.1, 12.5], [0.25, 25], [0.5, 39], [0.75, 51.5], [1.0, 66], [1.3, 88], [1.7, 131]]);
-    let loading = json!([[0, 0], [0.1, 13.4], [0.25, 27], [0.5, 42], [0.75, 55.5], [1.0, 71], [1.3, 94], [1.7, 138]]);
-    json!({
-        "start": 0.0, "gravity": 9.81, "incline": 0.14, "density": 1.21, "wind": 3.0,
-        "shuttle": 2.4, "payload": 6.2, "payload_area": 0.05, "shuttle_area": 0.02, "lift_area": 0.1,
-        "thrust": [[0, 30], [10, 25], [25, 12], [40, 0]],
-        "friction": 9.0, "load_coefficient": 0.05, "pull_coefficient": 0.01, "viscous": 0.8, "breakaway": 40.0,
-        "along_x": [[0, 4], [1.5, 8], [3, 3], [5, 6], [7, 6]],
-        "rail_mass": 150.0, "rail_stiffness": 4e4, "rail_damping": 300.0,
-        "brake_from": 5.0, "brake": [500.0, 200.0, 15.0],
-        "cords": [
-            { "count": 5.0, "free_length": 2.5, "mass": 0.25, "ratio": 1.0, "zero_mark": 4.0, "unloading": card,
-              "loading": loading, "held_gap": 5.0, "width": 0.06 },
-            { "count": 2.0, "free_length": 1.8, "mass": 0.1, "ratio": 0.9, "zero_mark": 3.2, "unloading": card,
-              "loading": loading, "held_gap": 4.0, "width": 0.05 },
-        ],
-    })
-}
-
-fn setup_of(d: &Value) -> LaunchSetup {
-    let at = |key: &str| number(&d[key]);
-    let cords = d["cords"].as_array().unwrap().iter().map(|c| CordSet {
-        count: number(&c["count"]),
-        free_length_m: number(&c["free_length"]),
-        mass_kg: number(&c["mass"]),
-        travel_ratio: number(&c["ratio"]),
-        zero_mark_x_m: number(&c["zero_mark"]),
-        retension_x_m: None,
-        unloading: curve(&c["unloading"]),
-        loading: Some(curve(&c["loading"])),
-        held_gap_n: number(&c["held_gap"]),
-        gap_width: number(&c["width"]),
-    });
-    LaunchSetup {
-        payload_mass_kg: at("payload"),
-        incline_rad: at("incline"),
-        gravity_mps2: at("gravity"),
-        air_density_kg_per_m3: at("density"),
-        head_wind_mps: at("wind"),
-        payload_drag_area_m2: at("payload_area"),
-        shuttle_drag_area_m2: at("shuttle_area"),
-        cords: cords.collect(),
-        losses: RailLosses {
-            friction_n: at("friction"),
-            load_coefficient: at("load_coefficient"),
-            pull_coefficient: at("pull_coefficient"),
-            viscous_n_per_mps: at("viscous"),
-            along_x_n: Some(curve(&d["along_x"])),
-            breakaway_n: at("breakaway"),
-        },
-        brake: Brake {
-            from_x_m: at("brake_from"),
-            constant_n: number(&d["brake"][0]),
-            per_metre_n_per_m: number(&d["brake"][1]),
-            per_speed_n_per_mps: number(&d["brake"][2]),
-        },
-        recoil: Some(Recoil {
-            mass_kg: at("rail_mass"),
-            stiffness_n_per_m: at("rail_stiffness"),
-            damping_n_per_mps: at("rail_damping"),
-        }),
-        thrust: Some(curve(&d["thrust"])),
-        lift_area_m2: at("lift_area"),
-        ..LaunchSetup::bare(at("shuttle"), 7.0)
-    }
 }
 
 fn name(kind: EventKind) -> String {
@@ -166,4 +87,56 @@ fn heavy_linear_cords_launch_as_a_chain_of_masses_does() {
 fn heavy_rubber_cords_launch_as_a_chain_of_masses_does() {
     check_chain(RUBBER, 0.15);
     check_chain(RUBBER, 0.3);
+}
+
+/// Rows (stretch, stress in MPa) of L. R. G. Treloar, Trans. Faraday Soc. 40 (1944) 59-70.
+fn treloar() -> Vec<(f64, f64)> {
+    let text = include_str!("reference/treloar_1944_uniaxial.csv");
+    let rows = text.lines().filter(|line| !line.starts_with('#')).skip(1);
+    rows.map(|row| {
+        let cells: Vec<f64> = row.split(',').map(|cell| cell.parse().unwrap()).collect();
+        (cells[0], cells[2])
+    })
+    .collect()
+}
+
+/// Force over its course, stored energy and launch speed of one massless rubber cord against quadrature.
+#[track_caller]
+fn check_rubber(what: &str, points: &[(f64, f64)], expected: &Value, relative: f64) {
+    const FREE_LENGTH_M: f64 = 1.5;
+    let elongation = 5.0;
+    let zero_mark_x_m = elongation * FREE_LENGTH_M;
+    let mut setup = LaunchSetup::bare(3.0, zero_mark_x_m + 1.0);
+    setup.cords = vec![CordSet::simple(1.0, FREE_LENGTH_M, zero_mark_x_m, Curve::through(points).unwrap())];
+    let curve = expected[format!("{what}_curve")].as_array().unwrap();
+    for (i, force) in curve.iter().enumerate().skip(1) {
+        let x_m = zero_mark_x_m * (1.0 - i as f64 / 12.0);
+        assert_close(&format!("{what}: force at x = {x_m}"), setup.cord_pull_n(x_m), number(force), relative);
+    }
+    let run = simulate(&setup).unwrap();
+    let slack = run.event(EventKind::CordsSlack { set: 0 }).unwrap();
+    let wanted = &expected[what];
+    assert_close(&format!("{what}: energy"), run.energy_at_end.stored_j, number(&wanted["energy_j"]), relative);
+    assert_close(&format!("{what}: speed"), slack.v_mps, number(&wanted["speed_mps"]), relative);
+}
+
+#[test]
+fn rubber_cords_launch_as_their_published_stress_says() {
+    const AREA_M2: f64 = 1e-4;
+    // Ogden's three terms for Treloar's rubber, MPa (tests/reference/ogden_treloar.toml; from memory there).
+    let (mu, alpha) = ([0.63, 0.0012, -0.01], [1.3, 5.0, -2.0]);
+    let numbers = json!({
+        "mu": mu, "alpha": alpha, "area_m2": AREA_M2, "free_length_m": 1.5, "elongation": 5.0, "mass_kg": 3.0,
+        "treloar": treloar(),
+    });
+    let expected = oracle(include_str!("../tools/oracles/rubber.py"), &numbers);
+    let ogden_n = |e: f64| {
+        let stretch = 1.0 + e;
+        let terms = mu.iter().zip(alpha);
+        terms.map(|(m, a)| m * (stretch.powf(a - 1.0) - stretch.powf(-a / 2.0 - 1.0))).sum::<f64>() * 1e6 * AREA_M2
+    };
+    let ogden: Vec<(f64, f64)> = (0..=300).map(|i| 6.0 * f64::from(i) / 300.0).map(|e| (e, ogden_n(e))).collect();
+    check_rubber("ogden", &ogden, &expected, 2e-4);
+    let measured: Vec<(f64, f64)> = treloar().iter().map(|(l, mpa)| (l - 1.0, mpa * 1e6 * AREA_M2)).collect();
+    check_rubber("treloar", &measured, &expected, 1e-9);
 }

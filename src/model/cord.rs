@@ -106,7 +106,7 @@ impl CordSet {
         self.elongation_on(Side::Drawn, x_m)
     }
 
-    #[inline]
+    #[inline(always)]
     pub fn elongation_on(&self, side: Side, x_m: f64) -> f64 {
         let extension_m = match side {
             Side::Drawn => self.zero_mark_x_m - x_m,
@@ -135,7 +135,7 @@ impl CordSet {
     }
 
     /// Tension of one cord and its slope against elongation.
-    #[inline]
+    #[inline(always)]
     pub fn tension_slope_n(&self, branch: Branch, elongation: f64) -> (f64, f64) {
         let curve = match branch {
             Branch::Loading => self.loading.as_ref().unwrap_or(&self.unloading),
@@ -152,20 +152,20 @@ impl CordSet {
     }
 
     /// Pull of the whole set at the shuttle, N.
-    #[inline]
+    #[inline(always)]
     pub fn pull_n(&self, branch: Branch, elongation: f64) -> f64 {
         self.count * self.travel_ratio * self.tension_slope_n(branch, elongation).0
     }
 
     /// Pull of the whole set and its wave's speed in metres of free length a second.
-    #[inline]
+    #[inline(always)]
     pub fn pull_and_wave_speed(&self, branch: Branch, elongation: f64) -> (f64, f64) {
         let (tension_n, slope_n) = self.tension_slope_n(branch, elongation);
         (self.count * self.travel_ratio * tension_n, self.wave_speed_mps(slope_n))
     }
 
     /// A card that is flat somewhere would stop the wave: the slope is kept above a thousandth of the secant's.
-    #[inline]
+    #[inline(always)]
     fn wave_speed_mps(&self, slope_n: f64) -> f64 {
         let floor_n = 1e-3 * self.unloading.last_value() / self.unloading.last();
         (slope_n.max(floor_n) * self.free_length_m / self.mass_kg).sqrt()

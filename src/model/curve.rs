@@ -116,7 +116,7 @@ impl Curve {
         self.pieces[self.pieces.len() - 1].coefficients[0]
     }
 
-    #[inline]
+    #[inline(always)]
     fn piece(&self, at: f64) -> &Piece {
         let mut index = 0;
         while index + 1 < self.pieces.len() && self.pieces[index + 1].start <= at {
@@ -125,12 +125,12 @@ impl Curve {
         &self.pieces[index]
     }
 
-    #[inline]
+    #[inline(always)]
     pub fn value(&self, at: f64) -> f64 {
         self.value_slope(at).value
     }
 
-    #[inline]
+    #[inline(always)]
     pub fn value_slope(&self, at: f64) -> ValueSlope {
         let piece = self.piece(at);
         let d = at - piece.start;

@@ -8,13 +8,15 @@ use super::along::{Along, divided, falling_root, rates_along, state_at_end, stat
 use super::cord::CordPhase;
 use super::error::ModelError;
 use super::event::{Cost, Event, EventKind, Peak, Segment};
-use super::integrate::{Dense, Step, Tolerance, next_size};
+use super::integrate::{Dense, Order, Step, Tolerance};
 use super::phases::first_phase;
 use super::setup::LaunchSetup;
 use super::system::{Layout, System};
 use super::targets::{Target, targets};
 
 const MAX_STEPS: u32 = 20_000;
+/// From this tolerance on the method of lower order is the cheaper one.
+const COARSE: f64 = 1e-7;
 /// Longest wait for a gas source to move the shuttle.
 const MAX_HELD_S: f64 = 5.0;
 const MAX_HELD_STEP_S: f64 = 0.01;
@@ -48,6 +50,7 @@ pub struct March<'a, const N: usize> {
     pub(super) targets: Vec<Target>,
     /// Next target ahead.
     pub(super) cursor: isize,
+    order: Order,
     tolerance: Tolerance<N>,
     time_tolerance: f64,
     pub(super) size_s: f64,
@@ -81,6 +84,7 @@ impl<'a, const N: usize> March<'a, N> {
         let cursor = targets.iter().position(|target| target.x_m > setup.start_x_m).unwrap_or(targets.len());
         let nowhere = Peak { acceleration_mps2: f64::NEG_INFINITY, t_s: 0.0, x_m: setup.start_x_m };
         let mut march = Self {
+            order: if setup.relative_tolerance >= COARSE && !keep_segments { Order::Fifth } else { Order::Eighth },
             tolerance: tolerance(&system),
             time_tolerance: setup.relative_tolerance * 1e-2,
             system,
@@ -183,7 +187,7 @@ impl<'a, const N: usize> March<'a, N> {
         if step.error > 1.0 || dt_s <= 0.0 || !dt_s.is_finite() {
             self.cost.rejected += 1;
             let spent_s = if dt_s > 0.0 && dt_s.is_finite() { dt_s } else { self.size_s };
-            self.size_s = spent_s.min(self.size_s) * next_size(step.error).min(0.7);
+            self.size_s = spent_s.min(self.size_s) * self.order.next_size(step.error).min(0.7);
             return Ok(());
         }
         if self.crosses(&step, along, goal) {
@@ -273,19 +277,21 @@ impl<'a, const N: usize> March<'a, N> {
 
     fn attempt(&mut self, along: Along, size: f64) -> Step<N> {
         let slope = self.slope();
-        self.cost.evaluations += 12;
+        self.cost.evaluations += self.order.evaluations();
         let system = &self.system;
         match along {
-            Along::Time => Step::attempt(self.t_s, self.y, slope, size, &self.tolerance, &mut |t_s, y: &[f64; N]| {
-                system.rates(t_s, y)
-            }),
+            Along::Time => {
+                Step::attempt(self.order, (self.t_s, self.y), slope, size, &self.tolerance, &mut |t_s, y: &[f64; N]| {
+                    system.rates(t_s, y)
+                })
+            }
             Along::Component(i) => {
                 let mut tolerance = self.tolerance;
                 tolerance.absolute[i] = self.time_tolerance;
                 let mut y = self.y;
                 y[i] = self.t_s;
                 let mut rates = |s: f64, y: &[f64; N]| rates_along(system, i, s, y);
-                Step::attempt(self.y[i], y, divided(slope, i), size, &tolerance, &mut rates)
+                Step::attempt(self.order, (self.y[i], y), divided(slope, i), size, &tolerance, &mut rates)
             }
         }
     }
@@ -319,7 +325,7 @@ impl<'a, const N: usize> March<'a, N> {
     }
 
     fn accept(&mut self, step: Step<N>, along: Along, dt_s: f64, goal: Goal) {
-        let grown_s = dt_s * next_size(step.error);
+        let grown_s = dt_s * self.order.next_size(step.error);
         let (t_s, y) = state_at_end(&step, along);
         let end_slope = time_slope(step.slope_at_end(), along);
         if self.system.phase.held {

@@ -111,5 +111,5 @@ impl LaunchSetup {
 
 /// Relative tolerance of a single launch.
 pub const ACCURATE: f64 = 1e-10;
-/// Relative tolerance where thousands are computed: launch speed still to about 1e-7.
+/// Relative tolerance where thousands are computed: launch speed still to 1e-5.
 pub const FAST: f64 = 1e-6;

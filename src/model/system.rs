@@ -134,7 +134,7 @@ impl<'a> System<'a> {
         Self { setup, phase, layout, along_mps2: setup.gravity_along_mps2(), across_mps2 }
     }
 
-    #[inline]
+    #[inline(always)]
     pub fn motion(&self, y: &[f64]) -> Motion {
         let (rail_x_m, rail_v_mps) = self.layout.recoil.map_or((0.0, 0.0), |i| (y[i], y[i + 1]));
         Motion { x_m: y[0], v_mps: y[1], rail_x_m, rail_v_mps }
@@ -145,7 +145,7 @@ impl<'a> System<'a> {
     }
 
     /// Rates of every state at a time and state.
-    #[inline]
+    #[inline(always)]
     pub fn rates<const N: usize>(&self, t_s: f64, y: &[f64; N]) -> [f64; N] {
         let mut rates = [0.0; N];
         let motion = self.motion(y);
@@ -172,7 +172,7 @@ impl<'a> System<'a> {
         rates
     }
 
-    #[inline]
+    #[inline(always)]
     fn gas_rates(&self, t_s: f64, y: &[f64], motion: Motion, rates: &mut [f64]) {
         for (g, source) in self.setup.gas.iter().enumerate() {
             if let (Some(i), true) = (self.layout.gas[g], self.phase.gas[g]) {
@@ -183,7 +183,7 @@ impl<'a> System<'a> {
         }
     }
 
-    #[inline]
+    #[inline(always)]
     fn gas_pull_n(&self, y: &[f64], x_m: f64) -> f64 {
         let mut sum_n = 0.0;
         for (g, source) in self.setup.gas.iter().enumerate() {
@@ -226,7 +226,7 @@ impl<'a> System<'a> {
     }
 
     /// Pull of one cord set at a state.
-    #[inline]
+    #[inline(always)]
     fn pull_n(&self, s: usize, y: &[f64], x_m: f64) -> f64 {
         let set = &self.setup.cords[s];
         match (self.phase.cords[s], self.layout.wave[s]) {
@@ -237,7 +237,7 @@ impl<'a> System<'a> {
     }
 
     /// Pull of all cords, and the mass of those that move evenly with the shuttle.
-    #[inline]
+    #[inline(always)]
     fn pulls(&self, y: &[f64], x_m: f64) -> (f64, f64) {
         let (mut sum_n, mut cord_mass_kg) = (0.0, 0.0);
         for (s, set) in self.setup.cords.iter().enumerate() {
@@ -249,7 +249,7 @@ impl<'a> System<'a> {
         (sum_n, cord_mass_kg)
     }
 
-    #[inline]
+    #[inline(always)]
     fn forces(&self, y: &[f64], motion: Motion) -> Forces {
         let setup = self.setup;
         let Motion { x_m, v_mps, rail_x_m, rail_v_mps } = motion;
@@ -316,7 +316,7 @@ impl<'a> System<'a> {
 }
 
 impl super::setup::Brake {
-    #[inline]
+    #[inline(always)]
     pub fn force_n(&self, x_m: f64, v_mps: f64) -> f64 {
         self.constant_n
             + self.per_metre_n_per_m * (x_m - self.from_x_m).max(0.0)

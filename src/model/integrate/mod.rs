@@ -7,4 +7,4 @@
 mod coefficients;
 mod step;
 
-pub use step::{Dense, Step, Tolerance, next_size};
+pub use step::{Dense, Order, Step, Tolerance};

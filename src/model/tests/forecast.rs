@@ -126,3 +126,14 @@ fn the_rig_of_every_key_can_be_forecast() {
     assert!(made.quantities[LAUNCH_SPEED].monte_carlo.len() == 100);
     assert!(made.energy.closure_j.abs() < 1e-8 * made.energy.sources_j());
 }
+
+#[test]
+fn the_fast_way_is_good_to_a_hundred_thousandth() {
+    use super::super::{FAST, launch_answers};
+    for text in [NORTH_PIER, include_str!("../../../tools/rehearsal/every-key.toml")] {
+        let exact = LaunchSetup::planned(&rig::parse(text).unwrap()).unwrap();
+        let fast = LaunchSetup { relative_tolerance: FAST, ..exact.clone() };
+        let speed = |setup: &LaunchSetup| launch_answers(setup).unwrap().separation.unwrap().launch_speed_mps;
+        assert_close("speed", speed(&fast), speed(&exact), 1e-5, 0.0);
+    }
+}

@@ -1,0 +1,82 @@
+//! What a launch costs: against SciPy, for a thousand draws, for the live display.
+
+#![allow(clippy::unwrap_used, clippy::expect_used, reason = "a figure that can't be had stops the bench")]
+
+#[path = "../../tests/support/full_featured.rs"]
+mod full_featured;
+#[path = "../../tests/support/mod.rs"]
+mod support;
+
+use std::hint::black_box;
+use std::time::Instant;
+
+use full_featured::{full_featured, number, setup_of};
+use tautrail::estimation::Random;
+use tautrail::model::{
+    FAST, Inputs, Known, LaunchSetup, answers_to_rest, launch_answers, planned_line_tension_n, released_now,
+};
+
+/// Relative tolerance at which the speed is as good as SciPy's at rtol 1e-8.
+const AS_SCIPY: f64 = 1e-8;
+
+fn main() {
+    let numbers = full_featured();
+    let mut setup = setup_of(&numbers);
+    setup.relative_tolerance = AS_SCIPY;
+    let text = support::run_oracle(include_str!("../oracles/launch_speed.py"), &[&numbers.to_string()]);
+    let scipy: serde_json::Value = serde_json::from_str(&text).unwrap();
+    let launch_s = best_s(20, 200, || black_box(launch_answers(&setup)).is_ok());
+    let speed = launch_answers(&setup).unwrap().separation.unwrap().launch_speed_mps;
+    let off = (speed / number(&scipy["speed"]) - 1.0).abs();
+    figure(
+        "full_launch",
+        launch_s * 1e6,
+        "us",
+        number(&scipy["solve_ivp_s"]) * 1e6,
+        "at least 300 times faster than solve_ivp",
+    );
+    figure("full_launch_per_numpy_march", launch_s * 1e6, "us", number(&scipy["march_s_per_launch"]) * 1e6, "faster");
+    println!("figure full_launch_speed_off value={off:.2e} unit=relative reference=solve_ivp ratio=- target=1e-5");
+    draws();
+}
+
+fn draws() {
+    let rig = tautrail::rig::parse(include_str!("../rehearsal/north-pier.toml")).unwrap();
+    let setup = LaunchSetup { relative_tolerance: FAST, ..LaunchSetup::planned(&rig).unwrap() };
+    let inputs = Inputs::of(&rig, Known::Plan).unwrap();
+    let thousand = |to_rest: bool| {
+        best_s(10, 1, || {
+            (0..1000).all(|draw| {
+                let mut random = Random::new(1, draw);
+                let independent: Vec<f64> = inputs.all.iter().map(|_| random.normal()).collect();
+                let moved = inputs.moved(&setup, &inputs.correlate(&independent));
+                if to_rest { answers_to_rest(&moved.setup) } else { launch_answers(&moved.setup) }.is_ok()
+            })
+        })
+    };
+    figure("thousand_draws_to_separation", thousand(false) * 1e3, "ms", 33.0, "under 33 ms on one core");
+    figure("thousand_draws_to_rest", thousand(true) * 1e3, "ms", 33.0, "-");
+    let tension_n = planned_line_tension_n(&rig, 4.0).unwrap();
+    let now_s = best_s(10, 20, || black_box(released_now(&rig, tension_n, 0.0)).is_ok());
+    figure("released_now_first_order", now_s * 1e6, "us", 1000.0, "under 1 ms");
+}
+
+/// Best time of one call over several rounds: what the machine can do when nobody else wants it.
+fn best_s(rounds: u32, calls: u32, mut call: impl FnMut() -> bool) -> f64 {
+    let mut best_s = f64::INFINITY;
+    for _ in 0..rounds {
+        let begin = Instant::now();
+        for _ in 0..calls {
+            assert!(call());
+        }
+        best_s = best_s.min(begin.elapsed().as_secs_f64() / f64::from(calls));
+    }
+    best_s
+}
+
+fn figure(name: &str, value: f64, unit: &str, reference: f64, target: &str) {
+    println!(
+        "figure {name} value={value:.2} unit={unit} reference={reference:.2} ratio={:.1} target={target}",
+        reference / value
+    );
+}
