@@ -4,10 +4,10 @@
 //! along the rail, m g sin θ, and friction either way (statics); while winching back friction adds to it. Stored energy is
 //! the pull's work over the draw, E(d) = ∫₀^d F ds.
 //!
-//! The band is as wide at every draw as its share of the planned pull at full draw: the rig file holds the unloading
-//! curve, and cords being loaded run far above it early in the winch-back, where that says nothing about the plan.
+//! While the cords are drawn they pull along their loading branch, and back along the unloading one as soon as the shuttle
+//! gives way: the band reaches from the one to the other, and beyond both by its share of the planned pull at full draw.
 
-use crate::model::{LaunchSetup, ModelError};
+use crate::model::{LaunchSetup, ModelError, planned_line_tension_n};
 use crate::rig::Rig;
 
 const N_STEPS_TO_PLAN: usize = 100;
@@ -32,6 +32,8 @@ pub struct Expected {
 pub struct Plan {
     /// Pull and stored energy at every step of draw, from zero on; continued straight beyond.
     table: Vec<(f64, f64)>,
+    /// How far the line's tension is above pull less weight at every step while it is drawn: loading branch and friction.
+    drawing_n: Vec<f64>,
     step_m: f64,
     n_band_steps: usize,
     weight_along_rail_n: f64,
@@ -55,6 +57,7 @@ impl Plan {
             table.push((now_n, energy_j + 0.5 * (before_n + now_n) * step_m));
         }
         Ok(Self {
+            drawing_n: drawing_n(rig, &setup, step_m, &table),
             table,
             step_m,
             n_band_steps: (BAND_SHARE * N_STEPS_TO_PLAN as f64) as usize,
@@ -66,13 +69,15 @@ impl Plan {
 
     /// The line's expected tension at `draw_m`; never below zero, because a line does not push.
     pub fn expected(&self, draw_m: f64) -> Expected {
-        let pull_n = self.pull_n(draw_m);
-        let at = |more_n: f64, friction_n: f64| (pull_n + more_n - self.weight_along_rail_n + friction_n).max(0.0);
+        let (step, share) = self.place(draw_m);
+        let share = share.min(1.0);
+        let drawing_n = self.drawing_n[step] + share * (self.drawing_n[step + 1] - self.drawing_n[step]);
+        let level_n = self.pull_n(draw_m) - self.weight_along_rail_n;
         Expected {
             draw_m,
-            low_n: at(-self.band_n, -self.friction_n),
-            planned_n: at(0.0, self.friction_n),
-            high_n: at(self.band_n, self.friction_n),
+            low_n: (level_n - self.friction_n - self.band_n).max(0.0),
+            planned_n: (level_n + drawing_n).max(0.0),
+            high_n: (level_n + drawing_n + self.band_n).max(0.0),
         }
     }
 
@@ -122,11 +127,22 @@ impl Plan {
     }
 }
 
+/// Beyond what the cords' curve tells, the line stays as far above the pull as at the last draw it tells of.
+fn drawing_n(rig: &Rig, setup: &LaunchSetup, step_m: f64, table: &[(f64, f64)]) -> Vec<f64> {
+    let mut above_n = setup.losses.friction_n;
+    let at = |(step, (pull_n, _)): (usize, &(f64, f64))| {
+        if let Ok(tension_n) = planned_line_tension_n(rig, step as f64 * step_m) {
+            above_n = tension_n - (pull_n - setup.hold_weight_n());
+        }
+        above_n
+    };
+    table.iter().enumerate().map(at).collect()
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
     use crate::live::testing::north_pier;
-    use crate::model::planned_line_tension_n;
     use crate::rig::CordPoint;
 
     #[track_caller]
