@@ -64,6 +64,17 @@ fn every_outcome_is_called_by_its_name() {
 }
 
 #[test]
+fn a_saturated_accelerometer_gives_no_peak_and_does_not_spoil_the_speed() {
+    let rig = rehearsal_rig();
+    let trial = play(&Options { scenario: "clipped-accelerometer".to_owned(), ..nominal(1) }, &rig);
+    let reading = read(&trial.signals, &rig);
+    let reason = reading.absence("peak_g_cfc60_specific").map_or("", |absent| &absent.reason);
+    assert!(reason.contains("saturates at 6"), "{reason}: {:?}", reading.result("peak_g_cfc60_specific"));
+    let speed = value(&reading, "launch_speed") / launch_speed_mps(&trial) - 1.0;
+    assert!(speed.abs() < 0.002, "{speed}");
+}
+
+#[test]
 fn work_of_the_winch_back_is_the_line_s() {
     let trial = play(&nominal(2), &rehearsal_rig());
     let reading = read(&trial.signals, &rehearsal_rig());

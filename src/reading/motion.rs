@@ -18,6 +18,7 @@ use nalgebra::{SMatrix, SVector};
 use crate::calibration::Signal;
 
 use super::result::Motion;
+use super::sensors::limits;
 use super::series::{BIN_S, Binned, Stats, span, stats_between};
 use super::smoother::{Estimate, Filter, Transition};
 
@@ -45,6 +46,8 @@ const JERK_STANDING: f64 = 1e-2;
 const JERK_STROKE: f64 = 5e3;
 const JERK_FIRST_PASS: f64 = 1e5;
 const JERK_SHOCK: f64 = 1e7;
+/// Share of a channel's limit within which noise is cut off on one side.
+const CLEAR_OF_LIMIT: f64 = 0.02;
 /// Pseudo-measurements of a standing shuttle.
 const STANDING_SPEED_MPS: f64 = 1e-3;
 const STANDING_ACCELERATION_MPS2: f64 = 0.05;
@@ -423,7 +426,9 @@ fn nodes(position: Option<&Signal>, force: Option<&Signal>, from_s: f64, to_s: f
         }));
     }
     if let Some(signal) = force {
-        let inside = |value: f64| signal.range.is_none_or(|(low, high)| value > low && value < high);
+        let (low, high) = limits(signal);
+        let clear = |limit: f64| if limit.is_finite() { CLEAR_OF_LIMIT * limit.abs() } else { 0.0 };
+        let inside = |value: f64| value > low + clear(low) && value < high - clear(high);
         let window = span(signal, from_s, to_s).filter(|&idx| inside(signal.value[idx]));
         nodes.extend(window.map(|idx| Node {
             time_s: signal.time_s[idx],

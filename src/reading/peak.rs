@@ -10,7 +10,7 @@ use crate::units::STANDARD_GRAVITY_MPS2;
 
 use super::motion::Track;
 use super::rows::{Book, Budget};
-use super::sensors::Sensors;
+use super::sensors::{Sensors, limits};
 use super::series::{longest_gap_s, rate_hz, span};
 use crate::estimation::{CfcFilter, StartUp};
 
@@ -92,7 +92,7 @@ pub(super) fn filtered_between(signal: &Signal, (from_s, to_s): (f64, f64)) -> R
 }
 
 fn refuse_saturated(signal: &Signal, stretch: &[f64]) -> Result<(), String> {
-    let Some((low, high)) = signal.range else { return Ok(()) };
+    let (low, high) = limits(signal);
     match stretch.iter().find(|value| **value >= high || **value <= low) {
         Some(value) => Err(format!(
             "the accelerometer saturates at {:.1} g: the peak is at least that",

@@ -120,6 +120,23 @@ impl<'a> Sensors<'a> {
     }
 }
 
+/// Values at which a channel saturates, lower first: its stated range, and levels at which it stands for 2 ms or more
+/// at its own extreme, where noise would move a channel that still follows.
+pub(super) fn limits(signal: &Signal) -> (f64, f64) {
+    let (low, high) = signal.range.unwrap_or((f64::NEG_INFINITY, f64::INFINITY));
+    let least = signal.value.iter().copied().fold(f64::INFINITY, f64::min);
+    let greatest = signal.value.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+    if greatest - least < 10.0 * signal.resolution {
+        return (low, high);
+    }
+    let n_stuck = ((0.002 * signal.nominal_rate_hz) as usize).max(5);
+    let stuck_at = |level: f64| {
+        let runs = signal.value.chunk_by(|a, b| a == b);
+        runs.filter(|run| run.first() == Some(&level)).any(|run| run.len() >= n_stuck)
+    };
+    (if stuck_at(least) { low.max(least) } else { low }, if stuck_at(greatest) { high.min(greatest) } else { high })
+}
+
 /// Why a signal cannot be used at all.
 fn broken(signal: &Signal) -> Option<String> {
     if signal.time_s.len() != signal.value.len() {

@@ -19,6 +19,9 @@ const CLEAR_S: f64 = 0.001;
 const STEP_DOWN: f64 = 0.07;
 const STEP_UP: f64 = 0.2;
 
+/// Where a gap or saturation leaves the force less well known than this share of its start, no step is called.
+const KNOWN: f64 = 0.02;
+
 /// A sudden change of the shuttle's specific force.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) struct Step {
@@ -52,9 +55,11 @@ pub(super) fn step(track: &Track, release_s: f64, separation_s: f64) -> Option<S
         // What the course before would have done anyway over the same distance.
         let earlier = mean(time_s - 2.0 * (CLEAR_S + MEAN_S) - CLEAR_S, time_s - CLEAR_S - MEAN_S - 2.0 * CLEAR_S)?;
         let share = ((after - before) - (before - earlier)) / before.abs().max(0.3 * start.abs());
-        if !(-STEP_DOWN..=STEP_UP).contains(&share) && share.abs() > largest {
+        let here = track.index_at(time_s);
+        let well_known = track.u_specific_force_mps2[here] < KNOWN * start.abs();
+        if well_known && !(-STEP_DOWN..=STEP_UP).contains(&share) && share.abs() > largest {
             largest = share.abs();
-            let x_m = track.motion.x_m[track.index_at(time_s)];
+            let x_m = track.motion.x_m[here];
             best = Some(Step { time_s, x_m, from_mps2: before, to_mps2: after });
         }
         time_s += 0.25 * MEAN_S;
