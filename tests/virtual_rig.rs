@@ -115,7 +115,7 @@ fn blown() -> Launcher {
 
 fn filled() -> Held {
     let gas = blown().gas.map(|drive| drive.filled()).unwrap_or_default();
-    Held { t_s: 0.0, x_m: 0.0, line_n: 0.0, memories: Vec::new(), gas }
+    Held { t_s: 0.0, x_m: 0.0, v_mps: 0.0, line_n: 0.0, memories: Vec::new(), gas }
 }
 
 /// The oracle's rig: one massless linear cord on north-pier's bodies, the rail's spring carrying the cord beforehand.
@@ -141,7 +141,14 @@ fn sprung() -> Launcher {
 }
 
 fn let_go(launcher: Launcher) -> Course {
-    let held = Held { t_s: 0.0, x_m: 0.0, line_n: 0.0, memories: vec![Default::default()], gas: Default::default() };
+    let held = Held {
+        t_s: 0.0,
+        x_m: 0.0,
+        v_mps: 0.0,
+        line_n: 0.0,
+        memories: vec![Default::default()],
+        gas: Default::default(),
+    };
     launch(System { launcher, rail_rest_n: -600.0, step_s: STEP_S }, &held, Start::HookOpens)
 }
 

@@ -131,7 +131,7 @@ impl Performance {
 pub fn prepare(options: &Options) -> Result<Performance, PrepareError> {
     let scenario = adapted(options)?;
     let mut stage = Stage {
-        winch: Winch::at(&scenario.launcher, scenario.start_x_m, scenario.ripple),
+        winch: Winch::at(&scenario.launcher, scenario.start_x_m, scenario.ripple, options.pace),
         pace: options.pace,
         phases: Vec::new(),
         instants: Vec::new(),
@@ -193,10 +193,10 @@ impl Stage {
                 self.begin(phase);
                 self.winch.run(Leg::Wait { duration_s: duration_s * pace });
             }
-            Act::Draw { draw_m, speed_mps } => {
+            Act::Draw { draw_m, speed_mps, slows } => {
                 self.begin("winch-back");
                 let stop_x_m = self.winch.launcher.zero_mark_x_m - draw_m;
-                self.winch.run(Leg::Draw { speed_mps: speed_mps / pace, stop_x_m });
+                self.winch.run(Leg::Draw { speed_mps: speed_mps / pace, stop_x_m, slows });
             }
             Act::LetDown { speed_mps } => {
                 self.note_hold();

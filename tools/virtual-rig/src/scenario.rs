@@ -13,9 +13,11 @@ pub enum Act {
         phase: &'static str,
         duration_s: f64,
     },
+    /// The drum slows down for the end of the draw, or does not.
     Draw {
         draw_m: f64,
         speed_mps: f64,
+        slows: bool,
     },
     LetDown {
         speed_mps: f64,
@@ -64,7 +66,7 @@ const fn wait(phase: &'static str, duration_s: f64) -> Act {
 }
 
 const fn draw(draw_m: f64) -> Act {
-    Act::Draw { draw_m, speed_mps: DRAW_MPS }
+    Act::Draw { draw_m, speed_mps: DRAW_MPS, slows: true }
 }
 
 const LET_DOWN: Act = Act::LetDown { speed_mps: LET_DOWN_MPS };
@@ -179,8 +181,11 @@ fn not_launched() -> [Scenario; 4] {
 }
 
 fn going_wrong() -> [Scenario; 6] {
-    let mut early =
-        scenario("early-release", "the hook opens by itself at 2.6 m of draw", &[SLACK, draw(2.6), Act::Fire, REST]);
+    let mut early = scenario(
+        "early-release",
+        "the hook opens by itself at 2.6 m of draw, the winch running",
+        &[SLACK, Act::Draw { draw_m: 2.6, speed_mps: DRAW_MPS, slows: false }, Act::Fire, REST],
+    );
     early.uncommanded = true;
     let payload = |change: fn(&mut crate::launcher::Payload)| {
         move |launcher: &mut Launcher| launcher.payload.iter_mut().for_each(change)
@@ -263,7 +268,7 @@ fn gas_launcher() -> Scenario {
         stroke_m: 2.8,
         venting_m: 0.05,
         valve_area_m2: 2.0e-4,
-        valve_opening_s: 0.08,
+        valve_opening_s: 0.6,
         leak_per_s: 4e-4,
         back_pressure_pa_s2_per_m2: 30.0,
     });

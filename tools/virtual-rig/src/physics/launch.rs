@@ -20,6 +20,7 @@ const N_BISECTIONS: u32 = 40;
 pub struct Held {
     pub t_s: f64,
     pub x_m: f64,
+    pub v_mps: f64,
     pub line_n: f64,
     /// One per cord group.
     pub memories: Vec<Memory>,
@@ -71,16 +72,17 @@ pub fn launch(system: System, held: &Held, start: Start) -> Course {
 
 impl Runner {
     fn new(system: System, held: &Held, start: Start) -> Self {
-        let y = system.held(held.x_m, &held.memories, &held.gas);
+        let y = system.held(held.x_m, held.v_mps, &held.memories, &held.gas);
         let n = y.len();
         let zeros = || vec![0.0; n];
         let (line, what) = match start {
             Start::HookOpens => (LineMode::Opening { t_s: held.t_s, hold_n: held.line_n }, Happening::HookOpens),
             Start::HookSlips { line_end_x_m } => (LineMode::Holding { end_x_m: line_end_x_m }, Happening::HookSlips),
         };
+        let grip = if held.v_mps == 0.0 { Grip::Stuck } else { Grip::Sliding(held.v_mps.signum()) };
         let mut runner = Self {
             before: system.energy(&y),
-            mode: Mode { grip: Grip::Stuck, joined: system.launcher.payload.is_some(), line },
+            mode: Mode { grip, joined: system.launcher.payload.is_some(), line },
             cord_breaks_x_m: system.launcher.cord_breaks_x_m,
             system,
             scratch: Scratch { slopes: [zeros(), zeros(), zeros(), zeros()], stage: zeros() },
@@ -234,6 +236,7 @@ impl Runner {
         let holding_n = self.forces_here().holding_n;
         if holding_n.abs() > self.static_friction_n(&self.y) {
             self.mode.grip = Grip::Sliding(-holding_n.signum());
+            self.note_once(Happening::FirstMotion);
         }
     }
 
@@ -319,6 +322,7 @@ impl Runner {
             after: Held {
                 t_s: self.t_s,
                 x_m: last.x_m,
+                v_mps: if self.stuck_since_s.is_some() { 0.0 } else { last.v_mps },
                 line_n: last.line_n,
                 memories: self.system.mean_memories(&self.y),
                 gas,

@@ -102,11 +102,13 @@ impl System {
         at::FIRST_CORD + self.launcher.cords.iter().map(group_size).sum::<usize>()
     }
 
-    /// State of the rig held still at rail coordinate `x_m` with evenly stretched cords.
-    pub fn held(&self, x_m: f64, memories: &[Memory], gas: &GasState) -> Vec<f64> {
+    /// State of the rig with the shuttle at rail coordinate `x_m`, moving at `v_mps`, and evenly stretched cords.
+    pub fn held(&self, x_m: f64, v_mps: f64, memories: &[Memory], gas: &GasState) -> Vec<f64> {
         let mut y = vec![0.0; self.n_states()];
         y[at::SHUTTLE_X] = x_m;
         y[at::PAYLOAD_X] = x_m;
+        y[at::SHUTTLE_V] = v_mps;
+        y[at::PAYLOAD_V] = v_mps;
         y[at::RESERVOIR] = gas.reservoir_kg;
         y[at::CYLINDER] = gas.cylinder_kg;
         let mut start = at::FIRST_CORD;
@@ -115,7 +117,9 @@ impl System {
             let n = kind.n_masses;
             let span_m = self.launcher.anchor_x_m - x_m;
             for idx in 0..n {
-                y[start + idx] = x_m + span_m * (idx as f64 + 0.5) / n as f64;
+                let share = (idx as f64 + 0.5) / n as f64;
+                y[start + idx] = x_m + span_m * share;
+                y[start + n + idx] = v_mps * (1.0 - share);
             }
             for spring in 0..=n {
                 let place = start + 2 * n + MEMORY_SIZE * spring;

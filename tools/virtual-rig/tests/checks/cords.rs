@@ -14,7 +14,7 @@ use virtual_rig::physics::stroke::{Grip, LineMode, Mode, System, at};
 fn first_mode_rad_per_s(launcher: Launcher, n_masses: usize) -> f64 {
     let system = System { launcher, rail_rest_n: 0.0, step_s: STEP_S };
     let mode = Mode { grip: Grip::Sliding(1.0), joined: false, line: LineMode::Opening { t_s: -1.0, hold_n: 0.0 } };
-    let still = system.held(0.0, &[Default::default()], &Default::default());
+    let still = system.held(0.0, 0.0, &[Default::default()], &Default::default());
     let places: Vec<(usize, usize)> = std::iter::once((at::SHUTTLE_X, at::SHUTTLE_V))
         .chain((0..n_masses).map(|idx| (at::FIRST_CORD + idx, at::FIRST_CORD + n_masses + idx)))
         .collect();

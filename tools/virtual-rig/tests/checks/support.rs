@@ -58,7 +58,7 @@ pub fn linear_cord(free_length_m: f64, stiffness_n_per_m: f64, mass_kg: f64, n_m
 pub fn let_go(launcher: &Launcher, step_s: f64) -> Course {
     let memories = vec![Default::default(); launcher.cords.len()];
     let gas = launcher.gas.map_or_else(Default::default, |drive| drive.filled());
-    let held = Held { t_s: 0.0, x_m: 0.0, line_n: 0.0, memories, gas };
+    let held = Held { t_s: 0.0, x_m: 0.0, v_mps: 0.0, line_n: 0.0, memories, gas };
     launch(System { launcher: launcher.clone(), rail_rest_n: 0.0, step_s }, &held, Start::HookOpens)
 }
 
