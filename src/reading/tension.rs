@@ -14,6 +14,8 @@ use super::series::{BIN_S, Binned, Stats, stats_between};
 
 /// Length of the means at both ends of the hold.
 const HOLD_MEAN_S: f64 = 0.1;
+/// The level that the release finds.
+const NEWEST_S: f64 = 0.02;
 /// Distance from the release in which the line is already moving.
 const CLEAR_OF_RELEASE_S: f64 = 0.02;
 
@@ -121,13 +123,26 @@ fn line_rows(
         book.absent("hold_tension", "the release line has no samples in the last 0.1 s of the hold");
         return None;
     };
-    let held_n = last.mean - zero.n;
-    let held = budget(held_n, noise(last));
+    // The shuttle may creep or slip while it is held: what the release finds is the newest level, not the mean.
+    let Some(newest) = stats_between(line, end_s - NEWEST_S, end_s) else {
+        book.absent("hold_tension", "the release line has no samples in the last 20 ms of the hold");
+        return None;
+    };
+    let held_n = newest.mean - zero.n;
+    let steadiness_n = drift_n(line, end_s).unwrap_or(0.0);
+    let held = budget(held_n, noise(newest)).with("change within the window", steadiness_n);
     let u_held_n = held.total();
-    let words = format!("mean of the last 0.1 s of the hold, at the release line, whole launcher; {}", zero.words);
+    let words = format!("mean of the last 20 ms of the hold, at the release line, whole launcher; {}", zero.words);
     book.result("hold_tension", held_n, "N", held, words);
     decay_row(line, phases, end_s, last, book);
     Some((held_n, u_held_n))
+}
+
+/// Half of the change between the halves of the newest window.
+fn drift_n(line: &Signal, end_s: f64) -> Option<f64> {
+    let earlier = stats_between(line, end_s - NEWEST_S, end_s - 0.5 * NEWEST_S)?;
+    let later = stats_between(line, end_s - 0.5 * NEWEST_S, end_s)?;
+    Some(0.5 * (later.mean - earlier.mean).abs())
 }
 
 fn decay_row(line: &Signal, phases: &Phases, end_s: f64, last: Stats, book: &mut Book) {
