@@ -153,7 +153,8 @@ impl<'a> System<'a> {
         if self.phase.held {
             return rates;
         }
-        let forces = self.forces(y, motion);
+        let mut wave_speeds_mps = [1.0; MAX_CORD_SETS];
+        let forces = self.forces(y, motion, &mut wave_speeds_mps);
         rates[0] = motion.v_mps;
         rates[1] = forces.acceleration_mps2;
         if let Some(i) = self.layout.recoil {
@@ -161,9 +162,8 @@ impl<'a> System<'a> {
             rates[i + 1] = forces.rail_acceleration_mps2;
         }
         for (s, set) in self.setup.cords.iter().enumerate() {
-            if let (Some(i), CordPhase::Wave { branch, .. }) = (self.layout.wave[s], self.phase.cords[s]) {
-                let (_, wave_speed_mps) = set.pull_and_wave_speed(branch, y[i]);
-                rates[i] = -set.travel_ratio * forces.acceleration_mps2 / wave_speed_mps;
+            if let (Some(i), CordPhase::Wave { .. }) = (self.layout.wave[s], self.phase.cords[s]) {
+                rates[i] = -set.travel_ratio * forces.acceleration_mps2 / wave_speeds_mps[s];
             }
         }
         if let Some(first) = self.layout.accounts {
@@ -222,7 +222,7 @@ impl<'a> System<'a> {
 
     /// Forces and accelerations at a state.
     pub fn forces_at(&self, y: &[f64]) -> Forces {
-        self.forces(y, self.motion(y))
+        self.forces(y, self.motion(y), &mut [1.0; MAX_CORD_SETS])
     }
 
     /// Pull of one cord set at a state.
@@ -236,24 +236,32 @@ impl<'a> System<'a> {
         }
     }
 
-    /// Pull of all cords, and the mass of those that move evenly with the shuttle.
+    /// Pull of all cords, and the mass of those that move evenly with the shuttle; speeds of waves on the way.
     #[inline(always)]
-    fn pulls(&self, y: &[f64], x_m: f64) -> (f64, f64) {
+    fn pulls(&self, y: &[f64], x_m: f64, wave_speeds_mps: &mut [f64; MAX_CORD_SETS]) -> (f64, f64) {
         let (mut sum_n, mut cord_mass_kg) = (0.0, 0.0);
         for (s, set) in self.setup.cords.iter().enumerate() {
-            sum_n += self.pull_n(s, y, x_m);
-            if matches!(self.phase.cords[s], CordPhase::Even { .. }) {
-                cord_mass_kg += set.moving_mass_kg();
+            match (self.phase.cords[s], self.layout.wave[s]) {
+                (CordPhase::Wave { branch, .. }, Some(i)) => {
+                    let (pull_n, wave_speed_mps) = set.pull_and_wave_speed(branch, y[i]);
+                    sum_n += pull_n;
+                    wave_speeds_mps[s] = wave_speed_mps;
+                }
+                (CordPhase::Even { branch, side }, _) => {
+                    sum_n += side.sign() * set.pull_n(branch, set.elongation_on(side, x_m));
+                    cord_mass_kg += set.moving_mass_kg();
+                }
+                (CordPhase::Wave { .. }, None) | (CordPhase::Slack, _) => {}
             }
         }
         (sum_n, cord_mass_kg)
     }
 
     #[inline(always)]
-    fn forces(&self, y: &[f64], motion: Motion) -> Forces {
+    fn forces(&self, y: &[f64], motion: Motion, wave_speeds_mps: &mut [f64; MAX_CORD_SETS]) -> Forces {
         let setup = self.setup;
         let Motion { x_m, v_mps, rail_x_m, rail_v_mps } = motion;
-        let (cords_n, cord_mass_kg) = self.pulls(y, x_m);
+        let (cords_n, cord_mass_kg) = self.pulls(y, x_m, wave_speeds_mps);
         let mut tables_n = 0.0;
         for (table, on) in setup.tables.iter().zip(self.phase.tables) {
             tables_n += if on { table.force_n.value(x_m) } else { 0.0 };

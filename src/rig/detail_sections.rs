@@ -143,7 +143,30 @@ pub(super) fn more_losses(table: &mut Section<'_, '_>, findings: &mut Findings<'
         along_x_relative_uncertainty: table
             .optional_quantity(findings, "along_x_uncertainty", "%", 0.0..=100.0)
             .unwrap_or(0.0),
+        fit: to_fit(table, findings),
     }
+}
+
+/// Losses that a fit may be asked to find.
+const LOSSES: [&str; 10] = [
+    "friction",
+    "load_friction",
+    "pull_friction",
+    "viscous",
+    "shuttle_drag_area",
+    "payload_drag_area",
+    "hysteresis",
+    "recoil",
+    "along_x",
+    "breakaway",
+];
+
+fn to_fit(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<String> {
+    let names = table.texts(findings, "fit");
+    for name in names.iter().filter(|name| !LOSSES.contains(&name.as_str())) {
+        findings.error(&table.key("fit"), format!("{name:?} is no loss, there are: {}", LOSSES.join(", ")));
+    }
+    names
 }
 
 pub(super) fn rail_support(root: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Option<RailSupport> {

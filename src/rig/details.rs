@@ -103,6 +103,8 @@ pub struct MoreLosses {
     pub along_x: Vec<XForce>,
     /// Relative standard uncertainty of the loss over x.
     pub along_x_relative_uncertainty: f64,
+    /// Names of losses that a fit is to find.
+    pub fit: Vec<String>,
 }
 
 #[derive(Debug, Clone, Copy, PartialEq)]

@@ -117,6 +117,11 @@ fn print(rig: &Rig, made: &Forecast, page: Option<&Path>, screen: &Screen) {
         screen.line(format!("  {name:<28}{joules:>10.1} J"));
     }
     screen.line("");
+    screen.line("Losses:");
+    for sentence in words::losses(rig) {
+        screen.line(format!("  {sentence}"));
+    }
+    screen.line("");
     screen.line("What it hangs on most:");
     for sentence in made.sensitivities().iter().take(8) {
         screen.line(format!("  {sentence}"));
@@ -164,7 +169,7 @@ fn as_json(rig: &Rig, made: &Forecast, page: Option<&Path>) -> Value {
             "name": input.name, "meaning": input.meaning, "unit": input.unit,
             "standard_uncertainty": input.standard_uncertainty,
         })).collect::<Vec<_>>(),
-        "sensitivities": made.sensitivities(), "extrapolations": made.extrapolations,
+        "losses": words::losses(rig), "sensitivities": made.sensitivities(), "extrapolations": made.extrapolations,
         "page": page, "cautions": cautions(rig),
     })
 }

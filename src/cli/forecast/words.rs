@@ -1,6 +1,6 @@
 //! A forecast in words and columns, for the screen and the page.
 
-use tautrail::model::{Forecast, Known};
+use tautrail::model::{BelongsTo, Forecast, Known, LossState, loss_terms};
 use tautrail::rig::Rig;
 use tautrail::units::rounded;
 
@@ -101,6 +101,30 @@ pub fn energy(made: &Forecast) -> Vec<(String, f64)> {
     ];
     let all = sources.into_iter().chain(energy.uses());
     all.filter(|(_, joules)| joules.abs() > 1e-6).map(|(name, joules)| (name.to_owned(), joules)).collect()
+}
+
+/// Each loss that is not off: its state and what it belongs to.
+pub fn losses(rig: &Rig) -> Vec<String> {
+    let mut sentences = Vec::new();
+    for term in loss_terms(rig) {
+        let whose = match term.belongs_to {
+            BelongsTo::Rail => "of the rail",
+            BelongsTo::EachCord => "of each cord",
+            BelongsTo::Payload => "of the payload",
+        };
+        let shown = |given: tautrail::rig::Given| {
+            let (value, u) = (given.value, given.standard_uncertainty);
+            format!("{value} {}, standard uncertainty {u}", term.unit)
+        };
+        let state = match term.state {
+            LossState::Off => continue,
+            LossState::Given(given) => shown(given),
+            LossState::ToBeFitted(Some(given)) => format!("to be fitted, from {}", shown(given)),
+            LossState::ToBeFitted(None) => "to be fitted, taken as zero until then".to_owned(),
+        };
+        sentences.push(format!("{} ({whose}): {state}", term.meaning));
+    }
+    sentences
 }
 
 pub fn cautions(rig: &Rig) -> Vec<String> {
