@@ -222,10 +222,8 @@ impl Winch {
 
     fn flow(&mut self, step_s: f64) {
         let Some(drive) = &self.launcher.gas else { return };
-        let Some(open_since_s) = self.valve_open_s else {
-            self.gas.reservoir_kg *= 1.0 - drive.leak_per_s * step_s;
-            return;
-        };
+        self.gas.reservoir_kg *= 1.0 - drive.leak_per_s * step_s;
+        let Some(open_since_s) = self.valve_open_s else { return };
         let open = ((self.t_s - open_since_s) / drive.valve_opening_s).clamp(0.0, 1.0);
         let part_s = step_s / N_FLOW_STEPS as f64;
         for _ in 0..N_FLOW_STEPS {

@@ -157,6 +157,17 @@ fn ageing_costs_four_tenths_of_a_percent_a_cycle_and_one_cord_is_damaged_at_tria
     assert!((hold_n(5, 1) - hold_n(5, 2)).abs() > 1e-3, "no scatter from trial to trial");
 }
 
+#[test]
+fn a_charged_bottle_leaks_and_its_piston_holds_less_for_it() {
+    let gas = performance("gas-launcher", |options| options.pace = 1.0);
+    let hold = gas.phases.iter().find(|phase| phase.name == "hold").unwrap();
+    let (start, end) = (gas.trajectory.at(hold.t_s + 1.5), gas.trajectory.at(gas.release_s().unwrap() - 0.01));
+    assert!(end.reservoir_pa < start.reservoir_pa && end.cylinder_pa < start.cylinder_pa, "{start:?} to {end:?}");
+    // One second loses 0.04 % of the gas, which the polytrope turns into 0.05 % of the pressure.
+    let lost = 1.0 - end.reservoir_pa / start.reservoir_pa;
+    assert_near("pressure lost", lost / (end.t_s - start.t_s), 1.25 * 4e-4, 3e-5);
+}
+
 /// Kinetic theory (Treloar): force in proportion to absolute temperature. The winch stops within a stick and slip of the
 /// shuttle, so that the draws differ by a tenth of a millimetre.
 #[test]
