@@ -4,9 +4,11 @@
 //! of the rail itself, which recoils; and three constants: accelerometer bias b and scale error s, encoder scale error e,
 //! each with its calibration as the prior.
 //!
-//!     encoder        z = (1 + e)·x                   + quantisation, uniform over one count (GUM 4.3.7)
-//!     accelerometer  z = (1 + s)·(a + c + g·sin θ) + b + noise as seen in the hold
-//!     while standing 0 = v, 0 = a, 0 = w, 0 = c
+//! ```text
+//! encoder        z = (1 + e)·x                   + quantisation, uniform over one count (GUM 4.3.7)
+//! accelerometer  z = (1 + s)·(a + c + g·sin θ) + b + noise as seen in the hold
+//! while standing 0 = v, 0 = a, 0 = w, 0 = c
+//! ```
 //!
 //! Products of states are linearised about the prediction. A first pass shows how much jerk to allow where (a release
 //! and a brake need a thousand times what the stroke does) and how much the rail moves; the second one uses it.
