@@ -130,3 +130,15 @@ fn stronger_cords_are_taken_from_the_hold_and_still_read_true() {
     let modelled = replay.modelled_launch_speed_mps.unwrap_or(f64::NAN) / launch_speed_mps(&trial) - 1.0;
     assert!(modelled.abs() < 0.03, "started from the measured hold, the model is off by {modelled}");
 }
+
+#[test]
+fn a_let_down_s_hold_is_where_it_stood_drawn_furthest() {
+    let rig = rehearsal_rig();
+    let trial = play(&Options { scenario: "let-down".into(), ..nominal(1) }, &rig);
+    let reading = read(&trial.signals, &rig);
+    let error_n = value(&reading, "hold_tension") - trial.truth.tension.hold_line_n;
+    // What the shuttle's own stiction may hide: 15 N either way.
+    assert!(error_n.abs() < 15.0, "{error_n}");
+    let error_m = value(&reading, "draw") - (rig.rail.zero_mark_x_m - trial.truth.tension.hold_x_m);
+    assert!(error_m.abs() < 0.005, "{error_m}");
+}

@@ -43,6 +43,8 @@ pub(super) struct Phases {
 const SUDDEN_BINS: usize = 3;
 /// Mean tension of a second that is called the unloaded indication only under this share of the peak.
 const ZERO_SHARE_OF_PEAK: f64 = 0.12;
+/// Fall of the load within less than a second that no held cord's relaxation gives.
+const GIVEN_SHARE: f64 = 0.01;
 /// Shuttle movement that ends the hold.
 const STANDING_M: f64 = 0.003;
 
@@ -99,7 +101,11 @@ impl Phases {
     /// The hold is the time before release (or before the tension's last fall) in which the shuttle stood.
     fn find_hold(&mut self, sensors: &Sensors<'_>, load: Option<&Signal>) {
         let Some(loaded_from_s) = self.loaded_from_s.or(self.release_hint_s.map(|_| self.start_s)) else { return };
-        let end_s = self.release_hint_s.or_else(|| self.tension_top_end_s(load));
+        let end_s = self.release_hint_s.or_else(|| {
+            let high_until_s = self.tension_top_end_s(load)?;
+            let drawn_until_s = sensors.position.and_then(|x| deepest_until(x, self.start_s, high_until_s));
+            Some(drawn_until_s.map_or(high_until_s, |t| self.before_the_line_gives(load, t)))
+        });
         let Some(end_s) = end_s else { return };
         let stood_from_s = match sensors.position {
             Some(position) => standing_since(position, self.start_s, end_s),
@@ -107,6 +113,17 @@ impl Phases {
         };
         self.hold_end_s = Some(end_s);
         self.hold_start_s = stood_from_s.map(|t| t.max(loaded_from_s)).filter(|&t| end_s - t > 5.0 * BIN_S);
+    }
+
+    /// A winch that lets down first takes the stiction out of the line, before the shuttle moves: back to before that fall.
+    fn before_the_line_gives(&self, load: Option<&Signal>, until_s: f64) -> f64 {
+        let Some(load) = load.map(|signal| Binned::new(signal, self.start_s, until_s)) else { return until_s };
+        let fallen = |idx: usize| {
+            let earlier_n = load.mean(idx.saturating_sub(100)..idx.saturating_sub(20))? - self.zero_n;
+            Some(load.bins[idx]?.mean - self.zero_n < (1.0 - GIVEN_SHARE) * earlier_n)
+        };
+        let held = (0..load.bins.len()).rev().find(|&idx| fallen(idx) == Some(false));
+        held.map_or(until_s, |idx| load.time_s(idx))
     }
 
     /// Without a release: where the tension last stood within a tenth of its peak.
@@ -185,6 +202,15 @@ fn standing_since(position: &Signal, start_s: f64, end_s: f64) -> Option<f64> {
     let x = Binned::new(position, start_s, end_s - 2.0 * BIN_S);
     let moved = x.filled().rev().find(|(_, bin)| (bin.mean - x_end).abs() > STANDING_M);
     Some(moved.map_or(start_s, |(idx, _)| x.time_s(idx) + BIN_S / 2.0))
+}
+
+/// Where the shuttle last was drawn furthest before `end_s`: a winch that lets down moves it away from there before the
+/// tension has fallen much.
+fn deepest_until(position: &Signal, start_s: f64, end_s: f64) -> Option<f64> {
+    let x = Binned::new(position, start_s, end_s);
+    let deepest_m = x.filled().map(|(_, bin)| bin.mean).min_by(f64::total_cmp)?;
+    let (idx, _) = x.filled().rev().find(|(_, bin)| bin.mean - deepest_m < STANDING_M)?;
+    Some(x.time_s(idx) + BIN_S / 2.0)
 }
 
 /// Without an encoder: the highest tension is where the winch stopped, for a held cord only relaxes.
