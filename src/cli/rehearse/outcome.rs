@@ -71,7 +71,7 @@ impl Outcome {
         screen.line(screen.toned("Reading beside the truth of the virtual rig", Tone::Heading));
         screen.line(format!("  outcome: {} (truth: {})", reading.outcome.word(), self.truth_outcome));
         screen.line(format!(
-            "  {:24}{:>10}{:>10}{:>9}   {:22}truth inside",
+            "  {:21}{:>9}{:>9}{:>9}  {:24}truth in it",
             "", "truth", "reading", "error", "95 % interval"
         ));
         for row in &self.results {
@@ -79,7 +79,7 @@ impl Outcome {
             let inside = if row.covered() { "yes" } else { "no" };
             let name = row.name.replace('_', " ");
             let (truth, reading, error) = (row.truth, row.reading, row.error());
-            screen.line(format!("  {name:24}{truth:>10.3}{reading:>10.3}{error:>+9.4}   {interval:22}{inside}"));
+            screen.line(format!("  {name:21}{truth:>9.3}{reading:>9.3}{error:>+9.4}  {interval:24}{inside}"));
         }
         self.print_blocks(screen);
         self.print_residuals(screen);
