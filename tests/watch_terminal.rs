@@ -33,7 +33,7 @@ fn program(args: &[&str], socket: &Path) -> Command {
 }
 
 fn on_pty(command: &mut Command) -> (File, OwnedFd, Child) {
-    let master = openpt(OpenptFlags::RDWR | OpenptFlags::NOCTTY).unwrap();
+    let master = openpt(OpenptFlags::RDWR | OpenptFlags::NOCTTY | OpenptFlags::CLOEXEC).unwrap();
     grantpt(&master).unwrap();
     unlockpt(&master).unwrap();
     let name = ptsname(&master, Vec::new()).unwrap().into_string().unwrap();
@@ -88,6 +88,17 @@ fn the_display_leaves_the_terminal_clean_on_every_signal() {
         let cooked = tcgetattr(&slave).unwrap().local_modes;
         assert!(cooked.contains(LocalModes::ICANON | LocalModes::ECHO), "{signal:?}");
     }
+}
+
+#[test]
+fn the_display_ends_when_its_terminal_goes_away() {
+    let dir = tempfile::tempdir().unwrap();
+    let socket = dir.path().join("feed.sock");
+    let (_server, _requests) = FeedServer::start(&socket, hello()).unwrap();
+    let (mut master, slave, mut child) = on_pty(&mut program(&["watch"], &socket));
+    read_until(&mut master, &mut String::new(), "TREAT AS LOADED");
+    drop((master, slave));
+    assert!(wait(&mut child).is_some(), "ended by itself, not by a signal");
 }
 
 #[test]

@@ -95,6 +95,8 @@ impl Command {
 enum Verdict {
     Done,
     CheckFailed,
+    /// A program carried inside ended with this exit code, and has said why.
+    EndedWith(u8),
 }
 
 /// Why a command could not run; shown with its causes.
@@ -106,6 +108,7 @@ pub fn run() -> ExitCode {
     match line.command.run(&screen) {
         Ok(Verdict::Done) => ExitCode::SUCCESS,
         Ok(Verdict::CheckFailed) => ExitCode::from(1),
+        Ok(Verdict::EndedWith(code)) => ExitCode::from(code),
         Err(failure) => {
             screen.failure(failure.as_ref());
             ExitCode::from(2)

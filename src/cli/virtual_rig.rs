@@ -12,11 +12,8 @@ pub struct Args {
     words: Vec<OsString>,
 }
 
-/// Runs it in this process; it prints its own refusals.
+/// Runs it in this process; it prints its own refusals, and its exit code is ours.
 pub fn run(args: &Args) -> Result<Verdict, Failure> {
     let words = std::iter::once(OsString::from("virtual-rig")).chain(args.words.iter().cloned());
-    match virtual_rig::cli::run(words) {
-        0 => Ok(Verdict::Done),
-        code => Err(format!("the virtual rig ended with exit code {code}").into()),
-    }
+    Ok(Verdict::EndedWith(virtual_rig::cli::run(words)))
 }

@@ -76,9 +76,11 @@ fn title_line(view: &ViewState, width: u16) -> Line<'static> {
         Phase::Hold | Phase::Launch | Phase::RunOut | Phase::Unknown => view.theme.alert(),
     };
     let shown = format!(" {}{since} ", phase.words().to_uppercase());
-    let trial = view.current().and_then(|snapshot| snapshot.trial.as_ref());
-    let trial =
-        trial.map_or(String::from("no trial open"), |trial| format!("trial {} open {:.0} s", trial.id, trial.open_s));
+    let trial = match view.current().map(|snapshot| snapshot.trial.as_ref()) {
+        None => String::from("trial unknown"),
+        Some(None) => String::from("no trial open"),
+        Some(Some(trial)) => format!("trial {} open {:.0} s", trial.id, trial.open_s),
+    };
     let rig = format!(" {}  {}   ", view.hello.rig, view.hello.payload);
     let wall = view.current().map_or(String::new(), |snapshot| snapshot.wall.clone());
     let room = usize::from(width).saturating_sub(rig.len() + shown.len() + trial.len() + 3);

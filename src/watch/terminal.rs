@@ -9,6 +9,8 @@ use std::time::{Duration, Instant};
 
 use ratatui::DefaultTerminal;
 use ratatui::crossterm::event::{self, Event, KeyCode, KeyEventKind, KeyModifiers};
+use rustix::event::{PollFd, PollFlags, Timespec};
+use rustix::io::Errno;
 use signal_hook::consts::{SIGHUP, SIGINT, SIGTERM};
 use thiserror::Error;
 
@@ -73,12 +75,29 @@ pub fn follow(choices: &Choices) -> Result<(), WatchError> {
     }
     let view = ViewState::new(client.hello().clone(), choices.theme);
     // Also sets a panic hook that leaves the terminal clean.
-    let terminal = ratatui::try_init()?;
-    let ended = Watch::new(choices, client, view).run(terminal, &stop);
+    let mut terminal = ratatui::try_init()?;
+    let ended = Watch::new(choices, client, view).run(&mut terminal, &stop);
+    if terminal_is_gone()? {
+        // Dropping it would print that the cursor can't be shown, to nobody, and panic over that.
+        std::mem::forget(terminal);
+        return Ok(());
+    }
     // After SIGHUP there may be no terminal left to clean; the reason for ending matters more.
     let restored = ratatui::try_restore();
     ended?;
     if stop.load(Ordering::Relaxed) { Ok(()) } else { Ok(restored?) }
+}
+
+/// True once the far end of standard input's terminal has closed.
+fn terminal_is_gone() -> io::Result<bool> {
+    let stdin = io::stdin();
+    let mut asked = [PollFd::new(&stdin, PollFlags::IN)];
+    match rustix::event::poll(&mut asked, Some(&Timespec::default())) {
+        Err(Errno::INTR) => Ok(false),
+        asked_well => asked_well
+            .map(|_| asked[0].revents().intersects(PollFlags::HUP | PollFlags::ERR | PollFlags::NVAL))
+            .map_err(io::Error::from),
+    }
 }
 
 /// A daemon that answers, or when to try again.
@@ -108,9 +127,13 @@ impl<'a> Watch<'a> {
         }
     }
 
-    fn run(mut self, mut terminal: DefaultTerminal, stop: &AtomicBool) -> io::Result<()> {
+    fn run(mut self, terminal: &mut DefaultTerminal, stop: &AtomicBool) -> io::Result<()> {
         while !stop.load(Ordering::Relaxed) {
             let urgent = self.listen();
+            // Asking a terminal that is gone for keys never returns, and no signal ends it then.
+            if stop.load(Ordering::Relaxed) || terminal_is_gone()? {
+                return Ok(());
+            }
             if event::poll(Duration::ZERO)? && self.take_key(&event::read()?) {
                 return Ok(());
             }

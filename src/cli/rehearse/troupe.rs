@@ -4,7 +4,7 @@
 
 use std::ffi::OsStr;
 use std::io;
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 use std::process::{Child, Command, ExitStatus, Stdio};
 use std::thread;
 use std::time::{Duration, Instant};
@@ -18,8 +18,8 @@ const POLL: Duration = Duration::from_millis(50);
 pub enum TroupeError {
     #[error("can't start the {who}: {source}")]
     Start { who: &'static str, source: io::Error },
-    #[error("the {who} ended too early ({status}); its log is {}", log.display())]
-    EndedEarly { who: &'static str, status: ExitStatus, log: PathBuf },
+    #[error("the {who} ended too early ({status}); its log {} ends with: {last_words}", log.display())]
+    EndedEarly { who: &'static str, status: ExitStatus, log: PathBuf, last_words: String },
     #[error("the {who} did not end within {} s; its log is {}", patience.as_secs(), log.display())]
     DidNotEnd { who: &'static str, patience: Duration, log: PathBuf },
     #[error("the {who} ended with {status}; its log is {}", log.display())]
@@ -67,7 +67,10 @@ impl Player {
     pub fn must_run(&mut self) -> Result<(), TroupeError> {
         match self.status()? {
             None => Ok(()),
-            Some(status) => Err(TroupeError::EndedEarly { who: self.who, status, log: self.log.clone() }),
+            Some(status) => {
+                let (log, last_words) = (self.log.clone(), last_words(&self.log));
+                Err(TroupeError::EndedEarly { who: self.who, status, log, last_words })
+            }
         }
     }
 
@@ -105,6 +108,12 @@ impl Drop for Player {
             let _ = self.child.wait();
         }
     }
+}
+
+/// The last line of a log; empty where there is none.
+fn last_words(log: &Path) -> String {
+    let text = std::fs::read_to_string(log).unwrap_or_default();
+    text.lines().rev().find(|line| !line.trim().is_empty()).unwrap_or_default().to_owned()
 }
 
 /// Polls until `ready`; false when the patience ran out.
