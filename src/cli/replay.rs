@@ -33,7 +33,7 @@ Examples:
   tautrail replay trials/*.h5                                 one after the other; a bad file stops none of the others
   tautrail replay --json --series trials/trial-000012-7f3a9c.h5 | jq '.[0].residuals[0].residual'
 
-bias and rms are over the power stroke; \"over u\" is the largest residual over its own standard uncertainty: 2 or less is
+bias and rms are over the power stroke; \"over u\" is the greatest residual over its own standard uncertainty, which need not be the largest: 2 or less is
 agreement. Exit code: 0 all replayed, 1 at least one can't be replayed (the reason is shown), 2 nothing could be read.
 
 Tautrail is no safety device: it advises and records; interlocks, exclusion zones, local codes and licensed practice

@@ -68,15 +68,19 @@ impl Residuals {
         })
     }
 
-    /// From the first compared instant to the largest residual.
-    pub(super) fn since_start_s(&self) -> f64 {
-        self.max_at_s - self.time_s.first().copied().unwrap_or(self.max_at_s)
+    /// Where the residual is greatest against its own uncertainty: that says more than its size, for the uncertainty is
+    /// not the same all along.
+    pub(super) fn worst_idx(&self) -> Option<usize> {
+        (0..self.residual.len()).max_by(|&a, &b| self.over_u(a).total_cmp(&self.over_u(b)))
     }
 
-    /// How many times its uncertainty the residual is where it is largest.
+    /// The greatest of the residuals over their own standard uncertainties.
     pub fn max_over_u(&self) -> f64 {
-        let at = self.time_s.partition_point(|&t| t < self.max_at_s);
-        self.u.get(at).map_or(f64::NAN, |u| self.max.abs() / u)
+        self.worst_idx().map_or(f64::NAN, |idx| self.over_u(idx))
+    }
+
+    fn over_u(&self, idx: usize) -> f64 {
+        self.residual[idx].abs() / self.u[idx]
     }
 }
 
