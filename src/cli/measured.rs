@@ -9,14 +9,20 @@ use thiserror::Error;
 
 #[derive(Debug, Error)]
 pub enum MeasuredError {
-    #[error("{path}")]
+    #[error("{}", once(path, source))]
     Trial { path: String, source: TrialError },
     #[error("{path}: carries no rig file; name one with --rig")]
     NoRig { path: String },
     #[error("{path}: the rig file it carries can't be used; name one with --rig")]
     Rig { path: String, source: RigError },
-    #[error("{path}: can't be used as rig file")]
+    #[error("{}", once(path, source))]
     OtherRig { path: String, source: RigError },
+}
+
+/// The error with the path before it, where it does not name the path itself.
+fn once(path: &str, source: &impl std::error::Error) -> String {
+    let said = source.to_string();
+    if said.contains(path) { said } else { format!("{path}: {said}") }
 }
 
 #[derive(Debug)]

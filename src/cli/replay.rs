@@ -7,7 +7,7 @@ use tautrail::reading::read;
 use tautrail::replay::{Replay, ReplayError, Residuals, replay};
 
 use super::measured::open;
-use super::screen::{Screen, Tone};
+use super::screen::{Screen, Tone, with_causes};
 use super::{CAUTION, Failure, Verdict};
 
 /// Replay trials through the launch model and show where they differ
@@ -41,10 +41,8 @@ decide.";
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     let outcomes: Vec<Outcome> = args.trials.iter().map(|path| replayed(path, args)).collect();
-    if let ([only], true) = (&args.trials[..], outcomes.len() == 1)
-        && let Some(Outcome { result: Err(failure), could_read: false, .. }) = outcomes.first()
-    {
-        return Err(format!("{}: {failure}", only.display()).into());
+    if let [Outcome { result: Err(failure), could_read: false, .. }] = &outcomes[..] {
+        return Err(failure.clone().into());
     }
     if screen.json {
         screen.value(&Value::Array(outcomes.iter().map(|outcome| as_json(outcome, args.series)).collect()));
@@ -90,16 +88,6 @@ fn replayed(path: &Path, args: &Args) -> Outcome {
     outcome.result =
         replay(&measured.signals, &reading, &measured.rig).map_err(|error: ReplayError| with_causes(&error));
     outcome
-}
-
-fn with_causes(error: &dyn std::error::Error) -> String {
-    let mut text = error.to_string();
-    let mut cause = error.source();
-    while let Some(error) = cause {
-        text = format!("{text}: {error}");
-        cause = error.source();
-    }
-    text
 }
 
 fn print(outcome: &Outcome, screen: &Screen) {

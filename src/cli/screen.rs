@@ -60,20 +60,26 @@ impl Screen {
 
     /// The error and its causes: on standard error for people, as JSON for programs.
     pub fn failure(&self, failure: &dyn Error) {
-        let mut text = failure.to_string();
-        let mut cause = failure.source();
-        while let Some(error) = cause {
-            let shown = error.to_string();
-            if !text.contains(&shown) {
-                text.push_str(": ");
-                text.push_str(&shown);
-            }
-            cause = error.source();
-        }
+        let text = with_causes(failure);
         if self.json {
             self.value(&json!({ "error": text }));
         } else {
             let _ = writeln!(io::stderr().lock(), "tautrail: {text}");
         }
     }
+}
+
+/// An error and its causes in one sentence; what a cause repeats is said once.
+pub fn with_causes(failure: &dyn Error) -> String {
+    let mut text = failure.to_string();
+    let mut cause = failure.source();
+    while let Some(error) = cause {
+        let shown = error.to_string();
+        if !text.contains(&shown) {
+            text.push_str(": ");
+            text.push_str(&shown);
+        }
+        cause = error.source();
+    }
+    text
 }

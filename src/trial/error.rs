@@ -10,6 +10,8 @@ pub enum TrialError {
     Io { path: PathBuf, source: std::io::Error },
     #[error("{path} is no readable HDF5 file ({source}): it may be cut short or damaged; seal it again from its journal, or fetch a copy", path = path.display())]
     NotHdf5 { path: PathBuf, source: hdf5::Error },
+    #[error("{path} is no trial file: it is not HDF5 at all", path = path.display())]
+    OtherKind { path: PathBuf },
     #[error("{path} is an HDF5 file, but no trial of this program: {what}", path = path.display())]
     NotATrial { path: PathBuf, what: String },
     #[error(

@@ -3,6 +3,7 @@
 //! Refuses what leads out of the file, what claims more than it stores, and every format newer than this program.
 //! Nothing is read before it is asked for; a window of a signal costs a window.
 
+use std::io::Read;
 use std::path::Path;
 
 use hdf5::File;
@@ -36,15 +37,25 @@ impl std::fmt::Debug for TrialFile {
     }
 }
 
+/// Whether a file begins with HDF5's signature (HDF5 File Format Specification 3.0, II.A), as far as it goes.
+fn begins_as_hdf5(path: &Path) -> std::io::Result<bool> {
+    const SIGNATURE: &[u8; 8] = b"\x89HDF\r\n\x1a\n";
+    let mut found = Vec::new();
+    std::fs::File::open(path)?.take(SIGNATURE.len() as u64).read_to_end(&mut found)?;
+    Ok(SIGNATURE.starts_with(&found))
+}
+
 impl TrialFile {
     /// Opens the file and reads its header.
     ///
     /// # Errors
-    /// [`TrialError::Io`] if it cannot be opened at all, [`TrialError::NotHdf5`] if it is cut short or damaged,
+    /// [`TrialError::Io`] if it cannot be opened at all, [`TrialError::OtherKind`] if it is something else, [`TrialError::NotHdf5`] if it is cut short or damaged,
     /// [`TrialError::NotATrial`] and [`TrialError::TooNew`] if it is something else.
     pub fn open(path: &Path) -> Result<Self, TrialError> {
         let io = |source| TrialError::Io { path: path.to_owned(), source };
-        std::fs::File::open(path).and_then(|file| file.metadata()).map_err(io)?;
+        if !begins_as_hdf5(path).map_err(io)? {
+            return Err(TrialError::OtherKind { path: path.to_owned() });
+        }
         let not_hdf5 = |source| TrialError::NotHdf5 { path: path.to_owned(), source };
         // A sealed file is never written again, and network disks often cannot lock.
         let file = File::with_options().with_fapl(|fapl| fapl.file_locking(false)).open(path).map_err(not_hdf5)?;
