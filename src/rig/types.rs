@@ -91,7 +91,7 @@ pub struct CordPoint {
     pub tension_n: f64,
 }
 
-/// Equal cords side by side, described in the rig file itself (cord cards come with issue 7).
+/// Equal cords side by side, described in the rig file itself.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Cords {
     pub count: u32,
