@@ -17,6 +17,9 @@ use super::error::SealError;
 use super::player::Told;
 use super::raw_pass::{DevicePass, Events, seconds_between};
 
+/// Samples whose ticks put them further from their arrival stay raw: one such block would stop the axis for good.
+const BELIEVED_WITHIN_S: f64 = 60.0;
+
 /// Samples handed to the reading, all signals together (16 bytes each): ten minutes of four channels at 10 kHz.
 /// The latest are kept: the launch is at a trial's end.
 pub(super) const KEPT_SAMPLES_MAX: usize = 24_000_000;
@@ -200,6 +203,11 @@ impl SignalPass {
             (piece.host_ns(tick) - zero_host_ns as f64) * 1e-9 - route.group_delay_s
         };
         let times_s: Vec<f64> = (0..block.n_samples).map(time_s).collect();
+        let arrived_s = block.host_ns.saturating_sub(zero_host_ns) as f64 * 1e-9;
+        let far = |time_s: Option<&f64>| time_s.is_some_and(|time_s| (time_s - arrived_s).abs() > BELIEVED_WITHIN_S);
+        if far(times_s.first()) || far(times_s.last()) {
+            return Err("their ticks say that they were taken a minute or more away from their arrival".to_owned());
+        }
         if times_s.first().is_some_and(|first_s| *first_s <= self.last_time_s) {
             return Err("their times do not move on from the block before".to_owned());
         }

@@ -9,6 +9,8 @@ use crate::rig::{Channel, Device};
 use super::state::LinkNow;
 
 const SECOND_NS: i64 = 1_000_000_000;
+/// A device that keeps samples back for longer, or says that it will take them, is not believed.
+const BELIEVED_WITHIN_NS: u64 = 60_000_000_000;
 
 /// Where one stream's channels go: indices into the rig's channels.
 #[derive(Debug)]
@@ -154,18 +156,22 @@ impl DeviceMonitor {
         mine.map(|(idx, _)| idx).filter(|idx| !known.contains(idx)).collect()
     }
 
-    /// Hands every sample of a block to `sink`, stamped with the host time at which the device took it.
+    /// Hands every sample of a block to `sink`, stamped with the host time at which the device took it. A block whose
+    /// ticks say that it is a minute away from its arrival is not shown: its channel falls silent, which is said.
     pub fn spread(&mut self, block: &Block, sink: &mut impl FnMut(Sample)) {
         let Some(map) = self.streams.iter().find(|map| map.stream == block.stream) else { return };
         if let Some(clock) = &mut self.clock {
             clock.arrived(&BlockTimes::from(block));
         }
         let first_ns = self.sample_ns(block, block.first_tick);
+        if first_ns.abs_diff(block.host_ns) > BELIEVED_WITHIN_NS {
+            return;
+        }
         let step_ns = f64::from(map.ticks_per_sample) * self.ns_per_tick;
         for (target, counts) in map.targets.iter().zip(&block.counts) {
             let Some(channel_idx) = *target else { continue };
             let mut put = |k: usize, counts: f64| {
-                let t_ns = (first_ns + (k as f64 * step_ns) as i64).min(block.host_ns);
+                let t_ns = first_ns.saturating_add((k as f64 * step_ns) as i64).min(block.host_ns);
                 sink(Sample { channel_idx, t_ns, counts });
             };
             match counts {
@@ -182,7 +188,7 @@ impl DeviceMonitor {
             Some(piece) => piece.host_ns(tick) as i64,
             None => {
                 let before_sent_ns = block.sent_tick.saturating_sub(tick) as f64 * self.ns_per_tick;
-                block.host_ns - before_sent_ns as i64
+                block.host_ns.saturating_sub(before_sent_ns as i64)
             }
         }
     }

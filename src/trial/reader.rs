@@ -49,7 +49,7 @@ impl TrialFile {
     /// Opens the file and reads its header.
     ///
     /// # Errors
-    /// [`TrialError::Io`] if it cannot be opened at all, [`TrialError::OtherKind`] if it is something else, [`TrialError::NotHdf5`] if it is cut short or damaged,
+    /// [`TrialError::Io`] if it cannot be opened at all, [`TrialError::OtherKind`] if it is not HDF5, [`TrialError::NotHdf5`] if it is cut short or damaged,
     /// [`TrialError::NotATrial`] and [`TrialError::TooNew`] if it is something else.
     pub fn open(path: &Path) -> Result<Self, TrialError> {
         let io = |source| TrialError::Io { path: path.to_owned(), source };
@@ -229,7 +229,10 @@ impl TrialFile {
                 return Ok((ClockTable::read(&group.child("map")?)?, exchanges));
             }
         }
-        Err(TrialError::NoSuch { object: format!("clock of device {device:?}"), n_known: clock.names().count() - 1 })
+        Err(TrialError::NoSuch {
+            object: format!("clock of device {device:?}"),
+            n_known: clock.names().count().saturating_sub(1),
+        })
     }
 
     pub fn host_clocks(&self) -> Result<Vec<HostClocksRow>, TrialError> {

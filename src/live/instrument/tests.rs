@@ -254,3 +254,23 @@ fn a_device_that_falls_silent_on_a_living_link_is_told_channel_by_channel() {
     }
     assert!(matches!(run.live.cords(), CordsNow::Loaded { .. }));
 }
+
+#[test]
+fn ticks_from_nowhere_neither_stop_the_daemon_nor_move_a_level() {
+    for wild in [0, 1, u64::MAX, u64::MAX - 1, 1 << 63, (1 << 63) - 1, 1 << 40] {
+        let mut run = Run::new();
+        let scene = scene(End::Launch, 1.0);
+        run.play(&scene, 0.0, 6.0, |_| true);
+        let (device, good) = blocks(&scene).find(|(_, block)| block.host_ns - ZERO_NS >= 6 * S).unwrap();
+        let level = run.live.channels[0].last_level();
+        for (first_tick, sent_tick) in [(wild, good.sent_tick), (good.first_tick, wild), (wild, wild)] {
+            let block = crate::capture::Block { first_tick, sent_tick, ..good.clone() };
+            let told = run.live.on_captured(device, &Captured::Block(block));
+            run.told.extend(told);
+            run.told.extend(run.live.tick(good.host_ns));
+        }
+        let now = run.live.channels[0].last_level();
+        assert!(level.zip(now).is_some_and(|(was, is)| (was - is).abs() < 30.0), "tick {wild}: {level:?}, {now:?}");
+        run.play(&scene, 6.1, 8.0, |_| true);
+    }
+}
