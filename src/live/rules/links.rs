@@ -1,0 +1,54 @@
+//! Links and what a device says of itself.
+
+use crate::live::alarm::{Board, Cause};
+use crate::live::happening::Happening;
+use crate::live::instrument::Live;
+use crate::rig::Rig;
+
+/// A device has this long to appear before its absence is an alarm.
+const LINK_GRACE_NS: i64 = 3_000 * super::MS;
+
+/// Says which of the rig's channels a device's description lacks.
+pub fn channels_described(
+    board: &mut Board,
+    rig: &Rig,
+    device: &str,
+    missing: &[usize],
+    host_ns: i64,
+) -> Vec<Happening> {
+    let mine = rig.channels.iter().enumerate().filter(|(_, channel)| channel.device == device);
+    mine.filter_map(|(idx, channel)| {
+        if !missing.contains(&idx) {
+            return board.clear(Cause::ChannelMissing(idx), host_ns);
+        }
+        let sentence = format!(
+            "{device} does not describe a channel \"{}\", which the rig file wants for {}: check the rig file and the firmware",
+            channel.device_channel, channel.name
+        );
+        board.raise(Cause::ChannelMissing(idx), host_ns, sentence)
+    })
+    .collect()
+}
+
+pub(super) fn judge(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
+    let waited_ns = live.started_ns.map_or(0, |started_ns| host_ns - started_ns);
+    for (idx, device) in (0_u16..).zip(&live.devices) {
+        if device.is_up() {
+            told.extend(live.board.clear(Cause::LinkLost(idx), host_ns));
+            told.extend(live.board.clear(Cause::LinkAbsent(idx), host_ns));
+            continue;
+        }
+        let cause = if device.was_ever_up() { Cause::LinkLost(idx) } else { Cause::LinkAbsent(idx) };
+        if (!device.was_ever_up() && waited_ns < LINK_GRACE_NS) || live.board.is_active(cause) {
+            continue;
+        }
+        let what = if device.was_ever_up() { "link lost" } else { "no link yet" };
+        let sentence = format!(
+            "{}: {what} on {} ({}): check cable and power; recording goes on without it",
+            device.name,
+            device.port,
+            device.note()
+        );
+        told.extend(live.board.raise(cause, host_ns, sentence));
+    }
+}
