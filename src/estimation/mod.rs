@@ -2,8 +2,14 @@
 
 mod cfc;
 mod distribution;
+mod linear;
 mod random;
+mod statistics;
+#[cfg(test)]
+mod testing;
 
 pub use cfc::{CfcError, CfcFilter, StartUp};
 pub use distribution::{Cholesky, Distribution, NotPositive};
+pub use linear::{LinearError, LinearFit, Scatter, least_squares, polynomial, polynomial_row, propagated};
 pub use random::Random;
+pub use statistics::{Component, RunningMean, chi_square_quantile, combined, coverage_factor, lag1_autocorrelation};
