@@ -4,6 +4,8 @@
 
 mod cable;
 mod crash;
+#[path = "../support/daemon_process.rs"]
+mod daemon_process;
 mod refusals;
 mod stage;
 mod whole_trial;

@@ -1,31 +1,21 @@
 //! A stage for one test: a directory, the virtual rig playing in it, the daemon as a child process.
 
 use std::collections::BTreeMap;
-use std::io::{BufRead, BufReader};
 use std::path::{Path, PathBuf};
-use std::process::{Child, Command, Output, Stdio};
+use std::process::{Command, Output};
 use std::sync::atomic::{AtomicBool, Ordering};
-use std::sync::mpsc::{Receiver, channel};
 use std::sync::{Arc, OnceLock};
 use std::thread::JoinHandle;
-use std::time::{Duration, Instant};
 
 use serde::Deserialize;
 use tautrail::trial::{BlockRow, TrialFile};
 use virtual_rig::performance::{Options, Performance, prepare};
 use virtual_rig::play::pty::{PtySettings, play};
 
-pub const DEVICES: [&str; 2] = ["winch-node", "shuttle-node"];
-/// Longer than anything waited for here, also on a busy machine.
-const PATIENCE: Duration = Duration::from_secs(60);
+use crate::daemon_process::PATIENCE;
+pub use crate::daemon_process::{Daemon, wait_until};
 
-/// One line of the daemon's `--json` output.
-#[derive(Debug, Clone, Deserialize)]
-pub struct Told {
-    pub host_ns: i64,
-    pub kind: String,
-    pub text: String,
-}
+pub const DEVICES: [&str; 2] = ["winch-node", "shuttle-node"];
 
 /// The virtual rig, playing until it is stopped.
 pub struct Playing {
@@ -35,12 +25,6 @@ pub struct Playing {
 
 pub struct Stage {
     pub dir: tempfile::TempDir,
-}
-
-/// A running daemon. Dropped, it is killed.
-pub struct Daemon {
-    pub child: Child,
-    lines: Receiver<Told>,
 }
 
 /// What the rig really sent.
@@ -110,24 +94,7 @@ impl Stage {
     }
 
     pub fn start_daemon_with(&self, more: &[&str]) -> Daemon {
-        let mut child = self
-            .daemon_command()
-            .args(more)
-            .stdout(Stdio::piped())
-            .stderr(Stdio::inherit())
-            .spawn()
-            .expect("the daemon starts");
-        let stdout = BufReader::new(child.stdout.take().expect("its output"));
-        let (told, lines) = channel();
-        std::thread::spawn(move || {
-            for line in stdout.lines().map_while(Result::ok) {
-                let parsed = serde_json::from_str(&line).unwrap_or_else(|error| panic!("{error} in {line}"));
-                if told.send(parsed).is_err() {
-                    return;
-                }
-            }
-        });
-        Daemon { child, lines }
+        Daemon::start(self.daemon_command().args(more))
     }
 
     /// The only trial file there is.
@@ -156,45 +123,11 @@ impl Stage {
 }
 
 impl Daemon {
-    /// Waits for an event of this kind whose text holds `part`.
-    #[track_caller]
-    pub fn wait_for(&self, kind: &str, part: &str) -> Told {
-        let deadline = Instant::now() + PATIENCE;
-        let mut heard = Vec::new();
-        loop {
-            match self.lines.recv_timeout(deadline.saturating_duration_since(Instant::now())) {
-                Ok(told) if told.kind == kind && told.text.contains(part) => return told,
-                Ok(told) => heard.push(told),
-                Err(_) => panic!("no {kind} event with {part:?}; heard {heard:#?}"),
-            }
-        }
-    }
-
-    pub fn signal(&self, signal: i32) {
-        let pid = i32::try_from(self.child.id()).expect("a process id");
-        // SAFETY: sends a signal to a child that was not waited for yet, so its id is still its own.
-        assert_eq!(unsafe { libc::kill(pid, signal) }, 0);
-    }
-
-    /// SIGTERM, and the exit code; what it said meanwhile can still be waited for.
-    pub fn stop(&mut self) -> Option<i32> {
-        self.signal(libc::SIGTERM);
-        self.child.wait().expect("the daemon ends").code()
-    }
-
     pub fn kill(mut self) -> i64 {
         self.signal(libc::SIGKILL);
         let killed_ns = monotonic_ns();
         self.child.wait().expect("the daemon ends");
         killed_ns
-    }
-}
-
-impl Drop for Daemon {
-    fn drop(&mut self) {
-        // Ended already, most likely.
-        let _ = self.child.kill();
-        let _ = self.child.wait();
     }
 }
 
@@ -228,13 +161,4 @@ impl Truth {
 
 pub fn monotonic_ns() -> i64 {
     virtual_rig::play::pty::monotonic_ns()
-}
-
-#[track_caller]
-pub fn wait_until(what: &str, condition: impl Fn() -> bool) {
-    let deadline = Instant::now() + PATIENCE;
-    while !condition() {
-        assert!(Instant::now() < deadline, "{what} did not come");
-        std::thread::sleep(Duration::from_millis(20));
-    }
 }
