@@ -1,0 +1,12 @@
+//! Firmware for a small board, written with the C header, on an emulated Cortex-M3 board: it is spoken to as the
+//! protocol says, and recorded by the real daemon.
+
+#![allow(clippy::expect_used, clippy::unwrap_used, reason = "a test that cannot go on stops here")]
+
+mod board;
+mod conversation;
+#[path = "../support/daemon_process.rs"]
+mod daemon_process;
+mod recording;
+#[path = "../support/mod.rs"]
+mod support;
