@@ -199,7 +199,7 @@ fn writes_that_hit_a_limit_end_in_an_error_not_in_a_short_file() {
     for share in [0.05, 0.3, 0.6, 0.9, 0.99] {
         let n_blocks = (whole as f64 * share / 1024.0) as u64;
         let limited = format!(
-            "trap '' XFSZ; ulimit -f {n_blocks}; exec {} seal-child {} {JOURNAL_ID} {TRIAL_ID}",
+            "trap '' XFSZ; ulimit -f {n_blocks}; exec {} seal-child --niceness 0 {} {JOURNAL_ID} {TRIAL_ID}",
             env!("CARGO_BIN_EXE_tautrail"),
             dir.path().display()
         );
@@ -209,6 +209,37 @@ fn writes_that_hit_a_limit_end_in_an_error_not_in_a_short_file() {
         assert!(error.contains("File too large"), "{share}: {error}");
         assert_eq!(names(dir.path()), ["journal"], "{share}: {error}");
     }
+}
+
+/// The child of a daemon that died goes on; the next daemon starts another one for the same trial.
+#[test]
+fn two_sealing_processes_at_once_leave_one_file_and_both_succeed() {
+    let dir = nominal_copy();
+    let start = || {
+        let mut command = Command::new(env!("CARGO_BIN_EXE_tautrail"));
+        command.args(["seal-child", "--niceness", "0"]).arg(dir.path()).args([JOURNAL_ID, TRIAL_ID]).spawn().unwrap()
+    };
+    let children = [start(), start()];
+    for mut child in children {
+        assert!(child.wait().unwrap().success());
+    }
+    assert_eq!(names(dir.path()), ["journal".to_owned(), format!("trial-{TRIAL_ID}.h5")]);
+}
+
+#[test]
+fn a_target_that_appears_while_sealing_is_not_replaced() {
+    let dir = nominal_copy();
+    let eexist = 17;
+    let disk: Arc<dyn Disk> = Arc::new(Faulty { rename: Some(eexist), ..SOUND });
+    assert!(seal_in(dir.path(), &disk).is_err());
+    assert_eq!(names(dir.path()), ["journal"]);
+}
+
+#[test]
+fn recover_says_that_a_directory_is_not_there() {
+    let dir = tempfile::tempdir().unwrap();
+    let error = recover(&dir.path().join("none"), &real(), &mut |_| {}).unwrap_err().to_string();
+    assert!(error.contains("there is no directory") && error.contains("none"), "{error}");
 }
 
 #[test]

@@ -46,11 +46,7 @@ impl<'d> Part<'d> {
     /// [`SealError::Differs`] if the name is taken by other content; the disk's. The part is removed then.
     pub(super) fn publish(mut self, target: &Path) -> Result<Published, SealError> {
         if target.exists() {
-            return if same_bytes(&self.path, target)? {
-                Ok(Published::AlreadyThere)
-            } else {
-                Err(SealError::Differs { path: target.to_owned() })
-            };
+            return self.is_there_already(target);
         }
         let at = |doing, path: &Path| {
             let path = path.to_owned();
@@ -58,11 +54,23 @@ impl<'d> Part<'d> {
         };
         std::fs::set_permissions(&self.path, Permissions::from_mode(0o444)).map_err(at("protect", &self.path))?;
         File::open(&self.path).and_then(|file| file.sync_all()).map_err(at("sync", &self.path))?;
-        self.disk.rename_noreplace(&self.path, target).map_err(at("rename to", target))?;
+        match self.disk.rename_noreplace(&self.path, target) {
+            // Two seal the same trial at once, after a daemon died and left its child: the first one's file stands.
+            Err(error) if error.kind() == io::ErrorKind::AlreadyExists => return self.is_there_already(target),
+            renamed => renamed.map_err(at("rename to", target))?,
+        }
         self.published = true;
         let dir = target.parent().unwrap_or(Path::new("."));
         self.disk.sync_dir(dir).map_err(at("sync", dir))?;
         Ok(Published::New)
+    }
+
+    fn is_there_already(&self, target: &Path) -> Result<Published, SealError> {
+        if same_bytes(&self.path, target)? {
+            Ok(Published::AlreadyThere)
+        } else {
+            Err(SealError::Differs { path: target.to_owned() })
+        }
     }
 }
 

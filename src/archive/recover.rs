@@ -35,6 +35,8 @@ pub enum Fate {
 #[derive(Debug, thiserror::Error)]
 #[non_exhaustive]
 pub enum RecoverError {
+    #[error("there is no directory {dir}; give the archive directory that a daemon recorded into", dir = dir.display())]
+    NoDirectory { dir: PathBuf },
     #[error(transparent)]
     Journal(#[from] ReadError),
     #[error(transparent)]
@@ -55,6 +57,9 @@ pub fn recover(
     disk: &Arc<dyn Disk>,
     progress: &mut dyn FnMut(&TrialRange),
 ) -> Result<Vec<Recovered>, RecoverError> {
+    if !dir.is_dir() {
+        return Err(RecoverError::NoDirectory { dir: dir.to_owned() });
+    }
     let lock = match ArchiveLock::take(dir, &format!("recover, process {}", std::process::id())) {
         Ok(lock) => Some(lock),
         Err(LockError::Held { .. }) => None,

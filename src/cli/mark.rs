@@ -1,16 +1,11 @@
 //! `tautrail mark`: a note into the journal and the open trial, through the feed.
 
-use std::time::Duration;
-
-use serde_json::json;
-use tautrail::feed::FeedClient;
 use tautrail::feed::message::Command;
 
+use super::ask::ask;
 use super::feed_place::{FeedPlace, login_name};
-use super::screen::{Screen, Tone};
+use super::screen::Screen;
 use super::{Failure, Verdict};
-
-const PATIENCE: Duration = Duration::from_secs(5);
 
 /// Write a note into the running daemon's journal, and into the trial while one is open
 ///
@@ -28,14 +23,6 @@ pub struct Args {
 }
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
-    let mut client = FeedClient::connect(&args.place.socket())?;
     let command = Command::Mark { id: 1, person: args.person.clone(), text: args.text.join(" ") };
-    let (ok, text) = client.ask(&command, PATIENCE)?;
-    if screen.json {
-        screen.value(&json!({ "ok": ok, "text": text }));
-    } else {
-        let word = if ok { screen.toned("noted", Tone::Good) } else { screen.toned("refused", Tone::Bad) };
-        screen.line(format!("{word}: {text}"));
-    }
-    Ok(if ok { Verdict::Done } else { Verdict::CheckFailed })
+    ask(&args.place, &command, "noted", screen)
 }

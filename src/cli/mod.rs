@@ -3,12 +3,15 @@
 //! A command's file has `Args` (clap derive) and `run(&Args, &Screen) -> Result<Verdict, Failure>`; it is named once in
 //! [`Command`] and once in [`Command::run`]. Exit codes: 0 done, 1 a check failed, 2 could not run.
 
+mod ask;
 mod check;
+mod close;
 mod daemon;
 mod feed_place;
 mod forecast;
 mod mark;
 mod measured;
+mod open;
 mod read;
 mod recover;
 mod rehearse;
@@ -58,6 +61,8 @@ enum Command {
     Verify(verify::Args),
     Watch(watch::Args),
     Mark(mark::Args),
+    Open(open::Args),
+    Close(close::Args),
     Report(report::Args),
     Read(read::Args),
     Replay(replay::Args),
@@ -81,6 +86,8 @@ impl Command {
             Self::Verify(args) => verify::run(args, screen),
             Self::Watch(args) => watch::run(args, screen),
             Self::Mark(args) => mark::run(args, screen),
+            Self::Open(args) => open::run(args, screen),
+            Self::Close(args) => close::run(args, screen),
             Self::Report(args) => report::run(args, screen),
             Self::Read(args) => read::run(args, screen),
             Self::Replay(args) => replay::run(args, screen),

@@ -10,9 +10,6 @@ use tautrail::journal::{Disk, RealDisk};
 use super::screen::Screen;
 use super::{Failure, Verdict};
 
-/// Sealing may take long and must never be in the way of acquisition.
-const NICENESS: i32 = 15;
-
 /// Seal one trial of one journal; the daemon starts this
 #[derive(Debug, clap::Args)]
 pub struct Args {
@@ -22,11 +19,14 @@ pub struct Args {
     journal: String,
     /// Id of the trial
     trial: String,
+    /// Added to the process's niceness: sealing may take long and must never be in the way of acquisition
+    #[arg(long, default_value_t = 15, value_parser = clap::value_parser!(i32).range(0..=19))]
+    niceness: i32,
 }
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     // Refused, sealing goes on at ordinary priority.
-    let _ = rustix::process::nice(NICENESS);
+    let _ = rustix::process::nice(args.niceness);
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
     let sealed = seal_one(&args.dir, &args.journal, &args.trial, &disk)?;
     if screen.json {

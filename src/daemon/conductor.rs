@@ -2,20 +2,21 @@
 //!
 //! Never waits for a disk, a client or a child: orders that find the recorder's queue full are kept in order here.
 
-use std::collections::VecDeque;
 use std::path::PathBuf;
 use std::sync::Arc;
 use std::time::{Duration, Instant};
 
-use crossbeam_channel::{Receiver, Sender, never, select};
+use crossbeam_channel::{Receiver, never, select};
 
-use crate::feed::message::{Command, Event, Message};
-use crate::feed::{FeedServer, Replier, Request};
+use crate::feed::message::{Event, Message};
+use crate::feed::{FeedServer, Request};
 use crate::journal::{Clocks, EventBody, Order, Recorder, RecorderNow, Report, TrialClose};
 use crate::link::{FromLinks, HostClock, LinkEvent, LinkWhat, Links, Lost};
 use crate::live::{Around, CordsNow, Happening, JournalNow, Live, TrialNow};
 
 use super::error::DaemonError;
+use super::outgoing::Outgoing;
+use super::ports::FirstOpenings;
 use super::sealing::{SealReport, Sealer};
 use super::trials::TrialBook;
 use super::words;
@@ -24,7 +25,7 @@ use super::words;
 pub struct Conductor {
     pub live: Live,
     pub feed: FeedServer,
-    pub orders: Sender<Order>,
+    pub outgoing: Outgoing,
     pub recorder: Recorder,
     /// Taken when the ports are stopped.
     pub links: Option<Links>,
@@ -37,7 +38,9 @@ pub struct Conductor {
     pub device_names: Vec<String>,
     pub dir: PathBuf,
     pub seal_patience: Duration,
-    pub unsent: VecDeque<Order>,
+    pub openings: FirstOpenings,
+    /// Start and stay although every port is in use elsewhere.
+    pub wait_for_ports: bool,
 }
 
 /// Everything that reaches the loop.
@@ -60,18 +63,33 @@ const BATCH: usize = 256;
 const LAST_ORDERS: Duration = Duration::from_secs(10);
 
 impl Conductor {
-    /// Runs until told to stop, then stops in the order in which data flow.
+    /// Runs until told to stop, or until one of the threads ended by itself, then stops in the order in which data
+    /// flow: what the threads that still run hold is on the disk before this returns.
     ///
     /// # Errors
     /// When a thread ended by itself, or the last records did not reach the disk.
     pub fn run(mut self, mut inputs: Inputs) -> Result<(), DaemonError> {
+        match self.conduct(&mut inputs) {
+            Ok(reason) => self.stop(&inputs, &reason),
+            Err(fault) => {
+                if let Err(more) = self.stop(&inputs, &fault.to_string()) {
+                    tracing::error!("while stopping: {more}");
+                }
+                Err(fault)
+            }
+        }
+    }
+
+    /// The loop; gives the reason to stop.
+    fn conduct(&mut self, inputs: &mut Inputs) -> Result<String, DaemonError> {
         let (mut snapshot_at, mut watch_at) = (Instant::now(), Instant::now());
+        let ended = |thread| Err(DaemonError::ThreadEnded { thread });
         loop {
             let wait = snapshot_at.saturating_duration_since(Instant::now());
             select! {
                 recv(inputs.live) -> item => match item {
-                    Ok(item) => self.take_all(item, &inputs.live),
-                    Err(_) => return Err(DaemonError::ThreadEnded { thread: "links" }),
+                    Ok(item) => self.take_all(item, &inputs.live)?,
+                    Err(_) => return ended("links"),
                 },
                 recv(inputs.requests) -> request => match request {
                     Ok(request) => self.answer(request),
@@ -79,14 +97,14 @@ impl Conductor {
                 },
                 recv(inputs.reports) -> report => match report {
                     Ok(report) => self.take_report(report),
-                    Err(_) => return Err(DaemonError::ThreadEnded { thread: "journal" }),
+                    Err(_) => return ended("journal"),
                 },
                 recv(inputs.sealed) -> report => match report {
                     Ok(report) => self.take_sealed(report),
-                    Err(_) => return Err(DaemonError::ThreadEnded { thread: "sealing" }),
+                    Err(_) => return ended("sealing"),
                 },
                 recv(inputs.shutdown) -> reason => {
-                    return self.stop(&inputs, &reason.unwrap_or_else(|_| "its owner is gone".to_owned()));
+                    return Ok(reason.unwrap_or_else(|_| "its owner is gone".to_owned()));
                 }
                 default(wait) => {}
             }
@@ -103,9 +121,22 @@ impl Conductor {
         }
     }
 
-    fn take_all(&mut self, first: FromLinks, live: &Receiver<FromLinks>) {
+    fn take_all(&mut self, first: FromLinks, live: &Receiver<FromLinks>) -> Result<(), DaemonError> {
+        let mut busy = self.all_ports_busy(&first);
         self.take(first);
-        live.try_iter().take(BATCH).for_each(|item| self.take(item));
+        for item in live.try_iter().take(BATCH) {
+            busy |= self.all_ports_busy(&item);
+            self.take(item);
+        }
+        if busy && !self.wait_for_ports {
+            Err(DaemonError::PortsBusy { n_ports: self.device_names.len() })
+        } else {
+            Ok(())
+        }
+    }
+
+    fn all_ports_busy(&mut self, item: &FromLinks) -> bool {
+        matches!(item, FromLinks::Event(event) if self.openings.all_are_busy(event.device, &event.what))
     }
 
     fn take(&mut self, item: FromLinks) {
@@ -151,21 +182,25 @@ impl Conductor {
                 self.open_trial(*host_ns, *preroll_from_host_ns, "tension rises", "");
             }
             Happening::CloseTrial { host_ns, reason } => self.close_trial(*host_ns, reason, ""),
-            other => self.tell(Event::of(other)),
+            other => drop(self.tell(Event::of(other))),
         }
     }
 
-    fn open_trial(&mut self, host_ns: i64, from_host_ns: i64, reason: &str, person: &str) {
+    /// False: no trial was opened, and the feed says why.
+    pub(super) fn open_trial(&mut self, host_ns: i64, from_host_ns: i64, reason: &str, person: &str) -> bool {
         let trial_id = match self.book.begin(host_ns) {
             Ok(trial_id) => trial_id,
-            Err(error) => return self.complain(&format!("cannot open a trial: {error}")),
+            Err(error) => {
+                self.complain(&format!("cannot open a trial: {error}"));
+                return false;
+            }
         };
         let continues = self.unfinished.take();
         let text = match &continues {
             Some(earlier) => format!("trial {trial_id} opens, goes on under the tension of {earlier}: {reason}"),
             None => format!("trial {trial_id} opens: {reason}"),
         };
-        self.unsent.push_back(Order::OpenTrial {
+        self.outgoing.push(Order::OpenTrial {
             host_ns,
             from_host_ns,
             trial_id,
@@ -174,13 +209,14 @@ impl Conductor {
             continues,
         });
         self.publish(&words::by(person, words::event(host_ns, "trial", "daemon", text)));
+        true
     }
 
-    fn close_trial(&mut self, host_ns: i64, reason: &str, person: &str) {
+    pub(super) fn close_trial(&mut self, host_ns: i64, reason: &str, person: &str) {
         let Some(trial_id) = self.book.close() else { return };
         let text = format!("trial {trial_id} closes: {reason}");
         let close = TrialClose { trial_id, reason: reason.to_owned(), person: person.to_owned() };
-        self.unsent.push_back(Order::CloseTrial { host_ns, close });
+        self.outgoing.push(Order::CloseTrial { host_ns, close });
         self.publish(&words::by(person, words::event(host_ns, "trial", "daemon", text)));
     }
 
@@ -203,59 +239,22 @@ impl Conductor {
     fn take_sealed(&mut self, report: SealReport) {
         if report.result.is_ok() {
             self.book.sealed(&report.trial_id);
-            self.unsent.push_back(Order::Pin { first_seq: self.book.pinned_from() });
+            self.outgoing.push(Order::Pin { first_seq: self.book.pinned_from() });
         }
         self.tell(words::sealed(self.clock.monotonic_ns(), &report));
     }
 
-    fn answer(&mut self, request: Request) {
-        let Request { command, replier } = request;
-        let now_ns = self.clock.monotonic_ns();
-        match command {
-            Command::Mark { person, text, .. } => {
-                self.tell(words::by(&person, words::event(now_ns, "mark", "feed", text)));
-                replier.answer(true, "marked");
-            }
-            Command::Open { person, .. } => self.open_by_hand(now_ns, &person, replier),
-            Command::Close { person, .. } => match self.live.close_by_hand(now_ns, &person) {
-                Ok(happening) => {
-                    if let Happening::CloseTrial { host_ns, reason } = happening {
-                        self.close_trial(host_ns, &reason, &person);
-                    }
-                    replier.answer(true, "the trial closes and is sealed");
-                }
-                Err(kept) => replier.answer(false, kept.to_string()),
-            },
-            Command::Acknowledge { person, .. } => {
-                let n = self.live.acknowledge(&person);
-                let text = format!("{n} alarms acknowledged");
-                self.tell(words::by(&person, words::event(now_ns, "alarm", "feed", text.clone())));
-                replier.answer(true, text);
-            }
-        }
-    }
-
-    fn open_by_hand(&mut self, now_ns: i64, person: &str, replier: Replier) {
-        if self.recorder.now().refusing {
-            return replier.answer(false, "no trial is opened: the disk takes no more; make room first");
-        }
-        match self.live.open_by_hand(now_ns) {
-            Some(Happening::OpenTrial { host_ns, preroll_from_host_ns }) => {
-                self.open_trial(host_ns, preroll_from_host_ns, "opened by hand", person);
-                replier.answer(true, "a trial is open");
-            }
-            _ => replier.answer(false, "a trial is open already"),
-        }
-    }
-
     /// Puts an event into the journal and on the feed.
-    pub(super) fn tell(&mut self, event: Event) {
+    ///
+    /// False: the journal takes nothing and so much waits that this event is on the feed only, and counted.
+    pub(super) fn tell(&mut self, event: Event) -> bool {
         let Event { host_ns, kind, source, person, text } = event.clone();
-        self.unsent.push_back(Order::Event { host_ns, event: EventBody { kind, source, person, text } });
+        let recorded = self.outgoing.push(Order::Event { host_ns, event: EventBody { kind, source, person, text } });
         self.publish(&event);
+        recorded
     }
 
-    fn complain(&mut self, sentence: &str) {
+    pub(super) fn complain(&mut self, sentence: &str) {
         self.tell(words::event(self.clock.monotonic_ns(), "alarm", "daemon", sentence.to_owned()));
     }
 
@@ -265,11 +264,10 @@ impl Conductor {
     }
 
     fn send_orders(&mut self) {
-        while let Some(order) = self.unsent.pop_front() {
-            if let Err(refused) = self.orders.try_send(order) {
-                self.unsent.push_front(refused.into_inner());
-                return;
-            }
+        if let Some(n_left_out) = self.outgoing.send() {
+            self.complain(&format!(
+                "{n_left_out} events and marks are not in the journal: it took nothing for too long and too many waited"
+            ));
         }
     }
 
@@ -304,18 +302,15 @@ impl Conductor {
     }
 
     /// Ports, then what they left in the queues, then the closing record and the last sync, then the sealing, then the
-    /// clients.
+    /// clients. Each step is done whatever became of the one before; the first thing that went wrong is told.
     fn stop(mut self, inputs: &Inputs, reason: &str) -> Result<(), DaemonError> {
         self.tell(words::event(self.clock.monotonic_ns(), "daemon", "daemon", format!("stops: {reason}")));
-        if let Some(links) = self.links.take() {
-            links.stop()?;
-        }
+        let links = self.links.take().map_or(Ok(()), Links::stop);
         inputs.live.iter().for_each(|item| self.take(item)); // ends: the links have let go of their end
         self.close_or_leave_open();
-        self.send_last_orders();
-        let Self { orders, recorder, sealer, feed, book, dir, seal_patience, mut on_event, .. } = self;
-        drop(orders);
-        let farewell = recorder.join()?;
+        let Self { outgoing, recorder, sealer, feed, book, dir, seal_patience, clock, mut on_event, .. } = self;
+        outgoing.send_last(Instant::now() + LAST_ORDERS);
+        let farewell = recorder.join();
         for report in inputs.reports.try_iter() {
             if let Report::TrialClosed { trial_id, durable: true } = report
                 && let Some(unsealed) = book.find_waiting(&trial_id)
@@ -324,13 +319,14 @@ impl Conductor {
             }
         }
         drop(sealer);
-        let now_ns = self.clock.monotonic_ns();
+        let now_ns = clock.monotonic_ns();
         words::tell_sealing_until(Instant::now() + seal_patience, &inputs.sealed, now_ns, &mut |event| {
             on_event(&event);
             feed.publish(&Message::Event(event));
         });
         feed.close(reason);
-        if farewell.durable { Ok(()) } else { Err(DaemonError::NotDurable { dir }) }
+        links?;
+        if farewell?.durable { Ok(()) } else { Err(DaemonError::NotDurable { dir }) }
     }
 
     /// A trial is closed at the end only where the cords are known to be slack.
@@ -347,15 +343,6 @@ impl Conductor {
         );
         self.tell(words::event(now_ns, "trial", "daemon", text));
     }
-
-    fn send_last_orders(&mut self) {
-        let deadline = Instant::now() + LAST_ORDERS;
-        for order in std::mem::take(&mut self.unsent) {
-            if self.orders.send_deadline(order, deadline).is_err() {
-                return; // the recorder hangs in the disk; its farewell says so
-            }
-        }
-    }
 }
 
 fn journal_now(now: &RecorderNow) -> JournalNow {
@@ -368,3 +355,6 @@ fn journal_now(now: &RecorderNow) -> JournalNow {
         trouble: words::trouble(now),
     }
 }
+
+#[cfg(test)]
+mod tests;

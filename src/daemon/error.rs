@@ -30,6 +30,11 @@ pub enum DaemonError {
     Machine { what: &'static str, source: io::Error },
     #[error("the {thread} thread ended by itself; this is a fault of the program, the journal holds what came before")]
     ThreadEnded { thread: &'static str },
+    #[error(
+        "none of the {n_ports} ports can be opened: all are in use by another program; close that one (another tautrail \
+         daemon?) or start with --wait-for-ports"
+    )]
+    PortsBusy { n_ports: usize },
     #[error("the last records could not be made durable on the disk in {dir}; the journal may miss its end")]
     NotDurable { dir: PathBuf },
 }

@@ -5,10 +5,13 @@
 //! tension stands or is unknown; what the ports gave is in the journal before the daemon ends; a start after a crash
 //! goes on with the trial or seals it. Refuses: to start where another daemon records.
 
+mod commands;
 mod conductor;
 mod error;
 mod found;
 mod machine;
+mod outgoing;
+mod ports;
 mod run;
 mod sealing;
 mod trials;

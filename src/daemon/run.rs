@@ -1,6 +1,5 @@
 //! Starts everything in order, and hands over to the conductor.
 
-use std::collections::VecDeque;
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 use std::time::Duration;
@@ -22,6 +21,8 @@ use super::conductor::{Conductor, Inputs};
 use super::error::DaemonError;
 use super::found::{self, Found, Present, Resumed};
 use super::machine::{identifier, kernel_boot_id, random_part};
+use super::outgoing::Outgoing;
+use super::ports::FirstOpenings;
 use super::sealing::{SealCommand, Sealer};
 use super::trials::TrialBook;
 use super::words;
@@ -85,7 +86,7 @@ pub fn run(
     let ends = Ends { links: journal_end, orders: orders_end, reports: reports_in };
     let recorder =
         Recorder::spawn(journal, Arc::clone(&disk), ends, Arc::clone(&clock), Clocks::read).map_err(machine)?;
-    let seal_command = SealCommand { program: options.program.clone(), archive_dir: options.dir.clone() };
+    let seal_command = SealCommand::new(options.program.clone(), options.dir.clone());
     let (sealer, sealed) = Sealer::spawn(seal_command).map_err(machine)?;
     let sinks = Sinks { journal: to_journal, live: to_live };
     let seed = random_part().map_err(|source| DaemonError::Machine { what: "random numbers", source })?;
@@ -96,7 +97,7 @@ pub fn run(
     let mut conductor = Conductor {
         live: Live::new(rig),
         feed,
-        orders,
+        outgoing: Outgoing::new(orders),
         recorder,
         links: Some(links),
         sealer,
@@ -107,7 +108,8 @@ pub fn run(
         device_names: rig.devices.iter().map(|device| device.name.clone()).collect(),
         dir: options.dir.clone(),
         seal_patience: options.seal_patience,
-        unsent: VecDeque::new(),
+        openings: FirstOpenings::of(rig),
+        wait_for_ports: options.wait_for_ports,
     };
     conductor.say_hello(&found, &options.socket, &journal_id);
     conductor.run(Inputs { live, requests, reports, sealed, shutdown })
@@ -194,7 +196,7 @@ impl Conductor {
             let text = format!("trial {} has no file yet and is sealed now", unsealed.trial_id);
             self.tell(words::event(now_ns, "seal", "daemon", text));
         }
-        self.unsent.push_back(Order::Pin { first_seq: self.book.pinned_from() });
+        self.outgoing.push(Order::Pin { first_seq: self.book.pinned_from() });
         let text = format!("recording to journal {journal_id}, feed at {}", socket.display());
         self.tell(words::event(now_ns, "daemon", "daemon", text));
     }
@@ -205,8 +207,7 @@ impl Conductor {
             Some(trial) => {
                 self.live.resume_trial();
                 self.book.resume(trial.trial_id.clone(), trial.first_seq, trial.opened_host_ns);
-                self.unsent
-                    .push_back(Order::ResumeTrial { trial_id: trial.trial_id.clone(), first_seq: trial.first_seq });
+                self.outgoing.push(Order::ResumeTrial { trial_id: trial.trial_id.clone(), first_seq: trial.first_seq });
                 format!("trial {} was under way and goes on; nothing was recorded for {away_s:.3} s", trial.trial_id)
             }
             None => format!("the journal goes on; nothing was recorded for {away_s:.3} s"),

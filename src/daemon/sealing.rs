@@ -33,10 +33,18 @@ pub struct Sealer {
 pub struct SealCommand {
     pub program: PathBuf,
     pub archive_dir: PathBuf,
+    /// What failed is tried again after this long, then after ever twice as long.
+    pub retry_first: Duration,
 }
 
 const RETRY_FIRST: Duration = Duration::from_secs(30);
 const RETRY_LAST: Duration = Duration::from_secs(600);
+
+impl SealCommand {
+    pub fn new(program: PathBuf, archive_dir: PathBuf) -> Self {
+        Self { program, archive_dir, retry_first: RETRY_FIRST }
+    }
+}
 
 impl Sealer {
     pub fn spawn(command: SealCommand) -> io::Result<(Self, Receiver<SealReport>)> {
@@ -56,7 +64,7 @@ impl Sealer {
 fn work(command: &SealCommand, tasks: &Receiver<Unsealed>, reports: &Sender<SealReport>) {
     let mut retries: VecDeque<(Instant, Duration, Unsealed)> = VecDeque::new();
     loop {
-        let (task, pause) = match next(tasks, &mut retries) {
+        let (task, pause) = match next(tasks, &mut retries, command.retry_first) {
             Next::Task(task, pause) => (task, pause),
             Next::Nothing => continue,
             Next::End => return, // what failed is left to the next start
@@ -77,9 +85,13 @@ enum Next {
     End,
 }
 
-fn next(tasks: &Receiver<Unsealed>, retries: &mut VecDeque<(Instant, Duration, Unsealed)>) -> Next {
+fn next(
+    tasks: &Receiver<Unsealed>,
+    retries: &mut VecDeque<(Instant, Duration, Unsealed)>,
+    retry_first: Duration,
+) -> Next {
     match tasks.recv_timeout(Duration::from_millis(200)) {
-        Ok(task) => Next::Task(task, RETRY_FIRST),
+        Ok(task) => Next::Task(task, retry_first),
         Err(RecvTimeoutError::Disconnected) => Next::End,
         Err(RecvTimeoutError::Timeout) => match retries.pop_front_if(|(at, _, _)| *at <= Instant::now()) {
             Some((_, pause, task)) => Next::Task(task, pause),
@@ -124,4 +136,48 @@ fn text_of(pipe: Option<impl Read>) -> String {
         let _ = pipe.take(MOST).read_to_end(&mut text);
     }
     String::from_utf8_lossy(&text).trim().to_owned()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use std::os::unix::fs::PermissionsExt;
+
+    /// A program that does `first` when run for the first time, then says that it sealed.
+    fn program(dir: &Path, first: &str) -> PathBuf {
+        let (path, mark) = (dir.join("program"), dir.join("was-run"));
+        let mark = mark.display();
+        std::fs::write(
+            &path,
+            format!("#!/bin/sh\nif [ ! -e {mark} ]; then touch {mark}; {first}; fi\necho sealed $4\n"),
+        )
+        .unwrap();
+        std::fs::set_permissions(&path, std::fs::Permissions::from_mode(0o755)).unwrap();
+        path
+    }
+
+    fn attempts(first: &str) -> Vec<Result<String, String>> {
+        let dir = tempfile::tempdir().unwrap();
+        let program = program(dir.path(), first);
+        let command =
+            SealCommand { retry_first: Duration::from_millis(1), ..SealCommand::new(program, "trials".into()) };
+        let (sealer, reports) = Sealer::spawn(command).unwrap();
+        let trial_id = "000001-7f3a9c".to_owned();
+        sealer.seal(Unsealed { journal_id: "000001-abc123".to_owned(), trial_id, first_seq: 1 });
+        (0..2).map(|_| reports.recv_timeout(Duration::from_secs(30)).unwrap().result).collect()
+    }
+
+    #[test]
+    fn a_child_that_fails_is_reported_with_its_sentence_and_tried_again() {
+        let [failed, sealed] = &attempts("echo 'no room here' >&2; exit 2")[..] else { panic!("two attempts") };
+        assert_eq!(failed.as_ref().unwrap_err(), "no room here");
+        assert_eq!(sealed.as_ref().unwrap(), "sealed 000001-7f3a9c");
+    }
+
+    #[test]
+    fn a_child_that_is_killed_is_reported_with_its_signal_and_tried_again() {
+        let [failed, sealed] = &attempts("kill -9 $$")[..] else { panic!("two attempts") };
+        assert!(failed.as_ref().unwrap_err().contains("signal: 9"), "{failed:?}");
+        assert!(sealed.is_ok(), "{sealed:?}");
+    }
 }

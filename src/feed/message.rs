@@ -66,10 +66,26 @@ pub struct Event {
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 #[serde(tag = "type", rename_all = "snake_case", deny_unknown_fields)]
 pub enum Command {
-    Mark { id: u64, person: String, text: String },
-    Open { id: u64, person: String },
-    Close { id: u64, person: String },
-    Acknowledge { id: u64, person: String },
+    Mark {
+        id: u64,
+        person: String,
+        text: String,
+    },
+    /// `back_s`: how far the trial reaches back, if not as far as one that opens by itself.
+    Open {
+        id: u64,
+        person: String,
+        #[serde(default, skip_serializing_if = "Option::is_none")]
+        back_s: Option<f64>,
+    },
+    Close {
+        id: u64,
+        person: String,
+    },
+    Acknowledge {
+        id: u64,
+        person: String,
+    },
 }
 
 impl Command {

@@ -148,7 +148,7 @@ fn commands_beyond_the_bound_are_refused_not_queued() {
     let (_server, requests) = FeedServer::start(&place.path, hello()).unwrap();
     let mut client = FeedClient::connect(&place.path).unwrap();
     for id in 0..80 {
-        client.send(&Command::Open { id, person: "winch".into() }).unwrap();
+        client.send(&Command::Open { id, person: "winch".into(), back_s: None }).unwrap();
     }
     for id in 64..80 {
         match client.next(SOON).unwrap() {

@@ -84,9 +84,24 @@ impl Stage {
     }
 
     pub fn daemon_command(&self) -> Command {
+        self.daemon_command_in("trials")
+    }
+
+    pub fn daemon_command_in(&self, archive: &str) -> Command {
         let mut command = Command::new(env!("CARGO_BIN_EXE_tautrail"));
-        command.arg("--json").arg("daemon").arg(self.path("rig.toml")).arg("--dir").arg(self.path("trials"));
+        command.arg("--json").arg("daemon").arg(self.path("rig.toml")).arg("--dir").arg(self.path(archive));
         command
+    }
+
+    /// A command to the running daemon, through its feed.
+    pub fn ask(&self, args: &[&str]) -> Output {
+        let archive = self.path("trials");
+        Command::new(env!("CARGO_BIN_EXE_tautrail"))
+            .args(args)
+            .arg("--dir")
+            .arg(archive)
+            .output()
+            .expect("tautrail runs")
     }
 
     pub fn start_daemon(&self) -> Daemon {

@@ -1,0 +1,69 @@
+//! What people ask of the daemon through the feed, and what they are answered.
+
+use crate::feed::message::Command;
+use crate::feed::{Replier, Request};
+use crate::live::Happening;
+
+use super::conductor::Conductor;
+use super::words;
+
+/// The journal knows its records' times this far back.
+const BACK_S_MAX: f64 = 60.0;
+
+impl Conductor {
+    pub(super) fn answer(&mut self, request: Request) {
+        let Request { command, replier } = request;
+        let now_ns = self.clock.monotonic_ns();
+        match command {
+            Command::Mark { person, text, .. } => {
+                if self.tell(words::by(&person, words::event(now_ns, "mark", "feed", text))) {
+                    replier.answer(true, "marked");
+                } else {
+                    replier.answer(false, "not in the journal: it takes nothing at present and too much waits already");
+                }
+            }
+            Command::Open { person, back_s, .. } => self.open_by_hand(now_ns, &person, back_s, replier),
+            Command::Close { person, .. } => self.close_by_hand(now_ns, &person, replier),
+            Command::Acknowledge { person, .. } => {
+                let n = self.live.acknowledge(&person);
+                let text = format!("{n} alarms acknowledged");
+                self.tell(words::by(&person, words::event(now_ns, "alarm", "feed", text.clone())));
+                replier.answer(true, text);
+            }
+        }
+    }
+
+    fn open_by_hand(&mut self, now_ns: i64, person: &str, back_s: Option<f64>, replier: Replier) {
+        if back_s.is_some_and(|back_s| !(0.0..=BACK_S_MAX).contains(&back_s)) {
+            return replier.answer(false, format!("a trial can reach back 0 to {BACK_S_MAX:.0} s, no further"));
+        }
+        if self.recorder.now().refusing || self.outgoing.is_full() {
+            return replier.answer(false, "no trial is opened: the disk takes no more; make room first");
+        }
+        let Some(Happening::OpenTrial { host_ns, preroll_from_host_ns }) = self.live.open_by_hand(now_ns) else {
+            return replier.answer(false, "a trial is open already");
+        };
+        let asked_ns = back_s.map_or(preroll_from_host_ns, |back_s| now_ns - (back_s * 1e9) as i64);
+        if self.open_trial(host_ns, asked_ns, "opened by hand", person) {
+            let reaches_s = (host_ns - asked_ns) as f64 * 1e-9;
+            let id = self.book.open().map(|open| open.trial_id.clone()).unwrap_or_default();
+            replier
+                .answer(true, format!("trial {id} is open and reaches back {reaches_s:.1} s, as far as was recorded"));
+        } else {
+            replier.answer(false, "no trial is opened: the machine gave no identifier; see the daemon's events");
+        }
+    }
+
+    fn close_by_hand(&mut self, now_ns: i64, person: &str, replier: Replier) {
+        let id = self.book.open().map(|open| open.trial_id.clone()).unwrap_or_default();
+        match self.live.close_by_hand(now_ns, person) {
+            Ok(happening) => {
+                if let Happening::CloseTrial { host_ns, reason } = happening {
+                    self.close_trial(host_ns, &reason, person);
+                }
+                replier.answer(true, format!("trial {id} closes and is sealed"));
+            }
+            Err(kept) => replier.answer(false, kept.to_string()),
+        }
+    }
+}

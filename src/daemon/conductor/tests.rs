@@ -1,0 +1,106 @@
+use super::*;
+use crate::feed::message::Hello;
+use crate::journal::{Ends, Journal, JournalReader, Origin, Settings, StagedDisk, Start};
+use crate::link::{DeviceIdx, SystemClock};
+use bytes::Bytes;
+use crossbeam_channel::{Sender, bounded};
+use std::path::Path;
+
+use super::super::sealing::SealCommand;
+
+const RIG: &str = include_str!("../../../tools/rehearsal/north-pier.toml");
+
+/// A conductor whose journal is on a staged disk and whose ports are this test.
+struct Pit {
+    _dir: tempfile::TempDir,
+    disk: StagedDisk,
+    conductor: Conductor,
+    inputs: Inputs,
+    journal: Sender<FromLinks>,
+    live: Sender<FromLinks>,
+    shutdown: Sender<String>,
+}
+
+fn pit() -> Pit {
+    let dir = tempfile::tempdir().unwrap();
+    let rig = crate::rig::parse(RIG).unwrap();
+    let disk = StagedDisk::default();
+    let clock: Arc<dyn HostClock> = Arc::new(SystemClock);
+    let origin = Origin {
+        journal_id: "000001-abc123".to_owned(),
+        program_version: "0".to_owned(),
+        kernel_boot_id: "boot".to_owned(),
+        rig_text: RIG.to_owned(),
+        devices: Vec::new(),
+    };
+    let now_ns = clock.monotonic_ns();
+    let on_disk = Arc::new(disk.clone());
+    let journal =
+        Journal::begin(on_disk.clone(), Path::new("j"), origin, Start::fresh(), Settings::default(), now_ns).unwrap();
+    let ((to_journal, links), (orders, orders_end), (reports_in, reports)) = (bounded(999), bounded(99), bounded(99));
+    let ends = Ends { links, orders: orders_end, reports: reports_in };
+    let recorder = Recorder::spawn(journal, on_disk, ends, Arc::clone(&clock), Clocks::read).unwrap();
+    let seal = SealCommand::new(PathBuf::from("/bin/false"), dir.path().to_owned());
+    let (sealer, sealed) = Sealer::spawn(seal).unwrap();
+    let (feed, requests) = FeedServer::start(&dir.path().join("feed.sock"), Hello::of(&rig)).unwrap();
+    let ((to_live, live), (shutdown, told)) = (bounded(999), bounded(1));
+    let conductor = Conductor {
+        live: Live::new(&rig),
+        feed,
+        outgoing: Outgoing::new(orders),
+        recorder,
+        links: None,
+        sealer,
+        book: TrialBook::new("000001-abc123".to_owned(), 1, Vec::new()),
+        clock,
+        on_event: Box::new(|_| {}),
+        unfinished: None,
+        device_names: rig.devices.iter().map(|device| device.name.clone()).collect(),
+        dir: dir.path().to_owned(),
+        seal_patience: Duration::from_secs(5),
+        openings: FirstOpenings::of(&rig),
+        wait_for_ports: false,
+    };
+    let inputs = Inputs { live, requests, reports, sealed, shutdown: told };
+    Pit { _dir: dir, disk, conductor, inputs, journal: to_journal, live: to_live, shutdown }
+}
+
+fn bytes(i: u32) -> FromLinks {
+    let what = LinkWhat::Bytes(Bytes::copy_from_slice(&i.to_le_bytes()));
+    FromLinks::Event(LinkEvent { host_ns: SystemClock.monotonic_ns(), device: DeviceIdx(0), what })
+}
+
+/// Reads of a device that the journal holds after a power cut which spared nothing unsynced.
+fn reads_on_disk(disk: &StagedDisk) -> usize {
+    let after = Arc::new(disk.after_power_cut(&mut || 1));
+    let reader = JournalReader::open(after, Path::new("j"), "000001-abc123").unwrap();
+    let is_read = |item: &crate::journal::Item| {
+        matches!(item, crate::journal::Item::Record(record)
+            if matches!(record.body, crate::journal::Body::Link(LinkWhat::Bytes(_))))
+    };
+    reader.records().filter(|item| item.as_ref().is_ok_and(is_read)).count()
+}
+
+#[test]
+fn when_the_links_thread_dies_what_it_gave_is_durable_before_the_daemon_ends() {
+    let Pit { _dir, disk, conductor, inputs, journal, live, shutdown } = pit();
+    (0..500).for_each(|i| journal.send(bytes(i)).unwrap());
+    drop((journal, live)); // as when their thread panics
+    let error = conductor.run(inputs).unwrap_err();
+    assert!(matches!(error, DaemonError::ThreadEnded { thread: "links" }), "{error}");
+    assert_eq!(reads_on_disk(&disk), 500);
+    drop(shutdown);
+}
+
+#[test]
+fn when_the_sealing_thread_dies_the_recorder_is_still_stopped_in_order() {
+    let Pit { _dir, disk, conductor, mut inputs, journal, live, shutdown } = pit();
+    (0..500).for_each(|i| journal.send(bytes(i)).unwrap());
+    inputs.sealed = bounded(1).1; // its other end is gone
+    // The ports' thread lets go of its queues when it is told to stop; this test is nobody's to tell, and has done so.
+    drop((journal, live));
+    let error = conductor.run(inputs).unwrap_err();
+    assert!(matches!(error, DaemonError::ThreadEnded { .. }), "{error}");
+    assert_eq!(reads_on_disk(&disk), 500);
+    drop(shutdown);
+}
