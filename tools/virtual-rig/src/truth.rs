@@ -180,6 +180,8 @@ pub struct StreamTruth {
     pub blocks: Vec<(u32, u64, u16, u32)>,
     /// Places in `blocks` of those whose bytes the line changed.
     pub touched: Vec<u32>,
+    /// Host time when the port took the last byte of each of `blocks`; empty in virtual time.
+    pub taken_host_ns: Vec<i64>,
 }
 
 /// A digital input's true change.
@@ -204,6 +206,8 @@ pub struct Played<'a> {
     pub device: &'a Device,
     pub blocks: &'a [BlockTruth],
     pub touched: &'a [u32],
+    /// One for each block; none in virtual time, where ports never wait.
+    pub taken_ns: &'a [i64],
 }
 
 impl Truth {
@@ -417,6 +421,7 @@ fn device(played: &Played<'_>) -> DeviceTruth {
             stream: BLOCK_STREAM,
             blocks: played.blocks.iter().map(row).collect(),
             touched: played.touched.to_vec(),
+            taken_host_ns: played.taken_ns.to_vec(),
         }],
     }
 }

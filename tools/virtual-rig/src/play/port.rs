@@ -81,6 +81,7 @@ pub struct Port {
     marks: VecDeque<Mark>,
     blocks: Vec<BlockTruth>,
     touched: Vec<u32>,
+    taken_ns: Vec<i64>,
     ever_started: bool,
 }
 
@@ -106,12 +107,13 @@ impl Port {
             marks: VecDeque::new(),
             blocks: Vec::new(),
             touched: Vec::new(),
+            taken_ns: Vec::new(),
             ever_started: false,
         })
     }
 
     pub fn played(&self) -> Played<'_> {
-        Played { device: &self.device, blocks: &self.blocks, touched: &self.touched }
+        Played { device: &self.device, blocks: &self.blocks, touched: &self.touched, taken_ns: &self.taken_ns }
     }
 
     pub fn ever_started(&self) -> bool {
@@ -239,6 +241,7 @@ impl Port {
         while let Some(mark) = self.marks.pop_front_if(|mark| mark.end <= n_taken) {
             self.touched.extend(mark.touched.then_some(self.blocks.len() as u32));
             self.blocks.push(mark.block);
+            self.taken_ns.push(monotonic_ns());
         }
         if self.out.is_empty() {
             self.packet_due_ns = None;

@@ -175,7 +175,7 @@ impl Hand {
     }
 
     fn played(&self) -> Played<'_> {
-        Played { device: &self.device, blocks: &self.blocks, touched: &self.touched }
+        Played { device: &self.device, blocks: &self.blocks, touched: &self.touched, taken_ns: &[] }
     }
 
     fn transport_ns(&mut self) -> i64 {
