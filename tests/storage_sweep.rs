@@ -24,9 +24,9 @@ const ID: &str = "000001-abc123";
 const TRIAL: &str = "000001-fedcba";
 const NEVER_BEGUN: &str = "000000-000000-000001.tjl";
 const MS: i64 = 1_000_000;
-const N_READS: u64 = 240;
-const OPENED_AT: u64 = 60;
-const CLOSED_AT: u64 = 200;
+const N_READS: u64 = 130;
+const OPENED_AT: u64 = 40;
+const CLOSED_AT: u64 = 110;
 const EIO: i32 = 5;
 const ENOSPC: i32 = 28;
 
@@ -108,7 +108,7 @@ fn record(disk: StagedDisk, clock_ns: &AtomicI64, n_reads: u64) -> Option<Run> {
         }
         journal.release();
         journal.commit(now());
-        if let Some(job) = journal.next_job(now()) {
+        while let Some(job) = journal.next_job(now()) {
             let outcome = job.run(&disk);
             journal.job_done(outcome, now());
         }

@@ -7,6 +7,7 @@
 use std::fmt::Debug;
 use std::fs::{self, File, OpenOptions};
 use std::io::{self, Read, Write};
+use std::os::unix::fs::MetadataExt;
 use std::path::Path;
 use std::sync::Arc;
 use std::sync::atomic::{AtomicU64, Ordering};
@@ -19,6 +20,8 @@ pub struct Listed {
     pub name: String,
     /// Length of the file as readers see it; reserved but unwritten bytes are not counted.
     pub bytes: u64,
+    /// What it takes of the disk, with what is reserved: a killed writer leaves that behind.
+    pub held_bytes: u64,
 }
 
 /// A file system, reduced to what an append-only record needs.
@@ -51,6 +54,9 @@ pub trait AppendFile: Send + Sync + Debug {
     fn trim(&self) -> io::Result<()>;
 }
 
+/// What `stat(2)` counts blocks in, whatever the file system's own.
+const STAT_BLOCK_BYTES: u64 = 512;
+
 /// The machine's own disk.
 #[derive(Debug, Clone, Copy, Default)]
 pub struct RealDisk;
@@ -81,7 +87,9 @@ impl Disk for RealDisk {
             let entry = entry?;
             let about = entry.metadata()?;
             if about.is_file() {
-                listed.push(Listed { name: entry.file_name().to_string_lossy().into_owned(), bytes: about.len() });
+                let name = entry.file_name().to_string_lossy().into_owned();
+                let held_bytes = about.len().max(about.blocks().saturating_mul(STAT_BLOCK_BYTES));
+                listed.push(Listed { name, bytes: about.len(), held_bytes });
             }
         }
         listed.sort();
@@ -138,8 +146,11 @@ mod tests {
         file.reserve(1 << 20).unwrap();
         assert_eq!(file.append(b"abc").unwrap(), 3);
         file.sync().unwrap();
-        assert_eq!(RealDisk.list(dir.path()).unwrap(), [Listed { name: "a".into(), bytes: 3 }]);
+        let listed = || RealDisk.list(dir.path()).unwrap().remove(0);
+        assert_eq!((listed().name.as_str(), listed().bytes), ("a", 3));
+        assert!(listed().held_bytes >= 1 << 20, "the reserve is on the disk: {:?}", listed());
         file.trim().unwrap();
+        assert!(listed().held_bytes < 1 << 17, "and given back: {:?}", listed());
         assert_eq!(fs::read(&path).unwrap(), b"abc");
     }
 

@@ -10,7 +10,7 @@ const LATELY_NS: i64 = 10_000_000_000;
 /// Measured, not promised.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Health {
-    /// All segments of this journal and those kept of earlier ones.
+    /// All segments of this journal and those kept of earlier ones, with what killed writers left reserved.
     pub own_bytes: u64,
     /// Events of links that were lost since the start.
     pub lost_events: u64,
@@ -23,14 +23,17 @@ pub struct Health {
     pub trouble: Option<String>,
     /// Longest time from a record's writing to the end of its sync, since the start.
     pub exposure_ns_max: i64,
+    /// How long the oldest record has waited that is not on the disk now: grows while a sync hangs.
+    pub exposure_ns_now: i64,
     /// (when, how long), of the last seconds.
     exposures: VecDeque<(i64, i64)>,
 }
 
 impl Health {
-    /// The same, over the last ten seconds.
+    /// The same, over the last ten seconds, with what is waiting now.
     pub fn exposure_ns_lately(&self) -> i64 {
-        self.exposures.iter().map(|&(_, exposure_ns)| exposure_ns).max().unwrap_or(0)
+        let ended = self.exposures.iter().map(|&(_, exposure_ns)| exposure_ns).max();
+        ended.unwrap_or(0).max(self.exposure_ns_now)
     }
 
     pub(super) fn exposed_for(&mut self, exposure_ns: i64, now_ns: i64) {

@@ -1,4 +1,5 @@
-//! What is done on the disk beside the thread that appends: syncs, next segments, removals.
+//! What is done on the disk beside the thread that appends: syncs on one thread, chores (next segments, removals) on
+//! another, so that a slow removal never holds up a sync.
 
 use std::io;
 use std::path::PathBuf;
@@ -10,7 +11,9 @@ use super::disk::{AppendFile, Disk};
 #[derive(Debug)]
 pub enum Job {
     /// Make what was appended to a segment durable, its name first where that is new.
-    Sync { file: Arc<dyn AppendFile>, new_in: Option<PathBuf>, n_bytes: usize, trim: bool },
+    Sync { file: Arc<dyn AppendFile>, new_in: Option<PathBuf>, n_bytes: usize },
+    /// Give back what a finished segment reserved and did not use.
+    Trim { file: Arc<dyn AppendFile> },
     /// Make the next segment ahead, with room reserved.
     Prepare { number: u32, path: PathBuf, reserve_bytes: u64 },
     /// Remove segments that nothing needs any more.
@@ -28,6 +31,7 @@ pub enum Outcome {
     SyncFailed {
         error: io::Error,
     },
+    Trimmed,
     Prepared {
         number: u32,
         path: PathBuf,
@@ -56,19 +60,24 @@ pub enum Reserved {
 }
 
 impl Job {
+    /// It makes data durable: never to wait behind anything else.
+    pub fn is_sync(&self) -> bool {
+        matches!(self, Self::Sync { .. })
+    }
+
     /// Does the work; blocks as long as the disk takes.
     pub fn run(self, disk: &dyn Disk) -> Outcome {
         match self {
-            Self::Sync { file, new_in, n_bytes, trim } => {
-                let synced = new_in.map_or(Ok(()), |dir| disk.sync_dir(&dir)).and_then(|()| file.sync());
-                if trim {
-                    // Only gives back room; the next start does not need it.
-                    let _ = file.trim();
-                }
-                match synced {
+            Self::Sync { file, new_in, n_bytes } => {
+                match new_in.map_or(Ok(()), |dir| disk.sync_dir(&dir)).and_then(|()| file.sync()) {
                     Ok(()) => Outcome::Synced { n_bytes },
                     Err(error) => Outcome::SyncFailed { error },
                 }
+            }
+            Self::Trim { file } => {
+                // Only gives back room: what stays reserved is counted against the budget.
+                let _ = file.trim();
+                Outcome::Trimmed
             }
             Self::Prepare { number, path, reserve_bytes } => match make(disk, &path, reserve_bytes) {
                 Ok((file, reserved)) => Outcome::Prepared { number, path, file, reserved },

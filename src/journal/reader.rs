@@ -13,7 +13,7 @@ use crate::link::LinkWhat;
 
 use super::body::{Body, FORMAT_VERSION, Record, SegmentOpen, TrialClose, TrialOpen};
 use super::describes::DescribeKeeper;
-use super::disk::Disk;
+use super::disk::{Disk, Listed};
 use super::frame;
 
 /// Records of lead-in wanted before a range, so that a frame cut by a segment's start is whole in the range.
@@ -36,6 +36,8 @@ pub struct SegmentInfo {
     pub number: u32,
     pub path: PathBuf,
     pub bytes: u64,
+    /// With what its writer reserved and did not give back.
+    pub held_bytes: u64,
     pub opened_host_ns: i64,
     pub open: SegmentOpen,
 }
@@ -138,7 +140,8 @@ impl JournalReader {
             let mut source = disk.open(&path).map_err(at(&path))?;
             match open_record(&mut source).map_err(at(&path))? {
                 Ok(Opened { host_ns, open, .. }) if open.format_version <= FORMAT_VERSION => {
-                    segments.push(SegmentInfo { number, path, bytes: file.bytes, opened_host_ns: host_ns, open });
+                    let Listed { bytes, held_bytes, .. } = file;
+                    segments.push(SegmentInfo { number, path, bytes, held_bytes, opened_host_ns: host_ns, open });
                 }
                 Ok(Opened { open, .. }) => return Err(ReadError::LaterFormat { path, found: open.format_version }),
                 Err(reason) => unopenable.push(Damage::Unopenable { path, reason }),

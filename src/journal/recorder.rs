@@ -1,4 +1,4 @@
-//! The recorder: the thread that appends, and the thread beside it that syncs.
+//! The recorder: the thread that appends, the thread beside it that syncs, and one for the disk's chores.
 //!
 //! Everything that waits is appended and handed to the kernel at once; the slow work of the disk is done beside it, so a
 //! slow sync never holds up an append. Ends when the links' queue and the orders are both closed and drained, after
@@ -88,7 +88,7 @@ pub struct Farewell {
 pub struct Recorder {
     now: Arc<Mutex<RecorderNow>>,
     appending: JoinHandle<Farewell>,
-    beside: JoinHandle<()>,
+    beside: [JoinHandle<()>; 2],
 }
 
 /// A thread of the recorder panicked.
@@ -114,7 +114,7 @@ const SHOW_EVERY_NS: i64 = 100_000_000;
 const LAST_SYNC_NS: i64 = 10_000_000_000;
 
 impl Recorder {
-    /// Starts both threads. `read_clocks` is called once a second.
+    /// Starts the threads. `read_clocks` is called once a second.
     pub fn spawn(
         journal: Journal,
         disk: Arc<dyn Disk>,
@@ -122,22 +122,17 @@ impl Recorder {
         clock: Arc<dyn HostClock>,
         read_clocks: fn() -> Clocks,
     ) -> io::Result<Self> {
-        let (jobs, jobs_end) = bounded::<Job>(1);
-        let (outcomes, outcomes_end) = bounded::<Outcome>(1);
-        let beside = std::thread::Builder::new().name("journal-sync".to_owned()).spawn(move || {
-            for job in jobs_end {
-                if outcomes.send(job.run(&*disk)).is_err() {
-                    return; // the appending thread is gone
-                }
-            }
-        })?;
+        let (outcomes, outcomes_end) = bounded::<Outcome>(2);
+        let (syncs, sync_thread) = beside("journal-sync", Arc::clone(&disk), outcomes.clone())?;
+        let (chores, chore_thread) = beside("journal-chores", disk, outcomes)?;
         let now = Arc::new(Mutex::new(RecorderNow::default()));
         let appender = Appender {
             journal,
             clock,
             read_clocks,
             reports: ends.reports,
-            jobs,
+            syncs,
+            chores,
             outcomes: outcomes_end,
             shown: Arc::clone(&now),
             queue_high_water: 0.0,
@@ -148,7 +143,7 @@ impl Recorder {
         let (links, orders) = (ends.links, ends.orders);
         let appending =
             std::thread::Builder::new().name("journal".to_owned()).spawn(move || appender.run(links, orders))?;
-        Ok(Self { now, appending, beside })
+        Ok(Self { now, appending, beside: [sync_thread, chore_thread] })
     }
 
     pub fn now(&self) -> RecorderNow {
@@ -156,7 +151,7 @@ impl Recorder {
     }
 
     pub fn is_running(&self) -> bool {
-        !self.appending.is_finished() && !self.beside.is_finished()
+        !self.appending.is_finished() && !self.beside.iter().any(JoinHandle::is_finished)
     }
 
     /// Waits for the end, which comes after the queues were closed.
@@ -166,10 +161,25 @@ impl Recorder {
     pub fn join(self) -> Result<Farewell, RecorderPanicked> {
         let farewell = self.appending.join().map_err(|_| RecorderPanicked)?;
         if farewell.durable {
-            self.beside.join().map_err(|_| RecorderPanicked)?;
+            for thread in self.beside {
+                thread.join().map_err(|_| RecorderPanicked)?;
+            }
         } // else it hangs in the disk: the process ends without it
         Ok(farewell)
     }
+}
+
+/// A thread that does one job after the other.
+fn beside(name: &str, disk: Arc<dyn Disk>, outcomes: Sender<Outcome>) -> io::Result<(Sender<Job>, JoinHandle<()>)> {
+    let (jobs, jobs_end) = bounded::<Job>(1);
+    let thread = std::thread::Builder::new().name(name.to_owned()).spawn(move || {
+        for job in jobs_end {
+            if outcomes.send(job.run(&*disk)).is_err() {
+                return; // the appending thread is gone
+            }
+        }
+    })?;
+    Ok((jobs, thread))
 }
 
 struct Appender {
@@ -177,7 +187,8 @@ struct Appender {
     clock: Arc<dyn HostClock>,
     read_clocks: fn() -> Clocks,
     reports: Sender<Report>,
-    jobs: Sender<Job>,
+    syncs: Sender<Job>,
+    chores: Sender<Job>,
     outcomes: Receiver<Outcome>,
     shown: Arc<Mutex<RecorderNow>>,
     queue_high_water: f64,
@@ -263,9 +274,10 @@ impl Appender {
             self.journal.release();
         }
         self.journal.commit(now_ns);
-        if let Some(job) = self.journal.next_job(now_ns) {
-            // One job at a time fits; without the thread beside, syncing is over and `finish` says so.
-            let _ = self.jobs.try_send(job);
+        while let Some(job) = self.journal.next_job(now_ns) {
+            let beside = if job.is_sync() { &self.syncs } else { &self.chores };
+            // One job of each kind is under way at most, so it fits; without its thread `is_running` says so.
+            let _ = beside.try_send(job);
         }
         for sentence in self.journal.take_notices() {
             let event = EventBody {
@@ -326,7 +338,11 @@ impl Appender {
         }
         let now_ns = self.clock.monotonic_ns();
         self.show(now_ns);
-        Farewell { durable, health: self.journal.health(now_ns) }
+        let health = self.journal.health(now_ns);
+        if durable {
+            self.journal.end();
+        }
+        Farewell { durable, health }
     }
 }
 

@@ -262,6 +262,7 @@ impl Disk for StagedDisk {
             .map(|(path, &inode)| Listed {
                 name: path.file_name().unwrap_or_default().to_string_lossy().into_owned(),
                 bytes: state.inodes[inode].data.len() as u64,
+                held_bytes: state.inodes[inode].n_held(),
             })
             .collect())
     }

@@ -33,7 +33,7 @@ pub struct Settings {
     pub segment_ns: i64,
     /// Kept free in every segment for closing records and events.
     pub reserve_bytes: u64,
-    /// Between two syncs while data flow.
+    /// A sync is begun when the oldest record that needs one is this old.
     pub sync_every_ns: i64,
     /// Most that is held in memory while the disk takes nothing.
     pub tail_bytes_max: usize,
@@ -107,10 +107,14 @@ pub struct Journal {
     n_unwritten: usize,
     /// Segments with unsynced bytes, in the order of the tail.
     dirty: VecDeque<Dirty>,
-    job_in_flight: bool,
+    sync_in_flight: bool,
+    chore_in_flight: bool,
     /// The sync in flight is of a segment given up meanwhile: its outcome says nothing any more.
     sync_is_void: bool,
-    last_sync_ns: i64,
+    /// When the oldest record was written that a segment given up left to be repeated.
+    exposed_since_ns: Option<i64>,
+    /// Finished segments that still hold room they do not need.
+    to_trim: Vec<Arc<dyn AppendFile>>,
     urgent: bool,
     /// Not before this time is a new segment tried after one could not be made.
     retry_ns: i64,
@@ -145,8 +149,17 @@ struct Dirty {
     /// The directory, until the file's name is synced.
     new_in: Option<PathBuf>,
     n_bytes: usize,
+    /// The first of them, handed to a sync that has not ended.
+    in_sync: InSync,
+    /// When the first byte was written that is not in a sync; of no meaning when there is none.
     oldest_ns: i64,
     finished: bool,
+}
+
+#[derive(Debug, Clone, Copy, Default)]
+struct InSync {
+    n_bytes: usize,
+    oldest_ns: i64,
 }
 
 /// How far back a trial may be opened.
@@ -186,9 +199,11 @@ impl Journal {
             tail: Vec::new(),
             n_unwritten: 0,
             dirty: VecDeque::new(),
-            job_in_flight: false,
+            sync_in_flight: false,
+            chore_in_flight: false,
             sync_is_void: false,
-            last_sync_ns: now_ns,
+            exposed_since_ns: None,
+            to_trim: Vec::new(),
             urgent: true,
             retry_ns: now_ns,
             given_up: start.previous_given_up,
@@ -264,7 +279,7 @@ impl Journal {
 
     /// True when everything appended is durable.
     pub fn is_clean(&self) -> bool {
-        self.tail.is_empty() && !self.job_in_flight
+        self.tail.is_empty() && !self.sync_in_flight
     }
 
     /// Asks for a sync without waiting for the interval.
@@ -276,6 +291,8 @@ impl Journal {
         self.health.own_bytes = self.segment.as_ref().map_or(0, |segment| segment.n_bytes) + self.retention.n_bytes();
         self.health.lost_events = self.losses.iter().map(|loss| loss.n_events_ever).sum();
         self.health.forget_old(now_ns);
+        self.health.exposure_ns_now = self.oldest_unsynced_ns().map_or(0, |oldest_ns| now_ns - oldest_ns);
+        self.health.exposure_ns_max = self.health.exposure_ns_max.max(self.health.exposure_ns_now);
         self.health.clone()
     }
 
@@ -288,7 +305,7 @@ impl Journal {
     /// or of an older journal in which no trial waits for sealing.
     pub fn adopt(&mut self, segment: &SegmentInfo, end_seq: u64) {
         let end_seq = (segment.open.journal_id == self.origin.journal_id).then_some(end_seq);
-        self.retention.adopt(segment.path.clone(), segment.bytes, end_seq);
+        self.retention.adopt(segment.path.clone(), segment.held_bytes, end_seq);
     }
 
     /// Removes a file that an earlier run made ahead and never began.
@@ -306,6 +323,15 @@ impl Journal {
         self.pinned_from_seq = first_seq;
     }
 
+    /// The end, with everything synced: what was reserved and is not needed any more goes back to the disk.
+    pub fn end(mut self) {
+        let files = self.dirty.drain(..).map(|dirty| dirty.file).chain(self.to_trim.drain(..));
+        for file in files.chain(self.ahead.take().map(|ahead| ahead.file)) {
+            // Left reserved, it is counted against the budget by the next start.
+            let _ = file.trim();
+        }
+    }
+
     /// Lets go of the oldest segments that nothing pinned needs, down to the budget.
     pub fn release(&mut self) {
         let own_bytes = self.segment.as_ref().map_or(0, |segment| segment.n_bytes);
@@ -315,6 +341,11 @@ impl Journal {
     /// Records before this sequence number are on the disk.
     pub fn durable_before(&self) -> u64 {
         seq_of(&self.tail).unwrap_or(self.next_seq)
+    }
+
+    fn oldest_unsynced_ns(&self) -> Option<i64> {
+        let written = self.dirty.iter().filter_map(Dirty::oldest_unsynced_ns);
+        written.chain(self.exposed_since_ns).min()
     }
 
     fn put(&mut self, host_ns: i64, device: DeviceIdx, body: &Body) -> u64 {
@@ -399,8 +430,8 @@ impl Journal {
         let (Some(segment), Some(dirty)) = (&mut self.segment, self.dirty.back_mut()) else { return Ok(()) };
         let unwritten = &self.tail[self.tail.len() - self.n_unwritten..];
         write_whole(&*segment.file, unwritten)?;
-        if dirty.n_bytes == 0 {
-            dirty.oldest_ns = now_ns;
+        if dirty.n_bytes == dirty.in_sync.n_bytes {
+            dirty.oldest_ns = self.exposed_since_ns.take().unwrap_or(now_ns);
         }
         segment.n_bytes += self.n_unwritten as u64;
         dirty.n_bytes += self.n_unwritten;
@@ -410,6 +441,12 @@ impl Journal {
 }
 
 impl Dirty {
+    /// When the oldest byte was written that is not known to be durable.
+    fn oldest_unsynced_ns(&self) -> Option<i64> {
+        let in_sync = (self.in_sync.n_bytes > 0).then_some(self.in_sync.oldest_ns);
+        in_sync.or_else(|| (self.n_bytes > 0).then_some(self.oldest_ns))
+    }
+
     fn needs_sync(&self) -> bool {
         self.n_bytes > 0 || self.new_in.is_some()
     }

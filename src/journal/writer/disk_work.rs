@@ -3,28 +3,48 @@
 use super::*;
 
 impl Journal {
-    /// The next piece of disk work, if one is due; its outcome goes to [`Self::job_done`]. One at a time.
+    /// The next piece of disk work, if one is due; its outcome goes to [`Self::job_done`]. At most one sync and one
+    /// chore are under way, each on a thread of its own: a removal that takes long holds up no sync.
     pub fn next_job(&mut self, now_ns: i64) -> Option<Job> {
-        if self.job_in_flight {
+        if !self.sync_in_flight
+            && let Some(sync) = self.sync_job(now_ns)
+        {
+            self.sync_in_flight = true;
+            return Some(sync);
+        }
+        if self.chore_in_flight {
             return None;
         }
-        let job = self.sync_job(now_ns).or_else(|| self.prepare_job(now_ns)).or_else(|| self.retention.job());
-        let job = job.or_else(|| self.room_job(now_ns));
-        self.job_in_flight = job.is_some();
-        job
+        let chore = self.prepare_job(now_ns).or_else(|| self.trim_job()).or_else(|| self.retention.job());
+        let chore = chore.or_else(|| self.room_job(now_ns));
+        self.chore_in_flight = chore.is_some();
+        chore
     }
 
     pub fn job_done(&mut self, outcome: Outcome, now_ns: i64) {
-        self.job_in_flight = false;
+        match outcome {
+            Outcome::Synced { .. } | Outcome::SyncFailed { .. } => self.sync_done(outcome, now_ns),
+            chore => self.chore_done(chore, now_ns),
+        }
+    }
+
+    fn sync_done(&mut self, outcome: Outcome, now_ns: i64) {
+        self.sync_in_flight = false;
         let is_void = std::mem::take(&mut self.sync_is_void);
         match outcome {
-            Outcome::Synced { .. } | Outcome::SyncFailed { .. } if is_void => {}
-            Outcome::Synced { n_bytes } => self.synced(n_bytes, now_ns),
-            Outcome::SyncFailed { error } => {
+            Outcome::Synced { n_bytes } if !is_void => self.synced(n_bytes, now_ns),
+            Outcome::SyncFailed { error } if !is_void => {
                 self.give_up(&format!("syncing failed: {error}"));
-                self.last_sync_ns = now_ns;
                 self.commit(now_ns);
             }
+            _ => {}
+        }
+    }
+
+    fn chore_done(&mut self, outcome: Outcome, now_ns: i64) {
+        self.chore_in_flight = false;
+        match outcome {
+            Outcome::Synced { .. } | Outcome::SyncFailed { .. } | Outcome::Trimmed => {}
             Outcome::Prepared { number, path, file, reserved } => {
                 self.health.reserve_possible = reserved == Reserved::Yes;
                 self.health.trouble = None;
@@ -44,32 +64,34 @@ impl Journal {
     }
 
     fn sync_job(&mut self, now_ns: i64) -> Option<Job> {
-        let due = self.urgent || now_ns - self.last_sync_ns >= self.settings.sync_every_ns;
-        let dirty = self.dirty.front().filter(|dirty| dirty.finished || (due && dirty.needs_sync()))?;
+        while let Some(done) = self.dirty.pop_front_if(|dirty| dirty.finished && !dirty.needs_sync()) {
+            self.to_trim.push(done.file);
+        }
+        let dirty = self.dirty.front_mut().filter(|dirty| dirty.needs_sync())?;
+        let due = self.urgent || dirty.finished || now_ns - dirty.oldest_ns >= self.settings.sync_every_ns;
+        if !due {
+            return None;
+        }
         if !dirty.finished {
             self.urgent = false;
         }
-        Some(Job::Sync {
-            file: Arc::clone(&dirty.file),
-            new_in: dirty.new_in.clone(),
-            n_bytes: dirty.n_bytes,
-            trim: dirty.finished,
-        })
+        dirty.in_sync = InSync { n_bytes: dirty.n_bytes, oldest_ns: dirty.oldest_ns };
+        Some(Job::Sync { file: Arc::clone(&dirty.file), new_in: dirty.new_in.clone(), n_bytes: dirty.n_bytes })
     }
 
     fn synced(&mut self, n_bytes: usize, now_ns: i64) {
-        self.last_sync_ns = now_ns;
         let Some(dirty) = self.dirty.front_mut() else { return };
+        let in_sync = std::mem::take(&mut dirty.in_sync);
         if n_bytes > 0 {
-            self.health.exposed_for(now_ns - dirty.oldest_ns, now_ns);
+            self.health.exposed_for(now_ns - in_sync.oldest_ns, now_ns);
         }
         dirty.n_bytes -= n_bytes;
-        dirty.oldest_ns = now_ns;
         dirty.new_in = None;
         self.tail.drain(..n_bytes);
-        if dirty.finished && dirty.n_bytes == 0 {
-            self.dirty.pop_front();
-        }
+    }
+
+    fn trim_job(&mut self) -> Option<Job> {
+        self.to_trim.pop().map(|file| Job::Trim { file })
     }
 
     fn room_job(&mut self, now_ns: i64) -> Option<Job> {

@@ -38,7 +38,8 @@ impl Journal {
         let n_bytes = bytes.len() as u64;
         self.segment = Some(Segment { path, file: Arc::clone(&file), n_bytes, opened_ns: now_ns });
         let new_in = Some(self.dir.clone());
-        self.dirty.push_back(Dirty { file, new_in, n_bytes: 0, oldest_ns: now_ns, finished: false });
+        let in_sync = InSync::default();
+        self.dirty.push_back(Dirty { file, new_in, n_bytes: 0, in_sync, oldest_ns: now_ns, finished: false });
         self.urgent = true;
         Ok(())
     }
@@ -88,8 +89,9 @@ impl Journal {
             self.health.segments_given_up += 1;
         }
         self.given_up = Some(why.to_owned());
-        self.dirty.clear();
+        self.exposed_since_ns = self.oldest_unsynced_ns();
+        self.to_trim.extend(self.dirty.drain(..).map(|dirty| dirty.file));
         self.n_unwritten = self.tail.len();
-        self.sync_is_void = self.job_in_flight;
+        self.sync_is_void = self.sync_in_flight;
     }
 }

@@ -235,6 +235,71 @@ fn exposure_is_measured_through_a_stall() {
     assert!(journal.health(5_600 * MS).exposure_ns_lately() >= 5_000 * MS);
 }
 
+#[test]
+fn what_is_written_while_a_sync_runs_is_as_old_as_it_is() {
+    let disk = StagedDisk::default();
+    let mut journal = begin(&disk, small());
+    work(&mut journal, &disk, 0);
+    let put = |journal: &mut Journal, now_ns| {
+        journal.append(now_ns, DeviceIdx(0), &bytes_of(1));
+        journal.commit(now_ns);
+    };
+    put(&mut journal, 100 * MS);
+    let sync = journal.next_job(150 * MS).unwrap();
+    put(&mut journal, 160 * MS);
+    journal.job_done(sync.run(&disk), 300 * MS);
+    assert_eq!(journal.health(300 * MS).exposure_ns_max, 200 * MS);
+    assert_eq!(journal.health(300 * MS).exposure_ns_now, 140 * MS, "the second record waits since 160 ms");
+    let sync = journal.next_job(300 * MS).expect("it is overdue: no pause before the next sync");
+    assert!(sync.is_sync());
+    journal.job_done(sync.run(&disk), 310 * MS);
+    assert_eq!(journal.health(310 * MS).exposure_ns_now, 0);
+}
+
+#[test]
+fn a_sync_that_fails_late_leaves_its_records_exposed_since_they_were_written() {
+    let disk = StagedDisk::default();
+    let mut journal = begin(&disk, small());
+    work(&mut journal, &disk, 0);
+    journal.append(100 * MS, DeviceIdx(0), &bytes_of(1));
+    journal.commit(100 * MS);
+    let failed = Outcome::SyncFailed { error: io::Error::from_raw_os_error(5) };
+    assert!(journal.next_job(150 * MS).unwrap().is_sync());
+    journal.job_done(failed, 400 * MS);
+    work(&mut journal, &disk, 420 * MS);
+    assert_eq!(journal.health(420 * MS).exposure_ns_max, 320 * MS);
+    assert!(journal.is_clean());
+}
+
+#[test]
+fn a_removal_that_takes_long_holds_up_no_sync() {
+    let disk = StagedDisk::default();
+    let mut journal = begin(&disk, small());
+    work(&mut journal, &disk, 0);
+    journal.forget(Path::new(DIR).join("000000-000000-000001.tjl"));
+    let chore = journal.next_job(10 * MS).unwrap();
+    assert!(matches!(chore, Job::Remove { .. }), "{chore:?}");
+    journal.append(20 * MS, DeviceIdx(0), &bytes_of(1));
+    journal.commit(20 * MS);
+    assert!(journal.next_job(80 * MS).is_some_and(|job| job.is_sync()), "while the removal is under way");
+    assert!(journal.next_job(80 * MS).is_none(), "one of each at a time");
+}
+
+#[test]
+fn room_a_killed_writer_left_reserved_counts_against_the_budget() {
+    let disk = StagedDisk::default();
+    let mut journal = begin(&disk, small());
+    record(&mut journal, &disk, 0, 5);
+    let killed = disk.after_kill();
+    let reader = JournalReader::open(Arc::new(killed.clone()), Path::new(DIR), "000001-abc123").unwrap();
+    let left = &reader.segments()[0];
+    assert_eq!(left.held_bytes, small().segment_bytes + small().reserve_bytes);
+    let start = Start { segment: 9, seq: 100, ..Start::fresh() };
+    let mut next = Journal::begin(Arc::new(killed), Path::new(DIR), origin(), start, small(), 0).unwrap();
+    next.adopt(left, 6);
+    assert!(next.health(0).own_bytes > left.held_bytes);
+}
+
 /// Sebastiano Vigna's SplitMix64, for drawing what survives.
 fn draws(seed: u64) -> impl FnMut() -> u64 {
     let mut state = seed;
