@@ -1,0 +1,133 @@
+//! Processes that are started to be killed.
+
+use std::fs::File;
+use std::io::{Read, Seek, SeekFrom, Write};
+use std::path::{Path, PathBuf};
+use std::process::{Child, Command, Stdio};
+use std::time::Duration;
+
+pub const SENTINEL: &str = "sentinel";
+const STAMP_EVERY: Duration = Duration::from_millis(5);
+
+pub fn monotonic_ns() -> i64 {
+    virtual_rig::play::pty::monotonic_ns()
+}
+
+/// Appends the time to a file until killed.
+pub fn be_sentinel(path: &Path) -> ! {
+    let mut file = File::options().append(true).create(true).open(path).expect("the sentinel's file");
+    loop {
+        file.write_all(&monotonic_ns().to_le_bytes()).expect("the sentinel writes");
+        std::thread::sleep(STAMP_EVERY);
+    }
+}
+
+/// A daemon, or `recover`, with a sentinel beside it.
+pub struct Victim {
+    child: Child,
+    sentinel: Child,
+    stamps: PathBuf,
+    pub spawned_ns: i64,
+}
+
+/// When, and in what company, it died.
+#[derive(Debug, Clone, Copy)]
+pub struct Killed {
+    pub spawned_ns: i64,
+    /// Read before the signals were sent.
+    pub killed_ns: i64,
+    /// How late the machine was with the sentinel's last stamp.
+    pub late_ns: i64,
+    /// A sealing process ran below it.
+    pub sealing: bool,
+    /// It had ended by itself before.
+    pub over: bool,
+}
+
+impl Victim {
+    pub fn start(program: &Path, args: &[&str], stamps: PathBuf) -> Self {
+        let sentinel = std::env::current_exe().expect("the path of this tool");
+        let sentinel = quiet(Command::new(sentinel).arg(SENTINEL).arg(&stamps)).spawn().expect("the sentinel starts");
+        let spawned_ns = monotonic_ns();
+        let child = quiet(Command::new(program).args(args)).spawn().expect("tautrail starts");
+        Self { child, sentinel, stamps, spawned_ns }
+    }
+
+    pub fn is_over(&mut self) -> bool {
+        self.child.try_wait().expect("its state").is_some()
+    }
+
+    /// SIGKILL to it, to the sentinel, and, if said so, to the sealing below it.
+    pub fn kill(mut self, with_sealing: bool) -> Killed {
+        let below = children_of(self.child.id());
+        let over = self.is_over();
+        let killed_ns = monotonic_ns();
+        // Refused only where it has ended by itself.
+        let _ = self.child.kill();
+        let _ = self.sentinel.kill();
+        if with_sealing {
+            below.iter().for_each(|&pid| kill(pid));
+        }
+        self.child.wait().expect("it ends");
+        self.sentinel.wait().expect("the sentinel ends");
+        let late_ns = killed_ns - last_stamp(&self.stamps).unwrap_or(self.spawned_ns) - STAMP_EVERY.as_nanos() as i64;
+        let _ = std::fs::remove_file(&self.stamps);
+        Killed { spawned_ns: self.spawned_ns, killed_ns, late_ns: late_ns.max(0), sealing: !below.is_empty(), over }
+    }
+
+    /// Waits for its end; the exit code.
+    pub fn finish(mut self) -> Option<i32> {
+        let code = self.child.wait().expect("it ends").code();
+        let _ = self.sentinel.kill();
+        self.sentinel.wait().expect("the sentinel ends");
+        let _ = std::fs::remove_file(&self.stamps);
+        code
+    }
+}
+
+fn quiet(command: &mut Command) -> &mut Command {
+    command.stdin(Stdio::null()).stdout(Stdio::null()).stderr(Stdio::null())
+}
+
+fn last_stamp(path: &Path) -> Option<i64> {
+    let mut file = File::open(path).ok()?;
+    let whole = file.metadata().ok()?.len() / 8;
+    file.seek(SeekFrom::Start(whole.checked_sub(1)? * 8)).ok()?;
+    let mut stamp = [0; 8];
+    file.read_exact(&mut stamp).ok()?;
+    Some(i64::from_le_bytes(stamp))
+}
+
+fn kill(pid: i32) {
+    // SAFETY: sends a signal; the process was a child of one of ours a moment ago, and ids are not reused that fast.
+    unsafe { libc::kill(pid, libc::SIGKILL) };
+}
+
+fn children_of(parent: u32) -> Vec<i32> {
+    let parent = parent.to_string();
+    processes()
+        .filter(|pid| {
+            let stat = std::fs::read_to_string(format!("/proc/{pid}/stat")).unwrap_or_default();
+            let after_name = stat.rsplit_once(')').map_or("", |(_, rest)| rest);
+            after_name.split_whitespace().nth(1) == Some(parent.as_str())
+        })
+        .collect()
+}
+
+/// Waits until no process works in this directory any more: sealing that outlived its daemon.
+pub fn wait_for_orphans(archive: &Path) {
+    let archive = archive.to_str().expect("a plain path");
+    let names_it = |pid: i32| {
+        let line = std::fs::read(format!("/proc/{pid}/cmdline")).unwrap_or_default();
+        let mut words = line.split(|&byte| byte == 0);
+        words.any(|word| word == archive.as_bytes())
+    };
+    while processes().any(names_it) {
+        std::thread::sleep(Duration::from_millis(20));
+    }
+}
+
+fn processes() -> impl Iterator<Item = i32> {
+    let entries = std::fs::read_dir("/proc").expect("/proc");
+    entries.filter_map(|entry| entry.ok()?.file_name().to_str()?.parse().ok())
+}
