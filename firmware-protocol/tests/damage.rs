@@ -1,126 +1,22 @@
 //! Frames on a bad line: nothing damaged gets through, and nothing undamaged is lost.
 #![allow(clippy::unwrap_used)]
 
+#[path = "support/bad_line.rs"]
+mod bad_line;
+
+use bad_line::{Random, sweep};
 use firmware_protocol::{
-    Block, Deframed, Deframer, Frame, Header, MAX_COBS_LEN, MAX_FRAME_LEN, Message, TimeReply, decode, encode,
+    Deframed, Deframer, Frame, Header, MAX_COBS_LEN, MAX_FRAME_LEN, Message, TimeReply, decode, encode,
 };
 use proptest::prelude::*;
 
-/// Seeded: xorshift64* (Vigna 2016, from memory).
-struct Random(u64);
-
-impl Random {
-    fn next(&mut self) -> u64 {
-        self.0 ^= self.0 >> 12;
-        self.0 ^= self.0 << 25;
-        self.0 ^= self.0 >> 27;
-        self.0.wrapping_mul(0x2545_F491_4F6C_DD1D)
-    }
-
-    fn below(&mut self, limit: u64) -> u64 {
-        (self.next() >> 16) % limit
-    }
-
-    /// Bits until the next one that is damaged.
-    fn bits_to_damage(&mut self, rate: f64) -> u64 {
-        let uniform = (self.next() >> 11) as f64 / (1_u64 << 53) as f64;
-        ((1.0 - uniform).ln() / (-rate).ln_1p()) as u64
-    }
-}
-
-/// A stream of frames, each with its place and the samples it carries.
-struct Sent {
-    bytes: Vec<u8>,
-    frames: Vec<SentFrame>,
-}
-
-struct SentFrame {
-    from: usize,
-    to: usize,
-    samples: Vec<u8>,
-    is_touched: bool,
-}
-
-fn send(random: &mut Random, n_frames: u32) -> Sent {
-    let mut sent = Sent { bytes: Vec::new(), frames: Vec::new() };
-    for sequence in 0..n_frames {
-        let n_samples = random.below(100) as u16 + 1;
-        let sparse = random.below(4) == 0;
-        let byte = |random: &mut Random| if sparse && random.below(8) != 0 { 0 } else { random.next() as u8 };
-        let samples: Vec<u8> = (0..n_samples * 6).map(|_| byte(random)).collect();
-        let first_index = u64::from(sequence) * 100;
-        let block = Block {
-            first_index,
-            tick: first_index * 100,
-            sent_tick: first_index * 100 + 77,
-            overruns: 0,
-            n_samples,
-            sample_len: 6,
-            samples: &samples,
-        };
-        let header = Header { flags: 0, stream: 1, sequence, boot_id: 0xB007, description_id: 1 };
-        let mut out = [0; MAX_FRAME_LEN];
-        let len = encode(&header, &Message::Block(block), &mut out).unwrap();
-        let from = sent.bytes.len();
-        sent.bytes.extend_from_slice(&out[..len]);
-        sent.frames.push(SentFrame { from, to: from + len, samples, is_touched: false });
-    }
-    sent
-}
-
-/// Turns bits over at the rate given.
-fn damage(sent: &mut Sent, random: &mut Random, rate: f64) {
-    let mut bit = random.bits_to_damage(rate);
-    let mut frame = 0;
-    while let Some(byte) = sent.bytes.get_mut((bit / 8) as usize) {
-        *byte ^= 1 << (bit % 8);
-        while sent.frames[frame].to <= (bit / 8) as usize {
-            frame += 1;
-        }
-        assert!(sent.frames[frame].from <= (bit / 8) as usize);
-        sent.frames[frame].is_touched = true;
-        bit += 1 + random.bits_to_damage(rate);
-    }
-}
-
-/// Receives; returns how many frames came through.
-fn receive(sent: &Sent) -> usize {
-    let mut buffer = [0; MAX_COBS_LEN];
-    let mut deframer = Deframer::new(&mut buffer);
-    let mut came_through = vec![false; sent.frames.len()];
-    for mut read in sent.bytes.chunks(1021) {
-        while let Some(piece) = deframer.next_piece(&mut read) {
-            let Deframed::Frame(cobs) = piece else { continue };
-            let Ok(Frame { header, message: Message::Block(block), .. }) = decode(cobs) else { continue };
-            let at = header.sequence as usize;
-            assert_eq!(block.samples, sent.frames[at].samples, "frame {at} was accepted damaged");
-            assert_eq!(block.first_index, at as u64 * 100);
-            came_through[at] = true;
-        }
-    }
-    for (at, frame) in sent.frames.iter().enumerate() {
-        assert!(came_through[at] || frame.is_touched, "frame {at} was lost undamaged");
-    }
-    came_through.iter().filter(|came| **came).count()
-}
-
-/// 10⁸ bytes over the four rates.
+/// The short form of `tools/bench corruption`, which sends 10⁸ bytes at every rate.
 #[test]
 fn no_damaged_frame_is_accepted_and_no_undamaged_one_lost() {
-    const BYTES_PER_RATE: usize = 25_000_000;
     for (seed, rate) in [(1, 1e-6), (2, 1e-5), (3, 1e-4), (4, 1e-3)] {
-        let random = &mut Random(seed);
-        let (mut n_bytes, mut n_sent, mut n_touched, mut n_through) = (0, 0, 0, 0);
-        while n_bytes < BYTES_PER_RATE {
-            let mut sent = send(random, 2000);
-            damage(&mut sent, random, rate);
-            n_bytes += sent.bytes.len();
-            n_sent += sent.frames.len();
-            n_touched += sent.frames.iter().filter(|frame| frame.is_touched).count();
-            n_through += receive(&sent);
-        }
-        assert!(n_touched > 0, "the line was damaged at {rate}");
-        println!("bit error rate {rate:e}: {n_bytes} bytes, {n_sent} frames, {n_touched} touched, {n_through} through");
+        let tally = sweep(&mut Random(seed), 2_000_000, rate);
+        assert!(tally.touched > 0 && tally.accepted > 0, "the line was damaged at {rate}: {tally:?}");
+        assert_eq!((tally.accepted_damaged, tally.lost_untouched), (0, 0), "at {rate}: {tally:?}");
     }
 }
 
