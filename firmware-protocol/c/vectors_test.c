@@ -100,6 +100,11 @@ static void check_blocks(void) {
     }
     h = header(2, 0);
     check_written("block-long-runs", out, tt_encode_block(out, sizeof out, &h, &long_runs));
+    memset(samples, 1, sizeof samples);
+    samples[1] = 0;
+    long_runs.n_samples = 63;
+    h = header(2, 0);
+    check_written("block-full-run-at-end", out, tt_encode_block(out, sizeof out, &h, &long_runs));
     long_runs.n_samples = 600;
     if (tt_encode_block(out, sizeof out, &h, &long_runs) != 0u) {
         fail("block", "written although it is longer than the protocol allows");
@@ -157,7 +162,7 @@ static void check_read(const char *name, uint8_t kind, uint32_t token, uint8_t s
 
 /* A device's own frames, long ones among them, are no requests; the one after them is read. */
 static void check_ignored(void) {
-    static const char *const names[] = {"describe", "block", "block-long-runs", "unknown-kind"};
+    static const char *const names[] = {"describe", "block", "block-long-runs", "unknown-kind", "other-version"};
     uint8_t bytes[2 * TT_MAX_FRAME];
     tt_request request;
     size_t i;
@@ -183,6 +188,7 @@ int main(int argc, char **argv) {
     check_read("start", TT_START, 0, 0, 0);
     check_read("stop", TT_STOP, 0, 0, 0);
     check_read("time-request", TT_TIME_REQUEST, 0xDEADBEEFu, 0, 0);
+    check_read("time-request-with-fields-to-come", TT_TIME_REQUEST, 0xDEADBEEFu, 0, 0);
     check_read("set-rate", TT_SET_RATE, 0, 1, 50);
     check_ignored();
     return n_failed == 0 ? EXIT_SUCCESS : EXIT_FAILURE;

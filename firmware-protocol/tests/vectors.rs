@@ -7,8 +7,8 @@ use std::path::PathBuf;
 use std::process::Command;
 
 use firmware_protocol::{
-    Block, Channel, Channels, Describe, Edge, Encoding, Frame, Header, MAX_FRAME_LEN, Message, SetRate, Status, Stream,
-    Streams, TimeReply, TimeRequest, decode, encode,
+    Block, Channel, Channels, DecodeError, Describe, Edge, Encoding, Frame, Header, MAX_FRAME_LEN, Message, SetRate,
+    Status, Stream, Streams, TimeReply, TimeRequest, decode, encode,
 };
 
 const DEVICE: Header = Header { flags: 0, stream: 0, sequence: 0, boot_id: 0x5EED_1234, description_id: 3 };
@@ -81,6 +81,14 @@ const LONG_RUNS: [u8; 800] = {
     samples
 };
 
+/// Chosen by `make.py` so that the checksum has no zero either.
+const FULL_RUN_SEQUENCE: u32 = 0;
+const FULL_RUN: [u8; 252] = {
+    let mut samples = [1; 252];
+    samples[1] = 0;
+    samples
+};
+
 /// What this crate must write, byte by byte.
 fn written() -> Vec<(&'static str, Header, Message<'static>)> {
     let numbered = |sequence| Header { sequence, ..DEVICE };
@@ -98,6 +106,11 @@ fn written() -> Vec<(&'static str, Header, Message<'static>)> {
         ("describe", numbered(1), Message::Describe(DESCRIBE)),
         ("block", Header { stream: 1, sequence: u32::MAX, ..DEVICE }, Message::Block(BLOCK)),
         ("block-long-runs", Header { stream: 2, ..DEVICE }, Message::Block(long)),
+        (
+            "block-full-run-at-end",
+            Header { stream: 2, sequence: FULL_RUN_SEQUENCE, ..DEVICE },
+            Message::Block(Block { n_samples: 63, samples: &FULL_RUN, ..long }),
+        ),
         ("edge", numbered(7), Message::Edge(Edge { input: 2, rising: true, tick: 1_000_000 })),
         (
             "status",
@@ -185,6 +198,23 @@ fn fields_to_come_are_read_as_if_they_were_not_there() {
     assert_eq!(frame.message, Message::Block(BLOCK));
     let frame = decoded("describe-with-fields-to-come", &mut cobs);
     assert_eq!(frame.message, Message::Describe(Describe { streams: Streams::given(&STREAMS[..1]), ..DESCRIBE }));
+    let frame = decoded("time-request-with-fields-to-come", &mut cobs);
+    assert_eq!(frame.message, Message::TimeRequest(TimeRequest { token: 0xDEAD_BEEF }));
+}
+
+#[test]
+fn another_version_is_refused_by_its_number() {
+    let mut cobs = bytes_of("other-version", "frame");
+    let inside = 1..cobs.len() - 1;
+    assert_eq!(decode(&mut cobs[inside]), Err(DecodeError::Version { found: 2 }));
+}
+
+#[test]
+fn a_full_run_at_the_end_is_read_with_the_spare_code_too() {
+    let mut cobs = bytes_of("block-full-run-at-end", "frame");
+    cobs.pop();
+    cobs.push(1);
+    assert_eq!(decode(&mut cobs[1..]).unwrap().header.sequence, FULL_RUN_SEQUENCE);
 }
 
 #[test]
@@ -192,6 +222,8 @@ fn no_vector_is_left_untested() {
     let mut tested: BTreeSet<_> = written().iter().map(|(name, ..)| format!("{name}.txt")).collect();
     tested.insert("block-with-fields-to-come.txt".to_owned());
     tested.insert("describe-with-fields-to-come.txt".to_owned());
+    tested.insert("time-request-with-fields-to-come.txt".to_owned());
+    tested.insert("other-version.txt".to_owned());
     let names = fs::read_dir(vectors()).unwrap().map(|entry| entry.unwrap().file_name().into_string().unwrap());
     assert_eq!(names.filter(|name| name.ends_with(".txt")).collect::<BTreeSet<_>>(), tested);
 }

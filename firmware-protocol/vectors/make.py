@@ -71,9 +71,13 @@ def i24(value):
     return struct.pack("<i", value)[:3]
 
 
-def write(name, what, kind, payload, stream=0, sequence=0, boot_id=0, description_id=0):
-    header = struct.pack("<BBBBIIH", 1, kind, 0, stream, sequence, boot_id, description_id)
-    decoded = header + payload + struct.pack("<I", crc32c(header + payload))
+def frame_of(kind, payload, stream=0, sequence=0, boot_id=0, description_id=0, version=1):
+    header = struct.pack("<BBBBIIH", version, kind, 0, stream, sequence, boot_id, description_id)
+    return header + payload + struct.pack("<I", crc32c(header + payload))
+
+
+def write(name, what, kind, payload, stream=0, sequence=0, boot_id=0, description_id=0, version=1):
+    decoded = frame_of(kind, payload, stream, sequence, boot_id, description_id, version)
     frame = b"\0" + cobs(decoded) + b"\0"
     lines = [f"# {line}" for line in what]
     lines.append(f"# stream {stream}, sequence {sequence}, boot id {boot_id:#x}, description id {description_id}")
@@ -132,6 +136,16 @@ def main():
          "sample 100 is 0. Runs of more than 254 bytes without a zero."],
         2, block(0, 1, 2, 0, 200, 4, b"\1" * 400 + b"\0" * 4 + b"\1" * 396), stream=2, sequence=0, **boot,
     )
+    # 250 bytes of samples and four of checksum without a zero: the first sequence number that makes them so.
+    samples = b"\1\0" + b"\1" * 250
+    full = (block(0, 1, 2, 0, 63, 4, samples), {"stream": 2, **boot})
+    sequence = next(n for n in range(100) if 0 not in frame_of(2, full[0], sequence=n, **full[1])[-4:])
+    write(
+        "block-full-run-at-end",
+        ["First index 0, tick 1, sent at tick 2, no overruns; 63 samples of one i32 channel: 0x01010001, then",
+         "0x01010101. The last run is 254 bytes long, checksum included: no code follows it, or one more code 01."],
+        2, full[0], sequence=sequence, **full[1],
+    )
     write("edge", ["Input 2 rises at tick 1000000."], 3, struct.pack("<BBQ", 2, 1, 1_000_000), sequence=7, **boot)
     write(
         "status",
@@ -149,6 +163,11 @@ def main():
     write("start", ["From the host."], 0x82, b"", sequence=1)
     write("stop", ["From the host."], 0x83, b"", sequence=2)
     write("time-request", ["From the host, token 0xdeadbeef."], 0x84, struct.pack("<I", 0xDEADBEEF), sequence=3)
+    write(
+        "time-request-with-fields-to-come", ["As time-request, followed by three bytes of a later version."],
+        0x84, struct.pack("<I", 0xDEADBEEF) + b"\1\0\2", sequence=3,
+    )
+    write("other-version", ["A start of protocol version 2: to be refused, or ignored."], 0x82, b"", sequence=1, version=2)
     write("set-rate", ["From the host: stream 1, 50 ticks a sample."], 0x85, struct.pack("<BI", 1, 50), sequence=4)
 
 

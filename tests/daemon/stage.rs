@@ -6,14 +6,15 @@ use std::process::{Command, Output};
 use std::sync::atomic::{AtomicBool, Ordering};
 use std::sync::{Arc, OnceLock};
 use std::thread::JoinHandle;
+use std::time::{Duration, Instant};
 
 use serde::Deserialize;
 use tautrail::trial::{BlockRow, TrialFile};
 use virtual_rig::performance::{Options, Performance, prepare};
 use virtual_rig::play::pty::{PtySettings, play};
 
+pub use crate::daemon_process::Daemon;
 use crate::daemon_process::PATIENCE;
-pub use crate::daemon_process::{Daemon, wait_until};
 
 pub const DEVICES: [&str; 2] = ["winch-node", "shuttle-node"];
 
@@ -176,4 +177,13 @@ impl Truth {
 
 pub fn monotonic_ns() -> i64 {
     virtual_rig::play::pty::monotonic_ns()
+}
+
+#[track_caller]
+pub fn wait_until(what: &str, condition: impl Fn() -> bool) {
+    let deadline = Instant::now() + PATIENCE;
+    while !condition() {
+        assert!(Instant::now() < deadline, "{what} did not come");
+        std::thread::sleep(Duration::from_millis(20));
+    }
 }

@@ -1,87 +1,33 @@
 //! Recorded by the real daemon, through a power cut in the middle of a trial.
 
-use std::path::{Path, PathBuf};
-use std::process::Command;
-
 use tautrail::trial::{DeviceRecord, TrialFile};
 
 use crate::board::Board;
-use crate::daemon_process::{Daemon, wait_until};
+use crate::place::Place;
 use crate::support::run_oracle;
 
 const DEVICE: &str = "bench-node";
 const BOOTS: [u32; 2] = [0x0B00_7011, 0x0B00_7012];
 
-/// A directory with the rig file, its one port and the trials.
-struct Place {
-    dir: tempfile::TempDir,
-}
-
-impl Place {
-    fn new() -> Self {
-        let dir = tempfile::tempdir().unwrap();
-        std::fs::write(dir.path().join("rig.toml"), rig_text()).unwrap();
-        std::fs::create_dir(dir.path().join("ports")).unwrap();
-        Self { dir }
-    }
-
-    fn port(&self) -> PathBuf {
-        self.dir.path().join("ports").join(DEVICE)
-    }
-
-    fn plug_in(&self, board: &Board) {
-        std::os::unix::fs::symlink(&board.port, self.port()).unwrap();
-    }
-
-    /// The name goes first: the kernel gives a free pty's number to whoever asks next.
-    fn cut_power(&self, board: Board) {
-        std::fs::remove_file(self.port()).unwrap();
-        drop(board);
-    }
-
-    fn start_daemon(&self) -> Daemon {
-        let (rig, trials) = (self.dir.path().join("rig.toml"), self.dir.path().join("trials"));
-        let mut command = Command::new(env!("CARGO_BIN_EXE_tautrail"));
-        Daemon::start(command.arg("--json").arg("daemon").arg(rig).arg("--dir").arg(trials))
-    }
-
-    fn trial(&self) -> PathBuf {
-        let listed = std::fs::read_dir(self.dir.path().join("trials")).unwrap().map(|entry| entry.unwrap().path());
-        let files: Vec<_> = listed.filter(|path| path.extension().is_some_and(|extension| extension == "h5")).collect();
-        let [file] = &files[..] else { panic!("one trial file: {files:?}") };
-        file.clone()
-    }
-}
-
-/// The rehearsal's rig with all four channels on the one board (invented data).
-fn rig_text() -> String {
-    let rig = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
-    let text = std::fs::read_to_string(rig).unwrap();
-    let (before, second_device) = text.split_once("[[device]]\nname = \"shuttle-node\"").expect("its second device");
-    let (_, channels) = second_device.split_once("[[channel]]").expect("its channels");
-    let text = format!("{before}[[channel]]{channels}");
-    text.replace("winch-node", DEVICE).replace("shuttle-node", DEVICE)
-}
-
 #[test]
 fn a_board_that_loses_power_in_the_hold_leaves_a_trial_of_two_boots_with_every_count_right() {
-    let place = Place::new();
+    let place = Place::new(DEVICE);
     let board = Board::boot(BOOTS[0]);
-    place.plug_in(&board);
+    place.plug_in(&board.port);
     let mut daemon = place.start_daemon();
     daemon.wait_for("link", "is open");
     daemon.wait_for("trial", "opens");
     let hold = daemon.wait_for("phase", "hold");
-    place.cut_power(board);
+    place.unplug();
+    drop(board);
     let lost = daemon.wait_for("alarm", &format!("{DEVICE}: link lost"));
     let board = Board::boot(BOOTS[1]);
-    place.plug_in(&board);
+    place.plug_in(&board.port);
     daemon.wait_for("link", "is open");
     let closed = daemon.wait_for("trial", "closes");
     daemon.wait_for("seal", "is sealed");
     assert!(hold.host_ns < lost.host_ns && lost.host_ns < closed.host_ns, "{hold:?} {lost:?} {closed:?}");
     assert_eq!(daemon.stop(), Some(0));
-    wait_until("the sealed trial", || place.trial().exists());
 
     let path = place.trial();
     let trial = TrialFile::open(&path).unwrap();

@@ -74,12 +74,3 @@ impl Drop for Daemon {
         let _ = self.child.wait();
     }
 }
-
-#[track_caller]
-pub fn wait_until(what: &str, condition: impl Fn() -> bool) {
-    let deadline = Instant::now() + PATIENCE;
-    while !condition() {
-        assert!(Instant::now() < deadline, "{what} did not come");
-        std::thread::sleep(Duration::from_millis(20));
-    }
-}
