@@ -2,7 +2,9 @@
 
 mod cfc;
 mod distribution;
+mod dual;
 mod linear;
+mod nonlinear;
 mod random;
 mod statistics;
 #[cfg(test)]
@@ -10,6 +12,10 @@ mod testing;
 
 pub use cfc::{CfcError, CfcFilter, StartUp};
 pub use distribution::{Cholesky, Distribution, NotPositive};
+pub use dual::Dual;
 pub use linear::{LinearError, LinearFit, Scatter, least_squares, polynomial, polynomial_row, propagated};
+pub use nonlinear::{
+    Bound, Exact, FitOptions, Loss, NonlinearError, NonlinearFit, Residuals, Stepped, Stop, fit_nonlinear,
+};
 pub use random::Random;
 pub use statistics::{Component, RunningMean, chi_square_quantile, combined, coverage_factor, lag1_autocorrelation};
