@@ -5,6 +5,7 @@
 
 mod derive;
 mod error;
+mod keep;
 mod list;
 mod player;
 mod publish;
@@ -15,7 +16,8 @@ mod value_pass;
 mod verify;
 
 pub use error::SealError;
+pub use keep::{Keep, Kept, ReleaseError, kept, release};
 pub use list::{Listing, Summary, list};
 pub use recover::{Fate, RecoverError, Recovered, journal_dir, recover, seal_one, sealed_file};
-pub use seal::{Sealed, seal, trial_path};
+pub use seal::{Sealed, seal, seal_keeping, trial_path};
 pub use verify::{Verified, verify};

@@ -10,7 +10,8 @@ use crate::journal::{ArchiveLock, Disk, JournalReader, LockError, ReadError, Tri
 use crate::trial::TrialFile;
 
 use super::error::SealError;
-use super::seal::{Sealed, seal, trial_path};
+use super::keep::{Keep, readers};
+use super::seal::{Sealed, seal, seal_keeping, trial_path};
 
 /// What became of one trial.
 #[derive(Debug)]
@@ -48,7 +49,7 @@ pub fn journal_dir(dir: &Path) -> PathBuf {
     dir.join("journal")
 }
 
-/// Seals every trial in `dir` that is not sealed yet; `progress` hears of each before it is begun.
+/// Seals every trial in `dir` that is not sealed yet, from the journals and from those kept for a person; `progress` hears of each before it is begun.
 ///
 /// # Errors
 /// Journals or the lock that cannot be read or taken. A trial that fails is a [`Fate`], and the others go on.
@@ -73,6 +74,16 @@ pub fn recover(
             let live = lock.is_none() && range.closed.is_none() && ids.last() == Some(journal_id);
             let fate = if live { Fate::Live } else { seal_if_needed(&reader, &range, dir, disk, progress) };
             recovered.push(Recovered { journal_id: journal_id.clone(), trial_id: range.trial_id, fate });
+        }
+    }
+    for (trial_id, reader) in readers(dir, disk) {
+        if recovered.iter().any(|known| known.trial_id == trial_id) {
+            continue;
+        }
+        let ranges = reader.trials()?;
+        for range in ranges.into_iter().filter(|range| range.trial_id == trial_id) {
+            let fate = seal_if_needed(&reader, &range, dir, disk, progress);
+            recovered.push(Recovered { journal_id: reader.journal_id().to_owned(), trial_id: range.trial_id, fate });
         }
     }
     drop(lock);
@@ -125,11 +136,17 @@ pub fn sealed_file(range: &TrialRange, dir: &Path) -> Result<Option<PathBuf>, Se
 ///
 /// # Errors
 /// [`SealError`].
-pub fn seal_one(dir: &Path, journal_id: &str, trial_id: &str, disk: &Arc<dyn Disk>) -> Result<Sealed, SealError> {
+pub fn seal_one(
+    dir: &Path,
+    journal_id: &str,
+    trial_id: &str,
+    disk: &Arc<dyn Disk>,
+    keep: Keep,
+) -> Result<Sealed, SealError> {
     let reader = JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id)?;
     let ranges = reader.trials()?;
     let range = ranges.iter().find(|range| range.trial_id == trial_id);
     let range = range
         .ok_or_else(|| SealError::NoSuchTrial { journal_id: journal_id.to_owned(), trial_id: trial_id.to_owned() })?;
-    seal(&reader, range, dir, disk)
+    seal_keeping(&reader, range, dir, disk, keep)
 }

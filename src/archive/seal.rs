@@ -14,6 +14,7 @@ use crate::trial::{Condition, Header, ResultSet, TrialFile, TrialWriter, text_sh
 
 use super::derive;
 use super::error::SealError;
+use super::keep::{Keep, needed};
 use super::player::{Told, play};
 use super::publish::{Part, Published};
 use super::raw_pass::{DevicePass, Events, RawPass};
@@ -39,6 +40,8 @@ pub struct Sealed {
     pub n_missing: u64,
     /// SHA-256 over all raw groups.
     pub raw_sha256: String,
+    /// The journal stays until a person lets it go.
+    pub journal_kept: bool,
 }
 
 /// What is known before the range is played.
@@ -47,11 +50,25 @@ struct Ahead {
     clocks: Option<Clocks>,
 }
 
-/// Seals `range` into `dir/trial-<id>.h5`.
+/// Seals `range` into `dir/trial-<id>.h5`; the journal of an abnormal outcome is kept.
 ///
 /// # Errors
 /// [`SealError`]; nothing half-made stays behind and the journal is untouched.
 pub fn seal(reader: &JournalReader, range: &TrialRange, dir: &Path, disk: &Arc<dyn Disk>) -> Result<Sealed, SealError> {
+    seal_keeping(reader, range, dir, disk, Keep::Abnormal)
+}
+
+/// Seals `range` into `dir/trial-<id>.h5`, and keeps the journal for a person as `keep` says.
+///
+/// # Errors
+/// [`SealError`]; nothing half-made stays behind and the journal is untouched.
+pub fn seal_keeping(
+    reader: &JournalReader,
+    range: &TrialRange,
+    dir: &Path,
+    disk: &Arc<dyn Disk>,
+    keep: Keep,
+) -> Result<Sealed, SealError> {
     let stem = file_stem(&range.trial_id)?;
     expect_room(reader, range, dir, &**disk)?;
     let part = Part::new(&**disk, dir, &stem)?;
@@ -59,6 +76,10 @@ pub fn seal(reader: &JournalReader, range: &TrialRange, dir: &Path, disk: &Arc<d
     let made = write(reader, range, &ahead, part.path())?;
     let proof = prove(part.path(), &made)?;
     let target = free_target(dir, &stem, range)?;
+    let kept = keep.applies_to(&made.outcome) && !target.exists();
+    if kept {
+        super::keep::keep(reader, range, dir)?;
+    }
     let published = part.publish(&target)?;
     Ok(Sealed {
         path: target,
@@ -68,6 +89,7 @@ pub fn seal(reader: &JournalReader, range: &TrialRange, dir: &Path, disk: &Arc<d
         n_samples: made.n_samples,
         n_missing: made.n_missing,
         raw_sha256: proof,
+        journal_kept: kept,
     })
 }
 
@@ -109,14 +131,7 @@ fn is_shorter(path: &Path, range: &TrialRange) -> Result<bool, SealError> {
 fn expect_room(reader: &JournalReader, range: &TrialRange, dir: &Path, disk: &dyn Disk) -> Result<(), SealError> {
     let io = |source| SealError::Io { doing: "ask for the free space of", path: dir.to_owned(), source };
     let free_bytes = disk.free_bytes(dir).map_err(io)?;
-    let segments = reader.segments();
-    let mut n_bytes = 0;
-    for (index, segment) in segments.iter().enumerate() {
-        let ends_before = segments.get(index + 1).is_some_and(|next| next.open.first_seq <= range.first_seq);
-        if !ends_before && segment.open.first_seq <= range.last_seq {
-            n_bytes += segment.bytes;
-        }
-    }
+    let n_bytes: u64 = needed(reader.segments(), range).iter().map(|segment| segment.bytes).sum();
     let needed_bytes = n_bytes.saturating_mul(ROOM_FACTOR);
     if free_bytes < needed_bytes {
         return Err(SealError::NoRoom { dir: dir.to_owned(), needed_bytes, free_bytes });

@@ -34,8 +34,14 @@ pub struct Args {
     #[arg(long)]
     wait_for_ports: bool,
     /// For all journal segments together, in MiB; what unsealed trials need is kept beyond it
-    #[arg(long, value_name = "MIB", default_value_t = 1024, value_parser = clap::value_parser!(u64).range(128..))]
+    #[arg(long, value_name = "MIB", default_value_t = 1024, value_parser = clap::value_parser!(u64).range(4..))]
     journal_budget: u64,
+    /// Keep room on the disk for a hold of this many minutes; no trial is begun without it
+    #[arg(long, value_name = "MIN", default_value_t = 60.0, value_parser = minutes)]
+    longest_hold: f64,
+    /// Keep the journal of every trial until `tautrail recover --release` lets it go, not only of abnormal ones
+    #[arg(long)]
+    keep_journal: bool,
     /// How long the end waits for sealing, in seconds
     #[arg(long, value_name = "S", default_value_t = 60)]
     seal_wait: u64,
@@ -59,6 +65,8 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
         socket: args.socket.clone().unwrap_or_else(|| args.dir.join(tautrail::feed::SOCKET_NAME)),
         wait_for_ports: args.wait_for_ports,
         budget_bytes: args.journal_budget << 20,
+        longest_hold: Duration::from_secs_f64(args.longest_hold * 60.0),
+        keep_journal: args.keep_journal,
         seal_patience: Duration::from_secs(args.seal_wait),
         program: std::env::current_exe()?,
     };
@@ -66,6 +74,13 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     let screen = *screen;
     daemon::run(&rig, &options, shutdown, Box::new(move |event| print(event, screen)))?;
     Ok(Verdict::Done)
+}
+
+fn minutes(text: &str) -> Result<f64, String> {
+    match text.parse() {
+        Ok(minutes) if (0.01..=10_000.0).contains(&minutes) => Ok(minutes),
+        _ => Err("a number of minutes between 0.01 and 10000".to_owned()),
+    }
 }
 
 /// One line an event; for programs, one JSON object a line.

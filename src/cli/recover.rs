@@ -1,10 +1,10 @@
-//! `tautrail recover DIR`: seals what a crash left.
+//! `tautrail recover DIR`: seals what a crash left, and lets go of journals kept for a person.
 
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
 use serde_json::{Value, json};
-use tautrail::archive::{Fate, Recovered, recover};
+use tautrail::archive::{Fate, Kept, Recovered, kept, recover, release};
 use tautrail::journal::{Disk, RealDisk};
 
 use super::screen::{Screen, Tone};
@@ -14,38 +14,72 @@ use super::{Failure, Verdict};
 /// Seal every trial that a crash left in the journals of an archive directory
 ///
 /// Beside a running daemon the trial under way is left alone. A trial whose end is missing gets the outcome "truncated".
-/// Journals are only read.
+/// Journals are only read. Those of trials that were neither a launch nor a let-down stay until you let them go.
 #[derive(Debug, clap::Args)]
 #[command(after_help = RECOVER_HELP)]
 pub struct Args {
     /// The archive directory: trial files in it, journals in DIR/journal
     dir: PathBuf,
+    /// Let go of the journal kept of this trial, for good; its sealed file stays
+    #[arg(long, value_name = "TRIAL")]
+    release: Option<String>,
 }
 
 const RECOVER_HELP: &str = "\
 Examples:
   tautrail recover trials/          after a crash, a power cut or a full disk
   tautrail recover --json trials/   for programs
+  tautrail recover trials/ --release 000012-7f3a9c    looked at and understood: its journal may go
 
 Exit code: 0 all sealed, 1 a trial could not be sealed (its journal is kept), 2 could not run.";
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
+    if let Some(trial_id) = &args.release {
+        return let_go(&args.dir, trial_id, screen);
+    }
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
     let recovered = recover(&args.dir, &disk, &mut |range| {
         if !screen.json {
             screen.line(format!("sealing trial {} …", range.trial_id));
         }
     })?;
+    let kept = kept(&args.dir)?;
     if screen.json {
-        screen.value(&json!({ "trials": recovered.iter().map(as_json).collect::<Vec<Value>>() }));
+        let kept: Vec<Value> = kept.iter().map(kept_json).collect();
+        screen
+            .value(&json!({ "kept_journals": kept, "trials": recovered.iter().map(as_json).collect::<Vec<Value>>() }));
     } else {
         recovered.iter().for_each(|one| screen.line(sentence(one, screen)));
         if recovered.is_empty() {
             screen.line(format!("no journal in {} holds a trial", args.dir.display()));
         }
+        kept.iter().for_each(|kept| screen.line(kept_sentence(kept)));
     }
     let failed = recovered.iter().any(|one| matches!(one.fate, Fate::Failed(_)));
     Ok(if failed { Verdict::CheckFailed } else { Verdict::Done })
+}
+
+fn let_go(dir: &Path, trial_id: &str, screen: &Screen) -> Result<Verdict, Failure> {
+    let n_bytes = release(dir, trial_id)?;
+    if screen.json {
+        screen.value(&json!({ "released": trial_id, "bytes": n_bytes }));
+    } else {
+        screen.line(format!("let go of the journal of trial {trial_id}, {:.1} MiB", mib(n_bytes)));
+    }
+    Ok(Verdict::Done)
+}
+
+fn mib(n_bytes: u64) -> f64 {
+    n_bytes as f64 / f64::from(1 << 20)
+}
+
+fn kept_sentence(kept: &Kept) -> String {
+    let Kept { trial_id, n_bytes, .. } = kept;
+    format!("the journal of trial {trial_id} is kept, {:.1} MiB, until --release {trial_id}", mib(*n_bytes))
+}
+
+fn kept_json(kept: &Kept) -> Value {
+    json!({ "trial_id": kept.trial_id, "bytes": kept.n_bytes, "path": kept.dir })
 }
 
 fn sentence(one: &Recovered, screen: &Screen) -> String {

@@ -17,6 +17,7 @@ use crate::live::{Around, CordsNow, Happening, JournalNow, Live, TrialNow};
 use super::error::DaemonError;
 use super::outgoing::Outgoing;
 use super::ports::FirstOpenings;
+use super::room::RoomWatch;
 use super::sealing::{SealReport, Sealer};
 use super::trials::TrialBook;
 use super::words;
@@ -38,6 +39,9 @@ pub struct Conductor {
     pub device_names: Vec<String>,
     pub dir: PathBuf,
     pub seal_patience: Duration,
+    pub room: RoomWatch,
+    /// A trial that was not opened for want of room, and how far it is to reach back.
+    pub held_back_from_ns: Option<i64>,
     pub openings: FirstOpenings,
     /// Start and stay although every port is in use elsewhere.
     pub wait_for_ports: bool,
@@ -148,6 +152,7 @@ impl Conductor {
                 Vec::new()
             }
             FromLinks::Event(event) => {
+                self.room.recorded(recorded_bytes(&event.what));
                 self.tell_link(&event);
                 self.live.on_link(&event)
             }
@@ -179,7 +184,7 @@ impl Conductor {
     fn act(&mut self, happening: &Happening) {
         match happening {
             Happening::OpenTrial { host_ns, preroll_from_host_ns } => {
-                self.open_trial(*host_ns, *preroll_from_host_ns, "tension rises", "");
+                self.open_by_tension(*host_ns, *preroll_from_host_ns);
             }
             Happening::CloseTrial { host_ns, reason } => self.close_trial(*host_ns, reason, ""),
             other => drop(self.tell(Event::of(other))),
@@ -188,7 +193,7 @@ impl Conductor {
 
     /// False: no trial was opened, and the feed says why.
     pub(super) fn open_trial(&mut self, host_ns: i64, from_host_ns: i64, reason: &str, person: &str) -> bool {
-        let trial_id = match self.book.begin(host_ns) {
+        let trial_id = match self.book.begin(host_ns, self.room.n_bytes()) {
             Ok(trial_id) => trial_id,
             Err(error) => {
                 self.complain(&format!("cannot open a trial: {error}"));
@@ -213,7 +218,7 @@ impl Conductor {
     }
 
     pub(super) fn close_trial(&mut self, host_ns: i64, reason: &str, person: &str) {
-        let Some(trial_id) = self.book.close() else { return };
+        let Some(trial_id) = self.book.close(self.room.n_bytes()) else { return };
         let text = format!("trial {trial_id} closes: {reason}");
         let close = TrialClose { trial_id, reason: reason.to_owned(), person: person.to_owned() };
         self.outgoing.push(Order::CloseTrial { host_ns, close });
@@ -278,7 +283,9 @@ impl Conductor {
         if !self.recorder.is_running() {
             return Err(DaemonError::ThreadEnded { thread: "journal" });
         }
-        let trouble = words::trouble(&self.recorder.now());
+        let recorder = self.recorder.now();
+        let room = self.watch_room(&recorder);
+        let trouble = words::trouble(&recorder).or(room);
         let now_ns = self.clock.monotonic_ns();
         if let Some(happening) = self.live.journal_trouble(now_ns, trouble.as_deref()) {
             self.act(&happening);
@@ -342,6 +349,15 @@ impl Conductor {
             open.trial_id
         );
         self.tell(words::event(now_ns, "trial", "daemon", text));
+    }
+}
+
+/// On disk: the read and its record's frame.
+fn recorded_bytes(what: &LinkWhat) -> usize {
+    const FRAME: usize = 28;
+    match what {
+        LinkWhat::Bytes(bytes) => bytes.len() + FRAME,
+        LinkWhat::Up { .. } | LinkWhat::Down { .. } | LinkWhat::TimeRequested { .. } => FRAME,
     }
 }
 

@@ -19,6 +19,8 @@ pub struct Unsealed {
     pub trial_id: String,
     /// In its own journal.
     pub first_seq: u64,
+    /// What of the journal it takes, about.
+    pub n_bytes: u64,
 }
 
 /// A journal that goes on.
@@ -30,6 +32,8 @@ pub struct Resumed {
     pub last_host_ns: i64,
     /// The trial that was under way.
     pub open_trial: Option<TrialRange>,
+    /// What of the journal that trial takes so far, about.
+    pub open_bytes: u64,
 }
 
 #[derive(Debug, Default)]
@@ -125,6 +129,7 @@ impl Found {
             journal_id: trial.journal_id.clone(),
             trial_id: trial.trial_id.clone(),
             first_seq: trial.first_seq,
+            n_bytes: bytes_of(reader, trial),
         }));
         // Segments of an older journal stay until all its trials are sealed.
         if goes_on || self.unsealed.len() == n_before {
@@ -135,6 +140,17 @@ impl Found {
         }
         Ok(())
     }
+}
+
+/// Whole segments, so rather too much.
+fn bytes_of(reader: &JournalReader, trial: &TrialRange) -> u64 {
+    let segments = reader.segments();
+    let ends_before = |index: usize| segments.get(index + 1).is_some_and(|next| next.open.first_seq <= trial.first_seq);
+    let of_trial = segments
+        .iter()
+        .enumerate()
+        .filter(|(index, segment)| !ends_before(*index) && segment.open.first_seq <= trial.last_seq);
+    of_trial.map(|(_, segment)| segment.bytes).sum()
 }
 
 fn goes_on(reader: &JournalReader, present: Present<'_>) -> bool {
@@ -166,6 +182,7 @@ fn resumed(reader: &JournalReader, survey: &Survey, open_trial: Option<TrialRang
         },
         devices,
         last_host_ns: survey.last_host_ns,
+        open_bytes: open_trial.as_ref().map_or(0, |trial| bytes_of(reader, trial)),
         open_trial,
     }
 }

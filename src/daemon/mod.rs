@@ -12,8 +12,10 @@ mod found;
 mod machine;
 mod outgoing;
 mod ports;
+mod room;
 mod run;
 mod sealing;
+mod space;
 mod trials;
 mod words;
 

@@ -23,6 +23,7 @@ use super::found::{self, Found, Present, Resumed};
 use super::machine::{identifier, kernel_boot_id, random_part};
 use super::outgoing::Outgoing;
 use super::ports::FirstOpenings;
+use super::room::RoomWatch;
 use super::sealing::{SealCommand, Sealer};
 use super::trials::TrialBook;
 use super::words;
@@ -38,6 +39,10 @@ pub struct Options {
     pub wait_for_ports: bool,
     /// For all journal segments together, unsealed trials apart.
     pub budget_bytes: u64,
+    /// Room is kept on the disk for a hold of this long.
+    pub longest_hold: Duration,
+    /// Keep the journal of every trial until a person lets it go.
+    pub keep_journal: bool,
     /// How long the end waits for sealing.
     pub seal_patience: Duration,
     /// The program that seals, called with `seal-child`; this one, unless a test says otherwise.
@@ -86,7 +91,10 @@ pub fn run(
     let ends = Ends { links: journal_end, orders: orders_end, reports: reports_in };
     let recorder =
         Recorder::spawn(journal, Arc::clone(&disk), ends, Arc::clone(&clock), Clocks::read).map_err(machine)?;
-    let seal_command = SealCommand::new(options.program.clone(), options.dir.clone());
+    let seal_command = SealCommand {
+        keep_journal: options.keep_journal,
+        ..SealCommand::new(options.program.clone(), options.dir.clone())
+    };
     let (sealer, sealed) = Sealer::spawn(seal_command).map_err(machine)?;
     let sinks = Sinks { journal: to_journal, live: to_live };
     let seed = random_part().map_err(|source| DaemonError::Machine { what: "random numbers", source })?;
@@ -108,6 +116,8 @@ pub fn run(
         device_names: rig.devices.iter().map(|device| device.name.clone()).collect(),
         dir: options.dir.clone(),
         seal_patience: options.seal_patience,
+        room: RoomWatch::new(options.longest_hold, declared_bytes_per_s(rig)),
+        held_back_from_ns: None,
         openings: FirstOpenings::of(rig),
         wait_for_ports: options.wait_for_ports,
     };
@@ -126,6 +136,11 @@ fn look_for_ports(rig: &Rig) -> Result<(), DaemonError> {
             .map_err(|source| DaemonError::Port { device: device.name.clone(), source })?;
     }
     Ok(())
+}
+
+/// Ten bits a byte on the wire.
+fn declared_bytes_per_s(rig: &Rig) -> f64 {
+    rig.devices.iter().map(|device| f64::from(device.baud) / 10.0).sum()
 }
 
 fn ports(rig: &Rig) -> Vec<PortSpec> {
@@ -161,7 +176,7 @@ fn begin_journal(
         rig_text: rig.text.clone(),
         devices,
     };
-    let settings = Settings { budget_bytes: options.budget_bytes, ..Settings::default() };
+    let settings = settings(options.budget_bytes);
     let dir = archive::journal_dir(&options.dir);
     let mut journal = Journal::begin(Arc::clone(disk), &dir, origin, start, settings, now_ns)?;
     for (segment, end_seq) in &found.segments {
@@ -171,6 +186,13 @@ fn begin_journal(
         journal.forget(path.clone());
     }
     Ok(journal)
+}
+
+/// Segments are small against the budget, so that letting go of the oldest gives back a part of it only.
+fn settings(budget_bytes: u64) -> Settings {
+    let usual = Settings::default();
+    let segment_bytes = (budget_bytes / 16).clamp(usual.reserve_bytes, usual.segment_bytes);
+    Settings { budget_bytes, segment_bytes, ..usual }
 }
 
 fn devices_unknown(rig: &Rig) -> Vec<DeviceAtOpen> {
@@ -206,7 +228,7 @@ impl Conductor {
         let text = match &resumed.open_trial {
             Some(trial) => {
                 self.live.resume_trial();
-                self.book.resume(trial.trial_id.clone(), trial.first_seq, trial.opened_host_ns);
+                self.book.resume(trial.trial_id.clone(), trial.first_seq, trial.opened_host_ns, resumed.open_bytes);
                 self.outgoing.push(Order::ResumeTrial { trial_id: trial.trial_id.clone(), first_seq: trial.first_seq });
                 format!("trial {} was under way and goes on; nothing was recorded for {away_s:.3} s", trial.trial_id)
             }

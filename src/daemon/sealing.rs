@@ -33,6 +33,8 @@ pub struct Sealer {
 pub struct SealCommand {
     pub program: PathBuf,
     pub archive_dir: PathBuf,
+    /// Keep the journal of every trial, not only where the outcome asks for it.
+    pub keep_journal: bool,
     /// What failed is tried again after this long, then after ever twice as long.
     pub retry_first: Duration,
 }
@@ -42,7 +44,7 @@ const RETRY_LAST: Duration = Duration::from_secs(600);
 
 impl SealCommand {
     pub fn new(program: PathBuf, archive_dir: PathBuf) -> Self {
-        Self { program, archive_dir, retry_first: RETRY_FIRST }
+        Self { program, archive_dir, keep_journal: false, retry_first: RETRY_FIRST }
     }
 }
 
@@ -120,6 +122,7 @@ fn start(command: &SealCommand, task: &Unsealed) -> io::Result<Child> {
     let arg = |path: &Path| path.as_os_str().to_owned();
     Command::new(&command.program)
         .arg("seal-child")
+        .args(command.keep_journal.then_some("--keep-journal"))
         .args([arg(&command.archive_dir), task.journal_id.clone().into(), task.trial_id.clone().into()])
         .process_group(0)
         .stdin(Stdio::null())
@@ -163,7 +166,7 @@ mod tests {
             SealCommand { retry_first: Duration::from_millis(1), ..SealCommand::new(program, "trials".into()) };
         let (sealer, reports) = Sealer::spawn(command).unwrap();
         let trial_id = "000001-7f3a9c".to_owned();
-        sealer.seal(Unsealed { journal_id: "000001-abc123".to_owned(), trial_id, first_seq: 1 });
+        sealer.seal(Unsealed { journal_id: "000001-abc123".to_owned(), trial_id, first_seq: 1, n_bytes: 0 });
         (0..2).map(|_| reports.recv_timeout(Duration::from_secs(30)).unwrap().result).collect()
     }
 

@@ -13,8 +13,6 @@ use super::sealing::SealReport;
 const EXPOSURE_NS_MAX: i64 = 250_000_000;
 /// Share of the recorder's queue above which it is told.
 const QUEUE_HIGH: f64 = 0.5;
-/// Free room below which it is told: a quarter of an hour of a demanding rig.
-const FREE_BYTES_LOW: u64 = 256 << 20;
 
 pub fn event(host_ns: i64, kind: &str, source: &str, text: String) -> Event {
     Event { host_ns, kind: kind.to_owned(), source: source.to_owned(), person: None, text }
@@ -55,11 +53,16 @@ pub fn trouble(now: &RecorderNow) -> Option<String> {
         let seconds = exposure_ns as f64 * 1e-9;
         return Some(format!("the disk took {seconds:.2} s to make data durable (0.1 s is wanted)"));
     }
-    if health.free_bytes > 0 && health.free_bytes < FREE_BYTES_LOW {
-        let mib = health.free_bytes >> 20;
-        return Some(format!("the disk has {mib} MiB free: make room before the next trial"));
-    }
     None
+}
+
+/// Why a trial ends when nothing more can be recorded.
+pub fn disk_full(slack: bool) -> &'static str {
+    if slack {
+        "the disk takes no more, cords slack"
+    } else {
+        "the disk takes no more; the cords are NOT known to be slack: treat them as loaded, make room"
+    }
 }
 
 /// Passes on what sealing says until it is done with everything or `deadline` has come.

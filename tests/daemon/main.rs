@@ -8,5 +8,6 @@ mod crash;
 #[path = "../support/daemon_process.rs"]
 mod daemon_process;
 mod refusals;
+mod small_disk;
 mod stage;
 mod whole_trial;

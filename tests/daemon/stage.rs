@@ -73,12 +73,21 @@ impl Stage {
 
     /// Starts the rig with its ports below `dir`, and waits until they are there.
     pub fn play(&self, dir: &str) -> Playing {
+        self.play_this(performance(), dir)
+    }
+
+    /// The same with the slow phases at another pace; 1 is that of a crew.
+    pub fn play_at_pace(&self, pace: f64, dir: &str) -> Playing {
+        let performance = prepare(&Options { pace, ..Options::default() }).expect("the nominal scenario");
+        self.play_this(Box::leak(Box::new(performance)), dir)
+    }
+
+    fn play_this(&self, performance: &'static Performance, dir: &str) -> Playing {
         let stop = Arc::new(AtomicBool::new(false));
         let settings = PtySettings { dir: self.path(dir), wait_for_start: PATIENCE, stop: Arc::clone(&stop) };
         let ready = settings.dir.join("ports").join(DEVICES[1]);
-        performance();
         let thread = std::thread::spawn(move || {
-            play(performance(), &settings).expect("the rig plays");
+            play(performance, &settings).expect("the rig plays");
         });
         wait_until("the rig's ports", || ready.exists());
         Playing { stop, thread }
@@ -115,13 +124,20 @@ impl Stage {
 
     /// The only trial file there is.
     pub fn trial(&self) -> TrialFile {
+        let mut trials = self.trials();
+        assert_eq!(trials.len(), 1, "one trial file: {trials:?}");
+        trials.remove(0)
+    }
+
+    /// All trial files there are; each opens.
+    pub fn trials(&self) -> Vec<TrialFile> {
         let listed = std::fs::read_dir(self.path("trials")).expect("the archive");
         let mut files: Vec<PathBuf> = listed
             .map(|entry| entry.expect("an entry").path())
             .filter(|path| path.extension().is_some_and(|extension| extension == "h5"))
             .collect();
-        assert_eq!(files.len(), 1, "one trial file: {files:?}");
-        TrialFile::open(&files.remove(0)).expect("the trial file opens")
+        files.sort();
+        files.iter().map(|path| TrialFile::open(path).expect("the trial file opens")).collect()
     }
 
     pub fn run(&self, args: &[&str]) -> Output {

@@ -58,6 +58,8 @@ fn pit() -> Pit {
         device_names: rig.devices.iter().map(|device| device.name.clone()).collect(),
         dir: dir.path().to_owned(),
         seal_patience: Duration::from_secs(5),
+        room: RoomWatch::new(Duration::from_secs(60), 1e5),
+        held_back_from_ns: None,
         openings: FirstOpenings::of(&rig),
         wait_for_ports: false,
     };

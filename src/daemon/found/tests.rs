@@ -61,7 +61,9 @@ fn after_a_restart_of_the_machine_or_with_another_rig_file_the_trial_is_sealed_a
         let found = found(&left_open(), present, false);
         assert_eq!(found.resumed, None);
         assert_eq!(found.next_journal_number, 8);
-        let unsealed = Unsealed { journal_id: "000007-abc123".into(), trial_id: TRIAL.into(), first_seq: 1 };
+        let n_bytes = found.unsealed[0].n_bytes;
+        assert!(n_bytes > 100, "{n_bytes} bytes of journal");
+        let unsealed = Unsealed { journal_id: "000007-abc123".into(), trial_id: TRIAL.into(), first_seq: 1, n_bytes };
         assert_eq!(found.unsealed, [unsealed]);
         assert_eq!(found.unfinished.as_deref(), Some(TRIAL));
         assert_eq!(found.segments, [], "its segments stay until it is sealed");

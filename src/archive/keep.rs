@@ -1,0 +1,148 @@
+//! Journals that are kept for a person: the segments a trial needs, as hard links in a directory of the trial's own, so
+//! that they stay whatever the recorder lets go of, and cost nothing while it still has them.
+//!
+//! Kept is the journal of every trial that did not end as a launch or a let-down (and of every trial where that was
+//! asked for), from before its file is published until a person lets it go. Reads and links only: no byte of a journal
+//! is written.
+
+use std::fs::{self, File};
+use std::io;
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+
+use crate::journal::{Disk, JournalReader, SegmentInfo, TrialRange, journals};
+use crate::reading::Outcome;
+
+use super::error::SealError;
+use super::recover::journal_dir;
+use super::seal::trial_path;
+
+/// Which journals stay after their trial has its file.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+pub enum Keep {
+    /// Those of trials that ended in any other way than a launch or a let-down.
+    #[default]
+    Abnormal,
+    Every,
+}
+
+/// A journal that waits for a person.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Kept {
+    pub trial_id: String,
+    pub dir: PathBuf,
+    pub n_bytes: u64,
+}
+
+/// Why a kept journal was not let go.
+#[derive(Debug, thiserror::Error)]
+#[non_exhaustive]
+pub enum ReleaseError {
+    #[error("no journal of a trial {trial_id} is kept in {dir}; `tautrail recover` lists those that are", dir = dir.display())]
+    NotKept { trial_id: String, dir: PathBuf },
+    #[error("trial {trial_id} has no file in {dir}: its kept journal is all there is of it; seal it first with `tautrail recover`", dir = dir.display())]
+    NotSealed { trial_id: String, dir: PathBuf },
+    #[error(transparent)]
+    TrialId(SealError),
+    #[error("cannot let go of {path}: {source}", path = path.display())]
+    Io { path: PathBuf, source: io::Error },
+}
+
+impl Keep {
+    pub(super) fn applies_to(self, outcome: &str) -> bool {
+        let ordinary = [Outcome::Launched, Outcome::LetDown].iter().any(|known| known.word() == outcome);
+        self == Self::Every || !ordinary
+    }
+}
+
+fn kept_dir(dir: &Path) -> PathBuf {
+    journal_dir(dir).join("kept")
+}
+
+/// Links the segments that the range needs. Doing it again changes nothing.
+pub(super) fn keep(reader: &JournalReader, range: &TrialRange, dir: &Path) -> Result<(), SealError> {
+    trial_path(dir, &range.trial_id)?; // refuses an id that could lead elsewhere
+    let kept = kept_dir(dir).join(&range.trial_id);
+    let at = |doing, path: &Path| {
+        let path = path.to_owned();
+        move |source| SealError::Io { doing, path, source }
+    };
+    fs::create_dir_all(&kept).map_err(at("make", &kept))?;
+    for segment in needed(reader.segments(), range) {
+        let Some(name) = segment.path.file_name() else { continue };
+        link_or_copy(&segment.path, &kept.join(name)).map_err(at("keep", &segment.path))?;
+    }
+    for path in [kept.as_path(), &kept_dir(dir), &journal_dir(dir)] {
+        File::open(path).and_then(|dir| dir.sync_all()).map_err(at("sync", path))?;
+    }
+    Ok(())
+}
+
+/// From one segment before the range's start, for the decoders' lead-in, to its end.
+pub(super) fn needed<'s>(segments: &'s [SegmentInfo], range: &TrialRange) -> &'s [SegmentInfo] {
+    let first = segments.iter().rposition(|segment| segment.open.first_seq <= range.first_seq).unwrap_or(0);
+    let end = segments.partition_point(|segment| segment.open.first_seq <= range.last_seq);
+    &segments[first.saturating_sub(1).min(end)..end]
+}
+
+fn link_or_copy(from: &Path, to: &Path) -> io::Result<()> {
+    match fs::hard_link(from, to) {
+        Ok(()) => Ok(()),
+        Err(error) if error.kind() == io::ErrorKind::AlreadyExists => Ok(()),
+        // Some file systems know no hard links.
+        Err(_) => {
+            fs::copy(from, to)?;
+            File::open(to)?.sync_all()
+        }
+    }
+}
+
+/// The journals kept in the archive `dir`, oldest trial first.
+///
+/// # Errors
+/// The disk's; no journal directory is no error.
+pub fn kept(dir: &Path) -> io::Result<Vec<Kept>> {
+    let listed = match fs::read_dir(kept_dir(dir)) {
+        Ok(listed) => listed,
+        Err(error) if error.kind() == io::ErrorKind::NotFound => return Ok(Vec::new()),
+        Err(error) => return Err(error),
+    };
+    let mut kept = Vec::new();
+    for entry in listed {
+        let entry = entry?;
+        let mut n_bytes = 0;
+        for file in fs::read_dir(entry.path())? {
+            n_bytes += file?.metadata()?.len();
+        }
+        let trial_id = entry.file_name().to_string_lossy().into_owned();
+        kept.push(Kept { trial_id, dir: entry.path(), n_bytes });
+    }
+    kept.sort_by(|a, b| a.trial_id.cmp(&b.trial_id));
+    Ok(kept)
+}
+
+/// Lets go of a trial's kept journal: what of it the recorder does not have any more is gone for good. Gives its bytes.
+///
+/// # Errors
+/// [`ReleaseError`]; a trial without a file is refused.
+pub fn release(dir: &Path, trial_id: &str) -> Result<u64, ReleaseError> {
+    let file = trial_path(dir, trial_id).map_err(ReleaseError::TrialId)?;
+    let io = |source| ReleaseError::Io { path: kept_dir(dir), source };
+    let found = kept(dir).map_err(io)?.into_iter().find(|kept| kept.trial_id == trial_id);
+    let (trial_id, dir) = (trial_id.to_owned(), dir.to_owned());
+    let Some(found) = found else { return Err(ReleaseError::NotKept { trial_id, dir }) };
+    if !file.exists() {
+        return Err(ReleaseError::NotSealed { trial_id, dir });
+    }
+    fs::remove_dir_all(&found.dir).map_err(|source| ReleaseError::Io { path: found.dir.clone(), source })?;
+    Ok(found.n_bytes)
+}
+
+/// The kept journals as readers, each with the id of its trial; one that does not open is left out.
+pub(super) fn readers(dir: &Path, disk: &Arc<dyn Disk>) -> Vec<(String, JournalReader)> {
+    let of = |kept: Kept| {
+        let id = journals(&**disk, &kept.dir).ok()?.into_iter().next()?;
+        Some((kept.trial_id, JournalReader::open(Arc::clone(disk), &kept.dir, &id).ok()?))
+    };
+    kept(dir).unwrap_or_default().into_iter().filter_map(of).collect()
+}

@@ -1,0 +1,72 @@
+//! What the room on the disk means for trials: warned of early, none begun without room, and the one under way ended
+//! cleanly when the disk takes nothing more.
+
+use crate::journal::RecorderNow;
+use crate::live::CordsNow;
+
+use super::conductor::Conductor;
+use super::room::Room;
+use super::words;
+
+impl Conductor {
+    /// Opens a trial because tension rises, or says why not and keeps it in mind.
+    pub(super) fn open_by_tension(&mut self, host_ns: i64, from_host_ns: i64) {
+        match self.room_now(&self.recorder.now()) {
+            Room::TooLittle(why) => {
+                self.held_back_from_ns = Some(from_host_ns);
+                self.complain(&format!(
+                    "tension rises and NO TRIAL IS OPENED: {why}; recording goes on, and once there is room the trial \
+                     opens and reaches back a minute"
+                ));
+            }
+            Room::Enough | Room::Low(_) => drop(self.open_trial(host_ns, from_host_ns, "tension rises", "")),
+        }
+    }
+
+    /// Free room against what is needed; unknown room counts as enough, the journal has its own alarm.
+    pub(super) fn room_now(&self, recorder: &RecorderNow) -> Room {
+        let health = &recorder.health;
+        if health.free_bytes == 0 && health.trouble.is_none() {
+            return Room::Enough; // not asked yet
+        }
+        self.room.judge(health.free_bytes, self.book.waiting(), self.book.open_bytes(self.room.n_bytes()))
+    }
+
+    /// Looks at the disk, acts on it, and gives the sentence to raise, if any.
+    pub(super) fn watch_room(&mut self, recorder: &RecorderNow) -> Option<String> {
+        let now_ns = self.clock.monotonic_ns();
+        self.room.look(now_ns);
+        let room = self.room_now(recorder);
+        if recorder.refusing {
+            self.end_for_want_of_room(now_ns);
+        } else if !matches!(room, Room::TooLittle(_)) {
+            self.open_held_back(now_ns);
+        }
+        match room {
+            Room::Enough => None,
+            Room::Low(sentence) | Room::TooLittle(sentence) => Some(sentence),
+        }
+    }
+
+    /// The closing record has room of its own in the segment: what was recorded becomes a whole trial.
+    fn end_for_want_of_room(&mut self, now_ns: i64) {
+        let Some(trial_id) = self.book.open().map(|open| open.trial_id.clone()) else { return };
+        let slack = self.live.cords() == CordsNow::Slack;
+        self.close_trial(now_ns, words::disk_full(slack), "");
+        if !slack {
+            self.unfinished = Some(trial_id);
+            self.held_back_from_ns = Some(now_ns);
+        }
+    }
+
+    fn open_held_back(&mut self, now_ns: i64) {
+        if !self.live.trial_is_open() {
+            self.held_back_from_ns = None; // over meanwhile
+        }
+        if self.book.open().is_none()
+            && let Some(from_host_ns) = self.held_back_from_ns.take()
+        {
+            self.open_trial(now_ns, from_host_ns, "there is room on the disk again", "");
+        }
+    }
+}
