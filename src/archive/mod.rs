@@ -6,6 +6,7 @@
 mod derive;
 mod error;
 mod keep;
+mod kept_samples;
 mod list;
 mod player;
 mod publish;

@@ -20,7 +20,9 @@ pub(super) struct DevicePass {
     handle: RawDevice,
     layout: u16,
     clock: ClockSamples,
+    /// Edges that become events; as many as there may be events.
     edges: Vec<Edge>,
+    n_more_edges: u64,
     pub(super) n_samples: u64,
     pub(super) n_missing: u64,
 }
@@ -137,8 +139,9 @@ impl<'w> RawPass<'w> {
         for device in open.devices.iter().skip(self.devices.len()) {
             let handle = self.writer.add_device(&device.name)?;
             let (name, clock) = (device.name.clone(), ClockSamples::default());
-            let (layout, edges, n_samples, n_missing) = (0, Vec::new(), 0, 0);
-            self.devices.push(DevicePass { name, handle, layout, clock, edges, n_samples, n_missing });
+            let (layout, edges, n_more_edges, n_samples, n_missing) = (0, Vec::new(), 0, 0, 0);
+            let device = DevicePass { name, handle, layout, clock, edges, n_more_edges, n_samples, n_missing };
+            self.devices.push(device);
         }
         if self.rig_text.as_ref() != Some(&open.rig_text) {
             if self.rig_text.is_some() {
@@ -188,7 +191,11 @@ impl<'w> RawPass<'w> {
                 writer.append_gap(handle, &gap)?;
             }
             Captured::Edge(edge) => {
-                device.edges.push(edge);
+                if device.edges.len() < EVENTS_MAX {
+                    device.edges.push(edge);
+                } else {
+                    device.n_more_edges += 1;
+                }
                 writer.append_edge(handle, &edge)?;
             }
             Captured::Status(status) => writer.append_status(handle, &status)?,
@@ -209,6 +216,11 @@ impl<'w> RawPass<'w> {
                 let time_s = edge_time_s(edge, &pieces, self.zero_host_ns);
                 let direction = if edge.rising { "rising" } else { "falling" };
                 self.events.add(time_s, "edge", &device.name, None, format!("input {} {direction}", edge.input));
+            }
+            if let Some(last) = device.edges.last().filter(|_| device.n_more_edges > 0) {
+                let time_s = edge_time_s(last, &pieces, self.zero_host_ns);
+                let text = format!("{} more edges are in the raw data only", device.n_more_edges);
+                self.events.add(time_s, "edge", &device.name, None, text);
             }
             clocks.push(pieces);
         }

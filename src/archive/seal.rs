@@ -240,6 +240,11 @@ fn read(
     for_reading: ForReading,
     events: &mut Events,
 ) -> Result<ResultSet, SealError> {
+    if let Some(from_s) = for_reading.whole_from_s {
+        let text =
+            format!("the trial is long: before {from_s:.1} s the reading sees means over 10 ms, then every sample");
+        events.add(from_s, "seal", "seal", None, text);
+    }
     if let Some(from_s) = for_reading.from_s {
         let text = format!("the trial is too long to be read whole: the reading sees it from {from_s:.1} s on");
         events.add(from_s, "seal", "seal", None, text);

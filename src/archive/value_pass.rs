@@ -14,21 +14,23 @@ use crate::rig::{Channel, Rig};
 use crate::trial::{OpenSignal, TrialWriter};
 
 use super::error::SealError;
+use super::kept_samples::KeptSamples;
 use super::player::Told;
 use super::raw_pass::{DevicePass, Events, seconds_between};
 
 /// Samples whose ticks put them further from their arrival stay raw: one such block would stop the axis for good.
 const BELIEVED_WITHIN_S: f64 = 60.0;
 
-/// Samples handed to the reading, all signals together (16 bytes each): ten minutes of four channels at 10 kHz.
-/// The latest are kept: the launch is at a trial's end.
-pub(super) const KEPT_SAMPLES_MAX: usize = 24_000_000;
+/// Samples handed to the reading whole, all signals together (16 bytes each): the last 105 s of four channels at 10 kHz.
+/// Of what comes before, the reading sees means over 10 ms.
+pub(super) const KEPT_SAMPLES_MAX: usize = 1 << 22;
+/// Means handed to the reading, all signals together: five hours of four channels.
+const MEANS_MAX: usize = 1 << 23;
 
 struct SignalPass {
     channel: Channel,
     open: Option<OpenSignal>,
-    kept: Option<Signal>,
-    n_dropped: u64,
+    kept: Option<KeptSamples>,
     last_time_s: f64,
     /// Samples without a value, by reason.
     refused: BTreeMap<String, u64>,
@@ -67,6 +69,8 @@ pub(super) struct ValuePass<'a> {
 #[derive(Debug, Default)]
 pub(super) struct ForReading {
     pub(super) signals: Vec<Signal>,
+    /// Before this the reading sees means over 10 ms, from here on every sample.
+    pub(super) whole_from_s: Option<f64>,
     /// The reading sees the trial from here on, where it was too long to be held whole.
     pub(super) from_s: Option<f64>,
 }
@@ -143,18 +147,21 @@ impl<'a> ValuePass<'a> {
         Ok(())
     }
 
-    /// Keeps what the reading will see within its bound: a quarter of it goes at once, from every signal alike.
+    /// Keeps what the reading will see within its bound: a quarter of it is averaged at once, from every signal alike.
     fn drop_oldest(&mut self) {
         if self.n_kept <= self.kept_max {
             return;
         }
-        let kept =
-            |pass: &'_ SignalPass| pass.kept.as_ref().and_then(|s| Some((*s.time_s.first()?, *s.time_s.last()?)));
+        let kept = |pass: &'_ SignalPass| pass.kept.as_ref().and_then(KeptSamples::span_s);
         let spans = self.signals.iter().filter_map(kept);
         let Some((first_s, last_s)) = spans.reduce(|a, b| (a.0.min(b.0), a.1.max(b.1))) else { return };
         let from_s = first_s + 0.25 * (last_s - first_s);
-        for signal in &mut self.signals {
-            self.n_kept -= signal.drop_before(from_s);
+        for kept in self.signals.iter_mut().filter_map(|pass| pass.kept.as_mut()) {
+            self.n_kept -= kept.coarsen_before(from_s);
+        }
+        let kept = self.signals.iter().filter_map(|pass| pass.kept.as_ref());
+        if kept.map(KeptSamples::n_coarse).sum::<usize>() > MEANS_MAX {
+            self.signals.iter_mut().filter_map(|pass| pass.kept.as_mut()).for_each(KeptSamples::cut_coarse);
         }
     }
 
@@ -167,11 +174,11 @@ impl<'a> ValuePass<'a> {
                 events.add(seconds_between(self.zero_host_ns, pass.refused_host_ns), "seal", "seal", None, text);
             }
             let Some(kept) = pass.kept else { continue };
-            if pass.n_dropped > 0 {
-                let first_s = kept.time_s.first().copied().unwrap_or(0.0);
-                for_reading.from_s = Some(for_reading.from_s.map_or(first_s, |from_s| from_s.max(first_s)));
-            }
-            for_reading.signals.push(kept);
+            let (signal, whole_from_s, from_s) = kept.finish();
+            let later = |a: Option<f64>, b: Option<f64>| a.into_iter().chain(b).reduce(f64::max);
+            for_reading.whole_from_s = later(for_reading.whole_from_s, whole_from_s);
+            for_reading.from_s = later(for_reading.from_s, from_s);
+            for_reading.signals.push(signal);
         }
         for_reading
     }
@@ -181,7 +188,7 @@ impl SignalPass {
     fn new(channel: Channel) -> Self {
         let refused = BTreeMap::new();
         let (open, kept) = (None, None);
-        Self { channel, open, kept, n_dropped: 0, last_time_s: f64::NEG_INFINITY, refused, refused_host_ns: 0 }
+        Self { channel, open, kept, last_time_s: f64::NEG_INFINITY, refused, refused_host_ns: 0 }
     }
 
     fn refuse(&mut self, reason: String, n_samples: u64, host_ns: i64) {
@@ -243,22 +250,10 @@ impl SignalPass {
             Some(open) => writer.append_signal(open, &part.time_s, &part.value)?,
         }
         match &mut self.kept {
-            None => self.kept = Some(part),
-            Some(kept) => {
-                kept.time_s.extend_from_slice(&part.time_s);
-                kept.value.extend_from_slice(&part.value);
-            }
+            None => self.kept = Some(KeptSamples::new(part)),
+            Some(kept) => kept.extend(&part),
         }
         Ok(n_samples)
-    }
-
-    fn drop_before(&mut self, from_s: f64) -> usize {
-        let Some(kept) = &mut self.kept else { return 0 };
-        let n = kept.time_s.partition_point(|time_s| *time_s < from_s);
-        kept.time_s.drain(..n);
-        kept.value.drain(..n);
-        self.n_dropped += n as u64;
-        n
     }
 }
 

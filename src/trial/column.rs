@@ -1,7 +1,8 @@
 //! One growing 1-D dataset: collects a whole chunk before it touches the library, and digests what it wrote.
 //!
-//! Filters: shuffle, deflate 1, fletcher32. A chunk stays at or under 256 KiB, so that readers before HDF5 2.0 (1 MiB
-//! chunk cache) read it at full speed. Memory: one chunk of buffer and a 1 MiB cache a column.
+//! Filters: shuffle, deflate 1, fletcher32, applied by [`ChunkWriter`]. A chunk stays at or under 256 KiB, so that readers before HDF5 2.0 (1 MiB
+//! chunk cache) read it at full speed. Memory: a few chunks of buffer a column.
+//! Elements are stored as they lie in memory, which is little-endian wherever this is built.
 //!
 //! A dataset is closed only after a flush that worked. Closing writes what the cache still holds and tells nobody when
 //! that fails; and once it failed, the library (2.2) crashes in a later close. So after any error the handle is left
@@ -14,6 +15,7 @@ use hdf5::{Dataset, Group, H5Type, Hyperslab};
 use sha2::{Digest, Sha256};
 
 use super::attribute::{expect_type, full_name, put_text, stored_text};
+use super::chunk::ChunkWriter;
 use super::digest::DatasetDigest;
 use super::error::{Doing, TrialError};
 
@@ -90,6 +92,8 @@ impl Cell for String {
 
 /// A growing dataset of `T`.
 pub(super) struct Column<T: Cell> {
+    /// `None` for texts, which the library stores on its heap.
+    chunks: Option<ChunkWriter>,
     dataset: ManuallyDrop<Dataset>,
     waiting: Vec<T::Stored>,
     n_written: usize,
@@ -102,7 +106,8 @@ impl<T: Cell> Column<T> {
     pub(super) fn create(group: &Group, name: &str, unit: &str, chunk: usize) -> Result<Self, TrialError> {
         let mut builder = group.new_dataset::<T::Stored>().obj_track_times(false).chunk(chunk);
         builder = builder.chunk_cache(CACHE_SLOTS, CACHE_BYTES, 0.75);
-        if !matches!(T::Stored::type_descriptor(), TypeDescriptor::VarLenUnicode) {
+        let is_number = !matches!(T::Stored::type_descriptor(), TypeDescriptor::VarLenUnicode);
+        if is_number {
             builder = builder.shuffle().deflate(DEFLATE_LEVEL).fletcher32();
         }
         let dataset = builder.shape(0..).create(name).doing("creating dataset", full_name(group, name))?;
@@ -110,7 +115,8 @@ impl<T: Cell> Column<T> {
             put_text(&dataset, "units", unit)?;
         }
         let dataset = ManuallyDrop::new(dataset);
-        Ok(Self { dataset, waiting: Vec::new(), n_written: 0, chunk, values: Sha256::new(), bytes: Vec::new() })
+        let chunks = is_number.then(|| ChunkWriter::new(DEFLATE_LEVEL));
+        Ok(Self { chunks, dataset, waiting: Vec::new(), n_written: 0, chunk, values: Sha256::new(), bytes: Vec::new() })
     }
 
     pub(super) fn dataset(&self) -> &Dataset {
@@ -137,19 +143,35 @@ impl<T: Cell> Column<T> {
         Ok(())
     }
 
+    /// Writes the next chunk, whole but for the last one of a dataset.
     fn write(&mut self, n: usize) -> Result<(), TrialError> {
-        let Self { dataset, waiting, n_written, .. } = self;
-        let append = || {
-            dataset.resize(*n_written + n)?;
-            dataset.write_slice(&waiting[..n], Hyperslab::from(*n_written..*n_written + n))
-        };
-        append().doing("appending to", dataset.name())?;
-        self.bytes.clear();
-        self.waiting[..n].iter().for_each(|value| T::put_le(value, &mut self.bytes));
-        self.values.update(&self.bytes);
+        let Self { dataset, waiting, n_written, bytes, .. } = self;
+        bytes.clear();
+        waiting[..n].iter().for_each(|value| T::put_le(value, bytes));
+        self.values.update(&*bytes);
+        dataset.resize(*n_written + n).doing("extending", dataset.name())?;
+        if let Some(chunks) = &mut self.chunks {
+            let width = size_of::<T::Stored>();
+            bytes.resize(self.chunk * width, 0); // a chunk is stored whole
+            chunks.write(dataset, *n_written, bytes, width)?;
+        } else {
+            let texts = dataset.write_slice(&waiting[..n], Hyperslab::from(*n_written..*n_written + n));
+            texts.doing("appending to", dataset.name())?;
+        }
         self.waiting.drain(..n);
         self.n_written += n;
         Ok(())
+    }
+
+    /// What was appended between two indices.
+    pub(super) fn read_back(&self, from: usize, to: usize) -> Result<Vec<T>, TrialError> {
+        let (first, last) = (from.min(self.n_written), to.min(self.n_written));
+        let stored = self.dataset.read_slice_1d::<T::Stored, _>(Hyperslab::from(first..last));
+        let mut values: Vec<T> =
+            stored.doing("reading", self.dataset.name())?.to_vec().into_iter().map(T::load).collect();
+        let waiting = from.saturating_sub(self.n_written)..to.saturating_sub(self.n_written).min(self.waiting.len());
+        values.extend(self.waiting[waiting].iter().cloned().map(T::load));
+        Ok(values)
     }
 
     /// Writes what waits and gives the digest under `name` (its path within the digested group).

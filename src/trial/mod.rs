@@ -1,6 +1,7 @@
 //! The only room that knows HDF5: the trial file, its schema (FORMAT.md), writing and reading.
 
 mod attribute;
+mod chunk;
 mod column;
 mod content;
 mod description;
@@ -15,6 +16,7 @@ mod results_writer;
 mod scale;
 mod schema;
 mod signal_writer;
+mod signals_writer;
 mod table;
 mod writer;
 
@@ -23,4 +25,5 @@ pub use digest::text_sha256;
 pub use error::TrialError;
 pub use raw_reader::{RawDigest, whole_raw_digest};
 pub use reader::TrialFile;
-pub use writer::{OpenSignal, RawDevice, TrialWriter};
+pub use signals_writer::OpenSignal;
+pub use writer::{RawDevice, TrialWriter};

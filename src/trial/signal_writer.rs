@@ -1,17 +1,16 @@
-//! `/signals/<name>`: NXdata groups, each with a value, its own time axis and what a plot needs to know.
+//! `/signals/<name>`: NXdata groups, each with a value and what a plot needs to know; the axis comes from
+//! [`super::signals_writer`].
 
-use hdf5::Group;
+use hdf5::{Dataset, Group};
 
 use super::attribute::{new_group, put_number, put_text, put_texts};
 use super::column::{Column, SAMPLES_PER_CHUNK};
 use super::content::DerivedSignal;
 use super::error::TrialError;
-use super::scale;
 use crate::calibration::Signal;
 
 pub(super) struct SignalWriter {
     group: Group,
-    time_s: Column<f64>,
     value: Column<f64>,
     uncertainty: Option<Column<f64>>,
 }
@@ -38,16 +37,12 @@ impl SignalWriter {
         Ok(writer)
     }
 
-    /// Writes a derived signal whole.
-    pub(super) fn derived(signals: &Group, member: &str, signal: &DerivedSignal) -> Result<(), TrialError> {
-        let mut writer = Self::open(signals, member, &signal.name, &signal.unit, true)?;
+    /// Opens the group of a derived signal and writes all but its samples.
+    pub(super) fn derived(signals: &Group, member: &str, signal: &DerivedSignal) -> Result<Self, TrialError> {
+        let writer = Self::open(signals, member, &signal.name, &signal.unit, true)?;
         put_text(&writer.group, "origin", "derived")?;
         put_text(&writer.group, "method", &signal.method)?;
-        writer.append(&signal.time_s, &signal.value)?;
-        if let Some(uncertainty) = &mut writer.uncertainty {
-            uncertainty.extend(&signal.standard_uncertainty)?;
-        }
-        writer.finish()
+        Ok(writer)
     }
 
     fn open(signals: &Group, member: &str, name: &str, unit: &str, uncertain: bool) -> Result<Self, TrialError> {
@@ -56,30 +51,32 @@ impl SignalWriter {
         put_text(&group, "signal", "value")?;
         put_texts(&group, "axes", &["time"])?;
         put_number(&group, "time_indices", 0_i32)?;
-        let time_s = Column::create(&group, "time", "s", SAMPLES_PER_CHUNK)?;
-        put_text(time_s.dataset(), "long_name", "time since the trial's zero")?;
         let value = Column::create(&group, "value", unit, SAMPLES_PER_CHUNK)?;
         put_text(value.dataset(), "long_name", name)?;
         let uncertainty =
             uncertain.then(|| Column::create(&group, "value_errors", unit, SAMPLES_PER_CHUNK)).transpose()?;
-        Ok(Self { group, time_s, value, uncertainty })
+        Ok(Self { group, value, uncertainty })
     }
 
-    pub(super) fn append(&mut self, time_s: &[f64], value: &[f64]) -> Result<(), TrialError> {
-        if time_s.len() != value.len() {
-            let (found, expected) = (value.len(), time_s.len());
-            return Err(TrialError::Uneven { object: self.value.dataset().name(), found, expected });
-        }
-        self.time_s.extend(time_s)?;
+    pub(super) fn group(&self) -> &Group {
+        &self.group
+    }
+
+    /// What lies on the time axis.
+    pub(super) fn datasets(&self) -> impl Iterator<Item = &Dataset> {
+        std::iter::once(self.value.dataset()).chain(self.uncertainty.as_ref().map(Column::dataset))
+    }
+
+    pub(super) fn extend(&mut self, value: &[f64]) -> Result<(), TrialError> {
         self.value.extend(value)
     }
 
+    /// Standard uncertainties of a derived signal's values.
+    pub(super) fn extend_uncertainty(&mut self, standard_uncertainty: &[f64]) -> Result<(), TrialError> {
+        self.uncertainty.as_mut().map_or(Ok(()), |column| column.extend(standard_uncertainty))
+    }
+
     pub(super) fn finish(self) -> Result<(), TrialError> {
-        let (time, value) = (self.time_s.dataset().clone(), self.value.dataset().clone());
-        let errors = self.uncertainty.as_ref().map(|column| column.dataset().clone());
-        let on_axis: Vec<_> = std::iter::once(&value).chain(&errors).collect();
-        scale::attach(&time, "time", &on_axis)?;
-        self.time_s.finish("time")?;
         self.value.finish("value")?;
         if let Some(column) = self.uncertainty {
             column.finish("value_errors")?;

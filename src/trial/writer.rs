@@ -22,24 +22,18 @@ use super::error::{Doing, TrialError};
 use super::names::free_member_name;
 use super::results_writer;
 use super::schema::{ClockTable, EventTable, ExchangeTable, FORMAT_NAME, FORMAT_VERSION, HostClocksTable};
-use super::signal_writer::SignalWriter;
+use super::signals_writer::{OpenSignal, SignalsWriter};
 use super::table::Table;
 use crate::calibration::Signal;
 use crate::capture::{Counts, DeviceDescription, Edge, Gap, Rejected, Status};
-use crate::rig::Role;
 
 /// A device opened for writing.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
 pub struct RawDevice(usize);
 
-/// A measured signal opened for appending.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub struct OpenSignal(usize);
-
 struct Groups {
     raw: Group,
     clock: Group,
-    signals: Group,
     events: Group,
     rig: Group,
     result: Group,
@@ -54,8 +48,7 @@ pub struct TrialWriter {
     path: PathBuf,
     groups: Groups,
     devices: Vec<(String, DeviceWriter)>,
-    signals: Vec<(String, SignalWriter)>,
-    default_signal: Option<String>,
+    signals: SignalsWriter,
     members: BTreeMap<&'static str, Vec<String>>,
     host_clocks: HostClocksTable,
     events: EventTable,
@@ -84,13 +77,13 @@ impl TrialWriter {
         let groups = Groups {
             raw: top("raw", "NXcollection")?,
             clock: top("clock", "NXcollection")?,
-            signals: top("signals", "NXentry")?,
             events: top("events", "NXcollection")?,
             rig: top("rig", "NXcollection")?,
             result: top("result", "NXcollection")?,
             conditions: new_group(&notes, "conditions", "NXcollection")?,
             notes,
         };
+        let signals = SignalsWriter::new(top("signals", "NXentry")?);
         let host_clocks = HostClocksTable::create(&new_group(&groups.clock, "host", "NXcollection")?)?;
         let events = EventTable::create(&groups.events)?;
         Ok(Self {
@@ -98,8 +91,7 @@ impl TrialWriter {
             file,
             groups,
             devices: Vec::new(),
-            signals: Vec::new(),
-            default_signal: None,
+            signals,
             members: BTreeMap::from([("clock", vec!["host".to_owned()]), ("notes", vec!["conditions".to_owned()])]),
             host_clocks,
             events,
@@ -179,22 +171,16 @@ impl TrialWriter {
     /// Opens a measured signal with what samples `signal` already has; append the rest.
     pub fn begin_signal(&mut self, signal: &Signal) -> Result<OpenSignal, TrialError> {
         let member = self.take_member("signals", &signal.name);
-        let mut writer = SignalWriter::measured(&self.groups.signals, &member, signal)?;
-        writer.append(&signal.time_s, &signal.value)?;
-        if self.default_signal.is_none() || signal.role == Role::ReleaseLineTension {
-            self.default_signal = Some(member.clone());
-        }
-        self.signals.push((member, writer));
-        Ok(OpenSignal(self.signals.len() - 1))
+        self.signals.begin(member, signal)
     }
 
     pub fn append_signal(&mut self, signal: OpenSignal, time_s: &[f64], value: &[f64]) -> Result<(), TrialError> {
-        self.signals[signal.0].1.append(time_s, value)
+        self.signals.append(signal, time_s, value)
     }
 
     pub fn write_derived(&mut self, signal: &DerivedSignal) -> Result<(), TrialError> {
         let member = self.take_member("signals", &signal.name);
-        SignalWriter::derived(&self.groups.signals, &member, signal)
+        self.signals.derived(member, signal)
     }
 
     /// Appends an event; call in order of time.
@@ -238,14 +224,9 @@ impl TrialWriter {
             "sha256",
             &devices_digest(parts.iter().map(|(member, digest)| (member.as_str(), digest.as_str()))),
         )?;
-        for (_, signal) in self.signals {
-            signal.finish()?;
-        }
+        self.signals.finish()?;
         self.host_clocks.finish("host")?;
         self.events.finish_on_axis()?;
-        if let Some(name) = &self.default_signal {
-            put_text(&self.groups.signals, "default", name)?;
-        }
         drop(self.groups);
         self.file.flush().doing("flushing", self.path.display().to_string())?;
         ManuallyDrop::into_inner(self.file).close().doing("closing", self.path.display().to_string())

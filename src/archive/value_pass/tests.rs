@@ -127,12 +127,19 @@ fn a_long_hold_is_whole_in_the_file_and_bounded_for_the_reading() {
     let (for_reading, _, trial) = played(&blocks, vec![clock()], 10_000);
     let line = trial.signal("line").unwrap();
     assert_eq!(line.time_s.len(), 50_000);
-    let kept: usize = for_reading.signals.iter().map(|signal| signal.time_s.len()).sum();
-    assert!((5_000..=10_000).contains(&kept), "{kept}");
+    let whole_from_s = for_reading.whole_from_s.unwrap();
     for signal in &for_reading.signals {
-        assert_eq!(signal.time_s.last(), line.time_s.last(), "the latest samples are kept");
-        assert_eq!(signal.time_s.first().copied(), for_reading.from_s);
+        let n_whole = signal.time_s.iter().filter(|time_s| **time_s >= whole_from_s).count();
+        assert!((2_500..=5_000).contains(&n_whole), "{n_whole}");
+        let file = &line.time_s[line.time_s.len() - n_whole..];
+        assert_eq!(&signal.time_s[signal.time_s.len() - n_whole..], file, "the latest are whole");
+        let n_means = signal.time_s.len() - n_whole;
+        assert!(n_means.abs_diff((50_000 - n_whole) / 100) <= 20, "{n_means} means of 10 ms");
+        assert!(signal.time_s[0] < 0.011, "from the trial's beginning on");
+        assert!(signal.time_s.windows(2).all(|pair| pair[0] < pair[1]));
+        assert!(signal.value.iter().all(|value| (value - signal.value[0]).abs() < 1e-9), "means of what is level");
     }
+    assert_eq!(for_reading.from_s, None);
 }
 
 #[test]
@@ -142,7 +149,7 @@ fn counts_that_are_no_numbers_have_no_value_and_are_told_of() {
     assert_eq!(trial.signal("line").unwrap().time_s.len(), 200);
     assert_eq!(trial.signal("anchor").unwrap().time_s.len(), 300, "a neighbour's fault costs it nothing");
     assert!(texts.iter().any(|text| text.starts_with("100 samples of channel line have no value")), "{texts:?}");
-    assert_eq!(for_reading.from_s, None);
+    assert_eq!(for_reading.whole_from_s, None);
 }
 
 #[test]
