@@ -252,18 +252,30 @@ impl Picture {
             chart.draw_series([line])?;
             let above = ROW_HEIGHT * (n_rows - row) as i32;
             let rise = PathElement::new(vec![(0, 0), (0, 6 - above)], GREY.stroke_width(2));
-            let label = Text::new(mark.label.clone(), (8, 4 - above), text(HPos::Left, VPos::Top));
+            let (h_pos, dx) = if self.label_is_left_of(mark) { (HPos::Right, -8) } else { (HPos::Left, 8) };
+            let label = Text::new(mark.label.clone(), (dx, 4 - above), text(h_pos, VPos::Top));
             chart.draw_series([EmptyElement::at((mark.at, top)) + rise + label])?;
         }
         Ok(())
     }
 
+    /// Where a mark's line stands in the plot, and how wide its label is, in pixels.
+    fn mark_place(&self, mark: &Mark) -> (f64, f64) {
+        let px_per_x = Self::n_columns() as f64 / (self.x_range.1 - self.x_range.0);
+        ((mark.at - self.x_range.0) * px_per_x, LETTER_PX * mark.label.chars().count() as f64 + 24.0)
+    }
+
+    /// Whether a mark's label would run out of the picture to the right of its line.
+    fn label_is_left_of(&self, mark: &Mark) -> bool {
+        let (at, width) = self.mark_place(mark);
+        at + width > f64::from(Self::n_columns() as u32 + RIGHT as u32)
+    }
+
     /// Left and right edges of the marks' labels, in pixels of the plot.
     fn mark_spans(&self) -> Vec<(f64, f64)> {
-        let px_per_x = Self::n_columns() as f64 / (self.x_range.1 - self.x_range.0);
         let span = |mark: &Mark| {
-            let left = (mark.at - self.x_range.0) * px_per_x;
-            (left, left + LETTER_PX * mark.label.chars().count() as f64 + 24.0)
+            let (at, width) = self.mark_place(mark);
+            if self.label_is_left_of(mark) { (at - width, at) } else { (at, at + width) }
         };
         self.marks.iter().map(span).collect()
     }
