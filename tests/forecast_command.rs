@@ -96,7 +96,57 @@ fn stages_come_with_forecast_gate_and_what_to_inspect() {
         rows[0]["forecast"]["launch_speed"]["best"].as_f64() < rows[1]["forecast"]["launch_speed"]["best"].as_f64()
     );
     assert_eq!(rows[1]["inspect"][0], "cord ends");
-    let none = tautrail(&["stage", NORTH_PIER]);
+}
+
+#[test]
+fn the_build_up_goes_from_few_cords_and_a_dummy_mass_to_the_payload() {
+    let listed = tautrail(&["stage", "--json", "--draws", "100", NORTH_PIER]);
+    assert_eq!(listed.status.code(), Some(0));
+    let stages = json(&listed);
+    let rows = stages["stages"].as_array().unwrap();
+    let cords: Vec<u64> = rows.iter().filter_map(|row| row["cords"].as_u64()).collect();
+    assert_eq!(cords, [3, 5, 6]);
+    let speeds: Vec<f64> = rows.iter().filter_map(|row| row["forecast"]["launch_speed"]["best"].as_f64()).collect();
+    assert!(speeds.len() == 3 && speeds.is_sorted(), "{speeds:?}");
+}
+
+#[test]
+fn a_rig_without_stages_is_told_what_to_write() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("no-stages.toml");
+    let rig = std::fs::read_to_string(format!("{}/{NORTH_PIER}", env!("CARGO_MANIFEST_DIR"))).unwrap();
+    let (without, _) = rig.split_once("[[stage]]").unwrap();
+    std::fs::write(&path, without).unwrap();
+    let none = tautrail(&["stage", path.to_str().unwrap()]);
     assert_eq!(none.status.code(), Some(1));
-    assert!(text(&none).contains("names no stage"));
+    let shown = text(&none);
+    assert!(shown.contains("names no stage") && shown.contains("add one [[stage]] table"), "{shown}");
+}
+
+#[test]
+fn losses_still_to_be_fitted_are_flagged_in_every_output() {
+    let folder = tempfile::tempdir().unwrap();
+    let page = folder.path().join("forecast.html");
+    let shown = text(&tautrail(&["forecast", "--draws", "100", "--page", page.to_str().unwrap(), SOUTH_MOLE]));
+    assert!(shown.contains("NOT FITTED YET: constant friction"), "{shown}");
+    assert!(std::fs::read_to_string(page).unwrap().contains("NOT FITTED YET"));
+    for args in [["forecast", "--sweep", "cords=3:4:2"], ["stage", "--draws", "100"]] {
+        let shown = text(&tautrail(&[args.as_slice(), &[SOUTH_MOLE]].concat()));
+        assert!(shown.contains("NOT FITTED YET: viscous loss"), "{shown}");
+    }
+}
+
+#[test]
+fn an_uncertain_wind_widens_the_airspeed_more_than_the_launch_speed() {
+    let value = json(&tautrail(&["forecast", "--json", "--draws", "1000", NORTH_PIER]));
+    let of = |name: &str| {
+        let quantity = value["quantities"].as_array().unwrap().iter().find(|entry| entry["name"] == name).unwrap();
+        quantity["monte_carlo"]["standard_deviation"].as_f64().unwrap()
+    };
+    // The wind's 0.5 m/s adds to the launch speed's own spread, almost in quadrature.
+    let expected = of("launch_speed").hypot(0.5);
+    assert!((of("airspeed_at_separation") / expected - 1.0).abs() < 0.1, "{value}");
+    let energy = value["energy_at_separation"].as_array().unwrap();
+    assert!(energy.iter().all(|entry| entry["low"].as_f64() <= entry["high"].as_f64() && entry["n"] == 1000));
+    assert!(energy.iter().any(|entry| entry["name"] == "payload kinetic"));
 }

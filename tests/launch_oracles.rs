@@ -8,7 +8,7 @@ mod support;
 
 use full_featured::{curve, full_featured, number, setup_of};
 use serde_json::{Value, json};
-use tautrail::model::{CordSet, Curve, EventKind, LaunchSetup, simulate};
+use tautrail::model::{CordSet, Curve, EventKind, FAST, GasPath, GasSource, LaunchRun, LaunchSetup, simulate};
 
 #[track_caller]
 fn assert_close(what: &str, found: f64, expected: f64, relative: f64) {
@@ -75,6 +75,19 @@ fn check_chain(card: &str, one_cord_kg: f64) {
     let top = run.samples.iter().map(|sample| sample.v_mps).fold(0.0, f64::max);
     assert_close("release acceleration", run.samples[0].a_mps2, number(&expected["acceleration"]), 0.01);
     assert_close("speed", top, number(&expected["speed"]), 0.007);
+    check_anchor(&run, expected["anchor"].as_array().unwrap());
+}
+
+/// Tension at the anchor: a few per cent of the hold's in the mean, and where waves arrive as far as their fronts are steep.
+#[track_caller]
+fn check_anchor(run: &LaunchRun, anchor: &[Value]) {
+    let held_n = number(&anchor[0][1]);
+    let off =
+        |point: &Value| (run.at_time(number(&point[0])).unwrap().anchor_tension_n - number(&point[1])).abs() / held_n;
+    let all: Vec<f64> = anchor.iter().map(off).collect();
+    let rms = (all.iter().map(|off| off * off).sum::<f64>() / all.len() as f64).sqrt();
+    let worst = all.iter().copied().fold(0.0, f64::max);
+    assert!(rms < 0.02 && worst < 0.08, "anchor tension: rms {rms:.4}, worst {worst:.4} of the hold's");
 }
 
 #[test]
@@ -87,6 +100,41 @@ fn heavy_linear_cords_launch_as_a_chain_of_masses_does() {
 fn heavy_rubber_cords_launch_as_a_chain_of_masses_does() {
     check_chain(RUBBER, 0.15);
     check_chain(RUBBER, 0.3);
+}
+
+#[test]
+fn gas_through_a_valve_launches_as_an_implicit_method_says() {
+    for valve_area_m2 in [4e-5, 1.2e-4, 1e-3] {
+        let source = GasSource {
+            charged_pressure_pa: 6e5,
+            ambient_pressure_pa: 101_325.0,
+            back_pressure_pa: 0.0,
+            vessel_volume_m3: 0.004,
+            dead_volume_m3: 5e-5,
+            temperature_k: 290.0,
+            polytropic_exponent: 1.3,
+            piston_area_m2: 5e-4,
+            travel_ratio: 1.0,
+            stroke_m: 2.5,
+            hold_s: 0.0,
+            leak_time_s: f64::INFINITY,
+            path: GasPath::Valve { valve_area_m2, line_area_m2: 2e-3, opening_s: 0.02 },
+        };
+        let numbers = json!({
+            "exponent": 1.3, "charged": 6e5, "temperature": 290.0, "vessel": 0.004, "dead": 5e-5, "piston": 5e-4,
+            "ambient": 101_325.0, "valve": valve_area_m2, "line": 2e-3, "opening": 0.02, "stroke": 2.5, "mass": 6.0,
+        });
+        let expected = oracle(include_str!("../tools/oracles/launch_gas.py"), &numbers);
+        let mut setup = LaunchSetup::bare(6.0, 4.0);
+        setup.gas = vec![source];
+        for (relative_tolerance, relative) in [(1e-10, 1e-7), (FAST, 1e-5)] {
+            setup.relative_tolerance = relative_tolerance;
+            let run = simulate(&setup).unwrap();
+            let end = run.event(EventKind::StrokeEnd { gas: 0 }).unwrap();
+            assert_close(&format!("time, {valve_area_m2} m²"), end.t_s, number(&expected["time"]), relative);
+            assert_close(&format!("speed, {valve_area_m2} m²"), end.v_mps, number(&expected["speed"]), relative);
+        }
+    }
 }
 
 /// Rows (stretch, stress in MPa) of L. R. G. Treloar, Trans. Faraday Soc. 40 (1944) 59-70.

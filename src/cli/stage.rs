@@ -71,7 +71,11 @@ fn configured(rig: &Rig, stage: &Stage) -> Rig {
 
 fn print(rig: &Rig, stages: &[(&Stage, Rig)], made: &[Result<Forecast, ModelError>], screen: &Screen) {
     if stages.is_empty() {
-        screen.line(format!("{} names no stage: add [[stage]] tables to the rig file", rig.name));
+        screen.line(format!(
+            "rig {} names no stage, so there is nothing to list: add one [[stage]] table for each step of the build-up (name, cords, draw, \
+             payload_mass, gate, inspect) to its rig file",
+            rig.name
+        ));
     }
     for (number, ((stage, rig), made)) in stages.iter().zip(made).enumerate() {
         let title = format!(
@@ -99,7 +103,7 @@ fn print(rig: &Rig, stages: &[(&Stage, Rig)], made: &[Result<Forecast, ModelErro
 }
 
 fn print_forecast(rig: &Rig, made: &Forecast, screen: &Screen) {
-    for sentence in &made.extrapolations {
+    for sentence in made.extrapolations.iter().chain(&made.unfitted) {
         screen.line(screen.toned(&format!("  {sentence}"), Tone::Bad));
     }
     for (index, limit) in [
@@ -124,7 +128,7 @@ fn as_json(stage: &Stage, rig: &Rig, made: &Result<Forecast, ModelError>) -> Val
             };
             json!({
                 "launch_speed": row(LAUNCH_SPEED), "peak_g_cfc60_specific": row(PEAK_G),
-                "all_met": made.probabilities.all_met, "extrapolations": made.extrapolations,
+                "all_met": made.probabilities.all_met, "extrapolations": made.extrapolations, "not_fitted_yet": made.unfitted,
             })
         }
         Err(error) => json!({ "error": error.to_string() }),

@@ -3,7 +3,7 @@
 use super::along::{Along, state_of};
 use super::event::Segment;
 use super::inputs::Inputs;
-use super::march::March;
+use super::march::{Keep, March};
 use super::run::LaunchRun;
 use super::setup::LaunchSetup;
 use super::system::{Layout, System};
@@ -65,7 +65,7 @@ fn course(setup: &LaunchSetup, places_m: &[f64]) -> Option<Vec<(f64, f64)>> {
     if layout.n_used > ROOM {
         return None;
     }
-    let mut march = March::<ROOM>::released(setup, layout, true).ok()?;
+    let mut march = March::<ROOM>::released(setup, layout, Keep::Course).ok()?;
     march.run_to_separation().ok()?;
     let segments = march.segments.unwrap_or_default();
     let mut index = 0;

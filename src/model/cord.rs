@@ -215,19 +215,4 @@ impl CordSet {
         self.unloading = self.unloading.reshaped(&factor);
         self.loading = self.loading.as_ref().map(|loading| loading.reshaped(&factor));
     }
-
-    /// Pull of the set at its anchor by the strain wave, tabulated against the speed at which its end came in.
-    pub fn anchor_pull_after_speed(&self, held: f64) -> Vec<(f64, f64)> {
-        const N_PARTS: u32 = 200;
-        let branch = self.released(held);
-        let part = held / f64::from(N_PARTS);
-        let mut gone_mps = 0.0;
-        let mut table = vec![(0.0, self.pull_n(branch, held) / self.travel_ratio)];
-        for i in 0..N_PARTS {
-            let strain = held - f64::from(i) * part;
-            gone_mps += self.pull_and_wave_speed(branch, strain - 0.5 * part).1 * part;
-            table.push((gone_mps, self.pull_n(branch, strain - part) / self.travel_ratio));
-        }
-        table
-    }
 }

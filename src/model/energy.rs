@@ -66,6 +66,16 @@ impl EnergySplit {
         ]
     }
 
+    /// Every source with its name.
+    pub fn sources(&self) -> [(&'static str, f64); 4] {
+        [
+            ("from cords", self.stored_j),
+            ("from gas", self.gas_j),
+            ("from tables", self.tables_j),
+            ("from thrust", self.thrust_j),
+        ]
+    }
+
     pub fn sources_j(&self) -> f64 {
         self.stored_j + self.tables_j + self.gas_j + self.thrust_j
     }

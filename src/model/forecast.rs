@@ -4,13 +4,16 @@
 //! Every draw has its own stream of random numbers from the seed, so the result does not depend on the number of threads.
 
 use super::bands::{Bands, bands};
+use super::cfc::CfcRatio;
 use super::energy::EnergySplit;
+use super::energy_draws::{ForecastedEnergy, forecasted_energy};
 use super::error::ModelError;
 use super::inputs::{Inputs, Known};
 use super::interval::Interval;
+use super::loss_terms::unfitted;
 use super::propagation::{Propagated, first_order};
-use super::quantities::{LAUNCH_SPEED, LINE_TENSION, N_QUANTITIES, PEAK_G, QUANTITIES, Quantity, cfc_ratio, evaluate};
-use super::run::{LaunchRun, simulate};
+use super::quantities::{LAUNCH_SPEED, LINE_TENSION, N_QUANTITIES, PEAK_G, QUANTITIES, Quantity, evaluate};
+use super::run::{LaunchRun, energy_at_separation, simulate};
 use super::setup::{FAST, LaunchSetup};
 use crate::estimation::{Distribution, Random};
 use crate::rig::Rig;
@@ -59,10 +62,13 @@ pub struct Forecast {
     pub inputs: Inputs,
     /// With every input at its best value.
     pub run: LaunchRun,
-    pub energy: EnergySplit,
+    /// At separation: every source and use that is there.
+    pub energy: Vec<ForecastedEnergy>,
     pub bands: Bands,
     /// Sentences on what was never measured.
     pub extrapolations: Vec<String>,
+    /// Sentences on losses that a fit is still to find.
+    pub unfitted: Vec<String>,
     pub options: ForecastOptions,
 }
 
@@ -77,11 +83,12 @@ pub fn forecast(rig: &Rig, options: ForecastOptions) -> Result<Forecast, ModelEr
     };
     let inputs = Inputs::of(rig, options.known)?;
     let run = simulate(&setup)?;
-    let ratio = cfc_ratio(&run, &run.answers, setup.gravity_along_mps2());
+    let ratio = CfcRatio::of(&setup, &inputs)?;
     let fast = LaunchSetup { relative_tolerance: FAST, ..setup.clone() };
-    let propagated = first_order(&fast, &inputs, |moved| evaluate(moved, ratio))?;
-    let best = evaluate(&inputs.moved(&setup, &[]), ratio)?;
-    let drawn = monte_carlo(&fast, &inputs, options, ratio);
+    let propagated = first_order(&fast, &inputs, |moved, deviates| evaluate(moved, ratio.at(deviates)))?;
+    let best = evaluate(&inputs.moved(&setup, &[]), ratio.at(&[]))?;
+    let draws: Vec<Draw> = every_draw(options, |stream| one_draw(&fast, &inputs, options.seed, stream, &ratio));
+    let drawn: Vec<Row> = draws.iter().map(|draw| draw.0).collect();
     let quantities =
         QUANTITIES.iter().zip(propagated).enumerate().map(|(k, (quantity, Propagated { interval, shares }))| {
             let column = drawn.iter().map(|row| row.map_or(f64::NAN, |row| row[k]));
@@ -96,9 +103,10 @@ pub fn forecast(rig: &Rig, options: ForecastOptions) -> Result<Forecast, ModelEr
     Ok(Forecast {
         quantities: quantities.collect(),
         probabilities: probabilities(rig, &drawn),
-        energy: run.energy_at_separation,
+        energy: forecasted_energy(&run.energy_at_separation, draws.iter().filter_map(|draw| draw.1.as_ref())),
         bands: bands(&fast, &inputs, &run, options.seed),
         extrapolations: setup.extrapolations(),
+        unfitted: unfitted(rig),
         inputs,
         run,
         options,
@@ -106,17 +114,19 @@ pub fn forecast(rig: &Rig, options: ForecastOptions) -> Result<Forecast, ModelEr
 }
 
 type Row = Option<[f64; N_QUANTITIES]>;
+/// A launch's numbers and its energy at separation; none where a draw can't be launched.
+type Draw = (Row, Option<EnergySplit>);
 
-/// Every draw's numbers, in the order of the draws; none where a draw can't be launched.
-fn monte_carlo(setup: &LaunchSetup, inputs: &Inputs, options: ForecastOptions, ratio: f64) -> Vec<Row> {
-    let mut rows: Vec<Row> = vec![None; options.draws as usize];
+/// Makes every draw, in the order of the draws, on all threads.
+fn every_draw<T: Send + Clone + Default>(options: ForecastOptions, make: impl Fn(u64) -> T + Sync) -> Vec<T> {
+    let mut rows = vec![T::default(); options.draws as usize];
     let part = rows.len().div_ceil(options.threads.max(1)).max(1);
+    let make = &make;
     std::thread::scope(|scope| {
         for (index, chunk) in rows.chunks_mut(part).enumerate() {
             scope.spawn(move || {
                 for (offset, row) in chunk.iter_mut().enumerate() {
-                    let stream = (index * part + offset) as u64;
-                    *row = one_draw(setup, inputs, &mut Random::new(options.seed, stream), ratio);
+                    *row = make((index * part + offset) as u64);
                 }
             });
         }
@@ -124,9 +134,12 @@ fn monte_carlo(setup: &LaunchSetup, inputs: &Inputs, options: ForecastOptions, r
     rows
 }
 
-fn one_draw(setup: &LaunchSetup, inputs: &Inputs, random: &mut Random, ratio: f64) -> Row {
+fn one_draw(setup: &LaunchSetup, inputs: &Inputs, seed: u64, stream: u64, ratio: &CfcRatio) -> Draw {
+    let mut random = Random::new(seed, stream);
     let independent: Vec<f64> = inputs.all.iter().map(|_| random.normal()).collect();
-    evaluate(&inputs.moved(setup, &inputs.correlate(&independent)), ratio).ok()
+    let deviates = inputs.correlate(&independent);
+    let moved = inputs.moved(setup, &deviates);
+    (evaluate(&moved, ratio.at(&deviates)).ok(), energy_at_separation(&moved.setup).ok())
 }
 
 fn probabilities(rig: &Rig, rows: &[Row]) -> Probabilities {

@@ -71,9 +71,36 @@ pub fn loss_terms(rig: &Rig) -> Vec<LossTerm> {
     all.into_iter().map(term).collect()
 }
 
+/// Sentences on losses that a fit is still to find: what stands in for them in a forecast until then.
+pub fn unfitted(rig: &Rig) -> Vec<String> {
+    let terms = loss_terms(rig).into_iter().filter_map(|term| match term.state {
+        LossState::ToBeFitted(prior) => Some((term, prior)),
+        LossState::Off | LossState::Given(_) => None,
+    });
+    let sentence = |(term, prior): (LossTerm, Option<Given>)| {
+        let (name, unit) = (term.meaning, term.unit);
+        let space = if unit.is_empty() { "" } else { " " };
+        match prior {
+            Some(Given { value, standard_uncertainty }) if standard_uncertainty > 0.0 => format!(
+                "NOT FITTED YET: {name}: the rig file's {value}{space}{unit} with its standard uncertainty of \
+                 {standard_uncertainty}{space}{unit} stands in for it"
+            ),
+            Some(Given { value, .. }) => format!(
+                "NOT FITTED YET: {name}: the rig file's {value}{space}{unit} stands in for it as if it were exact, so \
+                 the intervals are too narrow; give it an uncertainty"
+            ),
+            None => format!(
+                "NOT FITTED YET: {name}: the rig file gives no value, so it is left out and the intervals do not cover \
+                 it; give it a value with its uncertainty"
+            ),
+        }
+    };
+    terms.map(sentence).collect()
+}
+
 #[cfg(test)]
 mod tests {
-    use super::{BelongsTo, LossState, loss_terms};
+    use super::{BelongsTo, LossState, loss_terms, unfitted};
     use crate::rig;
 
     #[test]
@@ -87,6 +114,9 @@ mod tests {
         assert_eq!(state("along_x"), LossState::Off);
         assert!(matches!(state("shuttle_drag_area"), LossState::Given(_)));
         assert!(terms.iter().any(|term| term.belongs_to == BelongsTo::EachCord));
+        let sentences = unfitted(&rig::parse(&asked).unwrap());
+        assert!(sentences[0].contains("12 N with its standard uncertainty of 3 N stands in"), "{sentences:?}");
+        assert!(sentences[1].contains("the intervals do not cover it") && sentences.len() == 2, "{sentences:?}");
     }
 
     #[test]

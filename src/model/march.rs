@@ -8,6 +8,7 @@ use super::along::{Along, divided, falling_root, rates_along, state_at_end, stat
 use super::cord::CordPhase;
 use super::error::ModelError;
 use super::event::{Cost, Event, EventKind, Peak, Segment};
+use super::gas::GasSource;
 use super::integrate::{Dense, Order, Step, Tolerance};
 use super::phases::first_phase;
 use super::setup::LaunchSetup;
@@ -33,6 +34,15 @@ pub(super) enum Goal {
     Rest,
 }
 
+/// What of a march is kept beside its answers.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Keep {
+    Nothing,
+    EventStates,
+    /// States at the events and the solution itself.
+    Course,
+}
+
 #[derive(Debug, Clone)]
 pub struct March<'a, const N: usize> {
     pub system: System<'a>,
@@ -42,11 +52,14 @@ pub struct March<'a, const N: usize> {
     /// States at the events, for the energy split.
     pub event_states: Vec<[f64; N]>,
     pub segments: Option<Vec<Segment<N>>>,
+    keep: Keep,
     pub cost: Cost,
     /// Greatest acceleration in the ground's frame while the payload is on.
     pub peak: Peak,
     /// Greatest deceleration of the shuttle after it.
     pub arrest: Peak,
+    /// Time and acceleration at the last two ends of steps in this phase, the latest last.
+    recent: [Option<(f64, f64)>; 2],
     pub(super) targets: Vec<Target>,
     /// Next target ahead.
     pub(super) cursor: isize,
@@ -61,7 +74,7 @@ pub struct March<'a, const N: usize> {
 
 impl<'a, const N: usize> March<'a, N> {
     /// At the instant after release.
-    pub fn released(setup: &'a LaunchSetup, layout: Layout, keep_segments: bool) -> Result<Self, ModelError> {
+    pub fn released(setup: &'a LaunchSetup, layout: Layout, keep: Keep) -> Result<Self, ModelError> {
         let system = System::new(setup, first_phase(setup), layout);
         let mut y = [0.0; N];
         y[0] = setup.start_x_m;
@@ -84,7 +97,7 @@ impl<'a, const N: usize> March<'a, N> {
         let cursor = targets.iter().position(|target| target.x_m > setup.start_x_m).unwrap_or(targets.len());
         let nowhere = Peak { acceleration_mps2: f64::NEG_INFINITY, t_s: 0.0, x_m: setup.start_x_m };
         let mut march = Self {
-            order: if setup.relative_tolerance >= COARSE && !keep_segments { Order::Fifth } else { Order::Eighth },
+            order: order(setup),
             tolerance: tolerance(&system),
             time_tolerance: setup.relative_tolerance * 1e-2,
             system,
@@ -92,10 +105,12 @@ impl<'a, const N: usize> March<'a, N> {
             y,
             events: Vec::with_capacity(12),
             event_states: Vec::new(),
-            segments: keep_segments.then(Vec::new),
+            segments: (keep == Keep::Course).then(Vec::new),
+            keep,
             cost: Cost::default(),
             peak: nowhere,
             arrest: Peak { acceleration_mps2: 0.0, ..nowhere },
+            recent: [None; 2],
             targets,
             cursor: cursor as isize,
             size_s: 0.0,
@@ -277,7 +292,7 @@ impl<'a, const N: usize> March<'a, N> {
 
     fn attempt(&mut self, along: Along, size: f64) -> Step<N> {
         let slope = self.slope();
-        self.cost.evaluations += self.order.evaluations();
+        self.cost.evaluations += self.order.evaluations(self.tolerance.n_felt);
         let system = &self.system;
         match along {
             Along::Time => {
@@ -368,13 +383,34 @@ impl<'a, const N: usize> March<'a, N> {
 
     pub(super) fn watch_peak(&mut self, acceleration_mps2: f64) {
         let here = Peak { acceleration_mps2, t_s: self.t_s, x_m: self.y[0] };
+        let between_mps2 = self.peak_between((self.t_s, acceleration_mps2));
         let pushed = self.system.phase.payload_on || self.system.setup.payload_mass_kg == 0.0;
         if pushed && acceleration_mps2 > self.peak.acceleration_mps2 {
             self.peak = here;
         }
+        if let Some(between_mps2) = between_mps2.filter(|peak| pushed && *peak > self.peak.acceleration_mps2) {
+            self.peak = Peak { acceleration_mps2: between_mps2, ..self.peak };
+        }
         if !self.system.phase.payload_on && acceleration_mps2 < self.arrest.acceleration_mps2 {
             self.arrest = here;
         }
+    }
+
+    /// Top of the parabola through the last three ends of steps, where the middle one is the greatest: coarse steps go over
+    /// a peak without landing on it. Fine ones are searched afterwards, on their own polynomial.
+    fn peak_between(&mut self, (t_s, a): (f64, f64)) -> Option<f64> {
+        let recent = self.recent;
+        if recent[1].is_none_or(|last| last.0 < t_s) {
+            self.recent = [recent[1], Some((t_s, a))];
+        }
+        let ((first_s, first), (middle_s, middle)) = (recent[0]?, recent[1]?);
+        if self.order == Order::Eighth || first > middle || a > middle || t_s <= middle_s {
+            return None;
+        }
+        let (rise, fall) = ((middle - first) / (middle_s - first_s), (a - middle) / (t_s - middle_s));
+        let curvature = (fall - rise) / (t_s - first_s);
+        let slope = (rise * (t_s - middle_s) + fall * (middle_s - first_s)) / (t_s - first_s);
+        (curvature < 0.0).then(|| middle - slope * slope / (4.0 * curvature))
     }
 
     /// Contact force at a state, or infinity where the payload does not leave by losing contact.
@@ -411,12 +447,24 @@ impl<'a, const N: usize> March<'a, N> {
     }
 
     pub(super) fn note(&mut self, kind: EventKind) {
+        self.recent = [None; 2];
         let motion = self.system.motion(&self.y);
         let ground_v_mps = motion.v_mps + motion.rail_v_mps;
         self.events.push(Event { kind, t_s: self.t_s, x_m: motion.x_m, v_mps: motion.v_mps, ground_v_mps });
-        if self.segments.is_some() {
+        if self.keep != Keep::Nothing {
             self.event_states.push(self.y);
         }
+    }
+}
+
+/// Behind a wide valve the pressures are equal within milliseconds or less: an explicit method then takes steps as short.
+fn order(setup: &LaunchSetup) -> Order {
+    if setup.relative_tolerance < COARSE {
+        Order::Eighth
+    } else if setup.gas.iter().any(GasSource::has_valve) {
+        Order::Stiff
+    } else {
+        Order::Fifth
     }
 }
 
@@ -442,5 +490,6 @@ fn tolerance<const N: usize>(system: &System) -> Tolerance<N> {
         let energy_j: f64 = super::energy::available_j(system.setup);
         absolute[first..].fill(relative * energy_j.max(1.0));
     }
-    Tolerance { relative, absolute, n_used: system.layout.n_used }
+    let n_used = system.layout.n_used;
+    Tolerance { relative, absolute, n_used, n_felt: system.layout.accounts.unwrap_or(n_used) }
 }

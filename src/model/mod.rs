@@ -5,11 +5,14 @@
 //! model is described in `cord.rs`, the equations in `system.rs`.
 
 mod along;
+mod anchor;
 mod bands;
+mod cfc;
 mod check;
 mod cord;
 mod curve;
 mod energy;
+mod energy_draws;
 mod error;
 mod event;
 mod forecast;
@@ -34,9 +37,11 @@ mod targets;
 mod tests;
 
 pub use bands::{Band, Bands};
+pub use cfc::CfcRatio;
 pub use cord::{Branch, CordSet};
 pub use curve::{Curve, CurveError, ValueSlope};
 pub use energy::EnergySplit;
+pub use energy_draws::ForecastedEnergy;
 pub use error::ModelError;
 pub use event::{Cost, Event, EventKind};
 pub use forecast::{Forecast, ForecastOptions, Forecasted, Probabilities, forecast};
@@ -44,9 +49,9 @@ pub use from_rig::{hold_pull_band_n, planned_line_tension_n, stored_energy_j};
 pub use gas::{GasPath, GasSource};
 pub use inputs::{Input, Inputs, Known, Moved};
 pub use interval::Interval;
-pub use loss_terms::{BelongsTo, LossState, LossTerm, loss_terms};
+pub use loss_terms::{BelongsTo, LossState, LossTerm, loss_terms, unfitted};
 pub use propagation::{Propagated, first_order};
-pub use quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, Quantity};
+pub use quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, Quantity, evaluate};
 pub use released_now::{ReleaseForecast, released_now};
 pub use run::{Answers, LaunchRun, Sample, Separation, answers_to_rest, launch_answers, simulate};
 pub use setup::{ACCURATE, Brake, FAST, ForceTable, LaunchSetup, RailLosses, Recoil};

@@ -14,24 +14,24 @@ pub struct Propagated {
     pub shares: Vec<f64>,
 }
 
-/// Propagates every input of `inputs` to the answers that `evaluate` takes from a launch.
+/// Propagates every input of `inputs` to the answers that `evaluate` takes from a moved launch and the deviates that moved it.
 ///
 /// # Errors
 /// The launch itself can't be computed; a moved input that ends so counts as no change.
 pub fn first_order<const K: usize>(
     setup: &LaunchSetup,
     inputs: &Inputs,
-    evaluate: impl Fn(&Moved) -> Result<[f64; K], ModelError>,
+    evaluate: impl Fn(&Moved, &[f64]) -> Result<[f64; K], ModelError>,
 ) -> Result<[Propagated; K], ModelError> {
     let mut deviates = vec![0.0; inputs.all.len()];
-    let best = evaluate(&inputs.moved(setup, &deviates))?;
+    let best = evaluate(&inputs.moved(setup, &deviates), &deviates)?;
     let mut shares: [Vec<f64>; K] = std::array::from_fn(|_| Vec::with_capacity(inputs.all.len()));
     for i in 0..inputs.all.len() {
         let mut at = |deviate: f64| {
             deviates[i] = deviate;
-            let moved = inputs.moved(setup, &deviates);
+            let answer = evaluate(&inputs.moved(setup, &deviates), &deviates).unwrap_or(best);
             deviates[i] = 0.0;
-            evaluate(&moved).unwrap_or(best)
+            answer
         };
         let (up, down) = (at(1.0), at(-1.0));
         for (k, list) in shares.iter_mut().enumerate() {

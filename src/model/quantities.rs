@@ -2,15 +2,8 @@
 
 use super::error::ModelError;
 use super::inputs::Moved;
-use super::run::{Answers, LaunchRun, answers_to_rest};
-use crate::estimation::{CfcFilter, StartUp};
+use super::run::answers_to_rest;
 use crate::units::STANDARD_GRAVITY_MPS2;
-
-/// Channel class of the limit's peak g.
-const CLASS: u32 = 60;
-const RATE_HZ: f64 = 10_000.0;
-/// Record before release and after separation that the filter looks at.
-const MARGIN_S: f64 = 0.2;
 
 pub const N_QUANTITIES: usize = 9;
 
@@ -45,7 +38,7 @@ pub const QUANTITIES: [Quantity; N_QUANTITIES] = [
     quantity("line_tension_at_draw", "release-line tension while drawing the last bit", "N"),
 ];
 
-/// The numbers of one launch; NaN where it has none.
+/// The numbers of one launch, with the peak in class 60 as that part of the unfiltered one; NaN where it has none.
 ///
 /// # Errors
 /// As [`super::simulate`].
@@ -67,23 +60,4 @@ pub fn evaluate(moved: &Moved, cfc_ratio: f64) -> Result<[f64; N_QUANTITIES], Mo
         answers.stopping_distance_m.unwrap_or(f64::NAN),
         line_n.max(0.0),
     ])
-}
-
-/// Peak of the specific force at the payload in class 60 over the unfiltered one, of a computed launch: what the filter makes
-/// of the jump at release. The record before release shows the weight along the rail alone.
-pub fn cfc_ratio(run: &LaunchRun, answers: &Answers, resting_mps2: f64) -> f64 {
-    let end_s = answers.separation.map_or(run.end_s(), |at| at.t_s);
-    let n = |seconds: f64| (seconds * RATE_HZ).ceil() as i32;
-    let at = |k: i32| {
-        if k < 0 {
-            resting_mps2
-        } else {
-            run.at_time(f64::from(k) / RATE_HZ).map_or(resting_mps2, |s| s.specific_force_mps2)
-        }
-    };
-    let record: Vec<f64> = (-n(MARGIN_S)..n(end_s + MARGIN_S)).map(at).collect();
-    let Ok(filter) = CfcFilter::new(CLASS, RATE_HZ) else { return 1.0 };
-    let filtered = filter.two_pass(&record, StartUp::Hold);
-    let stroke = &filtered[n(MARGIN_S) as usize..(n(MARGIN_S) + n(end_s)) as usize];
-    stroke.iter().copied().fold(f64::NEG_INFINITY, f64::max) / answers.peak_specific_mps2
 }

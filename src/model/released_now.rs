@@ -28,7 +28,7 @@ pub fn released_now(rig: &Rig, tension_n: f64, x_m: f64) -> Result<ReleaseForeca
     let mut setup = LaunchSetup::drawn(rig, tension_n, x_m)?;
     setup.relative_tolerance = FAST;
     let inputs = Inputs::of(rig, Known::HoldTension { tension_n, x_m })?;
-    let [speed, peak] = first_order(&setup, &inputs, |moved| {
+    let [speed, peak] = first_order(&setup, &inputs, |moved, _| {
         let answers = launch_answers(&moved.setup)?;
         let speed_mps = answers.separation.map_or(0.0, |separation| separation.launch_speed_mps);
         Ok([speed_mps * moved.speed_factor, answers.peak_specific_mps2])

@@ -1,16 +1,19 @@
 //! A computed launch: its course at any time, its events, its answers, its energy.
 
 use super::along::{Along, state_of};
+use super::anchor::{Place, anchor_course};
 use super::cord::{CordPhase, CordSet};
 use super::energy::{EnergySplit, split};
 use super::error::ModelError;
 use super::event::{Cost, Event, EventKind, Peak, Segment};
-use super::march::March;
+use super::march::{Keep, March};
 use super::setup::LaunchSetup;
 use super::system::{Layout, System};
 
 /// States of a launch whose course is kept: room for every source and account at once.
 const ROOM: usize = 48;
+/// Spacing of the shuttle's course for the cords' waves.
+const PLACE_S: f64 = 2e-3;
 /// Spacing of the sampled course.
 const SAMPLE_S: f64 = 5e-4;
 
@@ -77,9 +80,8 @@ pub struct LaunchRun {
     setup: LaunchSetup,
     layout: Layout,
     segments: Vec<Segment<ROOM>>,
-    /// Of each cord set: the wave's way to the anchor, and the pull there once it has come.
-    transits_s: Vec<f64>,
-    anchor_tables: Vec<Vec<(f64, f64)>>,
+    /// Of each cord set with mass: tension at its anchor against time.
+    anchors: Vec<Vec<(f64, f64)>>,
 }
 
 /// Computes a launch with its course and energy.
@@ -89,7 +91,7 @@ pub struct LaunchRun {
 pub fn simulate(setup: &LaunchSetup) -> Result<LaunchRun, ModelError> {
     setup.check()?;
     let layout = Layout::of(setup, true);
-    let mut march = March::<ROOM>::released(setup, layout, true)?;
+    let mut march = March::<ROOM>::released(setup, layout, Keep::Course)?;
     let first_cords = march.system.phase.cords;
     march.run()?;
     let at_separation = march
@@ -108,10 +110,10 @@ pub fn simulate(setup: &LaunchSetup) -> Result<LaunchRun, ModelError> {
         setup: setup.clone(),
         layout,
         segments: march.segments.unwrap_or_default(),
-        transits_s: of_held(setup, |set, held| set.transit_s(held)),
-        anchor_tables: of_held(setup, |set, held| set.anchor_pull_after_speed(held)),
+        anchors: Vec::new(),
     };
     run.sharpen_peak();
+    run.follow_anchors();
     run.fill_samples();
     Ok(run)
 }
@@ -132,6 +134,26 @@ pub fn answers_to_rest(setup: &LaunchSetup) -> Result<Answers, ModelError> {
     quick(setup, true)
 }
 
+/// Computes where a launch's energy has gone at separation, without its course.
+///
+/// # Errors
+/// As [`simulate`].
+pub fn energy_at_separation(setup: &LaunchSetup) -> Result<EnergySplit, ModelError> {
+    setup.check()?;
+    let layout = Layout::of(setup, true);
+    match layout.n_used {
+        0..=16 => energy_in::<16>(setup, layout),
+        _ => energy_in::<ROOM>(setup, layout),
+    }
+}
+
+fn energy_in<const N: usize>(setup: &LaunchSetup, layout: Layout) -> Result<EnergySplit, ModelError> {
+    let mut march = March::<N>::released(setup, layout, Keep::EventStates)?;
+    let first_cords = march.system.phase.cords;
+    march.run_to_separation()?;
+    Ok(split(setup, &layout, &march.events, &march.event_states, &first_cords))
+}
+
 fn quick(setup: &LaunchSetup, to_rest: bool) -> Result<Answers, ModelError> {
     setup.check()?;
     let layout = Layout::of(setup, false);
@@ -143,7 +165,7 @@ fn quick(setup: &LaunchSetup, to_rest: bool) -> Result<Answers, ModelError> {
 }
 
 fn quick_in<const N: usize>(setup: &LaunchSetup, layout: Layout, to_rest: bool) -> Result<Answers, ModelError> {
-    let mut march = March::<N>::released(setup, layout, false)?;
+    let mut march = March::<N>::released(setup, layout, Keep::Nothing)?;
     if to_rest { march.run() } else { march.run_to_separation() }?;
     Ok(answers(setup, &march.events, march.peak, march.arrest))
 }
@@ -220,30 +242,40 @@ impl LaunchRun {
         even.map(|(set, _)| set.moving_mass_kg() * a_mps2).sum()
     }
 
-    /// Tension at the anchor: the wave arrives there after one transit and doubles; an evenly strained cord pulls there
-    /// with its elastic tension and a sixth of its inertia (the third at the shuttle taken from the half of its momentum).
+    /// Tension at the anchors: of cords that were released, as the strain waves in them make it (`anchor.rs`); of cords
+    /// without mass or tightened again, the elastic tension and a sixth of their inertia (the third at the shuttle taken
+    /// from the half of their momentum).
     fn anchor_tension_n(&self, system: &System, x_m: f64, a_mps2: f64, t_s: f64) -> f64 {
         let mut sum_n = 0.0;
         for (s, set) in self.setup.cords.iter().enumerate() {
-            sum_n += match system.phase.cords[s] {
-                CordPhase::Slack => 0.0,
-                CordPhase::Even { branch, side } => {
+            let waves = self.anchors.get(s).filter(|table| table.last().is_some_and(|last| t_s <= last.0));
+            sum_n += match (waves, system.phase.cords[s]) {
+                (Some(table), _) => interpolated(table, t_s),
+                (None, CordPhase::Even { branch, side }) => {
                     let inertia_n = set.count * set.mass_kg * set.travel_ratio * a_mps2 / 6.0;
                     set.pull_n(branch, set.elongation_on(side, x_m)) / set.travel_ratio + side.sign() * inertia_n
                 }
-                CordPhase::Wave { .. } => {
-                    let sent_s = t_s - self.transits_s[s];
-                    let speed_mps = if sent_s > 0.0 { self.speed_at(sent_s) * set.travel_ratio } else { 0.0 };
-                    interpolated(&self.anchor_tables[s], 2.0 * speed_mps)
-                }
+                (None, CordPhase::Wave { .. } | CordPhase::Slack) => 0.0,
             };
         }
         sum_n
     }
 
-    fn speed_at(&self, t_s: f64) -> f64 {
-        let index = self.segments.partition_point(|segment| segment.to_s < t_s);
-        self.segments.get(index).map_or(0.0, |segment| Self::state(segment, t_s)[1])
+    /// Computes the anchors' tensions from the shuttle's course.
+    fn follow_anchors(&mut self) {
+        let mut course = Vec::with_capacity((self.end_s() / PLACE_S) as usize + 2 * self.segments.len());
+        for segment in &self.segments {
+            let n = ((segment.to_s - segment.from_s) / PLACE_S).ceil().max(1.0) as u32;
+            course.extend((0..=n).map(|i| {
+                let t_s = segment.from_s + (segment.to_s - segment.from_s) * f64::from(i) / f64::from(n);
+                let y = Self::state(segment, t_s);
+                Place { t_s, x_m: y[0], v_mps: y[1] }
+            }));
+        }
+        let held = |set: &CordSet| set.elongation(self.setup.start_x_m);
+        let moves = |set: &CordSet| set.mass_kg > 0.0 && held(set) > 0.0;
+        let anchor = |set| if moves(set) { anchor_course(set, held(set), &course) } else { Vec::new() };
+        self.anchors = self.setup.cords.iter().map(anchor).collect();
     }
 
     /// The peak lies at a step's end or inside a step next to it: finds it there by golden section on the course.
@@ -284,13 +316,6 @@ impl LaunchRun {
         }
         self.samples = samples;
     }
-}
-
-/// Something of each cord set at its elongation at the hold; nothing of a set without mass or pull.
-fn of_held<T: Default>(setup: &LaunchSetup, f: impl Fn(&CordSet, f64) -> T) -> Vec<T> {
-    let held = |set: &CordSet| set.elongation(setup.start_x_m);
-    let one = |set: &CordSet| if set.mass_kg > 0.0 && held(set) > 0.0 { f(set, held(set)) } else { T::default() };
-    setup.cords.iter().map(one).collect()
 }
 
 /// Straight between the entries of a table, held at its end.

@@ -1,11 +1,11 @@
 //! Which setting meets the window under the limits: by trying a row of them, each with its first-order interval.
 
+use super::cfc::CfcRatio;
 use super::error::ModelError;
 use super::inputs::{Inputs, Known};
 use super::interval::Interval;
 use super::propagation::first_order;
-use super::quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, cfc_ratio, evaluate};
-use super::run::simulate;
+use super::quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, evaluate};
 use super::setup::{FAST, LaunchSetup};
 use crate::rig::Rig;
 
@@ -114,11 +114,10 @@ pub fn sweep(rig: &Rig, setting: Setting, values: &[f64]) -> Vec<Candidate> {
 
 fn expected(rig: &Rig) -> Result<Expected, ModelError> {
     let setup = LaunchSetup::planned(rig)?;
-    let run = simulate(&setup)?;
-    let ratio = cfc_ratio(&run, &run.answers, setup.gravity_along_mps2());
     let inputs = Inputs::of(rig, Known::Plan)?;
+    let ratio = CfcRatio::of(&setup, &inputs)?;
     let fast = LaunchSetup { relative_tolerance: FAST, ..setup };
-    let all = first_order(&fast, &inputs, |moved| evaluate(moved, ratio))?;
+    let all = first_order(&fast, &inputs, |moved, deviates| evaluate(moved, ratio.at(deviates)))?;
     let of = |k: usize| all[k].interval;
     Ok(Expected { launch_speed_mps: of(LAUNCH_SPEED), peak_g: of(PEAK_G), line_tension_n: of(LINE_TENSION) })
 }

@@ -24,6 +24,8 @@ pub struct ForecastPage {
     pub separation_x_m: Option<f64>,
     /// Header row first.
     pub table: Vec<Vec<String>>,
+    /// Header row first.
+    pub energy: Vec<Vec<String>>,
     pub sentences: Vec<String>,
     pub cautions: Vec<String>,
     pub invented: bool,
@@ -44,6 +46,7 @@ pub fn forecast_page(page: &ForecastPage) -> Result<String, PictureError> {
     let pictures = page.curves.iter().map(|curve| picture(page, curve));
     body.push_str(&section("Motion over the rail", &figures_of(pictures, "There is no launch to draw.")?));
     body.push_str(&section("Numbers", &table(&page.table)));
+    body.push_str(&section("Energy", &table(&page.energy)));
     body.push_str(&section("What it hangs on", &list(&page.sentences)));
     body.push_str("</main>\n");
     let cautions: String = page.cautions.iter().map(|caution| format!("<p>{}</p>", escaped(caution))).collect();

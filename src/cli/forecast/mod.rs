@@ -7,7 +7,7 @@ mod words;
 use std::path::{Path, PathBuf};
 
 use serde_json::{Value, json};
-use tautrail::model::{Forecast, ForecastOptions, Known, forecast};
+use tautrail::model::{Forecast, ForecastOptions, ForecastedEnergy, Known, forecast};
 use tautrail::rig::{self, Rig};
 use tautrail::units::{self, Dimension, QuantityError};
 
@@ -99,8 +99,8 @@ fn options(args: &Args, rig: &Rig) -> ForecastOptions {
 
 fn print(rig: &Rig, made: &Forecast, page: Option<&Path>, screen: &Screen) {
     screen.line(screen.toned(&words::heading(rig, made), Tone::Heading));
-    for sentence in &made.extrapolations {
-        screen.line(screen.toned(sentence, Tone::Bad));
+    for sentence in words::flags(made) {
+        screen.line(screen.toned(&sentence, Tone::Bad));
     }
     screen.line(words::basis(made));
     screen.line("");
@@ -112,9 +112,8 @@ fn print(rig: &Rig, made: &Forecast, page: Option<&Path>, screen: &Screen) {
         screen.line(sentence);
     }
     screen.line("");
-    screen.line("Energy at separation, at best values:");
-    for (name, joules) in words::energy(made) {
-        screen.line(format!("  {name:<28}{joules:>10.1} J"));
+    for row in words::energy(made) {
+        screen.line(across(&row, &[64, 12, 12, 20]));
     }
     screen.line("");
     screen.line("Losses:");
@@ -152,6 +151,15 @@ fn as_json(rig: &Rig, made: &Forecast, page: Option<&Path>) -> Value {
                 .map(|(input, share)| (input.name.clone(), finite(*share))).collect::<serde_json::Map<_, _>>(),
         })
     };
+    let energy = |entry: &ForecastedEnergy| {
+        let (low, high) = entry.monte_carlo.interval_95();
+        json!({
+            "name": entry.name, "is_source": entry.is_source, "unit": "J", "best": finite(entry.best_j),
+            "mean": finite(entry.monte_carlo.mean()),
+            "standard_deviation": finite(entry.monte_carlo.standard_deviation()),
+            "low": finite(low), "high": finite(high), "n": entry.monte_carlo.len(),
+        })
+    };
     let p = &made.probabilities;
     json!({
         "rig": rig.name, "payload": rig.payload.name,
@@ -163,14 +171,13 @@ fn as_json(rig: &Rig, made: &Forecast, page: Option<&Path>) -> Value {
             "tension_over_limit": p.tension_over_limit, "all_met": p.all_met, "no_launch": p.no_launch,
             "no_standstill_before_the_end_stop": p.end_stop,
         },
-        "energy_at_separation_j": words::energy(made).into_iter().map(|(name, joules)| (name, json!(joules)))
-            .collect::<serde_json::Map<_, _>>(),
+        "energy_at_separation": made.energy.iter().map(energy).collect::<Vec<_>>(),
         "inputs": made.inputs.all.iter().map(|input| json!({
             "name": input.name, "meaning": input.meaning, "unit": input.unit,
             "standard_uncertainty": input.standard_uncertainty,
         })).collect::<Vec<_>>(),
         "losses": words::losses(rig), "sensitivities": made.sensitivities(), "extrapolations": made.extrapolations,
-        "page": page, "cautions": cautions(rig),
+        "not_fitted_yet": made.unfitted, "page": page, "cautions": cautions(rig),
     })
 }
 

@@ -33,7 +33,7 @@ fn page(rig: &Rig, made: &Forecast) -> ForecastPage {
         high: band.high.clone(),
     };
     let bands = &made.bands;
-    let mut sentences = made.extrapolations.clone();
+    let mut sentences = words::flags(made);
     sentences.extend(words::probabilities(rig, made));
     sentences.extend(made.sensitivities());
     ForecastPage {
@@ -46,6 +46,7 @@ fn page(rig: &Rig, made: &Forecast) -> ForecastPage {
         ],
         separation_x_m: made.run.answers.separation.map(|at| at.x_m),
         table: words::table(made),
+        energy: words::energy(made),
         sentences,
         cautions: words::cautions(rig),
         invented: rig.invented,

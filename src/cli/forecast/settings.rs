@@ -52,7 +52,7 @@ pub fn sweep(rig: &Rig, sweep: &Sweep, screen: &Screen) -> Result<Verdict, Failu
     let candidates = model::sweep(rig, sweep.setting, &sweep.values);
     if screen.json {
         let rows: Vec<Value> = candidates.iter().map(as_json).collect();
-        screen.value(&json!({ "setting": sweep.setting.word(), "rows": rows, "cautions": cautions(rig) }));
+        screen.value(&json!({ "setting": sweep.setting.word(), "rows": rows, "not_fitted_yet": model::unfitted(rig), "cautions": cautions(rig) }));
         return Ok(Verdict::Done);
     }
     print_rows(sweep.setting, &candidates, screen);
@@ -118,6 +118,9 @@ fn print_rows(setting: Setting, candidates: &[Candidate], screen: &Screen) {
 
 fn print_cautions(rig: &Rig, screen: &Screen) {
     screen.line("intervals: 95 %, first order");
+    for sentence in model::unfitted(rig) {
+        screen.line(screen.toned(&sentence, Tone::Bad));
+    }
     for caution in cautions(rig) {
         screen.line(caution);
     }
@@ -147,6 +150,6 @@ fn solution_json(rig: &Rig, solution: &Solution) -> Value {
         "chosen": solution.chosen.as_ref().map(|(candidate, _)| as_json(candidate)),
         "surely": solution.chosen.as_ref().map(|(_, fit)| *fit == Fit::Surely),
         "as_good_from": solution.range.map(|range| range.0), "as_good_to": solution.range.map(|range| range.1),
-        "why": solution.why, "cautions": cautions(rig),
+        "why": solution.why, "not_fitted_yet": model::unfitted(rig), "cautions": cautions(rig),
     })
 }

@@ -90,17 +90,24 @@ pub fn probabilities(rig: &Rig, made: &Forecast) -> Vec<String> {
     sentences
 }
 
-/// Sources and uses that are there, in joules.
-pub fn energy(made: &Forecast) -> Vec<(String, f64)> {
-    let energy = &made.energy;
-    let sources = [
-        ("from cords", energy.stored_j),
-        ("from gas", energy.gas_j),
-        ("from tables", energy.tables_j),
-        ("from thrust", energy.thrust_j),
-    ];
-    let all = sources.into_iter().chain(energy.uses());
-    all.filter(|(_, joules)| joules.abs() > 1e-6).map(|(name, joules)| (name.to_owned(), joules)).collect()
+/// Header row first: source or use of energy at separation, best value, standard deviation and 95 % interval of the draws.
+pub fn energy(made: &Forecast) -> Vec<Vec<String>> {
+    let header = ["energy from release to separation", "best", "std. dev.", "95 % of draws"];
+    let mut rows = vec![header.map(str::to_owned).to_vec()];
+    for entry in &made.energy {
+        let deviation = entry.monte_carlo.standard_deviation();
+        let (best, shown) = rounded(entry.best_j, deviation);
+        let (low, high) = entry.monte_carlo.interval_95();
+        let (low, high) = (rounded(low, deviation).0, rounded(high, deviation).0);
+        let name = if entry.is_source { entry.name.to_owned() } else { format!("to {}", entry.name) };
+        rows.push(vec![name, format!("{best} J"), shown, format!("{low} to {high}")]);
+    }
+    rows
+}
+
+/// What every reader of this forecast has to know first: what was never measured, what is still to be fitted.
+pub fn flags(made: &Forecast) -> Vec<String> {
+    made.extrapolations.iter().chain(&made.unfitted).cloned().collect()
 }
 
 /// Each loss that is not off: its state and what it belongs to.
@@ -119,8 +126,8 @@ pub fn losses(rig: &Rig) -> Vec<String> {
         let state = match term.state {
             LossState::Off => continue,
             LossState::Given(given) => shown(given),
-            LossState::ToBeFitted(Some(given)) => format!("to be fitted, from {}", shown(given)),
-            LossState::ToBeFitted(None) => "to be fitted, taken as zero until then".to_owned(),
+            LossState::ToBeFitted(Some(given)) => format!("to be fitted; until then {}", shown(given)),
+            LossState::ToBeFitted(None) => "to be fitted, left out until then".to_owned(),
         };
         sentences.push(format!("{} ({whose}): {state}", term.meaning));
     }

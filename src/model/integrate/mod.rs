@@ -6,5 +6,6 @@
 
 mod coefficients;
 mod step;
+mod stiff;
 
 pub use step::{Dense, Order, Step, Tolerance};

@@ -1,9 +1,10 @@
-//! One step of the methods of Dormand and Prince, order 8(5,3) or 5(4), and its dense output.
+//! One step of the methods of Dormand and Prince, order 8(5,3) or 5(4), or of a stiff one, and its dense output.
 //!
 //! Source of the formulas: Hairer, Nørsett, Wanner, *Solving Ordinary Differential Equations I* (1993), section II.5
 //! (error estimate of orders 5 and 3 combined), II.6 (dense output), II.4 (step size control).
 
 use super::coefficients as c;
+use super::stiff::rodas;
 
 /// What a step may err by: `absolute[i] + relative · |y[i]|` in each component.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -12,6 +13,8 @@ pub struct Tolerance<const N: usize> {
     pub absolute: [f64; N],
     /// Components that are really there; the rest is padding.
     pub n_used: usize,
+    /// Of these, the first ones, which the rates depend on; the others only add up.
+    pub n_felt: usize,
 }
 
 /// Which method takes the steps.
@@ -21,6 +24,8 @@ pub enum Order {
     Fifth,
     /// Order 8(5,3), 12 evaluations a step: for finer ones.
     Eighth,
+    /// Order 4(3), 7 evaluations and one for each state a step: where some states settle fast.
+    Stiff,
 }
 
 impl Order {
@@ -30,14 +35,16 @@ impl Order {
         let exponent = match self {
             Self::Fifth => -0.2,
             Self::Eighth => -0.125,
+            Self::Stiff => -0.25,
         };
         (SAFETY * error.max(1e-10).powf(exponent)).clamp(0.2, 8.0)
     }
 
-    pub const fn evaluations(self) -> u32 {
+    pub const fn evaluations(self, n_states: usize) -> u32 {
         match self {
             Self::Fifth => 6,
             Self::Eighth => 12,
+            Self::Stiff => 7 + n_states as u32,
         }
     }
 }
@@ -91,6 +98,7 @@ impl<const N: usize> Step<N> {
         let (to, error) = match order {
             Order::Eighth => eighth(&mut k, start, &from, size, tolerance, rates),
             Order::Fifth => fifth(&mut k, start, &from, size, tolerance, rates),
+            Order::Stiff => fourth(&mut k, start, &from, size, tolerance, rates),
         };
         Self { start, size, from, to, error, order, stages: k }
     }
@@ -104,11 +112,11 @@ impl<const N: usize> Step<N> {
         self.stages[12]
     }
 
-    /// The polynomial through the step, of degree 7 (`rates` is called 3 times) or, for order 5, cubic.
+    /// The polynomial through the step: of degree 7 for order 8 (`rates` is called 3 times), cubic for the others.
     pub fn dense(&self, rates: &mut impl FnMut(f64, &[f64; N]) -> [f64; N]) -> Dense<N> {
         let mut k = self.stages;
         let h = self.size;
-        if self.order == Order::Fifth {
+        if self.order != Order::Eighth {
             return self.through(&[[0.0; N]; 4]);
         }
         k[13] = rates(self.start + c::NODES[13] * h, &advanced(&self.from, h, combine(&k, &c::STAGE_13)));
@@ -198,6 +206,21 @@ fn fifth<const N: usize>(
     ];
     let sum = squares(&combine(k, &difference), from, &to, tolerance);
     let error = size.abs() * (sum / tolerance.n_used as f64).sqrt();
+    (to, if error.is_nan() { f64::INFINITY } else { error })
+}
+
+#[inline(never)]
+fn fourth<const N: usize>(
+    k: &mut [[f64; N]; 16],
+    start: f64,
+    from: &[f64; N],
+    size: f64,
+    tolerance: &Tolerance<N>,
+    rates: &mut impl FnMut(f64, &[f64; N]) -> [f64; N],
+) -> ([f64; N], f64) {
+    let Some((to, off)) = rodas((start, from, &k[0]), size, tolerance, rates) else { return (*from, f64::INFINITY) };
+    k[12] = rates(start + size, &to);
+    let error = (squares(&off, from, &to, tolerance) / tolerance.n_used as f64).sqrt();
     (to, if error.is_nan() { f64::INFINITY } else { error })
 }
 

@@ -122,11 +122,50 @@ fn bands_hold_the_best_course() {
 fn the_rig_of_every_key_can_be_forecast() {
     let rig = rig::parse(include_str!("../../../tools/rehearsal/every-key.toml")).unwrap();
     let made = forecast(&rig, options(100)).unwrap();
-    assert!(made.inputs.all.len() == 20 && made.energy.gas_j > 10.0, "{:?}", made.energy);
+    assert!(made.inputs.all.len() == 20, "{:?}", made.inputs.all);
+    let gas = made.energy.iter().find(|entry| entry.name == "from gas").unwrap();
+    assert!(gas.is_source && gas.best_j > 10.0 && gas.monte_carlo.standard_deviation() > 0.1, "{gas:?}");
+    assert_eq!(made.unfitted.len(), 2);
     assert!(made.quantities[LAUNCH_SPEED].monte_carlo.len() == 100);
-    assert!(made.energy.closure_j.abs() < 1e-8 * made.energy.sources_j());
 }
 
+#[test]
+fn the_energy_split_is_a_distribution_that_closes() {
+    let made = forecast(&north_pier(), options(300)).unwrap();
+    let sum = |is_source: bool| {
+        let side = made.energy.iter().filter(|entry| entry.is_source == is_source);
+        side.fold((0.0, 0.0), |sum, entry| (sum.0 + entry.best_j, sum.1 + entry.monte_carlo.mean()))
+    };
+    let (sources, uses) = (sum(true), sum(false));
+    assert_close("best", uses.0, sources.0, 1e-8, 0.0);
+    assert_close("mean of the draws", uses.1, sources.1, 1e-5, 0.0);
+    let friction = made.energy.iter().find(|entry| entry.name == "friction").unwrap();
+    assert_eq!(friction.monte_carlo.len(), 300);
+    // Work of a constant force over a stroke that hardly moves: a quarter of itself uncertain, as the force is.
+    let relative = friction.monte_carlo.standard_deviation() / friction.best_j;
+    assert_close("friction", relative, 0.25, 0.15, 0.0);
+}
+
+#[test]
+fn the_filtered_peak_of_a_draw_is_what_filtering_that_draw_gives() {
+    use super::super::cfc::{CfcRatio, ratio};
+    use super::super::{Inputs, LaunchSetup};
+    use crate::estimation::Random;
+    // South-mole's peak lies at release in some draws and where its gas has come up in others: there the ratio has a kink.
+    for (text, relative) in [(NORTH_PIER, 2e-4), (include_str!("../../../tools/rehearsal/every-key.toml"), 1e-2)] {
+        let rig = rig::parse(text).unwrap();
+        let setup = LaunchSetup::planned(&rig).unwrap();
+        let inputs = Inputs::of(&rig, Known::Plan).unwrap();
+        let first_order = CfcRatio::of(&setup, &inputs).unwrap();
+        for draw in 0..8 {
+            let mut random = Random::new(5, draw);
+            let independent: Vec<f64> = inputs.all.iter().map(|_| random.normal()).collect();
+            let deviates = inputs.correlate(&independent);
+            let exact = ratio(&inputs.moved(&setup, &deviates).setup, 10_000.0).unwrap();
+            assert_close(&rig.name, first_order.at(&deviates), exact, relative, 0.0);
+        }
+    }
+}
 #[test]
 fn the_fast_way_is_good_to_a_hundred_thousandth() {
     use super::super::{FAST, launch_answers};

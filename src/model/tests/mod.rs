@@ -1,6 +1,5 @@
 //! The model against closed forms, tables and its own promises. Reference files: tests/reference/ (sources in each).
 
-mod closed_forms;
 mod energy;
 mod facts;
 mod forecast;
