@@ -94,6 +94,9 @@ struct RigArgs {
     /// Also cells left and right, payload recorder, release pin and beam gates, gas pressure.
     #[arg(long)]
     all_sensors: bool,
+    /// Three devices that print lines of text, instead of the two that send frames
+    #[arg(long, conflicts_with = "all_sensors")]
+    text_sensors: bool,
     /// Draw masses, cord force, friction, drag, wind and draw about their nominal values.
     #[arg(long)]
     vary: bool,
@@ -113,7 +116,11 @@ impl RigArgs {
             cell_offset_n: self.cell_offset_n,
             cord_temperature_c: self.cord_temperature_c,
             cycle: self.cycle,
-            sensors: if self.all_sensors { SensorSet::Full } else { SensorSet::Basic },
+            sensors: match (self.all_sensors, self.text_sensors) {
+                (_, true) => SensorSet::Text,
+                (true, false) => SensorSet::Full,
+                (false, false) => SensorSet::Basic,
+            },
             vary: self.vary,
             faults: self.faults,
         }

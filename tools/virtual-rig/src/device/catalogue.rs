@@ -15,6 +15,28 @@ pub struct DeviceSpec {
     pub samples_per_block: u16,
     /// The release pin and the beam gates end here.
     pub has_inputs: bool,
+    /// For a device that prints lines instead of sending frames.
+    pub text: Option<TextSpec>,
+}
+
+/// What a text device listens to and prints.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct TextSpec {
+    pub style: TextStyle,
+    pub start: Option<&'static str>,
+    pub poll: Option<&'static str>,
+    /// With its line end.
+    pub header: Option<&'static str>,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum TextStyle {
+    /// `ST,+   12.34 kg`
+    Indicator,
+    /// `+00012.3`, newtons
+    Polled,
+    /// `1234567,4000.0,0.0123`: microseconds of 32 bits, millimetres, g
+    Board,
 }
 
 /// Which devices there are.
@@ -25,6 +47,9 @@ pub enum SensorSet {
     Basic,
     /// Also cells at the left and right anchor, a recorder on the payload, release pin and beam gates, gas pressure.
     Full,
+    /// All of it printed as text: a hold indicator of 80 readings a second, a polled anchor display, a hobby board on the
+    /// shuttle with a time of its own.
+    Text,
 }
 
 const CELL: ChannelSpec = ChannelSpec {
@@ -107,6 +132,7 @@ const WINCH_NODE: DeviceSpec = DeviceSpec {
     ticks_per_sample: 100,
     samples_per_block: 100,
     has_inputs: false,
+    text: None,
 };
 const SHUTTLE_NODE: DeviceSpec =
     DeviceSpec { device_id: 0x5348_0001, name: "shuttle-node", channels: &SHUTTLE_CHANNELS, ..WINCH_NODE };
@@ -119,6 +145,7 @@ const PAYLOAD_NODE: DeviceSpec = DeviceSpec {
     ticks_per_sample: 200,
     samples_per_block: 50,
     has_inputs: false,
+    text: None,
 };
 const GATE_NODE: DeviceSpec = DeviceSpec {
     device_id: 0x4741_0001,
@@ -127,6 +154,7 @@ const GATE_NODE: DeviceSpec = DeviceSpec {
     ticks_per_sample: 0,
     samples_per_block: 0,
     has_inputs: true,
+    text: None,
 };
 const GAS_NODE: DeviceSpec = DeviceSpec {
     device_id: 0x4753_0001,
@@ -135,6 +163,60 @@ const GAS_NODE: DeviceSpec = DeviceSpec {
     ticks_per_sample: 500,
     samples_per_block: 20,
     has_inputs: false,
+    text: None,
+};
+
+/// A load-cell indicator: 0.01 kgf a digit, filtered to 20 Hz.
+const INDICATOR_CHANNELS: [ChannelSpec; 1] = [ChannelSpec {
+    name: "force",
+    encoding: Encoding::I32,
+    scale: 0.01 * STANDARD_GRAVITY_MPS2,
+    zero_counts: 0.0,
+    bandwidth_hz: Some(20.0),
+    noise_rms: 0.1,
+    ..CELL
+}];
+const DISPLAY_CHANNELS: [ChannelSpec; 1] =
+    [ChannelSpec { quantity: Quantity::AnchorTension, scale: 0.1, bandwidth_hz: Some(5.0), ..INDICATOR_CHANNELS[0] }];
+const BOARD_CHANNELS: [ChannelSpec; 2] = [
+    ChannelSpec { name: "position", ..SHUTTLE_CHANNELS[0] },
+    ChannelSpec {
+        encoding: Encoding::I32,
+        scale: 1e-4 * STANDARD_GRAVITY_MPS2,
+        zero_counts: 0.0,
+        counts_max: 400_000.0,
+        bandwidth_hz: Some(120.0),
+        ..ACCELEROMETER
+    },
+];
+
+const HOLD_DISPLAY: DeviceSpec = DeviceSpec {
+    device_id: 0,
+    name: "hold-display",
+    channels: &INDICATOR_CHANNELS,
+    ticks_per_sample: 12_500,
+    samples_per_block: 1,
+    has_inputs: false,
+    text: Some(TextSpec { style: TextStyle::Indicator, start: Some("RUN"), poll: None, header: None }),
+};
+const ANCHOR_DISPLAY: DeviceSpec = DeviceSpec {
+    name: "anchor-display",
+    channels: &DISPLAY_CHANNELS,
+    ticks_per_sample: 25_000,
+    text: Some(TextSpec { style: TextStyle::Polled, start: None, poll: Some("P"), header: None }),
+    ..HOLD_DISPLAY
+};
+const SHUTTLE_BOARD: DeviceSpec = DeviceSpec {
+    name: "shuttle-board",
+    channels: &BOARD_CHANNELS,
+    ticks_per_sample: 2_000,
+    text: Some(TextSpec {
+        style: TextStyle::Board,
+        start: Some("GO"),
+        poll: None,
+        header: Some("us,position_mm,accel_g\r\n"),
+    }),
+    ..HOLD_DISPLAY
 };
 
 /// The devices of the basic set, in the order of all lists.
@@ -142,6 +224,9 @@ pub const DEVICES: [DeviceSpec; 2] = [WINCH_NODE, SHUTTLE_NODE];
 
 /// The devices of a rig, in the order of all lists.
 pub fn devices(set: SensorSet, with_gas: bool) -> Vec<DeviceSpec> {
+    if set == SensorSet::Text {
+        return vec![HOLD_DISPLAY, ANCHOR_DISPLAY, SHUTTLE_BOARD];
+    }
     let mut devices = DEVICES.to_vec();
     if set == SensorSet::Full {
         devices.extend([ANCHOR_NODE, PAYLOAD_NODE, GATE_NODE]);

@@ -94,7 +94,7 @@ impl Device {
     }
 
     /// What a glitch adds to the tick of the block that spans its start.
-    fn glitch_ticks(&self, first_index: u64) -> i64 {
+    pub(super) fn glitch_ticks(&self, first_index: u64) -> i64 {
         let clock = self.now().clock;
         let scenario_s =
             |index| self.scenario_s(clock.epoch_host_ns as f64 + clock.since_epoch_ns(self.tick_of(index)));

@@ -4,6 +4,7 @@
 
 pub mod catalogue;
 mod frames;
+mod text;
 
 pub use catalogue::DEVICES;
 pub use frames::{BlockTruth, Outgoing};
@@ -30,7 +31,11 @@ pub enum Request {
     Describe,
     Start,
     Stop,
-    Time { token: u32 },
+    Time {
+        token: u32,
+    },
+    /// The latest reading, of a device that prints when asked.
+    Poll,
 }
 
 /// One boot of a device, and how many blocks had left before it.
@@ -129,6 +134,10 @@ impl Device {
     /// Takes bytes from the host; hands out each whole request.
     pub fn hear(&mut self, bytes: &[u8], mut on_request: impl FnMut(Request)) {
         for &byte in bytes {
+            if self.spec.text.is_some() {
+                self.hear_text(byte).into_iter().for_each(&mut on_request);
+                continue;
+            }
             if byte != 0 {
                 if self.input.len() < REQUEST_LEN_MAX {
                     self.input.push(byte);
@@ -158,9 +167,12 @@ impl Device {
         request: Request,
         received_ns: i64,
         clock_ns: impl Fn() -> i64,
+        rig_at: impl Fn(f64) -> Row,
     ) -> Result<Option<Outgoing>, EncodeError> {
         match request {
             _ if !self.powered => Ok(None),
+            Request::Poll => Ok(self.poll(received_ns, rig_at)),
+            Request::Describe | Request::Time { .. } if self.spec.text.is_some() => Ok(None),
             Request::Describe => self.description().map(Some),
             Request::Time { token } => self.time_reply(token, received_ns, clock_ns()).map(Some),
             Request::Start => {
@@ -194,6 +206,7 @@ impl Device {
         for sensor in &mut self.sensors {
             sensor.restart(TICK_RATE_HZ / f64::from(self.spec.ticks_per_sample));
         }
+        self.header();
     }
 
     /// Loses power: says nothing until it boots again.
@@ -212,6 +225,9 @@ impl Device {
         let boot = Boot { boot_id: self.boot_draw.bits() as u32, clock: self.clock().rebooted(host_ns) };
         self.boots.push(boot);
         (self.control_sequence, self.block_sequence, self.next_index) = (0, 0, 0);
+        if self.spec.text.is_some() {
+            return Ok(());
+        }
         let description = self.description()?;
         self.queue.push_back(description);
         Ok(())
@@ -222,6 +238,9 @@ impl Device {
     /// # Errors
     /// When the description does not fit a frame.
     pub fn change_description(&mut self) -> Result<(), EncodeError> {
+        if self.spec.text.is_some() {
+            return Ok(());
+        }
         self.description_id += 1;
         let description = self.description()?;
         self.queue.push_back(description);
@@ -239,6 +258,9 @@ impl Device {
         }
         if !self.running {
             return None;
+        }
+        if let Some(text) = self.spec.text {
+            return if text.poll.is_none() { self.block_due_ns() } else { None };
         }
         [Some(self.next_second_ns), self.edge_due_ns(), self.block_due_ns()].into_iter().flatten().min()
     }
@@ -269,6 +291,9 @@ impl Device {
         if !self.running {
             return Ok(None);
         }
+        if self.spec.text.is_some() {
+            return Ok(due(self.due_ns()).then(|| self.line(&rig_at)));
+        }
         if self.next_second_ns <= host_ns {
             self.next_second_ns += EVERY_SECOND_NS;
             let status = self.status(host_ns)?;
@@ -286,22 +311,26 @@ impl Device {
 
     /// Samples of the next block, packed.
     fn samples(&mut self, rig_at: impl Fn(f64) -> Row) -> Vec<u8> {
-        let (clock, ticks) = (self.clock(), self.spec.ticks_per_sample);
-        let interval_ns = 1e9 * f64::from(ticks) / TICK_RATE_HZ / OVERSAMPLING as f64;
         let mut samples = Vec::with_capacity(usize::from(self.spec.samples_per_block) * self.sample_len());
         for index in self.next_index..self.next_index + u64::from(self.spec.samples_per_block) {
-            let since_boot_ns = clock.since_epoch_ns(self.tick_of(index));
-            let at_ns = clock.epoch_host_ns as f64 + since_boot_ns;
-            let rows = std::array::from_fn(|back| {
-                let before_ns = (OVERSAMPLING - 1 - back) as f64 * interval_ns;
-                rig_at(self.scenario_s(at_ns - before_ns))
-            });
-            for sensor in &mut self.sensors {
-                let counts = sensor.counts(&rows, since_boot_ns * 1e-9);
-                frames::pack(sensor.spec.encoding, counts, &mut samples);
+            for (counts, channel) in self.counts_at(index, &rig_at).into_iter().zip(&self.channels) {
+                frames::pack(channel.encoding, counts, &mut samples);
             }
         }
         samples
+    }
+
+    /// Counts of every channel at a sample index.
+    fn counts_at(&mut self, index: u64, rig_at: &impl Fn(f64) -> Row) -> Vec<i32> {
+        let clock = self.clock();
+        let interval_ns = 1e9 * f64::from(self.spec.ticks_per_sample) / TICK_RATE_HZ / OVERSAMPLING as f64;
+        let since_boot_ns = clock.since_epoch_ns(self.tick_of(index));
+        let at_ns = clock.epoch_host_ns as f64 + since_boot_ns;
+        let rows = std::array::from_fn(|back| {
+            let before_ns = (OVERSAMPLING - 1 - back) as f64 * interval_ns;
+            rig_at(self.scenario_s(at_ns - before_ns))
+        });
+        self.sensors.iter_mut().map(|sensor| sensor.counts(&rows, since_boot_ns * 1e-9)).collect()
     }
 
     fn sample_len(&self) -> usize {

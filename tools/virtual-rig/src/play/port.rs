@@ -148,7 +148,7 @@ impl Port {
 
     /// # Errors
     /// When the pty cannot be read or an answer not be made.
-    pub fn read_requests(&mut self) -> Result<(), PlayError> {
+    pub fn read_requests(&mut self, performance: &Performance) -> Result<(), PlayError> {
         let mut buffer = [0; READ_LEN];
         while let Some(pty) = &self.pty {
             let n_bytes = match rustix::io::read(&pty.master, &mut buffer) {
@@ -161,7 +161,8 @@ impl Port {
             let mut requests = Vec::new();
             self.device.hear(&buffer[..n_bytes], |request| requests.push(request));
             for request in requests {
-                let answer = self.device.answer(request, received_ns, monotonic_ns)?;
+                let answer =
+                    self.device.answer(request, received_ns, monotonic_ns, |t_s| performance.trajectory.at(t_s))?;
                 self.answers.extend(answer);
             }
             self.ever_started |= self.device.running();

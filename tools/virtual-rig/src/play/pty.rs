@@ -112,7 +112,7 @@ fn over(zero_ns: Option<i64>, performance: &Performance, ports: &[Port], setting
 /// Serves every port once, then sleeps until something is due.
 fn turn(ports: &mut [Port], performance: &Performance) -> Result<(), PlayError> {
     for port in ports.iter_mut() {
-        port.read_requests()?;
+        port.read_requests(performance)?;
         port.write(performance)?;
     }
     let due_ns = ports.iter().filter_map(|port| port.due_ns()).min().unwrap_or(i64::MAX);

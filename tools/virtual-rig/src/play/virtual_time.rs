@@ -26,6 +26,8 @@ const TRANSPORT_SPREAD_NS: f64 = 120e3;
 const PACKING_NS: i64 = 150_000;
 /// From a request's arrival to its answer.
 const ANSWERING_NS: i64 = 30_000;
+/// Between two polls of a device that prints when asked.
+const POLL_INTERVAL_NS: i64 = 50_000_000;
 const WINDOW_NS: i64 = 50_000_000;
 
 /// Something the host saw or did.
@@ -139,6 +141,7 @@ struct Hand {
     transport: Draw,
     next_request_ns: i64,
     next_start_ns: i64,
+    next_poll_ns: i64,
     next_token: u32,
     now_ns: i64,
     last_read_ns: i64,
@@ -154,6 +157,8 @@ impl Hand {
         let mut device = Device::boot(number, performance, BOOT_HOST_NS);
         device.set_scenario_zero(BOOT_HOST_NS + SCENARIO_AFTER_BOOT_NS);
         let line = Line::new(&device.faults, seed, number);
+        let text = device.spec.text;
+        let polled = text.is_some_and(|text| text.poll.is_some());
         Self {
             idx,
             changes: line.changes().into(),
@@ -163,8 +168,9 @@ impl Hand {
             blocks: Vec::new(),
             touched: Vec::new(),
             transport: Draw::new(seed, Purpose::Transport { device: number }),
-            next_request_ns: BOOT_HOST_NS + 20_000_000,
-            next_start_ns: BOOT_HOST_NS,
+            next_request_ns: if text.is_some() { i64::MAX } else { BOOT_HOST_NS + 20_000_000 },
+            next_start_ns: if polled { i64::MAX } else { BOOT_HOST_NS },
+            next_poll_ns: if polled { BOOT_HOST_NS } else { i64::MAX },
             next_token: 1,
             now_ns: BOOT_HOST_NS,
             last_read_ns: BOOT_HOST_NS,
@@ -192,7 +198,8 @@ impl Hand {
         loop {
             let device_ns = self.device.due_ns().map_or(i64::MAX, |due_ns| due_ns.max(self.now_ns));
             let change_ns = self.changes.front().map_or(i64::MAX, |change| self.host_ns(change.t_s));
-            let next_ns = device_ns.min(change_ns).min(self.next_request_ns).min(self.next_start_ns);
+            let next_ns =
+                device_ns.min(change_ns).min(self.next_request_ns).min(self.next_start_ns).min(self.next_poll_ns);
             if next_ns >= end_ns {
                 self.flush(end_ns);
                 return Ok(());
@@ -200,12 +207,15 @@ impl Hand {
             self.now_ns = next_ns;
             if next_ns == change_ns {
                 self.change(change_ns)?;
+            } else if next_ns == self.next_poll_ns {
+                self.next_poll_ns += POLL_INTERVAL_NS;
+                self.ask(Request::Poll, next_ns, performance)?;
             } else if next_ns == self.next_start_ns {
                 self.next_start_ns += START_INTERVAL_NS;
-                self.ask(Request::Describe, next_ns)?;
-                self.ask(Request::Start, next_ns)?;
+                self.ask(Request::Describe, next_ns, performance)?;
+                self.ask(Request::Start, next_ns, performance)?;
             } else if next_ns == self.next_request_ns {
-                self.ask_time()?;
+                self.ask_time(performance)?;
             } else {
                 let sent_ns = next_ns + PACKING_NS;
                 if let Some(outgoing) = self.device.next(sent_ns, |t_s| performance.trajectory.at(t_s))? {
@@ -225,7 +235,9 @@ impl Hand {
                 self.last_read_ns = self.last_read_ns.max(host_ns);
                 self.delivered.push(Delivery { host_ns: self.last_read_ns, device: self.idx, what });
                 // A host that finds its port again starts the device at once.
-                self.next_start_ns = if self.cable_in { host_ns } else { self.next_start_ns };
+                if self.cable_in && self.next_start_ns != i64::MAX {
+                    self.next_start_ns = host_ns;
+                }
             }
             ChangeKind::PowerOff => self.device.power_off(),
             ChangeKind::Boot => self.device.reboot(host_ns)?,
@@ -235,19 +247,21 @@ impl Hand {
     }
 
     /// A request of the host's, which leaves at `asked_ns`.
-    fn ask(&mut self, request: Request, asked_ns: i64) -> Result<(), EncodeError> {
+    fn ask(&mut self, request: Request, asked_ns: i64, performance: &Performance) -> Result<(), EncodeError> {
         if !self.cable_in {
             return Ok(());
         }
         let received_ns = asked_ns + self.transport_ns();
         let sent_ns = received_ns + ANSWERING_NS;
-        if let Some(answer) = self.device.answer(request, received_ns, || sent_ns)? {
+        if let Some(answer) =
+            self.device.answer(request, received_ns, || sent_ns, |t_s| performance.trajectory.at(t_s))?
+        {
             self.send(sent_ns, answer);
         }
         Ok(())
     }
 
-    fn ask_time(&mut self) -> Result<(), EncodeError> {
+    fn ask_time(&mut self, performance: &Performance) -> Result<(), EncodeError> {
         let (asked_ns, token) = (self.next_request_ns, self.next_token);
         let wait_ns = REQUEST_INTERVAL_NS + self.transport.even(-REQUEST_DITHER_NS, REQUEST_DITHER_NS);
         self.next_request_ns = asked_ns + wait_ns as i64;
@@ -255,7 +269,7 @@ impl Hand {
             self.next_token += 1;
             let what = Delivered::TimeRequested { token };
             self.delivered.push(Delivery { host_ns: asked_ns, device: self.idx, what });
-            self.ask(Request::Time { token }, asked_ns)?;
+            self.ask(Request::Time { token }, asked_ns, performance)?;
         }
         Ok(())
     }
