@@ -8,7 +8,7 @@ use std::path::Path;
 
 use tautrail::calibration::Signal;
 use tautrail::capture::{
-    ChannelDescription, Counts, DeviceDescription, Edge, Encoding, Gap, Rejected, Status, StreamDescription,
+    ChannelDescription, Counts, DeviceDescription, Edge, Encoding, Gap, Rejected, Status, StreamDescription, TimeBase,
 };
 use tautrail::rig::Role;
 use tautrail::trial::{
@@ -59,6 +59,7 @@ fn description(second: Encoding) -> DeviceDescription {
         boot_id: 3,
         description_id: 1,
         streams: vec![StreamDescription { stream: 1, ticks_per_sample: 100, channels }],
+        time_base: TimeBase::Ticks,
     }
 }
 

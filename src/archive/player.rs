@@ -89,15 +89,15 @@ pub(super) fn play(
 impl Player<'_> {
     fn opening(&mut self, host_ns: i64, open: Box<SegmentOpen>) -> Result<(), SealError> {
         while self.devices.len() < open.devices.len() {
-            let mut decoder = DeviceDecoder::new();
+            let device = &open.devices[self.devices.len()];
+            let mut decoder = decoder_of(&open.rig_text, &device.name);
             let mut known = None;
-            if let Some(frame) = open.devices[self.devices.len()].describe() {
-                decoder.feed(host_ns, &frame, &mut |captured| {
-                    if let Captured::Description(description) = captured {
-                        known = Some(description);
-                    }
-                });
-            }
+            // A device that speaks text describes itself by the rig file, without any bytes.
+            decoder.feed(host_ns, &device.describe().unwrap_or_default(), &mut |captured| {
+                if let Captured::Description(description) = captured {
+                    known = Some(description);
+                }
+            });
             self.devices.push(DevicePlayer { decoder, known });
         }
         (self.tell)(Told::Opening { host_ns, open })
@@ -118,6 +118,10 @@ impl Player<'_> {
             self.decode(host_ns, device, what);
             self.hand_on(device, within)?;
         }
+        if let Body::Lost(_) = &body {
+            self.break_off(host_ns, device);
+            self.hand_on(device, within)?;
+        }
         if !within {
             return Ok(());
         }
@@ -130,6 +134,9 @@ impl Player<'_> {
             }
             Body::Link(LinkWhat::Down { reason }) => {
                 (self.tell)(Told::Link { device, host_ns, text: format!("link down: {reason}") })
+            }
+            Body::Link(LinkWhat::Note { text }) => {
+                (self.tell)(Told::Link { device, host_ns, text: format!("link note: {text}") })
             }
             Body::Clocks(clocks) => (self.tell)(Told::Clocks(clocks)),
             Body::Event(event) => (self.tell)(Told::Event { host_ns, event }),
@@ -172,8 +179,17 @@ impl Player<'_> {
         match what {
             LinkWhat::Bytes(bytes) => player.decoder.feed(host_ns, bytes, &mut |captured| heard.push(captured)),
             LinkWhat::Down { .. } => player.decoder.link_lost(host_ns, &mut |captured| heard.push(captured)),
-            LinkWhat::Up { .. } | LinkWhat::TimeRequested { .. } => {}
+            // After a crash there is no "down" before it.
+            LinkWhat::Up { .. } => player.decoder.link_lost(host_ns, &mut |captured| heard.push(captured)),
+            LinkWhat::TimeRequested { .. } | LinkWhat::Note { .. } => {}
         }
+    }
+
+    /// Bytes are missing here: what follows does not go on from what came before.
+    fn break_off(&mut self, host_ns: i64, device: DeviceIdx) {
+        let Some(player) = self.devices.get_mut(usize::from(device.0)) else { return };
+        let heard = &mut self.heard;
+        player.decoder.link_lost(host_ns, &mut |captured| heard.push(captured));
     }
 
     fn hand_on(&mut self, device: DeviceIdx, within: bool) -> Result<(), SealError> {
@@ -201,4 +217,11 @@ impl Player<'_> {
         }
         Ok(())
     }
+}
+
+/// By the rig file that was in force; where this program refuses it, everything is taken for frames.
+fn decoder_of(rig_text: &str, name: &str) -> DeviceDecoder {
+    let rig = crate::rig::parse(rig_text).ok();
+    let device = rig.as_ref().and_then(|rig| rig.devices.iter().find(|device| device.name == name));
+    device.map_or_else(DeviceDecoder::new, DeviceDecoder::of)
 }

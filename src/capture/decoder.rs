@@ -1,4 +1,4 @@
-//! One device's bytes to what they say.
+//! One device's frames to what they say.
 //!
 //! Guarantees: any bytes are accepted, and nothing is dropped unseen. What cannot be used is handed on as
 //! [`Captured::Rejected`], as received (without delimiters), with the reason; how many of those to keep is the caller's
@@ -32,11 +32,13 @@ pub struct Counters {
     pub lost_frames: u64,
     /// Samples that the indices show to be missing, over all streams.
     pub missing: u64,
+    /// Places where they are missing.
+    pub gaps: u64,
 }
 
-/// Decodes one device's bytes.
+/// Decodes the bytes of one device that speaks frames.
 #[derive(Debug)]
-pub struct DeviceDecoder {
+pub struct FrameDecoder {
     deframer: Deframer<Box<[u8]>>,
     /// The bytes of the frame at hand, as received; decoding in place overwrites them in the deframer.
     as_received: Vec<u8>,
@@ -67,13 +69,13 @@ const ODD_SAMPLES: Refusal = "samples do not fit the description";
 const OVERLONG: Refusal = "too long for a frame";
 const CUT_OFF: Refusal = "cut off when the link was lost";
 
-impl Default for DeviceDecoder {
+impl Default for FrameDecoder {
     fn default() -> Self {
         Self::new()
     }
 }
 
-impl DeviceDecoder {
+impl FrameDecoder {
     pub fn new() -> Self {
         let deframer = Deframer::new(vec![0; MAX_COBS_LEN].into_boxed_slice());
         Self { deframer, as_received: Vec::with_capacity(MAX_COBS_LEN), state: State::default() }
@@ -194,6 +196,7 @@ impl State {
         let counts = unpack::unpack(block.samples, block.n_samples.into(), described).ok_or(ODD_SAMPLES)?;
         if n_missing > 0 {
             self.counters.missing = self.counters.missing.saturating_add(n_missing);
+            self.counters.gaps += 1;
             sink(Captured::Gap(Gap {
                 host_ns,
                 boot_id: header.boot_id,

@@ -2,7 +2,7 @@
 
 use firmware_protocol::{Channel, Describe, Header, Stream};
 
-use super::sample::{ChannelDescription, DeviceDescription, Encoding, StreamDescription};
+use super::sample::{ChannelDescription, DeviceDescription, Encoding, StreamDescription, TimeBase};
 
 /// What may be believed of a device's clock.
 const TICK_RATES_HZ: std::ops::RangeInclusive<f64> = 1.0..=1e12;
@@ -30,6 +30,7 @@ pub(super) fn owned(header: &Header, describe: &Describe<'_>) -> Result<DeviceDe
         boot_id: header.boot_id,
         description_id: header.description_id,
         streams,
+        time_base: TimeBase::Ticks,
     })
 }
 

@@ -1,14 +1,17 @@
-//! Bytes to samples: frames, device descriptions, blocks, gaps, clock maps. Pure: no port, no clock.
+//! Bytes to samples: frames, lines of text, device descriptions, blocks, gaps, clock maps. Pure: no port, no clock.
 
 mod clock;
 mod decoder;
 mod description;
+mod device;
 mod sample;
+mod text;
 mod unpack;
 
 pub use clock::{
     BlockTimes, ClockMethod, ClockPiece, ClockSamples, LiveClock, NominalClock, TimeExchange, TimeRequests, fit_clock,
     piece_at,
 };
-pub use decoder::{Counters, DeviceDecoder};
+pub use decoder::{Counters, FrameDecoder};
+pub use device::DeviceDecoder;
 pub use sample::*;

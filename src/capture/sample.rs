@@ -42,6 +42,18 @@ pub struct DeviceDescription {
     pub boot_id: u32,
     pub description_id: u16,
     pub streams: Vec<StreamDescription>,
+    pub time_base: TimeBase,
+}
+
+/// What a device's ticks are.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum TimeBase {
+    /// Counts of the device's clock, with the tick at which a block was sent.
+    Ticks,
+    /// A time that the device prints; its lines may all be late by up to `hidden_delay_ns` more than frames.
+    Printed { hidden_delay_ns: f64 },
+    /// The host's stamps, nanoseconds: readings were taken up to twice `half_width_ns` earlier, as likely anywhere in it.
+    Arrival { half_width_ns: f64 },
 }
 
 /// Counts of one channel, as received.

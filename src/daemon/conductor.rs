@@ -147,6 +147,7 @@ impl Conductor {
         let happenings = match item {
             FromLinks::Heartbeat { host_ns } => self.live.tick(host_ns),
             FromLinks::Lost { device, lost } => {
+                self.live.on_lost(device, lost.last_host_ns);
                 let device = self.device_names.get(usize::from(device.0)).cloned().unwrap_or_default();
                 self.note_live_loss(&device, lost);
                 Vec::new()
@@ -170,6 +171,7 @@ impl Conductor {
         let text = match &event.what {
             LinkWhat::Up { path, baud } => format!("{device}: {path} is open at {baud} baud"),
             LinkWhat::Down { reason } => format!("{device}: {reason}"),
+            LinkWhat::Note { text } => format!("{device}: {text}"),
             LinkWhat::Bytes(_) | LinkWhat::TimeRequested { .. } => return,
         };
         // In the journal it is a record of its own already.
@@ -357,7 +359,7 @@ fn recorded_bytes(what: &LinkWhat) -> usize {
     const FRAME: usize = 28;
     match what {
         LinkWhat::Bytes(bytes) => bytes.len() + FRAME,
-        LinkWhat::Up { .. } | LinkWhat::Down { .. } | LinkWhat::TimeRequested { .. } => FRAME,
+        LinkWhat::Up { .. } | LinkWhat::Down { .. } | LinkWhat::Note { .. } | LinkWhat::TimeRequested { .. } => FRAME,
     }
 }
 

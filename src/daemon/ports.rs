@@ -28,7 +28,7 @@ impl FirstOpenings {
                     *is_busy = reason == busy;
                 }
             }
-            LinkWhat::Bytes(_) | LinkWhat::TimeRequested { .. } => return false,
+            LinkWhat::Bytes(_) | LinkWhat::TimeRequested { .. } | LinkWhat::Note { .. } => return false,
         }
         !self.any_opened && self.ports.iter().all(|(_, is_busy)| *is_busy)
     }

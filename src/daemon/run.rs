@@ -13,7 +13,7 @@ use crate::journal::{
     ArchiveLock, Clocks, DeviceAtOpen, Disk, Ends, Journal, Order, Origin, RealDisk, Recorder, Settings, Start,
     TrialRange,
 };
-use crate::link::{self, DeviceIdx, HostClock, PortSpec, Sinks, SystemClock, spawn_links};
+use crate::link::{self, HostClock, PortSpec, Sinks, SystemClock, spawn_links};
 use crate::live::Live;
 use crate::rig::Rig;
 
@@ -144,12 +144,7 @@ fn declared_bytes_per_s(rig: &Rig) -> f64 {
 }
 
 fn ports(rig: &Rig) -> Vec<PortSpec> {
-    let spec = |(index, device): (usize, &crate::rig::Device)| PortSpec {
-        device: DeviceIdx(index as u16),
-        path: PathBuf::from(&device.port),
-        baud: device.baud,
-    };
-    rig.devices.iter().enumerate().map(spec).collect()
+    (0..).zip(&rig.devices).map(|(idx, device)| PortSpec::of(idx, device)).collect()
 }
 
 /// Goes on with the journal found, or begins a new one, and takes charge of the segments of before.

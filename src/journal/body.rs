@@ -130,6 +130,7 @@ pub(super) mod kind {
     pub const TRIAL_CLOSE: u8 = 9;
     pub const EVENT: u8 = 10;
     pub const LOST: u8 = 11;
+    pub const LINK_NOTE: u8 = 12;
 }
 
 #[derive(Serialize, Deserialize)]
@@ -149,6 +150,7 @@ impl Body {
             Self::Link(LinkWhat::Bytes(bytes)) => (kind::BYTES, bytes.to_vec()),
             Self::Link(LinkWhat::TimeRequested { token }) => (kind::TIME_REQUESTED, token.to_le_bytes().to_vec()),
             Self::Link(LinkWhat::Down { reason }) => (kind::LINK_DOWN, reason.as_bytes().to_vec()),
+            Self::Link(LinkWhat::Note { text }) => (kind::LINK_NOTE, text.as_bytes().to_vec()),
             Self::Heartbeat => (kind::HEARTBEAT, Vec::new()),
             Self::Clocks(clocks) => (kind::CLOCKS, json(clocks)),
             Self::TrialOpen(open) => (kind::TRIAL_OPEN, json(open)),
@@ -198,6 +200,7 @@ fn decode(kind: u8, payload: &[u8]) -> Option<Body> {
             Body::Link(LinkWhat::TimeRequested { token: u32::from_le_bytes(array(payload)) })
         }
         kind::LINK_DOWN => Body::Link(LinkWhat::Down { reason: String::from_utf8_lossy(payload).into_owned() }),
+        kind::LINK_NOTE => Body::Link(LinkWhat::Note { text: String::from_utf8_lossy(payload).into_owned() }),
         kind::HEARTBEAT => Body::Heartbeat,
         kind::CLOCKS => Body::Clocks(parse(payload)?),
         kind::TRIAL_OPEN => Body::TrialOpen(parse(payload)?),
@@ -227,6 +230,7 @@ mod tests {
             Body::Link(LinkWhat::Up { path: "/dev/ttyACM0".into(), baud: 921_600 }),
             Body::Link(LinkWhat::Bytes(Bytes::from_static(b"\x00\x01\xff"))),
             Body::Link(LinkWhat::TimeRequested { token: 0xdead_beef }),
+            Body::Link(LinkWhat::Note { text: "its adapter hands bytes over within 1 ms".into() }),
             Body::Link(LinkWhat::Down { reason: "link lost: the far end closed".into() }),
             Body::Heartbeat,
             Body::Lost(Lost { n_events: 3, n_bytes: 4, first_host_ns: 5, last_host_ns: 6 }),

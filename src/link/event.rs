@@ -18,6 +18,8 @@ pub struct LinkEvent {
 pub enum LinkWhat {
     /// The port is open; says which path, at which baud rate it really runs.
     Up { path: String, baud: u32 },
+    /// Something to know about the open port: how it was set, what its driver counted.
+    Note { text: String },
     /// Bytes of one read, as received.
     Bytes(Bytes),
     /// A time request left for the device at `host_ns`.
@@ -25,3 +27,6 @@ pub enum LinkWhat {
     /// The port was lost or could not be opened; the sentence says what and why.
     Down { reason: String },
 }
+
+/// The reason of a link that went down because the program was told to stop.
+pub const STOPPED: &str = "the daemon stops";

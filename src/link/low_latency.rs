@@ -33,17 +33,37 @@ struct SerialStruct {
 /// `ASYNC_LOW_LATENCY` of `<linux/tty_flags.h>`.
 const LOW_LATENCY: libc::c_int = 1 << 13;
 
-/// Returns a warning when bytes may be held back all the same.
-pub(super) fn ask(port: &impl AsRawFd, path: &Path) -> Option<String> {
-    let by_flag = set_flag(port);
-    let timer = latency_timer(path)?;
-    if by_flag.is_ok() && read_ms(&timer) == Some(1) {
-        return None;
+/// What is known of how long a port's bytes are held back.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Held {
+    /// The driver has no such timer.
+    NoTimer,
+    /// The timer in force.
+    ForMs(u32),
+}
+
+impl Held {
+    /// A sentence, where there is something to say.
+    pub fn sentence(self) -> Option<String> {
+        match self {
+            Self::NoTimer => None,
+            Self::ForMs(ms @ 0..=1) => Some(format!("its adapter hands bytes over within {ms} ms")),
+            Self::ForMs(ms) => Some(format!(
+                "its adapter holds bytes back for {ms} ms: let this user write its latency_timer (see the udev rules)"
+            )),
+        }
     }
-    match std::fs::write(&timer, "1") {
-        Ok(()) => None,
-        Err(_) => read_ms(&timer).filter(|&ms| ms > 1).map(|ms| format!("its adapter holds bytes back for {ms} ms")),
+}
+
+/// Asks for bytes at once, by the driver's flag and by the adapter's timer, and says what is in force.
+pub(super) fn ask(port: &impl AsRawFd, path: &Path) -> Held {
+    // A port without the flag refuses it; its timer, if it has one, is looked at all the same.
+    let _by_flag = set_flag(port);
+    let Some(timer) = latency_timer(path) else { return Held::NoTimer };
+    if read_ms(&timer).is_some_and(|ms| ms > 1) {
+        let _refused = std::fs::write(&timer, "1");
     }
+    read_ms(&timer).map_or(Held::NoTimer, Held::ForMs)
 }
 
 fn set_flag(port: &impl AsRawFd) -> std::io::Result<()> {

@@ -7,6 +7,7 @@
 mod clock;
 mod event;
 mod low_latency;
+mod overruns;
 mod port;
 mod sinks;
 mod task;
@@ -15,8 +16,8 @@ mod tests;
 mod threads;
 
 pub use clock::{HostClock, SystemClock};
-pub use event::{DeviceIdx, LinkEvent, LinkWhat};
+pub use event::{DeviceIdx, LinkEvent, LinkWhat, STOPPED};
 pub use port::{PortError, look};
 pub use sinks::{FromLinks, Lost, Sinks};
-pub use task::PortSpec;
+pub use task::{Asks, PortSpec};
 pub use threads::{Links, LinksError, spawn_links};

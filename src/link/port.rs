@@ -10,9 +10,12 @@ use std::path::PathBuf;
 use std::time::Duration;
 
 use rustix::termios::{ControlModes, OptionalActions, tcgetattr, tcsetattr};
-use tokio_serial::{ClearBuffer, SerialPort, SerialPortBuilderExt, SerialStream};
+use tokio_serial::{
+    ClearBuffer, DataBits, FlowControl, Parity, SerialPort, SerialPortBuilderExt, SerialStream, StopBits,
+};
 
 use super::low_latency;
+use crate::rig::SerialSettings;
 
 /// Above this relative difference between the rate asked for and the rate set, bytes are at risk.
 const BAUD_TOLERANCE: f64 = 0.02;
@@ -38,8 +41,8 @@ pub(super) struct OpenPort {
     pub stream: SerialStream,
     /// The rate the driver says it set.
     pub baud: u32,
-    /// What is not as it should be, for the log.
-    pub warnings: Vec<String>,
+    /// How it was set, and what is not as it should be.
+    pub notes: Vec<String>,
 }
 
 /// Says whether a serial port stands at `path`, without opening it.
@@ -58,24 +61,49 @@ pub fn look(path: &std::path::Path) -> Result<(), PortError> {
 }
 
 /// Opens for this program alone, raw, with an empty receive queue and the driver's holding back of bytes switched off.
-pub(super) fn open(path: &std::path::Path, baud: u32) -> Result<OpenPort, PortError> {
+///
+/// Linux raises DTR on every open, whatever is asked, so that boards wired for it reset now; closing keeps it up.
+pub(super) fn open(path: &std::path::Path, baud: u32, serial: SerialSettings) -> Result<OpenPort, PortError> {
     look(path)?;
-    let builder = tokio_serial::new(path.to_string_lossy(), baud).timeout(Duration::ZERO);
+    let builder = tokio_serial::new(path.to_string_lossy(), baud)
+        .timeout(Duration::ZERO)
+        .data_bits(data_bits(serial))
+        .parity(parity(serial))
+        .stop_bits(if serial.stop_bits == 2 { StopBits::Two } else { StopBits::One })
+        .flow_control(FlowControl::None);
     let stream = builder.open_native_async().map_err(|error| refused(path, &error))?;
-    let mut warnings = Vec::new();
+    let mut notes = Vec::new();
     // What waited in the queue is of an unknown time; framing finds its step again.
     if let Err(error) = stream.clear(ClearBuffer::Input) {
-        warnings.push(format!("stale bytes could not be cleared: {error}"));
+        notes.push(format!("stale bytes could not be cleared: {error}"));
     }
-    if let Err(error) = keep_dtr_on_close(&stream) {
-        warnings.push(format!("closing the port may reset the device: {error}"));
+    match keep_dtr_on_close(&stream) {
+        Ok(()) => {}
+        Err(error) => notes.push(format!("closing the port may reset the device: {error}")),
     }
-    warnings.extend(low_latency::ask(&stream, path));
+    notes.extend(low_latency::ask(&stream, path).sentence());
     let set = stream.baud_rate().unwrap_or(baud);
     if (f64::from(set) / f64::from(baud.max(1)) - 1.0).abs() > BAUD_TOLERANCE {
-        warnings.push(format!("{baud} baud was asked for, the port runs at {set}"));
+        notes.push(format!("{baud} baud was asked for, the port runs at {set}: bytes will be damaged"));
     }
-    Ok(OpenPort { stream, baud: set, warnings })
+    Ok(OpenPort { stream, baud: set, notes })
+}
+
+const fn data_bits(serial: SerialSettings) -> DataBits {
+    match serial.data_bits {
+        5 => DataBits::Five,
+        6 => DataBits::Six,
+        7 => DataBits::Seven,
+        _ => DataBits::Eight,
+    }
+}
+
+const fn parity(serial: SerialSettings) -> Parity {
+    match serial.parity {
+        crate::rig::Parity::None => Parity::None,
+        crate::rig::Parity::Even => Parity::Even,
+        crate::rig::Parity::Odd => Parity::Odd,
+    }
 }
 
 fn refused(path: &std::path::Path, error: &tokio_serial::Error) -> PortError {
@@ -163,9 +191,48 @@ mod tests {
     #[tokio::test(flavor = "current_thread")]
     async fn a_busy_port_is_not_called_absent() {
         let pty = crate::link::tests::Pty::new();
-        let first = open(&pty.path, 115_200).unwrap();
-        assert_eq!(open(&pty.path, 115_200).err(), Some(PortError::Busy { path: pty.path.clone() }));
+        let first = open(&pty.path, 115_200, SerialSettings::default()).unwrap();
+        assert_eq!(
+            open(&pty.path, 115_200, SerialSettings::default()).err(),
+            Some(PortError::Busy { path: pty.path.clone() })
+        );
         drop(first);
-        assert!(open(&pty.path, 115_200).is_ok());
+        assert!(open(&pty.path, 115_200, SerialSettings::default()).is_ok());
+    }
+
+    fn settings_of(port: &SerialStream) -> rustix::termios::Termios {
+        // SAFETY: the stream owns the descriptor and outlives this borrow.
+        tcgetattr(unsafe { BorrowedFd::borrow_raw(port.as_raw_fd()) }).unwrap()
+    }
+
+    #[tokio::test(flavor = "current_thread")]
+    async fn a_port_is_raw_and_keeps_dtr_when_it_is_closed() {
+        use rustix::termios::{InputModes, LocalModes, OutputModes};
+        let pty = crate::link::tests::Pty::new();
+        let open = open(&pty.path, 115_200, SerialSettings::default()).unwrap();
+        let set = settings_of(&open.stream);
+        assert!(!set.control_modes.contains(ControlModes::HUPCL));
+        assert!(!set.local_modes.intersects(LocalModes::ICANON | LocalModes::ECHO | LocalModes::ISIG));
+        let changing =
+            InputModes::ICRNL | InputModes::INLCR | InputModes::IGNCR | InputModes::IXON | InputModes::ISTRIP;
+        assert!(!set.input_modes.intersects(changing));
+        assert!(!set.output_modes.contains(OutputModes::OPOST));
+        assert_eq!(open.notes, Vec::<String>::new());
+    }
+
+    #[tokio::test(flavor = "current_thread")]
+    async fn bits_parity_and_odd_baud_rates_are_set_as_asked_and_read_back() {
+        let pty = crate::link::tests::Pty::new();
+        let serial = SerialSettings { data_bits: 7, parity: crate::rig::Parity::Even, stop_bits: 2 };
+        for baud in [250_000, 12_345, 1_843_200, 3_000_000] {
+            let open = open(&pty.path, baud, serial).unwrap();
+            assert_eq!(open.baud, baud);
+            // A pty's own driver fixes eight bits without parity (Linux, pty_set_termios); the second stop bit it keeps.
+            assert!(settings_of(&open.stream).control_modes.contains(ControlModes::CSTOPB));
+            assert_eq!(
+                (open.stream.stop_bits().unwrap(), open.stream.flow_control().unwrap()),
+                (StopBits::Two, FlowControl::None)
+            );
+        }
     }
 }

@@ -12,6 +12,7 @@ use rustix::pty::{OpenptFlags, grantpt, openpt, ptsname, unlockpt};
 use rustix::termios::{OptionalActions, tcgetattr, tcsetattr};
 
 use super::*;
+use crate::rig::SerialSettings;
 
 /// A pty: `master` is the device's end.
 pub struct Pty {
@@ -32,9 +33,13 @@ impl Pty {
     }
 }
 
+fn spec(path: PathBuf, asks: Asks) -> PortSpec {
+    PortSpec { device: DeviceIdx(1), path, baud: 115_200, serial: SerialSettings::default(), asks }
+}
+
 fn start(path: PathBuf) -> (Links, Receiver<FromLinks>, Receiver<FromLinks>) {
     let ((journal, journal_end), (live, live_end)) = (bounded(10_000), bounded(10_000));
-    let ports = vec![PortSpec { device: DeviceIdx(1), path, baud: 115_200 }];
+    let ports = vec![spec(path, Asks::Frames)];
     let links = spawn_links(ports, Sinks { journal, live }, std::sync::Arc::new(SystemClock), 1).unwrap();
     (links, journal_end, live_end)
 }

@@ -4,6 +4,7 @@ use crate::capture::{
     Block, BlockTimes, Captured, Counts, DeviceDecoder, DeviceDescription, LiveClock, NominalClock, TimeReply,
     TimeRequests,
 };
+use crate::link::STOPPED;
 use crate::rig::{Channel, Device};
 
 use super::state::LinkNow;
@@ -42,6 +43,8 @@ pub struct DeviceMonitor {
     ever_up: bool,
     note: String,
     last_bytes_ns: Option<i64>,
+    up_since_ns: i64,
+    longest_stall_ns: i64,
     rate: ByteRate,
 }
 
@@ -74,7 +77,7 @@ impl DeviceMonitor {
         Self {
             name: device.name.clone(),
             port: device.port.clone(),
-            decoder: DeviceDecoder::new(),
+            decoder: DeviceDecoder::of(device),
             clock: None,
             requests: TimeRequests::default(),
             ns_per_tick: 1_000.0,
@@ -83,8 +86,15 @@ impl DeviceMonitor {
             ever_up: false,
             note: String::from("not opened yet"),
             last_bytes_ns: None,
+            up_since_ns: 0,
+            longest_stall_ns: 0,
             rate: ByteRate::default(),
         }
+    }
+
+    /// Closed because the program was told to stop: nothing is wrong with it.
+    pub fn is_stopped(&self) -> bool {
+        !self.up && self.note == STOPPED
     }
 
     pub fn is_up(&self) -> bool {
@@ -104,15 +114,27 @@ impl DeviceMonitor {
         self.ever_up
     }
 
-    pub fn link_up(&mut self, path: &str, baud: u32) {
+    pub fn link_up(&mut self, host_ns: i64, path: &str, baud: u32) {
+        self.decoder.link_lost(host_ns, &mut |_| {});
         self.up = true;
+        self.up_since_ns = host_ns;
         self.ever_up = true;
         self.note = format!("{path} at {baud} baud");
+    }
+
+    /// Something to know about the open port.
+    pub fn note_port(&mut self, text: &str) {
+        self.note = format!("{}; {text}", self.note.split("; ").next().unwrap_or_default());
     }
 
     pub fn link_down(&mut self, host_ns: i64, reason: &str) {
         self.up = false;
         reason.clone_into(&mut self.note);
+        self.decoder.link_lost(host_ns, &mut |_| {});
+    }
+
+    /// Bytes were dropped on the way here: what follows does not go on from what came before.
+    pub fn bytes_lost(&mut self, host_ns: i64) {
         self.decoder.link_lost(host_ns, &mut |_| {});
     }
 
@@ -128,6 +150,9 @@ impl DeviceMonitor {
 
     /// Decodes one read; what it completed, in order.
     pub fn decode(&mut self, host_ns: i64, bytes: &[u8]) -> Vec<Captured> {
+        if let Some(last_ns) = self.last_bytes_ns.filter(|last_ns| *last_ns >= self.up_since_ns) {
+            self.longest_stall_ns = self.longest_stall_ns.max(host_ns - last_ns);
+        }
         self.last_bytes_ns = Some(host_ns);
         self.rate.add(host_ns, bytes.len());
         let mut captured = Vec::new();
@@ -196,15 +221,22 @@ impl DeviceMonitor {
     pub fn now(&mut self, host_ns: i64) -> LinkNow {
         self.rate.turn(host_ns);
         let counters = self.decoder.counters();
+        let piece = self.clock.as_ref().and_then(LiveClock::piece);
         LinkNow {
             device: self.name.clone(),
             up: self.up,
+            bytes: counters.bytes,
             bytes_per_s: self.rate.per_s,
             frames: counters.frames,
             refused: counters.refused.values().sum(),
+            refused_by: counters.refused.iter().map(|(reason, n)| ((*reason).to_owned(), *n)).collect(),
+            lost_frames: counters.lost_frames,
             missing_samples: counters.missing,
+            gaps: counters.gaps,
+            longest_stall_s: self.longest_stall_ns as f64 * 1e-9,
             silent_s: self.last_bytes_ns.map(|last_ns| (host_ns - last_ns).max(0) as f64 * 1e-9),
-            clock_uncertainty_s: self.clock.as_ref().and_then(LiveClock::piece).map(|piece| piece.u_ns * 1e-9),
+            clock_uncertainty_s: piece.map(|piece| piece.u_ns * 1e-9),
+            clock_drift_ppm: piece.and_then(|piece| piece.drift_ppm(1e9 / self.ns_per_tick)),
             note: self.note.clone(),
         }
     }

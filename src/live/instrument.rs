@@ -3,7 +3,7 @@
 //! Fed the same events and ticks it says the same, so phases, alarms and silences replay from a journal.
 
 use crate::capture::Captured;
-use crate::link::{LinkEvent, LinkWhat};
+use crate::link::{DeviceIdx, LinkEvent, LinkWhat};
 use crate::rig::{Rig, Role};
 
 use super::alarm::{Board, Cause};
@@ -95,8 +95,9 @@ impl Live {
         let Some(device) = self.devices.get_mut(device_idx) else { return Vec::new() };
         let host_ns = event.host_ns;
         match &event.what {
-            LinkWhat::Up { path, baud } => device.link_up(path, *baud),
+            LinkWhat::Up { path, baud } => device.link_up(host_ns, path, *baud),
             LinkWhat::Down { reason } => device.link_down(host_ns, reason),
+            LinkWhat::Note { text } => device.note_port(text),
             LinkWhat::TimeRequested { token } => device.time_requested(host_ns, *token),
             LinkWhat::Bytes(bytes) => {
                 let captured = device.decode(host_ns, bytes);
@@ -104,6 +105,13 @@ impl Live {
             }
         }
         self.judge(host_ns)
+    }
+
+    /// Bytes of a device were dropped on the way here.
+    pub fn on_lost(&mut self, device: DeviceIdx, host_ns: i64) {
+        if let Some(device) = self.devices.get_mut(usize::from(device.0)) {
+            device.bytes_lost(host_ns);
+        }
     }
 
     /// Takes one decoded thing.

@@ -1,5 +1,7 @@
 //! The state of everything at one instant, as plain data: what a snapshot on the feed carries.
 
+use std::collections::BTreeMap;
+
 use serde::{Deserialize, Serialize};
 
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
@@ -77,12 +79,31 @@ pub struct ReleasedNow {
 pub struct LinkNow {
     pub device: String,
     pub up: bool,
+    /// Since the daemon started, as all counts here.
+    #[serde(default)]
+    pub bytes: u64,
     pub bytes_per_s: f64,
+    /// Frames or lines.
     pub frames: u64,
     pub refused: u64,
+    /// The same, by reason.
+    #[serde(default)]
+    pub refused_by: BTreeMap<String, u64>,
+    /// Frames that the sequence numbers show to be lost.
+    #[serde(default)]
+    pub lost_frames: u64,
     pub missing_samples: u64,
+    /// Places where they are missing.
+    #[serde(default)]
+    pub gaps: u64,
     pub silent_s: Option<f64>,
+    /// Longest time between two reads while the link was up.
+    #[serde(default)]
+    pub longest_stall_s: f64,
     pub clock_uncertainty_s: Option<f64>,
+    /// How fast the device's clock runs against the host's.
+    #[serde(default)]
+    pub clock_drift_ppm: Option<f64>,
     pub note: String,
 }
 

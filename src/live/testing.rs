@@ -1,6 +1,8 @@
 //! The invented rig `north-pier` for this room's tests, and a source of captured data for it. Invented data.
 
-use crate::capture::{Block, Captured, ChannelDescription, Counts, DeviceDescription, Encoding, StreamDescription};
+use crate::capture::{
+    Block, Captured, ChannelDescription, Counts, DeviceDescription, Encoding, StreamDescription, TimeBase,
+};
 use crate::rig::*;
 
 pub fn north_pier() -> Rig {
@@ -22,6 +24,7 @@ pub fn north_pier() -> Rig {
         name: name.into(),
         port: format!("ports/{name}"),
         baud: 3_000_000,
+        serial: SerialSettings::default(),
         protocol: Protocol::Frames,
     };
     Rig {
@@ -161,6 +164,7 @@ pub fn description(device: &str, channels: [&str; 2]) -> Captured {
             ticks_per_sample: TICKS_PER_SAMPLE,
             channels: channels.map(channel).to_vec(),
         }],
+        time_base: TimeBase::Ticks,
     })
 }
 

@@ -3,7 +3,8 @@
 use super::document::{Findings, Section};
 use super::resembling::advice;
 use super::sections::coefficients;
-use super::{Channel, Coefficients, Device, Protocol, Role, UncalibratedChannel};
+use super::{Channel, Coefficients, Device, Protocol, Role, UncalibratedChannel, text_section};
+use crate::units::{self, Unit};
 
 /// Channels as they were read, with and without calibration.
 #[derive(Default)]
@@ -44,18 +45,35 @@ fn device(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Device {
         );
     }
     let baud = entry.number(findings, "baud", 300.0..=12_000_000.0) as u32;
+    let serial = text_section::serial_settings(entry, findings);
+    Device { name, port, baud, serial, protocol: protocol(entry, findings) }
+}
+
+fn protocol(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Protocol {
     let key = entry.key("protocol");
-    let protocol = entry.text(findings, "protocol");
-    if !protocol.is_empty() && protocol != "frames" {
-        findings.error(&key, format!("{protocol:?} is not known, known: \"frames\""));
+    let word = entry.text(findings, "protocol");
+    match word.as_str() {
+        "text" => {
+            let table = entry.section(findings, "text");
+            return Protocol::Text(Box::new(text_section::text_instrument(table, findings)));
+        }
+        "frames" | "" => {}
+        _ => findings.error(&key, format!("{word:?} is not known, known: \"frames\", \"text\"")),
     }
-    Device { name, port, baud, protocol: Protocol::Frames }
+    if entry.optional(findings, "text").is_some() {
+        findings.error(&entry.key("text"), "is for a device that speaks text: protocol = \"text\"");
+    }
+    Protocol::Frames
 }
 
 /// A name that can stand in file paths and on screens.
 pub(super) fn plain_name(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> String {
-    let key = entry.key("name");
-    let name = entry.text(findings, "name");
+    plain_name_of(entry, findings, "name")
+}
+
+pub(super) fn plain_name_of(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>, key: &'static str) -> String {
+    let name = entry.text(findings, key);
+    let key = entry.key(key);
     let plain = |c: char| c.is_ascii_alphanumeric() || matches!(c, '-' | '_');
     if !name.chars().all(plain) || name.len() > 40 {
         findings.error(&key, format!("{name:?} must be letters, digits, \"-\" or \"_\", at most 40 of them"));
@@ -75,10 +93,14 @@ pub(super) fn channels(root: &mut Section<'_, '_>, findings: &mut Findings<'_>, 
         let device = known_device(&mut entry, findings, devices);
         let device_channel = entry.text(findings, "device_channel");
         let role = role(&mut entry, findings);
+        let printed = devices
+            .iter()
+            .find(|known| known.name == device)
+            .and_then(|known| printed_unit(known, &device_channel, role, &entry.key("device_channel"), findings));
         let calibration = entry.optional_section(findings, "calibration");
         channels.unclear |= role.is_none() || !devices.iter().any(|known| known.name == device);
         if let Some(role) = role {
-            match calibration.map(|table| calibration_of(table, findings, role)) {
+            match calibration.map(|table| calibration_of(table, findings, role, printed)) {
                 Some(calibration) => {
                     channels.calibrated.push(Channel { name, device, device_channel, role, calibration });
                 }
@@ -115,14 +137,54 @@ fn role(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Option<Role
     role
 }
 
-fn calibration_of(mut table: Section<'_, '_>, findings: &mut Findings<'_>, role: Role) -> Coefficients {
+/// The unit in which a text instrument prints the channel, where it fits the role; findings where the two do not.
+fn printed_unit(
+    device: &Device,
+    device_channel: &str,
+    role: Option<Role>,
+    key: &str,
+    findings: &mut Findings<'_>,
+) -> Option<&'static Unit> {
+    let Protocol::Text(instrument) = &device.protocol else { return None };
+    let Some(column) = device.text_column(device_channel) else {
+        if !device_channel.is_empty() {
+            let advice = advice(device_channel, instrument.columns.iter().map(|column| column.name.as_str()));
+            findings.error(key, format!("device {:?} has no column {device_channel:?}{advice}", device.name));
+        }
+        return None;
+    };
+    let (unit, wanted) = (column.unit?, Unit::named(role?.unit())?.dimension);
+    match units::parse(&format!("1 {}", unit.symbol), wanted) {
+        Ok(_) => Some(unit),
+        Err(error) => {
+            findings.error(key, format!("column {device_channel:?} does not fit the role: {error}"));
+            None
+        }
+    }
+}
+
+/// A column printed in a unit needs no coefficients: the instrument's own scale is taken.
+fn calibration_of(
+    mut table: Section<'_, '_>,
+    findings: &mut Findings<'_>,
+    role: Role,
+    printed: Option<&'static Unit>,
+) -> Coefficients {
     let unit = role.unit();
-    let coefficients = Coefficients {
-        zero_counts: table.number(findings, "zero_counts", -2_147_483_648.0..=2_147_483_647.0),
-        coefficients: coefficients(&mut table, findings, unit),
+    let zeros = -2_147_483_648.0..=2_147_483_647.0;
+    let given = table.optional(findings, "coefficients").is_some();
+    let (zero_counts, coefficients) = match printed.filter(|_| !given) {
+        Some(printed) => {
+            (table.optional_number(findings, "zero_counts", zeros).unwrap_or(0.0), vec![0.0, printed.si_from(1.0)])
+        }
+        None => (table.number(findings, "zero_counts", zeros), coefficients(&mut table, findings, unit)),
+    };
+    let calibration = Coefficients {
+        zero_counts,
+        coefficients,
         zero_uncertainty: table.quantity(findings, "zero_uncertainty", unit, 0.0..=1e6),
         scale_relative_uncertainty: table.quantity(findings, "scale_uncertainty", "%", 0.0..=50.0),
     };
     table.finish(findings);
-    coefficients
+    calibration
 }

@@ -98,7 +98,9 @@ impl<'d, 't> Section<'d, 't> {
 
     /// An optional key, remembered as known.
     pub(super) fn optional(&mut self, findings: &mut Findings<'_>, key: &'static str) -> Option<&'d Value<'t>> {
-        self.asked.push(key);
+        if !self.asked.contains(&key) {
+            self.asked.push(key);
+        }
         let value = self.table?.get(key)?;
         findings.remember(&self.key(key), value.span().start);
         Some(value)
@@ -171,6 +173,21 @@ impl<'d, 't> Section<'d, 't> {
                 String::new()
             }
             None => String::new(),
+        }
+    }
+
+    /// A text that may be left out; blanks are kept, since a separator may be one.
+    pub(super) fn optional_text(&mut self, findings: &mut Findings<'_>, key: &'static str) -> Option<String> {
+        match self.optional(findings, key)?.get_ref() {
+            DeValue::String(text) if !text.is_empty() => Some(text.clone().into_owned()),
+            DeValue::String(_) => {
+                findings.error(&self.key(key), "is empty");
+                None
+            }
+            other => {
+                findings.error(&self.key(key), wrong_type("text in quotes", other));
+                None
+            }
         }
     }
 

@@ -10,16 +10,19 @@ mod detail_sections;
 mod details;
 mod document;
 mod finding;
+mod instrument;
 mod read;
 mod resembling;
 mod sections;
 mod surroundings;
 #[cfg(test)]
 mod tests;
+mod text_section;
 mod types;
 
 pub use details::*;
 pub use finding::{Finding, RigError, Severity};
+pub use instrument::*;
 pub use read::{Checked, check, load, parse, port_path};
 pub use surroundings::{AirError, local_gravity_mps2, moist_air_density_kg_per_m3, standard_air_density_kg_per_m3};
 pub use types::*;

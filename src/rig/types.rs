@@ -6,6 +6,7 @@
 use std::f64::consts::PI;
 
 use super::details::Details;
+use super::instrument::{SerialSettings, TextColumn, TextInstrument};
 
 /// A value and its standard uncertainty, both in the unit of the field's name.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -142,15 +143,26 @@ pub struct Device {
     /// Path of the serial port; stable names (`/dev/serial/by-id/…`) are advised.
     pub port: String,
     pub baud: u32,
+    pub serial: SerialSettings,
     pub protocol: Protocol,
 }
 
 /// How a device speaks.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, PartialEq)]
 #[non_exhaustive]
 pub enum Protocol {
     /// Frames of `firmware-protocol`.
     Frames,
+    /// A reading a line.
+    Text(Box<TextInstrument>),
+}
+
+impl Device {
+    /// The column that a text instrument prints under this name.
+    pub fn text_column(&self, name: &str) -> Option<&TextColumn> {
+        let Protocol::Text(instrument) = &self.protocol else { return None };
+        instrument.columns.iter().find(|column| column.name == name)
+    }
 }
 
 /// A measured quantity: where it comes from, what it means, how counts become a value.

@@ -3,7 +3,7 @@
 use serde_json::{Value, json};
 
 use super::error::TrialError;
-use crate::capture::{ChannelDescription, DeviceDescription, Encoding, StreamDescription};
+use crate::capture::{ChannelDescription, DeviceDescription, Encoding, StreamDescription, TimeBase};
 
 /// The word of an encoding in files.
 pub(super) const fn encoding_word(encoding: Encoding) -> &'static str {
@@ -21,7 +21,7 @@ pub(super) fn encoding_from_word(word: &str) -> Option<Encoding> {
 
 pub(super) fn to_json(description: &DeviceDescription) -> String {
     let streams: Vec<Value> = description.streams.iter().map(stream_json).collect();
-    let value = json!({
+    let mut value = json!({
         "device_id": description.device_id,
         "name": description.name,
         "firmware": description.firmware,
@@ -31,6 +31,11 @@ pub(super) fn to_json(description: &DeviceDescription) -> String {
         "description_id": description.description_id,
         "streams": streams,
     });
+    match description.time_base {
+        TimeBase::Ticks => {}
+        TimeBase::Printed { hidden_delay_ns } => value["printed_time"] = json!({ "hidden_delay_ns": hidden_delay_ns }),
+        TimeBase::Arrival { half_width_ns } => value["arrival_time"] = json!({ "half_width_ns": half_width_ns }),
+    }
     format!("{value:#}\n")
 }
 
@@ -71,6 +76,15 @@ fn parse(value: &Value) -> Option<DeviceDescription> {
         boot_id: small(value, "boot_id")?,
         description_id: small(value, "description_id")?,
         streams: value.get("streams")?.as_array()?.iter().map(parse_stream).collect::<Option<_>>()?,
+        time_base: parse_time_base(value)?,
+    })
+}
+
+fn parse_time_base(value: &Value) -> Option<TimeBase> {
+    Some(match (value.get("printed_time"), value.get("arrival_time")) {
+        (Some(printed), _) => TimeBase::Printed { hidden_delay_ns: number(printed, "hidden_delay_ns")? },
+        (None, Some(arrival)) => TimeBase::Arrival { half_width_ns: number(arrival, "half_width_ns")? },
+        (None, None) => TimeBase::Ticks,
     })
 }
 

@@ -104,13 +104,19 @@ fn link_line(view: &ViewState, link: &LinkNow) -> Line<'static> {
     let clock = link.clock_uncertainty_s.map_or(String::from("clock by arrival"), |u_s| {
         format!("clock ±{:.2} ms", 2.0 * u_s * 1e3).replace('±', if view.theme.ascii { "+-" } else { "±" })
     });
-    let lost = if link.refused + link.missing_samples == 0 {
-        Span::raw("none missing")
-    } else {
-        let text = format!("{} samples MISSING, {} frames refused", link.missing_samples, link.refused);
-        Span::styled(text, view.theme.caution())
-    };
+    let lost = lost_span(view, link);
     Line::from(vec![Span::raw(format!("{} up {}/s, {clock}, ", link.device, bytes(link.bytes_per_s))), lost])
+}
+
+/// What a link cost. A refused frame is no missing sample: after a start the first one is often only its tail.
+fn lost_span(view: &ViewState, link: &LinkNow) -> Span<'static> {
+    let refused = format!("{} refused", link.refused);
+    match (link.missing_samples, link.refused) {
+        (0, 0) => Span::raw("none missing"),
+        (0, _) => Span::raw(format!("none missing, {refused}")),
+        (n, 0) => Span::styled(format!("{n} samples MISSING"), view.theme.caution()),
+        (n, _) => Span::styled(format!("{n} samples MISSING, {refused}"), view.theme.caution()),
+    }
 }
 
 /// One line a channel: newest value, least and greatest since the last snapshot.

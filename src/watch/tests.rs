@@ -7,6 +7,8 @@ use ratatui::style::{Color, Modifier};
 use super::history::Range;
 use super::{Theme, ViewState, draw, plain_line};
 use crate::feed::message::{Event, Hello, Message, Snapshot};
+use std::collections::BTreeMap;
+
 use crate::live::{AlarmNow, ChannelNow, CordsNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, TrialNow};
 
 const COLOUR: Theme = Theme { colour: true, ascii: false };
@@ -53,12 +55,18 @@ fn link(device: &str) -> LinkNow {
     LinkNow {
         device: device.into(),
         up: true,
+        bytes: 4_000_000,
         bytes_per_s: 66_500.0,
         frames: 12_345,
         refused: 0,
+        refused_by: BTreeMap::new(),
+        lost_frames: 0,
         missing_samples: 0,
+        gaps: 0,
         silent_s: Some(0.006),
+        longest_stall_s: 0.02,
         clock_uncertainty_s: Some(40e-6),
+        clock_drift_ppm: Some(-12.0),
         note: format!("ports/{device} at 3000000 baud"),
     }
 }

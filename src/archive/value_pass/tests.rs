@@ -1,6 +1,6 @@
 use super::*;
 use crate::archive::raw_pass::RawPass;
-use crate::capture::{ChannelDescription, ClockMethod};
+use crate::capture::{ChannelDescription, ClockMethod, TimeBase};
 use crate::journal::{DeviceAtOpen, SegmentOpen};
 use crate::trial::{Header, TrialFile};
 
@@ -59,6 +59,7 @@ fn description() -> DeviceDescription {
         boot_id: 1,
         description_id: 1,
         streams: vec![StreamDescription { stream: 1, ticks_per_sample: 100, channels }],
+        time_base: TimeBase::Ticks,
     }
 }
 

@@ -2,6 +2,7 @@
 
 use super::hull::{Bin, Bound, Point, hull_of, least, range_of};
 use super::{ClockMethod, NominalClock};
+use crate::capture::sample::TimeBase;
 
 /// No clock is believed to be farther off than this (ceramic resonators reach 1 %: common practice, no published
 /// source).
@@ -92,6 +93,11 @@ pub(super) fn fit(bounds: &Bounds, nominal: NominalClock, window: impl Fn(f64) -
     })
 }
 
+fn hidden_delay_ns(nominal: NominalClock) -> f64 {
+    let more_ns = if let TimeBase::Printed { hidden_delay_ns } = nominal.time_base { hidden_delay_ns } else { 0.0 };
+    HIDDEN_DELAY_NS + more_ns
+}
+
 struct Corridor<'b> {
     above: Side<'b>,
     below: Option<Side<'b>>,
@@ -131,7 +137,7 @@ impl<'b> Corridor<'b> {
             centre_s: self.centre_s,
             middle_ns: late.bound_ns,
             slope_ns_per_s: slope,
-            asymmetry_ns: HIDDEN_DELAY_NS + unswept_ns,
+            asymmetry_ns: hidden_delay_ns(nominal) + unswept_ns,
             jitter_ns: late.scatter_ns,
             unsteady_ns: 0.0,
             u_slope_ns_per_s: (2.0 * late.scatter_ns + weight_ns + unswept_ns) / self.span_s,

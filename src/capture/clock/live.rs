@@ -2,7 +2,8 @@
 
 use super::corridor::{WINDOW_S, fit};
 use super::seal::{Mark, Stretch};
-use super::{BlockTimes, ClockPiece, NS, NominalClock, TimeExchange};
+use super::{BlockTimes, ClockPiece, NS, NominalClock, TimeExchange, stamps};
+use crate::capture::sample::TimeBase;
 
 /// The line is fitted again when the device's time has moved by this, or by a tenth of what is known.
 const REFIT_S: f64 = 0.1;
@@ -46,6 +47,11 @@ impl LiveClock {
     }
 
     fn add(&mut self, mark: &Mark) {
+        if let TimeBase::Arrival { half_width_ns } = self.nominal.time_base {
+            let piece = stamps::piece(mark.boot_id, mark.tick, mark.tick, self.nominal.tick_rate_hz, half_width_ns);
+            self.fitted = Some(Fitted { at_s: 0.0, piece });
+            return;
+        }
         let same_clock = |stretch: &&mut Stretch| self.boot_id == mark.boot_id && !stretch.contradicts(mark);
         match self.stretch.as_mut().filter(same_clock) {
             Some(stretch) => stretch.add(mark),

@@ -20,23 +20,36 @@ mod gather;
 mod hull;
 mod live;
 mod seal;
+mod stamps;
 
 pub use gather::{ClockSamples, TimeRequests};
 pub use live::LiveClock;
 pub use seal::{fit_clock, piece_at};
 
-use super::sample::{Block, DeviceDescription, HostNs};
+use super::sample::{Block, DeviceDescription, HostNs, TimeBase};
 
 /// What a device says of its clock.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct NominalClock {
     pub tick_rate_hz: f64,
     pub tolerance_ppm: f64,
+    pub time_base: TimeBase,
+}
+
+impl NominalClock {
+    /// A clock of which the device counts the ticks.
+    pub const fn ticking(tick_rate_hz: f64, tolerance_ppm: f64) -> Self {
+        Self { tick_rate_hz, tolerance_ppm, time_base: TimeBase::Ticks }
+    }
 }
 
 impl From<&DeviceDescription> for NominalClock {
     fn from(description: &DeviceDescription) -> Self {
-        Self { tick_rate_hz: description.tick_rate_hz, tolerance_ppm: description.tick_tolerance_ppm }
+        Self {
+            tick_rate_hz: description.tick_rate_hz,
+            tolerance_ppm: description.tick_tolerance_ppm,
+            time_base: description.time_base,
+        }
     }
 }
 
@@ -73,6 +86,8 @@ pub enum ClockMethod {
     Exchanges,
     /// Arrivals alone.
     Arrivals,
+    /// None: the ticks are the host's own stamps.
+    Stamps,
 }
 
 /// A straight piece of a device's clock map: `host_ns = host_ns_at_origin + (tick − origin_tick) · ns_per_tick`.
@@ -95,6 +110,12 @@ pub struct ClockPiece {
 }
 
 impl ClockPiece {
+    /// How fast the device's clock runs against the host's, in parts per million of its stated rate; `None` where the
+    /// ticks are the host's own stamps.
+    pub fn drift_ppm(&self, tick_rate_hz: f64) -> Option<f64> {
+        (self.method != ClockMethod::Stamps).then(|| (NS / (tick_rate_hz * self.ns_per_tick) - 1.0) * 1e6)
+    }
+
     /// Host monotonic time at device tick `tick`, nanoseconds.
     pub fn host_ns(&self, tick: u64) -> f64 {
         self.host_ns_at_origin + ticks_between(self.origin_tick, tick) * self.ns_per_tick

@@ -2,7 +2,8 @@
 
 use super::corridor::{Bounds, Line, STEEPEST_NS_PER_S, WINDOW_S, fit};
 use super::hull::Point;
-use super::{Axes, BlockTimes, ClockPiece, NS, NominalClock, TimeExchange};
+use super::{Axes, BlockTimes, ClockPiece, NS, NominalClock, TimeExchange, stamps};
+use crate::capture::sample::TimeBase;
 
 /// Device time between the knots of a map.
 const KNOT_EVERY_S: f64 = 2.5;
@@ -12,6 +13,9 @@ const STAMP_SLACK_NS: f64 = 1e7;
 /// A device's clock map over everything given, piecewise affine and continuous between contradictions; per boot, in
 /// order of time. The order of the input does not matter.
 pub fn fit_clock(nominal: NominalClock, arrivals: &[BlockTimes], exchanges: &[TimeExchange]) -> Vec<ClockPiece> {
+    if let TimeBase::Arrival { half_width_ns } = nominal.time_base {
+        return stamps::pieces(arrivals, nominal.tick_rate_hz, half_width_ns);
+    }
     let mut marks = marks(arrivals, exchanges);
     let mut pieces = Vec::new();
     let mut boots: Vec<u32> = Vec::new();

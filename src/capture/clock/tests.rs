@@ -80,7 +80,7 @@ impl Link {
     }
 
     fn nominal(&self) -> NominalClock {
-        NominalClock { tick_rate_hz: TICK_RATE_HZ, tolerance_ppm: self.tolerance_ppm }
+        NominalClock::ticking(TICK_RATE_HZ, self.tolerance_ppm)
     }
 
     fn up_s(&self, sent_s: f64, phase_s: f64, random: &mut Random) -> f64 {
@@ -298,7 +298,7 @@ proptest! {
         rate_hz in 1.0..1e12_f64,
         near in any::<bool>(),
     ) {
-        let nominal = NominalClock { tick_rate_hz: rate_hz, tolerance_ppm: 50.0 };
+        let nominal = NominalClock::ticking(rate_hz, 50.0);
         let mut clock = LiveClock::new(nominal);
         let (mut arrivals, mut exchanges) = (Vec::new(), Vec::new());
         for (boot_id, a, b, asked_ns, replied_ns) in raw {

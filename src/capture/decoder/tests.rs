@@ -79,7 +79,7 @@ impl Device {
     }
 }
 
-fn decode_all(decoder: &mut DeviceDecoder, bytes: &[u8]) -> Vec<Captured> {
+fn decode_all(decoder: &mut FrameDecoder, bytes: &[u8]) -> Vec<Captured> {
     let mut captured = Vec::new();
     decoder.feed(7, bytes, &mut |what| captured.push(what));
     captured
@@ -113,7 +113,7 @@ fn rejections(captured: &[Captured]) -> Vec<(&'static str, Vec<u8>)> {
 fn counts_keep_their_sign_in_every_encoding() {
     let mut device = Device::booted(1);
     let bytes = [device.describe(), device.block()].concat();
-    let captured = decode_all(&mut DeviceDecoder::new(), &bytes);
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
     let Some(Captured::Block(block)) = captured.last() else { panic!("no block in {captured:?}") };
     assert_eq!(
         block.counts,
@@ -132,7 +132,7 @@ fn a_lost_block_leaves_a_gap_of_its_samples_and_nothing_else() {
     let mut bytes = [device.describe(), device.block()].concat();
     let _lost_on_the_way = [device.block(), device.block()];
     bytes.extend(device.block());
-    let mut decoder = DeviceDecoder::new();
+    let mut decoder = FrameDecoder::new();
     let captured = decode_all(&mut decoder, &bytes);
     assert_eq!(indices(&captured), [0, 6]);
     assert_eq!(gaps(&captured), [(2, 4)]);
@@ -144,7 +144,7 @@ fn samples_before_their_description_are_kept_as_bytes_and_covered_by_a_gap() {
     let mut device = Device::booted(1);
     let early = device.block();
     let bytes = [early.clone(), device.block(), device.describe(), device.block()].concat();
-    let captured = decode_all(&mut DeviceDecoder::new(), &bytes);
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
     let rejected = rejections(&captured);
     assert_eq!(rejected.len(), 2);
     assert_eq!(rejected[0], (NO_DESCRIPTION, early[1..early.len() - 1].to_vec()));
@@ -155,7 +155,7 @@ fn samples_before_their_description_are_kept_as_bytes_and_covered_by_a_gap() {
 fn a_reboot_starts_afresh_and_needs_its_own_description() {
     let (mut before, mut after) = (Device::booted(1), Device::booted(2));
     let bytes = [before.describe(), before.block(), after.block(), after.describe(), after.block()].concat();
-    let mut decoder = DeviceDecoder::new();
+    let mut decoder = FrameDecoder::new();
     let captured = decode_all(&mut decoder, &bytes);
     let boots = captured.iter().filter_map(|what| match what {
         Captured::Description(described) => Some(described.boot_id),
@@ -173,7 +173,7 @@ fn a_description_repeated_is_said_once_and_a_changed_one_again() {
     let mut bytes = [device.describe(), device.describe()].concat();
     device.description_id = 2;
     bytes.extend([device.describe(), device.block()].concat());
-    let captured = decode_all(&mut DeviceDecoder::new(), &bytes);
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
     let described = captured.iter().filter(|what| matches!(what, Captured::Description(_))).count();
     assert_eq!((described, indices(&captured)), (2, vec![0]));
 }
@@ -181,16 +181,16 @@ fn a_description_repeated_is_said_once_and_a_changed_one_again() {
 #[test]
 fn a_decoder_that_knows_the_device_takes_samples_at_once() {
     let mut device = Device::booted(1);
-    let mut first = DeviceDecoder::new();
+    let mut first = FrameDecoder::new();
     decode_all(&mut first, &device.describe());
-    let mut second = DeviceDecoder::knowing(first.description().unwrap().clone());
+    let mut second = FrameDecoder::knowing(first.description().unwrap().clone());
     assert_eq!(indices(&decode_all(&mut second, &device.block())), [0]);
 }
 
 #[test]
 fn a_link_lost_inside_a_frame_gives_up_its_bytes_and_later_shows_the_gap() {
     let mut device = Device::booted(1);
-    let mut decoder = DeviceDecoder::new();
+    let mut decoder = FrameDecoder::new();
     decode_all(&mut decoder, &[device.describe(), device.block()].concat());
     let cut = device.block();
     let mut captured = decode_all(&mut decoder, &cut[..cut.len() / 2]);
@@ -206,7 +206,7 @@ fn an_echoed_request_is_told_apart_from_the_device() {
     let echoed = host.frame(0, &Message::Start);
     let mut device = Device::booted(1);
     let bytes = [device.describe(), echoed, device.block()].concat();
-    let captured = decode_all(&mut DeviceDecoder::new(), &bytes);
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
     assert_eq!(rejections(&captured).len(), 1);
     assert_eq!(rejections(&captured)[0].0, FROM_A_HOST);
     assert_eq!(indices(&captured), [0], "the echo does not look like a reboot");
@@ -218,7 +218,7 @@ fn an_index_that_runs_backward_is_refused() {
     let mut bytes = [device.describe(), device.block(), device.block()].concat();
     device.next_index = 2;
     bytes.extend(device.block());
-    let captured = decode_all(&mut DeviceDecoder::new(), &bytes);
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
     assert_eq!(indices(&captured), [0, 2]);
     assert_eq!(rejections(&captured)[0].0, BACKWARD);
 }
@@ -226,7 +226,7 @@ fn an_index_that_runs_backward_is_refused() {
 proptest! {
     #[test]
     fn every_byte_is_accounted_for_whatever_comes(reads in prop::collection::vec(prop::collection::vec(any::<u8>(), 0..600), 0..20)) {
-        let mut decoder = DeviceDecoder::new();
+        let mut decoder = FrameDecoder::new();
         let mut n_rejected = 0;
         let mut count = |what| {
             if let Captured::Rejected(rejected) = what {
@@ -248,8 +248,8 @@ proptest! {
         for _ in 0..8 {
             bytes.extend(device.block());
         }
-        let whole = decode_all(&mut DeviceDecoder::new(), &bytes);
-        let mut decoder = DeviceDecoder::new();
+        let whole = decode_all(&mut FrameDecoder::new(), &bytes);
+        let mut decoder = FrameDecoder::new();
         let mut pieces = Vec::new();
         let mut rest = &bytes[..];
         for cut in cuts.iter().cycle() {

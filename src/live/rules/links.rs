@@ -38,6 +38,9 @@ pub(super) fn judge(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
             told.extend(live.board.clear(Cause::LinkAbsent(idx), host_ns));
             continue;
         }
+        if device.is_stopped() {
+            continue;
+        }
         let cause = if device.was_ever_up() { Cause::LinkLost(idx) } else { Cause::LinkAbsent(idx) };
         if (!device.was_ever_up() && waited_ns < LINK_GRACE_NS) || live.board.is_active(cause) {
             continue;

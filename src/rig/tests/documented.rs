@@ -80,6 +80,8 @@ fn the_page_has_every_key_and_no_other() {
         "payload.thrust",
         "losses.along_x",
         "gas.valve",
+        "device.text",
+        "device.text.column",
         "force_table.points",
         "channel.calibration",
     ];
