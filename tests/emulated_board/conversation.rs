@@ -4,7 +4,9 @@ use std::fs::File;
 use std::io::{ErrorKind, Read, Write};
 use std::time::{Duration, Instant};
 
-use firmware_protocol::{Header, MAX_FRAME_LEN, Message, SetRate, TimeRequest, encode};
+use firmware_protocol::{
+    Deframed, Deframer, Frame, Header, MAX_COBS_LEN, MAX_FRAME_LEN, Message, SetRate, TimeRequest, decode, encode,
+};
 use rustix::fs::{Mode, OFlags};
 use rustix::termios::{OptionalActions, tcgetattr, tcsetattr};
 use tautrail::capture::{Captured, DeviceDecoder, DeviceDescription};
@@ -17,6 +19,9 @@ struct Host {
     port: File,
     decoder: DeviceDecoder,
     heard: Vec<Captured>,
+    deframer: Deframer<[u8; MAX_COBS_LEN]>,
+    /// Descriptions that came, also those that say nothing new.
+    n_described: usize,
 }
 
 impl Host {
@@ -26,7 +31,8 @@ impl Host {
         let mut settings = tcgetattr(&port).unwrap();
         settings.make_raw();
         tcsetattr(&port, OptionalActions::Now, &settings).unwrap();
-        Self { port: port.into(), decoder: DeviceDecoder::new(), heard: Vec::new() }
+        let (decoder, deframer) = (DeviceDecoder::new(), Deframer::new([0; MAX_COBS_LEN]));
+        Self { port: port.into(), decoder, heard: Vec::new(), deframer, n_described: 0 }
     }
 
     fn ask(&mut self, message: &Message<'_>) {
@@ -59,6 +65,7 @@ impl Host {
             Ok(n) => {
                 let heard = &mut self.heard;
                 self.decoder.feed(0, &buffer[..n], &mut |captured| heard.push(captured));
+                self.count_descriptions(&buffer[..n]);
             }
             Err(error) if error.kind() == ErrorKind::WouldBlock => std::thread::sleep(Duration::from_millis(2)),
             Err(error) => panic!("the board's port: {error}"),
@@ -85,7 +92,7 @@ fn reply_to(token: u32) -> impl Fn(&Captured) -> Option<(u64, u64)> {
 }
 
 #[test]
-fn the_board_obeys_every_request_of_the_host() {
+fn the_board_describes_itself_streams_and_tells_its_time() {
     let board = Board::boot(0x0B00_7001);
     let mut host = Host::open(&board);
     let described = host.wait_for("a description", &Message::DescribeRequest, description);
@@ -101,6 +108,22 @@ fn the_board_obeys_every_request_of_the_host() {
     let second = host.wait_for("a time reply", &Message::TimeRequest(TimeRequest { token: 2 }), reply_to(2));
     assert!(first.0 <= first.1 && first.1 <= second.0 && second.0 <= second.1, "{first:?} {second:?}");
 
+    // Nobody asks for a while: it repeats its description all the same, a second apart.
+    let since = Instant::now();
+    host.n_described = 0;
+    while host.n_described < 2 {
+        host.listen();
+        assert!(since.elapsed() < PATIENCE, "the description is not repeated unasked");
+    }
+    assert!(host.decoder.counters().refused.is_empty(), "{:?}", host.decoder.counters());
+}
+
+#[test]
+fn the_board_follows_a_rate_it_can_and_is_silent_when_told_to_stop() {
+    let board = Board::boot(0x0B00_7002);
+    let mut host = Host::open(&board);
+    host.wait_for("a description", &Message::DescribeRequest, description);
+    host.wait_for("a block", &Message::Start, block_of(1));
     let faster = Message::SetRate(SetRate { stream: 1, ticks_per_sample: 6_250 });
     let changed = host.wait_for("another description", &faster, description);
     assert_eq!((changed.description_id, changed.streams[0].ticks_per_sample), (2, 6_250));
@@ -126,6 +149,16 @@ fn the_board_obeys_every_request_of_the_host() {
 }
 
 impl Host {
+    fn count_descriptions(&mut self, mut bytes: &[u8]) {
+        while let Some(piece) = self.deframer.next_piece(&mut bytes) {
+            if let Deframed::Frame(cobs) = piece
+                && let Ok(Frame { message: Message::Describe(_), .. }) = decode(cobs)
+            {
+                self.n_described += 1;
+            }
+        }
+    }
+
     /// Ten time requests answered, some hundred milliseconds; counts the blocks that came meanwhile.
     fn wait_in_silence(&mut self) -> usize {
         let mut n_blocks = 0;

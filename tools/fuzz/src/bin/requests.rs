@@ -2,10 +2,13 @@
 //! in the same bytes as the Rust crate.
 //!
 //! The input is a recipe: an odd byte says how many bytes of noise follow; an even one is followed by a kind, a length
-//! and that many bytes of payload, which become a frame whose checksum fits.
+//! and that many bytes of payload, which become a frame whose checksum fits; of this protocol version where its second bit
+//! is set, else of any.
 #![no_main]
 
-use firmware_protocol::{Deframed, Deframer, Header, MAX_COBS_LEN, MAX_FRAME_LEN, Message, decode, encode, unstuff_in_place};
+use firmware_protocol::{
+    Deframed, Deframer, HEADER_LEN, MAX_COBS_LEN, Message, PROTOCOL_VERSION, crc32c, decode, stuff, unstuff_in_place,
+};
 
 /// As in `requests.c`.
 #[repr(C)]
@@ -44,13 +47,22 @@ fn cooked(recipe: &[u8]) -> Vec<u8> {
         }
         let [kind, len, after @ ..] = after else { break };
         let (payload, after) = after.split_at(after.len().min(usize::from(*len)));
-        let mut frame = [0; MAX_FRAME_LEN];
-        let header = Header { flags: tag, sequence: u32::from(tag), ..Header::default() };
-        let n = encode(&header, &Message::Unknown { kind: *kind, payload }, &mut frame).expect("a short frame");
-        stream.extend_from_slice(&frame[..n]);
+        put_frame(if tag & 2 == 2 { PROTOCOL_VERSION } else { tag / 4 }, *kind, payload, &mut stream);
         rest = after;
     }
     stream
+}
+
+fn put_frame(version: u8, kind: u8, payload: &[u8], stream: &mut Vec<u8>) {
+    let mut plain = vec![0; HEADER_LEN];
+    plain[..2].copy_from_slice(&[version, kind]);
+    plain.extend_from_slice(payload);
+    plain.extend_from_slice(&crc32c(&plain).to_le_bytes());
+    let mut stuffed = [0; MAX_COBS_LEN];
+    let n = stuff(&plain, &mut stuffed).expect("a short frame");
+    stream.push(0);
+    stream.extend_from_slice(&stuffed[..n]);
+    stream.push(0);
 }
 
 fn by_rust(stream: &[u8]) -> Vec<Request> {

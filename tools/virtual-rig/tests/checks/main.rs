@@ -2,6 +2,7 @@
 
 mod closed_forms;
 mod cords;
+mod device;
 mod faults;
 mod host;
 mod performance;
