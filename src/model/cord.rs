@@ -205,8 +205,8 @@ impl CordSet {
 
     /// Multiplies every tension.
     pub fn scale(&mut self, factor: f64) {
-        self.unloading = self.unloading.scaled(factor);
-        self.loading = self.loading.as_ref().map(|loading| loading.scaled(factor));
+        self.unloading.scale(factor);
+        self.loading.iter_mut().for_each(|loading| loading.scale(factor));
         self.held_gap_n *= factor;
     }
 

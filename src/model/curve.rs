@@ -5,6 +5,8 @@
 //! piecewise cubic interpolants*, SIAM J. Sci. Stat. Comput. 5 (1984) 300-304, in the three-point weighted form;
 //! value, slope and integral are exact for the cubic pieces.
 
+use std::sync::Arc;
+
 use thiserror::Error;
 
 #[derive(Debug, Clone, PartialEq, Error)]
@@ -31,7 +33,8 @@ struct Piece {
 #[derive(Debug, Clone, PartialEq)]
 pub struct Curve {
     pieces: Vec<Piece>,
-    knots: Vec<f64>,
+    knots: Arc<[f64]>,
+    pieces_per_unit: f64,
 }
 
 /// Value and slope at one place.
@@ -79,17 +82,16 @@ impl Curve {
         }
         let (end, value) = points[points.len() - 1];
         pieces.push(Piece { start: end, coefficients: [value, slopes[slopes.len() - 1], 0.0, 0.0], integral });
-        Self { pieces, knots: points.iter().map(|point| point.0).collect() }
+        let pieces_per_unit = (points.len() - 1) as f64 / (end - points[0].0);
+        Self { pieces, knots: points.iter().map(|point| point.0).collect(), pieces_per_unit }
     }
 
-    /// The same curve with every value multiplied by `factor`.
-    pub fn scaled(&self, factor: f64) -> Self {
-        let pieces = self.pieces.iter().map(|piece| Piece {
-            start: piece.start,
-            coefficients: piece.coefficients.map(|coefficient| coefficient * factor),
-            integral: piece.integral * factor,
-        });
-        Self { pieces: pieces.collect(), knots: self.knots.clone() }
+    /// Multiplies every value by `factor`.
+    pub fn scale(&mut self, factor: f64) {
+        for piece in &mut self.pieces {
+            piece.coefficients.iter_mut().for_each(|coefficient| *coefficient *= factor);
+            piece.integral *= factor;
+        }
     }
 
     /// A curve through the same places with every value multiplied by a factor of its own.
@@ -118,9 +120,14 @@ impl Curve {
 
     #[inline(always)]
     fn piece(&self, at: f64) -> &Piece {
-        let mut index = 0;
-        while index + 1 < self.pieces.len() && self.pieces[index + 1].start <= at {
+        let last = self.pieces.len() - 1;
+        // As if the knots were evenly spaced; a few steps mend the guess.
+        let mut index = (((at - self.pieces[0].start) * self.pieces_per_unit) as usize).min(last);
+        while index < last && self.pieces[index + 1].start <= at {
             index += 1;
+        }
+        while index > 0 && self.pieces[index].start > at {
+            index -= 1;
         }
         &self.pieces[index]
     }

@@ -213,7 +213,7 @@ impl What {
             Self::Viscous => add(&mut setup.losses.viscous_n_per_mps),
             Self::Breakaway => add(&mut setup.losses.breakaway_n),
             Self::LossAlongX => {
-                setup.losses.along_x_n = setup.losses.along_x_n.as_ref().map(|loss| loss.scaled((1.0 + by).max(0.0)));
+                setup.losses.along_x_n.iter_mut().for_each(|loss| loss.scale((1.0 + by).max(0.0)));
             }
             Self::CordForce { set } => setup.cords[set].scale((1.0 + by).max(0.0)),
             Self::CordShape { set } => {

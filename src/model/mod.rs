@@ -53,6 +53,8 @@ pub use loss_terms::{BelongsTo, LossState, LossTerm, loss_terms, unfitted};
 pub use propagation::{Propagated, first_order};
 pub use quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, Quantity, evaluate};
 pub use released_now::{ReleaseForecast, released_now};
-pub use run::{Answers, LaunchRun, Sample, Separation, answers_to_rest, launch_answers, simulate};
+pub use run::{
+    Answers, LaunchRun, Sample, Separation, answers_to_rest, energy_at_separation, launch_answers, simulate,
+};
 pub use setup::{ACCURATE, Brake, FAST, ForceTable, LaunchSetup, RailLosses, Recoil};
 pub use solve::{Candidate, Expected, Fit, Setting, Solution, solve, sweep};

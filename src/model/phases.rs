@@ -34,7 +34,12 @@ impl<const N: usize> March<'_, N> {
                 self.slack_where_waves_are_spent();
                 return;
             }
-            Goal::Place(index) => self.reach_places(index),
+            Goal::Place(index) => {
+                if !self.reach_places(index) {
+                    // Over a knot force and stiffness go on as they were, and so does the slope.
+                    return;
+                }
+            }
             Goal::WaveOver(set) => {
                 self.note(EventKind::WaveOver { set });
                 let cords = &self.system.setup.cords[set];
@@ -86,8 +91,9 @@ impl<const N: usize> March<'_, N> {
         self.system.phase.cords[set] = CordPhase::Even { branch: Branch::Loading, side };
     }
 
-    /// Everything that stands at the place just reached.
-    fn reach_places(&mut self, index: usize) {
+    /// Everything that stands at the place just reached; whether that changes the equations.
+    fn reach_places(&mut self, index: usize) -> bool {
+        let mut changes = false;
         let x_m = self.targets[index].x_m;
         self.y[0] = x_m;
         let step: isize = if self.system.phase.direction > 0.0 { 1 } else { -1 };
@@ -99,8 +105,10 @@ impl<const N: usize> March<'_, N> {
             self.cursor += step;
             if target.mark.matters(&self.system.phase) {
                 self.pass(target.mark);
+                changes |= !matches!(target.mark, Mark::CordKnot { .. } | Mark::Knot);
             }
         }
+        changes
     }
 
     fn pass(&mut self, mark: Mark) {
