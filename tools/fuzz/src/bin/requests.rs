@@ -9,6 +9,7 @@
 use firmware_protocol::{
     Deframed, Deframer, HEADER_LEN, MAX_COBS_LEN, Message, PROTOCOL_VERSION, crc32c, decode, stuff, unstuff_in_place,
 };
+use fuzz as _; // brings the C code that build.rs made
 
 /// As in `requests.c`.
 #[repr(C)]
