@@ -13,9 +13,7 @@ use std::sync::{Arc, LazyLock};
 
 use firmware_protocol as wire;
 use journal_file::{JOURNAL_ID, JournalFile, RIG_TEXT, TRIAL_ID, nominal, opened};
-use tautrail::archive::{
-    Fate, Keep, ReleaseError, SealError, Sealed, kept, recover, release, seal, seal_keeping, verify,
-};
+use tautrail::archive::{Fate, SealError, Sealed, recover, seal, verify};
 use tautrail::capture::Counts;
 use tautrail::journal::{AppendFile, ArchiveLock, Body, Disk, Listed, RealDisk, TrialRange};
 use tautrail::trial::TrialFile;
@@ -242,50 +240,6 @@ fn recover_says_that_a_directory_is_not_there() {
     let dir = tempfile::tempdir().unwrap();
     let error = recover(&dir.path().join("none"), &real(), &mut |_| {}).unwrap_err().to_string();
     assert!(error.contains("there is no directory") && error.contains("none"), "{error}");
-}
-
-#[test]
-fn the_journal_of_an_abnormal_trial_stays_until_a_person_lets_it_go() {
-    let dir = tempfile::tempdir().unwrap();
-    nominal(dir.path(), PACE, false);
-    let journal = std::fs::read(dir.path().join(segment())).unwrap();
-    let sealed = seal_in(dir.path(), &real()).unwrap();
-    assert_eq!((sealed.outcome.as_str(), sealed.journal_kept), ("truncated", true));
-    // What the recorder lets go of to stay within its budget.
-    std::fs::remove_file(dir.path().join(segment())).unwrap();
-    let [kept] = &kept(dir.path()).unwrap()[..] else { panic!("one journal") };
-    assert_eq!((kept.trial_id.as_str(), kept.n_bytes), (TRIAL_ID, journal.len() as u64));
-    // It is enough to seal again from.
-    std::fs::rename(&sealed.path, dir.path().join("elsewhere.h5")).unwrap();
-    assert!(matches!(release(dir.path(), TRIAL_ID), Err(ReleaseError::NotSealed { .. })), "all there is of it");
-    let again = recover(dir.path(), &real(), &mut |_| {}).unwrap();
-    assert!(matches!(&again[..], [one] if matches!(one.fate, Fate::Sealed(_))), "{again:?}");
-    assert!(std::fs::read(&sealed.path).unwrap() == std::fs::read(dir.path().join("elsewhere.h5")).unwrap());
-    let let_go = Command::new(env!("CARGO_BIN_EXE_tautrail"))
-        .arg("recover")
-        .arg(dir.path())
-        .args(["--release", TRIAL_ID])
-        .output()
-        .unwrap();
-    assert!(let_go.status.success(), "{let_go:?}");
-    assert_eq!(tautrail::archive::kept(dir.path()).unwrap(), []);
-    assert!(matches!(release(dir.path(), TRIAL_ID), Err(ReleaseError::NotKept { .. })));
-    for trial_id in ["..", "../..", "kept"] {
-        assert!(release(dir.path(), trial_id).is_err(), "{trial_id}");
-    }
-    assert!(sealed.path.exists() && dir.path().join("journal").exists());
-}
-
-#[test]
-fn the_journal_of_a_launch_is_kept_only_where_asked_for() {
-    let dir = nominal_copy();
-    let (reader, range) = opened(dir.path());
-    assert!(!seal(&reader, &range, dir.path(), &real()).unwrap().journal_kept);
-    assert_eq!(kept(dir.path()).unwrap(), []);
-    let other = nominal_copy();
-    let (reader, range) = opened(other.path());
-    assert!(seal_keeping(&reader, &range, other.path(), &real(), Keep::Every).unwrap().journal_kept);
-    assert_eq!(kept(other.path()).unwrap().len(), 1);
 }
 
 #[test]

@@ -13,6 +13,7 @@ mod publish;
 mod raw_pass;
 mod recover;
 mod seal;
+mod settled;
 mod value_pass;
 mod verify;
 
@@ -21,4 +22,5 @@ pub use keep::{Keep, Kept, ReleaseError, kept, release};
 pub use list::{Listing, Summary, list};
 pub use recover::{Fate, RecoverError, Recovered, journal_dir, recover, seal_one, sealed_file};
 pub use seal::{Sealed, seal, seal_keeping, trial_path};
+pub use settled::{SettleError, Settled, forget_settled, settle_until, settle_whole, settled};
 pub use verify::{Verified, verify};

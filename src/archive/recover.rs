@@ -132,7 +132,8 @@ pub fn sealed_file(range: &TrialRange, dir: &Path) -> Result<Option<PathBuf>, Se
     Ok(None)
 }
 
-/// Seals one trial of one journal: what the daemon's child process does.
+/// Seals one trial of one journal: what the daemon's child process does. The trial's records are looked for from
+/// `from_seq` on; 0 looks everywhere.
 ///
 /// # Errors
 /// [`SealError`].
@@ -140,11 +141,13 @@ pub fn seal_one(
     dir: &Path,
     journal_id: &str,
     trial_id: &str,
+    from_seq: u64,
     disk: &Arc<dyn Disk>,
     keep: Keep,
 ) -> Result<Sealed, SealError> {
     let reader = JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id)?;
-    let ranges = reader.trials()?;
+    let from = reader.segments().iter().rfind(|segment| segment.open.first_seq <= from_seq);
+    let ranges = reader.survey_from(from.map_or(0, |segment| segment.number))?.trials;
     let range = ranges.iter().find(|range| range.trial_id == trial_id);
     let range = range
         .ok_or_else(|| SealError::NoSuchTrial { journal_id: journal_id.to_owned(), trial_id: trial_id.to_owned() })?;

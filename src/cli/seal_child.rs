@@ -22,6 +22,9 @@ pub struct Args {
     /// Added to the process's niceness: sealing may take long and must never be in the way of acquisition
     #[arg(long, value_name = "N", default_value_t = 15, value_parser = clap::value_parser!(i32).range(0..=19))]
     niceness: i32,
+    /// First record of the trial; nothing before it is looked through
+    #[arg(long, value_name = "SEQ", default_value_t = 0)]
+    from_seq: u64,
     /// Keep the journal, whatever the outcome
     #[arg(long)]
     keep_journal: bool,
@@ -32,7 +35,7 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     let _ = rustix::process::nice(args.niceness);
     let keep = if args.keep_journal { Keep::Every } else { Keep::Abnormal };
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
-    let sealed = seal_one(&args.dir, &args.journal, &args.trial, &disk, keep)?;
+    let sealed = seal_one(&args.dir, &args.journal, &args.trial, args.from_seq, &disk, keep)?;
     if screen.json {
         screen.value(&sealed_json(&sealed));
     } else {

@@ -18,7 +18,7 @@ use super::error::DaemonError;
 use super::outgoing::Outgoing;
 use super::ports::FirstOpenings;
 use super::room::RoomWatch;
-use super::sealing::{SealReport, Sealer};
+use super::sealing::{SealReport, Sealer, Settle};
 use super::trials::TrialBook;
 use super::words;
 
@@ -42,6 +42,8 @@ pub struct Conductor {
     pub room: RoomWatch,
     /// A trial that was not opened for want of room, and how far it is to reach back.
     pub held_back_from_ns: Option<i64>,
+    /// When what is done with of the journal is noted again.
+    pub settle_at_ns: i64,
     pub openings: FirstOpenings,
     /// Start and stay although every port is in use elsewhere.
     pub wait_for_ports: bool,
@@ -60,6 +62,7 @@ pub struct Inputs {
 
 /// 30 a second.
 const SNAPSHOT_EVERY: Duration = Duration::from_nanos(33_333_333);
+const SETTLE_EVERY_NS: i64 = 60_000_000_000;
 const WATCH_EVERY: Duration = Duration::from_millis(200);
 /// Taken in one go before anything else is looked at.
 const BATCH: usize = 256;
@@ -243,6 +246,16 @@ impl Conductor {
         }
     }
 
+    /// Has it noted what of the journal the next start need not read.
+    fn settle(&self, host_ns: i64) {
+        let pinned_from_seq = self.book.pinned_from();
+        if pinned_from_seq == Some(0) {
+            return; // not known for an instant
+        }
+        let (journal_id, trial_number) = (self.book.journal_id().to_owned(), self.book.last_number());
+        self.sealer.settle(Settle::Until { journal_id, host_ns, pinned_from_seq, trial_number });
+    }
+
     fn take_sealed(&mut self, report: SealReport) {
         if report.result.is_ok() {
             self.book.sealed(&report.trial_id);
@@ -287,11 +300,15 @@ impl Conductor {
         }
         let recorder = self.recorder.now();
         let room = self.watch_room(&recorder);
-        let trouble = words::trouble(&recorder).or(room);
+        let (disk, slow) = (words::disk_trouble(&recorder).or(room), words::slow(&recorder));
         let now_ns = self.clock.monotonic_ns();
-        if let Some(happening) = self.live.journal_trouble(now_ns, trouble.as_deref()) {
-            self.act(&happening);
+        if now_ns >= self.settle_at_ns {
+            self.settle_at_ns = now_ns + SETTLE_EVERY_NS;
+            self.settle(now_ns);
         }
+        let disk = self.live.disk_trouble(now_ns, disk.as_deref());
+        let slow = self.live.journal_trouble(now_ns, slow.as_deref());
+        disk.iter().chain(&slow).for_each(|happening| self.act(happening));
         Ok(())
     }
 
@@ -370,7 +387,7 @@ fn journal_now(now: &RecorderNow) -> JournalNow {
         sync_interval_s: now.health.exposure_ns_lately() as f64 * 1e-9,
         queue_high_water: now.queue_high_water,
         lost_events: now.health.lost_events,
-        trouble: words::trouble(now),
+        trouble: words::disk_trouble(now).or_else(|| words::slow(now)),
     }
 }
 

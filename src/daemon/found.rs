@@ -6,6 +6,7 @@
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
+use crate::archive::Settled;
 use crate::journal::{
     DeviceAtOpen, Disk, JournalReader, ReadError, SegmentInfo, Start, Survey, TrialRange, journals, parse_segment_name,
 };
@@ -48,6 +49,8 @@ pub struct Found {
     pub segments: Vec<(SegmentInfo, u64)>,
     /// Made ahead by an earlier run and never begun.
     pub never_begun: Vec<PathBuf>,
+    /// Journals that have ended and whose trials all have their files, as this start found by reading them.
+    pub done_with: Vec<String>,
     /// What is worth telling a person.
     pub remarks: Vec<String>,
 }
@@ -59,7 +62,16 @@ pub struct Present<'a> {
     pub rig_text: &'a str,
 }
 
-/// Looks through the archive `dir` and its journals. `is_sealed` says whether a trial has its file.
+/// What is known of trials without reading journals.
+#[derive(Clone, Copy)]
+pub struct Known<'a> {
+    /// Whether a trial has its file.
+    pub is_sealed: &'a dyn Fn(&TrialRange) -> bool,
+    /// How far a journal is done with.
+    pub settled: &'a dyn Fn(&str) -> Option<Settled>,
+}
+
+/// Looks through the archive `dir` and its journals, reading what is not known to be done with.
 ///
 /// # Errors
 /// The disk's, and a journal of a later format. A journal that cannot be opened at all is a remark.
@@ -68,7 +80,7 @@ pub fn look(
     dir: &Path,
     journal_dir: &Path,
     present: Present<'_>,
-    is_sealed: &dyn Fn(&TrialRange) -> bool,
+    known: Known<'_>,
 ) -> Result<Found, ReadError> {
     let ids = journals(&**disk, journal_dir)?;
     let mut found = Found { next_journal_number: 1, next_trial_number: 1, ..Found::default() };
@@ -77,7 +89,7 @@ pub fn look(
         found.next_journal_number = found.next_journal_number.max(number_of(id).unwrap_or(0) + 1);
         let is_newest = Some(id) == ids.last();
         match JournalReader::open(Arc::clone(disk), journal_dir, id) {
-            Ok(reader) => found.take(&reader, is_newest, present, is_sealed)?,
+            Ok(reader) => found.take(&reader, is_newest, present, known)?,
             Err(error @ ReadError::NoSegment { .. }) => found.remarks.push(error.to_string()),
             Err(error) => return Err(error),
         }
@@ -111,9 +123,18 @@ impl Found {
         reader: &JournalReader,
         is_newest: bool,
         present: Present<'_>,
-        is_sealed: &dyn Fn(&TrialRange) -> bool,
+        known: Known<'_>,
     ) -> Result<(), ReadError> {
-        let survey = reader.survey()?;
+        let Known { is_sealed, settled } = known;
+        let settled = settled(reader.journal_id());
+        let survey = match settled {
+            Some(Settled { from_segment: None, .. }) if !is_newest => Survey::default(), // nothing of it is needed
+            Some(Settled { from_segment: Some(number), .. }) => reader.survey_from(number)?,
+            _ => reader.survey()?,
+        };
+        if let Some(Settled { trial_number, .. }) = settled {
+            self.next_trial_number = self.next_trial_number.max(trial_number.saturating_add(1));
+        }
         self.remarks.extend(reader.unopenable().iter().map(|damage| format!("journal: {damage:?}")));
         for trial in &survey.trials {
             self.next_trial_number = self.next_trial_number.max(number_of(&trial.trial_id).unwrap_or(0) + 1);
@@ -131,6 +152,9 @@ impl Found {
             first_seq: trial.first_seq,
             n_bytes: bytes_of(reader, trial),
         }));
+        if !is_newest && self.unsealed.len() == n_before && settled.is_none_or(|known| known.from_segment.is_some()) {
+            self.done_with.push(reader.journal_id().to_owned());
+        }
         // Segments of an older journal stay until all its trials are sealed.
         if goes_on || self.unsealed.len() == n_before {
             self.segments.extend(with_ends(reader, &survey));

@@ -11,7 +11,7 @@ use crate::feed::FeedServer;
 use crate::feed::message::{Event, Hello};
 use crate::journal::{
     ArchiveLock, Clocks, DeviceAtOpen, Disk, Ends, Journal, Order, Origin, RealDisk, Recorder, Settings, Start,
-    TrialRange,
+    TrialRange, journals,
 };
 use crate::link::{self, HostClock, PortSpec, Sinks, SystemClock, spawn_links};
 use crate::live::Live;
@@ -19,12 +19,12 @@ use crate::rig::Rig;
 
 use super::conductor::{Conductor, Inputs};
 use super::error::DaemonError;
-use super::found::{self, Found, Present, Resumed};
+use super::found::{self, Found, Known, Present, Resumed};
 use super::machine::{identifier, kernel_boot_id, random_part};
 use super::outgoing::Outgoing;
 use super::ports::FirstOpenings;
 use super::room::RoomWatch;
-use super::sealing::{SealCommand, Sealer};
+use super::sealing::{SealCommand, Sealer, Settle};
 use super::trials::TrialBook;
 use super::words;
 
@@ -76,9 +76,7 @@ pub fn run(
     }
     let boot_id = kernel_boot_id().map_err(|source| DaemonError::Machine { what: "boot id", source })?;
     let present = Present { kernel_boot_id: &boot_id, rig_text: &rig.text };
-    let dir = options.dir.clone();
-    let is_sealed = move |range: &TrialRange| matches!(archive::sealed_file(range, &dir), Ok(Some(_)));
-    let mut found = found::look(&disk, &options.dir, &archive::journal_dir(&options.dir), present, &is_sealed)?;
+    let mut found = look(&disk, &options.dir, present)?;
     let journal = begin_journal(rig, options, &found, boot_id.clone(), &disk, clock.monotonic_ns())?;
     let journal_id = journal.journal_id().to_owned();
 
@@ -100,6 +98,9 @@ pub fn run(
     let seed = random_part().map_err(|source| DaemonError::Machine { what: "random numbers", source })?;
     let links = spawn_links(ports(rig), sinks, Arc::clone(&clock), u64::from(seed)).map_err(machine)?;
 
+    for journal_id in std::mem::take(&mut found.done_with) {
+        sealer.settle(Settle::Whole { journal_id, trial_number: found.next_trial_number.saturating_sub(1) });
+    }
     let waiting = std::mem::take(&mut found.unsealed);
     waiting.iter().for_each(|unsealed| sealer.seal(unsealed.clone()));
     let mut conductor = Conductor {
@@ -118,11 +119,23 @@ pub fn run(
         seal_patience: options.seal_patience,
         room: RoomWatch::new(options.longest_hold, declared_bytes_per_s(rig)),
         held_back_from_ns: None,
+        settle_at_ns: 0,
         openings: FirstOpenings::of(rig),
         wait_for_ports: options.wait_for_ports,
     };
     conductor.say_hello(&found, &options.socket, &journal_id);
     conductor.run(Inputs { live, requests, reports, sealed, shutdown })
+}
+
+/// What the archive holds; what an earlier run noted as done with is not read again.
+fn look(disk: &Arc<dyn Disk>, dir: &Path, present: Present<'_>) -> Result<Found, DaemonError> {
+    let journal_dir = archive::journal_dir(dir);
+    archive::forget_settled(dir, &journals(&**disk, &journal_dir)?)
+        .map_err(|source| DaemonError::Directory { dir: journal_dir.clone(), source })?;
+    let is_sealed = |range: &TrialRange| matches!(archive::sealed_file(range, dir), Ok(Some(_)));
+    let settled = |journal_id: &str| archive::settled(dir, journal_id);
+    let known = Known { is_sealed: &is_sealed, settled: &settled };
+    Ok(found::look(disk, dir, &journal_dir, present, known)?)
 }
 
 fn holder(rig: &Rig) -> String {

@@ -8,9 +8,13 @@ use std::io::{self, Read};
 use std::os::unix::process::CommandExt;
 use std::path::{Path, PathBuf};
 use std::process::{Child, Command, Stdio};
+use std::sync::Arc;
 use std::time::{Duration, Instant};
 
 use crossbeam_channel::{Receiver, RecvTimeoutError, Sender, bounded, unbounded};
+
+use crate::archive::{settle_until, settle_whole};
+use crate::journal::{Disk, RealDisk};
 
 use super::found::Unsealed;
 
@@ -25,7 +29,22 @@ pub struct SealReport {
 /// The thread that has trials sealed. Dropped, it does what waits and then closes its reports.
 #[derive(Debug)]
 pub struct Sealer {
-    tasks: Sender<Unsealed>,
+    tasks: Sender<Task>,
+}
+
+/// What the thread does, one after the other.
+#[derive(Debug)]
+enum Task {
+    Seal(Unsealed),
+    Settle(Settle),
+    RetryNow,
+}
+
+/// A journal, or all of it until an instant, needs not be read at the next start.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub enum Settle {
+    Until { journal_id: String, host_ns: i64, pinned_from_seq: Option<u64>, trial_number: u32 },
+    Whole { journal_id: String, trial_number: u32 },
 }
 
 /// How the child is started; the daemon's own program in earnest.
@@ -59,15 +78,29 @@ impl Sealer {
 
     pub fn seal(&self, unsealed: Unsealed) {
         // The thread ends only after this sender is gone.
-        let _ = self.tasks.send(unsealed);
+        let _ = self.tasks.send(Task::Seal(unsealed));
+    }
+
+    /// What kept sealings from working is put right: those that failed are tried again at once.
+    pub fn retry_now(&self) {
+        let _ = self.tasks.send(Task::RetryNow);
+    }
+
+    /// Notes what the next start need not read; done between sealings.
+    pub fn settle(&self, settle: Settle) {
+        let _ = self.tasks.send(Task::Settle(settle));
     }
 }
 
-fn work(command: &SealCommand, tasks: &Receiver<Unsealed>, reports: &Sender<SealReport>) {
+fn work(command: &SealCommand, tasks: &Receiver<Task>, reports: &Sender<SealReport>) {
     let mut retries: VecDeque<(Instant, Duration, Unsealed)> = VecDeque::new();
     loop {
         let (task, pause) = match next(tasks, &mut retries, command.retry_first) {
-            Next::Task(task, pause) => (task, pause),
+            Next::Seal(task, pause) => (task, pause),
+            Next::Settle(settle) => {
+                note(&command.archive_dir, &settle);
+                continue;
+            }
             Next::Nothing => continue,
             Next::End => return, // what failed is left to the next start
         };
@@ -82,23 +115,38 @@ fn work(command: &SealCommand, tasks: &Receiver<Unsealed>, reports: &Sender<Seal
 }
 
 enum Next {
-    Task(Unsealed, Duration),
+    Seal(Unsealed, Duration),
+    Settle(Settle),
     Nothing,
     End,
 }
 
-fn next(
-    tasks: &Receiver<Unsealed>,
-    retries: &mut VecDeque<(Instant, Duration, Unsealed)>,
-    retry_first: Duration,
-) -> Next {
+fn next(tasks: &Receiver<Task>, retries: &mut VecDeque<(Instant, Duration, Unsealed)>, retry_first: Duration) -> Next {
     match tasks.recv_timeout(Duration::from_millis(200)) {
-        Ok(task) => Next::Task(task, retry_first),
+        Ok(Task::Seal(task)) => Next::Seal(task, retry_first),
+        Ok(Task::Settle(settle)) => Next::Settle(settle),
+        Ok(Task::RetryNow) => {
+            retries.iter_mut().for_each(|(at, _, _)| *at = Instant::now());
+            Next::Nothing
+        }
         Err(RecvTimeoutError::Disconnected) => Next::End,
         Err(RecvTimeoutError::Timeout) => match retries.pop_front_if(|(at, _, _)| *at <= Instant::now()) {
-            Some((_, pause, task)) => Next::Task(task, pause),
+            Some((_, pause, task)) => Next::Seal(task, pause),
             None => Next::Nothing,
         },
+    }
+}
+
+fn note(dir: &Path, settle: &Settle) {
+    let noted = match settle {
+        Settle::Until { journal_id, host_ns, pinned_from_seq, trial_number } => {
+            let disk: Arc<dyn Disk> = Arc::new(RealDisk);
+            settle_until(dir, journal_id, &disk, *host_ns, *pinned_from_seq, *trial_number)
+        }
+        Settle::Whole { journal_id, trial_number } => settle_whole(dir, journal_id, *trial_number),
+    };
+    if let Err(error) = noted {
+        tracing::warn!("the next start reads more of the journal than it need: {error}");
     }
 }
 
@@ -123,6 +171,7 @@ fn start(command: &SealCommand, task: &Unsealed) -> io::Result<Child> {
     Command::new(&command.program)
         .arg("seal-child")
         .args(command.keep_journal.then_some("--keep-journal"))
+        .args(["--from-seq", &task.first_seq.to_string()])
         .args([arg(&command.archive_dir), task.journal_id.clone().into(), task.trial_id.clone().into()])
         .process_group(0)
         .stdin(Stdio::null())
@@ -152,7 +201,7 @@ mod tests {
         let mark = mark.display();
         std::fs::write(
             &path,
-            format!("#!/bin/sh\nif [ ! -e {mark} ]; then touch {mark}; {first}; fi\necho sealed $4\n"),
+            format!("#!/bin/sh\nif [ ! -e {mark} ]; then touch {mark}; {first}; fi\necho sealed $6\n"),
         )
         .unwrap();
         std::fs::set_permissions(&path, std::fs::Permissions::from_mode(0o755)).unwrap();

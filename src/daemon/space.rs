@@ -67,6 +67,7 @@ impl Conductor {
             && let Some(from_host_ns) = self.held_back_from_ns.take()
         {
             self.open_trial(now_ns, from_host_ns, "there is room on the disk again", "");
+            self.sealer.retry_now();
         }
     }
 }

@@ -96,6 +96,15 @@ impl TrialBook {
         self.waiting.retain(|unsealed| unsealed.trial_id != trial_id);
     }
 
+    /// Greatest running number of a trial so far.
+    pub fn last_number(&self) -> u32 {
+        self.next_number.saturating_sub(1)
+    }
+
+    pub fn journal_id(&self) -> &str {
+        &self.journal_id
+    }
+
     /// First record of this journal that an unsealed trial needs.
     pub fn pinned_from(&self) -> Option<u64> {
         let waiting = self.waiting.iter().filter(|unsealed| unsealed.journal_id == self.journal_id);

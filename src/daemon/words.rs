@@ -31,10 +31,9 @@ pub fn wall(clocks: &Clocks) -> String {
     jiff::Timestamp::from_millisecond(clocks.realtime_ns / 1_000_000).map(|at| at.to_string()).unwrap_or_default()
 }
 
-/// What is wrong with the recording, the worst first; `None` when nothing is.
-pub fn trouble(now: &RecorderNow) -> Option<String> {
+/// Why the disk takes nothing, or soon will not; `None` when all is well.
+pub fn disk_trouble(now: &RecorderNow) -> Option<String> {
     let health = &now.health;
-    let exposure_ns = health.exposure_ns_lately();
     if now.refusing {
         let why = health.trouble.as_deref().unwrap_or("the disk takes no more");
         return Some(format!(
@@ -45,6 +44,12 @@ pub fn trouble(now: &RecorderNow) -> Option<String> {
     if let Some(trouble) = &health.trouble {
         return Some(format!("{trouble}; data wait in memory and in the last reserve: make room or change the disk"));
     }
+    None
+}
+
+/// What is slow about the recording; `None` when nothing is.
+pub fn slow(now: &RecorderNow) -> Option<String> {
+    let exposure_ns = now.health.exposure_ns_lately();
     if now.queue_high_water > QUEUE_HIGH {
         let percent = now.queue_high_water * 100.0;
         return Some(format!("the disk is slow, {percent:.0} % of the queue was filled"));

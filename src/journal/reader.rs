@@ -203,9 +203,16 @@ impl JournalReader {
 
     /// The journal's trials and its end, in one pass.
     pub fn survey(&self) -> Result<Survey, ReadError> {
+        self.survey_from(0)
+    }
+
+    /// The same from a segment on: of the trials only those that were opened in it or later. The last segment is always
+    /// read.
+    pub fn survey_from(&self, segment_number: u32) -> Result<Survey, ReadError> {
         let mut survey = Survey::default();
         let mut describes: Vec<DescribeKeeper> = Vec::new();
-        for item in self.records() {
+        let first = self.segments.partition_point(|segment| segment.number < segment_number);
+        for item in self.starting_at(first.min(self.segments.len() - 1)) {
             match item? {
                 Item::Opening { open, .. } => {
                     survey.begin_segment(&open);

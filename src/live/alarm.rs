@@ -25,6 +25,9 @@ pub enum Cause {
     Uncalibrated,
     /// The model cannot take the rig file's cords to the planned draw.
     NoPlan,
+    /// The disk takes nothing or has too little room.
+    Disk,
+    /// Recording is slower than promised.
     Journal,
     /// A link that was never up in this run.
     LinkAbsent(u16),

@@ -276,9 +276,18 @@ impl Live {
 
     /// What the journal says of itself; `None` when all is well.
     pub fn journal_trouble(&mut self, host_ns: i64, trouble: Option<&str>) -> Option<Happening> {
+        self.recording_trouble(Cause::Journal, host_ns, trouble)
+    }
+
+    /// What is wrong with the disk it writes to: an alarm of its own, so that it is raised over one of slowness.
+    pub fn disk_trouble(&mut self, host_ns: i64, trouble: Option<&str>) -> Option<Happening> {
+        self.recording_trouble(Cause::Disk, host_ns, trouble)
+    }
+
+    fn recording_trouble(&mut self, cause: Cause, host_ns: i64, trouble: Option<&str>) -> Option<Happening> {
         match trouble {
-            Some(sentence) => self.board.raise(Cause::Journal, host_ns, format!("journal: {sentence}")),
-            None => self.board.clear(Cause::Journal, host_ns),
+            Some(sentence) => self.board.raise(cause, host_ns, format!("journal: {sentence}")),
+            None => self.board.clear(cause, host_ns),
         }
     }
 

@@ -8,6 +8,8 @@
 
 #[path = "../../tests/support/journal.rs"]
 mod journal_file;
+#[path = "shared/sealing.rs"]
+mod sealing;
 
 use std::path::{Path, PathBuf};
 use std::process::Command;
@@ -41,11 +43,11 @@ print(best)
 fn main() {
     let dir = tempfile::tempdir().unwrap();
     nominal(dir.path(), PACE, true);
-    let mut best = Run { wall_s: f64::INFINITY, processor_s: f64::INFINITY, peak_mib: 0.0 };
+    let mut best = sealing::Run { wall_s: f64::INFINITY, processor_s: f64::INFINITY, peak_mib: 0.0 };
     let target = dir.path().join(format!("trial-{TRIAL_ID}.h5"));
     for _ in 0..N_RUNS {
         let _ = std::fs::remove_file(&target);
-        let run = seal_once(dir.path());
+        let run = sealing::seal_once(dir.path(), JOURNAL_ID, TRIAL_ID);
         best.wall_s = best.wall_s.min(run.wall_s);
         best.processor_s = best.processor_s.min(run.processor_s);
         best.peak_mib = best.peak_mib.max(run.peak_mib);
@@ -56,7 +58,7 @@ fn main() {
     let mib = |path: &Path| std::fs::metadata(path).unwrap().len() as f64 / f64::from(1 << 20);
     let journal = dir.path().join("journal").join(tautrail::journal::segment_name(JOURNAL_ID, 1));
     println!("figure seal_trial_length value={trial_s:.1} unit=s reference=- ratio=- target=-");
-    let Run { wall_s, processor_s, peak_mib } = best;
+    let sealing::Run { wall_s, processor_s, peak_mib } = best;
     let ratio = processor_s / h5py_s;
     println!(
         "figure seal_processor_time value={processor_s:.2} unit=s reference={h5py_s:.2} ratio={ratio:.2} target=1"
@@ -64,32 +66,21 @@ fn main() {
     println!("figure seal_wall_time_niced value={wall_s:.2} unit=s reference=- ratio=- target=-");
     println!("figure seal_peak_memory value={peak_mib:.0} unit=MiB reference=- ratio=- target=-");
     let (file, journal) = (mib(&target), mib(&journal));
+    start_up(dir.path());
     println!(
         "figure seal_file_size value={file:.1} unit=MiB reference={journal:.1} ratio={:.2} target=4",
         file / journal
     );
 }
 
-struct Run {
-    wall_s: f64,
-    processor_s: f64,
-    /// Greatest resident size.
-    peak_mib: f64,
-}
-
-/// Seals in a child as the daemon does.
-fn seal_once(dir: &Path) -> Run {
-    let program = std::env::current_exe().unwrap().ancestors().nth(2).map(|target| target.join("tautrail")).unwrap();
+/// What a start reads of the journal where nothing is noted as done with: seconds a GiB.
+fn start_up(dir: &Path) {
+    let (reader, _) = journal_file::opened(dir);
+    let n_bytes: u64 = reader.segments().iter().map(|segment| segment.bytes).sum();
     let begun = Instant::now();
-    // Python hands out the resource usage of one child, which the standard library of Rust does not.
-    let script = "import os,sys,resource\npid=os.fork()\nif pid==0: os.execv(sys.argv[1],sys.argv[1:])\n_,status,usage=os.wait4(pid,0)\nprint(os.waitstatus_to_exitcode(status),usage.ru_maxrss,usage.ru_utime+usage.ru_stime)";
-    let args = ["seal-child", dir.to_str().unwrap(), JOURNAL_ID, TRIAL_ID];
-    let output = Command::new("python3").arg("-c").arg(script).arg(program).args(args).output().unwrap();
-    let wall_s = begun.elapsed().as_secs_f64();
-    let text = String::from_utf8(output.stdout).unwrap();
-    let last: Vec<f64> = text.lines().last().unwrap().split(' ').map(|word| word.parse().unwrap()).collect();
-    assert!(last[0] == 0.0, "sealing failed: {text}");
-    Run { wall_s, processor_s: last[2], peak_mib: last[1] / 1024.0 }
+    reader.survey().unwrap();
+    let s_per_gib = begun.elapsed().as_secs_f64() * f64::from(1 << 30) / n_bytes as f64;
+    println!("figure start_up_unsettled value={s_per_gib:.2} unit=s/GiB reference=- ratio=- target=-");
 }
 
 fn h5py_seconds(trial: &Path, control: &Path) -> f64 {

@@ -60,6 +60,7 @@ fn pit() -> Pit {
         seal_patience: Duration::from_secs(5),
         room: RoomWatch::new(Duration::from_secs(60), 1e5),
         held_back_from_ns: None,
+        settle_at_ns: 0,
         openings: FirstOpenings::of(&rig),
         wait_for_ports: false,
     };

@@ -41,8 +41,13 @@ fn left_open() -> StagedDisk {
 }
 
 fn found(disk: &StagedDisk, present: Present<'_>, sealed: bool) -> Found {
+    found_knowing(disk, present, sealed, None)
+}
+
+fn found_knowing(disk: &StagedDisk, present: Present<'_>, sealed: bool, settled: Option<Settled>) -> Found {
     let disk: Arc<dyn Disk> = Arc::new(disk.clone());
-    look(&disk, Path::new(ARCHIVE), Path::new(JOURNALS), present, &|_| sealed).unwrap()
+    let known = Known { is_sealed: &|_| sealed, settled: &|_| settled };
+    look(&disk, Path::new(ARCHIVE), Path::new(JOURNALS), present, known).unwrap()
 }
 
 #[test]
@@ -104,4 +109,36 @@ fn a_segment_made_ahead_and_never_begun_is_cleared_away() {
     let found = found(&disk, HERE, false);
     assert_eq!(found.never_begun, [path]);
     assert_eq!(found.resumed.unwrap().start.segment, 3, "its number is not used again");
+}
+
+#[test]
+fn what_is_noted_as_done_with_is_not_read_again() {
+    let disk = StagedDisk::default();
+    let mut older = journal(&disk, "000006-abc123");
+    open_trial(&mut older);
+    for i in 4..4000 {
+        older.append(i, DeviceIdx(0), &Body::Heartbeat);
+    }
+    older.commit(4000);
+    journal(&disk, "000007-abc123").commit(1);
+    let disk = disk.after_kill();
+    let fresh = found(&disk, HERE, true);
+    assert_eq!(fresh.done_with, ["000006-abc123"], "read, and found to be done with");
+    let settled = Settled { from_segment: None, trial_number: 9 };
+    // Its trial would be unsealed if it were looked at.
+    let later = found_knowing(&disk, HERE, false, Some(settled));
+    assert_eq!((later.unsealed, later.next_trial_number), (vec![], 10));
+    assert_eq!(later.done_with, [""; 0], "noted already");
+    assert_eq!(later.segments.len(), 2, "its segments are looked after all the same");
+}
+
+#[test]
+fn a_journal_is_read_from_the_segment_that_is_not_done_with() {
+    let disk = left_open();
+    let from = |number| Some(Settled { from_segment: Some(number), trial_number: 4 });
+    let resumed = found_knowing(&disk, HERE, false, from(1)).resumed.unwrap();
+    assert_eq!(resumed.open_trial.unwrap().trial_id, TRIAL);
+    // A note of a segment that is not there any more: the last one is read.
+    let resumed = found_knowing(&disk, HERE, false, from(700)).resumed.unwrap();
+    assert_eq!((resumed.start.seq, resumed.open_trial.is_some()), (4, true));
 }

@@ -51,7 +51,9 @@ impl Journal {
                 self.ahead = Some(Ahead { number, path, file });
             }
             Outcome::PrepareFailed { path, error } => {
-                self.trouble(format!("cannot make the next segment {}: {error}", path.display()));
+                // Without the segment's number, so that it is told once and not at every attempt.
+                let dir = path.parent().unwrap_or(&path).display();
+                self.trouble(format!("cannot make the next segment in {dir}: {error}"));
                 self.retry_ns = now_ns + RETRY_AHEAD_NS;
             }
             Outcome::Room { free_bytes } => self.health.free_bytes = free_bytes.unwrap_or(self.health.free_bytes),

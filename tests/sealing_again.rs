@@ -1,0 +1,130 @@
+//! Sealing again: the same records in other segments give the same bytes, and a kept journal is enough to seal from.
+
+#![allow(clippy::unwrap_used, clippy::expect_used, reason = "a test that cannot go on stops here")]
+
+#[path = "support/journal.rs"]
+mod journal_file;
+
+use std::path::{Path, PathBuf};
+use std::process::Command;
+use std::sync::Arc;
+
+use journal_file::{JOURNAL_ID, TRIAL_ID, nominal, opened, opening};
+use tautrail::archive::{Fate, Keep, ReleaseError, Sealed, kept, recover, release, seal, seal_keeping};
+use tautrail::journal::{Disk, Item, Journal, JournalReader, Origin, RealDisk, Settings, Start, TrialRange};
+
+const PACE: f64 = 0.1;
+
+/// Writes the records of the journal in `from` into `to` by the journal's own writer, in segments of a size.
+fn rewrite(from: &Path, to: &Path, segment_bytes: u64) -> usize {
+    let disk: Arc<dyn Disk> = Arc::new(RealDisk);
+    let (reader, _) = opened(from);
+    let open = opening(journal_file::RIG_TEXT);
+    let origin = Origin {
+        journal_id: JOURNAL_ID.into(),
+        program_version: open.program_version,
+        kernel_boot_id: open.kernel_boot_id,
+        rig_text: open.rig_text,
+        devices: open.devices,
+    };
+    let settings = Settings { segment_bytes, segment_ns: i64::MAX, ..Settings::default() };
+    let dir = to.join("journal");
+    let mut journal = Journal::begin(Arc::clone(&disk), &dir, origin, Start::fresh(), settings, 0).unwrap();
+    for item in reader.records() {
+        let Item::Record(record) = item.unwrap() else { continue };
+        assert_eq!(journal.append(record.host_ns, record.device, &record.body), Some(record.seq));
+        journal.commit(record.host_ns);
+        while let Some(job) = journal.next_job(record.host_ns) {
+            let outcome = job.run(&*disk);
+            journal.job_done(outcome, record.host_ns);
+        }
+    }
+    drop(journal);
+    JournalReader::open(disk, &dir, JOURNAL_ID).unwrap().segments().len()
+}
+
+fn sealed_bytes(dir: &Path, cut: impl Fn(TrialRange) -> TrialRange) -> Vec<u8> {
+    let disk: Arc<dyn Disk> = Arc::new(RealDisk);
+    let (reader, range) = opened(dir);
+    let sealed = seal(&reader, &cut(range), dir, &disk).unwrap();
+    let bytes = std::fs::read(&sealed.path).unwrap();
+    std::fs::remove_file(&sealed.path).unwrap();
+    bytes
+}
+
+#[test]
+fn the_same_records_in_other_segments_give_the_same_bytes() {
+    let source = tempfile::tempdir().unwrap();
+    nominal(source.path(), PACE, true);
+    let whole = |range: TrialRange| range;
+    // Begins in the middle: a lead-in comes before it, of another length for every way to cut the segments.
+    let later = |range: TrialRange| TrialRange { first_seq: range.last_seq / 2, ..range };
+    let (one, half) = (sealed_bytes(source.path(), whole), sealed_bytes(source.path(), later));
+    assert!(half.len() < one.len());
+    for segment_bytes in [150_001, 40_003] {
+        let cut = tempfile::tempdir().unwrap();
+        let n_segments = rewrite(source.path(), cut.path(), segment_bytes);
+        assert!(n_segments > 3, "{n_segments} segments");
+        assert!(sealed_bytes(cut.path(), whole) == one, "segments of {segment_bytes} bytes: other bytes");
+        assert!(sealed_bytes(cut.path(), later) == half, "segments of {segment_bytes} bytes, begun later: other bytes");
+    }
+}
+
+fn real() -> Arc<dyn Disk> {
+    Arc::new(RealDisk)
+}
+
+fn segment() -> PathBuf {
+    Path::new("journal").join(tautrail::journal::segment_name(JOURNAL_ID, 1))
+}
+
+fn seal_in(dir: &Path) -> Sealed {
+    let (reader, range) = opened(dir);
+    seal(&reader, &range, dir, &real()).unwrap()
+}
+
+#[test]
+fn the_journal_of_an_abnormal_trial_stays_until_a_person_lets_it_go() {
+    let dir = tempfile::tempdir().unwrap();
+    nominal(dir.path(), PACE, false);
+    let journal = std::fs::read(dir.path().join(segment())).unwrap();
+    let sealed = seal_in(dir.path());
+    assert_eq!((sealed.outcome.as_str(), sealed.journal_kept), ("truncated", true));
+    // What the recorder lets go of to stay within its budget.
+    std::fs::remove_file(dir.path().join(segment())).unwrap();
+    let [one] = &kept(dir.path()).unwrap()[..] else { panic!("one journal") };
+    assert_eq!((one.trial_id.as_str(), one.n_bytes), (TRIAL_ID, journal.len() as u64));
+    // It is enough to seal again from.
+    std::fs::rename(&sealed.path, dir.path().join("elsewhere.h5")).unwrap();
+    assert!(matches!(release(dir.path(), TRIAL_ID), Err(ReleaseError::NotSealed { .. })), "all there is of it");
+    let again = recover(dir.path(), &real(), &mut |_| {}).unwrap();
+    assert!(matches!(&again[..], [one] if matches!(one.fate, Fate::Sealed(_))), "{again:?}");
+    assert!(std::fs::read(&sealed.path).unwrap() == std::fs::read(dir.path().join("elsewhere.h5")).unwrap());
+    let let_go = Command::new(env!("CARGO_BIN_EXE_tautrail"))
+        .arg("recover")
+        .arg(dir.path())
+        .args(["--release", TRIAL_ID])
+        .output()
+        .unwrap();
+    assert!(let_go.status.success(), "{let_go:?}");
+    assert_eq!(kept(dir.path()).unwrap(), []);
+    assert!(matches!(release(dir.path(), TRIAL_ID), Err(ReleaseError::NotKept { .. })));
+    for trial_id in ["..", "../..", "kept"] {
+        assert!(release(dir.path(), trial_id).is_err(), "{trial_id}");
+    }
+    assert!(sealed.path.exists() && dir.path().join("journal").exists());
+}
+
+#[test]
+fn the_journal_of_a_launch_is_kept_only_where_asked_for() {
+    let dir = tempfile::tempdir().unwrap();
+    nominal(dir.path(), PACE, true);
+    let (reader, range) = opened(dir.path());
+    assert!(!seal(&reader, &range, dir.path(), &real()).unwrap().journal_kept);
+    assert_eq!(kept(dir.path()).unwrap(), []);
+    let other = tempfile::tempdir().unwrap();
+    nominal(other.path(), PACE, true);
+    let (reader, range) = opened(other.path());
+    assert!(seal_keeping(&reader, &range, other.path(), &real(), Keep::Every).unwrap().journal_kept);
+    assert_eq!(kept(other.path()).unwrap().len(), 1);
+}
