@@ -8,7 +8,7 @@ use std::collections::BTreeMap;
 use std::ops::RangeInclusive;
 
 use crate::calibration::{Sampling, Signal, signal_from_counts, to_value};
-use crate::capture::{Block, Captured, ClockPiece, Counts, DeviceDescription, Encoding, StreamDescription, piece_at};
+use crate::capture::{Block, Captured, ClockPiece, Counts, DeviceDescription, StreamDescription, piece_at};
 use crate::link::DeviceIdx;
 use crate::rig::{Channel, Rig};
 use crate::trial::{OpenSignal, TrialWriter};
@@ -113,7 +113,7 @@ impl<'a> ValuePass<'a> {
                     nominal_rate_hz: rate_hz(description, stream),
                     bandwidth_hz: described.bandwidth_hz,
                     time_uncertainty_s: u_ns * 1e-9,
-                    counts_range: counts_range(described.encoding),
+                    counts_range: described.encoding.range(),
                 };
                 let (group_delay_s, ticks_per_sample) = (described.group_delay_s, stream.ticks_per_sample);
                 let saturates = described.nominal_min..=described.nominal_max;
@@ -259,18 +259,6 @@ impl SignalPass {
 
 fn rate_hz(description: &DeviceDescription, stream: &StreamDescription) -> f64 {
     description.tick_rate_hz / f64::from(stream.ticks_per_sample.max(1))
-}
-
-/// What an encoding can carry; at its ends the channel saturates.
-fn counts_range(encoding: Encoding) -> Option<RangeInclusive<f64>> {
-    let bits = match encoding {
-        Encoding::I16 => 16,
-        Encoding::I24 => 24,
-        Encoding::I32 => 32,
-        Encoding::F32 => return None,
-    };
-    let half = 2_f64.powi(bits - 1);
-    Some(-half..=half - 1.0)
 }
 
 #[cfg(test)]

@@ -1,5 +1,7 @@
 //! What a device's bytes turn into. Everything carries the host's monotonic time of the read that completed it.
 
+use std::ops::RangeInclusive;
+
 /// Host monotonic time (CLOCK_MONOTONIC), nanoseconds.
 pub type HostNs = i64;
 
@@ -10,6 +12,20 @@ pub enum Encoding {
     I24,
     I32,
     F32,
+}
+
+impl Encoding {
+    /// What it can carry, in counts; at its ends the channel saturates. None for floating point.
+    pub fn range(self) -> Option<RangeInclusive<f64>> {
+        let bits = match self {
+            Self::I16 => 16,
+            Self::I24 => 24,
+            Self::I32 => 32,
+            Self::F32 => return None,
+        };
+        let half = 2_f64.powi(bits - 1);
+        Some(-half..=half - 1.0)
+    }
 }
 
 /// One channel as its device describes it.

@@ -3,7 +3,8 @@
 use serde::{Deserialize, Serialize};
 
 pub use crate::live::{
-    AlarmNow, ChannelNow, CordsNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, Snapshot, TrialNow,
+    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, Snapshot,
+    ToGo, TrialNow,
 };
 
 pub const FEED_VERSION: u32 = 1;

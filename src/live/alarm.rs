@@ -14,11 +14,34 @@ pub enum Cause {
     LoadedAndBlind,
     /// The release line let go, or its cell failed, and the shuttle has not moved.
     ReleasedNotMoving,
+    /// A hold lost more tension at once than rubber does.
+    FallingInHold,
+    /// The shuttle jumped in the hold and was held again.
+    HookSlip,
+    /// It let go short of the plan's draw.
+    EarlyRelease,
+    RisingTooFast,
     TensionOverPlan,
+    /// A release now could pass the acceleration limit.
+    PeakOverLimit,
+    /// Another number of cords, free length or zero mark than the rig file's.
+    Misrigged,
+    TensionBelowPlan,
+    /// Elongation near the end of what the cords' card was tested for.
+    NearCardEnd,
+    /// A release now would miss the launch-speed window.
+    OutOfWindow,
     /// A tension cell reads below zero: index in the rig's channels.
     BelowZero(usize),
     LinkLost(u16),
     ChannelSilent(usize),
+    /// The very same value without its usual noise.
+    ChannelStuck(usize),
+    /// At the end of its converter's range.
+    ChannelSaturated(usize),
+    ChannelNoisy(usize),
+    /// A device's clock is known badly.
+    ClockPoor(u16),
     /// The device does not describe a channel that the rig file names.
     ChannelMissing(usize),
     /// A tension cell of the rig file has no calibration.
@@ -36,7 +59,7 @@ pub enum Cause {
 impl Cause {
     /// Whether the alarm waits for a person after its cause is gone.
     fn latches(self) -> bool {
-        !matches!(self, Self::LinkAbsent(_) | Self::ChannelMissing(_))
+        !matches!(self, Self::LinkAbsent(_) | Self::ChannelMissing(_) | Self::ClockPoor(_) | Self::OutOfWindow)
     }
 }
 
@@ -50,6 +73,8 @@ struct Standing {
 #[derive(Debug, Default)]
 pub struct Board {
     standing: Vec<Standing>,
+    /// Causes seen but not yet for as long as their alarm asks, since when.
+    awaited: Vec<(Cause, i64)>,
 }
 
 impl Board {
@@ -81,6 +106,27 @@ impl Board {
             self.standing.remove(at);
         }
         Some(Happening::Alarm { host_ns, sentence, change: AlarmChange::Cleared })
+    }
+
+    /// Raises a cause that has been seen without a break for `for_ns`, clears one that is not seen.
+    pub fn judge(&mut self, cause: Cause, host_ns: i64, for_ns: i64, seen: Option<String>) -> Option<Happening> {
+        let Some(sentence) = seen else {
+            self.awaited.retain(|(awaited, _)| *awaited != cause);
+            return self.clear(cause, host_ns);
+        };
+        let since_ns = match self.awaited.iter().find(|(awaited, _)| *awaited == cause) {
+            Some((_, since_ns)) => *since_ns,
+            None => {
+                self.awaited.push((cause, host_ns));
+                host_ns
+            }
+        };
+        (host_ns - since_ns >= for_ns).then(|| self.raise(cause, host_ns, sentence)).flatten()
+    }
+
+    /// Whether a cause has been seen but not yet for long enough.
+    pub fn is_awaited(&self, cause: Cause) -> bool {
+        self.awaited.iter().any(|(awaited, _)| *awaited == cause)
     }
 
     pub fn is_active(&self, cause: Cause) -> bool {

@@ -3,6 +3,7 @@
 use crate::calibration::to_value;
 use crate::rig::{Channel, Coefficients, Role};
 
+use super::health::Health;
 use super::state::ChannelNow;
 use super::trail::Trail;
 
@@ -18,6 +19,7 @@ pub struct ChannelMonitor {
     newest: Option<(i64, f64)>,
     extremes: Option<(f64, f64)>,
     trail: Trail,
+    pub health: Health,
 }
 
 impl ChannelMonitor {
@@ -30,6 +32,7 @@ impl ChannelMonitor {
             newest: None,
             extremes: None,
             trail: Trail::default(),
+            health: Health::default(),
         }
     }
 
@@ -42,7 +45,13 @@ impl ChannelMonitor {
         self.newest = Some((t_ns, value));
         self.extremes = Some(self.extremes.map_or((value, value), |(min, max)| (min.min(value), max.max(value))));
         self.trail.push(t_ns, value);
+        self.health.take(t_ns, counts);
         Some(value)
+    }
+
+    /// Size of one count near the zero, in the role's unit.
+    pub fn per_count(&self) -> f64 {
+        self.calibration.coefficients.get(1).map_or(0.0, |slope| slope.abs())
     }
 
     pub fn is_tension(&self) -> bool {

@@ -181,6 +181,25 @@ impl DeviceMonitor {
         mine.map(|(idx, _)| idx).filter(|idx| !known.contains(idx)).collect()
     }
 
+    /// Where the converters of the rig's channels end, in counts: index in the rig's channels, least, greatest.
+    pub fn ranges(&self, description: &DeviceDescription) -> Vec<(usize, f64, f64)> {
+        let described = description.streams.iter().flat_map(|stream| {
+            let map = self.streams.iter().find(|map| map.stream == stream.stream);
+            stream.channels.iter().enumerate().filter_map(move |(place, channel)| {
+                let idx = (*map?.targets.get(place)?)?;
+                let stated = channel.nominal_min..=channel.nominal_max;
+                let range = if stated.is_empty() { channel.encoding.range()? } else { stated };
+                Some((idx, *range.start(), *range.end()))
+            })
+        });
+        described.collect()
+    }
+
+    /// Standard uncertainty of the clock now; none before there is a map.
+    pub fn clock_u_s(&self) -> Option<f64> {
+        self.clock.as_ref().and_then(LiveClock::piece).map(|piece| piece.u_ns * 1e-9)
+    }
+
     /// Hands every sample of a block to `sink`, stamped with the host time at which the device took it. A block whose
     /// ticks say that it is a minute away from its arrival is not shown: its channel falls silent, which is said.
     pub fn spread(&mut self, block: &Block, sink: &mut impl FnMut(Sample)) {
@@ -235,7 +254,7 @@ impl DeviceMonitor {
             gaps: counters.gaps,
             longest_stall_s: self.longest_stall_ns as f64 * 1e-9,
             silent_s: self.last_bytes_ns.map(|last_ns| (host_ns - last_ns).max(0) as f64 * 1e-9),
-            clock_uncertainty_s: piece.map(|piece| piece.u_ns * 1e-9),
+            clock_uncertainty_s: self.clock_u_s(),
             clock_drift_ppm: piece.and_then(|piece| piece.drift_ppm(1e9 / self.ns_per_tick)),
             note: self.note.clone(),
         }

@@ -10,19 +10,18 @@ use super::alarm::{Board, Cause};
 use super::channel::ChannelMonitor;
 use super::cords::{Cells, SlackRule};
 use super::device::{DeviceMonitor, Sample};
+use super::drawn::{Drawn, Pull};
 use super::happening::Happening;
 use super::launch::LaunchWatch;
 use super::phase::{Seen, Tracker};
 use super::plan::Plan;
-use super::state::{CordsNow, JournalNow, LaunchSeen, Phase, ReleasedNow, Snapshot, TrialNow};
+use super::rules;
+use super::state::{CordsNow, JournalNow, LaunchSeen, Phase, Snapshot, TrialNow};
 use super::trial::TrialKeeper;
-use super::{forecast, rules};
 
 const MS: i64 = 1_000_000;
 const SPEED_WINDOW_NS: i64 = 100 * MS;
 const FAST_SPEED_WINDOW_NS: i64 = 10 * MS;
-/// Ten forecasts a second.
-const FORECAST_EVERY_NS: i64 = 100 * MS;
 
 /// What only the daemon knows of a snapshot.
 #[derive(Debug, Clone, Default)]
@@ -46,8 +45,6 @@ pub struct Live {
     pub(super) board: Board,
     pub(super) cords: CordsNow,
     pub(super) cells: Cells,
-    pub(super) over_plan_since_ns: Option<i64>,
-    pub(super) below_zero_since_ns: Vec<Option<i64>>,
     pub(super) started_ns: Option<i64>,
     has_uncalibrated_cell: bool,
     slack_rule: SlackRule,
@@ -55,8 +52,7 @@ pub struct Live {
     launch: LaunchWatch,
     launch_ns: i64,
     last_launch: Option<LaunchSeen>,
-    released_now: Option<ReleasedNow>,
-    forecast_ns: i64,
+    pub(super) drawn: Drawn,
 }
 
 impl Live {
@@ -74,8 +70,6 @@ impl Live {
             board: Board::default(),
             cords: CordsNow::Unknown,
             cells: Cells::default(),
-            over_plan_since_ns: None,
-            below_zero_since_ns: vec![None; rig.channels.len()],
             started_ns: None,
             has_uncalibrated_cell: rig.uncalibrated.iter().any(|channel| channel.role.is_tension()),
             slack_rule: SlackRule::default(),
@@ -83,8 +77,7 @@ impl Live {
             launch: LaunchWatch::default(),
             launch_ns: 0,
             last_launch: None,
-            released_now: None,
-            forecast_ns: 0,
+            drawn: Drawn::default(),
             rig: rig.clone(),
         }
     }
@@ -122,6 +115,9 @@ impl Live {
             Captured::Description(description) => {
                 let host_ns = device.last_bytes_ns().unwrap_or(0);
                 let missing = device.describe(description, &rig.channels);
+                for (idx, low_counts, high_counts) in device.ranges(description) {
+                    channels[idx].health.set_range(low_counts, high_counts);
+                }
                 rules::channels_described(board, rig, &device.name, &missing, host_ns)
             }
             Captured::Block(block) => {
@@ -147,10 +143,8 @@ impl Live {
     /// Time passes: silences, dwell times, forecasts. Call it at every heartbeat.
     pub fn tick(&mut self, host_ns: i64) -> Vec<Happening> {
         let happenings = self.judge(host_ns);
-        if host_ns - self.forecast_ns >= FORECAST_EVERY_NS {
-            self.forecast_ns = host_ns;
-            self.released_now = self.forecast(host_ns);
-        }
+        let pull = self.pull(host_ns);
+        self.drawn.follow(&self.rig, self.plan.as_ref(), self.tracker.phase(), pull, host_ns);
         happenings
     }
 
@@ -182,9 +176,7 @@ impl Live {
             }
             _ => {}
         }
-        if !matches!(to, Phase::WinchBack | Phase::Hold | Phase::LetDown) {
-            self.released_now = None;
-        }
+        self.drawn.entered(from, to, host_ns);
     }
 
     fn seen(&self, host_ns: i64) -> Seen {
@@ -202,7 +194,7 @@ impl Live {
         }
     }
 
-    fn with_role(&self, role: Role) -> Option<&ChannelMonitor> {
+    pub(super) fn with_role(&self, role: Role) -> Option<&ChannelMonitor> {
         self.channels.iter().find(|channel| channel.role == role)
     }
 
@@ -214,12 +206,10 @@ impl Live {
         self.level(Role::ShuttlePosition, host_ns)
     }
 
-    fn forecast(&self, host_ns: i64) -> Option<ReleasedNow> {
-        if !matches!(self.tracker.phase(), Phase::WinchBack | Phase::Hold | Phase::LetDown) {
-            return None;
-        }
-        let tension_n = self.level(Role::ReleaseLineTension, host_ns)?;
-        forecast::released_now(&self.rig, tension_n, self.x_m(host_ns)?)
+    /// Line and place together, when both are fresh.
+    fn pull(&self, host_ns: i64) -> Option<Pull> {
+        let line_n = self.level(Role::ReleaseLineTension, host_ns)?;
+        Some(Pull { line_n, x_m: self.x_m(host_ns)? })
     }
 
     /// The state of everything; starts new extremes for the next snapshot.
@@ -234,7 +224,10 @@ impl Live {
             channels: self.channels.iter_mut().map(|channel| channel.take_now(host_ns)).collect(),
             x_m,
             draw_m: x_m.map(|x_m| self.rig.draw_m(x_m)),
-            released_now: self.released_now,
+            released_now: self.drawn.released_now,
+            to_go: self.drawn.to_go(&self.rig, self.plan.as_ref(), self.tracker.phase(), self.pull(host_ns)),
+            hold: self.drawn.hold_now(&self.rig),
+            cords_fit: self.drawn.cords_fit(&self.rig),
             last_launch: self.last_launch,
             links: self.devices.iter_mut().map(|device| device.now(host_ns)).collect(),
             journal: around.journal,

@@ -6,10 +6,14 @@
 
 mod alarm;
 mod channel;
+mod cord_fit;
 mod cords;
 mod device;
+mod drawn;
 mod forecast;
 mod happening;
+mod health;
+mod hold_watch;
 mod instrument;
 mod launch;
 mod phase;
@@ -27,6 +31,7 @@ pub use happening::{AlarmChange, Happening};
 pub use instrument::{Around, Live};
 pub use plan::{Expected, Plan};
 pub use state::{
-    AlarmNow, ChannelNow, CordsNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, Snapshot, TrialNow,
+    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, Snapshot,
+    ToGo, TrialNow,
 };
 pub use trial::KeptOpen;

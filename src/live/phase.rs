@@ -143,6 +143,11 @@ impl Tracker {
         self.released_not_moving
     }
 
+    /// Where the shuttle was held: follows it slowly, and stands still from the line's fall on.
+    pub fn place_before_release_m(&self) -> Option<f64> {
+        self.place.value()
+    }
+
     /// Judges one instant; gives the phase left behind when it changed.
     pub fn step(&mut self, seen: &Seen) -> Option<Phase> {
         if self.since_ns == 0 {

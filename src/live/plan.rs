@@ -27,6 +27,15 @@ pub struct Expected {
     pub high_n: f64,
 }
 
+/// The line while it is drawn back, at one draw.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Drawing {
+    /// Of all cords, along the loading branch.
+    pub pull_n: f64,
+    /// Friction less weight: what the line carries beside the pull.
+    pub offset_n: f64,
+}
+
 /// The rig file's expectation of tension and energy.
 #[derive(Debug, Clone)]
 pub struct Plan {
@@ -79,6 +88,26 @@ impl Plan {
             planned_n: (level_n + drawing_n).max(0.0),
             high_n: (level_n + drawing_n + self.band_n).max(0.0),
         }
+    }
+
+    /// What the line is made of while it is drawn back: the cords' pull along their loading branch, and what friction and
+    /// weight add to it.
+    pub fn drawing(&self, draw_m: f64) -> Drawing {
+        let expected = self.expected(draw_m);
+        let offset_n = self.friction_n - self.weight_along_rail_n;
+        Drawing { pull_n: (expected.planned_n - offset_n).max(0.0), offset_n }
+    }
+
+    /// The draw at which the line should first show `tension_n`; none where it never does.
+    pub fn taut_draw_m(&self, tension_n: f64) -> Option<f64> {
+        let last = self.table.len() - 1;
+        let step = (0..=last).find(|step| self.expected(*step as f64 * self.step_m).planned_n >= tension_n)?;
+        if step == 0 {
+            return Some(0.0);
+        }
+        let (from_m, to_m) = ((step - 1) as f64 * self.step_m, step as f64 * self.step_m);
+        let (from_n, to_n) = (self.expected(from_m).planned_n, self.expected(to_m).planned_n);
+        Some(from_m + (tension_n - from_n) / (to_n - from_n) * (to_m - from_m))
     }
 
     /// The whole band from zero draw to a little past the planned draw.

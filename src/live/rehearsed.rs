@@ -24,11 +24,17 @@ struct Rehearsed {
 }
 
 fn rehearse(scenario: &str, seed: u64) -> Rehearsed {
-    let rig = crate::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap();
-    let options = Options { scenario: scenario.into(), seed, ..Options::default() };
-    let performance = prepare(&options).unwrap();
+    rehearse_on(&north_pier_file(), &Options { scenario: scenario.into(), seed, ..Options::default() })
+}
+
+fn north_pier_file() -> crate::rig::Rig {
+    crate::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap()
+}
+
+fn rehearse_on(rig: &crate::rig::Rig, options: &Options) -> Rehearsed {
+    let performance = prepare(options).unwrap();
     let mut play = VirtualPlay::new(&performance).unwrap();
-    let mut live = Live::new(&rig);
+    let mut live = Live::new(rig);
     let (mut told, mut forecasts, mut oldest_s) = (Vec::new(), Vec::new(), 0.0_f64);
     let mut beat_ns = 0;
     for delivery in play.by_ref() {
@@ -148,4 +154,31 @@ fn an_early_release_is_a_launch() {
 fn a_hook_that_slips_and_holds_again_is_no_launch() {
     let run = rehearse("hook-slip", 1);
     assert!(!run.phases().contains(&Phase::Launch), "{:?}", run.phases());
+}
+
+/// What each scenario makes of the alarms: a part of every sentence that must be raised, in any order, and no other.
+const RAISED: [(&str, &[&str]); 9] = [
+    ("hook-slip", &["hook slip"]),
+    ("cord-failure-in-hold", &["tension falls in the hold", "below the plan's band", "outside the window"]),
+    ("hang-fire", &["hang-fire"]),
+    ("early-release", &["early release: the shuttle let go at 2.6"]),
+    ("misrigged-count", &["fits 5.", "below the plan's band"]),
+    ("misrigged-length", &["came taut at"]),
+    ("clipped-accelerometer", &["accel (shuttle specific force) is saturated"]),
+    ("incline-head-wind", &[]),
+    ("soft-rail", &[]),
+];
+
+#[test]
+fn every_scenario_raises_its_own_sentences_and_no_other() {
+    for (scenario, wanted) in RAISED {
+        let run = rehearse(scenario, 1);
+        let raised = run.raised();
+        for part in wanted {
+            assert!(raised.iter().any(|sentence| sentence.contains(part)), "{scenario}: \"{part}\" in {raised:#?}");
+        }
+        let others: Vec<_> =
+            raised.iter().filter(|sentence| !wanted.iter().any(|part| sentence.contains(part))).collect();
+        assert!(others.is_empty(), "{scenario}: {others:#?}");
+    }
 }

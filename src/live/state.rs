@@ -69,10 +69,46 @@ pub struct ReleasedNow {
     pub launch_speed_mps: f64,
     pub launch_speed_low_mps: f64,
     pub launch_speed_high_mps: f64,
+    /// Launch speed and head wind together.
+    pub airspeed_mps: f64,
+    pub airspeed_low_mps: f64,
+    pub airspeed_high_mps: f64,
     /// Specific force along the rail, multiples of 9.80665 m/s².
     pub peak_g: f64,
     pub peak_g_low: f64,
     pub peak_g_high: f64,
+    /// Probability that the launch speed lies in its window, and the peak under its limit.
+    pub in_window: f64,
+    pub under_limit: f64,
+}
+
+/// How many cords the tension fits so far: the misrigging watch.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+pub struct CordsFit {
+    pub cords: f64,
+    /// Ends of the 95 % interval.
+    pub low: f64,
+    pub high: f64,
+    /// What the rig file says.
+    pub rig_file: u32,
+}
+
+/// What the hold has done to the tension of the release line.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+pub struct HoldNow {
+    pub fell_n: f64,
+    /// Where the tension will be a minute from now, if it goes on so; none before it can be told.
+    pub in_a_minute_n: Option<f64>,
+    /// When a release would fall short of the window; 0 when it would now, none when not within an hour or not known.
+    pub window_missed_in_s: Option<f64>,
+}
+
+/// What is still to be drawn to the plan.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
+pub struct ToGo {
+    pub draw_m: f64,
+    /// From the tension now to the planned one; none where the rig file gives no plan.
+    pub tension_n: Option<f64>,
 }
 
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -144,6 +180,12 @@ pub struct Snapshot {
     pub x_m: Option<f64>,
     pub draw_m: Option<f64>,
     pub released_now: Option<ReleasedNow>,
+    /// While the draw is short of the plan.
+    pub to_go: Option<ToGo>,
+    /// In the hold.
+    pub hold: Option<HoldNow>,
+    /// From the winch-back on, once there is enough of it.
+    pub cords_fit: Option<CordsFit>,
     pub last_launch: Option<LaunchSeen>,
     pub links: Vec<LinkNow>,
     pub journal: Option<JournalNow>,

@@ -53,7 +53,7 @@ pub fn north_pier() -> Rig {
         plan: crate::rig::Plan {
             draw_m: 4.0,
             launch_speed_min_mps: 15.0,
-            launch_speed_max_mps: 18.0,
+            launch_speed_max_mps: 19.0,
             slack_tension_n: 15.0,
             tension_band_relative: 0.1,
         },

@@ -16,6 +16,8 @@ use crate::units::STANDARD_GRAVITY_MPS2;
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct ReleaseForecast {
     pub launch_speed_mps: Interval,
+    /// Launch speed and head wind together.
+    pub airspeed_mps: Interval,
     /// Greatest specific force along the rail at the payload, unfiltered, in multiples of 9.80665 m/s².
     pub peak_g: Interval,
 }
@@ -28,11 +30,12 @@ pub fn released_now(rig: &Rig, tension_n: f64, x_m: f64) -> Result<ReleaseForeca
     let mut setup = LaunchSetup::drawn(rig, tension_n, x_m)?;
     setup.relative_tolerance = FAST;
     let inputs = Inputs::of(rig, Known::HoldTension { tension_n, x_m })?;
-    let [speed, peak] = first_order(&setup, &inputs, |moved, _| {
+    let [speed, air, peak] = first_order(&setup, &inputs, |moved, _| {
         let answers = launch_answers(&moved.setup)?;
         let speed_mps = answers.separation.map_or(0.0, |separation| separation.launch_speed_mps);
-        Ok([speed_mps * moved.speed_factor, answers.peak_specific_mps2])
+        let speed_mps = speed_mps * moved.speed_factor;
+        Ok([speed_mps, speed_mps + moved.setup.head_wind_mps, answers.peak_specific_mps2])
     })?
     .map(|propagated| propagated.interval);
-    Ok(ReleaseForecast { launch_speed_mps: speed, peak_g: peak.times(1.0 / STANDARD_GRAVITY_MPS2) })
+    Ok(ReleaseForecast { launch_speed_mps: speed, airspeed_mps: air, peak_g: peak.times(1.0 / STANDARD_GRAVITY_MPS2) })
 }

@@ -22,7 +22,7 @@ const N_ALARM_ROWS_MAX: u16 = 6;
 /// Draws the whole display. Any size is taken; what has no room is left out, the cords' line last.
 pub fn draw(frame: &mut Frame, view: &ViewState) {
     let area = frame.area();
-    let alarms = panels::alarms(view, area.width);
+    let alarms = panels::alarms(view, area.width, usize::from(N_ALARM_ROWS_MAX));
     let n_alarm_rows = (alarms.len() as u16).min(N_ALARM_ROWS_MAX);
     let small = area.height < 14;
     let below = if small { 0 } else { (area.height / 4).clamp(6, 14) };

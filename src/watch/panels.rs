@@ -3,7 +3,7 @@
 use ratatui::style::Style;
 use ratatui::text::{Line, Span};
 
-use crate::feed::message::{Event, LinkNow, ReleasedNow};
+use crate::feed::message::{Event, LinkNow, ReleasedNow, Snapshot};
 use crate::live::{JournalNow, LaunchSeen, Phase};
 
 use super::view::ViewState;
@@ -15,7 +15,7 @@ pub fn released_now(view: &ViewState, width: u16) -> (&'static str, Vec<Line<'st
         return (" released now ", vec![Line::from("no data: UNKNOWN")]);
     };
     match (snapshot.released_now, snapshot.last_launch) {
-        (Some(now), _) => (" released now ", forecast(view, &now, width)),
+        (Some(now), _) => (" released now ", forecast(view, snapshot, &now, width)),
         (None, Some(seen)) => (" launched ", launched(view, &seen)),
         (None, None) => (" released now ", vec![Line::from(why_no_forecast(snapshot.phase))]),
     }
@@ -30,27 +30,72 @@ const fn why_no_forecast(phase: Phase) -> &'static str {
     }
 }
 
-fn forecast(view: &ViewState, now: &ReleasedNow, width: u16) -> Vec<Line<'static>> {
+fn forecast(view: &ViewState, snapshot: &Snapshot, now: &ReleasedNow, width: u16) -> Vec<Line<'static>> {
     let (hello, theme) = (&view.hello, view.theme);
     let (low, high) = (now.launch_speed_low_mps, now.launch_speed_high_mps);
     let (min, max) = (hello.plan_speed_min_mps, hello.plan_speed_max_mps);
     let window = against_window(low, high, min, max);
     let limit = against_limit(now.peak_g_low, now.peak_g_high, hello.limit_peak_g);
-    let verdict =
-        |word: &'static str, good: &str| Line::styled(word, if word == good { theme.good() } else { theme.caution() });
+    let verdict = |word: &'static str, good: &str, chance: f64| {
+        let style = if word == good { theme.good() } else { theme.caution() };
+        Line::styled(format!("{word} {:>width$}", percent(chance), width = 24 - word.len()), style)
+    };
     let old = if view.snapshot_freshness() == Freshness::Fresh { "" } else { " ~old" };
-    vec![
+    let mut lines = vec![
         Line::styled(format!("speed {:>5.1} m/s{old}", now.launch_speed_mps), theme.strong()),
         Line::from(format!("      {low:.1} to {high:.1}")),
         Line::from(format!("window {min:.1} to {max:.1}")),
         Line::from(gauge(width, (min, max), (low, now.launch_speed_mps, high), theme.ascii)),
-        verdict(window, "IN WINDOW"),
+        verdict(window, "IN WINDOW", now.in_window),
         Line::styled(format!("peak  {:>5.1} g{old}", now.peak_g), theme.strong()),
         Line::from(format!("      {:.1} to {:.1}", now.peak_g_low, now.peak_g_high)),
         Line::from(format!("limit {:>5.1} g", hello.limit_peak_g)),
-        verdict(limit, "under limit"),
-        Line::styled("forecast, 95 % intervals", theme.quiet()),
-    ]
+        verdict(limit, "under limit", now.under_limit),
+    ];
+    lines.extend(on_the_way(view, snapshot));
+    if (now.airspeed_mps - now.launch_speed_mps).abs() > 0.05 {
+        lines.push(Line::from(format!("air   {:>5.1} m/s", now.airspeed_mps)));
+    }
+    lines.push(Line::styled("forecast, 95 % intervals", theme.quiet()));
+    lines
+}
+
+/// A probability as people read it; nothing is ever certain.
+fn percent(chance: f64) -> String {
+    match 100.0 * chance {
+        percent if percent > 99.0 => String::from(">99 %"),
+        percent if percent < 1.0 => String::from("<1 %"),
+        percent => format!("{percent:.0} %"),
+    }
+}
+
+/// What is left to draw and how many cords pull, while drawing; what the hold does to the tension, in the hold.
+fn on_the_way(view: &ViewState, snapshot: &Snapshot) -> Vec<Line<'static>> {
+    let plus_minus = if view.theme.ascii { "+-" } else { "±" };
+    let mut lines = Vec::new();
+    if let Some(hold) = snapshot.hold {
+        let later = hold.in_a_minute_n.map_or(String::new(), |later_n| format!(", {later_n:.0} in a minute"));
+        lines.push(Line::from(format!("fell {:.1} N{later}", hold.fell_n)));
+        lines.extend(hold.window_missed_in_s.map(|in_s| {
+            let text = if in_s < 1.0 { String::from("window MISSED") } else { format!("window missed in {in_s:.0} s") };
+            Line::styled(text, view.theme.caution())
+        }));
+        return lines;
+    }
+    lines.extend(snapshot.to_go.map(|to_go| {
+        let tension = to_go.tension_n.map_or(String::new(), |tension_n| format!(", {tension_n:+.0} N"));
+        Line::from(format!("to go {:.2} m{tension}", to_go.draw_m))
+    }));
+    lines.extend(snapshot.cords_fit.map(|fit| {
+        let style = if (fit.low..=fit.high).contains(&f64::from(fit.rig_file)) {
+            view.theme.quiet()
+        } else {
+            view.theme.caution()
+        };
+        let half = 0.5 * (fit.high - fit.low);
+        Line::styled(format!("fits {:.1} {plus_minus} {half:.1} of {} cords", fit.cords, fit.rig_file), style)
+    }));
+    lines
 }
 
 fn launched(view: &ViewState, seen: &LaunchSeen) -> Vec<Line<'static>> {
@@ -158,8 +203,8 @@ pub fn journal(view: &ViewState) -> Line<'static> {
     }
 }
 
-/// Standing alarms, most urgent first, each whole on as many lines as it needs.
-pub fn alarms(view: &ViewState, width: u16) -> Vec<Line<'static>> {
+/// Standing alarms, most urgent first, each whole on as many lines as it needs; those that do not fit are counted.
+pub fn alarms(view: &ViewState, width: u16, n_rows: usize) -> Vec<Line<'static>> {
     let mut all = Vec::new();
     if let Some(reason) = &view.lost {
         all.push((format!("NO CONNECTION to the daemon ({reason}); trying again"), view.theme.alert()));
@@ -172,9 +217,18 @@ pub fn alarms(view: &ViewState, width: u16) -> Vec<Line<'static>> {
         (true, Some(person)) => (format!("alarm (seen by {person}): {}", alarm.sentence), view.theme.caution()),
         (false, _) => (format!("was alarm, press a: {}", alarm.sentence), view.theme.caution()),
     }));
-    let lines =
-        |(text, style): (String, Style)| wrapped(&text, width).into_iter().map(move |line| Line::styled(line, style));
-    all.into_iter().flat_map(lines).collect()
+    let n_all = all.len();
+    let mut lines: Vec<Line<'static>> = Vec::new();
+    for (n_shown, (text, style)) in all.into_iter().enumerate() {
+        let sentence = wrapped(&text, width);
+        let last = n_shown + 1 == n_all;
+        if lines.len() + sentence.len() + usize::from(!last) > n_rows && n_shown > 0 {
+            lines.push(Line::styled(format!("and {} more", n_all - n_shown), view.theme.caution()));
+            break;
+        }
+        lines.extend(sentence.into_iter().map(|line| Line::styled(line, style)));
+    }
+    lines
 }
 
 /// Broken between words; lines after the first are indented.

@@ -9,7 +9,10 @@ use super::{Theme, ViewState, draw, plain_line};
 use crate::feed::message::{Event, Hello, Message, Snapshot};
 use std::collections::BTreeMap;
 
-use crate::live::{AlarmNow, ChannelNow, CordsNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, TrialNow};
+use crate::live::{
+    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, ToGo,
+    TrialNow,
+};
 
 const COLOUR: Theme = Theme { colour: true, ascii: false };
 const PLAIN: Theme = Theme { colour: false, ascii: true };
@@ -87,6 +90,9 @@ fn snapshot(phase: Phase, x_m: f64, line_n: f64, anchor_n: f64, cords: CordsNow)
         x_m: Some(x_m),
         draw_m: Some(4.0 - x_m),
         released_now: None,
+        to_go: None,
+        hold: None,
+        cords_fit: None,
         last_launch: None,
         links: vec![link("winch-node"), link("shuttle-node")],
         journal: Some(JournalNow {
@@ -106,10 +112,19 @@ const FORECAST: ReleasedNow = ReleasedNow {
     launch_speed_mps: 16.6,
     launch_speed_low_mps: 16.2,
     launch_speed_high_mps: 17.0,
+    airspeed_mps: 18.6,
+    airspeed_low_mps: 17.5,
+    airspeed_high_mps: 19.7,
     peak_g: 8.1,
     peak_g_low: 7.8,
     peak_g_high: 8.4,
+    in_window: 0.99,
+    under_limit: 1.0,
 };
+
+fn alarm(sentence: &str, active: bool) -> AlarmNow {
+    AlarmNow { sentence: sentence.into(), raised_ns: 80_999_000_000_000, active, acknowledged_by: None }
+}
 
 fn event(age_s: f64, kind: &str, text: &str) -> Message {
     let host_ns = 81_000_000_000_000 - (age_s * 1e9) as i64;
@@ -132,6 +147,7 @@ fn holding(theme: Theme) -> ViewState {
     let mut now =
         snapshot(Phase::Hold, 0.002, 688.0, 694.0, CordsNow::Loaded { tension_n: 694.0, energy_j: Some(1_410.0) });
     now.released_now = Some(FORECAST);
+    now.hold = Some(HoldNow { fell_n: 5.1, in_a_minute_n: Some(684.0), window_missed_in_s: None });
     view.apply(Message::Snapshot(Box::new(now)));
     view
 }
@@ -161,12 +177,6 @@ fn pulled_cable() -> ViewState {
     now.channels[1].age_s = Some(2.4);
     now.links[0].up = false;
     now.links[0].note = "the port is gone".into();
-    let alarm = |sentence: &str, active| AlarmNow {
-        sentence: sentence.into(),
-        raised_ns: 80_999_000_000_000,
-        active,
-        acknowledged_by: None,
-    };
     now.alarms = vec![
         alarm("cords loaded and line and anchor silent (last tension 694 N): tension unknown, treat as loaded", true),
         alarm("winch-node: link lost on ports/winch-node (the port is gone): check cable and power", true),
@@ -351,4 +361,28 @@ fn one_plain_line_answers_what_the_screen_answers() {
     let line = plain_line(&pulled_cable());
     assert!(line.starts_with("TENSION UNKNOWN, TREAT AS LOADED") && line.contains("line SILENT"), "{line}");
     assert!(line.contains("ALARM: cords loaded and line and anchor silent"), "{line}");
+}
+
+#[test]
+fn alarms_that_do_not_fit_are_counted() {
+    let mut view = holding(COLOUR);
+    let mut now = view.snapshot.clone().unwrap();
+    now.alarms = (0..9).map(|k| alarm(&format!("sentence number {k} that says what is wrong"), true)).collect();
+    view.apply(Message::Snapshot(now));
+    let shown = text(&view, 80, 24);
+    assert!(shown.contains("and 4 more") && shown.contains("number 4") && !shown.contains("number 5"), "{shown}");
+}
+
+/// Six cords in place of seven, on the way back.
+#[test]
+fn winch_back_shows_what_is_left_and_how_many_cords_pull() {
+    let mut view = holding(COLOUR);
+    let mut now = view.snapshot.clone().unwrap();
+    now.phase = Phase::WinchBack;
+    now.hold = None;
+    now.to_go = Some(ToGo { draw_m: 1.69, tension_n: Some(180.0) });
+    now.cords_fit = Some(CordsFit { cords: 6.0, low: 5.7, high: 6.3, rig_file: 7 });
+    view.apply(Message::Snapshot(now));
+    let shown = text(&view, 80, 24);
+    assert!(shown.contains("to go 1.69 m, +180 N") && shown.contains("fits 6.0 ± 0.3 of 7 cords"), "{shown}");
 }

@@ -1,6 +1,6 @@
 use super::*;
 use crate::archive::raw_pass::RawPass;
-use crate::capture::{ChannelDescription, ClockMethod, TimeBase};
+use crate::capture::{ChannelDescription, ClockMethod, Encoding, TimeBase};
 use crate::journal::{DeviceAtOpen, SegmentOpen};
 use crate::trial::{Header, TrialFile};
 

@@ -7,6 +7,10 @@ use crate::rig::Rig;
 
 /// A device has this long to appear before its absence is an alarm.
 const LINK_GRACE_NS: i64 = 3_000 * super::MS;
+/// A clock has this long to settle; standard uncertainty above which it is poor.
+const CLOCK_GRACE_NS: i64 = 10_000 * super::MS;
+const POOR_S: f64 = 2e-3;
+const POOR_FOR_NS: i64 = 2_000 * super::MS;
 
 /// Says which of the rig's channels a device's description lacks.
 pub fn channels_described(
@@ -53,5 +57,21 @@ pub(super) fn judge(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
             device.note()
         );
         told.extend(live.board.raise(cause, host_ns, sentence));
+    }
+}
+
+/// Times worse than this spoil the release instant and the launch speed.
+pub(super) fn clock_poor(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
+    let waited_ns = live.started_ns.map_or(0, |started_ns| host_ns - started_ns);
+    for (idx, device) in (0_u16..).zip(&live.devices) {
+        let poor_s = device.clock_u_s().filter(|u_s| *u_s > POOR_S && device.is_up() && waited_ns > CLOCK_GRACE_NS);
+        let seen = poor_s.map(|u_s| {
+            format!(
+                "{}: its clock is known to ±{:.1} ms only: times and speeds of this trial get that much worse; check that it answers time requests",
+                device.name,
+                2e3 * u_s
+            )
+        });
+        told.extend(live.board.judge(Cause::ClockPoor(idx), host_ns, POOR_FOR_NS, seen));
     }
 }

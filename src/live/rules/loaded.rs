@@ -4,21 +4,6 @@ use crate::live::alarm::Cause;
 use crate::live::happening::Happening;
 use crate::live::instrument::Live;
 use crate::live::state::CordsNow;
-use crate::rig::Role;
-
-pub(super) fn released_not_moving(live: &mut Live, host_ns: i64) -> Option<Happening> {
-    if !live.tracker.released_not_moving() {
-        return live.board.clear(Cause::ReleasedNotMoving, host_ns);
-    }
-    let anchor = match live.level(Role::CordAnchorTension, host_ns) {
-        Some(anchor_n) => format!("the anchor still carries {anchor_n:.0} N"),
-        None => String::from("the anchor's cell is silent"),
-    };
-    let sentence = format!(
-        "the release line lost more than half its tension but the shuttle does not move ({anchor}): hang-fire or failed cell, keep clear, treat the cords as loaded"
-    );
-    live.board.raise(Cause::ReleasedNotMoving, host_ns, sentence)
-}
 
 /// The cords were last seen loaded, and now a tension cell or its link is gone.
 pub(super) fn blind(live: &mut Live, host_ns: i64) -> Option<Happening> {
