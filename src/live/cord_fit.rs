@@ -26,8 +26,8 @@ const BRANCH_FACTOR: f64 = std::f64::consts::SQRT_2;
 /// Coverage factor of the interval shown (95 %, normal).
 const COVERAGE: f64 = 1.96;
 /// How far the cords may come taut from where the plan says.
-const TAUT_LEAST_M: f64 = 0.12;
-const TAUT_SHARE_OF_DRAW: f64 = 0.04;
+const TAUT_LEAST_M: f64 = 0.1;
+const TAUT_SHARE_OF_DRAW: f64 = 0.03;
 
 /// Sums of the least squares so far; starts anew with every winch-back from slack.
 #[derive(Debug, Clone, Copy, Default)]
@@ -38,7 +38,8 @@ pub struct CordFit {
     sum_y: f64,
     sum_qy: f64,
     furthest_draw_m: f64,
-    taut_draw_m: Option<f64>,
+    /// The draw at which the line first showed that the cords are taut, and the draw at which the plan has its tension.
+    taut_m: Option<(f64, f64)>,
 }
 
 /// What the watch holds against the rig file.
@@ -46,15 +47,15 @@ pub struct CordFit {
 pub enum Misrigged {
     /// Another number of cords than the rig file's, or cords of another kind.
     Count(CordsFit),
-    /// The first tension came at another draw: (seen, planned).
+    /// The cords were taut at another draw than the plan has for the same tension: (seen, planned).
     Taut(f64, f64),
 }
 
 impl CordFit {
     /// Takes the line's level at a draw that grows.
     pub fn take(&mut self, rig: &Rig, plan: &Plan, line_n: f64, draw_m: f64) {
-        if self.taut_draw_m.is_none() && line_n >= taut_n(rig) {
-            self.taut_draw_m = Some(draw_m);
+        if self.taut_m.is_none() && line_n >= taut_n(rig) {
+            self.taut_m = plan.taut_draw_m(line_n).map(|planned_m| (draw_m, planned_m));
         }
         if draw_m < FROM_DRAW_M.max(self.furthest_draw_m + EVERY_M) {
             return;
@@ -98,12 +99,10 @@ impl CordFit {
     }
 
     /// What contradicts the rig file, if anything does.
-    pub fn misrigged(&self, rig: &Rig, plan: &Plan) -> Option<Misrigged> {
-        let shifted = self.taut_draw_m.and_then(|seen_m| {
-            let planned_m = plan.taut_draw_m(taut_n(rig))?;
-            let allowed_m = TAUT_LEAST_M.max(TAUT_SHARE_OF_DRAW * rig.plan.draw_m);
-            ((seen_m - planned_m).abs() > allowed_m).then_some(Misrigged::Taut(seen_m, planned_m))
-        });
+    pub fn misrigged(&self, rig: &Rig) -> Option<Misrigged> {
+        let allowed_m = TAUT_LEAST_M.max(TAUT_SHARE_OF_DRAW * rig.plan.draw_m);
+        let shifted = self.taut_m.filter(|(seen_m, planned_m)| (seen_m - planned_m).abs() > allowed_m);
+        let shifted = shifted.map(|(seen_m, planned_m)| Misrigged::Taut(seen_m, planned_m));
         let counted = self.fit(rig).filter(|fit| {
             let count = f64::from(fit.rig_file);
             !(fit.low..=fit.high).contains(&count) && (fit.cords - count).abs() > 0.4
@@ -149,26 +148,26 @@ mod tests {
             let seen = six.drawing(draw_m);
             fit.take(&rig, &plan, seen.pull_n + seen.offset_n, draw_m);
         }
-        let Some(Misrigged::Count(found)) = fit.misrigged(&rig, &plan) else { panic!("{:?}", fit.fit(&rig)) };
+        let Some(Misrigged::Count(found)) = fit.misrigged(&rig) else { panic!("{:?}", fit.fit(&rig)) };
         assert!((found.cords - 6.0).abs() < 0.3 && found.high - found.low < 1.2, "{found:?}");
     }
 
     #[test]
     fn a_rig_as_its_file_says_raises_nothing_whatever_its_friction() {
-        let (rig, plan) = (north_pier(), Plan::new(&north_pier()).unwrap());
+        let rig = north_pier();
         for friction_n in [4.0, 12.0, 22.0] {
             for share in [0.96, 1.0, 1.04] {
                 let fit = drawn(share, 0.0, friction_n, 4.0);
-                assert_eq!(fit.misrigged(&rig, &plan), None, "{friction_n} N, {share}: {:?}", fit.fit(&rig));
+                assert_eq!(fit.misrigged(&rig), None, "{friction_n} N, {share}: {:?}", fit.fit(&rig));
             }
         }
     }
 
     #[test]
     fn cords_that_come_taut_late_are_told_as_a_free_length_or_a_zero_mark() {
-        let (rig, plan) = (north_pier(), Plan::new(&north_pier()).unwrap());
+        let rig = north_pier();
         let fit = drawn(1.0, 0.3, 12.0, 1.0);
-        let Some(Misrigged::Taut(seen_m, planned_m)) = fit.misrigged(&rig, &plan) else { panic!("{fit:?}") };
+        let Some(Misrigged::Taut(seen_m, planned_m)) = fit.misrigged(&rig) else { panic!("{fit:?}") };
         assert!((seen_m - planned_m - 0.3).abs() < 0.02, "{seen_m}, {planned_m}");
     }
 

@@ -73,8 +73,8 @@ impl Drawn {
         self.cord_fit.fit(rig)
     }
 
-    pub fn misrigged(&self, rig: &Rig, plan: &Plan) -> Option<Misrigged> {
-        self.cord_fit.misrigged(rig, plan)
+    pub fn misrigged(&self, rig: &Rig) -> Option<Misrigged> {
+        self.cord_fit.misrigged(rig)
     }
 
     pub fn hold_now(&self, rig: &Rig) -> Option<HoldNow> {

@@ -206,8 +206,11 @@ impl Live {
         self.level(Role::ShuttlePosition, host_ns)
     }
 
-    /// Line and place together, when both are fresh.
+    /// Line and place together, when both are fresh. A line that fell alone tells nothing of the cords.
     fn pull(&self, host_ns: i64) -> Option<Pull> {
+        if self.tracker.released_not_moving() {
+            return None;
+        }
         let line_n = self.level(Role::ReleaseLineTension, host_ns)?;
         Some(Pull { line_n, x_m: self.x_m(host_ns)? })
     }

@@ -74,8 +74,8 @@ fn on_the_way(view: &ViewState, snapshot: &Snapshot) -> Vec<Line<'static>> {
     let plus_minus = if view.theme.ascii { "+-" } else { "±" };
     let mut lines = Vec::new();
     if let Some(hold) = snapshot.hold {
-        let later = hold.in_a_minute_n.map_or(String::new(), |later_n| format!(", {later_n:.0} in a minute"));
-        lines.push(Line::from(format!("fell {:.1} N{later}", hold.fell_n)));
+        let later = hold.in_a_minute_n.map_or(String::new(), |later_n| format!(", {later_n:.0} N in 1 min"));
+        lines.push(Line::from(format!("fell {:.1}{later}", hold.fell_n)));
         lines.extend(hold.window_missed_in_s.map(|in_s| {
             let text = if in_s < 1.0 { String::from("window MISSED") } else { format!("window missed in {in_s:.0} s") };
             Line::styled(text, view.theme.caution())

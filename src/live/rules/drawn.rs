@@ -24,8 +24,7 @@ pub(super) fn misrigged(live: &mut Live, host_ns: i64) -> Option<Happening> {
         let over = live.tracker.phase() == Phase::Slack;
         return if over { live.board.clear(Cause::Misrigged, host_ns) } else { None };
     }
-    let plan = live.plan.as_ref()?;
-    let sentence = match live.drawn.misrigged(&live.rig, plan)? {
+    let sentence = match live.drawn.misrigged(&live.rig)? {
         Misrigged::Count(fit) => format!(
             "tension fits {:.1} ± {:.1} cords, rig file says {}: stop, let down, count the cords, check lot and hooks",
             fit.cords,
@@ -33,7 +32,7 @@ pub(super) fn misrigged(live: &mut Live, host_ns: i64) -> Option<Happening> {
             fit.rig_file
         ),
         Misrigged::Taut(seen_m, planned_m) => format!(
-            "the cords came taut at {seen_m:.2} m draw, the plan says {planned_m:.2} m: free length, zero mark or slack differ from the rig file; stop and measure"
+            "the cords came taut at {seen_m:.2} m draw, with a tension that the plan has at {planned_m:.2} m: free length, zero mark or slack differ from the rig file; stop and measure"
         ),
     };
     live.board.raise(Cause::Misrigged, host_ns, sentence)

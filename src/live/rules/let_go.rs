@@ -8,8 +8,8 @@ use crate::rig::Role;
 
 /// Share of the planned draw that still counts as the plan's.
 const SHORT_OF_PLAN: f64 = 0.95;
-/// Forward way in a hold that makes a slip, and over which it is looked for.
-const SLIP_M: f64 = 0.003;
+/// Forward way in a hold that makes a slip, and over which it is looked for. Stick and slip on the rail make millimetres.
+const SLIP_M: f64 = 0.006;
 const SLIP_WINDOW_NS: i64 = 300 * super::MS;
 const STANDS_MPS: f64 = 0.02;
 const STANDS_WINDOW_NS: i64 = 100 * super::MS;

@@ -6,7 +6,9 @@ use crate::live::instrument::Live;
 use crate::live::state::Phase;
 use crate::rig::Role;
 
-const AGAINST_PLAN_FOR_NS: i64 = 200 * super::MS;
+const OVER_PLAN_FOR_NS: i64 = 200 * super::MS;
+/// A line that has let go is told as such before this.
+const BELOW_PLAN_FOR_NS: i64 = 500 * super::MS;
 /// An alarm on a level clears this far below it.
 const CLEARS_AT_SHARE: f64 = 0.97;
 /// Least draw at which the band means something.
@@ -41,7 +43,7 @@ pub(super) fn over_limit(live: &mut Live, host_ns: i64) -> Option<Happening> {
 
 /// Outside the plan's band on either side.
 pub(super) fn against_plan(live: &mut Live, host_ns: i64) -> [Option<Happening>; 2] {
-    let drawing = matches!(live.tracker.phase(), Phase::WinchBack | Phase::Hold);
+    let drawing = matches!(live.tracker.phase(), Phase::WinchBack | Phase::Hold) && !live.tracker.released_not_moving();
     let line_n = live.level(Role::ReleaseLineTension, host_ns).filter(|_| drawing);
     let draw_m = live.x_m(host_ns).map(|x_m| live.rig.draw_m(x_m)).filter(|draw_m| *draw_m >= LEAST_BAND_DRAW_M);
     let (mut over, mut below) = (None, None);
@@ -57,8 +59,8 @@ pub(super) fn against_plan(live: &mut Live, host_ns: i64) -> [Option<Happening>;
         below = (line_n < band.low_n).then(|| told("below", "stop, count the cords, check them and the cell"));
     }
     [
-        live.board.judge(Cause::TensionOverPlan, host_ns, AGAINST_PLAN_FOR_NS, over),
-        live.board.judge(Cause::TensionBelowPlan, host_ns, AGAINST_PLAN_FOR_NS, below),
+        live.board.judge(Cause::TensionOverPlan, host_ns, OVER_PLAN_FOR_NS, over),
+        live.board.judge(Cause::TensionBelowPlan, host_ns, BELOW_PLAN_FOR_NS, below),
     ]
 }
 
