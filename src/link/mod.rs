@@ -6,6 +6,7 @@
 
 mod clock;
 mod event;
+mod from_links;
 mod low_latency;
 mod overruns;
 mod port;
@@ -17,7 +18,8 @@ mod threads;
 
 pub use clock::{HostClock, SystemClock};
 pub use event::{DeviceIdx, LinkEvent, LinkWhat, STOPPED};
+pub use from_links::{FromLinks, Lost};
 pub use port::{PortError, look};
-pub use sinks::{FromLinks, Lost, Sinks};
+pub use sinks::Sinks;
 pub use task::{Asks, PortSpec};
 pub use threads::{Links, LinksError, spawn_links};
