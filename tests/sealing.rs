@@ -162,6 +162,9 @@ impl Disk for Faulty {
         fault(self.rename)?;
         RealDisk.rename_noreplace(from, to)
     }
+    fn sync_file(&self, path: &Path) -> io::Result<()> {
+        RealDisk.sync_file(path)
+    }
     fn sync_dir(&self, dir: &Path) -> io::Result<()> {
         fault(self.sync_dir)?;
         RealDisk.sync_dir(dir)

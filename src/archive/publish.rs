@@ -53,7 +53,7 @@ impl<'d> Part<'d> {
             move |source| SealError::Io { doing, path, source }
         };
         std::fs::set_permissions(&self.path, Permissions::from_mode(0o444)).map_err(at("protect", &self.path))?;
-        File::open(&self.path).and_then(|file| file.sync_all()).map_err(at("sync", &self.path))?;
+        self.disk.sync_file(&self.path).map_err(at("sync", &self.path))?;
         match self.disk.rename_noreplace(&self.path, target) {
             // Two seal the same trial at once, after a daemon died and left its child: the first one's file stands.
             Err(error) if error.kind() == io::ErrorKind::AlreadyExists => return self.is_there_already(target),
@@ -66,11 +66,13 @@ impl<'d> Part<'d> {
     }
 
     fn is_there_already(&self, target: &Path) -> Result<Published, SealError> {
-        if same_bytes(&self.path, target)? {
-            Ok(Published::AlreadyThere)
-        } else {
-            Err(SealError::Differs { path: target.to_owned() })
+        if !same_bytes(&self.path, target)? {
+            return Err(SealError::Differs { path: target.to_owned() });
         }
+        // Whoever put it there may have died, or failed, before its name was durable; the journal is let go after this.
+        let dir = target.parent().unwrap_or(Path::new("."));
+        self.disk.sync_dir(dir).map_err(|source| SealError::Io { doing: "sync", path: dir.to_owned(), source })?;
+        Ok(Published::AlreadyThere)
     }
 }
 
@@ -83,19 +85,38 @@ impl Drop for Part<'_> {
     }
 }
 
+/// Removes what killed sealings left in `dir`, and makes durable what they had published: whoever finds a trial sealed
+/// lets its journal go, and the one who sealed it may have died before its name was on the disk.
+///
+/// # Errors
+/// The disk's. A part that cannot be removed only takes room.
+pub fn settle(disk: &dyn Disk, dir: &Path) -> io::Result<()> {
+    for path in stale_parts(disk, dir)? {
+        // The next start tries again.
+        let _ = disk.remove(&path);
+    }
+    disk.sync_dir(dir)
+}
+
 /// Removes what a killed sealing of the same trial left.
 fn remove_stale(disk: &dyn Disk, dir: &Path, stem: &str) -> Result<(), SealError> {
-    let at = |source| SealError::Io { doing: "list", path: dir.to_owned(), source };
-    for listed in disk.list(dir).map_err(at)? {
-        let name = &listed.name;
-        let of_trial = name.strip_prefix(&format!(".{stem}.")).and_then(|rest| rest.strip_suffix(PART_SUFFIX));
-        let Some(pid) = of_trial.and_then(|pid| pid.parse::<i32>().ok()) else { continue };
-        if pid == std::process::id() as i32 || !is_running(pid) {
-            let path = dir.join(name);
-            disk.remove(&path).map_err(|source| SealError::Io { doing: "remove", path, source })?;
-        }
-    }
-    Ok(())
+    let failed = |doing, path: &Path| {
+        let path = path.to_owned();
+        move |source| SealError::Io { doing, path, source }
+    };
+    let prefix = format!(".{stem}.");
+    let of_trial = |path: &&PathBuf| path.file_name().is_some_and(|name| name.to_string_lossy().starts_with(&prefix));
+    let stale = stale_parts(disk, dir).map_err(failed("list", dir))?;
+    stale.iter().filter(of_trial).try_for_each(|path| disk.remove(path).map_err(failed("remove", path)))
+}
+
+/// Temporary files `.trial-….PID.part` whose process is gone, or is this one from an attempt before.
+fn stale_parts(disk: &dyn Disk, dir: &Path) -> io::Result<Vec<PathBuf>> {
+    let pid_of = |name: &str| name.strip_prefix(".trial-")?.strip_suffix(PART_SUFFIX)?.rsplit_once('.')?.1.parse().ok();
+    let is_stale =
+        |name: &str| pid_of(name).is_some_and(|pid: i32| pid == std::process::id() as i32 || !is_running(pid));
+    let listed = disk.list(dir)?;
+    Ok(listed.into_iter().filter(|file| is_stale(&file.name)).map(|file| dir.join(file.name)).collect())
 }
 
 fn is_running(pid: i32) -> bool {

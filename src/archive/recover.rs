@@ -11,6 +11,7 @@ use crate::trial::TrialFile;
 
 use super::error::SealError;
 use super::keep::{Keep, readers};
+use super::publish::settle;
 use super::seal::{Sealed, seal, seal_keeping, trial_path};
 
 /// What became of one trial.
@@ -66,10 +67,14 @@ pub fn recover(
         Err(LockError::Held { .. }) => None,
         Err(error) => return Err(RecoverError::Lock(error)),
     };
+    settle(&**disk, dir).map_err(|source| ReadError::Io { path: dir.to_owned(), source })?;
     let mut recovered = Vec::new();
     let ids = journals(&**disk, &journal_dir(dir))?;
     for journal_id in &ids {
-        let reader = JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id)?;
+        let reader = match JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id) {
+            Err(ReadError::NoSegment { .. }) => continue, // made and not begun, or nothing in it can be read
+            opened => opened?,
+        };
         for range in reader.trials()? {
             let live = lock.is_none() && range.closed.is_none() && ids.last() == Some(journal_id);
             let fate = if live { Fate::Live } else { seal_if_needed(&reader, &range, dir, disk, progress) };

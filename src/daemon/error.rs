@@ -10,7 +10,7 @@ use crate::link::{LinksError, PortError};
 #[derive(Debug, thiserror::Error)]
 #[non_exhaustive]
 pub enum DaemonError {
-    #[error("cannot make the archive directory {dir}: {source}; give a directory that this user may write")]
+    #[error("cannot make or write the archive directory {dir}: {source}; give a directory that this user may write")]
     Directory { dir: PathBuf, source: io::Error },
     #[error(transparent)]
     Lock(#[from] LockError),

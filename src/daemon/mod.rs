@@ -5,6 +5,7 @@
 //! tension stands or is unknown; what the ports gave is in the journal before the daemon ends; a start after a crash
 //! goes on with the trial or seals it. Refuses: to start where another daemon records.
 
+mod begin;
 mod commands;
 mod conductor;
 mod error;
@@ -19,5 +20,7 @@ mod space;
 mod trials;
 mod words;
 
+pub use begin::begin_journal;
 pub use error::DaemonError;
+pub use found::{Found, Known, Present, Resumed, Unsealed, look};
 pub use run::{Options, run};

@@ -10,17 +10,17 @@ use crate::archive;
 use crate::feed::FeedServer;
 use crate::feed::message::{Event, Hello};
 use crate::journal::{
-    ArchiveLock, Clocks, DeviceAtOpen, Disk, Ends, Journal, Order, Origin, RealDisk, Recorder, Settings, Start,
-    TrialRange, journals,
+    ArchiveLock, Clocks, DeviceAtOpen, Disk, Ends, Order, RealDisk, Recorder, Settings, TrialRange, journals,
 };
 use crate::link::{self, HostClock, PortSpec, Sinks, SystemClock, spawn_links};
 use crate::live::Live;
 use crate::rig::Rig;
 
+use super::begin::begin_journal;
 use super::conductor::{Conductor, Inputs};
 use super::error::DaemonError;
 use super::found::{self, Found, Known, Present, Resumed};
-use super::machine::{identifier, kernel_boot_id, random_part};
+use super::machine::{kernel_boot_id, random_part};
 use super::outgoing::Outgoing;
 use super::ports::FirstOpenings;
 use super::room::RoomWatch;
@@ -71,13 +71,16 @@ pub fn run(
     let unmakeable = |source| DaemonError::Directory { dir: options.dir.clone(), source };
     disk.create_dir(&options.dir).map_err(unmakeable)?;
     let _lock = ArchiveLock::take(&options.dir, &holder(rig))?;
+    archive::settle(&*disk, &options.dir).map_err(unmakeable)?;
     if !options.wait_for_ports {
         look_for_ports(rig)?;
     }
     let boot_id = kernel_boot_id().map_err(|source| DaemonError::Machine { what: "boot id", source })?;
     let present = Present { kernel_boot_id: &boot_id, rig_text: &rig.text };
     let mut found = look(&disk, &options.dir, present)?;
-    let journal = begin_journal(rig, options, &found, boot_id.clone(), &disk, clock.monotonic_ns())?;
+    let (settings, journal_dir) = (settings(options.budget_bytes), archive::journal_dir(&options.dir));
+    let now_ns = clock.monotonic_ns();
+    let journal = begin_journal(&found, &disk, &journal_dir, present, devices_unknown(rig), settings, now_ns)?;
     let journal_id = journal.journal_id().to_owned();
 
     let (feed, requests) = FeedServer::start(&options.socket, Hello::of(rig))?;
@@ -158,42 +161,6 @@ fn declared_bytes_per_s(rig: &Rig) -> f64 {
 
 fn ports(rig: &Rig) -> Vec<PortSpec> {
     (0..).zip(&rig.devices).map(|(idx, device)| PortSpec::of(idx, device)).collect()
-}
-
-/// Goes on with the journal found, or begins a new one, and takes charge of the segments of before.
-fn begin_journal(
-    rig: &Rig,
-    options: &Options,
-    found: &Found,
-    kernel_boot_id: String,
-    disk: &Arc<dyn Disk>,
-    now_ns: i64,
-) -> Result<Journal, DaemonError> {
-    let (journal_id, start, devices) = match &found.resumed {
-        Some(resumed) => (resumed.journal_id.clone(), resumed.start.clone(), resumed.devices.clone()),
-        None => {
-            let journal_id = identifier(found.next_journal_number)
-                .map_err(|source| DaemonError::Machine { what: "random numbers", source })?;
-            (journal_id, Start::fresh(), devices_unknown(rig))
-        }
-    };
-    let origin = Origin {
-        journal_id,
-        program_version: env!("CARGO_PKG_VERSION").to_owned(),
-        kernel_boot_id,
-        rig_text: rig.text.clone(),
-        devices,
-    };
-    let settings = settings(options.budget_bytes);
-    let dir = archive::journal_dir(&options.dir);
-    let mut journal = Journal::begin(Arc::clone(disk), &dir, origin, start, settings, now_ns)?;
-    for (segment, end_seq) in &found.segments {
-        journal.adopt(segment, *end_seq);
-    }
-    for path in &found.never_begun {
-        journal.forget(path.clone());
-    }
-    Ok(journal)
 }
 
 /// Segments are small against the budget, so that letting go of the oldest gives back a part of it only.

@@ -36,6 +36,8 @@ pub trait Disk: Send + Sync + Debug {
     fn remove(&self, path: &Path) -> io::Result<()>;
     /// Renames within one file system; a target that exists is an error.
     fn rename_noreplace(&self, from: &Path, to: &Path) -> io::Result<()>;
+    /// Makes a finished file's content survive a power cut. A failure is final: it is never tried again.
+    fn sync_file(&self, path: &Path) -> io::Result<()>;
     /// Makes created, renamed and removed names of `dir` survive a power cut.
     fn sync_dir(&self, dir: &Path) -> io::Result<()>;
     /// Bytes that an ordinary user may still write below `dir`.
@@ -102,6 +104,10 @@ impl Disk for RealDisk {
 
     fn rename_noreplace(&self, from: &Path, to: &Path) -> io::Result<()> {
         Ok(rustix::fs::renameat_with(rustix::fs::CWD, from, rustix::fs::CWD, to, RenameFlags::NOREPLACE)?)
+    }
+
+    fn sync_file(&self, path: &Path) -> io::Result<()> {
+        File::open(path)?.sync_all()
     }
 
     fn sync_dir(&self, dir: &Path) -> io::Result<()> {

@@ -14,6 +14,7 @@ mod job;
 mod lock;
 mod reader;
 mod recorder;
+mod recording;
 mod retention;
 mod staged;
 mod writer;
@@ -29,5 +30,6 @@ pub use reader::{
     segment_name,
 };
 pub use recorder::{Ends, Farewell, Order, Recorder, RecorderNow, RecorderPanicked, Report};
+pub use recording::Recording;
 pub use staged::{Fault, Operation, StagedDisk};
 pub use writer::{Journal, Origin, Settings, Start, StartError};

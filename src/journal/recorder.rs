@@ -11,12 +11,13 @@ use std::time::Duration;
 
 use crossbeam_channel::{Receiver, Sender, bounded, never, select};
 
-use crate::link::{DeviceIdx, FromLinks, HostClock};
+use crate::link::{FromLinks, HostClock};
 
 use super::disk::Disk;
 use super::job::{Job, Outcome};
+use super::recording::Recording;
 use super::writer::Journal;
-use super::{Body, Clocks, EventBody, Health, TrialClose, TrialOpen};
+use super::{Clocks, EventBody, Health, TrialClose};
 
 /// What the daemon asks of the recorder.
 #[derive(Debug, Clone, PartialEq)]
@@ -108,7 +109,6 @@ pub struct Ends {
 const BATCH: usize = 512;
 /// Longest wait for something to do.
 const IDLE: Duration = Duration::from_millis(10);
-const CLOCKS_EVERY_NS: i64 = 1_000_000_000;
 const SHOW_EVERY_NS: i64 = 100_000_000;
 /// How long the last sync may take before the end is declared not durable.
 const LAST_SYNC_NS: i64 = 10_000_000_000;
@@ -127,18 +127,13 @@ impl Recorder {
         let (chores, chore_thread) = beside("journal-chores", disk, outcomes)?;
         let now = Arc::new(Mutex::new(RecorderNow::default()));
         let appender = Appender {
-            journal,
+            recording: Recording::new(journal, Arc::clone(&clock), read_clocks, ends.reports),
             clock,
-            read_clocks,
-            reports: ends.reports,
             syncs,
             chores,
             outcomes: outcomes_end,
             shown: Arc::clone(&now),
-            queue_high_water: 0.0,
-            clocks_at_ns: 0,
             show_at_ns: 0,
-            closing: Vec::new(),
         };
         let (links, orders) = (ends.links, ends.orders);
         let appending =
@@ -183,19 +178,13 @@ fn beside(name: &str, disk: Arc<dyn Disk>, outcomes: Sender<Outcome>) -> io::Res
 }
 
 struct Appender {
-    journal: Journal,
+    recording: Recording,
     clock: Arc<dyn HostClock>,
-    read_clocks: fn() -> Clocks,
-    reports: Sender<Report>,
     syncs: Sender<Job>,
     chores: Sender<Job>,
     outcomes: Receiver<Outcome>,
     shown: Arc<Mutex<RecorderNow>>,
-    queue_high_water: f64,
-    clocks_at_ns: i64,
     show_at_ns: i64,
-    /// Trials whose closing record (by sequence) is not known to be on the disk yet.
-    closing: Vec<(u64, String)>,
 }
 
 impl Appender {
@@ -208,10 +197,13 @@ impl Appender {
                     Err(_) => (links, links_open) = (never(), false),
                 },
                 recv(orders) -> order => match order {
-                    Ok(order) => self.obey(order),
+                    Ok(order) => self.recording.obey(order),
                     Err(_) => (orders, orders_open) = (never(), false),
                 },
-                recv(self.outcomes) -> outcome => self.take_outcome(outcome.ok()),
+                recv(self.outcomes) -> outcome => match outcome {
+                    Ok(outcome) => self.recording.job_done(outcome),
+                    Err(_) => self.outcomes = never(),
+                },
                 default(IDLE) => {}
             }
             self.turn();
@@ -220,129 +212,40 @@ impl Appender {
     }
 
     fn take_all(&mut self, first: FromLinks, links: &Receiver<FromLinks>) {
-        let waiting = links.len() as f64 / links.capacity().unwrap_or(usize::MAX) as f64;
-        self.queue_high_water = self.queue_high_water.max(waiting);
-        self.take(first);
-        links.try_iter().take(BATCH).for_each(|item| self.take(item));
+        self.recording.saw_queue(links.len() as f64 / links.capacity().unwrap_or(usize::MAX) as f64);
+        self.recording.take(first);
+        links.try_iter().take(BATCH).for_each(|item| self.recording.take(item));
     }
 
-    fn take(&mut self, item: FromLinks) {
-        match item {
-            FromLinks::Event(event) => self.journal.append(event.host_ns, event.device, &Body::Link(event.what)),
-            FromLinks::Lost { device, lost } => self.journal.append(lost.last_host_ns, device, &Body::Lost(lost)),
-            FromLinks::Heartbeat { host_ns } => self.journal.append(host_ns, DeviceIdx(0), &Body::Heartbeat),
-        };
-    }
-
-    fn obey(&mut self, order: Order) {
-        match order {
-            Order::OpenTrial { host_ns, from_host_ns, trial_id, reason, person, continues } => {
-                let (first_seq, first_host_ns) = self.journal.seq_at(from_host_ns);
-                let open =
-                    TrialOpen { trial_id: trial_id.clone(), first_seq, first_host_ns, reason, person, continues };
-                self.journal.append(host_ns, DeviceIdx(0), &Body::TrialOpen(open));
-                self.journal.set_open_trial(Some(trial_id.clone()));
-                self.journal.pin(first_seq);
-                self.report(Report::TrialOpened { trial_id, first_seq });
-            }
-            Order::ResumeTrial { trial_id, first_seq } => {
-                self.journal.set_open_trial(Some(trial_id));
-                self.journal.pin(first_seq);
-            }
-            Order::CloseTrial { host_ns, close } => {
-                let trial_id = close.trial_id.clone();
-                let seq = self.journal.append(host_ns, DeviceIdx(0), &Body::TrialClose(close));
-                self.journal.set_open_trial(None);
-                match seq {
-                    Some(seq) => self.closing.push((seq, trial_id)),
-                    None => self.report(Report::TrialClosed { trial_id, durable: false }),
-                }
-            }
-            Order::Event { host_ns, event } => {
-                self.journal.append(host_ns, DeviceIdx(0), &Body::Event(event));
-            }
-            Order::Pin { first_seq } => self.journal.set_pin(first_seq),
-        }
-    }
-
-    /// What is done between any two receipts.
     fn turn(&mut self) {
-        let now_ns = self.clock.monotonic_ns();
-        if now_ns >= self.clocks_at_ns {
-            self.clocks_at_ns = now_ns + CLOCKS_EVERY_NS;
-            self.journal.append(now_ns, DeviceIdx(0), &Body::Clocks((self.read_clocks)()));
-            self.journal.release();
-        }
-        self.journal.commit(now_ns);
-        while let Some(job) = self.journal.next_job(now_ns) {
-            let beside = if job.is_sync() { &self.syncs } else { &self.chores };
+        let (syncs, chores) = (&self.syncs, &self.chores);
+        self.recording.turn(&mut |job| {
+            let beside = if job.is_sync() { syncs } else { chores };
             // One job of each kind is under way at most, so it fits; without its thread `is_running` says so.
             let _ = beside.try_send(job);
-        }
-        for sentence in self.journal.take_notices() {
-            let event = EventBody {
-                kind: "journal".to_owned(),
-                source: "journal".to_owned(),
-                person: None,
-                text: sentence.clone(),
-            };
-            self.journal.append(now_ns, DeviceIdx(0), &Body::Event(event));
-            self.report(Report::Notice(sentence));
-        }
+        });
+        let now_ns = self.clock.monotonic_ns();
         if now_ns >= self.show_at_ns {
             self.show_at_ns = now_ns + SHOW_EVERY_NS;
-            self.show(now_ns);
+            *lock(&self.shown) = self.recording.now();
         }
-    }
-
-    fn take_outcome(&mut self, outcome: Option<Outcome>) {
-        let now_ns = self.clock.monotonic_ns();
-        match outcome {
-            Some(outcome) => self.journal.job_done(outcome, now_ns),
-            None => self.outcomes = never(),
-        }
-        let durable_before = self.journal.durable_before();
-        let durable: Vec<_> = self.closing.extract_if(.., |(seq, _)| *seq < durable_before).collect();
-        for (_, trial_id) in durable {
-            self.report(Report::TrialClosed { trial_id, durable: true });
-        }
-    }
-
-    fn show(&mut self, now_ns: i64) {
-        let now = RecorderNow {
-            health: self.journal.health(now_ns),
-            queue_high_water: self.queue_high_water,
-            refusing: self.journal.is_refusing(),
-        };
-        *lock(&self.shown) = now;
-    }
-
-    fn report(&self, report: Report) {
-        // The daemon drains these all the time; one that finds no room is in the journal all the same.
-        let _ = self.reports.try_send(report);
     }
 
     fn finish(mut self) -> Farewell {
         let begun_ns = self.clock.monotonic_ns();
-        self.journal.sync_soon();
-        while !self.journal.is_clean() && self.clock.monotonic_ns() - begun_ns < LAST_SYNC_NS {
+        self.recording.sync_soon();
+        while !self.recording.is_durable() && self.clock.monotonic_ns() - begun_ns < LAST_SYNC_NS {
             self.turn();
             if let Ok(outcome) = self.outcomes.recv_timeout(IDLE) {
-                self.take_outcome(Some(outcome));
+                self.recording.job_done(outcome);
             }
-            self.journal.sync_soon();
+            self.recording.sync_soon();
         }
-        let durable = self.journal.is_clean();
-        for (_, trial_id) in std::mem::take(&mut self.closing) {
-            self.report(Report::TrialClosed { trial_id, durable: false });
-        }
-        let now_ns = self.clock.monotonic_ns();
-        self.show(now_ns);
-        let health = self.journal.health(now_ns);
-        if durable {
-            self.journal.end();
-        }
-        Farewell { durable, health }
+        let now = self.recording.now();
+        *lock(&self.shown) = now.clone();
+        let durable = self.recording.is_durable();
+        self.recording.end();
+        Farewell { durable, health: now.health }
     }
 }
 
@@ -353,8 +256,8 @@ fn lock(now: &Mutex<RecorderNow>) -> MutexGuard<'_, RecorderNow> {
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::journal::{Fault, JournalReader, Operation, Origin, Settings, StagedDisk, Start};
-    use crate::link::{LinkEvent, LinkWhat, SystemClock};
+    use crate::journal::{Body, Fault, JournalReader, Operation, Origin, Settings, StagedDisk, Start};
+    use crate::link::{DeviceIdx, LinkEvent, LinkWhat, SystemClock};
     use bytes::Bytes;
     use std::path::Path;
 

@@ -287,6 +287,11 @@ impl Disk for StagedDisk {
         Ok(())
     }
 
+    fn sync_file(&self, path: &Path) -> io::Result<()> {
+        let inode = self.lock().inode_of(path)?;
+        StagedFile { disk: self.clone(), inode }.sync()
+    }
+
     fn sync_dir(&self, dir: &Path) -> io::Result<()> {
         self.begin(Operation::SyncDir)?;
         let mut state = self.lock();

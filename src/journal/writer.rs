@@ -100,6 +100,8 @@ pub struct Journal {
     open_trial: Option<String>,
     next_seq: u64,
     next_number: u32,
+    /// Of the last segment begun; 0 before the first.
+    begun_number: u32,
     segment: Option<Segment>,
     ahead: Option<Ahead>,
     /// Encoded records since the last good sync; the last `n_unwritten` bytes are not with the kernel yet.
@@ -194,6 +196,7 @@ impl Journal {
             open_trial: start.open_trial,
             next_seq: start.seq,
             next_number: start.segment,
+            begun_number: 0,
             segment: None,
             ahead: None,
             tail: Vec::new(),

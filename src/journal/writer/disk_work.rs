@@ -48,7 +48,12 @@ impl Journal {
             Outcome::Prepared { number, path, file, reserved } => {
                 self.health.reserve_possible = reserved == Reserved::Yes;
                 self.health.trouble = None;
-                self.ahead = Some(Ahead { number, path, file });
+                if number > self.begun_number {
+                    self.ahead = Some(Ahead { number, path, file });
+                } else {
+                    // A segment was given up meanwhile and a later number begun: readers go by numbers.
+                    self.retention.doom(path);
+                }
             }
             Outcome::PrepareFailed { path, error } => {
                 // Without the segment's number, so that it is told once and not at every attempt.

@@ -35,6 +35,7 @@ impl Journal {
         opening.encode(&mut bytes);
         write_whole(&*file, &bytes)?;
         self.given_up = None;
+        self.begun_number = number;
         let n_bytes = bytes.len() as u64;
         self.segment = Some(Segment { path, file: Arc::clone(&file), n_bytes, opened_ns: now_ns });
         let new_in = Some(self.dir.clone());
@@ -84,6 +85,8 @@ impl Journal {
             let name = segment.path.file_name().unwrap_or_default().to_string_lossy().into_owned();
             self.notices.push(format!("journal segment {name} given up: {why}; a new one is opened"));
             self.retention.adopt(segment.path, segment.n_bytes, Some(self.next_seq));
+        } else if self.given_up.is_none() {
+            self.notices.push(format!("a journal segment could not be begun: {why}; another one is tried"));
         }
         if self.given_up.is_none() {
             self.health.segments_given_up += 1;

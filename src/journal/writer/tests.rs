@@ -286,6 +286,22 @@ fn a_removal_that_takes_long_holds_up_no_sync() {
 }
 
 #[test]
+fn a_segment_made_ahead_too_late_is_not_begun_behind_a_later_one() {
+    let disk = StagedDisk::default();
+    let mut journal = begin(&disk, small());
+    let sync = journal.next_job(0).unwrap();
+    let prepare = journal.next_job(0).unwrap();
+    assert!(sync.is_sync() && matches!(prepare, Job::Prepare { .. }));
+    disk.fail(Operation::Sync, 1, Fault::Error(5));
+    journal.append(0, DeviceIdx(0), &bytes_of(0));
+    journal.commit(0);
+    journal.job_done(sync.run(&disk), 10 * MS);
+    journal.job_done(prepare.run(&disk), 10 * MS);
+    record(&mut journal, &disk, 2, 100);
+    assert_eq!(seqs(&read(&disk).0), (1..=101).collect::<Vec<_>>());
+}
+
+#[test]
 fn room_a_killed_writer_left_reserved_counts_against_the_budget() {
     let disk = StagedDisk::default();
     let mut journal = begin(&disk, small());
