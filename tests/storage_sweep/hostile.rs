@@ -1,0 +1,129 @@
+//! Journals that are cut, damaged or made up: read to an end, nothing invented, never written.
+
+use std::os::unix::fs::PermissionsExt;
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+
+use tautrail::archive::{Fate, journal_dir, recover};
+use tautrail::journal::{Disk, Item, JournalReader, MAX_PAYLOAD_BYTES, RealDisk, Record, StagedDisk, segment_name};
+
+use crate::draws;
+use crate::journal_file::{JOURNAL_ID, nominal, opened};
+
+const PACE: f64 = 0.02;
+/// Cut at every byte up to here behind the first record, further on at every 997th.
+const EVERY_BYTE: usize = 3000;
+const STRIDE: usize = 997;
+const FAR: usize = 300_000;
+
+/// A journal of a launch that the virtual rig played.
+fn real_journal() -> Vec<u8> {
+    let dir = tempfile::tempdir().unwrap();
+    nominal(dir.path(), PACE, true);
+    std::fs::read(path(dir.path())).unwrap()
+}
+
+fn path(archive: &Path) -> PathBuf {
+    journal_dir(archive).join(segment_name(JOURNAL_ID, 1))
+}
+
+/// Where each record ends, by the lengths in their headers (FORMAT.md).
+fn ends(journal: &[u8]) -> Vec<usize> {
+    let (mut ends, mut at) = (Vec::new(), 0);
+    while let Some(length) = journal.get(at..at + 4) {
+        at += 28 + u32::from_le_bytes(length.try_into().unwrap()) as usize;
+        ends.push(at);
+    }
+    ends
+}
+
+fn on_disk(bytes: &[u8]) -> Arc<StagedDisk> {
+    let disk = StagedDisk::default();
+    disk.create_new(&path(Path::new("a"))).unwrap().append(bytes).unwrap();
+    Arc::new(disk)
+}
+
+/// Records and damages; `None` when the journal does not open.
+fn read(bytes: &[u8]) -> Option<(Vec<Record>, usize)> {
+    let reader = JournalReader::open(on_disk(bytes), &journal_dir(Path::new("a")), JOURNAL_ID).ok()?;
+    let (mut records, mut n_damages) = (Vec::new(), 0);
+    for item in reader.records() {
+        match item.unwrap() {
+            Item::Record(record) => records.push(record),
+            Item::Damage(_) => n_damages += 1,
+            Item::Opening { .. } => {}
+        }
+    }
+    Some((records, n_damages))
+}
+
+#[test]
+fn a_real_journal_cut_at_any_byte_gives_every_whole_record_before_the_cut() {
+    let mut journal = real_journal();
+    journal.truncate(FAR);
+    let ends = ends(&journal);
+    let (records, _) = read(&journal).unwrap();
+    let near = ends[0] + EVERY_BYTE;
+    // The first record is one checksum over some kilobytes: its inside is cut in steps.
+    let cuts = (1..ends[0] - 40).step_by(41).chain(ends[0] - 40..near).chain((near..journal.len()).step_by(STRIDE));
+    for n in cuts {
+        let n_whole = ends.iter().filter(|&&end| end <= n).count();
+        let Some((found, n_damages)) = read(&journal[..n]) else {
+            assert_eq!(n_whole, 0, "cut at {n}");
+            continue;
+        };
+        assert_eq!(found, records[..n_whole - 1], "cut at {n}");
+        assert_eq!(n_damages, usize::from(!ends.contains(&n)), "cut at {n}");
+    }
+}
+
+#[test]
+fn a_length_beyond_the_maximum_is_damage_and_no_request_for_memory() {
+    let journal = real_journal();
+    let ends = ends(&journal);
+    let (records, _) = read(&journal).unwrap();
+    for claimed in [MAX_PAYLOAD_BYTES as u32 + 1, 1 << 30, u32::MAX] {
+        let mut damaged = journal.clone();
+        damaged[ends[9]..ends[9] + 4].copy_from_slice(&claimed.to_le_bytes());
+        let (found, n_damages) = read(&damaged).unwrap();
+        assert_eq!((found.as_slice(), n_damages), (&records[..9], 1), "{claimed} bytes claimed");
+    }
+}
+
+/// Also as a user without rights to write there, where the test runs as one.
+#[test]
+fn recovery_of_a_damaged_journal_writes_nothing_in_its_directory() {
+    let whole = real_journal();
+    let ends = ends(&whole);
+    let mut draw = draws(5);
+    for round in 0..6 {
+        let dir = tempfile::tempdir().unwrap();
+        std::fs::create_dir(journal_dir(dir.path())).unwrap();
+        let mut damaged = whole.clone();
+        match round {
+            0 => {}
+            1 => damaged.truncate(ends[ends.len() / 2] + 11),
+            _ => {
+                let at = ends[0] + draw() as usize % (damaged.len() - ends[0]);
+                damaged[at] ^= 1 << (draw() % 8);
+            }
+        }
+        std::fs::write(path(dir.path()), &damaged).unwrap();
+        let modes = [(path(dir.path()), 0o444), (journal_dir(dir.path()), 0o555)];
+        let locked = |mode: u32| std::fs::Permissions::from_mode(mode);
+        modes.iter().for_each(|(path, mode)| std::fs::set_permissions(path, locked(*mode)).unwrap());
+        let about = std::fs::metadata(path(dir.path())).unwrap();
+        let disk: Arc<dyn Disk> = Arc::new(RealDisk);
+        let recovered = recover(dir.path(), &disk, &mut |_| {}).unwrap();
+        let opened_before = round == 0 || !recovered.is_empty();
+        assert!(recovered.iter().all(|one| matches!(one.fate, Fate::Sealed(_))), "round {round}: {recovered:?}");
+        if opened_before {
+            assert_eq!(opened(dir.path()).1.trial_id, recovered[0].trial_id);
+        }
+        let after = std::fs::metadata(path(dir.path())).unwrap();
+        assert_eq!(about.modified().unwrap(), after.modified().unwrap(), "round {round}");
+        assert!(std::fs::read(path(dir.path())).unwrap() == damaged, "round {round}: the journal was written");
+        assert_eq!(std::fs::read_dir(journal_dir(dir.path())).unwrap().count(), 1, "round {round}");
+        std::fs::set_permissions(journal_dir(dir.path()), locked(0o755)).unwrap();
+    }
+}
