@@ -102,7 +102,7 @@ impl Spell {
 }
 
 /// What one kill cost.
-#[derive(Debug, Clone, Copy, Default)]
+#[derive(Debug, Clone, Default)]
 pub struct Cost {
     /// The daemon had begun to record.
     pub recorded: bool,
@@ -114,6 +114,8 @@ pub struct Cost {
     pub oldest_lost_ns: i64,
     /// Blocks in the journal that the rig never sent.
     pub false_blocks: u64,
+    /// Of each block lost beyond the promise: whose it was and where it stood.
+    pub details: Vec<String>,
 }
 
 /// Compares one life of the daemon with the rig's log.
@@ -146,12 +148,28 @@ impl Cost {
             self.oldest_lost_ns = self.oldest_lost_ns.max(age_ns);
             if age_ns >= PROMISE_NS {
                 self.lost += u64::from(block.2);
+                self.details.push(detail(&stream.taken_host_ns, place, &places, spell, killed));
             }
             if age_ns >= PROMISE_NS + killed.late_ns {
                 self.lost_beyond_lateness += u64::from(block.2);
             }
         }
     }
+}
+
+fn detail(taken_ns: &[i64], place: usize, kept: &BTreeSet<usize>, spell: &Spell, killed: &Killed) -> String {
+    let ms = |ns: i64| ns as f64 * 1e-6;
+    format!(
+        "device {}, block {place} of {} sent, kept {:?} to {:?}: {:.1} ms after the port's opening, {:.1} ms before the \
+         kill, sentinel {:.1} ms late",
+        spell.device,
+        taken_ns.len(),
+        kept.first(),
+        kept.last(),
+        ms(taken_ns[place] - spell.up_ns),
+        ms(killed.killed_ns - taken_ns[place]),
+        ms(killed.late_ns)
+    )
 }
 
 /// What is wrong with a trial file, in sentences.

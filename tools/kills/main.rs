@@ -53,6 +53,7 @@ fn main() -> ExitCode {
                         *next - 1
                     };
                     let told = session::run(&stage, seed);
+                    told.complaints().for_each(|complaint| eprintln!("session {seed}: {complaint}"));
                     let mut tally = tally.lock().expect("a session panicked");
                     tally.add(told);
                     eprintln!("session {seed}: {}", tally.progress());

@@ -48,6 +48,14 @@ pub struct Told {
     pub touched: Vec<String>,
 }
 
+impl Told {
+    /// Everything that is not as it should be.
+    pub fn complaints(&self) -> impl Iterator<Item = &String> {
+        let details = self.kills.iter().flat_map(|(_, _, cost)| &cost.details);
+        self.faults.iter().chain(&self.touched).chain(details)
+    }
+}
+
 #[derive(Debug, Default)]
 struct Row {
     n_kills: u64,
@@ -134,8 +142,8 @@ impl Tally {
             self.n_false_blocks,
             touched.len()
         );
-        for fault in faults.iter().chain(touched) {
-            let _ = writeln!(out, "- {fault}");
+        for complaint in self.all.complaints() {
+            let _ = writeln!(out, "- {complaint}");
         }
         out
     }
