@@ -45,11 +45,12 @@ pub struct Killed {
 }
 
 impl Victim {
-    pub fn start(program: &Path, args: &[&str], stamps: PathBuf) -> Self {
+    /// It works in `archive`, as does everything that it starts: by that they are found again.
+    pub fn start(program: &Path, args: &[&str], archive: &Path, stamps: PathBuf) -> Self {
         let sentinel = std::env::current_exe().expect("the path of this tool");
         let sentinel = quiet(Command::new(sentinel).arg(SENTINEL).arg(&stamps)).spawn().expect("the sentinel starts");
         let spawned_ns = monotonic_ns();
-        let child = quiet(Command::new(program).args(args)).spawn().expect("tautrail starts");
+        let child = quiet(Command::new(program).args(args).current_dir(archive)).spawn().expect("tautrail starts");
         Self { child, sentinel, stamps, spawned_ns }
     }
 
@@ -116,13 +117,8 @@ fn children_of(parent: u32) -> Vec<i32> {
 
 /// Waits until no process works in this directory any more: sealing that outlived its daemon.
 pub fn wait_for_orphans(archive: &Path) {
-    let archive = archive.to_str().expect("a plain path");
-    let names_it = |pid: i32| {
-        let line = std::fs::read(format!("/proc/{pid}/cmdline")).unwrap_or_default();
-        let mut words = line.split(|&byte| byte == 0);
-        words.any(|word| word == archive.as_bytes())
-    };
-    while processes().any(names_it) {
+    let works_there = |pid: i32| std::fs::read_link(format!("/proc/{pid}/cwd")).is_ok_and(|at| at == archive);
+    while processes().any(works_there) {
         std::thread::sleep(Duration::from_millis(20));
     }
 }

@@ -94,7 +94,7 @@ impl Session<'_> {
     fn start(&mut self, args: &[&str]) -> Victim {
         self.n_started += 1;
         let stamps = self.dir.path().join(format!("stamps-{}", self.n_started));
-        Victim::start(&self.stage.program, args, stamps)
+        Victim::start(&self.stage.program, args, &self.archive(), stamps)
     }
 
     fn start_daemon(&mut self) -> Victim {
@@ -177,8 +177,8 @@ impl Session<'_> {
         if code != Some(0) {
             self.told.faults.push(format!("the last recover ended with {code:?}"));
         }
-        if self.part_exists() {
-            self.told.faults.push("the last recover left a half-written file".to_owned());
+        for path in self.names().iter().filter(|path| is_part(path)) {
+            self.told.faults.push(format!("the last recover left {}", path.display()));
         }
     }
 
@@ -192,7 +192,7 @@ impl Session<'_> {
     }
 
     fn part_exists(&self) -> bool {
-        self.names().iter().any(|path| path.extension().is_some_and(|extension| extension == "part"))
+        self.names().iter().any(|path| is_part(path))
     }
 
     fn trial_files(&self) -> Vec<PathBuf> {
@@ -238,6 +238,10 @@ impl Session<'_> {
             }
         }
     }
+}
+
+fn is_part(path: &Path) -> bool {
+    path.extension().is_some_and(|extension| extension == "part")
 }
 
 /// First and last record of a trial file.
