@@ -7,9 +7,9 @@
 //! compared, and with what:
 //!
 //! - *Lost*: blocks that a pty took whole 100 ms or more before the kill (by the rig's own log) and that the journal does
-//!   not hold. Beside the daemon runs a sentinel, a process that does nothing but append a stamp to a file each 5 ms, and
-//!   is killed with it: how old its last stamp is beyond those 5 ms is how late this machine was with anything at all. Losses are
-//!   told with and without that lateness.
+//!   not hold. Beside the daemon runs a sentinel, a process that does nothing but append to a file the stamps that a pty
+//!   gives it each 5 ms, and is killed with it: how old its last stamp is beyond those 5 ms is how late this machine was
+//!   with anything at all. Losses are told with and without that lateness.
 //! - *Trial files*: each opens, verifies, holds exactly the blocks that the journal holds in its range, each one the rig's
 //!   to the checksum, and says of what is missing just how much it is. Sealing again gives the same bytes.
 //! - *Earlier trials*: files sealed before have the same bytes after every kill.
@@ -20,6 +20,7 @@
 
 mod account;
 mod process;
+mod sentinel;
 mod session;
 mod tally;
 
@@ -31,10 +32,10 @@ use tally::Tally;
 
 fn main() -> ExitCode {
     let args: Vec<String> = std::env::args().skip(1).collect();
-    if let [word, path] = args.as_slice()
-        && word == process::SENTINEL
+    if let [word, port, stamps] = args.as_slice()
+        && word == sentinel::WORD
     {
-        process::be_sentinel(path.as_ref());
+        sentinel::be(port.as_ref(), stamps.as_ref());
     }
     let number = |place: usize, otherwise: u64| -> u64 {
         args.get(place).map_or(otherwise, |arg| arg.parse().expect("KILLS, SEED and SESSIONS are numbers"))

@@ -1,32 +1,19 @@
 //! Processes that are started to be killed.
 
-use std::fs::File;
-use std::io::{Read, Seek, SeekFrom, Write};
 use std::path::{Path, PathBuf};
 use std::process::{Child, Command, Stdio};
 use std::time::Duration;
 
-pub const SENTINEL: &str = "sentinel";
-const STAMP_EVERY: Duration = Duration::from_millis(5);
+use super::sentinel::Sentinel;
 
 pub fn monotonic_ns() -> i64 {
     virtual_rig::play::pty::monotonic_ns()
 }
 
-/// Appends the time to a file until killed.
-pub fn be_sentinel(path: &Path) -> ! {
-    let mut file = File::options().append(true).create(true).open(path).expect("the sentinel's file");
-    loop {
-        file.write_all(&monotonic_ns().to_le_bytes()).expect("the sentinel writes");
-        std::thread::sleep(STAMP_EVERY);
-    }
-}
-
 /// A daemon, or `recover`, with a sentinel beside it.
 pub struct Victim {
     child: Child,
-    sentinel: Child,
-    stamps: PathBuf,
+    sentinel: Sentinel,
     pub spawned_ns: i64,
 }
 
@@ -47,11 +34,10 @@ pub struct Killed {
 impl Victim {
     /// It works in `archive`, as does everything that it starts: by that they are found again.
     pub fn start(program: &Path, args: &[&str], archive: &Path, stamps: PathBuf) -> Self {
-        let sentinel = std::env::current_exe().expect("the path of this tool");
-        let sentinel = quiet(Command::new(sentinel).arg(SENTINEL).arg(&stamps)).spawn().expect("the sentinel starts");
+        let sentinel = Sentinel::start(stamps);
         let spawned_ns = monotonic_ns();
         let child = quiet(Command::new(program).args(args).current_dir(archive)).spawn().expect("tautrail starts");
-        Self { child, sentinel, stamps, spawned_ns }
+        Self { child, sentinel, spawned_ns }
     }
 
     pub fn is_over(&mut self) -> bool {
@@ -65,38 +51,26 @@ impl Victim {
         let killed_ns = monotonic_ns();
         // Refused only where it has ended by itself.
         let _ = self.child.kill();
-        let _ = self.sentinel.kill();
+        self.sentinel.kill();
         if with_sealing {
             below.iter().for_each(|&pid| kill(pid));
         }
         self.child.wait().expect("it ends");
-        self.sentinel.wait().expect("the sentinel ends");
-        let late_ns = killed_ns - last_stamp(&self.stamps).unwrap_or(self.spawned_ns) - STAMP_EVERY.as_nanos() as i64;
-        let _ = std::fs::remove_file(&self.stamps);
-        Killed { spawned_ns: self.spawned_ns, killed_ns, late_ns: late_ns.max(0), sealing: !below.is_empty(), over }
+        let late_ns = self.sentinel.lateness_ns(killed_ns);
+        Killed { spawned_ns: self.spawned_ns, killed_ns, late_ns, sealing: !below.is_empty(), over }
     }
 
     /// Waits for its end; the exit code.
     pub fn finish(mut self) -> Option<i32> {
         let code = self.child.wait().expect("it ends").code();
-        let _ = self.sentinel.kill();
-        self.sentinel.wait().expect("the sentinel ends");
-        let _ = std::fs::remove_file(&self.stamps);
+        self.sentinel.kill();
+        self.sentinel.lateness_ns(monotonic_ns());
         code
     }
 }
 
-fn quiet(command: &mut Command) -> &mut Command {
+pub fn quiet(command: &mut Command) -> &mut Command {
     command.stdin(Stdio::null()).stdout(Stdio::null()).stderr(Stdio::null())
-}
-
-fn last_stamp(path: &Path) -> Option<i64> {
-    let mut file = File::open(path).ok()?;
-    let whole = file.metadata().ok()?.len() / 8;
-    file.seek(SeekFrom::Start(whole.checked_sub(1)? * 8)).ok()?;
-    let mut stamp = [0; 8];
-    file.read_exact(&mut stamp).ok()?;
-    Some(i64::from_le_bytes(stamp))
 }
 
 fn kill(pid: i32) {
