@@ -120,8 +120,15 @@ fn stale_parts(disk: &dyn Disk, dir: &Path) -> io::Result<Vec<PathBuf>> {
 }
 
 fn is_running(pid: i32) -> bool {
-    rustix::process::Pid::from_raw(pid)
-        .is_some_and(|pid| !matches!(rustix::process::test_kill_process(pid), Err(rustix::io::Errno::SRCH)))
+    let exists = rustix::process::Pid::from_raw(pid)
+        .is_some_and(|pid| !matches!(rustix::process::test_kill_process(pid), Err(rustix::io::Errno::SRCH)));
+    exists && !has_ended(pid)
+}
+
+/// Killed, but nobody has asked for its end yet: it writes no more (proc(5), the third field of `stat`).
+fn has_ended(pid: i32) -> bool {
+    let stat = std::fs::read_to_string(format!("/proc/{pid}/stat")).unwrap_or_default();
+    stat.rsplit_once(") ").is_some_and(|(_, after_name)| after_name.starts_with(['Z', 'X']))
 }
 
 fn same_bytes(a: &Path, b: &Path) -> Result<bool, SealError> {
@@ -154,4 +161,23 @@ fn read_fully(file: &mut File, into: &mut [u8]) -> io::Result<usize> {
         }
     }
     Ok(n)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_killed_process_that_nobody_waited_for_runs_no_more() {
+        let mut child = std::process::Command::new("sleep").arg("60").spawn().unwrap();
+        let pid = child.id() as i32;
+        assert!(is_running(pid));
+        child.kill().unwrap();
+        while is_running(pid) {
+            std::thread::yield_now(); // it dies in its own time
+        }
+        let exists = rustix::process::Pid::from_raw(pid).map(rustix::process::test_kill_process);
+        assert_eq!(exists, Some(Ok(())), "it is still there to be waited for");
+        child.wait().unwrap();
+    }
 }

@@ -139,8 +139,10 @@ impl Cost {
         self.false_blocks += (spell.blocks.len() - places.len()) as u64;
         let first = places.first().copied();
         for (place, (block, &taken_ns)) in stream.blocks.iter().zip(&stream.taken_host_ns).enumerate() {
-            // Before the first block kept, the port was being opened and what stood in it was cleared.
-            let due = first.is_some_and(|first| place > first) || taken_ns > spell.up_ns + OPENING_NS;
+            // Before the first block kept, the port was being opened and what stood in it was cleared: also the first
+            // bytes of a block whose last ones came later.
+            let begun_ns = place.checked_sub(1).map_or(i64::MIN, |before| stream.taken_host_ns[before]);
+            let due = first.is_some_and(|first| place > first) || begun_ns > spell.up_ns + OPENING_NS;
             if !due || taken_ns > killed.killed_ns || places.contains(&place) {
                 continue;
             }
