@@ -90,7 +90,7 @@ impl Drop for Part<'_> {
 ///
 /// # Errors
 /// The disk's. A part that cannot be removed only takes room.
-pub fn settle(disk: &dyn Disk, dir: &Path) -> io::Result<()> {
+pub fn clear_up(disk: &dyn Disk, dir: &Path) -> io::Result<()> {
     for path in stale_parts(disk, dir)? {
         // The next start tries again.
         let _ = disk.remove(&path);

@@ -11,7 +11,7 @@ use crate::trial::TrialFile;
 
 use super::error::SealError;
 use super::keep::{Keep, readers};
-use super::publish::settle;
+use super::publish::clear_up;
 use super::seal::{Sealed, seal, seal_keeping, trial_path};
 
 /// What became of one trial.
@@ -67,7 +67,7 @@ pub fn recover(
         Err(LockError::Held { .. }) => None,
         Err(error) => return Err(RecoverError::Lock(error)),
     };
-    settle(&**disk, dir).map_err(|source| ReadError::Io { path: dir.to_owned(), source })?;
+    clear_up(&**disk, dir).map_err(|source| ReadError::Io { path: dir.to_owned(), source })?;
     let mut recovered = Vec::new();
     let ids = journals(&**disk, &journal_dir(dir))?;
     for journal_id in &ids {

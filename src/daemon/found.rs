@@ -71,6 +71,12 @@ pub struct Known<'a> {
     pub settled: &'a dyn Fn(&str) -> Option<Settled>,
 }
 
+impl std::fmt::Debug for Known<'_> {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        f.debug_struct("Known").finish_non_exhaustive()
+    }
+}
+
 /// Looks through the archive `dir` and its journals, reading what is not known to be done with.
 ///
 /// # Errors

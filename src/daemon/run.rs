@@ -71,7 +71,7 @@ pub fn run(
     let unmakeable = |source| DaemonError::Directory { dir: options.dir.clone(), source };
     disk.create_dir(&options.dir).map_err(unmakeable)?;
     let _lock = ArchiveLock::take(&options.dir, &holder(rig))?;
-    archive::settle(&*disk, &options.dir).map_err(unmakeable)?;
+    archive::clear_up(&*disk, &options.dir).map_err(unmakeable)?;
     if !options.wait_for_ports {
         look_for_ports(rig)?;
     }

@@ -7,7 +7,7 @@ use std::sync::atomic::{AtomicI64, Ordering};
 
 use bytes::Bytes;
 use crossbeam_channel::bounded;
-use tautrail::daemon::{Found, Present, begin_journal, look};
+use tautrail::daemon::{Found, Known, Present, begin_journal, look};
 use tautrail::journal::{
     Body, Clocks, DeviceAtOpen, Disk, Item, Job, Journal, JournalReader, Order, Origin, Recording, Report, Settings,
     StagedDisk, Start, TrialClose, TrialRange, journals,
@@ -103,8 +103,9 @@ pub fn start_again(disk: &StagedDisk, clock: &Virtual) -> Result<(Found, Journal
     let shared: Arc<dyn Disk> = Arc::new(disk.clone());
     let (archive, dir) = (Path::new(ARCHIVE), Path::new(DIR));
     shared.create_dir(archive).map_err(|error| error.to_string())?;
-    tautrail::archive::settle(disk, archive).map_err(|error| error.to_string())?;
-    let found = look(&shared, archive, dir, PRESENT, &|_| false).map_err(|error| error.to_string())?;
+    tautrail::archive::clear_up(disk, archive).map_err(|error| error.to_string())?;
+    let known = Known { is_sealed: &|_| false, settled: &|_| None };
+    let found = look(&shared, archive, dir, PRESENT, known).map_err(|error| error.to_string())?;
     let now_ns = clock.monotonic_ns();
     let journal = begin_journal(&found, &shared, dir, PRESENT, devices(), settings(), now_ns);
     Ok((found, journal.map_err(|error| error.to_string())?))
