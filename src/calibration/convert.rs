@@ -167,6 +167,7 @@ mod tests {
                 zero_uncertainty: 0.5,
                 scale_relative_uncertainty: 0.001,
             },
+            record: None,
         }
     }
 

@@ -19,6 +19,7 @@ pub fn north_pier() -> Rig {
         device_channel: name.into(),
         role,
         calibration: one_to_one([0.0, per_count]),
+        record: None,
     };
     let device = |name: &str| Device {
         name: name.into(),
@@ -66,6 +67,7 @@ pub fn north_pier() -> Rig {
         ],
         invented: true,
         uncalibrated: Vec::new(),
+        attached: Vec::new(),
         text: String::new(),
     }
 }

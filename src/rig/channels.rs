@@ -1,6 +1,8 @@
 //! Devices and channels of a rig file, and what ties them together.
 
+use super::attached::Attached;
 use super::document::{Findings, Section};
+use super::record::{CalibrationRecord, RecordKind};
 use super::resembling::advice;
 use super::sections::coefficients;
 use super::{Channel, Coefficients, Device, Protocol, Role, UncalibratedChannel, text_section};
@@ -81,7 +83,12 @@ pub(super) fn plain_name_of(entry: &mut Section<'_, '_>, findings: &mut Findings
     name
 }
 
-pub(super) fn channels(root: &mut Section<'_, '_>, findings: &mut Findings<'_>, devices: &[Device]) -> Channels {
+pub(super) fn channels(
+    root: &mut Section<'_, '_>,
+    findings: &mut Findings<'_>,
+    devices: &[Device],
+    attached: &[Attached],
+) -> Channels {
     let mut channels = Channels::default();
     let mut names: Vec<String> = Vec::new();
     for (index, mut entry) in root.sections(findings, "channel").into_iter().enumerate() {
@@ -98,11 +105,18 @@ pub(super) fn channels(root: &mut Section<'_, '_>, findings: &mut Findings<'_>, 
             .find(|known| known.name == device)
             .and_then(|known| printed_unit(known, &device_channel, role, &entry.key("device_channel"), findings));
         let calibration = entry.optional_section(findings, "calibration");
+        let pointer = entry.optional(findings, "record").is_some().then(|| entry.text(findings, "record"));
+        let key = entry.key("record");
+        if calibration.is_some() && pointer.is_some() {
+            findings.error(&key, "stands beside calibration: keep the record, its coefficients count");
+        }
         channels.unclear |= role.is_none() || !devices.iter().any(|known| known.name == device);
         if let Some(role) = role {
-            match calibration.map(|table| calibration_of(table, findings, role, printed)) {
+            let record = pointer.and_then(|pointer| record_of(&pointer, &key, (&name, role), attached, findings));
+            let stated = calibration.map(|table| calibration_of(table, findings, role, printed));
+            match record.as_ref().map(|record| record.coefficients.clone()).or(stated) {
                 Some(calibration) => {
-                    channels.calibrated.push(Channel { name, device, device_channel, role, calibration });
+                    channels.calibrated.push(Channel { name, device, device_channel, role, calibration, record });
                 }
                 None => {
                     let message = "has no calibration: recorded as counts, never shown as a value";
@@ -161,6 +175,38 @@ fn printed_unit(
             None
         }
     }
+}
+
+/// The record that a channel points to; `None` with a finding where it can't be used: the channel has no values then.
+fn record_of(
+    pointer: &str,
+    key: &str,
+    (channel, role): (&str, Role),
+    attached: &[Attached],
+    findings: &mut Findings<'_>,
+) -> Option<CalibrationRecord> {
+    let Some(found) = attached.iter().find(|text| text.name == pointer) else {
+        if !pointer.is_empty() {
+            let message =
+                format!("{pointer} can't be read: is it there, beside the rig file? the channel has no values");
+            findings.caution(key, message);
+        }
+        return None;
+    };
+    let (record, wrong) = CalibrationRecord::read(pointer, &found.text);
+    for finding in wrong {
+        findings.error(key, format!("{pointer}:{finding}"));
+    }
+    let record = record?;
+    let wanted = RecordKind::for_role(role);
+    if record.kind != wanted {
+        let (found, wanted) = (record.kind.word(), wanted.word());
+        findings.error(key, format!("{pointer} is the record of a {found}, the role needs a {wanted}'s"));
+    }
+    if record.channel != channel {
+        findings.error(key, format!("{pointer} is the record of channel {:?}, not of {channel:?}", record.channel));
+    }
+    Some(record)
 }
 
 /// A column printed in a unit needs no coefficients: the instrument's own scale is taken.

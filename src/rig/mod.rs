@@ -4,6 +4,7 @@
 //! once with line, column and key, and hands out a [`Rig`] only when none of them is an error. Only [`load`] touches a
 //! file. No port is ever opened here.
 
+mod attached;
 mod channels;
 mod checks;
 mod detail_sections;
@@ -12,17 +13,22 @@ mod document;
 mod finding;
 mod instrument;
 mod read;
+mod record;
 mod resembling;
 mod sections;
+mod sheet;
 mod surroundings;
 #[cfg(test)]
 mod tests;
 mod text_section;
 mod types;
 
+pub use attached::{Attached, join, read_joined, take_apart};
 pub use details::*;
 pub use finding::{Finding, RigError, Severity};
 pub use instrument::*;
 pub use read::{Checked, check, load, parse, port_path};
+pub use record::{CalibrationRecord, RecordKind, RecordState, Shunt};
+pub use sheet::{Mass, Place, Sheet, SheetReading, Standard};
 pub use surroundings::{AirError, local_gravity_mps2, moist_air_density_kg_per_m3, standard_air_density_kg_per_m3};
 pub use types::*;

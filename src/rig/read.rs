@@ -4,6 +4,7 @@ use std::path::{Path, PathBuf};
 
 use toml::de::DeTable;
 
+use super::attached::{Attached, read_joined, take_apart};
 use super::details::{CordDetails, Details, SettingUncertainties};
 use super::document::{Findings, Section, start_of};
 use super::finding::{Finding, RigError, Severity};
@@ -18,25 +19,26 @@ pub struct Checked {
     pub findings: Vec<Finding>,
 }
 
-/// Reads a rig file's text and reports every finding. Pure.
+/// Reads a rig file's text, [joined](super::join) with what it points to, and reports every finding. Pure.
 ///
 /// Syntax errors come alone: what the rest of such a text means can't be told.
 pub fn check(text: &str) -> Checked {
-    let mut findings = Findings::of(text);
-    let (document, syntax_errors) = DeTable::parse_recoverable(text);
+    let (own, attached) = take_apart(text);
+    let mut findings = Findings::of(own);
+    let (document, syntax_errors) = DeTable::parse_recoverable(own);
     for error in &syntax_errors {
         findings.at(start_of(error.span()), Severity::Error, "", error.message().replace('\n', ", "));
     }
     if !syntax_errors.is_empty() {
         return Checked { rig: None, findings: findings.in_order() };
     }
-    let rig = whole(text, Section::root(&document), &mut findings);
+    let rig = whole(text, attached, Section::root(&document), &mut findings);
     let findings = findings.in_order();
     let usable = findings.iter().all(|finding| finding.severity != Severity::Error);
     Checked { rig: usable.then_some(rig), findings }
 }
 
-fn whole(text: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Rig {
+fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Rig {
     let name = channels::plain_name(&mut root, findings);
     let invented = root.optional_flag(findings, "invented");
     let [site, rail, shuttle, payload, losses, limits, plan] =
@@ -49,7 +51,7 @@ fn whole(text: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
     let (cords, cord_details) =
         cords.map_or_else(|| (Cords::none(), CordDetails::default()), |table| sections::cords(table, findings));
     let devices = channels::devices(&mut root, findings);
-    let channels = channels::channels(&mut root, findings, &devices);
+    let channels = channels::channels(&mut root, findings, &devices, &attached);
     checks::channels(&channels, &devices, findings);
     let (site, of_site) = sections::site(site, findings);
     let (rail, brake, uncoupling_x_m) = sections::rail(rail, findings);
@@ -89,6 +91,7 @@ fn whole(text: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
         devices,
         channels: channels.calibrated,
         uncalibrated: channels.uncalibrated,
+        attached,
         text: text.to_owned(),
     };
     checks::rig(&rig, findings);
@@ -111,7 +114,7 @@ pub fn parse(text: &str) -> Result<Rig, RigError> {
 /// [`RigError`]: the file can't be read, or what it says is refused.
 pub fn load(path: &Path) -> Result<Rig, RigError> {
     let shown = path.display().to_string();
-    let text = std::fs::read_to_string(path).map_err(|source| RigError::Unreadable { path: shown.clone(), source })?;
+    let text = read_joined(path)?;
     let Checked { rig, findings } = check(&text);
     let mut rig = rig.ok_or(RigError::Refused { path: shown, findings })?;
     for device in &mut rig.devices {

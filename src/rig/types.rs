@@ -5,8 +5,10 @@
 
 use std::f64::consts::PI;
 
+use super::attached::Attached;
 use super::details::Details;
 use super::instrument::{SerialSettings, TextColumn, TextInstrument};
+use super::record::CalibrationRecord;
 
 /// A value and its standard uncertainty, both in the unit of the field's name.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -42,7 +44,9 @@ pub struct Rig {
     pub channels: Vec<Channel>,
     /// Channels without a calibration: recorded as counts, never shown as a value.
     pub uncalibrated: Vec<UncalibratedChannel>,
-    /// The text as it was read, kept whole in journal and trial file.
+    /// The texts that the rig file points to, as far as they could be read.
+    pub attached: Vec<Attached>,
+    /// The text as it was read, with what it points to ([`join`](super::join)); kept whole in journal and trial file.
     pub text: String,
 }
 
@@ -176,6 +180,8 @@ pub struct Channel {
     pub device_channel: String,
     pub role: Role,
     pub calibration: Coefficients,
+    /// What the calibration comes from; none where the rig file itself states the coefficients.
+    pub record: Option<CalibrationRecord>,
 }
 
 /// A channel that is named in the rig file but has no calibration yet.
