@@ -1,8 +1,10 @@
 //! First pass over a range: writes what was received as it was received, and gathers clocks and events.
 
+use crate::calibration::Tare;
 use crate::capture::{Captured, ClockPiece, ClockSamples, DeviceDescription, Edge, piece_at};
 use crate::journal::{Damage, SegmentOpen};
 use crate::link::{DeviceIdx, Lost};
+use crate::rig::{Attached, Rig, take_apart};
 use crate::trial::{
     BlockRow, CarriedText, ClockRow, EventRow, ExchangeRow, HostClocksRow, RawDevice, TextLine, TrialWriter,
 };
@@ -51,6 +53,18 @@ impl Events {
         }
         let (kind, source, person) = (kind.to_owned(), source.to_owned(), person.unwrap_or_default());
         self.rows.push(EventRow { time_s, kind, source, person, text });
+    }
+
+    /// The rig with the zeros that were in force when the trial opened. A tare within the trial holds for the next one.
+    pub(super) fn tared(&self, mut rig: Rig) -> Rig {
+        let in_force = self.rows.iter().filter(|row| row.kind == "tare" && row.source == "daemon");
+        let tares = in_force.filter_map(|row| row.text.strip_prefix(Tare::IN_FORCE)?.parse::<Tare>().ok());
+        for tare in tares {
+            if let Some(channel) = rig.channels.iter_mut().find(|channel| channel.name == tare.channel) {
+                channel.calibration.zero_counts = tare.new_counts;
+            }
+        }
+        rig
     }
 
     pub(super) fn write(mut self, writer: &mut TrialWriter) -> Result<(), SealError> {
@@ -149,6 +163,9 @@ impl<'w> RawPass<'w> {
                 self.events.add(self.time_s(host_ns), "rig", "daemon", None, text);
             }
             self.writer.add_text(&CarriedText { name: "rig.toml".to_owned(), text: open.rig_text.clone() })?;
+            for Attached { name, text } in take_apart(&open.rig_text).1 {
+                self.writer.add_text(&CarriedText { name, text })?;
+            }
             self.rig_text = Some(open.rig_text);
         }
         Ok(())

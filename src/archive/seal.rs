@@ -8,6 +8,9 @@
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
+use jiff::civil::Date;
+
+use crate::calibration;
 use crate::journal::{Clocks, Disk, Item, JournalReader, SegmentOpen, TrialRange};
 use crate::rig::Rig;
 use crate::trial::{Condition, Header, ResultSet, TrialFile, TrialWriter, text_sha256};
@@ -172,10 +175,13 @@ struct Made {
 fn write(reader: &JournalReader, range: &TrialRange, ahead: &Ahead, path: &Path) -> Result<Made, SealError> {
     let rig = crate::rig::parse(&ahead.open.rig_text).map_err(|error| error.to_string());
     let header = header(range, ahead, rig.as_ref().ok());
+    let day = day_of(&header);
+    let rig = rig.map(|rig| calibration::on_day(rig, day));
     let mut writer = TrialWriter::create(path, &header)?;
     let mut raw = RawPass::new(&mut writer, header.zero_host_ns);
     play(reader, range, &mut |told| raw.take(told))?;
     let mut gathered = raw.finish()?;
+    let rig = rig.map(|rig| gathered.events.tared(rig));
     let results = match &rig {
         Ok(rig) => {
             let (devices, clocks) = (&gathered.devices, &gathered.clocks);
@@ -183,7 +189,7 @@ fn write(reader: &JournalReader, range: &TrialRange, ahead: &Ahead, path: &Path)
             play(reader, range, &mut |told: Told| values.take(&told))?;
             let for_reading = values.finish(&mut gathered.events);
             conditions(rig).iter().try_for_each(|condition| writer.add_condition(condition))?;
-            read(&mut writer, rig, range, for_reading, &mut gathered.events)?
+            read(&mut writer, rig, range, day, for_reading, &mut gathered.events)?
         }
         Err(why) => unread(why),
     };
@@ -220,6 +226,12 @@ fn header(range: &TrialRange, ahead: &Ahead, rig: Option<&Rig>) -> Header {
     }
 }
 
+/// The day of a trial in UTC; none where the wall clock was never set.
+fn day_of(header: &Header) -> Option<Date> {
+    let started: jiff::Timestamp = header.started.parse().ok()?;
+    (header.started_quality == "set").then(|| jiff::tz::Offset::UTC.to_datetime(started).date())
+}
+
 fn conditions(rig: &Rig) -> [Condition; 2] {
     let condition = |name: &str, value: f64, unit: &str| Condition {
         name: name.to_owned(),
@@ -237,6 +249,7 @@ fn read(
     writer: &mut TrialWriter,
     rig: &Rig,
     range: &TrialRange,
+    day: Option<Date>,
     for_reading: ForReading,
     events: &mut Events,
 ) -> Result<ResultSet, SealError> {
@@ -249,7 +262,9 @@ fn read(
         let text = format!("the trial is too long to be read whole: the reading sees it from {from_s:.1} s on");
         events.add(from_s, "seal", "seal", None, text);
     }
-    let reading = crate::reading::read(&for_reading.signals, rig);
+    let mut reading = crate::reading::read(&for_reading.signals, rig);
+    reading.findings.extend(calibration::doubts(rig, day));
+    reading.findings.extend(for_reading.signals.iter().filter_map(|signal| calibration::out_of_range(rig, signal)));
     if let Some(motion) = &reading.motion {
         derive::motion_signals(motion).iter().try_for_each(|signal| writer.write_derived(signal))?;
     }

@@ -8,12 +8,16 @@ pub mod cell;
 mod convert;
 pub mod encoder;
 mod signal;
+mod standing;
 mod table;
+mod tare;
 #[cfg(test)]
 mod testing;
 mod write;
 
 pub use convert::{CalibrationError, Sampling, signal_from_counts, to_value, value_per_count, value_uncertainty};
 pub use signal::Signal;
+pub use standing::{doubts, on_day, out_of_range, zero_shift_uncertainty_n};
 pub use table::{TableError, readings_from_csv, readings_to_csv};
+pub use tare::{Level, NoTare, Tare, TareError, tare};
 pub use write::{accelerometer_record, cell_record, encoder_record};

@@ -6,7 +6,7 @@ use std::os::unix::fs::FileTypeExt;
 use std::path::{Path, PathBuf};
 
 use serde_json::{Value, json};
-use tautrail::rig::{self, Checked, Device, Finding, Rig, RigError, Severity};
+use tautrail::rig::{self, CalibrationRecord, Checked, Device, Finding, RecordState, Rig, Severity};
 
 use super::screen::{Screen, Tone};
 use super::{CAUTION, Failure, Verdict};
@@ -36,8 +36,7 @@ Limits in a rig file are for advice and record only. Tautrail is no safety devic
 codes and licensed practice decide.";
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
-    let path = args.rig.display().to_string();
-    let text = fs::read_to_string(&args.rig).map_err(|source| RigError::Unreadable { path, source })?;
+    let text = rig::read_joined(&args.rig)?;
     let checked = rig::check(&text);
     let devices = checked.rig.as_ref().filter(|_| !args.no_ports).map_or(&[][..], |rig| &rig.devices);
     let ports: Vec<Port<'_>> = devices.iter().map(|device| Port::look(&args.rig, device)).collect();
@@ -142,12 +141,25 @@ fn print_rig(rig: &Rig, screen: &Screen) {
     screen.line(format!("  limits, for advice only: {:.0} N, {:.1} g", limits.tension_n, limits.peak_g));
     for channel in &rig.channels {
         let (role, unit) = (channel.role.word(), channel.role.unit());
-        screen.line(format!("  channel {}: {role} in {unit}, calibrated", channel.name));
+        let state = RecordState::of(channel.record.as_ref(), today());
+        let said = match &channel.record {
+            Some(record) if state.is_valid() => {
+                let CalibrationRecord { name, date, valid_until, tested: (low, high), .. } = record;
+                format!("calibrated {date}, valid until {valid_until}, {low} to {high} {unit} ({name})")
+            }
+            _ => screen.toned(&state.to_string(), Tone::Caution),
+        };
+        screen.line(format!("  channel {}: {role} in {unit}, {said}", channel.name));
     }
     for channel in &rig.uncalibrated {
         let word = screen.toned("UNCALIBRATED", Tone::Caution);
         screen.line(format!("  channel {}: {}, {word}: counts only", channel.name, channel.role.word()));
     }
+}
+
+/// The day in UTC, by this computer's clock.
+pub fn today() -> Option<jiff::civil::Date> {
+    Some(jiff::tz::Offset::UTC.to_datetime(jiff::Timestamp::now()).date())
 }
 
 fn as_json(args: &Args, checked: &Checked, ports: &[Port<'_>]) -> Value {
@@ -170,10 +182,11 @@ fn as_json(args: &Args, checked: &Checked, ports: &[Port<'_>]) -> Value {
             })
         })
         .collect();
+    let doubts = checked.rig.as_ref().map(|rig| tautrail::calibration::doubts(rig, today())).unwrap_or_default();
     let names = |rig: &Rig| rig.uncalibrated.iter().map(|channel| channel.name.clone()).collect::<Vec<_>>();
     json!({
         "rig_file": args.rig, "usable": checked.rig.is_some(), "rig": checked.rig.as_ref().map(|rig| &rig.name),
-        "findings": findings, "uncalibrated": checked.rig.as_ref().map(names).unwrap_or_default(),
+        "findings": findings, "calibration_doubts": doubts, "uncalibrated": checked.rig.as_ref().map(names).unwrap_or_default(),
         "ports_looked_for": checked.rig.is_some() && !args.no_ports, "ports": ports, "caution": CAUTION,
     })
 }

@@ -1,5 +1,6 @@
 //! What people ask of the daemon through the feed, and what they are answered.
 
+use crate::calibration::Tare;
 use crate::feed::message::Command;
 use crate::feed::{Replier, Request};
 use crate::live::Happening;
@@ -24,12 +25,41 @@ impl Conductor {
             }
             Command::Open { person, back_s, .. } => self.open_by_hand(now_ns, &person, back_s, replier),
             Command::Close { person, .. } => self.close_by_hand(now_ns, &person, replier),
+            Command::Raw { channel, .. } => match self.live.want_raw(&channel, now_ns) {
+                Ok(()) => replier.answer(true, format!("the counts of {channel} are told for ten seconds")),
+                Err(why) => replier.answer(false, why),
+            },
+            Command::Tare { person, channel, .. } => self.tare(now_ns, &channel, &person, replier),
             Command::Acknowledge { person, .. } => {
                 let n = self.live.acknowledge(&person);
                 let text = format!("{n} alarms acknowledged");
                 self.tell(words::by(&person, words::event(now_ns, "alarm", "feed", text.clone())));
                 replier.answer(true, text);
             }
+        }
+    }
+
+    fn tare(&mut self, now_ns: i64, channel: &str, person: &str, replier: Replier) {
+        if self.book.open().is_some() {
+            return replier.answer(false, "a trial is open: tare before it, its values keep one zero");
+        }
+        if self.outgoing.is_full() {
+            return replier.answer(false, "the journal takes nothing at present: a tare must be recorded, try again");
+        }
+        match self.live.tare(channel, person, now_ns) {
+            Ok(tare) => {
+                self.tell(words::by(person, words::event(now_ns, "tare", "feed", tare.to_string())));
+                replier.answer(true, tare.to_string());
+            }
+            Err(why) => replier.answer(false, why),
+        }
+    }
+
+    /// A trial carries the zeros that hold in it.
+    pub(super) fn tell_tares(&mut self, host_ns: i64) {
+        for (tare, person) in self.live.tares().to_vec() {
+            let text = format!("{}{tare}", Tare::IN_FORCE);
+            self.tell(words::by(&person, words::event(host_ns, "tare", "daemon", text)));
         }
     }
 

@@ -186,7 +186,7 @@ impl Conductor {
         self.tell(words::event(lost.last_host_ns, "note", "daemon", text));
     }
 
-    fn act(&mut self, happening: &Happening) {
+    pub(super) fn act(&mut self, happening: &Happening) {
         match happening {
             Happening::OpenTrial { host_ns, preroll_from_host_ns } => {
                 self.open_by_tension(*host_ns, *preroll_from_host_ns);
@@ -219,6 +219,7 @@ impl Conductor {
             continues,
         });
         self.publish(&words::by(person, words::event(host_ns, "trial", "daemon", text)));
+        self.tell_tares(host_ns);
         true
     }
 
@@ -325,6 +326,9 @@ impl Conductor {
             Around { wall: words::wall(&Clocks::read()), journal: Some(journal_now(&self.recorder.now())), trial };
         let snapshot = self.live.snapshot(now_ns, around);
         self.feed.publish(&Message::Snapshot(Box::new(snapshot)));
+        for raw in self.live.take_raw(now_ns) {
+            self.feed.publish(&Message::Raw(raw));
+        }
     }
 
     /// Ports, then what they left in the queues, then the closing record and the last sync, then the sealing, then the

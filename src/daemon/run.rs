@@ -7,6 +7,7 @@ use std::time::Duration;
 use crossbeam_channel::{Receiver, bounded};
 
 use crate::archive;
+use crate::calibration;
 use crate::feed::FeedServer;
 use crate::feed::message::{Event, Hello};
 use crate::journal::{
@@ -126,7 +127,7 @@ pub fn run(
         openings: FirstOpenings::of(rig),
         wait_for_ports: options.wait_for_ports,
     };
-    conductor.say_hello(&found, &options.socket, &journal_id);
+    conductor.say_hello(rig, &found, &options.socket, &journal_id);
     conductor.run(Inputs { live, requests, reports, sealed, shutdown })
 }
 
@@ -181,7 +182,7 @@ fn devices_unknown(rig: &Rig) -> Vec<DeviceAtOpen> {
 
 impl Conductor {
     /// Tells what was found and that recording has begun.
-    fn say_hello(&mut self, found: &Found, socket: &Path, journal_id: &str) {
+    fn say_hello(&mut self, rig: &Rig, found: &Found, socket: &Path, journal_id: &str) {
         let now_ns = self.clock.monotonic_ns();
         for remark in &found.remarks {
             self.tell(words::event(now_ns, "journal", "daemon", remark.clone()));
@@ -192,6 +193,10 @@ impl Conductor {
         for unsealed in self.book.waiting().to_vec() {
             let text = format!("trial {} has no file yet and is sealed now", unsealed.trial_id);
             self.tell(words::event(now_ns, "seal", "daemon", text));
+        }
+        let doubts = calibration::doubts(rig, words::today());
+        for happening in self.live.calibration_doubts(now_ns, &doubts) {
+            self.act(&happening);
         }
         self.outgoing.push(Order::Pin { first_seq: self.book.pinned_from() });
         let text = format!("recording to journal {journal_id}, feed at {}", socket.display());

@@ -31,6 +31,13 @@ pub fn wall(clocks: &Clocks) -> String {
     jiff::Timestamp::from_millisecond(clocks.realtime_ns / 1_000_000).map(|at| at.to_string()).unwrap_or_default()
 }
 
+/// The day in UTC; none when the wall clock was never set.
+pub fn today() -> Option<jiff::civil::Date> {
+    let clocks = Clocks::read();
+    let now = jiff::Timestamp::from_millisecond(clocks.realtime_ns / 1_000_000).ok()?;
+    clocks.wall_clock_set.then(|| jiff::tz::Offset::UTC.to_datetime(now).date())
+}
+
 /// Why the disk takes nothing, or soon will not; `None` when all is well.
 pub fn disk_trouble(now: &RecorderNow) -> Option<String> {
     let health = &now.health;

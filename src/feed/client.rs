@@ -162,7 +162,7 @@ fn fill_line(input: &mut BufReader<UnixStream>, partial: &mut Vec<u8>) -> Result
 
 /// A later daemon may send kinds that this client does not know.
 fn is_unknown_kind(line: &[u8]) -> bool {
-    const KNOWN: [&str; 6] = ["hello", "snapshot", "event", "dropped", "reply", "bye"];
+    const KNOWN: [&str; 7] = ["hello", "snapshot", "event", "raw", "dropped", "reply", "bye"];
     let value = serde_json::from_slice::<serde_json::Value>(line).ok();
     let kind = value.as_ref().and_then(|value| value.get("type")?.as_str());
     kind.is_some_and(|kind| !KNOWN.contains(&kind))

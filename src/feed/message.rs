@@ -3,7 +3,7 @@
 use serde::{Deserialize, Serialize};
 
 pub use crate::live::{
-    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, ReleasedNow, Snapshot,
+    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, RawNow, ReleasedNow, Snapshot,
     ToGo, TrialNow,
 };
 
@@ -16,6 +16,8 @@ pub enum Message {
     Hello(Hello),
     Snapshot(Box<Snapshot>),
     Event(Event),
+    /// Counts of a channel that somebody asked for.
+    Raw(RawNow),
     /// The client was too slow: `n` messages were left out before the next one.
     Dropped {
         n: u64,
@@ -87,15 +89,30 @@ pub enum Command {
         id: u64,
         person: String,
     },
+    /// Tell a channel's counts for the next ten seconds.
+    Raw {
+        id: u64,
+        person: String,
+        channel: String,
+    },
+    /// Set a cell's zero where it stands.
+    Tare {
+        id: u64,
+        person: String,
+        channel: String,
+    },
 }
 
 impl Command {
     /// The number that the reply repeats.
     pub const fn id(&self) -> u64 {
         match self {
-            Self::Mark { id, .. } | Self::Open { id, .. } | Self::Close { id, .. } | Self::Acknowledge { id, .. } => {
-                *id
-            }
+            Self::Mark { id, .. }
+            | Self::Open { id, .. }
+            | Self::Close { id, .. }
+            | Self::Acknowledge { id, .. }
+            | Self::Raw { id, .. }
+            | Self::Tare { id, .. } => *id,
         }
     }
 
@@ -105,7 +122,9 @@ impl Command {
             Self::Mark { person, .. }
             | Self::Open { person, .. }
             | Self::Close { person, .. }
-            | Self::Acknowledge { person, .. } => person,
+            | Self::Acknowledge { person, .. }
+            | Self::Raw { person, .. }
+            | Self::Tare { person, .. } => person,
         }
     }
 }

@@ -46,6 +46,10 @@ pub enum Cause {
     ChannelMissing(usize),
     /// A tension cell of the rig file has no calibration.
     Uncalibrated,
+    /// A channel reads beyond what its calibration was tested for: index in the rig's channels.
+    BeyondCalibration(usize),
+    /// A calibration that is expired, without record, or whose day can't be told.
+    CalibrationDoubt(u16),
     /// The model cannot take the rig file's cords to the planned draw.
     NoPlan,
     /// The disk takes nothing or has too little room.

@@ -1,6 +1,6 @@
 //! One channel of the rig as it is now: counts to values, age, extremes since the last snapshot, recent past.
 
-use crate::calibration::to_value;
+use crate::calibration::{Level, Tare, TareError, tare, to_value};
 use crate::rig::{Channel, Coefficients, Role};
 
 use super::health::Health;
@@ -70,6 +70,31 @@ impl ChannelMonitor {
     /// Mean over the last 5 to 10 ms, of a fresh channel only.
     pub fn level(&self, host_ns: i64) -> Option<f64> {
         if self.is_fresh(host_ns) { self.trail.level() } else { None }
+    }
+
+    /// Sets the zero where a slack cell stands.
+    ///
+    /// # Errors
+    /// As [`tare`].
+    pub fn tare(
+        &mut self,
+        host_ns: i64,
+        record_zero_counts: f64,
+        slack: bool,
+        allowed_n: f64,
+    ) -> Result<Tare, TareError> {
+        const SECOND_NS: i64 = 1_000_000_000;
+        let fresh = self.is_fresh(host_ns);
+        let mean = |from_ns, to_ns| self.trail.mean_between(from_ns, to_ns).filter(|_| fresh);
+        let level = Level {
+            newest_n: mean(host_ns - SECOND_NS, host_ns),
+            before_n: mean(host_ns - 2 * SECOND_NS, host_ns - SECOND_NS),
+            slack,
+        };
+        let tare = tare((&self.name, self.role), &self.calibration, record_zero_counts, level, allowed_n)?;
+        self.calibration.zero_counts = tare.new_counts;
+        self.trail = Trail::default();
+        Ok(tare)
     }
 
     /// The last level known, however old.

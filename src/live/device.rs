@@ -7,13 +7,14 @@ use crate::capture::{
 use crate::link::STOPPED;
 use crate::rig::{Channel, Device};
 
+use super::raw::Taps;
 use super::state::LinkNow;
 
 const SECOND_NS: i64 = 1_000_000_000;
 /// A device that keeps samples back for longer, or says that it will take them, is not believed.
 const BELIEVED_WITHIN_NS: u64 = 60_000_000_000;
 
-/// Where one stream's channels go: indices into the rig's channels.
+/// Where one stream's channels go: indices into the taps, whose first ones are the rig's calibrated channels.
 #[derive(Debug)]
 struct StreamMap {
     stream: u8,
@@ -160,11 +161,9 @@ impl DeviceMonitor {
         captured
     }
 
-    /// Takes a description; gives the rig's channels that it does not know, by index.
-    pub fn describe(&mut self, description: &DeviceDescription, channels: &[Channel]) -> Vec<usize> {
-        let wanted = |name: &str| {
-            channels.iter().position(|channel| channel.device == self.name && channel.device_channel == name)
-        };
+    /// Takes a description; gives the rig's calibrated channels that it does not know, by index.
+    pub fn describe(&mut self, description: &DeviceDescription, channels: &[Channel], taps: &Taps) -> Vec<usize> {
+        let wanted = |name: &str| taps.position(&self.name, name);
         self.ns_per_tick = 1e9 / description.tick_rate_hz;
         self.clock = Some(LiveClock::new(NominalClock::from(description)));
         self.streams = description

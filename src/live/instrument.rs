@@ -2,6 +2,7 @@
 //!
 //! Fed the same events and ticks it says the same, so phases, alarms and silences replay from a journal.
 
+use crate::calibration::Tare;
 use crate::capture::Captured;
 use crate::link::{DeviceIdx, LinkEvent, LinkWhat};
 use crate::rig::{Rig, Role};
@@ -15,8 +16,9 @@ use super::happening::Happening;
 use super::launch::LaunchWatch;
 use super::phase::{Seen, Tracker};
 use super::plan::Plan;
+use super::raw::Taps;
 use super::rules;
-use super::state::{CordsNow, JournalNow, LaunchSeen, Phase, Snapshot, TrialNow};
+use super::state::{CordsNow, JournalNow, LaunchSeen, Phase, RawNow, Snapshot, TrialNow};
 use super::trial::TrialKeeper;
 
 const MS: i64 = 1_000_000;
@@ -53,6 +55,8 @@ pub struct Live {
     launch_ns: i64,
     last_launch: Option<LaunchSeen>,
     pub(super) drawn: Drawn,
+    taps: Taps,
+    tares: Vec<(Tare, String)>,
 }
 
 impl Live {
@@ -78,6 +82,8 @@ impl Live {
             launch_ns: 0,
             last_launch: None,
             drawn: Drawn::default(),
+            taps: Taps::new(rig),
+            tares: Vec::new(),
             rig: rig.clone(),
         }
     }
@@ -109,20 +115,23 @@ impl Live {
 
     /// Takes one decoded thing.
     fn on_captured(&mut self, device_idx: usize, what: &Captured) -> Vec<Happening> {
-        let Self { devices, channels, launch, rig, board, .. } = self;
+        let Self { devices, channels, launch, rig, board, taps, .. } = self;
         let device = &mut devices[device_idx];
         match what {
             Captured::Description(description) => {
                 let host_ns = device.last_bytes_ns().unwrap_or(0);
-                let missing = device.describe(description, &rig.channels);
+                let missing = device.describe(description, &rig.channels, taps);
                 for (idx, low_counts, high_counts) in device.ranges(description) {
-                    channels[idx].health.set_range(low_counts, high_counts);
+                    if let Some(channel) = channels.get_mut(idx) {
+                        channel.health.set_range(low_counts, high_counts);
+                    }
                 }
                 rules::channels_described(board, rig, &device.name, &missing, host_ns)
             }
             Captured::Block(block) => {
                 device.spread(block, &mut |sample: Sample| {
-                    let channel = &mut channels[sample.channel_idx];
+                    taps.push(sample.channel_idx, sample.counts);
+                    let Some(channel) = channels.get_mut(sample.channel_idx) else { return };
                     let Some(value) = channel.push(sample.t_ns, sample.counts) else { return };
                     match channel.role {
                         Role::ShuttlePosition => launch.x_m.push(sample.t_ns, value),
@@ -268,6 +277,51 @@ impl Live {
     /// [`super::KeptOpen`] when there is none, or while the cords are loaded or unknown.
     pub fn close_by_hand(&mut self, host_ns: i64, person: &str) -> Result<Happening, super::KeptOpen> {
         self.trial.close_by_hand(host_ns, person, &self.cords)
+    }
+
+    /// Tells a channel's counts with [`Live::take_raw`] for the next ten seconds.
+    ///
+    /// # Errors
+    /// What channels there are, where `channel` is none.
+    pub fn want_raw(&mut self, channel: &str, host_ns: i64) -> Result<(), String> {
+        self.taps.want(channel, host_ns)
+    }
+
+    /// Counts since the last call, of the channels that somebody wants.
+    pub fn take_raw(&mut self, host_ns: i64) -> Vec<RawNow> {
+        self.taps.take(host_ns)
+    }
+
+    /// Sets a cell's zero where it stands, while the cords are slack.
+    ///
+    /// # Errors
+    /// Why not, in a sentence.
+    pub fn tare(&mut self, name: &str, person: &str, host_ns: i64) -> Result<Tare, String> {
+        let names = || self.channels.iter().map(|channel| channel.name.as_str()).collect::<Vec<_>>().join(", ");
+        let Some(idx) = self.channels.iter().position(|channel| channel.name == name) else {
+            return Err(format!("there is no calibrated channel {name:?}, there are: {}", names()));
+        };
+        let record_zero_counts = self.rig.channels[idx].calibration.zero_counts;
+        let slack = self.cords == CordsNow::Slack;
+        let allowed_n = self.rig.plan.slack_tension_n;
+        let channel = &mut self.channels[idx];
+        let tare = channel.tare(host_ns, record_zero_counts, slack, allowed_n).map_err(|error| error.to_string())?;
+        self.tares.retain(|(earlier, _)| earlier.channel != tare.channel);
+        self.tares.push((tare.clone(), person.to_owned()));
+        Ok(tare)
+    }
+
+    /// Zeros in force and who set them: at most one a channel.
+    pub fn tares(&self) -> &[(Tare, String)] {
+        &self.tares
+    }
+
+    /// Doubts about calibrations, as standing alarms: each a sentence.
+    pub fn calibration_doubts(&mut self, host_ns: i64, doubts: &[String]) -> Vec<Happening> {
+        let raised = (0_u16..)
+            .zip(doubts)
+            .map(|(idx, doubt)| self.board.raise(Cause::CalibrationDoubt(idx), host_ns, doubt.clone()));
+        raised.flatten().collect()
     }
 
     /// What the journal says of itself; `None` when all is well.

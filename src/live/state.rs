@@ -48,6 +48,21 @@ pub struct ChannelNow {
     pub age_s: Option<f64>,
 }
 
+/// Counts of one channel since the last telling, for who calibrates.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct RawNow {
+    pub channel: String,
+    pub host_ns: i64,
+    /// Samples since the last one.
+    pub n: u64,
+    /// Of their counts.
+    pub mean: f64,
+    /// Standard deviation; none for a single sample.
+    pub sd: Option<f64>,
+    pub min: f64,
+    pub max: f64,
+}
+
 /// Whether the cords hold energy.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
 #[serde(tag = "state", rename_all = "snake_case")]

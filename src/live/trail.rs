@@ -40,6 +40,16 @@ pub struct Trail {
 }
 
 impl Trail {
+    /// Mean over the bins within a time; none where fewer than half of them have samples.
+    pub fn mean_between(&self, from_ns: i64, to_ns: i64) -> Option<f64> {
+        let slots = from_ns.div_euclid(BIN_NS)..to_ns.div_euclid(BIN_NS);
+        let wanted = usize::try_from(slots.end.saturating_sub(slots.start)).unwrap_or(0);
+        let bins = self.bins.iter().filter(|bin| slots.contains(&bin.slot));
+        let (sum, n, n_bins) =
+            bins.fold((0.0, 0.0, 0), |(sum, n, bins), bin| (sum + bin.value_sum, n + f64::from(bin.n), bins + 1));
+        (2 * n_bins >= wanted && n > 0.0).then(|| sum / n)
+    }
+
     /// Takes one finite sample; others are the caller's to refuse.
     pub fn push(&mut self, t_ns: i64, value: f64) {
         let since_ns = self.newest_t_ns.map_or(0, |newest| t_ns - newest);

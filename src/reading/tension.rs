@@ -3,7 +3,7 @@
 //! After a release the line hangs free, so its indication then is its zero, whatever the calibration record says.
 //! Without a release the recorded zero and its uncertainty stand.
 
-use crate::calibration::Signal;
+use crate::calibration::{Signal, zero_shift_uncertainty_n};
 use crate::rig::{Rig, Role};
 
 use super::phases::Phases;
@@ -70,10 +70,11 @@ pub(super) fn report(
     hold
 }
 
-fn zero_of(line: &Signal, release: Option<&Release>, book: &mut Book) -> Zero {
+fn zero_of(line: &Signal, release: Option<&Release>, slack_n: f64, book: &mut Book) -> Zero {
+    let shift_n = zero_shift_uncertainty_n(line, slack_n);
     let free = release.and_then(|release| release.free_line);
     let Some(Stats { n, mean, deviation }) = free.filter(|stats| stats.n > 100) else {
-        return Zero { n: 0.0, u_n: line.zero_uncertainty, words: "zero from the calibration" };
+        return Zero { n: 0.0, u_n: line.zero_uncertainty.hypot(shift_n), words: "zero from the calibration" };
     };
     let u_n = (deviation / (n as f64).sqrt()).max(line.resolution);
     if mean.abs() > 3.0 * line.zero_uncertainty.hypot(u_n) {
@@ -83,7 +84,7 @@ fn zero_of(line: &Signal, release: Option<&Release>, book: &mut Book) -> Zero {
             3.0 * line.zero_uncertainty.hypot(u_n)
         ));
     }
-    Zero { n: mean, u_n, words: "zero from the line hanging free after the release" }
+    Zero { n: mean, u_n: u_n.hypot(shift_n), words: "zero from the line hanging free after the release" }
 }
 
 fn line_rows(
@@ -93,7 +94,7 @@ fn line_rows(
     rig: &Rig,
     book: &mut Book,
 ) -> Option<(f64, f64)> {
-    let zero = zero_of(line, release, book);
+    let zero = zero_of(line, release, rig.plan.slack_tension_n, book);
     let budget = |value_n: f64, noise_n: f64| {
         Budget::default()
             .with("calibration of the scale", value_n * line.scale_relative_uncertainty)

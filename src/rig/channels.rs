@@ -105,7 +105,7 @@ pub(super) fn channels(
             .find(|known| known.name == device)
             .and_then(|known| printed_unit(known, &device_channel, role, &entry.key("device_channel"), findings));
         let calibration = entry.optional_section(findings, "calibration");
-        let pointer = entry.optional(findings, "record").is_some().then(|| entry.text(findings, "record"));
+        let pointer = entry.optional_text(findings, "record");
         let key = entry.key("record");
         if calibration.is_some() && pointer.is_some() {
             findings.error(&key, "stands beside calibration: keep the record, its coefficients count");

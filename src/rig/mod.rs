@@ -19,6 +19,8 @@ mod sections;
 mod sheet;
 mod surroundings;
 #[cfg(test)]
+pub(crate) mod testing;
+#[cfg(test)]
 mod tests;
 mod text_section;
 mod types;

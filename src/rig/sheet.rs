@@ -259,10 +259,10 @@ fn readings(root: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<Shee
     for (index, mut entry) in root.optional_sections(findings, "reading").into_iter().enumerate() {
         all.push(SheetReading {
             place: format!("reading[{index}]"),
-            run: entry.optional(findings, "run").is_some().then(|| entry.text(findings, "run")).unwrap_or_default(),
+            run: entry.optional_text(findings, "run").unwrap_or_default(),
             rotation_deg: entry.optional_number(findings, "rotation_deg", -720.0..=720.0),
             direction: entry.text(findings, "direction"),
-            load: entry.optional(findings, "load").is_some().then(|| entry.text(findings, "load")).unwrap_or_default(),
+            load: entry.optional_text(findings, "load").unwrap_or_default(),
             counts: entry.number(findings, "counts", -1e12..=1e12),
             sd_counts: entry.optional_number(findings, "sd", 0.0..=1e9),
             n: entry.optional_number(findings, "n", 1.0..=1e12),

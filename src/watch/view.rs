@@ -70,6 +70,8 @@ impl ViewState {
                 self.events.push_back(event);
                 return urgent;
             }
+            // For who calibrates.
+            Message::Raw(_) => {}
             Message::Dropped { n } => self.n_dropped += n,
             Message::Reply { ok, text, .. } => {
                 self.notice = Some(if ok { text } else { format!("refused: {text}") });

@@ -23,6 +23,7 @@ pub(super) fn judge(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
         told.extend(stuck(live, idx, host_ns));
         told.extend(at_end(live, idx, host_ns));
         told.extend(noisy(live, idx, host_ns));
+        told.extend(beyond_calibration(live, idx, host_ns));
     }
 }
 
@@ -39,6 +40,21 @@ fn silent(live: &mut Live, idx: usize, host_ns: i64) -> Option<Happening> {
         return None;
     }
     let sentence = format!("{} is silent: no value for over 1 s; check sensor, device and cable", named(channel));
+    live.board.raise(cause, host_ns, sentence)
+}
+
+/// Beyond its tested range a value is extrapolated, and nobody measured how well.
+fn beyond_calibration(live: &mut Live, idx: usize, host_ns: i64) -> Option<Happening> {
+    let cause = Cause::BeyondCalibration(idx);
+    let channel = &live.channels[idx];
+    let (low, high) = live.rig.channels[idx].record.as_ref()?.tested;
+    let margin = 0.01 * (high - low);
+    let beyond = channel.level(host_ns).filter(|level| *level > high + margin || *level < low - margin);
+    let Some(level) = beyond.filter(|_| channel.is_tension()) else { return live.board.clear(cause, host_ns) };
+    let sentence = format!(
+        "{} reads {level:.0} N, its calibration was tested from {low:.0} to {high:.0} N only: do not trust it beyond",
+        channel.name
+    );
     live.board.raise(cause, host_ns, sentence)
 }
 
