@@ -7,6 +7,7 @@ pub mod accelerometer;
 pub mod cell;
 mod convert;
 pub mod encoder;
+mod settling;
 mod signal;
 mod standing;
 mod table;
@@ -16,6 +17,7 @@ mod testing;
 mod write;
 
 pub use convert::{CalibrationError, Sampling, signal_from_counts, to_value, value_per_count, value_uncertainty};
+pub use settling::{Settled, Settling, SettlingRule, Told};
 pub use signal::Signal;
 pub use standing::{doubts, on_day, out_of_range, zero_shift_uncertainty_n};
 pub use table::{TableError, readings_from_csv, readings_to_csv};

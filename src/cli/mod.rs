@@ -4,6 +4,7 @@
 //! [`Command`] and once in [`Command::run`]. Exit codes: 0 done, 1 a check failed, 2 could not run.
 
 mod ask;
+mod calibrate;
 mod check;
 mod close;
 mod daemon;
@@ -21,6 +22,7 @@ mod screen;
 mod seal_child;
 mod show;
 mod stage;
+mod tare;
 mod trials;
 mod verify;
 mod virtual_rig;
@@ -51,6 +53,7 @@ struct CommandLine {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::Args),
+    Calibrate(calibrate::Args),
     Forecast(forecast::Args),
     Stage(stage::Args),
     Daemon(daemon::Args),
@@ -61,6 +64,7 @@ enum Command {
     Verify(verify::Args),
     Watch(watch::Args),
     Mark(mark::Args),
+    Tare(tare::Args),
     Open(open::Args),
     Close(close::Args),
     Report(report::Args),
@@ -76,6 +80,7 @@ impl Command {
     fn run(&self, screen: &Screen) -> Result<Verdict, Failure> {
         match self {
             Self::Check(args) => check::run(args, screen),
+            Self::Calibrate(args) => calibrate::run(args, screen),
             Self::Forecast(args) => forecast::run(args, screen),
             Self::Stage(args) => stage::run(args, screen),
             Self::Daemon(args) => daemon::run(args, screen),
@@ -86,6 +91,7 @@ impl Command {
             Self::Verify(args) => verify::run(args, screen),
             Self::Watch(args) => watch::run(args, screen),
             Self::Mark(args) => mark::run(args, screen),
+            Self::Tare(args) => tare::run(args, screen),
             Self::Open(args) => open::run(args, screen),
             Self::Close(args) => close::run(args, screen),
             Self::Report(args) => report::run(args, screen),

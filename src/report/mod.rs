@@ -4,6 +4,7 @@
 //! colour. What is absent is said to be absent, with the reason; nothing is drawn across a gap.
 
 mod beside;
+mod calibration;
 mod decimate;
 mod energy;
 mod figures;
@@ -19,6 +20,7 @@ mod tables;
 mod tests;
 
 pub use beside::add_replay;
+pub use calibration::{accelerometer_page, cell_page, encoder_page};
 pub use forecast::{ForecastCurve, ForecastPage, forecast_page};
 pub use gather::{GatherError, page, page_of};
 pub use html::trial_page;

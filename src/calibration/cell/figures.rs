@@ -22,13 +22,14 @@ pub struct Figures {
     pub run_slopes: Option<(f64, usize)>,
     /// Scatter about each run's own slope, N, with its degrees of freedom.
     pub scatter_n: (f64, f64),
-    /// Mean of the residuals of each step, as a root mean square, N.
-    pub lack_of_fit_n: f64,
+    /// Per step from no load on: load N, how far the mean of the further way lies from the curve, N. Holds hysteresis
+    /// and what the curve can't follow.
+    pub off_curve_n: Vec<(f64, f64)>,
     /// Change of the held reading, last less first, over the load; none without creep readings.
     pub creep_relative: Option<f64>,
     /// Last unloaded reading of a run less its first, the greatest, N; none where no run ends unloaded.
     pub zero_return_n: Option<f64>,
-    /// Standard deviation of all unloaded readings, N, and how many.
+    /// Standard deviation of the runs' first unloaded readings, N, and how many.
     pub zeros_n: (f64, usize),
 }
 
@@ -53,13 +54,15 @@ pub(super) fn of(points: &[Point], distinct: &[f64], greatest_n: f64) -> Figures
     let step_sds = distinct.iter().flat_map(|force_n| {
         [Direction::Up, Direction::Down].map(|way| at(*force_n, way).map(|p| p.residual_n).collect::<RunningMean>())
     });
-    let step_means = distinct.iter().map(|force_n| {
-        let both = [Direction::Up, Direction::Down]
-            .map(|way| at(*force_n, way).map(|p| p.residual_n).collect::<RunningMean>().mean());
-        if both[1].is_nan() { both[0] } else { f64::midpoint(both[0], both[1]) }
-    });
-    let means: Vec<f64> = step_means.filter(|mean| mean.is_finite()).collect();
-    let mean_square = means.iter().map(|mean| mean * mean).sum::<f64>() / means.len().max(1) as f64;
+    let off_curve = |force_n: &f64| {
+        let means = [Direction::Up, Direction::Down]
+            .map(|way| at(*force_n, way).map(|p| p.residual_n).collect::<RunningMean>().mean().abs());
+        // The maximum of a number and no number is the number.
+        (*force_n, means[0].max(means[1]))
+    };
+    let zero_return_n = zero_return(points, counts_per_n);
+    let at_zero = (0.0, zero_return_n.unwrap_or(0.0).abs());
+    let off_curve_n = std::iter::once(at_zero).chain(distinct.iter().map(off_curve)).collect();
     Figures {
         sensitivity_counts_per_n: counts_per_n,
         non_linearity_n: distinct.iter().map(off_line).filter(|off| off.is_finite()).fold(0.0, f64::max),
@@ -68,9 +71,9 @@ pub(super) fn of(points: &[Point], distinct: &[f64], greatest_n: f64) -> Figures
         repeatability_n: pooled(step_sds).map(|(sd, _)| sd),
         run_slopes: run_slopes(&fitted),
         scatter_n: scatter(&fitted, counts_per_n, distinct, greatest_n),
-        lack_of_fit_n: mean_square.sqrt(),
+        off_curve_n,
         creep_relative: creep(points, counts_per_n),
-        zero_return_n: zero_return(points, counts_per_n),
+        zero_return_n,
         zeros_n: zeros(points, counts_per_n),
     }
 }
@@ -155,8 +158,11 @@ fn zero_return(points: &[Point], counts_per_n: f64) -> Option<f64> {
 }
 
 fn zeros(points: &[Point], counts_per_n: f64) -> (f64, usize) {
-    let zeros: RunningMean =
-        points.iter().filter(|point| point.load.force_n == 0.0).map(|point| point.load.counts / counts_per_n).collect();
+    let zeros: RunningMean = points
+        .iter()
+        .filter(|point| point.load.force_n == 0.0 && point.load.direction == Direction::Up)
+        .map(|point| point.load.counts / counts_per_n)
+        .collect();
     let sd = zeros.standard_deviation();
     (if sd.is_finite() { sd } else { 0.0 }, zeros.count() as usize)
 }

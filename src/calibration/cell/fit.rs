@@ -231,17 +231,21 @@ fn monotonic(fit: &LinearFit, points: &[Point]) -> Result<(), CellError> {
     turned.map_or(Ok(()), |counts| Err(CellError::NotMonotonic { counts }))
 }
 
-/// What a channel uses: the zero is the mean of all unloaded readings, the two uncertainties cover at every load what
+/// What a channel uses: the zero is the mean of the runs' first unloaded readings, the two uncertainties cover at every load what
 /// the budget's expanded uncertainty covers there.
 fn used(points: &[Point], fit: &LinearFit, steps: &[StepUncertainty], budget: &Budget) -> Coefficients {
     const NORMAL_95: f64 = 1.959_963_984_540_054;
-    let zeros: Vec<f64> =
-        points.iter().filter(|point| point.load.force_n == 0.0 && !point.flagged).map(|p| p.load.counts).collect();
+    let zeros: Vec<f64> = points
+        .iter()
+        .filter(|point| point.load.force_n == 0.0 && point.load.direction == Direction::Up && !point.flagged)
+        .map(|p| p.load.counts)
+        .collect();
     let zero_counts = if zeros.is_empty() { 0.0 } else { zeros.iter().sum::<f64>() / zeros.len() as f64 };
-    let zero_uncertainty = budget.at_zero().expanded(0.95) / NORMAL_95;
+    let tared = budget.at_zero().expanded(0.95) / NORMAL_95;
+    let zero_uncertainty = budget.at_recorded_zero().expanded(0.95) / NORMAL_95;
     let beyond = |step: &StepUncertainty| {
         let as_normal = step.expanded_n / NORMAL_95;
-        (as_normal * as_normal - zero_uncertainty * zero_uncertainty).max(0.0).sqrt() / step.force_n
+        (as_normal * as_normal - tared * tared).max(0.0).sqrt() / step.force_n
     };
     let mut coefficients = vec![0.0];
     coefficients.extend(&fit.parameters);

@@ -39,8 +39,7 @@ pub struct Budget {
     common_relative: f64,
     slopes: Component,
     scatter: Component,
-    lack_of_fit_n: f64,
-    hysteresis: Vec<(f64, f64)>,
+    off_curve_n: Vec<(f64, f64)>,
     creep_relative: f64,
     zero: Component,
     resolution_n: f64,
@@ -64,15 +63,14 @@ impl Budget {
             common_relative: common_relative(sheet),
             slopes: figures.run_slopes.map_or(Component::certain(0.0), |(sd, runs)| known(sd, runs as f64 - 1.0)),
             scatter: known(figures.scatter_n.0, figures.scatter_n.1),
-            lack_of_fit_n: figures.lack_of_fit_n,
-            hysteresis: figures.hysteresis.clone(),
+            off_curve_n: figures.off_curve_n.clone(),
             creep_relative: figures.creep_relative.unwrap_or(0.0),
             zero,
             resolution_n: (1.0 / figures.sensitivity_counts_per_n).abs(),
         }
     }
 
-    /// All shares at a deflection that the curve makes a force of.
+    /// All shares at a deflection, from the zero at that time, that the curve makes a force of.
     pub fn shares(&self, deflection_counts: f64, force_n: f64) -> Vec<Share> {
         // Rectangular distributions: JCGM 100:2008, 4.3.7.
         let rectangular = |half_width: f64| Component::certain(half_width.abs() / 3f64.sqrt());
@@ -94,17 +92,20 @@ impl Budget {
             share("curve", fit),
             share("slope between runs", slopes),
             share("scatter", self.scatter),
-            share("lack of fit", Component::certain(self.lack_of_fit_n)),
-            share("hysteresis", rectangular(self.half_hysteresis_n(force_n))),
+            share("ways off the curve", rectangular(self.off_curve_n(force_n))),
             share("creep", rectangular(self.creep_relative * force_n)),
-            share("zero", self.zero),
             share("resolution", rectangular(0.5 * self.resolution_n)),
         ]
     }
 
-    /// At no load.
+    /// At no load, from the zero at that time.
     pub fn at_zero(&self) -> Component {
         combined(&self.shares(0.0, 0.0).iter().map(|share| share.component).collect::<Vec<_>>())
+    }
+
+    /// At no load, from the calibration's own zero: as far as the zeros of its runs were apart.
+    pub fn at_recorded_zero(&self) -> Component {
+        combined(&[self.at_zero(), self.zero])
     }
 
     /// At a deflection that the curve makes a force of.
@@ -138,11 +139,11 @@ impl Budget {
         self.common_relative
     }
 
-    /// Half the distance between the ways, linear between the steps.
-    fn half_hysteresis_n(&self, force_n: f64) -> f64 {
-        let mut before = (0.0, 0.0);
-        for step in &self.hysteresis {
-            if force_n <= step.0 {
+    /// How far a way lies from the curve, linear between the steps.
+    fn off_curve_n(&self, force_n: f64) -> f64 {
+        let mut before = self.off_curve_n.first().copied().unwrap_or_default();
+        for step in &self.off_curve_n {
+            if force_n <= step.0 && step.0 > before.0 {
                 return before.1 + (step.1 - before.1) * (force_n - before.0) / (step.0 - before.0);
             }
             before = *step;

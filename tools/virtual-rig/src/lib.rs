@@ -21,3 +21,4 @@ pub mod sensor;
 pub mod sweep;
 pub mod table;
 pub mod truth;
+pub mod weights;
