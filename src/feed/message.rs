@@ -3,8 +3,8 @@
 use serde::{Deserialize, Serialize};
 
 pub use crate::live::{
-    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, RawNow, ReleasedNow, Snapshot,
-    ToGo, TrialNow,
+    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, RawNow, ReleasedNow,
+    Snapshot, ToGo, TrialNow,
 };
 
 pub const FEED_VERSION: u32 = 1;

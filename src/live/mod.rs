@@ -32,7 +32,7 @@ pub use happening::{AlarmChange, Happening};
 pub use instrument::{Around, Live};
 pub use plan::{Expected, Plan};
 pub use state::{
-    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, RawNow, ReleasedNow, Snapshot,
-    ToGo, TrialNow,
+    AlarmNow, ChannelNow, CordsFit, CordsNow, HoldNow, JournalNow, LaunchSeen, LinkNow, Phase, RawNow, ReleasedNow,
+    Snapshot, ToGo, TrialNow,
 };
 pub use trial::KeptOpen;
