@@ -1,6 +1,7 @@
 //! Least squares, covariance, propagation of uncertainty, statistics. Pure.
 
 mod cfc;
+mod curve;
 mod distribution;
 mod dual;
 mod linear;
@@ -11,6 +12,7 @@ mod statistics;
 mod testing;
 
 pub use cfc::{CfcError, CfcFilter, StartUp};
+pub use curve::{Curve, CurveError, ValueSlope};
 pub use distribution::{Cholesky, Distribution, NotPositive};
 pub use dual::Dual;
 pub use linear::{LinearError, LinearFit, Scatter, least_squares, polynomial, polynomial_row, propagated};

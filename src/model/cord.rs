@@ -14,7 +14,7 @@
 //! e₁ it follows the unloading branch plus a gap that closes over `gap_width`: gap · exp(−(e₁ − e)/width). The difference
 //! of work is the hysteresis loss.
 
-use super::curve::Curve;
+use crate::estimation::Curve;
 
 /// Equal cords side by side.
 #[derive(Debug, Clone, PartialEq)]

@@ -2,8 +2,7 @@
 
 use thiserror::Error;
 
-use super::curve::CurveError;
-use crate::estimation::NotPositive;
+use crate::estimation::{CurveError, NotPositive};
 
 #[derive(Debug, Clone, PartialEq, Error)]
 #[non_exhaustive]

@@ -1,11 +1,11 @@
 //! From a rig file to a launch: as planned, or as drawn and measured.
 
 use super::cord::CordSet;
-use super::curve::Curve;
 use super::error::ModelError;
 use super::gas::{GasPath, GasSource};
 use super::relaxation::{held_part, standing_factor};
 use super::setup::{ACCURATE, Brake, ForceTable, LaunchSetup, RailLosses, Recoil};
+use crate::estimation::Curve;
 use crate::rig::{CordDetails, Cords, Gas, Rig, XForce, local_gravity_mps2};
 
 /// Elongation over which tension comes down from the loading to the unloading branch, where the rig file does not say:

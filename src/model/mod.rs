@@ -10,7 +10,6 @@ mod bands;
 mod cfc;
 mod check;
 mod cord;
-mod curve;
 mod energy;
 mod energy_draws;
 mod error;
@@ -36,10 +35,10 @@ mod targets;
 #[cfg(test)]
 mod tests;
 
+pub use crate::estimation::{Curve, CurveError, ValueSlope};
 pub use bands::{Band, Bands};
 pub use cfc::CfcRatio;
 pub use cord::{Branch, CordSet};
-pub use curve::{Curve, CurveError, ValueSlope};
 pub use energy::EnergySplit;
 pub use energy_draws::ForecastedEnergy;
 pub use error::ModelError;

@@ -2,8 +2,8 @@
 //! [`LaunchSetup::drawn`].
 
 use super::cord::CordSet;
-use super::curve::Curve;
 use super::gas::GasSource;
+use crate::estimation::Curve;
 
 /// A launch, ready to be computed. Angles in radians, x along the rail from the nominal release point.
 #[derive(Debug, Clone, PartialEq)]
