@@ -3,6 +3,7 @@
 //! Guarantees: a trial file is made by sealing a journal range and in no other way; it exists whole or not at all; it is
 //! never replaced. Refuses: to write to a journal, to repair a trial file, to overwrite anything.
 
+mod cord_service;
 mod derive;
 mod error;
 mod keep;
@@ -17,6 +18,7 @@ mod settled;
 mod value_pass;
 mod verify;
 
+pub use cord_service::{CordService, NotCounted, ServiceError, cord_service};
 pub use error::SealError;
 pub use keep::{Keep, Kept, ReleaseError, kept, release};
 pub use list::{Listing, Summary, list};

@@ -6,6 +6,7 @@
 pub mod accelerometer;
 pub mod cell;
 mod convert;
+pub mod cord;
 pub mod encoder;
 mod settling;
 mod signal;

@@ -9,7 +9,7 @@ use serde_json::{Value, json};
 use tautrail::rig::{self, CalibrationRecord, Checked, Device, Finding, RecordState, Rig, Severity};
 
 use super::screen::{Screen, Tone};
-use super::{CAUTION, Failure, Verdict};
+use super::{CAUTION, Failure, Verdict, cord};
 
 /// Read a rig file and say what is wrong and where, what is uncalibrated, which ports are there
 ///
@@ -22,6 +22,9 @@ pub struct Args {
     /// Don't look for the ports: for checking at the desk
     #[arg(long)]
     no_ports: bool,
+    /// Count what each cord has served from the trials of this archive directory, and say which are to come off
+    #[arg(long, value_name = "DIR")]
+    trials: Option<PathBuf>,
 }
 
 const CHECK_HELP: &str = "\
@@ -29,8 +32,9 @@ Examples:
   tautrail check north-pier.toml              at the rig, devices plugged in
   tautrail check --no-ports north-pier.toml   at the desk
   tautrail check --json north-pier.toml       for programs
+  tautrail check --trials trials/ north-pier.toml   with the cords' cycles and hours
 
-Exit code: 0 usable, 1 an error was found or a port is absent, 2 the file can't be read.
+Exit code: 0 usable, 1 an error was found, a port is absent or a cord is to come off, 2 the file can't be read.
 
 Limits in a rig file are for advice and record only. Tautrail is no safety device: interlocks, exclusion zones, local
 codes and licensed practice decide.";
@@ -45,7 +49,11 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     } else {
         print(args, &checked, &ports, screen);
     }
-    let usable = checked.rig.is_some() && ports.iter().all(|port| port.state.is_present());
+    let worn = match (&args.trials, &checked.rig) {
+        (Some(dir), Some(rig)) => cord::check_service(rig, dir, screen)?,
+        _ => false,
+    };
+    let usable = checked.rig.is_some() && ports.iter().all(|port| port.state.is_present()) && !worn;
     Ok(if usable { Verdict::Done } else { Verdict::CheckFailed })
 }
 
@@ -139,6 +147,7 @@ fn print_rig(rig: &Rig, screen: &Screen) {
         plan.launch_speed_max_mps
     ));
     screen.line(format!("  limits, for advice only: {:.0} N, {:.1} g", limits.tension_n, limits.peak_g));
+    cord::print_standing(rig, screen);
     for channel in &rig.channels {
         let (role, unit) = (channel.role.word(), channel.role.unit());
         let state = RecordState::of(channel.record.as_ref(), today());

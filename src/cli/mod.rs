@@ -7,6 +7,7 @@ mod ask;
 mod calibrate;
 mod check;
 mod close;
+mod cord;
 mod daemon;
 mod feed_place;
 mod forecast;
@@ -54,6 +55,7 @@ struct CommandLine {
 enum Command {
     Check(check::Args),
     Calibrate(calibrate::Args),
+    Cord(cord::Args),
     Forecast(forecast::Args),
     Stage(stage::Args),
     Daemon(daemon::Args),
@@ -81,6 +83,7 @@ impl Command {
         match self {
             Self::Check(args) => check::run(args, screen),
             Self::Calibrate(args) => calibrate::run(args, screen),
+            Self::Cord(args) => cord::run(args, screen),
             Self::Forecast(args) => forecast::run(args, screen),
             Self::Stage(args) => stage::run(args, screen),
             Self::Daemon(args) => daemon::run(args, screen),

@@ -57,6 +57,7 @@ pub fn page(header: &Header, rig: &Rig, signals: &[Signal], reading: &Reading) -
             peak_g: Some(rig.limits.peak_g),
             launch_speed_mps: Some((rig.plan.launch_speed_min_mps, rig.plan.launch_speed_max_mps)),
         },
+        proof_load: proof_load(rig),
         tension: TENSIONS.iter().flat_map(|role| signals.iter().filter(|s| s.role == *role)).map(trace).collect(),
         phases: phases(signals, reading),
         instants: reading.instants.clone(),
@@ -67,6 +68,11 @@ pub fn page(header: &Header, rig: &Rig, signals: &[Signal], reading: &Reading) -
         cautions: reading.findings.clone(),
         ..TrialPage::default()
     }
+}
+
+fn proof_load(rig: &Rig) -> String {
+    let none = || "No proof load is recorded: the g limit is a statement only.".to_owned();
+    rig.details.proof_load.as_ref().map_or_else(none, |proof| format!("The g limit rests on a {}.", proof.sentence()))
 }
 
 fn heading(header: &Header, rig: &Rig, reading: &Reading) -> Heading {

@@ -94,6 +94,9 @@ fn at_a_glance(page: &TrialPage) -> String {
     }));
     body.push_str(&tile(page, "max_tension", "Peak tension", |value| against_limit(value, tension_n?, "N")));
     body.push_str("</div>\n");
+    if !page.proof_load.is_empty() {
+        body.push_str(&format!("<p>{}</p>\n", escaped(&page.proof_load)));
+    }
     if !page.cautions.is_empty() {
         let items: String = page.cautions.iter().map(|caution| format!("<li>{}</li>", escaped(caution))).collect();
         body.push_str(&format!("<h3>To look at</h3>\n<ul class=\"look\">{items}</ul>\n"));

@@ -5,6 +5,7 @@
 
 mod beside;
 mod calibration;
+mod cord;
 mod decimate;
 mod energy;
 mod figures;
@@ -21,6 +22,7 @@ mod tests;
 
 pub use beside::add_replay;
 pub use calibration::{accelerometer_page, cell_page, encoder_page};
+pub use cord::cord_page;
 pub use forecast::{ForecastCurve, ForecastPage, forecast_page};
 pub use gather::{GatherError, page, page_of};
 pub use html::trial_page;

@@ -9,6 +9,8 @@ pub struct TrialPage {
     /// The rail to scale; `None` where the rig file could not be read.
     pub rail: Option<RailStrip>,
     pub limits: PageLimits,
+    /// What the g limit rests on, in words.
+    pub proof_load: String,
     /// Tension signals over the whole trial.
     pub tension: Vec<Trace>,
     pub phases: Vec<PhaseSpan>,

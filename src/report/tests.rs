@@ -31,6 +31,7 @@ fn invented() -> TrialPage {
             separation_x_m: Some(4.02),
             rest_x_m: Some(5.58),
         }),
+        proof_load: String::new(),
         limits: PageLimits { tension_n: Some(900.0), peak_g: Some(10.0), launch_speed_mps: Some((15.0, 18.0)) },
         tension: tension(),
         phases: phases(),

@@ -4,6 +4,7 @@
 
 use super::channels::Channels;
 use super::document::Findings;
+use super::proof;
 use super::{Cords, Device, Rig, Role};
 use crate::units::STANDARD_GRAVITY_MPS2;
 
@@ -11,6 +12,28 @@ pub(super) fn rig(rig: &Rig, findings: &mut Findings<'_>) {
     rail(rig, findings);
     plan(rig, findings);
     planned_tension(rig, findings);
+    if let Some(proof) = &rig.details.proof_load {
+        proof::against_limit(proof, rig.limits.peak_g, findings);
+    }
+    cord_items(rig, findings);
+}
+
+/// As many cords listed as there are, of the lot that the card is of.
+fn cord_items(rig: &Rig, findings: &mut Findings<'_>) {
+    let items = &rig.details.cord_items;
+    let sets = rig.details.more_cords.iter().map(|group| group.cords.count);
+    let count = rig.cords.count + sets.sum::<u32>();
+    if !items.is_empty() && items.len() != count as usize {
+        findings.caution("cord", format!("lists {} cords, the rig has {count}", items.len()));
+    }
+    let cards: Vec<&str> = rig.details.cards().map(|card| card.lot.as_str()).collect();
+    for (index, item) in items.iter().enumerate() {
+        if !cards.is_empty() && !cards.contains(&item.lot.as_str()) {
+            let message =
+                format!("cord {} is of lot {:?}, the cards are of {}", item.serial, item.lot, cards.join(", "));
+            findings.caution(&format!("cord[{index}].lot"), message);
+        }
+    }
 }
 
 fn rail(rig: &Rig, findings: &mut Findings<'_>) {

@@ -1,5 +1,6 @@
 //! The optional tables and keys of a rig file: [`Details`](super::Details).
 
+use super::attached::Attached;
 use super::details::*;
 use super::document::{Findings, Section};
 use super::sections::{self, curve};
@@ -14,13 +15,21 @@ pub(super) fn cord_details(table: &mut Section<'_, '_>, findings: &mut Findings<
         relaxation: relaxation(table, findings),
         tension_per_kelvin: table.optional_quantity(findings, "tension_per_kelvin", "%", -5.0..=5.0).unwrap_or(0.0),
         card_temperature_c: table.optional_quantity(findings, "curve_temperature", "degC", -40.0..=80.0),
-        temperature_c: table.optional_quantity(findings, "temperature", "degC", -40.0..=80.0),
         loss_per_tenfold_cycles: table
             .optional_quantity(findings, "tension_loss_per_tenfold_cycles", "%", 0.0..=30.0)
             .unwrap_or(0.0),
+        ..today(table, findings)
+    }
+}
+
+/// What changes from trial to trial, whoever states the curves.
+pub(super) fn today(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> CordDetails {
+    CordDetails {
+        temperature_c: table.optional_quantity(findings, "temperature", "degC", -40.0..=80.0),
         cycles: table.optional_number(findings, "cycles", 0.0..=1e6).unwrap_or(0.0),
         retension_x_m: table.optional_quantity(findings, "retension_from", "m", 0.05..=200.0),
         extrapolate: table.optional_flag(findings, "extrapolate"),
+        ..CordDetails::default()
     }
 }
 
@@ -32,7 +41,7 @@ fn loading_curve(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Ve
     }
 }
 
-fn relaxation(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<RelaxationTerm> {
+pub(super) fn relaxation(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<RelaxationTerm> {
     let mut terms = Vec::new();
     for mut entry in table.optional_sections(findings, "relaxation") {
         terms.push(RelaxationTerm {
@@ -47,11 +56,15 @@ fn relaxation(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<R
     terms
 }
 
-pub(super) fn more_cords(root: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<CordGroup> {
+pub(super) fn more_cords(
+    root: &mut Section<'_, '_>,
+    attached: &[Attached],
+    findings: &mut Findings<'_>,
+) -> Vec<CordGroup> {
     let mut groups = Vec::new();
     for mut entry in root.optional_sections(findings, "more_cords") {
         let zero_mark_x_m = entry.quantity(findings, "zero_mark", "m", 0.05..=100.0);
-        let (cords, details) = sections::cords(entry, findings);
+        let (cords, details) = sections::cords(entry, attached, findings);
         groups.push(CordGroup { cords, zero_mark_x_m, details });
     }
     groups

@@ -1,7 +1,7 @@
 //! What a rig file may say beyond the simplest launcher: unequal cords, gas, tables, further losses, a rail that recoils,
 //! stages. Everything here is off where the file is silent.
 
-use super::{CordPoint, Cords, Given};
+use super::{CordCard, CordItem, CordPoint, Cords, Given, ProofLoad};
 
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct Details {
@@ -20,6 +20,18 @@ pub struct Details {
     pub settings: SettingUncertainties,
     pub correlations: Vec<Correlation>,
     pub stages: Vec<Stage>,
+    /// `[[cord]]`: the cords on the rig, one by one.
+    pub cord_items: Vec<CordItem>,
+    /// The static test behind the g limit.
+    pub proof_load: Option<ProofLoad>,
+}
+
+impl Details {
+    /// The cards of all cord sets that have one.
+    pub fn cards(&self) -> impl Iterator<Item = &CordCard> {
+        let groups = self.more_cords.iter().map(|group| &group.details);
+        std::iter::once(&self.cords).chain(groups).filter_map(|details| details.card.as_ref())
+    }
 }
 
 /// A cord set of its own.
@@ -49,6 +61,8 @@ pub struct CordDetails {
     pub retension_x_m: Option<f64>,
     /// The curve may be used beyond its last point; every result then says so.
     pub extrapolate: bool,
+    /// The card that the curves come from; none where the rig file itself states them.
+    pub card: Option<CordCard>,
 }
 
 #[derive(Debug, Clone, Copy, PartialEq)]

@@ -8,7 +8,7 @@ use super::attached::{Attached, read_joined, take_apart};
 use super::details::{CordDetails, Details, SettingUncertainties};
 use super::document::{Findings, Section, start_of};
 use super::finding::{Finding, RigError, Severity};
-use super::{Cords, Rig, channels, checks, detail_sections, sections};
+use super::{Cords, Rig, channels, checks, cord_items, detail_sections, proof, sections};
 
 /// What a rig file's text amounts to.
 #[derive(Debug, Clone)]
@@ -48,8 +48,8 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
     let pulled_otherwise = !gas.is_empty() || !force_tables.is_empty();
     let cords =
         if pulled_otherwise { root.optional_section(findings, "cords") } else { Some(root.section(findings, "cords")) };
-    let (cords, cord_details) =
-        cords.map_or_else(|| (Cords::none(), CordDetails::default()), |table| sections::cords(table, findings));
+    let (cords, cord_details) = cords
+        .map_or_else(|| (Cords::none(), CordDetails::default()), |table| sections::cords(table, &attached, findings));
     let devices = channels::devices(&mut root, findings);
     let channels = channels::channels(&mut root, findings, &devices, &attached);
     checks::channels(&channels, &devices, findings);
@@ -60,7 +60,7 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
     let (plan, of_plan) = sections::plan(plan, findings);
     let details = Details {
         cords: cord_details,
-        more_cords: detail_sections::more_cords(&mut root, findings),
+        more_cords: detail_sections::more_cords(&mut root, &attached, findings),
         gas,
         force_tables,
         losses: more_losses,
@@ -75,6 +75,8 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
         },
         correlations: detail_sections::correlations(&mut root, findings),
         stages: detail_sections::stages(&mut root, findings),
+        cord_items: cord_items::cord_items(&mut root, findings),
+        proof_load: proof::proof_load(&mut root, findings),
     };
     let rig = Rig {
         name,

@@ -2,10 +2,12 @@
 //!
 //! The ranges only catch slips of the pen and the unit (a 7 mm rail, a 60 deg incline); they are no engineering limits.
 
+use super::attached::Attached;
 use super::details::{BrakeDetails, CordDetails, MoreLosses, PayloadDetails, SettingUncertainties};
 use super::document::{Findings, Section, quantity_of};
+use super::finding::Severity;
 use super::surroundings::{moist_air_density_kg_per_m3, standard_air_density_kg_per_m3};
-use super::{CordPoint, Cords, Given, Limits, Losses, Payload, Plan, Rail, Shuttle, Site, detail_sections};
+use super::{CordCard, CordPoint, Cords, Given, Limits, Losses, Payload, Plan, Rail, Shuttle, Site, detail_sections};
 use crate::units::STANDARD_GRAVITY_MPS2;
 
 const MASS_KG: std::ops::RangeInclusive<f64> = 0.01..=500.0;
@@ -94,23 +96,78 @@ pub(super) fn payload(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -
     (payload, details)
 }
 
-pub(super) fn cords(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Cords, CordDetails) {
+pub(super) fn cords(
+    mut table: Section<'_, '_>,
+    attached: &[Attached],
+    findings: &mut Findings<'_>,
+) -> (Cords, CordDetails) {
     let count = table.number(findings, "count", 1.0..=200.0);
     if count.fract() > 0.0 {
         findings.error(&table.key("count"), format!("is {count}, cords come in whole numbers"));
     }
+    let travel_ratio = table.number(findings, "travel_ratio", 0.05..=20.0);
+    let bare = Cords { count: count as u32, travel_ratio, ..Cords::none() };
+    if table.optional(findings, "card").is_some() {
+        return cords_of_card(table, bare, attached, findings);
+    }
     let cords = Cords {
-        count: count as u32,
         free_length_m: table.quantity(findings, "free_length", "m", 0.05..=100.0),
         mass_kg: table.quantity(findings, "mass", "kg", 0.001..=50.0),
-        travel_ratio: table.number(findings, "travel_ratio", 0.05..=20.0),
         curve: curve(&mut table, findings, "curve"),
         force_relative_uncertainty: table.quantity(findings, "force_uncertainty", "%", 0.0..=50.0),
+        ..bare
     };
     let details = detail_sections::cord_details(&mut table, findings);
     table.finish(findings);
     (cords, details)
 }
+
+/// Cords that a card describes: the rig file adds how many there are and what is so today.
+fn cords_of_card(
+    mut table: Section<'_, '_>,
+    mut cords: Cords,
+    attached: &[Attached],
+    findings: &mut Findings<'_>,
+) -> (Cords, CordDetails) {
+    let pointer = table.text(findings, "card");
+    let key = table.key("card");
+    let mut details = detail_sections::today(&mut table, findings);
+    for of_card in OF_CARD {
+        if table.optional(findings, of_card).is_some() {
+            findings.error(&table.key(of_card), "stands beside card: keep the card, what it says counts");
+        }
+    }
+    table.finish(findings);
+    let Some(found) = attached.iter().find(|text| text.name == pointer) else {
+        if !pointer.is_empty() {
+            findings.error(&key, format!("{pointer} can't be read: is it there, beside the rig file?"));
+        }
+        return (cords, details);
+    };
+    let (card, wrong) = CordCard::read(&pointer, &found.text);
+    for finding in wrong.iter().filter(|finding| finding.severity == Severity::Error) {
+        findings.error(&key, format!("{pointer}:{finding}"));
+    }
+    if let Some(card) = card {
+        card.put_into(&mut cords, &mut details);
+        details.card = Some(card);
+    }
+    (cords, details)
+}
+
+/// Keys that a card takes the place of.
+const OF_CARD: [&str; 10] = [
+    "free_length",
+    "mass",
+    "curve",
+    "loading_curve",
+    "force_uncertainty",
+    "branch_gap_width",
+    "relaxation",
+    "curve_temperature",
+    "tension_per_kelvin",
+    "tension_loss_per_tenfold_cycles",
+];
 
 /// Points of one cord, checked to begin at (0, 0) and to rise; none if they do not, so that nothing is built on them.
 pub(super) fn curve(table: &mut Section<'_, '_>, findings: &mut Findings<'_>, name: &'static str) -> Vec<CordPoint> {

@@ -5,6 +5,7 @@ use tautrail::rig::Rig;
 use tautrail::units::rounded;
 
 use super::CAUTION;
+use crate::cli::cord::proof_sentence;
 
 /// Said beside every gas rig's numbers.
 pub const GAS_CAUTION: &str = "Gas cylinders, valves and lines are subject to pressure-vessel rules, of which this program \
@@ -136,5 +137,6 @@ pub fn losses(rig: &Rig) -> Vec<String> {
 
 pub fn cautions(rig: &Rig) -> Vec<String> {
     let gas = (!rig.details.gas.is_empty()).then(|| GAS_CAUTION.to_owned());
-    std::iter::once(CAUTION.to_owned()).chain(gas).collect()
+    let proof = proof_sentence(rig);
+    std::iter::once(CAUTION.to_owned()).chain(gas).chain([proof]).collect()
 }
