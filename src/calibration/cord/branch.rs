@@ -71,6 +71,7 @@ pub struct BranchFit {
     pub deviations: Vec<[f64; 2]>,
     /// Lines of the readings that stand far off, with how many robust deviations.
     pub far_off: Vec<(usize, f64)>,
+    pub(super) n_steps: usize,
     scatter: Option<[[f64; 2]; 2]>,
     n_cords: usize,
     instruments: Instruments,
@@ -128,6 +129,7 @@ impl BranchFit {
             comparisons,
             tested_to,
             left_out_rms_n,
+            n_steps,
             n_cords,
             instruments,
         })

@@ -166,11 +166,13 @@ fn left_while_read(cycles: &[&Cycle<'_>], relaxation: Option<&Relaxation>) -> [f
     [hold::held_part(&relaxation.terms, ramp_s, 0.0), hold::held_part(&relaxation.terms, ramp_s, hold_s)]
 }
 
-/// Area between the branches times the free length. Its uncertainty: what both laws miss, and the scale of force and length.
+/// Area between the branches times the free length. Its uncertainty: what both laws miss, of which half the steps count as
+/// independent, and the scale of force and length.
 fn hysteresis_j(sheet: &CordSheet, loading: &BranchFit, unloading: &BranchFit, to: f64) -> (f64, f64) {
     let length_m = sheet.free_length_m.value;
     let area_j = length_m * (loading.law.integral_n(to) - unloading.law.integral_n(to));
-    let missed_j = length_m * to * loading.left_out_rms_n.hypot(unloading.left_out_rms_n);
+    let missed_n = |branch: &BranchFit| branch.left_out_rms_n / (0.5 * branch.n_steps as f64).sqrt();
+    let missed_j = length_m * to * missed_n(loading).hypot(missed_n(unloading));
     let free_length = sheet.free_length_m.standard_uncertainty / length_m;
     let scale_j = area_j * sheet.force_relative_uncertainty.hypot(free_length);
     (area_j, missed_j.hypot(scale_j))

@@ -2,12 +2,16 @@
 //!
 //! G(t) = 1 − Σ gᵢ (1 − e^(−t/τᵢ)), convolved with the winch-back that led to the hold, taken as even over w (R. M.
 //! Christensen, *Theory of Viscoelasticity*, 1982, section 1.2). What the cell itself creeps by is taken off the readings
-//! first and named apart. The number of terms, 1 to 3, is the one with the least corrected information criterion (C. M.
+//! first and named apart. Terms faster than a third of the winch-back have gone while the cord was drawn: what would be left of
+//! them in the hold is too little to tell their share, and they count as part of the curve. The number of terms, 1 to 3, is the one with the least corrected information criterion (C. M.
 //! Hurvich, C.-L. Tsai, Biometrika 76 (1989) 297-307).
 
 use super::error::CordError;
 use crate::estimation::{Bound, FitOptions, Stepped, fit_nonlinear};
 use crate::rig::RelaxationTerm;
+
+/// Shortest time of a term, as a share of the winch-back.
+const FASTEST: f64 = 1.0 / 3.0;
 
 /// A hold at one length.
 #[derive(Debug, Clone, PartialEq)]
@@ -109,11 +113,13 @@ fn prony(holds: &[Hold], n_terms: usize, n_readings: usize, longest_s: f64) -> R
         .flat_map(|hold| hold.readings.iter().map(|one| one.0).filter(|t| *t > 0.0))
         .fold(f64::INFINITY, f64::min)
         .min(0.5 * longest_s);
-    let (low, high) = ((0.3 * shortest_s).ln(), (5.0 * longest_s).ln());
+    let winch_s = holds.iter().map(|hold| hold.winch_s).fold(f64::INFINITY, f64::min);
+    let fastest_s = (0.3 * shortest_s).max(FASTEST * winch_s).min(0.5 * longest_s);
+    let (low, high) = (fastest_s.ln(), (5.0 * longest_s).ln());
     let mut start = Vec::new();
     for term in 0..n_terms {
         let place = (term as f64 + 0.7) / (n_terms as f64 + 0.4);
-        start.extend([0.05, shortest_s.ln() + place * (longest_s / shortest_s).ln()]);
+        start.extend([0.05, low + place * (longest_s / fastest_s).ln()]);
     }
     let bounds = (0..n_terms).flat_map(|_| [Bound::Between(0.0, 0.5), Bound::Between(low, high)]).collect();
     let model = Stepped::new(n_readings, [0.01, 1.0].repeat(n_terms), |p: &[f64], into: &mut [f64]| {

@@ -100,7 +100,7 @@ fn relaxation(text: &mut String, made: &Characterised) {
     put(
         text,
         format_args!(
-            "# Prony terms, the winch-back's ramp convolved; known up to a hold of {:.0} s.",
+            "# Prony terms, the winch-back's ramp convolved, faster ones than a third of it left in the curve; known to {:.0} s of hold.",
             relaxation.longest_s
         ),
     );

@@ -70,6 +70,8 @@ fn the_page_has_every_key_and_no_other() {
         "plan",
         "correlation",
         "stage",
+        "cord",
+        "proof_load",
         "device",
         "channel",
     ];
