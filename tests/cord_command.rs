@@ -8,8 +8,13 @@ use std::process::{Command, Output};
 
 use serde_json::Value;
 
+mod support;
 #[path = "support/virtual_lot.rs"]
 mod virtual_lot;
+
+use tautrail::calibration::cord::{characterise, held_part};
+use tautrail::estimation::Curve;
+use tautrail::rig::{CordSheet, RelaxationTerm};
 
 fn tautrail(folder: &Path, args: &[&str]) -> Output {
     Command::new(env!("CARGO_BIN_EXE_tautrail")).current_dir(folder).args(args).output().unwrap()
@@ -129,4 +134,89 @@ fn the_sheets_mistakes_are_told_and_no_card_is_written() {
     fs::remove_file(folder.path().join("lot.csv")).unwrap();
     let output = tautrail(folder.path(), &["cord", "card", "sheet.toml"]);
     assert!(text(&output).contains("lot.csv: cannot be read"), "{}", text(&output));
+}
+
+/// The same Prony fit by SciPy: the hold's own tension eliminated, the ramp convolved.
+const PRONY_BY_SCIPY: &str = r"
+import sys, numpy as np
+from scipy.optimize import least_squares
+winch = float(sys.argv[1])
+t, n = np.array([row.split(':') for row in sys.argv[2].split()], float).T
+def part(p):
+    g, tau = p[0::2], np.exp(p[1::2])
+    ramp = -np.expm1(-winch / tau) / (winch / tau)
+    return 1 - sum(gi * (1 - ri * np.exp(-t / ti)) for gi, ri, ti in zip(g, ramp, tau))
+def residual(p):
+    shape = part(p)
+    return shape * (shape @ n) / (shape @ shape) / n - 1
+fit = least_squares(residual, [0.05, np.log(6), 0.05, np.log(100)], xtol=1e-14, ftol=1e-14, gtol=1e-14)
+for g, tau in sorted(zip(fit.x[0::2], np.exp(fit.x[1::2])), key=lambda pair: pair[1]):
+    print(repr(float(g)), repr(float(tau)))
+";
+
+#[test]
+fn relaxation_agrees_with_scipy() {
+    let terms = [RelaxationTerm { share: 0.04, time_s: 6.0 }, RelaxationTerm { share: 0.05, time_s: 110.0 }];
+    let (toml, _) = virtual_lot::sheet(1, 1);
+    let mut csv = String::from("serial, cycle, branch, time [s], force [N], elongation [%]\n");
+    for step in 1..=10 {
+        csv.push_str(&format!(
+            "a, 4, load, {:.1}, {:.4}, {}\n",
+            1.5 * f64::from(step),
+            8.0 * f64::from(step),
+            10 * step
+        ));
+    }
+    let mut held = String::new();
+    for i in 0..45 {
+        let t = (0.5 * 1.16_f64.powi(i) * 100.0).round() / 100.0;
+        let seen_n = 80.0 * held_part(&terms, 13.5, t) * (1.0 + 3e-5 * (9.0 * t).sin());
+        csv.push_str(&format!("a, 4, hold, {:.2}, {seen_n:.6}, 100\n", 15.0 + t));
+        held.push_str(&format!("{t}:{seen_n:.6} "));
+    }
+    for step in (1..10).rev() {
+        csv.push_str(&format!(
+            "a, 4, unload, {:.1}, {:.4}, {}\n",
+            1000.0 - f64::from(step),
+            7.2 * f64::from(step),
+            10 * step
+        ));
+    }
+    let sheet = CordSheet::read(&toml, Some(&csv)).0.unwrap();
+    let found = characterise(&sheet).unwrap().relaxation.unwrap();
+    let by_scipy = support::run_oracle(PRONY_BY_SCIPY, &["13.5", &held]);
+    assert_eq!((found.terms.len(), by_scipy.lines().count()), (2, 2), "{found:?}");
+    for (term, line) in found.terms.iter().zip(by_scipy.lines()) {
+        let (share, time_s) = line.split_once(' ').unwrap();
+        let (share, time_s): (f64, f64) = (share.parse().unwrap(), time_s.parse().unwrap());
+        assert!(
+            (term.share / share - 1.0).abs() < 1e-4 && (term.time_s / time_s - 1.0).abs() < 1e-4,
+            "{term:?}: {line}"
+        );
+    }
+}
+
+#[test]
+fn the_splines_curve_is_scipys_monotone_one() {
+    let script = "import sys, numpy as np\nfrom scipy.interpolate import PchipInterpolator\n\
+                  x, y = np.array([p.split(':') for p in sys.argv[1].split()], float).T\n\
+                  print(*[repr(float(v)) for v in PchipInterpolator(x, y)(np.linspace(x[0], x[-1], 41))])";
+    // Rubber after Treloar 1944 (tests/reference/treloar_1944_uniaxial.csv, source there).
+    let text = include_str!("reference/treloar_1944_uniaxial.csv");
+    let rows = text.lines().filter(|line| line.starts_with(|first: char| first.is_ascii_digit()));
+    let points: Vec<(f64, f64)> = rows
+        .map(|line| {
+            let cells: Vec<f64> = line.split(',').map(|cell| cell.parse().unwrap()).collect();
+            (cells[0], cells[1])
+        })
+        .collect();
+    let shown: Vec<String> = points.iter().map(|(x, y)| format!("{x}:{y}")).collect();
+    let by_scipy = support::run_oracle(script, &[&shown.join(" ")]);
+    let curve = Curve::through(&points).unwrap();
+    let (first, last) = (curve.first(), curve.last());
+    for (i, expected) in by_scipy.split_whitespace().enumerate() {
+        let at = first + (last - first) * i as f64 / 40.0;
+        let expected: f64 = expected.parse().unwrap();
+        assert!((curve.value(at) - expected).abs() < 1e-10 * 64.0, "at {at}: {} against {expected}", curve.value(at));
+    }
 }

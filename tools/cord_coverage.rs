@@ -12,7 +12,7 @@ use tautrail::rig::CordSheet;
 
 #[path = "../tests/support/virtual_lot.rs"]
 mod virtual_lot;
-use virtual_lot::{VirtualCord, mean_n, sheet};
+use virtual_lot::{VirtualCord, sheet};
 
 const N_CORDS: usize = 5;
 const PLACES: u32 = 10;
@@ -86,4 +86,11 @@ fn tally(tallies: &mut [Tally; 4], made: &Characterised, seed: u64) {
         tallies[2].add(out.tension_n, one(&out), further.loading_n(e));
         tallies[3].add(back.tension_n, one(&back), further.unloading_n(e));
     }
+}
+
+/// The lot's mean tension, by many cords.
+fn mean_n(elongation: f64, law: impl Fn(VirtualCord, f64) -> f64) -> f64 {
+    let mut random = Random::new(987_654, 1);
+    let n = 300;
+    (0..n).map(|_| law(VirtualCord::drawn(&mut random), elongation)).sum::<f64>() / f64::from(n)
 }

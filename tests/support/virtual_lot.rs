@@ -3,8 +3,6 @@
 //! Tension: a saturating toe, a straight part and a steep end; coming in, a share of it that closes at the turning point.
 //! Hidden: each cord's stiffness and length scale, the weights' common error, where the marks really are, the reader's eye.
 
-#![allow(dead_code, reason = "each user takes its part")]
-
 use tautrail::estimation::Random;
 
 pub const FREE_LENGTH_M: f64 = 2.7;
@@ -24,8 +22,6 @@ pub struct VirtualCord {
 }
 
 impl VirtualCord {
-    pub const MEAN: Self = Self { stiffness: 1.0, stretch: 1.0 };
-
     pub fn drawn(random: &mut Random) -> Self {
         Self { stiffness: 1.0 + 0.03 * random.normal(), stretch: 1.0 + 0.012 * random.normal() }
     }
@@ -89,11 +85,4 @@ pub fn sheet(seed: u64, n_cords: usize) -> (String, String) {
         100.0 * FORCE_RELATIVE,
     );
     (toml, csv)
-}
-
-/// The lot's mean tension, by many cords.
-pub fn mean_n(elongation: f64, law: impl Fn(VirtualCord, f64) -> f64) -> f64 {
-    let mut random = Random::new(987_654, 1);
-    let n = 300;
-    (0..n).map(|_| law(VirtualCord::drawn(&mut random), elongation)).sum::<f64>() / f64::from(n)
 }
