@@ -11,7 +11,7 @@ use crate::estimation::{Component, Scatter, combined, least_squares};
 /// A residual further off than this many robust deviations weighs less (P. J. Huber, Robust Statistics, 1981, section 4.5).
 const HUBER: f64 = 2.0;
 /// A residual further off than this many is told to people.
-const FAR: f64 = 6.0;
+const FAR: f64 = 10.0;
 const ROUNDS: usize = 8;
 const LEAST_STEPS: usize = 4;
 
@@ -285,7 +285,7 @@ impl Robust {
     /// Readings far off both by the others' scatter and by what the law itself may miss.
     fn far_off(&self, readings: &[BranchReading], left_out_rms_n: f64) -> Vec<(usize, f64)> {
         let highest_n = readings.iter().map(|one| one.tension_n.abs()).fold(0.0, f64::max);
-        let scale_n = deviation_n(&self.residuals_n).max(0.5 * left_out_rms_n).max(1e-3 * highest_n);
+        let scale_n = deviation_n(&self.residuals_n).max(left_out_rms_n).max(1e-3 * highest_n);
         let times = self.residuals_n.iter().map(|r| r.abs() / scale_n);
         readings.iter().zip(times).filter(|(_, times)| *times > FAR).map(|(one, times)| (one.line, times)).collect()
     }
