@@ -300,9 +300,11 @@ impl Conductor {
             return Err(DaemonError::ThreadEnded { thread: "journal" });
         }
         let recorder = self.recorder.now();
-        let room = self.watch_room(&recorder);
-        let (disk, slow) = (words::disk_trouble(&recorder).or(room), words::slow(&recorder));
         let now_ns = self.clock.monotonic_ns();
+        self.room.look(now_ns);
+        let room = self.room_now(&recorder);
+        let disk = words::disk_trouble(&recorder).or_else(|| room.sentence().map(ToOwned::to_owned));
+        let slow = words::slow(&recorder);
         if now_ns >= self.settle_at_ns {
             self.settle_at_ns = now_ns + SETTLE_EVERY_NS;
             self.settle(now_ns);
@@ -310,6 +312,7 @@ impl Conductor {
         let disk = self.live.disk_trouble(now_ns, disk.as_deref());
         let slow = self.live.journal_trouble(now_ns, slow.as_deref());
         disk.iter().chain(&slow).for_each(|happening| self.act(happening));
+        self.act_on_room(&recorder, &room, now_ns);
         Ok(())
     }
 

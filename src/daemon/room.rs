@@ -35,6 +35,16 @@ pub enum Room {
     TooLittle(String),
 }
 
+impl Room {
+    /// What is to be told, if anything.
+    pub fn sentence(&self) -> Option<&str> {
+        match self {
+            Self::Enough => None,
+            Self::Low(sentence) | Self::TooLittle(sentence) => Some(sentence),
+        }
+    }
+}
+
 impl RoomWatch {
     pub fn new(longest_hold: Duration, declared_bytes_per_s: f64) -> Self {
         Self {

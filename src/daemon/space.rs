@@ -32,19 +32,12 @@ impl Conductor {
         self.room.judge(health.free_bytes, self.book.waiting(), self.book.open_bytes(self.room.n_bytes()))
     }
 
-    /// Looks at the disk, acts on it, and gives the sentence to raise, if any.
-    pub(super) fn watch_room(&mut self, recorder: &RecorderNow) -> Option<String> {
-        let now_ns = self.clock.monotonic_ns();
-        self.room.look(now_ns);
-        let room = self.room_now(recorder);
+    /// Does with the trials what the room asks for; after the alarm was raised.
+    pub(super) fn act_on_room(&mut self, recorder: &RecorderNow, room: &Room, now_ns: i64) {
         if recorder.refusing {
             self.end_for_want_of_room(now_ns);
         } else if !matches!(room, Room::TooLittle(_)) {
             self.open_held_back(now_ns);
-        }
-        match room {
-            Room::Enough => None,
-            Room::Low(sentence) | Room::TooLittle(sentence) => Some(sentence),
         }
     }
 
