@@ -81,11 +81,14 @@ impl Settling {
             return None;
         }
         let sd = (squares / (n as f64 - 1.0)).sqrt();
-        // Neighbours may hang together: the means of tellings show how much.
         let tellings = self.told.len() as f64;
         let of_means = self.told.iter().map(|told| (told.mean - mean).powi(2)).sum::<f64>() / (tellings - 1.0).max(1.0);
-        let scatter = 3.0 * (4.0 * of_means / tellings).sqrt();
-        let still = (late.1 - early.1).abs() <= self.rule.still_counts + scatter;
+        // Neighbours' differences show the noise alone; a swing shows in the means beside it.
+        let steps = self.told.iter().zip(self.told.iter().skip(1)).map(|(one, next)| (next.mean - one.mean).powi(2));
+        let noise = (steps.sum::<f64>() / (2.0 * (tellings - 1.0).max(1.0))).sqrt();
+        let no_swing = of_means.sqrt() <= self.rule.still_counts + 1.5 * noise;
+        let scatter = 6.0 * noise / tellings.sqrt();
+        let still = no_swing && (late.1 - early.1).abs() <= self.rule.still_counts + scatter;
         still.then_some(Settled { counts: mean, sd_counts: sd, n, span_s: self.rule.span_s })
     }
 }
