@@ -269,6 +269,15 @@ pub fn rounded(value: f64, standard_uncertainty: f64) -> (String, String) {
     (fixed(value, decimals), fixed(standard_uncertainty, decimals))
 }
 
+/// A unit as people read it: "m/s²" for "m/s^2", nothing for "1".
+pub fn shown_unit(unit: &str) -> &str {
+    match unit {
+        "1" => "",
+        "m/s^2" => "m/s²",
+        other => other,
+    }
+}
+
 /// A value with `digits` significant digits, in plain notation.
 pub fn significant(value: f64, digits: i32) -> String {
     if value == 0.0 || !value.is_finite() { format!("{value}") } else { fixed(value, decimals_for(value, digits)) }

@@ -116,7 +116,7 @@ rig.toml:45:20: error: plan.launch_speed_max: 15.00 m/s is not above launch_spee
 rig.toml:51:8: caution: device[0].port: /dev/ttyUSB0 may name another device after a replug, prefer its link under /dev/serial/by-id/
 rig.toml:53:12: error: device[0].protocol: "frame" is not known, known: "frames", "text"
 rig.toml:57:10: error: channel[0].device: there is no device "winchnode" in this rig file, did you mean "winch-node"?
-rig.toml:59:8: error: channel[0].role: "release_line" is not a role, did you mean "release_line_tension"? (roles: release_line_tension, cord_anchor_tension, shuttle_position, shuttle_specific_force)
+rig.toml:59:8: error: channel[0].role: "release_line" is not a role, did you mean "release_line_tension"? (roles: release_line_tension, cord_anchor_tension, left_anchor_tension, right_anchor_tension, shuttle_position, shuttle_specific_force)
 rig.toml: 19 to put right before this rig can be used
 Tautrail is no safety device: it advises and records. Interlocks, exclusion zones, local codes and licensed practice decide.
 "#;

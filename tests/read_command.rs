@@ -57,7 +57,7 @@ fn read_prints_the_launch_with_units_and_uncertainty() {
     let text = said(&tautrail(&["read", sealed()]));
     let line =
         text.lines().find(|line| line.trim_start().starts_with("launch_speed ")).unwrap_or_else(|| panic!("{text}"));
-    assert!(line.contains('±') && line.ends_with(" m/s"), "{line}");
+    assert!(line.contains('±') && line.contains(" m/s   ("), "{line}");
     assert!(text.contains("launched") && text.contains("95 % interval"), "{text}");
     assert!(text.contains("no safety device"), "{text}");
     let budget = said(&tautrail(&["read", "--budget", sealed()]));
@@ -98,6 +98,60 @@ print(repr(float(peak)))
     let peak: f64 = support::run_oracle(script, &[sealed(), path.to_str().unwrap()]).trim().parse().unwrap();
     let found = number(&reading, "peak_g_cfc60_specific");
     assert!((found - peak).abs() < 1e-6 * peak, "{found} for {peak}");
+}
+
+// NumPy: cubics by least squares through the encoder's own samples, 12 ms about each of five places in the stroke.
+#[test]
+fn the_smoothed_speed_is_that_of_a_local_fit_to_the_encoder() {
+    let script = r#"
+import sys, json, h5py, numpy as np
+reading = json.load(open(sys.argv[2]))
+at = {i["name"]: i["time_s"] for i in reading["instants"]}
+with h5py.File(sys.argv[1]) as f:
+    t, x = f["signals/encoder/time"][:], f["signals/encoder/value"][:]
+    tm, vm = f["signals/motion_velocity/time"][:], f["signals/motion_velocity/value"][:]
+worst = 0.0
+for share in (0.2, 0.4, 0.6, 0.8, 0.9):
+    middle = at["release"] + share * (at["separation"] - at["release"])
+    near = np.abs(t - middle) < 0.012
+    fit, covariance = np.polyfit(t[near] - middle, x[near], 3, cov=True)
+    off = abs(fit[2] - np.interp(middle, tm, vm)) / np.hypot(np.sqrt(covariance[2, 2]), 0.003)
+    worst = max(worst, off)
+print(repr(float(worst)))
+"#;
+    let dir = tempfile::tempdir().unwrap();
+    let path = dir.path().join("reading.json");
+    std::fs::write(&path, json(&["read", "--json", sealed()]).to_string()).unwrap();
+    let worst: f64 = support::run_oracle(script, &[sealed(), path.to_str().unwrap()]).trim().parse().unwrap();
+    assert!(worst < 4.0, "{worst} times what both allow");
+}
+
+#[test]
+fn two_trials_side_by_side_show_what_is_the_same_and_a_film_is_refused_with_both_numbers() {
+    let text = said(&tautrail(&["compare", sealed(), sealed()]));
+    assert!(text.contains("the same in all: rig") && text.contains("chance 100.0 %"), "{text}");
+    let differing = said(&tautrail(&["compare", "--differences", sealed(), sealed()]));
+    assert!(!differing.contains("launch_speed"), "{differing}");
+    let dir = tempfile::tempdir().unwrap();
+    let film = dir.path().join("film.csv");
+    let rows: Vec<String> = (0..20).map(|k| format!("{k},{:.5},{k}", f64::from(k) / 120.0)).collect();
+    std::fs::write(&film, format!("frame,time_s,x_mm\n{}\n", rows.join("\n"))).unwrap();
+    let output = tautrail(&["read", "--camera", film.to_str().unwrap(), "--frame-rate", "240", sealed()]);
+    assert_eq!(output.status.code(), Some(2));
+    let error = String::from_utf8_lossy(&output.stderr);
+    assert!(error.contains("8.333 ms") && error.contains("4.167 ms"), "{error}");
+}
+
+#[test]
+fn show_and_read_round_alike_and_give_verdicts() {
+    let (read, shown) = (said(&tautrail(&["read", sealed()])), said(&tautrail(&["show", sealed()])));
+    let line =
+        |text: &str| text.lines().find(|line| line.trim_start().starts_with("launch_speed ")).unwrap().to_owned();
+    let (read_line, shown_line) = (line(&read), line(&shown));
+    assert!(read_line.starts_with(&shown_line), "{read_line} | {shown_line}");
+    for text in [&read, &shown] {
+        assert!(text.contains("verdicts") && text.contains("met") && !text.contains("m/s^2"), "{text}");
+    }
 }
 
 #[test]
@@ -153,7 +207,7 @@ fn a_trial_of_noise_alone_has_no_number_and_a_reason_for_each() {
 
 #[test]
 fn help_shows_examples_and_the_caution() {
-    for command in ["read", "replay"] {
+    for command in ["read", "replay", "compare"] {
         let text = said(&tautrail(&[command, "--help"]));
         assert!(text.contains("Examples:") && text.contains("no safety device"), "{text}");
     }

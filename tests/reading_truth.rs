@@ -3,8 +3,9 @@
 #[path = "support/virtual_trial.rs"]
 mod virtual_trial;
 
-use tautrail::reading::{Outcome, Reading, read};
+use tautrail::reading::{Beside, Camera, EdgeSeen, Outcome, Reading, Recorder, read, read_beside};
 use tautrail::replay::{Replay, replay};
+use tautrail::rig::{Given, Input, InputMeaning};
 use virtual_rig::performance::Options;
 use virtual_trial::{VirtualTrial, play, rehearsal_rig};
 
@@ -33,6 +34,9 @@ fn launch_speed_peak_and_release_keep_their_promises() {
             trial.truth.peaks.iter().find(|peak| peak.filter == "cfc60").map_or(f64::NAN, |peak| peak.specific_g);
         let error = value(&reading, "peak_g_cfc60_specific") / peak - 1.0;
         assert!(error.abs() < 0.01, "seed {seed}: peak off by {:.2} %", 100.0 * error);
+        let left_s = trial.performance.separation().map_or(f64::NAN, |separation| separation.t_s);
+        let separation_s = reading.instant("separation").map_or(f64::NAN, |instant| instant.time_s) - left_s;
+        assert!(separation_s.abs() < 2e-3, "seed {seed}: separation off by {:.3} ms", 1e3 * separation_s);
         let release_s = value(&reading, "release_time") - trial.event_s("release").unwrap_or(f64::NAN);
         assert!(release_s.abs() < 5e-4, "seed {seed}: release off by {:.3} ms", 1e3 * release_s);
     }
@@ -52,6 +56,8 @@ fn every_outcome_is_called_by_its_name() {
         ("payload-not-separated", Outcome::PayloadNotSeparated),
         ("arrest-overrun", Outcome::ArrestOverrun),
         ("soft-rail", Outcome::Launched),
+        ("free-pull", Outcome::ShuttleAlone),
+        ("coast-down", Outcome::ShuttleAlone),
         ("stage-1", Outcome::Launched),
     ];
     for (scenario, wanted) in cases {
@@ -72,6 +78,104 @@ fn a_saturated_accelerometer_gives_no_peak_and_does_not_spoil_the_speed() {
     assert!(reason.contains("saturates at 6"), "{reason}: {:?}", reading.result("peak_g_cfc60_specific"));
     let speed = value(&reading, "launch_speed") / launch_speed_mps(&trial) - 1.0;
     assert!(speed.abs() < 0.002, "{speed}");
+}
+
+#[test]
+fn a_rail_that_recoils_is_no_error_of_the_accelerometer() {
+    let rig = rehearsal_rig();
+    for seed in 1..=2 {
+        let trial = play(&Options { scenario: "soft-rail".to_owned(), ..nominal(seed) }, &rig);
+        let reading = read(&trial.signals, &rig);
+        let speed = value(&reading, "launch_speed") / launch_speed_mps(&trial) - 1.0;
+        assert!(speed.abs() < 0.005, "seed {seed}: {:.3} %", 100.0 * speed);
+    }
+}
+
+#[test]
+fn a_release_input_takes_part_in_the_release_and_a_wrong_one_is_told() {
+    let mut rig = rehearsal_rig();
+    let input = |meaning| Input { device: "gate-node".to_owned(), number: 0, meaning };
+    rig.details.inputs = vec![input(InputMeaning::Release)];
+    let trial = play(&nominal(1), &rig);
+    let at_s = trial.event_s("release").unwrap_or(f64::NAN);
+    let edge = |time_s: f64| EdgeSeen {
+        device: "gate-node".to_owned(),
+        input: 0,
+        rising: false,
+        time_s,
+        time_uncertainty_s: 2e-5,
+    };
+    let beside = |time_s: f64| Beside { edges: vec![edge(time_s)], ..Beside::default() };
+    let right = read_beside(&trial.signals, &beside(at_s), &rig);
+    let alone = read(&trial.signals, &rig);
+    let u = |reading: &Reading| reading.result("release_time").map_or(f64::NAN, |row| row.standard_uncertainty);
+    assert!(u(&right) < u(&alone), "{} for {}", u(&right), u(&alone));
+    let wrong = read_beside(&trial.signals, &beside(at_s + 0.004), &rig);
+    let told = wrong.findings.iter().any(|finding| finding.contains("release input") && finding.contains("ms apart"));
+    assert!(told, "{:?}", wrong.findings);
+}
+
+/// Edges of the truth's gates as a device with a perfect clock would have sent them.
+fn edges(trial: &VirtualTrial) -> Vec<EdgeSeen> {
+    let zero_ns = trial.truth.scenario_zero_host_ns;
+    let edge = |edge: &virtual_rig::truth::EdgeTruth| EdgeSeen {
+        device: "gate-node".to_owned(),
+        input: edge.input,
+        rising: edge.rising,
+        time_s: (edge.host_ns - zero_ns) as f64 * 1e-9,
+        time_uncertainty_s: 2e-5,
+    };
+    trial.truth.edges.iter().map(edge).collect()
+}
+
+#[test]
+fn gates_recorder_and_camera_agree_with_the_sensors_or_are_told() {
+    let mut rig = rehearsal_rig();
+    let gate = |number, x_m| Input {
+        device: "gate-node".to_owned(),
+        number,
+        meaning: InputMeaning::BeamGate {
+            x_m: Given { value: x_m, standard_uncertainty: 3e-4 },
+            flag_m: Given { value: 0.1, standard_uncertainty: 2e-4 },
+        },
+    };
+    rig.details.inputs = vec![gate(1, 3.0), gate(2, 3.6)];
+    let trial = play(&nominal(1), &rig);
+    let rows = || trial.performance.trajectory.rows.iter();
+    let release_s = trial.event_s("release").unwrap_or(f64::NAN);
+    // 240 frames a second, marks read to 3 mm (common practice, no published source); the recorder's clock is 3 s off.
+    let frame = |k: usize| trial.performance.trajectory.at(release_s - 0.05 + k as f64 / 240.0).payload_x_m;
+    let film: Vec<String> =
+        (0..140).map(|k| format!("{k},{:.1}", 1e3 * frame(k) + 3.0 * ((k * 7919 % 13) as f64 / 6.0 - 1.0))).collect();
+    let film = format!("frame,x_mm\n{}\n", film.join("\n"));
+    let recorder: Vec<String> = rows()
+        .filter(|row| (release_s - 0.2..release_s + 0.7).contains(&row.t_s))
+        .step_by(50)
+        .map(|row| format!("{:.5},{:.3}", row.t_s + 3.0, row.payload_v_ground_mps))
+        .collect();
+    let recorder = format!("time_s,speed_mps\n{}\n", recorder.join("\n"));
+    let beside = Beside {
+        edges: edges(&trial),
+        recorder: Recorder::parse(&recorder).ok(),
+        camera: Camera::parse(&film, Some(240.0), None).ok(),
+    };
+    assert!(beside.recorder.is_some() && beside.camera.is_some());
+    let reading = read_beside(&trial.signals, &beside, &rig);
+    for name in ["launch_speed_by_gates", "launch_speed_by_flag", "launch_speed_by_recorder", "launch_speed_by_camera"]
+    {
+        let row = reading.result(name).unwrap_or_else(|| panic!("{name}: {:?}", reading.absence(name)));
+        let truth = launch_speed_mps(&trial);
+        assert!((row.low..=row.high).contains(&truth), "{name}: {row:?} for {truth}");
+        assert!(row.standard_uncertainty < 0.05 * truth, "{row:?}");
+        let normalised = value(&reading, &format!("{name}_normalised_error"));
+        assert!(normalised.abs() < 1.0, "{name}: {normalised}");
+    }
+    let moved = Beside { edges: edges(&trial), ..Beside::default() };
+    if let Some(Input { meaning: InputMeaning::BeamGate { x_m, .. }, .. }) = rig.details.inputs.last_mut() {
+        x_m.value += 0.02;
+    }
+    let reading = read_beside(&trial.signals, &moved, &rig);
+    assert!(reading.findings.iter().any(|finding| finding.contains("by gates")), "{:?}", reading.findings);
 }
 
 #[test]

@@ -40,7 +40,7 @@ fn a_sealed_launch_becomes_a_page_with_replay_and_nothing_from_outside() {
     }
     assert!(!html.contains("No replay was made") && !html.contains("NO LONGER MATCHES") && !html.contains("NaN"));
     assert!(!html.contains("src=") && !html.contains("href="));
-    assert_eq!(html.matches("<svg ").count(), 10, "strip, 2 tensions, 2 motions, 4 residuals, energy");
+    assert_eq!(html.matches("<svg ").count(), 15, "strip, 3 tensions, 6 motions, 4 residuals, energy");
     assert_eq!(std::fs::read(&trial).expect("the trial"), before, "the trial file is only read");
 }
 

@@ -1,6 +1,6 @@
 //! The reading of a trial, as the trial file stores it.
 
-use crate::reading::{Motion, Outcome, Reading};
+use crate::reading::{Motion, Outcome, Reading, Verdict};
 use crate::trial::{AbsentEntry, DerivedSignal, InstantEntry, ResultEntry, ResultSet};
 
 /// Results, instants and evidence; `truncated` says in a sentence why the trial's end is missing, if it is.
@@ -15,7 +15,7 @@ pub(super) fn result_set(reading: &Reading, truncated: Option<String>) -> Result
         outcome: outcome.word().to_owned(),
         outcome_evidence,
         findings: reading.findings.clone(),
-        entries: reading.results.iter().map(entry).collect(),
+        entries: reading.results.iter().map(entry).chain(reading.verdicts.iter().filter_map(verdict)).collect(),
         instants: reading
             .instants
             .iter()
@@ -30,8 +30,33 @@ pub(super) fn result_set(reading: &Reading, truncated: Option<String>) -> Result
             .absent
             .iter()
             .map(|absent| AbsentEntry { name: absent.name.clone(), reason: absent.reason.clone() })
+            .chain(reading.verdicts.iter().filter(|verdict| verdict.probability.is_none()).map(|verdict| AbsentEntry {
+                name: format!("{VERDICT_PREFIX}{}", verdict.name),
+                reason: verdict_sentence(verdict),
+            }))
             .collect(),
     }
+}
+
+/// Before the name of a result that is a verdict: its value is the probability that what was asked was kept.
+pub const VERDICT_PREFIX: &str = "verdict_";
+
+fn verdict_sentence(verdict: &Verdict) -> String {
+    format!("{}: {}: {}", verdict.decision.word(), verdict.asked, verdict.why)
+}
+
+fn verdict(verdict: &Verdict) -> Option<ResultEntry> {
+    let probability = verdict.probability?;
+    Some(ResultEntry {
+        name: format!("{VERDICT_PREFIX}{}", verdict.name),
+        value: probability,
+        unit: "1".to_owned(),
+        standard_uncertainty: 0.0,
+        low: probability,
+        high: probability,
+        method: verdict_sentence(verdict),
+        budget: Vec::new(),
+    })
 }
 
 fn entry(row: &crate::reading::ResultRow) -> ResultEntry {

@@ -5,6 +5,7 @@
 
 mod cord_service;
 mod derive;
+mod edges;
 mod error;
 mod keep;
 mod kept_samples;
@@ -19,6 +20,8 @@ mod value_pass;
 mod verify;
 
 pub use cord_service::{CordService, NotCounted, ServiceError, cord_service};
+pub use derive::VERDICT_PREFIX;
+pub use edges::edges_of;
 pub use error::SealError;
 pub use keep::{Keep, Kept, ReleaseError, kept, release};
 pub use list::{Listing, Summary, list};

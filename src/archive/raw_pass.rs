@@ -23,7 +23,7 @@ pub(super) struct DevicePass {
     layout: u16,
     clock: ClockSamples,
     /// Edges that become events; as many as there may be events.
-    edges: Vec<Edge>,
+    pub(super) edges: Vec<Edge>,
     n_more_edges: u64,
     pub(super) n_samples: u64,
     pub(super) n_missing: u64,

@@ -12,10 +12,12 @@ use jiff::civil::Date;
 
 use crate::calibration;
 use crate::journal::{Clocks, Disk, Item, JournalReader, SegmentOpen, TrialRange};
+use crate::reading::Beside;
 use crate::rig::Rig;
 use crate::trial::{Condition, Header, ResultSet, TrialFile, TrialWriter, text_sha256};
 
 use super::derive;
+use super::edges::edges_seen;
 use super::error::SealError;
 use super::keep::{Keep, needed};
 use super::player::{Told, play};
@@ -189,7 +191,9 @@ fn write(reader: &JournalReader, range: &TrialRange, ahead: &Ahead, path: &Path)
             play(reader, range, &mut |told: Told| values.take(&told))?;
             let for_reading = values.finish(&mut gathered.events);
             conditions(rig).iter().try_for_each(|condition| writer.add_condition(condition))?;
-            read(&mut writer, rig, range, day, for_reading, &mut gathered.events)?
+            let edges = edges_seen(&gathered.devices, &gathered.clocks, header.zero_host_ns);
+            let beside = Beside { edges, ..Beside::default() };
+            read(&mut writer, rig, range, day, (for_reading, beside), &mut gathered.events)?
         }
         Err(why) => unread(why),
     };
@@ -250,7 +254,7 @@ fn read(
     rig: &Rig,
     range: &TrialRange,
     day: Option<Date>,
-    for_reading: ForReading,
+    (for_reading, beside): (ForReading, Beside),
     events: &mut Events,
 ) -> Result<ResultSet, SealError> {
     if let Some(from_s) = for_reading.whole_from_s {
@@ -262,7 +266,7 @@ fn read(
         let text = format!("the trial is too long to be read whole: the reading sees it from {from_s:.1} s on");
         events.add(from_s, "seal", "seal", None, text);
     }
-    let mut reading = crate::reading::read(&for_reading.signals, rig);
+    let mut reading = crate::reading::read_beside(&for_reading.signals, &beside, rig);
     reading.findings.extend(calibration::doubts(rig, day));
     reading.findings.extend(for_reading.signals.iter().filter_map(|signal| calibration::out_of_range(rig, signal)));
     if let Some(motion) = &reading.motion {

@@ -3,6 +3,7 @@
 use std::path::{Path, PathBuf};
 
 use tautrail::calibration::Signal;
+use tautrail::reading::{Beside, Camera, EdgeSeen, Recorder, TableError};
 use tautrail::rig::{self, Rig, RigError};
 use tautrail::trial::{Header, TrialError, TrialFile};
 use thiserror::Error;
@@ -30,6 +31,61 @@ pub struct Measured {
     pub header: Header,
     pub signals: Vec<Signal>,
     pub rig: Rig,
+    /// Edges of digital inputs that the trial holds.
+    pub edges: Vec<EdgeSeen>,
+}
+
+/// Tables that were recorded beside the rig and are read with the trial.
+#[derive(Debug, Default, clap::Args)]
+pub struct BesideArgs {
+    /// Compare with a payload recorder's speeds: CSV with columns time_s, speed_mps and optionally u_speed_mps
+    #[arg(long, value_name = "CSV")]
+    recorder: Option<PathBuf>,
+    /// Compare with a high-speed camera: CSV with frame or time_s, and x_m or x_mm of a mark along the rail
+    #[arg(long, value_name = "CSV")]
+    camera: Option<PathBuf>,
+    /// Frames a second of the camera
+    #[arg(long, value_name = "HZ", requires = "camera")]
+    frame_rate: Option<f64>,
+    /// Frame in which the shuttle starts; without it the film is laid over the measured speeds
+    #[arg(long, value_name = "FRAME", requires = "camera")]
+    release_frame: Option<f64>,
+}
+
+impl BesideArgs {
+    /// Reads the tables that were named; the trial's own edges come along.
+    pub fn beside(&self, edges: Vec<EdgeSeen>) -> Result<Beside, BesideError> {
+        if let Some(rate_hz) = self.frame_rate.filter(|rate_hz| !(1.0..=1e6).contains(rate_hz)) {
+            return Err(BesideError::FrameRate { rate_hz });
+        }
+        let recorder = self.recorder.as_deref().map(|path| parsed(path, Recorder::parse)).transpose()?;
+        let film = |text: &str| Camera::parse(text, self.frame_rate, self.release_frame);
+        let camera = self.camera.as_deref().map(|path| parsed(path, film)).transpose()?;
+        Ok(Beside { edges, recorder, camera })
+    }
+}
+
+#[derive(Debug, Error)]
+pub enum BesideError {
+    #[error("{path}: the table can't be read: {source}")]
+    Unreadable { path: String, source: std::io::Error },
+    #[error("{path}: {source}")]
+    Table { path: String, source: TableError },
+    #[error("--frame-rate {rate_hz} is outside 1 to 1000000 frames a second")]
+    FrameRate { rate_hz: f64 },
+}
+
+/// A table larger than this is no table that a person exported.
+const TABLE_BYTES_MAX: u64 = 64 << 20;
+
+fn parsed<T>(path: &Path, parse: impl Fn(&str) -> Result<T, TableError>) -> Result<T, BesideError> {
+    let shown = || path.display().to_string();
+    let unreadable = |source| BesideError::Unreadable { path: shown(), source };
+    if std::fs::metadata(path).map_err(unreadable)?.len() > TABLE_BYTES_MAX {
+        return Err(BesideError::Table { path: shown(), source: TableError::TooLong });
+    }
+    let text = std::fs::read_to_string(path).map_err(unreadable)?;
+    parse(&text).map_err(|source| BesideError::Table { path: shown(), source })
 }
 
 /// Opens a trial; `rig_path` takes the place of the rig file that the trial carries.
@@ -49,5 +105,6 @@ pub fn open(trial_path: &Path, rig_path: Option<&PathBuf>) -> Result<Measured, M
         }
     };
     let signals = trial.signals().map_err(failed)?;
-    Ok(Measured { header: trial.header().clone(), signals, rig })
+    let edges = tautrail::archive::edges_of(&trial).map_err(failed)?;
+    Ok(Measured { header: trial.header().clone(), signals, rig, edges })
 }

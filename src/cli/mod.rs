@@ -7,6 +7,7 @@ mod ask;
 mod calibrate;
 mod check;
 mod close;
+mod compare;
 mod cord;
 mod daemon;
 mod feed_place;
@@ -19,6 +20,7 @@ mod recover;
 mod rehearse;
 mod replay;
 mod report;
+mod results_text;
 mod screen;
 mod seal_child;
 mod show;
@@ -72,6 +74,7 @@ enum Command {
     Report(report::Args),
     Read(read::Args),
     Replay(replay::Args),
+    Compare(compare::Args),
     #[command(hide = true)]
     SealChild(seal_child::Args),
     #[command(hide = true)]
@@ -100,6 +103,7 @@ impl Command {
             Self::Report(args) => report::run(args, screen),
             Self::Read(args) => read::run(args, screen),
             Self::Replay(args) => replay::run(args, screen),
+            Self::Compare(args) => compare::run(args, screen),
             Self::SealChild(args) => seal_child::run(args, screen),
             Self::VirtualRig(args) => virtual_rig::run(args),
         }

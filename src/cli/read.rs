@@ -3,9 +3,11 @@
 use std::path::PathBuf;
 
 use serde_json::json;
-use tautrail::reading::{Reading, ResultRow, read};
+use tautrail::reading::{Decision, Reading, ResultRow, read_beside};
+use tautrail::units::shown_unit;
 
-use super::measured::{Measured, open};
+use super::measured::{BesideArgs, Measured, open};
+use super::results_text::{instant_line, result_line};
 use super::screen::{Screen, Tone};
 use super::{CAUTION, Failure, Verdict};
 
@@ -20,6 +22,8 @@ pub struct Args {
     /// Use this rig file in place of the one the trial carries (masses, limits, plan; calibrations stay as sealed)
     #[arg(long)]
     rig: Option<PathBuf>,
+    #[command(flatten)]
+    beside: BesideArgs,
     /// Show what each uncertainty is made of, and how each number was obtained
     #[arg(long)]
     budget: bool,
@@ -29,6 +33,7 @@ const READ_HELP: &str = "\
 Examples:
   tautrail read trials/trial-000012-7f3a9c.h5
   tautrail read --budget trials/trial-000012-7f3a9c.h5          where each uncertainty comes from
+  tautrail read --camera film.csv --frame-rate 240 trials/trial-000012-7f3a9c.h5   240 frames a second: 4.17 ms a frame
   tautrail read --json trials/trial-000012-7f3a9c.h5 | jq '.results[] | select(.name == \"launch_speed\")'
 
 Intervals hold the value in 95 % of trials. A result that can't be had is listed as absent with the reason.
@@ -39,7 +44,8 @@ decide.";
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     let measured = open(&args.trial, args.rig.as_ref())?;
-    let reading = read(&measured.signals, &measured.rig);
+    let beside = args.beside.beside(measured.edges.clone())?;
+    let reading = read_beside(&measured.signals, &beside, &measured.rig);
     if screen.json {
         let mut value = serde_json::to_value(&reading)?;
         if let Some(object) = value.as_object_mut() {
@@ -67,35 +73,43 @@ fn print(args: &Args, measured: &Measured, reading: &Reading, screen: &Screen) {
     }
     screen.line(screen.toned("instants", Tone::Heading));
     for instant in &reading.instants {
-        let u_ms = 1e3 * instant.standard_uncertainty_s;
-        screen.line(format!("  {:<24} {:>11.5} s    u = {u_ms:.3} ms", instant.name, instant.time_s));
+        screen.line(instant_line(&instant.name, instant.time_s, instant.standard_uncertainty_s));
     }
-    screen.line(screen.toned("results, with 95 % interval", Tone::Heading));
+    screen.line(screen.toned("results, with 95 % interval (and what most of it comes from)", Tone::Heading));
     for row in &reading.results {
-        screen.line(result_line(row));
+        let interval = (row.low, row.high);
+        let line = result_line(&row.name, row.value, row.standard_uncertainty, interval, &row.unit);
+        screen.line(line + &dominant(row));
         if args.budget {
             print_budget(row, screen);
         }
     }
     for absent in &reading.absent {
-        screen.line(format!("  {:<24} absent: {}", absent.name, absent.reason));
+        screen.line(format!("  {:<26} absent: {}", absent.name, absent.reason));
     }
+    print_verdicts(&reading.verdicts, screen);
     if let Some(motion) = &reading.motion {
         screen.line(format!("motion from {}", motion.sensors));
     }
     screen.line(CAUTION);
 }
 
-/// Value and half-width with as many digits as the uncertainty deserves: two of its own.
-fn result_line(row: &ResultRow) -> String {
-    let decimals = decimals(row.standard_uncertainty);
-    let half_width = 0.5 * (row.high - row.low);
-    let unit = if row.unit == "1" { "" } else { row.unit.as_str() };
-    format!("  {:<24} {:>11.decimals$} ± {half_width:.decimals$} {unit}", row.name, row.value)
+/// What the uncertainty mostly comes from.
+fn dominant(row: &ResultRow) -> String {
+    row.dominant().map_or_else(String::new, |(source, part)| format!("   ({:.0} %: {source})", 100.0 * part))
 }
 
-fn decimals(standard_uncertainty: f64) -> usize {
-    if standard_uncertainty > 0.0 { (1.0 - standard_uncertainty.log10().floor()).clamp(0.0, 9.0) as usize } else { 4 }
+fn print_verdicts(verdicts: &[tautrail::reading::Verdict], screen: &Screen) {
+    screen.line(screen.toned("verdicts, for advice and record only", Tone::Heading));
+    for verdict in verdicts {
+        let tone = match verdict.decision {
+            Decision::Met => Tone::Good,
+            Decision::Missed => Tone::Bad,
+            Decision::NotDecidable => Tone::Caution,
+        };
+        let word = screen.toned(&format!("{:<13}", verdict.decision.word()), tone);
+        screen.line(format!("  {word} {}: {}", verdict.asked, verdict.why));
+    }
 }
 
 fn print_budget(row: &ResultRow, screen: &Screen) {
@@ -103,18 +117,11 @@ fn print_budget(row: &ResultRow, screen: &Screen) {
     let square: f64 = row.standard_uncertainty.powi(2);
     for term in &row.budget {
         let share = if square > 0.0 { 100.0 * term.standard_uncertainty.powi(2) / square } else { 0.0 };
-        screen.line(format!("      {share:>3.0} %  {:.2e} {}  {}", term.standard_uncertainty, row.unit, term.source));
-    }
-}
-
-#[cfg(test)]
-mod tests {
-    use super::decimals;
-
-    #[test]
-    fn a_value_is_shown_to_two_digits_of_its_uncertainty() {
-        for (u, wanted) in [(0.0123, 3), (0.99, 2), (1.0, 1), (12.0, 0), (0.000_04, 6), (0.0, 4)] {
-            assert_eq!(decimals(u), wanted, "{u}");
-        }
+        screen.line(format!(
+            "      {share:>3.0} %  {:.2e} {}  {}",
+            term.standard_uncertainty,
+            shown_unit(&row.unit),
+            term.source
+        ));
     }
 }

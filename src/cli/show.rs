@@ -3,8 +3,10 @@
 use std::path::PathBuf;
 
 use serde_json::{Value, json};
+use tautrail::archive::VERDICT_PREFIX;
 use tautrail::trial::{EventRow, Header, RawChannel, ResultSet, TrialError, TrialFile};
 
+use super::results_text::{instant_line, result_line, shown_time};
 use super::screen::{Screen, Tone};
 use super::{CAUTION, Failure, Verdict};
 
@@ -70,7 +72,7 @@ fn gather(trial: &TrialFile) -> Result<Shown, TrialError> {
 fn print(args: &Args, shown: &Shown, screen: &Screen) {
     let Header { trial_id, rig, started, started_quality, .. } = &shown.header;
     screen.line(screen.toned(&format!("trial {trial_id} on rig {rig}: {}", shown.results.outcome), Tone::Heading));
-    screen.line(format!("  started {started} (wall clock {started_quality})"));
+    screen.line(format!("  started {} (wall clock {started_quality})", shown_time(started)));
     shown.results.outcome_evidence.iter().for_each(|sentence| screen.line(format!("  {sentence}")));
     for finding in &shown.results.findings {
         screen.line(format!("  {} {finding}", screen.toned("look at:", Tone::Caution)));
@@ -94,18 +96,25 @@ fn print(args: &Args, shown: &Shown, screen: &Screen) {
 }
 
 fn print_results(results: &ResultSet, screen: &Screen) {
-    for entry in &results.entries {
-        let (name, value, unit) = (&entry.name, entry.value, &entry.unit);
-        let (low, high) = (entry.low, entry.high);
-        screen.line(format!("  {name:<34} {value:>12.5} {unit:<8} 95 %: {low:.5} to {high:.5}"));
-    }
-    for instant in &results.instants {
-        let (name, time_s, u_s) = (&instant.name, instant.time_s, instant.standard_uncertainty_s);
-        screen.line(format!("  {name:<34} {time_s:>12.5} s        u = {u_s:.5} s"));
+    let (verdicts, entries): (Vec<_>, Vec<_>) =
+        results.entries.iter().partition(|entry| entry.name.starts_with(VERDICT_PREFIX));
+    screen.line(screen.toned("results, with 95 % interval", Tone::Heading));
+    for entry in entries {
+        let interval = (entry.low, entry.high);
+        screen.line(result_line(&entry.name, entry.value, entry.standard_uncertainty, interval, &entry.unit));
     }
     for absent in &results.absent {
-        screen.line(format!("  {:<34} absent: {}", absent.name, absent.reason));
+        screen.line(format!("  {:<26} absent: {}", absent.name, absent.reason));
     }
+    screen.line(screen.toned("instants", Tone::Heading));
+    for instant in &results.instants {
+        screen.line(instant_line(&instant.name, instant.time_s, instant.standard_uncertainty_s));
+    }
+    screen.line(screen.toned("verdicts, for advice and record only", Tone::Heading));
+    for verdict in verdicts {
+        screen.line(format!("  {}", verdict.method));
+    }
+    screen.line(screen.toned("what was received", Tone::Heading));
 }
 
 fn as_json(args: &Args, shown: &Shown) -> Value {

@@ -5,9 +5,10 @@ use crate::units::STANDARD_GRAVITY_MPS2;
 
 use super::launch::Separation;
 use super::motion::Track;
-use super::peak::{CLASS, filtered_between};
+use super::peak::CLASS;
 use super::rows::{Book, Budget};
 use super::sensors::Sensors;
+use super::stretch::{Window, label};
 
 pub(super) fn report(
     sensors: &Sensors<'_>,
@@ -27,7 +28,7 @@ pub(super) fn report(
     if let Some((idx, evidence)) = &contact {
         book.instant("brake_contact", track.motion.time_s[*idx], 0.001, evidence.clone());
     }
-    peak_row(sensors, track, separation, rest_s, book);
+    peak_row(sensors, track, separation, rest_s, rig, book);
     match contact.filter(|_| track.has_position) {
         Some((idx, _)) => {
             let last = track.index_at(rest_s);
@@ -53,28 +54,36 @@ fn brake_contact(track: &Track, separation_s: f64, rig: &Rig) -> Option<(usize, 
     Some((idx, evidence))
 }
 
-fn peak_row(sensors: &Sensors<'_>, track: &Track, separation: Option<&Separation>, rest_s: f64, book: &mut Book) {
+fn peak_row(
+    sensors: &Sensors<'_>,
+    track: &Track,
+    separation: Option<&Separation>,
+    rest_s: f64,
+    rig: &Rig,
+    book: &mut Book,
+) {
     const NAME: &str = "arrest_peak_g";
-    let found = match (sensors.specific_force, separation) {
+    let window = match (sensors.specific_force, separation) {
         (None, _) => Err(sensors.why_not(Role::ShuttleSpecificForce)),
         (_, None) => Err("no separation was found".to_owned()),
-        (Some(signal), Some(separation)) => filtered_between(signal, (separation.time_s, rest_s)),
+        (Some(signal), Some(separation)) => Window::new(signal, track, (separation.time_s, rest_s), rig),
     };
-    match found {
-        Ok(filtered) => {
-            let least = filtered.least_mps2;
-            let value = (least - track.bias_mps2) / (1.0 + track.scale) / STANDARD_GRAVITY_MPS2;
+    match window.and_then(|window| Ok((window.filter(CLASS)?, window))) {
+        Ok((filter, window)) => {
+            let least = |values: &[f64]| values.iter().copied().fold(f64::INFINITY, f64::min);
+            let effect = window.effect(Some(&filter), &least);
+            let indicated = least(&window.filtered(Some(&filter))) - effect.excess;
+            let value = (indicated - track.bias_mps2) / (1.0 + track.scale) / STANDARD_GRAVITY_MPS2;
             let budget = Budget::default()
-                .with("scale", value * track.u_scale)
-                .with("bias", track.u_bias_mps2 / STANDARD_GRAVITY_MPS2)
-                .with("noise", filtered.noise_gain * track.noise_mps2 / STANDARD_GRAVITY_MPS2);
-            book.result(
-                NAME,
-                value,
-                "g",
-                budget,
-                format!("specific force along the rail at the shuttle, least in the run-out, CFC {CLASS}"),
+                .with("scale of the accelerometer", value * track.u_scale)
+                .with("bias of the accelerometer", track.u_bias_mps2 / STANDARD_GRAVITY_MPS2)
+                .with("noise", effect.deviation.hypot(0.5 * effect.excess) / STANDARD_GRAVITY_MPS2)
+                .with("bandwidth of the channel", effect.bandwidth / STANDARD_GRAVITY_MPS2);
+            let method = format!(
+                "specific force along the rail at the shuttle, least in the run-out; {}",
+                label(&window, CLASS)
             );
+            book.result(NAME, value, "g", budget, method);
         }
         Err(reason) => book.absent(NAME, reason),
     }

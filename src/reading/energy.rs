@@ -5,12 +5,16 @@
 
 use crate::rig::Rig;
 
+use super::cords::impedance_n_s_per_m;
 use super::launch::Separation;
 use super::motion::Track;
-use super::release::Release;
+use super::release::{LEVEL_FROM_S, LEVEL_TO_S, Release};
 use super::result::EnergyAudit;
 use super::rows::{Book, Budget};
 use super::tension::Hold;
+
+/// How well the cords' inertia is known, as a share of it.
+const INERTIA_SHARE: f64 = 0.3;
 
 pub(super) fn report(
     hold: &Hold,
@@ -20,7 +24,7 @@ pub(super) fn report(
     book: &mut Book,
 ) -> Option<EnergyAudit> {
     let Some(separation) = separation else {
-        for name in ["kinetic_energy", "energy_lost", "energy_share_kinetic"] {
+        for name in ["kinetic_energy", "potential_energy", "energy_lost", "energy_share_kinetic"] {
             book.absent(name, "no separation was found");
         }
         return None;
@@ -28,11 +32,14 @@ pub(super) fn report(
     let mass_kg = rig.moving_mass_kg();
     let u_mass_kg = rig.shuttle.mass_kg.standard_uncertainty.hypot(rig.payload.mass_kg.standard_uncertainty);
     let v = separation.speed_mps;
+    // With the place of separation in it, as the launch speed's own row has it.
+    let row = book.results.iter().find(|row| row.name == "launch_speed");
+    let u_speed_mps = row.map_or(separation.u_speed_mps, |row| row.standard_uncertainty);
     let kinetic_j = 0.5 * mass_kg * v * v;
     let kinetic = |sign: f64| {
         Budget::default()
             .with("masses of the rig file", sign * 0.5 * u_mass_kg * v * v)
-            .with("launch speed", mass_kg * v * separation.u_speed_mps)
+            .with("launch speed", mass_kg * v * u_speed_mps)
     };
     book.result(
         "kinetic_energy",
@@ -41,14 +48,24 @@ pub(super) fn report(
         kinetic(1.0),
         "½·m·v² of shuttle and payload at separation, masses of the rig file",
     );
+    let weight_n = mass_kg * gravity_along_mps2;
+    let potential_j = weight_n * (separation.x_m - rig.rail.zero_mark_x_m);
+    let height = Budget::default()
+        .with("masses of the rig file", u_mass_kg * gravity_along_mps2 * (separation.x_m - rig.rail.zero_mark_x_m))
+        .with("place", weight_n * separation.u_x_m);
+    book.result(
+        "potential_energy",
+        potential_j,
+        "J",
+        height,
+        "weight along the rail times the way from the zero mark to the separation",
+    );
     let Some((stored_j, u_stored_j)) = hold.work_j else {
         for name in ["energy_lost", "energy_share_kinetic"] {
             book.absent(name, "the work of the winch-back is not known");
         }
         return None;
     };
-    let weight_n = mass_kg * gravity_along_mps2;
-    let potential_j = weight_n * (separation.x_m - rig.rail.zero_mark_x_m);
     let lost_j = stored_j - kinetic_j - potential_j;
     let u_kinetic_j = kinetic(1.0).total();
     let budget = Budget::default()
@@ -66,7 +83,10 @@ pub(super) fn report(
     Some(EnergyAudit { stored_j, kinetic_j, potential_j, lost_j })
 }
 
-/// At the release the line's tension turns into acceleration: T + m·g·sin θ = m·f + friction, within the stiction band.
+/// At the release the line's tension turns into acceleration: T + m·g·sin θ = m·f + friction + Z·v, within the stiction
+/// band. The cords' ends differ by the cords' own inertia: until a strain wave has run to the anchor and back, a cord whose
+/// end moves at v pulls with F₀ − Z·v, Z = √(k·m) of the cord (wave impedance of a rod: K. F. Graff, "Wave Motion in
+/// Elastic Solids", 1975, section 2.1).
 ///
 /// The hold hides ± friction (the shuttle may hang on either side of it), so the difference is zero within it.
 pub(super) fn closure(hold: &Hold, release: &Release, track: &Track, rig: &Rig, book: &mut Book) {
@@ -79,7 +99,10 @@ pub(super) fn closure(hold: &Hold, release: &Release, track: &Track, rig: &Rig, 
     let started = (indicated - track.bias_mps2) / (1.0 + track.scale);
     let friction_n = rig.losses.friction_n;
     let weight_n = mass_kg * track.gravity_along_mps2;
-    let difference_n = tension_n + weight_n - mass_kg * started - friction_n.value;
+    let speed_mps = track.mean_speed_mps(release.time_s + LEVEL_FROM_S, release.time_s + LEVEL_TO_S);
+    let draw_m = hold.x_m.map_or(rig.plan.draw_m, |(x_m, _)| rig.draw_m(x_m));
+    let inertia_n = impedance_n_s_per_m(rig, draw_m) * speed_mps;
+    let difference_n = tension_n + weight_n - mass_kg * started - friction_n.value - inertia_n;
     let budget = Budget::default()
         .with("hold tension", u_tension_n)
         .with("masses of the rig file", u_mass_kg * (started - track.gravity_along_mps2))
@@ -87,8 +110,8 @@ pub(super) fn closure(hold: &Hold, release: &Release, track: &Track, rig: &Rig, 
         .with("friction", friction_n.standard_uncertainty)
         // Anywhere in ± friction: rectangular, GUM 4.3.7.
         .with("stiction band of the hold", friction_n.value / 3f64.sqrt())
-        // 3 to 10 ms after the release cords already move, and waves run in them.
-        .with("cord force lost in the first 10 ms", 0.02 * mass_kg * started);
+        // The wave starts with the hook's own opening, and the curve's slope is the card's, not the strained cord's.
+        .with("the cords' own inertia", INERTIA_SHARE * inertia_n);
     let u_n = budget.total();
     if difference_n.abs() > 3.0 * u_n {
         book.findings.push(format!(
@@ -96,5 +119,5 @@ pub(super) fn closure(hold: &Hold, release: &Release, track: &Track, rig: &Rig, 
             difference_n.abs() / u_n
         ));
     }
-    book.result(NAME, difference_n, "N", budget, "hold tension + weight along the rail − mass × specific force just after the release − friction; zero when they agree");
+    book.result(NAME, difference_n, "N", budget, format!("hold tension + weight along the rail − mass × specific force just after the release − friction − {inertia_n:.1} N of the cords' own inertia; zero when they agree"));
 }

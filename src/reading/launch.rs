@@ -151,11 +151,16 @@ pub(super) fn report(
         book.absent("separation_x", format!("the place needs an encoder: {}", sensors.why_not(Role::ShuttlePosition)));
     }
     let budget = speed_budget(found, track, sensors);
-    let airspeed = budget.clone();
-    let rail = if sensors.position.is_some() && sensors.specific_force.is_some() {
-        "ground frame, the rail's own movement is part of the smoothing"
-    } else {
-        "the rail's own movement is not seen by one sensor alone"
+    let airspeed = budget.clone().with("head wind", rig.details.settings.head_wind_mps);
+    let rail = match (sensors.position, sensors.specific_force) {
+        (Some(_), Some(_)) => "ground frame, the rail's own movement is part of the smoothing",
+        (None, _) => "ground frame, as the accelerometer is",
+        (Some(_), None) if track.unseen_rail_mps > 0.0 => {
+            "an encoder does not see the rail's own movement, so that of the rig file's rail_support is in the uncertainty"
+        }
+        (Some(_), None) => {
+            "the rail is taken to stand firm, as the rig file has it: an encoder does not see its movement"
+        }
     };
     let method = format!("speed along the rail at the loss of contact, smoothed from {by}; {rail}");
     book.result("launch_speed", found.speed_mps, "m/s", budget, method);
@@ -164,7 +169,11 @@ pub(super) fn report(
         found.speed_mps + rig.site.head_wind_mps,
         "m/s",
         airspeed,
-        "launch speed plus the rig file's head wind, whose own uncertainty is not stated there",
+        if rig.details.settings.head_wind_mps > 0.0 {
+            "launch speed plus the rig file's head wind with its uncertainty"
+        } else {
+            "launch speed plus the rig file's head wind, whose own uncertainty is not stated there"
+        },
     );
 }
 
@@ -184,4 +193,5 @@ fn speed_budget(found: &Separation, track: &Track, sensors: &Sensors<'_>) -> Bud
         .with("noise", noise)
         .with("place of separation", a_mps2 * found.u_time_s)
         .with("time axis", a_mps2 * time_s)
+        .with("movement of the rail, unseen", track.unseen_rail_mps)
 }

@@ -19,22 +19,14 @@ use nalgebra::{SMatrix, SVector};
 
 use crate::calibration::Signal;
 
+use super::apart;
+use super::dynamics::{
+    A, BIAS, Drive, ENCODER_SCALE, LINKS, N, RAIL_A, RAIL_V, RailModel, SCALE, V, X, process, transition,
+};
 use super::result::Motion;
 use super::sensors::limits;
 use super::series::{BIN_S, Binned, Stats, span, stats_between};
-use super::smoother::{Estimate, Filter, Transition};
-
-const N: usize = 8;
-const X: usize = 0;
-const V: usize = 1;
-const A: usize = 2;
-const BIAS: usize = 3;
-const SCALE: usize = 4;
-const ENCODER_SCALE: usize = 5;
-const RAIL_V: usize = 6;
-const RAIL_A: usize = 7;
-/// Entries of the transition beside the identity.
-const LINKS: usize = 7;
+use super::smoother::{Estimate, Filter};
 
 /// Samples closer than this belong to one point in time.
 const SAME_TIME_S: f64 = 2e-6;
@@ -53,11 +45,12 @@ const CLEAR_OF_LIMIT: f64 = 0.02;
 /// Pseudo-measurements of a standing shuttle.
 const STANDING_SPEED_MPS: f64 = 1e-3;
 const STANDING_ACCELERATION_MPS2: f64 = 0.05;
-/// Speed of the rail, as a standard deviation: looked for in the first pass, and the least in the second.
-const RAIL_FIRST_MPS: f64 = 0.1;
+/// Least speed of the rail in the second pass, as a standard deviation.
 const RAIL_LEAST_MPS: f64 = 5e-4;
-/// How fast the rail's speed may turn: about the angular frequency of a rail on its feet, 1/s.
-const RAIL_RATE_PER_S: f64 = 125.0;
+/// Accelerometer scale, over its calibration's uncertainty, from which the two sensors contradict each other.
+const STRAINED: f64 = 4.0;
+/// A rail that swings slower than this, as the rig file has it, can't be told from an accelerometer's scale in a stroke.
+const SLOW_RAIL_PER_S: f64 = 60.0;
 /// Over which the rail's movement in the first pass is looked at, either side.
 const RAIL_WINDOW_S: f64 = 0.02;
 /// Incline as built against the rig file, as a standard uncertainty: it shows as accelerometer bias.
@@ -77,6 +70,8 @@ pub(super) struct Setting {
     pub u_planned_x_m: f64,
     pub brake_x_m: f64,
     pub end_s: f64,
+    /// How the rail moves if the rig file is right about its feet.
+    pub rail: Option<RailModel>,
 }
 
 /// The smoothed motion and what the smoother learnt of the sensors.
@@ -103,6 +98,10 @@ pub(super) struct Track {
     pub u_specific_force_mps2: Vec<f64>,
     pub has_position: bool,
     pub has_specific_force: bool,
+    /// How far the two sensors contradict each other, over the accelerometer's calibration, where that parted them.
+    pub parted: Option<f64>,
+    /// The rail may move this fast, unseen: with the encoder alone, on feet that the rig file describes.
+    pub unseen_rail_mps: f64,
 }
 
 #[derive(Debug, Clone, Copy, Default)]
@@ -113,13 +112,6 @@ struct Node {
     specific_force: Option<f64>,
 }
 
-/// What drives the states at a node.
-#[derive(Debug, Clone, Copy)]
-struct Drive {
-    jerk_density: f64,
-    rail_mps: f64,
-}
-
 struct Smoothing<'a> {
     setting: &'a Setting,
     nodes: Vec<Node>,
@@ -128,10 +120,22 @@ struct Smoothing<'a> {
     rest_s: Option<f64>,
     /// Encoder and accelerometer: only both together show the rail's movement.
     sees_rail: bool,
+    rail: RailModel,
 }
 
 /// `None` when neither channel has samples around the release.
+///
+/// Both together where they agree within the accelerometer's calibration, else each for itself: [`apart`].
 pub(super) fn track(position: Option<&Signal>, force: Option<&Signal>, setting: &Setting) -> Option<Track> {
+    let joint = together(position, force, setting)?;
+    let (Some(position), Some(force)) = (position, force) else { return Some(joint) };
+    let strain = joint.scale.abs() / force.scale_relative_uncertainty.max(1e-6);
+    let slow = setting.rail.is_some_and(|rail| rail.rate_per_s < SLOW_RAIL_PER_S);
+    if strain > STRAINED || slow { apart::track(position, force, strain, setting).or(Some(joint)) } else { Some(joint) }
+}
+
+/// One smoother over what there is.
+pub(super) fn together(position: Option<&Signal>, force: Option<&Signal>, setting: &Setting) -> Option<Track> {
     let rest_s = rest(position, force, setting);
     let from_s = setting.release_s - HOLD_S;
     let to_s = rest_s.map_or(setting.release_s + LONGEST_S, |rest_s| rest_s + REST_S).min(setting.end_s + 1e-9);
@@ -144,7 +148,9 @@ pub(super) fn track(position: Option<&Signal>, force: Option<&Signal>, setting: 
     let noise_mps2 = standing.map_or(floor, |stats: Stats| stats.deviation.max(floor)).max(1e-6);
     let prior = prior(position, force, &nodes, setting);
     let sees_rail = position.is_some() && force.is_some();
-    let smoothing = Smoothing { setting, nodes, prior, noise_variance: noise_mps2 * noise_mps2, rest_s, sees_rail };
+    let noise_variance = noise_mps2 * noise_mps2;
+    let rail = RailModel::ON_FEET;
+    let smoothing = Smoothing { setting, nodes, prior, noise_variance, rest_s, sees_rail, rail };
     let first = smoothing.run(None).0;
     let drives = smoothing.drives(&first, force.is_some());
     let (smoothed, consistency) = smoothing.run(Some(&drives));
@@ -161,7 +167,8 @@ impl Smoothing<'_> {
             if idx > 0 {
                 let dt_s = node.time_s - last_s;
                 let drive = drives.map_or_else(|| self.first_drive(node), |drives| drives[idx]);
-                filter.predict(transition(dt_s), &process(dt_s, &drive));
+                let rate_per_s = self.rail.rate_per_s;
+                filter.predict(transition(dt_s, rate_per_s), &process(dt_s, &drive, rate_per_s));
             }
             last_s = node.time_s;
             if let Some((z, variance)) = node.position {
@@ -172,16 +179,20 @@ impl Smoothing<'_> {
                 }
             }
             self.update_force(&mut filter, node);
-            if self.stands(node.time_s) {
-                filter.update(unit(V), 0.0, STANDING_SPEED_MPS.powi(2));
-                filter.update(unit(A), 0.0, STANDING_ACCELERATION_MPS2.powi(2));
-                filter.update(unit(RAIL_V), 0.0, STANDING_SPEED_MPS.powi(2));
-                filter.update(unit(RAIL_A), 0.0, STANDING_ACCELERATION_MPS2.powi(2));
-            }
+            self.update_standing(&mut filter, node);
             filter.mark();
         }
         let smoothed = if drives.is_some() { filter.smooth() } else { filter.smooth_states() };
         (smoothed, if n > 0 { sum / f64::from(n) } else { 1.0 })
+    }
+
+    fn update_standing(&self, filter: &mut Filter<N, LINKS>, node: &Node) {
+        if self.stands(node.time_s) {
+            filter.update(unit(V), 0.0, STANDING_SPEED_MPS.powi(2));
+            filter.update(unit(A), 0.0, STANDING_ACCELERATION_MPS2.powi(2));
+            filter.update(unit(RAIL_V), 0.0, STANDING_SPEED_MPS.powi(2));
+            filter.update(unit(RAIL_A), 0.0, STANDING_ACCELERATION_MPS2.powi(2));
+        }
     }
 
     /// About the prediction: (1 + ŝ)·(a + c) + b + f̂·s = z − (1 + ŝ)·g sin θ + f̂·ŝ.
@@ -220,7 +231,7 @@ impl Smoothing<'_> {
     }
 
     fn first_drive(&self, node: &Node) -> Drive {
-        let rail_mps = if self.sees_rail && !self.stands(node.time_s) { RAIL_FIRST_MPS } else { 0.0 };
+        let rail_mps = if self.sees_rail && !self.stands(node.time_s) { self.rail.speed_mps } else { 0.0 };
         Drive { jerk_density: self.first_jerk(node), rail_mps }
     }
 
@@ -293,6 +304,12 @@ impl Smoothing<'_> {
             u_specific_force_mps2: smoothed.iter().map(|e| u_sum(e, A, RAIL_A, inflate)).collect(),
             has_position: position.is_some(),
             has_specific_force: force.is_some(),
+            parted: None,
+            unseen_rail_mps: match (force, self.setting.rail) {
+                // Anywhere in a swing: its speed's root mean square.
+                (None, Some(rail)) => rail.speed_mps / 2f64.sqrt(),
+                _ => 0.0,
+            },
         }
     }
 }
@@ -313,49 +330,6 @@ fn position_row(z: f64) -> SVector<f64, N> {
     let mut row = unit(X);
     row[ENCODER_SCALE] = z;
     row
-}
-
-/// Rail: a process that forgets within 1/λ, with a steady derivative (Matérn 3/2; Hartikainen and Särkkä, "Kalman
-/// filtering and smoothing solutions to temporal Gaussian process regression models", 2010).
-fn transition(dt_s: f64) -> Transition<LINKS> {
-    let turn = RAIL_RATE_PER_S * dt_s;
-    let keep = (-turn).exp();
-    Transition([
-        (X, V, dt_s),
-        (X, A, 0.5 * dt_s * dt_s),
-        (V, A, dt_s),
-        (RAIL_V, RAIL_V, keep * (1.0 + turn) - 1.0),
-        (RAIL_V, RAIL_A, keep * dt_s),
-        (RAIL_A, RAIL_V, -keep * RAIL_RATE_PER_S * turn),
-        (RAIL_A, RAIL_A, keep * (1.0 - turn) - 1.0),
-    ])
-}
-
-/// White jerk of a power density, integrated over a step (Bar-Shalom, Li and Kirubarajan, "Estimation with
-/// Applications to Tracking and Navigation", 2001, eq. 6.2.3-8); the rail keeps its variance: Q = P∞ − F·P∞·Fᵀ.
-fn process(dt_s: f64, drive: &Drive) -> SMatrix<f64, N, N> {
-    let mut q = SMatrix::zeros();
-    let (d, density) = (dt_s, drive.jerk_density);
-    q[(X, X)] = density * d.powi(5) / 20.0;
-    q[(X, V)] = density * d.powi(4) / 8.0;
-    q[(X, A)] = density * d.powi(3) / 6.0;
-    q[(V, V)] = density * d.powi(3) / 3.0;
-    q[(V, A)] = density * d.powi(2) / 2.0;
-    q[(A, A)] = density * d;
-    q[(V, X)] = q[(X, V)];
-    q[(A, X)] = q[(X, A)];
-    q[(A, V)] = q[(V, A)];
-    let turn = RAIL_RATE_PER_S * d;
-    let keep = (-turn).exp();
-    let (f11, f12) = (keep * (1.0 + turn), keep * d);
-    let (f21, f22) = (-keep * RAIL_RATE_PER_S * turn, keep * (1.0 - turn));
-    let square = drive.rail_mps * drive.rail_mps;
-    let square_a = square * RAIL_RATE_PER_S * RAIL_RATE_PER_S;
-    q[(RAIL_V, RAIL_V)] = (square - f11 * f11 * square - f12 * f12 * square_a).max(0.0);
-    q[(RAIL_A, RAIL_A)] = (square_a - f21 * f21 * square - f22 * f22 * square_a).max(0.0);
-    q[(RAIL_V, RAIL_A)] = -f11 * f21 * square - f12 * f22 * square_a;
-    q[(RAIL_A, RAIL_V)] = q[(RAIL_V, RAIL_A)];
-    q
 }
 
 /// Root mean square of the rail's speed around each node, as a first pass saw it.
@@ -482,6 +456,12 @@ fn rest(position: Option<&Signal>, force: Option<&Signal>, setting: &Setting) ->
 }
 
 impl Track {
+    /// Mean speed in the rail's frame between two instants; 0 where no node lies there.
+    pub(super) fn mean_speed_mps(&self, from_s: f64, to_s: f64) -> f64 {
+        let between = &self.motion.v_mps[self.index_at(from_s)..self.index_at(to_s)];
+        if between.is_empty() { 0.0 } else { between.iter().sum::<f64>() / between.len() as f64 }
+    }
+
     /// Index of the first node at or after an instant.
     pub(super) fn index_at(&self, time_s: f64) -> usize {
         self.motion.time_s.partition_point(|&t| t < time_s).min(self.motion.time_s.len().saturating_sub(1))

@@ -104,6 +104,10 @@ impl Evidence<'_> {
             Some(rest_s) => format!("the shuttle moved {advance_m:.2} m and stood at {rest_s:.2} s"),
             None => format!("the record ends at {:.2} s before the shuttle stood", self.phases.end_s),
         });
+        if let Some(alone) = &self.stroke.alone {
+            words.push(alone.clone());
+            return if finished { Outcome::ShuttleAlone } else { Outcome::Truncated };
+        }
         let Some(separation) = self.stroke.separation else {
             let pushed = "the payload was pushed all the way: no loss of contact was seen";
             words.push(self.stroke.together.clone().unwrap_or_else(|| pushed.to_owned()));

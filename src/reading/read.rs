@@ -2,13 +2,16 @@
 
 use crate::calibration::Signal;
 use crate::rig::local_gravity_mps2;
-use crate::rig::{Rig, Role};
+use crate::rig::{InputMeaning, Rig, Role};
 
 use super::arrest;
+use super::beside::{Beside, EdgeSeen};
+use super::cords;
+use super::dynamics::RailModel;
 use super::energy;
-
 use super::launch::{self, Separation};
 use super::motion::{self, Setting, Track};
+use super::others;
 use super::outcome::{self, Evidence};
 use super::peak;
 use super::phases::Phases;
@@ -16,8 +19,10 @@ use super::release::{self, Release};
 use super::result::{Outcome, Reading};
 use super::rows::Book;
 use super::sensors::Sensors;
+use super::slips::{Repaired, repaired};
 use super::stroke::{self, Step};
 use super::tension;
+use super::verdict::verdicts;
 
 /// How well the nominal place of the drawn shuttle is known without an encoder.
 const U_PLANNED_X_M: f64 = 0.05;
@@ -26,12 +31,38 @@ const U_PLANNED_X_M: f64 = 0.05;
 ///
 /// Never fails: what cannot be had is in [`Reading::absent`] with its reason.
 pub fn read(signals: &[Signal], rig: &Rig) -> Reading {
-    let mut sensors = Sensors::new(signals, rig);
+    read_beside(signals, &Beside::default(), rig)
+}
+
+/// The same with what was recorded beside the channels: the release input takes part in the release instant, gates,
+/// recorder and camera are compared with the motion.
+pub fn read_beside(signals: &[Signal], beside: &Beside, rig: &Rig) -> Reading {
     let mut book = Book::default();
-    let Some(phases) = Phases::find(&sensors, rig) else { return nothing(&sensors, book) };
-    let release = phases
-        .release_hint_s
-        .and_then(|hint_s| release::find(hint_s, sensors.line, sensors.specific_force, sensors.position, &mut book));
+    let repairs: Vec<Option<Repaired>> = signals.iter().map(repaired).collect();
+    if repairs.iter().all(Option::is_none) {
+        return read_whole(signals, beside, rig, book);
+    }
+    let whole: Vec<Signal> = signals
+        .iter()
+        .zip(repairs)
+        .map(|(signal, repair)| {
+            repair.map_or_else(
+                || signal.clone(),
+                |Repaired { signal, findings }| {
+                    book.findings.extend(findings);
+                    signal
+                },
+            )
+        })
+        .collect();
+    read_whole(&whole, beside, rig, book)
+}
+
+fn read_whole(signals: &[Signal], beside: &Beside, rig: &Rig, mut book: Book) -> Reading {
+    let mut sensors = Sensors::new(signals, rig);
+    let Some(phases) = Phases::find(&sensors, rig) else { return nothing(&sensors, rig, book) };
+    let release =
+        phases.release_hint_s.and_then(|hint_s| release::find(hint_s, &sensors, release_edges(beside, rig), &mut book));
     if let Some(release) = &release {
         refuse_reversed_accelerometer(&mut sensors, release);
     }
@@ -41,17 +72,21 @@ pub fn read(signals: &[Signal], rig: &Rig) -> Reading {
     phase_instants(&phases, &mut book);
     let hold = tension::report(&sensors, &phases, release.as_ref(), rig, &mut book);
     let gravity_along_mps2 = gravity_along_mps2(rig);
-    let track = release.as_ref().and_then(|release| smoothed(&sensors, &phases, release, rig));
-    let rows = release.as_ref().map(|release| stroke_rows(&sensors, track.as_ref(), release, rig, &mut book));
+    cords::report(&sensors, &phases, &hold, gravity_along_mps2, rig, &mut book);
+    let track = release.as_ref().and_then(|release| smoothed(&sensors, &phases, release, &hold, rig));
+    let rows = release.as_ref().map(|release| stroke_rows(&sensors, track.as_ref(), release, &hold, rig, &mut book));
     let stroke = rows.unwrap_or_default();
     let separation = stroke.separation;
     if release.is_none() {
-        without_release(&mut book);
+        without_release(rig, &mut book);
     }
     let energy = energy::report(&hold, separation.as_ref(), gravity_along_mps2, rig, &mut book);
     if let (Some(release), Some(track)) = (&release, &track) {
         energy::closure(&hold, release, track, rig, &mut book);
         arrest::report(&sensors, track, separation.as_ref(), rig, &mut book);
+    }
+    if let (Some(release), Some(track), Some(separation)) = (&release, &track, &separation) {
+        others::report(beside, track, (release.time_s, release.u_s), separation, rig, &mut book);
     }
     let (outcome, outcome_evidence) = outcome::decide(&Evidence {
         sensors: &sensors,
@@ -62,6 +97,7 @@ pub fn read(signals: &[Signal], rig: &Rig) -> Reading {
         hold: &hold,
         rig,
     });
+    let verdicts = verdicts(rig, &book);
     book.instants.sort_by(|a, b| a.time_s.total_cmp(&b.time_s));
     Reading {
         outcome,
@@ -69,10 +105,19 @@ pub fn read(signals: &[Signal], rig: &Rig) -> Reading {
         instants: book.instants,
         results: book.results,
         absent: book.absent,
+        verdicts,
         findings: book.findings,
         motion: track.map(|track| track.motion),
         energy,
     }
+}
+
+/// Falling edges of the release input.
+fn release_edges<'a>(beside: &'a Beside, rig: &'a Rig) -> impl Iterator<Item = &'a EdgeSeen> {
+    let inputs = rig.details.inputs.iter().filter(|input| input.meaning == InputMeaning::Release);
+    inputs.flat_map(|input| {
+        beside.edges.iter().filter(|edge| edge.device == input.device && edge.input == input.number && !edge.rising)
+    })
 }
 
 /// g·sin θ at the site.
@@ -80,16 +125,17 @@ fn gravity_along_mps2(rig: &Rig) -> f64 {
     local_gravity_mps2(rig.site.latitude_rad, rig.site.altitude_m) * rig.rail.incline_rad.sin()
 }
 
-fn nothing(sensors: &Sensors<'_>, mut book: Book) -> Reading {
-    for role in Role::ALL {
+fn nothing(sensors: &Sensors<'_>, rig: &Rig, mut book: Book) -> Reading {
+    for role in Role::ALL.into_iter().filter(|role| !role.is_extra()) {
         book.findings.push(sensors.why_not(role));
     }
-    without_release(&mut book);
+    without_release(rig, &mut book);
     Reading {
         outcome: Outcome::Truncated,
         outcome_evidence: vec!["no channel holds a usable sample".to_owned()],
         instants: Vec::new(),
         results: Vec::new(),
+        verdicts: verdicts(rig, &book),
         absent: book.absent,
         findings: book.findings,
         motion: None,
@@ -114,7 +160,13 @@ fn phase_instants(phases: &Phases, book: &mut Book) {
     }
 }
 
-fn smoothed(sensors: &Sensors<'_>, phases: &Phases, release: &Release, rig: &Rig) -> Option<Track> {
+fn smoothed(
+    sensors: &Sensors<'_>,
+    phases: &Phases,
+    release: &Release,
+    hold: &tension::Hold,
+    rig: &Rig,
+) -> Option<Track> {
     let setting = Setting {
         release_s: release.time_s,
         u_release_s: release.u_s,
@@ -124,8 +176,20 @@ fn smoothed(sensors: &Sensors<'_>, phases: &Phases, release: &Release, rig: &Rig
         u_planned_x_m: U_PLANNED_X_M,
         brake_x_m: rig.rail.brake_x_m,
         end_s: phases.end_s,
+        rail: rail_of(rig, hold),
     };
     motion::track(sensors.position, sensors.specific_force, &setting)
+}
+
+/// The rail on its feet, hit by the cords' force at once: it swings with √(k/m) and reaches F/√(k·m) (any mechanics text).
+/// `None` where the rig file calls it firm.
+fn rail_of(rig: &Rig, hold: &tension::Hold) -> Option<RailModel> {
+    let support = rig.details.rail_support?;
+    let (m_kg, k_n_per_m) = (support.mass_kg.value, support.stiffness_n_per_m.value);
+    let force_n = hold.tension_n.map_or(rig.limits.tension_n, |(tension_n, _)| tension_n);
+    let speed_mps = force_n / (k_n_per_m * m_kg).sqrt();
+    let rate_per_s = (k_n_per_m / m_kg).sqrt();
+    (speed_mps.is_finite() && rate_per_s > 0.0).then_some(RailModel { rate_per_s, speed_mps })
 }
 
 /// What the power stroke showed.
@@ -135,17 +199,26 @@ pub(super) struct Stroke {
     pub step: Option<Step>,
     /// Why the payload is taken to have stayed on the shuttle.
     pub together: Option<String>,
+    /// Why there is taken to have been no payload.
+    pub alone: Option<String>,
 }
 
 /// Separation and all that hangs on it.
-fn stroke_rows(sensors: &Sensors<'_>, track: Option<&Track>, release: &Release, rig: &Rig, book: &mut Book) -> Stroke {
+fn stroke_rows(
+    sensors: &Sensors<'_>,
+    track: Option<&Track>,
+    release: &Release,
+    hold: &tension::Hold,
+    rig: &Rig,
+    book: &mut Book,
+) -> Stroke {
     let Some(track) = track else {
         let reason = format!(
             "needs an encoder or an accelerometer: {}; {}",
             sensors.why_not(Role::ShuttlePosition),
             sensors.why_not(Role::ShuttleSpecificForce)
         );
-        motion_absent(&reason, book);
+        motion_absent(&reason, rig, book);
         return Stroke::default();
     };
     if track.consistency > MISFIT {
@@ -154,29 +227,38 @@ fn stroke_rows(sensors: &Sensors<'_>, track: Option<&Track>, release: &Release, 
             track.consistency.sqrt()
         ));
     }
+    if let Some(strain) = track.parted {
+        book.findings.push(format!(
+            "encoder and accelerometer agree only with an accelerometer scale {strain:.1} times off what its calibration allows, or the rig file's rail is slow: the rail moved under the encoder, so the speed against the ground is the accelerometer's alone"
+        ));
+    }
     peak::report_sensor(track, book);
+    if let Some(alone) = stroke::alone(hold, release, track, rig) {
+        motion_absent(&alone, rig, book);
+        return Stroke { alone: Some(alone), ..Stroke::default() };
+    }
     let crossing = match launch::find(track, release.time_s, rig) {
         Ok(crossing) => crossing,
         Err(reason) => {
-            motion_absent(&reason, book);
+            motion_absent(&reason, rig, book);
             return Stroke::default();
         }
     };
-    let step = stroke::step(track, release.time_s, crossing.time_s);
+    let step = stroke::step(track, sensors.specific_force, release.time_s, crossing.time_s);
     let (separation, evidence) = match step.filter(Step::is_up) {
         Some(step) => (launch::at(track, step.time_s, U_STEP_S), left_early(&step)),
         None => (crossing, launch::evidence(&crossing, rig)),
     };
-    peak::report(sensors, track, (release.time_s, separation.time_s), rig, book);
+    peak::report(sensors, track, (release.time_s, release.u_s), separation.time_s, rig, book);
     if let Some(together) = stroke::coasted_together(track, &crossing, rig).filter(|_| !step.is_some_and(|s| s.is_up()))
     {
         for name in SEPARATION_NAMES {
             book.absent(name, together.clone());
         }
-        return Stroke { separation: None, step, together: Some(together) };
+        return Stroke { step, together: Some(together), ..Stroke::default() };
     }
     launch::report(&separation, &evidence, track, sensors, rig, book);
-    Stroke { separation: Some(separation), step, together: None }
+    Stroke { separation: Some(separation), step, ..Stroke::default() }
 }
 
 /// How well the instant of a step is known.
@@ -194,16 +276,19 @@ const MISFIT: f64 = 9.0;
 
 const SEPARATION_NAMES: [&str; 3] = ["launch_speed", "airspeed_at_separation", "separation_x"];
 
-fn motion_absent(reason: &str, book: &mut Book) {
-    for name in SEPARATION_NAMES.into_iter().chain(peak::NAMES) {
+fn motion_absent(reason: &str, rig: &Rig, book: &mut Book) {
+    for name in SEPARATION_NAMES {
         book.absent(name, reason);
+    }
+    for name in peak::names(rig) {
+        book.absent(&name, reason);
     }
 }
 
-fn without_release(book: &mut Book) {
+fn without_release(rig: &Rig, book: &mut Book) {
     const REASON: &str = "no release was found";
     book.absent("release_time", REASON);
-    motion_absent(REASON, book);
+    motion_absent(REASON, rig, book);
     for name in ["closure_force", "arrest_peak_g", "arrest_distance"] {
         book.absent(name, REASON);
     }

@@ -7,16 +7,25 @@
 
 use crate::calibration::Signal;
 
+use super::beside::EdgeSeen;
 use super::rows::{Book, Budget};
+use super::sensors::Sensors;
 use super::series::{Stats, span, stats_between};
 
-/// Square of the disagreement, over its variance, that is not put down to chance (95 %, one degree of freedom).
-const CHI_SQUARE_95: f64 = 3.841;
+/// Sum of squared disagreements over their variances that is not put down to chance (95 %, one and two degrees of freedom:
+/// any table of chi-square quantiles).
+const CHI_SQUARE_95: [f64; 2] = [3.841, 5.991];
+/// How far from the other sensors an edge of the release input may lie and still be this release's.
+const EDGE_WITHIN_S: f64 = 0.1;
 /// Distance between the encoder's extrapolated start and the other sensors that is worth a word.
 const ENCODER_CHECK_S: f64 = 0.003;
 /// Where the extrapolation of the encoder to its start looks: metres after the start.
 const ENCODER_FROM_M: f64 = 0.003;
 const ENCODER_TO_M: f64 = 0.05;
+
+/// After the release, where the level that the specific force steps to is looked at.
+pub(super) const LEVEL_FROM_S: f64 = 0.003;
+pub(super) const LEVEL_TO_S: f64 = 0.010;
 
 #[derive(Debug, Clone, PartialEq)]
 pub(super) struct Release {
@@ -36,13 +45,13 @@ struct Seen {
     budget: Budget,
 }
 
-pub(super) fn find(
+pub(super) fn find<'a>(
     hint_s: f64,
-    line: Option<&Signal>,
-    specific_force: Option<&Signal>,
-    position: Option<&Signal>,
+    sensors: &Sensors<'_>,
+    edges: impl Iterator<Item = &'a EdgeSeen>,
     book: &mut Book,
 ) -> Option<Release> {
+    let (line, specific_force, position) = (sensors.line, sensors.specific_force, sensors.position);
     let free_line = line.and_then(|line| stats_between(line, hint_s + 0.15, hint_s + 0.9));
     let standing = specific_force.and_then(|signal| stats_between(signal, hint_s - 0.3, hint_s - 0.03));
     let by_line = line.and_then(|line| seen_by_line(line, hint_s, free_line.map_or(0.0, |stats| stats.mean)));
@@ -50,7 +59,8 @@ pub(super) fn find(
     let step = specific_force.zip(standing).and_then(|(signal, standing)| seen_by_force(signal, near_s, standing));
     let started_force_mps2 = step.as_ref().map(|(_, level)| *level);
     let by_encoder = position.and_then(|position| seen_by_encoder(position, near_s));
-    let mut seen: Vec<Seen> = by_line.into_iter().chain(step.map(|(seen, _)| seen)).collect();
+    let by_edge = seen_by_edge(edges, near_s);
+    let mut seen: Vec<Seen> = by_line.into_iter().chain(step.map(|(seen, _)| seen)).chain(by_edge).collect();
     if seen.is_empty() {
         seen.extend(by_encoder.clone());
     }
@@ -75,15 +85,15 @@ fn fuse(seen: &[Seen], book: &mut Book) -> Option<(f64, f64)> {
     let chi_square: f64 = seen.iter().map(|one| weight(one) * (one.time_s - time_s).powi(2)).sum();
     let mut u_s = total.sqrt().recip();
     let mut budget = Budget::default().with("fused sensors", u_s);
-    if let [a, b] = seen
-        && chi_square > CHI_SQUARE_95
-    {
+    let bound = CHI_SQUARE_95[seen.len().saturating_sub(2).min(1)];
+    if seen.len() > 1 && chi_square > bound {
+        let (a, b) = furthest_apart(seen);
         book.findings.push(format!(
             "{} and {} put the release {:.2} ms apart, {:.1} times what their clocks and noise allow: look for a wrong clock or a wire",
             a.by,
             b.by,
             1e3 * (a.time_s - b.time_s).abs(),
-            chi_square.sqrt()
+            (a.time_s - b.time_s).abs() / a.budget.total().hypot(b.budget.total())
         ));
         let half_apart_s = 0.5 * (a.time_s - b.time_s).abs();
         budget = budget.with("disagreement of the sensors", half_apart_s);
@@ -100,9 +110,24 @@ fn fuse(seen: &[Seen], book: &mut Book) -> Option<(f64, f64)> {
         time_s,
         "s",
         budget,
-        format!("line below half its hold tension, and half of the step in specific force: {evidence}"),
+        format!("line below half its hold tension, half of the step in specific force, falling edge of the release input: {evidence}"),
     );
     Some((time_s, u_s))
+}
+
+/// Earliest and latest.
+fn furthest_apart(seen: &[Seen]) -> (&Seen, &Seen) {
+    seen.iter().fold((&seen[0], &seen[0]), |(first, last), one| {
+        (if one.time_s < first.time_s { one } else { first }, if one.time_s > last.time_s { one } else { last })
+    })
+}
+
+/// The falling edge of the release input nearest to where the other sensors put it.
+fn seen_by_edge<'a>(edges: impl Iterator<Item = &'a EdgeSeen>, near_s: f64) -> Option<Seen> {
+    let away_s = |edge: &EdgeSeen| (edge.time_s - near_s).abs();
+    let edge = edges.filter(|edge| away_s(edge) < EDGE_WITHIN_S).min_by(|a, b| away_s(a).total_cmp(&away_s(b)))?;
+    let budget = Budget::default().with("time axis", edge.time_uncertainty_s);
+    Some(Seen { by: "release input", time_s: edge.time_s, budget })
 }
 
 /// First instant after which the signal stays past a level, between samples by straight line.
@@ -117,11 +142,17 @@ fn crossing(times_s: &[f64], values: &[f64], past: impl Fn(f64) -> bool, level: 
 }
 
 /// Shares that a threshold crossing has in common: the clock, the sampling step, noise on a finite slope.
-fn crossing_budget(signal: &Signal, step_s: f64, noise_s: f64) -> Budget {
-    // A front faster than the sampling lies anywhere in the step: rectangular distribution, GUM 4.3.7.
+///
+/// A front faster than the sampling lies anywhere in the step: rectangular distribution, GUM 4.3.7. A slower one is
+/// followed by the samples: the straight line between two of them errs by the front's bend, which at the half of a
+/// cosine-shaped front of length T is (π·h/4T)²·h at most, falling with (h/T)². A channel's bandwidth makes every front
+/// last 0.35 over it at least (rise time of a low pass).
+fn crossing_budget(signal: &Signal, step_s: f64, front_s: f64, noise_s: f64) -> Budget {
+    let front_s = front_s.max(signal.bandwidth_hz.map_or(0.0, |hz| 0.35 / hz));
+    let followed = (step_s / front_s).powi(2).min(1.0);
     Budget::default()
         .with("time axis", signal.time_uncertainty_s)
-        .with("sampling step", step_s / 12f64.sqrt())
+        .with("sampling step", followed * step_s / 12f64.sqrt())
         .with("noise", noise_s)
         .with("bandwidth", signal.bandwidth_hz.map_or(0.0, |hz| 0.1 / (std::f64::consts::TAU * hz)))
 }
@@ -134,7 +165,7 @@ fn seen_by_line(line: &Signal, hint_s: f64, free_n: f64) -> Option<Seen> {
     let (time_s, step_s) = crossing(times_s, values, |value| value < half_n, half_n)?;
     let fall_s = fall_time_s(times_s, values, time_s, held.mean - free_n);
     let noise_s = held.deviation / (held.mean - free_n).abs() * fall_s;
-    Some(Seen { by: "release line", time_s, budget: crossing_budget(line, step_s, noise_s) })
+    Some(Seen { by: "release line", time_s, budget: crossing_budget(line, step_s, fall_s, noise_s) })
 }
 
 /// How long a full step would take at the slope around the crossing.
@@ -149,8 +180,6 @@ fn fall_time_s(times_s: &[f64], values: &[f64], at_s: f64, full_step: f64) -> f6
 
 /// The step in specific force, and the level it reaches.
 fn seen_by_force(signal: &Signal, near_s: f64, standing: Stats) -> Option<(Seen, f64)> {
-    const LEVEL_FROM_S: f64 = 0.003;
-    const LEVEL_TO_S: f64 = 0.010;
     let window = span(signal, near_s - 0.05, near_s + 0.05);
     let (times_s, values) = (&signal.time_s[window.clone()], &signal.value[window]);
     // Twice: the level is looked at after the crossing, wherever the first guess lay.
@@ -171,7 +200,7 @@ fn seen_by_force(signal: &Signal, near_s: f64, standing: Stats) -> Option<(Seen,
     // The level itself is known to a few percent only: waves run in the cords.
     let level_s = 0.03 * rise_s;
     let noise_s = (standing.deviation / (level - standing.mean) * rise_s).hypot(level_s);
-    let budget = crossing_budget(signal, step_s, noise_s);
+    let budget = crossing_budget(signal, step_s, rise_s, noise_s);
     Some((Seen { by: "accelerometer", time_s, budget }, level))
 }
 

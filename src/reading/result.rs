@@ -48,6 +48,8 @@ pub enum Outcome {
     PayloadLeftEarly,
     PayloadNotSeparated,
     ArrestOverrun,
+    /// Released without a payload: a free pull or a coast-down, to learn the losses from.
+    ShuttleAlone,
     Aborted,
     Truncated,
 }
@@ -65,6 +67,7 @@ impl Outcome {
             Self::PayloadLeftEarly => "payload left early",
             Self::PayloadNotSeparated => "payload not separated",
             Self::ArrestOverrun => "arrest overrun",
+            Self::ShuttleAlone => "shuttle alone",
             Self::Aborted => "aborted",
             Self::Truncated => "truncated",
         }
@@ -112,6 +115,38 @@ pub struct EnergyAudit {
     pub lost_j: f64,
 }
 
+/// Whether the trial met what the rig file asks. For advice and record only.
+#[derive(Debug, Clone, PartialEq, Serialize)]
+pub struct Verdict {
+    /// `launch_speed_window`, `peak_g_limit`, `tension_limit`, `planned_draw`, `asymmetry_limit`.
+    pub name: String,
+    /// What is asked, with its numbers.
+    pub asked: String,
+    pub decision: Decision,
+    /// That what is asked was kept; `None` where the result is absent.
+    pub probability: Option<f64>,
+    /// What was found, in words.
+    pub why: String,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Decision {
+    Met,
+    Missed,
+    NotDecidable,
+}
+
+impl Decision {
+    pub const fn word(self) -> &'static str {
+        match self {
+            Self::Met => "met",
+            Self::Missed => "missed",
+            Self::NotDecidable => "not decidable",
+        }
+    }
+}
+
 /// Everything one trial says by itself.
 #[derive(Debug, Clone, PartialEq, Serialize)]
 pub struct Reading {
@@ -122,10 +157,20 @@ pub struct Reading {
     pub instants: Vec<Instant>,
     pub results: Vec<ResultRow>,
     pub absent: Vec<Absent>,
+    pub verdicts: Vec<Verdict>,
     /// Disagreements and oddities that a person should look at.
     pub findings: Vec<String>,
     pub motion: Option<Motion>,
     pub energy: Option<EnergyAudit>,
+}
+
+impl ResultRow {
+    /// The largest share of the uncertainty and its part of the variance.
+    pub fn dominant(&self) -> Option<(&str, f64)> {
+        let first = self.budget.first()?;
+        let part = (first.standard_uncertainty / self.standard_uncertainty).powi(2);
+        part.is_finite().then_some((first.source.as_str(), part))
+    }
 }
 
 impl Reading {

@@ -13,6 +13,9 @@ use super::series::{BIN_S, Binned};
 pub(super) struct Sensors<'a> {
     pub line: Option<&'a Signal>,
     pub anchor: Option<&'a Signal>,
+    /// Cells at the left and the right anchor.
+    pub left: Option<&'a Signal>,
+    pub right: Option<&'a Signal>,
     pub position: Option<&'a Signal>,
     pub specific_force: Option<&'a Signal>,
     pub refused: Vec<(Role, String)>,
@@ -39,6 +42,8 @@ impl<'a> Sensors<'a> {
         match role {
             Role::ReleaseLineTension => Some(&mut self.line),
             Role::CordAnchorTension => Some(&mut self.anchor),
+            Role::LeftAnchorTension => Some(&mut self.left),
+            Role::RightAnchorTension => Some(&mut self.right),
             Role::ShuttlePosition => Some(&mut self.position),
             Role::ShuttleSpecificForce => Some(&mut self.specific_force),
         }
@@ -83,12 +88,17 @@ impl<'a> Sensors<'a> {
                 )
             })
         };
-        let (line, anchor) = (reversed(self.line), reversed(self.anchor));
-        if let Some(reason) = line {
-            self.refuse(Role::ReleaseLineTension, reason);
-        }
-        if let Some(reason) = anchor {
-            self.refuse(Role::CordAnchorTension, reason);
+        let cells = [
+            (Role::ReleaseLineTension, self.line),
+            (Role::CordAnchorTension, self.anchor),
+            (Role::LeftAnchorTension, self.left),
+            (Role::RightAnchorTension, self.right),
+        ];
+        let refused = cells.map(|(role, signal)| (role, reversed(signal)));
+        for (role, reason) in refused {
+            if let Some(reason) = reason {
+                self.refuse(role, reason);
+            }
         }
     }
 

@@ -4,10 +4,13 @@
 //! still pushed. A step down means that force was lost at once: a cord failed. Once the push has ended, the deceleration
 //! tells whether shuttle or shuttle and payload are braked by friction and drag.
 
+use crate::calibration::Signal;
 use crate::rig::Rig;
 
 use super::launch::Separation;
 use super::motion::Track;
+use super::release::Release;
+use super::tension::Hold;
 
 /// Parts of the stroke at its ends where forces change fast anyway.
 const AFTER_RELEASE_S: f64 = 0.02;
@@ -15,6 +18,10 @@ const BEFORE_SEPARATION_S: f64 = 0.02;
 /// Means of this length, this far before and after an instant, are compared.
 const MEAN_S: f64 = 0.003;
 const CLEAR_S: f64 = 0.001;
+/// How long before it the course is compared with, to tell how it was changing anyway.
+const EARLIER_S: f64 = CLEAR_S + MEAN_S + CLEAR_S;
+/// Longest gap that is looked across: the force changes by itself in a longer one.
+const LONGEST_GAP_S: f64 = 0.03;
 /// Share of the force that a step must have: losing one of ten cords, or half of the payload's share, is seen.
 const STEP_DOWN: f64 = 0.07;
 const STEP_UP: f64 = 0.2;
@@ -37,11 +44,13 @@ impl Step {
     }
 }
 
-/// The largest step in the stroke that is no part of its smooth course.
-pub(super) fn step(track: &Track, release_s: f64, separation_s: f64) -> Option<Step> {
+/// The largest step in the stroke that is no part of its smooth course. One that a gap of the accelerometer hides is looked
+/// for on both sides of the gap.
+pub(super) fn step(track: &Track, signal: Option<&Signal>, release_s: f64, separation_s: f64) -> Option<Step> {
     if !track.has_specific_force {
         return None;
     }
+    let gap = |time_s: f64| signal.and_then(|signal| gap_around(signal, time_s));
     let mean = |from_s: f64, to_s: f64| {
         let values = &track.specific_force_mps2[track.index_at(from_s)..track.index_at(to_s)];
         (!values.is_empty()).then(|| values.iter().sum::<f64>() / values.len() as f64)
@@ -50,21 +59,35 @@ pub(super) fn step(track: &Track, release_s: f64, separation_s: f64) -> Option<S
     let (mut best, mut largest) = (None, 0.0);
     let mut time_s = release_s + AFTER_RELEASE_S + 2.0 * MEAN_S;
     while time_s < separation_s - BEFORE_SEPARATION_S {
-        let before = mean(time_s - CLEAR_S - MEAN_S, time_s - CLEAR_S)?;
-        let after = mean(time_s + CLEAR_S, time_s + CLEAR_S + MEAN_S)?;
+        let (from_s, to_s) = gap(time_s).map_or((time_s, time_s), |(from_s, to_s)| (from_s, to_s));
+        let (left_s, right_s) = (from_s - CLEAR_S, to_s + CLEAR_S);
+        let before = mean(left_s - MEAN_S, left_s)?;
+        let Some(after) = mean(right_s, right_s + MEAN_S) else { break };
         // What the course before would have done anyway over the same distance.
-        let earlier = mean(time_s - 2.0 * (CLEAR_S + MEAN_S) - CLEAR_S, time_s - CLEAR_S - MEAN_S - 2.0 * CLEAR_S)?;
-        let share = ((after - before) - (before - earlier)) / before.abs().max(0.3 * start.abs());
+        let apart_s = right_s - left_s + MEAN_S;
+        let earlier = mean(left_s - MEAN_S - EARLIER_S, left_s - EARLIER_S)?;
+        let course = (before - earlier) * apart_s / EARLIER_S;
+        let share = ((after - before) - course) / before.abs().max(0.3 * start.abs());
         let here = track.index_at(time_s);
-        let well_known = track.u_specific_force_mps2[here] < KNOWN * start.abs();
+        let u_mps2 = |time_s: f64| track.u_specific_force_mps2[track.index_at(time_s)];
+        let well_known = u_mps2(left_s).max(u_mps2(right_s)) < KNOWN * start.abs();
         if well_known && !(-STEP_DOWN..=STEP_UP).contains(&share) && share.abs() > largest {
             largest = share.abs();
             let x_m = track.motion.x_m[here];
             best = Some(Step { time_s, x_m, from_mps2: before, to_mps2: after });
         }
-        time_s += 0.25 * MEAN_S;
+        time_s = f64::max(time_s + 0.25 * MEAN_S, if to_s > from_s { to_s } else { 0.0 });
     }
     best.map(|step| halfway(track, step))
+}
+
+/// The gap of a channel that an instant lies in, if it is not too long.
+fn gap_around(signal: &Signal, time_s: f64) -> Option<(f64, f64)> {
+    let after = signal.time_s.partition_point(|&t| t < time_s);
+    let (from_s, to_s) = (*signal.time_s.get(after.checked_sub(1)?)?, *signal.time_s.get(after)?);
+    let length_s = to_s - from_s;
+    (length_s > 1.5 / signal.nominal_rate_hz && length_s > CLEAR_S && length_s < LONGEST_GAP_S)
+        .then_some((from_s, to_s))
 }
 
 /// The instant at which the force is half-way through the step.
@@ -77,6 +100,23 @@ fn halfway(track: &Track, step: Step) -> Step {
         Some(idx) => Step { time_s: track.motion.time_s[idx], x_m: track.motion.x_m[idx], ..step },
         None => step,
     }
+}
+
+/// A sentence when the mass that the cords set moving was the shuttle's alone: hold tension and weight over specific force.
+///
+/// m = (T + m·g·sin θ − friction)/f; nearer to the shuttle than to shuttle and payload, on a scale of ratios.
+pub(super) fn alone(hold: &Hold, release: &Release, track: &Track, rig: &Rig) -> Option<String> {
+    let (tension_n, _) = hold.tension_n?;
+    let started = (release.started_force_mps2? - track.bias_mps2) / (1.0 + track.scale);
+    let kinematic = started - track.gravity_along_mps2;
+    let mass_kg = (tension_n - rig.losses.friction_n.value) / kinematic;
+    let (shuttle_kg, both_kg) = (rig.shuttle.mass_kg.value, rig.moving_mass_kg());
+    let bound_kg = (shuttle_kg * both_kg).sqrt();
+    (kinematic > 0.0 && mass_kg > 0.0 && mass_kg < bound_kg && both_kg > 1.5 * shuttle_kg).then(|| {
+        format!(
+            "hold tension over acceleration is a mass of {mass_kg:.1} kg; the shuttle has {shuttle_kg:.1} kg, with the payload {both_kg:.1} kg: it ran alone"
+        )
+    })
 }
 
 /// A sentence when payload and shuttle coasted together after the push had ended.

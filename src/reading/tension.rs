@@ -10,7 +10,7 @@ use super::phases::Phases;
 use super::release::Release;
 use super::rows::{Book, Budget};
 use super::sensors::Sensors;
-use super::series::{BIN_S, Binned, Stats, stats_between};
+use super::series::{BIN_S, Binned, Stats, longest_gap_s, stats_between};
 
 /// Length of the means at both ends of the hold.
 const HOLD_MEAN_S: f64 = 0.1;
@@ -65,9 +65,26 @@ pub(super) fn report(
     } else {
         book.absent("hold_duration", "no hold was found");
     }
+    holes(sensors, phases, book);
     hold.x_m = draw_rows(sensors, phases, rig, book);
     hold.work_j = work_row(sensors, phases, release, book);
     hold
+}
+
+/// A channel that was silent in the hold is a matter for a person: a slip, a peak may hide there.
+fn holes(sensors: &Sensors<'_>, phases: &Phases, book: &mut Book) {
+    const LEAST_S: f64 = 0.02;
+    let Some((from_s, to_s)) = phases.hold_start_s.zip(phases.hold_end_s) else { return };
+    for signal in [sensors.line, sensors.anchor, sensors.position, sensors.specific_force].into_iter().flatten() {
+        let gap_s = longest_gap_s(signal, from_s, to_s);
+        if gap_s > f64::max(LEAST_S, 5.0 / signal.nominal_rate_hz) {
+            book.findings.push(format!(
+                "channel {} has a hole of {:.0} ms in the hold: what it would have shown then is not known, and nothing is filled in",
+                signal.name,
+                1e3 * gap_s
+            ));
+        }
+    }
 }
 
 fn zero_of(line: &Signal, release: Option<&Release>, slack_n: f64, book: &mut Book) -> Zero {

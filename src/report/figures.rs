@@ -65,11 +65,11 @@ pub(super) fn tension_about_release(page: &TrialPage) -> Option<Picture> {
     })
 }
 
-fn instant_mark(instant: &crate::reading::Instant) -> Mark {
+pub(super) fn instant_mark(instant: &crate::reading::Instant) -> Mark {
     Mark { label: format!("{} {:.4} s", instant.name.replace('_', " "), instant.time_s), at: instant.time_s }
 }
 
-fn tension_lines(page: &TrialPage, range: (f64, f64)) -> Vec<Line> {
+pub(super) fn tension_lines(page: &TrialPage, range: (f64, f64)) -> Vec<Line> {
     let styles = [(Ink::Blue, Stroke::Solid), (Ink::Vermilion, Stroke::Dashed), (Ink::Black, Stroke::Dashed)];
     let traces = page.tension.iter().zip(styles.into_iter().cycle());
     traces
@@ -91,6 +91,32 @@ pub(super) fn speed(motion: &MotionOverRail) -> Option<Picture> {
 pub(super) fn acceleration(motion: &MotionOverRail) -> Option<Picture> {
     let title = "Acceleration along the rail (kinematic)";
     over_rail(motion, title, "acceleration, m/s²", |curve| (&curve.a_mps2, &curve.u_a_mps2))
+}
+
+/// The same up to the separation: the brake's spike, ten times as large, would flatten it.
+pub(super) fn acceleration_of_stroke(motion: &MotionOverRail) -> Option<Picture> {
+    const BEYOND_M: f64 = 0.2;
+    let until_m = motion.separation_x_m? + BEYOND_M;
+    let stroke = MotionOverRail {
+        measured: up_to(&motion.measured, until_m),
+        modelled: motion.modelled.as_ref().map(|curve| up_to(curve, until_m)),
+        ..motion.clone()
+    };
+    let title = "Acceleration in the power stroke (kinematic)";
+    over_rail(&stroke, title, "acceleration, m/s²", |curve| (&curve.a_mps2, &curve.u_a_mps2))
+}
+
+/// A curve until it first passes a place.
+fn up_to(curve: &MotionCurve, until_m: f64) -> MotionCurve {
+    let n = curve.x_m.iter().position(|x_m| *x_m > until_m).unwrap_or(curve.x_m.len());
+    let part = |column: &[f64]| column.get(..n).unwrap_or(column).to_vec();
+    MotionCurve {
+        x_m: part(&curve.x_m),
+        v_mps: part(&curve.v_mps),
+        a_mps2: part(&curve.a_mps2),
+        u_v_mps: part(&curve.u_v_mps),
+        u_a_mps2: part(&curve.u_a_mps2),
+    }
 }
 
 type Column = fn(&MotionCurve) -> (&Vec<f64>, &Vec<f64>);
@@ -136,7 +162,7 @@ fn over_rail(motion: &MotionOverRail, title: &str, y_label: &str, column: Column
 }
 
 /// A line over x. The shuttle may rebound, so x is followed as it comes, thinned evenly where there is too much of it.
-fn curve_line(name: &str, ink: Ink, stroke: Stroke, x: &[f64], y: &[f64], range: (f64, f64)) -> Line {
+pub(super) fn curve_line(name: &str, ink: Ink, stroke: Stroke, x: &[f64], y: &[f64], range: (f64, f64)) -> Line {
     let rises = x.windows(2).all(|pair| pair[1] >= pair[0]);
     let runs = if rises {
         runs(x, y, f64::INFINITY, range, Picture::n_columns())
@@ -149,7 +175,7 @@ fn curve_line(name: &str, ink: Ink, stroke: Stroke, x: &[f64], y: &[f64], range:
 }
 
 /// The band of two standard uncertainties about a curve; none where there are no uncertainties.
-fn ribbon(name: &str, ink: Ink, x: &[f64], y: &[f64], u: &[f64], range: (f64, f64)) -> Vec<Ribbon> {
+pub(super) fn ribbon(name: &str, ink: Ink, x: &[f64], y: &[f64], u: &[f64], range: (f64, f64)) -> Vec<Ribbon> {
     if u.len() != y.len() || u.is_empty() {
         return Vec::new();
     }
@@ -201,14 +227,14 @@ fn peak(trace: &Trace) -> (f64, f64) {
 }
 
 /// Least and greatest of what is a number; `None` when they do not span a range.
-fn extent(values: impl Iterator<Item = f64>) -> Option<(f64, f64)> {
+pub(super) fn extent(values: impl Iterator<Item = f64>) -> Option<(f64, f64)> {
     let finite = values.filter(|value| value.is_finite());
     let (low, high) = finite.fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), v| (low.min(v), high.max(v)));
     (high > low).then_some((low, high))
 }
 
 /// [`extent`] with some headroom, a unit range where all values are equal.
-fn spread(values: impl Iterator<Item = f64>) -> (f64, f64) {
+pub(super) fn spread(values: impl Iterator<Item = f64>) -> (f64, f64) {
     let (low, high) = extent(values).unwrap_or((0.0, 1.0));
     let margin = HEADROOM * (high - low);
     (if low == 0.0 { 0.0 } else { low - margin }, high + margin)

@@ -4,11 +4,12 @@ use thiserror::Error;
 
 use super::beside::add_replay;
 use super::page::{
-    DeviceHealth, EnergyBar, EnergyPart, Heading, MotionCurve, MotionOverRail, PageLimits, PhaseSpan, RailStrip, Trace,
-    TrialPage,
+    DeviceHealth, EnergyBar, EnergyPart, Heading, Inspection, MotionCurve, MotionOverRail, PageLimits, PhaseSpan,
+    RailStrip, Trace, TrialPage,
 };
+use crate::archive::edges_of;
 use crate::calibration::Signal;
-use crate::reading::{EnergyAudit, Motion, Reading, read};
+use crate::reading::{Beside, EnergyAudit, Motion, Reading, read_beside};
 use crate::replay::replay;
 use crate::rig::{Rig, RigError, Role, parse};
 use crate::trial::{ClockRow, Header, TrialError, TrialFile};
@@ -39,11 +40,13 @@ pub fn page_of(trial: &TrialFile) -> Result<TrialPage, GatherError> {
     let text = trial.texts()?.into_iter().find(|text| text.name == RIG_TEXT).ok_or(GatherError::NoRigText)?;
     let rig = parse(&text.text)?;
     let signals = trial.signals()?;
-    let reading = read(&signals, &rig);
+    let beside = Beside { edges: edges_of(trial)?, ..Beside::default() };
+    let reading = read_beside(&signals, &beside, &rig);
     let mut page = page(trial.header(), &rig, &signals, &reading);
     add_replay(&mut page, &replay(&signals, &reading, &rig));
     page.health = trial.device_names()?.iter().map(|name| health(trial, name)).collect::<Result<_, _>>()?;
     page.hashes = hashes(trial)?;
+    page.inspections = inspections(trial, &rig)?;
     Ok(page)
 }
 
@@ -64,6 +67,8 @@ pub fn page(header: &Header, rig: &Rig, signals: &[Signal], reading: &Reading) -
         motion: reading.motion.as_ref().map(|motion| motion_over_rail(motion, reading)),
         results: reading.results.clone(),
         absent: reading.absent.clone(),
+        verdicts: reading.verdicts.clone(),
+        over_time: reading.motion.clone(),
         energy: reading.energy.as_ref().map(|audit| energy(audit, reading)),
         cautions: reading.findings.clone(),
         ..TrialPage::default()
@@ -81,13 +86,35 @@ fn heading(header: &Header, rig: &Rig, reading: &Reading) -> Heading {
         trial_id: header.trial_id.clone(),
         rig: header.rig.clone(),
         payload: rig.payload.name.clone(),
-        started: header.started.clone(),
+        started: to_the_second(&header.started),
         started_quality: format!("wall clock: {}", header.started_quality),
         outcome: reading.outcome.word().to_owned(),
         outcome_evidence: reading.outcome_evidence.clone(),
         program: format!("Sealed by tautrail {}, derived and drawn by tautrail {program}", header.program_version),
         invented: rig.invented,
     }
+}
+
+/// Nobody reads nanoseconds of a wall clock.
+fn to_the_second(rfc3339: &str) -> String {
+    let Some((seconds, rest)) = rfc3339.split_once('.') else { return rfc3339.to_owned() };
+    format!("{seconds}{}", rest.trim_start_matches(|letter: char| letter.is_ascii_digit()))
+}
+
+/// Items of the rig file's stages, answered where a mark of the trial or a note begins with the item and a colon.
+fn inspections(trial: &TrialFile, rig: &Rig) -> Result<Vec<Inspection>, GatherError> {
+    let mut said: Vec<String> = trial.events()?.into_iter().map(|event| event.text).collect();
+    said.extend(trial.notes()?.into_iter().flat_map(|note| note.text.lines().map(str::to_owned).collect::<Vec<_>>()));
+    let answer = |item: &str| {
+        said.iter().find_map(|text| {
+            let (asked, answer) = text.split_once(':')?;
+            asked.trim().eq_ignore_ascii_case(item.trim()).then(|| answer.trim().to_owned())
+        })
+    };
+    let items = rig.details.stages.iter().flat_map(|stage| stage.inspect.iter().map(move |item| (stage, item)));
+    Ok(items
+        .map(|(stage, item)| Inspection { stage: stage.name.clone(), item: item.clone(), answer: answer(item) })
+        .collect())
 }
 
 fn rail(rig: &Rig, reading: &Reading) -> RailStrip {

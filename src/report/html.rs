@@ -2,10 +2,12 @@
 
 use super::energy;
 use super::figures;
+use super::figures_over_time;
 use super::page::{Heading, PageLimits, TrialPage};
 use super::picture::{Picture, PictureError};
 use super::strip;
 use super::tables;
+use crate::units::shown_unit;
 
 const STYLE: &str = include_str!("style.css");
 
@@ -22,10 +24,11 @@ pub fn trial_page(page: &TrialPage) -> Result<String, PictureError> {
     html.push_str(&header(&page.heading));
     html.push_str("<main>\n");
     html.push_str(&at_a_glance(page));
+    html.push_str(&section("Verdicts", &tables::verdicts(page)));
     html.push_str(&section(
         "Tension",
         &figures_of(
-            [figures::tension_over_trial(page), figures::tension_about_release(page)],
+            [figures::tension_over_trial(page), figures_over_time::hold(page), figures::tension_about_release(page)],
             "No tension was recorded.",
         )?,
     ));
@@ -33,6 +36,9 @@ pub fn trial_page(page: &TrialPage) -> Result<String, PictureError> {
     html.push_str(&section("Replay: measured minus modelled", &residuals(page)?));
     html.push_str(&section("Results", &tables::results(page)));
     html.push_str(&section("Energy", &energy::bar(page.energy.as_ref())));
+    if !page.inspections.is_empty() {
+        html.push_str(&section("Inspection items", &tables::inspections(&page.inspections)));
+    }
     html.push_str(&section("What was received", &tables::health(&page.health)));
     html.push_str(&section("Raw data, SHA-256", &tables::hashes(&page.hashes)));
     html.push_str("</main>\n");
@@ -115,8 +121,8 @@ fn tile(page: &TrialPage, name: &str, label: &str, verdict: impl Fn(f64) -> Opti
             let (value, uncertainty) = crate::units::rounded(row.value, row.standard_uncertainty);
             let verdict = verdict(row.value).map_or_else(String::new, |verdict| format!(" · {verdict}"));
             (
-                format!("{value} <small>{}</small>", escaped(&row.unit)),
-                format!("u = {uncertainty} {}{verdict}", row.unit),
+                format!("{value} <small>{}</small>", escaped(shown_unit(&row.unit))),
+                format!("u = {uncertainty} {}{verdict}", shown_unit(&row.unit)),
             )
         }
         None => {
@@ -133,7 +139,9 @@ fn tile(page: &TrialPage, name: &str, label: &str, verdict: impl Fn(f64) -> Opti
 
 fn motion(page: &TrialPage) -> Result<String, PictureError> {
     let Some(motion) = &page.motion else { return Ok("<p>No motion could be derived.</p>\n".into()) };
-    let pictures = figures_of([figures::speed(motion), figures::acceleration(motion)], "No motion could be derived.")?;
+    let along = [figures::speed(motion), figures::acceleration_of_stroke(motion), figures::acceleration(motion)];
+    let pictures = along.into_iter().chain(figures_over_time::motion(page));
+    let pictures = figures_of(pictures, "No motion could be derived.")?;
     let model = if motion.modelled.is_some() { "" } else { " No replay was made, so no modelled line is shown." };
     Ok(format!("{pictures}<p>Measured motion rests on: {}.{model}</p>\n", escaped(&motion.sensors)))
 }

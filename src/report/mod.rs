@@ -9,6 +9,7 @@ mod cord;
 mod decimate;
 mod energy;
 mod figures;
+mod figures_over_time;
 mod forecast;
 mod gather;
 mod html;
@@ -27,7 +28,7 @@ pub use forecast::{ForecastCurve, ForecastPage, forecast_page};
 pub use gather::{GatherError, page, page_of};
 pub use html::trial_page;
 pub use page::{
-    DeviceHealth, EnergyBar, EnergyPart, Heading, MotionCurve, MotionOverRail, PageLimits, PhaseSpan, RailStrip,
-    ResidualTrace, Trace, TrialPage,
+    DeviceHealth, EnergyBar, EnergyPart, Heading, Inspection, MotionCurve, MotionOverRail, PageLimits, PhaseSpan,
+    RailStrip, ResidualTrace, Trace, TrialPage,
 };
 pub use picture::PictureError;

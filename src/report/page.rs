@@ -1,6 +1,6 @@
 //! What a trial's page shows, as plain data: whoever has a reading and a replay fills it in.
 
-use crate::reading::{Absent, Instant, ResultRow};
+use crate::reading::{Absent, Instant, Motion, ResultRow, Verdict};
 
 /// Everything on the page of one trial. Empty lists and `None` are shown as what they are: not there.
 #[derive(Debug, Clone, PartialEq, Default)]
@@ -16,11 +16,17 @@ pub struct TrialPage {
     pub phases: Vec<PhaseSpan>,
     pub instants: Vec<Instant>,
     pub motion: Option<MotionOverRail>,
+    /// The smoothed motion, over trial time.
+    pub over_time: Option<Motion>,
     pub residuals: Vec<ResidualTrace>,
     /// What the replay's residuals amount to, in words.
     pub residual_sentence: String,
     pub results: Vec<ResultRow>,
     pub absent: Vec<Absent>,
+    /// For advice and record only.
+    pub verdicts: Vec<Verdict>,
+    /// What the rig file's stages ask to be looked at.
+    pub inspections: Vec<Inspection>,
     pub energy: Option<EnergyBar>,
     pub health: Vec<DeviceHealth>,
     /// Name of a raw group or text, and its SHA-256.
@@ -53,6 +59,15 @@ pub struct PageLimits {
     pub tension_n: Option<f64>,
     pub peak_g: Option<f64>,
     pub launch_speed_mps: Option<(f64, f64)>,
+}
+
+/// One thing to be looked at before a stage, and what was answered.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Inspection {
+    pub stage: String,
+    pub item: String,
+    /// `None` while nobody has answered.
+    pub answer: Option<String>,
 }
 
 /// Places along the rail, in metres of x.

@@ -1,8 +1,9 @@
 //! The page's tables. A number never stands without its unit and its standard uncertainty.
 
 use super::html::escaped;
-use super::page::{DeviceHealth, ResidualTrace, TrialPage};
-use crate::units::{rounded, significant};
+use super::page::{DeviceHealth, Inspection, ResidualTrace, TrialPage};
+use crate::reading::{Decision, ResultRow};
+use crate::units::{rounded, shown_unit, significant};
 
 use Column::{Number, Words};
 
@@ -14,11 +15,12 @@ pub(super) fn results(page: &TrialPage) -> String {
         let decimals = value.split_once('.').map_or(0, |(_, decimals)| decimals.len());
         rows.push_str(&format!(
             "<tr><th scope=\"row\">{}</th><td class=\"n\">{value}</td><td class=\"n\">{uncertainty}</td><td>{}</td>\
-             <td class=\"n\">{:.decimals$} to {:.decimals$}</td><td>{}</td></tr>\n",
+             <td class=\"n\">{:.decimals$} to {:.decimals$}</td><td>{}</td><td>{}</td></tr>\n",
             in_words(&row.name),
-            escaped(&row.unit),
+            escaped(shown_unit(&row.unit)),
             row.low,
             row.high,
+            escaped(&mostly(row)),
             escaped(&row.method)
         ));
     }
@@ -28,6 +30,7 @@ pub(super) fn results(page: &TrialPage) -> String {
         Number("standard uncertainty"),
         Words("unit"),
         Number("95 % interval"),
+        Words("what dominates it"),
         Words("method"),
     ];
     let mut html =
@@ -47,6 +50,56 @@ pub(super) fn results(page: &TrialPage) -> String {
         html.push_str(&format!("<h3>Absent, and why</h3>\n{}", table(&[Words("result"), Words("reason")], &rows)));
     }
     html
+}
+
+/// The largest share of the variance.
+fn mostly(row: &ResultRow) -> String {
+    row.dominant().map_or_else(String::new, |(source, part)| format!("{:.0} %: {source}", 100.0 * part))
+}
+
+/// Whether the plan and the limits were kept.
+pub(super) fn verdicts(page: &TrialPage) -> String {
+    if page.verdicts.is_empty() {
+        return "<p>Nothing was asked of this trial.</p>\n".into();
+    }
+    let row = |verdict: &crate::reading::Verdict| {
+        let class = match verdict.decision {
+            Decision::Met => "met",
+            Decision::Missed => "missed",
+            Decision::NotDecidable => "open",
+        };
+        let probability = verdict.probability.map_or_else(|| "unknown".to_owned(), |p| format!("{:.1} %", 100.0 * p));
+        format!(
+            "<tr><th scope=\"row\">{}</th><td class=\"{class}\">{}</td><td class=\"n\">{probability}</td><td>{}</td></tr>\n",
+            escaped(&verdict.asked),
+            verdict.decision.word(),
+            escaped(&verdict.why)
+        )
+    };
+    let rows: String = page.verdicts.iter().map(row).collect();
+    let head = [Words("asked (advice only)"), Words("verdict"), Number("probability that it was kept"), Words("found")];
+    table(&head, &rows)
+}
+
+/// What the rig file's stages ask to be looked at; unanswered items first.
+pub(super) fn inspections(inspections: &[Inspection]) -> String {
+    let mut sorted: Vec<&Inspection> = inspections.iter().collect();
+    sorted.sort_by_key(|inspection| inspection.answer.is_some());
+    let row = |inspection: &&Inspection| {
+        let answer = inspection.answer.as_deref().unwrap_or("NOT ANSWERED");
+        format!(
+            "<tr><th scope=\"row\">{}</th><td>{}</td><td>{}</td></tr>\n",
+            escaped(&inspection.item),
+            escaped(&inspection.stage),
+            escaped(answer)
+        )
+    };
+    let n_open = inspections.iter().filter(|inspection| inspection.answer.is_none()).count();
+    let sentence = format!(
+        "<p>{n_open} of {} items are not answered. An item is answered by a mark or a note that begins with it and a colon.</p>\n",
+        inspections.len()
+    );
+    sentence + &table(&[Words("item"), Words("stage"), Words("answer")], &sorted.iter().map(row).collect::<String>())
 }
 
 /// Bias, RMS and largest residual of each quantity.
@@ -142,5 +195,5 @@ pub(super) fn table(head: &[Column], rows: &str) -> String {
 
 /// A result's name as words: `launch_speed` is "launch speed".
 fn in_words(name: &str) -> String {
-    escaped(&name.replace('_', " ").replace("cfc60", "CFC 60").replace("cfc180", "CFC 180"))
+    escaped(&name.replace('_', " ").replace("cfc", "CFC ").replace("3ms", "3 ms"))
 }

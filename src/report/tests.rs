@@ -1,7 +1,7 @@
 //! The page's promises, on an invented trial.
 
 use super::*;
-use crate::reading::{Absent, Instant, ResultRow};
+use crate::reading::{Absent, Decision, Instant, ResultRow, Verdict};
 
 const STEP_S: f64 = 1e-4;
 const RELEASE_S: f64 = 20.0;
@@ -44,6 +44,18 @@ fn invented() -> TrialPage {
             name: "peak_g_cfc180".into(),
             reason: "the accelerometer states no anti-alias bandwidth".into(),
         }],
+        verdicts: vec![Verdict {
+            name: "tension_limit".into(),
+            asked: "tension of the whole launcher at most 900 N".into(),
+            decision: Decision::Met,
+            probability: Some(0.999),
+            why: "max_tension (700 N) keeps it; it is kept with a probability of 99.9 %".into(),
+        }],
+        inspections: vec![
+            Inspection { stage: "full draw".into(), item: "cord ends".into(), answer: Some("no fray".into()) },
+            Inspection { stage: "full draw".into(), item: "brake pads".into(), answer: None },
+        ],
+        over_time: None,
         energy: Some(energy()),
         health: health(),
         hashes: vec![("/raw/winch-node/line".into(), "ab".repeat(32)), ("north-pier.toml".into(), "0f".repeat(32))],
@@ -293,6 +305,15 @@ fn a_long_trial_makes_a_page_of_bounded_size() {
 }
 
 #[test]
+fn verdicts_and_unanswered_inspection_items_stand_on_the_page() {
+    let html = page_of_html(&invented());
+    assert!(html.contains("tension of the whole launcher at most 900 N") && html.contains("99.9 %"), "verdict");
+    assert!(html.contains("1 of 2 items are not answered"));
+    let (open, answered) = (html.find("NOT ANSWERED").unwrap(), html.find("no fray").unwrap());
+    assert!(open < answered, "what is open comes first");
+}
+
+#[test]
 fn unaccounted_energy_is_shown_as_such() {
     assert!(page_of_html(&invented()).contains("unaccounted"));
     assert!(page_of_html(&invented()).contains("<td class=\"n\">27</td>"), "1480 − 835 − 323 − 35 − 260 = 27 J");
@@ -306,6 +327,7 @@ fn reading() -> crate::reading::Reading {
         instants: instants(),
         results: vec![ResultRow { name: "draw".into(), ..results()[0].clone() }],
         absent: Vec::new(),
+        verdicts: Vec::new(),
         findings: vec!["the anchor reads 14 N less than the line".into()],
         motion: None,
         energy: None,

@@ -130,7 +130,7 @@ pub(super) fn channels(
     channels
 }
 
-fn known_device(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>, devices: &[Device]) -> String {
+pub(super) fn known_device(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>, devices: &[Device]) -> String {
     let name = entry.text(findings, "device");
     if !name.is_empty() && !devices.iter().any(|device| device.name == name) {
         let advice = advice(&name, devices.iter().map(|device| device.name.as_str()));

@@ -5,7 +5,7 @@
 use super::channels::Channels;
 use super::document::Findings;
 use super::proof;
-use super::{Cords, Device, Rig, Role};
+use super::{Cords, Device, Input, Rig, Role};
 use crate::units::STANDARD_GRAVITY_MPS2;
 
 pub(super) fn rig(rig: &Rig, findings: &mut Findings<'_>) {
@@ -132,7 +132,7 @@ fn launcher_tension_n(cords: &Cords, elongation: f64) -> f64 {
 }
 
 /// Each role once, the release line at least; each device used; no device channel read twice.
-pub(super) fn channels(channels: &Channels, devices: &[Device], findings: &mut Findings<'_>) {
+pub(super) fn channels(channels: &Channels, devices: &[Device], inputs: &[Input], findings: &mut Findings<'_>) {
     let all = || {
         let calibrated = channels.calibrated.iter().map(|c| (c.role, &c.name, &c.device, &c.device_channel));
         calibrated.chain(channels.uncalibrated.iter().map(|c| (c.role, &c.name, &c.device, &c.device_channel)))
@@ -146,13 +146,16 @@ pub(super) fn channels(channels: &Channels, devices: &[Device], findings: &mut F
                 findings
                     .error("channel", format!("none has the role {word}: without it no tension and no phase is known"));
             }
+            0 if role.is_extra() => {}
             0 => findings.caution("channel", format!("none has the role {word}: results that need it will be absent")),
             1 => {}
             _ => findings.error("channel", format!("several have the role {word}: {}", names.join(", "))),
         }
     }
     for (index, device) in devices.iter().enumerate() {
-        if !channels.unclear && !device.name.is_empty() && !all().any(|channel| *channel.2 == device.name) {
+        let used =
+            all().any(|channel| *channel.2 == device.name) || inputs.iter().any(|input| input.device == device.name);
+        if !channels.unclear && !device.name.is_empty() && !used {
             findings.caution(&format!("device[{index}]"), format!("no channel uses device {:?}", device.name));
         }
     }

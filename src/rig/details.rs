@@ -24,6 +24,10 @@ pub struct Details {
     pub cord_items: Vec<CordItem>,
     /// The static test behind the g limit.
     pub proof_load: Option<ProofLoad>,
+    pub reading: ReadingSettings,
+    pub inputs: Vec<Input>,
+    /// Greatest left/right difference of the anchors over their sum; advice and record only.
+    pub asymmetry_limit: Option<f64>,
 }
 
 impl Details {
@@ -171,4 +175,67 @@ pub struct Stage {
     pub gate: String,
     /// To be looked at before it.
     pub inspect: Vec<String>,
+}
+
+/// How trials are read: `[reading]`.
+#[derive(Debug, Clone, PartialEq)]
+pub struct ReadingSettings {
+    /// Channel frequency classes that peaks are given in.
+    pub classes: Vec<u32>,
+    /// Least samples a second over the class.
+    pub least_rate_per_class: f64,
+    pub start_up: FilterStartUp,
+    pub three_ms: ThreeMs,
+}
+
+impl Default for ReadingSettings {
+    fn default() -> Self {
+        Self {
+            classes: vec![60, 180, 600, 1000],
+            least_rate_per_class: 10.0,
+            start_up: FilterStartUp::Hold,
+            three_ms: ThreeMs::Contiguous,
+        }
+    }
+}
+
+/// What a filter takes for the samples before its first one.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum FilterStartUp {
+    Hold,
+    Zero,
+}
+
+/// Which 3 ms value is meant.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum ThreeMs {
+    /// Exceeded for 3 ms without a break.
+    Contiguous,
+    /// Exceeded for 3 ms in all.
+    Cumulative,
+}
+
+impl ThreeMs {
+    pub const fn word(self) -> &'static str {
+        match self {
+            Self::Contiguous => "contiguous",
+            Self::Cumulative => "cumulative",
+        }
+    }
+}
+
+/// A digital input of a device and what its edges mean.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Input {
+    pub device: String,
+    pub number: u8,
+    pub meaning: InputMeaning,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum InputMeaning {
+    /// Falls when the line lets go.
+    Release,
+    /// High while the payload's flag passes: rises when the flag's front comes to x.
+    BeamGate { x_m: Given, flag_m: Given },
 }

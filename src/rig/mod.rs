@@ -18,6 +18,7 @@ mod finding;
 mod instrument;
 mod proof;
 mod read;
+mod reading_sections;
 mod record;
 mod resembling;
 mod sections;

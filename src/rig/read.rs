@@ -8,7 +8,7 @@ use super::attached::{Attached, read_joined, take_apart};
 use super::details::{CordDetails, Details, SettingUncertainties};
 use super::document::{Findings, Section, start_of};
 use super::finding::{Finding, RigError, Severity};
-use super::{Cords, Rig, channels, checks, cord_items, detail_sections, proof, sections};
+use super::{Cords, Rig, channels, checks, cord_items, detail_sections, proof, reading_sections, sections};
 
 /// What a rig file's text amounts to.
 #[derive(Debug, Clone)]
@@ -52,12 +52,14 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
         .map_or_else(|| (Cords::none(), CordDetails::default()), |table| sections::cords(table, &attached, findings));
     let devices = channels::devices(&mut root, findings);
     let channels = channels::channels(&mut root, findings, &devices, &attached);
-    checks::channels(&channels, &devices, findings);
+    let inputs = reading_sections::inputs(&mut root, findings, &devices);
+    checks::channels(&channels, &devices, &inputs, findings);
     let (site, of_site) = sections::site(site, findings);
     let (rail, brake, uncoupling_x_m) = sections::rail(rail, findings);
     let (payload, payload_details) = sections::payload(payload, findings);
     let (losses, more_losses) = sections::losses(losses, findings);
     let (plan, of_plan) = sections::plan(plan, findings);
+    let (limits, asymmetry_limit) = sections::limits(limits, findings);
     let details = Details {
         cords: cord_details,
         more_cords: detail_sections::more_cords(&mut root, &attached, findings),
@@ -77,6 +79,9 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
         stages: detail_sections::stages(&mut root, findings),
         cord_items: cord_items::cord_items(&mut root, findings),
         proof_load: proof::proof_load(&mut root, findings),
+        reading: reading_sections::reading(&mut root, findings),
+        inputs,
+        asymmetry_limit,
     };
     let rig = Rig {
         name,
@@ -88,7 +93,7 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
         cords,
         losses,
         details,
-        limits: sections::limits(limits, findings),
+        limits,
         plan,
         devices,
         channels: channels.calibrated,

@@ -44,7 +44,9 @@ impl RecordKind {
     /// The kind that a role needs.
     pub const fn for_role(role: Role) -> Self {
         match role {
-            Role::ReleaseLineTension | Role::CordAnchorTension => Self::Cell,
+            Role::ReleaseLineTension | Role::CordAnchorTension | Role::LeftAnchorTension | Role::RightAnchorTension => {
+                Self::Cell
+            }
             Role::ShuttlePosition => Self::Encoder,
             Role::ShuttleSpecificForce => Self::Accelerometer,
         }

@@ -227,13 +227,15 @@ fn shuttle_drag_area(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -
     table.given(findings, keys, "m2", DRAG_AREA_M2)
 }
 
-pub(super) fn limits(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> Limits {
+/// Limits, and the greatest asymmetry of the anchors where one is set.
+pub(super) fn limits(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Limits, Option<f64>) {
     let limits = Limits {
         tension_n: table.quantity(findings, "tension", "N", 1.0..=200_000.0),
         peak_g: table.quantity(findings, "peak_g", "g", 0.1..=500.0) / STANDARD_GRAVITY_MPS2,
     };
+    let asymmetry = table.optional_quantity(findings, "asymmetry", "%", 0.0..=100.0);
     table.finish(findings);
-    limits
+    (limits, asymmetry)
 }
 
 pub(super) fn plan(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Plan, SettingUncertainties) {

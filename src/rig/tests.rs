@@ -112,7 +112,8 @@ fn dangling_references_are_found() {
     let findings = findings_with("role = \"cord_anchor_tension\"", "role = \"cord_anchor_tensoin\"");
     assert!(findings.contains(
         "channel[1].role: \"cord_anchor_tensoin\" is not a role, did you mean \"cord_anchor_tension\"? (roles: \
-         release_line_tension, cord_anchor_tension, shuttle_position, shuttle_specific_force)"
+         release_line_tension, cord_anchor_tension, left_anchor_tension, right_anchor_tension, shuttle_position, \
+         shuttle_specific_force)"
     ));
 }
 

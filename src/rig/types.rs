@@ -201,6 +201,10 @@ pub enum Role {
     ReleaseLineTension,
     /// Tension of the whole launcher at the cords' fixed end, N.
     CordAnchorTension,
+    /// Tension at the anchor left of the rail, seen toward the exit, N.
+    LeftAnchorTension,
+    /// Tension at the anchor right of it, N.
+    RightAnchorTension,
     /// x of the shuttle along the rail, in the rail's frame, m.
     ShuttlePosition,
     /// Specific force along the rail at the shuttle (a + g sin θ), m/s².
@@ -208,14 +212,22 @@ pub enum Role {
 }
 
 impl Role {
-    pub const ALL: [Self; 4] =
-        [Self::ReleaseLineTension, Self::CordAnchorTension, Self::ShuttlePosition, Self::ShuttleSpecificForce];
+    pub const ALL: [Self; 6] = [
+        Self::ReleaseLineTension,
+        Self::CordAnchorTension,
+        Self::LeftAnchorTension,
+        Self::RightAnchorTension,
+        Self::ShuttlePosition,
+        Self::ShuttleSpecificForce,
+    ];
 
     /// The word used in rig files, trial files and the feed.
     pub const fn word(self) -> &'static str {
         match self {
             Self::ReleaseLineTension => "release_line_tension",
             Self::CordAnchorTension => "cord_anchor_tension",
+            Self::LeftAnchorTension => "left_anchor_tension",
+            Self::RightAnchorTension => "right_anchor_tension",
             Self::ShuttlePosition => "shuttle_position",
             Self::ShuttleSpecificForce => "shuttle_specific_force",
         }
@@ -223,13 +235,23 @@ impl Role {
 
     /// Whether the role is one of the cells that tell if the cords are loaded.
     pub const fn is_tension(self) -> bool {
-        matches!(self, Self::ReleaseLineTension | Self::CordAnchorTension)
+        matches!(
+            self,
+            Self::ReleaseLineTension | Self::CordAnchorTension | Self::LeftAnchorTension | Self::RightAnchorTension
+        )
+    }
+
+    /// Whether a rig is usual without it: its absence needs no word.
+    pub const fn is_extra(self) -> bool {
+        matches!(self, Self::LeftAnchorTension | Self::RightAnchorTension)
     }
 
     /// The SI unit of the role's values.
     pub const fn unit(self) -> &'static str {
         match self {
-            Self::ReleaseLineTension | Self::CordAnchorTension => "N",
+            Self::ReleaseLineTension | Self::CordAnchorTension | Self::LeftAnchorTension | Self::RightAnchorTension => {
+                "N"
+            }
             Self::ShuttlePosition => "m",
             Self::ShuttleSpecificForce => "m/s^2",
         }

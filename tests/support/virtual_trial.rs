@@ -10,7 +10,7 @@ use tautrail::capture::{
 };
 use tautrail::rig::{Channel, Rig};
 use virtual_rig::device::DEVICES;
-use virtual_rig::performance::{Options, prepare};
+use virtual_rig::performance::{Options, Performance, prepare};
 use virtual_rig::play::virtual_time::{Delivered, VirtualPlay};
 use virtual_rig::truth::Truth;
 
@@ -26,6 +26,8 @@ pub struct VirtualTrial {
     pub truth: Truth,
     /// ∫ T dx of the true release line up to the end of the hold.
     pub winch_work_j: f64,
+    /// The motion as it truly was.
+    pub performance: Performance,
 }
 
 impl VirtualTrial {
@@ -68,7 +70,7 @@ pub fn play(options: &Options, rig: &Rig) -> VirtualTrial {
     let hook_s = truth.events.iter().find(|event| event.kind == "hook-opens").map_or(f64::INFINITY, |event| event.t_s);
     let rows = performance.trajectory.rows.windows(2).take_while(|pair| pair[1].t_s <= hook_s);
     let winch_work_j = rows.map(|pair| 0.5 * (pair[0].line_n + pair[1].line_n) * (pair[0].x_m - pair[1].x_m)).sum();
-    VirtualTrial { signals, truth, winch_work_j }
+    VirtualTrial { signals, truth, winch_work_j, performance }
 }
 
 impl Heard {

@@ -1,12 +1,18 @@
+use std::sync::LazyLock;
+
 use super::*;
 use crate::reading::synthetic::{Ending, Played, Trial, play};
-use crate::reading::{CfcFilter, Outcome, StartUp};
+use crate::reading::{CfcFilter, Decision, Outcome, StartUp};
 
 fn reading_of(trial: &Trial) -> (Played, Reading) {
     let played = play(trial);
     let reading = read(&played.signals, &trial.rig);
     (played, reading)
 }
+
+/// Nominal launches of seeds 1 to 24 and what is read of them, once for all tests.
+static SEEDS: LazyLock<Vec<(Played, Reading)>> =
+    LazyLock::new(|| (1..=24).map(|seed| reading_of(&Trial::nominal(seed))).collect());
 
 /// How often the interval held the truth, the errors' spread and the mean half-width, over seeds.
 struct Tally {
@@ -16,12 +22,11 @@ struct Tally {
 }
 
 impl Tally {
-    fn over(seeds: std::ops::RangeInclusive<u64>, name: &str, truth: impl Fn(&Played) -> f64) -> Self {
+    fn over(name: &str, truth: impl Fn(&Played) -> f64) -> Self {
         let mut tally = Self { errors: Vec::new(), half_widths: Vec::new(), n_inside: 0 };
-        for seed in seeds {
-            let (played, reading) = reading_of(&Trial::nominal(seed));
-            let row = reading.result(name).unwrap_or_else(|| panic!("seed {seed}: {:?}", reading.absence(name)));
-            let truth = truth(&played);
+        for (played, reading) in SEEDS.iter() {
+            let row = reading.result(name).unwrap_or_else(|| panic!("{:?}", reading.absence(name)));
+            let truth = truth(played);
             tally.errors.push(row.value - truth);
             tally.half_widths.push(0.5 * (row.high - row.low));
             tally.n_inside += usize::from((row.low..=row.high).contains(&truth));
@@ -53,7 +58,7 @@ impl Tally {
 
 #[test]
 fn launch_speed_is_that_at_separation_within_its_interval() {
-    let tally = Tally::over(1..=24, "launch_speed", |played| played.launch_speed_mps);
+    let tally = Tally::over("launch_speed", |played| played.launch_speed_mps);
     tally.show("launch speed, m/s");
     assert!(tally.quantile(0.95) < 0.002 * 17.0, "{}", tally.quantile(0.95));
     assert!(tally.n_inside >= 21, "{} of 24 inside", tally.n_inside);
@@ -62,7 +67,7 @@ fn launch_speed_is_that_at_separation_within_its_interval() {
 
 #[test]
 fn the_release_is_found_within_half_a_millisecond() {
-    let tally = Tally::over(1..=24, "release_time", |played| played.release_s);
+    let tally = Tally::over("release_time", |played| played.release_s);
     tally.show("release, s");
     assert!(tally.quantile(1.0) < 5e-4);
     assert!(tally.n_inside >= 21, "{} of 24 inside", tally.n_inside);
@@ -78,7 +83,7 @@ fn peak_g_is_that_of_the_noise_free_signal_through_the_same_filter() {
         stroke.filter(|(t, _)| (played.release_s..played.separation_s).contains(t)).map(|(_, f)| f).fold(0.0, f64::max)
             / 9.80665
     };
-    let tally = Tally::over(1..=24, "peak_g_cfc60_specific", truth);
+    let tally = Tally::over("peak_g_cfc60_specific", truth);
     tally.show("peak g");
     assert!(tally.quantile(0.95) < 0.01 * 8.0);
     assert!(tally.n_inside >= 21, "{} of 24 inside", tally.n_inside);
@@ -250,4 +255,84 @@ fn time_that_runs_backward_refuses_the_channel() {
     played.signals[2].time_s[5000] = 0.0;
     let reading = read(&played.signals, &trial.rig);
     assert!(reading.absence("peak_g_cfc60_specific").unwrap().reason.contains("time does not advance"));
+}
+
+#[test]
+fn verdicts_follow_the_results_and_a_wrong_mass_is_found_by_the_closure() {
+    let (_, reading) = reading_of(&Trial::nominal(1));
+    let verdict = |reading: &Reading, name: &str| reading.verdicts.iter().find(|v| v.name == name).unwrap().decision;
+    assert_eq!(verdict(&reading, "tension_limit"), Decision::Met);
+    assert_eq!(verdict(&reading, "planned_draw"), Decision::Met);
+    let (_, short) = reading_of(&Trial { draw_m: 3.0, ..Trial::nominal(1) });
+    assert_eq!(verdict(&short, "planned_draw"), Decision::Missed);
+    let (_, let_down) = reading_of(&Trial { ending: Ending::LetDown, ..Trial::nominal(1) });
+    assert_eq!(verdict(&let_down, "launch_speed_window"), Decision::NotDecidable);
+    let closure = reading.result("closure_force").unwrap();
+    assert!((closure.low..=closure.high).contains(&0.0), "{closure:?}");
+}
+
+#[test]
+fn a_bandwidth_too_narrow_or_unknown_is_never_called_a_class() {
+    let trial = Trial::nominal(4);
+    let mut played = play(&trial);
+    played.signals[2].bandwidth_hz = Some(500.0);
+    let reading = read(&played.signals, &trial.rig);
+    assert!(reading.result("peak_g_cfc180_specific").is_some());
+    let reason = &reading.absence("peak_g_cfc600_specific").unwrap().reason;
+    assert!(reason.contains("1000 Hz") && reason.contains("500 Hz"), "{reason}");
+    played.signals[2].bandwidth_hz = None;
+    let reading = read(&played.signals, &trial.rig);
+    let row = reading.result("peak_g_cfc60_specific").unwrap();
+    assert!(row.method.contains("filtered as CFC 60") && row.method.contains("not claimed"), "{row:?}");
+    let mut strict = trial.rig.clone();
+    strict.details.reading.least_rate_per_class = 100.0;
+    let reading = read(&played.signals, &strict);
+    let reason = &reading.absence("peak_g_cfc180_specific").unwrap().reason;
+    assert!(reason.contains("minimum_rate 100") && reason.contains("18000"), "{reason}");
+}
+
+#[test]
+fn left_and_right_anchors_give_an_asymmetry_and_a_verdict() {
+    let mut trial = Trial::nominal(4);
+    trial.rig.details.asymmetry_limit = Some(0.01);
+    let mut played = play(&trial);
+    for (role, share) in [(Role::LeftAnchorTension, 0.52), (Role::RightAnchorTension, 0.48)] {
+        let line = &played.signals[0];
+        let value = line.value.iter().map(|n| n * share).collect();
+        let side = Signal { role, name: role.word().to_owned(), value, ..line.clone() };
+        played.signals.push(side);
+    }
+    let reading = read(&played.signals, &trial.rig);
+    let row = reading.result("anchor_asymmetry").unwrap();
+    assert!((row.value - 0.04).abs() < 2.0 * row.standard_uncertainty, "{row:?}");
+    let verdict = reading.verdicts.iter().find(|verdict| verdict.name == "asymmetry_limit").unwrap();
+    assert_eq!(verdict.decision, Decision::Missed, "{verdict:?}");
+    played.signals.pop();
+    assert!(read(&played.signals, &trial.rig).absence("anchor_asymmetry").is_some());
+}
+
+#[test]
+fn a_hole_in_the_hold_is_told() {
+    let trial = Trial::nominal(6);
+    let played = play(&trial);
+    let signals: Vec<Signal> = played.signals.iter().map(|signal| cut(signal, played.release_s - 1.5, 0.3)).collect();
+    let reading = read(&signals, &trial.rig);
+    assert!(
+        reading.findings.iter().any(|finding| finding.contains("hole of 300 ms in the hold")),
+        "{:?}",
+        reading.findings
+    );
+}
+
+#[test]
+fn a_slipping_encoder_is_told_and_does_not_move_the_speed() {
+    let trial = Trial::nominal(6);
+    let mut played = play(&trial);
+    let encoder = &mut played.signals[1];
+    let at = encoder.time_s.partition_point(|t| *t < played.release_s + 0.3);
+    encoder.value[at..].iter_mut().for_each(|x_m| *x_m += 0.015);
+    let reading = read(&played.signals, &trial.rig);
+    assert!(reading.findings.iter().any(|finding| finding.contains("slipped")), "{:?}", reading.findings);
+    let speed = reading.result("launch_speed").unwrap();
+    assert!((speed.low..=speed.high).contains(&played.launch_speed_mps), "{speed:?}");
 }

@@ -68,11 +68,13 @@ fn the_page_has_every_key_and_no_other() {
         "losses",
         "limits",
         "plan",
+        "reading",
         "correlation",
         "stage",
         "cord",
         "proof_load",
         "device",
+        "input",
         "channel",
     ];
     let deeper = [
