@@ -134,7 +134,7 @@ fn two_trials_side_by_side_show_what_is_the_same_and_a_film_is_refused_with_both
     assert!(!differing.contains("launch_speed"), "{differing}");
     let dir = tempfile::tempdir().unwrap();
     let film = dir.path().join("film.csv");
-    let rows: Vec<String> = (0..20).map(|k| format!("{k},{:.5},{k}", f64::from(k) / 120.0)).collect();
+    let rows: Vec<String> = (0..20).map(|k| format!("{k},{:.6},{k}", f64::from(k) / 120.0)).collect();
     std::fs::write(&film, format!("frame,time_s,x_mm\n{}\n", rows.join("\n"))).unwrap();
     let output = tautrail(&["read", "--camera", film.to_str().unwrap(), "--frame-rate", "240", sealed()]);
     assert_eq!(output.status.code(), Some(2));

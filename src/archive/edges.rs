@@ -34,7 +34,7 @@ fn edge_seen(device: &str, edge: &Edge, pieces: &[ClockRow], zero_host_ns: i64) 
     };
     let piece = pieces.iter().filter(|piece| piece.boot_id == edge.boot_id).min_by_key(outside)?;
     let ticks = i128::from(edge.tick) - i128::from(piece.origin_tick);
-    let host_ns = piece.host_ns_at_origin as f64 + ticks as f64 * piece.ns_per_tick;
+    let host_ns = piece.host_ns_at_origin + ticks as f64 * piece.ns_per_tick;
     Some(EdgeSeen {
         device: device.to_owned(),
         input: edge.input,

@@ -245,11 +245,10 @@ fn contiguous(values: &[f64], width: f64) -> f64 {
         let inside = values[first..=last].iter().copied().fold(f64::INFINITY, f64::min);
         inside.min(at(begin)).min(at(begin + width))
     };
-    let Some(last_begin) =
-        (values.len() as f64 - 1.0 - width).is_sign_positive().then(|| values.len() as f64 - 1.0 - width)
-    else {
+    let last_begin = values.len() as f64 - 1.0 - width;
+    if last_begin < 0.0 {
         return f64::NAN;
-    };
+    }
     let coarse = (0..=last_begin.floor() as usize).map(|begin| begin as f64);
     let best = coarse.max_by(|a, b| level(*a).total_cmp(&level(*b))).unwrap_or(0.0);
     let fine = (0..=2 * FINE).map(|k| (best - 1.0 + k as f64 / FINE as f64).clamp(0.0, last_begin));
