@@ -59,12 +59,18 @@ struct StreamState {
     next_index: Option<u64>,
 }
 
+/// No stream gets so far in a device's life (two thousand years at 1 MHz), nor misses so much at once (12 days of that): a
+/// block that says so is refused, and the stream goes on from where it was.
+const INDEX_MAX: u64 = 1 << 56;
+const MISSING_MAX: u64 = 1 << 40;
+
 /// Why a frame received whole is refused all the same.
 type Refusal = &'static str;
 
 const NO_DESCRIPTION: Refusal = "samples before their description";
 const FROM_A_HOST: Refusal = "frame that only a host sends";
 const BACKWARD: Refusal = "index runs backward";
+const BEYOND: Refusal = "index beyond belief";
 const ODD_SAMPLES: Refusal = "samples do not fit the description";
 const OVERLONG: Refusal = "too long for a frame";
 const CUT_OFF: Refusal = "cut off when the link was lost";
@@ -188,10 +194,16 @@ impl State {
         sink: &mut impl FnMut(Captured),
     ) -> Result<(), Refusal> {
         let header = &frame.header;
+        if block.first_index > INDEX_MAX {
+            return Err(BEYOND);
+        }
         let stream = self.streams.entry(header.stream).or_default();
         let next_index = *stream.next_index.get_or_insert(block.first_index);
         let described = stream_of(self.description.as_ref(), header).ok_or(NO_DESCRIPTION)?;
         let n_missing = block.first_index.checked_sub(next_index).ok_or(BACKWARD)?;
+        if n_missing > MISSING_MAX {
+            return Err(BEYOND);
+        }
         let next_index = block.first_index.checked_add(block.n_samples.into()).ok_or(BACKWARD)?;
         let counts = unpack::unpack(block.samples, block.n_samples.into(), described).ok_or(ODD_SAMPLES)?;
         if n_missing > 0 {

@@ -14,11 +14,17 @@ const HIDDEN_DELAY_NS: f64 = 3e6;
 const UNSWEPT_PART: f64 = 0.4;
 /// Weight of the nominal rate while there is one second to go by; it falls with the square of the seconds.
 const NOMINAL_WEIGHT_NS: f64 = 1e6;
+/// A clock is taken to be worse than its stated tolerance when the corridor is wider at another rate by this and by
+/// this many mean latenesses.
+const DISTRUST_NS: f64 = 1e6;
+const DISTRUST_LATENESS: f64 = 3.0;
 /// Added to a clock's stated tolerance before it is used as a prior.
 const TOLERANCE_MARGIN_PPM: f64 = 100.0;
 const NS_PER_S_PER_PPM: f64 = 1e3;
 const GOLDEN: f64 = 0.618_033_988_749_894_8;
 const N_SECTIONS: u32 = 56;
+/// To within a part per million.
+const N_SECTIONS_ROUGH: u32 = 22;
 /// Device time that a line may be fitted to.
 const WINDOWS_S: [f64; 4] = [WINDOW_S, 15.0, 7.5, 3.75];
 pub(super) const WINDOW_S: f64 = 30.0;
@@ -130,7 +136,7 @@ impl<'b> Corridor<'b> {
     fn line(&self, nominal: NominalClock) -> Line {
         let rate_prior = (2.0 * nominal.tolerance_ppm + TOLERANCE_MARGIN_PPM) * NS_PER_S_PER_PPM;
         let weight_ns = NOMINAL_WEIGHT_NS / (self.span_s * self.span_s).max(1.0);
-        let slope = peak(|slope| self.width_ns(slope) - weight_ns * (slope / rate_prior).powi(2));
+        let (slope, rate_believed) = self.slope(rate_prior, weight_ns);
         let late = Lateness::of(&self.above, slope, self.centre_s);
         let unswept_ns = (UNSWEPT_PART * late.mean_ns).max(FIRST_HOLD_NS / late.n);
         let mut line = Line {
@@ -154,8 +160,22 @@ impl<'b> Corridor<'b> {
             line.u_slope_ns_per_s = (2.0 * line.jitter_ns + 4.0 * line.unsteady_ns + weight_ns) / self.span_s;
             line.method = ClockMethod::Exchanges;
         }
-        line.u_slope_ns_per_s = line.u_slope_ns_per_s.min(rate_prior / 3_f64.sqrt());
+        line.u_slope_ns_per_s = line.u_slope_ns_per_s.min(rate_believed / 3_f64.sqrt());
         line
+    }
+
+    /// The slope, and how far from the nominal rate the clock is believed to be at most. A stated tolerance is believed
+    /// until the bounds leave clearly more room elsewhere; what they could not have shown yet is reckoned with.
+    fn slope(&self, rate_prior: f64, weight_ns: f64) -> (f64, f64) {
+        let slope = peak(N_SECTIONS, |slope| self.width_ns(slope) - weight_ns * (slope / rate_prior).powi(2));
+        let free = peak(N_SECTIONS_ROUGH, |slope| self.width_ns(slope));
+        let usual_ns =
+            DISTRUST_NS + DISTRUST_LATENESS * Lateness::of(&self.above, free, self.centre_s).mean_ns.max(0.0);
+        if self.width_ns(free) - self.width_ns(slope) > usual_ns {
+            return (peak(N_SECTIONS, |slope| self.width_ns(slope)), STEEPEST_NS_PER_S);
+        }
+        let not_shown = (2.0 * usual_ns / self.span_s.max(f64::MIN_POSITIVE)).min(STEEPEST_NS_PER_S);
+        (slope, rate_prior.max(not_shown))
     }
 
     /// How far apart two lines of this slope stay that touch the bounds.
@@ -166,11 +186,11 @@ impl<'b> Corridor<'b> {
 }
 
 /// The slope where a concave function peaks, by golden section.
-fn peak(height: impl Fn(f64) -> f64) -> f64 {
+fn peak(n_sections: u32, height: impl Fn(f64) -> f64) -> f64 {
     let (mut low, mut high) = (-STEEPEST_NS_PER_S, STEEPEST_NS_PER_S);
     let mut inner = [high - GOLDEN * (high - low), low + GOLDEN * (high - low)];
     let mut heights = inner.map(&height);
-    for _ in 0..N_SECTIONS {
+    for _ in 0..n_sections {
         if heights[0] < heights[1] {
             low = inner[0];
             inner = [inner[1], low + GOLDEN * (high - low)];

@@ -263,3 +263,23 @@ proptest! {
         prop_assert_eq!(pieces, whole);
     }
 }
+
+#[test]
+fn an_index_beyond_belief_stops_no_stream() {
+    let mut device = Device::booted(7);
+    let mut decoder = FrameDecoder::new();
+    let mut heard = Vec::new();
+    let mut feed = |bytes: &[u8]| decoder.feed(1, bytes, &mut |captured| heard.push(captured));
+    feed(&device.describe());
+    for odd in [u64::MAX - 1, u64::MAX, 1 << 57, 1 << 41] {
+        feed(&device.block());
+        let next = std::mem::replace(&mut device.next_index, odd.saturating_sub(2));
+        feed(&device.block());
+        device.next_index = next;
+    }
+    feed(&device.block());
+    let blocks = heard.iter().filter(|captured| matches!(captured, Captured::Block(_))).count();
+    let gaps = heard.iter().filter(|captured| matches!(captured, Captured::Gap(_))).count();
+    assert_eq!((blocks, gaps), (5, 0));
+    assert_eq!(decoder.counters().refused["index beyond belief"], 4);
+}

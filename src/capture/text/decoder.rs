@@ -10,9 +10,6 @@ use crate::rig::{Device, TextInstrument};
 const FIRST: Refusal = "first line after the link came up, perhaps cut";
 const OVERLONG: Refusal = "too long for a line";
 const CUT_OFF: Refusal = "cut off when the link was lost";
-/// Without a device's time, readings are missed only after this many intervals, and not before this time.
-const SILENT_INTERVALS: f64 = 3.0;
-const SILENT_NS: f64 = 1e8;
 
 /// Decodes one text device's bytes.
 #[derive(Debug)]
@@ -34,6 +31,8 @@ pub struct TextDecoder {
     last: Option<Last>,
     /// Lines refused since the last reading: each may have been one.
     n_refused: u64,
+    /// The bytes since the last reading did not follow the ones before.
+    broken_off: bool,
     counters: Counters,
 }
 
@@ -73,6 +72,7 @@ impl TextDecoder {
             next_index: 0,
             last: None,
             n_refused: 0,
+            broken_off: false,
             counters: Counters::default(),
         }
     }
@@ -101,6 +101,7 @@ impl TextDecoder {
             self.reject(host_ns, CUT_OFF, partial, sink);
         }
         (self.in_step, self.header_left) = (false, self.header_lines);
+        self.broken_off = true;
     }
 
     pub fn description(&self) -> &DeviceDescription {
@@ -214,21 +215,20 @@ impl TextDecoder {
         }));
         self.next_index += 1;
         self.last = Some(Last { tick, boot_id });
-        self.n_refused = 0;
+        (self.n_refused, self.broken_off) = (0, false);
     }
 
-    /// Readings missing before this one.
+    /// Readings missing before this one. Arrivals alone tell only where the link was broken off: bytes that merely came
+    /// late come all the same, and an instrument that was switched off took no readings.
     fn n_missing(&self, tick: u64) -> u64 {
         let Some(last) = self.last else { return 0 };
-        let passed_ns = tick.saturating_sub(last.tick) as f64;
-        let silent_ns = if self.time.is_some() {
-            1.5 * self.interval_ns
-        } else {
-            (SILENT_INTERVALS * self.interval_ns).max(SILENT_NS)
-        };
-        let by_time = if passed_ns > silent_ns { (passed_ns / self.interval_ns).round() as u64 - 1 } else { 0 };
-        // Told apart by the device's time, refused lines are readings only where time passed for them.
-        if self.time.is_some() { by_time } else { by_time.max(self.n_refused) }
+        let intervals = tick.saturating_sub(last.tick) as f64 / self.interval_ns;
+        let by_time = if intervals > 1.5 { intervals.round() as u64 - 1 } else { 0 };
+        match (&self.time, self.broken_off) {
+            (Some(_), _) => by_time,
+            (None, true) => by_time.max(self.n_refused),
+            (None, false) => self.n_refused,
+        }
     }
 }
 
