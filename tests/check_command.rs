@@ -168,6 +168,7 @@ fn programs_get_the_same_findings_as_json() {
     let value: serde_json::Value = serde_json::from_str(&said(&output)).expect("it is JSON");
     assert_eq!(value["usable"], false);
     assert_eq!(value["ports_looked_for"], false);
+    assert_eq!(value["machine_ports"], serde_json::json!([]), "nothing is looked for at the desk");
     assert_eq!(value["findings"][1]["key"], "rail.inclin");
     assert_eq!((&value["findings"][1]["line"], &value["findings"][1]["column"]), (&16.into(), &1.into()));
     let failed = check(folder.path(), &["--json", "absent.toml"]);

@@ -19,6 +19,12 @@ pub(super) enum Told {
     },
     /// A description that was in force when the range began.
     Known(DeviceIdx, DeviceDescription),
+    /// One read; what it decodes to comes before it.
+    Read {
+        device: DeviceIdx,
+        host_ns: i64,
+        n_bytes: u64,
+    },
     Captured(DeviceIdx, Captured),
     TimeRequested {
         device: DeviceIdx,
@@ -30,6 +36,8 @@ pub(super) enum Told {
         device: DeviceIdx,
         host_ns: i64,
         text: String,
+        /// The port was lost, or could not be opened.
+        down: bool,
     },
     Clocks(Clocks),
     Event {
@@ -129,21 +137,27 @@ impl Player<'_> {
             Body::Link(LinkWhat::TimeRequested { token }) => {
                 (self.tell)(Told::TimeRequested { device, host_ns, token })
             }
-            Body::Link(LinkWhat::Up { path, baud }) => {
-                (self.tell)(Told::Link { device, host_ns, text: format!("link up: {path} at {baud} baud") })
-            }
+            Body::Link(LinkWhat::Up { path, baud }) => (self.tell)(Told::Link {
+                device,
+                host_ns,
+                text: format!("link up: {path} at {baud} baud"),
+                down: false,
+            }),
             Body::Link(LinkWhat::Down { reason }) => {
-                (self.tell)(Told::Link { device, host_ns, text: format!("link down: {reason}") })
+                (self.tell)(Told::Link { device, host_ns, text: format!("link down: {reason}"), down: true })
             }
             Body::Link(LinkWhat::Note { text }) => {
-                (self.tell)(Told::Link { device, host_ns, text: format!("link note: {text}") })
+                (self.tell)(Told::Link { device, host_ns, text: format!("link note: {text}"), down: false })
             }
             Body::Clocks(clocks) => (self.tell)(Told::Clocks(clocks)),
             Body::Event(event) => (self.tell)(Told::Event { host_ns, event }),
             Body::TrialOpen(open) => self.trial_event(host_ns, open.person, format!("opened: {}", open.reason)),
             Body::TrialClose(close) => self.trial_event(host_ns, close.person, format!("closed: {}", close.reason)),
             Body::Lost(lost) => (self.tell)(Told::Lost { device, host_ns, lost }),
-            Body::Link(LinkWhat::Bytes(_)) | Body::Heartbeat | Body::SegmentOpen(_) | Body::Unknown { .. } => Ok(()),
+            Body::Link(LinkWhat::Bytes(bytes)) => {
+                (self.tell)(Told::Read { device, host_ns, n_bytes: bytes.len() as u64 })
+            }
+            Body::Heartbeat | Body::SegmentOpen(_) | Body::Unknown { .. } => Ok(()),
         }
     }
 

@@ -6,7 +6,7 @@ use crate::journal::{Damage, SegmentOpen};
 use crate::link::{DeviceIdx, Lost};
 use crate::rig::{Attached, Rig, take_apart};
 use crate::trial::{
-    BlockRow, CarriedText, ClockRow, EventRow, ExchangeRow, HostClocksRow, RawDevice, TextLine, TrialWriter,
+    BlockRow, CarriedText, ClockRow, EventRow, ExchangeRow, HostClocksRow, LinkHealth, RawDevice, TextLine, TrialWriter,
 };
 
 use super::error::SealError;
@@ -27,6 +27,24 @@ pub(super) struct DevicePass {
     n_more_edges: u64,
     pub(super) n_samples: u64,
     pub(super) n_missing: u64,
+    link: LinkHealth,
+    last_read_ns: Option<i64>,
+}
+
+impl DevicePass {
+    fn read(&mut self, host_ns: i64, n_bytes: u64) {
+        self.link.n_reads += 1;
+        self.link.n_bytes += n_bytes;
+        let stalled_s = self.last_read_ns.map_or(0.0, |last_ns| seconds_between(last_ns, host_ns));
+        self.link.longest_stall_s = self.link.longest_stall_s.max(stalled_s);
+        self.last_read_ns = Some(host_ns);
+    }
+
+    /// Time without a link is no stall.
+    fn link_changed(&mut self, down: bool) {
+        self.link.n_link_losses += u64::from(down && self.last_read_ns.is_some());
+        self.last_read_ns = None;
+    }
 }
 
 #[derive(Debug)]
@@ -112,6 +130,10 @@ impl<'w> RawPass<'w> {
                 boottime_ns: clocks.boottime_ns,
                 realtime_ns: clocks.realtime_ns,
             })?),
+            Told::Read { device, host_ns, n_bytes } => {
+                self.devices[usize::from(device.0)].read(host_ns, n_bytes);
+                Ok(())
+            }
             other => {
                 self.event(other);
                 Ok(())
@@ -121,7 +143,8 @@ impl<'w> RawPass<'w> {
 
     fn event(&mut self, told: Told) {
         match told {
-            Told::Link { device, host_ns, text } => {
+            Told::Link { device, host_ns, text, down } => {
+                self.devices[usize::from(device.0)].link_changed(down);
                 let (time_s, source) = (self.time_s(host_ns), self.devices[usize::from(device.0)].name.clone());
                 self.events.add(time_s, "link", &source, None, text);
             }
@@ -138,6 +161,7 @@ impl<'w> RawPass<'w> {
             Told::Opening { .. }
             | Told::Known(..)
             | Told::Captured(..)
+            | Told::Read { .. }
             | Told::TimeRequested { .. }
             | Told::Clocks(_) => {}
         }
@@ -154,7 +178,19 @@ impl<'w> RawPass<'w> {
             let handle = self.writer.add_device(&device.name)?;
             let (name, clock) = (device.name.clone(), ClockSamples::default());
             let (layout, edges, n_more_edges, n_samples, n_missing) = (0, Vec::new(), 0, 0, 0);
-            let device = DevicePass { name, handle, layout, clock, edges, n_more_edges, n_samples, n_missing };
+            let (link, last_read_ns) = (LinkHealth::default(), None);
+            let device = DevicePass {
+                name,
+                handle,
+                layout,
+                clock,
+                edges,
+                n_more_edges,
+                n_samples,
+                n_missing,
+                link,
+                last_read_ns,
+            };
             self.devices.push(device);
         }
         if self.rig_text.as_ref() != Some(&open.rig_text) {
@@ -205,6 +241,8 @@ impl<'w> RawPass<'w> {
             }
             Captured::Gap(gap) => {
                 device.n_missing = device.n_missing.saturating_add(gap.n_missing);
+                device.link.n_gaps += 1;
+                device.link.n_missing_samples = device.n_missing;
                 writer.append_gap(handle, &gap)?;
             }
             Captured::Edge(edge) => {
@@ -217,7 +255,10 @@ impl<'w> RawPass<'w> {
             }
             Captured::Status(status) => writer.append_status(handle, &status)?,
             Captured::Text { host_ns, text } => writer.append_text_line(handle, &TextLine { host_ns, text })?,
-            Captured::Rejected(rejected) => writer.append_rejected(handle, &rejected)?,
+            Captured::Rejected(rejected) => {
+                *device.link.refused.entry(rejected.reason.to_owned()).or_default() += 1;
+                writer.append_rejected(handle, &rejected)?;
+            }
             Captured::TimeReply(_) | Captured::Description(_) => {}
         }
         Ok(())
@@ -229,6 +270,7 @@ impl<'w> RawPass<'w> {
         for device in &self.devices {
             let pieces = device.clock.fit();
             write_clock(self.writer, device, &pieces)?;
+            self.writer.write_link_health(device.handle, &device.link)?;
             for edge in &device.edges {
                 let time_s = edge_time_s(edge, &pieces, self.zero_host_ns);
                 let direction = if edge.rising { "rising" } else { "falling" };

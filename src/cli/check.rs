@@ -6,14 +6,19 @@ use std::os::unix::fs::FileTypeExt;
 use std::path::{Path, PathBuf};
 
 use serde_json::{Value, json};
+use tautrail::feed::message::LinkNow;
+use tautrail::link::{self, ListedPort};
 use tautrail::rig::{self, CalibrationRecord, Checked, Device, Finding, RecordState, Rig, Severity};
 
+use super::feed_place::FeedPlace;
+use super::link_health;
 use super::screen::{Screen, Tone};
 use super::{CAUTION, Failure, Verdict, cord};
 
 /// Read a rig file and say what is wrong and where, what is uncalibrated, which ports are there
 ///
-/// No port is opened: opening one resets many small boards.
+/// No port is opened: opening one resets many small boards. The machine's ports are listed with the names that stay the same
+/// after a replug; of a daemon that records this rig here, the health of each link is told.
 #[derive(Debug, clap::Args)]
 #[command(after_help = CHECK_HELP)]
 pub struct Args {
@@ -25,6 +30,9 @@ pub struct Args {
     /// Count what each cord has served from the trials of this archive directory, and say which are to come off
     #[arg(long, value_name = "DIR")]
     trials: Option<PathBuf>,
+    /// The daemon whose links are shown, if one records this rig
+    #[command(flatten)]
+    daemon: FeedPlace,
 }
 
 const CHECK_HELP: &str = "\
@@ -44,10 +52,11 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     let checked = rig::check(&text);
     let devices = checked.rig.as_ref().filter(|_| !args.no_ports).map_or(&[][..], |rig| &rig.devices);
     let ports: Vec<Port<'_>> = devices.iter().map(|device| Port::look(&args.rig, device)).collect();
+    let around = Around::of(args, checked.rig.as_ref());
     if screen.json {
-        screen.value(&as_json(args, &checked, &ports));
+        screen.value(&as_json(args, &checked, &ports, &around));
     } else {
-        print(args, &checked, &ports, screen);
+        print(args, &checked, &ports, &around, screen);
     }
     let worn = match (&args.trials, &checked.rig) {
         (Some(dir), Some(rig)) => cord::check_service(rig, dir, screen)?,
@@ -55,6 +64,21 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     };
     let usable = checked.rig.is_some() && ports.iter().all(|port| port.state.is_present()) && !worn;
     Ok(if usable { Verdict::Done } else { Verdict::CheckFailed })
+}
+
+/// What is there beside the rig file's own ports.
+#[derive(Default)]
+struct Around {
+    listed: Vec<ListedPort>,
+    /// Of a daemon that records this rig.
+    links: Vec<LinkNow>,
+}
+
+impl Around {
+    fn of(args: &Args, rig: Option<&Rig>) -> Self {
+        let Some(rig) = rig.filter(|_| !args.no_ports) else { return Self::default() };
+        Self { listed: link::list(), links: link_health::ask(&args.daemon.socket(), &rig.name).unwrap_or_default() }
+    }
 }
 
 /// A device's port as the file system shows it.
@@ -108,7 +132,7 @@ impl<'a> Port<'a> {
     }
 }
 
-fn print(args: &Args, checked: &Checked, ports: &[Port<'_>], screen: &Screen) {
+fn print(args: &Args, checked: &Checked, ports: &[Port<'_>], around: &Around, screen: &Screen) {
     let path = args.rig.display();
     for finding in &checked.findings {
         let Finding { line, column, key, message, severity } = finding;
@@ -131,7 +155,20 @@ fn print(args: &Args, checked: &Checked, ports: &[Port<'_>], screen: &Screen) {
     if args.no_ports {
         screen.line("ports were not looked for (--no-ports)");
     }
+    print_around(ports, around, screen);
     screen.line(CAUTION);
+}
+
+fn print_around(ports: &[Port<'_>], around: &Around, screen: &Screen) {
+    for link in &around.links {
+        screen.line(link_health::sentence(link));
+    }
+    for listed in &around.listed {
+        let used = ports.iter().find(|port| fs::canonicalize(&port.path).is_ok_and(|node| node == listed.node));
+        let by = used.map_or("not in this rig file".to_owned(), |port| format!("taken by {}", port.device));
+        let stable = if listed.stable { "" } else { ", name may change after a replug" };
+        screen.line(format!("on this machine: {} ({}{stable}), {by}", listed.path.display(), listed.node.display()));
+    }
 }
 
 fn print_rig(rig: &Rig, screen: &Screen) {
@@ -171,7 +208,7 @@ pub fn today() -> Option<jiff::civil::Date> {
     Some(jiff::tz::Offset::UTC.to_datetime(jiff::Timestamp::now()).date())
 }
 
-fn as_json(args: &Args, checked: &Checked, ports: &[Port<'_>]) -> Value {
+fn as_json(args: &Args, checked: &Checked, ports: &[Port<'_>], around: &Around) -> Value {
     let findings: Vec<Value> = checked
         .findings
         .iter()
@@ -192,10 +229,16 @@ fn as_json(args: &Args, checked: &Checked, ports: &[Port<'_>]) -> Value {
         })
         .collect();
     let doubts = checked.rig.as_ref().map(|rig| tautrail::calibration::doubts(rig, today())).unwrap_or_default();
+    let listed: Vec<Value> = around
+        .listed
+        .iter()
+        .map(|port| json!({ "path": port.path, "node": port.node, "stable": port.stable }))
+        .collect();
     let names = |rig: &Rig| rig.uncalibrated.iter().map(|channel| channel.name.clone()).collect::<Vec<_>>();
     json!({
         "rig_file": args.rig, "usable": checked.rig.is_some(), "rig": checked.rig.as_ref().map(|rig| &rig.name),
         "findings": findings, "calibration_doubts": doubts, "uncalibrated": checked.rig.as_ref().map(names).unwrap_or_default(),
         "ports_looked_for": checked.rig.is_some() && !args.no_ports, "ports": ports, "caution": CAUTION,
+        "machine_ports": listed, "links": around.links,
     })
 }

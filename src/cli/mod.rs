@@ -12,6 +12,7 @@ mod cord;
 mod daemon;
 mod feed_place;
 mod forecast;
+mod link_health;
 mod mark;
 mod measured;
 mod open;

@@ -7,6 +7,7 @@
 mod clock;
 mod event;
 mod from_links;
+mod listing;
 mod low_latency;
 mod overruns;
 mod port;
@@ -19,6 +20,7 @@ mod threads;
 pub use clock::{HostClock, SystemClock};
 pub use event::{DeviceIdx, LinkEvent, LinkWhat, STOPPED};
 pub use from_links::{FromLinks, Lost};
+pub use listing::{ListedPort, list};
 pub use port::{PortError, look};
 pub use sinks::Sinks;
 pub use task::{Asks, PortSpec};

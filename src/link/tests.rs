@@ -172,3 +172,66 @@ fn the_heartbeat_comes_fifty_times_a_second() {
     let n = journal.iter().filter(|item| matches!(item, FromLinks::Heartbeat { .. })).count();
     assert!((40..=55).contains(&n), "{n} heartbeats in a second");
 }
+
+#[test]
+fn an_order_to_stop_is_heard_on_a_port_that_never_falls_silent() {
+    let pty = Pty::new();
+    let (links, journal, _live) = start(pty.path.clone());
+    await_event(&journal, is_up);
+    let mut master = pty.master.try_clone().unwrap();
+    let flood = std::thread::spawn(move || while master.write_all(&[7; 4096]).is_ok() {});
+    await_event(&journal, |what| matches!(what, LinkWhat::Bytes(_)).then_some(()));
+    let begun = Instant::now();
+    let stopping = std::thread::spawn(move || links.stop().unwrap());
+    let down = await_event(&journal, reason_down);
+    assert_eq!(down, STOPPED);
+    stopping.join().unwrap();
+    assert!(begun.elapsed() < Duration::from_secs(4), "{:?}", begun.elapsed());
+    drop(pty); // the far end goes: the flood ends
+    drop(journal);
+    flood.join().unwrap();
+}
+
+fn start_text(
+    path: PathBuf,
+    start: Option<&'static str>,
+    poll: Option<(&'static str, u64)>,
+) -> (Links, Receiver<FromLinks>) {
+    let ((journal, journal_end), (live, _)) = (bounded(10_000), bounded(10_000));
+    let asks = Asks::Text {
+        start: start.map(|text| text.as_bytes().into()),
+        poll: poll.map(|(text, ms)| (text.as_bytes().into(), Duration::from_millis(ms))),
+    };
+    let links =
+        spawn_links(vec![spec(path, asks)], Sinks { journal, live }, std::sync::Arc::new(SystemClock), 1).unwrap();
+    (links, journal_end)
+}
+
+/// Reads what the device was told until it holds `n` times `part`.
+fn told(pty: &mut Pty, part: &str, n: usize) -> String {
+    let (mut all, mut read) = (String::new(), [0; 4096]);
+    while all.matches(part).count() < n {
+        let n = pty.master.read(&mut read).unwrap();
+        all.push_str(std::str::from_utf8(&read[..n]).unwrap());
+    }
+    all
+}
+
+#[test]
+fn a_text_instrument_is_started_again_while_nothing_comes_and_asked_for_nothing_else() {
+    let mut pty = Pty::new();
+    let (links, _journal) = start_text(pty.path.clone(), Some("RUN\r\n"), None);
+    // At the opening, soon after (boards boot), and while it stays silent.
+    assert_eq!(told(&mut pty, "RUN\r\n", 3), "RUN\r\n".repeat(3));
+    links.stop().unwrap();
+}
+
+#[test]
+fn a_polled_instrument_is_polled_at_its_interval() {
+    let mut pty = Pty::new();
+    let (links, _journal) = start_text(pty.path.clone(), None, Some(("P\n", 50)));
+    let begun = Instant::now();
+    assert_eq!(told(&mut pty, "P\n", 10), "P\n".repeat(10));
+    assert!(begun.elapsed() >= Duration::from_millis(8 * 50), "{:?}", begun.elapsed());
+    links.stop().unwrap();
+}

@@ -1,5 +1,6 @@
 //! What goes into a trial file, as plain data. The writer streams the large parts.
 
+use super::link_health::LinkHealth;
 use crate::capture::{Counts, DeviceDescription, Edge, Encoding, Gap, Status};
 
 /// Everything about a trial that is known before its samples are written.
@@ -137,6 +138,8 @@ pub struct DeviceRecord {
     pub rejected: Vec<RefusedBytes>,
     /// Refusals beyond the cap, counted only.
     pub rejected_not_kept: u64,
+    /// Absent in files of earlier versions.
+    pub link: Option<LinkHealth>,
 }
 
 /// A text carried whole: rig file, card, record.

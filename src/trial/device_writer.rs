@@ -10,6 +10,7 @@ use super::content::{BlockRow, TextLine};
 use super::description::{encoding_word, to_json};
 use super::digest::{DatasetDigest, group_digest};
 use super::error::TrialError;
+use super::link_health::{self, LinkHealth};
 use super::names::free_member_name;
 use super::schema::{
     BlockTable, EdgeTable, GapTable, RESERVED, RejectedRow, RejectedTable, StatusTable, TextLineTable,
@@ -172,6 +173,10 @@ impl DeviceWriter {
 
     pub(super) fn rejected(&mut self, rejected: &Rejected) -> Result<(), TrialError> {
         self.rejected.push(rejected)
+    }
+
+    pub(super) fn link_health(&self, health: &LinkHealth) -> Result<(), TrialError> {
+        link_health::write(&self.group, health)
     }
 
     /// Ends the device; gives its digest in hex.

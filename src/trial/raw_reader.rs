@@ -5,6 +5,7 @@ use super::content::{BlockRow, DeviceRecord, RawChannel, RawCounts, RefusedBytes
 use super::description::{encoding_from_word, from_json};
 use super::digest::{DatasetDigest, devices_digest, group_digest};
 use super::error::TrialError;
+use super::link_health;
 use super::members::Members;
 use super::reader::TrialFile;
 use super::schema::{
@@ -85,6 +86,7 @@ impl TrialFile {
             text_lines: TextLineTable::read(&group.child("text_lines")?)?,
             rejected: refused_bytes(&rejected)?,
             rejected_not_kept: get_number(rejected.group(), "not_kept")?,
+            link: link_health::read(group.group())?,
         })
     }
 

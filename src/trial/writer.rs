@@ -19,6 +19,7 @@ use super::content::{
 use super::device_writer::DeviceWriter;
 use super::digest::{devices_digest, text_sha256};
 use super::error::{Doing, TrialError};
+use super::link_health::LinkHealth;
 use super::names::free_member_name;
 use super::results_writer;
 use super::schema::{ClockTable, EventTable, ExchangeTable, FORMAT_NAME, FORMAT_VERSION, HostClocksTable};
@@ -143,6 +144,10 @@ impl TrialWriter {
     /// Keeps refused bytes up to 1 MiB and 10 000 refusals a device; counts what is beyond.
     pub fn append_rejected(&mut self, device: RawDevice, rejected: &Rejected) -> Result<(), TrialError> {
         self.devices[device.0].1.rejected(rejected)
+    }
+
+    pub fn write_link_health(&mut self, device: RawDevice, health: &LinkHealth) -> Result<(), TrialError> {
+        self.devices[device.0].1.link_health(health)
     }
 
     pub fn append_host_clocks(&mut self, row: &HostClocksRow) -> Result<(), TrialError> {
