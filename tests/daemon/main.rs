@@ -10,4 +10,5 @@ mod daemon_process;
 mod refusals;
 mod small_disk;
 mod stage;
+mod text;
 mod whole_trial;

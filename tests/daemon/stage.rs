@@ -51,6 +51,8 @@ pub struct DeviceTruth {
 pub struct StreamTruth {
     /// Sequence, first index, samples, checksum of the frame.
     pub blocks: Vec<(u32, u64, u32, u32)>,
+    /// Places of blocks whose bytes the line changed.
+    pub touched: Vec<u32>,
 }
 
 /// Worked out once: the physics of the nominal launch, its slow phases in three tenths of their time.
@@ -61,8 +63,13 @@ fn performance() -> &'static Performance {
 
 impl Stage {
     pub fn new() -> Self {
+        Self::of_rig("north-pier.toml")
+    }
+
+    /// With a rig file of the rehearsal's.
+    pub fn of_rig(name: &str) -> Self {
         let dir = tempfile::tempdir().expect("a directory");
-        let rig = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
+        let rig = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal").join(name);
         std::fs::copy(rig, dir.path().join("rig.toml")).expect("the rig file");
         Self { dir }
     }
@@ -88,6 +95,19 @@ impl Stage {
         let ready = settings.dir.join("ports").join(DEVICES[1]);
         let thread = std::thread::spawn(move || {
             play(performance, &settings).expect("the rig plays");
+        });
+        wait_until("the rig's ports", || ready.exists());
+        Playing { stop, thread }
+    }
+
+    /// The same of another performance.
+    pub fn play_of(&self, dir: &str, performance: Performance) -> Playing {
+        let stop = Arc::new(AtomicBool::new(false));
+        let settings = PtySettings { dir: self.path(dir), wait_for_start: PATIENCE, stop: Arc::clone(&stop) };
+        let last = performance.devices.last().expect("a device").name;
+        let ready = settings.dir.join("ports").join(last);
+        let thread = std::thread::spawn(move || {
+            play(&performance, &settings).expect("the rig plays");
         });
         wait_until("the rig's ports", || ready.exists());
         Playing { stop, thread }
@@ -168,10 +188,23 @@ impl Truth {
         self.events.iter().find(|event| event.kind == kind).unwrap_or_else(|| panic!("{kind} in the truth")).host_ns
     }
 
+    fn device(&self, name: &str) -> &DeviceTruth {
+        self.devices.iter().find(|truth| truth.name == name).expect("the device")
+    }
+
+    /// Checksums of the lines that a text device printed, in order.
+    pub fn lines(&self, device: &str) -> Vec<u32> {
+        self.device(device).streams.iter().flat_map(|stream| &stream.blocks).map(|block| block.3).collect()
+    }
+
+    /// How many of them the line changed.
+    pub fn touched(&self, device: &str) -> usize {
+        self.device(device).streams.iter().map(|stream| stream.touched.len()).sum()
+    }
+
     /// By first index.
     fn blocks(&self, device: &str) -> BTreeMap<u64, (u32, u32, u32)> {
-        let device = self.devices.iter().find(|truth| truth.name == device).expect("the device");
-        let blocks = device.streams.iter().flat_map(|stream| &stream.blocks);
+        let blocks = self.device(device).streams.iter().flat_map(|stream| &stream.blocks);
         blocks.map(|&(sequence, first_index, n, crc)| (first_index, (sequence, n, crc))).collect()
     }
 

@@ -35,7 +35,8 @@ impl Drop for Pty {
 
 impl Pty {
     fn open(link: &Path) -> Result<Self, PlayError> {
-        let flags = OpenptFlags::RDWR | OpenptFlags::NOCTTY;
+        // Inherited by a child of the test's, an end would stay open when the cable is pulled.
+        let flags = OpenptFlags::RDWR | OpenptFlags::NOCTTY | OpenptFlags::CLOEXEC;
         let master = rustix::pty::openpt(flags).map_err(system(format!("open a pty for {}", link.display())))?;
         rustix::pty::grantpt(&master).map_err(system("grant the pty"))?;
         rustix::pty::unlockpt(&master).map_err(system("unlock the pty"))?;
@@ -44,7 +45,7 @@ impl Pty {
         rustix::termios::tcsetattr(&master, OptionalActions::Now, &settings).map_err(system("make the pty raw"))?;
         rustix::io::ioctl_fionbio(&master, true).map_err(system("make the pty non-blocking"))?;
         let slave_name = rustix::pty::ptsname(&master, Vec::new()).map_err(system("name the pty"))?;
-        let slave = rustix::fs::open(&slave_name, OFlags::RDWR | OFlags::NOCTTY, Mode::empty())
+        let slave = rustix::fs::open(&slave_name, OFlags::RDWR | OFlags::NOCTTY | OFlags::CLOEXEC, Mode::empty())
             .map_err(system("open the pty's other end"))?;
         if link.symlink_metadata().is_ok() {
             std::fs::remove_file(link).map_err(system(format!("remove the old {}", link.display())))?;

@@ -1,0 +1,127 @@
+//! Instruments that print text, from pty to sealed trial: the real daemon, the virtual rig's indicator, polled display and
+//! hobby board.
+
+use std::sync::OnceLock;
+
+use tautrail::trial::BlockRow;
+use virtual_rig::device::catalogue::SensorSet;
+use virtual_rig::performance::{Options, Performance, prepare};
+
+use crate::stage::{Stage, Truth};
+
+const INSTRUMENTS: [&str; 3] = ["hold-display", "anchor-display", "shuttle-board"];
+
+fn performance(faults: &[&str]) -> Performance {
+    static PLAIN: OnceLock<Performance> = OnceLock::new();
+    let options = Options { pace: 0.3, sensors: SensorSet::Text, ..Options::default() };
+    let mut performance = PLAIN.get_or_init(|| prepare(&options).expect("the nominal scenario")).clone();
+    performance.options.faults = faults.iter().map(|text| text.parse().expect("a fault")).collect();
+    performance
+}
+
+/// Lines of the trial as places in what the rig printed; every one of them must be among it, in order.
+#[track_caller]
+fn places(truth: &Truth, device: &str, blocks: &[BlockRow]) -> Vec<usize> {
+    let printed: Vec<u32> = truth.lines(device);
+    let mut places = Vec::new();
+    let mut from = None;
+    for block in blocks {
+        // Lines repeat: the first one fixes where in the record the trial begins, as the place from which all others follow.
+        let next = from.map_or(0, |place: usize| place + 1);
+        let place = printed[next..].iter().position(|crc| *crc == block.crc).map(|ahead| next + ahead);
+        let place = place.unwrap_or_else(|| panic!("{device}: line {} was never printed", block.first_index));
+        places.push(place);
+        from = Some(place);
+    }
+    places
+}
+
+/// `check` beside the running daemon tells how each link does.
+#[track_caller]
+fn check_shows_health(stage: &Stage) {
+    let mut command = std::process::Command::new(env!("CARGO_BIN_EXE_tautrail"));
+    let archive = stage.path("trials");
+    let output =
+        command.arg("--json").arg("check").arg(stage.path("rig.toml")).arg("--dir").arg(archive).output().unwrap();
+    let told: serde_json::Value = serde_json::from_slice(&output.stdout).unwrap();
+    assert!(told["machine_ports"].is_array());
+    let links = told["links"].as_array().unwrap();
+    assert_eq!(links.len(), INSTRUMENTS.len(), "{told}");
+    for (link, device) in links.iter().zip(INSTRUMENTS) {
+        assert_eq!((&link["device"], &link["up"]), (&device.into(), &true.into()));
+        assert!(link["frames"].as_u64().unwrap() > 50 && link["bytes"].as_u64().unwrap() > 500, "{link}");
+        assert_eq!(link["missing_samples"], 0, "{link}");
+        assert!(link["clock_uncertainty_s"].as_f64().unwrap() > 0.0, "{link}");
+        assert_eq!(link["clock_drift_ppm"].is_null(), device != "shuttle-board", "only the board has a clock: {link}");
+    }
+}
+
+#[test]
+fn lines_of_text_become_a_sealed_and_read_trial() {
+    let stage = Stage::of_rig("north-pier-text.toml");
+    let rig = stage.play_of(".", performance(&[]));
+    let mut daemon = stage.start_daemon();
+    daemon.wait_for("trial", "opens");
+    daemon.wait_for("phase", "launch");
+    daemon.wait_for("trial", "closes");
+    daemon.wait_for("seal", "is sealed");
+    check_shows_health(&stage);
+    assert_eq!(daemon.stop(), Some(0));
+    let truth = stage.truth(rig, ".");
+    let trial = stage.trial();
+    for device in INSTRUMENTS {
+        let blocks = trial.blocks(device).unwrap();
+        let places = places(&truth, device, &blocks);
+        let n_skipped = places[places.len() - 1] - places[0] + 1 - places.len();
+        let raw = trial.device(device).unwrap();
+        // No line of the trial's range is missing: identical lines may shift where the range begins, not its length.
+        assert_eq!(n_skipped, 0, "{device}: {n_skipped} lines are missing");
+        assert!(raw.text_lines.len() >= blocks.len(), "{device}: lines are kept as they came");
+        assert!(raw.rejected.len() <= 1, "{device}: {:?}", raw.rejected);
+        let link = raw.link.expect("the file says how the link did");
+        assert!(link.n_reads > 0 && link.n_bytes > 0 && link.n_gaps == 0 && link.n_link_losses == 0, "{link:?}");
+        assert!(link.longest_stall_s > 0.0, "{link:?}");
+    }
+    let line = trial.signal("line").unwrap();
+    let greatest_n = line.value.iter().copied().fold(0.0, f64::max);
+    assert!((greatest_n - 612.0).abs() < 6.0, "kgf became newtons: {greatest_n}");
+    let encoder = trial.signal("encoder").unwrap();
+    // By arrival an adapter's 16 ms and more must be reckoned with; the board's own time is known better.
+    assert!(line.time_uncertainty_s > 0.005, "{}", line.time_uncertainty_s);
+    assert!(encoder.time_uncertainty_s < 0.5 * line.time_uncertainty_s, "{}", encoder.time_uncertainty_s);
+    let results = trial.results().unwrap();
+    let speed = results.entries.iter().find(|entry| entry.name == "launch_speed").expect("a launch speed");
+    assert!(
+        (speed.value - 16.761).abs() < 3.0 * speed.standard_uncertainty,
+        "{} ± {}",
+        speed.value,
+        speed.standard_uncertainty
+    );
+    assert!(speed.standard_uncertainty < 0.5, "{}", speed.standard_uncertainty);
+}
+
+#[test]
+fn a_pulled_indicator_leaves_a_gap_and_damaged_lines_are_kept_as_refused() {
+    let stage = Stage::of_rig("north-pier-text.toml");
+    let faults = ["hold-display:cable-pull@r-1.5+0.6", "shuttle-board:lost-bytes=2e-4"];
+    let rig = stage.play_of(".", performance(&faults));
+    let mut daemon = stage.start_daemon();
+    daemon.wait_for("trial", "opens");
+    daemon.wait_for("alarm", "hold-display: link lost");
+    daemon.wait_for("link", "is open");
+    daemon.wait_for("trial", "closes");
+    daemon.wait_for("seal", "is sealed");
+    assert_eq!(daemon.stop(), Some(0));
+    let truth = stage.truth(rig, ".");
+    let trial = stage.trial();
+    let hold = trial.device("hold-display").unwrap();
+    let missing: u64 = hold.gaps.iter().map(|gap| gap.n_missing).sum();
+    // The cable's 0.6 s at 80 lines a second, and the time until the port was open and the instrument running again.
+    assert!((45..400).contains(&missing), "{missing} readings missing: {:?}", hold.gaps);
+    assert_eq!(hold.gaps.len(), 1, "{:?}", hold.gaps);
+    let board = trial.device("shuttle-board").unwrap();
+    assert!(!board.rejected.is_empty(), "cut lines are kept");
+    let touched = truth.touched("shuttle-board");
+    let refused = board.rejected.len();
+    assert!(refused <= touched + 1, "{refused} refused, {touched} touched: nothing else was refused");
+}
