@@ -167,6 +167,9 @@ impl Disk for StallingDisk {
     fn rename_noreplace(&self, from: &Path, to: &Path) -> std::io::Result<()> {
         RealDisk.rename_noreplace(from, to)
     }
+    fn sync_file(&self, path: &Path) -> std::io::Result<()> {
+        RealDisk.sync_file(path)
+    }
     fn sync_dir(&self, dir: &Path) -> std::io::Result<()> {
         RealDisk.sync_dir(dir)
     }
