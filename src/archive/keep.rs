@@ -91,8 +91,11 @@ fn link_or_copy(from: &Path, to: &Path) -> io::Result<()> {
         Err(error) if error.kind() == io::ErrorKind::AlreadyExists => Ok(()),
         // Some file systems know no hard links.
         Err(_) => {
-            fs::copy(from, to)?;
-            File::open(to)?.sync_all()
+            // Under another name until it is whole: what stands under its own counts as kept.
+            let part = to.with_extension("part");
+            fs::copy(from, &part)?;
+            File::open(&part)?.sync_all()?;
+            fs::rename(&part, to)
         }
     }
 }

@@ -27,6 +27,6 @@ pub use keep::{Keep, Kept, ReleaseError, kept, release};
 pub use list::{Listing, Summary, list};
 pub use publish::clear_up;
 pub use recover::{Fate, RecoverError, Recovered, journal_dir, recover, seal_one, sealed_file};
-pub use seal::{Sealed, seal, seal_keeping, trial_path};
+pub use seal::{FILE_SHARE, Sealed, seal, seal_keeping, trial_path};
 pub use settled::{SettleError, Settled, forget_settled, settle_until, settle_whole, settled};
 pub use verify::{Verified, verify};

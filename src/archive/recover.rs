@@ -85,7 +85,8 @@ pub fn recover(
         if recovered.iter().any(|known| known.trial_id == trial_id) {
             continue;
         }
-        let ranges = reader.trials()?;
+        // A kept journal that cannot be read holds up no other; its trial was sealed or is told above.
+        let Ok(ranges) = reader.trials() else { continue };
         for range in ranges.into_iter().filter(|range| range.trial_id == trial_id) {
             let fate = seal_if_needed(&reader, &range, dir, disk, progress);
             recovered.push(Recovered { journal_id: reader.journal_id().to_owned(), trial_id: range.trial_id, fate });

@@ -70,8 +70,14 @@ impl Conductor {
         if self.recorder.now().refusing || self.outgoing.is_full() {
             return replier.answer(false, "no trial is opened: the disk takes no more; make room first");
         }
-        let Some(Happening::OpenTrial { host_ns, preroll_from_host_ns }) = self.live.open_by_hand(now_ns) else {
+        if self.book.open().is_some() {
             return replier.answer(false, "a trial is open already");
+        }
+        if self.held_back_from_ns.is_some() {
+            return replier.answer(false, "no trial is opened: the disk has too little room; make room first, it then opens and reaches back a minute");
+        }
+        let Some(Happening::OpenTrial { host_ns, preroll_from_host_ns }) = self.live.open_by_hand(now_ns) else {
+            return replier.answer(false, "a trial is being opened already");
         };
         let asked_ns = back_s.map_or(preroll_from_host_ns, |back_s| now_ns - (back_s * 1e9) as i64);
         if self.open_trial(host_ns, asked_ns, "opened by hand", person) {
@@ -80,12 +86,15 @@ impl Conductor {
             replier
                 .answer(true, format!("trial {id} is open and reaches back {reaches_s:.1} s, as far as was recorded"));
         } else {
+            self.live.forget_trial();
             replier.answer(false, "no trial is opened: the machine gave no identifier; see the daemon's events");
         }
     }
 
     fn close_by_hand(&mut self, now_ns: i64, person: &str, replier: Replier) {
-        let id = self.book.open().map(|open| open.trial_id.clone()).unwrap_or_default();
+        let Some(id) = self.book.open().map(|open| open.trial_id.clone()) else {
+            return replier.answer(false, "no trial is open");
+        };
         match self.live.close_by_hand(now_ns, person) {
             Ok(happening) => {
                 if let Happening::CloseTrial { host_ns, reason } = happening {

@@ -4,10 +4,10 @@
 use std::collections::VecDeque;
 use std::time::Duration;
 
+use crate::archive::FILE_SHARE;
+
 use super::found::Unsealed;
 
-/// Room a trial file may take, as a multiple of the journal it is sealed from.
-pub const FILE_SHARE: f64 = 1.2;
 /// Free room is said to run low below this multiple of what is needed.
 const EARLY: f64 = 2.0;
 /// Over which the rate is looked at.

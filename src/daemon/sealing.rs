@@ -130,10 +130,13 @@ fn next(tasks: &Receiver<Task>, retries: &mut VecDeque<(Instant, Duration, Unsea
             Next::Nothing
         }
         Err(RecvTimeoutError::Disconnected) => Next::End,
-        Err(RecvTimeoutError::Timeout) => match retries.pop_front_if(|(at, _, _)| *at <= Instant::now()) {
-            Some((_, pause, task)) => Next::Seal(task, pause),
-            None => Next::Nothing,
-        },
+        Err(RecvTimeoutError::Timeout) => {
+            let due = retries.iter().position(|(at, _, _)| *at <= Instant::now());
+            match due.and_then(|idx| retries.remove(idx)) {
+                Some((_, pause, task)) => Next::Seal(task, pause),
+                None => Next::Nothing,
+            }
+        }
     }
 }
 

@@ -46,7 +46,10 @@ impl Conductor {
         let Some(trial_id) = self.book.open().map(|open| open.trial_id.clone()) else { return };
         let slack = self.live.cords() == CordsNow::Slack;
         self.close_trial(now_ns, words::disk_full(slack), "");
-        if !slack {
+        if slack {
+            // Nothing to go on with: the next tension opens a trial of its own.
+            self.live.forget_trial();
+        } else {
             self.unfinished = Some(trial_id);
             self.held_back_from_ns = Some(now_ns);
         }

@@ -110,6 +110,9 @@ impl PortTask {
                     told = Some(error);
                 }
             }
+            if *self.stop.borrow() {
+                return;
+            }
             self.wait(backoff).await;
             backoff = (backoff * 2).min(BACKOFF_LAST);
         }
@@ -157,7 +160,9 @@ impl PortTask {
                     due.ask = self.next_ask(due.ask);
                 }
                 () = sleep_until(due.start) => {
-                    self.ask_to_start(&mut stream);
+                    if due.wants_start(&self.spec.asks) {
+                        self.ask_to_start(&mut stream);
+                    }
                     due.start = due.next_start(&self.spec.asks);
                 }
                 () = sleep_until(due.count) => {
@@ -275,16 +280,30 @@ impl Due {
             Asks::Text { poll: Some(_), .. } => opened,
             Asks::Text { poll: None, .. } => opened + NEVER,
         };
-        let start = opened + FIRST_STARTS[0];
+        let start = match asks {
+            Asks::Frames => opened + FIRST_STARTS[0],
+            Asks::Text { .. } => opened + SILENT,
+        };
         Self { ask, start, count: opened, heard: opened, first_starts: FIRST_STARTS[1..].iter(), opened }
     }
 
-    /// Frames ask on every second; text only while nothing comes, since a command may do more than start.
+    /// Text is asked only while nothing comes: its command may do more than start.
+    fn wants_start(&self, asks: &Asks) -> bool {
+        match asks {
+            Asks::Frames => true,
+            Asks::Text { .. } => self.heard.elapsed() >= SILENT,
+        }
+    }
+
+    /// Frames ask on every second; text looks again once nothing can have come for [`SILENT`].
     fn next_start(&mut self, asks: &Asks) -> Instant {
         let now = Instant::now();
         match asks {
             Asks::Frames => self.first_starts.next().map_or(now + START_EVERY, |&after| self.opened + after),
-            Asks::Text { start: Some(_), .. } => (self.heard + SILENT).max(now + SILENT),
+            Asks::Text { start: Some(_), .. } => {
+                let silent_at = self.heard + SILENT;
+                if silent_at > now { silent_at } else { now + SILENT }
+            }
             Asks::Text { start: None, .. } => now + NEVER,
         }
     }

@@ -1,8 +1,8 @@
 //! One device as live sees it: link state, decoder, clock, and where its channels go.
 
 use crate::capture::{
-    Block, BlockTimes, Captured, Counts, DeviceDecoder, DeviceDescription, LiveClock, NominalClock, TimeReply,
-    TimeRequests,
+    Block, BlockTimes, Captured, Counts, DeviceDecoder, DeviceDescription, LiveClock, NominalClock, TimeBase,
+    TimeReply, TimeRequests,
 };
 use crate::link::STOPPED;
 use crate::rig::{Channel, Device};
@@ -42,6 +42,7 @@ pub struct DeviceMonitor {
     streams: Vec<StreamMap>,
     up: bool,
     ever_up: bool,
+    has_ticks: bool,
     note: String,
     last_bytes_ns: Option<i64>,
     up_since_ns: i64,
@@ -85,6 +86,7 @@ impl DeviceMonitor {
             streams: Vec::new(),
             up: false,
             ever_up: false,
+            has_ticks: false,
             note: String::from("not opened yet"),
             last_bytes_ns: None,
             up_since_ns: 0,
@@ -165,6 +167,7 @@ impl DeviceMonitor {
     pub fn describe(&mut self, description: &DeviceDescription, channels: &[Channel], taps: &Taps) -> Vec<usize> {
         let wanted = |name: &str| taps.position(&self.name, name);
         self.ns_per_tick = 1e9 / description.tick_rate_hz;
+        self.has_ticks = description.time_base == TimeBase::Ticks;
         self.clock = Some(LiveClock::new(NominalClock::from(description)));
         self.streams = description
             .streams
@@ -192,6 +195,11 @@ impl DeviceMonitor {
             })
         });
         described.collect()
+    }
+
+    /// Whether it counts a clock of its own, which exchanges can tie to the host's.
+    pub fn has_ticks(&self) -> bool {
+        self.has_ticks
     }
 
     /// Standard uncertainty of the clock now; none before there is a map.

@@ -1,5 +1,6 @@
 //! What is followed while the cords are drawn: the forecast of a release now, the misrigging watch, the hold.
 
+use crate::model::planned_peak_ratio;
 use crate::rig::Rig;
 
 use super::cord_fit::{CordFit, Misrigged};
@@ -20,8 +21,10 @@ pub struct Pull {
     pub x_m: f64,
 }
 
-#[derive(Debug, Default)]
+#[derive(Debug)]
 pub struct Drawn {
+    /// Peak in CFC 60, the limit's class, over the unfiltered one that the fast model gives: of the planned launch.
+    peak_ratio: f64,
     cord_fit: CordFit,
     hold: HoldWatch,
     pub released_now: Option<ReleasedNow>,
@@ -32,6 +35,19 @@ pub struct Drawn {
 }
 
 impl Drawn {
+    pub fn new(rig: &Rig) -> Self {
+        Self {
+            // Without a plan there is no forecast either.
+            peak_ratio: planned_peak_ratio(rig).unwrap_or(1.0),
+            cord_fit: CordFit::default(),
+            hold: HoldWatch::default(),
+            released_now: None,
+            forecast_ns: 0,
+            slope_ns: 0,
+            mps_per_n: None,
+        }
+    }
+
     /// A phase began; `from` is the one before.
     pub fn entered(&mut self, from: Phase, to: Phase, host_ns: i64) {
         if to == Phase::WinchBack && matches!(from, Phase::Slack | Phase::Rest | Phase::Unknown) {
@@ -62,7 +78,7 @@ impl Drawn {
         }
         self.forecast_ns = host_ns;
         let pull = pull.filter(|_| drawn);
-        self.released_now = pull.and_then(|pull| forecast::released_now(rig, pull.line_n, pull.x_m));
+        self.released_now = pull.and_then(|pull| forecast::released_now(rig, pull.line_n, pull.x_m, self.peak_ratio));
         if phase == Phase::Hold && host_ns - self.slope_ns >= SLOPE_EVERY_NS {
             self.slope_ns = host_ns;
             self.mps_per_n = pull.and_then(|pull| forecast::speed_per_newton(rig, pull.line_n, pull.x_m));

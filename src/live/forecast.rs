@@ -7,11 +7,12 @@ use crate::rig::Rig;
 
 use super::state::ReleasedNow;
 
-/// The model's first-order answer with its 95 % intervals; none where the model has no launch to tell of, and never a
+/// The model's first-order answer with its 95 % intervals, the peak in the limit's channel class; none where the model has no launch to tell of, and never a
 /// number that is not finite.
-pub fn released_now(rig: &Rig, tension_n: f64, x_m: f64) -> Option<ReleasedNow> {
+pub fn released_now(rig: &Rig, tension_n: f64, x_m: f64, peak_ratio: f64) -> Option<ReleasedNow> {
     let forecast = model::released_now(rig, tension_n, x_m).ok()?;
-    let (speed, peak, air) = (forecast.launch_speed_mps, forecast.peak_g, forecast.airspeed_mps);
+    let (speed, air) = (forecast.launch_speed_mps, forecast.airspeed_mps);
+    let peak = forecast.peak_g.times(peak_ratio);
     let all = [speed.value, speed.low, speed.high, peak.value, peak.low, peak.high, air.value, air.low, air.high];
     if !all.iter().all(|value| value.is_finite()) {
         return None;

@@ -3,7 +3,7 @@
 //! Noise is judged from differences of neighbouring samples, so that a ramp does not count (von Neumann, "Distribution
 //! of the ratio of the mean square successive difference to the variance", 1941: half their mean square is the variance).
 
-/// Over which noise is told, by the samples' own times.
+/// Over which noise is told at least, by the samples' own times.
 const WINDOW_NS: i64 = 1_000_000_000;
 /// Samples in a window before its noise is believed.
 const N_LEAST: u32 = 20;
@@ -13,7 +13,7 @@ struct Window {
     from_ns: i64,
     n: u32,
     square_sum: f64,
-    n_moves: u32,
+    n_turns: u32,
 }
 
 /// Follows one channel's counts, sample by sample.
@@ -24,7 +24,9 @@ pub struct Health {
     noise_counts: Option<f64>,
     least_noise_counts: Option<f64>,
     moved_ns: i64,
-    /// Share of samples that differ from the one before, in the liveliest window so far.
+    /// The last step that was one.
+    last_step: f64,
+    /// Share of samples at which the counts turned round, in the liveliest window so far: noise does, a ramp does not.
     liveliest: f64,
     at_end_since_ns: Option<i64>,
     /// Where the device says that its converter ends.
@@ -49,10 +51,12 @@ impl Health {
         self.window.n += 1;
         self.window.square_sum += step * step;
         if step != 0.0 {
-            self.window.n_moves += 1;
+            self.window.n_turns += u32::from(step * self.last_step < 0.0);
+            self.last_step = step;
             self.moved_ns = t_ns;
         }
-        if !(0..WINDOW_NS).contains(&(t_ns - self.window.from_ns)) {
+        let window_ns = t_ns - self.window.from_ns;
+        if window_ns < 0 || (window_ns >= WINDOW_NS && self.window.n >= N_LEAST) {
             self.turn(t_ns);
         }
     }
@@ -65,7 +69,7 @@ impl Health {
         let n = f64::from(window.n);
         let noise = (0.5 * window.square_sum / n).sqrt();
         self.noise_counts = Some(noise);
-        self.liveliest = self.liveliest.max(f64::from(window.n_moves) / n);
+        self.liveliest = self.liveliest.max(f64::from(window.n_turns) / n);
         self.least_noise_counts = Some(self.least_noise_counts.map_or(noise, |least| least.min(noise)));
     }
 
@@ -81,8 +85,9 @@ impl Health {
 
     /// For how long the newest samples are all the same, of a channel whose samples used to differ.
     pub fn stuck_ns(&self) -> Option<i64> {
-        /// A channel that changed at every third sample has noise: the same value again and again is no measurement.
-        const LIVELY: f64 = 0.3;
+        /// White noise turns round at two samples of three; a channel that did at one of four has noise, and the same value
+        /// again and again is no measurement of it.
+        const LIVELY: f64 = 0.25;
         let (newest_ns, _) = self.last?;
         (self.liveliest >= LIVELY).then_some(newest_ns - self.moved_ns)
     }
@@ -131,6 +136,10 @@ mod tests {
         let mut encoder = Health::default();
         played(|_| 7.0, 7_000, &mut encoder, 0);
         assert_eq!(encoder.stuck_ns(), None);
+        let mut coarse = Health::default();
+        played(|k| (0.7 * k as f64).floor(), 4_000, &mut coarse, 0);
+        played(|_| 2_799.0, 4_000, &mut coarse, 4_000);
+        assert_eq!(coarse.stuck_ns(), None, "a coarse indicator moved with the winch, and stands in slack");
     }
 
     #[test]

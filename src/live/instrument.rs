@@ -81,7 +81,7 @@ impl Live {
             launch: LaunchWatch::default(),
             launch_ns: 0,
             last_launch: None,
-            drawn: Drawn::default(),
+            drawn: Drawn::new(rig),
             taps: Taps::new(rig),
             tares: Vec::new(),
             rig: rig.clone(),
@@ -264,6 +264,11 @@ impl Live {
     /// The daemon goes on with a trial that a crash left open: no second one is opened, and it closes by the rule.
     pub fn resume_trial(&mut self) {
         self.trial.resume();
+    }
+
+    /// The daemon could not begin, or had to end, the trial that the live room holds open: the next tension opens another.
+    pub fn forget_trial(&mut self) {
+        self.trial.forget();
     }
 
     /// A person opens a trial by hand; none when one is open.

@@ -88,7 +88,7 @@ pub struct ReleasedNow {
     pub airspeed_mps: f64,
     pub airspeed_low_mps: f64,
     pub airspeed_high_mps: f64,
-    /// Specific force along the rail, multiples of 9.80665 m/s².
+    /// Specific force along the rail, CFC 60 as its limit, multiples of 9.80665 m/s².
     pub peak_g: f64,
     pub peak_g_low: f64,
     pub peak_g_high: f64,

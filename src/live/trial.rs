@@ -46,6 +46,10 @@ impl TrialKeeper {
         self.open.get_or_insert(Open { was_loaded: true, was_launched: false });
     }
 
+    pub fn forget(&mut self) {
+        self.open = None;
+    }
+
     pub fn open_by_hand(&mut self, host_ns: i64) -> Option<Happening> {
         if self.is_open() {
             return None;

@@ -13,6 +13,7 @@ use super::march::{Keep, March};
 use super::setup::{FAST, LaunchSetup};
 use super::system::{Layout, System};
 use crate::estimation::{CfcFilter, StartUp};
+use crate::rig::Rig;
 
 /// Channel class of the limit's peak g.
 const CLASS: u32 = 60;
@@ -59,6 +60,14 @@ impl CfcRatio {
     pub fn at(&self, deviates: &[f64]) -> f64 {
         self.best + self.shares.iter().zip(deviates).map(|(share, deviate)| share * deviate).sum::<f64>()
     }
+}
+
+/// Peak in class 60 over the unfiltered one, of the planned launch.
+///
+/// # Errors
+/// A rig that can't be computed.
+pub fn planned_peak_ratio(rig: &Rig) -> Result<f64, ModelError> {
+    ratio(&LaunchSetup::planned(rig)?, RATE_HZ)
 }
 
 /// Filtered over unfiltered peak of one launch, from a record at a rate.

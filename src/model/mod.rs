@@ -37,7 +37,7 @@ mod tests;
 
 pub use crate::estimation::{Curve, CurveError, ValueSlope};
 pub use bands::{Band, Bands};
-pub use cfc::CfcRatio;
+pub use cfc::{CfcRatio, planned_peak_ratio};
 pub use cord::{Branch, CordSet};
 pub use energy::EnergySplit;
 pub use energy_draws::ForecastedEnergy;

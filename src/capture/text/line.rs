@@ -51,8 +51,9 @@ impl LineReader {
     /// The reason for which the line is refused.
     pub fn read(&self, line: &[u8]) -> Result<LineRead, Refusal> {
         let line = std::str::from_utf8(line).map_err(|_| NOT_TEXT)?;
-        // Some indicators put STX and ETX round a line.
-        let line = line.trim_matches(|letter: char| letter.is_control() || letter == ' ');
+        // Some indicators put STX and ETX round a line; a separator at its ends says that a field is empty.
+        let separates = |letter: char| matches!(self.cut, Cut::At(separator) if separator == letter);
+        let line = line.trim_matches(|letter: char| (letter.is_control() || letter == ' ') && !separates(letter));
         match &self.cut {
             Cut::At(separator) => self.of_fields(&line.split(*separator).collect::<Vec<_>>()),
             Cut::Spaces => self.of_fields(&line.split_ascii_whitespace().collect::<Vec<_>>()),

@@ -12,7 +12,7 @@ pub(super) const STREAM: u8 = 1;
 pub(super) const TICK_RATE_HZ: f64 = 1e9;
 /// What a printed time's clock is believed to keep: ceramic resonators are within 0.5 % (common practice, no published
 /// source).
-const PRINTED_TOLERANCE_PPM: f64 = 5_000.0;
+const PRINTED_TOLERANCE_PPM: f64 = 10_000.0;
 /// What an arrival may be late by: a USB adapter's timer of 16 ms and 4 ms of the host's (field experience, no published
 /// source); a line is as likely anywhere in it.
 const HELD_BACK_NS: f64 = 2e7;

@@ -64,7 +64,8 @@ pub(super) fn judge(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
 pub(super) fn clock_poor(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
     let waited_ns = live.started_ns.map_or(0, |started_ns| host_ns - started_ns);
     for (idx, device) in (0_u16..).zip(&live.devices) {
-        let poor_s = device.clock_u_s().filter(|u_s| *u_s > POOR_S && device.is_up() && waited_ns > CLOCK_GRACE_NS);
+        let judged = device.is_up() && device.has_ticks() && waited_ns > CLOCK_GRACE_NS;
+        let poor_s = device.clock_u_s().filter(|u_s| *u_s > POOR_S && judged);
         let seen = poor_s.map(|u_s| {
             format!(
                 "{}: its clock is known to ±{:.1} ms only: times and speeds of this trial get that much worse; check that it answers time requests",
