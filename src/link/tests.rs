@@ -178,8 +178,18 @@ fn an_order_to_stop_is_heard_on_a_port_that_never_falls_silent() {
     let pty = Pty::new();
     let (links, journal, _live) = start(pty.path.clone());
     await_event(&journal, is_up);
+    // Not blocking: once nobody reads any more, a full pty would hold this thread for ever.
+    rustix::io::ioctl_fionbio(&pty.master, true).unwrap();
     let mut master = pty.master.try_clone().unwrap();
-    let flood = std::thread::spawn(move || while master.write_all(&[7; 4096]).is_ok() {});
+    let over = std::sync::Arc::new(std::sync::atomic::AtomicBool::new(false));
+    let flooding = std::sync::Arc::clone(&over);
+    let flood = std::thread::spawn(move || {
+        while !flooding.load(std::sync::atomic::Ordering::Relaxed) {
+            if master.write(&[7; 4096]).is_err() {
+                std::thread::yield_now();
+            }
+        }
+    });
     await_event(&journal, |what| matches!(what, LinkWhat::Bytes(_)).then_some(()));
     let begun = Instant::now();
     let stopping = std::thread::spawn(move || links.stop().unwrap());
@@ -187,8 +197,7 @@ fn an_order_to_stop_is_heard_on_a_port_that_never_falls_silent() {
     assert_eq!(down, STOPPED);
     stopping.join().unwrap();
     assert!(begun.elapsed() < Duration::from_secs(4), "{:?}", begun.elapsed());
-    drop(pty); // the far end goes: the flood ends
-    drop(journal);
+    over.store(true, std::sync::atomic::Ordering::Relaxed);
     flood.join().unwrap();
 }
 

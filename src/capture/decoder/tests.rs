@@ -65,7 +65,8 @@ impl Device {
         samples.extend_from_slice(&(-0.25_f32).to_le_bytes());
         let first_index = self.next_index;
         self.next_index += 2;
-        let (tick, sent_tick) = (first_index * 100, first_index * 100 + 250);
+        let tick = first_index.wrapping_mul(100);
+        let sent_tick = tick.wrapping_add(250);
         let block = firmware_protocol::Block {
             first_index,
             tick,
