@@ -157,7 +157,7 @@ fn a_hook_that_slips_and_holds_again_is_no_launch() {
 }
 
 /// What each scenario makes of the alarms: a part of every sentence that must be raised, in any order, and no other.
-const RAISED: [(&str, &[&str]); 9] = [
+const RAISED: [(&str, &[&str]); 10] = [
     ("hook-slip", &["hook slip"]),
     ("cord-failure-in-hold", &["tension falls in the hold", "below the plan's band", "outside the window"]),
     ("hang-fire", &["hang-fire"]),
@@ -165,6 +165,8 @@ const RAISED: [(&str, &[&str]); 9] = [
     ("misrigged-count", &["fits 4.9 ± ", "below the plan's band"]),
     ("misrigged-length", &["came taut at", "over the plan's band"]),
     ("clipped-accelerometer", &["accel (shuttle specific force) is saturated"]),
+    // A kilogram more on the shuttle shows in nothing that is measured before the release (DEVELOPERS.md).
+    ("misrigged-mass", &[]),
     ("incline-head-wind", &[]),
     ("soft-rail", &[]),
 ];

@@ -1,8 +1,7 @@
 //! One chunk of a dataset as it lies in the file: shuffled, deflated, with its checksum.
 //!
-//! The same filters as the library would apply, done here because that costs a third of its processor time and keeps
-//! its global lock free. Any HDF5 reads the result by its own filters; every sealed file is read back that way before it
-//! is published.
+//! The same filters as the library would apply; done here, its one global lock stays free while they run. Any HDF5 reads the
+//! result by its own filters; every sealed file is read back that way before it is published.
 
 use hdf5::Dataset;
 use libdeflater::{CompressionLvl, Compressor};
