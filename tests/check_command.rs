@@ -99,7 +99,7 @@ scale_uncertainty = "0.1 %"
 
 const BAD_ANSWER: &str = r#"rig.toml:1:1: error: losses: is missing
 rig.toml:1:8: error: name: "north pier" must be letters, digits, "-" or "_", at most 40 of them
-rig.toml:2:1: error: colour: unknown key, known here: name, invented, site, rail, shuttle, payload, losses, limits, plan, gas, force_table, cords, device, channel, more_cords, rail_support, correlation, stage, cord, proof_load
+rig.toml:2:1: error: colour: unknown key, known here: name, invented, site, rail, shuttle, payload, losses, limits, plan, gas, force_table, cords, device, channel, input, more_cords, rail_support, correlation, stage, cord, proof_load, reading
 rig.toml:5:12: error: site.latitude: is 95 deg, allowed is -90 to 90 deg
 rig.toml:6:12: error: site.altitude: has no unit, write it in quotes with its unit, such as "6 m"
 rig.toml:8:13: error: site.head_wind: "kn" is not accepted: write "kt" for knots or "kN" for kilonewtons

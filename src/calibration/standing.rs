@@ -11,15 +11,27 @@ const ZERO_S: f64 = 0.5;
 /// Fewer samples make no zero.
 const ZERO_SAMPLES: usize = 10;
 
-/// One sentence for every channel whose calibration is expired, without record, or of a day that can't be told.
+/// A sentence for every doubt, with all the channels that share it: a calibration that is expired, without record, or of a
+/// day that can't be told.
 pub fn doubts(rig: &Rig, day: Option<Date>) -> Vec<String> {
-    let said = rig.channels.iter().filter_map(|channel| {
+    let mut doubts: Vec<(String, Vec<&str>)> = Vec::new();
+    let mut doubt = |what: String, channel| match doubts.iter_mut().find(|(known, _)| *known == what) {
+        Some((_, channels)) => channels.push(channel),
+        None => doubts.push((what, vec![channel])),
+    };
+    for channel in &rig.channels {
         let state = RecordState::of(channel.record.as_ref(), day);
-        (!state.is_valid()).then(|| format!("channel {}: {state}", channel.name))
-    });
-    let uncalibrated =
-        rig.uncalibrated.iter().map(|channel| format!("channel {} has no calibration: counts only", channel.name));
-    said.chain(uncalibrated).collect()
+        if !state.is_valid() {
+            doubt(state.to_string(), channel.name.as_str());
+        }
+    }
+    for channel in &rig.uncalibrated {
+        doubt("no calibration: counts only".to_owned(), channel.name.as_str());
+    }
+    let told = |(what, channels): (String, Vec<&str>)| {
+        format!("channel{} {}: {what}", if channels.len() > 1 { "s" } else { "" }, channels.join(", "))
+    };
+    doubts.into_iter().map(told).collect()
 }
 
 /// The rig as it is on a day: scales are less certain by their drift since the calibration.

@@ -134,8 +134,7 @@ impl fmt::Display for RecordState {
         match self {
             Self::Valid => f.write_str("calibrated"),
             Self::WithoutRecord => f.write_str(
-                "has coefficients without a calibration record: no date, no tested range, no evidence; make one with \
-                 `tautrail calibrate`",
+                "coefficients without a calibration record: no date, no tested range; make one with `tautrail calibrate`",
             ),
             Self::Expired { name, valid_until, days } => {
                 write!(f, "calibration {name} expired on {valid_until}, {days} days ago: calibrate again")
@@ -305,7 +304,7 @@ anything = "goes"
         );
         assert!(state(day("2031-01-01")).contains("still to come"));
         assert!(state(None).contains("the day is not known"));
-        assert!(RecordState::of(None, None).to_string().starts_with("has coefficients without a calibration record"));
+        assert!(RecordState::of(None, None).to_string().starts_with("coefficients without a calibration record"));
     }
 
     #[test]

@@ -36,9 +36,9 @@ fn forecast(view: &ViewState, snapshot: &Snapshot, now: &ReleasedNow, width: u16
     let (min, max) = (hello.plan_speed_min_mps, hello.plan_speed_max_mps);
     let window = against_window(low, high, min, max);
     let limit = against_limit(now.peak_g_low, now.peak_g_high, hello.limit_peak_g);
-    let verdict = |word: &'static str, good: &str, chance: f64| {
+    let verdict = |word: &'static str, good: &str, chance: String| {
         let style = if word == good { theme.good() } else { theme.caution() };
-        Line::styled(format!("{word} {:>width$}", percent(chance), width = 24 - word.len()), style)
+        Line::styled(format!("{word} {chance:>width$}", width = 24 - word.len()), style)
     };
     let old = if view.snapshot_freshness() == Freshness::Fresh { "" } else { " ~old" };
     let mut lines = vec![
@@ -46,11 +46,11 @@ fn forecast(view: &ViewState, snapshot: &Snapshot, now: &ReleasedNow, width: u16
         Line::from(format!("      {low:.1} to {high:.1}")),
         Line::from(format!("window {min:.1} to {max:.1}")),
         Line::from(gauge(width, (min, max), (low, now.launch_speed_mps, high), theme.ascii)),
-        verdict(window, "IN WINDOW", now.in_window),
+        verdict(window, "IN WINDOW", format!("in {}", percent(now.in_window))),
         Line::styled(format!("peak  {:>5.1} g{old}", now.peak_g), theme.strong()),
         Line::from(format!("      {:.1} to {:.1}", now.peak_g_low, now.peak_g_high)),
         Line::from(format!("limit {:>5.1} g", hello.limit_peak_g)),
-        verdict(limit, "under limit", now.under_limit),
+        verdict(limit, "under limit", percent(now.under_limit)),
     ];
     lines.extend(on_the_way(view, snapshot));
     if (now.airspeed_mps - now.launch_speed_mps).abs() > 0.05 {
