@@ -146,12 +146,36 @@ impl<const N: usize> March<'_, N> {
             self.ended = true;
             return;
         }
+        let Some(turned) = self.moves_off(drive_n.signum()) else {
+            self.note(EventKind::Rest);
+            self.ended = true;
+            return;
+        };
         self.reversals += 1;
-        self.note(EventKind::Reversal);
-        self.system.phase.direction = drive_n.signum();
-        self.turn_cords();
+        if turned {
+            self.note(EventKind::Reversal);
+        }
         self.seek_ahead();
         self.size_s = 1e-3;
+    }
+
+    /// Sets the direction in which the shuttle leaves its standstill, the one it is driven to first; whether it turned. None, and
+    /// nothing changed, where it goes neither way: cords pull less on the branch they turn to, and a rail that recoils takes
+    /// the shuttle along.
+    fn moves_off(&mut self, driven: f64) -> Option<bool> {
+        let standing = self.system.phase.clone();
+        for direction in [driven, -driven] {
+            let turned = direction != standing.direction;
+            self.system.phase.direction = direction;
+            if turned {
+                self.turn_cords();
+            }
+            if self.system.rates(self.t_s, &self.y)[1] * direction > 0.0 {
+                return Some(turned);
+            }
+            self.system.phase = standing.clone();
+        }
+        None
     }
 
     /// Each set that still pulls changes its branch where the shuttle turns.
