@@ -178,7 +178,11 @@ fn answers(setup: &LaunchSetup, events: &[Event], peak: Peak, arrest: Peak) -> A
         launch_speed_mps: event.ground_v_mps,
         airspeed_mps: event.ground_v_mps + setup.head_wind_mps,
     });
-    let stopping = find(EventKind::BrakeContact).zip(find(EventKind::Rest).or_else(|| find(EventKind::Reversal)));
+    // The first standstill in the brake: a shuttle that rolls back from there rests elsewhere.
+    let stopping = find(EventKind::BrakeContact).and_then(|contact| {
+        let stands = |event: &&Event| matches!(event.kind, EventKind::Rest | EventKind::Reversal);
+        events.iter().filter(|event| event.t_s >= contact.t_s).find(stands).map(|stop| (contact, stop))
+    });
     Answers {
         separation,
         peak_kinematic_mps2: peak.acceleration_mps2,
