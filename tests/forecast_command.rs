@@ -26,9 +26,11 @@ fn a_forecast_names_quantity_class_and_place_and_says_it_decides_nothing() {
     let output = tautrail(&["forecast", "--draws", "200", NORTH_PIER]);
     assert_eq!(output.status.code(), Some(0));
     let shown = text(&output);
-    for part in
-        ["specific force along the rail at the payload, CFC 60", "window met under both limits", "no safety device"]
-    {
+    for part in [
+        "peak g, CFC 60: specific force along the rail at the payload",
+        "window met under both limits",
+        "no safety device",
+    ] {
         assert!(shown.contains(part), "{part:?} is missing in {shown}");
     }
     assert!(!shown.contains("pressure-vessel"));
@@ -85,6 +87,20 @@ fn a_sweep_has_a_row_for_each_setting_and_nonsense_is_refused() {
     assert_eq!(rows["rows"].as_array().unwrap().len(), 5);
     let wrong = tautrail(&["forecast", "--sweep", "draw=4:2:9", NORTH_PIER]);
     assert_eq!(wrong.status.code(), Some(2));
+    let parted = tautrail(&["forecast", "--sweep", "cords=3:7:4", NORTH_PIER]);
+    assert_eq!(parted.status.code(), Some(2));
+    let said = String::from_utf8(parted.stderr).unwrap();
+    assert!(said.contains("cords come whole") && said.contains("cords=3:7:5"), "{said}");
+}
+
+#[test]
+fn the_forecasts_tables_fit_eighty_columns() {
+    for args in [["forecast", "--draws", "100"], ["forecast", "--sweep", "cords=3:5:3"]] {
+        let shown = text(&tautrail(&[args.as_slice(), &[NORTH_PIER]].concat()));
+        let rows = shown.lines().filter(|line| line.contains("   "));
+        let widths: Vec<usize> = rows.map(|line| line.chars().count()).collect();
+        assert!(widths.len() > 3 && widths.iter().all(|width| *width <= 80), "{widths:?}: {shown}");
+    }
 }
 
 #[test]

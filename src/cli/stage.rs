@@ -112,7 +112,7 @@ fn print_forecast(rig: &Rig, made: &Forecast, screen: &Screen) {
     ] {
         let entry = &made.quantities[index];
         let (low, high) = entry.monte_carlo.interval_95();
-        let (name, unit) = (entry.quantity.meaning, entry.quantity.unit);
+        let (name, unit) = (entry.quantity.meaning(), entry.quantity.unit);
         screen.line(format!("  {name}: {:.2} {unit}, 95 %: {low:.2} to {high:.2} ({limit})", entry.best));
     }
     screen.line(format!("  window met under both limits: {:.1} %", 100.0 * made.probabilities.all_met));

@@ -42,9 +42,19 @@ pub struct EnergySplit {
     pub closure_j: f64,
 }
 
+const N_SOURCES: usize = 4;
+const N_USES: usize = 17;
+
 impl EnergySplit {
+    pub(super) const N_TERMS: usize = N_SOURCES + N_USES;
+
+    /// Every source, then every use, with its name.
+    pub(super) fn terms(&self) -> impl Iterator<Item = (&'static str, f64)> + use<> {
+        self.sources().into_iter().chain(self.uses())
+    }
+
     /// Every use with its name.
-    pub fn uses(&self) -> [(&'static str, f64); 17] {
+    pub fn uses(&self) -> [(&'static str, f64); N_USES] {
         [
             ("payload kinetic", self.payload_kinetic_j),
             ("shuttle kinetic", self.shuttle_kinetic_j),
@@ -67,7 +77,7 @@ impl EnergySplit {
     }
 
     /// Every source with its name.
-    pub fn sources(&self) -> [(&'static str, f64); 4] {
+    pub fn sources(&self) -> [(&'static str, f64); N_SOURCES] {
         [
             ("from cords", self.stored_j),
             ("from gas", self.gas_j),

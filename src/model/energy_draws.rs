@@ -13,27 +13,19 @@ pub struct ForecastedEnergy {
     pub monte_carlo: Distribution,
 }
 
-/// Every source and use that some launch has, sources first.
-pub fn forecasted_energy<'a>(
-    best: &EnergySplit,
-    draws: impl Iterator<Item = &'a EnergySplit>,
-) -> Vec<ForecastedEnergy> {
+/// Every source and use that some launch has, sources first, from its draws (in the order of [`EnergySplit::terms`]).
+pub fn forecasted_energy(best: &EnergySplit, draws: Vec<Vec<f64>>) -> Vec<ForecastedEnergy> {
     const NOTHING_J: f64 = 1e-6;
-    let of_draws: Vec<Vec<(&'static str, f64)>> = draws.map(|split| named(split).collect()).collect();
     let n_sources = best.sources().len();
-    let all = named(best).enumerate().map(|(k, (name, best_j))| ForecastedEnergy {
+    let all = best.terms().zip(draws).enumerate().map(|(k, ((name, best_j), draws))| ForecastedEnergy {
         name,
         is_source: k < n_sources,
         best_j,
-        monte_carlo: Distribution::of(of_draws.iter().map(|draw| draw[k].1)),
+        monte_carlo: Distribution::of(draws),
     });
     let there = |entry: &ForecastedEnergy| {
         let (low, high) = (entry.monte_carlo.quantile(0.0), entry.monte_carlo.quantile(1.0));
         [entry.best_j, low, high].into_iter().any(|joules| joules.abs() > NOTHING_J)
     };
     all.filter(there).collect()
-}
-
-fn named(split: &EnergySplit) -> impl Iterator<Item = (&'static str, f64)> {
-    split.sources().into_iter().chain(split.uses())
 }

@@ -5,14 +5,14 @@
 
 use super::bands::{Bands, bands};
 use super::cfc::CfcRatio;
-use super::energy::EnergySplit;
+use super::draws::{Draw, Draws};
 use super::energy_draws::{ForecastedEnergy, forecasted_energy};
 use super::error::ModelError;
-use super::inputs::{Inputs, Known};
+use super::inputs::{Inputs, Known, Moved};
 use super::interval::Interval;
 use super::loss_terms::unfitted;
 use super::propagation::{Propagated, first_order};
-use super::quantities::{LAUNCH_SPEED, LINE_TENSION, N_QUANTITIES, PEAK_G, QUANTITIES, Quantity, evaluate};
+use super::quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, QUANTITIES, Quantity, evaluate};
 use super::run::{LaunchRun, energy_at_separation, simulate};
 use super::setup::{FAST, LaunchSetup};
 use crate::estimation::{Distribution, Random};
@@ -85,25 +85,25 @@ pub fn forecast(rig: &Rig, options: ForecastOptions) -> Result<Forecast, ModelEr
     let run = simulate(&setup)?;
     let ratio = CfcRatio::of(&setup, &inputs)?;
     let fast = LaunchSetup { relative_tolerance: FAST, ..setup.clone() };
-    let propagated = first_order(&fast, &inputs, |moved, deviates| evaluate(moved, ratio.at(deviates)))?;
-    let best = evaluate(&inputs.moved(&setup, &[]), ratio.at(&[]))?;
-    let draws: Vec<Draw> = every_draw(options, |stream| one_draw(&fast, &inputs, options.seed, stream, &ratio));
-    let drawn: Vec<Row> = draws.iter().map(|draw| draw.0).collect();
-    let quantities =
-        QUANTITIES.iter().zip(propagated).enumerate().map(|(k, (quantity, Propagated { interval, shares }))| {
-            let column = drawn.iter().map(|row| row.map_or(f64::NAN, |row| row[k]));
-            Forecasted {
-                quantity: *quantity,
-                best: best[k],
-                monte_carlo: Distribution::of(column),
-                first_order: Interval::normal(best[k], interval.standard_uncertainty),
-                shares,
-            }
-        });
+    let numbers = |moved: &Moved, deviates: &[f64]| Ok(evaluate(moved, ratio.at(deviates))?.numbers);
+    let propagated = first_order(&fast, &inputs, numbers)?;
+    let best = numbers(&inputs.moved(&setup, &[]), &[])?;
+    let draws = Draws::made(options, |stream| one_draw(&fast, &inputs, options.seed, stream, &ratio));
+    let probabilities = probabilities(rig, &draws);
+    let (columns, energy_columns) = draws.into_columns();
+    let quantities = QUANTITIES.iter().zip(propagated).zip(columns).enumerate().map(
+        |(k, ((quantity, Propagated { interval, shares }), column))| Forecasted {
+            quantity: *quantity,
+            best: best[k],
+            monte_carlo: Distribution::of(column),
+            first_order: Interval::normal(best[k], interval.standard_uncertainty),
+            shares,
+        },
+    );
     Ok(Forecast {
         quantities: quantities.collect(),
-        probabilities: probabilities(rig, &drawn),
-        energy: forecasted_energy(&run.energy_at_separation, draws.iter().filter_map(|draw| draw.1.as_ref())),
+        probabilities,
+        energy: forecasted_energy(&run.energy_at_separation, energy_columns),
         bands: bands(&fast, &inputs, &run, options.seed),
         extrapolations: setup.extrapolations(),
         unfitted: unfitted(rig),
@@ -113,52 +113,31 @@ pub fn forecast(rig: &Rig, options: ForecastOptions) -> Result<Forecast, ModelEr
     })
 }
 
-type Row = Option<[f64; N_QUANTITIES]>;
-/// A launch's numbers and its energy at separation; none where a draw can't be launched.
-type Draw = (Row, Option<EnergySplit>);
-
-/// Makes every draw, in the order of the draws, on all threads.
-fn every_draw<T: Send + Clone + Default>(options: ForecastOptions, make: impl Fn(u64) -> T + Sync) -> Vec<T> {
-    let mut rows = vec![T::default(); options.draws as usize];
-    let part = rows.len().div_ceil(options.threads.max(1)).max(1);
-    let make = &make;
-    std::thread::scope(|scope| {
-        for (index, chunk) in rows.chunks_mut(part).enumerate() {
-            scope.spawn(move || {
-                for (offset, row) in chunk.iter_mut().enumerate() {
-                    *row = make((index * part + offset) as u64);
-                }
-            });
-        }
-    });
-    rows
-}
-
 fn one_draw(setup: &LaunchSetup, inputs: &Inputs, seed: u64, stream: u64, ratio: &CfcRatio) -> Draw {
     let mut random = Random::new(seed, stream);
     let independent: Vec<f64> = inputs.all.iter().map(|_| random.normal()).collect();
     let deviates = inputs.correlate(&independent);
     let moved = inputs.moved(setup, &deviates);
-    (evaluate(&moved, ratio.at(&deviates)).ok(), energy_at_separation(&moved.setup).ok())
+    Draw { outcome: evaluate(&moved, ratio.at(&deviates)).ok(), energy: energy_at_separation(&moved.setup).ok() }
 }
 
-fn probabilities(rig: &Rig, rows: &[Row]) -> Probabilities {
-    let part = |holds: &dyn Fn(&Row) -> bool| rows.iter().filter(|row| holds(row)).count() as f64 / rows.len() as f64;
+fn probabilities(rig: &Rig, draws: &Draws) -> Probabilities {
+    let n = draws.len();
+    let part = |holds: &dyn Fn(usize) -> bool| (0..n).filter(|draw| holds(*draw)).count() as f64 / n as f64;
     let (low, high) = (rig.plan.launch_speed_min_mps, rig.plan.launch_speed_max_mps);
-    let of = |row: &Row, k: usize| row.map_or(f64::NAN, |row| row[k]);
-    let speed = |row: &Row| of(row, LAUNCH_SPEED);
-    let over_g = |row: &Row| of(row, PEAK_G) > rig.limits.peak_g;
-    let over_tension = |row: &Row| of(row, LINE_TENSION) > rig.limits.tension_n;
-    let inside = |row: &Row| (low..=high).contains(&speed(row));
+    let speed = |draw: usize| draws.number(LAUNCH_SPEED, draw);
+    let over_g = |draw: usize| draws.number(PEAK_G, draw) > rig.limits.peak_g;
+    let over_tension = |draw: usize| draws.number(LINE_TENSION, draw) > rig.limits.tension_n;
+    let inside = |draw: usize| (low..=high).contains(&speed(draw));
     Probabilities {
-        speed_below_window: part(&|row| speed(row) < low),
+        speed_below_window: part(&|draw| speed(draw) < low),
         speed_in_window: part(&inside),
-        speed_above_window: part(&|row| speed(row) > high),
+        speed_above_window: part(&|draw| speed(draw) > high),
         peak_g_over_limit: part(&over_g),
         tension_over_limit: part(&over_tension),
-        all_met: part(&|row| inside(row) && !over_g(row) && !over_tension(row)),
-        no_launch: part(&|row| speed(row).is_nan()),
-        end_stop: part(&|row| !speed(row).is_nan() && of(row, 7).is_nan()),
+        all_met: part(&|draw| inside(draw) && !over_g(draw) && !over_tension(draw)),
+        no_launch: part(&|draw| speed(draw).is_nan()),
+        end_stop: part(&|draw| draws.at_end_stop(draw)),
     }
 }
 

@@ -10,6 +10,7 @@ mod bands;
 mod cfc;
 mod check;
 mod cord;
+mod draws;
 mod energy;
 mod energy_draws;
 mod error;
@@ -50,7 +51,7 @@ pub use inputs::{Input, Inputs, Known, Moved};
 pub use interval::Interval;
 pub use loss_terms::{BelongsTo, LossState, LossTerm, loss_terms, unfitted};
 pub use propagation::{Propagated, first_order};
-pub use quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, Quantity, evaluate};
+pub use quantities::{LAUNCH_SPEED, LINE_TENSION, Outcome, PEAK_G, Quantity, evaluate};
 pub use released_now::{ReleaseForecast, released_now};
 pub use run::{
     Answers, LaunchRun, Sample, Separation, answers_to_rest, energy_at_separation, launch_answers, simulate,

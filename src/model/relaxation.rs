@@ -25,8 +25,8 @@ pub fn standing_factor(details: &CordDetails) -> f64 {
 
 #[cfg(test)]
 mod tests {
-    use super::held_part;
-    use crate::rig::RelaxationTerm;
+    use super::{held_part, standing_factor};
+    use crate::rig::{CordDetails, RelaxationTerm};
 
     #[test]
     fn the_ramp_is_convolved_not_guessed() {
@@ -46,5 +46,22 @@ mod tests {
         let term = RelaxationTerm { share: 0.2, time_s: 10.0 };
         assert!((held_part(&[term], 0.0, 10.0) - (0.8 + 0.2 * (-1.0_f64).exp())).abs() < 1e-12);
         assert!((held_part(&[], 12.0, 5.0) - 1.0).abs() < 1e-15);
+    }
+
+    #[test]
+    fn warmth_and_cycles_act_where_the_rig_file_gives_both_temperatures() {
+        let details = CordDetails {
+            tension_per_kelvin: 0.004,
+            temperature_c: Some(5.0),
+            card_temperature_c: Some(20.0),
+            loss_per_tenfold_cycles: 0.02,
+            cycles: 1000.0,
+            ..CordDetails::default()
+        };
+        assert!((standing_factor(&details) - 0.94 * 0.94).abs() < 1e-12);
+        let unknown = CordDetails { card_temperature_c: None, ..details.clone() };
+        assert!((standing_factor(&unknown) - 0.94).abs() < 1e-12);
+        let new = CordDetails { cycles: 0.0, ..details };
+        assert!((standing_factor(&new) - 0.94).abs() < 1e-12);
     }
 }

@@ -64,6 +64,8 @@ pub struct Answers {
     pub arrest_mps2: f64,
     /// From brake contact to standstill; none where there was no contact or no standstill.
     pub stopping_distance_m: Option<f64>,
+    /// The shuttle came to the end of the rail moving.
+    pub at_end_stop: bool,
 }
 
 /// A whole launch.
@@ -190,6 +192,7 @@ fn answers(setup: &LaunchSetup, events: &[Event], peak: Peak, arrest: Peak) -> A
         peak_x_m: peak.x_m,
         arrest_mps2: -arrest.acceleration_mps2,
         stopping_distance_m: stopping.map(|(contact, rest)| rest.x_m - contact.x_m),
+        at_end_stop: find(EventKind::EndStop).is_some(),
     }
 }
 

@@ -75,7 +75,12 @@ impl Setting {
         }
     }
 
-    /// The rig with this setting at a value.
+    /// Whether the crew can have this value: cords come whole.
+    pub fn can_be(self, value: f64) -> bool {
+        self != Self::Cords || value.fract() == 0.0
+    }
+
+    /// The rig with this setting at a value; cords at the nearest whole number of them.
     pub fn with(self, rig: &Rig, value: f64) -> Rig {
         let mut rig = rig.clone();
         match self {
@@ -117,7 +122,7 @@ fn expected(rig: &Rig) -> Result<Expected, ModelError> {
     let inputs = Inputs::of(rig, Known::Plan)?;
     let ratio = CfcRatio::of(&setup, &inputs)?;
     let fast = LaunchSetup { relative_tolerance: FAST, ..setup };
-    let all = first_order(&fast, &inputs, |moved, deviates| evaluate(moved, ratio.at(deviates)))?;
+    let all = first_order(&fast, &inputs, |moved, deviates| Ok(evaluate(moved, ratio.at(deviates))?.numbers))?;
     let of = |k: usize| all[k].interval;
     Ok(Expected { launch_speed_mps: of(LAUNCH_SPEED), peak_g: of(PEAK_G), line_tension_n: of(LINE_TENSION) })
 }

@@ -104,8 +104,12 @@ fn print(rig: &Rig, made: &Forecast, page: Option<&Path>, screen: &Screen) {
     }
     screen.line(words::basis(made));
     screen.line("");
-    for row in words::table(made) {
-        screen.line(across(&row, &[64, 12, 12, 20, 14]));
+    for row in words::table(made, |quantity| quantity.label.to_owned()) {
+        screen.line(across(&row, &[24, 12, 11, 20, 13]));
+    }
+    screen.line("");
+    for line in words::legend(made) {
+        screen.line(line);
     }
     screen.line("");
     for sentence in words::probabilities(rig, made) {
@@ -113,7 +117,7 @@ fn print(rig: &Rig, made: &Forecast, page: Option<&Path>, screen: &Screen) {
     }
     screen.line("");
     for row in words::energy(made) {
-        screen.line(across(&row, &[64, 12, 12, 20]));
+        screen.line(across(&row, &[24, 12, 11, 20]));
     }
     screen.line("");
     screen.line("Losses:");
@@ -137,7 +141,7 @@ fn as_json(rig: &Rig, made: &Forecast, page: Option<&Path>) -> Value {
     let quantity = |entry: &tautrail::model::Forecasted| {
         let (low, high) = entry.monte_carlo.interval_95();
         json!({
-            "name": entry.quantity.name, "meaning": entry.quantity.meaning, "unit": entry.quantity.unit,
+            "name": entry.quantity.name, "meaning": entry.quantity.meaning(), "unit": entry.quantity.unit,
             "best": finite(entry.best),
             "monte_carlo": {
                 "mean": finite(entry.monte_carlo.mean()), "standard_deviation": finite(entry.monte_carlo.standard_deviation()),

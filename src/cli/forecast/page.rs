@@ -3,7 +3,7 @@
 use std::fs;
 use std::path::Path;
 
-use tautrail::model::{Band, Forecast};
+use tautrail::model::{Band, Forecast, Quantity};
 use tautrail::report::{ForecastCurve, ForecastPage, forecast_page};
 use tautrail::rig::Rig;
 use thiserror::Error;
@@ -45,7 +45,7 @@ fn page(rig: &Rig, made: &Forecast) -> ForecastPage {
             curve("Acceleration along the rail", "acceleration, m/s² (kinematic, ground frame)", &bands.a_mps2),
         ],
         separation_x_m: made.run.answers.separation.map(|at| at.x_m),
-        table: words::table(made),
+        table: words::table(made, Quantity::meaning),
         energy: words::energy(made),
         sentences,
         cautions: words::cautions(rig),

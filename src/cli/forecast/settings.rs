@@ -12,7 +12,7 @@ use super::words::{across, cautions};
 use crate::cli::screen::{Screen, Tone};
 use crate::cli::{Failure, Verdict};
 
-const WIDTHS: [usize; 5] = [14, 26, 26, 26, 10];
+const WIDTHS: [usize; 4] = [13, 23, 22, 20];
 
 /// A row of settings to try.
 #[derive(Debug, Clone, PartialEq)]
@@ -21,17 +21,21 @@ pub struct Sweep {
     values: Vec<f64>,
 }
 
-#[derive(Debug, Clone, PartialEq, Eq, Error)]
-#[error("{text:?} is no sweep: write it as draw=2:4:9, cords=3:7:5 or mass=4:8:9 (from, to, rows; m, count, kg)")]
-pub struct NoSweep {
-    text: String,
+#[derive(Debug, Clone, PartialEq, Error)]
+pub enum NoSweep {
+    #[error("{text:?} is no sweep: write it as draw=2:4:9, cords=3:7:5 or mass=4:8:9 (from, to, rows; m, count, kg)")]
+    Unreadable { text: String },
+    #[error(
+        "{text:?} would have a row at {value:.3} cords, and cords come whole: choose rows that fall on whole numbers, such as {advice}"
+    )]
+    NotWhole { text: String, value: f64, advice: String },
 }
 
 impl FromStr for Sweep {
     type Err = NoSweep;
 
     fn from_str(text: &str) -> Result<Self, NoSweep> {
-        let none = || NoSweep { text: text.to_owned() };
+        let none = || NoSweep::Unreadable { text: text.to_owned() };
         let (word, range) = text.split_once('=').ok_or_else(none)?;
         let parts: Vec<f64> = range.split(':').map(str::parse).collect::<Result<_, _>>().map_err(|_| none())?;
         let ([from, to, rows], Some(setting)) = (parts.as_slice(), named(word)) else { return Err(none()) };
@@ -39,8 +43,13 @@ impl FromStr for Sweep {
             return Err(none());
         }
         let n = *rows as u32 - 1;
-        let values = (0..=n).map(|i| from + (to - from) * f64::from(i) / f64::from(n));
-        Ok(Self { setting, values: values.collect() })
+        let values: Vec<f64> = (0..=n).map(|i| from + (to - from) * f64::from(i) / f64::from(n)).collect();
+        if let Some(value) = values.iter().copied().find(|value| !setting.can_be(*value)) {
+            let (from, to) = (from.floor().max(1.0), to.ceil());
+            let advice = format!("{word}={from}:{to}:{}", to - from + 1.0);
+            return Err(NoSweep::NotWhole { text: text.to_owned(), value, advice });
+        }
+        Ok(Self { setting, values })
     }
 }
 
@@ -61,7 +70,7 @@ pub fn sweep(rig: &Rig, sweep: &Sweep, screen: &Screen) -> Result<Verdict, Failu
 }
 
 pub fn solve(rig: &Rig, word: &str, screen: &Screen) -> Result<Verdict, Failure> {
-    let setting = named(word).ok_or_else(|| NoSweep { text: word.to_owned() })?;
+    let setting = named(word).ok_or_else(|| NoSweep::Unreadable { text: word.to_owned() })?;
     let solution = model::solve(rig, setting);
     if screen.json {
         screen.value(&solution_json(rig, &solution));
@@ -72,15 +81,28 @@ pub fn solve(rig: &Rig, word: &str, screen: &Screen) -> Result<Verdict, Failure>
     Ok(if solution.chosen.is_some() { Verdict::Done } else { Verdict::CheckFailed })
 }
 
+const fn decimals(setting: Setting) -> usize {
+    match setting {
+        Setting::Cords => 0,
+        Setting::Draw | Setting::PayloadMass => 3,
+    }
+}
+
 fn print_solution(solution: &Solution, screen: &Screen) {
     let (word, unit) = (solution.setting.word(), solution.setting.unit());
+    let decimals = decimals(solution.setting);
     match &solution.chosen {
         Some((candidate, fit)) => {
             let surely = if *fit == Fit::Surely { "with 95 %" } else { "at best values only" };
-            let sentence = format!("{word} {:.3} {unit} meets the window under the limits, {surely}", candidate.value);
+            let value = candidate.value;
+            let what = match solution.setting {
+                Setting::Cords => format!("{value:.decimals$} {unit} meet"),
+                Setting::Draw | Setting::PayloadMass => format!("{word} {value:.decimals$} {unit} meets"),
+            };
+            let sentence = format!("{what} the window under the limits, {surely}");
             screen.line(screen.toned(&sentence, if *fit == Fit::Surely { Tone::Good } else { Tone::Caution }));
             if let Some((low, high)) = solution.range {
-                screen.line(format!("as good: {word} from {low:.3} to {high:.3} {unit}, as tried"));
+                screen.line(format!("as good: {word} from {low:.decimals$} to {high:.decimals$} {unit}, as tried"));
             }
             print_rows(solution.setting, std::slice::from_ref(candidate), screen);
         }
@@ -92,14 +114,14 @@ fn print_solution(solution: &Solution, screen: &Screen) {
 }
 
 fn print_rows(setting: Setting, candidates: &[Candidate], screen: &Screen) {
-    let header =
-        [setting.word(), "launch speed, m/s", "peak g (specific, CFC 60)", "release line, N", ""].map(str::to_owned);
+    let header = [setting.word(), "launch speed, m/s", "peak g, CFC 60", "release line, N"].map(str::to_owned);
     screen.line(across(&header, &WIDTHS));
     let shown = |interval: &Interval, decimals: usize| {
         format!("{:.decimals$} ({:.decimals$} to {:.decimals$})", interval.value, interval.low, interval.high)
     };
+    let decimals = decimals(setting);
     for candidate in candidates {
-        let value = format!("{:.3} {}", candidate.value, setting.unit());
+        let value = format!("{:.decimals$} {}", candidate.value, setting.unit());
         match &candidate.expected {
             Ok(expected) => screen.line(across(
                 &[
@@ -107,17 +129,16 @@ fn print_rows(setting: Setting, candidates: &[Candidate], screen: &Screen) {
                     shown(&expected.launch_speed_mps, 2),
                     shown(&expected.peak_g, 2),
                     shown(&expected.line_tension_n, 0),
-                    String::new(),
                 ],
                 &WIDTHS,
             )),
-            Err(error) => screen.line(format!("{value:<14}{error}")),
+            Err(error) => screen.line(format!("{value:<13}{error}")),
         }
     }
 }
 
 fn print_cautions(rig: &Rig, screen: &Screen) {
-    screen.line("intervals: 95 %, first order");
+    screen.line("intervals: 95 %, first order; peak g: specific force along the rail at the payload");
     for sentence in model::unfitted(rig) {
         screen.line(screen.toned(&sentence, Tone::Bad));
     }

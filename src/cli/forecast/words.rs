@@ -1,6 +1,6 @@
 //! A forecast in words and columns, for the screen and the page.
 
-use tautrail::model::{BelongsTo, Forecast, Known, LossState, loss_terms};
+use tautrail::model::{BelongsTo, Forecast, Forecasted, Known, LossState, Quantity, loss_terms};
 use tautrail::rig::Rig;
 use tautrail::units::rounded;
 
@@ -32,13 +32,19 @@ pub fn basis(made: &Forecast) -> String {
     format!("{known}; {draws} launches drawn (seed {seed}), first-order propagation beside them")
 }
 
-/// Header row first: quantity, best value, standard deviation, 95 % interval of the draws, first-order uncertainty.
-pub fn table(made: &Forecast) -> Vec<Vec<String>> {
+/// What the labels of [`table`] mean, a line each.
+pub fn legend(made: &Forecast) -> Vec<String> {
+    let line = |entry: &Forecasted| format!("  {}: {}", entry.quantity.label, entry.quantity.detail);
+    made.quantities.iter().map(line).collect()
+}
+
+/// Header row first: quantity as `named`, best value, standard deviation, 95 % interval of the draws, first-order uncertainty.
+pub fn table(made: &Forecast, named: impl Fn(&Quantity) -> String) -> Vec<Vec<String>> {
     let mut rows = vec![["", "best", "std. dev.", "95 % of draws", "first order"].map(str::to_owned).to_vec()];
     for entry in &made.quantities {
-        let (name, unit) = (entry.quantity.meaning, entry.quantity.unit);
+        let (name, unit) = (named(&entry.quantity), entry.quantity.unit);
         if !entry.best.is_finite() && entry.monte_carlo.is_empty() {
-            rows.push([name, "none", "", "", ""].map(str::to_owned).to_vec());
+            rows.push([&name, "none", "", "", ""].map(str::to_owned).to_vec());
             continue;
         }
         let deviation = entry.monte_carlo.standard_deviation();
@@ -46,13 +52,7 @@ pub fn table(made: &Forecast) -> Vec<Vec<String>> {
         let (low, high) = entry.monte_carlo.interval_95();
         let (low, high) = (rounded(low, deviation).0, rounded(high, deviation).0);
         let first = rounded(entry.best, entry.first_order.standard_uncertainty).1;
-        rows.push(vec![
-            name.to_owned(),
-            format!("{best} {unit}"),
-            shown,
-            format!("{low} to {high}"),
-            format!("± {first}"),
-        ]);
+        rows.push(vec![name, format!("{best} {unit}"), shown, format!("{low} to {high}"), format!("± {first}")]);
     }
     rows
 }
@@ -93,7 +93,7 @@ pub fn probabilities(rig: &Rig, made: &Forecast) -> Vec<String> {
 
 /// Header row first: source or use of energy at separation, best value, standard deviation and 95 % interval of the draws.
 pub fn energy(made: &Forecast) -> Vec<Vec<String>> {
-    let header = ["energy from release to separation", "best", "std. dev.", "95 % of draws"];
+    let header = ["energy to separation", "best", "std. dev.", "95 % of draws"];
     let mut rows = vec![header.map(str::to_owned).to_vec()];
     for entry in &made.energy {
         let deviation = entry.monte_carlo.standard_deviation();

@@ -3,7 +3,8 @@
 use proptest::prelude::*;
 
 use super::super::{
-    Brake, CordSet, Curve, ForceTable, GasPath, GasSource, LaunchSetup, ModelError, RailLosses, Recoil, simulate,
+    Brake, CordSet, Curve, EventKind, ForceTable, GasPath, GasSource, LaunchSetup, ModelError, RailLosses, Recoil,
+    simulate,
 };
 
 fn card(scale_n: f64) -> impl Strategy<Value = (Curve, Curve)> {
@@ -93,6 +94,38 @@ fn setup() -> impl Strategy<Value = LaunchSetup> {
         thrust: rest.2.then(|| Curve::through(&[(0.0, 20.0), (12.0, 15.0), (40.0, 2.0)]).unwrap()),
         ..LaunchSetup::bare(bodies.0, 8.0)
     })
+}
+
+#[test]
+fn energy_closes_where_cords_tighten_again_on_a_rail_that_recoils() {
+    let unloading = Curve::through(&[(0.0, 0.0), (0.6, 60.0), (1.2, 90.0), (1.8, 150.0)]).unwrap();
+    let loading = Curve::through(&[(0.0, 0.0), (0.6, 66.0), (1.2, 98.0), (1.8, 160.0)]).unwrap();
+    let cords = CordSet {
+        mass_kg: 0.3,
+        retension_x_m: Some(5.2),
+        loading: Some(loading),
+        held_gap_n: 5.0,
+        ..CordSet::simple(4.0, 2.5, 3.0, unloading)
+    };
+    let setup = LaunchSetup {
+        payload_mass_kg: 6.0,
+        cords: vec![cords],
+        recoil: Some(Recoil { mass_kg: 80.0, stiffness_n_per_m: 2e4, damping_n_per_mps: 100.0 }),
+        losses: RailLosses { friction_n: 8.0, ..RailLosses::default() },
+        brake: Brake { from_x_m: 6.5, constant_n: 60.0, per_metre_n_per_m: 0.0, per_speed_n_per_mps: 0.0 },
+        ..LaunchSetup::bare(2.0, 9.0)
+    };
+    let run = simulate(&setup).unwrap();
+    let kinds: Vec<EventKind> = run.events.iter().map(|event| event.kind).collect();
+    assert!(kinds.contains(&EventKind::CordsTaut { set: 0 }) && kinds.contains(&EventKind::Reversal), "{kinds:?}");
+    assert!(
+        run.energy_at_end.recoil_damping_j > 0.1 && run.energy_at_end.hysteresis_j > 0.1,
+        "{:?}",
+        run.energy_at_end
+    );
+    for energy in [run.energy_at_separation, run.energy_at_end] {
+        assert!(energy.closure_j.abs() <= 1e-8 * energy.sources_j(), "{energy:?}");
+    }
 }
 
 proptest! {

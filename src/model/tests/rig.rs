@@ -1,8 +1,8 @@
 //! From a rig file's numbers: the invented north-pier rig.
 
 use super::super::{
-    EventKind, LaunchSetup, ModelError, hold_pull_band_n, launch_answers, planned_line_tension_n, released_now,
-    simulate, stored_energy_j,
+    EventKind, ForecastOptions, Known, LaunchSetup, ModelError, answers_to_rest, forecast, hold_pull_band_n,
+    launch_answers, planned_line_tension_n, released_now, simulate, stored_energy_j,
 };
 use super::assert_close;
 use crate::rig::{self, Rig};
@@ -100,4 +100,56 @@ fn impossible_rigs_are_refused_with_their_number() {
     rig.plan.draw_m = 0.01;
     let barely = LaunchSetup::planned(&rig).unwrap();
     assert!(matches!(simulate(&barely), Err(ModelError::CannotMove { .. })));
+}
+
+#[test]
+fn cords_as_warm_as_rubber_theory_says_pull_and_throw_by_absolute_temperature() {
+    // The kinetic theory of rubber: at equal elongation the tension is proportional to absolute temperature (L. R. G. Treloar,
+    // The Physics of Rubber Elasticity, 3rd edition, 1975, chapter 4; from memory). Without losses, so is the stored energy,
+    // and the speed on a level rail goes with its root.
+    let launch = |temperature_c: f64| {
+        let mut rig = north_pier();
+        rig.rail.incline_rad = 0.0;
+        rig.losses.friction_n.value = 0.0;
+        rig.losses.shuttle_drag_area_m2.value = 0.0;
+        rig.payload.drag_area_m2.value = 0.0;
+        let cords = &mut rig.details.cords;
+        (cords.temperature_c, cords.card_temperature_c) = (Some(temperature_c), Some(20.0));
+        cords.tension_per_kelvin = 1.0 / 293.15;
+        let setup = LaunchSetup::planned(&rig).unwrap();
+        let speed = launch_answers(&setup).unwrap().separation.unwrap().launch_speed_mps;
+        (setup.cord_pull_n(0.0), speed)
+    };
+    let (cold, warm) = (launch(0.0), launch(35.0));
+    let expected = (35.0 + 273.15) / 273.15_f64;
+    assert_close("pull", warm.0 / cold.0, expected, 1e-12, 0.0);
+    assert_close("speed", warm.1 / cold.1, expected.sqrt(), 1e-6, 0.0);
+}
+
+#[test]
+fn worn_cords_pull_less_by_the_cards_loss_for_every_tenfold_of_cycles() {
+    let pull_n = |cycles: f64| {
+        let mut rig = north_pier();
+        (rig.details.cords.loss_per_tenfold_cycles, rig.details.cords.cycles) = (0.03, cycles);
+        LaunchSetup::planned(&rig).unwrap().cord_pull_n(0.0)
+    };
+    assert_close("100 cycles", pull_n(100.0) / pull_n(1.0), 0.94, 1e-12, 0.0);
+    assert!(pull_n(1000.0) < pull_n(100.0));
+}
+
+#[test]
+fn a_shuttle_that_never_reaches_the_brake_did_not_hit_the_end_stop() {
+    let mut rig = north_pier();
+    rig.losses.friction_n.value = 150.0;
+    rig.rail.length_m = 60.0;
+    rig.rail.brake_x_m = 58.0;
+    let setup = LaunchSetup::planned(&rig).unwrap();
+    let rests = answers_to_rest(&setup).unwrap();
+    assert!(rests.separation.is_some() && rests.stopping_distance_m.is_none() && !rests.at_end_stop, "{rests:?}");
+    rig.losses.friction_n.value = 12.0;
+    (rig.rail.length_m, rig.rail.brake_x_m, rig.rail.brake_force_n) = (6.0, 5.5, 50.0);
+    let hits = answers_to_rest(&LaunchSetup::planned(&rig).unwrap()).unwrap();
+    assert!(hits.at_end_stop && hits.stopping_distance_m.is_none(), "{hits:?}");
+    let options = ForecastOptions { known: Known::Plan, draws: 100, seed: 1, threads: 2 };
+    assert_close("all of them", forecast(&rig, options).unwrap().probabilities.end_stop, 1.0, 0.0, 0.0);
 }
