@@ -59,7 +59,7 @@ impl Conductor {
     pub(super) fn tell_tares(&mut self, host_ns: i64) {
         for (tare, person) in self.live.tares().to_vec() {
             let text = format!("{}{tare}", Tare::IN_FORCE);
-            self.tell(words::by(&person, words::event(host_ns, "tare", "daemon", text)));
+            self.tell_needed(words::by(&person, words::event(host_ns, "tare", "daemon", text)));
         }
     }
 

@@ -42,6 +42,8 @@ pub struct Conductor {
     pub room: RoomWatch,
     /// A trial that was not opened for want of room, and how far it is to reach back.
     pub held_back_from_ns: Option<i64>,
+    /// The disk had room for trials when it was last looked at.
+    pub had_room: bool,
     /// When what is done with of the journal is noted again.
     pub settle_at_ns: i64,
     pub openings: FirstOpenings,
@@ -269,10 +271,15 @@ impl Conductor {
     ///
     /// False: the journal takes nothing and so much waits that this event is on the feed only, and counted.
     pub(super) fn tell(&mut self, event: Event) -> bool {
-        let Event { host_ns, kind, source, person, text } = event.clone();
-        let recorded = self.outgoing.push(Order::Event { host_ns, event: EventBody { kind, source, person, text } });
+        let recorded = self.outgoing.push(recorded_event(&event));
         self.publish(&event);
         recorded
+    }
+
+    /// The same of an event that a trial cannot do without: never left out.
+    pub(super) fn tell_needed(&mut self, event: Event) {
+        self.outgoing.push_needed(recorded_event(&event));
+        self.publish(&event);
     }
 
     pub(super) fn complain(&mut self, sentence: &str) {
@@ -376,6 +383,11 @@ impl Conductor {
         );
         self.tell(words::event(now_ns, "trial", "daemon", text));
     }
+}
+
+fn recorded_event(event: &Event) -> Order {
+    let Event { host_ns, kind, source, person, text } = event.clone();
+    Order::Event { host_ns, event: EventBody { kind, source, person, text } }
 }
 
 /// On disk: the read and its record's frame.

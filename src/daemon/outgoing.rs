@@ -1,7 +1,8 @@
 //! Orders on their way to the recorder, in order, with a bound on what waits while it takes none.
 //!
-//! Orders about trials and pins are never left out: they are few, and no trial is opened by hand while the bound is
-//! reached. Events beyond the bound are counted, and the count is handed back once the recorder takes orders again.
+//! Orders about trials and pins are never left out, nor are the zeros a trial's values rest on: they are few, and no trial
+//! is opened by hand while the bound is reached. Other events beyond the bound are counted, and the count is handed back
+//! once the recorder takes orders again.
 
 use std::collections::VecDeque;
 use std::time::Instant;
@@ -36,8 +37,13 @@ impl Outgoing {
             self.n_left_out += 1;
             return false;
         }
-        self.waiting.push_back(order);
+        self.push_needed(order);
         true
+    }
+
+    /// Puts in the queue what a trial cannot do without, bound or not.
+    pub fn push_needed(&mut self, order: Order) {
+        self.waiting.push_back(order);
     }
 
     /// Hands on what the recorder takes; gives the number of events left out before, once nothing waits any more.
@@ -71,6 +77,18 @@ mod tests {
     fn event(host_ns: i64) -> Order {
         let (kind, source) = ("mark".to_owned(), "feed".to_owned());
         Order::Event { host_ns, event: EventBody { kind, source, person: None, text: String::new() } }
+    }
+
+    #[test]
+    fn what_a_trial_needs_is_taken_beyond_the_bound_and_stays_in_order() {
+        let (orders, taken) = bounded(2 * WAITING_MAX);
+        let mut outgoing = Outgoing::new(orders);
+        let n = WAITING_MAX as i64;
+        assert!((0..n).all(|host_ns| outgoing.push(event(host_ns))));
+        assert!(!outgoing.push(event(n)), "the bound");
+        outgoing.push_needed(event(n + 1));
+        assert_eq!(outgoing.send(), Some(1));
+        assert_eq!(taken.try_iter().last(), Some(event(n + 1)));
     }
 
     #[test]

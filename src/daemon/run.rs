@@ -123,6 +123,7 @@ pub fn run(
         seal_patience: options.seal_patience,
         room: RoomWatch::new(options.longest_hold, declared_bytes_per_s(rig)),
         held_back_from_ns: None,
+        had_room: true,
         settle_at_ns: 0,
         openings: FirstOpenings::of(rig),
         wait_for_ports: options.wait_for_ports,

@@ -11,34 +11,40 @@ use super::words;
 impl Conductor {
     /// Opens a trial because tension rises, or says why not and keeps it in mind.
     pub(super) fn open_by_tension(&mut self, host_ns: i64, from_host_ns: i64) {
-        match self.room_now(&self.recorder.now()) {
-            Room::TooLittle(why) => {
-                self.held_back_from_ns = Some(from_host_ns);
-                self.complain(&format!(
-                    "tension rises and NO TRIAL IS OPENED: {why}; recording goes on, and once there is room the trial \
-                     opens and reaches back a minute"
-                ));
+        let recorder = self.recorder.now();
+        let (why, meanwhile) = match self.room_now(&recorder) {
+            _ if recorder.refusing => ("the disk takes nothing".to_owned(), "data are being LOST"),
+            Room::TooLittle(why) => (why, "recording goes on"),
+            Room::Enough | Room::Low(_) => {
+                self.open_trial(host_ns, from_host_ns, "tension rises", "");
+                return;
             }
-            Room::Enough | Room::Low(_) => drop(self.open_trial(host_ns, from_host_ns, "tension rises", "")),
-        }
+        };
+        self.held_back_from_ns = Some(from_host_ns);
+        self.complain(&format!(
+            "tension rises and NO TRIAL IS OPENED: {why}; {meanwhile}, and once there is room the trial opens and reaches \
+             back a minute"
+        ));
     }
 
     /// Free room against what is needed; unknown room counts as enough, the journal has its own alarm.
     pub(super) fn room_now(&self, recorder: &RecorderNow) -> Room {
-        let health = &recorder.health;
-        if health.free_bytes == 0 && health.trouble.is_none() {
-            return Room::Enough; // not asked yet
-        }
-        self.room.judge(health.free_bytes, self.book.waiting(), self.book.open_bytes(self.room.n_bytes()))
+        let Some(free_bytes) = recorder.health.free_bytes else { return Room::Enough };
+        self.room.judge(free_bytes, self.book.waiting(), self.book.open_bytes(self.room.n_bytes()))
     }
 
     /// Does with the trials what the room asks for; after the alarm was raised.
     pub(super) fn act_on_room(&mut self, recorder: &RecorderNow, room: &Room, now_ns: i64) {
+        let has_room = !recorder.refusing && !matches!(room, Room::TooLittle(_));
         if recorder.refusing {
             self.end_for_want_of_room(now_ns);
-        } else if !matches!(room, Room::TooLittle(_)) {
+        } else if has_room {
             self.open_held_back(now_ns);
         }
+        if has_room && std::mem::replace(&mut self.had_room, has_room) != has_room {
+            self.sealer.retry_now(); // what could not be sealed for want of room
+        }
+        self.had_room = has_room;
     }
 
     /// The closing record has room of its own in the segment: what was recorded becomes a whole trial.
@@ -63,7 +69,6 @@ impl Conductor {
             && let Some(from_host_ns) = self.held_back_from_ns.take()
         {
             self.open_trial(now_ns, from_host_ns, "there is room on the disk again", "");
-            self.sealer.retry_now();
         }
     }
 }

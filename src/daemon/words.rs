@@ -11,7 +11,7 @@ use super::sealing::SealReport;
 
 /// Longest time that data may wait to be durable before the crew is told.
 const EXPOSURE_NS_MAX: i64 = 250_000_000;
-/// Share of the recorder's queue above which it is told.
+/// Share of the recorder's queue above which it is told, until it was lower for ten seconds.
 const QUEUE_HIGH: f64 = 0.5;
 
 pub fn event(host_ns: i64, kind: &str, source: &str, text: String) -> Event {
@@ -59,7 +59,7 @@ pub fn slow(now: &RecorderNow) -> Option<String> {
     let exposure_ns = now.health.exposure_ns_lately();
     if now.queue_high_water > QUEUE_HIGH {
         let percent = now.queue_high_water * 100.0;
-        return Some(format!("the disk is slow, {percent:.0} % of the queue was filled"));
+        return Some(format!("the disk is slow, {percent:.0} % of the queue was filled in the last ten seconds"));
     }
     if exposure_ns > EXPOSURE_NS_MAX {
         let seconds = exposure_ns as f64 * 1e-9;
@@ -98,4 +98,28 @@ pub fn sealed(now_ns: i64, report: &SealReport) -> Event {
         Err(why) => format!("trial {} is not sealed, its journal is kept: {why}", report.trial_id),
     };
     event(now_ns, "seal", "seal", text)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::live::Live;
+
+    #[test]
+    fn a_queue_that_filled_is_an_alarm_with_its_time_until_it_was_low_for_a_while() {
+        let rig = crate::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap();
+        let mut live = Live::new(&rig);
+        let mut told = |host_ns, queue_high_water| {
+            let slow = slow(&RecorderNow { queue_high_water, ..RecorderNow::default() });
+            live.journal_trouble(host_ns, slow.as_deref()).map(|happening| Event::of(&happening))
+        };
+        assert_eq!(told(1, QUEUE_HIGH), None);
+        let raised = told(2, 0.8).unwrap();
+        assert_eq!((raised.host_ns, raised.kind.as_str()), (2, "alarm"));
+        assert!(raised.text.contains("80 % of the queue"), "{}", raised.text);
+        assert_eq!(told(3, 0.9), None, "told once");
+        let cleared = told(4, 0.1).unwrap();
+        assert_eq!((cleared.host_ns, cleared.kind.as_str()), (4, "alarm"));
+        assert_ne!(cleared.text, raised.text);
+    }
 }

@@ -11,6 +11,7 @@ mod disk;
 mod frame;
 mod health;
 mod job;
+mod lately;
 mod lock;
 mod reader;
 mod recorder;

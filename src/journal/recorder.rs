@@ -70,7 +70,7 @@ pub enum Report {
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct RecorderNow {
     pub health: Health,
-    /// Most that waited in the queue since the start, relative to its bound.
+    /// Most that waited in the queue in the last ten seconds, relative to its bound.
     pub queue_high_water: f64,
     /// Ordinary records find no room.
     pub refusing: bool,

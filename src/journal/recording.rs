@@ -8,6 +8,7 @@ use crossbeam_channel::Sender;
 use crate::link::{DeviceIdx, FromLinks, HostClock};
 
 use super::job::{Job, Outcome};
+use super::lately::Lately;
 use super::recorder::{Order, RecorderNow, Report};
 use super::writer::Journal;
 use super::{Body, Clocks, EventBody, TrialOpen};
@@ -21,7 +22,7 @@ pub struct Recording {
     clock: Arc<dyn HostClock>,
     read_clocks: fn() -> Clocks,
     reports: Sender<Report>,
-    queue_high_water: f64,
+    queue: Lately<f64>,
     clocks_at_ns: i64,
     /// Trials whose closing record (by sequence) is not known to be on the disk yet.
     closing: Vec<(u64, String)>,
@@ -35,12 +36,12 @@ impl Recording {
         read_clocks: fn() -> Clocks,
         reports: Sender<Report>,
     ) -> Self {
-        Self { journal, clock, read_clocks, reports, queue_high_water: 0.0, clocks_at_ns: 0, closing: Vec::new() }
+        Self { journal, clock, read_clocks, reports, queue: Lately::default(), clocks_at_ns: 0, closing: Vec::new() }
     }
 
     /// Notes how full the queue is that feeds this, relative to its bound.
     pub fn saw_queue(&mut self, filled: f64) {
-        self.queue_high_water = self.queue_high_water.max(filled);
+        self.queue.add(self.clock.monotonic_ns(), filled);
     }
 
     pub fn take(&mut self, item: FromLinks) {
@@ -118,9 +119,11 @@ impl Recording {
     }
 
     pub fn now(&mut self) -> RecorderNow {
+        let now_ns = self.clock.monotonic_ns();
+        self.queue.forget_old(now_ns);
         RecorderNow {
-            health: self.journal.health(self.clock.monotonic_ns()),
-            queue_high_water: self.queue_high_water,
+            health: self.journal.health(now_ns),
+            queue_high_water: self.queue.greatest().unwrap_or(0.0),
             refusing: self.journal.is_refusing(),
         }
     }
@@ -154,5 +157,45 @@ impl Recording {
     fn report(&self, report: Report) {
         // The daemon drains these all the time; one that finds no room is in the journal all the same.
         let _ = self.reports.try_send(report);
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::super::{Origin, Settings, StagedDisk, Start};
+    use super::*;
+    use std::path::Path;
+    use std::sync::atomic::{AtomicI64, Ordering};
+
+    #[derive(Debug, Default)]
+    struct Set(AtomicI64);
+
+    impl HostClock for Set {
+        fn monotonic_ns(&self) -> i64 {
+            self.0.load(Ordering::SeqCst)
+        }
+    }
+
+    #[test]
+    fn a_queue_that_was_nearly_full_once_is_not_held_against_it_for_ever() {
+        let clock = Arc::new(Set::default());
+        let origin = Origin {
+            journal_id: "000001-abc123".into(),
+            program_version: "0".into(),
+            kernel_boot_id: "boot".into(),
+            rig_text: String::new(),
+            devices: Vec::new(),
+        };
+        let (disk, settings) = (Arc::new(StagedDisk::default()), Settings::default());
+        let journal = Journal::begin(disk, Path::new("j"), origin, Start::fresh(), settings, 0).unwrap();
+        let (told, _reports) = crossbeam_channel::bounded(9);
+        let mut recording = Recording::new(journal, Arc::clone(&clock) as _, Clocks::read, told);
+        let mut after_s = |s: i64, filled: f64| {
+            clock.0.store(s * 1_000_000_000, Ordering::SeqCst);
+            recording.saw_queue(filled);
+            recording.now().queue_high_water
+        };
+        assert_eq!([after_s(0, 0.01), after_s(1, 0.9), after_s(2, 0.02)], [0.01, 0.9, 0.9]);
+        assert_eq!([after_s(11, 0.01), after_s(12, 0.01)], [0.9, 0.02]);
     }
 }

@@ -161,9 +161,11 @@ pub struct LinkNow {
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct JournalNow {
     pub bytes: u64,
-    pub free_bytes: u64,
-    /// Longest interval between syncs lately.
+    /// On the disk; none before it said.
+    pub free_bytes: Option<u64>,
+    /// Longest wait to be on the disk in the last ten seconds.
     pub sync_interval_s: f64,
+    /// Greatest share of its queue that was filled in the last ten seconds.
     pub queue_high_water: f64,
     pub lost_events: u64,
     pub trouble: Option<String>,

@@ -196,8 +196,10 @@ pub fn journal(view: &ViewState) -> Line<'static> {
             let lost =
                 if journal.lost_events > 0 { format!(", {} reads LOST", journal.lost_events) } else { String::new() };
             let style = if journal.lost_events > 0 { view.theme.caution() } else { Style::new() };
-            let (written, free) = (bytes(journal.bytes as f64), bytes(journal.free_bytes as f64));
-            let text = format!("journal {written}, {free} free, synced within {:.2} s{lost}", journal.sync_interval_s);
+            let written = bytes(journal.bytes as f64);
+            let free =
+                journal.free_bytes.map_or("room unknown".to_owned(), |free| format!("{} free", bytes(free as f64)));
+            let text = format!("journal {written}, {free}, synced within {:.2} s{lost}", journal.sync_interval_s);
             Line::styled(text, style)
         }
     }

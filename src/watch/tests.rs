@@ -97,7 +97,7 @@ fn snapshot(phase: Phase, x_m: f64, line_n: f64, anchor_n: f64, cords: CordsNow)
         links: vec![link("winch-node"), link("shuttle-node")],
         journal: Some(JournalNow {
             bytes: 10_485_760,
-            free_bytes: 9_000_000_000,
+            free_bytes: Some(9_000_000_000),
             sync_interval_s: 0.1,
             queue_high_water: 0.01,
             lost_events: 0,

@@ -6,6 +6,7 @@ use bytes::Bytes;
 use crossbeam_channel::{Sender, bounded};
 use std::path::Path;
 
+use super::super::room::Room;
 use super::super::sealing::SealCommand;
 
 const RIG: &str = include_str!("../../../tools/rehearsal/north-pier.toml");
@@ -60,6 +61,7 @@ fn pit() -> Pit {
         seal_patience: Duration::from_secs(5),
         room: RoomWatch::new(Duration::from_secs(60), 1e5),
         held_back_from_ns: None,
+        had_room: true,
         settle_at_ns: 0,
         openings: FirstOpenings::of(&rig),
         wait_for_ports: false,
@@ -105,5 +107,31 @@ fn when_the_sealing_thread_dies_the_recorder_is_still_stopped_in_order() {
     let error = conductor.run(inputs).unwrap_err();
     assert!(matches!(error, DaemonError::ThreadEnded { .. }), "{error}");
     assert_eq!(reads_on_disk(&disk), 500);
+    drop(shutdown);
+}
+
+#[test]
+fn no_room_at_all_is_too_little_and_room_not_asked_for_is_not() {
+    let Pit { _dir, conductor, .. } = pit();
+    let mut recorder = RecorderNow::default();
+    assert_eq!(conductor.room_now(&recorder), Room::Enough);
+    recorder.health.free_bytes = Some(0);
+    assert!(matches!(conductor.room_now(&recorder), Room::TooLittle(_)));
+}
+
+#[test]
+fn a_zero_in_force_reaches_the_journal_although_too_much_waits_already() {
+    let Pit { _dir, disk, mut conductor, inputs, journal, live, shutdown } = pit();
+    let event = |kind: &str| words::event(1, kind, "daemon", format!("a {kind}"));
+    while conductor.tell(event("mark")) {}
+    conductor.tell_needed(event("tare"));
+    drop((journal, live));
+    conductor.run(inputs).unwrap_err();
+    let reader = JournalReader::open(Arc::new(disk.after_kill()), Path::new("j"), "000001-abc123").unwrap();
+    let is_tare = |item: &crate::journal::Item| {
+        matches!(item, crate::journal::Item::Record(record)
+            if matches!(&record.body, crate::journal::Body::Event(event) if event.text == "a tare"))
+    };
+    assert_eq!(reader.records().filter(|item| item.as_ref().is_ok_and(is_tare)).count(), 1);
     drop(shutdown);
 }

@@ -61,7 +61,7 @@ impl Journal {
                 self.trouble(format!("cannot make the next segment in {dir}: {error}"));
                 self.retry_ns = now_ns + RETRY_AHEAD_NS;
             }
-            Outcome::Room { free_bytes } => self.health.free_bytes = free_bytes.unwrap_or(self.health.free_bytes),
+            Outcome::Room { free_bytes } => self.health.free_bytes = free_bytes.or(self.health.free_bytes),
             Outcome::Removed { failed } => {
                 for (path, error) in failed {
                     self.notices.push(format!("cannot remove {}: {error}", path.display()));
