@@ -270,16 +270,16 @@ fn an_unclosed_trial_is_sealed_as_truncated_and_left_alone_while_live() {
     let dir = tempfile::tempdir().unwrap();
     nominal(dir.path(), PACE, false);
     let lock = ArchiveLock::take(dir.path(), "a daemon").unwrap();
-    let beside = recover(dir.path(), &real(), &mut |_| {}).unwrap();
+    let beside = recover(dir.path(), &real(), &mut |_| {}).unwrap().trials;
     assert!(matches!(beside[..], [ref one] if matches!(one.fate, Fate::Live)), "{beside:?}");
     drop(lock);
-    let after = recover(dir.path(), &real(), &mut |_| {}).unwrap();
+    let after = recover(dir.path(), &real(), &mut |_| {}).unwrap().trials;
     let [one] = &after[..] else { panic!("{after:?}") };
     let Fate::Sealed(sealed) = &one.fate else { panic!("{one:?}") };
     assert_eq!(sealed.outcome, "truncated");
     let results = TrialFile::open(&sealed.path).unwrap().results().unwrap();
     assert!(results.outcome_evidence[0].contains("launched"), "{results:?}");
-    let again = recover(dir.path(), &real(), &mut |_| {}).unwrap();
+    let again = recover(dir.path(), &real(), &mut |_| {}).unwrap().trials;
     assert!(matches!(again[..], [ref one] if matches!(one.fate, Fate::AlreadySealed(_))), "{again:?}");
 }
 
@@ -292,7 +292,7 @@ fn a_trial_that_goes_on_after_it_was_recovered_gets_a_file_of_its_own() {
     let whole = seal(&reader, &range, dir.path(), &real()).unwrap();
     assert_eq!(whole.path.file_name().unwrap().to_str().unwrap(), format!("trial-{TRIAL_ID}-2.h5"));
     assert!(whole.n_samples > first.n_samples && verify(&first.path).unwrap().findings.is_empty());
-    let known = recover(dir.path(), &real(), &mut |_| {}).unwrap();
+    let known = recover(dir.path(), &real(), &mut |_| {}).unwrap().trials;
     assert!(matches!(&known[0].fate, Fate::AlreadySealed(path) if *path == whole.path), "{known:?}");
 }
 

@@ -4,19 +4,20 @@
 
 #[path = "support/journal.rs"]
 mod journal_file;
+mod support;
 
 use std::path::{Path, PathBuf};
 use std::process::Command;
 use std::sync::Arc;
 
 use journal_file::{JOURNAL_ID, TRIAL_ID, nominal, opened, opening};
-use tautrail::archive::{Fate, Keep, ReleaseError, Sealed, kept, recover, release, seal, seal_keeping};
+use tautrail::archive::{Fate, ReleaseError, Sealed, kept, recover, release, seal};
 use tautrail::journal::{Disk, Item, Journal, JournalReader, Origin, RealDisk, Settings, Start, TrialRange};
 
 const PACE: f64 = 0.1;
 
-/// Writes the records of the journal in `from` into `to` by the journal's own writer, in segments of a size.
-fn rewrite(from: &Path, to: &Path, segment_bytes: u64) -> usize {
+/// Writes the records of the journal in `from` into `to` by the journal's own writer; gives the segments.
+fn rewrite(from: &Path, to: &Path, settings: Settings) -> Vec<PathBuf> {
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
     let (reader, _) = opened(from);
     let open = opening(journal_file::RIG_TEXT);
@@ -27,7 +28,6 @@ fn rewrite(from: &Path, to: &Path, segment_bytes: u64) -> usize {
         rig_text: open.rig_text,
         devices: open.devices,
     };
-    let settings = Settings { segment_bytes, segment_ns: i64::MAX, ..Settings::default() };
     let dir = to.join("journal");
     let mut journal = Journal::begin(Arc::clone(&disk), &dir, origin, Start::fresh(), settings, 0).unwrap();
     for item in reader.records() {
@@ -40,7 +40,12 @@ fn rewrite(from: &Path, to: &Path, segment_bytes: u64) -> usize {
         }
     }
     drop(journal);
-    JournalReader::open(disk, &dir, JOURNAL_ID).unwrap().segments().len()
+    let reader = JournalReader::open(disk, &dir, JOURNAL_ID).unwrap();
+    reader.segments().iter().map(|segment| segment.path.clone()).collect()
+}
+
+fn segments_of(segment_bytes: u64) -> Settings {
+    Settings { segment_bytes, segment_ns: i64::MAX, ..Settings::default() }
 }
 
 fn sealed_bytes(dir: &Path, cut: impl Fn(TrialRange) -> TrialRange) -> Vec<u8> {
@@ -63,7 +68,7 @@ fn the_same_records_in_other_segments_give_the_same_bytes() {
     assert!(half.len() < one.len());
     for segment_bytes in [150_001, 40_003] {
         let cut = tempfile::tempdir().unwrap();
-        let n_segments = rewrite(source.path(), cut.path(), segment_bytes);
+        let n_segments = rewrite(source.path(), cut.path(), segments_of(segment_bytes)).len();
         assert!(n_segments > 3, "{n_segments} segments");
         assert!(sealed_bytes(cut.path(), whole) == one, "segments of {segment_bytes} bytes: other bytes");
         assert!(sealed_bytes(cut.path(), later) == half, "segments of {segment_bytes} bytes, begun later: other bytes");
@@ -97,7 +102,7 @@ fn the_journal_of_an_abnormal_trial_stays_until_a_person_lets_it_go() {
     // It is enough to seal again from.
     std::fs::rename(&sealed.path, dir.path().join("elsewhere.h5")).unwrap();
     assert!(matches!(release(dir.path(), TRIAL_ID), Err(ReleaseError::NotSealed { .. })), "all there is of it");
-    let again = recover(dir.path(), &real(), &mut |_| {}).unwrap();
+    let again = recover(dir.path(), &real(), &mut |_| {}).unwrap().trials;
     assert!(matches!(&again[..], [one] if matches!(one.fate, Fate::Sealed(_))), "{again:?}");
     assert!(std::fs::read(&sealed.path).unwrap() == std::fs::read(dir.path().join("elsewhere.h5")).unwrap());
     let let_go = Command::new(env!("CARGO_BIN_EXE_tautrail"))
@@ -116,15 +121,30 @@ fn the_journal_of_an_abnormal_trial_stays_until_a_person_lets_it_go() {
 }
 
 #[test]
-fn the_journal_of_a_launch_is_kept_only_where_asked_for() {
-    let dir = tempfile::tempdir().unwrap();
-    nominal(dir.path(), PACE, true);
-    let (reader, range) = opened(dir.path());
-    assert!(!seal(&reader, &range, dir.path(), &real()).unwrap().journal_kept);
-    assert_eq!(kept(dir.path()).unwrap(), []);
-    let other = tempfile::tempdir().unwrap();
-    nominal(other.path(), PACE, true);
-    let (reader, range) = opened(other.path());
-    assert!(seal_keeping(&reader, &range, other.path(), &real(), Keep::Every).unwrap().journal_kept);
-    assert_eq!(kept(other.path()).unwrap().len(), 1);
+fn counts_over_several_segments_equal_what_an_independent_reader_finds() {
+    let (source, dir) = (tempfile::tempdir().unwrap(), tempfile::tempdir().unwrap());
+    nominal(source.path(), PACE, true);
+    let segments = rewrite(source.path(), dir.path(), segments_of(100_003));
+    assert!(segments.len() > 5, "{segments:?}");
+    let sealed = seal_in(dir.path());
+    let paths = segments.iter().chain([&sealed.path]).map(|path| path.to_str().unwrap());
+    let compared = support::run_oracle(include_str!("support/decode_journal.py"), &paths.collect::<Vec<_>>());
+    assert_eq!(compared.trim().parse(), Ok(2 * sealed.n_samples), "two channels a device");
+    assert!(sealed.n_samples > 50_000 && sealed.n_missing == 0, "{sealed:?}");
+}
+
+#[test]
+fn the_journal_of_a_launch_is_kept_where_its_recording_said_so_whoever_seals_it() {
+    let source = tempfile::tempdir().unwrap();
+    nominal(source.path(), PACE, true);
+    for keep in [false, true] {
+        let dir = tempfile::tempdir().unwrap();
+        rewrite(source.path(), dir.path(), Settings { keep, ..segments_of(1 << 20) });
+        let output =
+            Command::new(env!("CARGO_BIN_EXE_tautrail")).args(["--json", "recover"]).arg(dir.path()).output().unwrap();
+        let told: serde_json::Value = serde_json::from_slice(&output.stdout).unwrap();
+        let (sealed, kept) = (&told["trials"][0]["detail"], told["kept_journals"].as_array().unwrap());
+        assert_eq!((&sealed["outcome"], &sealed["journal_kept"]), (&"launched".into(), &keep.into()), "{told}");
+        assert_eq!(kept.len(), usize::from(keep), "{told}");
+    }
 }

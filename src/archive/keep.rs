@@ -1,8 +1,8 @@
 //! Journals that are kept for a person: the segments a trial needs, as hard links in a directory of the trial's own, so
 //! that they stay whatever the recorder lets go of, and cost nothing while it still has them.
 //!
-//! Kept is the journal of every trial that did not end as a launch or a let-down (and of every trial where that was
-//! asked for), from before its file is published until a person lets it go. Reads and links only: no byte of a journal
+//! Kept is the journal of every trial that did not end as a launch or a let-down, and of every trial whose segments say
+//! that they are to be kept (the recorder wrote it there, so whoever seals knows), from before its file is published until a person lets it go. Reads and links only: no byte of a journal
 //! is written.
 
 use std::fs::{self, File};
@@ -10,27 +10,19 @@ use std::io;
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
-use crate::journal::{Disk, JournalReader, SegmentInfo, TrialRange, journals};
+use crate::journal::{Disk, JournalReader, ReadError, SegmentInfo, TrialRange, journals};
 use crate::reading::Outcome;
 
 use super::error::SealError;
 use super::recover::journal_dir;
 use super::seal::trial_path;
 
-/// Which journals stay after their trial has its file.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
-pub enum Keep {
-    /// Those of trials that ended in any other way than a launch or a let-down.
-    #[default]
-    Abnormal,
-    Every,
-}
-
 /// A journal that waits for a person.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Kept {
     pub trial_id: String,
     pub dir: PathBuf,
+    /// Of the files in it that can be looked at.
     pub n_bytes: u64,
 }
 
@@ -48,11 +40,10 @@ pub enum ReleaseError {
     Io { path: PathBuf, source: io::Error },
 }
 
-impl Keep {
-    pub(super) fn applies_to(self, outcome: &str) -> bool {
-        let ordinary = [Outcome::Launched, Outcome::LetDown].iter().any(|known| known.word() == outcome);
-        self == Self::Every || !ordinary
-    }
+/// Whether the journal of a trial that ended in this way is kept.
+pub(super) fn is_kept(reader: &JournalReader, range: &TrialRange, outcome: &str) -> bool {
+    let ordinary = [Outcome::Launched, Outcome::LetDown].iter().any(|known| known.word() == outcome);
+    !ordinary || segments_of(reader.segments(), range).iter().any(|segment| segment.open.keep)
 }
 
 fn kept_dir(dir: &Path) -> PathBuf {
@@ -80,9 +71,20 @@ pub(super) fn keep(reader: &JournalReader, range: &TrialRange, dir: &Path) -> Re
 
 /// From one segment before the range's start, for the decoders' lead-in, to its end.
 pub(super) fn needed<'s>(segments: &'s [SegmentInfo], range: &TrialRange) -> &'s [SegmentInfo] {
+    let (first, end) = ends(segments, range);
+    &segments[first.saturating_sub(1)..end]
+}
+
+/// Those in which records of the range stand.
+fn segments_of<'s>(segments: &'s [SegmentInfo], range: &TrialRange) -> &'s [SegmentInfo] {
+    let (first, end) = ends(segments, range);
+    &segments[first..end]
+}
+
+fn ends(segments: &[SegmentInfo], range: &TrialRange) -> (usize, usize) {
     let first = segments.iter().rposition(|segment| segment.open.first_seq <= range.first_seq).unwrap_or(0);
     let end = segments.partition_point(|segment| segment.open.first_seq <= range.last_seq);
-    &segments[first.saturating_sub(1).min(end)..end]
+    (first.min(end), end)
 }
 
 fn link_or_copy(from: &Path, to: &Path) -> io::Result<()> {
@@ -113,15 +115,19 @@ pub fn kept(dir: &Path) -> io::Result<Vec<Kept>> {
     let mut kept = Vec::new();
     for entry in listed {
         let entry = entry?;
-        let mut n_bytes = 0;
-        for file in fs::read_dir(entry.path())? {
-            n_bytes += file?.metadata()?.len();
+        // Whatever else somebody left there is not a trial's.
+        if entry.file_type()?.is_dir() {
+            let trial_id = entry.file_name().to_string_lossy().into_owned();
+            kept.push(Kept { trial_id, n_bytes: bytes_in(&entry.path()), dir: entry.path() });
         }
-        let trial_id = entry.file_name().to_string_lossy().into_owned();
-        kept.push(Kept { trial_id, dir: entry.path(), n_bytes });
     }
     kept.sort_by(|a, b| a.trial_id.cmp(&b.trial_id));
     Ok(kept)
+}
+
+fn bytes_in(dir: &Path) -> u64 {
+    let files = fs::read_dir(dir).into_iter().flatten();
+    files.filter_map(|file| Some(file.ok()?.metadata().ok()?.len())).sum()
 }
 
 /// Lets go of a trial's kept journal: what of it the recorder does not have any more is gone for good. Gives its bytes.
@@ -141,11 +147,24 @@ pub fn release(dir: &Path, trial_id: &str) -> Result<u64, ReleaseError> {
     Ok(found.n_bytes)
 }
 
-/// The kept journals as readers, each with the id of its trial; one that does not open is left out.
-pub(super) fn readers(dir: &Path, disk: &Arc<dyn Disk>) -> Vec<(String, JournalReader)> {
-    let of = |kept: Kept| {
-        let id = journals(&**disk, &kept.dir).ok()?.into_iter().next()?;
-        Some((kept.trial_id, JournalReader::open(Arc::clone(disk), &kept.dir, &id).ok()?))
-    };
-    kept(dir).unwrap_or_default().into_iter().filter_map(of).collect()
+/// The kept journals as readers, each with the id of its trial; beside them why others do not open.
+pub(super) fn readers(dir: &Path, disk: &Arc<dyn Disk>) -> (Vec<(String, JournalReader)>, Vec<ReadError>) {
+    let (mut readers, mut unreadable) = (Vec::new(), Vec::new());
+    let listed = kept(dir).unwrap_or_else(|source| {
+        unreadable.push(ReadError::Io { path: kept_dir(dir), source });
+        Vec::new()
+    });
+    for kept in listed {
+        match reader_of(&kept, disk) {
+            Ok(reader) => readers.extend(reader.map(|reader| (kept.trial_id, reader))),
+            Err(error) => unreadable.push(error),
+        }
+    }
+    (readers, unreadable)
+}
+
+/// `None`: killed before it kept anything, or emptied by hand.
+fn reader_of(kept: &Kept, disk: &Arc<dyn Disk>) -> Result<Option<JournalReader>, ReadError> {
+    let ids = journals(&**disk, &kept.dir)?;
+    ids.first().map(|id| JournalReader::open(Arc::clone(disk), &kept.dir, id)).transpose()
 }

@@ -151,7 +151,12 @@ impl Player<'_> {
             }
             Body::Clocks(clocks) => (self.tell)(Told::Clocks(clocks)),
             Body::Event(event) => (self.tell)(Told::Event { host_ns, event }),
-            Body::TrialOpen(open) => self.trial_event(host_ns, open.person, format!("opened: {}", open.reason)),
+            Body::TrialOpen(open) => {
+                let goes_on =
+                    open.continues.map(|earlier| format!("; it goes on under the tension of trial {earlier}"));
+                let text = format!("opened: {}{}", open.reason, goes_on.unwrap_or_default());
+                self.trial_event(host_ns, open.person, text)
+            }
             Body::TrialClose(close) => self.trial_event(host_ns, close.person, format!("closed: {}", close.reason)),
             Body::Lost(lost) => (self.tell)(Told::Lost { device, host_ns, lost }),
             Body::Link(LinkWhat::Bytes(bytes)) => {

@@ -1,7 +1,7 @@
 //! Seals what a crash left: every trial of every journal that has no trial file yet.
 //!
 //! Beside a running daemon (which holds the directory's lock) the trial under way is left alone. Without one, the lock
-//! is held while recovering, so that no daemon starts in between.
+//! is held while recovering, so that no daemon starts in between. A journal that cannot be read holds up no other.
 
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
@@ -10,9 +10,17 @@ use crate::journal::{ArchiveLock, Disk, JournalReader, LockError, ReadError, Tri
 use crate::trial::TrialFile;
 
 use super::error::SealError;
-use super::keep::{Keep, readers};
+use super::keep::readers;
 use super::publish::clear_up;
-use super::seal::{Sealed, seal, seal_keeping, trial_path};
+use super::seal::{Sealed, seal, trial_path};
+
+/// What was found, and what became of it.
+#[derive(Debug, Default)]
+pub struct Recovery {
+    pub trials: Vec<Recovered>,
+    /// Journals that could not be read, each with its path. They are left as they are and hold up no other.
+    pub unreadable: Vec<ReadError>,
+}
 
 /// What became of one trial.
 #[derive(Debug)]
@@ -50,15 +58,17 @@ pub fn journal_dir(dir: &Path) -> PathBuf {
     dir.join("journal")
 }
 
-/// Seals every trial in `dir` that is not sealed yet, from the journals and from those kept for a person; `progress` hears of each before it is begun.
+/// Seals every trial in `dir` that is not sealed yet, from the journals and from those kept for a person; `progress` hears of
+/// each before it is begun.
 ///
 /// # Errors
-/// Journals or the lock that cannot be read or taken. A trial that fails is a [`Fate`], and the others go on.
+/// A directory that is not there or cannot be listed, a lock that cannot be taken. A journal that cannot be read is told in
+/// [`Recovery::unreadable`], a trial that fails is a [`Fate`]; the others go on.
 pub fn recover(
     dir: &Path,
     disk: &Arc<dyn Disk>,
     progress: &mut dyn FnMut(&TrialRange),
-) -> Result<Vec<Recovered>, RecoverError> {
+) -> Result<Recovery, RecoverError> {
     if !dir.is_dir() {
         return Err(RecoverError::NoDirectory { dir: dir.to_owned() });
     }
@@ -68,32 +78,52 @@ pub fn recover(
         Err(error) => return Err(RecoverError::Lock(error)),
     };
     clear_up(&**disk, dir).map_err(|source| ReadError::Io { path: dir.to_owned(), source })?;
-    let mut recovered = Vec::new();
+    let mut recovery = Recovery::default();
     let ids = journals(&**disk, &journal_dir(dir))?;
     for journal_id in &ids {
-        let reader = match JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id) {
-            Err(ReadError::NoSegment { .. }) => continue, // made and not begun, or nothing in it can be read
-            opened => opened?,
-        };
-        for range in reader.trials()? {
-            let live = lock.is_none() && range.closed.is_none() && ids.last() == Some(journal_id);
-            let fate = if live { Fate::Live } else { seal_if_needed(&reader, &range, dir, disk, progress) };
-            recovered.push(Recovered { journal_id: journal_id.clone(), trial_id: range.trial_id, fate });
+        let may_be_live = lock.is_none() && ids.last() == Some(journal_id);
+        let read = JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id);
+        match read.and_then(|reader| Ok((reader.trials()?, reader))) {
+            Ok((ranges, reader)) => {
+                for range in ranges {
+                    let live = may_be_live && range.closed.is_none();
+                    let fate = if live { Fate::Live } else { seal_if_needed(&reader, &range, dir, disk, progress) };
+                    recovery.take(range, fate);
+                }
+            }
+            Err(ReadError::NeverBegun { .. }) => {}
+            Err(error) => recovery.unreadable.push(error),
         }
     }
-    for (trial_id, reader) in readers(dir, disk) {
-        if recovered.iter().any(|known| known.trial_id == trial_id) {
-            continue;
-        }
-        // A kept journal that cannot be read holds up no other; its trial was sealed or is told above.
-        let Ok(ranges) = reader.trials() else { continue };
-        for range in ranges.into_iter().filter(|range| range.trial_id == trial_id) {
-            let fate = seal_if_needed(&reader, &range, dir, disk, progress);
-            recovered.push(Recovered { journal_id: reader.journal_id().to_owned(), trial_id: range.trial_id, fate });
-        }
-    }
+    recovery.take_kept(dir, disk, progress);
     drop(lock);
-    Ok(recovered)
+    Ok(recovery)
+}
+
+impl Recovery {
+    fn take(&mut self, range: TrialRange, fate: Fate) {
+        self.trials.push(Recovered { journal_id: range.journal_id, trial_id: range.trial_id, fate });
+    }
+
+    /// Trials whose journal is there only because it was kept.
+    fn take_kept(&mut self, dir: &Path, disk: &Arc<dyn Disk>, progress: &mut dyn FnMut(&TrialRange)) {
+        let (readers, unreadable) = readers(dir, disk);
+        self.unreadable.extend(unreadable);
+        for (trial_id, reader) in readers {
+            if self.trials.iter().any(|known| known.trial_id == trial_id) {
+                continue;
+            }
+            match reader.trials() {
+                Ok(ranges) => {
+                    for range in ranges.into_iter().filter(|range| range.trial_id == trial_id) {
+                        let fate = seal_if_needed(&reader, &range, dir, disk, progress);
+                        self.take(range, fate);
+                    }
+                }
+                Err(error) => self.unreadable.push(error),
+            }
+        }
+    }
 }
 
 fn seal_if_needed(
@@ -149,7 +179,6 @@ pub fn seal_one(
     trial_id: &str,
     from_seq: u64,
     disk: &Arc<dyn Disk>,
-    keep: Keep,
 ) -> Result<Sealed, SealError> {
     let reader = JournalReader::open(Arc::clone(disk), &journal_dir(dir), journal_id)?;
     let from = reader.segments().iter().rfind(|segment| segment.open.first_seq <= from_seq);
@@ -157,5 +186,5 @@ pub fn seal_one(
     let range = ranges.iter().find(|range| range.trial_id == trial_id);
     let range = range
         .ok_or_else(|| SealError::NoSuchTrial { journal_id: journal_id.to_owned(), trial_id: trial_id.to_owned() })?;
-    seal_keeping(&reader, range, dir, disk, keep)
+    seal(&reader, range, dir, disk)
 }

@@ -19,7 +19,7 @@ use crate::trial::{Condition, Header, ResultSet, TrialFile, TrialWriter, text_sh
 use super::derive;
 use super::edges::edges_seen;
 use super::error::SealError;
-use super::keep::{Keep, needed};
+use super::keep::{is_kept, keep, needed};
 use super::player::{Told, play};
 use super::publish::{Part, Published};
 use super::raw_pass::{DevicePass, Events, RawPass};
@@ -55,25 +55,12 @@ struct Ahead {
     clocks: Option<Clocks>,
 }
 
-/// Seals `range` into `dir/trial-<id>.h5`; the journal of an abnormal outcome is kept.
+/// Seals `range` into `dir/trial-<id>.h5`; the journal of an abnormal outcome is kept for a person, and any that says of
+/// itself that it is to be.
 ///
 /// # Errors
 /// [`SealError`]; nothing half-made stays behind and the journal is untouched.
 pub fn seal(reader: &JournalReader, range: &TrialRange, dir: &Path, disk: &Arc<dyn Disk>) -> Result<Sealed, SealError> {
-    seal_keeping(reader, range, dir, disk, Keep::Abnormal)
-}
-
-/// Seals `range` into `dir/trial-<id>.h5`, and keeps the journal for a person as `keep` says.
-///
-/// # Errors
-/// [`SealError`]; nothing half-made stays behind and the journal is untouched.
-pub fn seal_keeping(
-    reader: &JournalReader,
-    range: &TrialRange,
-    dir: &Path,
-    disk: &Arc<dyn Disk>,
-    keep: Keep,
-) -> Result<Sealed, SealError> {
     let stem = file_stem(&range.trial_id)?;
     expect_room(reader, range, dir, &**disk)?;
     let part = Part::new(&**disk, dir, &stem)?;
@@ -81,9 +68,9 @@ pub fn seal_keeping(
     let made = write(reader, range, &ahead, part.path())?;
     let proof = prove(part.path(), &made)?;
     let target = free_target(dir, &stem, range)?;
-    let kept = keep.applies_to(&made.outcome) && !target.exists();
+    let kept = is_kept(reader, range, &made.outcome) && !target.exists();
     if kept {
-        super::keep::keep(reader, range, dir)?;
+        keep(reader, range, dir)?;
     }
     let published = part.publish(&target)?;
     Ok(Sealed {

@@ -6,19 +6,19 @@ use std::os::unix::fs::FileTypeExt;
 use std::path::{Path, PathBuf};
 
 use serde_json::{Value, json};
-use tautrail::feed::message::LinkNow;
 use tautrail::link::{self, ListedPort};
 use tautrail::rig::{self, CalibrationRecord, Checked, Device, Finding, RecordState, Rig, Severity};
 
 use super::feed_place::FeedPlace;
-use super::link_health;
+use super::link_health::{self, Health};
 use super::screen::{Screen, Tone};
 use super::{CAUTION, Failure, Verdict, cord};
 
 /// Read a rig file and say what is wrong and where, what is uncalibrated, which ports are there
 ///
 /// No port is opened: opening one resets many small boards. The machine's ports are listed with the names that stay the same
-/// after a replug; of a daemon that records this rig here, the health of each link is told.
+/// after a replug; of a daemon that records this rig here, the health of each link and of the journal is told: also how
+/// long data wait to be on the disk.
 #[derive(Debug, clap::Args)]
 #[command(after_help = CHECK_HELP)]
 pub struct Args {
@@ -71,13 +71,13 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
 struct Around {
     listed: Vec<ListedPort>,
     /// Of a daemon that records this rig.
-    links: Vec<LinkNow>,
+    health: Health,
 }
 
 impl Around {
     fn of(args: &Args, rig: Option<&Rig>) -> Self {
         let Some(rig) = rig.filter(|_| !args.no_ports) else { return Self::default() };
-        Self { listed: link::list(), links: link_health::ask(&args.daemon.socket(), &rig.name).unwrap_or_default() }
+        Self { listed: link::list(), health: link_health::ask(&args.daemon.socket(), &rig.name).unwrap_or_default() }
     }
 }
 
@@ -160,9 +160,8 @@ fn print(args: &Args, checked: &Checked, ports: &[Port<'_>], around: &Around, sc
 }
 
 fn print_around(ports: &[Port<'_>], around: &Around, screen: &Screen) {
-    for link in &around.links {
-        screen.line(link_health::sentence(link));
-    }
+    around.health.links.iter().for_each(|link| screen.line(link_health::sentence(link)));
+    around.health.journal.iter().for_each(|journal| screen.line(link_health::journal_sentence(journal)));
     for listed in &around.listed {
         let used = ports.iter().find(|port| fs::canonicalize(&port.path).is_ok_and(|node| node == listed.node));
         let by = used.map_or("not in this rig file".to_owned(), |port| format!("taken by {}", port.device));
@@ -239,6 +238,6 @@ fn as_json(args: &Args, checked: &Checked, ports: &[Port<'_>], around: &Around) 
         "rig_file": args.rig, "usable": checked.rig.is_some(), "rig": checked.rig.as_ref().map(|rig| &rig.name),
         "findings": findings, "calibration_doubts": doubts, "uncalibrated": checked.rig.as_ref().map(names).unwrap_or_default(),
         "ports_looked_for": checked.rig.is_some() && !args.no_ports, "ports": ports, "caution": CAUTION,
-        "machine_ports": listed, "links": around.links,
+        "machine_ports": listed, "links": around.health.links, "journal": around.health.journal,
     })
 }

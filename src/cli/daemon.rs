@@ -39,7 +39,7 @@ pub struct Args {
     /// Keep room on the disk for a hold of this many minutes; no trial is begun without it
     #[arg(long, value_name = "MIN", default_value_t = 60.0, value_parser = minutes)]
     longest_hold: f64,
-    /// Keep the journal of every trial until `tautrail recover --release` lets it go, not only of abnormal ones
+    /// Keep the journal of every trial recorded now until `tautrail recover --release` lets it go, not only of abnormal ones
     #[arg(long)]
     keep_journal: bool,
     /// How long the end waits for sealing, in seconds

@@ -1,26 +1,52 @@
-//! The links of a running daemon, for `check`: what came, what was refused and why, what is missing, how good the clock is.
+//! How a running daemon does, for `check`: of each link what came, what was refused and why, what is missing, how good the
+//! clock is; of the journal how long data wait to be on the disk.
 
 use std::path::Path;
 use std::time::{Duration, Instant};
 
 use tautrail::feed::FeedClient;
-use tautrail::feed::message::{LinkNow, Message};
+use tautrail::feed::message::{JournalNow, LinkNow, Message};
 
 /// The first snapshot comes within a thirtieth of a second.
 const PATIENCE: Duration = Duration::from_secs(2);
 
-/// The links, of a daemon that records the rig of this name; `None` where there is none to ask.
-pub fn ask(socket: &Path, rig_name: &str) -> Option<Vec<LinkNow>> {
+/// What a daemon tells.
+#[derive(Default)]
+pub struct Health {
+    pub links: Vec<LinkNow>,
+    pub journal: Option<JournalNow>,
+}
+
+/// Of a daemon that records the rig of this name; `None` where there is none to ask.
+pub fn ask(socket: &Path, rig_name: &str) -> Option<Health> {
     let mut client = FeedClient::connect(socket).ok().filter(|client| client.hello().rig == rig_name)?;
     let deadline = Instant::now() + PATIENCE;
     while Instant::now() < deadline {
         match client.next(deadline.saturating_duration_since(Instant::now())) {
-            Ok(Some(Message::Snapshot(snapshot))) => return Some(snapshot.links),
+            Ok(Some(Message::Snapshot(snapshot))) => {
+                return Some(Health { links: snapshot.links, journal: snapshot.journal });
+            }
             Ok(_) => {}
             Err(_) => return None,
         }
     }
     None
+}
+
+/// One sentence about the journal.
+pub fn journal_sentence(journal: &JournalNow) -> String {
+    if let Some(trouble) = &journal.trouble {
+        return format!("journal: TROUBLE: {trouble}");
+    }
+    let gib = |bytes: u64| bytes as f64 / f64::from(1 << 30);
+    let free = journal.free_bytes.map_or("room unknown".to_owned(), |free| format!("{:.1} GiB free", gib(free)));
+    format!(
+        "journal: {:.3} GiB, {free}, synced within {:.3} s lately (0.1 s is wanted), queue {:.0} % filled at most lately, {} reads lost",
+        gib(journal.bytes),
+        journal.sync_interval_s,
+        journal.queue_high_water * 100.0,
+        journal.lost_events
+    )
 }
 
 /// One sentence a link.

@@ -5,7 +5,7 @@ use std::sync::Arc;
 
 use serde_json::{Value, json};
 use tautrail::archive::{Fate, Kept, Recovered, kept, recover, release};
-use tautrail::journal::{Disk, RealDisk};
+use tautrail::journal::{Disk, ReadError, RealDisk};
 
 use super::screen::{Screen, Tone};
 use super::seal_child::{sealed_json, sealed_sentence};
@@ -14,7 +14,8 @@ use super::{Failure, Verdict};
 /// Seal every trial that a crash left in the journals of an archive directory
 ///
 /// Beside a running daemon the trial under way is left alone. A trial whose end is missing gets the outcome "truncated".
-/// Journals are only read. Those of trials that were neither a launch nor a let-down stay until you let them go.
+/// Journals are only read; one that cannot be read is named and holds up no other. Those of trials that were neither a launch
+/// nor a let-down, and those of a daemon run with --keep-journal, stay until you let them go.
 #[derive(Debug, clap::Args)]
 #[command(after_help = RECOVER_HELP)]
 pub struct Args {
@@ -31,14 +32,14 @@ Examples:
   tautrail recover --json trials/   for programs
   tautrail recover trials/ --release 000012-7f3a9c    looked at and understood: its journal may go
 
-Exit code: 0 all sealed, 1 a trial could not be sealed (its journal is kept), 2 could not run.";
+Exit code: 0 all sealed, 1 a trial could not be sealed (its journal is kept) or a journal not be read, 2 could not run.";
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     if let Some(trial_id) = &args.release {
         return let_go(&args.dir, trial_id, screen);
     }
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
-    let recovered = recover(&args.dir, &disk, &mut |range| {
+    let recovery = recover(&args.dir, &disk, &mut |range| {
         if !screen.json {
             screen.line(format!("sealing trial {} …", range.trial_id));
         }
@@ -46,16 +47,19 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     let kept = kept(&args.dir)?;
     if screen.json {
         let kept: Vec<Value> = kept.iter().map(kept_json).collect();
-        screen
-            .value(&json!({ "kept_journals": kept, "trials": recovered.iter().map(as_json).collect::<Vec<Value>>() }));
+        let trials: Vec<Value> = recovery.trials.iter().map(as_json).collect();
+        let unreadable: Vec<Value> = recovery.unreadable.iter().map(unreadable_json).collect();
+        screen.value(&json!({ "kept_journals": kept, "trials": trials, "unreadable": unreadable }));
     } else {
-        recovered.iter().for_each(|one| screen.line(sentence(one, screen)));
-        if recovered.is_empty() {
+        recovery.trials.iter().for_each(|one| screen.line(sentence(one, screen)));
+        recovery.unreadable.iter().for_each(|error| screen.line(unreadable_sentence(error, screen)));
+        if recovery.trials.is_empty() && recovery.unreadable.is_empty() {
             screen.line(format!("no journal in {} holds a trial", args.dir.display()));
         }
         kept.iter().for_each(|kept| screen.line(kept_sentence(kept)));
     }
-    let failed = recovered.iter().any(|one| matches!(one.fate, Fate::Failed(_)));
+    let failed = recovery.trials.iter().any(|one| matches!(one.fate, Fate::Failed(_)));
+    let failed = failed || !recovery.unreadable.is_empty();
     Ok(if failed { Verdict::CheckFailed } else { Verdict::Done })
 }
 
@@ -92,6 +96,15 @@ fn sentence(one: &Recovered, screen: &Screen) -> String {
             format!("trial {id} {}: {error}; its journal is kept", screen.toned("NOT SEALED", Tone::Bad))
         }
     }
+}
+
+fn unreadable_sentence(error: &ReadError, screen: &Screen) -> String {
+    let word = screen.toned("NOT READ", Tone::Bad);
+    format!("{word}: {error}; it is left as it is: copy the file to a sound disk and run this again")
+}
+
+fn unreadable_json(error: &ReadError) -> Value {
+    json!({ "path": error.path(), "error": error.to_string() })
 }
 
 fn as_json(one: &Recovered) -> Value {

@@ -4,7 +4,7 @@ use std::path::PathBuf;
 use std::sync::Arc;
 
 use serde_json::json;
-use tautrail::archive::{Keep, Sealed, seal_one};
+use tautrail::archive::{Sealed, seal_one};
 use tautrail::journal::{Disk, RealDisk};
 
 use super::screen::Screen;
@@ -25,17 +25,13 @@ pub struct Args {
     /// First record of the trial; nothing before it is looked through
     #[arg(long, value_name = "SEQ", default_value_t = 0)]
     from_seq: u64,
-    /// Keep the journal, whatever the outcome
-    #[arg(long)]
-    keep_journal: bool,
 }
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     // Refused, sealing goes on at ordinary priority.
     let _ = rustix::process::nice(args.niceness);
-    let keep = if args.keep_journal { Keep::Every } else { Keep::Abnormal };
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
-    let sealed = seal_one(&args.dir, &args.journal, &args.trial, args.from_seq, &disk, keep)?;
+    let sealed = seal_one(&args.dir, &args.journal, &args.trial, args.from_seq, &disk)?;
     if screen.json {
         screen.value(&sealed_json(&sealed));
     } else {

@@ -53,6 +53,8 @@ pub struct Found {
     pub done_with: Vec<String>,
     /// What is worth telling a person.
     pub remarks: Vec<String>,
+    /// Journals that could not be read: left as they are, none of them goes on.
+    pub unreadable: Vec<ReadError>,
 }
 
 /// What tells whether a journal can go on.
@@ -80,7 +82,7 @@ impl std::fmt::Debug for Known<'_> {
 /// Looks through the archive `dir` and its journals, reading what is not known to be done with.
 ///
 /// # Errors
-/// The disk's, and a journal of a later format. A journal that cannot be opened at all is a remark.
+/// A directory that cannot be listed. A journal that cannot be read keeps nobody from recording: [`Found::unreadable`].
 pub fn look(
     disk: &Arc<dyn Disk>,
     dir: &Path,
@@ -94,10 +96,11 @@ pub fn look(
     for id in &ids {
         found.next_journal_number = found.next_journal_number.max(number_of(id).unwrap_or(0) + 1);
         let is_newest = Some(id) == ids.last();
-        match JournalReader::open(Arc::clone(disk), journal_dir, id) {
-            Ok(reader) => found.take(&reader, is_newest, present, known)?,
-            Err(error @ ReadError::NoSegment { .. }) => found.remarks.push(error.to_string()),
-            Err(error) => return Err(error),
+        let read = JournalReader::open(Arc::clone(disk), journal_dir, id);
+        match read.and_then(|reader| found.take(&reader, is_newest, present, known)) {
+            Ok(()) => {}
+            Err(error @ ReadError::NeverBegun { .. }) => found.remarks.push(error.to_string()),
+            Err(error) => found.unreadable.push(error),
         }
     }
     found.find_never_begun(&**disk, journal_dir)?;
@@ -124,6 +127,7 @@ impl Found {
         Ok(())
     }
 
+    /// Nothing is taken of a journal that cannot be read to its end.
     fn take(
         &mut self,
         reader: &JournalReader,

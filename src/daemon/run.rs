@@ -42,7 +42,7 @@ pub struct Options {
     pub budget_bytes: u64,
     /// Room is kept on the disk for a hold of this long.
     pub longest_hold: Duration,
-    /// Keep the journal of every trial until a person lets it go.
+    /// Keep the journal of every trial recorded by this run until a person lets it go, whoever seals it.
     pub keep_journal: bool,
     /// How long the end waits for sealing.
     pub seal_patience: Duration,
@@ -79,7 +79,7 @@ pub fn run(
     let boot_id = kernel_boot_id().map_err(|source| DaemonError::Machine { what: "boot id", source })?;
     let present = Present { kernel_boot_id: &boot_id, rig_text: &rig.text };
     let mut found = look(&disk, &options.dir, present)?;
-    let (settings, journal_dir) = (settings(options.budget_bytes), archive::journal_dir(&options.dir));
+    let (settings, journal_dir) = (settings(options), archive::journal_dir(&options.dir));
     let now_ns = clock.monotonic_ns();
     let journal = begin_journal(&found, &disk, &journal_dir, present, devices_unknown(rig), settings, now_ns)?;
     let journal_id = journal.journal_id().to_owned();
@@ -93,10 +93,7 @@ pub fn run(
     let ends = Ends { links: journal_end, orders: orders_end, reports: reports_in };
     let recorder =
         Recorder::spawn(journal, Arc::clone(&disk), ends, Arc::clone(&clock), Clocks::read).map_err(machine)?;
-    let seal_command = SealCommand {
-        keep_journal: options.keep_journal,
-        ..SealCommand::new(options.program.clone(), options.dir.clone())
-    };
+    let seal_command = SealCommand::new(options.program.clone(), options.dir.clone());
     let (sealer, sealed) = Sealer::spawn(seal_command).map_err(machine)?;
     let sinks = Sinks { journal: to_journal, live: to_live };
     let seed = random_part().map_err(|source| DaemonError::Machine { what: "random numbers", source })?;
@@ -166,10 +163,10 @@ fn ports(rig: &Rig) -> Vec<PortSpec> {
 }
 
 /// Segments are small against the budget, so that letting go of the oldest gives back a part of it only.
-fn settings(budget_bytes: u64) -> Settings {
-    let usual = Settings::default();
+fn settings(options: &Options) -> Settings {
+    let (usual, budget_bytes) = (Settings::default(), options.budget_bytes);
     let segment_bytes = (budget_bytes / 16).clamp(usual.reserve_bytes, usual.segment_bytes);
-    Settings { budget_bytes, segment_bytes, ..usual }
+    Settings { budget_bytes, segment_bytes, keep: options.keep_journal, ..usual }
 }
 
 fn devices_unknown(rig: &Rig) -> Vec<DeviceAtOpen> {
@@ -187,6 +184,12 @@ impl Conductor {
         let now_ns = self.clock.monotonic_ns();
         for remark in &found.remarks {
             self.tell(words::event(now_ns, "journal", "daemon", remark.clone()));
+        }
+        for error in &found.unreadable {
+            self.complain(&format!(
+                "{error}; its trials are not sealed now, recording begins all the same: copy the file away, `tautrail \
+                 recover` tries it again"
+            ));
         }
         if let Some(resumed) = &found.resumed {
             self.say_resumed(resumed, now_ns);

@@ -52,8 +52,6 @@ pub enum Settle {
 pub struct SealCommand {
     pub program: PathBuf,
     pub archive_dir: PathBuf,
-    /// Keep the journal of every trial, not only where the outcome asks for it.
-    pub keep_journal: bool,
     /// What failed is tried again after this long, then after ever twice as long.
     pub retry_first: Duration,
 }
@@ -63,7 +61,7 @@ const RETRY_LAST: Duration = Duration::from_secs(600);
 
 impl SealCommand {
     pub fn new(program: PathBuf, archive_dir: PathBuf) -> Self {
-        Self { program, archive_dir, keep_journal: false, retry_first: RETRY_FIRST }
+        Self { program, archive_dir, retry_first: RETRY_FIRST }
     }
 }
 
@@ -173,7 +171,6 @@ fn start(command: &SealCommand, task: &Unsealed) -> io::Result<Child> {
     let arg = |path: &Path| path.as_os_str().to_owned();
     Command::new(&command.program)
         .arg("seal-child")
-        .args(command.keep_journal.then_some("--keep-journal"))
         .args(["--from-seq", &task.first_seq.to_string()])
         .args([arg(&command.archive_dir), task.journal_id.clone().into(), task.trial_id.clone().into()])
         .process_group(0)

@@ -56,6 +56,9 @@ pub struct SegmentOpen {
     pub open_trial: Option<String>,
     /// Why the segment before was given up, when it was; its unsynced records are repeated here.
     pub previous_given_up: Option<String>,
+    /// What trials need of this segment stays until a person lets it go, however they end.
+    #[serde(default)]
+    pub keep: bool,
 }
 
 #[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]

@@ -26,8 +26,20 @@ pub enum ReadError {
     Io { path: PathBuf, source: io::Error },
     #[error("{path} is of journal format {found}, this program reads up to {FORMAT_VERSION}; use a later program")]
     LaterFormat { path: PathBuf, found: u32 },
-    #[error("journal {journal_id} has no readable segment in {dir}")]
-    NoSegment { journal_id: String, dir: PathBuf },
+    #[error("journal {journal_id} was never begun: its files in {dir} are empty")]
+    NeverBegun { journal_id: String, dir: PathBuf },
+    #[error("journal {journal_id} has no segment that opens, first among them {path}: {reason}")]
+    NothingSound { journal_id: String, path: PathBuf, reason: String },
+}
+
+impl ReadError {
+    /// The file or directory that it is about.
+    pub fn path(&self) -> &Path {
+        match self {
+            Self::Io { path, .. } | Self::LaterFormat { path, .. } | Self::NothingSound { path, .. } => path,
+            Self::NeverBegun { dir, .. } => dir,
+        }
+    }
 }
 
 /// One segment file that opens soundly.
@@ -120,7 +132,8 @@ impl JournalReader {
     /// Opens the journal's segments, reading the first record of each.
     ///
     /// # Errors
-    /// The disk's; a format from a later program; [`ReadError::NoSegment`] when not one segment opens.
+    /// The disk's; a format from a later program; [`ReadError::NeverBegun`] or
+    /// [`ReadError::NothingSound`] when not one segment opens.
     pub fn open(disk: Arc<dyn Disk>, journal_dir: &Path, journal_id: &str) -> Result<Self, ReadError> {
         let at = |path: &Path| {
             let path = path.to_owned();
@@ -144,13 +157,19 @@ impl JournalReader {
                     segments.push(SegmentInfo { number, path, bytes, held_bytes, opened_host_ns: host_ns, open });
                 }
                 Ok(Opened { open, .. }) => return Err(ReadError::LaterFormat { path, found: open.format_version }),
-                Err(reason) => unopenable.push(Damage::Unopenable { path, reason }),
+                Err(reason) => unopenable.push((path, reason)),
             }
         }
         if segments.is_empty() {
-            return Err(ReadError::NoSegment { journal_id: journal_id.to_owned(), dir: journal_dir.to_owned() });
+            let journal_id = journal_id.to_owned();
+            return Err(match unopenable.into_iter().next() {
+                Some((path, reason)) => ReadError::NothingSound { journal_id, path, reason },
+                None => ReadError::NeverBegun { journal_id, dir: journal_dir.to_owned() },
+            });
         }
         segments.sort_by_key(|segment| segment.number);
+        let damage = |(path, reason)| Damage::Unopenable { path, reason };
+        let unopenable = unopenable.into_iter().map(damage).collect();
         Ok(Self { disk, journal_id: journal_id.to_owned(), segments, unopenable, highest_number })
     }
 

@@ -24,7 +24,7 @@ use super::job::{Job, Outcome, Reserved, make};
 use super::reader::{SegmentInfo, segment_name};
 use super::retention::Retention;
 
-/// Sizes and times of a journal.
+/// Sizes and times of a journal, and whether it is to be kept.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct Settings {
     /// A segment is rolled when it holds this much, or
@@ -39,6 +39,8 @@ pub struct Settings {
     pub tail_bytes_max: usize,
     /// All segments together; beyond it the oldest that no trial needs is removed.
     pub budget_bytes: u64,
+    /// The journal of every trial stays until a person lets it go: written into each segment, for whoever seals.
+    pub keep: bool,
 }
 
 impl Default for Settings {
@@ -50,6 +52,7 @@ impl Default for Settings {
             sync_every_ns: 50_000_000,
             tail_bytes_max: 16 << 20,
             budget_bytes: 1 << 30,
+            keep: false,
         }
     }
 }

@@ -7,6 +7,8 @@ mod cable;
 mod crash;
 #[path = "../support/daemon_process.rs"]
 mod daemon_process;
+#[path = "../support/nobody.rs"]
+mod nobody;
 mod refusals;
 mod small_disk;
 mod stage;

@@ -1,9 +1,8 @@
 //! How the daemon says no: one clear sentence and exit code 2.
 
-use std::os::unix::fs::PermissionsExt;
-use std::os::unix::process::CommandExt;
 use std::process::Command;
 
+use crate::nobody::{as_nobody, set_mode};
 use crate::stage::Stage;
 
 #[track_caller]
@@ -37,21 +36,9 @@ fn a_directory_without_write_permission_is_named() {
     let stage = Stage::new();
     let archive = stage.path("trials");
     std::fs::create_dir(&archive).unwrap();
-    let mode = |path: &std::path::Path, mode| {
-        std::fs::set_permissions(path, std::fs::Permissions::from_mode(mode)).unwrap();
-    };
-    mode(stage.dir.path(), 0o755);
-    mode(&archive, 0o555);
-    let mut command = stage.daemon_command();
-    // SAFETY: takes no arguments and only reads the process's own identity.
-    if unsafe { libc::geteuid() } == 0 {
-        // Permissions do not bind root: run as nobody, from a copy of the program that nobody may run.
-        let program = stage.path("tautrail");
-        std::fs::copy(env!("CARGO_BIN_EXE_tautrail"), &program).unwrap();
-        let arguments: Vec<_> = command.get_args().map(ToOwned::to_owned).collect();
-        command = Command::new(program);
-        command.args(arguments).uid(65_534).gid(65_534);
-    }
+    set_mode(stage.dir.path(), 0o755);
+    set_mode(&archive, 0o555);
+    let mut command = as_nobody(stage.daemon_command(), stage.dir.path());
     refused(&mut command, &["cannot write in", "trials", "this user may write"]);
 }
 

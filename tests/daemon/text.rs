@@ -34,6 +34,10 @@ fn check_shows_health(stage: &Stage) {
         command.arg("--json").arg("check").arg(stage.path("rig.toml")).arg("--dir").arg(archive).output().unwrap();
     let told: serde_json::Value = serde_json::from_slice(&output.stdout).unwrap();
     assert!(told["machine_ports"].is_array());
+    let journal = &told["journal"];
+    let synced_s = journal["sync_interval_s"].as_f64().unwrap();
+    assert!(synced_s > 0.0 && synced_s < 60.0, "what was achieved, not what is wanted: {journal}");
+    assert!(journal["bytes"].as_u64().unwrap() > 0 && journal["free_bytes"].as_u64().unwrap() > 0, "{journal}");
     let links = told["links"].as_array().unwrap();
     assert_eq!(links.len(), INSTRUMENTS.len(), "{told}");
     for (link, device) in links.iter().zip(INSTRUMENTS) {

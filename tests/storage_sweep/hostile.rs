@@ -5,14 +5,18 @@ use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
 use tautrail::archive::{Fate, journal_dir, recover};
-use tautrail::journal::{Disk, Item, JournalReader, MAX_PAYLOAD_BYTES, RealDisk, Record, StagedDisk, segment_name};
+use tautrail::journal::{
+    Body, Disk, Item, JournalReader, MAX_PAYLOAD_BYTES, RealDisk, Record, StagedDisk, segment_name,
+};
+use tautrail::link::DeviceIdx;
 
 use crate::draws;
-use crate::journal_file::{JOURNAL_ID, nominal, opened};
+use crate::journal_file::{JOURNAL_ID, nominal, opened, opening};
 
 const PACE: f64 = 0.02;
-/// Cut at every byte up to here behind the first record, further on at every 997th.
-const EVERY_BYTE: usize = 3000;
+/// Of the journal, cut at every byte.
+const EVERY_BYTE: usize = 40_000;
+/// Further on, in steps.
 const STRIDE: usize = 997;
 const FAR: usize = 300_000;
 
@@ -63,17 +67,26 @@ fn a_real_journal_cut_at_any_byte_gives_every_whole_record_before_the_cut() {
     journal.truncate(FAR);
     let ends = ends(&journal);
     let (records, _) = read(&journal).unwrap();
-    let near = ends[0] + EVERY_BYTE;
-    // The first record is one checksum over some kilobytes: its inside is cut in steps.
-    let cuts = (1..ends[0] - 40).step_by(41).chain(ends[0] - 40..near).chain((near..journal.len()).step_by(STRIDE));
-    for n in cuts {
+    (1..ends[0]).for_each(|n| assert!(read(&journal[..n]).is_none(), "cut at {n}, in the opening"));
+    for n in (ends[0]..journal.len()).step_by(STRIDE) {
         let n_whole = ends.iter().filter(|&&end| end <= n).count();
-        let Some((found, n_damages)) = read(&journal[..n]) else {
-            assert_eq!(n_whole, 0, "cut at {n}");
-            continue;
-        };
+        let (found, n_damages) = read(&journal[..n]).unwrap();
         assert_eq!(found, records[..n_whole - 1], "cut at {n}");
         assert_eq!(n_damages, usize::from(!ends.contains(&n)), "cut at {n}");
+    }
+    // Every byte: each record behind a short opening and the record before it, so that this takes seconds.
+    let mut lead = Vec::new();
+    let body = Body::SegmentOpen(Box::new(opening("short")));
+    Record { seq: 1, host_ns: 0, device: DeviceIdx(0), body }.encode(&mut lead);
+    let n_every = ends.iter().filter(|&&end| end < ends[0] + EVERY_BYTE).count();
+    assert!(n_every > 60, "{n_every} records");
+    for i in 1..n_every - 1 {
+        let (before, at) = (&journal[ends[i - 1]..ends[i]], &journal[ends[i]..ends[i + 1]]);
+        for n in 0..at.len() {
+            let (found, n_damages) = read(&[&lead, before, &at[..n]].concat()).unwrap();
+            assert_eq!(found, records[i - 1..i], "record {i} cut at its byte {n}");
+            assert_eq!(n_damages, usize::from(n > 0), "record {i} cut at its byte {n}");
+        }
     }
 }
 
@@ -112,7 +125,7 @@ fn recovery_never_writes_to_a_journal_however_damaged() {
         std::fs::set_permissions(path(dir.path()), std::fs::Permissions::from_mode(0o444)).unwrap();
         let about = std::fs::metadata(path(dir.path())).unwrap();
         let disk: Arc<dyn Disk> = Arc::new(RealDisk);
-        let recovered = recover(dir.path(), &disk, &mut |_| {}).unwrap();
+        let recovered = recover(dir.path(), &disk, &mut |_| {}).unwrap().trials;
         let opened_before = round == 0 || !recovered.is_empty();
         assert!(recovered.iter().all(|one| matches!(one.fate, Fate::Sealed(_))), "round {round}: {recovered:?}");
         if opened_before {

@@ -5,7 +5,7 @@ use std::collections::BTreeMap;
 use tautrail::journal::{Operation, StagedDisk};
 
 use crate::recording::{FAULTS, applies};
-use crate::run::{Run, Virtual, go_on, journal_files, read, record, stage, start_again};
+use crate::run::{Run, TRIAL, Virtual, go_on, journal_files, read, record, stage, start_again};
 use crate::{draws, table_head, table_row};
 
 /// Killed in the middle of the trial.
@@ -87,6 +87,11 @@ fn start_under_fault(disk: &StagedDisk, clock: &Virtual, before: &Run, what: &st
         let mut expected = before.given.clone();
         expected.extend(&run.given);
         assert_eq!(read(&disk.after_kill(), what).numbers(), expected, "{what}: old and new");
+        // A journal that this start could not read was set aside: its trial is found by the one after it.
+        let (later, _) = start_again(&disk.after_kill(), clock).expect("a sound disk");
+        let open = later.resumed.iter().filter_map(|resumed| resumed.open_trial.as_ref()).map(|trial| &trial.trial_id);
+        let found = later.unsealed.iter().map(|unsealed| &unsealed.trial_id).chain(open).any(|id| id == TRIAL);
+        assert!(found, "{what}: the trial is forgotten: {later:?}");
     }
     untouched(&old_files, &journal_files(&disk.after_kill()), what);
     went_on

@@ -51,7 +51,7 @@ pub struct Run {
 /// What a reader finds.
 #[derive(Debug, Default)]
 pub struct Seen {
-    /// Number of the read, by sequence.
+    /// Number of the read, by sequence; those of a second journal behind those of the first.
     pub reads: BTreeMap<u64, u64>,
     pub notices: Vec<String>,
     pub trials: Vec<TrialRange>,
@@ -170,19 +170,20 @@ fn order(i: u64, host_ns: i64) -> Option<Order> {
     }
 }
 
-/// Reads the newest journal; panics where it finds what was never written.
+/// Reads every journal; panics where it finds what was never written.
 #[track_caller]
 pub fn read(disk: &StagedDisk, what: &str) -> Seen {
     let mut seen = Seen::default();
-    for id in journals(disk, Path::new(DIR)).expect("the staged disk lists") {
-        let Ok(reader) = JournalReader::open(Arc::new(disk.clone()), Path::new(DIR), &id) else { continue };
+    let ids = journals(disk, Path::new(DIR)).expect("the staged disk lists");
+    let readers = ids.iter().filter_map(|id| JournalReader::open(Arc::new(disk.clone()), Path::new(DIR), id).ok());
+    for (place, reader) in (0_u64..).zip(readers) {
         for item in reader.records() {
             let Item::Record(record) = item.expect("the staged disk reads") else { continue };
             match record.body {
                 Body::Link(LinkWhat::Bytes(bytes)) => {
                     let i = u64::from_le_bytes(bytes[..8].try_into().expect("eight bytes"));
                     assert_eq!(bytes, i.to_le_bytes().repeat(READ_REPEATS), "{what}: record {}", record.seq);
-                    seen.reads.insert(record.seq, i);
+                    seen.reads.insert((place << 40) + record.seq, i);
                 }
                 Body::Event(event) => seen.notices.push(event.text),
                 Body::Lost(lost) => seen.n_told_lost += lost.n_events,

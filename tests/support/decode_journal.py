@@ -1,7 +1,7 @@
 """Decodes a trial's range of a journal by its documented format (journal FORMAT.md, protocol SPEC) and compares every
 count, block and clock-free number with the sealed trial file. Written without the Rust; h5py and numpy only.
 
-usage: decode_journal.py JOURNAL_SEGMENT TRIAL.h5
+usage: decode_journal.py JOURNAL_SEGMENT... TRIAL.h5
 """
 import json, struct, sys
 import h5py, numpy as np
@@ -51,10 +51,18 @@ def unpack(samples, kinds):
     return out
 
 
-journal = list(records(open(sys.argv[1], "rb").read()))
-trial = h5py.File(sys.argv[2])
+# The page's "Reading": segments in order of their number, each begins with its opening (kind 1, no number of its own); a
+# number not above the last one taken is a repetition.
+journal, openings = [], []
+for path in sorted(sys.argv[1:-1]):
+    for record in records(open(path, "rb").read()):
+        if record[3] == 1:
+            openings.append(json.loads(record[4]))
+        elif not journal or record[0] > journal[-1][0]:
+            journal.append(record)
+trial = h5py.File(sys.argv[-1])
 first, last = trial.attrs["first_seq"], trial.attrs["last_seq"]
-names = [d["name"] for d in json.loads(journal[0][4])["devices"]]
+names = [d["name"] for d in openings[0]["devices"]]
 n_compared = 0
 for index, name in enumerate(names):
     group = trial["raw"][name]

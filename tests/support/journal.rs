@@ -37,6 +37,7 @@ pub fn opening(rig_text: &str) -> SegmentOpen {
         devices: DEVICES.iter().map(|spec| device(spec.name)).collect(),
         open_trial: None,
         previous_given_up: None,
+        keep: false,
     }
 }
 

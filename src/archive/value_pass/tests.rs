@@ -36,6 +36,7 @@ fn opening() -> SegmentOpen {
         devices: vec![device("winch-node")],
         open_trial: None,
         previous_given_up: None,
+        keep: false,
     }
 }
 

@@ -142,3 +142,21 @@ fn a_journal_is_read_from_the_segment_that_is_not_done_with() {
     let resumed = found_knowing(&disk, HERE, false, from(700)).resumed.unwrap();
     assert_eq!((resumed.start.seq, resumed.open_trial.is_some()), (4, true));
 }
+
+#[test]
+fn a_journal_that_cannot_be_read_keeps_nobody_from_recording() {
+    for operation in [crate::journal::Operation::Open, crate::journal::Operation::List] {
+        let disk = left_open();
+        open_trial(&mut journal(&disk, "000008-abc123"));
+        let disk = disk.after_kill();
+        // Open: of the older journal's only segment. List: the archive, the journals, then the older journal's segments.
+        let nth = if operation == crate::journal::Operation::Open { 1 } else { 3 };
+        disk.fail(operation, nth, crate::journal::Fault::Error(5));
+        let found = found(&disk, HERE, false);
+        assert!(disk.n_faults_hit() == 1 && found.unreadable.len() == 1, "{operation:?}: {found:?}");
+        assert!(found.unreadable[0].path().starts_with(JOURNALS), "{operation:?}: {found:?}");
+        assert_eq!(found.resumed.as_ref().unwrap().journal_id, "000008-abc123", "the sound one goes on");
+        assert_eq!((found.unsealed.len(), found.next_journal_number), (0, 9));
+        assert!(!found.segments.iter().any(|(segment, _)| segment.open.journal_id == "000007-abc123"), "left alone");
+    }
+}

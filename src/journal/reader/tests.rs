@@ -21,6 +21,7 @@ fn opening(segment: u32, first_seq: u64) -> Record {
         devices: vec![DeviceAtOpen { name: "winch-node".into(), port: "p".into(), describe_hex: "00".into() }],
         open_trial: None,
         previous_given_up: None,
+        keep: false,
     };
     Record { seq: first_seq, host_ns: 0, device: DeviceIdx(0), body: Body::SegmentOpen(Box::new(open)) }
 }

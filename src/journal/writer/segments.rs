@@ -76,6 +76,7 @@ impl Journal {
             devices,
             open_trial: self.open_trial.clone(),
             previous_given_up: self.given_up.clone(),
+            keep: self.settings.keep,
         }
     }
 
