@@ -24,17 +24,24 @@ fn a_full_disk_ends_the_trial_under_way_cleanly_and_room_lets_it_go_on() {
     let ended = daemon.wait_for("trial", "closes: the disk takes no more");
     assert!(ended.text.contains("treat them as loaded"), "{}", ended.text);
     std::fs::write(stage.path("room"), "").unwrap();
-    daemon.wait_for("trial", "opens, goes on under the tension of");
+    let again = daemon.wait_for("trial", "opens, goes on under the tension of");
+    daemon.wait_for("trial", "closes: launched and at rest");
     daemon.wait_for("seal", "is sealed");
-    assert_eq!(daemon.stop(), Some(0));
+    assert_eq!(daemon.stop(), Some(0)); // waits for sealing
     let truth = stage.truth(rig, ".");
     let trials = stage.trials();
-    assert!(!trials.is_empty(), "the trial that met the full disk is sealed");
+    let [first, second] = &trials[..] else { panic!("one that met the full disk, one that goes on: {trials:?}") };
+    let events = second.events().unwrap();
+    let goes_on = format!("it goes on under the tension of trial {}", first.header().trial_id);
+    assert!(events.iter().any(|event| event.text.contains(&goes_on)), "{events:?}");
+    assert_eq!(second.outcome(), "launched", "without a restart");
     for trial in &trials {
         for device in DEVICES {
             let blocks = trial.blocks(device).unwrap();
             truth.holes(device, &blocks); // no block that was not sent
             assert!(!blocks.is_empty(), "{device}");
+            let reaches_back = blocks[0].host_ns < again.host_ns;
+            assert!(reaches_back || trial.header().trial_id == first.header().trial_id, "{device}");
         }
     }
 }

@@ -31,6 +31,10 @@ fn sigterm_under_tension_loses_nothing_and_closes_nothing() {
     let mut daemon = stage.start_daemon();
     let opened = daemon.wait_for("trial", "opens");
     std::thread::sleep(std::time::Duration::from_millis(700));
+    let beside = stage.run(&["--json", "recover"]);
+    assert!(beside.status.success(), "{beside:?}");
+    let beside: serde_json::Value = serde_json::from_slice(&beside.stdout).unwrap();
+    assert_eq!((&beside["trials"][0]["fate"], beside["trials"].as_array().unwrap().len()), (&"live".into(), 1));
     let told_ns = crate::stage::monotonic_ns();
     assert_eq!(daemon.stop(), Some(0));
     daemon.wait_for("trial", "stays open");
