@@ -1,6 +1,9 @@
 //! `tautrail calibrate` as a person runs it: from a table, and guided beside a feed. Invented data.
 #![allow(clippy::expect_used, clippy::unwrap_used, reason = "a test fails by panicking")]
 
+#[path = "support/rehearsal_rig.rs"]
+mod rehearsal_rig;
+
 use std::fs;
 use std::io::Write;
 use std::path::Path;
@@ -88,6 +91,33 @@ fn a_table_becomes_a_record_that_a_rig_file_uses_and_a_page() {
 }
 
 #[test]
+fn the_rehearsals_records_are_what_calibrate_makes_of_their_bench_sheets() {
+    let rehearsal = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal");
+    let dir = tempfile::tempdir().unwrap();
+    let mut names: Vec<String> = fs::read_dir(rehearsal.join("records"))
+        .unwrap()
+        .map(|entry| entry.unwrap().path().file_stem().unwrap().to_string_lossy().into_owned())
+        .collect();
+    names.sort();
+    assert_eq!(names.len(), 8, "four of the boards, four of the text instruments: {names:?}");
+    for name in names {
+        let kind = match name.split('-').next() {
+            Some("line" | "anchor") => "cell",
+            Some("encoder") => "encoder",
+            _ => "accelerometer",
+        };
+        let (sheet, readings) = (format!("bench/{name}-sheet.toml"), format!("bench/{name}.csv"));
+        let made = dir.path().join(&name);
+        let arguments = ["calibrate", kind, &sheet, "--readings", &readings, "--record", made.to_str().unwrap()];
+        let done = tautrail(&arguments, "", &rehearsal);
+        assert!(done.status.success(), "{name}: {}{}", text(&done.stdout), text(&done.stderr));
+        let kept = fs::read_to_string(rehearsal.join("records").join(format!("{name}.toml"))).unwrap();
+        assert!(fs::read_to_string(&made).unwrap() == kept, "{name} is not what its sheet gives");
+        assert!(CalibrationRecord::read(&name, &kept).0.unwrap().invented);
+    }
+}
+
+#[test]
 fn a_flagged_reading_and_a_shunt_that_moved_fail_the_check() {
     let dir = tempfile::tempdir().unwrap();
     fs::write(dir.path().join("sheet.toml"), format!("shunt_counts = 812000\n{SHEET}")).unwrap();
@@ -112,7 +142,7 @@ fn guided_readings_come_from_the_feed_once_they_settle() {
     fs::write(dir.path().join("sheet.toml"), SHEET).unwrap();
     let plan = csv(|_| 0.0).lines().map(|line| line.rsplit_once(',').unwrap().0.to_owned() + "\n").collect::<String>();
     fs::write(dir.path().join("plan.csv"), plan).unwrap();
-    let rig = rig::parse(include_str!("../tools/rehearsal/every-key.toml")).unwrap();
+    let rig = rig::parse(&rehearsal_rig::rig_text("every-key.toml")).unwrap();
     let (server, requests) = FeedServer::start(&dir.path().join("feed.sock"), Hello::of(&rig)).unwrap();
     let taken = dir.path().join("taken.csv");
     let playing = std::thread::spawn(move || play_cell(&server, &requests, &taken));

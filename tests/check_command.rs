@@ -5,7 +5,10 @@
 use std::path::Path;
 use std::process::{Command, Output};
 
-const NORTH_PIER: &str = include_str!("../tools/rehearsal/north-pier.toml");
+#[path = "support/rehearsal_rig.rs"]
+mod rehearsal_rig;
+
+use rehearsal_rig::rig_text;
 
 fn check(folder: &Path, args: &[&str]) -> Output {
     let mut command = Command::new(env!("CARGO_BIN_EXE_tautrail"));
@@ -123,7 +126,7 @@ Tautrail is no safety device: it advises and records. Interlocks, exclusion zone
 
 #[test]
 fn a_port_that_is_not_there_is_a_failed_check_with_its_path() {
-    let folder = folder_with(NORTH_PIER);
+    let folder = folder_with(&rig_text("north-pier.toml"));
     let output = check(folder.path(), &["rig.toml"]);
     assert_eq!(output.status.code(), Some(1));
     let sentence =
@@ -133,7 +136,8 @@ fn a_port_that_is_not_there_is_a_failed_check_with_its_path() {
 
 #[test]
 fn a_file_is_no_port_and_a_terminal_is() {
-    let ports = NORTH_PIER.replace("ports/winch-node", "rig.toml").replace("ports/shuttle-node", "/dev/ptmx");
+    let ports =
+        rig_text("north-pier.toml").replace("ports/winch-node", "rig.toml").replace("ports/shuttle-node", "/dev/ptmx");
     let folder = folder_with(&ports);
     let text = said(&check(folder.path(), &["rig.toml"]));
     assert!(text.contains("port wrong: rig.toml of winch-node is no serial port"), "{text}");
@@ -142,7 +146,7 @@ fn a_file_is_no_port_and_a_terminal_is() {
 
 #[test]
 fn at_the_desk_a_good_file_passes_and_limits_come_with_the_caution() {
-    let folder = folder_with(NORTH_PIER);
+    let folder = folder_with(&rig_text("north-pier.toml"));
     let output = check(folder.path(), &["--no-ports", "rig.toml"]);
     assert_eq!(output.status.code(), Some(0));
     let text = said(&output);
@@ -162,7 +166,7 @@ fn a_file_that_cannot_be_read_ends_with_2_and_a_sentence() {
 
 #[test]
 fn programs_get_the_same_findings_as_json() {
-    let folder = folder_with(&NORTH_PIER.replacen("incline = ", "inclin = ", 1));
+    let folder = folder_with(&rig_text("north-pier.toml").replacen("incline = ", "inclin = ", 1));
     let output = check(folder.path(), &["--json", "rig.toml"]);
     assert_eq!(output.status.code(), Some(1));
     let value: serde_json::Value = serde_json::from_str(&said(&output)).expect("it is JSON");

@@ -8,9 +8,13 @@ use std::process::{Command, Output};
 
 use serde_json::Value;
 
+#[path = "support/rehearsal_rig.rs"]
+mod rehearsal_rig;
 mod support;
 #[path = "support/virtual_lot.rs"]
 mod virtual_lot;
+
+use rehearsal_rig::rig_text;
 
 use tautrail::calibration::cord::{characterise, held_part};
 use tautrail::estimation::Curve;
@@ -35,10 +39,10 @@ fn bench(seed: u64) -> tempfile::TempDir {
 
 /// The rehearsal's rig with its cords taken from a card, and what else is appended.
 fn rig_with_card(more: &str) -> String {
-    let rig = include_str!("../tools/rehearsal/north-pier.toml");
+    let rig = rig_text("north-pier.toml");
     let (before, after) = rig.split_once("[cords]").unwrap();
     let (_, losses) = after.split_once("[losses]").unwrap();
-    format!("{before}[cords]\ncount = 6\ntravel_ratio = 1.0\ncard = \"card.toml\"\n\n[losses]{losses}\n{more}")
+    format!("{before}[cords]\ncount = 6\ntravel_ratio = 1.0\ncard = \"card.toml\"\n\n{more}\n[losses]{losses}")
 }
 
 #[test]
@@ -103,7 +107,7 @@ fn forty_six_kilograms_on_a_pair_of_wings_stand_for_ten_g() {
                  own_weight = \"not counted\"\naccelerated_mass = \"4.6 kg\"\ndirection = \"aft\"\nmargin = 1.25\n\
                  date = \"2031-04-02\"\ninspector = \"an inspector\"\n";
     let folder = bench(3);
-    let rig = format!("{}\n{proof}", include_str!("../tools/rehearsal/north-pier.toml"));
+    let rig = rig_text("north-pier.toml").replacen("[losses]", &format!("{proof}\n[losses]"), 1);
     fs::write(folder.path().join("rig.toml"), rig).unwrap();
     let checked = text(&tautrail(folder.path(), &["check", "--no-ports", "rig.toml"]));
     for part in

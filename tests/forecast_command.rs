@@ -2,6 +2,9 @@
 
 #![allow(clippy::unwrap_used, reason = "a test that cannot go on stops here")]
 
+#[path = "support/rehearsal_rig.rs"]
+mod rehearsal_rig;
+
 use std::process::{Command, Output};
 
 use serde_json::Value;
@@ -73,7 +76,7 @@ fn solve_answers_with_a_setting_or_with_the_reason() {
     assert_eq!(json(&found)["surely"], true);
     let folder = tempfile::tempdir().unwrap();
     let slow = folder.path().join("slow.toml");
-    let rig = std::fs::read_to_string(format!("{}/{NORTH_PIER}", env!("CARGO_MANIFEST_DIR"))).unwrap();
+    let rig = rehearsal_rig::rig_text("north-pier.toml");
     let rig = rig.replace("\"15 m/s\"", "\"35 m/s\"").replace("\"18 m/s\"", "\"38 m/s\"");
     std::fs::write(&slow, rig).unwrap();
     let none = tautrail(&["forecast", "--solve", "draw", slow.to_str().unwrap()]);
@@ -130,7 +133,7 @@ fn the_build_up_goes_from_few_cords_and_a_dummy_mass_to_the_payload() {
 fn a_rig_without_stages_is_told_what_to_write() {
     let folder = tempfile::tempdir().unwrap();
     let path = folder.path().join("no-stages.toml");
-    let rig = std::fs::read_to_string(format!("{}/{NORTH_PIER}", env!("CARGO_MANIFEST_DIR"))).unwrap();
+    let rig = rehearsal_rig::rig_text("north-pier.toml");
     let (without, _) = rig.split_once("[[stage]]").unwrap();
     std::fs::write(&path, without).unwrap();
     let none = tautrail(&["stage", path.to_str().unwrap()]);

@@ -3,6 +3,9 @@
 
 #![allow(clippy::expect_used, clippy::unwrap_used, reason = "a test that cannot go on stops here")]
 
+#[path = "support/rehearsal_rig.rs"]
+mod rehearsal_rig;
+
 use std::collections::{BTreeMap, BTreeSet};
 use std::sync::OnceLock;
 
@@ -314,11 +317,10 @@ fn a_slipping_or_standing_encoder_costs_no_byte_and_is_kept_as_it_counted() {
 
 // Instruments that print text, over the same lines.
 
-const TEXT_RIG: &str = include_str!("../tools/rehearsal/north-pier-text.toml");
 const BOARD: usize = 2;
 
 fn text_trial(fault: &str) -> Trial {
-    let rig = tautrail::rig::parse(TEXT_RIG).unwrap();
+    let rig = tautrail::rig::parse(&rehearsal_rig::rig_text("north-pier-text.toml")).unwrap();
     trial_of(SensorSet::Text, fault, |idx| DeviceDecoder::of(&rig.devices[idx]))
 }
 

@@ -197,7 +197,7 @@ fn a_file_that_is_no_trial_is_named_and_stops_none_of_the_others() {
 #[test]
 fn a_trial_of_noise_alone_has_no_number_and_a_reason_for_each() {
     let dir = tempfile::tempdir().unwrap();
-    let mut journal = JournalFile::begin(dir.path(), RIG_TEXT);
+    let mut journal = JournalFile::begin(dir.path(), &RIG_TEXT);
     journal.clocks(1);
     let first = journal.bytes(2, 0, vec![0x55; 64]);
     journal.open_trial(3, first, 2);

@@ -80,7 +80,7 @@ fn a_played_launch_reads_as_one() {
     assert_eq!(trial.signal_names().unwrap(), ["accel", "anchor", "encoder", "line"]);
     assert!(results.entries.iter().any(|entry| entry.name == "launch_speed"), "{results:?}");
     assert_eq!(trial.derived_names().unwrap(), ["motion_acceleration", "motion_position", "motion_velocity"]);
-    assert_eq!(trial.texts().unwrap()[0].text, RIG_TEXT);
+    assert_eq!(trial.texts().unwrap()[0].text, *RIG_TEXT);
     assert!(trial.header().started.starts_with("2026-11-"), "{}", trial.header().started);
     assert_eq!(trial.header().started_quality, "set");
     let kinds: Vec<String> = trial.events().unwrap().into_iter().map(|event| event.kind).collect();
@@ -113,7 +113,7 @@ fn a_sealed_file_is_read_only_and_never_replaced() {
     let target = dir.path().join(format!("trial-{TRIAL_ID}.h5"));
     // Another trial's file under this name: same program, other journal.
     let strange = tempfile::tempdir().unwrap();
-    let mut journal = JournalFile::begin(strange.path(), RIG_TEXT);
+    let mut journal = JournalFile::begin(strange.path(), &RIG_TEXT);
     journal.clocks(1);
     journal.open_trial(2, 1, 1);
     journal.close_trial(3);
@@ -346,7 +346,7 @@ fn block_ns(k: u32) -> i64 {
 
 /// Blocks `0..100` of one device through `alter`; the trial begins at block 20.
 fn short_trial(dir: &Path, alter: impl Fn(u32, Vec<u8>) -> Vec<u8>) {
-    let mut journal = JournalFile::begin(dir, RIG_TEXT);
+    let mut journal = JournalFile::begin(dir, &RIG_TEXT);
     journal.bytes(900_000_000, 0, description(7));
     let mut first_seq = 0;
     for k in 0..100 {
@@ -383,7 +383,7 @@ fn the_preroll_is_in_and_what_came_before_is_not() {
 #[test]
 fn a_frame_cut_by_the_ranges_start_is_whole() {
     let dir = tempfile::tempdir().unwrap();
-    let mut journal = JournalFile::begin(dir.path(), RIG_TEXT);
+    let mut journal = JournalFile::begin(dir.path(), &RIG_TEXT);
     journal.bytes(900_000_000, 0, description(7));
     let stream: Vec<u8> = (0..100).flat_map(|k| block(7, k)).collect();
     let mut first_seq = 0;
@@ -438,7 +438,7 @@ fn a_lost_block_is_a_gap_and_damaged_bytes_are_kept() {
 #[test]
 fn a_reset_device_starts_a_new_clock_and_the_trial_goes_on() {
     let dir = tempfile::tempdir().unwrap();
-    let mut journal = JournalFile::begin(dir.path(), RIG_TEXT);
+    let mut journal = JournalFile::begin(dir.path(), &RIG_TEXT);
     let first_seq = journal.bytes(900_000_000, 0, description(7));
     journal.open_trial(900_000_000, first_seq, 900_000_000);
     (0..50).for_each(|k| {
@@ -479,7 +479,7 @@ fn a_rig_text_this_program_refuses_still_leaves_every_count() {
 #[test]
 fn records_of_unknown_devices_and_torn_tails_do_not_stop_sealing() {
     let dir = tempfile::tempdir().unwrap();
-    let mut journal = JournalFile::begin(dir.path(), RIG_TEXT);
+    let mut journal = JournalFile::begin(dir.path(), &RIG_TEXT);
     let first_seq = journal.bytes(900_000_000, 0, description(7));
     journal.open_trial(900_000_000, first_seq, 900_000_000);
     journal.bytes(900_000_001, 77, vec![1, 2, 3]);

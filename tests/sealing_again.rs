@@ -20,7 +20,7 @@ const PACE: f64 = 0.1;
 fn rewrite(from: &Path, to: &Path, settings: Settings) -> Vec<PathBuf> {
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
     let (reader, _) = opened(from);
-    let open = opening(journal_file::RIG_TEXT);
+    let open = opening(&journal_file::RIG_TEXT);
     let origin = Origin {
         journal_id: JOURNAL_ID.into(),
         program_version: open.program_version,

@@ -3,6 +3,9 @@
 
 #![allow(clippy::unwrap_used, reason = "a test that cannot go on stops here")]
 
+#[path = "support/rehearsal_rig.rs"]
+mod rehearsal_rig;
+
 use std::fs::File;
 use std::io::Read;
 use std::os::fd::OwnedFd;
@@ -23,7 +26,7 @@ const PATIENCE: Duration = Duration::from_secs(20);
 const LEFT_CLEAN: [&str; 2] = ["\x1b[?25h", "\x1b[?1049l"];
 
 fn hello() -> Hello {
-    Hello::of(&rig::parse(include_str!("../tools/rehearsal/north-pier.toml")).unwrap())
+    Hello::of(&rig::parse(&rehearsal_rig::rig_text("north-pier.toml")).unwrap())
 }
 
 fn program(args: &[&str], socket: &Path) -> Command {

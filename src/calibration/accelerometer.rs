@@ -74,7 +74,7 @@ pub fn calibrate(sheet: &Sheet) -> Result<AccelerometerCalibration, Acceleromete
     let cosine = 0.5 * axis_uncertainty_rad * axis_uncertainty_rad;
     let zero = combined(&[
         Component::certain(u_counts * scale.abs()),
-        Component::certain(scale.abs() / 12f64.sqrt()),
+        Component::certain(sheet.step_counts * scale.abs() / 12f64.sqrt()),
         // Readings across differ from the zero by the tilt and the crosstalk; their mean tells of the zero alone.
         Component::certain(across.map_or(0.0, |(counts, _)| (counts - zero_counts).abs() * scale.abs() / 3f64.sqrt())),
     ]);

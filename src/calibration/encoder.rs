@@ -93,7 +93,7 @@ pub fn calibrate(sheet: &Sheet) -> Result<EncoderCalibration, EncoderError> {
         random(fit.residual_sd),
         Component::certain(uncertainty_m),
         Component::certain(backlash_m.map_or(0.0, |(backlash_m, _)| backlash_m / 12f64.sqrt())),
-        Component::certain(scale.abs() / 12f64.sqrt()),
+        Component::certain(sheet.step_counts * scale.abs() / 12f64.sqrt()),
     ]);
     // Marks displaced by their own uncertainty tilt the line as scatter of that size would.
     let tilt = uncertainty_m * spread_factor(&marks);

@@ -20,6 +20,15 @@ pub fn doubts(rig: &Rig, day: Option<Date>) -> Vec<String> {
         None => doubts.push((what, vec![channel])),
     };
     for channel in &rig.channels {
+        if let Some(excitation_v) = channel.record.as_ref().and_then(|record| record.excitation_v) {
+            doubt(
+                format!(
+                    "calibrated as a share of its excitation, {excitation_v} V then; in use counts are taken as they come, so \
+                     another excitation is another scale: keep it, and check it with the shunt"
+                ),
+                channel.name.as_str(),
+            );
+        }
         let state = RecordState::of(channel.record.as_ref(), day);
         if !state.is_valid() {
             doubt(state.to_string(), channel.name.as_str());
@@ -55,7 +64,7 @@ pub fn out_of_range(rig: &Rig, signal: &Signal) -> Option<String> {
     let margin = 0.01 * (high - low);
     let least = signal.value.iter().copied().fold(f64::INFINITY, f64::min);
     let most = signal.value.iter().copied().fold(f64::NEG_INFINITY, f64::max);
-    let unit = signal.role.unit();
+    let unit = record.kind.unit();
     let beyond = if most > high + margin { most } else { least };
     (most > high + margin || least < low - margin).then(|| {
         format!(
@@ -137,6 +146,13 @@ mod tests {
         assert_eq!(
             doubts(&rig, day("2032-05-14")),
             ["channel line: calibration line.toml expired on 2032-05-04, 10 days ago: calibrate again"]
+        );
+        let mut by_share = rig.clone();
+        by_share.channels[0].record.as_mut().unwrap().excitation_v = Some(5.0);
+        let said = doubts(&by_share, day("2031-06-01"));
+        assert!(
+            said.len() == 1 && said[0].contains("line: calibrated as a share of its excitation, 5 V then"),
+            "{said:?}"
         );
         assert!(on_day(rig.clone(), day("2032-05-04")).channels[0].calibration.scale_relative_uncertainty > 0.0014);
         let said = out_of_range(&rig, &signal(|_| 600.0)).unwrap();

@@ -45,7 +45,7 @@ mod tests {
 
     #[test]
     fn only_when_every_port_is_in_use_and_none_was_opened() {
-        let rig = crate::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap();
+        let rig = crate::rig::testing::north_pier();
         let (one, two) = (DeviceIdx(0), DeviceIdx(1));
         let mut openings = FirstOpenings::of(&rig);
         assert!(!openings.all_are_busy(one, &busy(&rig, 0)));

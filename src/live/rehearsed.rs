@@ -24,11 +24,7 @@ struct Rehearsed {
 }
 
 fn rehearse(scenario: &str, seed: u64) -> Rehearsed {
-    rehearse_on(&north_pier_file(), &Options { scenario: scenario.into(), seed, ..Options::default() })
-}
-
-fn north_pier_file() -> crate::rig::Rig {
-    crate::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap()
+    rehearse_on(&crate::rig::testing::north_pier(), &Options { scenario: scenario.into(), seed, ..Options::default() })
 }
 
 fn rehearse_on(rig: &crate::rig::Rig, options: &Options) -> Rehearsed {

@@ -101,12 +101,11 @@ pub fn unfitted(rig: &Rig) -> Vec<String> {
 #[cfg(test)]
 mod tests {
     use super::{BelongsTo, LossState, loss_terms, unfitted};
-    use crate::rig;
+    use crate::rig::{self, testing::NORTH_PIER};
 
     #[test]
     fn each_loss_is_off_given_or_to_be_fitted() {
-        let text = include_str!("../../tools/rehearsal/north-pier.toml");
-        let asked = text.replace("[losses]\n", "[losses]\nfit = [\"friction\", \"viscous\"]\n");
+        let asked = NORTH_PIER.replace("[losses]\n", "[losses]\nfit = [\"friction\", \"viscous\"]\n");
         let terms = loss_terms(&rig::parse(&asked).unwrap());
         let state = |name: &str| terms.iter().find(|term| term.name == name).unwrap().state;
         assert!(matches!(state("friction"), LossState::ToBeFitted(Some(given)) if given.value == 12.0));
@@ -121,8 +120,7 @@ mod tests {
 
     #[test]
     fn an_unknown_loss_to_fit_is_refused_with_those_there_are() {
-        let text = include_str!("../../tools/rehearsal/north-pier.toml");
-        let asked = text.replace("[losses]\n", "[losses]\nfit = [\"fricton\"]\n");
+        let asked = NORTH_PIER.replace("[losses]\n", "[losses]\nfit = [\"fricton\"]\n");
         let findings: Vec<String> = rig::check(&asked).findings.iter().map(ToString::to_string).collect();
         assert!(
             findings.iter().any(|finding| finding.contains("losses.fit") && finding.contains("friction")),

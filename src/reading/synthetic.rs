@@ -10,7 +10,7 @@ use crate::rig::{self, Given, Rig, Role};
 
 /// The rehearsal's rig without drag, so that the truth has a closed form.
 pub(crate) fn rig() -> Rig {
-    let mut rig = rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap();
+    let mut rig = rig::testing::north_pier();
     rig.payload.drag_area_m2 = Given::exactly(0.0);
     rig.losses.shuttle_drag_area_m2 = Given::exactly(0.0);
     rig

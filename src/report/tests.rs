@@ -336,7 +336,7 @@ fn reading() -> crate::reading::Reading {
 
 #[test]
 fn a_reading_and_its_rig_file_fill_the_page() {
-    let rig = crate::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap();
+    let rig = crate::rig::testing::north_pier();
     let header = crate::trial::Header {
         trial_id: "000001-7f3a9c".into(),
         journal_id: "000001-abc123".into(),

@@ -86,16 +86,19 @@ pub fn pointed_to(rig_text: &str) -> Vec<String> {
 pub fn read_joined(path: &Path) -> Result<String, RigError> {
     let shown = || path.display().to_string();
     let rig_text = std::fs::read_to_string(path).map_err(|source| RigError::Unreadable { path: shown(), source })?;
-    if take_apart(&rig_text).0.len() != rig_text.len() {
-        return Ok(rig_text); // joined already: taken from a trial
-    }
+    // Taken from a trial it is joined already: what it carries counts, and only what it lacks is looked for.
+    let (own, mut attached) = take_apart(&rig_text);
+    let n_carried = attached.len();
     let folder = path.parent().unwrap_or(Path::new(""));
-    let read = |name: String| {
-        let text = std::fs::read_to_string(folder.join(&name)).ok()?;
-        Some(Attached { name, text })
-    };
-    let attached: Vec<Attached> = pointed_to(&rig_text).into_iter().filter_map(read).collect();
-    Ok(join(&rig_text, &attached))
+    for name in pointed_to(own) {
+        if attached.iter().any(|carried| carried.name == name) {
+            continue;
+        }
+        if let Ok(text) = std::fs::read_to_string(folder.join(&name)) {
+            attached.push(Attached { name, text });
+        }
+    }
+    Ok(if attached.len() == n_carried { rig_text } else { join(own, &attached) })
 }
 
 #[cfg(test)]
@@ -117,6 +120,20 @@ mod tests {
         let joined = join("name = \"x\"\n", &[Attached { name: "a.toml".into(), text: "b = [1,\n 2]\n".into() }]);
         let table: toml::Table = joined.parse().unwrap();
         assert_eq!(table.len(), 1);
+    }
+
+    #[test]
+    fn a_rig_file_from_a_trial_keeps_its_records_and_finds_what_was_added_to_it() {
+        let dir = tempfile::tempdir().unwrap();
+        let text = |name: &str, text: &str| std::fs::write(dir.path().join(name), text).unwrap();
+        text("a.toml", "of the disk");
+        text("b.toml", "beside it");
+        let own = "x = 1\n[[channel]]\nrecord = \"a.toml\"\n[cords]\ncard = \"b.toml\"\n";
+        text("rig.toml", &join(own, &[Attached { name: "a.toml".into(), text: "of the trial".into() }]));
+        let joined = read_joined(&dir.path().join("rig.toml")).unwrap();
+        let (found, attached) = take_apart(&joined);
+        let texts: Vec<&str> = attached.iter().map(|one| one.text.as_str()).collect();
+        assert_eq!((found, texts), (own, vec!["of the trial", "beside it"]));
     }
 
     proptest! {

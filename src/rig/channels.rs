@@ -225,6 +225,11 @@ fn calibration_of(
         }
         None => (table.number(findings, "zero_counts", zeros), coefficients(&mut table, findings, unit)),
     };
+    if !table.optional_flag(findings, "without_record") {
+        let message = "coefficients stand without a calibration record: make one with `tautrail calibrate` and point to it with record; or \
+                       write without_record = true, and check, display and every result say that nobody dated these values";
+        findings.error(&table.key("without_record"), message);
+    }
     let calibration = Coefficients {
         zero_counts,
         coefficients,

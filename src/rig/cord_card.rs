@@ -4,11 +4,10 @@
 //! date, free length, tested elongation or uncertainty.
 
 use jiff::civil::Date;
-use toml::de::DeTable;
 
-use super::document::{Findings, Section, start_of};
-use super::finding::{Finding, Severity};
-use super::proof::date;
+use super::document::{Findings, Section};
+use super::finding::Finding;
+use super::text_read::read_text;
 use super::{CordDetails, CordPoint, Cords, RelaxationTerm, detail_sections, sections};
 
 /// A card, as far as it is used.
@@ -34,8 +33,12 @@ pub struct CordCard {
     pub gap_width: f64,
     pub relaxation: Vec<RelaxationTerm>,
     pub tension_per_kelvin: f64,
+    /// Standard uncertainty.
+    pub tension_per_kelvin_uncertainty: f64,
     pub temperature_c: Option<f64>,
     pub loss_per_tenfold_cycles: f64,
+    /// Standard uncertainty.
+    pub loss_per_tenfold_cycles_uncertainty: f64,
     /// Cycle number at which the curves were read.
     pub cycle: f64,
     /// Relative standard uncertainties: of the lot's mean, between its cords, of the turning-point rule.
@@ -47,18 +50,7 @@ pub struct CordCard {
 impl CordCard {
     /// A card's text with every finding. `name` is where it was found.
     pub fn read(name: &str, text: &str) -> (Option<Self>, Vec<Finding>) {
-        let mut findings = Findings::of(text);
-        let (document, syntax_errors) = DeTable::parse_recoverable(text);
-        for error in &syntax_errors {
-            findings.at(start_of(error.span()), Severity::Error, "", error.message().replace('\n', ", "));
-        }
-        if !syntax_errors.is_empty() {
-            return (None, findings.in_order());
-        }
-        let card = whole(name, Section::root(&document), &mut findings);
-        let findings = findings.in_order();
-        let usable = findings.iter().all(|finding| finding.severity != Severity::Error);
-        (card.filter(|_| usable), findings)
+        read_text(text, |root, findings| whole(name, root, findings))
     }
 
     /// Relative standard uncertainty of the pull of `count` cords of the lot.
@@ -94,7 +86,7 @@ fn whole(name: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
         findings.error("kind", format!("{kind:?} is no cord card"));
     }
     let [lot, person] = ["lot", "person"].map(|key| root.text(findings, key));
-    let date = date(&mut root, findings, "date");
+    let date = root.date(findings, "date");
     let mut part = |key| root.optional_quantity(findings, key, "%", 1.0..=100.0).unwrap_or(1.0);
     let relaxed_to = (part("curve_relaxed_to"), part("loading_curve_relaxed_to"));
     let mut card = CordCard {
@@ -113,9 +105,15 @@ fn whole(name: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
         gap_width: root.quantity(findings, "branch_gap_width", "%", 0.1..=100.0),
         relaxation: detail_sections::relaxation(&mut root, findings),
         tension_per_kelvin: root.optional_quantity(findings, "tension_per_kelvin", "%", -5.0..=5.0).unwrap_or(0.0),
+        tension_per_kelvin_uncertainty: root
+            .optional_quantity(findings, "tension_per_kelvin_uncertainty", "%", 0.0..=100.0)
+            .unwrap_or(0.0),
         temperature_c: root.optional_quantity(findings, "curve_temperature", "degC", -40.0..=80.0),
         loss_per_tenfold_cycles: root
             .optional_quantity(findings, "tension_loss_per_tenfold_cycles", "%", 0.0..=30.0)
+            .unwrap_or(0.0),
+        loss_per_tenfold_cycles_uncertainty: root
+            .optional_quantity(findings, "tension_loss_per_tenfold_cycles_uncertainty", "%", 0.0..=100.0)
             .unwrap_or(0.0),
         cycle: root.optional_number(findings, "curve_cycle", 1.0..=1e6).unwrap_or(1.0),
         mean_uncertainty: f64::NAN,
@@ -135,13 +133,4 @@ fn whole(name: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
     date.map(|_| card)
 }
 
-const FOR_PEOPLE: [&str; 8] = [
-    "evidence",
-    "marks",
-    "law",
-    "loading_law",
-    "turned_at",
-    "branch_gap_width_uncertainty",
-    "tension_loss_per_tenfold_cycles_uncertainty",
-    "tension_per_kelvin_uncertainty",
-];
+const FOR_PEOPLE: [&str; 6] = ["evidence", "marks", "law", "loading_law", "turned_at", "branch_gap_width_uncertainty"];

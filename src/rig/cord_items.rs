@@ -3,9 +3,9 @@
 //! What they do on this rig is not written here: it is counted from the archive's trials, each once.
 
 use jiff::civil::Date;
+use serde::{Deserialize, Serialize};
 
 use super::document::{Findings, Section};
-use super::proof::date;
 
 /// One cord.
 #[derive(Debug, Clone, PartialEq)]
@@ -25,7 +25,7 @@ pub struct CordItem {
 }
 
 /// What a cord has served, archive included.
-#[derive(Debug, Clone, Copy, PartialEq, Default)]
+#[derive(Debug, Clone, Copy, PartialEq, Default, Serialize, Deserialize)]
 pub struct Served {
     pub cycles: u32,
     pub hours: f64,
@@ -35,6 +35,13 @@ impl CordItem {
     /// What it had behind it, and what it did since.
     pub fn served(&self, since: Served) -> Served {
         Served { cycles: self.cycles_before + since.cycles, hours: self.hours_before + since.hours }
+    }
+
+    /// The reasons of [`Self::retired`] as one sentence with what to do; none while it may stay.
+    pub fn worn(&self, served: Served, today: Option<Date>) -> Option<String> {
+        let reasons = self.retired(served, today);
+        let Self { serial, place, .. } = self;
+        (!reasons.is_empty()).then(|| format!("cord {serial} ({place}) is to come off: {}", reasons.join("; ")))
     }
 
     /// Why the cord is to come off; empty while it may stay.
@@ -77,11 +84,11 @@ fn one(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> CordItem {
         serial: entry.text(findings, "serial"),
         lot: entry.text(findings, "lot"),
         place: entry.text(findings, "place"),
-        in_service_since: date(entry, findings, "in_service_since"),
+        in_service_since: entry.date(findings, "in_service_since"),
         cycles_before: entry.optional_number(findings, "cycles_before", 0.0..=1e6).map_or(0, |n| n as u32),
         hours_before: entry.optional_quantity(findings, "hours_before", "h", 0.0..=1e5).map_or(0.0, hours),
         retire_cycles: entry.optional_number(findings, "retire_cycles", 1.0..=1e6).map(|n| n as u32),
         retire_hours: entry.optional_quantity(findings, "retire_hours", "h", 0.01..=1e5).map(hours),
-        retire_on: retire_on.then(|| date(entry, findings, "retire_on")).flatten(),
+        retire_on: retire_on.then(|| entry.date(findings, "retire_on")).flatten(),
     }
 }

@@ -7,10 +7,10 @@ use jiff::civil::Date;
 use toml::de::DeTable;
 
 use super::cord_table;
-use super::document::{Findings, Section, start_of};
-use super::finding::{Finding, Severity};
-use super::proof::date;
+use super::document::{Findings, Section};
+use super::finding::Finding;
 use super::surroundings::local_gravity_mps2;
+use super::text_read::read_text;
 use super::{Given, RelaxationTerm};
 
 /// Usual densities where the sheet gives none, kg/m³: air at 20 °C, steel masses (conventional, OIML R 111-1:2004).
@@ -99,18 +99,7 @@ impl CordSheet {
 
     /// A sheet's text with every finding; `csv` is the text of the file it names.
     pub fn read(text: &str, csv: Option<&str>) -> (Option<Self>, Vec<Finding>) {
-        let mut findings = Findings::of(text);
-        let (document, syntax_errors) = DeTable::parse_recoverable(text);
-        for error in &syntax_errors {
-            findings.at(start_of(error.span()), Severity::Error, "", error.message().replace('\n', ", "));
-        }
-        if !syntax_errors.is_empty() {
-            return (None, findings.in_order());
-        }
-        let sheet = whole(Section::root(&document), csv, &mut findings);
-        let findings = findings.in_order();
-        let usable = findings.iter().all(|finding| finding.severity != Severity::Error);
-        (sheet.filter(|_| usable), findings)
+        read_text(text, |root, findings| whole(root, csv, findings))
     }
 }
 
@@ -127,7 +116,7 @@ fn whole(mut root: Section<'_, '_>, csv: Option<&str>, findings: &mut Findings<'
         findings.caution("conditioning_cycles", "is missing: every cycle is taken, a fresh cord's first ones too");
     }
     let [lot, person, marks] = ["lot", "person", "marks"].map(|key| root.text(findings, key));
-    let date = date(&mut root, findings, "date");
+    let date = root.date(findings, "date");
     let sheet = CordSheet {
         lot,
         person,

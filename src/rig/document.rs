@@ -7,6 +7,7 @@
 use std::collections::BTreeMap;
 use std::ops::{Range, RangeInclusive};
 
+use jiff::civil::Date;
 use toml::Spanned;
 use toml::de::{DeTable, DeValue};
 
@@ -198,6 +199,16 @@ impl<'d, 't> Section<'d, 't> {
             findings.error(&self.key(key), wrong_type("true or false", value.get_ref()));
             false
         })
+    }
+
+    /// A date, `None` with a finding where it is none.
+    pub(super) fn date(&mut self, findings: &mut Findings<'_>, key: &'static str) -> Option<Date> {
+        let text = self.text(findings, key);
+        let date = text.parse();
+        if date.is_err() && !text.is_empty() {
+            findings.error(&self.key(key), format!("{text:?} is no date, write it as \"2031-05-04\""));
+        }
+        date.ok()
     }
 
     /// A number without unit, within `allowed`; NaN if it could not be had.

@@ -28,6 +28,7 @@ mod surroundings;
 pub(crate) mod testing;
 #[cfg(test)]
 mod tests;
+mod text_read;
 mod text_section;
 mod types;
 

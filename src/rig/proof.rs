@@ -63,6 +63,16 @@ impl ProofLoad {
         self.proven_g() / self.margin
     }
 
+    /// What is to be said where a limit is above the proven one.
+    pub fn exceeded(&self, peak_g: f64) -> Option<String> {
+        let (limit_g, structure) = (self.limit_g(), &self.structure);
+        (peak_g > limit_g).then(|| {
+            format!(
+                "{peak_g:.2} g is above {limit_g:.2} g, what the proof load of {structure} allows with its margin; {PROOF_CAUTION}"
+            )
+        })
+    }
+
     /// The test as one sentence, with the caution.
     pub fn sentence(&self) -> String {
         let date = self.date.map_or_else(|| "undated".to_owned(), |date| date.to_string());
@@ -98,7 +108,7 @@ pub(super) fn proof_load(root: &mut Section<'_, '_>, findings: &mut Findings<'_>
         accelerated_mass_kg: table.quantity(findings, "accelerated_mass", "kg", 0.01..=500.0),
         direction: table.text(findings, "direction"),
         margin: table.number(findings, "margin", 1.0..=10.0),
-        date: date(&mut table, findings, "date"),
+        date: table.date(findings, "date"),
         inspector: table.text(findings, "inspector"),
     };
     table.finish(findings);
@@ -115,12 +125,7 @@ pub(super) fn proof_load(root: &mut Section<'_, '_>, findings: &mut Findings<'_>
 
 /// What the plan's limit says against the proven one.
 pub(super) fn against_limit(proof: &ProofLoad, peak_g: f64, findings: &mut Findings<'_>) {
-    if peak_g > proof.limit_g() {
-        let message = format!(
-            "{peak_g:.2} g is above {:.2} g, what the proof load of {} allows with its margin; {PROOF_CAUTION}",
-            proof.limit_g(),
-            proof.structure
-        );
+    if let Some(message) = proof.exceeded(peak_g) {
         findings.caution("limits.peak_g", message);
     }
 }
@@ -133,14 +138,4 @@ fn own_weight(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> OwnWe
         findings.error(&table.key("own_weight"), format!("{word:?} is not known, the structure's own weight: {all}"));
     }
     known.map_or(OwnWeight::NotCounted, |(own, _)| own)
-}
-
-/// A date, `None` with a finding where it is none.
-pub(super) fn date(table: &mut Section<'_, '_>, findings: &mut Findings<'_>, key: &'static str) -> Option<Date> {
-    let text = table.text(findings, key);
-    let date = text.parse();
-    if date.is_err() && !text.is_empty() {
-        findings.error(&table.key(key), format!("{text:?} is no date, write it as \"2031-05-04\""));
-    }
-    date.ok()
 }

@@ -2,12 +2,11 @@
 
 use std::path::{Path, PathBuf};
 
-use toml::de::DeTable;
-
 use super::attached::{Attached, read_joined, take_apart};
 use super::details::{CordDetails, Details, SettingUncertainties};
-use super::document::{Findings, Section, start_of};
-use super::finding::{Finding, RigError, Severity};
+use super::document::{Findings, Section};
+use super::finding::{Finding, RigError};
+use super::text_read::read_text;
 use super::{Cords, Rig, channels, checks, cord_items, detail_sections, proof, reading_sections, sections};
 
 /// What a rig file's text amounts to.
@@ -24,18 +23,8 @@ pub struct Checked {
 /// Syntax errors come alone: what the rest of such a text means can't be told.
 pub fn check(text: &str) -> Checked {
     let (own, attached) = take_apart(text);
-    let mut findings = Findings::of(own);
-    let (document, syntax_errors) = DeTable::parse_recoverable(own);
-    for error in &syntax_errors {
-        findings.at(start_of(error.span()), Severity::Error, "", error.message().replace('\n', ", "));
-    }
-    if !syntax_errors.is_empty() {
-        return Checked { rig: None, findings: findings.in_order() };
-    }
-    let rig = whole(text, attached, Section::root(&document), &mut findings);
-    let findings = findings.in_order();
-    let usable = findings.iter().all(|finding| finding.severity != Severity::Error);
-    Checked { rig: usable.then_some(rig), findings }
+    let (rig, findings) = read_text(own, |root, findings| Some(whole(text, attached, root, findings)));
+    Checked { rig, findings }
 }
 
 fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Rig {

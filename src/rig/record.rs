@@ -6,10 +6,10 @@
 use std::fmt;
 
 use jiff::civil::Date;
-use toml::de::DeTable;
 
-use super::document::{Findings, Section, start_of};
-use super::finding::{Finding, Severity};
+use super::document::{Findings, Section};
+use super::finding::Finding;
+use super::text_read::read_text;
 use super::{Coefficients, Role, sections};
 
 /// What kind of sensor a record is for.
@@ -166,18 +166,7 @@ impl CalibrationRecord {
 
     /// A record's text, with every finding. `name` is where it was found.
     pub fn read(name: &str, text: &str) -> (Option<Self>, Vec<Finding>) {
-        let mut findings = Findings::of(text);
-        let (document, syntax_errors) = DeTable::parse_recoverable(text);
-        for error in &syntax_errors {
-            findings.at(start_of(error.span()), Severity::Error, "", error.message().replace('\n', ", "));
-        }
-        if !syntax_errors.is_empty() {
-            return (None, findings.in_order());
-        }
-        let record = whole(name, Section::root(&document), &mut findings);
-        let findings = findings.in_order();
-        let usable = findings.iter().all(|finding| finding.severity != Severity::Error);
-        (record.filter(|_| usable), findings)
+        read_text(text, |root, findings| whole(name, root, findings))
     }
 }
 
@@ -189,7 +178,7 @@ fn whole(name: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
         findings.error("kind", format!("{kind_word:?} is no kind of record, there are: {known}"));
     }
     let [channel, sensor, person] = ["channel", "sensor", "person"].map(|key| root.text(findings, key));
-    let dates = ["date", "valid_until"].map(|key| date(&mut root, findings, key));
+    let dates = ["date", "valid_until"].map(|key| root.date(findings, key));
     let invented = root.optional_flag(findings, "invented");
     let mut values = root.section(findings, "values");
     let unit = kind.map_or("N", RecordKind::unit);
@@ -233,18 +222,6 @@ fn whole(name: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
         shunt,
         excitation_v,
     })
-}
-
-pub(super) fn date(root: &mut Section<'_, '_>, findings: &mut Findings<'_>, key: &'static str) -> Option<Date> {
-    let text = root.text(findings, key);
-    if text.is_empty() {
-        return None;
-    }
-    let date = text.parse();
-    if date.is_err() {
-        findings.error(key, format!("{text:?} is no date, write it as \"2031-05-04\""));
-    }
-    date.ok()
 }
 
 #[cfg(test)]

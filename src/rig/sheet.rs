@@ -4,12 +4,12 @@
 //! reference transducer, marks along the rail, or gravity. Refused: a sheet that leaves one of these open.
 
 use jiff::civil::Date;
-use toml::de::DeTable;
 
-use super::document::{Findings, Section, start_of};
-use super::finding::{Finding, Severity};
-use super::record::{RecordKind, date};
+use super::document::{Findings, Section};
+use super::finding::Finding;
+use super::record::RecordKind;
 use super::surroundings::{local_gravity_mps2, standard_air_density_kg_per_m3};
+use super::text_read::read_text;
 
 /// A sheet, checked.
 #[derive(Debug, Clone, PartialEq)]
@@ -29,6 +29,8 @@ pub struct Sheet {
     pub degree: Option<usize>,
     /// Counts at which the reading saturates.
     pub counts_range: (f64, f64),
+    /// Least step of a reading, counts: 1 of a converter, the last digit of a display.
+    pub step_counts: f64,
     /// Reading with the shunt resistor switched in, unloaded.
     pub shunt_counts: Option<f64>,
     /// Readings are shares of the excitation, and are brought to this one, V.
@@ -107,18 +109,7 @@ pub struct SheetReading {
 impl Sheet {
     /// A sheet's text with every finding.
     pub fn read(text: &str) -> (Option<Self>, Vec<Finding>) {
-        let mut findings = Findings::of(text);
-        let (document, syntax_errors) = DeTable::parse_recoverable(text);
-        for error in &syntax_errors {
-            findings.at(start_of(error.span()), Severity::Error, "", error.message().replace('\n', ", "));
-        }
-        if !syntax_errors.is_empty() {
-            return (None, findings.in_order());
-        }
-        let sheet = whole(Section::root(&document), &mut findings);
-        let findings = findings.in_order();
-        let usable = findings.iter().all(|finding| finding.severity != Severity::Error);
-        (sheet.filter(|_| usable), findings)
+        read_text(text, whole)
     }
 }
 
@@ -129,7 +120,7 @@ fn whole(mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Option<Sheet
         findings.error("kind", format!("{word:?} is not known: cell, encoder or accelerometer"));
     }
     let [channel, sensor, person] = ["channel", "sensor", "person"].map(|key| root.text(findings, key));
-    let [date, valid_until] = ["date", "valid_until"].map(|key| date(&mut root, findings, key));
+    let [date, valid_until] = ["date", "valid_until"].map(|key| root.date(findings, key));
     let invented = root.optional_flag(findings, "invented");
     let place = place(root.section(findings, "place"), findings);
     let standard = kind.map(|kind| standard(kind, &mut root, findings));
@@ -139,6 +130,7 @@ fn whole(mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Option<Sheet
         root.optional_number(findings, "counts_min", -2_147_483_648.0..=0.0).unwrap_or(-8_388_608.0),
         root.optional_number(findings, "counts_max", 1.0..=2_147_483_647.0).unwrap_or(8_388_607.0),
     );
+    let step_counts = root.optional_number(findings, "counts_step", 1e-9..=1e6).unwrap_or(1.0);
     let shunt_counts = root.optional_number(findings, "shunt_counts", -2_147_483_648.0..=2_147_483_647.0);
     let excitation_v = root.optional_number(findings, "excitation_v", 0.1..=100.0);
     let readings = readings(&mut root, findings);
@@ -160,6 +152,7 @@ fn whole(mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> Option<Sheet
         drift_relative_per_year: drift,
         degree,
         counts_range,
+        step_counts,
         shunt_counts,
         excitation_v,
         readings,

@@ -1,13 +1,21 @@
-//! The rehearsal's rig for tests of every room, with the records that it points to. Invented data.
+//! The rehearsal's rigs for tests of every room, joined with the records that they point to. Invented data.
+
+use std::path::Path;
+use std::sync::LazyLock;
 
 use super::{Rig, parse, read_joined};
 
-/// The rig file's text with its records.
-pub(crate) fn north_pier_text() -> String {
-    let path = concat!(env!("CARGO_MANIFEST_DIR"), "/tools/rehearsal/north-pier.toml");
-    read_joined(std::path::Path::new(path)).unwrap()
+/// The rehearsal's rig file with its records.
+pub(crate) static NORTH_PIER: LazyLock<String> = LazyLock::new(|| joined("north-pier.toml"));
+
+/// The rig file that uses every key, with its records.
+pub(crate) static EVERY_KEY: LazyLock<String> = LazyLock::new(|| joined("every-key.toml"));
+
+fn joined(name: &str) -> String {
+    let path = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal").join(name);
+    read_joined(&path).unwrap()
 }
 
 pub(crate) fn north_pier() -> Rig {
-    parse(&north_pier_text()).unwrap()
+    parse(&NORTH_PIER).unwrap()
 }

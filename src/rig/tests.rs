@@ -4,15 +4,9 @@ mod documented;
 
 use proptest::prelude::*;
 
+use super::testing::{NORTH_PIER, north_pier};
 use super::*;
 use crate::units::STANDARD_GRAVITY_MPS2;
-
-/// The invented rig of the rehearsals.
-const NORTH_PIER: &str = include_str!("../../tools/rehearsal/north-pier.toml");
-
-fn north_pier() -> Rig {
-    parse(NORTH_PIER).unwrap_or_else(|error| panic!("{error}"))
-}
 
 /// Findings of north-pier after replacing one text, one a line.
 #[track_caller]
@@ -28,7 +22,7 @@ fn findings_of(text: &str) -> String {
 #[test]
 fn the_rehearsal_rig_is_read_whole_and_in_si() {
     let rig = north_pier();
-    assert_eq!(check(NORTH_PIER).findings, []);
+    assert_eq!(check(&NORTH_PIER).findings, []);
     assert_eq!((rig.name.as_str(), rig.payload.name.as_str()), ("north-pier", "survey-8"));
     assert_eq!((rig.rail.zero_mark_x_m, rig.rail.length_m, rig.plan.draw_m), (4.0, 7.0, 4.0));
     assert!((rig.incline_deg() - 6.0).abs() < 1e-12);
@@ -36,9 +30,10 @@ fn the_rehearsal_rig_is_read_whole_and_in_si() {
     assert!((rig.limits.peak_g - 10.0).abs() < 1e-12);
     assert_eq!((rig.devices.len(), rig.channels.len(), rig.uncalibrated.len()), (2, 4, 0));
     let accel = rig.channel_with_role(Role::ShuttleSpecificForce).expect("it has an accelerometer");
-    assert!((accel.calibration.coefficients[1] - STANDARD_GRAVITY_MPS2 / 800.0).abs() < 1e-12);
+    // What the virtual rig's accelerometer has: 800 counts a g; its invented readings are rounded.
+    assert!((accel.calibration.coefficients[1] * 800.0 / STANDARD_GRAVITY_MPS2 - 1.0).abs() < 1e-5);
     assert!(rig.invented);
-    assert_eq!(rig.text, NORTH_PIER);
+    assert_eq!(rig.text, *NORTH_PIER);
 }
 
 #[test]
@@ -94,11 +89,10 @@ fn dangling_references_are_found() {
         "device = \"wich-node\"\ndevice_channel = \"line\"",
         "error: channel[0].device: there is no device \"wich-node\" in this rig file, did you mean \"winch-node\"?",
     );
-    one_finding(
-        "name = \"anchor\"",
-        "name = \"line\"",
-        "error: channel[1].name: \"line\" is already the name of channel[0]",
-    );
+    let twice = findings_with("name = \"anchor\"", "name = \"line\"");
+    assert!(twice.contains("error: channel[1].name: \"line\" is already the name of channel[0]"), "{twice}");
+    let others = "channel[1].record: records/anchor.toml is the record of channel \"anchor\", not of \"line\"";
+    assert!(twice.contains(others) && twice.lines().count() == 2, "{twice}");
     one_finding(
         "port = \"ports/shuttle-node\"",
         "port = \"ports/winch-node\"",
@@ -188,9 +182,7 @@ fn a_cord_curve_that_no_cord_has_is_refused() {
 
 #[test]
 fn a_channel_without_calibration_is_kept_apart_from_values() {
-    let anchor = "[channel.calibration]\nzero_counts = -8000\ncoefficients = [\"0 N\", \"0.0005 N\"]\n\
-                  zero_uncertainty = \"0.5 N\"\nscale_uncertainty = \"0.1 %\"\n";
-    let text = NORTH_PIER.replacen(anchor, "", 1);
+    let text = NORTH_PIER.replacen("record = \"records/anchor.toml\"\n", "", 1);
     let checked = check(&text);
     let rig = checked.rig.expect("it is usable");
     assert!(rig.channel_with_role(Role::CordAnchorTension).is_none());
@@ -199,6 +191,25 @@ fn a_channel_without_calibration_is_kept_apart_from_values() {
         findings_of(&text).split_once(": ").map(|(_, rest)| rest),
         Some("caution: channel[1]: has no calibration: recorded as counts, never shown as a value")
     );
+}
+
+#[test]
+fn coefficients_without_a_record_are_refused_unless_the_file_says_so() {
+    let inline = |more: &str| {
+        let table = format!(
+            "[channel.calibration]\n{more}zero_counts = -8000\ncoefficients = [\"0 N\", \"0.0005 N\"]\n\
+             zero_uncertainty = \"0.5 N\"\nscale_uncertainty = \"0.1 %\"\n"
+        );
+        NORTH_PIER.replacen("record = \"records/anchor.toml\"\n", &table, 1)
+    };
+    let refused = findings_of(&inline(""));
+    assert!(refused.contains("error: channel[1].calibration.without_record: coefficients stand without"), "{refused}");
+    assert!(check(&inline("without_record = false\n")).rig.is_none());
+    assert!(findings_of(&inline("without_record = 1\n")).contains("true or false"));
+    let rig = parse(&inline("without_record = true\n")).unwrap();
+    let anchor = rig.channel_with_role(Role::CordAnchorTension).expect("it has values");
+    assert_eq!((anchor.calibration.zero_counts, &anchor.record), (-8000.0, &None));
+    assert!(north_pier().channels.iter().all(|channel| channel.record.is_some()), "all others have records");
 }
 
 #[test]

@@ -10,6 +10,8 @@ mod daemon_process;
 #[path = "../support/nobody.rs"]
 mod nobody;
 mod refusals;
+#[path = "../support/rehearsal_rig.rs"]
+mod rehearsal_rig;
 mod small_disk;
 mod stage;
 mod text;

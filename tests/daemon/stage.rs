@@ -1,13 +1,14 @@
 //! A stage for one test: a directory, the virtual rig playing in it, the daemon as a child process.
 
 use std::collections::BTreeMap;
-use std::path::{Path, PathBuf};
+use std::path::PathBuf;
 use std::process::{Command, Output};
 use std::sync::atomic::{AtomicBool, Ordering};
 use std::sync::{Arc, OnceLock};
 use std::thread::JoinHandle;
 use std::time::{Duration, Instant};
 
+use crate::rehearsal_rig::rig_text;
 use serde::Deserialize;
 use tautrail::trial::{BlockRow, TrialFile};
 use virtual_rig::performance::{Options, Performance, prepare};
@@ -69,8 +70,7 @@ impl Stage {
     /// With a rig file of the rehearsal's.
     pub fn of_rig(name: &str) -> Self {
         let dir = tempfile::tempdir().expect("a directory");
-        let rig = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal").join(name);
-        std::fs::copy(rig, dir.path().join("rig.toml")).expect("the rig file");
+        std::fs::write(dir.path().join("rig.toml"), rig_text(name)).expect("the rig file");
         Self { dir }
     }
 

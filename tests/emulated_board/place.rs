@@ -50,7 +50,7 @@ impl Place {
 /// The rehearsal's rig with all four channels on the one board (invented data).
 fn rig_text(device: &str) -> String {
     let rig = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
-    let text = std::fs::read_to_string(rig).unwrap();
+    let text = tautrail::rig::read_joined(&rig).unwrap();
     let (before, second_device) = text.split_once("[[device]]\nname = \"shuttle-node\"").expect("its second device");
     let (_, channels) = second_device.split_once("[[channel]]").expect("its channels");
     let text = format!("{before}[[channel]]{channels}");

@@ -97,7 +97,7 @@ impl Disk for Logged {
 /// An archive with a journal of one small trial, and what a killed sealing of it left.
 fn archive() -> tempfile::TempDir {
     let dir = tempfile::tempdir().unwrap();
-    let mut journal = JournalFile::begin(dir.path(), RIG_TEXT);
+    let mut journal = JournalFile::begin(dir.path(), &RIG_TEXT);
     journal.clocks(1);
     journal.open_trial(2, 1, 1);
     journal.bytes(3, 0, vec![7; 100]);

@@ -1,7 +1,7 @@
 //! Writes journals for tests by their documented format, record by record, with no thread and no clock.
 
 use std::path::{Path, PathBuf};
-use std::sync::Arc;
+use std::sync::{Arc, LazyLock};
 
 use tautrail::journal::{
     Body, Clocks, DeviceAtOpen, Disk, JournalReader, RealDisk, Record, SegmentOpen, TrialClose, TrialOpen, TrialRange,
@@ -14,7 +14,11 @@ use virtual_rig::play::virtual_time::{Delivered, VirtualPlay};
 
 pub const JOURNAL_ID: &str = "000001-abc123";
 pub const TRIAL_ID: &str = "000001-7f3a9c";
-pub const RIG_TEXT: &str = include_str!("../../tools/rehearsal/north-pier.toml");
+/// The rehearsal's rig file with its records.
+pub static RIG_TEXT: LazyLock<String> = LazyLock::new(|| {
+    let path = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
+    tautrail::rig::read_joined(&path).unwrap()
+});
 const PREROLL_NS: i64 = 100_000_000;
 
 /// One journal of one segment, being written.
@@ -43,10 +47,14 @@ pub fn opening(rig_text: &str) -> SegmentOpen {
 
 impl JournalFile {
     pub fn begin(dir: &Path, rig_text: &str) -> Self {
+        Self::begin_of(dir, JOURNAL_ID, rig_text)
+    }
+
+    pub fn begin_of(dir: &Path, journal_id: &str, rig_text: &str) -> Self {
         std::fs::create_dir_all(dir.join("journal")).unwrap();
-        let path = dir.join("journal").join(segment_name(JOURNAL_ID, 1));
+        let path = dir.join("journal").join(segment_name(journal_id, 1));
         let mut file = Self { path, bytes: Vec::new(), next_seq: 1 };
-        let body = Body::SegmentOpen(Box::new(opening(rig_text)));
+        let body = Body::SegmentOpen(Box::new(SegmentOpen { journal_id: journal_id.into(), ..opening(rig_text) }));
         Record { seq: 1, host_ns: 0, device: DeviceIdx(0), body }.encode(&mut file.bytes);
         file
     }
@@ -87,8 +95,12 @@ impl JournalFile {
 
 /// A nominal launch, played fast through the virtual rig into a journal of its own.
 pub fn nominal(dir: &Path, pace: f64, closed: bool) {
-    let performance = prepare(&Options { pace, ..Options::default() }).unwrap();
-    let mut file = JournalFile::begin(dir, RIG_TEXT);
+    played(JournalFile::begin(dir, &RIG_TEXT), &Options { pace, ..Options::default() }, closed);
+}
+
+/// Any performance of the virtual rig, written into a journal that was begun for it.
+pub fn played(mut file: JournalFile, options: &Options, closed: bool) {
+    let performance = prepare(options).unwrap();
     let mut opened = false;
     let (mut first, mut last_ns, mut next_clocks_ns) = (None, 0, 0);
     for delivery in VirtualPlay::new(&performance).unwrap() {
@@ -122,8 +134,12 @@ pub fn nominal(dir: &Path, pace: f64, closed: bool) {
 
 /// The journal in `dir` with its one trial.
 pub fn opened(dir: &Path) -> (JournalReader, TrialRange) {
+    opened_of(dir, JOURNAL_ID)
+}
+
+pub fn opened_of(dir: &Path, journal_id: &str) -> (JournalReader, TrialRange) {
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
-    let reader = JournalReader::open(disk, &dir.join("journal"), JOURNAL_ID).unwrap();
+    let reader = JournalReader::open(disk, &dir.join("journal"), journal_id).unwrap();
     let range = reader.trials().unwrap().remove(0);
     (reader, range)
 }

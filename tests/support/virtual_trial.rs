@@ -4,6 +4,8 @@
 
 #![allow(clippy::expect_used, reason = "a test that cannot go on stops here")]
 
+use std::path::Path;
+
 use tautrail::calibration::{Sampling, Signal, signal_from_counts};
 use tautrail::capture::{
     Block, Captured, ClockPiece, ClockSamples, Counts, DeviceDecoder, DeviceDescription, piece_at,
@@ -16,7 +18,9 @@ use virtual_rig::truth::Truth;
 
 /// The rehearsal's rig file.
 pub fn rehearsal_rig() -> Rig {
-    tautrail::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).expect("the rehearsal's rig file reads")
+    let path = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
+    let text = tautrail::rig::read_joined(&path).expect("the rehearsal's rig file reads");
+    tautrail::rig::parse(&text).expect("it is a rig file")
 }
 
 /// What was measured, and what was true. Trial time is seconds since the scenario's zero.

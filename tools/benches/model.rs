@@ -4,6 +4,8 @@
 
 #[path = "../../tests/support/full_featured.rs"]
 mod full_featured;
+#[path = "../../tests/support/rehearsal_rig.rs"]
+mod rehearsal_rig;
 #[path = "../../tests/support/mod.rs"]
 mod support;
 
@@ -11,6 +13,7 @@ use std::hint::black_box;
 use std::time::Instant;
 
 use full_featured::{full_featured, number, setup_of};
+use rehearsal_rig::rig_text;
 use tautrail::estimation::Random;
 use tautrail::model::{
     CfcRatio, FAST, Inputs, Known, LaunchSetup, Moved, energy_at_separation, evaluate, launch_answers,
@@ -56,7 +59,7 @@ fn against_scipy() -> Vec<Figure> {
 
 /// A thousand draws as a forecast makes them, and first-order propagation as the live display does.
 fn draws() -> Vec<Figure> {
-    let rig = tautrail::rig::parse(include_str!("../rehearsal/north-pier.toml")).unwrap();
+    let rig = tautrail::rig::parse(&rig_text("north-pier.toml")).unwrap();
     let planned = LaunchSetup::planned(&rig).unwrap();
     let inputs = Inputs::of(&rig, Known::Plan).unwrap();
     let ratio = CfcRatio::of(&planned, &inputs).unwrap();
@@ -87,7 +90,7 @@ fn draws() -> Vec<Figure> {
 
 /// The launch of every-key's rig through a wide valve; 1.5 to 3.9 ms with explicit steps.
 fn gas_launch_us() -> f64 {
-    let mut rig = tautrail::rig::parse(include_str!("../rehearsal/every-key.toml")).unwrap();
+    let mut rig = tautrail::rig::parse(&rig_text("every-key.toml")).unwrap();
     rig.details.gas.iter_mut().flat_map(|gas| &mut gas.valve).for_each(|valve| valve.area_m2 = 1.2e-4);
     let setup = LaunchSetup { relative_tolerance: FAST, ..LaunchSetup::planned(&rig).unwrap() };
     best_s(200, 2, || black_box(launch_answers(&setup)).is_ok()) * 1e6

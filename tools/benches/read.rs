@@ -5,6 +5,8 @@
 
 #[path = "../../tests/support/journal.rs"]
 mod journal_file;
+#[path = "../../tests/support/rehearsal_rig.rs"]
+mod rehearsal_rig;
 #[path = "../../tests/support/mod.rs"]
 mod support;
 
@@ -12,6 +14,7 @@ use std::sync::Arc;
 use std::time::Instant;
 
 use journal_file::{nominal, opened};
+use rehearsal_rig::rig_text;
 use tautrail::archive::seal;
 use tautrail::journal::{Disk, RealDisk};
 use tautrail::reading::read;
@@ -42,7 +45,7 @@ fn main() {
     let (reader, range) = opened(dir.path());
     let disk: Arc<dyn Disk> = Arc::new(RealDisk);
     let path = seal(&reader, &range, dir.path(), &disk).unwrap().path;
-    let rig = tautrail::rig::parse(include_str!("../rehearsal/north-pier.toml")).unwrap();
+    let rig = tautrail::rig::parse(&rig_text("north-pier.toml")).unwrap();
     let (mut whole_s, mut derive_s, mut n_samples, mut length_s) = (f64::INFINITY, f64::INFINITY, 0, 0.0);
     for _ in 0..N_RUNS {
         let begun = Instant::now();

@@ -40,7 +40,7 @@ fn main() {
     println!("figure seal_beside_trial_length value={trial_s:.1} unit=s reference=- ratio=- target=-");
     let dir = tempfile::tempdir().unwrap();
     let rig_file = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
-    std::fs::copy(rig_file, dir.path().join("rig.toml")).unwrap();
+    std::fs::write(dir.path().join("rig.toml"), tautrail::rig::read_joined(&rig_file).unwrap()).unwrap();
     let stop = Arc::new(AtomicBool::new(false));
     let wait_for_start = Duration::from_secs(60);
     let settings = PtySettings { dir: dir.path().to_owned(), wait_for_start, stop: Arc::clone(&stop) };

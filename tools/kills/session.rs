@@ -82,7 +82,8 @@ impl Session<'_> {
 
     fn prepare(&mut self) {
         let rig = Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
-        std::fs::copy(rig, self.dir.path().join("rig.toml")).expect("the rig file");
+        let text = tautrail::rig::read_joined(&rig).expect("the rehearsal's rig file");
+        std::fs::write(self.dir.path().join("rig.toml"), text).expect("the rig file");
         std::fs::create_dir(self.archive()).expect("the archive");
         if let Some(bytes) = &*self.stage.earlier.lock().expect("a session panicked") {
             let path = self.archive().join("trial-000001-aaaaaa.h5");

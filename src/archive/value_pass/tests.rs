@@ -4,7 +4,6 @@ use crate::capture::{ChannelDescription, ClockMethod, Encoding, TimeBase};
 use crate::journal::{DeviceAtOpen, SegmentOpen};
 use crate::trial::{Header, TrialFile};
 
-const RIG_TEXT: &str = include_str!("../../../tools/rehearsal/north-pier.toml");
 const N_PER_BLOCK: u32 = 100;
 
 fn header() -> Header {
@@ -32,7 +31,7 @@ fn opening() -> SegmentOpen {
         first_seq: 1,
         program_version: String::new(),
         kernel_boot_id: String::new(),
-        rig_text: RIG_TEXT.into(),
+        rig_text: crate::rig::testing::NORTH_PIER.clone(),
         devices: vec![device("winch-node")],
         open_trial: None,
         previous_given_up: None,
@@ -109,7 +108,7 @@ fn played(blocks: &[Told], clocks: Vec<ClockPiece>, kept_max: usize) -> (ForRead
     let mut raw = RawPass::new(&mut writer, 0);
     raw.take(Told::Opening { host_ns: 0, open: Box::new(opening()) }).unwrap();
     let mut gathered = raw.finish().unwrap();
-    let rig = crate::rig::parse(RIG_TEXT).unwrap();
+    let rig = crate::rig::testing::north_pier();
     let clocks = [clocks];
     let mut pass = ValuePass::new(&mut writer, &rig, &gathered.devices, &clocks, 0, kept_max);
     pass.take(&Told::Known(DeviceIdx(0), description())).unwrap();

@@ -248,6 +248,19 @@ fn a_reference_transducer_states_forces_and_kilograms_are_refused() {
 }
 
 #[test]
+fn a_displays_last_digit_is_its_resolution() {
+    let text =
+        SHEET.replace("masses_common_uncertainty = \"0.002 %\"", "reference_uncertainty = \"0 %\"\ncounts_step = 0.5");
+    let mut display = Sheet::read(&text).0.unwrap();
+    display.readings =
+        readings_from_csv("run,direction,load,counts\n1,up,0,0\n1,up,100 N,100\n1,up,200 N,200\n1,up,300 N,300\n")
+            .unwrap();
+    let found = calibrate(&display).unwrap();
+    // Half a digit either way, rectangular (JCGM 100:2008, F.2.2.1): 0.5 N / √12.
+    assert!((found.steps[2].standard_n - 0.5 / 12f64.sqrt()).abs() < 1e-9, "{:?}", found.steps[2]);
+}
+
+#[test]
 fn ratiometric_readings_do_not_see_the_excitation_sag() {
     let mut sagging = sheet(10, &csv(&THREE, 10, straight));
     sagging.excitation_v = Some(5.0);

@@ -66,7 +66,7 @@ impl Budget {
             off_curve_n: figures.off_curve_n.clone(),
             creep_relative: figures.creep_relative.unwrap_or(0.0),
             zero,
-            resolution_n: (1.0 / figures.sensitivity_counts_per_n).abs(),
+            resolution_n: (sheet.step_counts / figures.sensitivity_counts_per_n).abs(),
         }
     }
 
@@ -87,7 +87,7 @@ impl Budget {
         };
         let slopes = Component { standard_uncertainty: self.slopes.standard_uncertainty * force_n, ..self.slopes };
         vec![
-            share("masses", Component::certain(masses.sqrt())),
+            share("masses", Component::certain(masses.abs().sqrt())),
             share("gravity, air, reference", Component::certain(self.common_relative * force_n)),
             share("curve", fit),
             share("slope between runs", slopes),

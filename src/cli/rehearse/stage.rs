@@ -11,6 +11,13 @@ use thiserror::Error;
 /// The rig file of the rehearsal; its ports are relative to where it lies.
 const RIG_TEXT: &str = include_str!("../../../tools/rehearsal/north-pier.toml");
 const RIG_NAME: &str = "north-pier.toml";
+/// The calibration records that it points to, beside it in `records/`.
+const RECORDS: [(&str, &str); 4] = [
+    ("line.toml", include_str!("../../../tools/rehearsal/records/line.toml")),
+    ("anchor.toml", include_str!("../../../tools/rehearsal/records/anchor.toml")),
+    ("encoder.toml", include_str!("../../../tools/rehearsal/records/encoder.toml")),
+    ("accel.toml", include_str!("../../../tools/rehearsal/records/accel.toml")),
+];
 /// Longest path a Unix socket takes, less some room.
 const SOCKET_PATH_LEN_MAX: usize = 100;
 
@@ -41,6 +48,9 @@ impl Stage {
             return Err(StageError::Occupied { path: out.to_owned() });
         }
         fs::write(dir.join(RIG_NAME), RIG_TEXT).map_err(cannot)?;
+        let records = dir.join("records");
+        fs::create_dir_all(&records).map_err(cannot)?;
+        RECORDS.iter().try_for_each(|(name, text)| fs::write(records.join(name), text)).map_err(cannot)?;
         forget(&dir.join("truth.json")).map_err(cannot)?;
         let earlier = sealed(&dir).map_err(cannot)?;
         let fits = dir.join("feed.sock").as_os_str().as_bytes().len() <= SOCKET_PATH_LEN_MAX;

@@ -72,8 +72,7 @@ fn a_stroke_longer_than_the_extension_coasts_on() {
 
 #[test]
 fn draws_beyond_the_curve_are_refused_or_flagged_in_every_result() {
-    let text = include_str!("../../../tools/rehearsal/north-pier.toml");
-    let long = text.replace("free_length = \"2.7 m\"", "free_length = \"2.5 m\"");
+    let long = rig::testing::NORTH_PIER.replace("free_length = \"2.7 m\"", "free_length = \"2.5 m\"");
     assert!(rig::check(&long).rig.is_none(), "the reader refuses it");
     let asked = long.replace("[cords]\n", "[cords]\nextrapolate = true\n");
     let rig = rig::parse(&asked).unwrap();

@@ -5,11 +5,7 @@ use super::super::{
     launch_answers, planned_line_tension_n, released_now, simulate, stored_energy_j,
 };
 use super::assert_close;
-use crate::rig::{self, Rig};
-
-fn north_pier() -> Rig {
-    rig::parse(include_str!("../../../tools/rehearsal/north-pier.toml")).unwrap()
-}
+use crate::rig::testing::north_pier;
 
 #[test]
 fn the_nominal_launch_meets_its_window_and_rests_in_the_run_out() {

@@ -4,11 +4,10 @@ use std::collections::BTreeSet;
 
 use toml::{Table, Value};
 
+use super::super::{attached, testing::EVERY_KEY};
 use super::check;
 
 const PAGE: &str = include_str!("../RIG-FILE.md");
-/// An invented rig that uses every key.
-const EVERY_KEY: &str = include_str!("../../../tools/rehearsal/every-key.toml");
 
 /// Key and range of every row of the page's tables of keys.
 fn documented() -> Vec<(&'static str, &'static str)> {
@@ -33,7 +32,8 @@ fn changed(path: &str, change: impl FnOnce(&mut Table, &str)) -> String {
         at = next.as_table_mut().expect(path);
     }
     change(at, last);
-    toml::to_string(&table).expect("it can be written")
+    let records = attached::take_apart(&EVERY_KEY).1;
+    attached::join(&toml::to_string(&table).expect("it can be written"), &records)
 }
 
 /// Keys that the reader knows in the table at `path`, from what it answers to one it does not know.
@@ -51,7 +51,7 @@ fn known_in(path: &str) -> Vec<String> {
 
 #[test]
 fn the_file_of_every_key_is_understood_without_a_finding() {
-    assert_eq!(check(EVERY_KEY).findings, []);
+    assert_eq!(check(&EVERY_KEY).findings, []);
 }
 
 #[test]

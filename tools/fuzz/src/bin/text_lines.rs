@@ -43,7 +43,7 @@ fn device(text: &str) -> Device {
     let rig = format!(
         "{rig}\n[[device]]\nname = \"gauge\"\nport = \"ports/gauge\"\nbaud = 9600\nprotocol = \"text\"\n[device.text]\n{text}\n\
          [[channel]]\nname = \"line\"\ndevice = \"gauge\"\ndevice_channel = \"force\"\nrole = \"release_line_tension\"\n\
-         [channel.calibration]\nzero_uncertainty = \"0.5 N\"\nscale_uncertainty = \"0.1 %\"\n"
+         [channel.calibration]\nwithout_record = true\nzero_uncertainty = \"0.5 N\"\nscale_uncertainty = \"0.1 %\"\n"
     );
     let Checked { rig, findings } = check(&rig);
     rig.unwrap_or_else(|| panic!("{findings:#?}")).devices.remove(0)
