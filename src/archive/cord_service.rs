@@ -86,13 +86,19 @@ fn of_trial(path: &Path) -> Result<(Vec<String>, f64), String> {
     if serials.is_empty() {
         return Ok((serials, 0.0));
     }
-    let signals =
-        TrialFile::open(path).and_then(|trial| trial.signals()).map_err(|error: TrialError| error.to_string())?;
-    let tensions = || signals.iter().filter(|signal| signal.role.is_tension());
-    if tensions().next().is_none() {
+    let told = |error: TrialError| error.to_string();
+    let trial = TrialFile::open(path).map_err(told)?;
+    let there = trial.signal_names().map_err(told)?;
+    let tensions: Vec<_> = rig
+        .channels
+        .iter()
+        .filter(|channel| channel.role.is_tension() && there.contains(&channel.name))
+        .map(|channel| trial.signal(&channel.name).map_err(told))
+        .collect::<Result<_, _>>()?;
+    if tensions.is_empty() {
         return Err("has no tension signal: whether its cords were loaded is not known".into());
     }
-    let loaded_s = tensions().map(|signal| loaded_s(signal, rig.plan.slack_tension_n)).fold(0.0, f64::max);
+    let loaded_s = tensions.iter().map(|signal| loaded_s(signal, rig.plan.slack_tension_n)).fold(0.0, f64::max);
     Ok((serials, loaded_s))
 }
 

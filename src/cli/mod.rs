@@ -79,6 +79,8 @@ enum Command {
     #[command(hide = true)]
     SealChild(seal_child::Args),
     #[command(hide = true)]
+    CountCords(cord::count::Args),
+    #[command(hide = true)]
     VirtualRig(virtual_rig::Args),
 }
 
@@ -106,6 +108,7 @@ impl Command {
             Self::Replay(args) => replay::run(args, screen),
             Self::Compare(args) => compare::run(args, screen),
             Self::SealChild(args) => seal_child::run(args, screen),
+            Self::CountCords(args) => cord::count::run(args, screen),
             Self::VirtualRig(args) => virtual_rig::run(args),
         }
     }

@@ -8,7 +8,7 @@ use tautrail::rig::{self, Rig, Stage};
 
 use super::forecast::{GAS_CAUTION, finite};
 use super::screen::{Screen, Tone};
-use super::{CAUTION, Failure, Verdict};
+use super::{CAUTION, Failure, Verdict, cord};
 
 /// List the stages of a build-up: configuration, gate, what to inspect, and what each would do
 #[derive(Debug, clap::Args)]
@@ -22,14 +22,18 @@ pub struct Args {
     /// Seed of the draws
     #[arg(long, default_value_t = 1)]
     seed: u64,
+    /// Count what each cord has served from the trials of this archive directory, and say which are to come off
+    #[arg(long, value_name = "DIR")]
+    trials: Option<PathBuf>,
 }
 
 const STAGE_HELP: &str = "\
 Examples:
   tautrail stage south-mole.toml
+  tautrail stage --trials trials/ south-mole.toml   with the cords' cycles and hours
   tautrail stage --json south-mole.toml
 
-Exit code: 0 stages listed, 1 the rig file names none or one can't be computed, 2 the rig file can't be used.
+Exit code: 0 stages listed, 1 the rig file names none, one can't be computed or a cord is to come off, 2 the rig file can't be used.
 
 The forecasts are planning forecasts. Whether a gate is open and whether to go is for people to decide. Tautrail is no safety
 device: it advises and records; interlocks, exclusion zones, local codes and licensed practice decide.";
@@ -44,14 +48,21 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     };
     let stages: Vec<(&Stage, Rig)> = rig.details.stages.iter().map(|stage| (stage, configured(&rig, stage))).collect();
     let made: Vec<_> = stages.iter().map(|(_, rig)| forecast(rig, options)).collect();
+    let worn = args.trials.as_deref().map(|dir| cord::worn_cords(&rig, dir, screen)).transpose()?;
     if screen.json {
         let rows: Vec<Value> = stages.iter().zip(&made).map(|((stage, rig), made)| as_json(stage, rig, made)).collect();
-        screen.value(&json!({ "rig": rig.name, "stages": rows, "cautions": cautions(&rig) }));
+        screen.value(&json!({
+            "rig": rig.name, "stages": rows, "cautions": cautions(&rig), "proof_load": cord::proof_sentence(&rig),
+            "take_off": worn,
+        }));
     } else {
         print(&rig, &stages, &made, screen);
+        for sentence in worn.iter().flatten() {
+            screen.line(screen.toned(sentence, Tone::Bad));
+        }
     }
     let all = !made.is_empty() && made.iter().all(Result::is_ok);
-    Ok(if all { Verdict::Done } else { Verdict::CheckFailed })
+    Ok(if all && worn.is_none_or(|worn| worn.is_empty()) { Verdict::Done } else { Verdict::CheckFailed })
 }
 
 /// The rig as a stage has it.
@@ -97,6 +108,7 @@ fn print(rig: &Rig, stages: &[(&Stage, Rig)], made: &[Result<Forecast, ModelErro
         }
     }
     screen.line("planning forecasts; whether a gate is open, and go or no-go, people decide");
+    screen.line(cord::proof_sentence(rig));
     for caution in cautions(rig) {
         screen.line(caution);
     }

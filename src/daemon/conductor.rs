@@ -14,6 +14,7 @@ use crate::journal::{Clocks, EventBody, Order, Recorder, RecorderNow, Report, Tr
 use crate::link::{FromLinks, HostClock, LinkEvent, LinkWhat, Links, Lost};
 use crate::live::{Around, CordsNow, Happening, JournalNow, Live, TrialNow};
 
+use super::cords::{CordCounter, Count};
 use super::error::DaemonError;
 use super::outgoing::Outgoing;
 use super::ports::FirstOpenings;
@@ -31,6 +32,8 @@ pub struct Conductor {
     /// Taken when the ports are stopped.
     pub links: Option<Links>,
     pub sealer: Sealer,
+    /// None where the rig file lists no cords.
+    pub cords: Option<CordCounter>,
     pub book: TrialBook,
     pub clock: Arc<dyn HostClock>,
     pub on_event: Box<dyn FnMut(&Event)>,
@@ -58,6 +61,7 @@ pub struct Inputs {
     pub requests: Receiver<Request>,
     pub reports: Receiver<Report>,
     pub sealed: Receiver<SealReport>,
+    pub counted: Receiver<Count>,
     /// Why the daemon is to stop.
     pub shutdown: Receiver<String>,
 }
@@ -111,6 +115,10 @@ impl Conductor {
                 recv(inputs.sealed) -> report => match report {
                     Ok(report) => self.take_sealed(report),
                     Err(_) => return ended("sealing"),
+                },
+                recv(inputs.counted) -> count => match count {
+                    Ok(count) => self.take_cords(count),
+                    Err(_) => inputs.counted = never(),
                 },
                 recv(inputs.shutdown) -> reason => {
                     return Ok(reason.unwrap_or_else(|_| "its owner is gone".to_owned()));
@@ -263,8 +271,24 @@ impl Conductor {
         if report.result.is_ok() {
             self.book.sealed(&report.trial_id);
             self.outgoing.push(Order::Pin { first_seq: self.book.pinned_from() });
+            if let Some(cords) = &self.cords {
+                cords.count();
+            }
         }
         self.tell(words::sealed(self.clock.monotonic_ns(), &report));
+    }
+
+    /// What the cords have served by now: those that are to come off are alarms.
+    fn take_cords(&mut self, count: Count) {
+        let now_ns = self.clock.monotonic_ns();
+        match count {
+            Ok(served) => {
+                for happening in self.live.judge_cords(now_ns, &served, words::today()) {
+                    self.act(&happening);
+                }
+            }
+            Err(why) => self.complain(&format!("what the cords have served is not known: {why}")),
+        }
     }
 
     /// Puts an event into the journal and on the feed.

@@ -8,6 +8,7 @@
 mod begin;
 mod commands;
 mod conductor;
+mod cords;
 mod error;
 mod found;
 mod machine;

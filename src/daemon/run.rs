@@ -19,6 +19,7 @@ use crate::rig::Rig;
 
 use super::begin::begin_journal;
 use super::conductor::{Conductor, Inputs};
+use super::cords::CordCounter;
 use super::error::DaemonError;
 use super::found::{self, Found, Known, Present, Resumed};
 use super::machine::{kernel_boot_id, random_part};
@@ -95,6 +96,13 @@ pub fn run(
         Recorder::spawn(journal, Arc::clone(&disk), ends, Arc::clone(&clock), Clocks::read).map_err(machine)?;
     let seal_command = SealCommand::new(options.program.clone(), options.dir.clone());
     let (sealer, sealed) = Sealer::spawn(seal_command).map_err(machine)?;
+    let (cords, counted) = if rig.details.cord_items.is_empty() {
+        (None, crossbeam_channel::never())
+    } else {
+        let (counter, counted) = CordCounter::spawn(options.program.clone(), options.dir.clone()).map_err(machine)?;
+        counter.count();
+        (Some(counter), counted)
+    };
     let sinks = Sinks { journal: to_journal, live: to_live };
     let seed = random_part().map_err(|source| DaemonError::Machine { what: "random numbers", source })?;
     let links = spawn_links(ports(rig), sinks, Arc::clone(&clock), u64::from(seed)).map_err(machine)?;
@@ -111,6 +119,7 @@ pub fn run(
         recorder,
         links: Some(links),
         sealer,
+        cords,
         book: TrialBook::new(journal_id.clone(), found.next_trial_number, waiting),
         clock,
         on_event,
@@ -126,7 +135,7 @@ pub fn run(
         wait_for_ports: options.wait_for_ports,
     };
     conductor.say_hello(rig, &found, &options.socket, &journal_id);
-    conductor.run(Inputs { live, requests, reports, sealed, shutdown })
+    conductor.run(Inputs { live, requests, reports, sealed, counted, shutdown })
 }
 
 /// What the archive holds; what an earlier run noted as done with is not read again.
@@ -199,7 +208,9 @@ impl Conductor {
             self.tell(words::event(now_ns, "seal", "daemon", text));
         }
         let doubts = calibration::doubts(rig, words::today());
-        for happening in self.live.calibration_doubts(now_ns, &doubts) {
+        let mut standing = self.live.calibration_doubts(now_ns, &doubts);
+        standing.extend(self.live.judge_proof(now_ns));
+        for happening in standing {
             self.act(&happening);
         }
         self.outgoing.push(Order::Pin { first_seq: self.book.pinned_from() });

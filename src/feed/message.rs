@@ -46,6 +46,12 @@ pub struct Hello {
     pub incline_deg: f64,
     pub limit_tension_n: f64,
     pub limit_peak_g: f64,
+    /// What the proof load of the airframe allows, with its margin; none where none is recorded.
+    #[serde(default)]
+    pub proof_limit_g: Option<f64>,
+    /// That proof load as a sentence.
+    #[serde(default)]
+    pub proof_load: Option<String>,
     pub plan_draw_m: f64,
     pub plan_speed_min_mps: f64,
     pub plan_speed_max_mps: f64,

@@ -1,7 +1,7 @@
 //! The rig and live's happenings as the feed tells them.
 
 use crate::live::{AlarmChange, Happening, Plan};
-use crate::rig::Rig;
+use crate::rig::{ProofLoad, Rig};
 
 use super::message::{Event, FEED_VERSION, Hello};
 
@@ -21,6 +21,8 @@ impl Hello {
             incline_deg: rig.incline_deg(),
             limit_tension_n: rig.limits.tension_n,
             limit_peak_g: rig.limits.peak_g,
+            proof_limit_g: rig.details.proof_load.as_ref().map(ProofLoad::limit_g),
+            proof_load: rig.details.proof_load.as_ref().map(ProofLoad::sentence),
             plan_draw_m: rig.plan.draw_m,
             plan_speed_min_mps: rig.plan.launch_speed_min_mps,
             plan_speed_max_mps: rig.plan.launch_speed_max_mps,

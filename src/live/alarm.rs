@@ -48,6 +48,10 @@ pub enum Cause {
     Uncalibrated,
     /// A channel reads beyond what its calibration was tested for: index in the rig's channels.
     BeyondCalibration(usize),
+    /// A cord that is to come off: index in the rig's list of cords.
+    WornCord(usize),
+    /// The g limit is above what the proof load allows.
+    OverProof,
     /// A calibration that is expired, without record, or whose day can't be told.
     CalibrationDoubt(u16),
     /// The model cannot take the rig file's cords to the planned draw.

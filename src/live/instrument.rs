@@ -2,10 +2,14 @@
 //!
 //! Fed the same events and ticks it says the same, so phases, alarms and silences replay from a journal.
 
+use std::collections::BTreeMap;
+
+use jiff::civil::Date;
+
 use crate::calibration::Tare;
 use crate::capture::Captured;
 use crate::link::{DeviceIdx, LinkEvent, LinkWhat};
-use crate::rig::{Rig, Role};
+use crate::rig::{Rig, Role, Served};
 
 use super::alarm::{Board, Cause};
 use super::channel::ChannelMonitor;
@@ -327,6 +331,30 @@ impl Live {
             .zip(doubts)
             .map(|(idx, doubt)| self.board.raise(Cause::CalibrationDoubt(idx), host_ns, doubt.clone()));
         raised.flatten().collect()
+    }
+
+    /// The g limit against the proof load, as a standing alarm where the limit is above what was proven.
+    pub fn judge_proof(&mut self, host_ns: i64) -> Option<Happening> {
+        let exceeded = self.rig.details.proof_load.as_ref()?.exceeded(self.rig.limits.peak_g)?;
+        self.board.raise(Cause::OverProof, host_ns, format!("the peak limit of {exceeded}"))
+    }
+
+    /// What the archive says each cord has served: those that are to come off, as standing alarms.
+    pub fn judge_cords(
+        &mut self,
+        host_ns: i64,
+        served: &BTreeMap<String, Served>,
+        today: Option<Date>,
+    ) -> Vec<Happening> {
+        let board = &mut self.board;
+        let judged = self.rig.details.cord_items.iter().enumerate().map(|(index, cord)| {
+            let served = cord.served(served.get(&cord.serial).copied().unwrap_or_default());
+            match cord.worn(served, today) {
+                Some(sentence) => board.raise(Cause::WornCord(index), host_ns, sentence),
+                None => board.clear(Cause::WornCord(index), host_ns),
+            }
+        });
+        judged.flatten().collect()
     }
 
     /// What the journal says of itself; `None` when all is well.

@@ -7,7 +7,7 @@ use crate::feed::message::{Event, LinkNow, ReleasedNow, Snapshot};
 use crate::live::{JournalNow, LaunchSeen, Phase};
 
 use super::view::ViewState;
-use super::words::{Freshness, Reading, against_limit, against_window, bytes};
+use super::words::{Freshness, Reading, against_limit, against_window, bytes, limit_words};
 
 /// "Released now": speed against the window, peak g against the limit; from rest on, what the launch gave.
 pub fn released_now(view: &ViewState, width: u16) -> (&'static str, Vec<Line<'static>>) {
@@ -49,7 +49,7 @@ fn forecast(view: &ViewState, snapshot: &Snapshot, now: &ReleasedNow, width: u16
         verdict(window, "IN WINDOW", format!("in {}", percent(now.in_window))),
         Line::styled(format!("peak  {:>5.1} g{old}", now.peak_g), theme.strong()),
         Line::from(format!("      {:.1} to {:.1}", now.peak_g_low, now.peak_g_high)),
-        Line::from(format!("limit {:>5.1} g", hello.limit_peak_g)),
+        Line::from(limit_words(hello.limit_peak_g, hello.proof_limit_g)),
         verdict(limit, "under limit", percent(now.under_limit)),
     ];
     lines.extend(on_the_way(view, snapshot));
@@ -109,7 +109,7 @@ fn launched(view: &ViewState, seen: &LaunchSeen) -> Vec<Line<'static>> {
         Line::from(format!("window {min:.1} to {max:.1}")),
         Line::styled(window, style(window == "IN WINDOW")),
         Line::styled(format!("peak  {:>5.2} g", seen.peak_g), theme.strong()),
-        Line::from(format!("limit {:>5.1} g", hello.limit_peak_g)),
+        Line::from(limit_words(hello.limit_peak_g, hello.proof_limit_g)),
         Line::styled(limit, style(limit == "under limit")),
         Line::styled("first estimate", theme.quiet()),
     ]

@@ -34,6 +34,8 @@ fn hello() -> Hello {
         incline_deg: 6.0,
         limit_tension_n: 900.0,
         limit_peak_g: 10.0,
+        proof_limit_g: None,
+        proof_load: None,
         plan_draw_m: 4.0,
         plan_speed_min_mps: 15.0,
         plan_speed_max_mps: 18.0,

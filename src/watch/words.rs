@@ -86,6 +86,12 @@ pub fn against_window(low: f64, high: f64, min: f64, max: f64) -> &'static str {
     }
 }
 
+/// The g limit, and beside it what the proof load of the airframe allows, where one is recorded.
+pub fn limit_words(limit_g: f64, proof_limit_g: Option<f64>) -> String {
+    let proof = proof_limit_g.map_or_else(String::new, |proof_g| format!(", proof {proof_g:.1} g"));
+    format!("limit {limit_g:>5.1} g{proof}")
+}
+
 /// Where an interval stands against a limit.
 pub fn against_limit(low: f64, high: f64, limit: f64) -> &'static str {
     if high <= limit {
@@ -110,6 +116,13 @@ mod tests {
             assert_eq!(Reading::aged(688.4, age_s).text(0, "N"), "SILENT");
         }
         assert_eq!(Reading::aged(f64::NAN, 0.0).text(0, "N"), "SILENT");
+    }
+
+    #[test]
+    fn the_proof_load_stands_beside_the_limit_and_fits_the_panel() {
+        assert_eq!(limit_words(10.0, None), "limit  10.0 g");
+        assert_eq!(limit_words(10.0, Some(8.0)), "limit  10.0 g, proof 8.0 g");
+        assert!(limit_words(12.5, Some(10.4)).len() <= 28);
     }
 
     #[test]

@@ -62,6 +62,16 @@ pub fn check_service(rig: &Rig, dir: &Path, screen: &Screen) -> Result<bool, Fai
     Ok(is_worn(rig, &service, today))
 }
 
+/// The cords that are to come off by the trials of an archive, a sentence each.
+pub fn worn_cords(rig: &Rig, dir: &Path, screen: &Screen) -> Result<Vec<String>, Failure> {
+    let service = counted(dir, screen)?;
+    let today = today();
+    let mut worn: Vec<String> =
+        rig.details.cord_items.iter().filter_map(|cord| cord.worn(total(cord, &service), today)).collect();
+    worn.extend(service.not_counted.iter().map(|one| format!("not counted: {}: {}", one.path.display(), one.why)));
+    Ok(worn)
+}
+
 fn is_worn(rig: &Rig, service: &CordService, today: Option<Date>) -> bool {
     rig.details.cord_items.iter().any(|cord| !cord.retired(total(cord, service), today).is_empty())
 }

@@ -9,8 +9,6 @@ use std::path::Path;
 use super::super::room::Room;
 use super::super::sealing::SealCommand;
 
-const RIG: &str = include_str!("../../../tools/rehearsal/north-pier.toml");
-
 /// A conductor whose journal is on a staged disk and whose ports are this test.
 struct Pit {
     _dir: tempfile::TempDir,
@@ -24,14 +22,14 @@ struct Pit {
 
 fn pit() -> Pit {
     let dir = tempfile::tempdir().unwrap();
-    let rig = crate::rig::parse(RIG).unwrap();
+    let rig = crate::rig::testing::north_pier();
     let disk = StagedDisk::default();
     let clock: Arc<dyn HostClock> = Arc::new(SystemClock);
     let origin = Origin {
         journal_id: "000001-abc123".to_owned(),
         program_version: "0".to_owned(),
         kernel_boot_id: "boot".to_owned(),
-        rig_text: RIG.to_owned(),
+        rig_text: rig.text.clone(),
         devices: Vec::new(),
     };
     let now_ns = clock.monotonic_ns();
@@ -52,6 +50,7 @@ fn pit() -> Pit {
         recorder,
         links: None,
         sealer,
+        cords: None,
         book: TrialBook::new("000001-abc123".to_owned(), 1, Vec::new()),
         clock,
         on_event: Box::new(|_| {}),
@@ -66,7 +65,7 @@ fn pit() -> Pit {
         openings: FirstOpenings::of(&rig),
         wait_for_ports: false,
     };
-    let inputs = Inputs { live, requests, reports, sealed, shutdown: told };
+    let inputs = Inputs { live, requests, reports, sealed, counted: crossbeam_channel::never(), shutdown: told };
     Pit { _dir: dir, disk, conductor, inputs, journal: to_journal, live: to_live, shutdown }
 }
 

@@ -182,6 +182,29 @@ fn a_cell_without_a_calibration_is_never_taken_for_slack() {
 }
 
 #[test]
+fn a_cord_past_its_limit_and_a_limit_past_its_proof_stand_as_alarms() {
+    use crate::rig::{Served, parse, testing::EVERY_KEY};
+    let every_key = parse(&EVERY_KEY).unwrap();
+    let mut rig = north_pier();
+    // Six cords that retire at 500 cycles and had 12 before; the proof load stands for 60.4 kg / 4.6 kg / 1.25 = 10.50 g.
+    rig.details.cord_items.clone_from(&every_key.details.cord_items);
+    rig.details.proof_load.clone_from(&every_key.details.proof_load);
+    let mut run = Run::of(&rig);
+    assert_eq!(run.live.judge_proof(0), None, "10 g are within what was proven");
+    let served = |cycles| [("7-02".to_owned(), Served { cycles, hours: 1.0 })].into();
+    assert_eq!(run.live.judge_cords(0, &served(487), None), []);
+    let raised = run.live.judge_cords(0, &served(488), None);
+    let [Happening::Alarm { sentence, .. }] = &raised[..] else { panic!("{raised:?}") };
+    assert_eq!(sentence, "cord 7-02 (main 2) is to come off: 500 cycles, retired at 500");
+    assert_eq!(run.live.judge_cords(1, &served(489), None), [], "it stands already");
+    let day = Some("2033-05-04".parse().unwrap());
+    assert_eq!(run.live.judge_cords(2, &served(488), day).len(), 5, "the last day of all the others");
+    rig.limits.peak_g = 11.0;
+    let over = format!("{:?}", Run::of(&rig).live.judge_proof(0));
+    assert!(over.contains("the peak limit of 11.00 g is above 10.50 g, what the proof load of"), "{over}");
+}
+
+#[test]
 fn more_tension_than_planned_and_than_allowed_each_raise_their_sentence() {
     let mut run = Run::new();
     run.play(&scene(End::Launch, 1.35), 0.0, 14.0, |_| true);
