@@ -40,14 +40,18 @@ pub struct Trail {
 }
 
 impl Trail {
-    /// Mean over the bins within a time; none where fewer than half of them have samples.
+    /// Mean of the samples within a time; none where there is a hole of a third of it or more. A display that gives a few
+    /// values a second is as good as a converter that gives thousands.
     pub fn mean_between(&self, from_ns: i64, to_ns: i64) -> Option<f64> {
         let slots = from_ns.div_euclid(BIN_NS)..to_ns.div_euclid(BIN_NS);
-        let wanted = usize::try_from(slots.end.saturating_sub(slots.start)).unwrap_or(0);
-        let bins = self.bins.iter().filter(|bin| slots.contains(&bin.slot));
-        let (sum, n, n_bins) =
-            bins.fold((0.0, 0.0, 0), |(sum, n, bins), bin| (sum + bin.value_sum, n + f64::from(bin.n), bins + 1));
-        (2 * n_bins >= wanted && n > 0.0).then(|| sum / n)
+        let (mut sum, mut n, mut longest, mut last) = (0.0, 0.0, 0, slots.start);
+        for bin in self.bins.iter().filter(|bin| slots.contains(&bin.slot)) {
+            (sum, n) = (sum + bin.value_sum, n + f64::from(bin.n));
+            longest = longest.max(bin.slot.saturating_sub(last));
+            last = bin.slot;
+        }
+        longest = longest.max(slots.end.saturating_sub(last));
+        (3 * longest < slots.end.saturating_sub(slots.start) && n > 0.0).then(|| sum / n)
     }
 
     /// Takes one finite sample; others are the caller's to refuse.
@@ -114,6 +118,20 @@ mod tests {
             let slope = trail.slope_per_s(window_ms * MS).unwrap();
             assert!((slope - 2.5).abs() < 1e-6, "{slope} over {window_ms} ms");
         }
+    }
+
+    #[test]
+    fn a_slow_display_has_a_mean_and_a_hole_has_none() {
+        let shown = |times_ms: &[i64]| {
+            let mut trail = Trail::default();
+            times_ms.iter().for_each(|ms| trail.push(ms * MS, *ms as f64));
+            trail.mean_between(1000 * MS, 2000 * MS)
+        };
+        assert_eq!(shown(&[1000, 1200, 1400, 1600, 1800]), Some(1400.0));
+        assert_eq!(shown(&[1000, 1200, 1400, 1800]), None, "0.4 s are missing");
+        assert_eq!(shown(&[1400, 1600, 1800]), None, "its beginning is missing");
+        assert_eq!(shown(&[1000, 1200, 1400]), None, "its end is missing");
+        assert_eq!(shown(&[]), None);
     }
 
     #[test]

@@ -27,8 +27,9 @@ pub(super) fn take(sheet: &Sheet, plan: &Path, to: &Path, socket: &Path, screen:
     let steps = steps(plan)?;
     // Refused now rather than after the first load.
     drop(FeedClient::connect(socket)?);
-    let opened = OpenOptions::new().write(true).create_new(true).open(to);
-    let mut file = opened.map_err(|error| format!("{}: {error}; readings are never overwritten", to.display()))?;
+    if to.exists() {
+        return Err(format!("{} is there already; readings are never overwritten", to.display()).into());
+    }
     let mut lines = std::io::stdin().lock().lines();
     let rule =
         SettlingRule { span_s: SPAN_S, still_counts: STILL_SHARE * (sheet.counts_range.1 - sheet.counts_range.0) };
@@ -36,9 +37,12 @@ pub(super) fn take(sheet: &Sheet, plan: &Path, to: &Path, socket: &Path, screen:
     for (index, step) in steps.iter().enumerate() {
         screen.line(format!("step {} of {}: {}; then Enter", index + 1, steps.len(), instruction(sheet.kind, step)));
         if lines.next().transpose()?.is_none() {
-            return Err(
-                format!("the input ended after {index} of {} steps; {} holds them", steps.len(), to.display()).into()
-            );
+            return Err(format!(
+                "the input ended after {index} of {} steps; {} holds those that were read",
+                steps.len(),
+                to.display()
+            )
+            .into());
         }
         if let Some(held_s) = step.held_s.filter(|_| step.direction == "creep") {
             screen.line(format!("  held for {held_s:.0} s"));
@@ -55,15 +59,22 @@ pub(super) fn take(sheet: &Sheet, plan: &Path, to: &Path, socket: &Path, screen:
             n: Some(settled.n as f64),
             ..step.clone()
         });
-        let csv = calibration::readings_to_csv(&taken);
-        let new = if index == 0 { csv.as_str() } else { csv.lines().last().unwrap_or_default() };
-        file.write_all(new.as_bytes())?;
-        if index > 0 {
-            file.write_all(b"\n")?;
-        }
-        file.sync_data()?;
+        keep(to, &taken).map_err(|error| format!("{}: {error}", to.display()))?;
     }
     Ok(())
+}
+
+/// Puts the newest reading on the disk; the first makes the file, so that a run without one leaves nothing behind.
+fn keep(to: &Path, taken: &[SheetReading]) -> std::io::Result<()> {
+    let csv = calibration::readings_to_csv(taken);
+    let mut options = OpenOptions::new();
+    let (options, new) = match taken.len() {
+        1 => (options.write(true).create_new(true), csv.clone()),
+        _ => (options.append(true), format!("{}\n", csv.lines().last().unwrap_or_default())),
+    };
+    let mut file = options.open(to)?;
+    file.write_all(new.as_bytes())?;
+    file.sync_data()
 }
 
 /// The steps of a plan: a table whose counts are still to come.
