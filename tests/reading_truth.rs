@@ -186,10 +186,27 @@ fn gates_recorder_and_camera_agree_with_the_sensors_or_are_told() {
 
 #[test]
 fn work_of_the_winch_back_is_the_line_s() {
-    let trial = play(&nominal(2), &rehearsal_rig());
+    let mut trial = play(&nominal(2), &rehearsal_rig());
     let reading = read(&trial.signals, &rehearsal_rig());
     let error = value(&reading, "winch_back_work") / trial.winch_work_j - 1.0;
     assert!(error.abs() < 0.004, "{error}");
+
+    // A zero that moves by 4 N over the trial: where it was meanwhile nobody knows (rectangular, JCGM 100:2008, 4.3.7), over
+    // some 4 m of draw.
+    let shift_j = |reading: &Reading| {
+        let row = reading.result("winch_back_work").unwrap();
+        let share = row.budget.iter().find(|part| part.source.starts_with("shift of the line's zero"));
+        (share.map_or(0.0, |part| part.standard_uncertainty), row.standard_uncertainty)
+    };
+    let (before_j, whole_before_j) = shift_j(&reading);
+    let line = trial.signals.iter_mut().find(|signal| signal.name == "line").unwrap();
+    let (from_s, to_s) = (line.time_s[0], *line.time_s.last().unwrap());
+    for (time_s, value) in line.time_s.iter().zip(&mut line.value) {
+        *value += 4.0 * (time_s - from_s) / (to_s - from_s);
+    }
+    let (found_j, whole_j) = shift_j(&read(&trial.signals, &rehearsal_rig()));
+    assert!((found_j - 4.0 * 4.0 / 12f64.sqrt()).abs() < 0.1 * found_j, "{found_j} J, {before_j} J without");
+    assert!(whole_j > whole_before_j + 0.3 * found_j, "{whole_j} J, {whole_before_j} J without");
 }
 
 fn replayed(options: &Options) -> (VirtualTrial, Reading, Replay) {

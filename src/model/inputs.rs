@@ -2,6 +2,7 @@
 
 use super::error::ModelError;
 use super::from_rig::hold_pull_band_n;
+use super::relaxation::standing_uncertainties;
 use super::setup::LaunchSetup;
 use crate::estimation::Cholesky;
 use crate::rig::{Given, Rig};
@@ -152,15 +153,24 @@ fn bodies(rig: &Rig, add: &mut Add) {
 }
 
 fn sources(rig: &Rig, known: Known, add: &mut Add) {
-    let groups = rig.details.more_cords.iter().map(|group| &group.cords);
-    let sets = Some(&rig.cords).filter(|cords| cords.count > 0).into_iter().chain(groups);
+    let groups = rig.details.more_cords.iter().map(|group| (&group.cords, &group.details));
+    let sets = Some((&rig.cords, &rig.details.cords)).filter(|(cords, _)| cords.count > 0).into_iter().chain(groups);
     let mut cord_mass_kg = 0.0;
-    for (set, cords) in sets.enumerate() {
+    for (set, (cords, details)) in sets.enumerate() {
         let u = cords.force_relative_uncertainty;
-        let name = if set == 0 { "cords.force".to_owned() } else { format!("more_cords[{}].force", set - 1) };
+        let table = if set == 0 { "cords".to_owned() } else { format!("more_cords[{}]", set - 1) };
+        let name = |key: &str| format!("{table}.{key}");
         match known {
-            Known::Plan => add(&name, "cord force", "relative", u, What::CordForce { set }),
-            Known::HoldTension { .. } => add(&name, "shape of the cord curve", "relative", u, What::CordShape { set }),
+            Known::Plan => {
+                let (by_kelvin, by_cycles) = standing_uncertainties(details);
+                let what = What::CordForce { set };
+                add(&name("force"), "cord force", "relative", u, what);
+                add(&name("tension_per_kelvin"), "cord force by temperature", "relative", by_kelvin, what);
+                add(&name("cycles"), "cord force by cycles", "relative", by_cycles, what);
+            }
+            Known::HoldTension { .. } => {
+                add(&name("force"), "shape of the cord curve", "relative", u, What::CordShape { set });
+            }
         }
         cord_mass_kg += f64::from(cords.count) * cords.mass_kg * cords.travel_ratio.powi(2);
     }

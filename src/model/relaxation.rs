@@ -18,9 +18,23 @@ pub fn held_part(terms: &[RelaxationTerm], winch_s: f64, hold_s: f64) -> f64 {
 
 /// Factor on every tension for temperature and cycles: linear in kelvin, even in the logarithm of the cycles.
 pub fn standing_factor(details: &CordDetails) -> f64 {
-    let warmer_k = details.temperature_c.zip(details.card_temperature_c).map_or(0.0, |(now, then)| now - then);
-    let tenfolds = details.cycles.max(1.0).log10();
+    let (warmer_k, tenfolds) = circumstances(details);
     (1.0 + details.tension_per_kelvin * warmer_k) * (1.0 - details.loss_per_tenfold_cycles * tenfolds)
+}
+
+/// Relative standard uncertainties of that factor from the card's own: of its temperature factor, of its loss by cycles.
+pub fn standing_uncertainties(details: &CordDetails) -> (f64, f64) {
+    let (warmer_k, tenfolds) = circumstances(details);
+    details.card.as_ref().map_or((0.0, 0.0), |card| {
+        let (by_kelvin, by_cycles) = (card.tension_per_kelvin_uncertainty, card.loss_per_tenfold_cycles_uncertainty);
+        (by_kelvin * warmer_k.abs(), by_cycles * tenfolds)
+    })
+}
+
+/// Kelvin above the card's temperature, tenfolds of cycles since the card's.
+fn circumstances(details: &CordDetails) -> (f64, f64) {
+    let warmer_k = details.temperature_c.zip(details.card_temperature_c).map_or(0.0, |(now, then)| now - then);
+    (warmer_k, details.cycles.max(1.0).log10())
 }
 
 #[cfg(test)]

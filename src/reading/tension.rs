@@ -67,7 +67,7 @@ pub(super) fn report(
     }
     holes(sensors, phases, book);
     hold.x_m = draw_rows(sensors, phases, rig, book);
-    hold.work_j = work_row(sensors, phases, release, book);
+    hold.work_j = work_row(sensors, phases, release, rig, book);
     hold
 }
 
@@ -222,8 +222,14 @@ fn draw_rows(sensors: &Sensors<'_>, phases: &Phases, rig: &Rig, book: &mut Book)
 }
 
 /// ∫ T dx of the release line over the winch-back, in 10 ms means.
-fn work_row(sensors: &Sensors<'_>, phases: &Phases, release: Option<&Release>, book: &mut Book) -> Option<(f64, f64)> {
-    let found = winch_back_work(sensors, phases, release);
+fn work_row(
+    sensors: &Sensors<'_>,
+    phases: &Phases,
+    release: Option<&Release>,
+    rig: &Rig,
+    book: &mut Book,
+) -> Option<(f64, f64)> {
+    let found = winch_back_work(sensors, phases, release, rig.plan.slack_tension_n);
     match found {
         Ok((work_j, budget)) => {
             let u_j = budget.total();
@@ -243,7 +249,12 @@ fn work_row(sensors: &Sensors<'_>, phases: &Phases, release: Option<&Release>, b
     }
 }
 
-fn winch_back_work(sensors: &Sensors<'_>, phases: &Phases, release: Option<&Release>) -> Result<(f64, Budget), String> {
+fn winch_back_work(
+    sensors: &Sensors<'_>,
+    phases: &Phases,
+    release: Option<&Release>,
+    slack_n: f64,
+) -> Result<(f64, Budget), String> {
     let line = sensors.line.ok_or_else(|| sensors.why_not(Role::ReleaseLineTension))?;
     let position = sensors.position.ok_or_else(|| sensors.why_not(Role::ShuttlePosition))?;
     let from_s = phases.loaded_from_s.ok_or("the tension never rose above slack")?;
@@ -277,6 +288,7 @@ fn winch_back_work(sensors: &Sensors<'_>, phases: &Phases, release: Option<&Rele
     let budget = Budget::default()
         .with("calibration of the line's scale", work_j * line.scale_relative_uncertainty)
         .with("zero of the line", travel_m * u_zero_n)
+        .with("shift of the line's zero over the trial", travel_m * zero_shift_uncertainty_n(line, slack_n))
         .with("scale of the encoder", work_j * position.scale_relative_uncertainty)
         .with("gaps", gaps_j);
     Ok((work_j, budget))

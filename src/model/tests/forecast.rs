@@ -5,13 +5,8 @@ use super::super::{
     planned_line_tension_n, solve, sweep,
 };
 use super::assert_close;
-use crate::rig::{self, Correlation, Rig};
-
-const NORTH_PIER: &str = include_str!("../../../tools/rehearsal/north-pier.toml");
-
-fn north_pier() -> Rig {
-    rig::parse(NORTH_PIER).unwrap()
-}
+use crate::rig::testing::{EVERY_KEY, NORTH_PIER, north_pier};
+use crate::rig::{self, Correlation};
 
 fn options(draws: u32) -> ForecastOptions {
     ForecastOptions { known: Known::Plan, draws, seed: 1, threads: 2 }
@@ -120,7 +115,7 @@ fn bands_hold_the_best_course() {
 
 #[test]
 fn the_rig_of_every_key_can_be_forecast() {
-    let rig = rig::parse(include_str!("../../../tools/rehearsal/every-key.toml")).unwrap();
+    let rig = rig::parse(&EVERY_KEY).unwrap();
     let made = forecast(&rig, options(100)).unwrap();
     assert!(made.inputs.all.len() == 20, "{:?}", made.inputs.all);
     let gas = made.energy.iter().find(|entry| entry.name == "from gas").unwrap();
@@ -152,7 +147,7 @@ fn the_filtered_peak_of_a_draw_is_what_filtering_that_draw_gives() {
     use super::super::{Inputs, LaunchSetup};
     use crate::estimation::Random;
     // South-mole's peak lies at release in some draws and where its gas has come up in others: there the ratio has a kink.
-    for (text, relative) in [(NORTH_PIER, 2e-4), (include_str!("../../../tools/rehearsal/every-key.toml"), 1e-2)] {
+    for (text, relative) in [(&NORTH_PIER, 2e-4), (&EVERY_KEY, 1e-2)] {
         let rig = rig::parse(text).unwrap();
         let setup = LaunchSetup::planned(&rig).unwrap();
         let inputs = Inputs::of(&rig, Known::Plan).unwrap();
@@ -169,10 +164,39 @@ fn the_filtered_peak_of_a_draw_is_what_filtering_that_draw_gives() {
 #[test]
 fn the_fast_way_is_good_to_a_hundred_thousandth() {
     use super::super::{FAST, launch_answers};
-    for text in [NORTH_PIER, include_str!("../../../tools/rehearsal/every-key.toml")] {
+    for text in [&NORTH_PIER, &EVERY_KEY] {
         let exact = LaunchSetup::planned(&rig::parse(text).unwrap()).unwrap();
         let fast = LaunchSetup { relative_tolerance: FAST, ..exact.clone() };
         let speed = |setup: &LaunchSetup| launch_answers(setup).unwrap().separation.unwrap().launch_speed_mps;
         assert_close("speed", speed(&fast), speed(&exact), 1e-5, 0.0);
     }
+}
+
+#[test]
+fn a_cards_factors_are_as_uncertain_as_the_day_is_far_from_it() {
+    use super::super::Inputs;
+    let text = "kind = \"cord card\"\nlot = \"7\"\nperson = \"p\"\ndate = \"2031-05-04\"\nserials = [\"7-01\"]\nfree_length = \"2.7 m\"\n\
+                mass = \"0.35 kg\"\ntested_to = \"150 %\"\nbranch_gap_width = \"6 %\"\ncurve_temperature = \"20 degC\"\n\
+                tension_per_kelvin = \"-0.3 %\"\ntension_per_kelvin_uncertainty = \"0.1 %\"\n\
+                tension_loss_per_tenfold_cycles = \"2 %\"\ntension_loss_per_tenfold_cycles_uncertainty = \"0.5 %\"\ncurve_cycle = 4\n\
+                curve = [{ elongation = \"0 %\", tension = \"0 N\" }, { elongation = \"150 %\", tension = \"100 N\" }]\n\
+                loading_curve = [{ elongation = \"0 %\", tension = \"0 N\" }, { elongation = \"150 %\", tension = \"110 N\" }]\n\
+                [uncertainty]\nmean = \"1 %\"\nbetween_cords = \"2 %\"\nturning_point = \"1 %\"\n";
+    let cords =
+        "[cords]\ncount = 6\ntravel_ratio = 1.0\ncard = \"card.toml\"\ntemperature = \"10 degC\"\ncycles = 400\n\n";
+    let (before, after) = NORTH_PIER.split_once("[cords]").unwrap();
+    let own = format!("{before}{cords}[losses]{}", after.split_once("[losses]").unwrap().1);
+    let card = rig::Attached { name: "card.toml".into(), text: text.into() };
+    let (own, mut attached) = rig::take_apart(&own);
+    attached.push(card);
+    let rig = rig::parse(&rig::join(own, &attached)).unwrap();
+    let u = |known, name: &str| {
+        let inputs = Inputs::of(&rig, known).unwrap();
+        inputs.all.iter().find(|input| input.name == name).map(|input| input.standard_uncertainty)
+    };
+    // Ten kelvin below the card's 20 degC; two tenfolds of cycles over the card's fourth.
+    assert_close("kelvin", u(Known::Plan, "cords.tension_per_kelvin").unwrap(), 0.01, 1e-12, 0.0);
+    assert_close("cycles", u(Known::Plan, "cords.cycles").unwrap(), 0.01, 1e-12, 0.0);
+    let held = Known::HoldTension { tension_n: 500.0, x_m: 0.0 };
+    assert_eq!(u(held, "cords.cycles"), None, "a measured pull knows its day");
 }
