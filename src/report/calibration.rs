@@ -4,7 +4,7 @@ use crate::calibration::accelerometer::AccelerometerCalibration;
 use crate::calibration::cell::{CellCalibration, Direction, Point};
 use crate::calibration::encoder::EncoderCalibration;
 use crate::rig::{Coefficients, Sheet};
-use crate::units::significant;
+use crate::units::{brief, significant};
 
 use super::decimate::Run;
 use super::html::{CAUTION, document, escaped, figures_of, section};
@@ -40,7 +40,7 @@ pub fn encoder_page(sheet: &Sheet, calibration: &EncoderCalibration) -> Result<S
         format!("{} mm, u = {} mm", significant(1e3 * value, 3), significant(1e3 * u, 2))
     });
     rows.push(vec!["backlash".into(), backlash]);
-    rows.push(vec!["linearity".into(), format!("{} mm", significant(1e3 * calibration.linearity_m, 3))]);
+    rows.push(vec!["linearity".into(), format!("{:.3} mm", 1e3 * calibration.linearity_m)]);
     body.push_str(&section("Figures", &table(&rows)));
     Ok(page(sheet, &body))
 }
@@ -64,7 +64,7 @@ pub fn accelerometer_page(sheet: &Sheet, calibration: &AccelerometerCalibration)
 }
 
 fn page(sheet: &Sheet, body: &str) -> String {
-    let heading = format!("Calibration of {} {}", sheet.kind.word(), sheet.channel);
+    let heading = format!("Calibration of channel {} ({})", sheet.channel, sheet.kind.word());
     let invented = if sheet.invented { "<p class=\"invented\">All data on this page are invented</p>\n" } else { "" };
     let facts =
         format!("{} · calibrated {} by {} · valid until {}", sheet.sensor, sheet.date, sheet.person, sheet.valid_until);
@@ -100,15 +100,15 @@ fn values(sheet: &Sheet, coefficients: &Coefficients, (low, high): (f64, f64)) -
         vec![
             "zero".into(),
             format!(
-                "{:.2} counts, u = {} {unit}",
-                coefficients.zero_counts,
+                "{} counts, u = {} {unit}",
+                brief(coefficients.zero_counts, 8),
                 significant(coefficients.zero_uncertainty, 2)
             ),
         ],
         vec![format!("{unit} for each power of counts"), terms.join(", ")],
         vec!["scale".into(), format!("u = {} %", significant(100.0 * coefficients.scale_relative_uncertainty, 2))],
         vec!["drift in a year".into(), format!("u = {} %", significant(100.0 * sheet.drift_relative_per_year, 2))],
-        vec!["tested range".into(), format!("{} to {} {unit}", significant(low, 5), significant(high, 5))],
+        vec!["tested range".into(), format!("{} to {} {unit}", brief(low, 5), brief(high, 5))],
     ]
 }
 
@@ -128,15 +128,20 @@ fn cell_figures(sheet: &Sheet, calibration: &CellCalibration) -> Vec<Vec<String>
 }
 
 fn cell_uncertainty(calibration: &CellCalibration) -> Vec<Vec<String>> {
+    // A share that is nothing at every load would only take the room of the others.
+    let n_shares = calibration.steps.first().map_or(0, |step| step.shares.len());
+    let counts =
+        |share: &usize| calibration.steps.iter().any(|step| step.shares[*share].component.standard_uncertainty > 0.0);
+    let shown: Vec<usize> = (0..n_shares).filter(counts).collect();
     let mut header = vec!["force, N".to_owned(), "u, N".to_owned(), "95 %, N".to_owned()];
     if let Some(step) = calibration.steps.first() {
-        header.extend(step.shares.iter().map(|share| share.source.to_owned()));
+        header.extend(shown.iter().map(|share| step.shares[*share].source.to_owned()));
     }
     let mut rows = vec![header];
     for step in &calibration.steps {
         let mut row =
             vec![format!("{:.2}", step.force_n), significant(step.standard_n, 2), significant(step.expanded_n, 2)];
-        row.extend(step.shares.iter().map(|share| significant(share.component.standard_uncertainty, 2)));
+        row.extend(shown.iter().map(|share| significant(step.shares[*share].component.standard_uncertainty, 2)));
         rows.push(row);
     }
     rows
@@ -256,12 +261,13 @@ fn fit_ranges(picture: &mut Picture) {
     picture.y_range = (-1.1 * y, 1.1 * y);
     let lines = picture.lines.iter().flat_map(|line| line.runs.iter().flatten());
     let worst = lines.map(|point| point.1.abs()).fold(0.0, f64::max);
+    let unit = |label: &str| label.rsplit(", ").next().unwrap_or_default().to_owned();
     picture.alternative = format!(
-        "{}: at most {} ({}) up to {} ({})",
-        picture.title,
+        "at most {} {} off the curve, from {} to {} {}",
         significant(worst, 3),
-        picture.y_label,
-        significant(x, 4),
-        picture.x_label
+        unit(&picture.y_label),
+        brief(least, 4),
+        brief(x, 4),
+        unit(&picture.x_label)
     );
 }

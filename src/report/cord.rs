@@ -85,7 +85,8 @@ fn read_on(sheet: &CordSheet, which: CordBranch) -> impl Iterator<Item = (f64, f
 fn branches(sheet: &CordSheet, made: &Characterised) -> Option<Picture> {
     let (loading, unloading) = (&made.loading, &made.unloading);
     let read = || read_on(sheet, CordBranch::Load).chain(read_on(sheet, CordBranch::Unload));
-    let most_n = read().map(|point| point.1).fold(loading.law.tension_n(made.tested_to), f64::max) * 1.06;
+    let end = loading.band(made.tested_to);
+    let most_n = read().map(|point| point.1).fold(end.tension_n + end.one_cord.expanded(0.95), f64::max) * 1.02;
     let furthest = read().map(|point| point.0).fold(100.0 * made.tested_to, f64::max) * 1.02;
     let size = (0.004 * furthest, 0.009 * most_n);
     let (lost_j, u_j) = made.hysteresis_j;
@@ -186,7 +187,7 @@ fn relaxation(made: &Characterised) -> Option<Picture> {
     Some(Picture {
         title: "Tension left while held".into(),
         alternative: format!(
-            "{least:.2} % are left after {:.0} s, by {} Prony terms; the readings lie {:.3} % about it",
+            "{least:.2} % are left after {:.0} s, by {} of Prony's terms; the readings lie {:.3} % about it",
             found.longest_s,
             found.terms.len(),
             100.0 * found.relative_rms
@@ -232,7 +233,9 @@ fn numbers(made: &Characterised) -> String {
         for (term, u) in found.terms.iter().zip(&found.share_uncertainties) {
             rows.push(row("relaxes", format!("{}, u = {}, in {:.1} s", share(term.share), share(*u), term.time_s)));
         }
-        rows.push(row("taken off as the cell's own creep", share(found.cell_creep_removed)));
+        let removed = found.cell_creep_removed;
+        let said = if removed == 0.0 { "nothing, none is given".to_owned() } else { share(removed) };
+        rows.push(row("taken off as the cell's own creep", said));
     }
     for creep in &made.creep {
         let text = format!(
