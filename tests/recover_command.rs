@@ -22,7 +22,7 @@ fn sound(dir: &Path) {
 }
 
 fn of_a_later_format() -> Vec<u8> {
-    let mut open = opening(RIG_TEXT);
+    let mut open = opening(&RIG_TEXT);
     open.format_version = 99;
     let mut bytes = Vec::new();
     let body = Body::SegmentOpen(Box::new(open));

@@ -107,7 +107,7 @@ mod tests {
 
     #[test]
     fn a_queue_that_filled_is_an_alarm_with_its_time_until_it_was_low_for_a_while() {
-        let rig = crate::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap();
+        let rig = crate::rig::testing::north_pier();
         let mut live = Live::new(&rig);
         let mut told = |host_ns, queue_high_water| {
             let slow = slow(&RecorderNow { queue_high_water, ..RecorderNow::default() });
