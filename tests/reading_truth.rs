@@ -185,6 +185,27 @@ fn gates_recorder_and_camera_agree_with_the_sensors_or_are_told() {
 }
 
 #[test]
+fn the_cords_impulse_weighs_the_payload_and_finds_a_wrong_one() {
+    let rig = rehearsal_rig();
+    let told = |reading: &Reading| reading.findings.iter().any(|finding| finding.contains("weigh the payload"));
+    for seed in 1..=3 {
+        let trial = play(&nominal(seed), &rig);
+        let reading = read(&trial.signals, &rig);
+        let row = reading.result("moving_mass_by_impulse").unwrap();
+        println!("seed {seed}: {:.3} ± {:.3} kg", row.value, row.standard_uncertainty);
+        assert!((row.low..=row.high).contains(&rig.moving_mass_kg()) && !told(&reading), "seed {seed}: {row:?}");
+        let heavier = play(&Options { scenario: "misrigged-mass".to_owned(), ..nominal(seed) }, &rig);
+        let reading = read(&heavier.signals, &rig);
+        let row = reading.result("moving_mass_by_impulse").unwrap();
+        println!("seed {seed}, 0.9 kg more: {:.3} ± {:.3} kg", row.value, row.standard_uncertainty);
+        assert!(told(&reading), "seed {seed}: {row:?}: {:?}", reading.findings);
+        let kept_back = reading.absence("kinetic_energy").unwrap();
+        assert!(kept_back.reason.contains("masses of the rig file are in doubt"), "{kept_back:?}");
+        assert!(reading.result("launch_speed").is_some(), "{:?}", reading.absence("launch_speed"));
+    }
+}
+
+#[test]
 fn work_of_the_winch_back_is_the_line_s() {
     let mut trial = play(&nominal(2), &rehearsal_rig());
     let reading = read(&trial.signals, &rehearsal_rig());

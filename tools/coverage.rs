@@ -52,6 +52,9 @@ fn rig_for(scenario: &Scenario) -> Rig {
             damping_n_per_mps: feet.damping_n_s_per_m,
         });
     }
+    if scenario.name == "gas-launcher" {
+        rig.cords.count = 0;
+    }
     let dummy = scenario.launcher.payload.filter(|_| scenario.name.starts_with("stage"));
     if let Some(payload) = dummy {
         rig.payload.mass_kg.value = payload.mass_kg;

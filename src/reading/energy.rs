@@ -18,16 +18,19 @@ const INERTIA_SHARE: f64 = 0.3;
 
 pub(super) fn report(
     hold: &Hold,
-    separation: Option<&Separation>,
+    separation: Result<&Separation, &str>,
     gravity_along_mps2: f64,
     rig: &Rig,
     book: &mut Book,
 ) -> Option<EnergyAudit> {
-    let Some(separation) = separation else {
-        for name in ["kinetic_energy", "potential_energy", "energy_lost", "energy_share_kinetic"] {
-            book.absent(name, "no separation was found");
+    let separation = match separation {
+        Ok(separation) => separation,
+        Err(reason) => {
+            for name in ["kinetic_energy", "potential_energy", "energy_lost", "energy_share_kinetic"] {
+                book.absent(name, reason);
+            }
+            return None;
         }
-        return None;
     };
     let mass_kg = rig.moving_mass_kg();
     let u_mass_kg = rig.shuttle.mass_kg.standard_uncertainty.hypot(rig.payload.mass_kg.standard_uncertainty);

@@ -9,10 +9,12 @@ use super::beside::{Beside, EdgeSeen};
 use super::cords;
 use super::dynamics::RailModel;
 use super::energy;
+use super::impulse;
 use super::launch::{self, Separation};
 use super::motion::{self, Setting, Track};
 use super::others;
 use super::outcome::{self, Evidence};
+use super::overspeed;
 use super::peak;
 use super::phases::Phases;
 use super::release::{self, Release};
@@ -73,6 +75,10 @@ fn read_whole(signals: &[Signal], beside: &Beside, rig: &Rig, mut book: Book) ->
     let hold = tension::report(&sensors, &phases, release.as_ref(), rig, &mut book);
     let gravity_along_mps2 = gravity_along_mps2(rig);
     cords::report(&sensors, &phases, &hold, gravity_along_mps2, rig, &mut book);
+    // Up to the release an encoder that can't follow a launch is right.
+    if let Some(release) = &release {
+        refuse_lagging_encoder(&mut sensors, release, &mut book);
+    }
     let track = release.as_ref().and_then(|release| smoothed(&sensors, &phases, release, &hold, rig));
     let rows = release.as_ref().map(|release| stroke_rows(&sensors, track.as_ref(), release, &hold, rig, &mut book));
     let stroke = rows.unwrap_or_default();
@@ -80,7 +86,15 @@ fn read_whole(signals: &[Signal], beside: &Beside, rig: &Rig, mut book: Book) ->
     if release.is_none() {
         without_release(rig, &mut book);
     }
-    let energy = energy::report(&hold, separation.as_ref(), gravity_along_mps2, rig, &mut book);
+    let doubt = match (&release, &track, &separation) {
+        (Some(release), Some(track), Some(separation)) => {
+            impulse::report(&sensors, release, track, separation, rig, &mut book)
+        }
+        _ => None,
+    };
+    let launch = separation.as_ref().ok_or("no separation was found");
+    let weighed = launch.and_then(|launch| doubt.map_or(Ok(launch), Err));
+    let energy = energy::report(&hold, weighed, gravity_along_mps2, rig, &mut book);
     if let (Some(release), Some(track)) = (&release, &track) {
         energy::closure(&hold, release, track, rig, &mut book);
         arrest::report(&sensors, track, separation.as_ref(), rig, &mut book);
@@ -289,9 +303,22 @@ fn without_release(rig: &Rig, book: &mut Book) {
     const REASON: &str = "no release was found";
     book.absent("release_time", REASON);
     motion_absent(REASON, rig, book);
-    for name in ["closure_force", "arrest_peak_g", "arrest_distance"] {
+    let rest = ["closure_force", "cord_impulse", "moving_mass_by_impulse", "arrest_peak_g", "arrest_distance"];
+    for name in rest {
         book.absent(name, REASON);
     }
+}
+
+/// Beyond the speed an encoder can follow, its place and speed are plausible and wrong.
+fn refuse_lagging_encoder(sensors: &mut Sensors<'_>, release: &Release, book: &mut Book) {
+    let (Some(position), Some(force)) = (sensors.position, sensors.specific_force) else { return };
+    let Some((beyond_mps, by_mps)) = overspeed::lags_beyond(position, force, release) else { return };
+    let reason = format!(
+        "channel {}: beyond {beyond_mps:.1} m/s it falls behind the accelerometer, by {by_mps:.1} m/s at the end of the stroke: the encoder or its counter loses counts at that speed, so neither its place nor its speed is used from the release on",
+        position.name
+    );
+    book.findings.push(reason.clone());
+    sensors.refuse(Role::ShuttlePosition, reason);
 }
 
 /// After a release the specific force along the rail must rise.

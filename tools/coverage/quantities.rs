@@ -40,6 +40,7 @@ pub fn quantities() -> Vec<Quantity> {
         quantity("cord_force", "N", |t| Some(t.truth.tension.hold_cords_n).filter(|n| *n > 0.0)),
         quantity("draw", "m", |t| Some(t.performance.launcher().zero_mark_x_m - t.truth.tension.hold_x_m)),
         quantity("winch_back_work", "J", |t| Some(t.winch_work_j).filter(|work_j| *work_j > 1.0)),
+        quantity("moving_mass_by_impulse", "kg", |t| Some(t.truth.rig.shuttle_mass_kg + t.truth.rig.payload_mass_kg)),
         quantity("kinetic_energy", "J", kinetic_j),
         quantity("energy_lost", "J", |t| {
             let split = t.truth.energy.as_ref()?.at_separation.as_ref()?;
