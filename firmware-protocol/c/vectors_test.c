@@ -162,7 +162,9 @@ static void check_read(const char *name, uint8_t kind, uint32_t token, uint8_t s
 
 /* A device's own frames, long ones among them, are no requests; the one after them is read. */
 static void check_ignored(void) {
-    static const char *const names[] = {"describe", "block", "block-long-runs", "unknown-kind", "other-version"};
+    static const char *const names[] = {"describe", "block", "block-long-runs", "unknown-kind", "other-version",
+        "two-frames", "two-frames-one-delimiter", "block-with-spare-code", "refused-checksum", "refused-stuffing",
+        "refused-cut-payload", "refused-direction", "refused-cut-request"};
     uint8_t bytes[2 * TT_MAX_FRAME];
     tt_request request;
     size_t i;

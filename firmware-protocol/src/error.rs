@@ -1,6 +1,6 @@
 //! What can be wrong with a frame, on the way out and on the way in.
 
-use crate::{MAX_DECODED_LEN, PROTOCOL_VERSION};
+use crate::{Kind, MAX_DECODED_LEN, PROTOCOL_VERSION};
 
 /// Why a frame could not be written. What is in the buffer then is of no use.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, thiserror::Error)]
@@ -32,10 +32,14 @@ pub enum DecodeError {
     Checksum { found: u32, expected: u32 },
     #[error("protocol version {found}, this host speaks {PROTOCOL_VERSION}")]
     Version { found: u8 },
-    #[error("payload of kind {kind:#04x} ends inside its {field}")]
+    #[error("the payload of kind {kind:#04x} ({}) ends inside its {field}", word(*kind))]
     CutShort { kind: u8, field: &'static str },
-    #[error("payload of kind {kind:#04x}: {field} has a value that the protocol does not know")]
+    #[error("kind {kind:#04x} ({}): {field} has a value that the protocol does not know", word(*kind))]
     BadValue { kind: u8, field: &'static str },
+}
+
+fn word(kind: u8) -> &'static str {
+    Kind::from_byte(kind).map_or("header", Kind::word)
 }
 
 impl DecodeError {

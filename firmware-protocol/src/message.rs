@@ -39,6 +39,23 @@ impl Kind {
             _ => return None,
         })
     }
+
+    /// The kind as SPEC.md names it.
+    pub const fn word(self) -> &'static str {
+        match self {
+            Self::Describe => "describe",
+            Self::Block => "block",
+            Self::Edge => "edge",
+            Self::Status => "status",
+            Self::TimeReply => "time reply",
+            Self::Text => "text",
+            Self::DescribeRequest => "describe?",
+            Self::Start => "start",
+            Self::Stop => "stop",
+            Self::TimeRequest => "time request",
+            Self::SetRate => "set rate",
+        }
+    }
 }
 
 /// A message, borrowing what it carries.
@@ -122,8 +139,8 @@ pub struct TimeRequest {
     pub token: u32,
 }
 
-/// The host asks for another rate of one stream. The device answers with a new description (new description id), whether
-/// it could follow or not.
+/// The host asks for another rate of one stream. The device answers with a description: one with a new id, or the old one
+/// where it can't follow.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct SetRate {
     pub stream: u8,
@@ -183,7 +200,11 @@ impl<'a> Message<'a> {
             Kind::Block => Self::Block(Block::read(from)?),
             Kind::Edge => Self::Edge(Edge {
                 input: from.u8("input")?,
-                rising: from.u8("direction")? != 0,
+                rising: match from.u8("direction")? {
+                    0 => false,
+                    1 => true,
+                    _ => return Err(from.bad("direction")),
+                },
                 tick: from.u64("tick")?,
             }),
             Kind::Status => Self::Status(Status::read(from)?),

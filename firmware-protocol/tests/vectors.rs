@@ -7,8 +7,8 @@ use std::path::PathBuf;
 use std::process::Command;
 
 use firmware_protocol::{
-    Block, Channel, Channels, DecodeError, Describe, Edge, Encoding, Frame, Header, MAX_FRAME_LEN, Message, SetRate,
-    Status, Stream, Streams, TimeReply, TimeRequest, decode, encode,
+    Block, Channel, Channels, DecodeError, Deframed, Deframer, Describe, Edge, Encoding, Frame, Header, MAX_COBS_LEN,
+    MAX_FRAME_LEN, Message, SetRate, Status, Stream, Streams, TimeReply, TimeRequest, decode, encode,
 };
 
 const DEVICE: Header = Header { flags: 0, stream: 0, sequence: 0, boot_id: 0x5EED_1234, description_id: 3 };
@@ -217,6 +217,52 @@ fn a_full_run_at_the_end_is_read_with_the_spare_code_too() {
     assert_eq!(decode(&mut cobs[1..]).unwrap().header.sequence, FULL_RUN_SEQUENCE);
 }
 
+/// What a receiver makes of a vector's wire, frame by frame.
+fn received(name: &str) -> Vec<Result<String, DecodeError>> {
+    let wire = bytes_of(name, "frame");
+    let mut deframer = Deframer::new([0; MAX_COBS_LEN]);
+    let (mut bytes, mut heard) = (&wire[..], Vec::new());
+    while let Some(piece) = deframer.next_piece(&mut bytes) {
+        let Deframed::Frame(cobs) = piece else { panic!("{name}: junk") };
+        heard.push(decode(cobs).map(|frame| format!("{:?} {:?}", frame.header, frame.message)));
+    }
+    heard
+}
+
+#[test]
+fn two_frames_are_read_with_one_delimiter_between_them_too() {
+    let (edge, status) = (received("edge"), received("status"));
+    let both = [edge, status].concat();
+    assert_eq!(both.len(), 2);
+    assert_eq!(received("two-frames"), both);
+    assert_eq!(received("two-frames-one-delimiter"), both);
+}
+
+#[test]
+fn the_spare_code_changes_nothing() {
+    assert_eq!(received("block-with-spare-code"), received("block-full-run-at-end"));
+}
+
+const REFUSED: [(&str, &str, &str); 5] = [
+    ("refused-checksum", "checksum mismatch", "checksum 0xe7a3503c, expected 0xe6a3503c"),
+    ("refused-stuffing", "broken byte stuffing", "byte stuffing is broken at byte 24"),
+    ("refused-cut-payload", "payload cut short", "the payload of kind 0x03 (edge) ends inside its tick"),
+    (
+        "refused-direction",
+        "payload value unknown",
+        "kind 0x03 (edge): direction has a value that the protocol does not know",
+    ),
+    ("refused-cut-request", "payload cut short", "the payload of kind 0x84 (time request) ends inside its token"),
+];
+
+#[test]
+fn what_must_be_refused_is_refused_by_kind_and_field() {
+    for (name, reason, sentence) in REFUSED {
+        let [Err(error)] = received(name)[..] else { panic!("{name} is not refused") };
+        assert_eq!((error.reason(), error.to_string().as_str()), (reason, sentence), "{name}");
+    }
+}
+
 #[test]
 fn no_vector_is_left_untested() {
     let mut tested: BTreeSet<_> = written().iter().map(|(name, ..)| format!("{name}.txt")).collect();
@@ -224,6 +270,8 @@ fn no_vector_is_left_untested() {
     tested.insert("describe-with-fields-to-come.txt".to_owned());
     tested.insert("time-request-with-fields-to-come.txt".to_owned());
     tested.insert("other-version.txt".to_owned());
+    let more = ["two-frames", "two-frames-one-delimiter", "block-with-spare-code"];
+    tested.extend(more.into_iter().chain(REFUSED.map(|(name, ..)| name)).map(|name| format!("{name}.txt")));
     let names = fs::read_dir(vectors()).unwrap().map(|entry| entry.unwrap().file_name().into_string().unwrap());
     assert_eq!(names.filter(|name| name.ends_with(".txt")).collect::<BTreeSet<_>>(), tested);
 }

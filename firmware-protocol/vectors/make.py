@@ -85,6 +85,41 @@ def write(name, what, kind, payload, stream=0, sequence=0, boot_id=0, descriptio
     (HERE / f"{name}.txt").write_text("\n".join(lines) + "\n")
 
 
+def write_wire(name, what, decoded, frame):
+    """A file of which the wire is not just the stuffed sequence between two delimiters."""
+    lines = [f"# {line}" for line in what]
+    lines += [f"decoded: {one.hex()}" for one in decoded] + [f"frame: {frame.hex()}"]
+    (HERE / f"{name}.txt").write_text("\n".join(lines) + "\n")
+
+
+def odd_ones(boot, full):
+    """Frames beside the usual: in succession, with a spare code, and those that must be refused."""
+    edge = frame_of(3, struct.pack("<BBQ", 2, 1, 1_000_000), sequence=7, **boot)
+    status = frame_of(4, struct.pack("<QffII", 123_456_789, 21.5, 5.125, 0x7FC00000, 12), sequence=8, **boot)
+    between = {"two-frames": b"\0\0", "two-frames-one-delimiter": b"\0"}
+    for name, delimiters in between.items():
+        what = [f"The edge and the status, with {len(delimiters)} delimiter(s) between them: both are to be read."]
+        write_wire(name, what, [edge, status], b"\0" + cobs(edge) + delimiters + cobs(status) + b"\0")
+    what = ["As block-full-run-at-end, with one more code 01 at its end: the same block."]
+    write_wire("block-with-spare-code", what, [full], b"\0" + cobs(full) + b"\1\0")
+    damaged = edge[:-1] + bytes([edge[-1] ^ 1])
+    write_wire("refused-checksum", ["The edge, one bit of its checksum damaged."], [damaged], b"\0" + cobs(damaged) + b"\0")
+    stuffed = bytearray(cobs(edge))
+    last = 0
+    while last + stuffed[last] < len(stuffed):
+        last += stuffed[last]
+    stuffed[last] += 1
+    what = ["The edge, its last code one too great: it reaches beyond the end."]
+    write_wire("refused-stuffing", what, [], b"\0" + bytes(stuffed) + b"\0")
+    cut = frame_of(3, struct.pack("<BBQ", 2, 1, 1_000_000)[:-1], sequence=7, **boot)
+    write_wire("refused-cut-payload", ["An edge without the last byte of its tick."], [cut], b"\0" + cobs(cut) + b"\0")
+    odd = frame_of(3, struct.pack("<BBQ", 2, 2, 1_000_000), sequence=7, **boot)
+    write_wire("refused-direction", ["An edge with direction 2."], [odd], b"\0" + cobs(odd) + b"\0")
+    cut = frame_of(0x84, struct.pack("<I", 0xDEADBEEF)[:-1], sequence=3)
+    what = ["From the host: a time request without the last byte of its token."]
+    write_wire("refused-cut-request", what, [cut], b"\0" + cobs(cut) + b"\0")
+
+
 def main():
     assert crc32c(b"123456789") == 0xE3069283  # RFC 3720 B.4's polynomial; the catalogue's check value
     boot = {"boot_id": 0x5EED1234, "description_id": 3}
@@ -146,6 +181,7 @@ def main():
          "0x01010101. The last run is 254 bytes long, checksum included: no code follows it, or one more code 01."],
         2, full[0], sequence=sequence, **full[1],
     )
+    odd_ones(boot, frame_of(2, full[0], sequence=sequence, **full[1]))
     write("edge", ["Input 2 rises at tick 1000000."], 3, struct.pack("<BBQ", 2, 1, 1_000_000), sequence=7, **boot)
     write(
         "status",
