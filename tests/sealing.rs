@@ -84,7 +84,7 @@ fn a_played_launch_reads_as_one() {
     assert!(trial.header().started.starts_with("2026-11-"), "{}", trial.header().started);
     assert_eq!(trial.header().started_quality, "set");
     let kinds: Vec<String> = trial.events().unwrap().into_iter().map(|event| event.kind).collect();
-    assert_eq!(kinds, ["trial", "trial"]);
+    assert_eq!(kinds, ["device", "device", "trial", "trial"]);
     let (map, exchanges) = trial.clock("winch-node").unwrap();
     assert!(!map.is_empty() && exchanges.len() > 10 && map[0].two_way);
     assert!(exchanges.iter().all(|exchange| exchange.residual_ns.abs() < 2e6), "{exchanges:?}");

@@ -172,7 +172,7 @@ fn write_raw(writer: &mut TrialWriter) -> Result<(), TrialError> {
     writer.append_status(device, &status)?;
     writer.append_text_line(device, &TextLine { host_ns: 12, text: "booted\0twice".into() })?;
     for bytes in [vec![1, 2, 3], vec![], vec![255; 4]] {
-        writer.append_rejected(device, &Rejected { host_ns: 13, reason: "checksum", bytes })?;
+        writer.append_rejected(device, &Rejected { host_ns: 13, reason: "checksum", detail: String::new(), bytes })?;
     }
     writer.add_device("shuttle-node")?;
     Ok(())

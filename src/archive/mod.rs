@@ -3,6 +3,7 @@
 //! Guarantees: a trial file is made by sealing a journal range and in no other way; it exists whole or not at all; it is
 //! never replaced. Refuses: to write to a journal, to repair a trial file, to overwrite anything.
 
+mod clock_finding;
 mod cord_service;
 mod derive;
 mod edges;

@@ -3,7 +3,7 @@
 //! What lies before the range is lead-in: it brings the decoders in step and tells the descriptions in force, and
 //! nothing else of it is handed on. Memory: one record and what it decodes to.
 
-use crate::capture::{Captured, DeviceDecoder, DeviceDescription};
+use crate::capture::{Captured, DeviceDecoder, DeviceDescription, N_DESCRIPTIONS};
 use crate::journal::{Body, Clocks, Damage, EventBody, Item, JournalReader, Record, SegmentOpen, TrialRange};
 use crate::link::{DeviceIdx, LinkWhat, Lost};
 
@@ -24,6 +24,8 @@ pub(super) enum Told {
         device: DeviceIdx,
         host_ns: i64,
         n_bytes: u64,
+        /// Frames that the sequence numbers show to be lost, told by this read.
+        n_lost_frames: u64,
     },
     Captured(DeviceIdx, Captured),
     TimeRequested {
@@ -58,8 +60,20 @@ pub(super) enum Told {
 
 struct DevicePlayer {
     decoder: DeviceDecoder,
-    /// The description in force at the range's start, until it was handed on.
-    known: Option<DeviceDescription>,
+    /// The descriptions that blocks may name at the range's start, until they were handed on; the last one is in force.
+    known: Vec<DeviceDescription>,
+    n_lost_frames: u64,
+}
+
+impl DevicePlayer {
+    fn learn(&mut self, description: DeviceDescription) {
+        self.known
+            .retain(|known| known.boot_id == description.boot_id && known.description_id != description.description_id);
+        if self.known.len() == N_DESCRIPTIONS {
+            self.known.remove(0);
+        }
+        self.known.push(description);
+    }
 }
 
 struct Player<'s> {
@@ -98,15 +112,18 @@ impl Player<'_> {
     fn opening(&mut self, host_ns: i64, open: Box<SegmentOpen>) -> Result<(), SealError> {
         while self.devices.len() < open.devices.len() {
             let device = &open.devices[self.devices.len()];
-            let mut decoder = decoder_of(&open.rig_text, &device.name);
-            let mut known = None;
+            let decoder = decoder_of(&open.rig_text, &device.name);
+            let mut player = DevicePlayer { decoder, known: Vec::new(), n_lost_frames: 0 };
+            let mut known = Vec::new();
             // A device that speaks text describes itself by the rig file, without any bytes.
-            decoder.feed(host_ns, &device.describe().unwrap_or_default(), &mut |captured| {
+            player.decoder.feed(host_ns, &device.describe().unwrap_or_default(), &mut |captured| {
                 if let Captured::Description(description) = captured {
-                    known = Some(description);
+                    known.push(description);
                 }
             });
-            self.devices.push(DevicePlayer { decoder, known });
+            known.into_iter().for_each(|description| player.learn(description));
+            player.decoder.start_here();
+            self.devices.push(player);
         }
         (self.tell)(Told::Opening { host_ns, open })
     }
@@ -160,7 +177,8 @@ impl Player<'_> {
             Body::TrialClose(close) => self.trial_event(host_ns, close.person, format!("closed: {}", close.reason)),
             Body::Lost(lost) => (self.tell)(Told::Lost { device, host_ns, lost }),
             Body::Link(LinkWhat::Bytes(bytes)) => {
-                (self.tell)(Told::Read { device, host_ns, n_bytes: bytes.len() as u64 })
+                let n_lost_frames = self.newly_lost(device);
+                (self.tell)(Told::Read { device, host_ns, n_bytes: bytes.len() as u64, n_lost_frames })
             }
             Body::Heartbeat | Body::SegmentOpen(_) | Body::Unknown { .. } => Ok(()),
         }
@@ -185,7 +203,7 @@ impl Player<'_> {
         }
         self.begun = true;
         for (index, device) in self.devices.iter_mut().enumerate() {
-            if let Some(description) = device.known.take() {
+            for description in std::mem::take(&mut device.known) {
                 (self.tell)(Told::Known(DeviceIdx(index as u16), description))?;
             }
         }
@@ -215,13 +233,21 @@ impl Player<'_> {
         for captured in self.heard.drain(..) {
             match captured {
                 captured if within => (self.tell)(Told::Captured(device, captured))?,
-                Captured::Description(description) => {
-                    self.devices[usize::from(device.0)].known = Some(description);
-                }
+                Captured::Description(description) => self.devices[usize::from(device.0)].learn(description),
                 _ => {}
             }
         }
+        if !within {
+            self.newly_lost(device); // before the range
+        }
         Ok(())
+    }
+
+    /// Lost frames since the last call.
+    fn newly_lost(&mut self, device: DeviceIdx) -> u64 {
+        let Some(player) = self.devices.get_mut(usize::from(device.0)) else { return 0 };
+        let lost = player.decoder.counters().lost_frames;
+        lost.saturating_sub(std::mem::replace(&mut player.n_lost_frames, lost))
     }
 
     /// The journal ended with the trial open: what its last reads left unfinished is kept as refused bytes.

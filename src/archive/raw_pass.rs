@@ -1,7 +1,9 @@
 //! First pass over a range: writes what was received as it was received, and gathers clocks and events.
 
 use crate::calibration::Tare;
-use crate::capture::{Captured, ClockPiece, ClockSamples, DeviceDescription, Edge, piece_at};
+use crate::capture::{
+    Captured, ClockPiece, ClockSamples, DeviceDescription, Edge, N_DESCRIPTIONS, NominalClock, Reboot, piece_at,
+};
 use crate::journal::{Damage, SegmentOpen};
 use crate::link::{DeviceIdx, Lost};
 use crate::rig::{Attached, Rig, take_apart};
@@ -9,19 +11,24 @@ use crate::trial::{
     BlockRow, CarriedText, ClockRow, EventRow, ExchangeRow, HostClocksRow, LinkHealth, RawDevice, TextLine, TrialWriter,
 };
 
+use super::clock_finding::broken_tolerance;
 use super::error::SealError;
 use super::player::Told;
 
 /// Events kept of one trial; what is beyond is counted and said.
 const EVENTS_MAX: usize = 100_000;
+/// Findings a device; the events have them all.
+const FINDINGS_MAX: usize = 10;
 
 /// A device after the first pass.
 #[derive(Debug)]
 pub(super) struct DevicePass {
     pub(super) name: String,
     handle: RawDevice,
-    layout: u16,
+    /// Layouts of the descriptions that blocks may name: boot id, description id, layout.
+    layouts: Vec<(u32, u16, u16)>,
     clock: ClockSamples,
+    nominal: Option<NominalClock>,
     /// Edges that become events; as many as there may be events.
     pub(super) edges: Vec<Edge>,
     n_more_edges: u64,
@@ -29,10 +36,36 @@ pub(super) struct DevicePass {
     pub(super) n_missing: u64,
     link: LinkHealth,
     last_read_ns: Option<i64>,
+    /// What a person should look at.
+    pub(super) findings: Vec<String>,
 }
 
 impl DevicePass {
-    fn read(&mut self, host_ns: i64, n_bytes: u64) {
+    fn new(name: &str, handle: RawDevice) -> Self {
+        Self {
+            name: name.to_owned(),
+            handle,
+            layouts: Vec::new(),
+            clock: ClockSamples::default(),
+            nominal: None,
+            edges: Vec::new(),
+            n_more_edges: 0,
+            n_samples: 0,
+            n_missing: 0,
+            link: LinkHealth::default(),
+            last_read_ns: None,
+            findings: Vec::new(),
+        }
+    }
+
+    fn layout(&self, boot_id: u32, description_id: u16) -> u16 {
+        let mut newest_first = self.layouts.iter().rev();
+        let named = newest_first.find(|(boot, id, _)| (*boot, *id) == (boot_id, description_id));
+        named.or(self.layouts.last()).map_or(0, |(.., layout)| *layout)
+    }
+
+    fn read(&mut self, host_ns: i64, n_bytes: u64, n_lost_frames: u64) {
+        self.link.n_lost_frames += n_lost_frames;
         self.link.n_reads += 1;
         self.link.n_bytes += n_bytes;
         let stalled_s = self.last_read_ns.map_or(0.0, |last_ns| seconds_between(last_ns, host_ns));
@@ -130,8 +163,8 @@ impl<'w> RawPass<'w> {
                 boottime_ns: clocks.boottime_ns,
                 realtime_ns: clocks.realtime_ns,
             })?),
-            Told::Read { device, host_ns, n_bytes } => {
-                self.devices[usize::from(device.0)].read(host_ns, n_bytes);
+            Told::Read { device, host_ns, n_bytes, n_lost_frames } => {
+                self.devices[usize::from(device.0)].read(host_ns, n_bytes, n_lost_frames);
                 Ok(())
             }
             other => {
@@ -176,22 +209,7 @@ impl<'w> RawPass<'w> {
     fn opening(&mut self, host_ns: i64, open: SegmentOpen) -> Result<(), SealError> {
         for device in open.devices.iter().skip(self.devices.len()) {
             let handle = self.writer.add_device(&device.name)?;
-            let (name, clock) = (device.name.clone(), ClockSamples::default());
-            let (layout, edges, n_more_edges, n_samples, n_missing) = (0, Vec::new(), 0, 0, 0);
-            let (link, last_read_ns) = (LinkHealth::default(), None);
-            let device = DevicePass {
-                name,
-                handle,
-                layout,
-                clock,
-                edges,
-                n_more_edges,
-                n_samples,
-                n_missing,
-                link,
-                last_read_ns,
-            };
-            self.devices.push(device);
+            self.devices.push(DevicePass::new(&device.name, handle));
         }
         if self.rig_text.as_ref() != Some(&open.rig_text) {
             if self.rig_text.is_some() {
@@ -210,13 +228,41 @@ impl<'w> RawPass<'w> {
     fn describe(&mut self, device: DeviceIdx, description: &DeviceDescription) -> Result<(), SealError> {
         let device = &mut self.devices[usize::from(device.0)];
         device.clock.captured(&Captured::Description(description.clone()));
-        device.layout = self.writer.describe(device.handle, description)?;
+        device.nominal = Some(description.into());
+        let layout = self.writer.describe(device.handle, description)?;
+        let (boot_id, id) = (description.boot_id, description.description_id);
+        device.layouts.retain(|(boot, known, _)| *boot == boot_id && *known != id);
+        if device.layouts.len() == N_DESCRIPTIONS {
+            device.layouts.remove(0);
+        }
+        device.layouts.push((boot_id, id, layout));
         Ok(())
+    }
+
+    /// A description that came within the range is an event as well.
+    fn described(&mut self, device: DeviceIdx, description: &DeviceDescription) -> Result<(), SealError> {
+        let last_ns = self.devices[usize::from(device.0)].last_read_ns.unwrap_or(self.zero_host_ns);
+        let (time_s, name) = (self.time_s(last_ns), self.devices[usize::from(device.0)].name.clone());
+        self.events.add(time_s, "device", &name, None, description.to_string());
+        self.describe(device, description)
+    }
+
+    fn rebooted(&mut self, device: DeviceIdx, reboot: &Reboot) {
+        let time_s = self.time_s(reboot.host_ns);
+        let device = &mut self.devices[usize::from(device.0)];
+        self.events.add(time_s, "device", &device.name, None, reboot.to_string());
+        if device.findings.len() < FINDINGS_MAX {
+            device.findings.push(format!("{} at {time_s:.3} s {reboot}", device.name));
+        }
     }
 
     fn captured(&mut self, device: DeviceIdx, captured: Captured) -> Result<(), SealError> {
         if let Captured::Description(description) = &captured {
-            return self.describe(device, description);
+            return self.described(device, description);
+        }
+        if let Captured::Reboot(reboot) = &captured {
+            self.rebooted(device, reboot);
+            return Ok(());
         }
         let device = &mut self.devices[usize::from(device.0)];
         device.clock.captured(&captured);
@@ -233,7 +279,7 @@ impl<'w> RawPass<'w> {
                     n_samples: block.n_samples,
                     overruns: block.overruns,
                     crc: block.crc,
-                    layout: device.layout,
+                    layout: device.layout(block.boot_id, block.description_id),
                     stream: block.stream,
                 };
                 device.n_samples += u64::from(block.n_samples);
@@ -259,7 +305,7 @@ impl<'w> RawPass<'w> {
                 *device.link.refused.entry(rejected.reason.to_owned()).or_default() += 1;
                 writer.append_rejected(handle, &rejected)?;
             }
-            Captured::TimeReply(_) | Captured::Description(_) => {}
+            Captured::TimeReply(_) | Captured::Description(_) | Captured::Reboot(_) => {}
         }
         Ok(())
     }
@@ -267,8 +313,11 @@ impl<'w> RawPass<'w> {
     /// Fits the clocks, writes them and turns edges into events.
     pub(super) fn finish(mut self) -> Result<Gathered, SealError> {
         let mut clocks = Vec::with_capacity(self.devices.len());
-        for device in &self.devices {
+        for device in &mut self.devices {
             let pieces = device.clock.fit();
+            let nominal = device.nominal;
+            let broken = nominal.and_then(|nominal| broken_tolerance(&device.name, nominal, &device.clock.arrivals));
+            device.findings.extend(broken);
             write_clock(self.writer, device, &pieces)?;
             self.writer.write_link_health(device.handle, &device.link)?;
             for edge in &device.edges {

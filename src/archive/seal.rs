@@ -176,7 +176,8 @@ fn write(reader: &JournalReader, range: &TrialRange, ahead: &Ahead, path: &Path)
             let (devices, clocks) = (&gathered.devices, &gathered.clocks);
             let mut values = ValuePass::new(&mut writer, rig, devices, clocks, header.zero_host_ns, KEPT_SAMPLES_MAX);
             play(reader, range, &mut |told: Told| values.take(&told))?;
-            let for_reading = values.finish(&mut gathered.events);
+            let mut for_reading = values.finish(&mut gathered.events);
+            for_reading.findings.splice(..0, gathered.devices.iter().flat_map(|device| device.findings.clone()));
             conditions(rig).iter().try_for_each(|condition| writer.add_condition(condition))?;
             let edges = edges_seen(&gathered.devices, &gathered.clocks, header.zero_host_ns);
             let beside = Beside { edges, ..Beside::default() };
@@ -254,6 +255,7 @@ fn read(
         events.add(from_s, "seal", "seal", None, text);
     }
     let mut reading = crate::reading::read_beside(&for_reading.signals, &beside, rig);
+    reading.findings.extend_from_slice(&for_reading.findings);
     reading.findings.extend(calibration::doubts(rig, day));
     reading.findings.extend(for_reading.signals.iter().filter_map(|signal| calibration::out_of_range(rig, signal)));
     if let Some(motion) = &reading.motion {

@@ -8,7 +8,9 @@ use std::collections::BTreeMap;
 use std::ops::RangeInclusive;
 
 use crate::calibration::{Sampling, Signal, signal_from_counts, to_value};
-use crate::capture::{Block, Captured, ClockPiece, Counts, DeviceDescription, StreamDescription, piece_at};
+use crate::capture::{
+    Block, Captured, ClockPiece, Counts, DeviceDescription, N_DESCRIPTIONS, StreamDescription, piece_at,
+};
 use crate::link::DeviceIdx;
 use crate::rig::{Channel, Rig};
 use crate::trial::{OpenSignal, TrialWriter};
@@ -48,9 +50,18 @@ struct Route {
     ticks_per_sample: u32,
 }
 
+/// Of one description that blocks may name.
 #[derive(Default)]
 struct DeviceRoutes {
+    boot_id: u32,
+    description_id: u16,
     by_stream: BTreeMap<u8, Vec<Route>>,
+}
+
+impl DeviceRoutes {
+    fn are_of(&self, boot_id: u32, description_id: u16) -> bool {
+        (self.boot_id, self.description_id) == (boot_id, description_id)
+    }
 }
 
 pub(super) struct ValuePass<'a> {
@@ -59,7 +70,8 @@ pub(super) struct ValuePass<'a> {
     devices: &'a [DevicePass],
     clocks: &'a [Vec<ClockPiece>],
     zero_host_ns: i64,
-    routes: Vec<DeviceRoutes>,
+    /// Per device, those of the descriptions of its present boot.
+    routes: Vec<Vec<DeviceRoutes>>,
     signals: Vec<SignalPass>,
     n_kept: usize,
     kept_max: usize,
@@ -73,6 +85,8 @@ pub(super) struct ForReading {
     pub(super) whole_from_s: Option<f64>,
     /// The reading sees the trial from here on, where it was too long to be held whole.
     pub(super) from_s: Option<f64>,
+    /// What has no value, and why.
+    pub(super) findings: Vec<String>,
 }
 
 impl<'a> ValuePass<'a> {
@@ -85,7 +99,7 @@ impl<'a> ValuePass<'a> {
         kept_max: usize,
     ) -> Self {
         let signals = rig.channels.iter().map(|channel| SignalPass::new(channel.clone())).collect();
-        let routes = devices.iter().map(|_| DeviceRoutes::default()).collect();
+        let routes = devices.iter().map(|_| Vec::new()).collect();
         Self { writer, rig, devices, clocks, zero_host_ns, routes, signals, n_kept: 0, kept_max }
     }
 
@@ -104,7 +118,8 @@ impl<'a> ValuePass<'a> {
         let index = usize::from(device.0);
         let name = &self.devices[index].name;
         let u_ns = self.clocks[index].iter().map(|piece| piece.u_ns).fold(0.0, f64::max);
-        let mut routes = DeviceRoutes::default();
+        let (boot_id, description_id) = (description.boot_id, description.description_id);
+        let mut routes = DeviceRoutes { boot_id, description_id, ..DeviceRoutes::default() };
         for stream in &description.streams {
             for (place, described) in stream.channels.iter().enumerate() {
                 let wanted = |channel: &Channel| channel.device == *name && channel.device_channel == described.name;
@@ -121,12 +136,18 @@ impl<'a> ValuePass<'a> {
                 routes.by_stream.entry(stream.stream).or_default().push(route);
             }
         }
-        self.routes[index] = routes;
+        let of_device = &mut self.routes[index];
+        of_device.retain(|known| known.boot_id == boot_id && known.description_id != description_id);
+        if of_device.len() == N_DESCRIPTIONS {
+            of_device.remove(0);
+        }
+        of_device.push(routes);
     }
 
     fn block(&mut self, device: DeviceIdx, block: &Block) -> Result<(), SealError> {
         let index = usize::from(device.0);
-        let Some(routes) = self.routes[index].by_stream.get(&block.stream) else { return Ok(()) };
+        let named = self.routes[index].iter().find(|routes| routes.are_of(block.boot_id, block.description_id));
+        let Some(routes) = named.and_then(|routes| routes.by_stream.get(&block.stream)) else { return Ok(()) };
         let piece = piece_at(&self.clocks[index], block.boot_id, block.first_tick);
         for route in routes {
             let (Some(signal), Some(counts)) = (self.signals.get_mut(route.signal), block.counts.get(route.place))
@@ -171,6 +192,7 @@ impl<'a> ValuePass<'a> {
         for pass in self.signals {
             for (reason, n_samples) in &pass.refused {
                 let text = format!("{n_samples} samples of channel {} have no value: {reason}", pass.channel.name);
+                for_reading.findings.push(text.clone());
                 events.add(seconds_between(self.zero_host_ns, pass.refused_host_ns), "seal", "seal", None, text);
             }
             let Some(kept) = pass.kept else { continue };

@@ -5,15 +5,27 @@
 //! choice. Samples missing by a stream's own indices become a [`Captured::Gap`] before the block that shows it; nothing
 //! is ever filled in. The result depends on the bytes alone, not on how reads cut them (the host times apart).
 //!
-//! Refuses: samples before the description they name (their bytes are kept, and the gap covers them), frames that only a
-//! host sends (a sign that the port echoes), indices that run backward within one boot.
+//! Blocks may be packed by any of the last few descriptions of the present boot, so that firmware may describe a change
+//! before the blocks it has queued are sent. A device that starts again under an old boot id is told apart from its run
+//! before by sequences and ticks, and recorded under an id of its own.
+//!
+//! Refuses: samples whose description has not come (their bytes are kept, and the gap covers them), frames that only a host
+//! sends (a sign that the port echoes), indices that run backward within one boot.
+
+mod boots;
+mod known;
 
 use std::collections::BTreeMap;
 
 use firmware_protocol::{Deframed, Deframer, Frame, Header, MAX_COBS_LEN, Message, decode};
 
+use boots::{Boots, TickSays};
+pub(crate) use known::N_DESCRIPTIONS;
+use known::{KnownDescriptions, stream_of};
+
 use super::sample::{
-    Block, Captured, Counts, DeviceDescription, Edge, Gap, HostNs, Rejected, Status, StreamDescription, TimeReply,
+    Block, Captured, Counts, DeviceDescription, Edge, Gap, HostNs, Reboot, RebootSeen, Rejected, Status,
+    StreamDescription, TimeReply,
 };
 use super::{description, unpack};
 
@@ -28,6 +40,8 @@ pub struct Counters {
     pub refused: BTreeMap<&'static str, u64>,
     /// Frames of kinds this version does not know; skipped.
     pub unknown_kinds: u64,
+    /// Blocks accepted.
+    pub blocks: u64,
     /// Frames that the sequence numbers show to be lost.
     pub lost_frames: u64,
     /// Samples that the indices show to be missing, over all streams.
@@ -47,8 +61,8 @@ pub struct FrameDecoder {
 
 #[derive(Debug, Default)]
 struct State {
-    boot_id: Option<u32>,
-    description: Option<DeviceDescription>,
+    boots: Boots,
+    known: KnownDescriptions,
     streams: BTreeMap<u8, StreamState>,
     counters: Counters,
 }
@@ -57,6 +71,9 @@ struct State {
 struct StreamState {
     next_sequence: Option<u32>,
     next_index: Option<u64>,
+    newest_sent_tick: Option<u64>,
+    /// The tick at send of its last frame was far behind.
+    was_behind: bool,
 }
 
 /// No stream gets so far in a device's life (two thousand years at 1 MHz), nor misses so much at once (12 days of that): a
@@ -65,15 +82,26 @@ const INDEX_MAX: u64 = 1 << 56;
 const MISSING_MAX: u64 = 1 << 40;
 
 /// Why a frame received whole is refused all the same.
-type Refusal = &'static str;
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub(super) struct Refusal {
+    pub(super) reason: &'static str,
+    pub(super) detail: String,
+}
 
-const NO_DESCRIPTION: Refusal = "samples before their description";
-const FROM_A_HOST: Refusal = "frame that only a host sends";
-const BACKWARD: Refusal = "index runs backward";
-const BEYOND: Refusal = "index beyond belief";
-const ODD_SAMPLES: Refusal = "samples do not fit the description";
-const OVERLONG: Refusal = "too long for a frame";
-const CUT_OFF: Refusal = "cut off when the link was lost";
+impl From<&'static str> for Refusal {
+    fn from(reason: &'static str) -> Self {
+        Self { reason, detail: String::new() }
+    }
+}
+
+const NO_DESCRIPTION: &str = "samples before their description";
+const FROM_A_HOST: &str = "frame that only a host sends";
+const BACKWARD: &str = "index runs backward";
+const SENT_BACKWARD: &str = "tick at send runs backward";
+const BEYOND: &str = "index beyond belief";
+const ODD_SAMPLES: &str = "samples do not fit the description";
+const OVERLONG: &str = "too long for a frame";
+const CUT_OFF: &str = "cut off when the link was lost";
 
 impl Default for FrameDecoder {
     fn default() -> Self {
@@ -90,8 +118,8 @@ impl FrameDecoder {
     /// A decoder that already knows the device, for bytes from the middle of a recording.
     pub fn knowing(description: DeviceDescription) -> Self {
         let mut decoder = Self::new();
-        decoder.state.boot_id = Some(description.boot_id);
-        decoder.state.description = Some(description);
+        decoder.state.boots.follow(description.boot_id);
+        decoder.state.known.take(description);
         decoder
     }
 
@@ -105,13 +133,13 @@ impl FrameDecoder {
                     self.as_received.extend_from_slice(cobs);
                     let refused = match decode(cobs) {
                         Ok(frame) => self.state.frame(host_ns, &frame, sink).err(),
-                        Err(error) => Some(error.reason()),
+                        Err(error) => Some(Refusal { reason: error.reason(), detail: error.to_string() }),
                     };
-                    if let Some(reason) = refused {
-                        self.state.reject(host_ns, reason, &self.as_received, sink);
+                    if let Some(refusal) = refused {
+                        self.state.reject(host_ns, refusal, &self.as_received, sink);
                     }
                 }
-                Deframed::Junk(junk) => self.state.reject(host_ns, OVERLONG, junk, sink),
+                Deframed::Junk(junk) => self.state.reject(host_ns, OVERLONG.into(), junk, sink),
             }
         }
     }
@@ -120,13 +148,20 @@ impl FrameDecoder {
     pub fn link_lost(&mut self, host_ns: HostNs, sink: &mut impl FnMut(Captured)) {
         let partial = self.deframer.take_partial();
         if !partial.is_empty() {
-            self.state.reject(host_ns, CUT_OFF, partial, sink);
+            self.state.reject(host_ns, CUT_OFF.into(), partial, sink);
         }
+    }
+
+    /// What was fed so far only told what the device is: counts and sequences begin with what follows.
+    pub fn start_here(&mut self) {
+        self.state.streams.clear();
+        self.state.boots.start_here();
+        self.state.counters = Counters::default();
     }
 
     /// The description in force; `None` before the first and after a boot that was not described yet.
     pub fn description(&self) -> Option<&DeviceDescription> {
-        self.state.description.as_ref().filter(|description| Some(description.boot_id) == self.state.boot_id)
+        self.state.known.in_force()
     }
 
     pub fn counters(&self) -> &Counters {
@@ -135,116 +170,215 @@ impl FrameDecoder {
 }
 
 impl State {
-    fn reject(&mut self, host_ns: HostNs, reason: Refusal, bytes: &[u8], sink: &mut impl FnMut(Captured)) {
+    fn reject(&mut self, host_ns: HostNs, refusal: Refusal, bytes: &[u8], sink: &mut impl FnMut(Captured)) {
+        let Refusal { reason, detail } = refusal;
         *self.counters.refused.entry(reason).or_default() += 1;
-        sink(Captured::Rejected(Rejected { host_ns, reason, bytes: bytes.to_vec() }));
+        sink(Captured::Rejected(Rejected { host_ns, reason, detail, bytes: bytes.to_vec() }));
     }
 
     fn frame(&mut self, host_ns: HostNs, frame: &Frame<'_>, sink: &mut impl FnMut(Captured)) -> Result<(), Refusal> {
         self.counters.frames += 1;
-        let header = &frame.header;
         if matches!(
             frame.message,
             Message::DescribeRequest | Message::Start | Message::Stop | Message::TimeRequest(_) | Message::SetRate(_)
         ) {
-            return Err(FROM_A_HOST);
+            return Err(FROM_A_HOST.into());
         }
-        self.follow_boot(header.boot_id);
-        self.count_lost_frames(header);
+        self.follow_boot(host_ns, frame.header.boot_id, sink);
+        self.follow_sequence(&frame.header);
+        self.follow_tick(host_ns, frame, sink)?;
+        let boot_id = self.boots.named().unwrap_or(frame.header.boot_id);
+        let header = &Header { boot_id, ..frame.header };
         match &frame.message {
             Message::Describe(describe) => self.describe(description::owned(header, describe)?, sink),
-            Message::Block(block) => self.block(host_ns, frame, block, sink)?,
-            message => match plain(host_ns, header.boot_id, message) {
+            Message::Block(block) => self.block(host_ns, (header, frame.crc), block, sink)?,
+            message => match plain(host_ns, boot_id, message) {
                 Some(captured) => sink(captured),
                 None => self.counters.unknown_kinds += 1,
             },
+        }
+        // Only of what was accepted: a frame that is refused for what it says is not believed in its ticks either.
+        if let Some(tick) = sent_tick(&frame.message) {
+            let stream = self.streams.entry(header.stream).or_default();
+            stream.newest_sent_tick = stream.newest_sent_tick.max(Some(tick));
         }
         Ok(())
     }
 
     fn describe(&mut self, described: DeviceDescription, sink: &mut impl FnMut(Captured)) {
-        if self.description.as_ref() != Some(&described) {
-            self.description = Some(described.clone());
+        if self.known.take(described.clone()) {
             sink(Captured::Description(described));
         }
     }
 
     /// A new boot starts indices and sequences afresh.
-    fn follow_boot(&mut self, boot_id: u32) {
-        if self.boot_id != Some(boot_id) {
-            self.boot_id = Some(boot_id);
+    fn follow_boot(&mut self, host_ns: HostNs, received: u32, sink: &mut impl FnMut(Captured)) {
+        let earlier = self.boots.named();
+        let seen = self.boots.follow(received);
+        if earlier.is_none() || seen.is_some() {
             self.streams.clear();
+        }
+        if let (Some(earlier_boot_id), Some(seen)) = (earlier, seen) {
+            self.known.clear();
+            let boot_id = self.boots.named().unwrap_or(received);
+            sink(Captured::Reboot(Reboot { host_ns, boot_id, received_boot_id: received, earlier_boot_id, seen }));
         }
     }
 
-    fn count_lost_frames(&mut self, header: &Header) {
+    /// Counts lost frames; notices a sequence that falls back.
+    fn follow_sequence(&mut self, header: &Header) {
         let stream = self.streams.entry(header.stream).or_default();
         let ahead = stream.next_sequence.map_or(0, |next| header.sequence.wrapping_sub(next));
+        stream.next_sequence = Some(header.sequence.wrapping_add(1));
         if ahead <= u32::MAX / 2 {
             self.counters.lost_frames += u64::from(ahead);
+        } else if self.boots.sequence_fell_back() {
+            self.known.doubt();
         }
-        stream.next_sequence = Some(header.sequence.wrapping_add(1));
+    }
+
+    /// Notices a device that starts again under its old boot id.
+    fn follow_tick(
+        &mut self,
+        host_ns: HostNs,
+        frame: &Frame<'_>,
+        sink: &mut impl FnMut(Captured),
+    ) -> Result<(), Refusal> {
+        let Some(sent_tick) = sent_tick(&frame.message) else { return Ok(()) };
+        let Some(tick_rate_hz) = self.known.in_force().map(|description| description.tick_rate_hz) else {
+            return Ok(());
+        };
+        let header = &frame.header;
+        let stream = self.streams.entry(header.stream).or_default();
+        let (newest, again) = (stream.newest_sent_tick, stream.was_behind);
+        let earlier_boot_id = self.boots.named().unwrap_or(header.boot_id);
+        match self.boots.sent(sent_tick, newest, again, tick_rate_hz) {
+            TickSays::GoesOn => {
+                stream.was_behind = false;
+                Ok(())
+            }
+            TickSays::Behind => {
+                stream.was_behind = true;
+                let newest = newest.unwrap_or_default();
+                let detail = format!("stream {}: {sent_tick} after {newest}", header.stream);
+                Err(Refusal { reason: SENT_BACKWARD, detail })
+            }
+            TickSays::Anew(seen) => {
+                self.start_anew(host_ns, header, earlier_boot_id, seen, sink);
+                Ok(())
+            }
+        }
+    }
+
+    /// The run under the old boot id gets an id of its own, and what the device said of itself since then goes with it.
+    fn start_anew(
+        &mut self,
+        host_ns: HostNs,
+        header: &Header,
+        earlier_boot_id: u32,
+        seen: RebootSeen,
+        sink: &mut impl FnMut(Captured),
+    ) {
+        let received_boot_id = header.boot_id;
+        let boot_id = self.boots.named().unwrap_or(received_boot_id);
+        self.streams.clear();
+        self.streams.entry(header.stream).or_default().next_sequence = Some(header.sequence.wrapping_add(1));
+        sink(Captured::Reboot(Reboot { host_ns, boot_id, received_boot_id, earlier_boot_id, seen }));
+        let described = self.known.move_to_boot(boot_id, seen == RebootSeen::ClockAnew);
+        described.into_iter().for_each(|description| sink(Captured::Description(description)));
     }
 
     fn block(
         &mut self,
         host_ns: HostNs,
-        frame: &Frame<'_>,
+        (header, crc): (&Header, u32),
         block: &firmware_protocol::Block<'_>,
         sink: &mut impl FnMut(Captured),
     ) -> Result<(), Refusal> {
-        let header = &frame.header;
+        let number = header.stream;
+        let beyond = || Refusal { reason: BEYOND, detail: format!("stream {number}: index {}", block.first_index) };
         if block.first_index > INDEX_MAX {
-            return Err(BEYOND);
+            return Err(beyond());
         }
-        let stream = self.streams.entry(header.stream).or_default();
+        let stream = self.streams.entry(number).or_default();
         let next_index = *stream.next_index.get_or_insert(block.first_index);
-        let described = stream_of(self.description.as_ref(), header).ok_or(NO_DESCRIPTION)?;
-        let n_missing = block.first_index.checked_sub(next_index).ok_or(BACKWARD)?;
+        let described = described(&self.known, header)?;
+        let backward = || Refusal {
+            reason: BACKWARD,
+            detail: format!("stream {number}: {} after {next_index}", block.first_index),
+        };
+        let n_missing = block.first_index.checked_sub(next_index).ok_or_else(backward)?;
         if n_missing > MISSING_MAX {
-            return Err(BEYOND);
+            return Err(beyond());
         }
-        let next_index = block.first_index.checked_add(block.n_samples.into()).ok_or(BACKWARD)?;
-        let counts = unpack::unpack(block.samples, block.n_samples.into(), described).ok_or(ODD_SAMPLES)?;
+        let next_index = block.first_index.checked_add(block.n_samples.into()).ok_or_else(backward)?;
+        let counts = unpack::unpack(block.samples, block.n_samples.into(), described).ok_or_else(|| Refusal {
+            reason: ODD_SAMPLES,
+            detail: format!(
+                "stream {number}: {} samples of {} bytes, the description's channels take {}",
+                block.n_samples,
+                block.sample_len,
+                unpack::sample_len(described)
+            ),
+        })?;
         if n_missing > 0 {
             self.counters.missing = self.counters.missing.saturating_add(n_missing);
             self.counters.gaps += 1;
             sink(Captured::Gap(Gap {
                 host_ns,
                 boot_id: header.boot_id,
-                stream: header.stream,
+                stream: number,
                 first_missing_index: block.first_index - n_missing,
                 n_missing,
             }));
         }
         stream.next_index = Some(next_index);
-        sink(Captured::Block(owned_block(host_ns, frame, block, counts)));
+        self.counters.blocks += 1;
+        sink(Captured::Block(owned_block(host_ns, header, crc, block, counts)));
         Ok(())
     }
 }
 
-/// The stream that the header names, if `description` is the one it names.
-fn stream_of<'d>(description: Option<&'d DeviceDescription>, header: &Header) -> Option<&'d StreamDescription> {
-    description
-        .filter(|known| (known.boot_id, known.description_id) == (header.boot_id, header.description_id))?
-        .streams
-        .iter()
-        .find(|described| described.stream == header.stream)
+fn sent_tick(message: &Message<'_>) -> Option<u64> {
+    match message {
+        Message::Block(block) => Some(block.sent_tick),
+        Message::TimeReply(reply) => Some(reply.sent_tick),
+        _ => None,
+    }
 }
 
-fn owned_block(host_ns: HostNs, frame: &Frame<'_>, block: &firmware_protocol::Block<'_>, counts: Vec<Counts>) -> Block {
+/// The stream that the header names, in the description that it names.
+fn described<'k>(known: &'k KnownDescriptions, header: &Header) -> Result<&'k StreamDescription, Refusal> {
+    let Header { stream, description_id: id, .. } = *header;
+    let detail = match known.named(id) {
+        None => format!("block of stream {stream} with description id {id}, described: {}", known.ids()),
+        Some(description) => match stream_of(description, stream) {
+            Some(described) => return Ok(described),
+            None => format!("description {id} has no stream {stream}"),
+        },
+    };
+    Err(Refusal { reason: NO_DESCRIPTION, detail })
+}
+
+fn owned_block(
+    host_ns: HostNs,
+    header: &Header,
+    crc: u32,
+    block: &firmware_protocol::Block<'_>,
+    counts: Vec<Counts>,
+) -> Block {
     Block {
         host_ns,
-        boot_id: frame.header.boot_id,
-        description_id: frame.header.description_id,
-        stream: frame.header.stream,
-        sequence: frame.header.sequence,
+        boot_id: header.boot_id,
+        description_id: header.description_id,
+        stream: header.stream,
+        sequence: header.sequence,
         first_index: block.first_index,
         first_tick: block.tick,
         sent_tick: block.sent_tick,
         n_samples: block.n_samples.into(),
         overruns: block.overruns,
-        crc: frame.crc,
+        crc,
         counts,
     }
 }

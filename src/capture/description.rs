@@ -2,23 +2,33 @@
 
 use firmware_protocol::{Channel, Describe, Header, Stream};
 
+use super::decoder::Refusal;
 use super::sample::{ChannelDescription, DeviceDescription, Encoding, StreamDescription, TimeBase};
 
 /// What may be believed of a device's clock.
 const TICK_RATES_HZ: std::ops::RangeInclusive<f64> = 1.0..=1e12;
 
+const CHANNEL_TWICE: &str = "description names a channel twice";
+const STREAM_TWICE: &str = "description names a stream twice";
+
 /// The description in SI units, or why it is of no use.
-pub(super) fn owned(header: &Header, describe: &Describe<'_>) -> Result<DeviceDescription, &'static str> {
+pub(super) fn owned(header: &Header, describe: &Describe<'_>) -> Result<DeviceDescription, Refusal> {
     if !TICK_RATES_HZ.contains(&describe.tick_rate_hz) {
-        return Err("description states a tick rate that no clock has");
+        let detail = format!("{} Hz, from 1 Hz to 1 THz is believed", describe.tick_rate_hz);
+        return Err(Refusal { reason: "description states a tick rate that no clock has", detail });
     }
     let streams: Vec<_> = describe.streams.iter().map(|stream| owned_stream(&stream)).collect();
+    let names: Vec<&str> =
+        streams.iter().flat_map(|stream| &stream.channels).map(|channel| channel.name.as_str()).collect();
+    if let Some(twice) = names.iter().enumerate().find_map(|(at, name)| names[..at].contains(name).then_some(name)) {
+        return Err(Refusal { detail: format!("\"{twice}\""), ..CHANNEL_TWICE.into() });
+    }
     for (at, stream) in streams.iter().enumerate() {
         if stream.stream == firmware_protocol::CONTROL_STREAM {
-            return Err("description gives samples to the control stream");
+            return Err(Refusal::from("description gives samples to the control stream"));
         }
         if streams[..at].iter().any(|earlier| earlier.stream == stream.stream) {
-            return Err("description names a stream twice");
+            return Err(Refusal { detail: format!("stream {}", stream.stream), ..STREAM_TWICE.into() });
         }
     }
     Ok(DeviceDescription {

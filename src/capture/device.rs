@@ -55,6 +55,13 @@ impl DeviceDecoder {
         }
     }
 
+    /// What was fed so far only told what the device is: counts and sequences begin with what follows.
+    pub fn start_here(&mut self) {
+        if let Speaks::Frames(decoder) = &mut self.speaks {
+            decoder.start_here();
+        }
+    }
+
     /// The description in force; `None` before the first and after a boot that was not described yet.
     pub fn description(&self) -> Option<&DeviceDescription> {
         match &self.speaks {

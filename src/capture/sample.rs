@@ -61,6 +61,27 @@ pub struct DeviceDescription {
     pub time_base: TimeBase,
 }
 
+/// "describes itself: firmware eyes 1.0, line 1000 Hz, encoder and accel 250 Hz".
+impl std::fmt::Display for DeviceDescription {
+    fn fmt(&self, to: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        write!(to, "describes itself: firmware {}", self.firmware)?;
+        for stream in &self.streams {
+            let names: Vec<_> = stream.channels.iter().map(|channel| channel.name.as_str()).collect();
+            let names = match names.split_last() {
+                None => "no channel".to_owned(),
+                Some((only, [])) => (*only).to_owned(),
+                Some((last, before)) => format!("{} and {last}", before.join(", ")),
+            };
+            let rate_hz = self.tick_rate_hz / f64::from(stream.ticks_per_sample.max(1));
+            write!(to, ", {names} {} Hz", (rate_hz * 1e3).round() / 1e3)?;
+        }
+        if self.streams.is_empty() {
+            write!(to, ", no stream")?;
+        }
+        Ok(())
+    }
+}
+
 /// What a device's ticks are.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub enum TimeBase {
@@ -116,7 +137,10 @@ pub struct Gap {
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Rejected {
     pub host_ns: HostNs,
+    /// One of a few, for counting.
     pub reason: &'static str,
+    /// What exactly was wrong (which field, which id), for people; may be empty.
+    pub detail: String,
     pub bytes: Vec<u8>,
 }
 
@@ -150,11 +174,57 @@ pub struct TimeReply {
     pub sent_tick: u64,
 }
 
+/// How it was seen that a device started again.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum RebootSeen {
+    /// As it should be: by a boot id that it never had before.
+    NewId,
+    /// By a boot id that an earlier boot had.
+    IdOfAnEarlierBoot,
+    /// Sequences and ticks began again under the same boot id.
+    OldId,
+    /// Ticks at send began again, sequences went on.
+    ClockAnew,
+}
+
+/// A device started again: its indices, sequences and ticks have nothing to do with those before.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Reboot {
+    pub host_ns: HostNs,
+    /// Under which the new run is recorded: the received one, or another where that was used before.
+    pub boot_id: u32,
+    pub received_boot_id: u32,
+    pub earlier_boot_id: u32,
+    pub seen: RebootSeen,
+}
+
+impl std::fmt::Display for Reboot {
+    fn fmt(&self, to: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        let Self { boot_id, received_boot_id: received, earlier_boot_id: earlier, .. } = self;
+        match self.seen {
+            RebootSeen::NewId => write!(to, "rebooted: boot {boot_id:#010x} after {earlier:#010x}"),
+            RebootSeen::IdOfAnEarlierBoot | RebootSeen::OldId => write!(
+                to,
+                "rebooted under a boot id that it had before, {received:#010x}: recorded as boot {boot_id:#010x} from here on; \
+                 the firmware must choose another id at every boot (SPEC.md 2.2)"
+            ),
+            RebootSeen::ClockAnew => write!(
+                to,
+                "its clock ran backward within boot {received:#010x}: recorded as boot {boot_id:#010x} from here on; ticks must \
+                 be counted in 64 bits and never go back (SPEC.md 1)"
+            ),
+        }
+    }
+}
+
 /// What decoding yields, in order of arrival.
 #[derive(Debug, Clone, PartialEq)]
 pub enum Captured {
-    /// First description, or a changed one; samples before it cannot be unpacked and are `Rejected`.
+    /// First description, or a changed one; samples before it cannot be unpacked and are `Rejected`. Samples of one before
+    /// it may still come.
     Description(DeviceDescription),
+    /// Before everything else of the new run.
+    Reboot(Reboot),
     Block(Block),
     Gap(Gap),
     Edge(Edge),

@@ -5,7 +5,7 @@ use super::sample::{Counts, Encoding, StreamDescription};
 /// Takes a block's samples apart (all channels of the first sample, then the next). `None` when the number of bytes does
 /// not fit the description.
 pub(super) fn unpack(samples: &[u8], n_samples: usize, stream: &StreamDescription) -> Option<Vec<Counts>> {
-    let sample_len: usize = stream.channels.iter().map(|channel| width(channel.encoding)).sum();
+    let sample_len = sample_len(stream);
     if samples.len() != n_samples * sample_len || sample_len == 0 {
         return None;
     }
@@ -16,6 +16,11 @@ pub(super) fn unpack(samples: &[u8], n_samples: usize, stream: &StreamDescriptio
         one_channel(samples, sample_len, at, channel.encoding)
     });
     Some(channels.collect())
+}
+
+/// Bytes of one sample of all channels.
+pub(super) fn sample_len(stream: &StreamDescription) -> usize {
+    stream.channels.iter().map(|channel| width(channel.encoding)).sum()
 }
 
 const fn width(encoding: Encoding) -> usize {

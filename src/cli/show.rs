@@ -1,10 +1,12 @@
 //! `tautrail show TRIAL`: what a trial file says of itself, as it was sealed.
 
+use std::collections::BTreeMap;
 use std::path::PathBuf;
 
 use serde_json::{Value, json};
 use tautrail::archive::VERDICT_PREFIX;
-use tautrail::trial::{EventRow, Header, RawChannel, ResultSet, TrialError, TrialFile};
+use tautrail::capture::{Gap, TimeBase};
+use tautrail::trial::{DeviceRecord, EventRow, Header, RawChannel, ResultSet, TrialError, TrialFile};
 
 use super::results_text::{instant_line, result_line, shown_time};
 use super::screen::{Screen, Tone};
@@ -36,6 +38,8 @@ struct Shown {
     signals: Vec<String>,
     channels: Vec<RawChannel>,
     n_missing: u64,
+    n_lost_frames: u64,
+    refused: BTreeMap<String, u64>,
     raw_sha256: String,
 }
 
@@ -50,23 +54,55 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
 }
 
 fn gather(trial: &TrialFile) -> Result<Shown, TrialError> {
-    let (mut channels, mut n_missing) = (Vec::new(), 0_u64);
+    let (mut channels, mut n_missing, mut n_lost_frames) = (Vec::new(), 0_u64, 0_u64);
+    let (mut refused, mut events) = (BTreeMap::new(), trial.events()?);
     for device in trial.device_names()? {
         channels.extend(trial.raw_channels(&device)?);
-        let gaps = trial.device(&device)?.gaps;
-        n_missing = gaps.iter().fold(n_missing, |sum, gap| sum.saturating_add(gap.n_missing));
+        let content = trial.device(&device)?;
+        n_missing = content.gaps.iter().fold(n_missing, |sum, gap| sum.saturating_add(gap.n_missing));
+        events.extend(said_by(trial.header(), &device, &content));
+        let Some(link) = content.link else { continue };
+        n_lost_frames = n_lost_frames.saturating_add(link.n_lost_frames);
+        link.refused.into_iter().for_each(|(reason, n)| *refused.entry(reason).or_default() += n);
     }
+    events.sort_by(|a, b| a.time_s.total_cmp(&b.time_s));
     let mut signals = trial.signal_names()?;
     signals.extend(trial.derived_names()?);
     Ok(Shown {
         header: trial.header().clone(),
         results: trial.results()?,
-        events: trial.events()?,
+        events,
         signals,
         channels,
         n_missing,
+        n_lost_frames,
+        refused,
         raw_sha256: trial.sealed_raw_digest()?,
     })
+}
+
+/// What frames of a device tell at an instant, as events: its texts, its gaps. Instruments that print readings say nothing
+/// but readings.
+fn said_by(header: &Header, device: &str, content: &DeviceRecord) -> Vec<EventRow> {
+    let event = |host_ns: i64, kind: &str, text: String| EventRow {
+        time_s: host_ns.saturating_sub(header.zero_host_ns) as f64 * 1e-9,
+        kind: kind.to_owned(),
+        source: device.to_owned(),
+        person: String::new(),
+        text,
+    };
+    let speaks_frames = content.descriptions.iter().any(|description| description.time_base == TimeBase::Ticks);
+    let texts = content.text_lines.iter().filter(|_| speaks_frames);
+    let mut said: Vec<_> = texts.map(|line| event(line.host_ns, "text", line.text.clone())).collect();
+    said.extend(content.gaps.iter().map(|gap| {
+        let Gap { n_missing, stream, first_missing_index, .. } = gap;
+        event(
+            gap.host_ns,
+            "gap",
+            format!("{n_missing} samples of stream {stream} missing from index {first_missing_index} on"),
+        )
+    }));
+    said
 }
 
 fn print(args: &Args, shown: &Shown, screen: &Screen) {
@@ -79,10 +115,16 @@ fn print(args: &Args, shown: &Shown, screen: &Screen) {
     }
     print_results(&shown.results, screen);
     for channel in &shown.channels {
-        let RawChannel { device, name, n_counts, .. } = channel;
-        screen.line(format!("  raw {device}/{name}: {n_counts} counts"));
+        let RawChannel { device, name, layout, n_counts, .. } = channel;
+        let layout = if *layout == 0 { String::new() } else { format!(" (changed description {layout})") };
+        screen.line(format!("  raw {device}/{name}: {n_counts} counts{layout}"));
     }
-    screen.line(format!("  missing samples: {}", shown.n_missing));
+    let refused: Vec<String> = shown.refused.iter().map(|(reason, n)| format!("{n} {reason}")).collect();
+    let refused = if refused.is_empty() { "0".to_owned() } else { refused.join(", ") };
+    screen.line(format!(
+        "  missing samples: {}, lost frames: {}, refused: {refused}",
+        shown.n_missing, shown.n_lost_frames
+    ));
     screen.line(format!("  signals: {}", shown.signals.join(", ")));
     screen.line(format!("  raw sha256 {}", shown.raw_sha256));
     if args.events {
@@ -145,7 +187,7 @@ fn as_json(args: &Args, shown: &Shown) -> Value {
     let channels: Vec<Value> = shown
         .channels
         .iter()
-        .map(|c| json!({ "device": c.device, "channel": c.name, "n_counts": c.n_counts }))
+        .map(|c| json!({ "device": c.device, "channel": c.name, "layout": c.layout, "n_counts": c.n_counts }))
         .collect();
     let header = &shown.header;
     json!({
@@ -153,7 +195,7 @@ fn as_json(args: &Args, shown: &Shown) -> Value {
         "started_quality": header.started_quality, "outcome": shown.results.outcome,
         "outcome_evidence": shown.results.outcome_evidence, "findings": shown.results.findings, "results": results,
         "instants": instants, "absent": absent, "events": events, "signals": shown.signals, "channels": channels,
-        "n_missing": shown.n_missing, "raw_sha256": shown.raw_sha256,
+        "n_missing": shown.n_missing, "n_lost_frames": shown.n_lost_frames, "refused": shown.refused, "raw_sha256": shown.raw_sha256,
         "configuration_hash": header.configuration_hash, "caution": CAUTION,
     })
 }

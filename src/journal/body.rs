@@ -65,12 +65,13 @@ pub struct SegmentOpen {
 pub struct DeviceAtOpen {
     pub name: String,
     pub port: String,
-    /// Last frame that described the device, delimiters included, lower-case hex; empty before the first.
+    /// Frames that described the device's present boot, the last of each of the last four description ids, oldest first,
+    /// delimiters included, lower-case hex; empty before the first.
     pub describe_hex: String,
 }
 
 impl DeviceAtOpen {
-    /// The describe frame as received; `None` before the first or when the hex is damaged.
+    /// The describe frames as received; `None` before the first or when the hex is damaged.
     pub fn describe(&self) -> Option<Vec<u8>> {
         if self.describe_hex.is_empty() || !self.describe_hex.is_ascii() {
             return None;

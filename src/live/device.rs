@@ -1,8 +1,8 @@
 //! One device as live sees it: link state, decoder, clock, and where its channels go.
 
 use crate::capture::{
-    Block, BlockTimes, Captured, Counts, DeviceDecoder, DeviceDescription, LiveClock, NominalClock, TimeBase,
-    TimeReply, TimeRequests,
+    Block, BlockTimes, Captured, Counts, DeviceDecoder, DeviceDescription, LiveClock, N_DESCRIPTIONS, NominalClock,
+    TimeBase, TimeReply, TimeRequests,
 };
 use crate::link::STOPPED;
 use crate::rig::{Channel, Device};
@@ -17,6 +17,7 @@ const BELIEVED_WITHIN_NS: u64 = 60_000_000_000;
 /// Where one stream's channels go: indices into the taps, whose first ones are the rig's calibrated channels.
 #[derive(Debug)]
 struct StreamMap {
+    description_id: u16,
     stream: u8,
     ticks_per_sample: u32,
     targets: Vec<Option<usize>>,
@@ -39,7 +40,9 @@ pub struct DeviceMonitor {
     clock: Option<LiveClock>,
     requests: TimeRequests,
     ns_per_tick: f64,
+    /// Of the boot, all descriptions that blocks may name.
     streams: Vec<StreamMap>,
+    boot_id: Option<u32>,
     up: bool,
     ever_up: bool,
     has_ticks: bool,
@@ -84,6 +87,7 @@ impl DeviceMonitor {
             requests: TimeRequests::default(),
             ns_per_tick: 1_000.0,
             streams: Vec::new(),
+            boot_id: None,
             up: false,
             ever_up: false,
             has_ticks: false,
@@ -169,16 +173,24 @@ impl DeviceMonitor {
         self.ns_per_tick = 1e9 / description.tick_rate_hz;
         self.has_ticks = description.time_base == TimeBase::Ticks;
         self.clock = Some(LiveClock::new(NominalClock::from(description)));
-        self.streams = description
-            .streams
-            .iter()
-            .map(|stream| StreamMap {
-                stream: stream.stream,
-                ticks_per_sample: stream.ticks_per_sample,
-                targets: stream.channels.iter().map(|channel| wanted(&channel.name)).collect(),
-            })
-            .collect();
-        let known: Vec<_> = self.streams.iter().flat_map(|stream| stream.targets.iter().flatten().copied()).collect();
+        if self.boot_id.replace(description.boot_id) != Some(description.boot_id) {
+            self.streams.clear();
+        }
+        let id = description.description_id;
+        self.streams.retain(|stream| stream.description_id != id);
+        let mut ids: Vec<u16> = self.streams.iter().map(|stream| stream.description_id).collect();
+        ids.dedup();
+        if ids.len() >= N_DESCRIPTIONS {
+            self.streams.retain(|stream| stream.description_id != ids[0]);
+        }
+        self.streams.extend(description.streams.iter().map(|stream| StreamMap {
+            description_id: id,
+            stream: stream.stream,
+            ticks_per_sample: stream.ticks_per_sample,
+            targets: stream.channels.iter().map(|channel| wanted(&channel.name)).collect(),
+        }));
+        let named = self.streams.iter().filter(|stream| stream.description_id == id);
+        let known: Vec<_> = named.flat_map(|stream| stream.targets.iter().flatten().copied()).collect();
         let mine = channels.iter().enumerate().filter(|(_, channel)| channel.device == self.name);
         mine.map(|(idx, _)| idx).filter(|idx| !known.contains(idx)).collect()
     }
@@ -186,7 +198,7 @@ impl DeviceMonitor {
     /// Where the converters of the rig's channels end, in counts: index in the rig's channels, least, greatest.
     pub fn ranges(&self, description: &DeviceDescription) -> Vec<(usize, f64, f64)> {
         let described = description.streams.iter().flat_map(|stream| {
-            let map = self.streams.iter().find(|map| map.stream == stream.stream);
+            let map = self.map_of(description.description_id, stream.stream);
             stream.channels.iter().enumerate().filter_map(move |(place, channel)| {
                 let idx = (*map?.targets.get(place)?)?;
                 let stated = channel.nominal_min..=channel.nominal_max;
@@ -195,6 +207,10 @@ impl DeviceMonitor {
             })
         });
         described.collect()
+    }
+
+    fn map_of(&self, description_id: u16, stream: u8) -> Option<&StreamMap> {
+        self.streams.iter().find(|map| (map.description_id, map.stream) == (description_id, stream))
     }
 
     /// Whether it counts a clock of its own, which exchanges can tie to the host's.
@@ -210,7 +226,8 @@ impl DeviceMonitor {
     /// Hands every sample of a block to `sink`, stamped with the host time at which the device took it. A block whose
     /// ticks say that it is a minute away from its arrival is not shown: its channel falls silent, which is said.
     pub fn spread(&mut self, block: &Block, sink: &mut impl FnMut(Sample)) {
-        let Some(map) = self.streams.iter().find(|map| map.stream == block.stream) else { return };
+        let place = |map: &StreamMap| (map.description_id, map.stream) == (block.description_id, block.stream);
+        let Some(map) = self.streams.iter().find(|map| place(map)) else { return };
         if let Some(clock) = &mut self.clock {
             clock.arrived(&BlockTimes::from(block));
         }

@@ -168,3 +168,61 @@ fn time_that_runs_backward_is_left_out() {
     assert_eq!(trial.signal("line").unwrap().time_s.len(), 300);
     assert!(texts.iter().any(|text| text.contains("do not move on")), "{texts:?}");
 }
+
+#[test]
+fn blocks_queued_before_a_change_keep_their_values_and_their_datasets() {
+    let changed = || {
+        let mut description = description();
+        description.description_id = 2;
+        description.streams[0].channels.pop();
+        Told::Captured(DeviceIdx(0), Captured::Description(description))
+    };
+    let after = || {
+        let Told::Captured(device, Captured::Block(mut block)) = block(1, 2.0) else { panic!("no block") };
+        block.description_id = 2;
+        block.counts.pop();
+        Told::Captured(device, Captured::Block(block))
+    };
+    let told = || [Told::Known(DeviceIdx(0), description()), changed(), block(0, 1.0), after()];
+    let dir = tempfile::tempdir().unwrap();
+    let path = dir.path().join("t.h5");
+    let mut writer = TrialWriter::create(&path, &header()).unwrap();
+    let mut raw = RawPass::new(&mut writer, 0);
+    raw.take(Told::Opening { host_ns: 0, open: Box::new(opening()) }).unwrap();
+    told().into_iter().for_each(|told| raw.take(told).unwrap());
+    let mut gathered = raw.finish().unwrap();
+    let (rig, clocks) = (crate::rig::parse(&crate::rig::testing::NORTH_PIER).unwrap(), [vec![clock()]]);
+    let mut pass = ValuePass::new(&mut writer, &rig, &gathered.devices, &clocks, 0, 1_000);
+    told().iter().for_each(|told| pass.take(told).unwrap());
+    pass.finish(&mut gathered.events);
+    gathered.events.write(&mut writer).unwrap();
+    writer.write_results(&crate::trial::ResultSet::default()).unwrap();
+    writer.finish().unwrap();
+    let trial = TrialFile::open(&path).unwrap();
+    let channels = trial.raw_channels("winch-node").unwrap();
+    let counts: Vec<_> = channels.iter().map(|c| (c.name.as_str(), c.layout, c.n_counts)).collect();
+    assert_eq!(counts, [("anchor", 0, 100), ("line", 0, 100), ("line", 1, 100)]);
+    assert_eq!(trial.signal("line").unwrap().time_s.len(), 200);
+    assert_eq!(trial.signal("anchor").unwrap().time_s.len(), 100);
+    let events = trial.events().unwrap();
+    assert_eq!(events[0].kind, "device", "a change within the trial is an event: {events:?}");
+}
+
+#[test]
+fn a_reboot_is_an_event_and_something_to_look_at() {
+    let dir = tempfile::tempdir().unwrap();
+    let mut writer = TrialWriter::create(&dir.path().join("t.h5"), &header()).unwrap();
+    let mut raw = RawPass::new(&mut writer, 0);
+    raw.take(Told::Opening { host_ns: 0, open: Box::new(opening()) }).unwrap();
+    let reboot = crate::capture::Reboot {
+        host_ns: 3_000_000_000,
+        boot_id: 5,
+        received_boot_id: 1,
+        earlier_boot_id: 1,
+        seen: crate::capture::RebootSeen::OldId,
+    };
+    raw.take(Told::Captured(DeviceIdx(0), Captured::Reboot(reboot))).unwrap();
+    let gathered = raw.finish().unwrap();
+    let finding = &gathered.devices[0].findings[0];
+    assert!(finding.starts_with("winch-node at 3.000 s rebooted under a boot id that it had before"), "{finding}");
+}

@@ -28,7 +28,11 @@ impl Device {
     }
 
     fn describe(&mut self) -> Vec<u8> {
-        let channel = |name, encoding| Channel {
+        self.describe_as(["line", "accel", "encoder", "bridge"])
+    }
+
+    fn describe_as(&mut self, [line, accel, encoder, bridge]: [&str; 4]) -> Vec<u8> {
+        let channel = |name, encoding: Encoding| Channel {
             name,
             quantity: "force",
             encoding,
@@ -38,10 +42,10 @@ impl Device {
             bandwidth_hz: None,
         };
         let channels = [
-            channel("line", Encoding::I24),
-            channel("accel", Encoding::I16),
-            channel("encoder", Encoding::I32),
-            channel("bridge", Encoding::F32),
+            channel(line, Encoding::I24),
+            channel(accel, Encoding::I16),
+            channel(encoder, Encoding::I32),
+            channel(bridge, Encoding::F32),
         ];
         let streams = [Stream { id: 1, ticks_per_sample: 100, channels: Channels::given(&channels) }];
         self.frame(
@@ -57,8 +61,18 @@ impl Device {
         )
     }
 
+    /// The same board after a reset, with the boot id it had.
+    fn started_again(&self) -> Self {
+        Self { boot_id: self.boot_id, description_id: self.description_id, sequences: [0, 0], next_index: 0 }
+    }
+
     /// Two samples: one with the smallest counts, one with minus one everywhere.
     fn block(&mut self) -> Vec<u8> {
+        let tick = self.next_index.wrapping_mul(100);
+        self.block_sent_at(tick.wrapping_add(250))
+    }
+
+    fn block_sent_at(&mut self, sent_tick: u64) -> Vec<u8> {
         let mut samples = vec![0x00, 0x00, 0x80, 0x00, 0x80, 0x00, 0x00, 0x00, 0x80];
         samples.extend_from_slice(&1.5_f32.to_le_bytes());
         samples.extend_from_slice(&[0xFF; 9]);
@@ -66,7 +80,6 @@ impl Device {
         let first_index = self.next_index;
         self.next_index += 2;
         let tick = first_index.wrapping_mul(100);
-        let sent_tick = tick.wrapping_add(250);
         let block = firmware_protocol::Block {
             first_index,
             tick,
@@ -283,4 +296,140 @@ fn an_index_beyond_belief_stops_no_stream() {
     let gaps = heard.iter().filter(|captured| matches!(captured, Captured::Gap(_))).count();
     assert_eq!((blocks, gaps), (5, 0));
     assert_eq!(decoder.counters().refused["index beyond belief"], 4);
+}
+
+fn reboots(captured: &[Captured]) -> Vec<(u32, RebootSeen)> {
+    let reboots = captured.iter().filter_map(|what| match what {
+        Captured::Reboot(reboot) => Some((reboot.boot_id, reboot.seen)),
+        _ => None,
+    });
+    reboots.collect()
+}
+
+fn boots_of_blocks(captured: &[Captured]) -> Vec<u32> {
+    let boots = captured.iter().filter_map(|what| match what {
+        Captured::Block(block) => Some(block.boot_id),
+        _ => None,
+    });
+    boots.collect()
+}
+
+#[test]
+fn blocks_queued_before_a_change_are_read_by_the_description_that_they_name() {
+    let mut device = Device::booted(1);
+    let mut bytes = device.describe();
+    let queued = device.block();
+    device.description_id = 2;
+    bytes.extend(device.describe_as(["line", "accel", "encoder", "spare"]));
+    bytes.extend(queued);
+    bytes.extend(device.block());
+    let mut decoder = FrameDecoder::new();
+    let captured = decode_all(&mut decoder, &bytes);
+    assert_eq!((indices(&captured), rejections(&captured).len()), (vec![0, 2], 0));
+    let ids = captured.iter().filter_map(|what| match what {
+        Captured::Block(block) => Some(block.description_id),
+        _ => None,
+    });
+    assert_eq!(ids.collect::<Vec<_>>(), [1, 2]);
+    assert_eq!(decoder.description().map(|described| described.description_id), Some(2));
+}
+
+#[test]
+fn only_the_last_four_descriptions_can_be_named() {
+    let mut device = Device::booted(1);
+    let mut bytes = device.describe();
+    let queued = device.block();
+    for id in 2..=5 {
+        device.description_id = id;
+        bytes.extend(device.describe());
+    }
+    bytes.extend(queued);
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
+    let Some(Captured::Rejected(rejected)) = captured.last() else { panic!("{captured:?}") };
+    assert_eq!(rejected.reason, NO_DESCRIPTION);
+    assert_eq!(rejected.detail, "block of stream 1 with description id 1, described: 2, 3, 4, 5");
+}
+
+#[test]
+fn a_channel_named_twice_is_refused_by_its_name() {
+    let mut device = Device::booted(1);
+    let bytes = device.describe_as(["line", "accel", "line", "bridge"]);
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
+    let [Captured::Rejected(rejected)] = &captured[..] else { panic!("{captured:?}") };
+    assert_eq!((rejected.reason, rejected.detail.as_str()), ("description names a channel twice", "\"line\""));
+}
+
+#[test]
+fn a_reboot_under_the_old_id_is_never_joined_to_the_run_before() {
+    let mut before = Device::booted(1);
+    let mut bytes = before.describe();
+    (0..200).for_each(|_| bytes.extend(before.block()));
+    let mut after = before.started_again();
+    bytes.extend(after.describe());
+    (0..300).for_each(|_| bytes.extend(after.block()));
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
+    let [(boot_id, RebootSeen::OldId)] = reboots(&captured)[..] else { panic!("{:?}", reboots(&captured)) };
+    assert_ne!(boot_id, 1);
+    assert_eq!(boots_of_blocks(&captured), [vec![1; 200], vec![boot_id; 300]].concat());
+    assert_eq!((gaps(&captured).len(), rejections(&captured).len()), (0, 0));
+    let described: Vec<_> = captured.iter().filter(|what| matches!(what, Captured::Description(_))).collect();
+    assert_eq!(described.len(), 2, "the new run has a description of its own");
+}
+
+#[test]
+fn a_run_under_the_old_id_takes_nothing_from_the_description_before_it() {
+    let mut before = Device::booted(1);
+    let mut bytes = before.describe();
+    (0..200).for_each(|_| bytes.extend(before.block()));
+    let mut after = before.started_again();
+    bytes.extend([after.block(), after.describe(), after.block()].concat());
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
+    assert_eq!(reboots(&captured).len(), 1);
+    assert_eq!(rejections(&captured).iter().map(|(reason, _)| *reason).collect::<Vec<_>>(), [NO_DESCRIPTION]);
+    assert_eq!(indices(&captured)[200..], [2]);
+}
+
+#[test]
+fn a_boot_id_that_comes_again_later_is_another_boot() {
+    let mut bytes = Vec::new();
+    for boot_id in [1, 2, 1] {
+        let mut device = Device::booted(boot_id);
+        bytes.extend([device.describe(), device.block()].concat());
+    }
+    let captured = decode_all(&mut FrameDecoder::new(), &bytes);
+    let [(2, RebootSeen::NewId), (third, RebootSeen::IdOfAnEarlierBoot)] = reboots(&captured)[..] else {
+        panic!("{:?}", reboots(&captured))
+    };
+    assert_eq!(boots_of_blocks(&captured), [1, 2, third]);
+    assert!(third != 1 && third != 2);
+}
+
+#[test]
+fn one_lying_tick_at_send_costs_its_block_and_two_are_a_new_start() {
+    const S: u64 = 1_000_000;
+    let mut device = Device::booted(1);
+    let mut bytes = [device.describe(), device.block_sent_at(5 * S)].concat();
+    bytes.extend(device.block_sent_at(S));
+    bytes.extend([device.block_sent_at(5 * S + 10), device.block_sent_at(5 * S - 500_000)].concat());
+    let mut decoder = FrameDecoder::new();
+    let captured = decode_all(&mut decoder, &bytes);
+    assert_eq!((indices(&captured), gaps(&captured)), (vec![0, 4, 6], vec![(2, 2)]));
+    assert_eq!(rejections(&captured)[0].0, SENT_BACKWARD);
+    let captured = decode_all(&mut decoder, &[device.block_sent_at(10), device.block_sent_at(20)].concat());
+    let [(boot_id, RebootSeen::ClockAnew)] = reboots(&captured)[..] else { panic!("{captured:?}") };
+    assert_eq!(boots_of_blocks(&captured), [boot_id], "its description still holds: only the clock began again");
+}
+
+#[test]
+fn firmware_that_never_counts_its_frames_does_not_reboot() {
+    let mut device = Device::booted(1);
+    let mut bytes = device.describe();
+    for _ in 0..50 {
+        device.sequences = [0, 0];
+        bytes.extend([device.describe(), device.block()].concat());
+    }
+    let mut decoder = FrameDecoder::new();
+    let captured = decode_all(&mut decoder, &bytes);
+    assert_eq!((reboots(&captured), indices(&captured).len()), (vec![], 50));
+    assert_eq!(decoder.counters().lost_frames, 0);
 }

@@ -154,7 +154,7 @@ impl TextDecoder {
     fn reject(&mut self, host_ns: HostNs, reason: Refusal, bytes: Vec<u8>, sink: &mut impl FnMut(Captured)) {
         self.n_refused += u64::from(reason != FIRST);
         *self.counters.refused.entry(reason).or_default() += 1;
-        sink(Captured::Rejected(Rejected { host_ns, reason, bytes }));
+        sink(Captured::Rejected(Rejected { host_ns, reason, detail: String::new(), bytes }));
     }
 
     /// The reading's tick, by its own time or by its arrival; a device that began again gets a new boot.
@@ -214,6 +214,7 @@ impl TextDecoder {
             counts: values.into_iter().map(|value| Counts::Float(vec![value])).collect(),
         }));
         self.next_index += 1;
+        self.counters.blocks += 1;
         self.last = Some(Last { tick, boot_id });
         (self.n_refused, self.broken_off) = (0, false);
     }
