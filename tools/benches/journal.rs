@@ -4,8 +4,10 @@
 //! The control does nothing but write the same bytes to a file of its own on the same disk and sync it every 50 ms, in
 //! the same run: its longest wait (the interval and the sync) is the reference. Where that is over 100 ms, the disk or
 //! the machine cannot keep the promise, and no verdict is given.
+//!
+//!     cargo run --example bench-journal -- [SECONDS OF EACH RUN, 20]
 
-#![allow(clippy::unwrap_used, reason = "a bench that cannot go on stops here")]
+#![allow(clippy::unwrap_used, clippy::expect_used, reason = "a bench that cannot go on stops here")]
 
 use std::io::Write;
 use std::path::Path;
@@ -28,12 +30,13 @@ const BUDGET_BYTES: u64 = 2 << 20;
 const TARGET_MS: f64 = 100.0;
 
 fn main() {
+    let run_s = std::env::args().nth(1).map_or(RUN_S, |arg| arg.parse().expect("SECONDS is a number"));
     let dir = tempfile::tempdir_in(".").unwrap();
     for (name, loaded) in [("journal_exposure_idle", false), ("journal_exposure_beside_large_files", true)] {
         let stop = Arc::new(AtomicBool::new(false));
         let load = loaded.then(|| load(&dir.path().join("large"), &stop));
         let control = control(&dir.path().join("control"), &stop);
-        let longest = longest_exposure_ms(&dir.path().join(name));
+        let longest = longest_exposure_ms(&dir.path().join(name), run_s);
         stop.store(true, Ordering::Relaxed);
         let control_longest = control.join().unwrap();
         load.into_iter().for_each(|thread| thread.join().unwrap());
@@ -46,13 +49,11 @@ fn main() {
 
 fn figure(name: &str, value: f64, reference: f64) {
     let ratio = value / reference;
-    println!(
-        "figure {name} value={value:.1} unit=ms reference={reference:.1} ratio={ratio:.2} target={TARGET_MS:.0} ms"
-    );
+    println!("figure {name} value={value:.1} unit=ms reference={reference:.1} ratio={ratio:.2} target={TARGET_MS:.0}");
 }
 
 /// Longest that any record waited to be on the disk, ms.
-fn longest_exposure_ms(dir: &Path) -> f64 {
+fn longest_exposure_ms(dir: &Path, run_s: u64) -> f64 {
     let device = |name: &str| DeviceAtOpen { name: name.into(), port: "p".into(), describe_hex: String::new() };
     let origin = Origin {
         journal_id: "000001-abc123".into(),
@@ -71,7 +72,7 @@ fn longest_exposure_ms(dir: &Path) -> f64 {
     let begun = Instant::now();
     for i in 0_u64.. {
         let due = begun + Duration::from_millis(i);
-        if due > begun + Duration::from_secs(RUN_S) {
+        if due > begun + Duration::from_secs(run_s) {
             break;
         }
         std::thread::sleep(due.saturating_duration_since(Instant::now()));

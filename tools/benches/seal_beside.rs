@@ -4,8 +4,10 @@
 //! Jitter is how much later than the evenest course a device's blocks were read (they come every 10 ms); the control is
 //! the same daemon in the same run without a seal. Where the control itself is late by more than 2 ms at its 99.9th
 //! percentile the machine is unfit for a verdict.
+//!
+//!     cargo run --example bench-seal_beside -- [SECONDS OF EACH STRETCH, 10] [TIMES THE NOMINAL SLOW PHASES, 10]
 
-#![allow(clippy::unwrap_used, reason = "a bench that cannot go on stops here")]
+#![allow(clippy::unwrap_used, clippy::expect_used, reason = "a bench that cannot go on stops here")]
 
 #[path = "../../tests/support/journal.rs"]
 mod journal_file;
@@ -23,7 +25,7 @@ use virtual_rig::performance::{Options, prepare};
 use virtual_rig::play::pty::{PtySettings, monotonic_ns, play};
 
 /// Length of each stretch at least.
-const STRETCH: Duration = Duration::from_secs(10);
+const STRETCH_S: f64 = 10.0;
 /// Ten times the nominal slow phases: about four and a half minutes.
 const PACE: f64 = 10.0;
 const CONTROL_UNFIT_MS: f64 = 2.0;
@@ -33,8 +35,12 @@ fn program() -> PathBuf {
 }
 
 fn main() {
+    let number = |place: usize, otherwise: f64| -> f64 {
+        std::env::args().nth(place).map_or(otherwise, |arg| arg.parse().expect("SECONDS and pace are numbers"))
+    };
+    let (how_long, pace) = (Duration::from_secs_f64(number(1, STRETCH_S)), number(2, PACE));
     let sealed_dir = tempfile::tempdir().unwrap();
-    nominal(sealed_dir.path(), PACE, true);
+    nominal(sealed_dir.path(), pace, true);
     let (_, range) = journal_file::opened(sealed_dir.path());
     let trial_s = (range.last_host_ns - range.first_host_ns) as f64 * 1e-9;
     println!("figure seal_beside_trial_length value={trial_s:.1} unit=s reference=- ratio=- target=-");
@@ -48,8 +54,8 @@ fn main() {
     let playing = std::thread::spawn(move || play(&performance, &settings).map(drop));
     let mut daemon = start_daemon(dir.path());
     std::thread::sleep(Duration::from_secs(3)); // past the start
-    let control_ns = stretch(|| std::thread::sleep(STRETCH));
-    let sealing_ns = stretch(|| seal_for(STRETCH, sealed_dir.path()));
+    let control_ns = stretch(|| std::thread::sleep(how_long));
+    let sealing_ns = stretch(|| seal_for(how_long, sealed_dir.path()));
     let peak_mib = peak_mib(daemon.id());
     rustix::process::kill_process(rustix::process::Pid::from_child(&daemon), rustix::process::Signal::TERM).unwrap();
     assert!(daemon.wait().unwrap().success());

@@ -1,6 +1,10 @@
 //! Bench section `seal_hour`: peak memory and time of sealing a hold of an hour, four channels at 10 kHz.
+//!
+//! Only the memory has a target, and that does not depend on what else the machine does: no control.
+//!
+//!     cargo run --example bench-seal_hour -- [TIMES THE NOMINAL SLOW PHASES, 133]
 
-#![allow(clippy::unwrap_used, reason = "a bench that cannot go on stops here")]
+#![allow(clippy::unwrap_used, clippy::expect_used, reason = "a bench that cannot go on stops here")]
 
 #[path = "../../tests/support/journal.rs"]
 mod journal_file;
@@ -14,7 +18,8 @@ const PACE: f64 = 133.0;
 
 fn main() {
     let dir = tempfile::tempdir().unwrap();
-    nominal(dir.path(), PACE, true);
+    let pace = std::env::args().nth(1).map_or(PACE, |arg| arg.parse().expect("the pace is a number"));
+    nominal(dir.path(), pace, true);
     let (_, range) = journal_file::opened(dir.path());
     let trial_s = (range.last_host_ns - range.first_host_ns) as f64 * 1e-9;
     let journal = dir.path().join("journal").join(tautrail::journal::segment_name(JOURNAL_ID, 1));

@@ -12,13 +12,14 @@
 //!   with anything at all. Losses are told with and without that lateness.
 //! - *Trial files*: each opens, verifies, holds exactly the blocks that the journal holds in its range, each one the rig's
 //!   to the checksum, and says of what is missing just how much it is. Sealing again gives the same bytes.
-//! - *Earlier trials*: files sealed before have the same bytes after every kill.
+//! - *Earlier trials*: every trial file that was ever seen is still there after every kill, with the same bytes.
 //!
 //! Prints Markdown. Exit code 1 if anything was lost, false or touched.
 
 #![allow(clippy::expect_used, clippy::unwrap_used, reason = "a tool that cannot go on stops here")]
 
 mod account;
+mod files;
 mod process;
 mod sentinel;
 mod session;

@@ -11,6 +11,7 @@ use virtual_rig::play::pty::{PtySettings, play};
 use virtual_rig::truth::Truth;
 
 use super::account::{self, Cost, Read};
+use super::files::Files;
 use super::process::{Killed, Victim, wait_for_orphans};
 use super::tally::{Moment, Told};
 
@@ -48,8 +49,10 @@ struct Session<'s> {
     draw: Draw,
     told: Told,
     lives: Vec<Killed>,
-    /// Bytes of every trial file seen, by name.
-    seen: BTreeMap<PathBuf, Vec<u8>>,
+    /// Trial files that must be there.
+    files: Files,
+    /// Bytes of every trial file that was checked last under its name.
+    checked: BTreeMap<PathBuf, Vec<u8>>,
     n_started: u64,
 }
 
@@ -61,7 +64,8 @@ pub fn run(stage: &Stage, seed: u64) -> Told {
         draw: Draw(seed),
         told: Told::default(),
         lives: Vec::new(),
-        seen: BTreeMap::new(),
+        files: Files::default(),
+        checked: BTreeMap::new(),
         n_started: 0,
     };
     session.prepare();
@@ -88,7 +92,7 @@ impl Session<'_> {
         if let Some(bytes) = &*self.stage.earlier.lock().expect("a session panicked") {
             let path = self.archive().join("trial-000001-aaaaaa.h5");
             std::fs::write(&path, bytes).expect("the earlier trial");
-            self.seen.insert(path, bytes.clone());
+            self.files.note(&path);
         }
     }
 
@@ -168,6 +172,7 @@ impl Session<'_> {
         self.take_files(truth, true);
         self.recover_to_the_end();
         self.take_files(truth, false);
+        self.compare_earlier();
     }
 
     fn recover_to_the_end(&mut self) {
@@ -205,17 +210,12 @@ impl Session<'_> {
         path.ends_with("trial-000001-aaaaaa.h5")
     }
 
-    /// Files that were there have the same bytes, before anything else happens.
+    /// Files that were there are there with the same bytes, before anything else happens; those that are new are noted.
     fn compare_earlier(&mut self) {
-        for (path, bytes) in &self.seen {
-            if !path.exists() && !Self::earlier(path) {
-                continue; // taken away by us
-            }
-            self.told.n_earlier_compared += 1;
-            if std::fs::read(path).ok().as_ref() != Some(bytes) {
-                self.told.touched.push(path.display().to_string());
-            }
-        }
+        let compared = self.files.compare();
+        self.told.n_earlier_compared += compared.n_files;
+        self.told.touched.extend(compared.touched);
+        self.trial_files().iter().for_each(|path| self.files.note(path));
     }
 
     /// Checks the files of this session's trials against the journal as it is now.
@@ -226,7 +226,8 @@ impl Session<'_> {
             let read = read.get_or_insert_with(|| account::read(&self.archive()));
             self.told.n_files_checked += 1;
             self.told.faults.extend(account::faults_of(&path, read, truth));
-            let same_range = self.seen.insert(path.clone(), bytes.clone());
+            self.files.note(&path);
+            let same_range = self.checked.insert(path.clone(), bytes.clone());
             if let Some(before) = same_range.filter(|before| range_of(before) == range_of(&bytes)) {
                 self.told.n_sealed_again += 1;
                 if before != bytes {
@@ -235,7 +236,7 @@ impl Session<'_> {
             }
             *self.stage.earlier.lock().expect("a session panicked") = Some(bytes);
             if take_away {
-                std::fs::remove_file(&path).expect("the trial file goes");
+                self.files.take_away(&path);
             }
         }
     }
