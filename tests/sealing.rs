@@ -13,7 +13,7 @@ use std::sync::{Arc, LazyLock};
 
 use firmware_protocol as wire;
 use journal_file::{JOURNAL_ID, JournalFile, RIG_TEXT, TRIAL_ID, nominal, opened};
-use tautrail::archive::{Fate, SealError, Sealed, recover, seal, verify};
+use tautrail::archive::{Fate, SealError, Sealed, file_room_bytes, recover, seal, verify};
 use tautrail::capture::Counts;
 use tautrail::journal::{AppendFile, ArchiveLock, Body, Disk, Listed, RealDisk, TrialRange};
 use tautrail::trial::TrialFile;
@@ -191,6 +191,18 @@ fn a_failed_rename_or_a_full_disk_leaves_no_half_file_and_the_journal() {
     }
     assert!(std::fs::read(dir.path().join(segment())).unwrap() == journal, "the journal was touched");
     seal_in(dir.path(), &real()).unwrap();
+}
+
+#[test]
+fn a_trial_file_fits_the_room_that_is_asked_for_it() {
+    let dir = nominal_copy();
+    let journal_bytes = std::fs::metadata(dir.path().join(segment())).unwrap().len();
+    let needed_bytes = file_room_bytes(journal_bytes);
+    let short: Arc<dyn Disk> = Arc::new(Faulty { free_bytes: Some(needed_bytes - 1), ..SOUND });
+    assert!(matches!(seal_in(dir.path(), &short), Err(SealError::NoRoom { .. })));
+    let just: Arc<dyn Disk> = Arc::new(Faulty { free_bytes: Some(needed_bytes), ..SOUND });
+    let file_bytes = std::fs::metadata(seal_in(dir.path(), &just).unwrap().path).unwrap().len();
+    assert!(file_bytes <= needed_bytes, "{file_bytes} bytes from {journal_bytes}");
 }
 
 /// The library keeps saying yes for megabytes after the disk is full and says nothing when a close fails (HDF5 2.x):

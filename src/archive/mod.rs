@@ -28,6 +28,6 @@ pub use keep::{Kept, ReleaseError, kept, release};
 pub use list::{Listing, Summary, list};
 pub use publish::clear_up;
 pub use recover::{Fate, RecoverError, Recovered, Recovery, journal_dir, recover, seal_one, sealed_file};
-pub use seal::{FILE_SHARE, Sealed, seal, trial_path};
+pub use seal::{FILE_SHARE, Sealed, file_room_bytes, seal, trial_path};
 pub use settled::{SettleError, Settled, forget_settled, settle_until, settle_whole, settled};
 pub use verify::{Verified, verify};

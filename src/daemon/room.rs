@@ -4,7 +4,7 @@
 use std::collections::VecDeque;
 use std::time::Duration;
 
-use crate::archive::FILE_SHARE;
+use crate::archive::file_room_bytes;
 
 use super::found::Unsealed;
 
@@ -80,11 +80,13 @@ impl RoomWatch {
         if self.greatest_bytes_per_s > 0.0 { self.greatest_bytes_per_s } else { self.declared_bytes_per_s }
     }
 
-    /// Free room against what the longest hold and all unsealed trials need; `open_bytes` is the trial under way.
+    /// Free room against what the longest hold and the files of all unsealed trials need; `open_bytes` is the trial under way,
+    /// or the one that could begin.
     pub fn judge(&self, free_bytes: u64, unsealed: &[Unsealed], open_bytes: u64) -> Room {
         let hold = self.bytes_per_s() * self.longest_hold_s;
-        let waiting = unsealed.iter().map(|unsealed| unsealed.n_bytes).fold(open_bytes, u64::saturating_add) as f64;
-        let needed = hold + FILE_SHARE * waiting;
+        let of_trials = || unsealed.iter().map(|unsealed| unsealed.n_bytes).chain([open_bytes]);
+        let waiting = of_trials().fold(0, u64::saturating_add) as f64;
+        let needed = hold + of_trials().map(file_room_bytes).fold(0, u64::saturating_add) as f64;
         let free = free_bytes as f64;
         if free >= EARLY * needed {
             return Room::Enough;
@@ -124,9 +126,10 @@ mod tests {
     }
 
     #[test]
-    fn what_is_needed_is_the_longest_hold_at_the_rate_seen_and_the_unsealed_with_a_fifth_more() {
+    fn what_is_needed_is_the_longest_hold_at_the_rate_seen_and_a_file_of_every_unsealed_trial() {
         let watch = watch(MIB);
-        let free_needed = 600 * MIB + 120 * MIB; // 600 s of 1 MiB/s, and 1.2 times 100 MiB
+        // 600 s of 1 MiB/s, 2.2 times 100 MiB and 4 MiB for either file.
+        let free_needed = 600 * MIB + 220 * MIB + 8 * MIB;
         let waiting = [unsealed(60 * MIB)];
         assert!(matches!(watch.judge(free_needed - 1, &waiting, 40 * MIB), Room::TooLittle(_)));
         assert!(matches!(watch.judge(free_needed, &waiting, 40 * MIB), Room::Low(_)));
@@ -137,16 +140,16 @@ mod tests {
     #[test]
     fn before_anything_came_the_ports_rate_is_believed_and_a_pause_later_is_not() {
         let fresh = RoomWatch::new(Duration::from_secs(600), MIB as f64);
-        assert!(matches!(fresh.judge(599 * MIB, &[], 0), Room::TooLittle(_)));
-        assert!(matches!(fresh.judge(600 * MIB, &[], 0), Room::Low(_)));
+        assert!(matches!(fresh.judge(603 * MIB, &[], 0), Room::TooLittle(_)));
+        assert!(matches!(fresh.judge(604 * MIB, &[], 0), Room::Low(_)));
         let mut watch = watch(MIB);
         (21..100).for_each(|s| watch.look(s * S)); // a pulled cable is no smaller rig
-        assert!(matches!(watch.judge(599 * MIB, &[], 0), Room::TooLittle(_)));
+        assert!(matches!(watch.judge(603 * MIB, &[], 0), Room::TooLittle(_)));
     }
 
     #[test]
     fn the_sentence_says_how_much_there_is_and_what_is_needed() {
         let Room::TooLittle(sentence) = watch(MIB).judge(10 * MIB, &[], 0) else { panic!("enough?") };
-        assert!(sentence.contains("10 MiB free of 600 MiB") && sentence.contains("10 min"), "{sentence}");
+        assert!(sentence.contains("10 MiB free of 604 MiB") && sentence.contains("10 min"), "{sentence}");
     }
 }

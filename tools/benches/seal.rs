@@ -76,8 +76,9 @@ fn main() {
     let (file, journal) = (mib(&target), mib(&journal));
     start_up(dir.path());
     println!(
-        "figure seal_file_size value={file:.1} unit=MiB reference={journal:.1} ratio={:.2} target=4",
-        file / journal
+        "figure seal_file_size value={file:.1} unit=MiB reference={journal:.1} ratio={:.2} target={}",
+        file / journal,
+        tautrail::archive::FILE_SHARE
     );
 }
 

@@ -26,8 +26,15 @@ fn main() {
     let journal_mib = std::fs::metadata(journal).unwrap().len() as f64 / f64::from(1 << 20);
     let run = sealing::seal_once(dir.path(), JOURNAL_ID, TRIAL_ID);
     println!("figure seal_hour_length value={trial_s:.0} unit=s reference=- ratio=- target=-");
-    println!("figure seal_hour_journal value={journal_mib:.0} unit=MiB reference=- ratio=- target=-");
+    println!("figure seal_hour_journal value={journal_mib:.1} unit=MiB reference=- ratio=- target=-");
     println!("figure seal_hour_processor_time value={:.1} unit=s reference=- ratio=- target=-", run.processor_s);
     println!("figure seal_hour_wall_time_niced value={:.1} unit=s reference=- ratio=- target=-", run.wall_s);
+    let file_mib =
+        std::fs::metadata(dir.path().join(format!("trial-{TRIAL_ID}.h5"))).unwrap().len() as f64 / f64::from(1 << 20);
+    println!(
+        "figure seal_hour_file_size value={file_mib:.1} unit=MiB reference={journal_mib:.1} ratio={:.2} target={}",
+        file_mib / journal_mib,
+        tautrail::archive::FILE_SHARE
+    );
     println!("figure seal_hour_peak_memory value={:.0} unit=MiB reference=- ratio=- target=256", run.peak_mib);
 }
