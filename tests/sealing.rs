@@ -251,6 +251,31 @@ fn a_target_that_appears_while_sealing_is_not_replaced() {
 }
 
 #[test]
+fn a_name_that_is_a_link_to_something_else_is_never_written_through() {
+    let dir = tempfile::tempdir().unwrap();
+    short_trial(dir.path(), |_, bytes| bytes);
+    let target = dir.path().join(format!("trial-{TRIAL_ID}.h5"));
+    let elsewhere = tempfile::tempdir_in(dir.path()).unwrap();
+    let other = elsewhere.path().join("notes");
+    std::fs::write(&other, "a crew's notes").unwrap();
+    std::fs::hard_link(&other, &target).unwrap();
+    assert!(seal_in(dir.path(), &real()).is_err());
+    assert_eq!(std::fs::read_to_string(&other).unwrap(), "a crew's notes");
+    std::fs::remove_file(&target).unwrap();
+    let nothing = elsewhere.path().join("nothing");
+    std::os::unix::fs::symlink(&nothing, &target).unwrap();
+    assert!(matches!(seal_in(dir.path(), &real()), Err(SealError::Io { .. })));
+    assert!(!nothing.exists() && target.symlink_metadata().unwrap().is_symlink());
+    std::fs::remove_file(&target).unwrap();
+    // The very file under another name too: it is sealed already, and both names stay.
+    let sealed = seal_in(dir.path(), &real()).unwrap();
+    std::fs::hard_link(&sealed.path, elsewhere.path().join("copy.h5")).unwrap();
+    assert!(!seal_in(dir.path(), &real()).unwrap().is_new);
+    assert!(elsewhere.path().join("copy.h5").exists());
+    assert!(!names(dir.path()).iter().any(|name| name.ends_with(".part")));
+}
+
+#[test]
 fn recover_says_that_a_directory_is_not_there() {
     let dir = tempfile::tempdir().unwrap();
     let error = recover(&dir.path().join("none"), &real(), &mut |_| {}).unwrap_err().to_string();

@@ -122,4 +122,13 @@ mod tests {
         assert_eq!((cleared.host_ns, cleared.kind.as_str()), (4, "alarm"));
         assert_ne!(cleared.text, raised.text);
     }
+
+    #[test]
+    fn data_that_wait_too_long_to_be_durable_are_an_alarm_also_while_the_sync_hangs() {
+        let mut now = RecorderNow::default();
+        now.health.exposure_ns_now = EXPOSURE_NS_MAX;
+        assert_eq!(slow(&now), None);
+        now.health.exposure_ns_now = 5_000_000_000;
+        assert!(slow(&now).unwrap().contains("took 5.00 s to make data durable"));
+    }
 }

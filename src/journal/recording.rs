@@ -162,10 +162,12 @@ impl Recording {
 
 #[cfg(test)]
 mod tests {
-    use super::super::{Origin, Settings, StagedDisk, Start};
+    use super::super::{Item, JournalReader, Origin, Settings, StagedDisk, Start};
     use super::*;
     use std::path::Path;
     use std::sync::atomic::{AtomicI64, Ordering};
+
+    const ID: &str = "000001-abc123";
 
     #[derive(Debug, Default)]
     struct Set(AtomicI64);
@@ -176,20 +178,23 @@ mod tests {
         }
     }
 
-    #[test]
-    fn a_queue_that_was_nearly_full_once_is_not_held_against_it_for_ever() {
-        let clock = Arc::new(Set::default());
+    fn recording(disk: &StagedDisk, clock: &Arc<Set>) -> Recording {
         let origin = Origin {
-            journal_id: "000001-abc123".into(),
+            journal_id: ID.into(),
             program_version: "0".into(),
             kernel_boot_id: "boot".into(),
             rig_text: String::new(),
             devices: Vec::new(),
         };
-        let (disk, settings) = (Arc::new(StagedDisk::default()), Settings::default());
-        let journal = Journal::begin(disk, Path::new("j"), origin, Start::fresh(), settings, 0).unwrap();
-        let (told, _reports) = crossbeam_channel::bounded(9);
-        let mut recording = Recording::new(journal, Arc::clone(&clock) as _, Clocks::read, told);
+        let (shared, settings) = (Arc::new(disk.clone()), Settings::default());
+        let journal = Journal::begin(shared, Path::new("j"), origin, Start::fresh(), settings, 0).unwrap();
+        Recording::new(journal, Arc::clone(clock) as _, Clocks::read, crossbeam_channel::bounded(9).0)
+    }
+
+    #[test]
+    fn a_queue_that_was_nearly_full_once_is_not_held_against_it_for_ever() {
+        let clock = Arc::new(Set::default());
+        let mut recording = recording(&StagedDisk::default(), &clock);
         let mut after_s = |s: i64, filled: f64| {
             clock.0.store(s * 1_000_000_000, Ordering::SeqCst);
             recording.saw_queue(filled);
@@ -197,5 +202,21 @@ mod tests {
         };
         assert_eq!([after_s(0, 0.01), after_s(1, 0.9), after_s(2, 0.02)], [0.01, 0.9, 0.9]);
         assert_eq!([after_s(11, 0.01), after_s(12, 0.01)], [0.9, 0.02]);
+    }
+
+    #[test]
+    fn the_four_clocks_are_read_once_a_second() {
+        let (disk, clock) = (StagedDisk::default(), Arc::new(Set::default()));
+        let mut recording = recording(&disk, &clock);
+        for ms in (0..=3500).step_by(10) {
+            clock.0.store(ms * 1_000_000, Ordering::SeqCst);
+            recording.turn(&mut |_| {});
+        }
+        let reader = JournalReader::open(Arc::new(disk), Path::new("j"), ID).unwrap();
+        let at_ns = reader.records().filter_map(|item| match item.unwrap() {
+            Item::Record(record) if matches!(record.body, Body::Clocks(_)) => Some(record.host_ns),
+            _ => None,
+        });
+        assert_eq!(at_ns.collect::<Vec<_>>(), [0, 1, 2, 3].map(|s| s * 1_000_000_000));
     }
 }

@@ -141,6 +141,13 @@ fn is_running(pid: i32) -> bool {
     stat.rsplit_once(") ").is_some_and(|(_, state)| !state.starts_with(['Z', 'X']))
 }
 
+/// The 19th field of a process's `stat` (proc(5)).
+fn niceness(pid: i32) -> i32 {
+    let stat = std::fs::read_to_string(format!("/proc/{pid}/stat")).unwrap();
+    let after_name = stat.rsplit_once(") ").unwrap().1;
+    after_name.split(' ').nth(16).unwrap().parse().unwrap()
+}
+
 fn n_parts(stage: &Stage) -> usize {
     let names = std::fs::read_dir(stage.path("trials")).unwrap().map(|entry| entry.unwrap().file_name());
     names.filter(|name| name.to_string_lossy().ends_with(".part")).count()
@@ -153,6 +160,8 @@ fn killed_while_a_child_seals_the_trial_is_sealed_by_the_child_or_by_the_next_st
     let daemon = stage.start_daemon_with(&["--keep-journal"]);
     daemon.wait_for("trial", "closes");
     let child = sealing_process(&stage);
+    let program = std::fs::read_link(format!("/proc/{child}/exe")).unwrap();
+    assert_eq!((program.as_path(), niceness(child)), (env!("CARGO_BIN_EXE_tautrail").as_ref(), 15), "itself, niced");
     daemon.kill();
     // SAFETY: sends a signal to a process that ran a moment ago; ids are not reused that fast.
     assert_eq!(unsafe { libc::kill(child, libc::SIGKILL) }, 0);

@@ -134,3 +134,86 @@ fn a_zero_in_force_reaches_the_journal_although_too_much_waits_already() {
     assert_eq!(reader.records().filter(|item| item.as_ref().is_ok_and(is_tare)).count(), 1);
     drop(shutdown);
 }
+
+/// What the recorder shows once it has asked the disk for its room; it asks every two seconds.
+fn once(conductor: &Conductor, shows: impl Fn(&RecorderNow) -> bool) -> RecorderNow {
+    let deadline = Instant::now() + Duration::from_secs(60);
+    loop {
+        let now = conductor.recorder.now();
+        if shows(&now) {
+            return now;
+        }
+        assert!(Instant::now() < deadline, "never shown: {now:?}");
+        std::thread::sleep(Duration::from_millis(20));
+    }
+}
+
+#[test]
+fn without_room_no_trial_begins_and_with_room_again_it_opens_and_reaches_back() {
+    let Pit { _dir, disk, mut conductor, inputs, journal, live, shutdown } = pit();
+    const GIB: u64 = 1 << 30;
+    disk.set_capacity(Some(GIB / 1024));
+    once(&conductor, |now| now.health.free_bytes.is_some_and(|free| free < GIB));
+    let tension_ns = conductor.clock.monotonic_ns();
+    conductor.live.open_by_hand(tension_ns).expect("it has no trial yet");
+    conductor.open_by_tension(tension_ns, tension_ns);
+    assert_eq!((conductor.book.open(), conductor.held_back_from_ns), (None, Some(tension_ns)));
+
+    let act = |conductor: &mut Conductor, recorder: &RecorderNow| {
+        let (room, now_ns) = (conductor.room_now(recorder), conductor.clock.monotonic_ns());
+        conductor.act_on_room(recorder, &room, now_ns);
+    };
+    let short = conductor.recorder.now();
+    act(&mut conductor, &short);
+    assert_eq!((conductor.book.open(), conductor.had_room), (None, false), "still none");
+    disk.set_capacity(Some(GIB));
+    let ample = once(&conductor, |now| now.health.free_bytes.is_some_and(|free| free > GIB / 2));
+    act(&mut conductor, &ample);
+    let opened = conductor.book.open().expect("the trial").clone();
+    assert_eq!((conductor.held_back_from_ns, conductor.had_room), (None, true));
+
+    // The disk takes nothing: the trial ends, and goes on under the same tension when it does again.
+    let refusing = RecorderNow { refusing: true, ..ample.clone() };
+    act(&mut conductor, &refusing);
+    assert_eq!((conductor.book.open(), &conductor.unfinished), (None, &Some(opened.trial_id.clone())));
+    let another_ns = conductor.clock.monotonic_ns();
+    act(&mut conductor, &refusing);
+    assert!(conductor.held_back_from_ns.is_some_and(|from_ns| from_ns <= another_ns), "from its end on");
+    act(&mut conductor, &ample);
+    assert_ne!(conductor.book.open().map(|open| &open.trial_id), Some(&opened.trial_id));
+    assert_eq!((conductor.book.open().is_some(), &conductor.unfinished), (true, &None));
+    drop((journal, live));
+    conductor.run(inputs).unwrap_err();
+    let reader = JournalReader::open(Arc::new(disk.after_kill()), Path::new("j"), "000001-abc123").unwrap();
+    let trials = reader.trials().unwrap();
+    assert_eq!(trials.len(), 2);
+    assert_eq!(trials[0].closed.as_ref().unwrap().reason, words::disk_full(false));
+    assert_eq!(trials[1].opened.continues.as_ref(), Some(&opened.trial_id));
+    drop(shutdown);
+}
+
+#[test]
+fn while_the_disk_takes_nothing_no_trial_begins() {
+    let Pit { _dir, disk, mut conductor, inputs, journal, live, shutdown } = pit();
+    once(&conductor, |now| now.health.free_bytes.is_some());
+    disk.set_capacity(Some(0));
+    let load = vec![0; 1 << 20];
+    let full = || {
+        let what = LinkWhat::Bytes(Bytes::copy_from_slice(&load));
+        let event = LinkEvent { host_ns: SystemClock.monotonic_ns(), device: DeviceIdx(0), what };
+        let _ = journal.try_send(FromLinks::Event(event)); // as many as it takes
+    };
+    let deadline = Instant::now() + Duration::from_secs(60);
+    while !conductor.recorder.now().refusing {
+        assert!(Instant::now() < deadline);
+        full();
+        std::thread::sleep(Duration::from_millis(5));
+    }
+    let now_ns = conductor.clock.monotonic_ns();
+    conductor.open_by_tension(now_ns, now_ns);
+    assert_eq!((conductor.book.open(), conductor.held_back_from_ns), (None, Some(now_ns)));
+    disk.set_capacity(None);
+    drop((journal, live));
+    conductor.run(inputs).unwrap_err();
+    drop(shutdown);
+}

@@ -272,6 +272,28 @@ fn a_sync_that_fails_late_leaves_its_records_exposed_since_they_were_written() {
 }
 
 #[test]
+fn data_wait_fifty_milliseconds_for_a_sync_and_an_event_does_not_wait() {
+    let disk = StagedDisk::default();
+    let mut journal = begin(&disk, small());
+    work(&mut journal, &disk, 0);
+    journal.append(100 * MS, DeviceIdx(0), &bytes_of(1));
+    journal.commit(100 * MS);
+    assert!(journal.next_job(149 * MS).is_none());
+    assert!(journal.next_job(150 * MS).is_some_and(|job| job.is_sync()));
+    let mut journal = begin(&StagedDisk::default(), small());
+    work(&mut journal, &disk, 0);
+    let event = |kind: &str| crate::journal::EventBody {
+        kind: kind.into(),
+        source: "daemon".into(),
+        person: None,
+        text: "now".into(),
+    };
+    journal.append(100 * MS, DeviceIdx(0), &Body::Event(event("mark")));
+    journal.commit(100 * MS);
+    assert!(journal.next_job(100 * MS).is_some_and(|job| job.is_sync()));
+}
+
+#[test]
 fn a_removal_that_takes_long_holds_up_no_sync() {
     let disk = StagedDisk::default();
     let mut journal = begin(&disk, small());
