@@ -6,7 +6,7 @@ use std::sync::atomic::{AtomicBool, Ordering};
 
 use signal_hook::consts::{SIGHUP, SIGINT, SIGTERM};
 use tautrail::feed::FeedClient;
-use tautrail::watch::{self, Choices, Theme};
+use tautrail::watch::{self, Choices, ForceUnit, ShownUnits, SpeedUnit, Theme};
 
 use super::feed_place::{FeedPlace, login_name};
 use super::screen::Screen;
@@ -24,15 +24,28 @@ pub struct Args {
     /// Signs of plain ASCII only (the default where the locale is not UTF-8)
     #[arg(long)]
     ascii: bool,
+    /// Unit of forces: N, kN, kgf or lbf
+    #[arg(long, value_name = "UNIT", default_value = "N", value_parser = force_unit)]
+    force: ForceUnit,
+    /// Unit of speeds: m/s, km/h or kt
+    #[arg(long, value_name = "UNIT", default_value = "m/s", value_parser = speed_unit)]
+    speed: SpeedUnit,
+    /// Begin with big numbers, to be read from a distance
+    #[arg(long)]
+    big: bool,
     /// Who acknowledges alarms at this display
     #[arg(long, value_name = "NAME", default_value_t = login_name())]
     person: String,
 }
 
 const WATCH_HELP: &str = "\
-Keys: q quit, a acknowledge the alarms, h help. No key starts or stops machinery.
+Examples:
+  tautrail watch                                  the daemon that serves the usual place
+  tautrail watch --big --force kgf --speed km/h   for the winch, read from a distance
 
-A number older than 0.2 s is marked ~, one older than 1 s is replaced by a word. NO_COLOR is honoured.
+Keys: q quit, a acknowledge the alarms, u units, b big numbers, h help. No key starts or stops machinery.
+
+Alarms and events stay in SI whatever the units, as they stand in the records. A number older than 0.2 s is marked ~, one older than 1 s is replaced by a word. NO_COLOR is honoured.
 
 The display advises and records only. It is no safety device: interlocks, exclusion zones, local codes and licensed
 practice decide.";
@@ -42,7 +55,9 @@ pub fn run(args: &Args, _screen: &Screen) -> Result<Verdict, Failure> {
         follow_plain(args)?;
     } else {
         let theme = Theme { colour: wants_colour(), ascii: args.ascii || !is_utf8_locale() };
-        let choices = Choices { socket: args.place.socket(), person: args.person.clone(), theme };
+        let units = ShownUnits { force: args.force, speed: args.speed };
+        let (socket, person) = (args.place.socket(), args.person.clone());
+        let choices = Choices { socket, person, theme, units, big: args.big };
         watch::follow(&choices)?;
     }
     Ok(Verdict::Done)
@@ -55,6 +70,22 @@ fn follow_plain(args: &Args) -> Result<(), Failure> {
     }
     let mut client = FeedClient::connect(&args.place.socket())?;
     Ok(watch::follow_plain(&mut client, &mut io::stdout().lock(), &|| stop.load(Ordering::Relaxed))?)
+}
+
+fn force_unit(text: &str) -> Result<ForceUnit, String> {
+    let found = ForceUnit::ALL.into_iter().find(|unit| unit.symbol() == text);
+    found.ok_or_else(|| match text {
+        "kg" => "\"kg\" is a mass, not a force; write \"kgf\"".to_owned(),
+        _ => "forces are shown in N, kN, kgf or lbf".to_owned(),
+    })
+}
+
+fn speed_unit(text: &str) -> Result<SpeedUnit, String> {
+    let found = SpeedUnit::ALL.into_iter().find(|unit| unit.symbol() == text);
+    found.ok_or_else(|| match text {
+        "kn" => "\"kn\" reads like kilonewton; write \"kt\" for knots".to_owned(),
+        _ => "speeds are shown in m/s, km/h or kt".to_owned(),
+    })
 }
 
 fn wants_colour() -> bool {

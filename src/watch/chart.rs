@@ -66,7 +66,7 @@ fn draw_limit(buffer: &mut Buffer, area: Rect, rows: &Rows, scale: &Scale, view:
     for column in scale.columns() {
         buffer[(column, row)].set_symbol(view.theme.limit()).set_style(view.theme.caution());
     }
-    let text = format!(" limit {:.0} N ", view.hello.limit_tension_n);
+    let text = format!(" limit {} ", view.units.force(view.hello.limit_tension_n));
     let at = area.right().saturating_sub(text.chars().count() as u16 + 1).max(area.left());
     buffer.set_stringn(at, row, &text, usize::from(area.right() - at), view.theme.caution());
 }
@@ -84,10 +84,11 @@ fn draw_axis(buffer: &mut Buffer, area: Rect, rows: &Rows, view: &ViewState) {
     for row in area.rows() {
         buffer[(area.left() + 5, row.y)].set_symbol(view.theme.axis());
     }
-    let step_n = if area.height >= 18 { 100.0 } else { 300.0 };
+    let (fine_n, coarse_n) = view.units.force_steps_n();
+    let step_n = if area.height >= 18 { fine_n } else { coarse_n };
     let tick = |k: u32| f64::from(k) * step_n;
     for tension_n in (0..N_TICKS_MAX).map(tick).take_while(|tension_n| *tension_n < rows.top_n) {
-        let text = format!("{tension_n:>4.0}");
+        let text = format!("{:>4}", view.units.force_mark(tension_n));
         buffer.set_stringn(area.left(), rows.row(tension_n), text, 5, view.theme.quiet());
     }
 }
@@ -102,7 +103,7 @@ fn draw_now(buffer: &mut Buffer, area: Rect, rows: &Rows, scale: &Scale, view: &
     let column = scale.column(x_m);
     let sign = if fresh { view.theme.now() } else { view.theme.now_stale() };
     buffer[(column, row)].set_symbol(sign).set_style(view.theme.strong());
-    let text = format!(" {tension_n:.0} N ");
+    let text = format!(" {} ", view.units.force(tension_n));
     let room = usize::from(area.right().saturating_sub(column + 1));
     buffer.set_stringn(column + 1, row, text, room, view.theme.strong());
 }

@@ -10,7 +10,7 @@ use crate::live::Phase;
 use super::history::{BIN_S, Range};
 use super::view::{CordsShown, ViewState};
 use super::words::Freshness;
-use super::{CAUTION, chart, panels, rail};
+use super::{CAUTION, big, chart, panels, rail};
 
 /// Least width for the forecast beside the rail, and for the second column below.
 const WIDE: u16 = 110;
@@ -38,8 +38,12 @@ pub fn draw(frame: &mut Frame, view: &ViewState) {
     frame.render_widget(Paragraph::new(cords_line(view)), cords);
     frame.render_widget(Paragraph::new(title_line(view, area.width)), title);
     frame.render_widget(Paragraph::new(alarms), alarm_rows);
-    draw_middle(frame, middle, view);
-    draw_bottom(frame, bottom, view);
+    if view.big {
+        big::draw(frame, middle.union(bottom), view);
+    } else {
+        draw_middle(frame, middle, view);
+        draw_bottom(frame, bottom, view);
+    }
     frame.render_widget(Paragraph::new(footer_line(view)), footer);
     if view.help {
         draw_help(frame, area);
@@ -55,12 +59,13 @@ pub fn cords_line(view: &ViewState) -> Line<'static> {
                 _ => format!(" ({:.1} s old)", view.since_snapshot_s),
             };
             let energy = energy_j.map_or(String::from("energy unknown"), |energy_j| format!("{energy_j:.0} J"));
-            let text = format!(" CORDS LOADED  {tension_n:.0} N  {energy}{old}  keep clear ");
+            let text = format!(" CORDS LOADED  {}  {energy}{old}  keep clear ", view.units.force(tension_n));
             Line::styled(text, view.theme.alert())
         }
         CordsShown::Unknown => Line::styled(" TENSION UNKNOWN, TREAT AS LOADED  keep clear ", view.theme.alert()),
         CordsShown::Slack => {
-            let text = format!(" cords slack: every cell fresh and under {:.0} N", view.hello.slack_tension_n);
+            let text =
+                format!(" cords slack: every cell fresh and under {}", view.units.force(view.hello.slack_tension_n));
             Line::styled(text, view.theme.good())
         }
     }
@@ -112,7 +117,7 @@ fn draw_rail(frame: &mut Frame, area: Rect, view: &ViewState) {
     let strip = if area.height >= rail::HEIGHT { rail::HEIGHT } else { 0 };
     let [title, above, below] =
         Layout::vertical([Constraint::Length(1), Constraint::Min(0), Constraint::Length(strip)]).areas(area);
-    frame.render_widget(Paragraph::new(tension_line(view)), title);
+    frame.render_widget(Paragraph::new(tension_line(view, area.width)), title);
     let scale = rail::Scale::new(area, view.hello.rail_length_m);
     let buffer = frame.buffer_mut();
     chart::draw(buffer, above, &scale, view);
@@ -120,10 +125,10 @@ fn draw_rail(frame: &mut Frame, area: Rect, view: &ViewState) {
 }
 
 /// Tension against plan and limit, in words.
-fn tension_line(view: &ViewState) -> Line<'static> {
-    let theme = view.theme;
+fn tension_line(view: &ViewState, width: u16) -> Line<'static> {
+    let (theme, units) = (view.theme, view.units);
     let line = view.line_tension();
-    let shown = Span::styled(format!(" tension {}", line.text(0, "N")), theme.strong());
+    let shown = Span::styled(format!(" tension {}", view.line_text()), theme.strong());
     let Some(tension_n) = line.value else { return Line::from(vec![shown.style(theme.alert())]) };
     let limit_n = view.hello.limit_tension_n;
     let band = view.x().value.and_then(|x_m| view.band_at(x_m));
@@ -134,15 +139,21 @@ fn tension_line(view: &ViewState) -> Line<'static> {
             n if n < low_n => ("below plan", theme.caution()),
             _ => ("in plan", theme.good()),
         };
-        spans.push(Span::raw(format!("  plan {low_n:.0} to {high_n:.0} ")));
+        spans.push(Span::raw(format!("  plan {} to {} ", units.force_number(low_n), units.force_number(high_n))));
         spans.push(Span::styled(word, style));
     }
     spans.push(if tension_n > limit_n {
-        Span::styled(format!("  OVER LIMIT {limit_n:.0} N"), theme.alert())
+        Span::styled(format!("  OVER LIMIT {}", units.force(limit_n)), theme.alert())
     } else {
-        Span::raw(format!("  limit {limit_n:.0} N"))
+        Span::raw(format!("  limit {}", units.force(limit_n)))
     });
-    Line::from(spans)
+    let whole = Line::from(spans.clone());
+    if whole.width() > usize::from(width) && spans.len() > 3 {
+        // The plan's numbers are in the chart too; how the tension stands to plan and limit has to be said.
+        spans[1] = Span::raw("  ");
+        return Line::from(spans);
+    }
+    whole
 }
 
 fn draw_bottom(frame: &mut Frame, area: Rect, view: &ViewState) {
@@ -176,7 +187,8 @@ fn draw_history(frame: &mut Frame, area: Rect, view: &ViewState) {
     let inner = block.inner(area);
     let per_column = ((HISTORY_S / BIN_S) / f64::from(inner.width.max(1))).ceil() as usize;
     let seconds = f64::from(inner.width) * per_column as f64 * BIN_S;
-    frame.render_widget(block.title(format!(" tension, last {seconds:.0} s, N, least to greatest ")), area);
+    let unit = view.units.force.symbol();
+    frame.render_widget(block.title(format!(" tension, last {seconds:.0} s, {unit}, least to greatest ")), area);
     if inner.is_empty() {
         return;
     }
@@ -191,7 +203,7 @@ fn draw_history(frame: &mut Frame, area: Rect, view: &ViewState) {
         }
     }
     let limit = rows.row(view.hello.limit_tension_n);
-    let text = format!("limit {:.0}", view.hello.limit_tension_n);
+    let text = format!("limit {}", view.units.force_number(view.hello.limit_tension_n));
     buffer.set_stringn(inner.left(), limit, text, usize::from(inner.width), view.theme.caution());
 }
 
@@ -200,7 +212,7 @@ fn footer_line(view: &ViewState) -> Line<'static> {
     if let Some(notice) = &view.notice {
         spans.push(Span::raw(format!("  {notice}")));
     } else {
-        spans.push(Span::styled("  q quit  a alarms seen  h help", view.theme.quiet()));
+        spans.push(Span::styled("  q quit a seen u units b big h help", view.theme.quiet()));
     }
     if view.n_dropped > 0 {
         spans.push(Span::styled(format!("  {} left out", view.n_dropped), view.theme.caution()));
@@ -211,6 +223,8 @@ fn footer_line(view: &ViewState) -> Line<'static> {
 fn draw_help(frame: &mut Frame, area: Rect) {
     let text = "q or Ctrl-C  leave the display; the daemon goes on recording\n\
                 a            acknowledge the alarms, in the name given at the start\n\
+                u            units: N, kN, kgf with km/h, lbf with kt; alarms stay in N and m/s\n\
+                b            big numbers, to be read from a distance, and back\n\
                 h            this help\n\n\
                 Chart: tension over the rail. Shaded the plan's band, dashed the limit, dots\n\
                 the greatest tension at each place since the winch-back, a diamond now.\n\
@@ -218,7 +232,7 @@ fn draw_help(frame: &mut Frame, area: Rect) {
                 The display advises and records only. It is no safety device: interlocks,\n\
                 exclusion zones, local codes and licensed practice decide.\n\
                 No key starts or stops machinery.";
-    let height = 13.min(area.height);
+    let height = 15.min(area.height);
     let width = 80.min(area.width);
     // The cords' line stays in view.
     let top = area.top() + 1.min(area.height);

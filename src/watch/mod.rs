@@ -4,12 +4,14 @@
 //! joins the two with a terminal that is left clean however the program ends, [`follow_plain`] prints a line a second.
 //! A number that is old looks old after 0.2 s and is a word after 1 s, whether its sensor or the daemon fell silent.
 
+mod big;
 mod chart;
 mod draw;
 mod history;
 mod panels;
 mod plain;
 mod rail;
+mod shown;
 mod terminal;
 #[cfg(test)]
 mod tests;
@@ -19,6 +21,7 @@ mod words;
 
 pub use draw::draw;
 pub use plain::{follow_plain, plain_line};
+pub use shown::{ForceUnit, ShownUnits, SpeedUnit};
 pub use terminal::{Choices, WatchError, follow};
 pub use theme::Theme;
 pub use view::ViewState;

@@ -31,7 +31,7 @@ const fn why_no_forecast(phase: Phase) -> &'static str {
 }
 
 fn forecast(view: &ViewState, snapshot: &Snapshot, now: &ReleasedNow, width: u16) -> Vec<Line<'static>> {
-    let (hello, theme) = (&view.hello, view.theme);
+    let (hello, theme, units) = (&view.hello, view.theme, view.units);
     let (low, high) = (now.launch_speed_low_mps, now.launch_speed_high_mps);
     let (min, max) = (hello.plan_speed_min_mps, hello.plan_speed_max_mps);
     let window = against_window(low, high, min, max);
@@ -42,9 +42,9 @@ fn forecast(view: &ViewState, snapshot: &Snapshot, now: &ReleasedNow, width: u16
     };
     let old = if view.snapshot_freshness() == Freshness::Fresh { "" } else { " ~old" };
     let mut lines = vec![
-        Line::styled(format!("speed {:>5.1} m/s{old}", now.launch_speed_mps), theme.strong()),
-        Line::from(format!("      {low:.1} to {high:.1}")),
-        Line::from(format!("window {min:.1} to {max:.1}")),
+        speed_line(view, "speed", now.launch_speed_mps, 1, old),
+        Line::from(format!("      {} to {}", units.speed_number(low, 1), units.speed_number(high, 1))),
+        Line::from(format!("window {} to {}", units.speed_number(min, 1), units.speed_number(max, 1))),
         Line::from(gauge(width, (min, max), (low, now.launch_speed_mps, high), theme.ascii)),
         verdict(window, "IN WINDOW", format!("in {}", percent(now.in_window))),
         Line::styled(format!("peak  {:>5.1} g{old}", now.peak_g), theme.strong()),
@@ -54,14 +54,19 @@ fn forecast(view: &ViewState, snapshot: &Snapshot, now: &ReleasedNow, width: u16
     ];
     lines.extend(on_the_way(view, snapshot));
     if (now.airspeed_mps - now.launch_speed_mps).abs() > 0.05 {
-        lines.push(Line::from(format!("air   {:>5.1} m/s", now.airspeed_mps)));
+        lines.push(speed_line(view, "air  ", now.airspeed_mps, 1, "").style(Style::new()));
     }
     lines.push(Line::styled("forecast, 95 % intervals", theme.quiet()));
     lines
 }
 
+fn speed_line(view: &ViewState, what: &str, speed_mps: f64, decimals: usize, old: &str) -> Line<'static> {
+    let (number, unit) = (view.units.speed_number(speed_mps, decimals), view.units.speed.symbol());
+    Line::styled(format!("{what} {number:>5} {unit}{old}"), view.theme.strong())
+}
+
 /// A probability as people read it; nothing is ever certain.
-fn percent(chance: f64) -> String {
+pub fn percent(chance: f64) -> String {
     match 100.0 * chance {
         percent if percent > 99.0 => String::from(">99 %"),
         percent if percent < 1.0 => String::from("<1 %"),
@@ -70,12 +75,14 @@ fn percent(chance: f64) -> String {
 }
 
 /// What is left to draw and how many cords pull, while drawing; what the hold does to the tension, in the hold.
-fn on_the_way(view: &ViewState, snapshot: &Snapshot) -> Vec<Line<'static>> {
+pub fn on_the_way(view: &ViewState, snapshot: &Snapshot) -> Vec<Line<'static>> {
     let plus_minus = if view.theme.ascii { "+-" } else { "±" };
     let mut lines = Vec::new();
     if let Some(hold) = snapshot.hold {
-        let later = hold.in_a_minute_n.map_or(String::new(), |later_n| format!(", {later_n:.0} N in 1 min"));
-        lines.push(Line::from(format!("fell {:.1}{later}", hold.fell_n)));
+        // One decimal more than a tension: what a hold loses is small.
+        let (decimals, unit) = (view.units.force.decimals() + 1, view.units.force.symbol());
+        lines.push(Line::from(format!("fell {:.decimals$} {unit}", view.units.force_value(hold.fell_n))));
+        lines.extend(hold.in_a_minute_n.map(|later_n| Line::from(format!("{} in 1 min", view.units.force(later_n)))));
         lines.extend(hold.window_missed_in_s.map(|in_s| {
             let text = if in_s < 1.0 { String::from("window MISSED") } else { format!("window missed in {in_s:.0} s") };
             Line::styled(text, view.theme.caution())
@@ -83,7 +90,10 @@ fn on_the_way(view: &ViewState, snapshot: &Snapshot) -> Vec<Line<'static>> {
         return lines;
     }
     lines.extend(snapshot.to_go.map(|to_go| {
-        let tension = to_go.tension_n.map_or(String::new(), |tension_n| format!(", {tension_n:+.0} N"));
+        let tension = to_go.tension_n.map_or(String::new(), |tension_n| {
+            let sign = if tension_n < 0.0 { '-' } else { '+' };
+            format!(", {sign}{}", view.units.force(tension_n.abs()))
+        });
         Line::from(format!("to go {:.2} m{tension}", to_go.draw_m))
     }));
     lines.extend(snapshot.cords_fit.map(|fit| {
@@ -99,14 +109,14 @@ fn on_the_way(view: &ViewState, snapshot: &Snapshot) -> Vec<Line<'static>> {
 }
 
 fn launched(view: &ViewState, seen: &LaunchSeen) -> Vec<Line<'static>> {
-    let (hello, theme) = (&view.hello, view.theme);
+    let (hello, theme, units) = (&view.hello, view.theme, view.units);
     let (min, max) = (hello.plan_speed_min_mps, hello.plan_speed_max_mps);
     let window = against_window(seen.launch_speed_mps, seen.launch_speed_mps, min, max);
     let limit = against_limit(seen.peak_g, seen.peak_g, hello.limit_peak_g);
     let style = |good: bool| if good { theme.good() } else { theme.caution() };
     vec![
-        Line::styled(format!("speed {:>5.2} m/s", seen.launch_speed_mps), theme.strong()),
-        Line::from(format!("window {min:.1} to {max:.1}")),
+        speed_line(view, "speed", seen.launch_speed_mps, 2, ""),
+        Line::from(format!("window {} to {}", units.speed_number(min, 1), units.speed_number(max, 1))),
         Line::styled(window, style(window == "IN WINDOW")),
         Line::styled(format!("peak  {:>5.2} g", seen.peak_g), theme.strong()),
         Line::from(limit_words(hello.limit_peak_g, hello.proof_limit_g)),

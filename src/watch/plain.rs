@@ -7,6 +7,7 @@ use crate::feed::{ClientError, FeedClient};
 
 use super::CAUTION;
 use super::draw::cords_line;
+use super::panels::{on_the_way, percent};
 use super::theme::Theme;
 use super::view::ViewState;
 
@@ -21,15 +22,18 @@ pub fn plain_line(view: &ViewState) -> String {
     if let Some(snapshot) = view.current() {
         if let Some(now) = snapshot.released_now {
             parts.push(format!(
-                "released now {:.1} m/s ({:.1} to {:.1}), {:.1} g ({:.1} to {:.1})",
+                "released now {:.1} m/s ({:.1} to {:.1}), in window {}, {:.1} g ({:.1} to {:.1})",
                 now.launch_speed_mps,
                 now.launch_speed_low_mps,
                 now.launch_speed_high_mps,
+                percent(now.in_window),
                 now.peak_g,
                 now.peak_g_low,
                 now.peak_g_high
             ));
         }
+        let on_the_way = on_the_way(view, snapshot);
+        parts.extend(on_the_way.iter().map(ToString::to_string));
         if let Some(seen) = snapshot.last_launch {
             parts.push(format!("launched {:.2} m/s, {:.2} g", seen.launch_speed_mps, seen.peak_g));
         }

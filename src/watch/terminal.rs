@@ -18,6 +18,7 @@ use crate::feed::message::{Command, Message};
 use crate::feed::{ClientError, FeedClient};
 
 use super::draw;
+use super::shown::ShownUnits;
 use super::theme::Theme;
 use super::view::ViewState;
 
@@ -54,6 +55,9 @@ pub struct Choices {
     /// Named in acknowledgements.
     pub person: String,
     pub theme: Theme,
+    pub units: ShownUnits,
+    /// Begin with large numbers.
+    pub big: bool,
 }
 
 /// Follows the feed on the terminal until a key or a signal ends it. A lost daemon is tried again every second.
@@ -73,7 +77,8 @@ pub fn follow(choices: &Choices) -> Result<(), WatchError> {
     for signal in [SIGTERM, SIGHUP, SIGINT] {
         signal_hook::flag::register(signal, stop.clone())?;
     }
-    let view = ViewState::new(client.hello().clone(), choices.theme);
+    let mut view = ViewState::new(client.hello().clone(), choices.theme);
+    (view.units, view.big) = (choices.units, choices.big);
     // Also sets a panic hook that leaves the terminal clean.
     let mut terminal = ratatui::try_init()?;
     let ended = Watch::new(choices, client, view).run(&mut terminal, &stop);
@@ -218,6 +223,11 @@ impl<'a> Watch<'a> {
             KeyCode::Char('h' | '?') => self.view.help = !self.view.help,
             KeyCode::Esc => self.view.help = false,
             KeyCode::Char('a') => self.acknowledge(),
+            KeyCode::Char('b') => self.view.big = !self.view.big,
+            KeyCode::Char('u') => {
+                self.view.units = self.view.units.next();
+                self.view.notice = Some(format!("shown in {}", self.view.units.symbols()));
+            }
             _ => {}
         }
         self.drawn_at = None;

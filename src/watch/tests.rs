@@ -5,7 +5,7 @@ use ratatui::backend::TestBackend;
 use ratatui::style::{Color, Modifier};
 
 use super::history::Range;
-use super::{Theme, ViewState, draw, plain_line};
+use super::{ForceUnit, ShownUnits, SpeedUnit, Theme, ViewState, draw, plain_line};
 use crate::feed::message::{Event, Hello, Message, Snapshot};
 use std::collections::BTreeMap;
 
@@ -15,6 +15,7 @@ use crate::live::{
 };
 
 const COLOUR: Theme = Theme { colour: true, ascii: false };
+const POUNDS_AND_KNOTS: ShownUnits = ShownUnits { force: ForceUnit::PoundForce, speed: SpeedUnit::Knot };
 const PLAIN: Theme = Theme { colour: false, ascii: true };
 
 /// The invented rig `north-pier`. Invented data.
@@ -215,6 +216,41 @@ fn holding_in_ascii_at_80_by_24() {
 }
 
 #[test]
+fn holding_in_big_numbers_at_80_by_24() {
+    let mut view = holding(COLOUR);
+    view.big = true;
+    insta::assert_snapshot!(text(&view, 80, 24));
+}
+
+#[test]
+fn holding_in_pounds_and_knots_at_80_by_24() {
+    let mut view = holding(COLOUR);
+    view.units = POUNDS_AND_KNOTS;
+    let shown = text(&view, 80, 24);
+    // 688 N over 4.448222 N, 16.6 m/s over 0.514444 m/s (NIST SP 811, appendix B.8).
+    assert!(shown.contains("tension 154.7 lbf") && shown.contains("32.3 kt"), "{shown}");
+    assert!(!shown.contains("688") && !shown.contains("16.6"), "one unit at a time:\n{shown}");
+    insta::assert_snapshot!(shown);
+}
+
+#[test]
+fn big_numbers_of_a_frozen_daemon_are_gone_within_a_second() {
+    let mut view = holding(PLAIN);
+    view.big = true;
+    let fresh = text(&view, 80, 24);
+    view.since_snapshot_s = 0.5;
+    let stale = text(&view, 80, 24);
+    assert!(fresh.contains("###") && stale.contains("(0.5 s old)") && stale != fresh, "{stale}");
+    view.since_snapshot_s = 1.0;
+    let old = text(&view, 80, 24);
+    assert!(old.contains("tension SILENT, treat as loaded") && old.contains("no forecast"), "{old}");
+    let mut blank = ViewState::new(hello(), PLAIN);
+    blank.big = true;
+    let middle = |shown: &str| shown.lines().skip(4).take(18).map(str::to_owned).collect::<Vec<_>>();
+    assert_eq!(middle(&old), middle(&text(&blank, 80, 24)), "a number of the past is still there");
+}
+
+#[test]
 fn slack_at_80_by_24() {
     insta::assert_snapshot!(text(&slack(COLOUR), 80, 24));
 }
@@ -240,7 +276,11 @@ fn all_views() -> Vec<ViewState> {
     let mut lost = holding(COLOUR);
     lost.lost = Some("the daemon stops".into());
     lost.since_snapshot_s = 40.0;
-    let views = [holding(COLOUR), holding(PLAIN), slack(COLOUR), at_rest(), pulled_cable()];
+    let mut big = holding(PLAIN);
+    big.big = true;
+    let mut pounds = holding(COLOUR);
+    pounds.units = POUNDS_AND_KNOTS;
+    let views = [big, pounds, holding(COLOUR), holding(PLAIN), slack(COLOUR), at_rest(), pulled_cable()];
     views.into_iter().chain([ViewState::new(hello(), COLOUR), help, lost]).collect()
 }
 
@@ -358,8 +398,16 @@ fn one_plain_line_answers_what_the_screen_answers() {
     assert_eq!(
         plain_line(&holding(PLAIN)),
         "CORDS LOADED  694 N  1410 J  keep clear | HOLD | line 688 N | x 0.00 m | \
-         released now 16.6 m/s (16.2 to 17.0), 8.1 g (7.8 to 8.4)"
+         released now 16.6 m/s (16.2 to 17.0), in window 99 %, 8.1 g (7.8 to 8.4) | fell 5.1 N | 684 N in 1 min"
     );
+    let mut drawing = holding(PLAIN);
+    let mut now = drawing.snapshot.clone().unwrap();
+    now.hold = None;
+    now.to_go = Some(ToGo { draw_m: 1.69, tension_n: Some(180.0) });
+    now.cords_fit = Some(CordsFit { cords: 6.0, low: 5.7, high: 6.3, rig_file: 7 });
+    drawing.apply(Message::Snapshot(now));
+    let line = plain_line(&drawing);
+    assert!(line.ends_with("to go 1.69 m, +180 N | fits 6.0 +- 0.3 of 7 cords"), "{line}");
     let line = plain_line(&pulled_cable());
     assert!(line.starts_with("TENSION UNKNOWN, TREAT AS LOADED") && line.contains("line SILENT"), "{line}");
     assert!(line.contains("ALARM: cords loaded and line and anchor silent"), "{line}");

@@ -6,6 +6,7 @@ use crate::feed::message::{Event, Hello, Message, Snapshot};
 use crate::live::{CordsNow, Phase};
 
 use super::history::{RailTrace, Range, TimeHistory};
+use super::shown::ShownUnits;
 use super::theme::Theme;
 use super::words::{Freshness, Reading};
 
@@ -30,6 +31,9 @@ pub struct ViewState {
     /// Answer to the last key.
     pub notice: Option<String>,
     pub help: bool,
+    pub units: ShownUnits,
+    /// Large numbers in place of chart and panels.
+    pub big: bool,
 }
 
 /// What the cords' line may say.
@@ -54,6 +58,8 @@ impl ViewState {
             n_dropped: 0,
             notice: None,
             help: false,
+            units: ShownUnits::default(),
+            big: false,
         }
     }
 
@@ -137,6 +143,13 @@ impl ViewState {
 
     pub fn line_tension(&self) -> Reading {
         self.reading("release_line_tension")
+    }
+
+    /// Tension of the release line in the chosen unit, or a word.
+    pub fn line_text(&self) -> String {
+        let line = self.line_tension();
+        let shown = Reading { value: line.value.map(|tension_n| self.units.force_value(tension_n)), ..line };
+        shown.text(self.units.force.decimals(), self.units.force.symbol())
     }
 
     pub fn x(&self) -> Reading {

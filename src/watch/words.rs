@@ -45,6 +45,10 @@ impl Reading {
         }
     }
 
+    pub fn is_fresh(&self) -> bool {
+        self.freshness == Freshness::Fresh
+    }
+
     pub fn aged(value: f64, age_s: f64) -> Self {
         let freshness = Freshness::of(age_s);
         let value = (freshness != Freshness::Silent && value.is_finite()).then_some(value);
