@@ -11,6 +11,7 @@ use firmware_protocol::{
     Deframed, Deframer, Header, MAX_COBS_LEN, MAX_FRAME_LEN, Message, SetRate, TimeRequest, decode, encode,
 };
 use tautrail::capture::{Block, Captured, Counts, DeviceDecoder, TimeReply};
+use tautrail::rig::{Device, parse};
 
 /// Compiles the sketch with every warning an error; runs it with this on its serial port; what it sends.
 fn run_sketch(speak_frames: bool, host_bytes: &[u8]) -> Vec<u8> {
@@ -96,6 +97,66 @@ fn the_sketch_in_frames_is_taken_whole_over_the_wrap_of_its_clock() {
         let samples = pair[1].first_index - pair[0].first_index;
         assert!(ticks.abs_diff(samples * 10_000) < 1_000, "{ticks} ticks for {samples} samples");
     }
+}
+
+/// How the rig file of a crew with this board would describe it.
+const SKETCH_IN_TEXT: &str = r#"
+[[device]]
+name = "winch-scale"
+port = "ports/winch-scale"
+baud = 115200
+protocol = "text"
+[device.text]
+separator = ","
+header_lines = 1
+time_field = 1
+time_unit = "us"
+time_wrap = 4294967296
+interval = "10 ms"
+column = [{ name = "line", field = 2 }, { name = "anchor", field = 3 }]
+
+[[channel]]
+name = "line"
+device = "winch-scale"
+device_channel = "line"
+role = "release_line_tension"
+"#;
+
+fn sketch_device() -> Device {
+    let launcher = include_str!("../tools/rehearsal/north-pier.toml").split("[[device]]").next().unwrap();
+    let rig = parse(&format!("{launcher}{SKETCH_IN_TEXT}")).unwrap_or_else(|error| panic!("{error}"));
+    rig.devices.into_iter().next().unwrap()
+}
+
+#[test]
+fn the_text_decoder_takes_every_line_of_the_sketch_over_the_wrap_of_its_clock() {
+    let sent = run_sketch(false, &[]);
+    let mut decoder = DeviceDecoder::of(&sketch_device());
+    let (mut blocks, mut other) = (Vec::new(), Vec::new());
+    for (k, line) in (0_i64..).zip(sent.split_inclusive(|byte| *byte == b'\n')) {
+        // A line comes ten milliseconds after the one before, in two reads.
+        let host_ns = 10_000_000 * k;
+        let (first, rest) = line.split_at(line.len() / 2);
+        let mut sink = |captured| match captured {
+            Captured::Block(block) => blocks.push(block),
+            Captured::Gap(_) | Captured::Rejected(_) => other.push(captured),
+            _ => {}
+        };
+        decoder.feed(host_ns, first, &mut sink);
+        decoder.feed(host_ns + 1_000_000, rest, &mut sink);
+    }
+    let printed = String::from_utf8(sent).unwrap();
+    let times_us: Vec<u64> =
+        printed.lines().skip(1).map(|line| line.split(',').next().unwrap().parse().unwrap()).collect();
+    assert!(times_us.first() > times_us.last(), "the board's 32 bits start again on the way");
+    assert_eq!((blocks.len(), other), (times_us.len(), vec![]), "a reading a line, nothing else");
+    for (block, time_us) in blocks.iter().zip(&times_us) {
+        assert_eq!(block.counts, [Counts::Float(vec![400.0]), Counts::Float(vec![500.0])]);
+        assert_eq!(block.boot_id, blocks[0].boot_id, "a wrap is no new boot");
+        assert_eq!(block.first_tick % (1000 << 32), time_us * 1000, "ticks are the board's time, carried on");
+    }
+    assert!(blocks.windows(2).all(|pair| pair[1].first_tick > pair[0].first_tick));
+    assert_eq!(blocks[blocks.len() - 1].first_tick / (1000 << 32), 1, "one turn");
 }
 
 #[test]

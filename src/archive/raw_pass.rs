@@ -2,7 +2,8 @@
 
 use crate::calibration::Tare;
 use crate::capture::{
-    Captured, ClockPiece, ClockSamples, DeviceDescription, Edge, N_DESCRIPTIONS, NominalClock, Reboot, piece_at,
+    Captured, ClockPiece, ClockSamples, DeviceDescription, Edge, LeastSteps, N_DESCRIPTIONS, NominalClock, Reboot,
+    piece_at,
 };
 use crate::journal::{Damage, SegmentOpen};
 use crate::link::{DeviceIdx, Lost};
@@ -29,6 +30,7 @@ pub(super) struct DevicePass {
     layouts: Vec<(u32, u16, u16)>,
     clock: ClockSamples,
     nominal: Option<NominalClock>,
+    pub(super) steps: LeastSteps,
     /// Edges that become events; as many as there may be events.
     pub(super) edges: Vec<Edge>,
     n_more_edges: u64,
@@ -48,6 +50,7 @@ impl DevicePass {
             layouts: Vec::new(),
             clock: ClockSamples::default(),
             nominal: None,
+            steps: LeastSteps::default(),
             edges: Vec::new(),
             n_more_edges: 0,
             n_samples: 0,
@@ -283,6 +286,7 @@ impl<'w> RawPass<'w> {
                     stream: block.stream,
                 };
                 device.n_samples += u64::from(block.n_samples);
+                device.steps.take(&block);
                 writer.append_block(handle, &row, &block.counts)?;
             }
             Captured::Gap(gap) => {

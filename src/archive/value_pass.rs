@@ -129,6 +129,7 @@ impl<'a> ValuePass<'a> {
                     bandwidth_hz: described.bandwidth_hz,
                     time_uncertainty_s: u_ns * 1e-9,
                     counts_range: described.encoding.range(),
+                    count_step: self.devices[index].steps.of(stream.stream, place),
                 };
                 let (group_delay_s, ticks_per_sample) = (described.group_delay_s, stream.ticks_per_sample);
                 let saturates = described.nominal_min..=described.nominal_max;

@@ -53,6 +53,8 @@ pub struct Sampling {
     pub time_uncertainty_s: f64,
     /// The counts that the encoding can carry; at its ends the channel saturates. `None` for float encodings.
     pub counts_range: Option<RangeInclusive<f64>>,
+    /// The step in which counts move: 1 for integers, what a display resolves for printed numbers.
+    pub count_step: f64,
 }
 
 /// The signal of a channel's counts. `time_s` has the channel's group delay already taken off.
@@ -89,7 +91,7 @@ pub fn signal_from_counts(
         time_uncertainty_s: sampling.time_uncertainty_s,
         nominal_rate_hz: sampling.nominal_rate_hz,
         bandwidth_hz: sampling.bandwidth_hz,
-        resolution: value_per_count(calibration, calibration.zero_counts).abs(),
+        resolution: value_per_count(calibration, calibration.zero_counts).abs() * sampling.count_step,
         range,
     })
 }
@@ -177,6 +179,7 @@ mod tests {
             bandwidth_hz: Some(2_000.0),
             time_uncertainty_s: 1e-5,
             counts_range: Some(-8_388_608.0..=8_388_607.0),
+            count_step: 1.0,
         }
     }
 

@@ -5,6 +5,7 @@ mod decoder;
 mod description;
 mod device;
 mod sample;
+mod steps;
 mod text;
 mod unpack;
 
@@ -16,3 +17,4 @@ pub(crate) use decoder::N_DESCRIPTIONS;
 pub use decoder::{Counters, FrameDecoder};
 pub use device::DeviceDecoder;
 pub use sample::*;
+pub use steps::LeastSteps;

@@ -1,14 +1,16 @@
 //! One channel of the rig as it is now: counts to values, age, extremes since the last snapshot, recent past.
 
 use crate::calibration::{Level, Tare, TareError, tare, to_value};
-use crate::rig::{Channel, Coefficients, Role};
+use crate::rig::{Channel, Coefficients, Device, LONGEST_INTERVAL_S, Protocol, Role, SILENT_INTERVALS};
 
 use super::health::Health;
 use super::state::ChannelNow;
 use super::trail::Trail;
 
-/// From this age on a value is not used for any decision.
+/// From this age on a value is not used for any decision; of a slow instrument after [`SILENT_INTERVALS`] of its intervals.
 pub const SILENT_NS: i64 = 500_000_000;
+/// However slow an instrument is, an older value says nothing of the cords now.
+const SILENT_AT_LAST_NS: i64 = (LONGEST_INTERVAL_S * SILENT_INTERVALS * 1e9) as i64;
 
 #[derive(Debug)]
 pub struct ChannelMonitor {
@@ -16,6 +18,8 @@ pub struct ChannelMonitor {
     pub role: Role,
     pub device: String,
     calibration: Coefficients,
+    /// Between two samples, as the rig file or the device declares it.
+    interval_ns: i64,
     newest: Option<(i64, f64)>,
     extremes: Option<(f64, f64)>,
     trail: Trail,
@@ -23,8 +27,13 @@ pub struct ChannelMonitor {
 }
 
 impl ChannelMonitor {
-    pub fn new(channel: &Channel) -> Self {
+    /// `devices` are the rig's.
+    pub fn new(channel: &Channel, devices: &[Device]) -> Self {
+        let declared_s = devices.iter().find(|device| device.name == channel.device).and_then(|device| {
+            if let Protocol::Text(instrument) = &device.protocol { Some(instrument.interval_s) } else { None }
+        });
         Self {
+            interval_ns: declared_s.map_or(0, |interval_s| (interval_s * 1e9) as i64),
             name: channel.name.clone(),
             role: channel.role,
             device: channel.device.clone(),
@@ -44,7 +53,7 @@ impl ChannelMonitor {
         }
         self.newest = Some((t_ns, value));
         self.extremes = Some(self.extremes.map_or((value, value), |(min, max)| (min.min(value), max.max(value))));
-        self.trail.push(t_ns, value);
+        self.trail.push(t_ns, value, self.silent_ns());
         self.health.take(t_ns, counts);
         Some(value)
     }
@@ -64,7 +73,22 @@ impl ChannelMonitor {
     }
 
     pub fn is_fresh(&self, host_ns: i64) -> bool {
-        self.age_ns(host_ns).is_some_and(|age_ns| age_ns < SILENT_NS)
+        self.age_ns(host_ns).is_some_and(|age_ns| age_ns < self.silent_ns())
+    }
+
+    /// Age from which on the newest value counts for nothing.
+    pub fn silent_ns(&self) -> i64 {
+        ((SILENT_INTERVALS * self.interval_ns as f64) as i64).clamp(SILENT_NS, SILENT_AT_LAST_NS)
+    }
+
+    /// Between two samples.
+    pub fn interval_ns(&self) -> i64 {
+        self.interval_ns
+    }
+
+    /// The device declares how far its samples are apart.
+    pub fn set_interval(&mut self, interval_ns: i64) {
+        self.interval_ns = interval_ns;
     }
 
     /// Mean over the last 5 to 10 ms, of a fresh channel only.

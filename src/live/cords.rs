@@ -4,6 +4,8 @@ use super::channel::ChannelMonitor;
 use super::plan::Plan;
 use super::state::CordsNow;
 
+const SLACK_FOR_NS: i64 = 500_000_000;
+
 /// What the tension cells say together.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
 pub struct Cells {
@@ -12,14 +14,18 @@ pub struct Cells {
     pub every_cell_fresh: bool,
     /// A fresh cell reads further below zero than the slack threshold: its zero or its wiring is wrong.
     pub implausible: bool,
+    /// For how long they must read slack to be believed: two readings of the slowest at least.
+    pub slack_for_ns: i64,
 }
 
 impl Cells {
     pub fn of(channels: &[ChannelMonitor], host_ns: i64, slack_tension_n: f64) -> Self {
-        let mut cells = Self { tension_n: None, every_cell_fresh: true, implausible: false };
+        let mut cells =
+            Self { tension_n: None, every_cell_fresh: true, implausible: false, slack_for_ns: SLACK_FOR_NS };
         let mut any = false;
         for channel in channels.iter().filter(|channel| channel.is_tension()) {
             any = true;
+            cells.slack_for_ns = cells.slack_for_ns.max(2 * channel.interval_ns());
             match channel.level(host_ns) {
                 None => cells.every_cell_fresh = false,
                 Some(level_n) => {
@@ -45,8 +51,6 @@ pub struct SlackRule {
     was_loaded: bool,
 }
 
-const SLACK_FOR_NS: i64 = 500_000_000;
-
 impl SlackRule {
     /// Judges one instant.
     pub fn judge(
@@ -71,7 +75,7 @@ impl SlackRule {
             return CordsNow::Unknown;
         }
         let since_ns = *self.slack_since_ns.get_or_insert(host_ns);
-        match (host_ns - since_ns >= SLACK_FOR_NS, self.was_loaded) {
+        match (host_ns - since_ns >= cells.slack_for_ns, self.was_loaded) {
             (true, _) => CordsNow::Slack,
             (false, true) => loaded,
             (false, false) => CordsNow::Unknown,

@@ -213,6 +213,16 @@ impl DeviceMonitor {
         self.streams.iter().find(|map| (map.description_id, map.stream) == (description_id, stream))
     }
 
+    /// How far the samples of the rig's channels are apart, ns: index in the rig's channels, interval.
+    pub fn intervals(&self, description: &DeviceDescription) -> Vec<(usize, i64)> {
+        let interval_ns = |map: &StreamMap| (f64::from(map.ticks_per_sample) * 1e9 / description.tick_rate_hz) as i64;
+        let of = |map: &StreamMap| {
+            let interval_ns = interval_ns(map);
+            map.targets.iter().flatten().map(move |idx| (*idx, interval_ns)).collect::<Vec<_>>()
+        };
+        self.streams.iter().filter(|map| map.description_id == description.description_id).flat_map(of).collect()
+    }
+
     /// Whether it counts a clock of its own, which exchanges can tie to the host's.
     pub fn has_ticks(&self) -> bool {
         self.has_ticks

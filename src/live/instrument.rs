@@ -73,7 +73,7 @@ impl Live {
             plan,
             no_plan,
             devices: rig.devices.iter().map(DeviceMonitor::new).collect(),
-            channels: rig.channels.iter().map(ChannelMonitor::new).collect(),
+            channels: rig.channels.iter().map(|channel| ChannelMonitor::new(channel, &rig.devices)).collect(),
             tracker: Tracker::new(rig.plan.slack_tension_n, rig.rail.zero_mark_x_m),
             board: Board::default(),
             cords: CordsNow::Unknown,
@@ -128,6 +128,11 @@ impl Live {
                 for (idx, low_counts, high_counts) in device.ranges(description) {
                     if let Some(channel) = channels.get_mut(idx) {
                         channel.health.set_range(low_counts, high_counts);
+                    }
+                }
+                for (idx, interval_ns) in device.intervals(description) {
+                    if let Some(channel) = channels.get_mut(idx) {
+                        channel.set_interval(interval_ns);
                     }
                 }
                 rules::channels_described(board, rig, &device.name, &missing, host_ns)
@@ -200,6 +205,7 @@ impl Live {
             line_n: self.level(Role::ReleaseLineTension, host_ns),
             anchor_n: self.level(Role::CordAnchorTension, host_ns),
             every_cell_fresh: self.cells.all_speak(),
+            slack_for_ns: self.cells.slack_for_ns,
             tension_n: self.cells.tension_n,
             x_m: self.x_m(host_ns),
             speed_mps: speed(SPEED_WINDOW_NS),

@@ -20,7 +20,6 @@ const RELEASED_MPS: f64 = 0.3;
 const RELEASED_M: f64 = 0.03;
 
 const TAUT_FOR_NS: i64 = 100 * MS;
-const SLACK_FOR_NS: i64 = 500 * MS;
 const MOVING_FOR_NS: i64 = 300 * MS;
 const STANDING_FOR_NS: i64 = 700 * MS;
 const AT_REST_FOR_NS: i64 = 500 * MS;
@@ -37,6 +36,8 @@ pub struct Seen {
     pub anchor_n: Option<f64>,
     /// Whether every tension cell of the rig is fresh.
     pub every_cell_fresh: bool,
+    /// For how long they must read slack.
+    pub slack_for_ns: i64,
     /// Greatest tension of any fresh cell.
     pub tension_n: Option<f64>,
     pub x_m: Option<f64>,
@@ -179,7 +180,7 @@ impl Tracker {
         let still = speed(|v| v.abs() < STANDING_MPS);
         Stood {
             taut: dwells.taut.lasts(above, t, TAUT_FOR_NS),
-            slack: dwells.slack.lasts(below && seen.every_cell_fresh, t, SLACK_FOR_NS),
+            slack: dwells.slack.lasts(below && seen.every_cell_fresh, t, seen.slack_for_ns),
             back: dwells.back.lasts(speed(|v| v < -MOVING_MPS), t, MOVING_FOR_NS),
             forward: dwells.forward.lasts(speed(|v| v > MOVING_MPS), t, MOVING_FOR_NS),
             standing: dwells.standing.lasts(still, t, STANDING_FOR_NS),

@@ -1,14 +1,12 @@
 //! A channel's recent past in short bins: level, slope and extremes without keeping every sample.
 //!
 //! Times are host nanoseconds of the samples, not of their arrival. A clock map that is fitted again may step back a
-//! little; a pause longer than [`PAUSE_NS`] or a real step back starts the trail anew, so no slope is ever drawn across a
+//! little; a pause in which the channel fell silent or a real step back starts the trail anew, so no slope is ever drawn across a
 //! gap.
 
 use std::collections::VecDeque;
 
 const BIN_NS: i64 = 5_000_000;
-/// Longest pause that still counts as one run of samples.
-const PAUSE_NS: i64 = 500_000_000;
 /// A step back up to this is a refit of the clock map.
 const STEP_BACK_NS: i64 = 20_000_000;
 const N_BINS_MAX: usize = 400;
@@ -54,10 +52,10 @@ impl Trail {
         (3 * longest < slots.end.saturating_sub(slots.start) && n > 0.0).then(|| sum / n)
     }
 
-    /// Takes one finite sample; others are the caller's to refuse.
-    pub fn push(&mut self, t_ns: i64, value: f64) {
+    /// Takes one finite sample; others are the caller's to refuse. After more than `pause_ns` the trail begins anew.
+    pub fn push(&mut self, t_ns: i64, value: f64, pause_ns: i64) {
         let since_ns = self.newest_t_ns.map_or(0, |newest| t_ns - newest);
-        if !(-STEP_BACK_NS..=PAUSE_NS).contains(&since_ns) {
+        if !(-STEP_BACK_NS..=pause_ns).contains(&since_ns) {
             self.bins.clear();
         }
         let t_ns = if (-STEP_BACK_NS..0).contains(&since_ns) { t_ns - since_ns } else { t_ns };
@@ -102,11 +100,12 @@ mod tests {
     use super::*;
 
     const MS: i64 = 1_000_000;
+    const PAUSE_NS: i64 = 500 * MS;
 
     fn ramp(from_ms: i64, to_ms: i64, per_s: f64, trail: &mut Trail) {
         for tenth in from_ms * 10..to_ms * 10 {
             let t_ns = tenth * MS / 10;
-            trail.push(t_ns, per_s * t_ns as f64 * 1e-9);
+            trail.push(t_ns, per_s * t_ns as f64 * 1e-9, PAUSE_NS);
         }
     }
 
@@ -124,7 +123,7 @@ mod tests {
     fn a_slow_display_has_a_mean_and_a_hole_has_none() {
         let shown = |times_ms: &[i64]| {
             let mut trail = Trail::default();
-            times_ms.iter().for_each(|ms| trail.push(ms * MS, *ms as f64));
+            times_ms.iter().for_each(|ms| trail.push(ms * MS, *ms as f64, PAUSE_NS));
             trail.mean_between(1000 * MS, 2000 * MS)
         };
         assert_eq!(shown(&[1000, 1200, 1400, 1600, 1800]), Some(1400.0));
@@ -157,10 +156,10 @@ mod tests {
     fn the_level_forgets_what_is_older_than_ten_milliseconds() {
         let mut trail = Trail::default();
         for ms in 0..100 {
-            trail.push(ms * MS, 700.0);
+            trail.push(ms * MS, 700.0, PAUSE_NS);
         }
         for ms in 100..110 {
-            trail.push(ms * MS, 3.0);
+            trail.push(ms * MS, 3.0, PAUSE_NS);
         }
         assert_eq!(trail.level(), Some(3.0));
     }
@@ -169,7 +168,7 @@ mod tests {
     fn a_channel_of_ten_samples_a_second_has_a_slope_too() {
         let mut trail = Trail::default();
         for n in 0..10 {
-            trail.push(n * 100 * MS, n as f64);
+            trail.push(n * 100 * MS, n as f64, PAUSE_NS);
         }
         assert!((trail.slope_per_s(500 * MS).unwrap() - 10.0).abs() < 1e-9);
         assert_eq!(trail.slope_per_s(20 * MS), None);

@@ -6,6 +6,7 @@
 
 use crate::rig::{Rig, Role};
 
+use super::dynamics::RailModel;
 use super::motion::Track;
 use super::rows::{Book, Budget};
 use super::sensors::Sensors;
@@ -20,6 +21,11 @@ const SLOPE_S: f64 = 0.005;
 const LEAST_SLOPE_MPS3: f64 = 20.0;
 /// Over which the smoother makes neighbours alike.
 const SMOOTHED_S: f64 = 0.0005;
+
+/// Rails recoil at 0.1 to 0.4 m/s (common practice, no published source); faster than this none does.
+const RAIL_FASTEST_MPS: f64 = 1.0;
+/// Times the speed that a rail on the rig file's feet would reach.
+const RAIL_BEYOND_MODEL: f64 = 3.0;
 
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) struct Separation {
@@ -119,6 +125,20 @@ fn relative_u_drag(rig: &Rig) -> f64 {
     let relative =
         |given: crate::rig::Given| if given.value == 0.0 { 0.0 } else { given.standard_uncertainty / given.value };
     relative(rig.payload.drag_area_m2).hypot(relative(rig.payload.mass_kg))
+}
+
+/// A sentence where encoder and accelerometer differ by a speed that no rail has: one of them is wrong, and nobody can say
+/// which.
+pub(super) fn contradiction(found: &Separation, track: &Track, rail: Option<RailModel>) -> Option<String> {
+    let allowed_mps = RAIL_FASTEST_MPS.max(RAIL_BEYOND_MODEL * rail.map_or(0.0, |rail| rail.speed_mps));
+    let rail_mps = track.rail_v_mps[track.index_at(found.time_s)];
+    (track.has_position && track.has_specific_force && rail_mps.abs() > allowed_mps).then(|| {
+        format!(
+            "the encoder says {:.1} m/s along the rail, the accelerometer {:.1} m/s against the ground: a rail moves at {allowed_mps:.1} m/s at most, so one of them is wrong; look at the accelerometer's range and calibration, and whether the encoder slips",
+            found.speed_mps - rail_mps,
+            found.speed_mps
+        )
+    })
 }
 
 /// How the loss of contact was seen, in words.

@@ -108,6 +108,10 @@ impl Evidence<'_> {
             words.push(alone.clone());
             return if finished { Outcome::ShuttleAlone } else { Outcome::Truncated };
         }
+        if let Some(contradiction) = &self.stroke.contradiction {
+            words.push(contradiction.clone());
+            return if finished { Outcome::Launched } else { Outcome::Truncated };
+        }
         let Some(separation) = self.stroke.separation else {
             let pushed = "the payload was pushed all the way: no loss of contact was seen";
             words.push(self.stroke.together.clone().unwrap_or_else(|| pushed.to_owned()));

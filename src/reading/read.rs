@@ -215,6 +215,8 @@ pub(super) struct Stroke {
     pub together: Option<String>,
     /// Why there is taken to have been no payload.
     pub alone: Option<String>,
+    /// Why encoder and accelerometer can't both be right.
+    pub contradiction: Option<String>,
 }
 
 /// Separation and all that hangs on it.
@@ -258,7 +260,7 @@ fn stroke_rows(
             return Stroke::default();
         }
     };
-    let step = stroke::step(track, sensors.specific_force, release.time_s, crossing.time_s);
+    let step = stroke::step(track, sensors.specific_force, release, crossing.time_s);
     let (separation, evidence) = match step.filter(Step::is_up) {
         Some(step) => (launch::at(track, step.time_s, U_STEP_S), left_early(&step)),
         None => (crossing, launch::evidence(&crossing, rig)),
@@ -270,6 +272,13 @@ fn stroke_rows(
             book.absent(name, together.clone());
         }
         return Stroke { step, together: Some(together), ..Stroke::default() };
+    }
+    if let Some(contradiction) = launch::contradiction(&separation, track, rail_of(rig, hold)) {
+        book.findings.push(contradiction.clone());
+        for name in SEPARATION_NAMES {
+            book.absent(name, contradiction.clone());
+        }
+        return Stroke { step, contradiction: Some(contradiction), ..Stroke::default() };
     }
     launch::report(&separation, &evidence, track, sensors, rig, book);
     Stroke { separation: Some(separation), step, ..Stroke::default() }

@@ -26,6 +26,8 @@ const ENCODER_TO_M: f64 = 0.05;
 /// After the release, where the level that the specific force steps to is looked at.
 pub(super) const LEVEL_FROM_S: f64 = 0.003;
 pub(super) const LEVEL_TO_S: f64 = 0.010;
+/// Places after an uncertain first guess at which the level is looked for.
+const N_GUESSES: u32 = 10;
 
 #[derive(Debug, Clone, PartialEq)]
 pub(super) struct Release {
@@ -56,7 +58,9 @@ pub(super) fn find<'a>(
     let standing = specific_force.and_then(|signal| stats_between(signal, hint_s - 0.3, hint_s - 0.03));
     let by_line = line.and_then(|line| seen_by_line(line, hint_s, free_line.map_or(0.0, |stats| stats.mean)));
     let near_s = by_line.as_ref().map_or(hint_s, |seen| seen.time_s);
-    let step = specific_force.zip(standing).and_then(|(signal, standing)| seen_by_force(signal, near_s, standing));
+    let u_near_s = by_line.as_ref().map_or(0.0, |seen| seen.budget.total());
+    let step =
+        specific_force.zip(standing).and_then(|(signal, standing)| seen_by_force(signal, near_s, u_near_s, standing));
     let started_force_mps2 = step.as_ref().map(|(_, level)| *level);
     let by_encoder = position.and_then(|position| seen_by_encoder(position, near_s));
     let by_edge = seen_by_edge(edges, near_s);
@@ -179,14 +183,19 @@ fn fall_time_s(times_s: &[f64], values: &[f64], at_s: f64, full_step: f64) -> f6
 }
 
 /// The step in specific force, and the level it reaches.
-fn seen_by_force(signal: &Signal, near_s: f64, standing: Stats) -> Option<(Seen, f64)> {
-    let window = span(signal, near_s - 0.05, near_s + 0.05);
+fn seen_by_force(signal: &Signal, near_s: f64, u_near_s: f64, standing: Stats) -> Option<(Seen, f64)> {
+    let reach_s = 0.05 + 3.0 * u_near_s;
+    let window = span(signal, near_s - reach_s, near_s + reach_s);
     let (times_s, values) = (&signal.time_s[window.clone()], &signal.value[window]);
-    // Twice: the level is looked at after the crossing, wherever the first guess lay.
-    let mut around_s = near_s;
+    let level_at = |at_s: f64| stats_between(signal, at_s + LEVEL_FROM_S, at_s + LEVEL_TO_S).map(|stats| stats.mean);
+    // Twice: the level is looked at after the crossing, wherever the first guess lay. The guess of a slow indicator may lie
+    // well before the release, so that the greatest level after it counts first.
+    let guesses = (0..=N_GUESSES).map(|k| near_s + 3.0 * u_near_s * f64::from(k) / f64::from(N_GUESSES));
+    let level = |at_s: f64| level_at(at_s).unwrap_or(f64::NEG_INFINITY);
+    let mut around_s = guesses.max_by(|a, b| level(*a).total_cmp(&level(*b)))?;
     let mut found = None;
     for _ in 0..2 {
-        let level = stats_between(signal, around_s + LEVEL_FROM_S, around_s + LEVEL_TO_S)?.mean;
+        let level = level_at(around_s)?;
         if level - standing.mean < 5.0 * standing.deviation.max(signal.resolution) {
             return None;
         }

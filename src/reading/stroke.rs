@@ -15,16 +15,18 @@ use super::tension::Hold;
 /// Parts of the stroke at its ends where forces change fast anyway.
 const AFTER_RELEASE_S: f64 = 0.02;
 const BEFORE_SEPARATION_S: f64 = 0.02;
-/// Means of this length, this far before and after an instant, are compared.
+/// Means of this length, this far before and after an instant, are compared; longer ones of a slow channel.
 const MEAN_S: f64 = 0.003;
 const CLEAR_S: f64 = 0.001;
-/// How long before it the course is compared with, to tell how it was changing anyway.
-const EARLIER_S: f64 = CLEAR_S + MEAN_S + CLEAR_S;
 /// Longest gap that is looked across: the force changes by itself in a longer one.
 const LONGEST_GAP_S: f64 = 0.03;
 /// Share of the force that a step must have: losing one of ten cords, or half of the payload's share, is seen.
 const STEP_DOWN: f64 = 0.07;
 const STEP_UP: f64 = 0.2;
+/// A change less its course is after − 2·before + earlier, of means: six times the variance of one.
+const N_MEANS: f64 = 6.0;
+/// Standard deviations of noise that a step must exceed: it is looked for at a hundred places and more.
+const BEYOND_NOISE: f64 = 5.0;
 
 /// Where a gap or saturation leaves the force less well known than this share of its start, no step is called.
 const KNOWN: f64 = 0.02;
@@ -46,39 +48,65 @@ impl Step {
 
 /// The largest step in the stroke that is no part of its smooth course. One that a gap of the accelerometer hides is looked
 /// for on both sides of the gap.
-pub(super) fn step(track: &Track, signal: Option<&Signal>, release_s: f64, separation_s: f64) -> Option<Step> {
+pub(super) fn step(track: &Track, signal: Option<&Signal>, release: &Release, separation_s: f64) -> Option<Step> {
     if !track.has_specific_force {
         return None;
     }
+    let Pace { mean_s, clear_s, n_samples } = Pace::of(signal);
+    let noise_mps2 = track.noise_mps2 * (N_MEANS / n_samples).sqrt();
     let gap = |time_s: f64| signal.and_then(|signal| gap_around(signal, time_s));
     let mean = |from_s: f64, to_s: f64| {
         let values = &track.specific_force_mps2[track.index_at(from_s)..track.index_at(to_s)];
         (!values.is_empty()).then(|| values.iter().sum::<f64>() / values.len() as f64)
     };
-    let start = mean(release_s + AFTER_RELEASE_S, release_s + AFTER_RELEASE_S + MEAN_S)?;
+    let from_s = release.time_s + 3.0 * release.u_s + AFTER_RELEASE_S;
+    let start = mean(from_s, from_s + mean_s)?;
+    // How long before it the course is compared with, to tell how it was changing anyway.
+    let earlier_s = 2.0 * clear_s + mean_s;
     let (mut best, mut largest) = (None, 0.0);
-    let mut time_s = release_s + AFTER_RELEASE_S + 2.0 * MEAN_S;
+    let mut time_s = from_s + 2.0 * mean_s + 2.0 * clear_s;
     while time_s < separation_s - BEFORE_SEPARATION_S {
         let (from_s, to_s) = gap(time_s).map_or((time_s, time_s), |(from_s, to_s)| (from_s, to_s));
-        let (left_s, right_s) = (from_s - CLEAR_S, to_s + CLEAR_S);
-        let before = mean(left_s - MEAN_S, left_s)?;
-        let Some(after) = mean(right_s, right_s + MEAN_S) else { break };
+        let (left_s, right_s) = (from_s - clear_s, to_s + clear_s);
+        let before = mean(left_s - mean_s, left_s)?;
+        let Some(after) = mean(right_s, right_s + mean_s) else { break };
         // What the course before would have done anyway over the same distance.
-        let apart_s = right_s - left_s + MEAN_S;
-        let earlier = mean(left_s - MEAN_S - EARLIER_S, left_s - EARLIER_S)?;
-        let course = (before - earlier) * apart_s / EARLIER_S;
-        let share = ((after - before) - course) / before.abs().max(0.3 * start.abs());
+        let apart_s = right_s - left_s + mean_s;
+        let earlier = mean(left_s - mean_s - earlier_s, left_s - earlier_s)?;
+        let course = (before - earlier) * apart_s / earlier_s;
+        let change = (after - before) - course;
+        let share = change / before.abs().max(0.3 * start.abs());
         let here = track.index_at(time_s);
         let u_mps2 = |time_s: f64| track.u_specific_force_mps2[track.index_at(time_s)];
         let well_known = u_mps2(left_s).max(u_mps2(right_s)) < KNOWN * start.abs();
-        if well_known && !(-STEP_DOWN..=STEP_UP).contains(&share) && share.abs() > largest {
+        let is_no_noise = change.abs() > BEYOND_NOISE * noise_mps2;
+        if well_known && is_no_noise && !(-STEP_DOWN..=STEP_UP).contains(&share) && share.abs() > largest {
             largest = share.abs();
             let x_m = track.motion.x_m[here];
             best = Some(Step { time_s, x_m, from_mps2: before, to_mps2: after });
         }
-        time_s = f64::max(time_s + 0.25 * MEAN_S, if to_s > from_s { to_s } else { 0.0 });
+        time_s = f64::max(time_s + 0.25 * mean_s, if to_s > from_s { to_s } else { 0.0 });
     }
-    best.map(|step| halfway(track, step))
+    best.map(|step| halfway(track, step, clear_s + mean_s))
+}
+
+/// How finely a channel can tell a step: over what means are taken, and what is left clear of it either side.
+struct Pace {
+    mean_s: f64,
+    clear_s: f64,
+    /// In a mean.
+    n_samples: f64,
+}
+
+impl Pace {
+    /// A mean needs a few samples, and a step through a filter lasts as long as that rises (0.35 over its bandwidth).
+    fn of(signal: Option<&Signal>) -> Self {
+        let interval_s = signal.map_or(0.0, |signal| signal.nominal_rate_hz.recip());
+        let rise_s = signal.and_then(|signal| signal.bandwidth_hz).map_or(0.0, |hz| 0.35 / hz);
+        let mean_s = f64::max(MEAN_S, 4.0 * interval_s);
+        let n_samples = if interval_s > 0.0 { mean_s / interval_s } else { 1.0 };
+        Self { mean_s, clear_s: f64::max(CLEAR_S, 0.5 * (interval_s + rise_s)), n_samples }
+    }
 }
 
 /// The gap of a channel that an instant lies in, if it is not too long.
@@ -91,10 +119,9 @@ fn gap_around(signal: &Signal, time_s: f64) -> Option<(f64, f64)> {
 }
 
 /// The instant at which the force is half-way through the step.
-fn halfway(track: &Track, step: Step) -> Step {
+fn halfway(track: &Track, step: Step, reach_s: f64) -> Step {
     let half = 0.5 * (step.from_mps2 + step.to_mps2);
-    let (first, last) =
-        (track.index_at(step.time_s - CLEAR_S - MEAN_S), track.index_at(step.time_s + CLEAR_S + MEAN_S));
+    let (first, last) = (track.index_at(step.time_s - reach_s), track.index_at(step.time_s + reach_s));
     let past = |idx: &usize| (track.specific_force_mps2[*idx] > half) == step.is_up();
     match (first..last).find(past) {
         Some(idx) => Step { time_s: track.motion.time_s[idx], x_m: track.motion.x_m[idx], ..step },

@@ -4,14 +4,16 @@
 
 use super::channels::Channels;
 use super::document::Findings;
+use super::instrument::{LONGEST_INTERVAL_S, SILENT_INTERVALS, TextColumn};
 use super::proof;
-use super::{Cords, Device, Input, Rig, Role};
+use super::{Channel, Cords, Device, Input, Protocol, Rig, Role};
 use crate::units::STANDARD_GRAVITY_MPS2;
 
 pub(super) fn rig(rig: &Rig, findings: &mut Findings<'_>) {
     rail(rig, findings);
     plan(rig, findings);
     planned_tension(rig, findings);
+    slow_instruments(rig, findings);
     if let Some(proof) = &rig.details.proof_load {
         proof::against_limit(proof, rig.limits.peak_g, findings);
     }
@@ -119,6 +121,40 @@ fn planned_tension(rig: &Rig, findings: &mut Findings<'_>) {
         let message =
             format!("{slack_n:.1} N is a fifth or more of the planned {tension_n:.0} N: loaded cords would read slack");
         findings.error("plan.slack_tension", message);
+    }
+}
+
+/// A tension that is shown late is a tension that the winch has left behind.
+fn slow_instruments(rig: &Rig, findings: &mut Findings<'_>) {
+    let winch_s = rig.details.settings.winch_s;
+    let allowed_s = rig.plan.tension_band_relative * winch_s;
+    for (index, device) in rig.devices.iter().enumerate() {
+        let Protocol::Text(instrument) = &device.protocol else { continue };
+        let of_tension = |column: &&TextColumn| {
+            let read = |channel: &&Channel| channel.device == device.name && channel.device_channel == column.name;
+            rig.channels.iter().find(read).is_some_and(|channel| channel.role.is_tension())
+        };
+        let Some(column) = instrument.columns.iter().find(of_tension) else { continue };
+        let key = format!("device[{index}].text.interval");
+        let (interval_s, longest_s) = (instrument.interval_s, LONGEST_INTERVAL_S);
+        if interval_s > longest_s {
+            let message = format!(
+                "a tension every {interval_s:.2} s is too slow to watch a winch: {:.0} s without a reading are silence, so the display will call it unknown between readings; {:.0} ms is the limit",
+                longest_s * SILENT_INTERVALS,
+                1e3 * longest_s
+            );
+            findings.caution(&key, message);
+            continue;
+        }
+        let late_s = interval_s + column.delay_s.unwrap_or(instrument.delay_s);
+        if winch_s > 0.0 && late_s > allowed_s {
+            let message = format!(
+                "with its delay a tension is up to {:.0} ms old when the next comes: at plan.winch_time the winch goes on by more than plan.tension_band in that; {:.0} ms is the limit, winch more slowly or take a faster instrument",
+                1e3 * late_s,
+                1e3 * allowed_s
+            );
+            findings.caution(&key, message);
+        }
     }
 }
 

@@ -72,6 +72,12 @@ pub struct TextInstrument {
     pub arrival_uncertainty_s: Option<f64>,
 }
 
+/// A value counts until this many intervals have passed without the next.
+pub const SILENT_INTERVALS: f64 = 3.0;
+/// An instrument that is slower is never known to be fresh: two seconds without a reading are silence, whatever the
+/// instrument.
+pub const LONGEST_INTERVAL_S: f64 = 2.0 / SILENT_INTERVALS;
+
 /// How a line comes apart.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub enum LineCut {
@@ -91,6 +97,12 @@ pub struct TextColumn {
     pub field: usize,
     /// What is printed; `None` for plain counts.
     pub unit: Option<&'static Unit>,
+    /// Where it is another than the instrument's.
+    pub delay_s: Option<f64>,
+    pub bandwidth_hz: Option<f64>,
+    /// Printed numbers at which the sensor saturates.
+    pub least: Option<f64>,
+    pub greatest: Option<f64>,
 }
 
 /// The device's own time in its lines.

@@ -4,7 +4,7 @@ mod documented;
 
 use proptest::prelude::*;
 
-use super::testing::{NORTH_PIER, north_pier};
+use super::testing::{NORTH_PIER, TEXT_RIG, north_pier};
 use super::*;
 use crate::units::STANDARD_GRAVITY_MPS2;
 
@@ -80,6 +80,48 @@ fn a_wrong_quantity_is_refused_with_what_would_be_right() {
     one_finding("invented = true", "invented = \"yes\"", "error: invented: must be true or false, found a string");
     one_finding("count = 6", "count = 6.5", "error: cords.count: is 6.5, cords come in whole numbers");
     one_finding("count = 6", "count = \"6\"", "error: cords.count: must be a plain number, found a string");
+}
+
+/// Findings of the text rig after replacing one text, one a line.
+#[track_caller]
+fn text_findings_with(from: &str, to: &str) -> Vec<String> {
+    assert!(TEXT_RIG.contains(from), "{from:?} is not in the rig file");
+    check(&TEXT_RIG.replacen(from, to, 1)).findings.iter().map(ToString::to_string).collect()
+}
+
+#[test]
+fn a_force_printed_in_kg_is_refused_with_what_would_be_right() {
+    assert_eq!(text_findings_with("name = \"force\"", "name = \"force\""), Vec::<String>::new());
+    let found = text_findings_with("unit = \"kgf\"", "unit = \"kg\"");
+    let [only] = &found[..] else { panic!("{found:#?}") };
+    assert!(only.contains("error: device[0].text.column[0].unit"), "{only}");
+    assert!(only.contains("\"kg\" is a mass, not a force; write \"kgf\""), "{only}");
+}
+
+#[test]
+fn an_instrument_too_slow_for_the_winch_is_cautioned_with_the_limit() {
+    let slow = text_findings_with("interval = \"50 ms\"", "interval = \"1 s\"");
+    let [only] = &slow[..] else { panic!("{slow:#?}") };
+    assert!(only.contains("caution: device[1].text.interval: a tension every 1.00 s is too slow"), "{only}");
+    assert!(only.contains("667 ms is the limit"), "{only}");
+    // The band of 10 % is passed in 0.1 s of a winch that takes one second; 50 ms and 45 ms of delay are just within.
+    let with = |winch: &str| text_findings_with("tension_band", &format!("winch_time = \"{winch}\"\ntension_band"));
+    assert_eq!(with("1 s"), Vec::<String>::new());
+    let fast = with("0.9 s");
+    let [only] = &fast[..] else { panic!("{fast:#?}") };
+    assert!(only.contains("up to 95 ms old") && only.contains("90 ms is the limit"), "{only}");
+}
+
+#[test]
+fn a_column_may_have_a_filter_and_a_range_of_its_own() {
+    let rig = parse(&TEXT_RIG).unwrap_or_else(|error| panic!("{error}"));
+    let column = |name: &str| rig.devices[2].text_column(name).cloned().unwrap_or_else(|| panic!("{name}"));
+    let accel = column("accel");
+    assert_eq!((accel.bandwidth_hz, accel.least, accel.greatest), (Some(120.0), Some(-40.0), Some(40.0)));
+    assert!((accel.delay_s.unwrap_or(f64::NAN) - 1.876e-3).abs() < 1e-12);
+    assert_eq!(column("position").delay_s, None);
+    let found = text_findings_with("least = -40", "least = 40");
+    assert!(found.len() == 1 && found[0].contains("column[1].least: is not below greatest"), "{found:#?}");
 }
 
 #[test]

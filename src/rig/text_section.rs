@@ -1,5 +1,7 @@
 //! `[device.text]` and the serial settings of a device.
 
+use std::ops::RangeInclusive;
+
 use regex::Regex;
 
 use super::channels::plain_name_of;
@@ -7,6 +9,11 @@ use super::document::{Findings, Section};
 use super::instrument::{LineCut, Parity, SerialSettings, TIME_GROUP, TextColumn, TextInstrument, TextTime};
 use super::resembling::advice;
 use crate::units::{self, Dimension, Unit};
+
+const DELAYS_MS: RangeInclusive<f64> = 0.0..=10_000.0;
+const BANDWIDTHS_HZ: RangeInclusive<f64> = 0.01..=100_000.0;
+/// What 32-bit floats hold with seven digits, generously.
+const PRINTED: RangeInclusive<f64> = -1e12..=1e12;
 
 pub(super) fn serial_settings(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> SerialSettings {
     let usual = SerialSettings::default();
@@ -60,8 +67,8 @@ pub(super) fn text_instrument(mut table: Section<'_, '_>, findings: &mut Finding
         interval_s: table.quantity(findings, "interval", "ms", 0.1..=10_000.0),
         start: table.optional_text(findings, "start"),
         poll: table.optional_text(findings, "poll"),
-        delay_s: table.optional_quantity(findings, "delay", "ms", 0.0..=10_000.0).unwrap_or(0.0),
-        bandwidth_hz: table.optional_number(findings, "bandwidth_hz", 0.01..=100_000.0),
+        delay_s: table.optional_quantity(findings, "delay", "ms", DELAYS_MS).unwrap_or(0.0),
+        bandwidth_hz: table.optional_number(findings, "bandwidth_hz", BANDWIDTHS_HZ),
         arrival_uncertainty_s: table.optional_quantity(findings, "arrival_uncertainty", "ms", 0.01..=10_000.0),
     };
     table.finish(findings);
@@ -114,9 +121,20 @@ fn columns(table: &mut Section<'_, '_>, findings: &mut Findings<'_>, pattern: Op
             findings.error(&key, format!("{name:?} is already the name of column[{earlier}]"));
         }
         let field = field(&mut entry, findings, "field", pattern, &name, &key);
-        let unit = unit(&mut entry, findings);
+        let column = TextColumn {
+            name,
+            field,
+            unit: unit(&mut entry, findings),
+            delay_s: entry.optional_quantity(findings, "delay", "ms", DELAYS_MS),
+            bandwidth_hz: entry.optional_number(findings, "bandwidth_hz", BANDWIDTHS_HZ),
+            least: entry.optional_number(findings, "least", PRINTED),
+            greatest: entry.optional_number(findings, "greatest", PRINTED),
+        };
+        if column.least.zip(column.greatest).is_some_and(|(least, greatest)| least >= greatest) {
+            findings.error(&entry.key("least"), "is not below greatest: the sensor has no range");
+        }
         entry.finish(findings);
-        columns.push(TextColumn { name, field, unit });
+        columns.push(column);
     }
     if columns.is_empty() {
         findings.error(&table.key("column"), "has no entry: no number of a line is asked for");
@@ -150,14 +168,15 @@ fn field(
 /// The unit in which a column is printed. A mass is refused where the roles measure forces, with the advice.
 fn unit(entry: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Option<&'static Unit> {
     let symbol = entry.optional_text(findings, "unit")?;
-    let found = match Unit::named(&symbol) {
-        Some(unit) if unit.dimension != Dimension::Mass => return Some(unit),
-        _ => units::parse(&format!("1 {symbol}"), Dimension::Force),
-    };
-    if let Err(error) = found {
+    let named = Unit::named(&symbol);
+    if named.is_some_and(|unit| unit.dimension != Dimension::Mass) {
+        return named;
+    }
+    if let Err(error) = units::parse(&format!("1 {symbol}"), Dimension::Force) {
         findings.error(&entry.key("unit"), error.to_string());
     }
-    None
+    // What was meant, so that its channel is not said to lack a calibration beside.
+    named.and_then(|_| Unit::named("kgf"))
 }
 
 fn time(table: &mut Section<'_, '_>, findings: &mut Findings<'_>, pattern: Option<&Regex>) -> Option<TextTime> {

@@ -64,11 +64,16 @@ impl Drop for Cable {
 }
 
 fn relay(far: &File, plug: &Mutex<Option<File>>, end: &AtomicBool) {
-    let mut buffer = [0; 4096];
+    let (mut down, mut up) = (Way::default(), Way::default());
     while !end.load(Ordering::Relaxed) {
         let plugged = plug.lock().unwrap();
-        let moved = pass(far, plugged.as_ref(), &mut buffer)
-            | plugged.as_ref().is_some_and(|near| pass(near, Some(far), &mut buffer));
+        let moved = match plugged.as_ref() {
+            Some(near) => down.pass(far, Some(near)) | up.pass(near, Some(far)),
+            None => {
+                up.waiting.clear();
+                down.pass(far, None)
+            }
+        };
         drop(plugged);
         if !moved {
             std::thread::sleep(Duration::from_millis(1));
@@ -76,21 +81,49 @@ fn relay(far: &File, plug: &Mutex<Option<File>>, end: &AtomicBool) {
     }
 }
 
-fn pass(mut from: &File, to: Option<&File>, buffer: &mut [u8]) -> bool {
-    let n = match from.read(buffer) {
-        Ok(n) => n,
-        Err(error) if matches!(error.kind(), ErrorKind::WouldBlock) || error.raw_os_error() == Some(5) => return false,
-        Err(error) => panic!("the cable: {error}"),
-    };
-    if let Some(mut to) = to {
-        // What finds nobody reading and the queue full is gone, as with a real port.
-        match to.write(&buffer[..n]) {
-            Ok(_) => {}
-            Err(error) if error.kind() == ErrorKind::WouldBlock => {}
+/// One direction of the cable. What its end cannot take yet waits, and nothing more is read meanwhile: only a pulled cable
+/// loses bytes, however slow the machine is.
+#[derive(Default)]
+struct Way {
+    waiting: Vec<u8>,
+}
+
+impl Way {
+    /// Whether anything moved. A cable without an end swallows what is sent.
+    fn pass(&mut self, mut from: &File, to: Option<&File>) -> bool {
+        let Some(mut to) = to else {
+            self.waiting.clear();
+            return read(&mut from).is_some();
+        };
+        if self.waiting.is_empty() {
+            self.waiting = read(&mut from).unwrap_or_default();
+        }
+        if self.waiting.is_empty() {
+            return false;
+        }
+        match to.write(&self.waiting) {
+            Ok(n) => {
+                self.waiting.drain(..n);
+                n > 0
+            }
+            Err(error) if error.kind() == ErrorKind::WouldBlock => false,
             Err(error) => panic!("the cable: {error}"),
         }
     }
-    n > 0
+}
+
+/// What is there to read, if anything; an end that nobody holds (EIO) gives nothing.
+fn read(from: &mut &File) -> Option<Vec<u8>> {
+    let mut buffer = vec![0; 4096];
+    match from.read(&mut buffer) {
+        Ok(0) => None,
+        Ok(n) => {
+            buffer.truncate(n);
+            Some(buffer)
+        }
+        Err(error) if error.kind() == ErrorKind::WouldBlock || error.raw_os_error() == Some(5) => None,
+        Err(error) => panic!("the cable: {error}"),
+    }
 }
 
 #[test]

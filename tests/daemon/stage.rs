@@ -34,6 +34,12 @@ pub struct Stage {
 pub struct Truth {
     pub events: Vec<TruthEvent>,
     pub devices: Vec<DeviceTruth>,
+    launch: Option<LaunchTruth>,
+}
+
+#[derive(Debug, Deserialize)]
+struct LaunchTruth {
+    speed_ground_mps: f64,
 }
 
 #[derive(Debug, Deserialize)]
@@ -186,6 +192,10 @@ impl Daemon {
 impl Truth {
     pub fn host_ns(&self, kind: &str) -> i64 {
         self.events.iter().find(|event| event.kind == kind).unwrap_or_else(|| panic!("{kind} in the truth")).host_ns
+    }
+
+    pub fn launch_speed_mps(&self) -> f64 {
+        self.launch.as_ref().expect("a launch in the truth").speed_ground_mps
     }
 
     fn device(&self, name: &str) -> &DeviceTruth {

@@ -84,6 +84,11 @@ fn lines_of_text_become_a_sealed_and_read_trial() {
     let speeds_mps = ends.map(|(time_s, x_m)| (x_m[10] - x_m[0]) / (time_s[10] - time_s[0]));
     let greatest_mps = speeds_mps.fold(0.0, f64::max);
     assert!((16.4..17.2).contains(&greatest_mps), "{greatest_mps} m/s");
+    let read = trial.results().unwrap();
+    let speed = read.entries.iter().find(|entry| entry.name == "launch_speed").expect("the launch speed is read");
+    let truth_mps = truth.launch_speed_mps();
+    assert!((speed.low..=speed.high).contains(&truth_mps), "{} to {} m/s for {truth_mps}", speed.low, speed.high);
+    assert!(speed.high - speed.low < 0.4, "the board knows it well: {} to {} m/s", speed.low, speed.high);
 }
 
 #[test]

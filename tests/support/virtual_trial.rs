@@ -8,10 +8,9 @@ use std::path::Path;
 
 use tautrail::calibration::{Sampling, Signal, signal_from_counts};
 use tautrail::capture::{
-    Block, Captured, ClockPiece, ClockSamples, Counts, DeviceDecoder, DeviceDescription, piece_at,
+    Block, Captured, ClockPiece, ClockSamples, Counts, DeviceDecoder, DeviceDescription, LeastSteps, piece_at,
 };
 use tautrail::rig::{Channel, Rig};
-use virtual_rig::device::DEVICES;
 use virtual_rig::performance::{Options, Performance, prepare};
 use virtual_rig::play::virtual_time::{Delivered, VirtualPlay};
 use virtual_rig::truth::Truth;
@@ -45,6 +44,7 @@ impl VirtualTrial {
 struct Heard {
     description: Option<DeviceDescription>,
     blocks: Vec<Block>,
+    steps: LeastSteps,
     clock: ClockSamples,
 }
 
@@ -52,8 +52,10 @@ struct Heard {
 pub fn play(options: &Options, rig: &Rig) -> VirtualTrial {
     let performance = prepare(options).expect("the scenario can be prepared");
     let mut virtual_play = VirtualPlay::new(&performance).expect("descriptions fit a frame");
-    let mut heard: Vec<Heard> = DEVICES.iter().map(|_| Heard::default()).collect();
-    let mut decoders: Vec<DeviceDecoder> = DEVICES.iter().map(|_| DeviceDecoder::new()).collect();
+    let names: Vec<&str> = performance.devices.iter().map(|device| device.name).collect();
+    let mut heard: Vec<Heard> = names.iter().map(|_| Heard::default()).collect();
+    let decoder = |name: &&str| rig.devices.iter().find(|device| device.name == **name).map(DeviceDecoder::of);
+    let mut decoders: Vec<DeviceDecoder> = names.iter().map(|name| decoder(name).unwrap_or_default()).collect();
     for delivery in &mut virtual_play {
         let delivery = delivery.expect("every block fits a frame");
         let device = &mut heard[delivery.device];
@@ -69,7 +71,7 @@ pub fn play(options: &Options, rig: &Rig) -> VirtualTrial {
         }
     }
     let zero_ns = virtual_play.scenario_zero_host_ns();
-    let signals = rig.channels.iter().map(|channel| signal(channel, &heard, zero_ns)).collect();
+    let signals = rig.channels.iter().map(|channel| signal(channel, &names, &heard, zero_ns)).collect();
     let truth = virtual_play.truth();
     let hook_s = truth.events.iter().find(|event| event.kind == "hook-opens").map_or(f64::INFINITY, |event| event.t_s);
     let rows = performance.trajectory.rows.windows(2).take_while(|pair| pair[1].t_s <= hook_s);
@@ -82,14 +84,17 @@ impl Heard {
         self.clock.captured(&captured);
         match captured {
             Captured::Description(description) => self.description = Some(description),
-            Captured::Block(block) => self.blocks.push(block),
+            Captured::Block(block) => {
+                self.steps.take(&block);
+                self.blocks.push(block);
+            }
             _ => {}
         }
     }
 }
 
-fn signal(channel: &Channel, heard: &[Heard], zero_ns: i64) -> Signal {
-    let idx = DEVICES.iter().position(|device| device.name == channel.device).expect("the rig file's device exists");
+fn signal(channel: &Channel, names: &[&str], heard: &[Heard], zero_ns: i64) -> Signal {
+    let idx = names.iter().position(|name| *name == channel.device).expect("the rig file's device exists");
     let device = &heard[idx];
     let description = device.description.as_ref().expect("the device described itself");
     let stream = &description.streams[0];
@@ -99,11 +104,13 @@ fn signal(channel: &Channel, heard: &[Heard], zero_ns: i64) -> Signal {
     let (mut time_s, mut counts) = (Vec::new(), Vec::new());
     for block in &device.blocks {
         let piece = piece_at(&pieces, block.boot_id, block.first_tick).expect("a clock map covers every block");
-        let Counts::Integer(values) = &block.counts[place] else { panic!("the virtual rig sends integers") };
-        for (k, value) in values.iter().enumerate() {
-            let tick = block.first_tick + k as u64 * u64::from(stream.ticks_per_sample);
+        for k in 0..u64::from(block.n_samples) {
+            let tick = block.first_tick + k * u64::from(stream.ticks_per_sample);
             time_s.push((piece.host_ns(tick) - zero_ns as f64) * 1e-9 - described.group_delay_s);
-            counts.push(f64::from(*value));
+        }
+        match &block.counts[place] {
+            Counts::Integer(values) => counts.extend(values.iter().map(|value| f64::from(*value))),
+            Counts::Float(values) => counts.extend(values.iter().map(|value| f64::from(*value))),
         }
     }
     let sampling = Sampling {
@@ -111,6 +118,7 @@ fn signal(channel: &Channel, heard: &[Heard], zero_ns: i64) -> Signal {
         bandwidth_hz: described.bandwidth_hz,
         time_uncertainty_s: pieces.iter().map(|piece: &ClockPiece| piece.u_ns).fold(0.0, f64::max) * 1e-9,
         counts_range: None,
+        count_step: device.steps.of(stream.stream, place),
     };
     signal_from_counts(channel, &sampling, time_s, counts.into_iter()).expect("every count has a value")
 }

@@ -53,10 +53,10 @@ pub(super) fn description(device: &Device, instrument: &TextInstrument, boot_id:
         name: column.name.clone(),
         quantity: column.unit.map_or_else(|| "count".to_owned(), |unit| format!("printed in {}", unit.symbol)),
         encoding: Encoding::F32,
-        nominal_min: f64::NAN,
-        nominal_max: f64::NAN,
-        group_delay_s: instrument.delay_s,
-        bandwidth_hz: instrument.bandwidth_hz,
+        nominal_min: column.least.unwrap_or(f64::NAN),
+        nominal_max: column.greatest.unwrap_or(f64::NAN),
+        group_delay_s: column.delay_s.unwrap_or(instrument.delay_s),
+        bandwidth_hz: column.bandwidth_hz.or(instrument.bandwidth_hz),
     };
     let channels = instrument.columns.iter().map(channel).collect();
     let ticks_per_sample = (instrument.interval_s * TICK_RATE_HZ).round().clamp(1.0, f64::from(u32::MAX)) as u32;

@@ -1,4 +1,4 @@
-use super::line::{Cut, LineReader, LineSplitter, Piece};
+use super::line::{Cut, LineReader, LineSplitter, NO_MATCH, NO_NUMBER, NOT_TEXT, Piece, Refusal};
 use super::time::{Placed, PrintedTime};
 use super::*;
 use crate::capture::sample::{Block, Captured, Counts, Gap, Rejected};
@@ -175,6 +175,29 @@ fn a_line_with_other_fields_or_no_number_is_refused() {
     let comma = LineReader { cut: Cut::At(';'), decimal_comma: true, ..reader };
     assert_eq!(comma.read(b"a;-12,25").unwrap().values, [-12.25]);
     assert!(comma.read(b"a;12.25").is_err(), "a point is a thousands mark there, or damage");
+}
+
+#[test]
+fn malformed_lines_under_a_pattern_are_refused_counted_and_kept_each_with_its_reason() {
+    let mut decoder = decoder(INDICATOR);
+    feed(&mut decoder, 0, b"x\nST,+ 12.50 kg\r\n");
+    let malformed: [(&[u8], Refusal); 7] = [
+        (b"ST,+ 12.50", NO_MATCH),
+        (b"ST,+ 12.50 kg kg", NO_MATCH),
+        (b"ST,+ 12,50 kg", NO_MATCH),
+        (b"QT,+ 12.50 kg", NO_MATCH),
+        (b"ST,+ 1.2.5 kg", NO_NUMBER),
+        (b"ST,+ . kg", NO_NUMBER),
+        (b"ST,+ 12.\xb50 kg", NOT_TEXT),
+    ];
+    for (k, (line, reason)) in (1_i64..).zip(malformed) {
+        let heard = feed(&mut decoder, k * 12 * MS, &[line, b"\r\n"].concat());
+        assert_eq!((rejected(&heard), values(&heard)), (vec![(reason, line.to_vec())], vec![]), "{line:?}");
+    }
+    let by_reason = &decoder.counters().refused;
+    assert_eq!((by_reason[NO_MATCH], by_reason[NO_NUMBER], by_reason[NOT_TEXT]), (4, 2, 1));
+    let heard = feed(&mut decoder, 200 * MS, b"ST,+ 12.50 kg\r\n");
+    assert_eq!((values(&heard), gaps(&heard)), (vec![12.5], vec![(1, 7)]), "each may have been a reading");
 }
 
 #[test]

@@ -2,6 +2,7 @@ use super::*;
 use crate::link::DeviceIdx;
 use crate::live::AlarmChange;
 use crate::live::testing::{End, Instant, ZERO_NS, blocks, description, north_pier, scene};
+use crate::rig::{LineCut, Protocol, TextColumn, TextInstrument};
 
 const S: i64 = 1_000_000_000;
 
@@ -153,6 +154,94 @@ fn cords_loaded_and_a_pulled_cable_read_unknown_never_slack() {
     }
     assert_eq!(raised.len(), 2, "the lost link explains its silent channels: {raised:?}");
     assert!(run.live.close_by_hand(ZERO_NS + 27 * S, "winch").is_err());
+}
+
+/// north-pier whose cells are read by an indicator that prints both every `interval_s`.
+fn printed_cells(interval_s: f64) -> Rig {
+    let column = |name: &str, field| TextColumn {
+        name: name.into(),
+        field,
+        unit: None,
+        delay_s: None,
+        bandwidth_hz: None,
+        least: None,
+        greatest: None,
+    };
+    let mut rig = north_pier();
+    rig.devices[0].protocol = Protocol::Text(Box::new(TextInstrument {
+        cut: LineCut::At { separator: ',', n_fields: 2 },
+        decimal_comma: false,
+        columns: vec![column("line", 1), column("anchor", 2)],
+        time: None,
+        header_lines: 1,
+        skip_prefix: None,
+        interval_s,
+        start: None,
+        poll: None,
+        delay_s: 0.0,
+        bandwidth_hz: None,
+        arrival_uncertainty_s: None,
+    }));
+    rig
+}
+
+/// What the cords are called at each heartbeat of 20 ms while lines come at an interval, each late by as much as `late`
+/// says of its number; they end at `until_s`.
+fn called(interval_ms: i64, until_s: i64, late: impl Fn(i64) -> i64) -> Vec<(i64, CordsNow)> {
+    const MS: i64 = 1_000_000;
+    let mut live = Live::new(&printed_cells(interval_ms as f64 * 1e-3));
+    let bytes = |live: &mut Live, host_ns, line: String| {
+        let what = LinkWhat::Bytes(line.into_bytes().into());
+        live.on_link(&LinkEvent { host_ns, device: DeviceIdx(0), what });
+    };
+    bytes(&mut live, ZERO_NS, "heading\n".to_owned());
+    let lines = (1..).map(|k| (k * interval_ms + late(k), k)).take_while(|(at_ms, _)| *at_ms < until_s * 1_000);
+    let mut lines = lines.peekable();
+    let mut told = Vec::new();
+    for at_ms in (0..(until_s + 5) * 1_000).step_by(20) {
+        while let Some((_, k)) = lines.next_if(|(line_ms, _)| *line_ms <= at_ms) {
+            // Counts of a thousandth of a newton: 600 N and a little more from line to line.
+            bytes(&mut live, ZERO_NS + at_ms * MS, format!("{},{}\n", 600_000 + k, 590_000 + k));
+        }
+        live.tick(ZERO_NS + at_ms * MS);
+        told.push((at_ms, live.cords()));
+    }
+    told
+}
+
+#[test]
+fn a_slow_indicator_is_believed_between_its_lines_and_silent_soon_after_the_last() {
+    for (interval_ms, silent_after_ms) in [(12, 500), (200, 600), (300, 900), (600, 1_800), (3_000, 2_000)] {
+        let told = called(interval_ms, 12, |k| k % 3 * interval_ms / 5);
+        let last_ms = (1..).map(|k| k * interval_ms + k % 3 * interval_ms / 5).take_while(|at| *at < 12_000).last();
+        let last_ms = last_ms.unwrap();
+        let loaded = |cords: &CordsNow| matches!(cords, CordsNow::Loaded { .. });
+        let between = told.iter().filter(|(at_ms, _)| *at_ms > 4 * interval_ms.min(1_000) && *at_ms < last_ms);
+        let n_unknown = between.filter(|(_, cords)| !loaded(cords)).count();
+        assert_eq!(n_unknown > 0, interval_ms == 3_000, "{interval_ms} ms: unknown at {n_unknown} heartbeats");
+        let fell_silent = told.iter().find(|(at_ms, cords)| *at_ms > last_ms && *cords == CordsNow::Unknown);
+        let after_ms = fell_silent.unwrap().0 - last_ms;
+        // By arrival alone a line is taken to be some milliseconds older than its arrival.
+        assert!((silent_after_ms - 40..=silent_after_ms + 40).contains(&after_ms), "{interval_ms} ms: {after_ms} ms");
+    }
+}
+
+#[test]
+fn a_slow_cell_that_reads_slack_once_does_not_unload_the_cords() {
+    let mut live = Live::new(&printed_cells(0.6));
+    let mut told = Vec::new();
+    for (k, counts) in [0, 600_000, 600_000, 0, 600_000, 600_000, 0, 0, 0, 0].into_iter().enumerate() {
+        let from_ns = ZERO_NS + k as i64 * 600_000_000;
+        let line = if k == 0 { "heading\n".to_owned() } else { format!("{counts},{counts}\n") };
+        let what = LinkWhat::Bytes(line.into_bytes().into());
+        live.on_link(&LinkEvent { host_ns: from_ns, device: DeviceIdx(0), what });
+        for beat in 0..30 {
+            live.tick(from_ns + beat * 20_000_000);
+            told.push((k, live.cords()));
+        }
+    }
+    let slack_at: Vec<usize> = told.iter().filter(|(_, cords)| *cords == CordsNow::Slack).map(|(k, _)| *k).collect();
+    assert_eq!(slack_at.first(), Some(&8), "after two intervals of slack readings, not after the lone one at 3");
 }
 
 #[test]

@@ -10,6 +10,8 @@ use crate::rig::Role;
 const SILENT_NS: i64 = 1_000 * super::MS;
 const BELOW_ZERO_FOR_NS: i64 = 1_000 * super::MS;
 const STUCK_NS: i64 = 1_000 * super::MS;
+/// So many readings the same are no chance.
+const N_STUCK: i64 = 20;
 /// A spike may touch the end of the range; what stands there measures nothing.
 const AT_END_NS: i64 = 5 * super::MS;
 const NOISY_FOR_NS: i64 = 1_500 * super::MS;
@@ -33,13 +35,15 @@ fn silent(live: &mut Live, idx: usize, host_ns: i64) -> Option<Happening> {
     if channel.is_fresh(host_ns) {
         return live.board.clear(cause, host_ns);
     }
-    let silent = channel.age_ns(host_ns).is_some_and(|age_ns| age_ns >= SILENT_NS);
+    let silent = channel.age_ns(host_ns).is_some_and(|age_ns| age_ns >= SILENT_NS.max(channel.silent_ns()));
     // A lost link has its own sentence and explains the silence of all its channels.
     let link_lost = live.devices.iter().any(|device| device.name == channel.device && !device.is_up());
     if !silent || link_lost || live.board.is_active(cause) {
         return None;
     }
-    let sentence = format!("{} is silent: no value for over 1 s; check sensor, device and cable", named(channel));
+    let silent_s = (SILENT_NS.max(channel.silent_ns()) as f64 * 1e-8).round() * 0.1;
+    let sentence =
+        format!("{} is silent: no value for over {silent_s} s; check sensor, device and cable", named(channel));
     live.board.raise(cause, host_ns, sentence)
 }
 
@@ -75,7 +79,7 @@ fn below_zero(live: &mut Live, idx: usize, host_ns: i64) -> Option<Happening> {
 fn stuck(live: &mut Live, idx: usize, host_ns: i64) -> Option<Happening> {
     let channel = &live.channels[idx];
     let stuck_ns = channel.health.stuck_ns().filter(|_| channel.role != Role::ShuttlePosition);
-    let seen = stuck_ns.filter(|stuck_ns| *stuck_ns >= STUCK_NS).map(|stuck_ns| {
+    let seen = stuck_ns.filter(|stuck_ns| *stuck_ns >= STUCK_NS.max(N_STUCK * channel.interval_ns())).map(|stuck_ns| {
         let loaded = if channel.is_tension() { "; treat the cords as loaded" } else { "" };
         format!(
             "{} is stuck: the very same value for {:.0} s, without its usual noise; check sensor and device{loaded}",

@@ -13,6 +13,7 @@ use crate::clock::{DeviceClock, TICK_RATE_HZ};
 use crate::draw::{Draw, Purpose};
 use crate::edges::Edge;
 use crate::faults::{self, FaultKind, Timed};
+use crate::launcher::STANDARD_GRAVITY_MPS2;
 use crate::performance::Performance;
 use crate::physics::trajectory::Row;
 use crate::sensor::{ChannelSpec, Errors, OVERSAMPLING, Quantity, Sensor};
@@ -342,7 +343,8 @@ impl Device {
 fn built(channel: &ChannelSpec, performance: &Performance) -> ChannelSpec {
     let mut built = *channel;
     if channel.quantity == Quantity::SpecificForce {
-        let range_counts = performance.scenario.accelerometer_range_g * 800.0;
+        let range_mps2 = performance.scenario.accelerometer_range_g * STANDARD_GRAVITY_MPS2;
+        let range_counts = (range_mps2 / channel.scale).round();
         built.counts_max = built.counts_max.min(range_counts);
     }
     built
