@@ -189,8 +189,10 @@ fn a_stall_costs_nothing_and_the_clock_is_not_led_astray() {
 #[test]
 fn packets_by_a_timer_cost_nothing_and_widen_the_clock_honestly() {
     let trial = trial("all:batch=16");
-    trial.whole(WINCH);
-    assert!(trial.clock_error(WINCH) < 3.0, "{}", trial.clock_error(WINCH));
+    for idx in [WINCH, SHUTTLE] {
+        trial.whole(idx);
+        assert!(trial.clock_error(idx) < 3.0, "{}", trial.clock_error(idx));
+    }
 }
 
 #[test]
@@ -399,6 +401,57 @@ fn a_pulled_cable_and_a_stall_of_text_say_what_is_missing() {
     assert_eq!(stalled.lines(BOARD), (0, 0));
     assert!(stalled.heard[BOARD].gaps.is_empty());
     assert!(stalled.board_clock_error() < 3.0, "{}", stalled.board_clock_error());
+}
+
+#[test]
+fn what_costs_frames_nothing_costs_lines_nothing() {
+    for fault in ["all:batch=16", "all:drift=60", "all:wander=5", "all:duplicate-id", "all:changed-description@r-1"] {
+        let trial = text_trial(fault);
+        for idx in 0..3 {
+            assert_eq!(trial.lines(idx), (usize::from(idx != BOARD), 0), "{fault}, device {idx}");
+            assert_eq!(trial.heard[idx].gaps, [], "{fault}, device {idx}");
+        }
+        assert!(trial.board_clock_error() < 3.0, "{fault}: {}", trial.board_clock_error());
+    }
+}
+
+#[test]
+fn one_wrong_time_of_a_board_costs_the_lines_until_it_is_caught_up() {
+    let far = text_trial("shuttle-board:tick-glitch=300000@r-1");
+    assert_eq!(
+        (far.lines(BOARD), far.heard[BOARD].missing()),
+        ((1, 0), 1),
+        "a time that can't be yet is refused itself"
+    );
+    assert_eq!(far.heard[BOARD].reasons(), BTreeMap::from([("device time jumps", 1)]));
+    let trial = text_trial("shuttle-board:tick-glitch=5000@r-1");
+    // Printed 5 ms ahead: the two lines of the next 4 ms say an earlier time and are refused, and it is no new boot.
+    assert_eq!(trial.lines(BOARD), (2, 0));
+    // Two and a half intervals seemed to pass before it.
+    assert_eq!(trial.heard[BOARD].missing(), 3);
+    assert_eq!(trial.heard[BOARD].reasons(), BTreeMap::from([("device time jumps", 2)]));
+    assert!(trial.heard[BOARD].blocks.iter().all(|block| block.boot_id == 1));
+}
+
+#[test]
+fn an_endless_line_of_text_is_kept_and_costs_the_line_it_runs_into() {
+    let trial = text_trial("shuttle-board:oversize=6000@r-1");
+    let (lost, invented) = trial.lines(BOARD);
+    assert!(lost <= 1 && invented == 0, "{lost} lost, {invented} invented");
+    let n_bytes: usize = trial.heard[BOARD].rejected.iter().map(|refused| refused.bytes.len()).sum();
+    assert!((5_000..6_100).contains(&n_bytes), "{n_bytes} bytes kept");
+    for idx in 0..2 {
+        assert_eq!(trial.lines(idx), (1, 0), "device {idx}");
+    }
+}
+
+#[test]
+fn every_fault_that_the_rig_can_stage_is_staged_here() {
+    let error = "all:no-such-fault".parse::<virtual_rig::faults::Fault>().expect_err("there is none").to_string();
+    let known = error.split_once("the rig knows: ").expect("the error lists what there is").1;
+    let here = include_str!("line_faults.rs");
+    let missing: Vec<&str> = known.split(", ").filter(|word| !here.contains(&format!(":{word}"))).collect();
+    assert!(missing.is_empty() && known.split(", ").count() >= 16, "no test for {missing:?} of {known}");
 }
 
 #[test]

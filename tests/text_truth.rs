@@ -56,6 +56,9 @@ fn the_truth_is_inside_the_interval_of_the_launch_speed() {
         let reading = read(&trial.signals, &rig);
         assert_eq!(reading.outcome, Outcome::Launched, "seed {seed}: {:?}", reading.outcome_evidence);
         let truth = true_speed_mps(&trial);
+        let by_arrival_s = trial.signals[0].time_uncertainty_s;
+        let by_own_time_s = trial.signals[2].time_uncertainty_s;
+        assert!(by_own_time_s < 0.5 * by_arrival_s, "the board's time: {by_own_time_s} s, by arrival {by_arrival_s} s");
         let sets = [
             ("both", trial.signals.clone()),
             ("encoder", without(&trial.signals, Role::ShuttleSpecificForce)),

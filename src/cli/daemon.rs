@@ -8,7 +8,7 @@ use std::time::Duration;
 use crossbeam_channel::{Receiver, bounded};
 use serde_json::json;
 use signal_hook::consts::{SIGHUP, SIGINT, SIGTERM};
-use tautrail::daemon::{self, Options};
+use tautrail::daemon::{self, Options, ServiceManager};
 use tautrail::feed::message::Event;
 use tautrail::rig;
 
@@ -52,6 +52,9 @@ Examples:
   tautrail daemon north-pier.toml --dir trials    record; watch with: tautrail watch --dir trials
   tautrail daemon north-pier.toml --wait-for-ports
 
+Under a service manager that asks for it (NOTIFY_SOCKET, WATCHDOG_USEC: systemd's Type=notify) it says when the feed is served and
+the journal open, and gives signs of life; tools/service/tautrail.service uses both.
+
 Exit code: 0 stopped with everything on the disk, 2 could not run (a port, the directory, the rig file, the disk).
 
 Tautrail is no safety device: it advises and records. Interlocks, exclusion zones, local codes and licensed practice
@@ -69,11 +72,19 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
         keep_journal: args.keep_journal,
         seal_patience: Duration::from_secs(args.seal_wait),
         program: std::env::current_exe()?,
+        service_manager: service_manager(),
     };
     let shutdown = shutdown_by_signal()?;
     let screen = *screen;
     daemon::run(&rig, &options, shutdown, Box::new(move |event| print(event, screen)))?;
     Ok(Verdict::Done)
+}
+
+/// What a service manager such as systemd put into the environment.
+fn service_manager() -> ServiceManager {
+    let text = |name: &str| std::env::var(name).ok();
+    let (usec, pid) = (text("WATCHDOG_USEC"), text("WATCHDOG_PID"));
+    ServiceManager::of(std::env::var_os("NOTIFY_SOCKET"), usec.as_deref(), pid.as_deref(), std::process::id())
 }
 
 fn minutes(text: &str) -> Result<f64, String> {

@@ -20,6 +20,7 @@ use super::outgoing::Outgoing;
 use super::ports::FirstOpenings;
 use super::room::RoomWatch;
 use super::sealing::{SealReport, Sealer, Settle};
+use super::service::Service;
 use super::trials::TrialBook;
 use super::words;
 
@@ -52,6 +53,7 @@ pub struct Conductor {
     pub openings: FirstOpenings,
     /// Start and stay although every port is in use elsewhere.
     pub wait_for_ports: bool,
+    pub service: Service,
 }
 
 /// Everything that reaches the loop.
@@ -158,7 +160,10 @@ impl Conductor {
 
     fn take(&mut self, item: FromLinks) {
         let happenings = match item {
-            FromLinks::Heartbeat { host_ns } => self.live.tick(host_ns),
+            FromLinks::Heartbeat { host_ns } => {
+                self.service.alive(host_ns);
+                self.live.tick(host_ns)
+            }
             FromLinks::Lost { device, lost } => {
                 self.live.on_lost(device, lost.last_host_ns);
                 let device = self.device_names.get(usize::from(device.0)).cloned().unwrap_or_default();
@@ -368,6 +373,7 @@ impl Conductor {
     /// Ports, then what they left in the queues, then the closing record and the last sync, then the sealing, then the
     /// clients. Each step is done whatever became of the one before; the first thing that went wrong is told.
     fn stop(mut self, inputs: &Inputs, reason: &str) -> Result<(), DaemonError> {
+        self.service.stopping();
         self.tell(words::event(self.clock.monotonic_ns(), "daemon", "daemon", format!("stops: {reason}")));
         let links = self.links.take().map_or(Ok(()), Links::stop);
         inputs.live.iter().for_each(|item| self.take(item)); // ends: the links have let go of their end

@@ -27,6 +27,7 @@ use super::outgoing::Outgoing;
 use super::ports::FirstOpenings;
 use super::room::RoomWatch;
 use super::sealing::{SealCommand, Sealer, Settle};
+use super::service::{Service, ServiceManager};
 use super::trials::TrialBook;
 use super::words;
 
@@ -49,6 +50,8 @@ pub struct Options {
     pub seal_patience: Duration,
     /// The program that seals, called with `seal-child`; this one, unless a test says otherwise.
     pub program: PathBuf,
+    /// Who is to be told that it runs, if anybody.
+    pub service_manager: ServiceManager,
 }
 
 /// Reads a second of one device at the shortest: USB hands bytes over each millisecond.
@@ -133,8 +136,10 @@ pub fn run(
         settle_at_ns: 0,
         openings: FirstOpenings::of(rig),
         wait_for_ports: options.wait_for_ports,
+        service: Service::reach(&options.service_manager),
     };
     conductor.say_hello(rig, &found, &options.socket, &journal_id);
+    conductor.service.ready();
     conductor.run(Inputs { live, requests, reports, sealed, counted, shutdown })
 }
 

@@ -12,6 +12,7 @@ mod nobody;
 mod refusals;
 #[path = "../support/rehearsal_rig.rs"]
 mod rehearsal_rig;
+mod service;
 mod small_disk;
 mod stage;
 mod text;

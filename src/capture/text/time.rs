@@ -5,7 +5,14 @@
 
 /// Printed time may run ahead of the host's by this, and by a part of the time passed (±1 % resonators, generously).
 const AHEAD_NS: f64 = 2e9;
+/// And by this once so many lines were heard that one of them was prompt (an adapter's 16 ms and the host's, generously).
+const AHEAD_SETTLED_NS: f64 = 5e7;
+const N_SETTLED: u32 = 50;
 const AHEAD_PART: f64 = 0.05;
+
+/// A time that goes back by less than this follows a damaged digit that passed as a little ahead: lines are refused until
+/// they have caught up. A board that boots goes back by more.
+const STEPS_BACK_NS: u64 = 100_000_000;
 
 /// A line's time among the lines before it.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -36,8 +43,11 @@ pub struct PrintedTime {
     last: Option<Seen>,
     /// The last line, if its time did not fit.
     odd: Option<Seen>,
-    /// Least of host time less ticks in this boot: the promptest line.
+    /// Least of host time less ticks in this boot: the promptest line. It rises by a part of the time passed, for clocks that
+    /// run slow.
     least_offset_ns: f64,
+    /// In this boot.
+    n_lines: u32,
 }
 
 impl PrintedTime {
@@ -64,12 +74,16 @@ impl PrintedTime {
         let first = self.last.is_none();
         self.odd = None;
         self.least_offset_ns = f64::INFINITY;
+        self.n_lines = 0;
         self.accept(Seen { printed_ns, tick: printed_ns, host_ns });
         if first { Placed::Tick(printed_ns) } else { Placed::NewBoot(printed_ns) }
     }
 
     fn accept(&mut self, seen: Seen) {
-        self.least_offset_ns = self.least_offset_ns.min(offset_ns(seen.tick, seen.host_ns));
+        let passed_ns = self.last.map_or(0, |last| seen.host_ns.saturating_sub(last.host_ns).max(0)) as f64;
+        let risen_ns = self.least_offset_ns + AHEAD_PART * passed_ns;
+        self.least_offset_ns = risen_ns.min(offset_ns(seen.tick, seen.host_ns));
+        self.n_lines = self.n_lines.saturating_add(1);
         self.last = Some(seen);
     }
 
@@ -97,11 +111,16 @@ impl PrintedTime {
     /// Whether a line of this tick can have come by now: late it may be, ahead of its time it is not.
     fn fits(&self, last: Seen, tick: u64, host_ns: i64) -> bool {
         let passed_ns = host_ns.saturating_sub(last.host_ns) as f64;
-        offset_ns(tick, host_ns) >= self.least_offset_ns - AHEAD_NS - AHEAD_PART * passed_ns
+        let ahead_ns = if self.n_lines < N_SETTLED { AHEAD_NS } else { AHEAD_SETTLED_NS };
+        offset_ns(tick, host_ns) >= self.least_offset_ns - ahead_ns - AHEAD_PART * passed_ns
     }
 
-    /// Twice in a row, and the two fit each other: the device began again.
+    /// Twice in a row, further back, and the two fit each other: the device began again.
     fn does_not_fit(&mut self, printed_ns: u64, host_ns: i64) -> Placed {
+        let back_ns = self.last.map_or(0, |last| last.printed_ns.saturating_sub(printed_ns));
+        if (1..=STEPS_BACK_NS).contains(&back_ns) {
+            return Placed::Refused(JUMPS);
+        }
         let agrees = self.odd.is_some_and(|odd| {
             let moved_ns = printed_ns as f64 - odd.printed_ns as f64;
             let passed_ns = host_ns.saturating_sub(odd.host_ns) as f64;

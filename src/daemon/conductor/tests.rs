@@ -8,6 +8,7 @@ use std::path::Path;
 
 use super::super::room::Room;
 use super::super::sealing::SealCommand;
+use super::super::service::ServiceManager;
 
 /// A conductor whose journal is on a staged disk and whose ports are this test.
 struct Pit {
@@ -64,6 +65,7 @@ fn pit() -> Pit {
         settle_at_ns: 0,
         openings: FirstOpenings::of(&rig),
         wait_for_ports: false,
+        service: Service::reach(&ServiceManager::default()),
     };
     let inputs = Inputs { live, requests, reports, sealed, counted: crossbeam_channel::never(), shutdown: told };
     Pit { _dir: dir, disk, conductor, inputs, journal: to_journal, live: to_live, shutdown }
