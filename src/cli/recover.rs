@@ -100,7 +100,9 @@ fn sentence(one: &Recovered, screen: &Screen) -> String {
 
 fn unreadable_sentence(error: &ReadError, screen: &Screen) -> String {
     let word = screen.toned("NOT READ", Tone::Bad);
-    format!("{word}: {error}; it is left as it is: copy the file to a sound disk and run this again")
+    format!(
+        "{word}: {error}; it is left as it is. Where the disk is at fault, copy the file to a sound one and run this again"
+    )
 }
 
 fn unreadable_json(error: &ReadError) -> Value {

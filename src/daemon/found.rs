@@ -12,6 +12,7 @@ use crate::journal::{
 };
 
 use super::machine::number_of;
+use super::words;
 
 /// A trial that has no file yet.
 #[derive(Debug, Clone, PartialEq, Eq)]
@@ -42,7 +43,7 @@ pub struct Found {
     pub next_journal_number: u32,
     pub next_trial_number: u32,
     pub resumed: Option<Resumed>,
-    /// The trial a lost machine, a changed rig file or a recovery left unfinished and that does not go on.
+    /// The trial a lost machine, a changed rig file, a recovery or a full disk left unfinished and that does not go on itself.
     pub unfinished: Option<String>,
     pub unsealed: Vec<Unsealed>,
     /// Finished segments that the journal takes charge of, each with the number after its last record.
@@ -153,7 +154,11 @@ impl Found {
         let open_trial = survey.open_trial().filter(|trial| goes_on && !is_sealed(trial)).cloned();
         let waiting = |trial: &&TrialRange| Some(*trial) != open_trial.as_ref() && !is_sealed(trial);
         if is_newest && open_trial.is_none() {
-            self.unfinished = survey.open_trial().map(|trial| trial.trial_id.clone());
+            let for_want_of_room = |trial: &&TrialRange| {
+                trial.closed.as_ref().is_some_and(|close| words::ended_under_tension(&close.reason))
+            };
+            let left = survey.open_trial().or_else(|| survey.trials.last().filter(for_want_of_room));
+            self.unfinished = left.map(|trial| trial.trial_id.clone());
         }
         let n_before = self.unsealed.len();
         self.unsealed.extend(survey.trials.iter().filter(waiting).map(|trial| Unsealed {

@@ -201,8 +201,8 @@ impl Conductor {
         }
         for error in &found.unreadable {
             self.complain(&format!(
-                "{error}; its trials are not sealed now, recording begins all the same: copy the file away, `tautrail \
-                 recover` tries it again"
+                "{error}; its trials are not sealed now, recording begins all the same. Where the \
+                 disk is at fault, copy the file to a sound one; `tautrail recover` tries it again"
             ));
         }
         if let Some(resumed) = &found.resumed {

@@ -68,13 +68,17 @@ pub fn slow(now: &RecorderNow) -> Option<String> {
     None
 }
 
+const DISK_FULL_UNDER_TENSION: &str =
+    "the disk takes no more; the cords are NOT known to be slack: treat them as loaded, make room";
+
 /// Why a trial ends when nothing more can be recorded.
 pub fn disk_full(slack: bool) -> &'static str {
-    if slack {
-        "the disk takes no more, cords slack"
-    } else {
-        "the disk takes no more; the cords are NOT known to be slack: treat them as loaded, make room"
-    }
+    if slack { "the disk takes no more, cords slack" } else { DISK_FULL_UNDER_TENSION }
+}
+
+/// Whether a trial that ended for this reason may go on under the same tension.
+pub fn ended_under_tension(reason: &str) -> bool {
+    reason == DISK_FULL_UNDER_TENSION
 }
 
 /// Passes on what sealing says until it is done with everything or `deadline` has come.

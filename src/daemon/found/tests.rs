@@ -160,3 +160,18 @@ fn a_journal_that_cannot_be_read_keeps_nobody_from_recording() {
         assert!(!found.segments.iter().any(|(segment, _)| segment.open.journal_id == "000007-abc123"), "left alone");
     }
 }
+
+#[test]
+fn a_trial_that_a_full_disk_ended_under_tension_is_what_the_next_one_continues() {
+    for (slack, unfinished) in [(false, Some(TRIAL.to_owned())), (true, None)] {
+        let disk = StagedDisk::default();
+        let mut journal = journal(&disk, "000007-abc123");
+        open_trial(&mut journal);
+        let reason = words::disk_full(slack).to_owned();
+        let close = TrialClose { trial_id: TRIAL.into(), reason, person: String::new() };
+        journal.append(4, DeviceIdx(0), &Body::TrialClose(close));
+        journal.commit(4);
+        let found = found(&disk.after_kill(), HERE, false);
+        assert_eq!((found.unfinished, found.unsealed.len()), (unfinished, 1));
+    }
+}
