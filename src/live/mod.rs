@@ -8,6 +8,7 @@ mod alarm;
 mod channel;
 mod cord_fit;
 mod cords;
+pub(crate) mod debrief;
 mod device;
 mod drawn;
 mod forecast;
@@ -28,6 +29,7 @@ mod testing;
 mod trail;
 mod trial;
 
+pub use debrief::{Debrief, Recorded};
 pub use happening::{AlarmChange, Happening};
 pub use instrument::{Around, Live};
 pub use plan::{Expected, Plan};

@@ -19,6 +19,22 @@ pub enum Phase {
 }
 
 impl Phase {
+    const ALL: [Self; 8] = [
+        Self::Unknown,
+        Self::Slack,
+        Self::WinchBack,
+        Self::Hold,
+        Self::Launch,
+        Self::RunOut,
+        Self::Rest,
+        Self::LetDown,
+    ];
+
+    /// The phase that reads so.
+    pub fn named(words: &str) -> Option<Self> {
+        Self::ALL.into_iter().find(|phase| phase.words() == words)
+    }
+
     /// The phase as people read it.
     pub const fn words(self) -> &'static str {
         match self {

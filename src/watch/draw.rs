@@ -52,6 +52,14 @@ pub fn draw(frame: &mut Frame, view: &ViewState) {
 
 /// Whether the cords hold energy: the first line of every view.
 pub fn cords_line(view: &ViewState) -> Line<'static> {
+    if let Some(banner) = &view.recorded {
+        let cords = match view.cords() {
+            CordsShown::Loaded { tension_n, .. } => format!("cords were loaded, {}", view.units.force(tension_n)),
+            CordsShown::Unknown => String::from("tension was unknown"),
+            CordsShown::Slack => String::from("cords were slack"),
+        };
+        return Line::styled(format!(" {banner}  {cords} "), view.theme.alert());
+    }
     match view.cords() {
         CordsShown::Loaded { tension_n, energy_j, freshness } => {
             let old = match freshness {
@@ -212,7 +220,11 @@ fn footer_line(view: &ViewState) -> Line<'static> {
     if let Some(notice) = &view.notice {
         spans.push(Span::raw(format!("  {notice}")));
     } else {
-        spans.push(Span::styled("  q quit a seen u units b big h help", view.theme.quiet()));
+        let keys = match view.recorded {
+            None => "  q quit a seen u units b big h help",
+            Some(_) => "  q quit space arrows + - h help",
+        };
+        spans.push(Span::styled(keys, view.theme.quiet()));
     }
     if view.n_dropped > 0 {
         spans.push(Span::styled(format!("  {} left out", view.n_dropped), view.theme.caution()));
@@ -225,14 +237,16 @@ fn draw_help(frame: &mut Frame, area: Rect) {
                 a            acknowledge the alarms, in the name given at the start\n\
                 u            units: N, kN, kgf with km/h, lbf with kt; alarms stay in N and m/s\n\
                 b            big numbers, to be read from a distance, and back\n\
-                h            this help\n\n\
+                h            this help\n\
+                a recorded trial: space stops and goes on, arrows 5 s back and on, + - pace,\n\
+                0 to the start\n\n\
                 Chart: tension over the rail. Shaded the plan's band, dashed the limit, dots\n\
                 the greatest tension at each place since the winch-back, a diamond now.\n\
                 ~ before a number: older than 0.2 s. A word in its place: older than 1 s.\n\n\
                 The display advises and records only. It is no safety device: interlocks,\n\
                 exclusion zones, local codes and licensed practice decide.\n\
                 No key starts or stops machinery.";
-    let height = 15.min(area.height);
+    let height = 17.min(area.height);
     let width = 80.min(area.width);
     // The cords' line stays in view.
     let top = area.top() + 1.min(area.height);

@@ -12,6 +12,7 @@ mod panels;
 mod plain;
 mod rail;
 mod shown;
+mod source;
 mod terminal;
 #[cfg(test)]
 mod tests;
@@ -22,6 +23,7 @@ mod words;
 pub use draw::draw;
 pub use plain::{follow_plain, plain_line};
 pub use shown::{ForceUnit, ShownUnits, SpeedUnit};
+pub use source::{Source, TrialPlayer};
 pub use terminal::{Choices, WatchError, follow};
 pub use theme::Theme;
 pub use view::ViewState;

@@ -121,7 +121,7 @@ fn launched(view: &ViewState, seen: &LaunchSeen) -> Vec<Line<'static>> {
         Line::styled(format!("peak  {:>5.2} g", seen.peak_g), theme.strong()),
         Line::from(limit_words(hello.limit_peak_g, hello.proof_limit_g)),
         Line::styled(limit, style(limit == "under limit")),
-        Line::styled("first estimate", theme.quiet()),
+        Line::styled(if view.recorded.is_some() { "the trial's reading" } else { "first estimate" }, theme.quiet()),
     ]
 }
 

@@ -14,11 +14,12 @@ use rustix::io::Errno;
 use signal_hook::consts::{SIGHUP, SIGINT, SIGTERM};
 use thiserror::Error;
 
+use crate::feed::ClientError;
 use crate::feed::message::{Command, Message};
-use crate::feed::{ClientError, FeedClient};
 
 use super::draw;
 use super::shown::ShownUnits;
+use super::source::{Link, Source, connected};
 use super::theme::Theme;
 use super::view::ViewState;
 
@@ -51,7 +52,6 @@ pub enum WatchError {
 /// What the person at the display chose.
 #[derive(Debug, Clone)]
 pub struct Choices {
-    pub socket: PathBuf,
     /// Named in acknowledgements.
     pub person: String,
     pub theme: Theme,
@@ -60,11 +60,12 @@ pub struct Choices {
     pub big: bool,
 }
 
-/// Follows the feed on the terminal until a key or a signal ends it. A lost daemon is tried again every second.
+/// Follows a daemon's feed, or plays a recorded trial, on the terminal until a key or a signal ends it. A lost daemon is
+/// tried again every second.
 ///
 /// # Errors
 /// [`WatchError`] when there is no daemon at the start, or no terminal.
-pub fn follow(choices: &Choices) -> Result<(), WatchError> {
+pub fn follow(source: Source, choices: &Choices) -> Result<(), WatchError> {
     if !io::stdout().is_terminal() || !io::stdin().is_terminal() {
         return Err(WatchError::NoTerminal);
     }
@@ -72,16 +73,16 @@ pub fn follow(choices: &Choices) -> Result<(), WatchError> {
     if term.is_empty() || term == "dumb" {
         return Err(WatchError::DumbTerminal { term });
     }
-    let client = FeedClient::connect(&choices.socket)?;
+    let (link, hello, socket) = Link::open(source)?;
     let stop = Arc::new(AtomicBool::new(false));
     for signal in [SIGTERM, SIGHUP, SIGINT] {
         signal_hook::flag::register(signal, stop.clone())?;
     }
-    let mut view = ViewState::new(client.hello().clone(), choices.theme);
+    let mut view = ViewState::new(hello, choices.theme);
     (view.units, view.big) = (choices.units, choices.big);
     // Also sets a panic hook that leaves the terminal clean.
     let mut terminal = ratatui::try_init()?;
-    let ended = Watch::new(choices, client, view).run(&mut terminal, &stop);
+    let ended = Watch::new(choices, link, socket, view).run(&mut terminal, &stop);
     if terminal_is_gone()? {
         // Dropping it would print that the cursor can't be shown, to nobody, and panic over that.
         std::mem::forget(terminal);
@@ -105,15 +106,11 @@ fn terminal_is_gone() -> io::Result<bool> {
     }
 }
 
-/// A daemon that answers, or when to try again.
-enum Link {
-    Up(Box<FeedClient>),
-    Down { try_at: Instant },
-}
-
 struct Watch<'a> {
     choices: &'a Choices,
     link: Link,
+    /// Of the daemon, to connect again.
+    socket: Option<PathBuf>,
     view: ViewState,
     snapshot_at: Instant,
     drawn_at: Option<Instant>,
@@ -121,15 +118,8 @@ struct Watch<'a> {
 }
 
 impl<'a> Watch<'a> {
-    fn new(choices: &'a Choices, client: FeedClient, view: ViewState) -> Self {
-        Self {
-            choices,
-            link: Link::Up(Box::new(client)),
-            view,
-            snapshot_at: Instant::now(),
-            drawn_at: None,
-            next_id: 1,
-        }
+    fn new(choices: &'a Choices, link: Link, socket: Option<PathBuf>, view: ViewState) -> Self {
+        Self { choices, link, socket, view, snapshot_at: Instant::now(), drawn_at: None, next_id: 1 }
     }
 
     fn run(mut self, terminal: &mut DefaultTerminal, stop: &AtomicBool) -> io::Result<()> {
@@ -159,6 +149,19 @@ impl<'a> Watch<'a> {
         while Instant::now() < until {
             let next = match &mut self.link {
                 Link::Up(client) => client.next(LISTEN),
+                Link::Trial(player) => {
+                    let due = player.due(Instant::now());
+                    self.view.recorded = Some(player.banner());
+                    let Some((anew, messages)) = due else {
+                        std::thread::sleep(LISTEN);
+                        return urgent;
+                    };
+                    if anew {
+                        self.view.begin_anew();
+                    }
+                    urgent |= messages.into_iter().fold(false, |urgent, message| self.take(message) | urgent);
+                    continue;
+                }
                 Link::Down { try_at } => {
                     std::thread::sleep(LISTEN);
                     let due = Instant::now() >= *try_at;
@@ -193,11 +196,12 @@ impl<'a> Watch<'a> {
     }
 
     fn reconnect(&mut self) {
-        match FeedClient::connect(&self.choices.socket) {
+        let Some(socket) = &self.socket else { return };
+        match connected(socket) {
             Ok(client) => {
                 self.view.lost = None;
                 self.view.hello = client.hello().clone();
-                self.link = Link::Up(Box::new(client));
+                self.link = Link::Up(client);
             }
             Err(error) => {
                 self.view.lost = Some(error.to_string());
@@ -223,6 +227,7 @@ impl<'a> Watch<'a> {
             KeyCode::Char('h' | '?') => self.view.help = !self.view.help,
             KeyCode::Esc => self.view.help = false,
             KeyCode::Char('a') => self.acknowledge(),
+            KeyCode::Char(' ' | '+' | '-' | '0') | KeyCode::Left | KeyCode::Right => self.steer(key.code),
             KeyCode::Char('b') => self.view.big = !self.view.big,
             KeyCode::Char('u') => {
                 self.view.units = self.view.units.next();
@@ -234,12 +239,27 @@ impl<'a> Watch<'a> {
         false
     }
 
+    /// Keys of a recorded trial; live they do nothing.
+    fn steer(&mut self, key: KeyCode) {
+        let Some(player) = self.link.player() else { return };
+        match key {
+            KeyCode::Char(' ') => player.pause(),
+            KeyCode::Char('+') => player.faster(),
+            KeyCode::Char('-') => player.slower(),
+            KeyCode::Char('0') => player.seek(f64::NEG_INFINITY),
+            KeyCode::Left => player.seek(-1.0),
+            KeyCode::Right => player.seek(1.0),
+            _ => {}
+        }
+    }
+
     fn acknowledge(&mut self) {
-        let Link::Up(client) = &mut self.link else { return };
         let command = Command::Acknowledge { id: self.next_id, person: self.choices.person.clone() };
         self.next_id += 1;
-        if let Err(error) = client.send(&command) {
-            self.lose(&error);
+        match self.link.send(&command) {
+            Ok(true) => {}
+            Ok(false) => self.view.notice = Some("there is no daemon to tell".to_owned()),
+            Err(error) => self.lose(&error),
         }
     }
 }

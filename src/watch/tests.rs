@@ -251,6 +251,18 @@ fn big_numbers_of_a_frozen_daemon_are_gone_within_a_second() {
 }
 
 #[test]
+fn a_recorded_trial_is_never_taken_for_a_live_one() {
+    for mut view in all_views() {
+        view.recorded = Some("RECORDED, NOT LIVE: 8.0 of 15.0 s, x1".into());
+        for (width, height) in [(80, 24), (160, 50)] {
+            let shown = text(&view, width, height);
+            let first = shown.lines().next().unwrap_or_default();
+            assert!(first.contains("RECORDED, NOT LIVE") && !first.contains("CORDS LOADED"), "{shown}");
+        }
+    }
+}
+
+#[test]
 fn slack_at_80_by_24() {
     insta::assert_snapshot!(text(&slack(COLOUR), 80, 24));
 }

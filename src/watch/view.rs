@@ -34,6 +34,8 @@ pub struct ViewState {
     pub units: ShownUnits,
     /// Large numbers in place of chart and panels.
     pub big: bool,
+    /// What is said in front of everything while a recorded trial is shown; `None` when the display is live.
+    pub recorded: Option<String>,
 }
 
 /// What the cords' line may say.
@@ -60,7 +62,16 @@ impl ViewState {
             help: false,
             units: ShownUnits::default(),
             big: false,
+            recorded: None,
         }
+    }
+
+    /// Begins anew, as after a jump in a recorded trial: what was shown is forgotten, choices stay.
+    pub fn begin_anew(&mut self) {
+        self.snapshot = None;
+        self.events.clear();
+        self.history = TimeHistory::default();
+        self.trace = RailTrace::default();
     }
 
     /// Takes a message; true when it must be seen at once.
