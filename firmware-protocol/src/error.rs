@@ -28,7 +28,7 @@ pub enum DecodeError {
     TooShort { len: usize },
     #[error("a frame of {len} bytes is longer than {MAX_DECODED_LEN}")]
     TooLong { len: usize },
-    #[error("checksum {found:#010x}, expected {expected:#010x}")]
+    #[error("checksum {found:#010x}, expected {expected:#010x}{}", order(*found, *expected))]
     Checksum { found: u32, expected: u32 },
     #[error("protocol version {found}, this host speaks {PROTOCOL_VERSION}")]
     Version { found: u8 },
@@ -36,6 +36,10 @@ pub enum DecodeError {
     CutShort { kind: u8, field: &'static str },
     #[error("kind {kind:#04x} ({}): {field} has a value that the protocol does not know", word(*kind))]
     BadValue { kind: u8, field: &'static str },
+}
+
+const fn order(found: u32, expected: u32) -> &'static str {
+    if found == expected.swap_bytes() { ", its bytes are in the wrong order (little-endian is wanted)" } else { "" }
 }
 
 fn word(kind: u8) -> &'static str {

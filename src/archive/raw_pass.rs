@@ -38,6 +38,7 @@ pub(super) struct DevicePass {
     pub(super) n_missing: u64,
     link: LinkHealth,
     last_read_ns: Option<i64>,
+    rebooted_ns: Option<i64>,
     /// What a person should look at.
     pub(super) findings: Vec<String>,
 }
@@ -57,6 +58,7 @@ impl DevicePass {
             n_missing: 0,
             link: LinkHealth::default(),
             last_read_ns: None,
+            rebooted_ns: None,
             findings: Vec::new(),
         }
     }
@@ -244,14 +246,17 @@ impl<'w> RawPass<'w> {
 
     /// A description that came within the range is an event as well.
     fn described(&mut self, device: DeviceIdx, description: &DeviceDescription) -> Result<(), SealError> {
-        let last_ns = self.devices[usize::from(device.0)].last_read_ns.unwrap_or(self.zero_host_ns);
-        let (time_s, name) = (self.time_s(last_ns), self.devices[usize::from(device.0)].name.clone());
+        // It has no stamp of its own: after the read before it, and after the reboot that it follows.
+        let pass = &self.devices[usize::from(device.0)];
+        let after_ns = pass.last_read_ns.max(pass.rebooted_ns).unwrap_or(self.zero_host_ns);
+        let (time_s, name) = (self.time_s(after_ns), pass.name.clone());
         self.events.add(time_s, "device", &name, None, description.to_string());
         self.describe(device, description)
     }
 
     fn rebooted(&mut self, device: DeviceIdx, reboot: &Reboot) {
         let time_s = self.time_s(reboot.host_ns);
+        self.devices[usize::from(device.0)].rebooted_ns = Some(reboot.host_ns);
         let device = &mut self.devices[usize::from(device.0)];
         self.events.add(time_s, "device", &device.name, None, reboot.to_string());
         if device.findings.len() < FINDINGS_MAX {

@@ -42,7 +42,8 @@ Examples:
   tautrail check --json north-pier.toml       for programs
   tautrail check --trials trials/ north-pier.toml   with the cords' cycles and hours
 
-Exit code: 0 usable, 1 an error was found, a port is absent or a cord is to come off, 2 the file can't be read.
+Exit code: 0 usable, 1 an error was found, a port is absent, a cord is to come off, or a running
+daemon's link gives no samples or its clock is further off than the device states, 2 the file can't be read.
 
 Limits in a rig file are for advice and record only. Tautrail is no safety device: interlocks, exclusion zones, local
 codes and licensed practice decide.";
@@ -63,6 +64,7 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
         _ => false,
     };
     let usable = checked.rig.is_some() && ports.iter().all(|port| port.state.is_present()) && !worn;
+    let usable = usable && around.health.links.iter().all(|link| link_health::troubles(link).next().is_none());
     Ok(if usable { Verdict::Done } else { Verdict::CheckFailed })
 }
 
@@ -160,7 +162,11 @@ fn print(args: &Args, checked: &Checked, ports: &[Port<'_>], around: &Around, sc
 }
 
 fn print_around(ports: &[Port<'_>], around: &Around, screen: &Screen) {
-    around.health.links.iter().for_each(|link| screen.line(link_health::sentence(link)));
+    for link in &around.health.links {
+        screen.line(link_health::sentence(link));
+        let look_at = screen.toned("look at:", Tone::Caution);
+        link_health::troubles(link).for_each(|trouble| screen.line(format!("  {look_at} {trouble}")));
+    }
     around.health.journal.iter().for_each(|journal| screen.line(link_health::journal_sentence(journal)));
     for listed in &around.listed {
         let used = ports.iter().find(|port| fs::canonicalize(&port.path).is_ok_and(|node| node == listed.node));

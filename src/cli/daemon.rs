@@ -10,6 +10,7 @@ use serde_json::json;
 use signal_hook::consts::{SIGHUP, SIGINT, SIGTERM};
 use tautrail::daemon::{self, Options, ServiceManager};
 use tautrail::feed::message::Event;
+use tautrail::journal::Clocks;
 use tautrail::rig;
 
 use super::screen::Screen;
@@ -51,6 +52,9 @@ const DAEMON_HELP: &str = "\
 Examples:
   tautrail daemon north-pier.toml --dir trials    record; watch with: tautrail watch --dir trials
   tautrail daemon north-pier.toml --wait-for-ports
+
+Each line says the time of day (UTC), the kind of event and what happened: what a board describes, its texts, reboots and
+losses too, and why a link that is up gives no samples.
 
 Under a service manager that asks for it (NOTIFY_SOCKET, WATCHDOG_USEC: systemd's Type=notify) it says when the feed is served and
 the journal open, and gives signs of life; tools/service/tautrail.service uses both.
@@ -100,10 +104,20 @@ fn print(event: &Event, screen: Screen) {
         screen.line(json!(event).to_string());
     } else {
         let who = event.person.as_deref().map(|person| format!(" ({person})")).unwrap_or_default();
-        screen.line(format!("{:>12.3} {:8} {}{who}", event.host_ns as f64 * 1e-9, event.kind, event.text));
+        screen.line(format!("{} {:8} {}{who}", time_of_day(event.host_ns), event.kind, event.text));
     }
     // Where standard output is a closed pipe there is nobody to tell.
     let _ = std::io::stdout().flush();
+}
+
+/// "09:41:07.120Z" by this computer's clock; seconds since it started where that was never set.
+fn time_of_day(host_ns: i64) -> String {
+    let now = Clocks::read();
+    let realtime_ns = i128::from(now.realtime_ns) - i128::from(now.monotonic_ns) + i128::from(host_ns);
+    match jiff::Timestamp::from_nanosecond(realtime_ns) {
+        Ok(at) if now.wall_clock_set => at.strftime("%H:%M:%S%.3fZ").to_string(),
+        _ => format!("{:.3} s up", host_ns as f64 * 1e-9),
+    }
 }
 
 /// The first signal stops in order; a later one has nothing to add.

@@ -49,6 +49,12 @@ pub fn journal_sentence(journal: &JournalNow) -> String {
     )
 }
 
+/// What is wrong with a link that is up, a sentence each.
+pub fn troubles(link: &LinkNow) -> impl Iterator<Item = String> {
+    let of_device = |trouble: &String| format!("{}: {trouble}", link.device);
+    link.no_samples.iter().chain(&link.clock_trouble).map(of_device)
+}
+
 /// One sentence a link.
 pub fn sentence(link: &LinkNow) -> String {
     if !link.up {
@@ -57,17 +63,19 @@ pub fn sentence(link: &LinkNow) -> String {
     let mut refused = format!("{} refused", link.refused);
     if link.refused > 0 {
         let by: Vec<String> = link.refused_by.iter().map(|(reason, n)| format!("{n} {reason}")).collect();
-        refused = format!("{refused} ({})", by.join(", "));
+        let last = link.last_refusal.as_ref().map_or(String::new(), |last| format!("; the last: {last}"));
+        refused = format!("{refused} ({}{last})", by.join(", "));
     }
     let clock = link.clock_uncertainty_s.map_or("not known yet".to_owned(), |u_s| {
         let drift = link.clock_drift_ppm.map_or(String::new(), |ppm| format!(", {ppm:+.1} ppm"));
         format!("known to {:.3} ms{drift}", u_s * 1e3)
     });
     format!(
-        "link {}: up, {} bytes, {} frames, {refused}, {} lost, {} samples missing in {} gaps, longest stall {:.3} s, clock {clock}; {}",
+        "link {}: up, {} bytes, {} frames, {} blocks, {refused}, {} lost, {} samples missing in {} gaps, longest stall {:.3} s, clock {clock}; {}",
         link.device,
         link.bytes,
         link.frames,
+        link.blocks,
         link.lost_frames,
         link.missing_samples,
         link.gaps,

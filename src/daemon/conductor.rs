@@ -207,6 +207,8 @@ impl Conductor {
                 self.open_by_tension(*host_ns, *preroll_from_host_ns);
             }
             Happening::CloseTrial { host_ns, reason } => self.close_trial(*host_ns, reason, ""),
+            // In the journal its bytes are records of their own already.
+            Happening::Device { .. } => self.publish(&Event::of(happening)),
             other => drop(self.tell(Event::of(other))),
         }
     }

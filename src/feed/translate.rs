@@ -45,6 +45,12 @@ impl Event {
                 let over = if *change == AlarmChange::Cleared { "over: " } else { "" };
                 (*host_ns, "alarm", format!("{over}{sentence}"))
             }
+            Happening::Device { host_ns, device, kind, text } => {
+                // A device's text may hold anything, and goes to terminals.
+                let text = text.replace(char::is_control, "·");
+                let (kind, source) = ((*kind).to_owned(), device.clone());
+                return Self { host_ns: *host_ns, kind, source, person: None, text: format!("{device}: {text}") };
+            }
             Happening::LaunchSeen { host_ns, launch } => {
                 let text = format!("launched at {:.2} m/s, peak {:.2} g", launch.launch_speed_mps, launch.peak_g);
                 (*host_ns, "launch", text)

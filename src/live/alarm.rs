@@ -42,6 +42,10 @@ pub enum Cause {
     ChannelNoisy(usize),
     /// A device's clock is known badly.
     ClockPoor(u16),
+    /// A device's clock is farther off than the device states.
+    ClockBeyond(u16),
+    /// A link is up and no sample of it was accepted.
+    NoSamples(u16),
     /// The device does not describe a channel that the rig file names.
     ChannelMissing(usize),
     /// A tension cell of the rig file has no calibration.
@@ -67,7 +71,9 @@ pub enum Cause {
 impl Cause {
     /// Whether the alarm waits for a person after its cause is gone.
     fn latches(self) -> bool {
-        !matches!(self, Self::LinkAbsent(_) | Self::ChannelMissing(_) | Self::ClockPoor(_) | Self::OutOfWindow)
+        let heals =
+            matches!(self, Self::LinkAbsent(_) | Self::ChannelMissing(_) | Self::ClockPoor(_) | Self::OutOfWindow);
+        !heals && !matches!(self, Self::ClockBeyond(_) | Self::NoSamples(_))
     }
 }
 

@@ -5,8 +5,11 @@ use crate::capture::{
     TimeBase, TimeReply, TimeRequests,
 };
 use crate::link::STOPPED;
-use crate::rig::{Channel, Device};
+use crate::rig::{Channel, Device, Protocol};
 
+use super::bring_up::BringUp;
+use super::losses::Losses;
+use super::rate_watch::RateWatch;
 use super::raw::Taps;
 use super::state::LinkNow;
 
@@ -51,6 +54,10 @@ pub struct DeviceMonitor {
     up_since_ns: i64,
     longest_stall_ns: i64,
     rate: ByteRate,
+    bring_up: BringUp,
+    losses: Losses,
+    clock_rate: Option<RateWatch>,
+    clock_trouble: Option<String>,
 }
 
 /// Bytes a second over the last whole second.
@@ -96,6 +103,13 @@ impl DeviceMonitor {
             up_since_ns: 0,
             longest_stall_ns: 0,
             rate: ByteRate::default(),
+            bring_up: match &device.protocol {
+                Protocol::Text(text) => BringUp::of_text(text.interval_s),
+                Protocol::Frames => BringUp::of_frames(),
+            },
+            losses: Losses::default(),
+            clock_rate: None,
+            clock_trouble: None,
         }
     }
 
@@ -125,6 +139,7 @@ impl DeviceMonitor {
         self.decoder.link_lost(host_ns, &mut |_| {});
         self.up = true;
         self.up_since_ns = host_ns;
+        self.bring_up.opened(host_ns);
         self.ever_up = true;
         self.note = format!("{path} at {baud} baud");
     }
@@ -162,9 +177,57 @@ impl DeviceMonitor {
         }
         self.last_bytes_ns = Some(host_ns);
         self.rate.add(host_ns, bytes.len());
+        self.bring_up.heard_bytes();
         let mut captured = Vec::new();
         self.decoder.feed(host_ns, bytes, &mut |what| captured.push(what));
         captured
+    }
+
+    /// Takes note of what was decoded, for who brings up a board and for who asks what was lost.
+    pub fn heard(&mut self, what: &Captured) {
+        self.bring_up.heard(what);
+        self.losses.heard(what);
+    }
+
+    /// What was lost since it was last told, in people's words, not too often.
+    pub fn tell_losses(&mut self, host_ns: i64) -> Option<String> {
+        self.losses.tell(host_ns)
+    }
+
+    /// Frames, not lines of text.
+    pub fn speaks_frames(&self) -> bool {
+        self.bring_up.speaks_frames()
+    }
+
+    /// Why no sample was accepted since the link came up, where one should have been.
+    pub fn no_samples(&self, host_ns: i64) -> Option<String> {
+        let described = self.decoder.description().is_some();
+        self.bring_up.trouble(host_ns, described, self.decoder.counters()).filter(|_| self.up)
+    }
+
+    /// Giving samples, and up for long enough that a channel which speaks every `silent_ns` should have had a value.
+    pub fn gives_samples(&self, host_ns: i64, silent_ns: i64) -> bool {
+        self.up && host_ns - self.up_since_ns >= silent_ns && self.bring_up.gives_samples(host_ns)
+    }
+
+    /// How the clock breaks the tolerance that the device states, as it looks now.
+    pub fn clock_beyond(&self) -> Option<String> {
+        let watch = self.clock_rate.as_ref().filter(|_| self.has_ticks)?;
+        let piece = self.clock.as_ref().and_then(LiveClock::piece);
+        let by_map = piece.and_then(|piece| piece.drift_ppm(1e9 / self.ns_per_tick));
+        let by_map = by_map.filter(|ppm| ppm.abs() > watch.allowed_ppm());
+        let ppm = watch.beyond_ppm().or(by_map)?;
+        let way = if ppm > 0.0 { "fast" } else { "slow" };
+        let off = if ppm.abs() >= 1e4 { format!("{:.1} %", ppm.abs() * 1e-4) } else { format!("{:.0} ppm", ppm.abs()) };
+        Some(format!(
+            "its clock runs {off} {way}, it states {} ppm: times of its samples get that much worse and some samples may get none; check the tick rate that it describes (SPEC.md 3.1)",
+            watch.stated_ppm()
+        ))
+    }
+
+    /// What is said of the clock in snapshots.
+    pub fn set_clock_trouble(&mut self, trouble: Option<String>) {
+        self.clock_trouble = trouble;
     }
 
     /// Takes a description; gives the rig's calibrated channels that it does not know, by index.
@@ -172,7 +235,11 @@ impl DeviceMonitor {
         let wanted = |name: &str| taps.position(&self.name, name);
         self.ns_per_tick = 1e9 / description.tick_rate_hz;
         self.has_ticks = description.time_base == TimeBase::Ticks;
-        self.clock = Some(LiveClock::new(NominalClock::from(description)));
+        let nominal = NominalClock::from(description);
+        self.clock = Some(LiveClock::new(nominal));
+        if self.clock_rate.as_ref().is_none_or(|watch| watch.nominal() != nominal) {
+            self.clock_rate = Some(RateWatch::new(nominal));
+        }
         if self.boot_id.replace(description.boot_id) != Some(description.boot_id) {
             self.streams.clear();
         }
@@ -241,6 +308,9 @@ impl DeviceMonitor {
         if let Some(clock) = &mut self.clock {
             clock.arrived(&BlockTimes::from(block));
         }
+        if let Some(watch) = &mut self.clock_rate {
+            watch.arrived(block);
+        }
         let first_ns = self.sample_ns(block, block.first_tick);
         if first_ns.abs_diff(block.host_ns) > BELIEVED_WITHIN_NS {
             return;
@@ -273,6 +343,7 @@ impl DeviceMonitor {
 
     pub fn now(&mut self, host_ns: i64) -> LinkNow {
         self.rate.turn(host_ns);
+        let no_samples = self.no_samples(host_ns);
         let counters = self.decoder.counters();
         let piece = self.clock.as_ref().and_then(LiveClock::piece);
         LinkNow {
@@ -283,6 +354,9 @@ impl DeviceMonitor {
             frames: counters.frames,
             refused: counters.refused.values().sum(),
             refused_by: counters.refused.iter().map(|(reason, n)| ((*reason).to_owned(), *n)).collect(),
+            blocks: counters.blocks,
+            last_refusal: Some(self.bring_up.last_refusal().to_owned()).filter(|last| !last.is_empty()),
+            no_samples,
             lost_frames: counters.lost_frames,
             missing_samples: counters.missing,
             gaps: counters.gaps,
@@ -290,6 +364,7 @@ impl DeviceMonitor {
             silent_s: self.last_bytes_ns.map(|last_ns| (host_ns - last_ns).max(0) as f64 * 1e-9),
             clock_uncertainty_s: self.clock_u_s(),
             clock_drift_ppm: piece.and_then(|piece| piece.drift_ppm(1e9 / self.ns_per_tick)),
+            clock_trouble: self.clock_trouble.clone(),
             note: self.note.clone(),
         }
     }

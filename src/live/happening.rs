@@ -20,6 +20,13 @@ pub enum Happening {
         from: Phase,
         to: Phase,
     },
+    /// What a device said, or what of it was lost: to be passed on. Sealing tells it again from the bytes.
+    Device {
+        host_ns: i64,
+        device: String,
+        kind: &'static str,
+        text: String,
+    },
     Alarm {
         host_ns: i64,
         sentence: String,

@@ -121,6 +121,7 @@ impl Live {
     fn on_captured(&mut self, device_idx: usize, what: &Captured) -> Vec<Happening> {
         let Self { devices, channels, launch, rig, board, taps, .. } = self;
         let device = &mut devices[device_idx];
+        device.heard(what);
         match what {
             Captured::Description(description) => {
                 let host_ns = device.last_bytes_ns().unwrap_or(0);
@@ -135,7 +136,9 @@ impl Live {
                         channel.set_interval(interval_ns);
                     }
                 }
-                rules::channels_described(board, rig, &device.name, &missing, host_ns)
+                let mut happenings = vec![said(device, host_ns, "device", description.to_string())];
+                happenings.extend(rules::channels_described(board, rig, &device.name, &missing, host_ns));
+                happenings
             }
             Captured::Block(block) => {
                 device.spread(block, &mut |sample: Sample| {
@@ -150,6 +153,11 @@ impl Live {
                 });
                 self.judge(block.host_ns)
             }
+            Captured::Reboot(reboot) => vec![said(device, reboot.host_ns, "device", reboot.to_string())],
+            // An instrument that prints readings says nothing but readings.
+            Captured::Text { host_ns, text } if device.speaks_frames() => {
+                vec![said(device, *host_ns, "text", text.clone())]
+            }
             Captured::TimeReply(reply) => {
                 device.time_replied(reply);
                 Vec::new()
@@ -160,7 +168,12 @@ impl Live {
 
     /// Time passes: silences, dwell times, forecasts. Call it at every heartbeat.
     pub fn tick(&mut self, host_ns: i64) -> Vec<Happening> {
-        let happenings = self.judge(host_ns);
+        let mut happenings = self.judge(host_ns);
+        for device in &mut self.devices {
+            if let Some(text) = device.tell_losses(host_ns) {
+                happenings.push(said(device, host_ns, "loss", text));
+            }
+        }
         let pull = self.pull(host_ns);
         self.drawn.follow(&self.rig, self.plan.as_ref(), self.tracker.phase(), pull, host_ns);
         happenings
@@ -384,6 +397,10 @@ impl Live {
     pub fn acknowledge(&mut self, person: &str) -> usize {
         self.board.acknowledge(person)
     }
+}
+
+fn said(device: &DeviceMonitor, host_ns: i64, kind: &'static str, text: String) -> Happening {
+    Happening::Device { host_ns, device: device.name.clone(), kind, text }
 }
 
 #[cfg(test)]

@@ -5,6 +5,7 @@
 //! and records; it stops nothing.
 
 mod alarm;
+mod bring_up;
 mod channel;
 mod cord_fit;
 mod cords;
@@ -17,8 +18,10 @@ mod health;
 mod hold_watch;
 mod instrument;
 mod launch;
+mod losses;
 mod phase;
 mod plan;
+mod rate_watch;
 mod raw;
 #[cfg(test)]
 mod rehearsed;

@@ -152,10 +152,19 @@ pub struct LinkNow {
     pub bytes_per_s: f64,
     /// Frames or lines.
     pub frames: u64,
+    /// Blocks or readings accepted.
+    #[serde(default)]
+    pub blocks: u64,
     pub refused: u64,
     /// The same, by reason.
     #[serde(default)]
     pub refused_by: BTreeMap<String, u64>,
+    /// The last refusal since the link came up, with kind, field or id.
+    #[serde(default)]
+    pub last_refusal: Option<String>,
+    /// Why no sample was accepted since the link came up, where one should have been.
+    #[serde(default)]
+    pub no_samples: Option<String>,
     /// Frames that the sequence numbers show to be lost.
     #[serde(default)]
     pub lost_frames: u64,
@@ -171,6 +180,9 @@ pub struct LinkNow {
     /// How fast the device's clock runs against the host's.
     #[serde(default)]
     pub clock_drift_ppm: Option<f64>,
+    /// How the clock breaks the tolerance that the device states.
+    #[serde(default)]
+    pub clock_trouble: Option<String>,
     pub note: String,
 }
 

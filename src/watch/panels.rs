@@ -166,6 +166,9 @@ fn link_line(view: &ViewState, link: &LinkNow) -> Line<'static> {
 /// What a link cost. A refused frame is no missing sample: after a start the first one is often only its tail.
 fn lost_span(view: &ViewState, link: &LinkNow) -> Span<'static> {
     let refused = format!("{} refused", link.refused);
+    if link.no_samples.is_some() {
+        return Span::styled(format!("NO SAMPLES, {refused}"), view.theme.alert());
+    }
     match (link.missing_samples, link.refused) {
         (0, 0) => Span::raw("none missing"),
         (0, _) => Span::raw(format!("none missing, {refused}")),

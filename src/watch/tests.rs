@@ -66,6 +66,9 @@ fn link(device: &str) -> LinkNow {
         frames: 12_345,
         refused: 0,
         refused_by: BTreeMap::new(),
+        blocks: 12_000,
+        last_refusal: None,
+        no_samples: None,
         lost_frames: 0,
         missing_samples: 0,
         gaps: 0,
@@ -73,6 +76,7 @@ fn link(device: &str) -> LinkNow {
         longest_stall_s: 0.02,
         clock_uncertainty_s: Some(40e-6),
         clock_drift_ppm: Some(-12.0),
+        clock_trouble: None,
         note: format!("ports/{device} at 3000000 baud"),
     }
 }
@@ -447,4 +451,14 @@ fn winch_back_shows_what_is_left_and_how_many_cords_pull() {
     view.apply(Message::Snapshot(now));
     let shown = text(&view, 80, 24);
     assert!(shown.contains("to go 1.69 m, +180 N") && shown.contains("fits 6.0 ± 0.3 of 7 cords"), "{shown}");
+}
+
+#[test]
+fn a_link_that_gives_no_samples_is_not_called_complete() {
+    let mut view = holding(Theme { colour: true, ascii: false });
+    let link = &mut view.snapshot.as_mut().unwrap().links[0];
+    link.no_samples = Some("nothing came".into());
+    link.refused = 996;
+    let shown = text(&view, 80, 24);
+    assert!(shown.contains("NO SAMPLES, 996 refused"), "{shown}");
 }

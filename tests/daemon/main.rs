@@ -2,6 +2,7 @@
 
 #![allow(clippy::expect_used, clippy::unwrap_used, reason = "a test that cannot go on stops here")]
 
+mod bring_up;
 mod by_hand;
 mod cable;
 mod crash;

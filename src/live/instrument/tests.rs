@@ -72,6 +72,7 @@ impl Run {
             | Happening::CloseTrial { host_ns, .. }
             | Happening::Phase { host_ns, .. }
             | Happening::Alarm { host_ns, .. }
+            | Happening::Device { host_ns, .. }
             | Happening::LaunchSeen { host_ns, .. } => *host_ns,
         };
         Some((host_ns - ZERO_NS) as f64 * 1e-9)
@@ -385,4 +386,34 @@ fn ticks_from_nowhere_neither_stop_the_daemon_nor_move_a_level() {
         assert!(level.zip(now).is_some_and(|(was, is)| (was - is).abs() < 30.0), "tick {wild}: {level:?}, {now:?}");
         run.play(&scene, 6.1, 8.0, |_| true);
     }
+}
+
+/// A device's part of the conversation in frames.
+fn frame(message: &firmware_protocol::Message<'_>) -> LinkWhat {
+    let mut out = [0; firmware_protocol::MAX_FRAME_LEN];
+    let header = firmware_protocol::Header { boot_id: 9, ..Default::default() };
+    let n = firmware_protocol::encode(&header, message, &mut out).unwrap();
+    LinkWhat::Bytes(bytes::Bytes::copy_from_slice(&out[..n]))
+}
+
+#[test]
+fn a_board_that_is_being_brought_up_is_told_what_is_wrong_with_it() {
+    let mut run = Run { live: Live::new(&north_pier()), told: Vec::new() };
+    run.link(ZERO_NS, 0, LinkWhat::Up { path: "port".into(), baud: 1 });
+    run.told.extend(run.live.tick(ZERO_NS + 2 * S));
+    assert!(!run.raised().iter().any(|sentence| sentence.contains("nothing came")), "too early: {:?}", run.raised());
+    run.told.extend(run.live.tick(ZERO_NS + 4 * S));
+    assert!(run.raised().iter().any(|sentence| sentence.starts_with("winch-node: nothing came in the 4 s")));
+    let hello = firmware_protocol::Message::Text("hello\u{1b}[2J");
+    run.link(ZERO_NS + 5 * S, 0, frame(&hello));
+    run.told.extend(run.live.tick(ZERO_NS + 5 * S));
+    let link = run.live.snapshot(ZERO_NS + 5 * S, Around::default()).links.remove(0);
+    assert!(link.no_samples.unwrap().contains("has not described itself"));
+    let said = run.told.iter().find(|happening| matches!(happening, Happening::Device { kind: "text", .. })).unwrap();
+    let event = crate::feed::message::Event::of(said);
+    assert_eq!((event.source.as_str(), event.text.as_str()), ("winch-node", "winch-node: hello·[2J"));
+    run.link(ZERO_NS + 6 * S, 0, LinkWhat::Bytes(bytes::Bytes::from_static(b"\0boot loader\0")));
+    run.told.extend(run.live.tick(ZERO_NS + 6 * S));
+    let lost = run.told.iter().any(|happening| matches!(happening, Happening::Device { kind: "loss", .. }));
+    assert!(lost, "{:?}", run.told);
 }

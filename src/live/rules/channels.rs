@@ -35,15 +35,20 @@ fn silent(live: &mut Live, idx: usize, host_ns: i64) -> Option<Happening> {
     if channel.is_fresh(host_ns) {
         return live.board.clear(cause, host_ns);
     }
-    let silent = channel.age_ns(host_ns).is_some_and(|age_ns| age_ns >= SILENT_NS.max(channel.silent_ns()));
+    let silent_ns = SILENT_NS.max(channel.silent_ns());
+    let silent = channel.age_ns(host_ns).is_some_and(|age_ns| age_ns >= silent_ns);
+    // A link without any sample, and a channel that is not described, have their own sentences.
+    let device = live.devices.iter().find(|device| device.name == channel.device);
+    let gives_others = device.is_some_and(|device| device.gives_samples(host_ns, silent_ns));
+    let never = channel.age_ns(host_ns).is_none() && gives_others && !live.board.is_active(Cause::ChannelMissing(idx));
     // A lost link has its own sentence and explains the silence of all its channels.
     let link_lost = live.devices.iter().any(|device| device.name == channel.device && !device.is_up());
-    if !silent || link_lost || live.board.is_active(cause) {
+    if !(silent || never) || link_lost || live.board.is_active(cause) {
         return None;
     }
-    let silent_s = (SILENT_NS.max(channel.silent_ns()) as f64 * 1e-8).round() * 0.1;
-    let sentence =
-        format!("{} is silent: no value for over {silent_s} s; check sensor, device and cable", named(channel));
+    let silent_s = (silent_ns as f64 * 1e-8).round() * 0.1;
+    let since = if never { "since the link came up".to_owned() } else { format!("for over {silent_s} s") };
+    let sentence = format!("{} is silent: no value {since}; check sensor, device and cable", named(channel));
     live.board.raise(cause, host_ns, sentence)
 }
 

@@ -11,6 +11,7 @@ const LINK_GRACE_NS: i64 = 3_000 * super::MS;
 const CLOCK_GRACE_NS: i64 = 10_000 * super::MS;
 const POOR_S: f64 = 2e-3;
 const POOR_FOR_NS: i64 = 2_000 * super::MS;
+const BEYOND_FOR_NS: i64 = 5_000 * super::MS;
 
 /// Says which of the rig's channels a device's description lacks.
 pub fn channels_described(
@@ -57,6 +58,28 @@ pub(super) fn judge(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
             device.note()
         );
         told.extend(live.board.raise(cause, host_ns, sentence));
+    }
+}
+
+/// A link that is up and gives no samples: what whoever brings up a board has to know.
+pub(super) fn no_samples(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
+    for (idx, device) in (0_u16..).zip(&live.devices) {
+        let cause = Cause::NoSamples(idx);
+        match device.no_samples(host_ns) {
+            Some(trouble) => told.extend(live.board.raise(cause, host_ns, format!("{}: {trouble}", device.name))),
+            None => told.extend(live.board.clear(cause, host_ns)),
+        }
+    }
+}
+
+/// A clock beyond its stated tolerance.
+pub(super) fn clock_beyond(live: &mut Live, host_ns: i64, told: &mut Vec<Happening>) {
+    for (idx, device) in (0_u16..).zip(&mut live.devices) {
+        let cause = Cause::ClockBeyond(idx);
+        let seen = device.clock_beyond().filter(|_| device.is_up());
+        let sentence = seen.as_ref().map(|seen| format!("{}: {seen}", device.name));
+        told.extend(live.board.judge(cause, host_ns, BEYOND_FOR_NS, sentence));
+        device.set_clock_trouble(seen.filter(|_| live.board.is_active(cause)));
     }
 }
 

@@ -30,7 +30,9 @@ pub fn judge(live: &mut Live, host_ns: i64) -> Vec<Happening> {
     told.extend(drawn::out_of_window(live, host_ns));
     told.extend(drawn::peak_over_limit(live, host_ns));
     links::judge(live, host_ns, &mut told);
+    links::no_samples(live, host_ns, &mut told);
     links::clock_poor(live, host_ns, &mut told);
+    links::clock_beyond(live, host_ns, &mut told);
     channels::judge(live, host_ns, &mut told);
     told.extend(loaded::blind(live, host_ns));
     told.extend(channels::uncalibrated(live, host_ns));
