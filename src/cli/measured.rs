@@ -33,6 +33,8 @@ pub struct Measured {
     pub rig: Rig,
     /// Edges of digital inputs that the trial holds.
     pub edges: Vec<EdgeSeen>,
+    /// SHA-256 of all raw data as sealed.
+    pub raw_sha256: String,
 }
 
 /// Tables that were recorded beside the rig and are read with the trial.
@@ -106,5 +108,6 @@ pub fn open(trial_path: &Path, rig_path: Option<&PathBuf>) -> Result<Measured, M
     };
     let signals = trial.signals().map_err(failed)?;
     let edges = tautrail::archive::edges_of(&trial).map_err(failed)?;
-    Ok(Measured { header: trial.header().clone(), signals, rig, edges })
+    let raw_sha256 = trial.sealed_raw_digest().map_err(failed)?;
+    Ok(Measured { header: trial.header().clone(), signals, rig, edges, raw_sha256 })
 }

@@ -11,10 +11,12 @@ mod compare;
 mod cord;
 mod daemon;
 mod feed_place;
+mod fit;
 mod forecast;
 mod link_health;
 mod mark;
 mod measured;
+mod new_file;
 mod open;
 mod read;
 mod recover;
@@ -75,6 +77,7 @@ enum Command {
     Report(report::Args),
     Read(read::Args),
     Replay(replay::Args),
+    Fit(fit::Args),
     Compare(compare::Args),
     #[command(hide = true)]
     SealChild(seal_child::Args),
@@ -106,6 +109,7 @@ impl Command {
             Self::Report(args) => report::run(args, screen),
             Self::Read(args) => read::run(args, screen),
             Self::Replay(args) => replay::run(args, screen),
+            Self::Fit(args) => fit::run(args, screen),
             Self::Compare(args) => compare::run(args, screen),
             Self::SealChild(args) => seal_child::run(args, screen),
             Self::CountCords(args) => cord::count::run(args, screen),

@@ -10,7 +10,7 @@ use super::energy_draws::{ForecastedEnergy, forecasted_energy};
 use super::error::ModelError;
 use super::inputs::{Inputs, Known, Moved};
 use super::interval::Interval;
-use super::loss_terms::unfitted;
+use super::loss_terms::{beyond_loss_card, unfitted};
 use super::propagation::{Propagated, first_order};
 use super::quantities::{LAUNCH_SPEED, LINE_TENSION, PEAK_G, QUANTITIES, Quantity, evaluate};
 use super::run::{LaunchRun, energy_at_separation, simulate};
@@ -105,7 +105,7 @@ pub fn forecast(rig: &Rig, options: ForecastOptions) -> Result<Forecast, ModelEr
         probabilities,
         energy: forecasted_energy(&run.energy_at_separation, energy_columns),
         bands: bands(&fast, &inputs, &run, options.seed),
-        extrapolations: setup.extrapolations(),
+        extrapolations: setup.extrapolations().into_iter().chain(beyond_loss_card(rig, &setup, &run)).collect(),
         unfitted: unfitted(rig),
         inputs,
         run,

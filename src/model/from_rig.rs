@@ -12,6 +12,9 @@ use crate::rig::{CordDetails, Cords, Gas, Rig, XForce, local_gravity_mps2};
 /// common practice, no published source.
 const USUAL_GAP_WIDTH: f64 = 0.05;
 
+/// A winch stops a little beyond the plan: by this share a measured draw may lie beyond the curve, and is told as extrapolated.
+const MEASURED_BEYOND: f64 = 0.01;
+
 impl LaunchSetup {
     /// The launch that the rig file plans, from its planned draw: no tension is known yet.
     ///
@@ -19,7 +22,7 @@ impl LaunchSetup {
     /// A curve that is none, a draw beyond the elongation the cord was described for.
     pub fn planned(rig: &Rig) -> Result<Self, ModelError> {
         let setup = Self::at(rig, rig.rail.zero_mark_x_m - rig.plan.draw_m)?;
-        setup.refuse_beyond_card(rig)?;
+        setup.refuse_beyond_card(rig, 1e-9)?;
         Ok(setup)
     }
 
@@ -28,10 +31,10 @@ impl LaunchSetup {
     /// ([`hold_pull_band_n`]).
     ///
     /// # Errors
-    /// As [`LaunchSetup::planned`], and a tension that leaves no pull.
+    /// A curve that is none, a draw more than a hundredth beyond the curve, a tension that leaves no pull.
     pub fn drawn(rig: &Rig, hold_tension_n: f64, x0_m: f64) -> Result<Self, ModelError> {
         let mut setup = Self::at(rig, x0_m)?;
-        setup.refuse_beyond_card(rig)?;
+        setup.refuse_beyond_card(rig, MEASURED_BEYOND)?;
         let pull_n = hold_tension_n + setup.hold_weight_n();
         let described_n = setup.cord_pull_n(x0_m);
         if !(pull_n > 0.0 && described_n > 0.0) {
@@ -54,7 +57,7 @@ impl LaunchSetup {
             cords: cord_sets(rig)?,
             tables: rig.details.force_tables.iter().map(|points| table(points)).collect::<Result<_, _>>()?,
             gas: rig.details.gas.iter().map(gas_source).collect(),
-            losses: losses(rig)?,
+            losses: RailLosses::default(),
             brake: Brake {
                 from_x_m: rig.rail.brake_x_m,
                 constant_n: rig.rail.brake_force_n,
@@ -72,8 +75,38 @@ impl LaunchSetup {
             relative_tolerance: ACCURATE,
             ..Self::bare(rig.shuttle.mass_kg.value, rig.rail.length_m)
         };
+        setup.losses = losses(rig, setup.cord_viscous_factor())?;
         setup.hold_at(start_x_m);
+        setup.lag_cords(rig.details.losses.cord_lag.map_or(0.0, |lag| lag.value));
         Ok(setup)
+    }
+
+    /// Takes from every cord what relaxed in the hold and does not come back within the stroke: of the held tension T₀ the
+    /// share s, so that at tension T the cord pulls s (T₀ − T) less. That is a relaxation whose times are long against the
+    /// stroke (Y. C. Fung, *Biomechanics*, 1981, section 7.6), seen from the hold; below a few per cent of T₀, where it
+    /// would push, it fades with T.
+    pub fn lag_cords(&mut self, share: f64) {
+        const FADES: f64 = 0.03;
+        if share == 0.0 {
+            return;
+        }
+        for set in &mut self.cords {
+            let held = set.elongation(self.start_x_m);
+            let held_n = set.unloading.value(held);
+            if held <= 0.0 || held_n <= 0.0 {
+                continue;
+            }
+            let fresh = set.unloading.clone();
+            set.unloading = fresh.reshaped(|elongation| {
+                let part = (fresh.value(elongation) / held_n).max(0.0);
+                1.0 - share * (1.0 - part) / (part + FADES)
+            });
+        }
+    }
+
+    /// Viscous loss of all cords for each m/s of the shuttle where one cord's is 1 N s/m.
+    pub fn cord_viscous_factor(&self) -> f64 {
+        self.cords.iter().map(|set| set.count * set.travel_ratio * set.travel_ratio).sum()
     }
 
     /// Puts the hold at a place: the cords stand there on their loading branch.
@@ -104,10 +137,10 @@ impl LaunchSetup {
         }
     }
 
-    fn refuse_beyond_card(&self, rig: &Rig) -> Result<(), ModelError> {
+    fn refuse_beyond_card(&self, rig: &Rig, beyond: f64) -> Result<(), ModelError> {
         for (s, (set, details)) in self.cords.iter().zip(all_details(rig)).enumerate() {
             let (asked, known) = (set.elongation(self.start_x_m), set.unloading.last());
-            if asked > known * (1.0 + 1e-9) && !details.extrapolate {
+            if asked > known * (1.0 + beyond) && !details.extrapolate {
                 return Err(ModelError::BeyondCard {
                     set: s,
                     asked_percent: 100.0 * asked,
@@ -180,7 +213,7 @@ fn optional_curve(what: &'static str, points: &[(f64, f64)]) -> Result<Option<Cu
     curve.map_err(|source| ModelError::OtherCurve { what, source })
 }
 
-fn losses(rig: &Rig) -> Result<RailLosses, ModelError> {
+fn losses(rig: &Rig, cord_viscous_factor: f64) -> Result<RailLosses, ModelError> {
     let more = &rig.details.losses;
     let value = |given: Option<crate::rig::Given>| given.map_or(0.0, |given| given.value);
     let along_x: Vec<(f64, f64)> = more.along_x.iter().map(|point| (point.x_m, point.force_n)).collect();
@@ -188,7 +221,7 @@ fn losses(rig: &Rig) -> Result<RailLosses, ModelError> {
         friction_n: rig.losses.friction_n.value,
         load_coefficient: value(more.load_coefficient),
         pull_coefficient: value(more.pull_coefficient),
-        viscous_n_per_mps: value(more.viscous_n_per_mps),
+        viscous_n_per_mps: value(more.viscous_n_per_mps) + cord_viscous_factor * value(more.cord_viscous_n_per_mps),
         along_x_n: optional_curve("loss over x", &along_x)?,
         breakaway_n: value(more.breakaway_n),
     })

@@ -5,7 +5,7 @@ use super::from_rig::hold_pull_band_n;
 use super::relaxation::standing_uncertainties;
 use super::setup::LaunchSetup;
 use crate::estimation::Cholesky;
-use crate::rig::{Given, Rig};
+use crate::rig::{Given, LossCard, Rig};
 
 /// Relative standard uncertainty of the launch speed for each unit of cord mass over carried mass: the one third rule
 /// after the strain wave, against a chain of masses (tools/oracles/launch_chain.py: 0.7 % at a ratio of 0.2).
@@ -30,6 +30,8 @@ enum What {
     LoadFriction,
     PullFriction,
     Viscous,
+    CordLag,
+    CordViscous,
     LossAlongX,
     Breakaway,
     /// Relative, of one cord set, at every elongation.
@@ -54,6 +56,8 @@ enum What {
     RailStiffness,
     /// Relative, of the launch speed.
     CordModel,
+    /// Relative, of the launch speed: what the trials behind the loss card left unexplained.
+    Unexplained,
 }
 
 /// One uncertain input.
@@ -141,6 +145,11 @@ fn bodies(rig: &Rig, add: &mut Add) {
     add("losses.load_friction", "friction by load", "", some(more.load_coefficient), What::LoadFriction);
     add("losses.pull_friction", "friction by pull", "", some(more.pull_coefficient), What::PullFriction);
     add("losses.viscous", "viscous loss", "N s/m", some(more.viscous_n_per_mps), What::Viscous);
+    add("losses.cord_lag", "held tension the cords don't give back", "", some(more.cord_lag), What::CordLag);
+    add("losses.cord_viscous", "viscous loss of a cord", "N s/m", some(more.cord_viscous_n_per_mps), What::CordViscous);
+    if let Some(card) = &more.card {
+        add("losses.unexplained", "unexplained by the loss card", "relative", card.unexplained, What::Unexplained);
+    }
     add("losses.breakaway", "breakaway friction", "N", some(more.breakaway_n), What::Breakaway);
     add("losses.along_x", "loss over x", "relative", more.along_x_relative_uncertainty, What::LossAlongX);
     add("site.head_wind", "head wind", "m/s", settings.head_wind_mps, What::HeadWind);
@@ -168,6 +177,8 @@ fn sources(rig: &Rig, known: Known, add: &mut Add) {
                 add(&name("tension_per_kelvin"), "cord force by temperature", "relative", by_kelvin, what);
                 add(&name("cycles"), "cord force by cycles", "relative", by_cycles, what);
             }
+            // Losses fitted with these curves hold what their shape is wrong by; what is left of it is unexplained.
+            Known::HoldTension { .. } if rig.details.losses.card.as_ref().is_some_and(LossCard::has_cord_lag) => {}
             Known::HoldTension { .. } => {
                 add(&name("force"), "shape of the cord curve", "relative", u, What::CordShape { set });
             }
@@ -221,6 +232,12 @@ impl What {
             Self::LoadFriction => add(&mut setup.losses.load_coefficient),
             Self::PullFriction => add(&mut setup.losses.pull_coefficient),
             Self::Viscous => add(&mut setup.losses.viscous_n_per_mps),
+            Self::CordLag => setup.lag_cords(by),
+            Self::CordViscous => {
+                let by = by * setup.cord_viscous_factor();
+                let viscous = &mut setup.losses.viscous_n_per_mps;
+                *viscous = (*viscous + by).max(0.0);
+            }
             Self::Breakaway => add(&mut setup.losses.breakaway_n),
             Self::LossAlongX => {
                 setup.losses.along_x_n.iter_mut().for_each(|loss| loss.scale((1.0 + by).max(0.0)));
@@ -248,7 +265,7 @@ impl What {
             }
             Self::RailMass => setup.recoil.iter_mut().for_each(|recoil| add(&mut recoil.mass_kg)),
             Self::RailStiffness => setup.recoil.iter_mut().for_each(|recoil| add(&mut recoil.stiffness_n_per_m)),
-            Self::CordModel => moved.speed_factor *= 1.0 + by,
+            Self::CordModel | Self::Unexplained => moved.speed_factor *= 1.0 + by,
         }
     }
 }

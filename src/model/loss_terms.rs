@@ -1,6 +1,8 @@
 //! The losses of a launch, one by one: off, given or to be fitted, and whether they belong to the rail or to each cord.
 
-use crate::rig::{Given, Rig};
+use super::run::LaunchRun;
+use super::setup::LaunchSetup;
+use crate::rig::{Asked, Given, Rig};
 
 /// What a loss travels with: a loss of the rail stays when cords are changed, one of the cords scales with their number.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -53,6 +55,8 @@ pub fn loss_terms(rig: &Rig) -> Vec<LossTerm> {
             relative(!more.along_x.is_empty(), more.along_x_relative_uncertainty),
         ),
         ("breakaway", "breakaway friction", "N", rail, more.breakaway_n),
+        ("cord_lag", "held tension the cords don't give back", "", BelongsTo::EachCord, more.cord_lag),
+        ("cord_viscous", "viscous loss of a cord", "N s/m", BelongsTo::EachCord, more.cord_viscous_n_per_mps),
     ];
     let state = |name: &str, given: Option<Given>| {
         let there = given.filter(|given| given.value != 0.0 || given.standard_uncertainty != 0.0);
@@ -96,6 +100,19 @@ pub fn unfitted(rig: &Rig) -> Vec<String> {
         }
     };
     terms.map(sentence).collect()
+}
+
+/// Sentences on where a launch lies outside what the trials behind the rig's loss card spanned.
+pub fn beyond_loss_card(rig: &Rig, setup: &LaunchSetup, run: &LaunchRun) -> Vec<String> {
+    let Some(card) = &rig.details.losses.card else { return Vec::new() };
+    let cords_alone = setup.gas.is_empty() && setup.tables.is_empty();
+    card.outside(&Asked {
+        cord_count: cords_alone.then(|| setup.cords.iter().map(|set| set.count).sum()),
+        moving_mass_kg: setup.shuttle_mass_kg + setup.payload_mass_kg,
+        draw_m: rig.rail.zero_mark_x_m - setup.start_x_m,
+        pull_n: cords_alone.then(|| setup.cord_pull_n(setup.start_x_m)),
+        launch_speed_mps: run.answers.separation.map(|at| at.launch_speed_mps),
+    })
 }
 
 #[cfg(test)]

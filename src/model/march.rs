@@ -185,6 +185,14 @@ impl<'a, const N: usize> March<'a, N> {
         Ok(())
     }
 
+    /// Runs until the shuttle has reached a place, or the event is over.
+    pub fn run_to_place(&mut self, x_m: f64) -> Result<(), ModelError> {
+        while !self.ended && self.y[0] < x_m {
+            self.step()?;
+        }
+        Ok(())
+    }
+
     fn step(&mut self) -> Result<(), ModelError> {
         if self.cost.steps + self.cost.rejected > MAX_STEPS || self.size_s < 1e-12 {
             return Err(ModelError::StepTooSmall { t_s: self.t_s, x_m: self.y[0] });

@@ -11,7 +11,7 @@ use super::setup::LaunchSetup;
 use super::system::{Layout, System};
 
 /// States of a launch whose course is kept: room for every source and account at once.
-const ROOM: usize = 48;
+pub(super) const ROOM: usize = 48;
 /// Spacing of the shuttle's course for the cords' waves.
 const PLACE_S: f64 = 2e-3;
 /// Spacing of the sampled course.

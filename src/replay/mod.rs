@@ -4,6 +4,7 @@
 //! rig file's masses, cords and losses; a residual is measured minus modelled, with the uncertainty of both sides.
 
 mod course;
+pub mod fit;
 mod force;
 mod replayed;
 mod residual;

@@ -152,16 +152,24 @@ pub(super) fn more_losses(table: &mut Section<'_, '_>, findings: &mut Findings<'
         pull_coefficient: plain(table, findings, ["pull_friction", "pull_friction_uncertainty"]),
         viscous_n_per_mps: table.optional_given(findings, ["viscous", "viscous_uncertainty"], "N s/m", 0.0..=1000.0),
         breakaway_n: table.optional_given(findings, ["breakaway", "breakaway_uncertainty"], "N", FORCE_N),
+        cord_lag: table.optional_given(findings, ["cord_lag", "cord_lag_uncertainty"], "%", 0.0..=20.0),
+        cord_viscous_n_per_mps: table.optional_given(
+            findings,
+            ["cord_viscous", "cord_viscous_uncertainty"],
+            "N s/m",
+            0.0..=1000.0,
+        ),
         along_x: x_forces(table, findings, "along_x"),
         along_x_relative_uncertainty: table
             .optional_quantity(findings, "along_x_uncertainty", "%", 0.0..=100.0)
             .unwrap_or(0.0),
         fit: to_fit(table, findings),
+        card: None,
     }
 }
 
 /// Losses that a fit may be asked to find.
-const LOSSES: [&str; 10] = [
+const LOSSES: [&str; 12] = [
     "friction",
     "load_friction",
     "pull_friction",
@@ -172,6 +180,8 @@ const LOSSES: [&str; 10] = [
     "recoil",
     "along_x",
     "breakaway",
+    "cord_lag",
+    "cord_viscous",
 ];
 
 fn to_fit(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Vec<String> {

@@ -1,7 +1,7 @@
 //! What a rig file may say beyond the simplest launcher: unequal cords, gas, tables, further losses, a rail that recoils,
 //! stages. Everything here is off where the file is silent.
 
-use super::{CordCard, CordItem, CordPoint, Cords, Given, ProofLoad};
+use super::{CordCard, CordItem, CordPoint, Cords, Given, LossCard, ProofLoad};
 
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct Details {
@@ -118,11 +118,17 @@ pub struct MoreLosses {
     pub pull_coefficient: Option<Given>,
     pub viscous_n_per_mps: Option<Given>,
     pub breakaway_n: Option<Given>,
+    /// Share of each cord's held tension that relaxed in the hold and does not come back in the stroke.
+    pub cord_lag: Option<Given>,
+    /// Of one cord, for each m/s at which its end comes in.
+    pub cord_viscous_n_per_mps: Option<Given>,
     pub along_x: Vec<XForce>,
     /// Relative standard uncertainty of the loss over x.
     pub along_x_relative_uncertainty: f64,
     /// Names of losses that a fit is to find.
     pub fit: Vec<String>,
+    /// The fit whose values stand in this rig; none where the rig file states its losses itself.
+    pub card: Option<LossCard>,
 }
 
 #[derive(Debug, Clone, Copy, PartialEq)]

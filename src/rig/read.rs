@@ -46,7 +46,7 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
     let (site, of_site) = sections::site(site, findings);
     let (rail, brake, uncoupling_x_m) = sections::rail(rail, findings);
     let (payload, payload_details) = sections::payload(payload, findings);
-    let (losses, more_losses) = sections::losses(losses, findings);
+    let (losses, more_losses, loss_card) = sections::losses(losses, findings);
     let (plan, of_plan) = sections::plan(plan, findings);
     let (limits, asymmetry_limit) = sections::limits(limits, findings);
     let details = Details {
@@ -72,7 +72,7 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
         inputs,
         asymmetry_limit,
     };
-    let rig = Rig {
+    let mut rig = Rig {
         name,
         invented,
         site,
@@ -90,6 +90,9 @@ fn whole(text: &str, attached: Vec<Attached>, mut root: Section<'_, '_>, finding
         attached,
         text: text.to_owned(),
     };
+    if let Some(pointer) = loss_card {
+        sections::put_loss_card(&mut rig, &pointer, findings);
+    }
     checks::rig(&rig, findings);
     root.finish(findings);
     rig

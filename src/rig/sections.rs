@@ -7,7 +7,10 @@ use super::details::{BrakeDetails, CordDetails, MoreLosses, PayloadDetails, Sett
 use super::document::{Findings, Section, quantity_of};
 use super::finding::Severity;
 use super::surroundings::{moist_air_density_kg_per_m3, standard_air_density_kg_per_m3};
-use super::{CordCard, CordPoint, Cords, Given, Limits, Losses, Payload, Plan, Rail, Shuttle, Site, detail_sections};
+use super::{
+    CordCard, CordPoint, Cords, Given, Limits, LossCard, Losses, Payload, Plan, Rail, Rig, Shuttle, Site,
+    detail_sections,
+};
 use crate::units::STANDARD_GRAVITY_MPS2;
 
 const MASS_KG: std::ops::RangeInclusive<f64> = 0.01..=500.0;
@@ -212,14 +215,34 @@ fn disorder(before: Option<&CordPoint>, point: &CordPoint) -> Option<String> {
     }
 }
 
-pub(super) fn losses(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Losses, MoreLosses) {
+/// Losses, and where the loss card is whose values take their place.
+pub(super) fn losses(mut table: Section<'_, '_>, findings: &mut Findings<'_>) -> (Losses, MoreLosses, Option<String>) {
     let losses = Losses {
         friction_n: table.given(findings, ["friction", "friction_uncertainty"], "N", FORCE_N),
         shuttle_drag_area_m2: shuttle_drag_area(&mut table, findings),
     };
     let more = detail_sections::more_losses(&mut table, findings);
+    let card = table.optional_text(findings, "card");
     table.finish(findings);
-    (losses, more)
+    (losses, more, card)
+}
+
+/// Puts the attached loss card into the rig.
+pub(super) fn put_loss_card(rig: &mut Rig, pointer: &str, findings: &mut Findings<'_>) {
+    const KEY: &str = "losses.card";
+    let Some(found) = rig.attached.iter().find(|text| text.name == pointer) else {
+        findings.error(KEY, format!("{pointer} can't be read: is it there, beside the rig file?"));
+        return;
+    };
+    let (card, wrong) = LossCard::read(pointer, &found.text);
+    for finding in wrong.iter().filter(|finding| finding.severity == Severity::Error) {
+        findings.error(KEY, format!("{pointer}:{finding}"));
+    }
+    let Some(card) = card else { return };
+    if card.rig != rig.name {
+        findings.caution(KEY, format!("{pointer} is of rig {:?}, this is {:?}", card.rig, rig.name));
+    }
+    card.put_into(rig);
 }
 
 fn shuttle_drag_area(table: &mut Section<'_, '_>, findings: &mut Findings<'_>) -> Given {

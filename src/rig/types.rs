@@ -5,13 +5,15 @@
 
 use std::f64::consts::PI;
 
+use serde::Serialize;
+
 use super::attached::Attached;
 use super::details::Details;
 use super::instrument::{SerialSettings, TextColumn, TextInstrument};
 use super::record::CalibrationRecord;
 
 /// A value and its standard uncertainty, both in the unit of the field's name.
-#[derive(Debug, Clone, Copy, PartialEq)]
+#[derive(Debug, Clone, Copy, PartialEq, Serialize)]
 pub struct Given {
     pub value: f64,
     pub standard_uncertainty: f64,

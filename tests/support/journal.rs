@@ -26,6 +26,7 @@ pub struct JournalFile {
     path: PathBuf,
     bytes: Vec<u8>,
     next_seq: u64,
+    pub trial_id: String,
 }
 
 pub fn opening(rig_text: &str) -> SegmentOpen {
@@ -53,7 +54,7 @@ impl JournalFile {
     pub fn begin_of(dir: &Path, journal_id: &str, rig_text: &str) -> Self {
         std::fs::create_dir_all(dir.join("journal")).unwrap();
         let path = dir.join("journal").join(segment_name(journal_id, 1));
-        let mut file = Self { path, bytes: Vec::new(), next_seq: 1 };
+        let mut file = Self { path, bytes: Vec::new(), next_seq: 1, trial_id: TRIAL_ID.into() };
         let body = Body::SegmentOpen(Box::new(SegmentOpen { journal_id: journal_id.into(), ..opening(rig_text) }));
         Record { seq: 1, host_ns: 0, device: DeviceIdx(0), body }.encode(&mut file.bytes);
         file
@@ -77,13 +78,13 @@ impl JournalFile {
     }
 
     pub fn open_trial(&mut self, host_ns: i64, first_seq: u64, first_host_ns: i64) {
-        let (trial_id, reason, person) = (TRIAL_ID.into(), "tension".into(), String::new());
+        let (trial_id, reason, person) = (self.trial_id.clone(), "tension".into(), String::new());
         let open = TrialOpen { trial_id, first_seq, first_host_ns, reason, person, continues: None };
         self.add(host_ns, 0, Body::TrialOpen(open));
     }
 
     pub fn close_trial(&mut self, host_ns: i64) {
-        let close = TrialClose { trial_id: TRIAL_ID.into(), reason: "slack again".into(), person: String::new() };
+        let close = TrialClose { trial_id: self.trial_id.clone(), reason: "slack again".into(), person: String::new() };
         self.add(host_ns, 0, Body::TrialClose(close));
     }
 

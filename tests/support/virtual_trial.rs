@@ -2,6 +2,7 @@
 //!
 //! What the reading sees of it is exactly what sealing would hand it; the truth comes beside it and is never shown to it.
 
+#![allow(dead_code, reason = "each test and tool uses its part")]
 #![allow(clippy::expect_used, reason = "a test that cannot go on stops here")]
 
 use std::path::Path;
@@ -50,7 +51,11 @@ struct Heard {
 
 /// Plays a scenario in virtual time and measures it with the rig file's channels.
 pub fn play(options: &Options, rig: &Rig) -> VirtualTrial {
-    let performance = prepare(options).expect("the scenario can be prepared");
+    measured(prepare(options).expect("the scenario can be prepared"), rig)
+}
+
+/// Measures a performance with the rig file's channels.
+pub fn measured(performance: Performance, rig: &Rig) -> VirtualTrial {
     let mut virtual_play = VirtualPlay::new(&performance).expect("descriptions fit a frame");
     let names: Vec<&str> = performance.devices.iter().map(|device| device.name).collect();
     let mut heard: Vec<Heard> = names.iter().map(|_| Heard::default()).collect();

@@ -1,7 +1,6 @@
 //! `tautrail cord card SHEET`: a lot's card and page from its readings.
 
 use std::fs;
-use std::io::Write as _;
 use std::path::{Path, PathBuf};
 
 use serde_json::{Value, json};
@@ -10,6 +9,7 @@ use tautrail::report::cord_page;
 use tautrail::rig::{CordSheet, Finding, Severity};
 use thiserror::Error;
 
+use crate::cli::new_file::write_new;
 use crate::cli::screen::{Screen, Tone};
 use crate::cli::{CAUTION, Failure, Verdict};
 
@@ -56,10 +56,6 @@ practice decide.";
 enum CardError {
     #[error("{path}: cannot be read: {source}")]
     Unreadable { path: String, source: std::io::Error },
-    #[error("{path}: cannot be written: {source}")]
-    Unwritable { path: String, source: std::io::Error },
-    #[error("{path} is already there: choose another name, or --replace it (trials keep the card they were made with)")]
-    Exists { path: String },
     #[error("{path} can't be used:\n{list}")]
     Sheet { path: String, list: String },
 }
@@ -106,18 +102,6 @@ fn read(path: &Path, screen: &Screen) -> Result<CordSheet, Failure> {
         screen.line(cautions);
     }
     Ok(sheet)
-}
-
-fn write_new(path: &Path, text: &str, replace: bool) -> Result<(), CardError> {
-    let shown = path.display().to_string();
-    let mut options = fs::OpenOptions::new();
-    options.write(true).truncate(true);
-    let options = if replace { options.create(true) } else { options.create_new(true) };
-    let written = options.open(path).and_then(|mut file| file.write_all(text.as_bytes()));
-    written.map_err(|source| match source.kind() {
-        std::io::ErrorKind::AlreadyExists => CardError::Exists { path: shown },
-        _ => CardError::Unwritable { path: shown, source },
-    })
 }
 
 fn print(args: &Args, sheet: &CordSheet, made: &Characterised, screen: &Screen) {

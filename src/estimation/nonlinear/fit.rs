@@ -8,8 +8,6 @@ use super::error::NonlinearError;
 use super::residuals::Residuals;
 use super::solver::{Solved, solve};
 
-/// Largest relative offset that still counts as a minimum; Bates and Watts advise 1e-3.
-const OFFSET: f64 = 1e-4;
 /// Largest step still to go, as a share of a parameter's size, that counts as arrived where the residuals are nothing but
 /// rounding and have no direction.
 const STEP: f64 = 1e-8;
@@ -44,6 +42,9 @@ pub struct FitOptions {
     pub patience: usize,
     /// Relative change of parameters or of the sum of squares below which it stops.
     pub tolerance: f64,
+    /// Largest relative offset that still counts as a minimum: that part of a standard uncertainty is left to go. Bates and
+    /// Watts advise 1e-3.
+    pub largest_offset: f64,
 }
 
 impl Default for FitOptions {
@@ -55,6 +56,7 @@ impl Default for FitOptions {
             loss: Loss::Squares,
             patience: 500,
             tolerance: 1e-14,
+            largest_offset: 1e-4,
         }
     }
 }
@@ -225,7 +227,7 @@ fn proven(
     let tangent = Tangent::of(&jacobian, &free, &sizes, weighted.norm(), &parameters)?;
     let degrees_of_freedom = n_readings - free.len();
     let relative_offset = tangent.relative_offset(&weighted, degrees_of_freedom);
-    let settled = relative_offset <= OFFSET || tangent.remaining_step(&weighted, &sizes) <= STEP;
+    let settled = relative_offset <= options.largest_offset || tangent.remaining_step(&weighted, &sizes) <= STEP;
     let stop = stop_of(termination, evaluations, relative_offset, settled)?;
     let sum_of_squares = residuals.iter().zip(weights).map(|(r, w)| (r * w).powi(2)).sum();
     let spread = weighted.norm_squared() / degrees_of_freedom as f64;

@@ -117,7 +117,7 @@ fn bands_hold_the_best_course() {
 fn the_rig_of_every_key_can_be_forecast() {
     let rig = rig::parse(&EVERY_KEY).unwrap();
     let made = forecast(&rig, options(100)).unwrap();
-    assert!(made.inputs.all.len() == 20, "{:?}", made.inputs.all);
+    assert!(made.inputs.all.len() == 22, "{:?}", made.inputs.all);
     let gas = made.energy.iter().find(|entry| entry.name == "from gas").unwrap();
     assert!(gas.is_source && gas.best_j > 10.0 && gas.monte_carlo.standard_deviation() > 0.1, "{gas:?}");
     assert_eq!(made.unfitted.len(), 2);

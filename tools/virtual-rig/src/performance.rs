@@ -129,7 +129,16 @@ impl Performance {
 /// # Errors
 /// When there is no such scenario, or an option is out of range.
 pub fn prepare(options: &Options) -> Result<Performance, PrepareError> {
-    let scenario = adapted(options)?;
+    prepare_changed(options, |_| {})
+}
+
+/// Works a scenario out that `change` has changed further, after what the options say: rigs that no scenario has.
+///
+/// # Errors
+/// As [`prepare`].
+pub fn prepare_changed(options: &Options, change: impl FnOnce(&mut Scenario)) -> Result<Performance, PrepareError> {
+    let mut scenario = adapted(options)?;
+    change(&mut scenario);
     let mut stage = Stage {
         winch: Winch::at(&scenario.launcher, scenario.start_x_m, scenario.ripple, options.pace),
         pace: options.pace,
