@@ -12,7 +12,7 @@ use tautrail::replay::fit::{FitOptions, fit};
 
 #[test]
 fn losses_and_their_deviations_are_those_of_scipy() {
-    let trials = made_trials(6, 1, true);
+    let trials = made_trials(4, 1, true);
     let found = fit(&trials, &FitOptions { examine: false, ..FitOptions::of(TERMS.to_vec()) }).unwrap();
     let numbers = for_oracle(&trials, &found, "3-point", 1e-11, 1);
     let text = support::run_oracle(include_str!("../tools/oracles/losses_fit.py"), &[&numbers.to_string()]);

@@ -79,6 +79,7 @@ pub fn for_oracle(trials: &[FitTrial], found: &LossFit, jac: &str, tolerance: f6
         "trials": trials.iter().map(one).collect::<Vec<_>>(),
         "prior": named(&|k| json!(prior(k))), "size": named(&|k| json!(TRUTH[k])),
         "own_pull": trials.iter().all(|trial| !trial.nuisances.is_empty()), "inflation": found.inflation,
-        "jac": jac, "method": if jac == "2-point" { "lm" } else { "trf" }, "rtol": tolerance, "atol": 0.1 * tolerance, "rounds": rounds,
+        "jac": jac, "method": if jac == "2-point" { "lm" } else { "trf" }, "rtol": tolerance, "atol": 0.1 * tolerance,
+        "max_step": if jac == "2-point" { 1.0 } else { 3e-3 }, "rounds": rounds,
     })
 }

@@ -2,7 +2,8 @@
 
 The cords have no mass (waves and their share of the moving mass are checked by launch_full.py and launch_chain.py). Residuals:
 (modelled − measured speed)/u at each place, then (value − prior)/u of each loss, then each trial's pull in its own u. The
-difference step is stated: 1e-4 of each parameter, three-point; SciPy's default step of 1.5e-8 is below the noise of solve_ivp.
+difference step is stated: 1e-3 of each loss, a tenth of u of each pull; SciPy's default of 1.5e-8 is below the noise of
+solve_ivp, whose interpolant does not know the knots of the cords' curve; short steps (`max_step`) keep that small.
 
 argv[1]: JSON with trials and priors. Prints JSON: values, deviations, seconds of the fit (best of `rounds`).
 """
@@ -18,7 +19,7 @@ from scipy.interpolate import PchipInterpolator
 from scipy.optimize import least_squares
 
 d = json.loads(sys.argv[1])
-RTOL, ATOL, STEP = d["rtol"], d["atol"], 1e-4
+RTOL, ATOL, STEP, OWN = d["rtol"], d["atol"], 1e-3, 100.0
 TERMS = ["friction", "viscous", "shuttle_drag_area", "cord_lag"]
 prior = np.array([d["prior"][name][0] for name in TERMS])
 u_prior = np.array([d["prior"][name][1] for name in TERMS])
@@ -61,7 +62,8 @@ class Trial:
 
         there.terminal = True
         course = solve_ivp(
-            rates, [0, 5], [self.start, 0.0], method="DOP853", rtol=RTOL, atol=ATOL, events=there, dense_output=True
+            rates, [0, 5], [self.start, 0.0], method="DOP853", rtol=RTOL, atol=ATOL, events=there, dense_output=True,
+            max_step=d["max_step"],
         )
         grid = np.linspace(0, course.t[-1], 400)
         at = np.interp(self.places, course.sol(grid)[0], grid)
@@ -76,7 +78,7 @@ n_own = len(trials) if d["own_pull"] else 0
 
 
 def residuals(q):
-    losses, own = q[:4] * size, (q[4:] - 1 if n_own else np.zeros(len(trials)))
+    losses, own = q[:4] * size, (OWN * (q[4:] - 1) if n_own else np.zeros(len(trials)))
     rows = [(t.speeds(losses, z) - t.v) / t.u / math.sqrt(d["inflation"]) for t, z in zip(trials, own)]
     return np.concatenate(rows + [(losses - prior) / u_prior] + ([own] if n_own else []))
 
@@ -90,5 +92,5 @@ for _ in range(d["rounds"]):
 covariance = np.linalg.inv(found.jac.T @ found.jac)
 print(json.dumps({
     "values": list(found.x[:4] * size), "deviations": list(np.sqrt(np.diag(covariance))[:4] * size),
-    "own": list(found.x[4:] - 1), "seconds": min(times), "evaluations": int(found.nfev), "objective": 2 * found.cost,
+    "own": list(OWN * (found.x[4:] - 1)), "seconds": min(times), "evaluations": int(found.nfev), "objective": 2 * found.cost,
 }))
