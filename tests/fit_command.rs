@@ -10,7 +10,7 @@ use std::path::{Path, PathBuf};
 use std::process::{Command, Output};
 use std::sync::{Arc, LazyLock};
 
-use journal_file::{RIG_TEXT, opened, played};
+use journal_file::{JournalFile, RIG_TEXT, opened, played};
 use serde_json::Value;
 use tautrail::archive::seal;
 use tautrail::journal::{Disk, RealDisk};
@@ -34,12 +34,14 @@ static SEALED: LazyLock<Sealed> = LazyLock::new(|| {
     let launches = [
         ("000001-aaaaaa", "stage-1", dummy(3, "4.0 kg")),
         ("000002-bbbbbb", "stage-2", dummy(5, "6.2 kg")),
-        ("000003-cccccc", "nominal", RIG_TEXT.to_owned()),
+        ("000003-cccccc", "nominal", RIG_TEXT.clone()),
     ];
     let trials = (1..).zip(launches).map(|(seed, (id, scenario, text))| {
         let folder = dir.path().join(id);
         let options = Options { scenario: scenario.into(), seed, pace: 0.1, vary: true, ..Options::default() };
-        played(&folder, (id, &text), &options, true);
+        let mut file = JournalFile::begin(&folder, &text);
+        file.trial_id = id.to_owned();
+        played(file, &options, true);
         let (reader, range) = opened(&folder);
         let disk: Arc<dyn Disk> = Arc::new(RealDisk);
         seal(&reader, &range, &folder, &disk).unwrap().path
@@ -96,7 +98,13 @@ fn forecasts_with(dir: &Path) {
         std::fs::write(&rig, text).unwrap();
         said(&tautrail(&["forecast", "--draws", "200", rig.to_str().unwrap()]))
     };
-    let pointing = RIG_TEXT.replace("[losses]\n", "[losses]\ncard = \"losses.toml\"\n");
+    let (own, records) = tautrail::rig::take_apart(&RIG_TEXT);
+    for record in records {
+        let path = dir.join(&record.name);
+        std::fs::create_dir_all(path.parent().unwrap()).unwrap();
+        std::fs::write(path, record.text).unwrap();
+    }
+    let pointing = own.replace("[losses]\n", "[losses]\ncard = \"losses.toml\"\n");
     let inside = forecast(&pointing);
     assert!(inside.contains("held tension the cords don't give back") && !inside.contains("OUTSIDE"), "{inside}");
     let outside = forecast(&pointing.replace("count = 6", "count = 7"));

@@ -14,6 +14,12 @@ pub enum NewFileError {
     Exists { path: String },
 }
 
+/// Says before the work what [`write_new`] would say after it.
+pub fn refuse_existing(path: &Path, replace: bool) -> Result<(), NewFileError> {
+    let there = !replace && path.exists();
+    if there { Err(NewFileError::Exists { path: path.display().to_string() }) } else { Ok(()) }
+}
+
 pub fn write_new(path: &Path, text: &str, replace: bool) -> Result<(), NewFileError> {
     let shown = path.display().to_string();
     let mut options = fs::OpenOptions::new();

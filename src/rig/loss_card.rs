@@ -10,7 +10,6 @@ use toml::de::DeTable;
 
 use super::document::{Findings, Section, start_of};
 use super::finding::{Finding, Severity};
-use super::proof::date;
 use super::{Correlation, Given, Rig};
 
 /// A card, as far as it is used.
@@ -158,7 +157,7 @@ fn whole(name: &str, mut root: Section<'_, '_>, findings: &mut Findings<'_>) -> 
         findings.error("kind", format!("{kind:?} is no loss card"));
     }
     let [rig, program] = ["rig", "program"].map(|key| root.text(findings, key));
-    let date = date(&mut root, findings, "date");
+    let date = root.date(findings, "date");
     let invented = root.optional_flag(findings, "invented");
     let unexplained = root.quantity(findings, "unexplained", "%", 0.0..=100.0);
     let terms = terms(&mut root, findings);

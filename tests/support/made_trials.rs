@@ -16,7 +16,8 @@ const U_PULL: f64 = 0.002;
 
 /// The rehearsal's rig with cords of one branch and without mass.
 fn simple_rig() -> Rig {
-    let mut rig = tautrail::rig::parse(include_str!("../../tools/rehearsal/north-pier.toml")).unwrap();
+    let path = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("tools/rehearsal/north-pier.toml");
+    let mut rig = tautrail::rig::load(&path).unwrap();
     rig.losses.friction_n = Given { value: 12.0, standard_uncertainty: 6.0 };
     rig.details.cords.loading_curve.clear();
     rig.cords.mass_kg = 0.0;

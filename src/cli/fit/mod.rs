@@ -12,7 +12,7 @@ use tautrail::replay::fit::{CardHeading, FitOptions, FitTrial, LossFit, Refused,
 use thiserror::Error;
 
 use super::measured::open;
-use super::new_file::write_new;
+use super::new_file::{refuse_existing, write_new};
 use super::screen::{Screen, Tone, with_causes};
 use super::{CAUTION, Failure, Verdict};
 
@@ -103,6 +103,9 @@ struct Aside {
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     if let Some(times) = args.robust.filter(|times| !(0.5..=100.0).contains(times)) {
         return Err(format!("--robust {times} is outside 0.5 to 100 standard uncertainties").into());
+    }
+    for path in args.out.iter().chain(&args.results) {
+        refuse_existing(path, args.replace)?;
     }
     let (trials, aside) = gathered(args);
     if trials.is_empty() {

@@ -16,7 +16,7 @@
 //! use tautrail::replay::fit::{FitOptions, FitTrial, Term, fit};
 //!
 //! # fn main() -> Result<(), Box<dyn std::error::Error>> {
-//! let rig = tautrail::rig::parse(include_str!("../../../tools/rehearsal/north-pier.toml"))?;
+//! let rig = tautrail::rig::load("tools/rehearsal/north-pier.toml".as_ref())?;
 //! let mut trials = Vec::new();
 //! for (number, cords) in [(1, 4), (2, 5), (3, 6)] {
 //!     // Of a sealed trial this is `FitTrial::of`; here the model itself plays a rig with 17 N of friction.

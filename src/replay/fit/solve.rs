@@ -71,7 +71,7 @@ pub fn fit(trials: &[FitTrial], options: &FitOptions) -> Result<LossFit, FitErro
     let all: Vec<&FitTrial> = trials.iter().collect();
     of_one_rig(&all)?;
     let solved = solved(&all, options, None)?;
-    refuse_open(&all, &solved)?;
+    refuse_open(&all, options, &solved)?;
     let mut found = assembled(&all, &solved);
     found.combinations = combinations(&solved);
     if options.examine {
@@ -259,14 +259,29 @@ fn together(autocorrelation: f64, joint: &Joint) -> f64 {
 }
 
 /// Losses that the rig file says nothing of and the trials leave open.
-fn refuse_open(trials: &[&FitTrial], solved: &Solved) -> Result<(), FitError> {
-    let joint = &solved.joint;
+fn open(solved: &Solved) -> Vec<usize> {
     let is_open = |k: &usize| {
-        let known = &joint.known[*k];
-        known.weak && !(solved.covariance[(*k, *k)].sqrt() < FOUND * known.given.standard_uncertainty)
+        let known = &solved.joint.known[*k];
+        let found = solved.covariance[(*k, *k)].sqrt() < FOUND * known.given.standard_uncertainty;
+        known.weak && !found
     };
-    let open: Vec<usize> = (0..joint.terms.len()).filter(is_open).collect();
-    if open.is_empty() {
+    (0..solved.joint.terms.len()).filter(is_open).collect()
+}
+
+/// Whether one trial that does not belong is what leaves losses open: without it the others find them all.
+fn spoiled_by_one(trials: &[&FitTrial], options: &FitOptions) -> bool {
+    let without = |index: usize| {
+        let others: Vec<&FitTrial> =
+            trials.iter().enumerate().filter(|(i, _)| *i != index).map(|(_, trial)| *trial).collect();
+        solved(&others, options, None).is_ok_and(|fitted| open(&fitted).is_empty())
+    };
+    trials.len() > 3 && (0..trials.len()).any(without)
+}
+
+fn refuse_open(trials: &[&FitTrial], options: &FitOptions, solved: &Solved) -> Result<(), FitError> {
+    let joint = &solved.joint;
+    let open = open(solved);
+    if open.is_empty() || spoiled_by_one(trials, options) {
         return Ok(());
     }
     let next = next_trials(trials, solved);

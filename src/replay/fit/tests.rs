@@ -9,7 +9,7 @@ use crate::model::{LaunchSetup, passings};
 use crate::rig::{Given, LossCard, Rig};
 
 fn north_pier() -> Rig {
-    let mut rig = crate::rig::parse(include_str!("../../../tools/rehearsal/north-pier.toml")).unwrap();
+    let mut rig = crate::rig::testing::north_pier();
     rig.losses.friction_n = Given { value: 12.0, standard_uncertainty: 6.0 };
     rig
 }
