@@ -2,7 +2,6 @@
 //! prints encoder and accelerometer at 500 lines a second.
 
 #[path = "support/virtual_trial.rs"]
-#[allow(dead_code, reason = "other tests use the rest of it")]
 mod virtual_trial;
 
 use std::path::Path;
