@@ -5,11 +5,11 @@
 //!
 //! Every seed has its own hidden errors of masses, gravity, air and cell. The calibration is made as the guided one is: each
 //! reading is waited for until it settles. Then the cell is mounted anew, tared, and loaded with true forces it never saw.
-//! Prints Markdown.
+//! Prints Markdown: coverage with widths, mean errors of either way, and what the budget is made of.
 
 use std::process::ExitCode;
 
-use tautrail::calibration::cell::{CellCalibration, calibrate};
+use tautrail::calibration::cell::{CellCalibration, Share, calibrate};
 use tautrail::calibration::{Settled, Settling, SettlingRule, Told, cell_record, to_value};
 use tautrail::rig::{CalibrationRecord, Sheet, SheetReading};
 use virtual_rig::weights::{self, WeightBench};
@@ -105,6 +105,21 @@ struct Tally {
     by_record: usize,
     budget_widths_n: Vec<f64>,
     record_widths_n: Vec<f64>,
+    /// Found minus true, rising and falling.
+    signed_n: [Vec<f64>; 2],
+    /// Standard uncertainties of each share, summed over the seeds.
+    shares_n: Vec<(&'static str, f64)>,
+}
+
+impl Tally {
+    fn add_shares(&mut self, shares: &[Share]) {
+        if self.shares_n.is_empty() {
+            self.shares_n = shares.iter().map(|share| (share.source, 0.0)).collect();
+        }
+        for (sum, share) in self.shares_n.iter_mut().zip(shares) {
+            sum.1 += share.component.standard_uncertainty;
+        }
+    }
 }
 
 /// Uses the calibrated cell: mounted anew, tared, loaded on either way for some time.
@@ -118,7 +133,8 @@ fn use_it(
         bench.mount();
         let mut coefficients = record.coefficients.clone();
         coefficients.zero_counts = settle(bench)?.counts;
-        if bench.even(0.0, 1.0) < 0.5 {
+        let falling = bench.even(0.0, 1.0) < 0.5;
+        if falling {
             bench.hang_n(RANGE_N);
             bench.pass(10.0);
         }
@@ -130,7 +146,10 @@ fn use_it(
         let found_n = to_value(&coefficients, counts);
         let error_n = (found_n - force_n).abs();
         let untared_n = (to_value(&record.coefficients, counts) - force_n).abs();
-        let budget_n = calibration.budget.at(counts - coefficients.zero_counts, found_n).expanded_n;
+        let of_budget = calibration.budget.at(counts - coefficients.zero_counts, found_n);
+        let budget_n = of_budget.expanded_n;
+        tally.add_shares(&of_budget.shares);
+        tally.signed_n[usize::from(falling)].push(found_n - force_n);
         let record_n = 1.96 * tautrail::calibration::value_uncertainty(&coefficients, found_n);
         tally.errors_n.push(error_n);
         tally.by_budget += usize::from(error_n <= budget_n);
@@ -152,6 +171,20 @@ fn one(seed: u64, tallies: &mut [Tally]) -> Result<(), String> {
     let (record, findings) = CalibrationRecord::read("line.toml", &written);
     let record = record.ok_or_else(|| format!("{findings:?}"))?;
     use_it(&mut bench, &calibration, &record, tallies)
+}
+
+/// Mean error of either way, and the budget's mean shares.
+fn made_of(tallies: &[Tally; SHARES.len()], n: u64) {
+    let sources: Vec<&str> = tallies[0].shares_n.iter().map(|share| share.0).collect();
+    println!("\nMean errors, and mean standard uncertainties of the budget's shares, N.\n");
+    println!("| force, N | error rising | error falling | {} |", sources.join(" | "));
+    println!("| --- | --- | --- |{}", " --- |".repeat(sources.len()));
+    for (share, tally) in SHARES.iter().zip(tallies) {
+        let mean = |values: &[f64]| values.iter().sum::<f64>() / values.len() as f64;
+        let [rising, falling] = [&tally.signed_n[0], &tally.signed_n[1]].map(|values| mean(values));
+        let shares: Vec<String> = tally.shares_n.iter().map(|(_, sum)| format!("{:.3}", sum / n as f64)).collect();
+        println!("| {:.0} | {rising:+.3} | {falling:+.3} | {} |", share * RANGE_N, shares.join(" | "));
+    }
 }
 
 fn main() -> ExitCode {
@@ -188,5 +221,6 @@ fn main() -> ExitCode {
         );
     }
     println!("| all | {budget} of {all} | {record} of {all} | | | |");
+    made_of(&tallies, n);
     ExitCode::SUCCESS
 }

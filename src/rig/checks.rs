@@ -104,6 +104,14 @@ fn planned_tension(rig: &Rig, findings: &mut Findings<'_>) {
         let message = format!("{limit_n:.0} N is below the plan, the planned draw pulls {tension_n:.0} N");
         findings.error("limits.tension", message);
     }
+    let line = rig.channel_with_role(Role::ReleaseLineTension).and_then(|channel| channel.record.as_ref());
+    if let Some(record) = line.filter(|record| tension_n > record.tested.1) {
+        let message = format!(
+            "pulls {tension_n:.0} N, the release line's cell was tested to {:.0} N only ({}): beyond it its values are extrapolated",
+            record.tested.1, record.name
+        );
+        findings.caution("plan.draw", message);
+    }
     let release_g = (tension_n - rig.losses.friction_n.value) / rig.moving_mass_kg() / STANDARD_GRAVITY_MPS2;
     if release_g > limits.peak_g {
         let limit_g = limits.peak_g;

@@ -255,6 +255,23 @@ fn coefficients_without_a_record_are_refused_unless_the_file_says_so() {
 }
 
 #[test]
+fn a_plan_beyond_what_the_cell_was_tested_for_is_said() {
+    // The joined text carries the record: of the line's cell it now says 600 N, and the planned draw pulls 607 N.
+    let (before, after) = NORTH_PIER.split_once("#@attached records/line.toml").unwrap();
+    let short = format!(
+        "{before}#@attached records/line.toml{}",
+        after.replacen("tested_to = \"1000 N\"", "tested_to = \"600 N\"", 1)
+    );
+    let findings = findings_of(&short);
+    assert!(
+        findings.contains("caution: plan.draw: pulls 607 N")
+            && findings.contains("tested to 600 N only (records/line.toml)"),
+        "{findings}"
+    );
+    assert_eq!(findings.lines().count(), 1, "{findings}");
+}
+
+#[test]
 fn a_mass_without_uncertainty_is_taken_as_exact_and_said_so() {
     one_finding(
         "mass_uncertainty = \"0.005 kg\"\n",

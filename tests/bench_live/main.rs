@@ -11,4 +11,5 @@ mod daemon_process;
 mod guided;
 #[path = "../support/rehearsal_rig.rs"]
 mod rehearsal_rig;
+mod standing;
 mod tare;
