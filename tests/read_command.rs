@@ -157,6 +157,11 @@ fn show_and_read_round_alike_and_give_verdicts() {
         |text: &str| text.lines().find(|line| line.trim_start().starts_with("launch_speed ")).unwrap().to_owned();
     let (read_line, shown_line) = (line(&read), line(&shown));
     assert!(read_line.starts_with(&shown_line), "{read_line} | {shown_line}");
+    let beyond = "channel accel reached ";
+    assert!(
+        read.contains(beyond) && shown.contains(beyond),
+        "a launch is beyond ±1 g, and every reading says so: {read}"
+    );
     for text in [&read, &shown] {
         assert!(text.contains("verdicts") && text.contains("met") && !text.contains("m/s^2"), "{text}");
     }

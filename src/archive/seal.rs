@@ -173,7 +173,7 @@ struct Made {
 fn write(reader: &JournalReader, range: &TrialRange, ahead: &Ahead, path: &Path) -> Result<Made, SealError> {
     let rig = crate::rig::parse(&ahead.open.rig_text).map_err(|error| error.to_string());
     let header = header(range, ahead, rig.as_ref().ok());
-    let day = day_of(&header);
+    let day = header.day();
     let rig = rig.map(|rig| calibration::on_day(rig, day));
     let mut writer = TrialWriter::create(path, &header)?;
     let mut raw = RawPass::new(&mut writer, header.zero_host_ns);
@@ -227,12 +227,6 @@ fn header(range: &TrialRange, ahead: &Ahead, rig: Option<&Rig>) -> Header {
     }
 }
 
-/// The day of a trial in UTC; none where the wall clock was never set.
-fn day_of(header: &Header) -> Option<Date> {
-    let started: jiff::Timestamp = header.started.parse().ok()?;
-    (header.started_quality == "set").then(|| jiff::tz::Offset::UTC.to_datetime(started).date())
-}
-
 fn conditions(rig: &Rig) -> [Condition; 2] {
     let condition = |name: &str, value: f64, unit: &str| Condition {
         name: name.to_owned(),
@@ -265,8 +259,7 @@ fn read(
     }
     let mut reading = crate::reading::read_beside(&for_reading.signals, &beside, rig);
     reading.findings.extend_from_slice(&for_reading.findings);
-    reading.findings.extend(calibration::doubts(rig, day));
-    reading.findings.extend(for_reading.signals.iter().filter_map(|signal| calibration::out_of_range(rig, signal)));
+    reading.findings.extend(calibration::said_of(rig, day, &for_reading.signals));
     if let Some(motion) = &reading.motion {
         derive::motion_signals(motion).iter().try_for_each(|signal| writer.write_derived(signal))?;
     }

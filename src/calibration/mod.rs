@@ -20,7 +20,7 @@ mod write;
 pub use convert::{CalibrationError, Sampling, signal_from_counts, to_value, value_per_count, value_uncertainty};
 pub use settling::{Settled, Settling, SettlingRule, Told};
 pub use signal::Signal;
-pub use standing::{doubts, on_day, out_of_range, zero_shift_uncertainty_n};
+pub use standing::{doubts, on_day, out_of_range, said_of, zero_shift_uncertainty_n};
 pub use table::{TableError, readings_from_csv, readings_to_csv};
 pub use tare::{Level, NoTare, Tare, TareError, tare};
 pub use write::{accelerometer_record, cell_record, encoder_record};

@@ -3,6 +3,7 @@
 use jiff::civil::Date;
 
 use crate::rig::{RecordState, Rig};
+use crate::units::brief;
 
 use super::Signal;
 
@@ -43,6 +44,13 @@ pub fn doubts(rig: &Rig, day: Option<Date>) -> Vec<String> {
     doubts.into_iter().map(told).collect()
 }
 
+/// All that is to be said of the calibrations behind a trial's signals: what every reading of it carries.
+pub fn said_of(rig: &Rig, day: Option<Date>, signals: &[Signal]) -> Vec<String> {
+    let mut said = doubts(rig, day);
+    said.extend(signals.iter().filter_map(|signal| out_of_range(rig, signal)));
+    said
+}
+
 /// The rig as it is on a day: scales are less certain by their drift since the calibration.
 pub fn on_day(mut rig: Rig, day: Option<Date>) -> Rig {
     for channel in &mut rig.channels {
@@ -65,10 +73,11 @@ pub fn out_of_range(rig: &Rig, signal: &Signal) -> Option<String> {
     let least = signal.value.iter().copied().fold(f64::INFINITY, f64::min);
     let most = signal.value.iter().copied().fold(f64::NEG_INFINITY, f64::max);
     let unit = record.kind.unit();
+    let (from, to) = (brief(low, 5), brief(high, 5));
     let beyond = if most > high + margin { most } else { least };
     (most > high + margin || least < low - margin).then(|| {
         format!(
-            "channel {} reached {beyond:.4} {unit}, its calibration {} was tested from {low} to {high} {unit}: beyond it \
+            "channel {} reached {beyond:.4} {unit}, its calibration {} was tested from {from} to {to} {unit}: beyond it \
              values and uncertainties are extrapolated",
             channel.name, record.name
         )
@@ -158,5 +167,6 @@ mod tests {
         let said = out_of_range(&rig, &signal(|_| 600.0)).unwrap();
         assert!(said.contains("reached 600.0000 N, its calibration line.toml was tested from 0 to 500 N"), "{said}");
         assert_eq!(out_of_range(&rig, &signal(|_| 450.0)), None);
+        assert_eq!(said_of(&rig, day("2032-05-14"), &[signal(|_| 600.0), signal(|_| 450.0)]).len(), 2);
     }
 }

@@ -8,6 +8,7 @@ use std::path::{Path, PathBuf};
 use serde_json::{Value, json};
 use tautrail::link::{self, ListedPort};
 use tautrail::rig::{self, CalibrationRecord, Checked, Device, Finding, RecordState, Rig, Severity};
+use tautrail::units::brief;
 
 use super::feed_place::FeedPlace;
 use super::link_health::{self, Health};
@@ -195,7 +196,8 @@ fn print_rig(rig: &Rig, screen: &Screen) {
         let state = RecordState::of(channel.record.as_ref(), today());
         let said = match &channel.record {
             Some(record) if state.is_valid() => {
-                let CalibrationRecord { name, date, valid_until, tested: (low, high), .. } = record;
+                let CalibrationRecord { name, date, valid_until, tested, .. } = record;
+                let (low, high) = (brief(tested.0, 5), brief(tested.1, 5));
                 format!("calibrated {date}, valid until {valid_until}, {low} to {high} {unit} ({name})")
             }
             _ => screen.toned(&state.to_string(), Tone::Caution),

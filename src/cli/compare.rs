@@ -3,7 +3,7 @@
 use std::path::PathBuf;
 
 use serde_json::{Value, json};
-use tautrail::reading::{ComparedRow, Reading, SIGNIFICANT, compare, read_beside};
+use tautrail::reading::{ComparedRow, Reading, SIGNIFICANT, compare};
 use tautrail::rig::Rig;
 use tautrail::units::{rounded, shown_unit};
 
@@ -42,7 +42,7 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     for path in &args.trials {
         let measured = open(path, None)?;
         let beside = BesideArgs::default().beside(measured.edges.clone())?;
-        let reading = read_beside(&measured.signals, &beside, &measured.rig);
+        let reading = measured.reading(&beside);
         // Samples of many trials at once would fill the memory; the reading is what is compared.
         trials.push((Measured { signals: Vec::new(), ..measured }, Reading { motion: None, ..reading }));
     }

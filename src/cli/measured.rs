@@ -2,8 +2,8 @@
 
 use std::path::{Path, PathBuf};
 
-use tautrail::calibration::Signal;
-use tautrail::reading::{Beside, Camera, EdgeSeen, Recorder, TableError};
+use tautrail::calibration::{self, Signal};
+use tautrail::reading::{Beside, Camera, EdgeSeen, Reading, Recorder, TableError, read_beside};
 use tautrail::rig::{self, Rig, RigError};
 use tautrail::trial::{Header, TrialError, TrialFile};
 use thiserror::Error;
@@ -35,6 +35,15 @@ pub struct Measured {
     pub edges: Vec<EdgeSeen>,
     /// SHA-256 of all raw data as sealed.
     pub raw_sha256: String,
+}
+
+impl Measured {
+    /// Results, phases, outcome, and what is to be said of the calibrations behind them.
+    pub fn reading(&self, beside: &Beside) -> Reading {
+        let mut reading = read_beside(&self.signals, beside, &self.rig);
+        reading.findings.extend(calibration::said_of(&self.rig, self.header.day(), &self.signals));
+        reading
+    }
 }
 
 /// Tables that were recorded beside the rig and are read with the trial.

@@ -3,7 +3,7 @@
 use std::path::PathBuf;
 
 use serde_json::json;
-use tautrail::reading::{Decision, Reading, ResultRow, read_beside};
+use tautrail::reading::{Decision, Reading, ResultRow};
 use tautrail::units::shown_unit;
 
 use super::measured::{BesideArgs, Measured, open};
@@ -45,7 +45,7 @@ decide.";
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
     let measured = open(&args.trial, args.rig.as_ref())?;
     let beside = args.beside.beside(measured.edges.clone())?;
-    let reading = read_beside(&measured.signals, &beside, &measured.rig);
+    let reading = measured.reading(&beside);
     if screen.json {
         let mut value = serde_json::to_value(&reading)?;
         if let Some(object) = value.as_object_mut() {

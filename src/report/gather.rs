@@ -8,7 +8,7 @@ use super::page::{
     RailStrip, Trace, TrialPage,
 };
 use crate::archive::edges_of;
-use crate::calibration::Signal;
+use crate::calibration::{self, Signal};
 use crate::reading::{Beside, EnergyAudit, Motion, Reading, read_beside};
 use crate::replay::replay;
 use crate::rig::{Rig, RigError, Role, parse};
@@ -41,7 +41,8 @@ pub fn page_of(trial: &TrialFile) -> Result<TrialPage, GatherError> {
     let rig = parse(&text.text)?;
     let signals = trial.signals()?;
     let beside = Beside { edges: edges_of(trial)?, ..Beside::default() };
-    let reading = read_beside(&signals, &beside, &rig);
+    let mut reading = read_beside(&signals, &beside, &rig);
+    reading.findings.extend(calibration::said_of(&rig, trial.header().day(), &signals));
     let mut page = page(trial.header(), &rig, &signals, &reading);
     add_replay(&mut page, &replay(&signals, &reading, &rig));
     page.health = trial.device_names()?.iter().map(|name| health(trial, name)).collect::<Result<_, _>>()?;

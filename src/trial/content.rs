@@ -1,5 +1,7 @@
 //! What goes into a trial file, as plain data. The writer streams the large parts.
 
+use jiff::civil::Date;
+
 use super::link_health::LinkHealth;
 use crate::capture::{Counts, DeviceDescription, Edge, Encoding, Gap, Status};
 
@@ -22,6 +24,14 @@ pub struct Header {
     pub series: String,
     /// Host monotonic time that is second zero of every time axis.
     pub zero_host_ns: i64,
+}
+
+impl Header {
+    /// The trial's day in UTC; none where the wall clock was never set.
+    pub fn day(&self) -> Option<Date> {
+        let started: jiff::Timestamp = self.started.parse().ok()?;
+        (self.started_quality == "set").then(|| jiff::tz::Offset::UTC.to_datetime(started).date())
+    }
 }
 
 /// One row of `/raw/<device>/blocks`.
