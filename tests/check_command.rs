@@ -145,6 +145,28 @@ fn a_file_is_no_port_and_a_terminal_is() {
 }
 
 #[test]
+fn a_port_is_looked_at_and_never_opened() {
+    use rustix::event::{PollFd, PollFlags, Timespec, poll};
+    use rustix::pty::{OpenptFlags, grantpt, openpt, ptsname, unlockpt};
+    let master = openpt(OpenptFlags::RDWR | OpenptFlags::NOCTTY | OpenptFlags::CLOEXEC).unwrap();
+    grantpt(&master).unwrap();
+    unlockpt(&master).unwrap();
+    let port = ptsname(&master, Vec::new()).unwrap().into_string().unwrap();
+    // The far end of a pty that was opened and closed again is hung up; before the first opening it is not (Linux).
+    let was_opened = || {
+        let mut polled = [PollFd::new(&master, PollFlags::IN)];
+        poll(&mut polled, Some(&Timespec { tv_sec: 0, tv_nsec: 0 })).unwrap();
+        polled[0].revents().contains(PollFlags::HUP)
+    };
+    let folder = folder_with(&rig_text("north-pier.toml").replace("ports/winch-node", &port));
+    let text = said(&check(folder.path(), &["rig.toml"]));
+    assert!(text.contains(&format!("port ok: {port} of winch-node is there (not opened)")), "{text}");
+    assert!(!was_opened(), "check opened the port, which resets many small boards");
+    drop(std::fs::OpenOptions::new().read(true).write(true).open(&port).unwrap());
+    assert!(was_opened(), "an opening would have been seen");
+}
+
+#[test]
 fn at_the_desk_a_good_file_passes_and_limits_come_with_the_caution() {
     let folder = folder_with(&rig_text("north-pier.toml"));
     let output = check(folder.path(), &["--no-ports", "rig.toml"]);

@@ -10,9 +10,11 @@ use std::path::{Path, PathBuf};
 use std::process::Command;
 use std::sync::Arc;
 
-use journal_file::{JOURNAL_ID, TRIAL_ID, nominal, opened, opening};
+use journal_file::{JOURNAL_ID, JournalFile, TRIAL_ID, nominal, opened, opening};
 use tautrail::archive::{Fate, ReleaseError, Sealed, kept, recover, release, seal};
-use tautrail::journal::{Disk, Item, Journal, JournalReader, Origin, RealDisk, Settings, Start, TrialRange};
+use tautrail::journal::{
+    Body, Clocks, Disk, Item, Journal, JournalReader, Origin, RealDisk, Settings, Start, TrialRange,
+};
 
 const PACE: f64 = 0.1;
 
@@ -147,4 +149,34 @@ fn the_journal_of_a_launch_is_kept_where_its_recording_said_so_whoever_seals_it(
         assert_eq!((&sealed["outcome"], &sealed["journal_kept"]), (&"launched".into(), &keep.into()), "{told}");
         assert_eq!(kept.len(), usize::from(keep), "{told}");
     }
+}
+
+#[test]
+fn a_computer_that_slept_and_a_wall_clock_that_was_set_are_events_of_the_trial() {
+    const S: i64 = 1_000_000_000;
+    let dir = tempfile::tempdir().unwrap();
+    let mut journal = JournalFile::begin(dir.path(), &journal_file::RIG_TEXT);
+    let mut clocks = |host_ns: i64, slept_ns: i64, set_ns: i64| {
+        let boottime_ns = host_ns + slept_ns;
+        let realtime_ns = 1_796_000_000 * S + boottime_ns + set_ns;
+        let (monotonic_ns, monotonic_raw_ns) = (host_ns, host_ns);
+        let body = Clocks { monotonic_ns, monotonic_raw_ns, boottime_ns, realtime_ns, wall_clock_set: true };
+        journal.add(host_ns, 0, Body::Clocks(body));
+    };
+    clocks(S, 0, 0);
+    clocks(2 * S, 30 * S, 0);
+    clocks(3 * S, 30 * S, 0);
+    clocks(4 * S, 30 * S, -2 * S);
+    journal.open_trial(5 * S, 1, S);
+    journal.close_trial(6 * S);
+    journal.save();
+    let (reader, range) = opened(dir.path());
+    let disk: Arc<dyn Disk> = Arc::new(RealDisk);
+    let sealed = seal(&reader, &range, dir.path(), &disk).unwrap();
+    let events = tautrail::trial::TrialFile::open(&sealed.path).unwrap().events().unwrap();
+    let of_clocks: Vec<(f64, &str)> =
+        events.iter().filter(|event| event.kind == "clock").map(|event| (event.time_s, event.text.as_str())).collect();
+    let [(slept_s, slept), (set_s, set)] = of_clocks[..] else { panic!("{events:?}") };
+    assert!(slept.contains("suspended for 30.0 s") && set.contains("set back by 2.000 s"), "{slept}; {set}");
+    assert_eq!(set_s - slept_s, 2.0);
 }

@@ -8,6 +8,7 @@ mod cord_service;
 mod derive;
 mod edges;
 mod error;
+mod host_clock_steps;
 mod keep;
 mod kept_samples;
 mod list;

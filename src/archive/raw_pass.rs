@@ -14,6 +14,7 @@ use crate::trial::{
 
 use super::clock_finding::broken_tolerance;
 use super::error::SealError;
+use super::host_clock_steps::HostClockSteps;
 use super::player::Told;
 
 /// Events kept of one trial; what is beyond is counted and said.
@@ -91,6 +92,7 @@ pub(super) struct RawPass<'w> {
     zero_host_ns: i64,
     devices: Vec<DevicePass>,
     rig_text: Option<String>,
+    host_clocks: HostClockSteps,
     events: Events,
 }
 
@@ -146,7 +148,8 @@ pub(super) struct Gathered {
 
 impl<'w> RawPass<'w> {
     pub(super) fn new(writer: &'w mut TrialWriter, zero_host_ns: i64) -> Self {
-        Self { writer, zero_host_ns, devices: Vec::new(), rig_text: None, events: Events::default() }
+        let (devices, host_clocks, events) = (Vec::new(), HostClockSteps::default(), Events::default());
+        Self { writer, zero_host_ns, devices, rig_text: None, host_clocks, events }
     }
 
     fn time_s(&self, host_ns: i64) -> f64 {
@@ -162,12 +165,17 @@ impl<'w> RawPass<'w> {
                 self.devices[usize::from(device.0)].clock.requested(host_ns, token);
                 Ok(())
             }
-            Told::Clocks(clocks) => Ok(self.writer.append_host_clocks(&HostClocksRow {
-                monotonic_ns: clocks.monotonic_ns,
-                monotonic_raw_ns: clocks.monotonic_raw_ns,
-                boottime_ns: clocks.boottime_ns,
-                realtime_ns: clocks.realtime_ns,
-            })?),
+            Told::Clocks(clocks) => {
+                for text in self.host_clocks.take(&clocks) {
+                    self.events.add(self.time_s(clocks.monotonic_ns), "clock", "seal", None, text);
+                }
+                Ok(self.writer.append_host_clocks(&HostClocksRow {
+                    monotonic_ns: clocks.monotonic_ns,
+                    monotonic_raw_ns: clocks.monotonic_raw_ns,
+                    boottime_ns: clocks.boottime_ns,
+                    realtime_ns: clocks.realtime_ns,
+                })?)
+            }
             Told::Read { device, host_ns, n_bytes, n_lost_frames } => {
                 self.devices[usize::from(device.0)].read(host_ns, n_bytes, n_lost_frames);
                 Ok(())

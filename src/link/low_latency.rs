@@ -59,11 +59,15 @@ impl Held {
 pub(super) fn ask(port: &impl AsRawFd, path: &Path) -> Held {
     // A port without the flag refuses it; its timer, if it has one, is looked at all the same.
     let _by_flag = set_flag(port);
-    let Some(timer) = latency_timer(path) else { return Held::NoTimer };
-    if read_ms(&timer).is_some_and(|ms| ms > 1) {
-        let _refused = std::fs::write(&timer, "1");
+    latency_timer(path, Path::new("/sys/class/tty")).map_or(Held::NoTimer, |timer| shorten(&timer))
+}
+
+/// Sets an adapter's timer to its least, where this user may; what is in force then.
+fn shorten(timer: &Path) -> Held {
+    if read_ms(timer).is_some_and(|ms| ms > 1) {
+        let _refused = std::fs::write(timer, "1");
     }
-    read_ms(&timer).map_or(Held::NoTimer, Held::ForMs)
+    read_ms(timer).map_or(Held::NoTimer, Held::ForMs)
 }
 
 fn set_flag(port: &impl AsRawFd) -> std::io::Result<()> {
@@ -82,12 +86,38 @@ fn set_flag(port: &impl AsRawFd) -> std::io::Result<()> {
 }
 
 /// The adapter's timer in sysfs, where it has one.
-fn latency_timer(path: &Path) -> Option<std::path::PathBuf> {
+fn latency_timer(path: &Path, class: &Path) -> Option<std::path::PathBuf> {
     let real = std::fs::canonicalize(path).ok()?;
-    let timer = Path::new("/sys/class/tty").join(real.file_name()?).join("device/latency_timer");
+    let timer = class.join(real.file_name()?).join("device/latency_timer");
     timer.exists().then_some(timer)
 }
 
 fn read_ms(timer: &Path) -> Option<u32> {
     std::fs::read_to_string(timer).ok()?.trim().parse().ok()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_timer_is_shortened_through_a_stable_name_and_what_is_in_force_is_said() {
+        let dir = tempfile::tempdir().unwrap();
+        let [node, stable, class] = ["ttyUSB0", "by-id", "class"].map(|name| dir.path().join(name));
+        std::fs::write(&node, "").unwrap();
+        std::os::unix::fs::symlink(&node, &stable).unwrap();
+        assert_eq!(latency_timer(&stable, &class), None, "this port's driver has none");
+        let device = class.join("ttyUSB0/device");
+        std::fs::create_dir_all(&device).unwrap();
+        let timer = device.join("latency_timer");
+        std::fs::write(&timer, "16\n").unwrap();
+        assert_eq!(latency_timer(&stable, &class), Some(timer.clone()));
+        assert_eq!(shorten(&timer), Held::ForMs(1));
+        assert_eq!(std::fs::read_to_string(&timer).unwrap(), "1");
+        assert_eq!(Held::NoTimer.sentence(), None);
+        assert!(Held::ForMs(1).sentence().is_some_and(|text| text.contains("within 1 ms")));
+        assert!(
+            Held::ForMs(16).sentence().is_some_and(|text| text.contains("for 16 ms") && text.contains("udev rules"))
+        );
+    }
 }

@@ -1,5 +1,5 @@
 //! Bench section `clock`: how far clock maps are off after 30 s at 100 ppm, and whether their stated uncertainty covers
-//! it, over seeds 1 to N and, as a check that none was chosen, N+1 to 2N.
+//! it, over seeds 1 to N and, as a check that none was chosen, N+1 to 2N. N is 200, or the first argument.
 
 #![allow(clippy::unwrap_used, reason = "a bench that cannot go on stops here")]
 
@@ -13,8 +13,10 @@ use line::{CRYSTAL, Link, errors_of, live, sealed};
 const N: u64 = 200;
 
 fn main() {
+    let n = std::env::args().nth(1).map_or(N, |text| text.parse().unwrap());
     let silent = Link { requests_per_s: 0.0, ..CRYSTAL };
     let batched = |link: Link| Link { batch_s: 0.016, ..link };
+    let resonator = |link: Link, offset_ppm: f64| Link { offset_ppm, tolerance_ppm: 10_000.0, ..link };
     let hidden = |link: Link, hidden_up_s: f64| Link { hidden_up_s, ..link };
     // Name, line, limit of the 95th percentile in us apart from the asymmetry (none where the line cannot give it).
     let cases = [
@@ -24,15 +26,19 @@ fn main() {
         ("requests_hidden_1ms", hidden(CRYSTAL, 0.001), Some(100.0)),
         ("requests_hidden_2ms", hidden(CRYSTAL, 0.002), Some(100.0)),
         ("requests_hidden_down_2ms", Link { hidden_down_s: 0.002, ..CRYSTAL }, Some(100.0)),
-        ("requests_resonator", Link { offset_ppm: -10_000.0, tolerance_ppm: 10_000.0, ..CRYSTAL }, Some(100.0)),
+        ("requests_resonator_slow", resonator(CRYSTAL, -10_000.0), Some(100.0)),
+        ("requests_resonator_fast", resonator(CRYSTAL, 10_000.0), Some(100.0)),
+        ("requests_wander", Link { wander_ppm: 2.0, ..CRYSTAL }, Some(100.0)),
         ("arrivals_1ms", silent, Some(500.0)),
+        ("arrivals_1ms_resonator_slow", resonator(silent, -10_000.0), Some(500.0)),
+        ("arrivals_1ms_resonator_fast", resonator(silent, 10_000.0), Some(500.0)),
         ("arrivals_16ms_swept", Link { block_every_s: 0.009_9, ..batched(silent) }, Some(500.0)),
         ("arrivals_16ms", batched(silent), None),
         ("arrivals_hidden_1ms", hidden(silent, 0.001), None),
         ("arrivals_hidden_2ms", hidden(silent, 0.002), None),
         ("arrivals_16ms_hidden_2ms", hidden(batched(silent), 0.002), None),
     ];
-    for (half, seeds) in [("seeds_1_N", 1..=N), ("seeds_N1_2N", N + 1..=2 * N)] {
+    for (half, seeds) in [("seeds_1_N", 1..=n), ("seeds_N1_2N", n + 1..=2 * n)] {
         for (name, link, limit_us) in cases {
             for (kind, map) in [("sealed", sealed as fn(&Link, u64) -> Vec<(u64, ClockPiece)>), ("live", live)] {
                 let errors = errors_of(link, seeds.clone(), map);
