@@ -20,7 +20,7 @@ use std::collections::BTreeMap;
 use firmware_protocol::{Deframed, Deframer, Frame, Header, MAX_COBS_LEN, Message, decode};
 
 use boots::{Boots, TickSays};
-pub(crate) use known::N_DESCRIPTIONS;
+pub use known::N_DESCRIPTIONS;
 use known::{KnownDescriptions, stream_of};
 
 use super::sample::{

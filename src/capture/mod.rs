@@ -13,8 +13,7 @@ pub use clock::{
     BlockTimes, ClockMethod, ClockPiece, ClockSamples, LiveClock, NominalClock, TimeExchange, TimeRequests, fit_clock,
     piece_at,
 };
-pub(crate) use decoder::N_DESCRIPTIONS;
-pub use decoder::{Counters, FrameDecoder};
+pub use decoder::{Counters, FrameDecoder, N_DESCRIPTIONS};
 pub use device::DeviceDecoder;
 pub use sample::*;
 pub use steps::LeastSteps;

@@ -6,7 +6,7 @@
 use crate::capture::sample::{DeviceDescription, StreamDescription};
 
 /// Descriptions of one boot that blocks may name.
-pub(crate) const N_DESCRIPTIONS: usize = 4;
+pub const N_DESCRIPTIONS: usize = 4;
 
 /// Oldest first; the last one is in force.
 #[derive(Debug, Default)]
