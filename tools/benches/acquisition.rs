@@ -188,7 +188,7 @@ struct Acquired {
 
 /// Acquires `n_blocks`, sent as `pause` says, on a disk that stands still for `stall` after a second.
 fn acquire(n_blocks: u32, pause: Option<Duration>, stall: Duration) -> Acquired {
-    let dir = tempfile::tempdir_in(".").unwrap();
+    let dir = tempfile::tempdir_in("target").unwrap();
     let until_ns = Arc::new(AtomicI64::new(0));
     let disk: Arc<dyn Disk> = Arc::new(StallingDisk { until_ns: Arc::clone(&until_ns) });
     let devices = vec![DeviceAtOpen { name: "bench".into(), port: String::new(), describe_hex: String::new() }];
