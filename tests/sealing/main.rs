@@ -2,20 +2,20 @@
 
 #![allow(clippy::unwrap_used, clippy::expect_used, reason = "a test that cannot go on stops here")]
 
-#[path = "support/journal.rs"]
+mod faults;
+#[path = "../support/journal.rs"]
 mod journal_file;
+#[path = "../support/mod.rs"]
 mod support;
 
-use std::io;
 use std::path::{Path, PathBuf};
-use std::process::Command;
 use std::sync::{Arc, LazyLock};
 
 use firmware_protocol as wire;
 use journal_file::{JOURNAL_ID, JournalFile, RIG_TEXT, TRIAL_ID, nominal, opened};
-use tautrail::archive::{Fate, SealError, Sealed, file_room_bytes, recover, seal, verify};
+use tautrail::archive::{Fate, SealError, Sealed, recover, seal, verify};
 use tautrail::capture::Counts;
-use tautrail::journal::{AppendFile, ArchiveLock, Body, Disk, Listed, RealDisk, TrialRange};
+use tautrail::journal::{ArchiveLock, Body, Disk, RealDisk, TrialRange};
 use tautrail::trial::TrialFile;
 
 const PACE: f64 = 0.1;
@@ -61,7 +61,7 @@ fn names(dir: &Path) -> Vec<String> {
 fn every_count_equals_what_an_independent_reader_finds_in_the_journal() {
     let dir = nominal_copy();
     let sealed = seal_in(dir.path(), &real()).unwrap();
-    let script = include_str!("support/decode_journal.py");
+    let script = include_str!("../support/decode_journal.py");
     let journal = dir.path().join(segment());
     let compared = support::run_oracle(script, &[journal.to_str().unwrap(), sealed.path.to_str().unwrap()]);
     let n_compared: u64 = compared.trim().parse().unwrap();
@@ -129,153 +129,6 @@ fn a_sealed_file_is_read_only_and_never_replaced() {
     assert_eq!(names(dir.path()).len(), 2, "the temporary file is gone");
     let mode = std::fs::metadata(&strange.path).unwrap().permissions().mode();
     assert_eq!(mode & 0o777, 0o444);
-}
-
-/// The real disk with one thing wrong.
-#[derive(Debug)]
-struct Faulty {
-    rename: Option<i32>,
-    sync_dir: Option<i32>,
-    free_bytes: Option<u64>,
-}
-
-const SOUND: Faulty = Faulty { rename: None, sync_dir: None, free_bytes: None };
-
-fn fault(number: Option<i32>) -> io::Result<()> {
-    number.map_or(Ok(()), |number| Err(io::Error::from_raw_os_error(number)))
-}
-
-impl Disk for Faulty {
-    fn create_dir(&self, dir: &Path) -> io::Result<()> {
-        RealDisk.create_dir(dir)
-    }
-    fn create_new(&self, path: &Path) -> io::Result<Arc<dyn AppendFile>> {
-        RealDisk.create_new(path)
-    }
-    fn open(&self, path: &Path) -> io::Result<Box<dyn io::Read + Send>> {
-        RealDisk.open(path)
-    }
-    fn list(&self, dir: &Path) -> io::Result<Vec<Listed>> {
-        RealDisk.list(dir)
-    }
-    fn remove(&self, path: &Path) -> io::Result<()> {
-        RealDisk.remove(path)
-    }
-    fn rename_noreplace(&self, from: &Path, to: &Path) -> io::Result<()> {
-        fault(self.rename)?;
-        RealDisk.rename_noreplace(from, to)
-    }
-    fn sync_file(&self, path: &Path) -> io::Result<()> {
-        RealDisk.sync_file(path)
-    }
-    fn sync_dir(&self, dir: &Path) -> io::Result<()> {
-        fault(self.sync_dir)?;
-        RealDisk.sync_dir(dir)
-    }
-    fn free_bytes(&self, dir: &Path) -> io::Result<u64> {
-        self.free_bytes.map_or_else(|| RealDisk.free_bytes(dir), Ok)
-    }
-}
-
-#[test]
-fn a_failed_rename_or_a_full_disk_leaves_no_half_file_and_the_journal() {
-    let dir = nominal_copy();
-    let journal = std::fs::read(dir.path().join(segment())).unwrap();
-    let (exdev, enospc) = (18, 28);
-    for disk in [
-        Faulty { rename: Some(exdev), ..SOUND },
-        Faulty { rename: Some(enospc), ..SOUND },
-        Faulty { free_bytes: Some(journal.len() as u64), ..SOUND },
-    ] {
-        let disk: Arc<dyn Disk> = Arc::new(disk);
-        let error = seal_in(dir.path(), &disk).expect_err("a fault was staged");
-        assert!(matches!(error, SealError::Io { .. } | SealError::NoRoom { .. }), "{error}");
-        assert_eq!(names(dir.path()), ["journal"], "{disk:?}");
-    }
-    assert!(std::fs::read(dir.path().join(segment())).unwrap() == journal, "the journal was touched");
-    seal_in(dir.path(), &real()).unwrap();
-}
-
-#[test]
-fn a_trial_file_fits_the_room_that_is_asked_for_it() {
-    let dir = nominal_copy();
-    let journal_bytes = std::fs::metadata(dir.path().join(segment())).unwrap().len();
-    let needed_bytes = file_room_bytes(journal_bytes);
-    let short: Arc<dyn Disk> = Arc::new(Faulty { free_bytes: Some(needed_bytes - 1), ..SOUND });
-    assert!(matches!(seal_in(dir.path(), &short), Err(SealError::NoRoom { .. })));
-    let just: Arc<dyn Disk> = Arc::new(Faulty { free_bytes: Some(needed_bytes), ..SOUND });
-    let file_bytes = std::fs::metadata(seal_in(dir.path(), &just).unwrap().path).unwrap().len();
-    assert!(file_bytes <= needed_bytes, "{file_bytes} bytes from {journal_bytes}");
-}
-
-/// The library keeps saying yes for megabytes after the disk is full and says nothing when a close fails (HDF5 2.x):
-/// the flush has to be believed, wherever the limit is met.
-#[test]
-fn writes_that_hit_a_limit_end_in_an_error_not_in_a_short_file() {
-    let dir = nominal_copy();
-    let whole = std::fs::metadata(seal_in(nominal_copy().path(), &real()).unwrap().path).unwrap().len();
-    for share in [0.05, 0.3, 0.6, 0.9, 0.99] {
-        let n_blocks = (whole as f64 * share / 1024.0) as u64;
-        let limited = format!(
-            "trap '' XFSZ; ulimit -f {n_blocks}; exec {} seal-child --niceness 0 {} {JOURNAL_ID} {TRIAL_ID}",
-            env!("CARGO_BIN_EXE_tautrail"),
-            dir.path().display()
-        );
-        let output = Command::new("bash").arg("-c").arg(limited).output().unwrap();
-        let error = String::from_utf8(output.stderr).unwrap();
-        assert_eq!(output.status.code(), Some(2), "{share}: {error}");
-        assert!(error.contains("File too large"), "{share}: {error}");
-        assert_eq!(names(dir.path()), ["journal"], "{share}: {error}");
-    }
-}
-
-/// The child of a daemon that died goes on; the next daemon starts another one for the same trial.
-#[test]
-fn two_sealing_processes_at_once_leave_one_file_and_both_succeed() {
-    let dir = nominal_copy();
-    let start = || {
-        let mut command = Command::new(env!("CARGO_BIN_EXE_tautrail"));
-        command.args(["seal-child", "--niceness", "0"]).arg(dir.path()).args([JOURNAL_ID, TRIAL_ID]).spawn().unwrap()
-    };
-    let children = [start(), start()];
-    for mut child in children {
-        assert!(child.wait().unwrap().success());
-    }
-    assert_eq!(names(dir.path()), ["journal".to_owned(), format!("trial-{TRIAL_ID}.h5")]);
-}
-
-#[test]
-fn a_target_that_appears_while_sealing_is_not_replaced() {
-    let dir = nominal_copy();
-    let eexist = 17;
-    let disk: Arc<dyn Disk> = Arc::new(Faulty { rename: Some(eexist), ..SOUND });
-    assert!(seal_in(dir.path(), &disk).is_err());
-    assert_eq!(names(dir.path()), ["journal"]);
-}
-
-#[test]
-fn a_name_that_is_a_link_to_something_else_is_never_written_through() {
-    let dir = tempfile::tempdir().unwrap();
-    short_trial(dir.path(), |_, bytes| bytes);
-    let target = dir.path().join(format!("trial-{TRIAL_ID}.h5"));
-    let elsewhere = tempfile::tempdir_in(dir.path()).unwrap();
-    let other = elsewhere.path().join("notes");
-    std::fs::write(&other, "a crew's notes").unwrap();
-    std::fs::hard_link(&other, &target).unwrap();
-    assert!(seal_in(dir.path(), &real()).is_err());
-    assert_eq!(std::fs::read_to_string(&other).unwrap(), "a crew's notes");
-    std::fs::remove_file(&target).unwrap();
-    let nothing = elsewhere.path().join("nothing");
-    std::os::unix::fs::symlink(&nothing, &target).unwrap();
-    assert!(matches!(seal_in(dir.path(), &real()), Err(SealError::Io { .. })));
-    assert!(!nothing.exists() && target.symlink_metadata().unwrap().is_symlink());
-    std::fs::remove_file(&target).unwrap();
-    // The very file under another name too: it is sealed already, and both names stay.
-    let sealed = seal_in(dir.path(), &real()).unwrap();
-    std::fs::hard_link(&sealed.path, elsewhere.path().join("copy.h5")).unwrap();
-    assert!(!seal_in(dir.path(), &real()).unwrap().is_new);
-    assert!(elsewhere.path().join("copy.h5").exists());
-    assert!(!names(dir.path()).iter().any(|name| name.ends_with(".part")));
 }
 
 #[test]
