@@ -16,6 +16,7 @@ mod forecast;
 mod link_health;
 mod mark;
 mod measured;
+mod metrics;
 mod new_file;
 mod open;
 mod read;
@@ -70,6 +71,7 @@ enum Command {
     Show(show::Args),
     Verify(verify::Args),
     Watch(watch::Args),
+    Metrics(metrics::Args),
     Mark(mark::Args),
     Tare(tare::Args),
     Open(open::Args),
@@ -102,6 +104,7 @@ impl Command {
             Self::Show(args) => show::run(args, screen),
             Self::Verify(args) => verify::run(args, screen),
             Self::Watch(args) => watch::run(args, screen),
+            Self::Metrics(args) => metrics::run(args, screen),
             Self::Mark(args) => mark::run(args, screen),
             Self::Tare(args) => tare::run(args, screen),
             Self::Open(args) => open::run(args, screen),

@@ -6,6 +6,7 @@
 mod client;
 mod connection;
 pub mod message;
+pub mod metrics;
 mod outbox;
 mod server;
 mod socket;

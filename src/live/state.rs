@@ -19,7 +19,7 @@ pub enum Phase {
 }
 
 impl Phase {
-    const ALL: [Self; 8] = [
+    pub const ALL: [Self; 8] = [
         Self::Unknown,
         Self::Slack,
         Self::WinchBack,
