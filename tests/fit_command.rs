@@ -112,6 +112,17 @@ fn forecasts_with(dir: &Path) {
         outside.contains("OUTSIDE THE LOSS CARD'S RANGE") && outside.contains("the trials had 3 to 6"),
         "{outside}"
     );
+    std::fs::write(&rig, own).unwrap();
+    let card = dir.join("losses.toml");
+    let named = [&card, &rig].map(|path| path.to_str().unwrap());
+    let beside = said(&tautrail(&["forecast", "--draws", "200", "--losses", named[0], named[1]]));
+    assert!(beside.contains("unexplained by the loss card"), "{beside}");
+    let swept = said(&tautrail(&["forecast", "--sweep", "cords=4:8:3", "--losses", named[0], named[1]]));
+    assert!(swept.contains("its trials had 3 to 6 cords") && swept.contains("EXTRAPOLATED"), "{swept}");
+    let other = own.replace("name = \"north-pier\"", "name = \"south-mole\"");
+    std::fs::write(&rig, other).unwrap();
+    let refused = said(&tautrail(&["forecast", "--losses", named[0], named[1]]));
+    assert!(refused.contains("losses don't travel between rigs"), "{refused}");
     let missing = forecast(&pointing.replace("losses.toml", "lost.toml"));
     assert!(missing.contains("losses.card") && missing.contains("lost.toml"), "{missing}");
 }

@@ -14,6 +14,7 @@ mod feed_place;
 mod fit;
 mod forecast;
 mod link_health;
+mod losses_file;
 mod mark;
 mod measured;
 mod metrics;

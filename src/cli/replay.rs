@@ -6,6 +6,7 @@ use serde_json::{Value, json};
 use tautrail::reading::read;
 use tautrail::replay::{Replay, ReplayError, Residuals, replay};
 
+use super::losses_file::put_losses;
 use super::measured::open;
 use super::screen::{Screen, Tone, with_causes};
 use super::{CAUTION, Failure, Verdict};
@@ -22,6 +23,9 @@ pub struct Args {
     /// Use this rig file in place of the one each trial carries (calibrations stay as sealed)
     #[arg(long)]
     rig: Option<PathBuf>,
+    /// A loss card (`tautrail fit --out`) in the place of what the rig file says of its losses
+    #[arg(long, value_name = "FILE")]
+    losses: Option<PathBuf>,
     /// With --json: every residual, not only the summary
     #[arg(long)]
     series: bool,
@@ -31,6 +35,7 @@ const REPLAY_HELP: &str = "\
 Examples:
   tautrail replay trials/trial-000012-7f3a9c.h5
   tautrail replay trials/*.h5                                 one after the other; a bad file stops none of the others
+  tautrail replay --losses losses.toml trials/*.h5            with the losses that `tautrail fit` found
   tautrail replay --json --series trials/trial-000012-7f3a9c.h5 | jq '.[0].residuals[0].residual'
 
 bias and rms are over the power stroke; \"over u\" is the greatest residual over its own standard uncertainty, which need not be the largest: 2 or less is
@@ -48,6 +53,7 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
         screen.value(&Value::Array(outcomes.iter().map(|outcome| as_json(outcome, args.series)).collect()));
     } else {
         outcomes.iter().for_each(|outcome| print(outcome, screen));
+        print_together(&outcomes, screen);
         screen.line(CAUTION);
     }
     let n_read = outcomes.iter().filter(|outcome| outcome.could_read).count();
@@ -74,10 +80,14 @@ fn replayed(path: &Path, args: &Args) -> Outcome {
         could_read: false,
         result: Err(String::new()),
     };
-    let measured = match open(path, args.rig.as_ref()) {
+    let opened = open(path, args.rig.as_ref()).map_err(Failure::from).and_then(|mut measured| {
+        put_losses(&mut measured.rig, args.losses.as_ref())?;
+        Ok(measured)
+    });
+    let measured = match opened {
         Ok(measured) => measured,
         Err(failure) => {
-            outcome.result = Err(with_causes(&failure));
+            outcome.result = Err(with_causes(failure.as_ref()));
             return outcome;
         }
     };
@@ -117,8 +127,36 @@ fn print(outcome: &Outcome, screen: &Screen) {
         screen.line(format!(
             "  {quantity:<15} {bias:>11.4} {rms:>11.4} {max:>13.4} {max_at_x_m:>8.3} {max_at_s:>10.4} {over_u:>8.1}   {unit}"
         ));
+        let [first, middle, last] = residuals.by_third.map(|third| third.bias);
+        let chi = residuals.mean_normalised_square;
+        screen.line(format!(
+            "    bias by third of the stroke {first:+.4}, {middle:+.4}, {last:+.4} {unit}; chi-square per point {chi:.2}, \
+             autocorrelation {:.2}",
+            residuals.autocorrelation
+        ));
     }
     screen.line(format!("  {}", replay.sentence));
+}
+
+/// One line a trial, where there are several.
+fn print_together(outcomes: &[Outcome], screen: &Screen) {
+    if outcomes.len() < 2 {
+        return;
+    }
+    screen.line(screen.toned("all trials: launch speed, measured minus modelled", Tone::Heading));
+    for outcome in outcomes {
+        let line = match (&outcome.result, outcome.launch_speed) {
+            (Ok(replay), Some((measured, u_measured))) => {
+                let modelled = replay.modelled_launch_speed_mps.unwrap_or(f64::NAN);
+                let u = u_measured.hypot(replay.u_modelled_launch_speed_mps.unwrap_or(f64::NAN));
+                let off = measured - modelled;
+                format!("{measured:>9.3} m/s {off:>+8.3} ± {u:.3} m/s, {:>5.1} u", off.abs() / u)
+            }
+            (Ok(_), None) => "replayed, no launch speed".to_owned(),
+            (Err(_), _) => "not replayed".to_owned(),
+        };
+        screen.line(format!("  {:<44} {line}", outcome.title));
+    }
 }
 
 fn as_json(outcome: &Outcome, series: bool) -> Value {
@@ -145,6 +183,6 @@ fn summary(residuals: &Residuals, series: bool) -> Value {
         "quantity": residuals.quantity, "unit": residuals.unit, "n": residuals.residual.len(), "bias": residuals.bias,
         "rms": residuals.rms, "max": residuals.max, "max_at_s": residuals.max_at_s, "max_at_x_m": residuals.max_at_x_m,
         "max_over_u": residuals.max_over_u(), "mean_normalised_square": residuals.mean_normalised_square,
-        "autocorrelation": residuals.autocorrelation,
+        "autocorrelation": residuals.autocorrelation, "by_third": residuals.by_third,
     })
 }

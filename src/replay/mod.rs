@@ -12,4 +12,4 @@ mod sentence;
 
 pub use course::Course;
 pub use replayed::{Replay, ReplayError, Start, replay};
-pub use residual::Residuals;
+pub use residual::{Residuals, Third};

@@ -28,6 +28,19 @@ pub struct Residuals {
     pub mean_normalised_square: f64,
     /// Lag-one autocorrelation of the residuals: near 1 where a slow misfit outweighs noise.
     pub autocorrelation: f64,
+    /// By part of the stroke: the first third of the way, the middle, the last.
+    pub by_third: [Third; 3],
+}
+
+/// A third of the way from the first place to the last.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize)]
+pub struct Third {
+    pub from_x_m: f64,
+    pub to_x_m: f64,
+    pub n: usize,
+    /// Not a number where the third holds no residual.
+    pub bias: f64,
+    pub rms: f64,
 }
 
 /// One quantity's two sides over a common grid.
@@ -59,6 +72,7 @@ impl Residuals {
             max_at_x_m: sides.x_m[largest],
             mean_normalised_square: normalised.sum::<f64>() / n,
             autocorrelation: autocorrelation(&residual, bias),
+            by_third: by_third(&sides.x_m, &residual),
             time_s: sides.time_s,
             x_m: sides.x_m,
             measured: sides.measured,
@@ -82,6 +96,19 @@ impl Residuals {
     fn over_u(&self, idx: usize) -> f64 {
         self.residual[idx].abs() / self.u[idx]
     }
+}
+
+fn by_third(x_m: &[f64], residual: &[f64]) -> [Third; 3] {
+    let (from, to) = (x_m.first().copied().unwrap_or(f64::NAN), x_m.last().copied().unwrap_or(f64::NAN));
+    std::array::from_fn(|part| {
+        let at = |thirds: usize| from + (to - from) * thirds as f64 / 3.0;
+        let (from_x_m, to_x_m) = (at(part), at(part + 1));
+        let inside = |x: f64| x >= from_x_m && (x < to_x_m || part == 2);
+        let values: Vec<f64> = x_m.iter().zip(residual).filter(|(x, _)| inside(**x)).map(|(_, r)| *r).collect();
+        let n = values.len();
+        let mean = |of: &dyn Fn(f64) -> f64| values.iter().map(|r| of(*r)).sum::<f64>() / n as f64;
+        Third { from_x_m, to_x_m, n, bias: mean(&|r| r), rms: mean(&|r| r * r).sqrt() }
+    })
 }
 
 fn autocorrelation(residual: &[f64], bias: f64) -> f64 {

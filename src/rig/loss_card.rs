@@ -113,6 +113,24 @@ impl LossCard {
         self.terms.iter().any(|term| term.name == "cord_lag")
     }
 
+    /// What its trials spanned, for tables over settings that may lie beyond.
+    pub fn spans(&self) -> String {
+        let valid = &self.valid;
+        format!(
+            "losses from {}: its trials had {:.0} to {:.0} cords, {:.2} to {:.2} kg, draws of {:.2} to {:.2} m, {:.0} to {:.0} N; \
+             settings beyond are EXTRAPOLATED",
+            self.name,
+            valid.cord_count.0,
+            valid.cord_count.1,
+            valid.moving_mass_kg.0,
+            valid.moving_mass_kg.1,
+            valid.draw_m.0,
+            valid.draw_m.1,
+            valid.pull_n.0,
+            valid.pull_n.1
+        )
+    }
+
     /// Sentences on where a launch lies outside what the card's trials spanned. Not told: a hundredth of mass, three of
     /// draw, pull or speed, as much as trials of one configuration differ.
     pub fn outside(&self, asked: &Asked) -> Vec<String> {

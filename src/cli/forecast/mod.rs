@@ -11,6 +11,7 @@ use tautrail::model::{Forecast, ForecastOptions, ForecastedEnergy, Known, foreca
 use tautrail::rig::{self, Rig};
 use tautrail::units::{self, Dimension, QuantityError};
 
+use super::losses_file::put_losses;
 use super::screen::{Screen, Tone};
 use super::{CAUTION, Failure, Verdict};
 use settings::Sweep;
@@ -29,6 +30,9 @@ pub struct Args {
     /// Draw of that hold, such as "3.9 m" [default: the planned draw]
     #[arg(long, value_name = "DRAW", value_parser = length_m, requires = "held_at")]
     drawn: Option<f64>,
+    /// A loss card (`tautrail fit --out`) in the place of what the rig file says of its losses
+    #[arg(long, value_name = "FILE")]
+    losses: Option<PathBuf>,
     /// Launches to draw
     #[arg(long, default_value_t = 4000, value_parser = clap::value_parser!(u32).range(100..=1_000_000))]
     draws: u32,
@@ -53,6 +57,7 @@ Examples:
   tautrail forecast --solve draw north-pier.toml             which draw meets the window under the limits
   tautrail forecast --sweep draw=2:4:9 north-pier.toml       a table over the draw, in m
   tautrail forecast --page forecast.html north-pier.toml     with a page of plots
+  tautrail forecast --losses losses.toml north-pier.toml     with the losses that `tautrail fit` found
 
 Exit code: 0 forecast made, 1 --solve found no setting, 2 the rig can't be computed.
 
@@ -68,7 +73,8 @@ fn length_m(text: &str) -> Result<f64, QuantityError> {
 }
 
 pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
-    let rig = rig::load(&args.rig)?;
+    let mut rig = rig::load(&args.rig)?;
+    put_losses(&mut rig, args.losses.as_ref())?;
     if let Some(setting) = &args.solve {
         return settings::solve(&rig, setting, screen);
     }

@@ -4,7 +4,7 @@ use std::str::FromStr;
 
 use serde_json::{Value, json};
 use tautrail::model::{self, Candidate, Fit, Interval, Setting, Solution};
-use tautrail::rig::Rig;
+use tautrail::rig::{LossCard, Rig};
 use thiserror::Error;
 
 use super::finite;
@@ -61,7 +61,7 @@ pub fn sweep(rig: &Rig, sweep: &Sweep, screen: &Screen) -> Result<Verdict, Failu
     let candidates = model::sweep(rig, sweep.setting, &sweep.values);
     if screen.json {
         let rows: Vec<Value> = candidates.iter().map(as_json).collect();
-        screen.value(&json!({ "setting": sweep.setting.word(), "rows": rows, "not_fitted_yet": model::unfitted(rig), "cautions": cautions(rig) }));
+        screen.value(&json!({ "setting": sweep.setting.word(), "rows": rows, "not_fitted_yet": model::unfitted(rig), "loss_card": rig.details.losses.card.as_ref().map(LossCard::spans), "cautions": cautions(rig) }));
         return Ok(Verdict::Done);
     }
     print_rows(sweep.setting, &candidates, screen);
@@ -138,6 +138,9 @@ fn print_rows(setting: Setting, candidates: &[Candidate], screen: &Screen) {
 }
 
 fn print_cautions(rig: &Rig, screen: &Screen) {
+    if let Some(card) = &rig.details.losses.card {
+        screen.line(screen.toned(&card.spans(), Tone::Caution));
+    }
     screen.line("intervals: 95 %, first order; peak g: specific force along the rail at the payload");
     for sentence in model::unfitted(rig) {
         screen.line(screen.toned(&sentence, Tone::Bad));
@@ -171,6 +174,6 @@ fn solution_json(rig: &Rig, solution: &Solution) -> Value {
         "chosen": solution.chosen.as_ref().map(|(candidate, _)| as_json(candidate)),
         "surely": solution.chosen.as_ref().map(|(_, fit)| *fit == Fit::Surely),
         "as_good_from": solution.range.map(|range| range.0), "as_good_to": solution.range.map(|range| range.1),
-        "why": solution.why, "not_fitted_yet": model::unfitted(rig), "cautions": cautions(rig),
+        "why": solution.why, "not_fitted_yet": model::unfitted(rig), "loss_card": rig.details.losses.card.as_ref().map(LossCard::spans), "cautions": cautions(rig),
     })
 }

@@ -102,7 +102,7 @@ fn derivatives_are_those_of_the_equations_varied() {
     }
 }
 
-/// Intervals over seeds 1 to N and the fresh ones after them; `cargo run --example fit-coverage` runs 200.
+/// Intervals over seeds 1 to N and the fresh ones after them; `cargo run --example fit-coverage` runs 200 of each.
 #[test]
 fn losses_that_the_model_was_given_are_inside_their_intervals() {
     const N: u64 = 6;
