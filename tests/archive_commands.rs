@@ -1,43 +1,19 @@
 //! The archive's commands as a crew meets them: what they print, what they exit with.
 
 #![allow(clippy::unwrap_used, clippy::expect_used, reason = "a test that cannot go on stops here")]
+#![allow(dead_code, reason = "the support files serve several tests")]
 
+#[path = "support/archive.rs"]
+mod archive;
 #[path = "support/journal.rs"]
 mod journal_file;
+#[path = "support/kept.rs"]
+mod kept_file;
 mod support;
 
 use std::path::{Path, PathBuf};
-use std::process::Command;
-use std::sync::LazyLock;
 
-use journal_file::{TRIAL_ID, nominal, opened};
-use serde_json::Value;
-
-/// An archive with one sealed launch and its journal.
-static ARCHIVE: LazyLock<(tempfile::TempDir, String)> = LazyLock::new(|| {
-    let dir = tempfile::tempdir().unwrap();
-    nominal(dir.path(), 0.1, true);
-    assert_eq!(opened(dir.path()).1.trial_id, TRIAL_ID);
-    let (code, said) = tautrail(&["recover", dir.path().to_str().unwrap()]);
-    assert_eq!(code, 0, "{said}");
-    (dir, said)
-});
-
-fn trial() -> PathBuf {
-    ARCHIVE.0.path().join(format!("trial-{TRIAL_ID}.h5"))
-}
-
-/// Exit code and everything said.
-fn tautrail(args: &[&str]) -> (i32, String) {
-    let output = Command::new(env!("CARGO_BIN_EXE_tautrail")).args(args).env("NO_COLOR", "1").output().unwrap();
-    let said = [output.stdout, output.stderr].concat();
-    (output.status.code().unwrap(), String::from_utf8(said).unwrap())
-}
-
-fn json(args: &[&str]) -> Value {
-    let (_, said) = tautrail(&[&["--json"], args].concat());
-    serde_json::from_str(&said).unwrap_or_else(|error| panic!("{error}: {said}"))
-}
+use archive::{ARCHIVE, json, sealed_trial as trial, tautrail, unlock};
 
 #[test]
 fn recover_seals_once_and_says_what() {
@@ -96,16 +72,19 @@ fn verify_passes_a_sound_file() {
     let (code, said) = tautrail(&["verify", path.to_str().unwrap()]);
     assert_eq!(code, 0, "{said}");
     assert!(said.contains(": sound, "), "{said}");
+    assert_eq!(json(&["verify", path.to_str().unwrap()])["trials"][0]["derived_again"], true);
 }
 
 /// Copies the trial `n` times and alters each through h5py; `deed` sees the file `f`, its number `k` and `random`.
 fn altered(dir: &Path, n: usize, deed: &str) -> Vec<PathBuf> {
+    altered_of(&trial(), dir, n, deed)
+}
+
+fn altered_of(trial: &Path, dir: &Path, n: usize, deed: &str) -> Vec<PathBuf> {
     let paths: Vec<PathBuf> = (0..n).map(|k| dir.join(format!("altered-{k}.h5"))).collect();
     for path in &paths {
-        std::fs::copy(trial(), path).unwrap();
-        let mut permissions = std::fs::metadata(path).unwrap().permissions();
-        std::os::unix::fs::PermissionsExt::set_mode(&mut permissions, 0o644);
-        std::fs::set_permissions(path, permissions).unwrap();
+        std::fs::copy(trial, path).unwrap();
+        unlock(path);
     }
     let script = format!(
         "import sys,h5py,random\nrandom.seed(1)\nfor k, p in enumerate(sys.argv[1:]):\n with h5py.File(p,'r+') as f:\n  {deed}"
@@ -119,11 +98,36 @@ fn altered(dir: &Path, n: usize, deed: &str) -> Vec<PathBuf> {
 fn verify_finds_every_single_altered_count() {
     let dir = tempfile::tempdir().unwrap();
     let deed = "d = f['raw'][random.choice(['winch-node/line','winch-node/anchor','shuttle-node/encoder','shuttle-node/accel'])]; i = random.randrange(len(d)); d[i] = d[i] ^ (1 << random.randrange(16))";
-    for path in altered(dir.path(), 40, deed) {
-        let (code, said) = tautrail(&["verify", path.to_str().unwrap()]);
-        assert_eq!(code, 1, "{said}");
-        assert!(said.contains("NOT SOUND") && said.contains("-node changed"), "{said}");
+    let paths = altered(dir.path(), 40, deed);
+    let mut args = vec!["verify", "--stored-only"];
+    args.extend(paths.iter().map(|path| path.to_str().unwrap()));
+    let verified = json(&args);
+    for trial in verified["trials"].as_array().unwrap() {
+        let findings = trial["findings"].to_string();
+        assert!(
+            trial["sound"] == false && findings.contains("raw data of ") && findings.contains("-node changed"),
+            "{trial}"
+        );
     }
+    assert_eq!(verified["trials"].as_array().unwrap().len(), 40);
+}
+
+#[test]
+fn verify_derives_signals_and_results_again_and_says_what_differs() {
+    let dir = tempfile::tempdir().unwrap();
+    let small = kept_file::kept("format-1.h5", dir.path());
+    let check = |deed: &str, expected: &str| {
+        let path = altered_of(&small, dir.path(), 1, deed).remove(0);
+        let (code, said) = tautrail(&["verify", path.to_str().unwrap()]);
+        assert_eq!(code, 1, "{deed}: {said}");
+        assert!(said.contains(expected), "{deed}: {said}");
+    };
+    check("f['signals/line/value'][123] += 0.001", "signal line: value");
+    check("f['signals/encoder/time'][17] += 1e-9", "time");
+    check("f['result/hold_tension'][()] += 0.01", "result hold_tension is");
+    check("f['result/hold_tension'].attrs['standard_uncertainty'] *= 1.01", "result hold_tension is");
+    check("f['result/instants/time'][1] += 0.001", "instant release is at");
+    check("f['signals/line'].move('value', 'velue')", "value is missing");
 }
 
 #[test]
@@ -131,7 +135,7 @@ fn verify_says_in_words_what_else_is_wrong() {
     let dir = tempfile::tempdir().unwrap();
     let check = |deed: &str, expected: &str| {
         let path = altered(dir.path(), 1, deed).remove(0);
-        let (code, said) = tautrail(&["verify", path.to_str().unwrap()]);
+        let (code, said) = tautrail(&["verify", "--stored-only", path.to_str().unwrap()]);
         assert_eq!(code, 1, "{deed}: {said}");
         assert!(said.contains(expected), "{deed}: {said}");
     };
@@ -139,6 +143,8 @@ fn verify_says_in_words_what_else_is_wrong() {
     check("f['raw/winch-node/line'].resize((1000,))", "channel line has 1000 counts");
     check("f['signals/line/time'][500] = 0.0", "time does not move on at sample 500");
     check("f['clock/winch-node/map/period'][0] = -1.0", "does not run forward");
+    check("f['raw/winch-node/blocks/first_tick'][50] = 0", "ticks of stream 1 do not move on at block 50");
+    check("f['clock/host/boottime'][1] = 0", "clock boottime runs backward");
     check("f['rig/rig.toml'][()] = 'name = 1'", "rig.toml is not the one sealed");
     check("del f['raw/winch-node/gaps/stream']", "stream is missing");
     check("f.attrs['outcome'] = 'let-down'", "among the results");
@@ -146,7 +152,7 @@ fn verify_says_in_words_what_else_is_wrong() {
 
 #[test]
 fn every_command_explains_itself_with_an_example() {
-    for command in ["recover", "trials", "show", "verify"] {
+    for command in ["recover", "trials", "show", "verify", "amend", "hold", "bundle", "export"] {
         let (code, said) = tautrail(&[command, "--help"]);
         assert_eq!(code, 0);
         assert!(said.contains("Examples:"), "{said}");

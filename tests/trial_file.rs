@@ -365,6 +365,21 @@ fn links_lies_and_wrong_types_inside_a_file_are_refused() {
 }
 
 #[test]
+fn a_text_that_is_no_utf_8_is_read_with_its_damage_to_be_seen() {
+    let dir = tempfile::tempdir().unwrap();
+    let path = trial_in(&dir);
+    let mut bytes = std::fs::read(&path).unwrap();
+    let at =
+        bytes.windows(8).position(|part| part == b"# north-").expect("the rig file's text lies in the file as it is");
+    bytes[at + 2] = 0xff;
+    let damaged = dir.path().join("damaged.h5");
+    std::fs::write(&damaged, bytes).unwrap();
+    let texts = TrialFile::open(&damaged).unwrap().texts_with_digests().unwrap();
+    assert!(texts[0].text.text.starts_with("# \u{fffd}orth-"), "{texts:?}");
+    assert_ne!(texts[0].sealed, tautrail::trial::text_sha256(&texts[0].text.text));
+}
+
+#[test]
 fn every_altered_count_shows_in_the_raw_digest() {
     let dir = tempfile::tempdir().unwrap();
     let untouched = TrialFile::open(&trial_in(&dir)).unwrap().raw_digests().unwrap();

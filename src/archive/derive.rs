@@ -1,7 +1,18 @@
 //! The reading of a trial, as the trial file stores it.
 
-use crate::reading::{Motion, Outcome, Reading, Verdict};
+use jiff::civil::Date;
+
+use crate::calibration::{self, Signal};
+use crate::reading::{Beside, Motion, Outcome, Reading, Verdict, read_beside};
+use crate::rig::Rig;
 use crate::trial::{AbsentEntry, DerivedSignal, InstantEntry, ResultEntry, ResultSet};
+
+/// The reading of a trial's signals, with what is doubtful about their calibrations on the day.
+pub(super) fn reading(signals: &[Signal], beside: &Beside, rig: &Rig, day: Option<Date>) -> Reading {
+    let mut reading = read_beside(signals, beside, rig);
+    reading.findings.extend(calibration::said_of(rig, day, signals));
+    reading
+}
 
 /// Results, instants and evidence; `truncated` says in a sentence why the trial's end is missing, if it is.
 pub(super) fn result_set(reading: &Reading, truncated: Option<String>) -> ResultSet {

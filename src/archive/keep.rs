@@ -34,6 +34,8 @@ pub enum ReleaseError {
     NotKept { trial_id: String, dir: PathBuf },
     #[error("trial {trial_id} has no file in {dir}: its kept journal is all there is of it; seal it first with `tautrail recover`", dir = dir.display())]
     NotSealed { trial_id: String, dir: PathBuf },
+    #[error("{path} is held, so nothing about it is deleted; `tautrail hold --lift` lifts the hold", path = path.display())]
+    Held { path: PathBuf },
     #[error(transparent)]
     TrialId(SealError),
     #[error("cannot let go of {path}: {source}", path = path.display())]
@@ -137,6 +139,9 @@ fn bytes_in(dir: &Path) -> u64 {
 pub fn release(dir: &Path, trial_id: &str) -> Result<u64, ReleaseError> {
     let file = trial_path(dir, trial_id).map_err(ReleaseError::TrialId)?;
     let io = |source| ReleaseError::Io { path: kept_dir(dir), source };
+    if let Some(path) = super::hold::held_of(dir, trial_id).map_err(io)?.into_iter().next() {
+        return Err(ReleaseError::Held { path });
+    }
     let found = kept(dir).map_err(io)?.into_iter().find(|kept| kept.trial_id == trial_id);
     let (trial_id, dir) = (trial_id.to_owned(), dir.to_owned());
     let Some(found) = found else { return Err(ReleaseError::NotKept { trial_id, dir }) };

@@ -16,6 +16,7 @@ use super::clock_finding::broken_tolerance;
 use super::error::SealError;
 use super::host_clock_steps::HostClockSteps;
 use super::player::Told;
+use super::value_pass::Source;
 
 /// Events kept of one trial; what is beyond is counted and said.
 const EVENTS_MAX: usize = 100_000;
@@ -45,6 +46,10 @@ pub(super) struct DevicePass {
 }
 
 impl DevicePass {
+    pub(super) fn source(&self) -> Source {
+        Source { name: self.name.clone(), steps: self.steps.clone() }
+    }
+
     fn new(name: &str, handle: RawDevice) -> Self {
         Self {
             name: name.to_owned(),
@@ -86,6 +91,18 @@ impl DevicePass {
     }
 }
 
+/// The rig with the zeros that were in force when the trial opened. A tare within the trial holds for the next one.
+pub(super) fn tared(events: &[EventRow], mut rig: Rig) -> Rig {
+    let in_force = events.iter().filter(|row| row.kind == "tare" && row.source == "daemon");
+    let tares = in_force.filter_map(|row| row.text.strip_prefix(Tare::IN_FORCE)?.parse::<Tare>().ok());
+    for tare in tares {
+        if let Some(channel) = rig.channels.iter_mut().find(|channel| channel.name == tare.channel) {
+            channel.calibration.zero_counts = tare.new_counts;
+        }
+    }
+    rig
+}
+
 #[derive(Debug)]
 pub(super) struct RawPass<'w> {
     writer: &'w mut TrialWriter,
@@ -113,16 +130,8 @@ impl Events {
         self.rows.push(EventRow { time_s, kind, source, person, text });
     }
 
-    /// The rig with the zeros that were in force when the trial opened. A tare within the trial holds for the next one.
-    pub(super) fn tared(&self, mut rig: Rig) -> Rig {
-        let in_force = self.rows.iter().filter(|row| row.kind == "tare" && row.source == "daemon");
-        let tares = in_force.filter_map(|row| row.text.strip_prefix(Tare::IN_FORCE)?.parse::<Tare>().ok());
-        for tare in tares {
-            if let Some(channel) = rig.channels.iter_mut().find(|channel| channel.name == tare.channel) {
-                channel.calibration.zero_counts = tare.new_counts;
-            }
-        }
-        rig
+    pub(super) fn tared(&self, rig: Rig) -> Rig {
+        tared(&self.rows, rig)
     }
 
     pub(super) fn write(mut self, writer: &mut TrialWriter) -> Result<(), SealError> {

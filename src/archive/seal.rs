@@ -23,7 +23,7 @@ use super::keep::{is_kept, keep, needed};
 use super::player::{Told, play};
 use super::publish::{Part, Published};
 use super::raw_pass::{DevicePass, Events, RawPass};
-use super::value_pass::{ForReading, KEPT_SAMPLES_MAX, ValuePass};
+use super::value_pass::{ForReading, KEPT_SAMPLES_MAX, Source, ValuePass};
 
 /// Room that a trial file is given, as a multiple of the journal it is sealed from: it holds values as well as counts,
 /// compressed. Measured on the virtual rig, four channels at 10 kHz, trials of 3 to 80 s (journals of 0.4 to 10.6 MiB): 1.83
@@ -182,7 +182,8 @@ fn write(reader: &JournalReader, range: &TrialRange, ahead: &Ahead, path: &Path)
     let rig = rig.map(|rig| gathered.events.tared(rig));
     let results = match &rig {
         Ok(rig) => {
-            let (devices, clocks) = (&gathered.devices, &gathered.clocks);
+            let sources: Vec<Source> = gathered.devices.iter().map(DevicePass::source).collect();
+            let (devices, clocks) = (&sources, &gathered.clocks);
             let mut values = ValuePass::new(&mut writer, rig, devices, clocks, header.zero_host_ns, KEPT_SAMPLES_MAX);
             play(reader, range, &mut |told: Told| values.take(&told))?;
             let mut for_reading = values.finish(&mut gathered.events);
@@ -257,9 +258,8 @@ fn read(
         let text = format!("the trial is too long to be read whole: the reading sees it from {from_s:.1} s on");
         events.add(from_s, "seal", "seal", None, text);
     }
-    let mut reading = crate::reading::read_beside(&for_reading.signals, &beside, rig);
+    let mut reading = derive::reading(&for_reading.signals, &beside, rig, day);
     reading.findings.extend_from_slice(&for_reading.findings);
-    reading.findings.extend(calibration::said_of(rig, day, &for_reading.signals));
     if let Some(motion) = &reading.motion {
         derive::motion_signals(motion).iter().try_for_each(|signal| writer.write_derived(signal))?;
     }

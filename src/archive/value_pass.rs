@@ -9,16 +9,16 @@ use std::ops::RangeInclusive;
 
 use crate::calibration::{Sampling, Signal, signal_from_counts, to_value};
 use crate::capture::{
-    Block, Captured, ClockPiece, Counts, DeviceDescription, N_DESCRIPTIONS, StreamDescription, piece_at,
+    Block, Captured, ClockPiece, Counts, DeviceDescription, LeastSteps, N_DESCRIPTIONS, StreamDescription, piece_at,
 };
 use crate::link::DeviceIdx;
 use crate::rig::{Channel, Rig};
-use crate::trial::{OpenSignal, TrialWriter};
+use crate::trial::{OpenSignal, TrialError, TrialWriter};
 
 use super::error::SealError;
 use super::kept_samples::KeptSamples;
 use super::player::Told;
-use super::raw_pass::{DevicePass, Events, seconds_between};
+use super::raw_pass::{Events, seconds_between};
 
 /// Samples whose ticks put them further from their arrival stay raw: one such block would stop the axis for good.
 const BELIEVED_WITHIN_S: f64 = 60.0;
@@ -29,9 +29,37 @@ pub(super) const KEPT_SAMPLES_MAX: usize = 1 << 22;
 /// Means handed to the reading, all signals together: five hours of four channels.
 const MEANS_MAX: usize = 1 << 23;
 
-struct SignalPass {
+/// A device that blocks come from.
+#[derive(Debug, Clone)]
+pub(super) struct Source {
+    pub(super) name: String,
+    /// Steps of the channels that come as floats, over the whole trial.
+    pub(super) steps: LeastSteps,
+}
+
+/// Where the values go, part by part: into a trial file, or beside one that is there.
+pub(super) trait ValueSink {
+    type Open: Copy;
+    /// A signal begins with its first samples.
+    fn begin(&mut self, signal: &Signal) -> Result<Self::Open, TrialError>;
+    fn append(&mut self, signal: Self::Open, time_s: &[f64], value: &[f64]) -> Result<(), TrialError>;
+}
+
+impl ValueSink for TrialWriter {
+    type Open = OpenSignal;
+
+    fn begin(&mut self, signal: &Signal) -> Result<OpenSignal, TrialError> {
+        self.begin_signal(signal)
+    }
+
+    fn append(&mut self, signal: OpenSignal, time_s: &[f64], value: &[f64]) -> Result<(), TrialError> {
+        self.append_signal(signal, time_s, value)
+    }
+}
+
+struct SignalPass<O> {
     channel: Channel,
-    open: Option<OpenSignal>,
+    open: Option<O>,
     kept: Option<KeptSamples>,
     last_time_s: f64,
     /// Samples without a value, by reason.
@@ -64,15 +92,15 @@ impl DeviceRoutes {
     }
 }
 
-pub(super) struct ValuePass<'a> {
-    writer: &'a mut TrialWriter,
+pub(super) struct ValuePass<'a, S: ValueSink> {
+    sink: &'a mut S,
     rig: &'a Rig,
-    devices: &'a [DevicePass],
+    devices: &'a [Source],
     clocks: &'a [Vec<ClockPiece>],
     zero_host_ns: i64,
     /// Per device, those of the descriptions of its present boot.
     routes: Vec<Vec<DeviceRoutes>>,
-    signals: Vec<SignalPass>,
+    signals: Vec<SignalPass<S::Open>>,
     n_kept: usize,
     kept_max: usize,
 }
@@ -89,18 +117,18 @@ pub(super) struct ForReading {
     pub(super) findings: Vec<String>,
 }
 
-impl<'a> ValuePass<'a> {
+impl<'a, S: ValueSink> ValuePass<'a, S> {
     pub(super) fn new(
-        writer: &'a mut TrialWriter,
+        sink: &'a mut S,
         rig: &'a Rig,
-        devices: &'a [DevicePass],
+        devices: &'a [Source],
         clocks: &'a [Vec<ClockPiece>],
         zero_host_ns: i64,
         kept_max: usize,
     ) -> Self {
         let signals = rig.channels.iter().map(|channel| SignalPass::new(channel.clone())).collect();
         let routes = devices.iter().map(|_| Vec::new()).collect();
-        Self { writer, rig, devices, clocks, zero_host_ns, routes, signals, n_kept: 0, kept_max }
+        Self { sink, rig, devices, clocks, zero_host_ns, routes, signals, n_kept: 0, kept_max }
     }
 
     pub(super) fn take(&mut self, told: &Told) -> Result<(), SealError> {
@@ -109,12 +137,12 @@ impl<'a> ValuePass<'a> {
                 self.route(*device, description);
                 Ok(())
             }
-            Told::Captured(device, Captured::Block(block)) => self.block(*device, block),
+            Told::Captured(device, Captured::Block(block)) => Ok(self.block(*device, block)?),
             _ => Ok(()),
         }
     }
 
-    fn route(&mut self, device: DeviceIdx, description: &DeviceDescription) {
+    pub(super) fn route(&mut self, device: DeviceIdx, description: &DeviceDescription) {
         let index = usize::from(device.0);
         let name = &self.devices[index].name;
         let u_ns = self.clocks[index].iter().map(|piece| piece.u_ns).fold(0.0, f64::max);
@@ -145,7 +173,7 @@ impl<'a> ValuePass<'a> {
         of_device.push(routes);
     }
 
-    fn block(&mut self, device: DeviceIdx, block: &Block) -> Result<(), SealError> {
+    pub(super) fn block(&mut self, device: DeviceIdx, block: &Block) -> Result<(), TrialError> {
         let index = usize::from(device.0);
         let named = self.routes[index].iter().find(|routes| routes.are_of(block.boot_id, block.description_id));
         let Some(routes) = named.and_then(|routes| routes.by_stream.get(&block.stream)) else { return Ok(()) };
@@ -161,7 +189,7 @@ impl<'a> ValuePass<'a> {
                 continue;
             };
             match signal.part(block, counts, route, piece, self.zero_host_ns) {
-                Ok(part) => self.n_kept += signal.write(self.writer, part)?,
+                Ok(part) => self.n_kept += signal.write(self.sink, part)?,
                 Err(reason) => signal.refuse(reason, n_samples, block.host_ns),
             }
         }
@@ -174,7 +202,7 @@ impl<'a> ValuePass<'a> {
         if self.n_kept <= self.kept_max {
             return;
         }
-        let kept = |pass: &'_ SignalPass| pass.kept.as_ref().and_then(KeptSamples::span_s);
+        let kept = |pass: &'_ SignalPass<S::Open>| pass.kept.as_ref().and_then(KeptSamples::span_s);
         let spans = self.signals.iter().filter_map(kept);
         let Some((first_s, last_s)) = spans.reduce(|a, b| (a.0.min(b.0), a.1.max(b.1))) else { return };
         let from_s = first_s + 0.25 * (last_s - first_s);
@@ -207,7 +235,7 @@ impl<'a> ValuePass<'a> {
     }
 }
 
-impl SignalPass {
+impl<O: Copy> SignalPass<O> {
     fn new(channel: Channel) -> Self {
         let refused = BTreeMap::new();
         let (open, kept) = (None, None);
@@ -264,13 +292,13 @@ impl SignalPass {
         Some((a.min(b), a.max(b)))
     }
 
-    /// Appends a part to the file and to what is kept; gives the number of samples.
-    fn write(&mut self, writer: &mut TrialWriter, part: Signal) -> Result<usize, SealError> {
+    /// Hands a part on and adds it to what is kept; gives the number of samples.
+    fn write(&mut self, sink: &mut impl ValueSink<Open = O>, part: Signal) -> Result<usize, TrialError> {
         let n_samples = part.time_s.len();
         self.last_time_s = part.time_s.last().copied().unwrap_or(self.last_time_s);
         match self.open {
-            None => self.open = Some(writer.begin_signal(&part)?),
-            Some(open) => writer.append_signal(open, &part.time_s, &part.value)?,
+            None => self.open = Some(sink.begin(&part)?),
+            Some(open) => sink.append(open, &part.time_s, &part.value)?,
         }
         match &mut self.kept {
             None => self.kept = Some(KeptSamples::new(part)),

@@ -1,12 +1,15 @@
 //! Proves that a trial file still says what was sealed.
 //!
 //! Checks: the digest of every raw group against what the file holds now; blocks against gaps (a jump of the indices that
-//! no gap row explains, and a gap row that no jump shows, are both findings); counts against blocks; clock maps that run
-//! forward; time axes that move on. A digest within the file proves nothing against somebody who rewrote both.
+//! no gap row explains, and a gap row that no jump shows, are both findings); counts against blocks; clocks, clock maps
+//! and ticks that run forward; time axes that move on; signals and results against those derived again from the counts; the
+//! chain of amendments. A digest within the file proves nothing against somebody who rewrote both.
 
 use std::collections::BTreeMap;
 use std::path::Path;
 
+use super::amendment::Amended;
+use super::reproduce::reproduce;
 use crate::capture::Gap;
 use crate::trial::{BlockRow, TrialError, TrialFile, whole_raw_digest};
 
@@ -19,29 +22,52 @@ pub struct Verified {
     pub n_blocks: usize,
     pub n_samples: u64,
     pub n_missing: u64,
+    pub n_amendments: usize,
+    /// SHA-256 of the last amendment, which stands for the whole chain; empty without amendments.
+    pub last_amendment_sha256: String,
+    /// Signals and results were derived again and compared.
+    pub derived_again: bool,
     /// What is wrong, in sentences; empty for a sound file.
     pub findings: Vec<String>,
+    /// What a person should know and is not wrong.
+    pub remarks: Vec<String>,
+}
+
+/// How much is checked.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+pub enum Depth {
+    #[default]
+    Everything,
+    /// Nothing is derived again.
+    Stored,
 }
 
 /// Verifies the file.
 ///
 /// # Errors
 /// Only if it cannot be opened as a trial at all; parts that cannot be read are findings.
-pub fn verify(path: &Path) -> Result<Verified, TrialError> {
-    let trial = TrialFile::open(path)?;
+pub fn verify(path: &Path, depth: Depth) -> Result<Verified, TrialError> {
+    let amended = Amended::open(path)?;
+    let trial = &amended.trial;
     let mut verified = Verified {
         trial_id: trial.header().trial_id.clone(),
-        raw_sha256: trial.sealed_raw_digest()?,
+        raw_sha256: amended.raw_sha256.clone(),
         n_blocks: 0,
         n_samples: 0,
         n_missing: 0,
+        n_amendments: amended.chain.len(),
+        last_amendment_sha256: amended.chain.last().map_or_else(String::new, |last| last.sha256.clone()),
+        derived_again: false,
         findings: Vec::new(),
+        remarks: Vec::new(),
     };
-    for check in [digests, devices, axes, results] {
-        if let Err(error) = check(&trial, &mut verified) {
+    let derived = if depth == Depth::Everything { derived_again } else { |_: &_, _: &mut _| Ok(()) };
+    for check in [digests, devices, host_clocks, axes, results, derived] {
+        if let Err(error) = check(trial, &mut verified) {
             verified.findings.push(error.to_string());
         }
     }
+    verified.findings.extend(amended.findings);
     Ok(verified)
 }
 
@@ -67,6 +93,7 @@ fn devices(trial: &TrialFile, verified: &mut Verified) -> Result<(), TrialError>
         verified.n_missing = record.gaps.iter().fold(verified.n_missing, |sum, gap| sum.saturating_add(gap.n_missing));
         gaps_against_blocks(&device, &blocks, &record.gaps, &mut verified.findings);
         counts_against_blocks(trial, &device, &blocks, &mut verified.findings)?;
+        ticks(&device, &blocks, &mut verified.findings);
         clocks(trial, &device, &mut verified.findings)?;
     }
     Ok(())
@@ -131,6 +158,44 @@ fn clocks(trial: &TrialFile, device: &str, findings: &mut Vec<String>) -> Result
     Ok(())
 }
 
+/// A device's ticks count up; one sentence a device.
+fn ticks(device: &str, blocks: &[BlockRow], findings: &mut Vec<String>) {
+    let mut last: BTreeMap<(u32, u8), u64> = BTreeMap::new();
+    for (index, block) in blocks.iter().enumerate() {
+        let before = last.insert((block.boot_id, block.stream), block.first_tick);
+        if before.is_some_and(|before| before >= block.first_tick) {
+            let stream = block.stream;
+            findings.push(format!("{device}: the ticks of stream {stream} do not move on at block {index}"));
+            return;
+        }
+    }
+}
+
+/// The host's clocks that nobody sets run forward; the wall clock may be set.
+fn host_clocks(trial: &TrialFile, verified: &mut Verified) -> Result<(), TrialError> {
+    let rows = trial.host_clocks()?;
+    let backward = |clock: fn(&crate::trial::HostClocksRow) -> i64| {
+        rows.windows(2).position(|pair| clock(&pair[1]) < clock(&pair[0])).map(|at| at + 1)
+    };
+    let clocks = [
+        ("monotonic", backward(|row| row.monotonic_ns)),
+        ("monotonic_raw", backward(|row| row.monotonic_raw_ns)),
+        ("boottime", backward(|row| row.boottime_ns)),
+    ];
+    for (name, at) in clocks.iter().filter_map(|(name, at)| Some((name, (*at)?))) {
+        verified.findings.push(format!("the host's clock {name} runs backward at reading {at}"));
+    }
+    Ok(())
+}
+
+fn derived_again(trial: &TrialFile, verified: &mut Verified) -> Result<(), TrialError> {
+    let reproduced = reproduce(trial)?;
+    verified.derived_again = reproduced.derived_again;
+    verified.findings.extend(reproduced.findings);
+    verified.remarks.extend(reproduced.remarks);
+    Ok(())
+}
+
 fn axes(trial: &TrialFile, _verified: &mut Verified) -> Result<(), TrialError> {
     trial.prove_signals()
 }
@@ -142,6 +207,11 @@ fn results(trial: &TrialFile, verified: &mut Verified) -> Result<(), TrialError>
         verified.findings.push(format!("the outcome is {root:?} at the root and {found:?} among the results"));
     }
     trial.events()?;
+    trial.notes()?;
+    trial.conditions()?;
+    for name in trial.derived_names()? {
+        trial.derived(&name)?;
+    }
     for text in trial.texts_with_digests()? {
         if text.sealed != crate::trial::text_sha256(&text.text.text) {
             verified.findings.push(format!("the text {} is not the one sealed", text.text.name));

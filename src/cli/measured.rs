@@ -2,20 +2,19 @@
 
 use std::path::{Path, PathBuf};
 
+use tautrail::archive::{Amended, AmendedError};
 use tautrail::calibration::{self, Signal};
 use tautrail::reading::{Beside, Camera, EdgeSeen, Reading, Recorder, TableError, read_beside};
 use tautrail::rig::{self, Rig, RigError};
-use tautrail::trial::{Header, TrialError, TrialFile};
+use tautrail::trial::{Header, TrialError};
 use thiserror::Error;
 
 #[derive(Debug, Error)]
 pub enum MeasuredError {
     #[error("{}", once(path, source))]
     Trial { path: String, source: TrialError },
-    #[error("{path}: carries no rig file; name one with --rig")]
-    NoRig { path: String },
-    #[error("{path}: the rig file it carries can't be used; name one with --rig")]
-    Rig { path: String, source: RigError },
+    #[error("{path}: {source}; --rig names another rig file")]
+    Amended { path: String, source: AmendedError },
     #[error("{}", once(path, source))]
     OtherRig { path: String, source: RigError },
 }
@@ -33,6 +32,8 @@ pub struct Measured {
     pub rig: Rig,
     /// Edges of digital inputs that the trial holds.
     pub edges: Vec<EdgeSeen>,
+    /// What amendments changed of the rig file and conditions, and what is wrong with them.
+    pub amended: Vec<String>,
     /// SHA-256 of all raw data as sealed.
     pub raw_sha256: String,
 }
@@ -99,24 +100,28 @@ fn parsed<T>(path: &Path, parse: impl Fn(&str) -> Result<T, TableError>) -> Resu
     parse(&text).map_err(|source| BesideError::Table { path: shown(), source })
 }
 
-/// Opens a trial; `rig_path` takes the place of the rig file that the trial carries.
+/// Opens a trial with its amendments; `rig_path` takes the place of the rig file that holds for it.
 pub fn open(trial_path: &Path, rig_path: Option<&PathBuf>) -> Result<Measured, MeasuredError> {
     let path = || trial_path.display().to_string();
     let failed = |source| MeasuredError::Trial { path: path(), source };
-    let trial = TrialFile::open(trial_path).map_err(failed)?;
-    let rig = match rig_path {
+    let amended_failed = |source| MeasuredError::Amended { path: path(), source };
+    let amended = Amended::open(trial_path).map_err(failed)?;
+    let (rig, signals, changes) = match rig_path {
         Some(other) => {
-            rig::load(other).map_err(|source| MeasuredError::OtherRig { path: other.display().to_string(), source })?
+            let rig = rig::load(other)
+                .map_err(|source| MeasuredError::OtherRig { path: other.display().to_string(), source })?;
+            (rig, amended.trial.signals().map_err(failed)?, Vec::new())
         }
         None => {
-            let texts = trial.texts().map_err(failed)?;
-            let carried = texts.iter().find(|text| text.name == "rig.toml");
-            let text = carried.ok_or_else(|| MeasuredError::NoRig { path: path() })?;
-            rig::parse(&text.text).map_err(|source| MeasuredError::Rig { path: path(), source })?
+            let rig = amended.rig().map_err(amended_failed)?;
+            let signals = amended.signals(&rig).map_err(amended_failed)?;
+            (rig.rig, signals, rig.changes)
         }
     };
-    let signals = trial.signals().map_err(failed)?;
-    let edges = tautrail::archive::edges_of(&trial).map_err(failed)?;
-    let raw_sha256 = trial.sealed_raw_digest().map_err(failed)?;
-    Ok(Measured { header: trial.header().clone(), signals, rig, edges, raw_sha256 })
+    let edges = tautrail::archive::edges_of(&amended.trial).map_err(failed)?;
+    let changes = changes.into_iter().map(|change| format!("amended: {change}"));
+    let wrong = amended.findings.iter().map(|finding| format!("the amendments are not sound: {finding}"));
+    let amended_words = changes.chain(wrong).collect();
+    let raw_sha256 = amended.raw_sha256.clone();
+    Ok(Measured { header: amended.trial.header().clone(), signals, rig, edges, raw_sha256, amended: amended_words })
 }

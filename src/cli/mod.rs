@@ -3,16 +3,20 @@
 //! A command's file has `Args` (clap derive) and `run(&Args, &Screen) -> Result<Verdict, Failure>`; it is named once in
 //! [`Command`] and once in [`Command::run`]. Exit codes: 0 done, 1 a check failed, 2 could not run.
 
+mod amend;
 mod ask;
+mod bundle;
 mod calibrate;
 mod check;
 mod close;
 mod compare;
 mod cord;
 mod daemon;
+mod export;
 mod feed_place;
 mod fit;
 mod forecast;
+mod hold;
 mod link_health;
 mod losses_file;
 mod mark;
@@ -71,6 +75,10 @@ enum Command {
     Trials(trials::Args),
     Show(show::Args),
     Verify(verify::Args),
+    Amend(amend::Args),
+    Hold(hold::Args),
+    Bundle(bundle::Args),
+    Export(export::Args),
     Watch(watch::Args),
     Metrics(metrics::Args),
     Mark(mark::Args),
@@ -104,6 +112,10 @@ impl Command {
             Self::Trials(args) => trials::run(args, screen),
             Self::Show(args) => show::run(args, screen),
             Self::Verify(args) => verify::run(args, screen),
+            Self::Amend(args) => amend::run(args, screen),
+            Self::Hold(args) => hold::run(args, screen),
+            Self::Bundle(args) => bundle::run(args, screen),
+            Self::Export(args) => export::run(args, screen),
             Self::Watch(args) => watch::run(args, screen),
             Self::Metrics(args) => metrics::run(args, screen),
             Self::Mark(args) => mark::run(args, screen),

@@ -13,7 +13,8 @@ use super::{CAUTION, Failure, Verdict};
 
 /// Read a trial: release, launch speed, peak g, tensions, energy, each with its uncertainty
 ///
-/// Everything is derived again from the trial's signals and the rig file it carries; the trial file is not changed.
+/// Everything is derived again from the trial's signals and the rig file it carries, with its amendments; where an amendment
+/// corrected a record, the signals too, from the counts. No file is changed.
 #[derive(Debug, clap::Args)]
 #[command(after_help = READ_HELP)]
 pub struct Args {
@@ -53,6 +54,7 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
             object.insert("path".to_owned(), json!(args.trial));
             object.insert("trial_id".to_owned(), json!(measured.header.trial_id));
             object.insert("rig".to_owned(), json!(measured.rig.name));
+            object.insert("amended".to_owned(), json!(measured.amended));
             object.insert("caution".to_owned(), json!(CAUTION));
         }
         screen.value(&value);
@@ -70,6 +72,9 @@ fn print(args: &Args, measured: &Measured, reading: &Reading, screen: &Screen) {
     }
     for finding in &reading.findings {
         screen.line(format!("  {} {finding}", screen.toned("look at:", Tone::Caution)));
+    }
+    for sentence in &measured.amended {
+        screen.line(format!("  {sentence}"));
     }
     screen.line(screen.toned("instants", Tone::Heading));
     for instant in &reading.instants {

@@ -4,8 +4,8 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 use serde_json::json;
+use tautrail::archive::Amended;
 use tautrail::report::{page_of, trial_page};
-use tautrail::trial::TrialFile;
 use thiserror::Error;
 
 use super::screen::Screen;
@@ -57,7 +57,7 @@ pub fn write_page(trial: &Path, out: Option<&Path>) -> Result<PathBuf, Failure> 
     {
         return Err(ReportError::OverTrial { path: shown }.into());
     }
-    let html = trial_page(&page_of(&TrialFile::open(trial)?)?)?;
+    let html = trial_page(&page_of(&Amended::open(trial)?)?)?;
     fs::write(&path, html).map_err(|source| ReportError::Unwritable { path: shown, source })?;
     Ok(path)
 }

@@ -53,6 +53,19 @@ impl Screen {
         let _ = writeln!(io::stdout().lock(), "{}", text.as_ref());
     }
 
+    /// A text as it is, to the byte.
+    pub fn text(&self, text: &str) {
+        let _ = io::stdout().lock().write_all(text.as_bytes());
+    }
+
+    /// How far a long work is, on standard error, in one line that replaces itself; nothing where nobody looks on.
+    pub fn progress(&self, text: &str, done: bool) {
+        let mut to = io::stderr().lock();
+        if to.is_terminal() {
+            let _ = write!(to, "\r{text}{}", if done { "\n" } else { "" });
+        }
+    }
+
     /// One JSON value on standard output.
     pub fn value(&self, value: &Value) {
         self.line(format!("{value:#}"));

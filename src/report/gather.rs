@@ -7,15 +7,13 @@ use super::page::{
     DeviceHealth, EnergyBar, EnergyPart, Heading, Inspection, MotionCurve, MotionOverRail, PageLimits, PhaseSpan,
     RailStrip, Trace, TrialPage,
 };
-use crate::archive::edges_of;
+use crate::archive::{Amended, AmendedError, edges_of};
 use crate::calibration::{self, Signal};
 use crate::reading::{Beside, EnergyAudit, Motion, Reading, read_beside};
 use crate::replay::replay;
-use crate::rig::{Rig, RigError, Role, parse};
+use crate::rig::{Rig, Role};
 use crate::trial::{ClockRow, Header, TrialError, TrialFile};
 
-/// The rig file's name among the texts of a trial.
-const RIG_TEXT: &str = "rig.toml";
 /// In the order of the picture's key.
 const TENSIONS: [Role; 2] = [Role::ReleaseLineTension, Role::CordAnchorTension];
 
@@ -25,10 +23,8 @@ const TENSIONS: [Role; 2] = [Role::ReleaseLineTension, Role::CordAnchorTension];
 pub enum GatherError {
     #[error("the trial file can't be read: {0}")]
     Trial(#[from] TrialError),
-    #[error("the trial file carries no rig file {RIG_TEXT:?}: nothing says what its signals mean")]
-    NoRigText,
-    #[error("the rig file inside the trial is not understood: {0}")]
-    Rig(#[from] RigError),
+    #[error(transparent)]
+    Amended(#[from] AmendedError),
 }
 
 /// The page of a sealed trial, with results derived again by this program.
@@ -36,19 +32,41 @@ pub enum GatherError {
 /// # Errors
 /// [`GatherError`]: the file can't be read, or its rig file is not understood. What can't be derived is no error: it is
 /// absent on the page with its reason.
-pub fn page_of(trial: &TrialFile) -> Result<TrialPage, GatherError> {
-    let text = trial.texts()?.into_iter().find(|text| text.name == RIG_TEXT).ok_or(GatherError::NoRigText)?;
-    let rig = parse(&text.text)?;
-    let signals = trial.signals()?;
+pub fn page_of(amended: &Amended) -> Result<TrialPage, GatherError> {
+    let trial = &amended.trial;
+    let amended_rig = amended.rig()?;
+    let signals = amended.signals(&amended_rig)?;
+    let rig = amended_rig.rig;
     let beside = Beside { edges: edges_of(trial)?, ..Beside::default() };
     let mut reading = read_beside(&signals, &beside, &rig);
     reading.findings.extend(calibration::said_of(&rig, trial.header().day(), &signals));
     let mut page = page(trial.header(), &rig, &signals, &reading);
     add_replay(&mut page, &replay(&signals, &reading, &rig));
     page.health = trial.device_names()?.iter().map(|name| health(trial, name)).collect::<Result<_, _>>()?;
-    page.hashes = hashes(trial)?;
-    page.inspections = inspections(trial, &rig)?;
+    page.hashes = hashes(amended)?;
+    page.inspections = inspections(amended, &rig)?;
+    page.said = said(amended)?;
+    page.cautions.extend(amended_rig.changes.iter().map(|change| format!("Amended: {change}.")));
+    let wrong = |finding: &String| format!("The amendments are not sound: {finding}.");
+    page.cautions.extend(amended.findings.iter().map(wrong));
     Ok(page)
+}
+
+/// Conditions, notes and amendments, each with who says it and where.
+fn said(amended: &Amended) -> Result<Vec<(String, String)>, GatherError> {
+    let mut said = Vec::new();
+    for (condition, origin) in amended.conditions()? {
+        let value = format!("{} {}", condition.value, crate::units::shown_unit(&condition.unit));
+        said.push((format!("{} ({origin}, {})", condition.name, condition.source), value));
+    }
+    said.extend(amended.notes()?.into_iter().map(|(origin, who, text)| (format!("note ({origin}, {who})"), text)));
+    let history = |amendment: &crate::archive::Amendment| {
+        let what =
+            format!("amendment {:04}, {} by {}", amendment.number, to_the_second(&amendment.written), amendment.person);
+        (what, amendment.reason.clone())
+    };
+    said.extend(amended.chain.iter().map(history));
+    Ok(said)
 }
 
 /// The page of signals and their reading; health and hashes are left to who has the file.
@@ -102,11 +120,16 @@ fn to_the_second(rfc3339: &str) -> String {
     format!("{seconds}{}", rest.trim_start_matches(|letter: char| letter.is_ascii_digit()))
 }
 
-/// Items of the rig file's stages, answered where a mark of the trial or a note begins with the item and a colon.
-fn inspections(trial: &TrialFile, rig: &Rig) -> Result<Vec<Inspection>, GatherError> {
-    let mut said: Vec<String> = trial.events()?.into_iter().map(|event| event.text).collect();
-    said.extend(trial.notes()?.into_iter().flat_map(|note| note.text.lines().map(str::to_owned).collect::<Vec<_>>()));
+/// Items of the rig file's stages, answered by an amendment, or where a mark of the trial or a note begins with the item and
+/// a colon.
+fn inspections(amended: &Amended, rig: &Rig) -> Result<Vec<Inspection>, GatherError> {
+    let mut said: Vec<String> = amended.trial.events()?.into_iter().map(|event| event.text).collect();
+    let notes = amended.notes()?.into_iter();
+    said.extend(notes.flat_map(|(_, _, text)| text.lines().map(str::to_owned).collect::<Vec<_>>()));
     let answer = |item: &str| {
+        if let Some((answer, origin)) = amended.answer(item) {
+            return Some(format!("{answer} ({origin})"));
+        }
         said.iter().find_map(|text| {
             let (asked, answer) = text.split_once(':')?;
             asked.trim().eq_ignore_ascii_case(item.trim()).then(|| answer.trim().to_owned())
@@ -240,12 +263,15 @@ fn clock_words(pieces: &[ClockRow]) -> String {
 }
 
 /// Digests as sealed, with a word where the file no longer holds what was sealed.
-fn hashes(trial: &TrialFile) -> Result<Vec<(String, String)>, GatherError> {
+fn hashes(amended: &Amended) -> Result<Vec<(String, String)>, GatherError> {
+    let trial = &amended.trial;
     let mut hashes = vec![("raw, all devices".to_owned(), trial.sealed_raw_digest()?)];
     for digest in trial.raw_digests()? {
         let word = if digest.sealed == digest.found { "" } else { " — THE FILE NO LONGER MATCHES" };
         hashes.push((format!("/raw/{}", digest.device), format!("{}{word}", digest.sealed)));
     }
     hashes.extend(trial.texts_with_digests()?.into_iter().map(|text| (text.text.name, text.sealed)));
+    let amendment = |a: &crate::archive::Amendment| (format!("amendment {:04}", a.number), a.sha256.clone());
+    hashes.extend(amended.chain.iter().map(amendment));
     Ok(hashes)
 }

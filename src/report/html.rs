@@ -39,6 +39,9 @@ pub fn trial_page(page: &TrialPage) -> Result<String, PictureError> {
     if !page.inspections.is_empty() {
         html.push_str(&section("Inspection items", &tables::inspections(&page.inspections)));
     }
+    if !page.said.is_empty() {
+        html.push_str(&section("Conditions, notes and amendments", &tables::said(&page.said)));
+    }
     html.push_str(&section("What was received", &tables::health(&page.health)));
     html.push_str(&section("Raw data, SHA-256", &tables::hashes(&page.hashes)));
     html.push_str("</main>\n");

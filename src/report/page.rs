@@ -29,6 +29,8 @@ pub struct TrialPage {
     pub inspections: Vec<Inspection>,
     pub energy: Option<EnergyBar>,
     pub health: Vec<DeviceHealth>,
+    /// Conditions, notes and amendments: what, with who says it, and the words.
+    pub said: Vec<(String, String)>,
     /// Name of a raw group or text, and its SHA-256.
     pub hashes: Vec<(String, String)>,
     /// Oddities that a person should look at, and what the evidence can't tell.

@@ -168,6 +168,15 @@ fn health_row(device: &DeviceHealth) -> String {
     )
 }
 
+/// What was said of the trial, and who said it.
+pub(super) fn said(said: &[(String, String)]) -> String {
+    let row = |(what, words): &(String, String)| {
+        format!("<tr><th scope=\"row\">{}</th><td>{}</td></tr>\n", escaped(what), escaped(words))
+    };
+    table(&[Words("what, and who says so"), Words("words")], &said.iter().map(row).collect::<String>())
+}
+
+/// Names and SHA-256.
 pub(super) fn hashes(hashes: &[(String, String)]) -> String {
     if hashes.is_empty() {
         return "<p>No hashes were given.</p>\n".into();

@@ -58,6 +58,7 @@ fn invented() -> TrialPage {
         over_time: None,
         energy: Some(energy()),
         health: health(),
+        said: vec![("note (amendment 0001, A. Recorder)".into(), "left cord <chafed>".into())],
         hashes: vec![("/raw/winch-node/line".into(), "ab".repeat(32)), ("north-pier.toml".into(), "0f".repeat(32))],
         cautions: vec!["anchor and line differ by 14 N in the hold: friction on the rail or a pulley".into()],
     }

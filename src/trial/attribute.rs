@@ -13,6 +13,12 @@ pub(super) fn stored_text(text: &str) -> VarLenUnicode {
     clean.parse().unwrap_or_default()
 }
 
+/// A string as it lies in a file, which may be damaged: the library's type promises UTF-8 without having looked. What is none
+/// becomes U+FFFD; digests are over the bytes.
+pub(super) fn loaded_text(stored: &VarLenUnicode) -> String {
+    String::from_utf8_lossy(stored.as_bytes()).into_owned()
+}
+
 pub(super) fn put_text(at: &Location, name: &str, text: &str) -> Result<(), TrialError> {
     put_number(at, name, stored_text(text))
 }
@@ -68,7 +74,7 @@ pub(super) fn get_text(at: &Location, name: &str) -> Result<String, TrialError> 
     let attribute = at.attr(name).map_err(|_| TrialError::Missing { object: object.clone() })?;
     expect_type(&attribute, TypeDescriptor::VarLenUnicode, &object, "a variable-length UTF-8 string")?;
     let text: VarLenUnicode = attribute.read_scalar().doing("reading attribute", object)?;
-    Ok(text.as_str().to_owned())
+    Ok(loaded_text(&text))
 }
 
 pub(super) fn get_number<T: H5Type>(at: &Location, name: &str) -> Result<T, TrialError> {
@@ -100,7 +106,7 @@ pub(super) fn read_text(dataset: &Dataset) -> Result<String, TrialError> {
     let object = dataset.name();
     expect_type(dataset, TypeDescriptor::VarLenUnicode, &object, "a variable-length UTF-8 string")?;
     let text: VarLenUnicode = dataset.read_scalar().doing("reading", object)?;
-    Ok(text.as_str().to_owned())
+    Ok(loaded_text(&text))
 }
 
 /// A scalar number dataset.

@@ -14,7 +14,7 @@ use hdf5::types::{TypeDescriptor, VarLenUnicode};
 use hdf5::{Dataset, Group, H5Type, Hyperslab};
 use sha2::{Digest, Sha256};
 
-use super::attribute::{expect_type, full_name, put_text, stored_text};
+use super::attribute::{expect_type, full_name, loaded_text, put_text, stored_text};
 use super::chunk::ChunkWriter;
 use super::digest::DatasetDigest;
 use super::error::{Doing, TrialError};
@@ -23,6 +23,8 @@ use super::error::{Doing, TrialError};
 pub(super) const SAMPLES_PER_CHUNK: usize = 32 * 1024;
 /// Rows a chunk of small tables.
 pub(super) const ROWS_PER_CHUNK: usize = 4 * 1024;
+/// Rows a chunk of texts: unfiltered, and stored whole, so that a few words of a small table do not cost 64 KiB.
+const TEXTS_PER_CHUNK: usize = 64;
 const CACHE_BYTES: usize = 1 << 20;
 /// HDF5's advice: a prime about 100 times the number of chunks that fit the cache.
 const CACHE_SLOTS: usize = 521;
@@ -81,7 +83,7 @@ impl Cell for String {
         stored_text(self)
     }
     fn load(stored: VarLenUnicode) -> Self {
-        stored.as_str().to_owned()
+        loaded_text(&stored)
     }
     fn put_le(stored: &VarLenUnicode, out: &mut Vec<u8>) {
         let length = u32::try_from(stored.len()).unwrap_or(u32::MAX);
@@ -104,9 +106,10 @@ pub(super) struct Column<T: Cell> {
 
 impl<T: Cell> Column<T> {
     pub(super) fn create(group: &Group, name: &str, unit: &str, chunk: usize) -> Result<Self, TrialError> {
+        let is_number = !matches!(T::Stored::type_descriptor(), TypeDescriptor::VarLenUnicode);
+        let chunk = if is_number { chunk } else { chunk.min(TEXTS_PER_CHUNK) };
         let mut builder = group.new_dataset::<T::Stored>().obj_track_times(false).chunk(chunk);
         builder = builder.chunk_cache(CACHE_SLOTS, CACHE_BYTES, 0.75);
-        let is_number = !matches!(T::Stored::type_descriptor(), TypeDescriptor::VarLenUnicode);
         if is_number {
             builder = builder.shuffle().deflate(DEFLATE_LEVEL).fletcher32();
         }

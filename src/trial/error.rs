@@ -10,6 +10,8 @@ pub enum TrialError {
     Io { path: PathBuf, source: std::io::Error },
     #[error("{path} is no readable HDF5 file ({source}): it may be cut short or damaged; seal it again from its journal, or fetch a copy", path = path.display())]
     NotHdf5 { path: PathBuf, source: hdf5::Error },
+    #[error("{path} is damaged: {what}; seal it again from its journal, or fetch a copy", path = path.display())]
+    Damaged { path: PathBuf, what: String },
     #[error("{path} is no trial file: it is not HDF5 at all", path = path.display())]
     OtherKind { path: PathBuf },
     #[error("{path} is an HDF5 file, but no trial of this program: {what}", path = path.display())]
@@ -28,6 +30,10 @@ pub enum TrialError {
         "{object} claims {declared_bytes} bytes, but its {stored_bytes} stored bytes cannot hold so many: the file is damaged"
     )]
     TooLarge { object: String, declared_bytes: u64, stored_bytes: u64 },
+    #[error(
+        "{object} has {n_found} members, more than the {n_max} that are read: the file is damaged or no trial of this program"
+    )]
+    TooMany { object: String, n_found: usize, n_max: usize },
     #[error("{object} leads out of the file or is stored in a way that trial files never use ({what}): refused")]
     Foreign { object: String, what: &'static str },
     #[error("{object} has {found} entries, its neighbours have {expected}")]

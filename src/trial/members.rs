@@ -9,8 +9,9 @@ use super::attribute::full_name;
 use super::column::{Cell, OpenColumn};
 use super::error::{Doing, TrialError};
 
-/// More members than any group of a trial has.
-const MEMBERS_MAX: usize = 100_000;
+/// More members than any group of a trial has: a device that describes itself every second takes 11 days to get there.
+/// A group with more is refused whole; part of it would read as if the rest were missing.
+const MEMBERS_MAX: usize = 1_000_000;
 
 pub(super) struct Members {
     group: Group,
@@ -19,14 +20,23 @@ pub(super) struct Members {
 
 impl Members {
     pub(super) fn of(group: Group) -> Result<Self, TrialError> {
+        Self::of_at_most(group, MEMBERS_MAX)
+    }
+
+    fn of_at_most(group: Group, n_max: usize) -> Result<Self, TrialError> {
         let mut links = BTreeMap::new();
+        let mut n_found = 0_usize;
         let listed = group.iter_visit(IndexType::Name, IterationOrder::Native, |name, info| {
-            if links.len() < MEMBERS_MAX {
+            n_found += 1;
+            if n_found <= n_max {
                 links.insert(name.to_owned(), info.link_type);
             }
             Ok(())
         });
         listed.doing("listing", group.name())?;
+        if n_found > n_max {
+            return Err(TrialError::TooMany { object: group.name(), n_found, n_max });
+        }
         Ok(Self { group, links })
     }
 
@@ -70,5 +80,21 @@ impl Members {
                 Err(TrialError::Uneven { object: full_name(&self.group, name), found: *found, expected })
             }
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_group_with_too_many_members_is_refused_and_not_read_in_part() {
+        let dir = tempfile::tempdir().unwrap();
+        let file = hdf5::File::create(dir.path().join("many.h5")).unwrap();
+        (0..5).for_each(|k| drop(file.create_group(&format!("g{k}")).unwrap()));
+        let root = || file.group("/").unwrap();
+        assert_eq!(Members::of_at_most(root(), 5).unwrap().names().count(), 5);
+        let refused = Members::of_at_most(root(), 4).map(|members| members.names().count());
+        assert!(matches!(refused, Err(TrialError::TooMany { n_found: 5, n_max: 4, .. })), "{refused:?}");
     }
 }

@@ -8,6 +8,7 @@ mod description;
 mod device_writer;
 mod digest;
 mod error;
+mod heaps;
 mod link_health;
 mod members;
 mod names;

@@ -15,6 +15,7 @@ use super::content::{
     ResultSet, SealedText,
 };
 use super::error::TrialError;
+use super::heaps::{self, SIGNATURE};
 use super::members::Members;
 use super::schema::{
     AbsentTable, ClockTable, EVIDENCE, EventTable, ExchangeTable, FINDINGS, FORMAT_NAME, FORMAT_VERSION,
@@ -37,25 +38,29 @@ impl std::fmt::Debug for TrialFile {
     }
 }
 
-/// Whether a file begins with HDF5's signature (HDF5 File Format Specification 3.0, II.A), as far as it goes.
-fn begins_as_hdf5(path: &Path) -> std::io::Result<bool> {
-    const SIGNATURE: &[u8; 8] = b"\x89HDF\r\n\x1a\n";
+/// Refuses what is no HDF5 file as far as it goes, and what the library would never come back from.
+fn expect_hdf5(path: &Path) -> Result<(), TrialError> {
+    let io = |source| TrialError::Io { path: path.to_owned(), source };
+    let file = std::fs::File::open(path).map_err(io)?;
     let mut found = Vec::new();
-    std::fs::File::open(path)?.take(SIGNATURE.len() as u64).read_to_end(&mut found)?;
-    Ok(SIGNATURE.starts_with(&found))
+    (&file).take(SIGNATURE.len() as u64).read_to_end(&mut found).map_err(io)?;
+    if !SIGNATURE.starts_with(&found) {
+        return Err(TrialError::OtherKind { path: path.to_owned() });
+    }
+    match heaps::look(&file).map_err(io)? {
+        Some(what) => Err(TrialError::Damaged { path: path.to_owned(), what }),
+        None => Ok(()),
+    }
 }
 
 impl TrialFile {
     /// Opens the file and reads its header.
     ///
     /// # Errors
-    /// [`TrialError::Io`] if it cannot be opened at all, [`TrialError::OtherKind`] if it is not HDF5, [`TrialError::NotHdf5`] if it is cut short or damaged,
+    /// [`TrialError::Io`] if it cannot be opened at all, [`TrialError::OtherKind`] if it is not HDF5, [`TrialError::Damaged`] if the library could not come back from it, [`TrialError::NotHdf5`] if it is cut short or damaged,
     /// [`TrialError::NotATrial`] and [`TrialError::TooNew`] if it is something else.
     pub fn open(path: &Path) -> Result<Self, TrialError> {
-        let io = |source| TrialError::Io { path: path.to_owned(), source };
-        if !begins_as_hdf5(path).map_err(io)? {
-            return Err(TrialError::OtherKind { path: path.to_owned() });
-        }
+        expect_hdf5(path)?;
         let not_hdf5 = |source| TrialError::NotHdf5 { path: path.to_owned(), source };
         // A sealed file is never written again, and network disks often cannot lock.
         let file = File::with_options().with_fapl(|fapl| fapl.file_locking(false)).open(path).map_err(not_hdf5)?;
@@ -133,6 +138,19 @@ impl TrialFile {
             resolution: get_number(at, "resolution")?,
             range,
         })
+    }
+
+    /// Times and values of a signal's samples `from..to`, as far as it has them; reads only these.
+    pub fn signal_samples(&self, name: &str, from: usize, to: usize) -> Result<(Vec<f64>, Vec<f64>), TrialError> {
+        let group = self.named_signal(name)?;
+        let (time, value) = (group.column::<f64>("time")?, group.column::<f64>("value")?);
+        group.expect_even(&[(time.len(), "time"), (value.len(), "value")])?;
+        Ok((time.read(from, to)?, value.read(from, to)?))
+    }
+
+    /// How many samples a signal has.
+    pub fn signal_len(&self, name: &str) -> Result<usize, TrialError> {
+        Ok(self.named_signal(name)?.column::<f64>("value")?.len())
     }
 
     /// A derived signal, whole.

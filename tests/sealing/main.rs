@@ -13,7 +13,7 @@ use std::sync::{Arc, LazyLock};
 
 use firmware_protocol as wire;
 use journal_file::{JOURNAL_ID, JournalFile, RIG_TEXT, TRIAL_ID, nominal, opened};
-use tautrail::archive::{Fate, SealError, Sealed, recover, seal, verify};
+use tautrail::archive::{Depth, Fate, SealError, Sealed, recover, seal, verify};
 use tautrail::capture::Counts;
 use tautrail::journal::{ArchiveLock, Body, Disk, RealDisk, TrialRange};
 use tautrail::trial::TrialFile;
@@ -91,7 +91,7 @@ fn a_played_launch_reads_as_one() {
     let (map, exchanges) = trial.clock("winch-node").unwrap();
     assert!(!map.is_empty() && exchanges.len() > 10 && map[0].two_way);
     assert!(exchanges.iter().all(|exchange| exchange.residual_ns.abs() < 2e6), "{exchanges:?}");
-    let verified = verify(&sealed.path).unwrap();
+    let verified = verify(&sealed.path, Depth::Everything).unwrap();
     assert_eq!(verified.findings, [""; 0]);
     assert_eq!((verified.n_samples, verified.raw_sha256), (sealed.n_samples, sealed.raw_sha256));
 }
@@ -184,7 +184,7 @@ fn a_trial_that_goes_on_after_it_was_recovered_gets_a_file_of_its_own() {
     let first = seal(&reader, &half, dir.path(), &real()).unwrap();
     let whole = seal(&reader, &range, dir.path(), &real()).unwrap();
     assert_eq!(whole.path.file_name().unwrap().to_str().unwrap(), format!("trial-{TRIAL_ID}-2.h5"));
-    assert!(whole.n_samples > first.n_samples && verify(&first.path).unwrap().findings.is_empty());
+    assert!(whole.n_samples > first.n_samples && verify(&first.path, Depth::Stored).unwrap().findings.is_empty());
     let known = recover(dir.path(), &real(), &mut |_| {}).unwrap().trials;
     assert!(matches!(&known[0].fate, Fate::AlreadySealed(path) if *path == whole.path), "{known:?}");
 }
@@ -326,7 +326,7 @@ fn a_lost_block_is_a_gap_and_damaged_bytes_are_kept() {
     let steps: Vec<f64> = line.time_s.windows(2).map(|pair| pair[1] - pair[0]).collect();
     let n_gaps = steps.iter().filter(|step| (**step - 0.011).abs() < 1e-6).count();
     assert_eq!(n_gaps, 2, "gaps are absent samples, never filled");
-    assert_eq!(verify(&sealed.path).unwrap().findings, [""; 0]);
+    assert_eq!(verify(&sealed.path, Depth::Everything).unwrap().findings, [""; 0]);
 }
 
 #[test]
@@ -350,7 +350,7 @@ fn a_reset_device_starts_a_new_clock_and_the_trial_goes_on() {
     assert_eq!(trial.signal("line").unwrap().time_s.len(), 1000);
     let (map, _) = trial.clock("winch-node").unwrap();
     assert_eq!(map.iter().map(|piece| piece.boot_id).collect::<Vec<_>>(), [7, 8]);
-    assert_eq!(verify(&sealed.path).unwrap().findings, [""; 0]);
+    assert_eq!(verify(&sealed.path, Depth::Everything).unwrap().findings, [""; 0]);
 }
 
 #[test]

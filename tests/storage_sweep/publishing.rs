@@ -9,7 +9,7 @@ use std::io;
 use std::path::{Path, PathBuf};
 use std::sync::{Arc, Mutex};
 
-use tautrail::archive::{Fate, RecoverError, Recovered, recover, verify};
+use tautrail::archive::{Depth, Fate, RecoverError, Recovered, recover, verify};
 use tautrail::journal::{AppendFile, Disk, Listed, RealDisk};
 
 use crate::journal_file::{JournalFile, RIG_TEXT, TRIAL_ID};
@@ -132,7 +132,7 @@ fn parts(dir: &Path) -> usize {
 fn clean() -> (Vec<u8>, Vec<Done>, BTreeMap<&'static str, u64>) {
     let (dir, disk) = (archive(), Arc::new(Logged::default()));
     run(dir.path(), &disk).unwrap();
-    assert_eq!(verify(&target(dir.path())).unwrap().findings, [""; 0]);
+    assert_eq!(verify(&target(dir.path()), Depth::Stored).unwrap().findings, [""; 0]);
     assert_eq!(parts(dir.path()), 0);
     let done = disk.done.lock().unwrap().clone();
     (std::fs::read(target(dir.path())).unwrap(), done, disk.counts())

@@ -5,7 +5,7 @@ use std::path::Path;
 use std::sync::Arc;
 
 use firmware_protocol::{Message, decode};
-use tautrail::archive::verify;
+use tautrail::archive::{Depth, verify};
 use tautrail::journal::{Body, Item, JournalReader, RealDisk, journals};
 use tautrail::link::LinkWhat;
 use tautrail::trial::TrialFile;
@@ -177,7 +177,7 @@ fn detail(taken_ns: &[i64], place: usize, kept: &BTreeSet<usize>, spell: &Spell,
 /// What is wrong with a trial file, in sentences.
 pub fn faults_of(path: &Path, read: &Read, truth: &Truth) -> Vec<String> {
     let name = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
-    let mut faults = match verify(path) {
+    let mut faults = match verify(path, Depth::Stored) {
         Ok(verified) => verified.findings,
         Err(error) => return vec![format!("{name} does not open: {error}")],
     };

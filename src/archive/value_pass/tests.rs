@@ -110,7 +110,8 @@ fn played(blocks: &[Told], clocks: Vec<ClockPiece>, kept_max: usize) -> (ForRead
     let mut gathered = raw.finish().unwrap();
     let rig = crate::rig::testing::north_pier();
     let clocks = [clocks];
-    let mut pass = ValuePass::new(&mut writer, &rig, &gathered.devices, &clocks, 0, kept_max);
+    let names: Vec<Source> = gathered.devices.iter().map(|device| device.source()).collect();
+    let mut pass = ValuePass::new(&mut writer, &rig, &names, &clocks, 0, kept_max);
     pass.take(&Told::Known(DeviceIdx(0), description())).unwrap();
     blocks.iter().for_each(|block| pass.take(block).unwrap());
     let for_reading = pass.finish(&mut gathered.events);
@@ -192,7 +193,8 @@ fn blocks_queued_before_a_change_keep_their_values_and_their_datasets() {
     told().into_iter().for_each(|told| raw.take(told).unwrap());
     let mut gathered = raw.finish().unwrap();
     let (rig, clocks) = (crate::rig::parse(&crate::rig::testing::NORTH_PIER).unwrap(), [vec![clock()]]);
-    let mut pass = ValuePass::new(&mut writer, &rig, &gathered.devices, &clocks, 0, 1_000);
+    let names: Vec<Source> = gathered.devices.iter().map(|device| device.source()).collect();
+    let mut pass = ValuePass::new(&mut writer, &rig, &names, &clocks, 0, 1_000);
     told().iter().for_each(|told| pass.take(told).unwrap());
     pass.finish(&mut gathered.events);
     gathered.events.write(&mut writer).unwrap();
