@@ -36,15 +36,11 @@ fn main() {
     let release_ns = play.scenario_zero_host_ns() + (release * 1e9) as i64;
     let at = |from_release_s: f64| release_ns + (from_release_s * 1e9) as i64;
     let mut file = JournalFile::begin(dir.path(), &RIG_TEXT);
-    let (mut first, mut last_ns, mut n_lost) = (None, 0, 0);
+    let (mut first, mut last_ns, mut n_lost, mut spoilt) = (None, 0, 0, false);
     // A second ahead of the trial: the descriptions in force and the clocks.
     for delivery in deliveries.into_iter().filter(|delivery| (at(-1.2)..at(TO_S)).contains(&delivery.host_ns)) {
         let (host_ns, device) = (delivery.host_ns, delivery.device as u16);
         let within = host_ns >= at(FROM_S);
-        if within && first.is_none() {
-            file.clocks(host_ns);
-            file.bytes(host_ns, 0, b"\0no frame\0".to_vec());
-        }
         let seq = match delivery.what {
             Delivered::Bytes(_) if within && device == 1 && host_ns > at(-0.005) && n_lost < N_LOST => {
                 n_lost += 1;
@@ -59,6 +55,11 @@ fn main() {
         if within && first.is_none() {
             file.open_trial(host_ns, seq, host_ns);
             first = Some(seq);
+        }
+        if within && !spoilt && host_ns > release_ns {
+            file.clocks(host_ns);
+            file.bytes(host_ns, 0, b"\0no frame\0".to_vec());
+            spoilt = true;
         }
         last_ns = host_ns;
     }

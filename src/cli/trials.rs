@@ -88,7 +88,7 @@ pub fn run(args: &Args, screen: &Screen) -> Result<Verdict, Failure> {
         _ => Index::Used,
     };
     let progress = |n: usize, of: usize| {
-        if of >= MANY && (n % MANY == 0 || n == of) {
+        if of >= MANY && (n.is_multiple_of(MANY) || n == of) {
             screen.progress(&format!("reading trial files: {n} of {of}"), n == of);
         }
     };
