@@ -77,6 +77,8 @@ fn no_id_leads_out_of_the_archive() {
     }
     let names: Vec<_> = fs::read_dir(dir.path()).unwrap().map(|entry| entry.unwrap().file_name()).collect();
     assert_eq!(names, ["inner"]);
-    let outside = fs::read_dir(&inner).unwrap().filter(|e| e.as_ref().unwrap().path().extension().is_some());
+    let outside = fs::read_dir(&inner)
+        .unwrap()
+        .filter(|e| e.as_ref().unwrap().path().extension().is_some_and(|ending| ending == "h5"));
     assert_eq!(outside.count(), 0, "no trial file was made");
 }
