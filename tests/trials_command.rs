@@ -45,13 +45,14 @@ for row in sys.argv[1:]:
         f['result/launch_speed'][()] = float(speed)
         if trial_id[5] == '3':
             text = f['rig/rig.toml'].asstr()[()]
-            f['rig/rig.toml'][()] = text + '''
+            own, mark, attached = text.partition('\n#@attached')
+            f['rig/rig.toml'][()] = own + '''
 [[cord]]
 serial = "NP-07"
 lot = "invented"
 place = "left"
 in_service_since = "2026-01-01"
-'''
+''' + mark + attached
 "#;
     support::run_oracle(script, &args.iter().map(String::as_str).collect::<Vec<_>>());
     age(dir.path());
