@@ -85,14 +85,14 @@ fn what_was_said_later_is_read_with_the_trial_and_its_history_stays() {
 fn a_corrected_record_has_signals_and_results_derived_again_from_counts() {
     let (dir, trial) = copied();
     let hold_n = result(&json(&["read", shown(&trial)]), "hold_tension");
-    let (_, rig_text) = tautrail(&["show", shown(&trial), "--texts", "rig.toml"]);
-    // INVENTED correction: a count of the release line's cell is 2 % less than its coefficients said.
-    let line = rig_text.find("name = \"line\"").expect("the rehearsal's rig file has a channel called line");
-    let (head, tail) = rig_text.split_at(line);
-    assert!(tail.find("0.0005 N").unwrap() < 250, "{tail}");
+    let (_, record) = tautrail(&["show", shown(&trial), "--texts", "records/line.toml"]);
+    // INVENTED correction: a count of the release line's cell is 2 % less than its record said.
+    let scale = record.lines().find(|line| line.starts_with("coefficients = ")).expect("the record has coefficients");
+    let number = scale.split('"').nth(3).and_then(|text| text.strip_suffix(" N")).expect("a second coefficient in N");
+    let less = format!("coefficients = [\"0 N\", \"{} N\"]", 0.98 * number.parse::<f64>().unwrap());
     let corrected = dir.path().join("corrected.toml");
-    fs::write(&corrected, format!("{head}{}", tail.replacen("0.0005 N", "0.00049 N", 1))).unwrap();
-    let (code, said) = amend(&trial, &["--record", &format!("rig.toml={}", shown(&corrected))]);
+    fs::write(&corrected, record.replacen(scale, &less, 1)).unwrap();
+    let (code, said) = amend(&trial, &["--record", &format!("records/line.toml={}", shown(&corrected))]);
     assert_eq!(code, 0, "{said}");
     let again = result(&json(&["read", shown(&trial)]), "hold_tension");
     assert!((again / hold_n / 0.98 - 1.0).abs() < 1e-6, "{hold_n} N became {again} N");

@@ -55,6 +55,9 @@ fn rig_for(scenario: &Scenario) -> Rig {
     if scenario.name == "gas-launcher" {
         rig.cords.count = 0;
     }
+    if scenario.name.starts_with("stage") {
+        rig.cords.count = scenario.launcher.cords.iter().map(|set| set.count).sum::<f64>().round() as u32;
+    }
     let dummy = scenario.launcher.payload.filter(|_| scenario.name.starts_with("stage"));
     if let Some(payload) = dummy {
         rig.payload.mass_kg.value = payload.mass_kg;
