@@ -59,6 +59,8 @@ fn every_outcome_is_called_by_its_name() {
         ("free-pull", Outcome::ShuttleAlone),
         ("coast-down", Outcome::ShuttleAlone),
         ("stage-1", Outcome::Launched),
+        // Taut from the start: the shuttle breaks loose with a jerk of the line, which is no release.
+        ("misrigged-length", Outcome::Launched),
     ];
     for (scenario, wanted) in cases {
         for seed in 1..=2 {

@@ -100,7 +100,8 @@ pub fn least_squares(rows: &[Vec<f64>], y: &[f64], scatter: Scatter<'_>) -> Resu
     let parameters = rows.first().map_or(0, Vec::len);
     let weighted = DMatrix::from_fn(rows.len(), parameters, |i, j| rows[i][j] * weights[i]);
     let scales: Vec<f64> = weighted.column_iter().map(|column| column.norm()).collect();
-    if scales.contains(&0.0) {
+    // A column without length, or one so long that the rest is lost beside it.
+    if scales.iter().any(|scale| *scale == 0.0 || !scale.is_finite()) {
         return Err(LinearError::Inseparable { parameters, condition: f64::INFINITY });
     }
     let scaled = DMatrix::from_fn(rows.len(), parameters, |i, j| weighted[(i, j)] / scales[j]);

@@ -91,6 +91,10 @@ impl Phases {
         let least_n = f64::max(3.0 * rig.plan.slack_tension_n, 0.1 * (self.peak_load_n - self.zero_n));
         for drop in sudden_drops(&load, self.zero_n, self.peak_load_n, least_n) {
             if drop.soon_n - self.zero_n < 0.5 * (drop.from_n - self.zero_n) {
+                // What is drawn on to twice as much afterwards was no release: a shuttle that breaks loose as the winch starts.
+                if drop.from_n - self.zero_n < 0.5 * (self.peak_load_n - self.zero_n) {
+                    continue;
+                }
                 self.release_hint_s = Some(drop.time_s);
                 break;
             }

@@ -118,6 +118,9 @@ fn what_can_not_be_fitted_is_refused_with_its_place() {
         said(polynomial(&[1.0, 2.0], &[1.0, 2.0], 1, Scatter::Known(&[1.0, 0.0]))),
         "the scatter of reading 1 is 0, it must be positive"
     );
+    // One over this scatter is beyond any number.
+    let beyond = polynomial(&[1.0, 2.0], &[0.0, 0.0], 1, Scatter::Known(&[1.0, 3.87e-309]));
+    assert!(said(beyond).starts_with("the readings do not tell the 2 parameters apart"));
     assert_eq!(said(fit(&[1.0, 2.0], &[1.0])), "2 readings have 1 values");
 }
 
