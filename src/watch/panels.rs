@@ -81,7 +81,10 @@ pub fn on_the_way(view: &ViewState, snapshot: &Snapshot) -> Vec<Line<'static>> {
     if let Some(hold) = snapshot.hold {
         // One decimal more than a tension: what a hold loses is small.
         let (decimals, unit) = (view.units.force.decimals() + 1, view.units.force.symbol());
-        lines.push(Line::from(format!("fell {:.decimals$} {unit}", view.units.force_value(hold.fell_n))));
+        // Less than the last digit either way has no sign.
+        let scale = 10_f64.powi(decimals as i32);
+        let fell = (view.units.force_value(hold.fell_n) * scale).round() / scale + 0.0;
+        lines.push(Line::from(format!("fell {fell:.decimals$} {unit}")));
         lines.extend(hold.in_a_minute_n.map(|later_n| Line::from(format!("{} in 1 min", view.units.force(later_n)))));
         lines.extend(hold.window_missed_in_s.map(|in_s| {
             let text = if in_s < 1.0 { String::from("window MISSED") } else { format!("window missed in {in_s:.0} s") };

@@ -439,6 +439,16 @@ fn alarms_that_do_not_fit_are_counted() {
     assert!(shown.contains("and 4 more") && shown.contains("number 4") && !shown.contains("number 5"), "{shown}");
 }
 
+#[test]
+fn a_hold_that_lost_nothing_shows_no_minus_nothing() {
+    let mut view = holding(COLOUR);
+    let mut now = view.snapshot.clone().unwrap();
+    now.hold = Some(HoldNow { fell_n: -0.03, in_a_minute_n: None, window_missed_in_s: None });
+    view.apply(Message::Snapshot(now));
+    let shown = text(&view, 80, 24);
+    assert!(shown.contains("fell 0.0 N") && !shown.contains("-0.0"), "{shown}");
+}
+
 /// Six cords in place of seven, on the way back.
 #[test]
 fn winch_back_shows_what_is_left_and_how_many_cords_pull() {
